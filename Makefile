@@ -1,0 +1,159 @@
+# undertag: one Makefile. `make demo` and `make test` do all the set-up on a fresh Debian machine.
+#
+#   make            build/undertagd and build/undertag
+#   make demo       the main job on an invented stream
+#   make test       unit, integration and reference tests
+#   make lint       format check, clang-tidy, cppcheck, a clang build
+#   make sanitize   the tests under ASan+UBSan and TSan; make valgrind: the unit tests
+#   make corpora    D and W from Debian's own packages; make quality, make bench: figures on them
+#   make install    DESTDIR and PREFIX as usual
+
+BUILD ?= build
+PREFIX ?= /usr/local
+DESTDIR ?=
+CFLAGS ?= -O2 -g
+CC ?= cc
+PYTHON ?= /usr/bin/python3
+VERSION := 0.1.0
+
+WARNINGS := -Wall -Wextra -Wshadow -Wconversion -Wstrict-prototypes -Wformat=2
+ifeq ($(CI),true)
+WARNINGS += -Werror
+endif
+BASE_CFLAGS := -std=c17 -D_GNU_SOURCE -I. -fno-strict-aliasing -pthread $(WARNINGS) \
+               -DUNDERTAG_VERSION='"$(VERSION)"'
+DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih zlib
+CLIENT_PACKAGES := jansson
+# Asked only where something is compiled, so that `make packages` runs on a bare machine.
+PACKAGE_CFLAGS = $(shell pkg-config --cflags $(DAEMON_PACKAGES))
+DAEMON_LIBS = $(shell pkg-config --libs $(DAEMON_PACKAGES)) -lunistring -lstemmer -lm -pthread
+CLIENT_LIBS = $(shell pkg-config --libs $(CLIENT_PACKAGES)) -lm
+TEST_LIBS = $(shell pkg-config --libs cmocka)
+
+DAEMON_SOURCES := $(filter-out daemon/main.c,$(wildcard daemon/*.c daemon/learner/*.c daemon/text/*.c))
+STORAGE_SOURCES := $(wildcard storage/*.c)
+CLIENT_SOURCES := $(filter-out client/main.c,$(wildcard client/*.c))
+UNIT_TESTS := $(patsubst tests/unit/%.c,%,$(wildcard tests/unit/test_*.c))
+INTEGRATION_TESTS := $(patsubst tests/integration/%.c,%,$(wildcard tests/integration/test_*.c))
+REFERENCE_TESTS := $(patsubst tests/reference/%.c,%,$(wildcard tests/reference/test_*.c))
+HELPER_SOURCES := $(filter-out tests/integration/test_%.c,$(wildcard tests/integration/*.c))
+BENCH_SOURCES := $(wildcard tests/bench/*.c)
+
+object = $(patsubst %.c,$(BUILD)/%.o,$(1))
+LIBRARY_OBJECTS := $(call object,$(DAEMON_SOURCES) $(STORAGE_SOURCES))
+CLIENT_OBJECTS := $(call object,$(CLIENT_SOURCES))
+LIBRARY := $(BUILD)/libundertag.a
+CLIENT_LIBRARY := $(BUILD)/libclient.a
+HELPERS := $(call object,$(HELPER_SOURCES))
+PROGRAMS := $(BUILD)/undertagd $(BUILD)/undertag
+TEST_PROGRAMS := $(addprefix $(BUILD)/tests/,$(UNIT_TESTS) $(INTEGRATION_TESTS) $(REFERENCE_TESTS))
+BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
+
+.PHONY: all demo test lint sanitize valgrind corpora quality bench install uninstall clean \
+        packages-build packages-test packages-lint packages-quality build-tests run-tests FORCE
+.DELETE_ON_ERROR:
+.SECONDARY:
+
+all: $(PROGRAMS)
+
+# --- building -----------------------------------------------------------------------------------
+
+# A build made with other flags is made anew: the stamp changes only when they do.
+$(BUILD)/flags: FORCE
+	@mkdir -p $(BUILD)
+	@echo '$(CC) $(BASE_CFLAGS) $(CFLAGS) $(LDFLAGS)' > $@.new
+	@cmp -s $@.new $@ && rm $@.new || mv $@.new $@
+
+$(BUILD)/%.o: %.c $(BUILD)/flags
+	@mkdir -p $(@D)
+	$(CC) $(BASE_CFLAGS) $(PACKAGE_CFLAGS) $(CPPFLAGS) $(CFLAGS) -MMD -MP -c $< -o $@
+
+$(LIBRARY): $(LIBRARY_OBJECTS)
+	@rm -f $@
+	$(AR) rcs $@ $^
+
+$(CLIENT_LIBRARY): $(CLIENT_OBJECTS)
+	@rm -f $@
+	$(AR) rcs $@ $^
+
+$(BUILD)/undertagd: $(BUILD)/daemon/main.o $(LIBRARY)
+	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
+
+$(BUILD)/undertag: $(BUILD)/client/main.o $(CLIENT_LIBRARY)
+	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(CLIENT_LIBS) -o $@
+
+$(BUILD)/tests/%: $(BUILD)/tests/unit/%.o $(LIBRARY) $(CLIENT_LIBRARY)
+	@mkdir -p $(@D)
+	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
+
+$(BUILD)/tests/%: $(BUILD)/tests/integration/%.o $(HELPERS) $(LIBRARY)
+	@mkdir -p $(@D)
+	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
+
+$(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
+	@mkdir -p $(@D)
+	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -llinear -o $@
+
+$(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(LIBRARY)
+	@mkdir -p $(@D)
+	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
+
+-include $(shell find $(BUILD) -name '*.d' 2>/dev/null)
+
+# --- packages -----------------------------------------------------------------------------------
+
+packages-%: FORCE
+	@sh config/install-packages $*
+
+# --- running ------------------------------------------------------------------------------------
+
+demo: packages-build
+	@$(MAKE) --no-print-directory all
+	@sh tests/demo/demo.sh $(BUILD)
+
+test: packages-build packages-test
+	@$(MAKE) --no-print-directory run-tests
+
+build-tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BENCH_PROGRAMS)
+
+run-tests: build-tests
+	@BUILD=$(BUILD) PYTHON=$(PYTHON) sh tests/run $(WRAPPER)
+
+corpora: packages-quality
+	$(PYTHON) tests/corpora/make_d.py build/corpora/D.jsonl
+	$(PYTHON) tests/corpora/make_w.py build/corpora/W.jsonl
+
+# --- checks -------------------------------------------------------------------------------------
+
+ALL_SOURCES = $(shell git ls-files '*.c')
+ALL_HEADERS = $(shell git ls-files '*.h')
+
+lint: packages-build packages-test packages-lint
+	clang-format --dry-run --Werror $(ALL_SOURCES) $(ALL_HEADERS)
+	cppcheck --quiet --std=c11 --enable=warning,performance,portability --inline-suppr \
+	    --error-exitcode=1 -I. daemon storage client
+	clang-tidy --quiet $(ALL_SOURCES) -- $(BASE_CFLAGS) $(PACKAGE_CFLAGS)
+	$(MAKE) BUILD=build-clang CC=clang CI=true build-tests
+
+sanitize: packages-build packages-test packages-lint
+	$(MAKE) BUILD=build-asan CC=clang run-tests \
+	    CFLAGS='-O1 -g -fno-omit-frame-pointer -fsanitize=address,undefined -fno-sanitize-recover=all'
+	$(MAKE) BUILD=build-tsan CC=clang CFLAGS='-O1 -g -fsanitize=thread' run-tests
+
+valgrind: packages-build packages-test
+	$(MAKE) BUILD=build-valgrind CFLAGS='-O1 -g' run-tests \
+	    WRAPPER='valgrind -q --error-exitcode=99 --leak-check=full --trace-children=no'
+
+# --- installing ---------------------------------------------------------------------------------
+
+install: all
+	install -d $(DESTDIR)$(PREFIX)/bin $(DESTDIR)$(PREFIX)/share/doc/undertag
+	install -m 755 $(PROGRAMS) $(DESTDIR)$(PREFIX)/bin
+	install -m 644 README.md LICENSE config/undertag.ini $(DESTDIR)$(PREFIX)/share/doc/undertag
+
+uninstall:
+	rm -f $(DESTDIR)$(PREFIX)/bin/undertagd $(DESTDIR)$(PREFIX)/bin/undertag
+	rm -rf $(DESTDIR)$(PREFIX)/share/doc/undertag
+
+clean:
+	rm -rf build build-*

@@ -1,0 +1,55 @@
+/*
+ * call: one request on its way, and the table of methods that may be asked for.
+ *
+ * The connection side (rpc, connection) makes calls and starts them; a method keeps the call as
+ * long as it needs and ends it exactly once, by call_answer_take or call_fail, at once or later,
+ * always on the loop thread. The peer may be gone by then: the answer is dropped, the method need
+ * not know.
+ *
+ * Order on one connection: reads may overlap reads, changes may follow changes into the writer's
+ * queue, and a change of kind waits until all earlier calls of that connection have ended. So a
+ * caller that pipelines sees its own changes, in order.
+ */
+#ifndef UNDERTAG_CALL_H
+#define UNDERTAG_CALL_H
+
+#include <jansson.h>
+#include <stddef.h>
+#include <sys/types.h>
+
+#include "daemon/fault.h"
+
+typedef struct call call;
+
+enum method_kind {
+    METHOD_READ,
+    METHOD_CHANGE
+};
+
+struct method {
+    const char *name; /* as on the wire: "item.file" */
+    enum method_kind kind;
+    /* Loop thread. `params` is an object, borrowed until the call has ended. */
+    void (*start)(call *call, const json_t *params);
+};
+
+struct method_table {
+    const struct method *methods;
+    size_t count;
+    void *context; /* what call_context returns; belongs to the caller of server_new */
+};
+
+/* What the method table was made with. */
+void *call_context(const call *call);
+
+/* The user id of the peer, from the socket's credentials. */
+uid_t call_uid(const call *call);
+
+/* Ends the call with a result, of which it takes the reference. NULL (no memory) ends it with
+ * -32603. */
+void call_answer_take(call *call, json_t *result);
+
+/* Ends the call with an error. */
+void call_fail(call *call, const struct fault *fault);
+
+#endif

@@ -1,0 +1,43 @@
+#include "daemon/fault.h"
+
+#include <stdarg.h>
+#include <stdio.h>
+#include <string.h>
+
+/* Drops the bytes of a character that a cut has left unfinished at the end of the text. */
+static void drop_cut_character(char *text)
+{
+    size_t length = strlen(text);
+    size_t start = length;
+    while (start > 0 && ((unsigned char)text[start - 1] & 0xC0U) == 0x80U) {
+        start--;
+    }
+    if (start == 0) {
+        return;
+    }
+    unsigned char lead = (unsigned char)text[start - 1];
+    size_t due = lead >= 0xF0U ? 4 : lead >= 0xE0U ? 3 : lead >= 0xC0U ? 2 : 1;
+    if (length - (start - 1) < due) {
+        text[start - 1] = '\0';
+    }
+}
+
+int fault_set(struct fault *fault, enum fault_code code, const char *field, const char *format, ...)
+{
+    if (fault->code != 0) {
+        return fault->code;
+    }
+    fault->code = code;
+    int written = snprintf(fault->field, sizeof fault->field, "%s", field ? field : "");
+    if (written < 0 || (size_t)written >= sizeof fault->field) {
+        drop_cut_character(fault->field);
+    }
+    va_list arguments;
+    va_start(arguments, format);
+    written = vsnprintf(fault->message, sizeof fault->message, format, arguments);
+    va_end(arguments);
+    if (written < 0 || (size_t)written >= sizeof fault->message) {
+        drop_cut_character(fault->message);
+    }
+    return fault->code;
+}

@@ -1,0 +1,46 @@
+/*
+ * server: the listening socket, its connections, and their end.
+ *
+ * Happy path: server_new takes the lock beside the socket (PATH.lock), removes a stale socket (only
+ * the lock's holder may), binds with mode 0660 from the first moment and listens. server_drain
+ * stops listening, refuses new calls with -32006, lets running calls end and their answers be read
+ * (for drain_ms at most), closes everything, and calls back once. Loop thread only.
+ */
+#ifndef UNDERTAG_SERVER_H
+#define UNDERTAG_SERVER_H
+
+#include <stddef.h>
+#include <uv.h>
+
+#include "daemon/call.h"
+
+typedef struct server server;
+
+struct server_settings {
+    const char *socket_path;    /* copied; at most 107 bytes, longer is refused with a sentence */
+    size_t line_limit_bytes;    /* a longer line gets -32003 and is skipped without being held */
+    size_t unread_limit_bytes;  /* unread answers a connection before reading from it stops */
+    unsigned connections_limit; /* one more gets a -32003 line and is closed */
+    unsigned drain_ms;          /* the longest time server_drain waits for slow readers */
+};
+
+enum {
+    SERVER_ERROR_BYTES = 512
+};
+
+/*
+ * Starts to listen. The table is borrowed and must outlive the server. On failure returns a
+ * negative libuv code, writes one sentence for people to `error` (SERVER_ERROR_BYTES), and leaves
+ * *ret_server untouched. A second server on the same path is refused with UV_EADDRINUSE.
+ */
+int server_new(uv_loop_t *loop, const struct server_settings *settings,
+               const struct method_table *table, server **ret_server, char *error)
+    __attribute__((warn_unused_result));
+
+/* Connections open now. */
+unsigned server_connections(const server *server);
+
+/* Drains and frees the server; `done` is called once, never before this returns. */
+void server_drain(server *server, void (*done)(void *user), void *user);
+
+#endif

@@ -3,9 +3,12 @@
  *
  * A term is a word of title or text, a pair of words, or a field as "name=value". The frequency of
  * a term is its count in the text plus `title_weight` times its count in the title; a field has
- * frequency 1. Words never hold '=' and never hold a space, so the three kinds cannot collide.
+ * frequency 1, however often it is given. Words never hold '=' and never hold a space, so the three
+ * kinds cannot collide. Fields are codes, not prose: they are counted as they are, neither
+ * normalised nor folded.
  *
- * A workspace serves one thread at a time; what it hands out is valid until the next extraction.
+ * A workspace serves one thread at a time; what it hands out is valid until the next extraction. It
+ * keeps the room that its largest item needed.
  */
 #ifndef UNDERTAG_FEATURES_H
 #define UNDERTAG_FEATURES_H
@@ -13,15 +16,17 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "daemon/text/siphash.h"
 #include "daemon/text/words.h"
 
-typedef struct features features;
+struct features;
 
 struct feature {
     const char *term; /* not ended by NUL */
     uint32_t term_bytes;
     float frequency;
-    const char *surface; /* its first appearance as written; points into the source */
+    const char *surface; /* its first appearance as written; points into the source. The term
+                          * itself for a field. */
     uint32_t surface_bytes;
 };
 
@@ -48,26 +53,28 @@ struct features_source {
 
 struct features_settings {
     struct words_settings words;
-    double title_weight; /* above 0 */
+    double title_weight;    /* above 0 */
+    struct siphash_key key; /* a secret, so that nobody can choose words that collide; it changes
+                             * nothing in the result */
 };
 
-/* Makes a workspace. Returns 0 or -ENOMEM. */
-int features_new(const struct features_settings *settings, features **ret_features)
+/* Makes a workspace; the settings are copied. Returns 0 or -ENOMEM. */
+int features_new(const struct features_settings *settings, struct features **ret_features)
     __attribute__((warn_unused_result));
 
-void features_free(features *features);
+void features_free(struct features *features);
 
 /*
  * Extracts the different terms of the source, in the order of first appearance (title, text,
- * fields). Returns 0, -ENOMEM, or -E2BIG when there are more than `most` different terms.
- * On failure the features are empty.
+ * fields). Returns 0, -ENOMEM, or -E2BIG when there are more than `most` different terms or a text
+ * is beyond words_scan. On failure the features are empty.
  */
-int features_extract(features *features, const struct features_source *source, size_t most)
+int features_extract(struct features *features, const struct features_source *source, size_t most)
     __attribute__((warn_unused_result));
 
-size_t features_count(const features *features);
+size_t features_count(const struct features *features);
 
 /* The features of the last extraction, features_count of them. */
-const struct feature *features_list(const features *features);
+const struct feature *features_list(const struct features *features);
 
 #endif

@@ -1,0 +1,241 @@
+#!/bin/sh
+# The demo behind `make demo`: undertag's main job on an invented stream, with a crash in its middle.
+# Usage: sh tests/demo/demo.sh BUILD      (BUILD: the folder with undertagd and undertag)
+#
+# Everything happens in a temporary home and on a socket of its own, and is removed at the end.
+set -eu
+
+shown=${1:?usage: demo.sh BUILD}
+build=$(cd "$shown" && pwd)
+here=$(cd "$(dirname "$0")" && pwd)
+python=${PYTHON:-/usr/bin/python3}
+entries=3000
+first_part=2000 # filed in peace; the crash falls into the rest
+held_back=300   # of the rest, so that its filing cannot end before the crash
+crash_after=250 # entries of the rest that are in the store
+sample=200      # entries whose proposals are compared with the truth
+
+work=$(mktemp -d "${TMPDIR:-/tmp}/undertag-demo.XXXXXX")
+socket=$work/socket
+daemon='' filing='' feeder=''
+
+# --- saying and failing ---------------------------------------------------------------------------
+
+strong='' plain=''
+if [ -t 1 ] && [ -z "${NO_COLOR:-}" ] && [ "${TERM:-dumb}" != dumb ]; then
+    strong=$(printf '\033[1m') plain=$(printf '\033[0m')
+fi
+
+heading() {
+    printf '\n%s%s%s\n' "$strong" "$1" "$plain"
+}
+
+say() {
+    printf '%s\n' "$*" | fmt -w 78 -g 78
+}
+
+fail() {
+    printf '\nundertag demo: %s\n' "$*" >&2
+    if [ -s "$work/daemon.log" ]; then
+        echo "The daemon's last words:" >&2
+        tail -n 5 "$work/daemon.log" >&2
+    fi
+    exit 1
+}
+
+# A process that nobody has waited for yet is a zombie, and has ended all the same.
+ended() {
+    ! grep -qs '^State:[[:space:]]*[^Z[:space:]]' "/proc/$1/status"
+}
+
+clean_up() {
+    status=$?
+    trap - EXIT
+    for process in $feeder $filing $daemon; do
+        kill "$process" 2>/dev/null || true # it may have ended already
+        tries=250
+        until ended "$process"; do
+            tries=$((tries - 1))
+            [ $tries -gt 0 ] || kill -9 "$process" 2>/dev/null || true
+            sleep 0.02
+        done
+    done
+    rm -rf "$work"
+    exit "$status"
+}
+trap clean_up EXIT
+trap 'exit 130' INT
+trap 'exit 143' TERM HUP
+
+# --- the programs ---------------------------------------------------------------------------------
+
+undertag() {
+    "$build/undertag" --socket "$socket" "$@"
+}
+
+tally() {
+    "$python" "$here/tally.py" "$@"
+}
+
+# Shows a command as a person would type it, and runs it.
+show() {
+    printf '%s$ undertag %s%s\n' "$strong" "$*" "$plain"
+    undertag "$@" || fail "'undertag $*' ended with $?"
+}
+
+# A number out of the daemon's state; fails where there is no answer.
+state() {
+    answer=$(undertag --json state) && printf '%s' "$answer" | tally member "$1"
+}
+
+# wait_until SECONDS WHAT COMMAND...: until the command succeeds, and no longer.
+wait_until() {
+    last=$(($(date +%s) + $1))
+    what=$2
+    shift 2
+    until "$@"; do
+        [ "$(date +%s)" -le "$last" ] || fail "waited in vain for $what"
+        sleep 0.02
+    done
+}
+
+accepts() {
+    ! ended "$daemon" || fail "the daemon ended by itself"
+    undertag state >/dev/null 2>&1
+}
+
+# ids FROM TO: of these lines of the stream.
+ids() {
+    sed -n "$1,$2s/^{\"id\": \"\([^\"]*\)\".*/\1/p" logbooks.jsonl
+}
+
+holds_items() {
+    items=$(state items) && [ "$items" -ge "$1" ]
+}
+
+has_learned_all() {
+    seq=$(state seq) && learned=$(state learned) && [ "$learned" -eq "$seq" ]
+}
+
+start_daemon() {
+    "$build/undertagd" --home "$work/home" --socket "$socket" 2>>"$work/daemon.log" &
+    daemon=$!
+    wait_until 20 "the daemon to answer" accepts
+}
+
+# --- the demo -------------------------------------------------------------------------------------
+
+for program in undertagd undertag; do
+    [ -x "$build/$program" ] || fail "$build/$program is not there; run 'make' first"
+done
+cd "$work"
+
+heading "1. A stream of tagged documents"
+"$python" "$here/logbooks.py" --entries $entries --out logbooks.jsonl --truth truth.jsonl ||
+    fail "the logbooks could not be made"
+head -n $first_part logbooks.jsonl >part1.jsonl
+tail -n +$((first_part + 1)) logbooks.jsonl >part2.jsonl
+rest=$((entries - first_part))
+say "$entries entries from the logbooks of a trust of lighthouses and harbours that" \
+    "never was. Its keepers tagged them and forgot many tags, rare ones most often." \
+    "One line of the stream:"
+sed -n "${first_part}p" logbooks.jsonl | fold -s -w 74 | sed 's/^/  /; s/ *$//'
+
+heading "2. Filing"
+say "A daemon starts in an empty home and takes the first $first_part entries. Each is" \
+    "on disk before it is acknowledged, and the daemon learns from it at once."
+start_daemon
+show file part1.jsonl
+wait_until 60 "the daemon to learn what was filed" has_learned_all
+show state
+
+heading "3. What do filed entries lack?"
+say "Two of the entries just filed, with the words that speak for each proposal. The" \
+    "chance is the probability that the tag belongs there although it was not given."
+ids $((first_part - 1)) $first_part >examples
+while read -r id; do
+    echo
+    tally entry logbooks.jsonl "$id" || fail "$id is not in the stream"
+    show gaps "$id" --most 3 --why </dev/null
+    tally forgotten truth.jsonl "$id" || fail "$id is not in the truth"
+done <examples
+
+heading "4. What does a draft need?"
+say "A draft has no tags yet, so here the chance is that the tag belongs. It comes" \
+    "from standard input:"
+cat >draft <<'END'
+Thick weather from the south-east since noon and the siren going all the
+while. Two in bed with the influenza; the doctor lay off in the boat and
+could not land. The auditor, who came for the books, was sick over them.
+END
+sed 's/^/  /' draft
+show gaps --most 6 <draft
+
+heading "5. A crash"
+say "The filing of the other $rest entries begins, and in its middle the daemon is" \
+    "killed with -9, which it can neither see coming nor catch."
+mkfifo pipe
+undertag --json file <pipe >acknowledged 2>filing.log &
+filing=$!
+exec 3>pipe
+head -n $((rest - held_back)) part2.jsonl >&3 3>&- 2>/dev/null &
+feeder=$!
+wait_until 60 "the filing to be under way" holds_items $((first_part + crash_after))
+kill -9 "$daemon"
+wait "$daemon" 2>/dev/null || true # what it ended with is the kill
+daemon=
+exec 3>&-
+wait "$feeder" || true # the pipe may have broken under it
+feeder=
+if wait "$filing"; then
+    fail "the filing ended well although its daemon was killed"
+fi
+filing=
+acknowledged=$(grep -c '"was"' acknowledged) || fail "nothing was acknowledged before the crash"
+[ "$acknowledged" -lt "$rest" ] || fail "the crash came too late"
+start_daemon
+kept=$(($(state items) - first_part))
+undertag --json list >list.json || fail "'undertag list' ended with $?"
+lost=$(tally lost logbooks.jsonl $((first_part + acknowledged)) <list.json)
+say "Acknowledged before the crash: $acknowledged entries. Started again, the daemon" \
+    "has $kept of the $rest. Of all $((first_part + acknowledged)) entries that were ever" \
+    "acknowledged, $lost are lost."
+[ "$lost" -eq 0 ] || fail "$lost acknowledged entries are lost"
+[ "$kept" -ge "$acknowledged" ] || fail "only $kept of $acknowledged entries are there"
+
+heading "6. The same again"
+say "After a break a feed is simply run again: what had been filed is 'same', and" \
+    "only the rest is new."
+show file part2.jsonl
+[ "$(state items)" -eq $entries ] || fail "there are $(state items) entries instead of $entries"
+wait_until 60 "the daemon to learn what was filed" has_learned_all
+
+heading "7. Were the proposals right?"
+say "The generator of the logbooks knows which tags each entry deserves; the daemon" \
+    "never sees that. For $sample entries, the three best proposals of each:"
+echo
+ids 1 $entries | awk -v step=$((entries / sample)) 'NR % step == 0' >sampled
+while read -r id; do
+    printf '%s\t' "$id"
+    undertag --json gaps "$id" --most 3 --floor 0 || exit 1
+done <sampled >answers || fail "the daemon did not answer for each of $sample entries"
+tally proposals logbooks.jsonl truth.jsonl answers || fail "the proposals could not be counted"
+
+heading "8. The end"
+say "The daemon is told to stop with SIGTERM."
+kill -TERM "$daemon"
+wait_until 20 "the daemon to stop" ended "$daemon"
+status=0
+wait "$daemon" || status=$?
+daemon=
+[ "$status" -eq 0 ] || fail "the daemon ended with $status"
+say "It has ended well, and its temporary home is removed."
+
+heading "What to try next"
+cat <<END
+  $shown/undertagd &                  a daemon of your own, with a home that stays
+  $shown/undertag file YOURS.jsonl    JSON Lines with id, title, text and tags
+  $shown/undertag gaps ID --why       what an item lacks, and why
+  $shown/undertag tags list           the vocabulary, with how complete it is
+  $shown/undertag --help              all the rest
+END

@@ -34,6 +34,11 @@ say() {
     printf '%s\n' "$*" | fmt -w 78 -g 78
 }
 
+# A whole number with a comma before each three digits.
+count() {
+    printf '%s' "$1" | sed -e ':more' -e 's/^\([0-9]*[0-9]\)\([0-9]\{3\}\)/\1,\2/' -e 't more'
+}
+
 fail() {
     printf '\nundertag demo: %s\n' "$*" >&2
     if [ -s "$work/daemon.log" ]; then
@@ -136,13 +141,13 @@ heading "1. A stream of tagged documents"
 head -n $first_part logbooks.jsonl >part1.jsonl
 tail -n +$((first_part + 1)) logbooks.jsonl >part2.jsonl
 rest=$((entries - first_part))
-say "$entries entries from the logbooks of a trust of lighthouses and harbours that" \
+say "$(count $entries) entries from the logbooks of a trust of lighthouses and harbours that" \
     "never was. Its keepers tagged them and forgot many tags, rare ones most often." \
     "One line of the stream:"
 sed -n "${first_part}p" logbooks.jsonl | fold -s -w 74 | sed 's/^/  /; s/ *$//'
 
 heading "2. Filing"
-say "A daemon starts in an empty home and takes the first $first_part entries. Each is" \
+say "A daemon starts in an empty home and takes the first $(count $first_part) entries. Each is" \
     "on disk before it is acknowledged, and the daemon learns from it at once."
 start_daemon
 show file part1.jsonl
@@ -172,7 +177,7 @@ sed 's/^/  /' draft
 show gaps --most 6 <draft
 
 heading "5. A crash"
-say "The filing of the other $rest entries begins, and in its middle the daemon is" \
+say "The filing of the other $(count $rest) entries begins, and in its middle the daemon is" \
     "killed with -9, which it can neither see coming nor catch."
 mkfifo pipe
 undertag --json file <pipe >acknowledged 2>filing.log &
@@ -195,11 +200,11 @@ acknowledged=$(grep -c '"was"' acknowledged) || fail "nothing was acknowledged b
 [ "$acknowledged" -lt "$rest" ] || fail "the crash came too late"
 start_daemon
 kept=$(($(state items) - first_part))
-undertag --json list >list.json || fail "'undertag list' ended with $?"
+undertag --json list --most $entries >list.json || fail "'undertag list' ended with $?"
 lost=$(tally lost logbooks.jsonl $((first_part + acknowledged)) <list.json)
-say "Acknowledged before the crash: $acknowledged entries. Started again, the daemon" \
-    "has $kept of the $rest. Of all $((first_part + acknowledged)) entries that were ever" \
-    "acknowledged, $lost are lost."
+say "Acknowledged before the crash: $(count "$acknowledged") entries. Started again, the daemon" \
+    "has $(count $kept) of the $(count $rest). Of all $(count $((first_part + acknowledged)))" \
+    "entries that were ever acknowledged, $lost are lost."
 [ "$lost" -eq 0 ] || fail "$lost acknowledged entries are lost"
 [ "$kept" -ge "$acknowledged" ] || fail "only $kept of $acknowledged entries are there"
 
@@ -233,9 +238,12 @@ say "It has ended well, and its temporary home is removed."
 
 heading "What to try next"
 cat <<END
-  $shown/undertagd &                  a daemon of your own, with a home that stays
-  $shown/undertag file YOURS.jsonl    JSON Lines with id, title, text and tags
-  $shown/undertag gaps ID --why       what an item lacks, and why
-  $shown/undertag tags list           the vocabulary, with how complete it is
-  $shown/undertag --help              all the rest
+The same with a daemon of your own, whose home stays:
+  $shown/undertagd --home ~/logbooks --socket ~/logbooks.socket &
+  export UNDERTAG_SOCKET=~/logbooks.socket
+  $(dirname "$0")/logbooks.py | $shown/undertag file
+  $shown/undertag tags list
+  echo 'Rockets seen from the bar after supper.' | $shown/undertag gaps --why
+Items of your own are JSON Lines with id, title, text and tags, in place of the
+logbooks. All the rest: $shown/undertag --help
 END

@@ -23,7 +23,7 @@ endif
 BASE_CFLAGS := -std=c17 -D_GNU_SOURCE -I. -fno-strict-aliasing -pthread $(WARNINGS) \
                -DUNDERTAG_VERSION='"$(VERSION)"'
 DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih zlib
-CLIENT_PACKAGES := jansson
+CLIENT_PACKAGES := jansson libutf8proc
 # Asked only where something is compiled, so that `make packages` runs on a bare machine.
 PACKAGE_CFLAGS = $(shell pkg-config --cflags $(DAEMON_PACKAGES))
 DAEMON_LIBS = $(shell pkg-config --libs $(DAEMON_PACKAGES)) -lunistring -lstemmer -lm -pthread

@@ -1,0 +1,33 @@
+#include "client/bar.h"
+
+#include <assert.h>
+#include <math.h>
+#include <string.h>
+
+static double between_0_and_1(double share)
+{
+    if (isnan(share) || share < 0) {
+        return 0;
+    }
+    return share > 1 ? 1 : share;
+}
+
+void bar_draw(double share, unsigned columns, bool unicode, char *bar)
+{
+    /* U+258F (one eighth) to U+2588 (the full block), by eighths. */
+    static const char *const BLOCKS[] = {"",       "\u258F", "\u258E", "\u258D", "\u258C",
+                                         "\u258B", "\u258A", "\u2589", "\u2588"};
+    assert(columns >= 1 && columns <= BAR_COLUMNS_MOST);
+    double part = between_0_and_1(share);
+    unsigned steps = unicode ? 8 : 1; /* steps a column */
+    unsigned full = columns * steps;
+    unsigned length = (unsigned)lround(part * (double)full);
+    if (part > 0 && length == 0) {
+        length = 1;
+    }
+    char *end = bar;
+    for (; length >= steps; length -= steps) {
+        end = stpcpy(end, unicode ? BLOCKS[8] : "#");
+    }
+    strcpy(end, BLOCKS[length]);
+}

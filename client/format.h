@@ -1,0 +1,19 @@
+/*
+ * format: figures as people read them, the same in every locale. Pure.
+ */
+#ifndef UNDERTAG_CLIENT_FORMAT_H
+#define UNDERTAG_CLIENT_FORMAT_H
+
+#include <stdint.h>
+
+enum {
+    FORMAT_BYTES = 32
+};
+
+/* Each writes to `out` (FORMAT_BYTES) and returns it. */
+char *format_count(int64_t count, char *out);     /* 1234567 -> "1,234,567" */
+char *format_size(double bytes, char *out);       /* 1234567 -> "1.2 MB" (powers of 1,000) */
+char *format_duration(double seconds, char *out); /* 3725 -> "1 h 2 min" */
+char *format_share(double share, char *out);      /* .8449 -> "0.84"; 0.004 -> "0.004" */
+
+#endif

@@ -1,0 +1,154 @@
+#include "daemon/learner/model.h"
+
+#include <errno.h>
+#include <math.h>
+#include <stdlib.h>
+
+#include "daemon/grow.h"
+#include "daemon/learner/model_private.h"
+#include "daemon/text/tfidf.h"
+
+/*
+ * A word that no other item holds cannot speak for a tag yet: it takes part only in the length of
+ * x, where it counts for this much. Measured on two corpora, one pass: against 1, tail recall@10
+ * rises by .01 to .015 and PSP@5 by .002 to .007.
+ */
+static const double UNSHARED_WORD_SHARE = 0.5;
+
+int model_new(const struct model_settings *settings, const struct siphash_key *key,
+              struct model **ret_model)
+{
+    struct model *made = calloc(1, sizeof *made);
+    if (!made) {
+        return -ENOMEM;
+    }
+    made->settings = *settings;
+    calibration_init(&made->calibration);
+    if (dictionary_new(key, &made->dictionary) < 0 ||
+        weights_new(&settings->weights, &made->weights) < 0) {
+        model_free(made);
+        return -ENOMEM;
+    }
+    *ret_model = made;
+    return 0;
+}
+
+void model_free(struct model *model)
+{
+    if (!model) {
+        return;
+    }
+    dictionary_free(model->dictionary);
+    weights_free(model->weights);
+    free(model->tags);
+    marks_deinit(&model->changed_words);
+    for (size_t i = 0; i < model->forgotten_count; i++) {
+        free(model->forgotten[i].term);
+    }
+    free(model->forgotten);
+    free(model);
+}
+
+int model_scratch_new(struct model_scratch **ret_scratch)
+{
+    struct model_scratch *made = calloc(1, sizeof *made);
+    if (!made) {
+        return -ENOMEM;
+    }
+    if (weights_scratch_new(&made->weights) < 0) {
+        free(made);
+        return -ENOMEM;
+    }
+    *ret_scratch = made;
+    return 0;
+}
+
+void model_scratch_free(struct model_scratch *scratch)
+{
+    if (!scratch) {
+        return;
+    }
+    weights_scratch_free(scratch->weights);
+    free(scratch->words);
+    free(scratch->values);
+    free(scratch->x);
+    free(scratch->feature_of_x);
+    free(scratch->given);
+    free(scratch->barred);
+    free(scratch->gaps);
+    free(scratch->parts);
+    free(scratch);
+}
+
+int model_reserve_tags(struct model *model, size_t count)
+{
+    if (count <= model->tag_count) {
+        return 0;
+    }
+    if (GROW(&model->tags, &model->tag_capacity, count) < 0 ||
+        weights_reserve_tags(model->weights, count) < 0) {
+        return -ENOMEM;
+    }
+    model->census[0] += (uint32_t)(count - model->tag_count);
+    model->tag_count = count;
+    return 0;
+}
+
+void model_set_tag_counts(struct model *model, uint32_t tag, struct tag_counts counts)
+{
+    model->census[census_bin(model->tags[tag].unprompted)]--;
+    model->census[census_bin(counts.unprompted)]++;
+    model->tags[tag] = counts;
+}
+
+double model_propensity(const struct model *model, uint32_t tag)
+{
+    return propensity_of_curve(&model->settings.curve, (double)model->tags[tag].unprompted,
+                               (double)model->documents);
+}
+
+int model_weigh_features(const struct model *model, const struct feature *features, size_t count,
+                         struct model_scratch *scratch)
+{
+    if (GROW(&scratch->values, &scratch->values_capacity, count) < 0 ||
+        GROW(&scratch->x, &scratch->x_capacity, count) < 0 ||
+        GROW(&scratch->feature_of_x, &scratch->feature_of_x_capacity, count) < 0) {
+        return -ENOMEM;
+    }
+    for (size_t i = 0; i < count; i++) {
+        uint32_t word = scratch->words[i];
+        /* A word that nobody has used yet weighs as one that this item brings in. */
+        double holding =
+            word == DICTIONARY_NONE ? 1.0 : (double)dictionary_count(model->dictionary, word);
+        double share = holding > 1.0 ? 1.0 : UNSHARED_WORD_SHARE;
+        scratch->values[i] = (float)(share * tfidf_frequency_weight((double)features[i].frequency) *
+                                     tfidf_idf((double)model->documents, holding));
+    }
+    tfidf_normalise(scratch->values, count);
+    scratch->x_count = 0;
+    for (size_t i = 0; i < count; i++) {
+        if (scratch->words[i] == DICTIONARY_NONE) {
+            continue;
+        }
+        scratch->feature_of_x[scratch->x_count] = (uint32_t)i;
+        scratch->x[scratch->x_count++] = (struct weights_feature){
+            .word = scratch->words[i],
+            .document_count = dictionary_count(model->dictionary, scratch->words[i]),
+            .value = scratch->values[i]};
+    }
+    return 0;
+}
+
+void model_measure(const struct model *model, struct model_size *ret_size)
+{
+    *ret_size = (struct model_size){.documents = model->documents,
+                                    .words = dictionary_size(model->dictionary),
+                                    .tags = model->tag_count,
+                                    .postings = weights_postings(model->weights),
+                                    .dictionary_bytes = dictionary_bytes(model->dictionary),
+                                    .weights_bytes = weights_bytes(model->weights),
+                                    .counts_bytes =
+                                        sizeof *model + model->tag_capacity * sizeof *model->tags +
+                                        marks_bytes(&model->changed_words) +
+                                        model->forgotten_capacity * sizeof *model->forgotten};
+}

@@ -1,0 +1,314 @@
+#include <errno.h>
+#include <math.h>
+#include <stdlib.h>
+
+#include "daemon/grow.h"
+#include "daemon/learner/model.h"
+#include "daemon/learner/model_private.h"
+
+/* Chances as whole numbers of 2^-40: a million tags of chance 1 still fit. */
+static const double CHANCE_UNIT = 1099511627776.0;
+
+static chance_sum to_sum(double chance)
+{
+    return (chance_sum)llrint(chance * CHANCE_UNIT);
+}
+
+/* How a question turns scores into chances. */
+struct asker {
+    const struct model *model;
+    const struct model_question *question;
+    struct model_scratch *scratch;
+    bool by_prevalence; /* the item holds no word that any tag has a weight for */
+};
+
+/* --- the chance of one tag ----------------------------------------------------------------------
+ */
+
+/* How often the tag truly belongs, whatever the item: its observed share over its propensity. */
+static double prevalence(const struct model *model, uint32_t tag, double propensity)
+{
+    if (model->documents == 0) {
+        return 0.0;
+    }
+    double share = (double)model->tags[tag].unprompted / (double)model->documents;
+    return fmin(share / propensity, 1.0);
+}
+
+static double tag_chance(const struct asker *asker, uint32_t tag, double score)
+{
+    double propensity = model_propensity(asker->model, tag);
+    double belongs = asker->by_prevalence ? prevalence(asker->model, tag, propensity)
+                                          : calibration_chance(&asker->scratch->curve, score);
+    return asker->question->tagged ? propensity_missing_chance(propensity, belongs) : belongs;
+}
+
+/* What follows from the model as it is now, kept in the scratch until the model moves on. */
+static void refresh_curve(const struct model *model, struct model_scratch *scratch)
+{
+    if (scratch->model == model && scratch->version == model->version) {
+        return;
+    }
+    calibration_fit(&model->calibration, &model->settings.curve, (double)model->documents,
+                    &scratch->curve);
+    scratch->rest_belongs = to_sum(scratch->curve.chance[0]);
+    for (size_t b = 0; b < CENSUS_BINS; b++) {
+        double propensity =
+            propensity_of_curve(&model->settings.curve, census_middle(b), (double)model->documents);
+        scratch->rest_missing[b] =
+            to_sum(propensity_missing_chance(propensity, scratch->curve.chance[0]));
+    }
+    scratch->model = model;
+    scratch->version = model->version;
+}
+
+/* --- the sum over all tags ----------------------------------------------------------------------
+ */
+
+/* What a tag at the floor adds to the expected number. */
+static chance_sum rest_chance(const struct asker *asker, uint32_t tag)
+{
+    if (!asker->question->tagged) {
+        return asker->scratch->rest_belongs;
+    }
+    return asker->scratch->rest_missing[census_bin(asker->model->tags[tag].unprompted)];
+}
+
+/* The expected number if every tag were at the floor. */
+static chance_sum rest_of_all(const struct asker *asker)
+{
+    const struct model *model = asker->model;
+    if (!asker->question->tagged) {
+        return asker->scratch->rest_belongs * model->tag_count;
+    }
+    chance_sum sum = 0;
+    for (size_t b = 0; b < CENSUS_BINS; b++) {
+        sum += asker->scratch->rest_missing[b] * model->census[b];
+    }
+    return sum;
+}
+
+/* Marks what may not be proposed; returns what those tags would add at the floor. */
+static chance_sum bar_tags(const struct asker *asker, const uint32_t *tags, size_t count)
+{
+    chance_sum sum = 0;
+    for (size_t i = 0; i < count; i++) {
+        if (tags[i] < asker->model->tag_count && !asker->scratch->barred[tags[i]]) {
+            asker->scratch->barred[tags[i]] = 1;
+            sum += rest_chance(asker, tags[i]);
+        }
+    }
+    return sum;
+}
+
+static void unbar_tags(const struct asker *asker, const uint32_t *tags, size_t count)
+{
+    for (size_t i = 0; i < count; i++) {
+        if (tags[i] < asker->model->tag_count) {
+            asker->scratch->barred[tags[i]] = 0;
+        }
+    }
+}
+
+/* --- candidates ---------------------------------------------------------------------------------
+ */
+
+static int add_candidate(const struct asker *asker, uint32_t tag, double score, double chance,
+                         size_t *count)
+{
+    struct model_scratch *scratch = asker->scratch;
+    if (GROW(&scratch->gaps, &scratch->gap_capacity, *count + 1) < 0) {
+        return -ENOMEM;
+    }
+    struct model_gap *gap = &scratch->gaps[(*count)++];
+    gap->tag = tag;
+    gap->chance = chance;
+    gap->score = score;
+    gap->word_count = 0;
+    return 0;
+}
+
+/* The tags above the floor, and the expected number over all. */
+static int gather_touched(const struct asker *asker, chance_sum barred_rest, size_t *ret_count,
+                          chance_sum *ret_expected)
+{
+    chance_sum expected = rest_of_all(asker) - barred_rest;
+    size_t touched_count = 0;
+    const uint32_t *touched = weights_touched(asker->scratch->weights, &touched_count);
+    for (size_t i = 0; i < touched_count; i++) {
+        uint32_t tag = touched[i];
+        double score =
+            (double)weights_tag_score(asker->model->weights, asker->scratch->weights, tag);
+        if (asker->scratch->barred[tag] || score <= CALIBRATION_FLOOR_SCORE) {
+            continue;
+        }
+        double chance = tag_chance(asker, tag, score);
+        expected += to_sum(chance) - rest_chance(asker, tag);
+        if (chance >= asker->question->floor &&
+            add_candidate(asker, tag, score, chance, ret_count) < 0) {
+            return -ENOMEM;
+        }
+    }
+    *ret_expected = expected;
+    return 0;
+}
+
+/*
+ * Every tag that may be proposed, one by one: for an item without a known word, and where a floor
+ * of next to nothing asks for more tags than the item touches. Tags above the floor score are left
+ * out when they have been gathered before.
+ */
+static int gather_every(const struct asker *asker, bool touched_too, size_t *ret_count,
+                        chance_sum *ret_sum)
+{
+    chance_sum sum = 0;
+    for (uint32_t tag = 0; tag < asker->model->tag_count; tag++) {
+        double score =
+            (double)weights_tag_score(asker->model->weights, asker->scratch->weights, tag);
+        if (asker->scratch->barred[tag] || (!touched_too && score > CALIBRATION_FLOOR_SCORE)) {
+            continue;
+        }
+        double chance = tag_chance(asker, tag, score);
+        sum += to_sum(chance);
+        if (chance >= asker->question->floor &&
+            add_candidate(asker, tag, score, chance, ret_count) < 0) {
+            return -ENOMEM;
+        }
+    }
+    *ret_sum = sum;
+    return 0;
+}
+
+static int gather(const struct asker *asker, chance_sum barred_rest, size_t *ret_count,
+                  chance_sum *ret_expected)
+{
+    if (asker->by_prevalence) {
+        return gather_every(asker, true, ret_count, ret_expected);
+    }
+    int result = gather_touched(asker, barred_rest, ret_count, ret_expected);
+    if (result == 0 && *ret_count < asker->question->most &&
+        asker->question->floor <= asker->scratch->curve.chance[0]) {
+        chance_sum counted_already = 0;
+        result = gather_every(asker, false, ret_count, &counted_already);
+    }
+    return result;
+}
+
+/* By falling chance, then score; the tag's number makes the order the same every time. */
+static int compare_gaps(const void *left, const void *right)
+{
+    const struct model_gap *a = left;
+    const struct model_gap *b = right;
+    if (a->chance != b->chance) {
+        return a->chance > b->chance ? -1 : 1;
+    }
+    if (a->score != b->score) {
+        return a->score > b->score ? -1 : 1;
+    }
+    return a->tag < b->tag ? -1 : a->tag > b->tag;
+}
+
+/* --- the words that speak for a tag -------------------------------------------------------------
+ */
+
+/* Puts a word into its place among the gap's words, by falling share; the last one may drop out. */
+static void insert_word(struct model_gap *gap, uint32_t feature, double share)
+{
+    size_t at = gap->word_count;
+    if (at < MODEL_WHY_WORDS) {
+        gap->word_count++;
+    } else if (gap->words[--at].share >= share) {
+        return;
+    }
+    while (at > 0 && gap->words[at - 1].share < share) {
+        gap->words[at] = gap->words[at - 1];
+        at--;
+    }
+    gap->words[at].feature = feature;
+    gap->words[at].share = share;
+}
+
+static void explain_gap(const struct asker *asker, struct model_gap *gap, const float *parts)
+{
+    double positive = fmax((double)weights_bias(asker->model->weights, gap->tag).value, 0.0);
+    for (size_t i = 0; i < asker->scratch->x_count; i++) {
+        positive += fmax((double)parts[i], 0.0);
+    }
+    for (size_t i = 0; i < asker->scratch->x_count; i++) {
+        if (parts[i] > 0.0F) {
+            insert_word(gap, asker->scratch->feature_of_x[i], (double)parts[i] / positive);
+        }
+    }
+}
+
+static int explain(const struct asker *asker, size_t gap_count)
+{
+    struct model_scratch *scratch = asker->scratch;
+    uint32_t tags[MODEL_MOST_GAPS];
+    for (size_t i = 0; i < gap_count; i++) {
+        tags[i] = scratch->gaps[i].tag;
+    }
+    if (GROW(&scratch->parts, &scratch->parts_capacity, gap_count * scratch->x_count) < 0) {
+        return -ENOMEM;
+    }
+    weights_explain(asker->model->weights, scratch->x, scratch->x_count, tags, gap_count,
+                    scratch->weights, scratch->parts);
+    for (size_t i = 0; i < gap_count; i++) {
+        explain_gap(asker, &scratch->gaps[i], scratch->parts + i * scratch->x_count);
+    }
+    return 0;
+}
+
+/* --- the question -------------------------------------------------------------------------------
+ */
+
+static int score_question(const struct model *model, const struct model_question *question,
+                          struct model_scratch *scratch)
+{
+    if (GROW(&scratch->words, &scratch->words_capacity, question->feature_count) < 0 ||
+        GROW(&scratch->barred, &scratch->barred_capacity, model->tag_count) < 0) {
+        return -ENOMEM;
+    }
+    for (size_t i = 0; i < question->feature_count; i++) {
+        scratch->words[i] = dictionary_find(model->dictionary, question->features[i].term,
+                                            question->features[i].term_bytes);
+    }
+    if (model_weigh_features(model, question->features, question->feature_count, scratch) < 0) {
+        return -ENOMEM;
+    }
+    return weights_score(model->weights, scratch->x, scratch->x_count, scratch->weights);
+}
+
+int model_ask(const struct model *model, const struct model_question *question,
+              struct model_scratch *scratch, struct model_answer *ret_answer)
+{
+    if (score_question(model, question, scratch) < 0) {
+        return -ENOMEM;
+    }
+    refresh_curve(model, scratch);
+    struct asker asker = {.model = model,
+                          .question = question,
+                          .scratch = scratch,
+                          .by_prevalence =
+                              !weights_speak(model->weights, scratch->x, scratch->x_count)};
+    size_t count = 0;
+    chance_sum expected = 0;
+    chance_sum barred_rest = bar_tags(&asker, question->given, question->given_count) +
+                             bar_tags(&asker, question->excluded, question->excluded_count);
+    int result = gather(&asker, barred_rest, &count, &expected);
+    unbar_tags(&asker, question->given, question->given_count);
+    unbar_tags(&asker, question->excluded, question->excluded_count);
+    if (result < 0) {
+        return result;
+    }
+    qsort(scratch->gaps, count, sizeof *scratch->gaps, compare_gaps);
+    size_t shown = count < question->most ? count : question->most;
+    if (question->why && shown > 0 && explain(&asker, shown) < 0) {
+        return -ENOMEM;
+    }
+    *ret_answer = (struct model_answer){.gaps = scratch->gaps,
+                                        .gap_count = shown,
+                                        .expected = (double)expected / CHANCE_UNIT,
+                                        .early = scratch->curve.early};
+    return 0;
+}

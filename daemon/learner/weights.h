@@ -1,0 +1,158 @@
+/*
+ * weights: the linear scorer of every tag, kept by word: a word's postings are its (tag, weight)
+ * pairs, so that an item visits only the postings of its own words.
+ *
+ *   s_l(x) = -1 + b_l + Σ_i w_il·x_i
+ *
+ * The base of -1 makes a tag that shares nothing with the item, and has no bias, exactly satisfied
+ * as a negative; so an example touches its own tags and those with a score above the floor, no
+ * others. Only a tag that an item has may create a weight. Learning is AdaGrad (Duchi et al. 2011)
+ * with the importance-aware step of surrogate.h.
+ *
+ * Nothing here is locked: many threads may score (each with its own scratch) while none learns.
+ */
+#ifndef UNDERTAG_WEIGHTS_H
+#define UNDERTAG_WEIGHTS_H
+
+#include <stdbool.h>
+#include <stddef.h>
+#include <stdint.h>
+
+#include "daemon/learner/marks.h"
+#include "daemon/learner/postings.h"
+#include "daemon/learner/surrogate.h"
+
+struct weights_settings {
+    enum surrogate surrogate;
+    double step; /* η above 0; an item whose vocabulary is large may use another, see _learn */
+    /* A word creates a weight for a tag only while its document count is at most this many times
+     * the tag's count; 0 for no such rule. */
+    double specificity;
+};
+
+/* One feature of x. Numbers are small and dense, so that arrays may be indexed by them. */
+struct weights_feature {
+    uint32_t word;
+    uint32_t document_count; /* items that hold the word, this one included */
+    float value;
+};
+
+/* A tag that the item has. */
+struct weights_given {
+    uint32_t tag;
+    uint32_t tag_count; /* items that have the tag, this one included */
+    double factor;      /* how many times the pair counts, >= 0 */
+};
+
+enum {
+    /* Postings are stored by chunks of this many: a record of 12 bytes each stays in a leaf page.
+     */
+    WEIGHTS_CHUNK_POSTINGS = POSTINGS_CHUNK
+};
+
+struct weights;
+struct weights_scratch;
+
+/* Above this score a tag is a rival of the item's own: it is scored, learned and proposed. */
+#define WEIGHTS_FLOOR_SCORE (-0.98F)
+
+int weights_new(const struct weights_settings *settings, struct weights **ret_weights)
+    __attribute__((warn_unused_result));
+void weights_free(struct weights *weights);
+
+/* Makes room for tags below `count`, their bias 0. Returns 0 or -ENOMEM. */
+int weights_reserve_tags(struct weights *weights, size_t count) __attribute__((warn_unused_result));
+
+/* Postings held, over all words. */
+uint64_t weights_postings(const struct weights *weights);
+
+/* Bytes held in memory. */
+uint64_t weights_bytes(const struct weights *weights);
+
+int weights_scratch_new(struct weights_scratch **ret_scratch) __attribute__((warn_unused_result));
+void weights_scratch_free(struct weights_scratch *scratch);
+
+/*
+ * Scores x (L2-normalised, no word twice) against every tag that it touches: those with a posting
+ * of one of its words and those whose bias alone lifts them above the floor. The touched tags and
+ * their sums stay in the scratch until its next use. Returns 0 or -ENOMEM.
+ */
+int weights_score(const struct weights *weights, const struct weights_feature *x, size_t count,
+                  struct weights_scratch *scratch) __attribute__((warn_unused_result));
+
+/* The touched tags, in no order; valid until the scratch is used again. */
+const uint32_t *weights_touched(const struct weights_scratch *scratch, size_t *ret_count);
+
+bool weights_is_touched(const struct weights_scratch *scratch, uint32_t tag);
+
+/* Whether any word of x has a weight for any tag. */
+bool weights_speak(const struct weights *weights, const struct weights_feature *x, size_t count);
+
+/* s_l of any tag, after weights_score: a touched one's score, otherwise -1 + b_l. */
+float weights_tag_score(const struct weights *weights, const struct weights_scratch *scratch,
+                        uint32_t tag);
+
+/*
+ * What each feature adds to each tag's score: parts[k·count + i] = w_il·x_i for l = tags[k], 0
+ * where there is no weight. `tags` holds no tag twice, each below the reserved number of tags. Uses
+ * the scratch, whose scores stay.
+ */
+void weights_explain(const struct weights *weights, const struct weights_feature *x, size_t count,
+                     const uint32_t *tags, size_t tag_count, struct weights_scratch *scratch,
+                     float *parts);
+
+/*
+ * Learns the item that the scratch has just scored: `given` are its tags (none twice), all others
+ * are negatives that count once. `step` is η for this item. Returns 0 or -ENOMEM; after that the
+ * weights are as far as the example got and must not be used any more.
+ */
+int weights_learn(struct weights *weights, const struct weights_feature *x, size_t count,
+                  const struct weights_given *given, size_t given_count, double step,
+                  struct weights_scratch *scratch) __attribute__((warn_unused_result));
+
+/* Forgets a word with all its postings. */
+void weights_forget_word(struct weights *weights, uint32_t word);
+
+/* --- for those who store the weights ------------------------------------------------------------
+ * What has changed since the last weights_clean is marked, chunk by chunk and tag by tag. */
+
+struct weights_chunk {
+    uint32_t word;
+    uint32_t number; /* of the word's chunks, from 0 */
+    uint32_t count;
+    const uint32_t *tags;
+    const float *values;
+    const float *accumulators;
+};
+
+/* Calls `each` for every changed chunk; anything but 0 ends it and is returned. */
+int weights_changed_chunks(const struct weights *weights,
+                           int (*each)(void *user, const struct weights_chunk *chunk), void *user)
+    __attribute__((warn_unused_result));
+
+/* A tag's bias b_l and its accumulator, to be stored when the tag is among the changed ones. */
+struct weights_bias {
+    float value;
+    float accumulator;
+};
+
+struct weights_bias weights_bias(const struct weights *weights, uint32_t tag);
+
+/* The tags that have changed: their bias, or what the owner has marked; weights_clean empties it.
+ */
+const struct marks *weights_changed_tags(const struct weights *weights);
+
+/* Marks a tag as changed for a reason of the owner's. Returns 0 or -ENOMEM. */
+int weights_mark_tag(struct weights *weights, uint32_t tag) __attribute__((warn_unused_result));
+
+/* Marks everything as stored. */
+void weights_clean(struct weights *weights);
+
+/* Puts back what was stored: a word's chunks in their order. Nothing is marked as changed.
+ * Returns 0, -ENOMEM, or -EINVAL for a chunk out of order or over the size. */
+int weights_restore_chunk(struct weights *weights, const struct weights_chunk *chunk)
+    __attribute__((warn_unused_result));
+int weights_restore_bias(struct weights *weights, uint32_t tag, struct weights_bias bias)
+    __attribute__((warn_unused_result));
+
+#endif

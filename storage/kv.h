@@ -1,0 +1,113 @@
+/*
+ * kv: ordered tables of bytes in one LMDB environment. The only file that knows LMDB.
+ *
+ * One environment a directory and process. Any number of threads may read, each in a transaction of
+ * its own; one thread writes at a time. Bytes handed out point into the map and are valid until the
+ * transaction ends or, in a writing one, until its next write. No transaction may outlive one job.
+ *
+ * A commit that fails because there is no room (map or disk) leaves everything as it was and may be
+ * tried again; one that fails otherwise may have left the file in doubt: the environment then
+ * refuses every later write with STORE_BROKEN until it is opened anew.
+ */
+#ifndef UNDERTAG_KV_H
+#define UNDERTAG_KV_H
+
+#include <stdbool.h>
+#include <stddef.h>
+#include <stdint.h>
+
+#include "storage/store_error.h"
+
+struct kv;
+struct kv_txn;
+struct kv_cursor;
+
+struct kv_bytes {
+    const void *data;
+    size_t size;
+};
+
+enum {
+    KV_KEY_BYTES = 511,    /* the longest key */
+    KV_VALUE_BYTES = 2000, /* a larger value leaves its leaf page: callers cut it into pieces */
+    KV_TABLES = 16         /* at most */
+};
+
+struct kv_settings {
+    const char *directory;     /* made if it is not there (its parent must be) */
+    size_t map_bytes;          /* the most that the environment may grow to */
+    size_t reserve_bytes;      /* room on the disk that commits leave free */
+    const char *const *tables; /* names; a table is then named by its place in the list */
+    unsigned table_count;
+};
+
+/* Opens or makes the environment with its tables. */
+int kv_open(const struct kv_settings *settings, struct kv **ret_kv, struct store_error *error)
+    __attribute__((warn_unused_result));
+void kv_close(struct kv *kv);
+
+/* Bytes of the file. */
+uint64_t kv_file_bytes(const struct kv *kv);
+
+/* Frees the places of readers that died. */
+void kv_check_readers(struct kv *kv);
+
+int kv_begin(struct kv *kv, bool write, struct kv_txn **ret_txn, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/* Ends the transaction in either case. A commit of a writing transaction is durable on return. */
+int kv_commit(struct kv_txn *txn, struct store_error *error) __attribute__((warn_unused_result));
+void kv_abort(struct kv_txn *txn);
+
+/* STORE_NOT_FOUND is returned without a sentence: it is an answer. */
+int kv_get(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv_bytes *ret_value,
+           struct store_error *error) __attribute__((warn_unused_result));
+int kv_put(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv_bytes value,
+           struct store_error *error) __attribute__((warn_unused_result));
+
+/* The same for a key behind all others of its table, which fills pages better. */
+int kv_append(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv_bytes value,
+              struct store_error *error) __attribute__((warn_unused_result));
+
+/* STORE_NOT_FOUND where there was nothing. */
+int kv_delete(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/* Empties a table. */
+int kv_clear(struct kv_txn *txn, unsigned table, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+int kv_count(struct kv_txn *txn, unsigned table, uint64_t *ret_count, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/*
+ * Calls `each` for the entries from `from` on (the first at or behind it; an empty key: the very
+ * first), in the order of their keys, until it returns anything but 0, which is returned. `each`
+ * may delete the entry it is called with, in a writing transaction, by kv_walk_delete.
+ */
+typedef int (*kv_each)(void *user, struct kv_cursor *at, struct kv_bytes key,
+                       struct kv_bytes value);
+int kv_walk(struct kv_txn *txn, unsigned table, struct kv_bytes from, kv_each each, void *user,
+            struct store_error *error) __attribute__((warn_unused_result));
+int kv_walk_delete(struct kv_cursor *at, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/* The entry with the greatest key; STORE_NOT_FOUND in an empty table. */
+int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
+            struct kv_bytes *ret_value, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/*
+ * Overwrites pages that no longer belong to anything, so that what was erased is gone from the file
+ * as well: at most `most_pages` a call. `scratch_table` must be empty and is again afterwards.
+ * Says how many pages are left to do; call again, in a transaction of its own each, until 0.
+ */
+int kv_scrub(struct kv *kv, unsigned scratch_table, size_t most_pages, size_t *ret_left,
+             struct store_error *error) __attribute__((warn_unused_result));
+
+static inline struct kv_bytes kv_bytes_of(const void *data, size_t size)
+{
+    return (struct kv_bytes){.data = data, .size = size};
+}
+
+#endif

@@ -98,6 +98,10 @@ int main(int argc, char **argv)
         fputs("text_bench: cannot read the texts\n", stderr);
         goto out;
     }
+    if (counts.items == 0) {
+        fputs("text_bench: there is no text on standard input\n", stderr);
+        goto out;
+    }
     double start_s = now_s();
     counts = (struct counts){0};
     for (int round = 0; round < ROUNDS; round++) {
@@ -107,10 +111,10 @@ int main(int argc, char **argv)
         }
     }
     double seconds = now_s() - start_s;
-    printf("%zu items of %.0f bytes, %.1f words, %.1f terms; %zu with too many terms\n",
-           counts.items / ROUNDS, (double)texts.bytes / (double)(counts.items / ROUNDS),
-           counts.words / (double)counts.items, (double)counts.terms / (double)counts.items,
-           counts.too_many / ROUNDS);
+    size_t items = counts.items / ROUNDS;
+    printf("%zu items of %.0f bytes, %.1f words, %.1f terms; %zu with too many terms\n", items,
+           (double)texts.bytes / (double)items, counts.words / (double)counts.items,
+           (double)counts.terms / (double)counts.items, counts.too_many / ROUNDS);
     printf("%.1f MB/s, %.2f million words/s, %.0f items/s\n",
            (double)texts.bytes * ROUNDS / seconds / 1e6, counts.words / seconds / 1e6,
            (double)counts.items / seconds);

@@ -42,22 +42,30 @@ unsigned args_distance(const char *a, const char *b)
     if (a_length >= WORD_BYTES || b_length >= WORD_BYTES) {
         return WORD_BYTES;
     }
-    unsigned row[WORD_BYTES];
+    unsigned rows[3][WORD_BYTES]; /* of i, i - 1 and i - 2, each at i % 3 */
     for (size_t j = 0; j <= b_length; j++) {
-        row[j] = (unsigned)j;
+        rows[0][j] = (unsigned)j;
     }
     for (size_t i = 1; i <= a_length; i++) {
-        unsigned diagonal = row[0];
+        unsigned *row = rows[i % 3];
+        const unsigned *above = rows[(i + 2) % 3];
         row[0] = (unsigned)i;
         for (size_t j = 1; j <= b_length; j++) {
-            unsigned above = row[j];
-            unsigned replaced = diagonal + (a[i - 1] != b[j - 1] ? 1U : 0U);
-            unsigned moved = (row[j - 1] < above ? row[j - 1] : above) + 1U;
+            unsigned replaced = above[j - 1] + (a[i - 1] != b[j - 1] ? 1U : 0U);
+            unsigned moved = (row[j - 1] < above[j] ? row[j - 1] : above[j]) + 1U;
             row[j] = replaced < moved ? replaced : moved;
-            diagonal = above;
+            if (i > 1 && j > 1 && a[i - 1] == b[j - 2] && a[i - 2] == b[j - 1]) {
+                unsigned swapped = rows[(i + 1) % 3][j - 2] + 1U;
+                row[j] = swapped < row[j] ? swapped : row[j];
+            }
         }
     }
-    return row[b_length];
+    return rows[a_length % 3][b_length];
+}
+
+bool args_is_near(const char *given, const char *known)
+{
+    return args_distance(given, known) <= (strlen(known) < 8 ? 1U : 2U);
 }
 
 static int append(const char ***list, size_t *count, const char *word)
@@ -94,25 +102,21 @@ static int fail_unknown(struct args *const *levels, size_t level_count, const ch
                         const char *hint, struct failure *failure)
 {
     size_t length = strcspn(given, "=");
-    const char *nearest = NULL;
-    unsigned least = 3; /* what is further away is another word */
+    const char *near = NULL;
     char name[WORD_BYTES] = "";
     if (length > 2 && length - 2 < sizeof name) {
         memcpy(name, given + 2, length - 2);
         for (size_t level = 0; level < level_count; level++) {
             for (size_t i = 0; i < levels[level]->option_count; i++) {
-                unsigned distance = args_distance(name, levels[level]->options[i].name);
-                if (distance < least) {
-                    least = distance;
-                    nearest = levels[level]->options[i].name;
-                }
+                const char *known = levels[level]->options[i].name;
+                near = args_is_near(name, known) ? known : near;
             }
         }
     }
     int shown = length < VALUE_BYTES ? (int)length : VALUE_BYTES;
-    if (nearest) {
+    if (near) {
         return failure_set(failure, FAILURE_USAGE,
-                           "there is no option %.*s here; is --%s meant? %s", shown, given, nearest,
+                           "there is no option %.*s here (is --%s meant?); %s", shown, given, near,
                            hint);
     }
     return failure_set(failure, FAILURE_USAGE, "there is no option %.*s here; %s", shown, given,
@@ -166,7 +170,7 @@ static int read_choice(const struct args_option *option, const char *text, struc
         }
         word += bytes + (word[bytes] == '|' ? 1 : 0);
     }
-    return failure_set(failure, FAILURE_USAGE, "--%s takes one of %s, not '%.*s'", option->name,
+    return failure_set(failure, FAILURE_USAGE, "--%s takes %s, not '%.*s'", option->name,
                        option->value, VALUE_BYTES, text);
 }
 

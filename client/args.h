@@ -76,9 +76,13 @@ int args_parse(struct args *const *levels, size_t level_count, struct args_curso
 void args_help(const struct args_option *options, size_t option_count, FILE *stream);
 
 /*
- * How many single-character changes turn one word into the other (Levenshtein distance), for "did
- * you mean"; words of more than 31 bytes are far from everything.
+ * How many characters must be put in, left out, replaced or swapped with their neighbour to turn
+ * one word into the other (the optimal string alignment distance). Words of more than 31 bytes are
+ * far from everything.
  */
 unsigned args_distance(const char *a, const char *b);
+
+/* True if `given` looks like a slip of the hand for `known`. */
+bool args_is_near(const char *given, const char *known);
 
 #endif

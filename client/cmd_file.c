@@ -246,7 +246,7 @@ static void tell_waiting(void *user, const char *reason, unsigned wait_ms)
     struct telling *telling = user;
     progress_clear(&telling->progress);
     command_complain(telling->client,
-                     "the store does not take items now: %s Trying again in %.1f s", reason,
+                     "the store does not take items now: %s; trying again in %.2g s", reason,
                      wait_ms / 1000.0);
 }
 
@@ -265,8 +265,8 @@ static int fail_open(const char *path, int error, struct failure *failure)
  * Looks at all inputs before anything is filed: each can be read. *ret_total: their bytes, 0 where
  * that is not known.
  */
-static int look_at(const char *const *paths, size_t count, uint64_t *ret_total,
-                   struct failure *failure)
+static int look_at(const struct client *client, const char *const *paths, size_t count,
+                   uint64_t *ret_total, struct failure *failure)
 {
     uint64_t total = 0;
     bool known = true;
@@ -275,6 +275,9 @@ static int look_at(const char *const *paths, size_t count, uint64_t *ret_total,
         bool input = is_input(paths[i]);
         if (input ? fstat(STDIN_FILENO, &found) : stat(paths[i], &found)) {
             return fail_open(paths[i], errno, failure);
+        }
+        if (input && isatty(STDIN_FILENO) == 1 && client->err.terminal) {
+            (void)fprintf(client->err.stream, "Reading JSON Lines; end them with Ctrl-D.\n");
         }
         if (S_ISDIR(found.st_mode)) {
             return fail_open(paths[i], EISDIR, failure);
@@ -358,8 +361,9 @@ static int fail_broken(const struct feed_counts *counts, int code, struct failur
     return code;
 }
 
+/* `total` as look_at gives it. */
 static int file_paths(const struct client *client, struct wire *wire, const char *const *paths,
-                      size_t count, struct failure *failure)
+                      size_t count, uint64_t total, struct failure *failure)
 {
     struct telling telling = {.client = client};
     struct feed_settings settings = {.window_lines = 512,
@@ -374,11 +378,7 @@ static int file_paths(const struct client *client, struct wire *wire, const char
                                      .waiting = tell_waiting};
     struct screen progress_screen = client->err;
     struct feed *feed = NULL;
-    uint64_t total = 0;
-    int code = look_at(paths, count, &total, failure);
-    if (!code) {
-        code = ask_limit(wire, &settings.line_limit_bytes, failure);
-    }
+    int code = ask_limit(wire, &settings.line_limit_bytes, failure);
     if (!code) {
         code = feed_new(wire, &settings, &hooks, &feed, failure);
     }
@@ -426,11 +426,16 @@ static int run(struct client *client, const struct args *args, struct failure *f
                                args->options[i].name);
         }
     }
+    const char *const *paths = args->word_count > 0 ? args->words : INPUT;
+    size_t count = args->word_count > 0 ? args->word_count : 1;
+    uint64_t total = 0;
     struct wire *wire = NULL;
-    int code = wire_open(client->socket_path, &wire, failure);
+    int code = look_at(client, paths, count, &total, failure);
     if (!code) {
-        code = file_paths(client, wire, args->word_count > 0 ? args->words : INPUT,
-                          args->word_count > 0 ? args->word_count : 1, failure);
+        code = wire_open(client->socket_path, &wire, failure);
+    }
+    if (!code) {
+        code = file_paths(client, wire, paths, count, total, failure);
     }
     wire_free(wire);
     return code;
@@ -444,7 +449,7 @@ const struct command command_file = {
         "Files items from JSON Lines, in files or on standard input (also as '-'). Each line is an "
         "object:\n"
         "\n"
-        "  {\"id\": \"log/1911/042\", \"title\": \"Fog at noon\", \"text\": \"...\", \"tags\": "
+        "  {\"id\": \"log/42\", \"title\": \"Fog at noon\", \"text\": \"...\", \"tags\": "
         "[\"fog\"]}\n"
         "\n"
         "and may hold fields, language, tagger, filed_at, prompted and declined besides. A line "

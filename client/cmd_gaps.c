@@ -20,7 +20,8 @@ enum {
 enum {
     DRAFT_BYTES = 8 * 1024 * 1024, /* the daemon's own limit is lower; this one bounds memory */
     BAR_COLUMNS = 20,
-    CELL_BYTES = 1024
+    CELL_BYTES = 1024,
+    SENTENCE_BYTES = 512
 };
 
 static const struct args_option OPTIONS[] = {
@@ -209,10 +210,12 @@ static int print_answer(const struct client *client, const json_t *result, const
         return -1;
     }
     char learned[FORMAT_BYTES];
-    (void)fprintf(stream, "\nExpected number of tags %s: %.1f, as learned up to change %s.\n",
-                  has_tags ? "missing" : "in all", command_number(result, "expected"),
-                  format_count(command_whole(result, "learned"), learned));
-    return 0;
+    char sentence[SENTENCE_BYTES];
+    (void)snprintf(sentence, sizeof sentence,
+                   "\nExpected number of tags %s: %.1f, as learned up to change %s.",
+                   has_tags ? "missing" : "in all", command_number(result, "expected"),
+                   format_count(command_whole(result, "learned"), learned));
+    return facts_text(&client->out, sentence, 0);
 }
 
 static int run(struct client *client, const struct args *args, struct failure *failure)

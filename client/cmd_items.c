@@ -14,7 +14,7 @@
 /* Prints a fact unless its value is empty. */
 static int fact(const struct client *client, const char *name, const char *value)
 {
-    return *value ? facts_print(&client->out, name, value) : 0;
+    return *value ? facts_print(&client->out, FACTS_NAME_COLUMNS, name, value) : 0;
 }
 
 /* Prints the texts of an array, one a line behind the name. */
@@ -25,7 +25,7 @@ static int fact_list(const struct client *client, const char *name, const json_t
     json_array_foreach(list, i, entry)
     {
         const char *text = json_string_value(entry);
-        if (text && facts_print(&client->out, i == 0 ? name : "", text)) {
+        if (text && facts_print(&client->out, FACTS_NAME_COLUMNS, i == 0 ? name : "", text)) {
             return -1;
         }
     }
@@ -40,7 +40,8 @@ static int print_field(const struct client *client, const char *label, const cha
         return -1;
     }
     const char *plain = json_string_value(value);
-    int result = facts_printf(&client->out, label, "%s = %s", name, plain ? plain : text);
+    int result = facts_printf(&client->out, FACTS_NAME_COLUMNS, label, "%s = %s", name,
+                              plain ? plain : text);
     free(text);
     return result;
 }
@@ -75,8 +76,8 @@ static int print_checked(const struct client *client, const json_t *checked)
         return 0;
     }
     const char *drawn = command_text(checked, "drawn");
-    return facts_printf(&client->out, "checked", "%s%s%s", command_text(checked, "at"),
-                        *drawn ? ", drawn " : "", drawn);
+    return facts_printf(&client->out, FACTS_NAME_COLUMNS, "checked", "%s%s%s",
+                        command_text(checked, "at"), *drawn ? ", drawn " : "", drawn);
 }
 
 /* "2031-05-04T10:00:00Z by keeper-3", or one of both, or "". */
@@ -87,8 +88,8 @@ static int print_filed(const struct client *client, const json_t *item)
     if (!*at && !*tagger) {
         return 0;
     }
-    return facts_printf(&client->out, "filed", "%s%s%s%s", at, *at && *tagger ? " " : "",
-                        *tagger ? "by " : "", tagger);
+    return facts_printf(&client->out, FACTS_NAME_COLUMNS, "filed", "%s%s%s%s", at,
+                        *at && *tagger ? " " : "", *tagger ? "by " : "", tagger);
 }
 
 /* True where the tags filed are, as a set, not the current ones. */
@@ -119,15 +120,16 @@ static int print_item(const struct client *client, const json_t *item)
     char seq[FORMAT_BYTES];
     if (fact(client, "id", command_text(item, "id")) ||
         fact(client, "title", command_text(item, "title")) || print_filed(client, item) ||
-        facts_printf(&client->out, "stored", "%s%schange %s", command_text(item, "stored_at"),
-                     *command_text(item, "stored_at") ? ", " : "",
+        facts_printf(&client->out, FACTS_NAME_COLUMNS, "stored", "%s%schange %s",
+                     command_text(item, "stored_at"), *command_text(item, "stored_at") ? ", " : "",
                      format_count(command_whole(item, "seq"), seq)) ||
         fact(client, "language", command_text(item, "language")) ||
         print_fields(client, json_object_get(item, "fields"))) {
         return -1;
     }
-    int result = json_array_size(tags) > 0 ? fact_list(client, "tags", tags)
-                                           : facts_print(&client->out, "tags", "none");
+    int result = json_array_size(tags) > 0
+                     ? fact_list(client, "tags", tags)
+                     : facts_print(&client->out, FACTS_NAME_COLUMNS, "tags", "none");
     if (result || (differs(filed, tags) && fact_list(client, "as filed", filed)) ||
         fact_list(client, "ruled in", json_object_get(item, "belongs")) ||
         fact_list(client, "ruled out", json_object_get(item, "not")) ||
@@ -201,7 +203,7 @@ static int withdraw(struct client *client, struct wire *wire, const char *id,
         command_print_json(client, &answer);
     } else {
         char seq[FORMAT_BYTES];
-        code = facts_printf(&client->out, "withdrawn", "%s (change %s)", id,
+        code = facts_printf(&client->out, FACTS_NAME_COLUMNS, "withdrawn", "%s (change %s)", id,
                             format_count(command_whole(answer.result, "seq"), seq));
         code = code ? failure_memory(failure) : 0;
     }

@@ -9,27 +9,32 @@
 #include "client/facts.h"
 #include "client/format.h"
 
+enum {
+    NAME_COLUMNS = 26 /* settings have long names */
+};
+
 /* A value of any kind as one line; objects and arrays as JSON. -1: no memory. */
 static int print_value(const struct client *client, const char *name, const json_t *value)
 {
     char figure[FORMAT_BYTES];
     if (json_is_string(value)) {
-        return facts_print(&client->out, name, json_string_value(value));
+        return facts_print(&client->out, NAME_COLUMNS, name, json_string_value(value));
     }
     if (json_is_integer(value)) {
-        return facts_print(&client->out, name, format_count(json_integer_value(value), figure));
+        return facts_print(&client->out, NAME_COLUMNS, name,
+                           format_count(json_integer_value(value), figure));
     }
     if (json_is_real(value)) {
-        return facts_printf(&client->out, name, "%.6g", json_real_value(value));
+        return facts_printf(&client->out, NAME_COLUMNS, name, "%.6g", json_real_value(value));
     }
     if (json_is_boolean(value)) {
-        return facts_print(&client->out, name, json_is_true(value) ? "yes" : "no");
+        return facts_print(&client->out, NAME_COLUMNS, name, json_is_true(value) ? "yes" : "no");
     }
     if (json_is_null(value)) {
-        return facts_print(&client->out, name, "none");
+        return facts_print(&client->out, NAME_COLUMNS, name, "none");
     }
     char *text = json_dumps(value, JSON_COMPACT);
-    int result = text ? facts_print(&client->out, name, text) : -1;
+    int result = text ? facts_print(&client->out, NAME_COLUMNS, name, text) : -1;
     free(text);
     return result;
 }
@@ -45,10 +50,12 @@ static int print_member(const struct client *client, const char *name, const jso
 {
     char figure[FORMAT_BYTES];
     if (unit == UNIT_BYTES && json_is_number(value)) {
-        return facts_print(&client->out, name, format_size(json_number_value(value), figure));
+        return facts_print(&client->out, NAME_COLUMNS, name,
+                           format_size(json_number_value(value), figure));
     }
     if (unit == UNIT_PER_SECOND && json_is_number(value)) {
-        return facts_printf(&client->out, name, "%.1f a second", json_number_value(value));
+        return facts_printf(&client->out, NAME_COLUMNS, name, "%.1f a second",
+                            json_number_value(value));
     }
     return print_value(client, name, value);
 }
@@ -91,7 +98,7 @@ static int print_counts(const struct client *client, const json_t *state)
     char seq[FORMAT_BYTES];
     char learned[FORMAT_BYTES];
     char backlog[FORMAT_BYTES];
-    return facts_printf(&client->out, "changes", "%s, learned up to %s, %s behind",
+    return facts_printf(&client->out, NAME_COLUMNS, "changes", "%s, learned up to %s, %s behind",
                         format_count(command_whole(state, "seq"), seq),
                         format_count(command_whole(state, "learned"), learned),
                         format_count(command_whole(state, "backlog"), backlog));
@@ -113,7 +120,7 @@ static int print_faults(const struct client *client, const json_t *faults)
 static int print_state(const struct client *client, const json_t *state)
 {
     char up[FORMAT_BYTES];
-    if (facts_printf(&client->out, "undertagd", "%s, up %s, store format %lld",
+    if (facts_printf(&client->out, NAME_COLUMNS, "undertagd", "%s, up %s, store format %lld",
                      command_text(state, "version"),
                      format_duration(command_number(state, "uptime_s"), up),
                      (long long)command_whole(state, "format")) ||

@@ -188,7 +188,8 @@ static int print_propensity(const struct client *client, const json_t *propensit
                   screen_end(&client->out, SCREEN_HEADING), format_share(p, share),
                   screen_begin(&client->out, SCREEN_BAR), bar,
                   screen_end(&client->out, SCREEN_BAR)); /* errors stay on the stream */
-    return facts_printf(&client->out, "", "of its true uses, between %s and %s, %s",
+    return facts_printf(&client->out, FACTS_NAME_COLUMNS, "",
+                        "of its true uses, between %s and %s, %s",
                         format_share(command_number(propensity, "low"), low),
                         format_share(command_number(propensity, "high"), high), from);
 }
@@ -198,14 +199,14 @@ static int print_names(const struct client *client, const char *label, const jso
 {
     const char *text = json_string_value(names);
     if (text && *text) {
-        return facts_print(&client->out, label, text);
+        return facts_print(&client->out, FACTS_NAME_COLUMNS, label, text);
     }
     size_t i;
     json_t *name;
     json_array_foreach(names, i, name)
     {
         text = json_string_value(name);
-        if (text && facts_print(&client->out, i == 0 ? label : "", text)) {
+        if (text && facts_print(&client->out, FACTS_NAME_COLUMNS, i == 0 ? label : "", text)) {
             return -1;
         }
     }
@@ -221,24 +222,25 @@ static int print_tag(const struct client *client, const json_t *tag)
     char count[FORMAT_BYTES];
     char unprompted[FORMAT_BYTES];
     char opened[FORMAT_BYTES];
-    if (facts_print(out, "tag", command_text(tag, "tag")) ||
+    if (facts_print(out, FACTS_NAME_COLUMNS, "tag", command_text(tag, "tag")) ||
         print_names(client, "label", json_object_get(tag, "label")) ||
         print_names(client, "broader", json_object_get(tag, "broader")) ||
         print_names(client, "also known as", json_object_get(tag, "aliases")) ||
-        facts_printf(out, "state", "%s, since change %s", command_text(tag, "state"),
+        facts_printf(out, FACTS_NAME_COLUMNS, "state", "%s, since change %s",
+                     command_text(tag, "state"),
                      format_count(command_whole(tag, "opened_seq"), opened)) ||
-        facts_printf(out, "given", "%s times, %s of them unprompted",
+        facts_printf(out, FACTS_NAME_COLUMNS, "given", "%s, unprompted %s",
                      format_count(command_whole(tag, "count"), count),
                      format_count(command_whole(tag, "unprompted"), unprompted)) ||
         print_propensity(client, json_object_get(tag, "propensity")) ||
-        facts_printf(out, "expected", "%.1f true uses, %.1f of them missing",
+        facts_printf(out, FACTS_NAME_COLUMNS, "expected", "%.1f true uses, %.1f of them missing",
                      command_number(tag, "expected_true"), command_number(tag, "missing"))) {
         return -1;
     }
     if (belongs > 0 || not_its > 0) {
         char in[FORMAT_BYTES];
         char ruled_out[FORMAT_BYTES];
-        return facts_printf(out, "rulings", "%s that it belongs, %s that it does not",
+        return facts_printf(out, FACTS_NAME_COLUMNS, "rulings", "it belongs %s, it does not %s",
                             format_count(belongs, in), format_count(not_its, ruled_out));
     }
     return 0;

@@ -40,19 +40,19 @@ static void print_wrapped(const struct screen *screen, const char *text, size_t 
     } while (*text);
 }
 
-int facts_print(const struct screen *screen, const char *name, const char *value)
+int facts_print(const struct screen *screen, size_t name_columns, const char *name,
+                const char *value)
 {
     char *clean = text_clean(value, TEXT_KEEP_LINES);
     if (!clean) {
         return -1;
     }
     size_t columns = text_width(name);
-    size_t pad = columns < FACTS_NAME_COLUMNS ? FACTS_NAME_COLUMNS - columns : 1;
+    size_t pad = columns < name_columns ? name_columns - columns : 1;
     if (*clean) {
         (void)fprintf(screen->stream, "%s%s%s%*s", screen_begin(screen, SCREEN_HEADING), name,
                       screen_end(screen, SCREEN_HEADING), (int)pad, "");
-        print_wrapped(screen, clean, value_columns(screen, FACTS_NAME_COLUMNS), FACTS_NAME_COLUMNS,
-                      false);
+        print_wrapped(screen, clean, value_columns(screen, name_columns), name_columns, false);
     } else {
         (void)fprintf(screen->stream, "%s%s%s\n", screen_begin(screen, SCREEN_HEADING), name,
                       screen_end(screen, SCREEN_HEADING));
@@ -61,14 +61,15 @@ int facts_print(const struct screen *screen, const char *name, const char *value
     return 0;
 }
 
-int facts_printf(const struct screen *screen, const char *name, const char *format, ...)
+int facts_printf(const struct screen *screen, size_t name_columns, const char *name,
+                 const char *format, ...)
 {
     char value[VALUE_BYTES];
     va_list arguments;
     va_start(arguments, format);
     int written = vsnprintf(value, sizeof value, format, arguments);
     va_end(arguments);
-    return written < 0 ? -1 : facts_print(screen, name, value);
+    return written < 0 ? -1 : facts_print(screen, name_columns, name, value);
 }
 
 int facts_text(const struct screen *screen, const char *text, size_t indent)

@@ -150,9 +150,8 @@ static int tell(struct feed *feed, struct entry *entry, const struct wire_answer
         return count_result(feed, answer, failure);
     }
     char reason[REASON_BYTES];
-    int written = snprintf(reason, sizeof reason, *answer->field ? "%s (%s)" : "%s",
-                           answer->message, answer->field);
-    refuse(feed, entry->source, entry->number, written < 0 ? answer->message : reason);
+    wire_reason(answer, reason, sizeof reason);
+    refuse(feed, entry->source, entry->number, reason);
     return 0;
 }
 
@@ -177,7 +176,7 @@ static int take_answer(struct feed *feed, const struct wire_answer *answer, stru
     if (answer->code == WIRE_STORE) {
         if (!feed->failed) {
             feed->failed = true;
-            (void)snprintf(feed->reason, sizeof feed->reason, "%s", answer->message);
+            wire_reason(answer, feed->reason, sizeof feed->reason);
         }
         return 0;
     }

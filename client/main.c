@@ -21,6 +21,7 @@ enum {
     COMMAND_COUNT = sizeof COMMANDS / sizeof COMMANDS[0],
     HELP_COLUMNS = 78,
     NAME_BYTES = 64,
+    FAMILY_BYTES = 256,
     PATH_BYTES = 4096
 };
 
@@ -126,19 +127,26 @@ static const struct command *find_command(const char *name)
 
 static int fail_command(const char *name, struct failure *failure)
 {
-    const char *nearest = NULL;
-    unsigned least = 3; /* what is further away is another word */
+    const char *near = NULL;
+    char commands[FAMILY_BYTES] = ""; /* of the family, where only that is given */
+    size_t length = strlen(name);
     for (size_t i = 0; i < COMMAND_COUNT; i++) {
-        unsigned distance = args_distance(name, COMMANDS[i]->name);
-        if (distance < least) {
-            least = distance;
-            nearest = COMMANDS[i]->name;
+        const char *known = COMMANDS[i]->name;
+        size_t used = strlen(commands);
+        near = args_is_near(name, known) ? known : near;
+        if (strncmp(known, name, length) == 0 && known[length] == ' ') {
+            (void)snprintf(commands + used, sizeof commands - used, "%s'%s'", used ? ", " : "",
+                           known); /* the table is short */
         }
     }
-    if (nearest) {
+    if (*commands) {
+        return failure_set(failure, FAILURE_USAGE, "'%s' alone is no command; there are %s", name,
+                           commands);
+    }
+    if (near) {
         return failure_set(failure, FAILURE_USAGE,
-                           "there is no command '%s'; is '%s' meant? See 'undertag --help'", name,
-                           nearest);
+                           "there is no command '%s' (is '%s' meant?); see 'undertag --help'", name,
+                           near);
     }
     return failure_set(failure, FAILURE_USAGE, "there is no command '%s'; see 'undertag --help'",
                        name);
@@ -200,10 +208,6 @@ static int read_request(struct request *request, char **argv, struct failure *fa
     request->command = find_command(name);
     if (!request->command && is_family(name) && globals[HELP].given) {
         return 0;
-    }
-    if (!request->command && is_family(name)) {
-        return failure_set(failure, FAILURE_USAGE,
-                           "%s needs a word more: see 'undertag --help' for its commands", name);
     }
     if (!request->command) {
         return fail_command(name, failure);

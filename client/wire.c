@@ -418,6 +418,21 @@ int wire_next(struct wire *wire, struct wire_answer *ret_answer, struct failure 
     }
 }
 
+void wire_reason(const struct wire_answer *answer, char *ret_reason, size_t size)
+{
+    size_t length = strlen(answer->message);
+    if (length > 0 && answer->message[length - 1] == '.') {
+        length--;
+    }
+    int shown = length < size ? (int)length : (int)size - 1;
+    bool named = *answer->field;
+    int written = snprintf(ret_reason, size, "%.*s%s%s%s", shown, answer->message,
+                           named ? " (" : "", answer->field, named ? ")" : "");
+    if (written < 0) {
+        ret_reason[0] = '\0';
+    }
+}
+
 int wire_fail(const struct wire_answer *answer, struct failure *failure)
 {
     enum failure_code code = FAILURE_DATA;
@@ -443,10 +458,9 @@ int wire_fail(const struct wire_answer *answer, struct failure *failure)
     default:
         break;
     }
-    if (*answer->field) {
-        return failure_set(failure, code, "%s (%s)", answer->message, answer->field);
-    }
-    return failure_set(failure, code, "%s", answer->message);
+    char reason[FAILURE_MESSAGE_BYTES];
+    wire_reason(answer, reason, sizeof reason);
+    return failure_set(failure, code, "%s", reason);
 }
 
 int wire_call_take(struct wire *wire, const char *method, json_t *params,
@@ -471,7 +485,8 @@ int wire_call_take(struct wire *wire, const char *method, json_t *params,
         return code;
     }
     if (answer.code == WIRE_LIMIT && answer.id == 0 && length > SURELY_SHORT_BYTES) {
-        code = failure_set(failure, FAILURE_DATA, "%s", answer.message);
+        answer.id = id; /* not the connections are at their limit but this line */
+        code = wire_fail(&answer, failure);
     } else if (answer.code != 0) {
         code = wire_fail(&answer, failure);
     } else if (answer.id != id) {

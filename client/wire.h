@@ -81,6 +81,12 @@ int wire_call_take(struct wire *wire, const char *method, json_t *params,
                    struct wire_answer *ret_answer, struct failure *failure)
     __attribute__((warn_unused_result));
 
+/*
+ * Why the request was refused, for people: the daemon's sentence without its full stop, and the
+ * member to blame. Cut to `size` bytes, the NUL included.
+ */
+void wire_reason(const struct wire_answer *answer, char *ret_reason, size_t size);
+
 /* The failure that an error answer stands for. */
 int wire_fail(const struct wire_answer *answer, struct failure *failure);
 

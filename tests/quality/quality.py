@@ -1,0 +1,143 @@
+#!/usr/bin/python3
+"""How good the proposals are: D and W through the daemon's real socket, next to a batch solver.
+
+Files the first 80 % of a corpus, asks for the gaps of the last 20 % without their tags, and prints the figures
+beside those of the batch solver on the same split. The figures are defined in figures.py.
+
+Ends with 0 when every floor is kept, 1 when one is missed, 69 when a corpus was skipped because it is not there (and
+no floor is missed), 70 when the daemon failed.
+"""
+
+import argparse
+import json
+import os
+import sys
+import time
+
+import numpy as np
+
+import figures
+import reference
+import report
+import split as splits
+import trial
+import wire
+
+HERE = os.path.dirname(os.path.abspath(__file__))
+EX_UNAVAILABLE, EX_SOFTWARE = 69, 70  # sysexits.h
+FLOORS = {
+    "D": {("all", "P@1"): .865, ("all", "P@5"): .470, ("all", "PSP@5"): .705, ("tail", "found@10"): .54},
+    "W": {("all", "P@1"): .882, ("all", "P@5"): .745, ("all", "PSP@5"): .400, ("all", "R@10"): .71,
+          ("tail", "found@10"): .35},
+}
+
+
+def reference_path(name, options):
+    """Where batch figures are kept: W's, which take an hour, with the sources; D's beside what was built."""
+    return os.path.join(HERE, "reference-W.json") if name == "W" else os.path.join(options.kept, f"reference-{name}.json")
+
+
+def chance_figures(split, ranked, chances):
+    """How the chances of all candidates compare with the tags given, overall and by band."""
+    hits = figures.hit_matrix(split.truth_test, ranked)
+    p = figures.propensities(split.counts, len(split.train))
+    by_band = {}
+    for band in ("all", *figures.BANDS):
+        kept = (ranked >= 0) & figures.band_mask(split.counts, band)[ranked]
+        chance, given = chances[kept], hits[kept].astype(float)
+        if len(chance) > 0:
+            corrected = given / p[ranked[kept]]
+            by_band[band] = {"pairs": len(chance), "mean": chance.mean(), "given": given.mean(),
+                             "corrected": corrected.mean(), "error": figures.calibration_error(chance, given),
+                             "corrected_error": figures.calibration_error(chance, corrected)}
+    return by_band
+
+
+def floors_of(name, by_band):
+    """Each floor of a corpus and whether it is kept; nothing was reached in a band without pairs."""
+    floors = []
+    for (band, figure), least in FLOORS[name].items():
+        reached = by_band[band] and by_band[band][figure]
+        floors.append({"band": band, "figure": figure, "least": least, "reached": reached,
+                       "kept": reached is not None and bool(reached >= least)})
+    return floors
+
+
+def run(name, split, options):
+    """One corpus through the daemon; all that is known about it afterwards."""
+    with trial.daemon(options.daemon, options.set) as connection:
+        filed_s, learned_s = trial.file_items(connection, split.train)
+        start = time.monotonic()
+        ranked, chances = trial.ask(connection, split.test, split.numbers)
+        asked_s = time.monotonic() - start
+    by_band = figures.by_band(split.truth_test, ranked, split.counts, len(split.train))
+    return {"corpus": split.sha256, "settings": options.set, "learned": len(split.train), "asked": len(split.test),
+            "tags": len(split.tags), "filed_s": filed_s, "learned_s": learned_s, "asked_s": asked_s,
+            "undertag": by_band, "chances": chance_figures(split, ranked, chances),
+            "floors": floors_of(name, by_band)}
+
+
+def trial_of(name, options):
+    """The result for one corpus, printed; None where its file is not there."""
+    path = os.path.join(options.corpora, f"{name}.jsonl")
+    if not os.path.exists(path):
+        print(f"{name}: skipped, {path} is not there (make corpora makes it).")
+        return None
+    split = splits.Split(path)
+    result = {} if options.reference else run(name, split, options)
+    solve = options.reference or name == "D"
+    result["batch"] = reference.obtain(split, reference_path(name, options), solve)
+    if not options.reference:
+        print("\n".join(report.lines(name, result)), flush=True)
+    return result
+
+
+def options_of(arguments):
+    """The command line."""
+    parser = argparse.ArgumentParser(description="Quality of the proposals on real corpora.")
+    parser.add_argument("daemon", nargs="?", default="build/undertagd", help="the daemon's program")
+    parser.add_argument("--corpora", metavar="FOLDER", default="build/corpora", help="where D.jsonl and W.jsonl are")
+    parser.add_argument("--corpus", action="append", choices=sorted(FLOORS), help="only this one")
+    parser.add_argument("--set", action="append", default=[], metavar="NAME=VALUE", help="handed to the daemon")
+    parser.add_argument("--json", metavar="FILE", help="keep the figures in a file")
+    parser.add_argument("--reference", action="store_true", help="only solve and keep the batch figures")
+    parser.add_argument("--kept", metavar="FOLDER", default="build/quality", help="where D's batch figures are kept")
+    return parser.parse_args(arguments)
+
+
+def plain(value):
+    """A number of numpy as JSON's."""
+    if isinstance(value, np.generic):
+        return value.item()
+    raise TypeError(f"not for JSON: {type(value)}")
+
+
+def trials(options):
+    """The results of the corpora that are there, by name; each is printed as soon as it is known."""
+    names = options.corpus or sorted(FLOORS)
+    results = {name: trial_of(name, options) for name in names}
+    return {name: result for name, result in results.items() if result is not None}, len(names)
+
+
+def status(results, wanted):
+    """The exit status."""
+    if not all(floor["kept"] for result in results.values() for floor in result.get("floors", [])):
+        return 1
+    return 0 if len(results) == wanted else EX_UNAVAILABLE
+
+
+def main(arguments=None):
+    options = options_of(arguments)
+    try:
+        results, wanted = trials(options)
+    except (OSError, trial.TrialError, wire.WireError) as error:
+        print(f"The trial broke off: {error}.", file=sys.stderr)
+        return EX_SOFTWARE
+    if options.json:
+        with open(options.json, "w", encoding="utf-8") as file:
+            json.dump(results, file, indent=1, default=plain)
+    return status(results, wanted)
+
+
+if __name__ == "__main__":
+    sys.exit(main())

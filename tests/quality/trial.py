@@ -1,0 +1,109 @@
+"""The daemon under trial: started in a home of its own, fed and asked through its socket, and stopped."""
+
+import contextlib
+import os
+import subprocess
+import sys
+import tempfile
+import time
+
+import numpy as np
+
+import wire
+
+DEPTH = 20
+START_CAP_S = 30
+SETTLE_CAP_S = 900
+STOP_CAP_S = 120
+
+
+class TrialError(Exception):
+    """The daemon did not do its part; the text says which."""
+
+
+def wait_for(condition, cap_s, what):
+    """Asks `condition` until it holds, for `cap_s` at most."""
+    end = time.monotonic() + cap_s
+    while not condition():
+        if time.monotonic() > end:
+            raise TrialError(f"{what} did not happen within {cap_s} s")
+        time.sleep(0.05)  # between two looks at the condition
+
+
+def accepts(path, process):
+    """Whether the socket at `path` takes connections; a daemon that has ended never will."""
+    if process.poll() is not None:
+        raise TrialError(f"the daemon ended with {process.returncode} before it was ready")
+    try:
+        wire.Wire(path).__exit__()
+    except OSError:
+        return False
+    return True
+
+
+@contextlib.contextmanager
+def daemon(program, settings):
+    """A daemon in a temporary home, with a connection to it; ended, and its home removed, afterwards."""
+    with tempfile.TemporaryDirectory(prefix="undertag-quality-") as folder:
+        path = os.path.join(folder, "socket")
+        command = [program, "--home", os.path.join(folder, "home"), "--socket", path]
+        for setting in settings:
+            command += ["--set", setting]
+        with open(os.path.join(folder, "log"), "w+b") as log, \
+                subprocess.Popen(command, stdin=subprocess.DEVNULL, stderr=log) as process:
+            try:
+                wait_for(lambda: accepts(path, process), START_CAP_S, "the start of the daemon")
+                with wire.Wire(path) as connection:
+                    yield connection
+                stop(process)
+            except Exception:
+                show_end(log)
+                raise
+            finally:
+                process.kill()
+
+
+def stop(process):
+    """Asks the daemon to end, and minds how it did."""
+    process.terminate()
+    try:
+        status = process.wait(STOP_CAP_S)
+    except subprocess.TimeoutExpired as error:
+        raise TrialError(f"the daemon did not stop within {STOP_CAP_S} s") from error
+    if status != 0:
+        raise TrialError(f"the daemon ended with {status}")
+
+
+def show_end(log):
+    """The last of what the daemon logged, on standard error."""
+    log.seek(0)
+    for line in log.read().decode(errors="replace").splitlines()[-10:]:
+        print(f"undertagd: {line}", file=sys.stderr)
+
+
+def file_items(connection, items):
+    """Files the items in order and waits until all is learned; seconds until filed, and until learned."""
+    start = time.monotonic()
+    for answer in connection.pipelined("item.file", items):
+        if answer["was"] != "new":
+            raise TrialError(f"an item of the corpus was {answer['was']} in an empty home")
+    filed = time.monotonic() - start
+
+    def settled():
+        state = connection.call("daemon.state")
+        return state["learned"] == state["seq"] and state["backlog"] == 0
+    wait_for(settled, SETTLE_CAP_S, "learning all that was filed")
+    return filed, time.monotonic() - start
+
+
+def ask(connection, items, numbers):
+    """What is proposed for the items without their tags: tag numbers (-1: no more) and chances, items × DEPTH."""
+    drafts = ({"title": item["title"], "text": item["text"], "most": DEPTH, "floor": 0} for item in items)
+    ranked, chances = np.full((len(items), DEPTH), -1), np.zeros((len(items), DEPTH))
+    for row, answer in enumerate(connection.pipelined("item.gaps", drafts)):
+        gaps = answer["gaps"]
+        ranked[row, :len(gaps)] = [numbers[gap["tag"]] for gap in gaps]
+        chances[row, :len(gaps)] = [gap["chance"] for gap in gaps]
+        if (np.diff(chances[row]) > 0).any():
+            raise TrialError(f"the gaps of {items[row]['id']} are not by falling chance")
+    return ranked, chances

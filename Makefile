@@ -119,9 +119,20 @@ build-tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BENCH_PROGRAMS)
 run-tests: build-tests
 	@BUILD=$(BUILD) PYTHON=$(PYTHON) sh tests/run $(WRAPPER)
 
-corpora: packages-quality
-	$(PYTHON) tests/corpora/make_d.py build/corpora/D.jsonl
-	$(PYTHON) tests/corpora/make_w.py build/corpora/W.jsonl
+corpora: $(BUILD)/corpora/D.jsonl $(BUILD)/corpora/W.jsonl
+
+$(BUILD)/corpora/D.jsonl: tests/corpora/make_d.py tests/corpora/corpus.py | packages-quality
+	@$(PYTHON) -B $< $@
+
+$(BUILD)/corpora/W.jsonl: tests/corpora/make_w.py tests/corpora/corpus.py | packages-quality
+	@$(PYTHON) -B $< $@
+
+# A corpus that cannot be made (no network) is skipped: quality.py says so and ends with 69.
+quality: packages-build packages-quality
+	@$(MAKE) --no-print-directory all
+	-@$(MAKE) --no-print-directory --keep-going corpora
+	@$(PYTHON) -B tests/quality/quality.py $(BUILD)/undertagd --corpora $(BUILD)/corpora \
+	    --kept $(BUILD)/quality --json $(BUILD)/quality.json
 
 # --- checks -------------------------------------------------------------------------------------
 

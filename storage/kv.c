@@ -1,41 +1,33 @@
 #include "storage/kv.h"
 
-#include <endian.h>
 #include <errno.h>
-#include <lmdb.h>
-#include <pthread.h>
-#include <stdatomic.h>
+#include <limits.h>
+#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 #include <sys/stat.h>
 #include <sys/statvfs.h>
 #include <unistd.h>
 
+#include "storage/kv_private.h"
+
 enum {
     MOST_READERS = 126
-};
-
-struct kv {
-    MDB_env *env;
-    char *directory;
-    size_t reserve_bytes;
-    unsigned table_count;
-    MDB_dbi tables[KV_TABLES];
-    atomic_bool broken; /* a commit failed in a way that leaves the file in doubt */
 };
 
 struct kv_txn {
     struct kv *kv;
     MDB_txn *txn;
     bool write;
+    bool deletes; /* what it deleted is to be scrubbed once it is committed */
 };
 
 struct kv_cursor {
     MDB_cursor *cursor;
+    struct kv_txn *txn;
 };
 
-/* Translates an LMDB code, once, here. */
-static int translate(const struct kv *kv, int code, const char *doing, struct store_error *error)
+int kv_translate(const struct kv *kv, int code, const char *doing, struct store_error *error)
 {
     switch (code) {
     case MDB_SUCCESS:
@@ -85,12 +77,12 @@ static struct kv_bytes from_val(MDB_val value)
 /* --- the environment ---------------------------------------------------------------------------
  */
 
-static int open_tables(struct kv *kv, const struct kv_settings *settings, struct store_error *error)
+static int open_tables(struct kv *kv, struct store_error *error)
 {
     MDB_txn *txn = NULL;
     int code = mdb_txn_begin(kv->env, NULL, 0, &txn);
-    for (unsigned i = 0; i < settings->table_count && code == MDB_SUCCESS; i++) {
-        code = mdb_dbi_open(txn, settings->tables[i], MDB_CREATE, &kv->tables[i]);
+    for (unsigned i = 0; i < kv->table_count && code == MDB_SUCCESS; i++) {
+        code = mdb_dbi_open(txn, kv->names[i], MDB_CREATE, &kv->tables[i]);
     }
     if (code == MDB_SUCCESS) {
         code = mdb_txn_commit(txn);
@@ -99,19 +91,15 @@ static int open_tables(struct kv *kv, const struct kv_settings *settings, struct
     if (txn) {
         mdb_txn_abort(txn);
     }
-    kv->table_count = settings->table_count;
-    return translate(kv, code, "opening its tables", error);
+    return kv_translate(kv, code, "opening its tables", error);
 }
 
-static int open_environment(struct kv *kv, const struct kv_settings *settings,
-                            struct store_error *error)
+int kv_open_environment(struct kv *kv, struct store_error *error)
 {
-    if (mkdir(settings->directory, 0700) < 0 && errno != EEXIST) {
-        return translate(kv, errno, "making it", error);
-    }
+    int dead = 0;
     int code = mdb_env_create(&kv->env);
     if (code == MDB_SUCCESS) {
-        code = mdb_env_set_mapsize(kv->env, settings->map_bytes);
+        code = mdb_env_set_mapsize(kv->env, kv->map_bytes);
     }
     if (code == MDB_SUCCESS) {
         code = mdb_env_set_maxdbs(kv->env, KV_TABLES);
@@ -120,11 +108,36 @@ static int open_environment(struct kv *kv, const struct kv_settings *settings,
         code = mdb_env_set_maxreaders(kv->env, MOST_READERS);
     }
     if (code == MDB_SUCCESS) {
-        /* Readers come from a pool of threads: a slot belongs to the transaction, not the thread.
-         */
-        code = mdb_env_open(kv->env, settings->directory, MDB_NOTLS | MDB_NORDAHEAD, 0600);
+        /* Readers come from a pool of threads: a slot is the transaction's, not the thread's. */
+        code = mdb_env_open(kv->env, kv->directory, MDB_NOTLS | MDB_NORDAHEAD, 0600);
     }
-    return translate(kv, code, "opening it", error);
+    int result = kv_translate(kv, code, "opening it", error);
+    if (result == STORE_OK) {
+        (void)mdb_reader_check(kv->env, &dead); /* only tidies up: a failure changes nothing */
+        result = open_tables(kv, error);
+    }
+    if (result != STORE_OK && kv->env) {
+        mdb_env_close(kv->env);
+        kv->env = NULL;
+    }
+    return result;
+}
+
+static int prepare(struct kv *made, const struct kv_settings *settings, struct store_error *error)
+{
+    made->map_bytes = settings->map_bytes;
+    made->reserve_bytes = settings->reserve_bytes;
+    made->names = settings->tables;
+    made->table_count = settings->table_count;
+    made->round.due = true; /* an earlier life may have ended between erasing and scrubbing */
+    made->directory = strdup(settings->directory);
+    if (!made->directory) {
+        return store_fail(error, STORE_NO_MEMORY, "out of memory");
+    }
+    if (mkdir(settings->directory, 0700) < 0 && errno != EEXIST) {
+        return kv_translate(made, errno, "making it", error);
+    }
+    return kv_open_environment(made, error);
 }
 
 int kv_open(const struct kv_settings *settings, struct kv **ret_kv, struct store_error *error)
@@ -133,19 +146,11 @@ int kv_open(const struct kv_settings *settings, struct kv **ret_kv, struct store
         return store_fail(error, STORE_DENIED, "more than %d tables", KV_TABLES);
     }
     struct kv *made = calloc(1, sizeof *made);
-    if (!made) {
+    if (!made || pthread_mutex_init(&made->gate, NULL) != 0) {
+        free(made);
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
-    made->reserve_bytes = settings->reserve_bytes;
-    made->directory = strdup(settings->directory);
-    int result = made->directory ? STORE_OK : store_fail(error, STORE_NO_MEMORY, "out of memory");
-    if (result == STORE_OK) {
-        result = open_environment(made, settings, error);
-    }
-    if (result == STORE_OK) {
-        kv_check_readers(made);
-        result = open_tables(made, settings, error);
-    }
+    int result = prepare(made, settings, error);
     if (result != STORE_OK) {
         kv_close(made);
         return result;
@@ -162,24 +167,20 @@ void kv_close(struct kv *kv)
     if (kv->env) {
         mdb_env_close(kv->env);
     }
+    (void)pthread_mutex_destroy(&kv->gate); /* fails only while it is locked */
     free(kv->directory);
     free(kv);
 }
 
 uint64_t kv_file_bytes(const struct kv *kv)
 {
-    mdb_filehandle_t file = -1;
+    char path[PATH_MAX];
     struct stat status;
-    if (mdb_env_get_fd(kv->env, &file) != MDB_SUCCESS || fstat(file, &status) < 0) {
+    int length = snprintf(path, sizeof path, "%s/data.mdb", kv->directory);
+    if (length < 0 || (size_t)length >= sizeof path || stat(path, &status) < 0) {
         return 0;
     }
     return (uint64_t)status.st_size;
-}
-
-void kv_check_readers(struct kv *kv)
-{
-    int dead = 0;
-    (void)mdb_reader_check(kv->env, &dead); /* only tidies up: a failure changes nothing */
 }
 
 /* --- transactions ------------------------------------------------------------------------------
@@ -190,7 +191,7 @@ static int check_room(const struct kv *kv, struct store_error *error)
 {
     struct statvfs status;
     if (statvfs(kv->directory, &status) < 0) {
-        return translate(kv, errno, "asking for free space", error);
+        return kv_translate(kv, errno, "asking for free space", error);
     }
     uint64_t left = (uint64_t)status.f_bavail * status.f_frsize;
     if (left < kv->reserve_bytes) {
@@ -202,23 +203,50 @@ static int check_room(const struct kv *kv, struct store_error *error)
     return STORE_OK;
 }
 
-int kv_begin(struct kv *kv, bool write, struct kv_txn **ret_txn, struct store_error *error)
+static int enter(struct kv *kv, bool write, struct store_error *error)
 {
-    if (write && atomic_load(&kv->broken)) {
-        return store_fail(error, STORE_BROKEN,
-                          "an earlier write to %s failed: nothing is written until a restart",
+    (void)pthread_mutex_lock(&kv->gate); /* fails only for mutexes of other kinds */
+    bool open = kv->env != NULL;
+    bool refused = write && atomic_load(&kv->broken);
+    kv->running += open && !refused ? 1 : 0;
+    (void)pthread_mutex_unlock(&kv->gate);
+    if (open && !refused) {
+        return STORE_OK;
+    }
+    if (!open) {
+        return store_fail(error, STORE_BROKEN, "%s could not be opened again: it needs a restart",
                           kv->directory);
     }
+    return store_fail(error, STORE_BROKEN,
+                      "an earlier write to %s failed: nothing is written until a restart",
+                      kv->directory);
+}
+
+static void leave(struct kv *kv)
+{
+    (void)pthread_mutex_lock(&kv->gate);
+    kv->running--;
+    (void)pthread_mutex_unlock(&kv->gate);
+}
+
+int kv_begin(struct kv *kv, bool write, struct kv_txn **ret_txn, struct store_error *error)
+{
     struct kv_txn *made = calloc(1, sizeof *made);
     if (!made) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
     made->kv = kv;
     made->write = write;
+    int result = enter(kv, write, error);
+    if (result != STORE_OK) {
+        free(made);
+        return result;
+    }
     int code = mdb_txn_begin(kv->env, NULL, write ? 0 : MDB_RDONLY, &made->txn);
     if (code != MDB_SUCCESS) {
+        leave(kv);
         free(made);
-        return translate(kv, code, "beginning a transaction", error);
+        return kv_translate(kv, code, "beginning a transaction", error);
     }
     *ret_txn = made;
     return STORE_OK;
@@ -231,10 +259,14 @@ int kv_commit(struct kv_txn *txn, struct store_error *error)
         kv_abort(txn);
         return error->code;
     }
-    int result = translate(kv, mdb_txn_commit(txn->txn), "committing", error);
+    int result = kv_translate(kv, mdb_txn_commit(txn->txn), "committing", error);
     if (result != STORE_OK && result != STORE_FULL && result != STORE_NO_MEMORY) {
         atomic_store(&kv->broken, true);
     }
+    if (result == STORE_OK && txn->deletes) {
+        kv->round.due = true;
+    }
+    leave(kv);
     free(txn);
     return result;
 }
@@ -243,6 +275,7 @@ void kv_abort(struct kv_txn *txn)
 {
     if (txn) {
         mdb_txn_abort(txn->txn);
+        leave(txn->kv);
         free(txn);
     }
 }
@@ -259,7 +292,7 @@ int kv_get(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv_by
     if (code == MDB_SUCCESS) {
         *ret_value = from_val(found);
     }
-    return translate(txn->kv, code, "reading", error);
+    return kv_translate(txn->kv, code, "reading", error);
 }
 
 static int put(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv_bytes value,
@@ -267,8 +300,12 @@ static int put(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct k
 {
     MDB_val at = to_val(key);
     MDB_val what = to_val(value);
-    return translate(txn->kv, mdb_put(txn->txn, txn->kv->tables[table], &at, &what, flags),
-                     "writing", error);
+    if (key.size + value.size > KV_ENTRY_BYTES) {
+        return store_fail(error, STORE_BROKEN, "an entry of %zu bytes is too large",
+                          key.size + value.size);
+    }
+    return kv_translate(txn->kv, mdb_put(txn->txn, txn->kv->tables[table], &at, &what, flags),
+                        "writing", error);
 }
 
 int kv_put(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv_bytes value,
@@ -286,14 +323,16 @@ int kv_append(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv
 int kv_delete(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct store_error *error)
 {
     MDB_val at = to_val(key);
-    return translate(txn->kv, mdb_del(txn->txn, txn->kv->tables[table], &at, NULL), "deleting",
-                     error);
+    txn->deletes = true;
+    return kv_translate(txn->kv, mdb_del(txn->txn, txn->kv->tables[table], &at, NULL), "deleting",
+                        error);
 }
 
 int kv_clear(struct kv_txn *txn, unsigned table, struct store_error *error)
 {
-    return translate(txn->kv, mdb_drop(txn->txn, txn->kv->tables[table], 0), "emptying a table",
-                     error);
+    txn->deletes = true;
+    return kv_translate(txn->kv, mdb_drop(txn->txn, txn->kv->tables[table], 0), "emptying a table",
+                        error);
 }
 
 int kv_count(struct kv_txn *txn, unsigned table, uint64_t *ret_count, struct store_error *error)
@@ -303,16 +342,16 @@ int kv_count(struct kv_txn *txn, unsigned table, uint64_t *ret_count, struct sto
     if (code == MDB_SUCCESS) {
         *ret_count = status.ms_entries;
     }
-    return translate(txn->kv, code, "counting", error);
+    return kv_translate(txn->kv, code, "counting", error);
 }
 
 int kv_walk(struct kv_txn *txn, unsigned table, struct kv_bytes from, kv_each each, void *user,
             struct store_error *error)
 {
-    struct kv_cursor at = {0};
+    struct kv_cursor at = {.txn = txn};
     int code = mdb_cursor_open(txn->txn, txn->kv->tables[table], &at.cursor);
     if (code != MDB_SUCCESS) {
-        return translate(txn->kv, code, "walking", error);
+        return kv_translate(txn->kv, code, "walking", error);
     }
     MDB_val key = to_val(from);
     MDB_val value;
@@ -326,18 +365,15 @@ int kv_walk(struct kv_txn *txn, unsigned table, struct kv_bytes from, kv_each ea
     }
     mdb_cursor_close(at.cursor);
     if (code != MDB_SUCCESS && code != MDB_NOTFOUND) {
-        return translate(txn->kv, code, "walking", error);
+        return kv_translate(txn->kv, code, "walking", error);
     }
     return result;
 }
 
 int kv_walk_delete(struct kv_cursor *at, struct store_error *error)
 {
-    int code = mdb_cursor_del(at->cursor, 0);
-    if (code != MDB_SUCCESS) {
-        return store_fail(error, STORE_BROKEN, "%s while deleting", mdb_strerror(code));
-    }
-    return STORE_OK;
+    at->txn->deletes = true;
+    return kv_translate(at->txn->kv, mdb_cursor_del(at->cursor, 0), "deleting", error);
 }
 
 int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
@@ -346,7 +382,7 @@ int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
     MDB_cursor *cursor = NULL;
     int code = mdb_cursor_open(txn->txn, txn->kv->tables[table], &cursor);
     if (code != MDB_SUCCESS) {
-        return translate(txn->kv, code, "looking for the last entry", error);
+        return kv_translate(txn->kv, code, "looking for the last entry", error);
     }
     MDB_val key;
     MDB_val value;
@@ -356,119 +392,5 @@ int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
         *ret_key = from_val(key);
         *ret_value = from_val(value);
     }
-    return translate(txn->kv, code, "looking for the last entry", error);
-}
-
-/* --- scrubbing ---------------------------------------------------------------------------------
- */
-
-/* Pages that belong to nothing, by LMDB's own list of them (its table 0, as mdb_stat reads it). */
-static int count_free_pages(struct kv *kv, size_t *ret_pages)
-{
-    MDB_txn *txn = NULL;
-    MDB_cursor *cursor = NULL;
-    size_t pages = 0;
-    int code = mdb_txn_begin(kv->env, NULL, MDB_RDONLY, &txn);
-    if (code != MDB_SUCCESS) {
-        return code;
-    }
-    code = mdb_cursor_open(txn, 0, &cursor);
-    if (code == MDB_SUCCESS) {
-        MDB_val key;
-        MDB_val list;
-        while ((code = mdb_cursor_get(cursor, &key, &list, MDB_NEXT)) == MDB_SUCCESS) {
-            size_t count = 0;
-            memcpy(&count, list.mv_data, sizeof count);
-            pages += count;
-        }
-        mdb_cursor_close(cursor);
-    }
-    mdb_txn_abort(txn);
-    *ret_pages = pages;
-    return code == MDB_NOTFOUND ? MDB_SUCCESS : code;
-}
-
-/* Puts `pages` values that fill a page each behind those that are there, in one commit. */
-static int put_zero_pages(struct kv *kv, unsigned table, size_t pages)
-{
-    enum {
-        PAGE_HEADER_BYTES = 16
-    };
-    MDB_stat status;
-    MDB_txn *txn = NULL;
-    int code = mdb_env_stat(kv->env, &status);
-    size_t size = code == MDB_SUCCESS ? status.ms_psize - PAGE_HEADER_BYTES : 0;
-    unsigned char *zeros = calloc(1, size ? size : 1);
-    if (!zeros) {
-        return ENOMEM;
-    }
-    if (code == MDB_SUCCESS) {
-        code = mdb_txn_begin(kv->env, NULL, 0, &txn);
-    }
-    MDB_stat present = {0};
-    if (code == MDB_SUCCESS) {
-        code = mdb_stat(txn, kv->tables[table], &present);
-    }
-    for (size_t i = 0; i < pages && code == MDB_SUCCESS; i++) {
-        uint64_t number = htobe64((uint64_t)(present.ms_entries + i));
-        MDB_val key = {.mv_size = sizeof number, .mv_data = &number};
-        MDB_val value = {.mv_size = size, .mv_data = zeros};
-        code = mdb_put(txn, kv->tables[table], &key, &value, MDB_APPEND);
-    }
-    free(zeros);
-    if (code != MDB_SUCCESS) {
-        if (txn) {
-            mdb_txn_abort(txn);
-        }
-        return code;
-    }
-    return mdb_txn_commit(txn);
-}
-
-static int clear_scratch(struct kv *kv, unsigned table)
-{
-    MDB_txn *txn = NULL;
-    int code = mdb_txn_begin(kv->env, NULL, 0, &txn);
-    if (code != MDB_SUCCESS) {
-        return code;
-    }
-    code = mdb_drop(txn, kv->tables[table], 0);
-    if (code != MDB_SUCCESS) {
-        mdb_txn_abort(txn);
-        return code;
-    }
-    return mdb_txn_commit(txn);
-}
-
-int kv_scrub(struct kv *kv, unsigned scratch_table, size_t most_pages, size_t *ret_left,
-             struct store_error *error)
-{
-    if (check_room(kv, error) != STORE_OK) {
-        return error->code;
-    }
-    /* LMDB gives out a freed page again only two commits later: two small ones come first. */
-    size_t before = 0;
-    size_t after = 0;
-    int code = put_zero_pages(kv, scratch_table, 1);
-    if (code == MDB_SUCCESS) {
-        code = put_zero_pages(kv, scratch_table, 1);
-    }
-    if (code == MDB_SUCCESS) {
-        code = count_free_pages(kv, &before);
-    }
-    if (code == MDB_SUCCESS) {
-        code = put_zero_pages(kv, scratch_table, before < most_pages ? before : most_pages);
-    }
-    if (code == MDB_SUCCESS) {
-        code = count_free_pages(kv, &after);
-    }
-    bool goes_on = code == MDB_SUCCESS && before > most_pages && after < before;
-    if (!goes_on) {
-        int cleared = clear_scratch(kv, scratch_table);
-        code = code == MDB_SUCCESS ? cleared : code;
-    }
-    if (code == MDB_SUCCESS) {
-        *ret_left = goes_on ? after : 0;
-    }
-    return translate(kv, code, "scrubbing", error);
+    return kv_translate(txn->kv, code, "looking for the last entry", error);
 }

@@ -1,5 +1,5 @@
 /*
- * kv: ordered tables of bytes in one LMDB environment. The only file that knows LMDB.
+ * kv: ordered tables of bytes in one LMDB environment. Only kv.c and kv_scrub.c know LMDB.
  *
  * One environment a directory and process. Any number of threads may read, each in a transaction of
  * its own; one thread writes at a time. Bytes handed out point into the map and are valid until the
@@ -29,7 +29,8 @@ struct kv_bytes {
 
 enum {
     KV_KEY_BYTES = 511,    /* the longest key */
-    KV_VALUE_BYTES = 2000, /* a larger value leaves its leaf page: callers cut it into pieces */
+    KV_ENTRY_BYTES = 2022, /* key and value together: a larger one would leave its leaf page */
+    KV_VALUE_BYTES = 2000, /* the largest value of a short key: callers cut a longer into pieces */
     KV_TABLES = 16         /* at most */
 };
 
@@ -37,7 +38,8 @@ struct kv_settings {
     const char *directory;     /* made if it is not there (its parent must be) */
     size_t map_bytes;          /* the most that the environment may grow to */
     size_t reserve_bytes;      /* room on the disk that commits leave free */
-    const char *const *tables; /* names; a table is then named by its place in the list */
+    const char *const *tables; /* names; a table is then named by its place in the list; borrowed
+                                  until kv_close */
     unsigned table_count;
 };
 
@@ -48,9 +50,6 @@ void kv_close(struct kv *kv);
 
 /* Bytes of the file. */
 uint64_t kv_file_bytes(const struct kv *kv);
-
-/* Frees the places of readers that died. */
-void kv_check_readers(struct kv *kv);
 
 int kv_begin(struct kv *kv, bool write, struct kv_txn **ret_txn, struct store_error *error)
     __attribute__((warn_unused_result));
@@ -98,12 +97,15 @@ int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
     __attribute__((warn_unused_result));
 
 /*
- * Overwrites pages that no longer belong to anything, so that what was erased is gone from the file
- * as well: at most `most_pages` a call. `scratch_table` must be empty and is again afterwards.
- * Says how many pages are left to do; call again, in a transaction of its own each, until 0.
+ * Overwrites what belongs to nothing any more, so that what was deleted is gone from the file as
+ * well: a round over the file, at most `most_pages` pages a call, with the writer's thread outside
+ * a transaction. *ret_left says how many pages are left to do (at least 1 while another round is
+ * due): call again, with other jobs in between, until it is 0; it stays as it was while a reader is
+ * in the way. What is deleted during a round makes another one follow. Nothing was deleted since
+ * the last round: *ret_left is 0 at once.
  */
-int kv_scrub(struct kv *kv, unsigned scratch_table, size_t most_pages, size_t *ret_left,
-             struct store_error *error) __attribute__((warn_unused_result));
+int kv_scrub(struct kv *kv, size_t most_pages, size_t *ret_left, struct store_error *error)
+    __attribute__((warn_unused_result));
 
 static inline struct kv_bytes kv_bytes_of(const void *data, size_t size)
 {

@@ -14,13 +14,12 @@ enum model_table {
     MODEL_CHUNKS,
     MODEL_TAGS,
     MODEL_BINS,
-    MODEL_SCRATCH,
     MODEL_TABLES
 };
 
 static const char *const TABLE_NAMES[MODEL_TABLES] = {
     [MODEL_META] = "meta", [MODEL_WORDS] = "words", [MODEL_CHUNKS] = "chunks",
-    [MODEL_TAGS] = "tags", [MODEL_BINS] = "bins",   [MODEL_SCRATCH] = "scratch",
+    [MODEL_TAGS] = "tags", [MODEL_BINS] = "bins",
 };
 
 static const char HEAD_KEY[] = "model";
@@ -414,5 +413,5 @@ int model_store_put_bin(struct model_store_writing *writing, const struct model_
 int model_store_scrub(struct model_store *store, size_t most_pages, size_t *ret_left,
                       struct store_error *error)
 {
-    return kv_scrub(store->kv, MODEL_SCRATCH, most_pages, ret_left, error);
+    return kv_scrub(store->kv, most_pages, ret_left, error);
 }

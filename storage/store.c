@@ -12,7 +12,6 @@ static const char *const TABLE_NAMES[STORE_TABLES] = {
     [TABLE_META] = "meta",       [TABLE_IDS] = "ids",
     [TABLE_RECORDS] = "records", [TABLE_SUPERSEDED] = "superseded",
     [TABLE_TAGS] = "tags",       [TABLE_TAG_NAMES] = "tag_names",
-    [TABLE_SCRATCH] = "scratch",
 };
 
 static const char META_KEY[] = "store";
@@ -281,5 +280,5 @@ int store_erase_passed(struct store_view *view, uint64_t learned, size_t most, s
 
 int store_scrub(struct store *store, size_t most_pages, size_t *ret_left, struct store_error *error)
 {
-    return kv_scrub(store->kv, TABLE_SCRATCH, most_pages, ret_left, error);
+    return kv_scrub(store->kv, most_pages, ret_left, error);
 }

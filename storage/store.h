@@ -12,7 +12,6 @@
  *   superseded  seq -> the seq of the record that it took the place of
  *   tags        number -> name, counts, state
  *   tag_names   name -> number
- *   scratch     empty but while pages are scrubbed
  *
  * Any number of threads may read (store_read); one thread writes (store_write). No view may outlive
  * one job. Failure leaves everything as it was: what was put in a writing view is there only once

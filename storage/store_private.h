@@ -16,7 +16,6 @@ enum store_table {
     TABLE_SUPERSEDED,
     TABLE_TAGS,
     TABLE_TAG_NAMES,
-    TABLE_SCRATCH,
     STORE_TABLES
 };
 

@@ -1,0 +1,41 @@
+/*
+ * kv_private: the insides of an environment, for the two files that know LMDB: kv.c and kv_scrub.c.
+ */
+#ifndef UNDERTAG_KV_PRIVATE_H
+#define UNDERTAG_KV_PRIVATE_H
+
+#include <lmdb.h>
+#include <pthread.h>
+#include <stdatomic.h>
+
+#include "storage/kv.h"
+
+/* How far a round of scrubbing has come; the writer's thread alone. */
+struct kv_round {
+    bool due;    /* something was deleted since the last round began, or nobody knows */
+    size_t next; /* the page to go on with; equal to `end` while no round is on */
+    size_t end;
+};
+
+struct kv {
+    char *directory;
+    size_t map_bytes;
+    size_t reserve_bytes;
+    const char *const *names;
+    unsigned table_count;
+    MDB_dbi tables[KV_TABLES];
+    atomic_bool broken; /* a write failed in a way that leaves the file in doubt */
+    struct kv_round round;
+    pthread_mutex_t gate; /* over the two below */
+    MDB_env *env;         /* NULL only after it could not be opened again */
+    size_t running;       /* transactions; the environment is closed only while there are none */
+};
+
+/* Translates an LMDB code or an errno, once, here. `doing` goes into the sentence. */
+int kv_translate(const struct kv *kv, int code, const char *doing, struct store_error *error);
+
+/* Opens the environment and its tables; on failure there is none. The gate is the caller's. */
+int kv_open_environment(struct kv *kv, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+#endif

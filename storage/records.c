@@ -10,6 +10,7 @@
 enum {
     KEY_BYTES = 10,
     PIECE_BYTES = 1900,
+    MOST_PIECES = 65536,
     HEAD_BYTES = 8
 };
 
@@ -29,6 +30,10 @@ static int damaged(struct store_error *error, uint64_t seq)
 int records_put(struct store_view *view, uint64_t seq, const struct codec_writer *record,
                 struct store_error *error)
 {
+    if (record->size > (size_t)PIECE_BYTES * MOST_PIECES) {
+        return store_fail(error, STORE_FULL, "a record of %zu bytes is larger than the store takes",
+                          record->size);
+    }
     unsigned char value[HEAD_BYTES + PIECE_BYTES];
     struct codec_writer head = {.data = value, .capacity = sizeof value};
     codec_put_u32(&head, (uint32_t)record->size);

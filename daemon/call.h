@@ -19,7 +19,7 @@
 
 #include "daemon/fault.h"
 
-typedef struct call call;
+struct call;
 
 enum method_kind {
     METHOD_READ,
@@ -30,7 +30,7 @@ struct method {
     const char *name; /* as on the wire: "item.file" */
     enum method_kind kind;
     /* Loop thread. `params` is an object, borrowed until the call has ended. */
-    void (*start)(call *call, const json_t *params);
+    void (*start)(struct call *call, const json_t *params);
 };
 
 struct method_table {
@@ -40,16 +40,16 @@ struct method_table {
 };
 
 /* What the method table was made with. */
-void *call_context(const call *call);
+void *call_context(const struct call *call);
 
 /* The user id of the peer, from the socket's credentials. */
-uid_t call_uid(const call *call);
+uid_t call_uid(const struct call *call);
 
 /* Ends the call with a result, of which it takes the reference. NULL (no memory) ends it with
  * -32603. */
-void call_answer_take(call *call, json_t *result);
+void call_answer_take(struct call *call, json_t *result);
 
 /* Ends the call with an error. */
-void call_fail(call *call, const struct fault *fault);
+void call_fail(struct call *call, const struct fault *fault);
 
 #endif

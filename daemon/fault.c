@@ -3,6 +3,7 @@
 #include <stdarg.h>
 #include <stdio.h>
 #include <string.h>
+#include <unistr.h>
 
 /* Drops the bytes of a character that a cut has left unfinished at the end of the text. */
 static void drop_cut_character(char *text)
@@ -22,6 +23,18 @@ static void drop_cut_character(char *text)
     }
 }
 
+/* What a request quotes may have been cut inside a character, or never was one. */
+static void make_valid(char *text, int written, size_t size)
+{
+    if (written < 0 || (size_t)written >= size) {
+        drop_cut_character(text);
+    }
+    const uint8_t *bad = NULL;
+    while ((bad = u8_check((const uint8_t *)text, strlen(text)))) {
+        text[bad - (const uint8_t *)text] = '?';
+    }
+}
+
 int fault_set(struct fault *fault, enum fault_code code, const char *field, const char *format, ...)
 {
     if (fault->code != 0) {
@@ -29,15 +42,11 @@ int fault_set(struct fault *fault, enum fault_code code, const char *field, cons
     }
     fault->code = code;
     int written = snprintf(fault->field, sizeof fault->field, "%s", field ? field : "");
-    if (written < 0 || (size_t)written >= sizeof fault->field) {
-        drop_cut_character(fault->field);
-    }
+    make_valid(fault->field, written, sizeof fault->field);
     va_list arguments;
     va_start(arguments, format);
     written = vsnprintf(fault->message, sizeof fault->message, format, arguments);
     va_end(arguments);
-    if (written < 0 || (size_t)written >= sizeof fault->message) {
-        drop_cut_character(fault->message);
-    }
+    make_valid(fault->message, written, sizeof fault->message);
     return fault->code;
 }

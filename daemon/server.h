@@ -14,7 +14,7 @@
 
 #include "daemon/call.h"
 
-typedef struct server server;
+struct server;
 
 struct server_settings {
     const char *socket_path;    /* copied; at most 107 bytes, longer is refused with a sentence */
@@ -34,13 +34,13 @@ enum {
  * *ret_server untouched. A second server on the same path is refused with UV_EADDRINUSE.
  */
 int server_new(uv_loop_t *loop, const struct server_settings *settings,
-               const struct method_table *table, server **ret_server, char *error)
+               const struct method_table *table, struct server **ret_server, char *error)
     __attribute__((warn_unused_result));
 
 /* Connections open now. */
-unsigned server_connections(const server *server);
+unsigned server_connections(const struct server *server);
 
 /* Drains and frees the server; `done` is called once, never before this returns. */
-void server_drain(server *server, void (*done)(void *user), void *user);
+void server_drain(struct server *server, void (*done)(void *user), void *user);
 
 #endif

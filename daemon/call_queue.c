@@ -1,0 +1,302 @@
+#include "daemon/call_queue.h"
+
+#include <assert.h>
+#include <errno.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "daemon/grow.h"
+
+enum {
+    RUNNING_MOST = 1024,          /* calls of one connection under way at a time */
+    LINE_BYTES_MOST = 1024 * 1024 /* lines behind this wait in the connection's buffer */
+};
+
+/* --- adding -------------------------------------------------------------------------------------
+ */
+
+static void append(struct call_queue *queue, struct call *call)
+{
+    if (queue->last) {
+        queue->last->next = call;
+    } else {
+        queue->first = call;
+    }
+    queue->last = call;
+    if (!queue->to_start && call->state == CALL_WAITING) {
+        queue->to_start = call;
+    }
+}
+
+/* A new call behind all others; NULL breaks the queue. */
+static struct call *add_call(struct call_queue *queue)
+{
+    struct call *call = calloc(1, sizeof *call);
+    if (!call) {
+        queue->broken = true;
+        return NULL;
+    }
+    call->queue = queue;
+    return call;
+}
+
+/* The call has its answer, or nobody wants one. */
+static void end_with(struct call *call, char *answer, bool wanted)
+{
+    struct call_queue *queue = call->queue;
+    call->state = CALL_ENDED;
+    call->answer = answer;
+    if (wanted && !answer) {
+        queue->broken = true;
+    }
+    if (answer) {
+        call->answer_bytes = strlen(answer);
+        queue->answer_bytes += call->answer_bytes;
+    }
+}
+
+static void end_with_fault(struct call *call, const struct fault *fault)
+{
+    bool wanted = call->request.id != NULL;
+    end_with(call, wanted ? rpc_fault_text(call->request.id, fault) : NULL, wanted);
+}
+
+static void refuse_stopping(struct call *call)
+{
+    struct fault fault = {0};
+    (void)fault_set(&fault, FAULT_STOPPING, NULL,
+                    "The daemon is stopping: ask again once it is back.");
+    end_with_fault(call, &fault);
+}
+
+void call_queue_add_fault(struct call_queue *queue, const struct fault *fault, size_t line_bytes)
+{
+    struct call *call = add_call(queue);
+    if (!call) {
+        return;
+    }
+    call->line_bytes = line_bytes;
+    queue->line_bytes += line_bytes;
+    end_with(call, rpc_fault_text(NULL, fault), true);
+    append(queue, call);
+}
+
+static struct call *add_request(struct call_queue *queue, const json_t *text)
+{
+    struct fault fault = {0};
+    struct call *call = add_call(queue);
+    if (!call) {
+        return NULL;
+    }
+    if (rpc_read(text, queue->table, &call->request, &fault) < 0) {
+        end_with_fault(call, &fault);
+    } else if (queue->stopping) {
+        refuse_stopping(call);
+    }
+    append(queue, call);
+    return call;
+}
+
+static struct call *add_batch(struct call_queue *queue, const json_t *batch)
+{
+    struct call *call = NULL;
+    size_t count = json_array_size(batch);
+    for (size_t i = 0; i < count; i++) {
+        call = add_request(queue, json_array_get(batch, i));
+        if (!call) {
+            return NULL;
+        }
+        call->opens_batch = i == 0;
+        call->closes_batch = i + 1 == count;
+    }
+    return call;
+}
+
+void call_queue_add_line(struct call_queue *queue, const char *line, size_t length)
+{
+    struct fault fault = {0};
+    json_t *text = NULL;
+    if (rpc_parse(line, length, &text, &fault) < 0) {
+        call_queue_add_fault(queue, &fault, length);
+        return;
+    }
+    struct call *last = NULL;
+    if (json_is_array(text) && json_array_size(text) == 0) {
+        (void)fault_set(&fault, FAULT_REQUEST, NULL, "A batch holds one request at least.");
+        call_queue_add_fault(queue, &fault, length);
+    } else {
+        last = json_is_array(text) ? add_batch(queue, text) : add_request(queue, text);
+    }
+    if (last) {
+        last->line_bytes = length;
+        queue->line_bytes += length;
+    }
+    json_decref(text);
+}
+
+/* --- running ------------------------------------------------------------------------------------
+ */
+
+void call_queue_start(struct call_queue *queue, size_t answer_bytes_limit)
+{
+    while (queue->to_start && queue->running < RUNNING_MOST &&
+           queue->answer_bytes < answer_bytes_limit && !queue->broken) {
+        struct call *call = queue->to_start;
+        if (call->state != CALL_WAITING) {
+            queue->to_start = call->next;
+            continue;
+        }
+        enum method_kind kind = call->request.method->kind;
+        if (queue->running > 0 && queue->running_kind != kind) {
+            return;
+        }
+        queue->to_start = call->next;
+        if (queue->stopping) {
+            refuse_stopping(call);
+            continue;
+        }
+        call->state = CALL_RUNNING;
+        queue->running_kind = kind;
+        queue->running++;
+        call->request.method->start(call, call->request.params);
+    }
+}
+
+static void free_call(struct call *call)
+{
+    rpc_request_deinit(&call->request);
+    free(call->answer);
+    free(call);
+}
+
+static void remove_call(struct call_queue *queue, struct call *call)
+{
+    struct call **link = &queue->first;
+    struct call *previous = NULL;
+    while (*link != call) {
+        previous = *link;
+        link = &previous->next;
+    }
+    *link = call->next;
+    if (queue->last == call) {
+        queue->last = previous;
+    }
+    if (queue->to_start == call) {
+        queue->to_start = call->next;
+    }
+    queue->line_bytes -= call->line_bytes;
+    queue->answer_bytes -= call->answer_bytes;
+    free_call(call);
+}
+
+static void end_running(struct call *call, char *answer, bool wanted)
+{
+    struct call_queue *queue = call->queue;
+    assert(call->state == CALL_RUNNING);
+    queue->running--;
+    end_with(call, answer, wanted);
+    queue->ended(queue->user);
+}
+
+void *call_context(const struct call *call)
+{
+    return call->queue->table->context;
+}
+
+uid_t call_uid(const struct call *call)
+{
+    return call->queue->uid;
+}
+
+void call_answer_take(struct call *call, json_t *result)
+{
+    if (!result) {
+        struct fault fault = {0};
+        (void)fault_set(&fault, FAULT_INTERNAL, NULL, "There is no memory for the answer.");
+        call_fail(call, &fault);
+        return;
+    }
+    bool wanted = call->request.id != NULL;
+    char *answer = wanted ? rpc_result_text(call->request.id, result) : NULL;
+    json_decref(result);
+    end_running(call, answer, wanted);
+}
+
+void call_fail(struct call *call, const struct fault *fault)
+{
+    bool wanted = call->request.id != NULL;
+    end_running(call, wanted ? rpc_fault_text(call->request.id, fault) : NULL, wanted);
+}
+
+/* --- answers ------------------------------------------------------------------------------------
+ */
+
+static int put(struct call_text *text, const char *bytes, size_t size)
+{
+    if (GROW(&text->bytes, &text->capacity, text->size + size) < 0) {
+        return -ENOMEM;
+    }
+    memcpy(text->bytes + text->size, bytes, size);
+    text->size += size;
+    return 0;
+}
+
+/* Puts what is due of the call at the head: its answer, and what holds a batch together. */
+static int put_head(struct call_queue *queue, const struct call *call, struct call_text *text)
+{
+    int code = 0;
+    bool in_batch = queue->in_batch;
+    if (call->answer) {
+        if (in_batch) {
+            code = put(text, queue->batch_has_answers ? "," : "[", 1);
+        }
+        if (code == 0) {
+            code = put(text, call->answer, call->answer_bytes);
+        }
+        queue->batch_has_answers = in_batch;
+    }
+    if (code == 0 && in_batch && call->closes_batch && queue->batch_has_answers) {
+        queue->batch_has_answers = false;
+        return put(text, "]\n", 2);
+    }
+    return code == 0 && !in_batch && call->answer ? put(text, "\n", 1) : code;
+}
+
+int call_queue_collect(struct call_queue *queue, struct call_text *text)
+{
+    while (queue->first && queue->first->state == CALL_ENDED) {
+        struct call *call = queue->first;
+        queue->in_batch = queue->in_batch || call->opens_batch;
+        int code = put_head(queue, call, text);
+        if (code < 0) {
+            return code;
+        }
+        if (call->closes_batch) {
+            queue->in_batch = false;
+        }
+        remove_call(queue, call);
+    }
+    return 0;
+}
+
+bool call_queue_has_room(const struct call_queue *queue)
+{
+    return queue->line_bytes < LINE_BYTES_MOST;
+}
+
+bool call_queue_is_empty(const struct call_queue *queue)
+{
+    return queue->first == NULL;
+}
+
+void call_queue_abandon(struct call_queue *queue)
+{
+    struct call *call = queue->first;
+    while (call) {
+        struct call *next = call->next;
+        if (call->state != CALL_RUNNING) {
+            remove_call(queue, call);
+        }
+        call = next;
+    }
+}

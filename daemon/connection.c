@@ -1,0 +1,331 @@
+/*
+ * Happy path: bytes come (on_read), are cut into lines, become calls in the queue; calls end, their
+ * answers are collected in order into `filling` and written from `writing`, one write at a time.
+ * After anything that happens, pump() takes everything as far as it goes, and settle() decides
+ * whether to read on and whether all is over.
+ *
+ * Failure paths: a peer that has closed its sending side still gets its answers. A failed read or
+ * write, or no memory, closes the connection: waiting calls are dropped, running ones end unheard,
+ * and only after the last of them is the memory freed.
+ */
+#include "daemon/connection.h"
+
+#include <assert.h>
+#include <stdlib.h>
+#include <string.h>
+#include <sys/socket.h>
+
+#include "daemon/call_queue.h"
+#include "daemon/lines.h"
+
+enum {
+    READ_BYTES = 64 * 1024,
+    IDLE_BUFFER_BYTES = 256 * 1024 /* a larger buffer is given back once it is empty */
+};
+
+struct connection {
+    struct connection_settings settings;
+    struct connection_links links;
+    uv_pipe_t handle;
+    uv_write_t write;
+    struct lines lines;
+    struct call_queue calls;
+    struct call_text filling;
+    struct call_text writing; /* size 0: no write under way */
+    bool reading;
+    bool draining; /* reads no more, on our side's will or the peer's */
+    bool pumping;
+    bool pump_again;
+    bool closing;
+    bool closed;
+};
+
+static void pump(struct connection *connection);
+
+/* --- the end ------------------------------------------------------------------------------------
+ */
+
+static void free_when_over(struct connection *connection)
+{
+    if (!connection->closed || connection->calls.running > 0 || connection->pumping) {
+        return;
+    }
+    call_queue_abandon(&connection->calls);
+    lines_deinit(&connection->lines);
+    free(connection->filling.bytes);
+    free(connection->writing.bytes);
+    if (connection->settings.gone) {
+        connection->settings.gone(connection->settings.user, connection);
+    }
+    free(connection);
+}
+
+static void on_closed(uv_handle_t *handle)
+{
+    struct connection *connection = handle->data;
+    connection->closed = true;
+    free_when_over(connection);
+}
+
+void connection_close(struct connection *connection)
+{
+    if (connection->closing) {
+        return;
+    }
+    connection->closing = true;
+    call_queue_abandon(&connection->calls);
+    uv_close((uv_handle_t *)&connection->handle, on_closed);
+}
+
+/* --- writing ------------------------------------------------------------------------------------
+ */
+
+static size_t unread_bytes(const struct connection *connection)
+{
+    return connection->filling.size + connection->writing.size + connection->calls.answer_bytes;
+}
+
+static void on_written(uv_write_t *write, int status)
+{
+    struct connection *connection = write->data;
+    connection->writing.size = 0;
+    if (connection->closing) {
+        return;
+    }
+    if (status < 0) {
+        connection_close(connection);
+        return;
+    }
+    pump(connection);
+}
+
+static void shrink_when_empty(struct call_text *text)
+{
+    if (text->size == 0 && text->capacity > IDLE_BUFFER_BYTES) {
+        free(text->bytes);
+        *text = (struct call_text){0};
+    }
+}
+
+static void write_more(struct connection *connection)
+{
+    if (connection->writing.size > 0 || connection->closing) {
+        return;
+    }
+    shrink_when_empty(&connection->writing);
+    if (connection->filling.size == 0) {
+        return;
+    }
+    struct call_text text = connection->filling;
+    connection->filling = connection->writing;
+    connection->writing = text;
+    connection->write.data = connection;
+    const uv_buf_t buffer = {.base = text.bytes, .len = text.size};
+    if (uv_write(&connection->write, (uv_stream_t *)&connection->handle, &buffer, 1, on_written) <
+        0) {
+        connection->writing.size = 0;
+        connection_close(connection);
+    }
+}
+
+/* --- reading ------------------------------------------------------------------------------------
+ */
+
+static void refuse_long_line(struct connection *connection, size_t bytes)
+{
+    struct fault fault = {0};
+    (void)fault_set(&fault, FAULT_LIMIT, NULL,
+                    "The line is longer than line_limit (%zu bytes) and was passed over.",
+                    connection->settings.line_limit_bytes);
+    call_queue_add_fault(&connection->calls, &fault, bytes);
+}
+
+static void take_lines(struct connection *connection)
+{
+    char *line = NULL;
+    size_t length = 0;
+    size_t taken = 0;
+    while (call_queue_has_room(&connection->calls) && !connection->calls.broken) {
+        enum lines_found found = lines_next(&connection->lines, &line, &length, &taken);
+        if (found == LINES_NONE) {
+            return;
+        }
+        if (found == LINES_LONG) {
+            refuse_long_line(connection, 1);
+        } else if (length > 0) {
+            call_queue_add_line(&connection->calls, line, length);
+        }
+    }
+}
+
+static void on_alloc(uv_handle_t *handle, size_t suggested, uv_buf_t *buffer)
+{
+    (void)suggested; /* it knows nothing of us */
+    struct connection *connection = handle->data;
+    char *room = lines_room(&connection->lines, READ_BYTES);
+    *buffer = (uv_buf_t){.base = room, .len = room ? READ_BYTES : 0};
+}
+
+static void stop_reading(struct connection *connection)
+{
+    if (connection->reading) {
+        connection->reading = false;
+        (void)uv_read_stop((uv_stream_t *)&connection->handle); /* always 0 */
+    }
+}
+
+static void on_read(uv_stream_t *stream, ssize_t count, const uv_buf_t *buffer)
+{
+    (void)buffer; /* it lies in our own lines */
+    struct connection *connection = stream->data;
+    if (connection->closing || count == 0) {
+        return;
+    }
+    if (count == UV_EOF) {
+        connection->draining = true;
+    } else if (count < 0) {
+        connection_close(connection);
+        return;
+    } else {
+        lines_added(&connection->lines, (size_t)count);
+    }
+    pump(connection);
+}
+
+static bool wants_to_read(const struct connection *connection)
+{
+    return !connection->draining && !connection->closing &&
+           unread_bytes(connection) < connection->settings.unread_limit_bytes &&
+           call_queue_has_room(&connection->calls);
+}
+
+/* --- taking it all as far as it goes ------------------------------------------------------------
+ */
+
+static void settle(struct connection *connection)
+{
+    if (!wants_to_read(connection)) {
+        stop_reading(connection);
+    } else if (!connection->reading) {
+        int code = uv_read_start((uv_stream_t *)&connection->handle, on_alloc, on_read);
+        connection->reading = code == 0;
+        if (code < 0) {
+            connection_close(connection);
+        }
+    }
+    if (connection->draining && call_queue_is_empty(&connection->calls) &&
+        unread_bytes(connection) == 0) {
+        connection_close(connection);
+    }
+}
+
+static void pump_once(struct connection *connection)
+{
+    size_t limit = connection->settings.unread_limit_bytes;
+    size_t unread = connection->filling.size + connection->writing.size;
+    take_lines(connection);
+    call_queue_start(&connection->calls, limit > unread ? limit - unread : 0);
+    if (connection->calls.broken ||
+        call_queue_collect(&connection->calls, &connection->filling) < 0) {
+        connection_close(connection);
+        return;
+    }
+    write_more(connection);
+}
+
+/* Calls may end, and writes complete, while calls are started: that only asks for another round. */
+static void pump(struct connection *connection)
+{
+    connection->pump_again = true;
+    if (connection->pumping) {
+        return;
+    }
+    connection->pumping = true;
+    while (connection->pump_again && !connection->closing) {
+        connection->pump_again = false;
+        pump_once(connection);
+    }
+    if (!connection->closing) {
+        settle(connection);
+    }
+    connection->pumping = false;
+}
+
+static void on_call_ended(void *user)
+{
+    struct connection *connection = user;
+    if (connection->closing) {
+        call_queue_abandon(&connection->calls);
+        free_when_over(connection);
+        return;
+    }
+    pump(connection);
+}
+
+/* --- life ---------------------------------------------------------------------------------------
+ */
+
+static uid_t peer_uid(uv_pipe_t *handle)
+{
+    uv_os_fd_t fd = -1;
+    struct ucred peer;
+    socklen_t size = sizeof peer;
+    if (uv_fileno((uv_handle_t *)handle, &fd) < 0 ||
+        getsockopt(fd, SOL_SOCKET, SO_PEERCRED, &peer, &size) < 0) {
+        return (uid_t)-1;
+    }
+    return peer.uid;
+}
+
+int connection_accept(const struct connection_settings *settings, uv_stream_t *listener,
+                      struct connection **ret_connection)
+{
+    struct connection *connection = calloc(1, sizeof *connection);
+    if (!connection) {
+        return UV_ENOMEM;
+    }
+    connection->settings = *settings;
+    int code = uv_pipe_init(settings->loop, &connection->handle, 0);
+    if (code < 0) {
+        free(connection);
+        return code;
+    }
+    connection->handle.data = connection;
+    code = uv_accept(listener, (uv_stream_t *)&connection->handle);
+    if (code < 0) {
+        connection->settings.gone = NULL; /* the owner never knew it */
+        connection_close(connection);
+        return code;
+    }
+    lines_init(&connection->lines, settings->line_limit_bytes);
+    connection->calls = (struct call_queue){.table = settings->table,
+                                            .user = connection,
+                                            .ended = on_call_ended,
+                                            .uid = peer_uid(&connection->handle)};
+    *ret_connection = connection;
+    return 0;
+}
+
+void connection_start(struct connection *connection)
+{
+    pump(connection);
+}
+
+void connection_refuse(struct connection *connection, const struct fault *fault)
+{
+    connection->draining = true;
+    call_queue_add_fault(&connection->calls, fault, 0);
+    pump(connection);
+}
+
+void connection_drain(struct connection *connection)
+{
+    connection->draining = true;
+    connection->calls.stopping = true;
+    pump(connection);
+}
+
+struct connection_links *connection_links(struct connection *connection)
+{
+    return &connection->links;
+}

@@ -1,0 +1,260 @@
+/*
+ * Happy path: server_new locks, binds and listens; every accepted connection is put in the list and
+ * takes itself out when it is gone; server_drain closes the listener, drains all connections and
+ * frees the server once the last handle is closed.
+ *
+ * Failure paths: what server_new had taken it gives back, the lock last; the handles it had opened
+ * close in the loop, after which the memory is freed.
+ */
+#include "daemon/server.h"
+
+#include <assert.h>
+#include <errno.h>
+#include <limits.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+#include <sys/socket.h>
+#include <sys/stat.h>
+#include <sys/un.h>
+#include <unistd.h>
+
+#include "daemon/connection.h"
+#include "daemon/lockfile.h"
+
+enum {
+    BACKLOG = 128,
+    SOCKET_MODE_MASK = 0117 /* leaves 0660 */
+};
+
+struct server {
+    struct server_settings settings;
+    char socket_path[sizeof((struct sockaddr_un *)0)->sun_path];
+    struct connection_settings connections;
+    struct connection *first;
+    unsigned open;
+    uv_pipe_t listener;
+    uv_timer_t drain_timer;
+    unsigned handles; /* of the two above, not closed yet */
+    int lock_fd;
+    bool draining;
+    void (*done)(void *user);
+    void *user;
+};
+
+/* --- the end ---------------------------------------------------------------------------------- */
+
+static void free_server(struct server *server)
+{
+    if (server->lock_fd >= 0) {
+        (void)close(server->lock_fd); /* ends the lock; nothing is written there */
+    }
+    free(server);
+}
+
+static void on_handle_closed(uv_handle_t *handle)
+{
+    struct server *server = handle->data;
+    if (--server->handles > 0) {
+        return;
+    }
+    void (*done)(void *) = server->done;
+    void *user = server->user;
+    free_server(server);
+    if (done) {
+        done(user);
+    }
+}
+
+/* --- the connections ----------------------------------------------------------------------------
+ */
+
+static void free_when_over(struct server *server)
+{
+    if (!server->draining || server->open > 0) {
+        return;
+    }
+    if (!uv_is_closing((uv_handle_t *)&server->drain_timer)) {
+        uv_close((uv_handle_t *)&server->drain_timer, on_handle_closed);
+    }
+}
+
+static void on_gone(void *user, struct connection *connection)
+{
+    struct server *server = user;
+    struct connection_links *links = connection_links(connection);
+    if (links->previous) {
+        connection_links(links->previous)->next = links->next;
+    } else {
+        server->first = links->next;
+    }
+    if (links->next) {
+        connection_links(links->next)->previous = links->previous;
+    }
+    server->open--;
+    free_when_over(server);
+}
+
+static void add_connection(struct server *server, struct connection *connection)
+{
+    connection_links(connection)->next = server->first;
+    if (server->first) {
+        connection_links(server->first)->previous = connection;
+    }
+    server->first = connection;
+    server->open++;
+}
+
+static void on_connection(uv_stream_t *listener, int status)
+{
+    struct server *server = listener->data;
+    struct connection *connection = NULL;
+    if (status < 0 || server->draining ||
+        connection_accept(&server->connections, listener, &connection) < 0) {
+        return; /* libuv tells again when there is something to accept */
+    }
+    add_connection(server, connection);
+    if (server->open > server->settings.connections_limit) {
+        struct fault fault = {0};
+        (void)fault_set(&fault, FAULT_LIMIT, NULL,
+                        "There are %u connections open already, which is the limit; try again "
+                        "later.",
+                        server->settings.connections_limit);
+        connection_refuse(connection, &fault);
+    } else {
+        connection_start(connection);
+    }
+}
+
+/* --- listening ----------------------------------------------------------------------------------
+ */
+
+static int fail(char *error, int code, const char *what, const char *path)
+{
+    (void)snprintf(error, SERVER_ERROR_BYTES, "%s %.300s: %s", what, path, uv_strerror(code));
+    return code;
+}
+
+static int take_lock(struct server *server, char *error)
+{
+    char path[sizeof server->socket_path + 8];
+    (void)snprintf(path, sizeof path, "%s.lock", server->socket_path);
+    int code = lockfile_take(path, &server->lock_fd, error);
+    return code == -EWOULDBLOCK ? UV_EADDRINUSE : code;
+}
+
+/* Whoever holds the lock knows that no daemon listens there. What is no socket stays. */
+static int remove_stale_socket(const char *path, char *error)
+{
+    struct stat status;
+    if (lstat(path, &status) < 0) {
+        return errno == ENOENT ? 0 : fail(error, -errno, "cannot look at", path);
+    }
+    if (!S_ISSOCK(status.st_mode)) {
+        return fail(error, UV_EEXIST, "there is something that is no socket at", path);
+    }
+    return unlink(path) < 0 ? fail(error, -errno, "cannot remove the stale socket", path) : 0;
+}
+
+/* The mode must be right from the first moment: what chmod makes right later was open before. */
+static int bind_and_listen(struct server *server, char *error)
+{
+    mode_t mask = umask(SOCKET_MODE_MASK);
+    int code = uv_pipe_bind(&server->listener, server->socket_path);
+    (void)umask(mask); /* cannot fail */
+    if (code == 0) {
+        code = uv_listen((uv_stream_t *)&server->listener, BACKLOG, on_connection);
+    }
+    return code < 0 ? fail(error, code, "cannot listen at", server->socket_path) : 0;
+}
+
+static int init_handles(uv_loop_t *loop, struct server *server)
+{
+    int code = uv_pipe_init(loop, &server->listener, 0);
+    if (code < 0) {
+        return code;
+    }
+    code = uv_timer_init(loop, &server->drain_timer);
+    assert(code == 0); /* libuv documents no failure */
+    server->listener.data = server;
+    server->drain_timer.data = server;
+    server->handles = 2;
+    return 0;
+}
+
+int server_new(uv_loop_t *loop, const struct server_settings *settings,
+               const struct method_table *table, struct server **ret_server, char *error)
+{
+    struct server *server = calloc(1, sizeof *server);
+    if (!server) {
+        return fail(error, UV_ENOMEM, "cannot serve", settings->socket_path);
+    }
+    server->settings = *settings;
+    server->lock_fd = -1;
+    int length =
+        snprintf(server->socket_path, sizeof server->socket_path, "%s", settings->socket_path);
+    if (length <= 0 || (size_t)length >= sizeof server->socket_path) {
+        (void)snprintf(error, SERVER_ERROR_BYTES,
+                       "the socket's path is 1 to %zu bytes long, not %zu: choose a shorter one",
+                       sizeof server->socket_path - 1, strlen(settings->socket_path));
+        free_server(server);
+        return UV_ENAMETOOLONG;
+    }
+    server->connections =
+        (struct connection_settings){.loop = loop,
+                                     .table = table,
+                                     .line_limit_bytes = settings->line_limit_bytes,
+                                     .unread_limit_bytes = settings->unread_limit_bytes,
+                                     .user = server,
+                                     .gone = on_gone};
+    int code = take_lock(server, error);
+    if (code == 0) {
+        code = remove_stale_socket(server->socket_path, error);
+    }
+    if (code == 0) {
+        code = init_handles(loop, server);
+    }
+    if (code < 0) {
+        free_server(server);
+        return code;
+    }
+    code = bind_and_listen(server, error);
+    if (code < 0) {
+        uv_close((uv_handle_t *)&server->listener, on_handle_closed);
+        uv_close((uv_handle_t *)&server->drain_timer, on_handle_closed);
+        return code;
+    }
+    *ret_server = server;
+    return 0;
+}
+
+unsigned server_connections(const struct server *server)
+{
+    return server->open;
+}
+
+/* --- draining -----------------------------------------------------------------------------------
+ */
+
+static void on_drain_over(uv_timer_t *timer)
+{
+    struct server *server = timer->data;
+    for (struct connection *c = server->first; c; c = connection_links(c)->next) {
+        connection_close(c); /* takes itself out of the list later */
+    }
+}
+
+void server_drain(struct server *server, void (*done)(void *user), void *user)
+{
+    server->draining = true;
+    server->done = done;
+    server->user = user;
+    /* Closing the listener removes the socket's file, too: we hold the lock until the end. */
+    uv_close((uv_handle_t *)&server->listener, on_handle_closed);
+    int code = uv_timer_start(&server->drain_timer, on_drain_over, server->settings.drain_ms, 0);
+    assert(code == 0); /* fails only without a callback */
+    for (struct connection *c = server->first; c; c = connection_links(c)->next) {
+        connection_drain(c);
+    }
+    free_when_over(server);
+}

@@ -1,0 +1,291 @@
+#include "daemon/backlog.h"
+
+#include <errno.h>
+#include <pthread.h>
+#include <stdlib.h>
+#include <time.h>
+
+enum {
+    MARKS = 256,
+    COST_OF_A_CHANGE = 400, /* counts move and a few tags are learned whatever the text */
+    COST_OF_A_TAG = 60,
+    ROOM_LEAST = 100 * 1000,     /* cost that may always wait, some 100 short items */
+    RATE_FIRST = 2 * 1000 * 1000 /* cost a second, until measured: less than any machine does */
+};
+
+/* The share of the promised time that the writer lets the trainer be behind. */
+static const double BEHIND_SHARE = 0.4;
+
+/* How fast the measured rate follows what is measured, per second of learning. */
+static const double RATE_FOLLOWS = 4.0;
+
+/* What was committed when. */
+struct mark {
+    uint64_t seq;
+    uint64_t at_ms;
+};
+
+struct backlog {
+    pthread_mutex_t mutex;
+    pthread_cond_t committed_more;
+    pthread_cond_t learned_more;
+    struct backlog_numbers numbers;
+    uint64_t visible_within_ms;
+    uint64_t found;           /* changes up to here were there at the start: not promised */
+    uint64_t cost_behind;     /* of what is committed, not learned, and promised */
+    double rate;              /* cost a second that the trainer does */
+    struct mark marks[MARKS]; /* a ring, rising in both members: what is not learned yet */
+    size_t first_mark;
+    size_t mark_count;
+    bool trainer_failed;
+    bool stopping;
+};
+
+static int init_condition(pthread_cond_t *condition)
+{
+    pthread_condattr_t attributes;
+    if (pthread_condattr_init(&attributes) != 0) {
+        return -ENOMEM;
+    }
+    int code = pthread_condattr_setclock(&attributes, CLOCK_MONOTONIC);
+    if (code == 0) {
+        code = pthread_cond_init(condition, &attributes);
+    }
+    (void)pthread_condattr_destroy(&attributes); /* no failure for an initialised one */
+    return -code;
+}
+
+int backlog_new(const struct backlog_start *start, struct backlog **ret_backlog)
+{
+    struct backlog *backlog = calloc(1, sizeof *backlog);
+    if (!backlog) {
+        return -ENOMEM;
+    }
+    backlog->numbers = (struct backlog_numbers){
+        .committed = start->committed, .learned = start->learned, .kept = start->learned};
+    backlog->found = start->committed;
+    backlog->visible_within_ms = start->visible_within_ms;
+    backlog->rate = RATE_FIRST;
+    int code = -pthread_mutex_init(&backlog->mutex, NULL);
+    if (code < 0) {
+        goto fail_mutex;
+    }
+    code = init_condition(&backlog->committed_more);
+    if (code < 0) {
+        goto fail_committed;
+    }
+    code = init_condition(&backlog->learned_more);
+    if (code < 0) {
+        goto fail_learned;
+    }
+    *ret_backlog = backlog;
+    return 0;
+fail_learned:
+    (void)pthread_cond_destroy(&backlog->committed_more);
+fail_committed:
+    (void)pthread_mutex_destroy(&backlog->mutex);
+fail_mutex:
+    free(backlog);
+    return code;
+}
+
+void backlog_free(struct backlog *backlog)
+{
+    if (!backlog) {
+        return;
+    }
+    (void)pthread_cond_destroy(&backlog->learned_more); /* nobody waits any more */
+    (void)pthread_cond_destroy(&backlog->committed_more);
+    (void)pthread_mutex_destroy(&backlog->mutex);
+    free(backlog);
+}
+
+/* Errors of these are errors of ours alone. */
+static void lock(struct backlog *backlog)
+{
+    if (pthread_mutex_lock(&backlog->mutex) != 0) {
+        abort();
+    }
+}
+
+static void unlock(struct backlog *backlog)
+{
+    if (pthread_mutex_unlock(&backlog->mutex) != 0) {
+        abort();
+    }
+}
+
+uint64_t backlog_cost(size_t text_bytes, size_t tags)
+{
+    return COST_OF_A_CHANGE + text_bytes + COST_OF_A_TAG * tags;
+}
+
+/* --- writer -------------------------------------------------------------------------------------
+ */
+
+static uint64_t room(const struct backlog *backlog)
+{
+    double most = backlog->rate * (double)backlog->visible_within_ms / 1000.0 * BEHIND_SHARE;
+    uint64_t limit = most > ROOM_LEAST ? (uint64_t)most : ROOM_LEAST;
+    return backlog->cost_behind < limit ? limit - backlog->cost_behind : 0;
+}
+
+/* While the backlog of a start is being learned, feeding goes on at full speed. */
+static bool is_catching_up(const struct backlog *backlog)
+{
+    return backlog->numbers.learned < backlog->found;
+}
+
+uint64_t backlog_wait_for_room(struct backlog *backlog)
+{
+    lock(backlog);
+    while (room(backlog) == 0 && !backlog->stopping && !backlog->trainer_failed &&
+           !is_catching_up(backlog)) {
+        (void)pthread_cond_wait(&backlog->learned_more, &backlog->mutex);
+    }
+    uint64_t cost = backlog->trainer_failed || is_catching_up(backlog) ? UINT64_MAX : room(backlog);
+    unlock(backlog);
+    return cost > 0 ? cost : 1;
+}
+
+/* A full ring gives the newest mark the new seq, and leaves it its earlier time. */
+static void add_mark(struct backlog *backlog, struct mark mark)
+{
+    if (backlog->mark_count == MARKS) {
+        size_t last = (backlog->first_mark + MARKS - 1) % MARKS;
+        backlog->marks[last].seq = mark.seq;
+        return;
+    }
+    backlog->marks[(backlog->first_mark + backlog->mark_count) % MARKS] = mark;
+    backlog->mark_count++;
+}
+
+void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t now_ms)
+{
+    lock(backlog);
+    backlog->numbers.committed = seq;
+    backlog->cost_behind += cost;
+    add_mark(backlog, (struct mark){.seq = seq, .at_ms = now_ms});
+    (void)pthread_cond_signal(&backlog->committed_more);
+    unlock(backlog);
+}
+
+/* --- trainer ------------------------------------------------------------------------------------
+ */
+
+static struct timespec deadline_of(uint64_t timeout_ms)
+{
+    struct timespec deadline = {0};
+    (void)clock_gettime(CLOCK_MONOTONIC, &deadline); /* always there on Linux */
+    deadline.tv_sec += (time_t)(timeout_ms / 1000);
+    deadline.tv_nsec += (long)(timeout_ms % 1000) * 1000000L;
+    if (deadline.tv_nsec >= 1000000000L) {
+        deadline.tv_nsec -= 1000000000L;
+        deadline.tv_sec++;
+    }
+    return deadline;
+}
+
+uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64_t timeout_ms)
+{
+    struct timespec deadline = deadline_of(timeout_ms);
+    lock(backlog);
+    int code = 0;
+    while (backlog->numbers.committed <= learned && !backlog->stopping && code == 0) {
+        code = pthread_cond_timedwait(&backlog->committed_more, &backlog->mutex, &deadline);
+    }
+    uint64_t committed = backlog->numbers.committed;
+    unlock(backlog);
+    return committed;
+}
+
+void backlog_learned(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t took_us)
+{
+    lock(backlog);
+    bool was_promised = seq > backlog->found;
+    backlog->numbers.learned = seq;
+    if (was_promised) {
+        backlog->cost_behind -= cost < backlog->cost_behind ? cost : backlog->cost_behind;
+    }
+    if (took_us > 0) {
+        double weight = RATE_FOLLOWS * (double)took_us / 1e6;
+        weight = weight < 1.0 ? weight : 1.0;
+        backlog->rate += weight * ((double)cost * 1e6 / (double)took_us - backlog->rate);
+    }
+    if (seq >= backlog->numbers.committed) {
+        backlog->cost_behind = 0;
+    }
+    while (backlog->mark_count > 0 && backlog->marks[backlog->first_mark].seq <= seq) {
+        backlog->first_mark = (backlog->first_mark + 1) % MARKS;
+        backlog->mark_count--;
+    }
+    (void)pthread_cond_broadcast(&backlog->learned_more);
+    unlock(backlog);
+}
+
+void backlog_kept(struct backlog *backlog, uint64_t seq)
+{
+    lock(backlog);
+    backlog->numbers.kept = seq;
+    unlock(backlog);
+}
+
+void backlog_trainer_failed(struct backlog *backlog)
+{
+    lock(backlog);
+    backlog->trainer_failed = true;
+    (void)pthread_cond_broadcast(&backlog->learned_more);
+    unlock(backlog);
+}
+
+/* --- whoever asks -------------------------------------------------------------------------------
+ */
+
+/* The newest seq that was committed visible_within_ms ago and is not learned yet; 0: none. */
+static uint64_t seq_due(const struct backlog *backlog, uint64_t now_ms)
+{
+    uint64_t due = 0;
+    for (size_t i = 0; i < backlog->mark_count; i++) {
+        const struct mark *mark = &backlog->marks[(backlog->first_mark + i) % MARKS];
+        if (mark->at_ms + backlog->visible_within_ms > now_ms) {
+            break;
+        }
+        due = mark->seq;
+    }
+    return due;
+}
+
+void backlog_wait_for_promise(struct backlog *backlog, uint64_t now_ms)
+{
+    lock(backlog);
+    uint64_t due = is_catching_up(backlog) ? 0 : seq_due(backlog, now_ms);
+    while (backlog->numbers.learned < due && !backlog->stopping && !backlog->trainer_failed) {
+        (void)pthread_cond_wait(&backlog->learned_more, &backlog->mutex);
+    }
+    unlock(backlog);
+}
+
+struct backlog_numbers backlog_read(struct backlog *backlog)
+{
+    lock(backlog);
+    struct backlog_numbers numbers = backlog->numbers;
+    unlock(backlog);
+    return numbers;
+}
+
+void backlog_stop(struct backlog *backlog)
+{
+    lock(backlog);
+    backlog->stopping = true;
+    (void)pthread_cond_broadcast(&backlog->committed_more);
+    (void)pthread_cond_broadcast(&backlog->learned_more);
+    unlock(backlog);
+}
+
+bool backlog_is_stopping(struct backlog *backlog)
+{
+    lock(backlog);
+    bool stopping = backlog->stopping;
+    unlock(backlog);
+    return stopping;
+}

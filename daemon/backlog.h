@@ -1,0 +1,79 @@
+/*
+ * backlog: how far the changes have come: committed (durable), learned (in the model), kept (in
+ * the stored model). The writer, the trainer and whoever asks wait here for each other.
+ *
+ * The promise it keeps: what was committed `visible_within` ago is learned. The writer waits before
+ * it commits more than the trainer can learn in a part of that time; and a reader that comes while
+ * the trainer is late all the same waits for it. What was there before a start is not promised:
+ * it is a backlog that `learned` tells of.
+ *
+ * All functions may be called from any thread. Times are milliseconds of one steady clock.
+ */
+#ifndef UNDERTAG_BACKLOG_H
+#define UNDERTAG_BACKLOG_H
+
+#include <stdbool.h>
+#include <stddef.h>
+#include <stdint.h>
+
+struct backlog;
+
+struct backlog_start {
+    uint64_t committed; /* as found in the store */
+    uint64_t learned;   /* as found in the stored model */
+    uint64_t visible_within_ms;
+};
+
+int backlog_new(const struct backlog_start *start, struct backlog **ret_backlog)
+    __attribute__((warn_unused_result));
+void backlog_free(struct backlog *backlog);
+
+/* What it takes to learn a change, in no unit: more for more text and more tags. */
+uint64_t backlog_cost(size_t text_bytes, size_t tags);
+
+/* --- writer --- */
+
+/*
+ * Waits until the trainer is near enough for more to be committed (or stops, or has failed);
+ * returns how much cost may be committed now, 1 at least.
+ */
+uint64_t backlog_wait_for_room(struct backlog *backlog);
+
+/* Changes up to `seq` are durable; the new ones cost this much. */
+void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t now_ms);
+
+/* --- trainer --- */
+
+/*
+ * Waits until there is something to learn behind `learned`, the time is over, or it is to stop.
+ * Returns the last committed seq.
+ */
+uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64_t timeout_ms);
+
+/* The model has learned up to `seq`; what is new of it cost this much and took this long. */
+void backlog_learned(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t took_us);
+
+/* The stored model has learned up to `seq`. */
+void backlog_kept(struct backlog *backlog, uint64_t seq);
+
+/* There will be no more learning: nobody waits for it from now on. */
+void backlog_trainer_failed(struct backlog *backlog);
+
+/* --- whoever asks --- */
+
+/* Waits until what was committed visible_within_ms before now is learned. */
+void backlog_wait_for_promise(struct backlog *backlog, uint64_t now_ms);
+
+struct backlog_numbers {
+    uint64_t committed;
+    uint64_t learned;
+    uint64_t kept;
+};
+
+struct backlog_numbers backlog_read(struct backlog *backlog);
+
+/* Everybody who waits returns, now and from now on. */
+void backlog_stop(struct backlog *backlog);
+bool backlog_is_stopping(struct backlog *backlog);
+
+#endif

@@ -1,0 +1,397 @@
+/*
+ * Happy path: take the home's lock, open both environments, load the model if it is one of this
+ * store and these settings (otherwise all items are learned again), start trainer and writer.
+ *
+ * Failure paths: every step that fails closes what the steps before it have opened, in reverse.
+ */
+#include "daemon/engine.h"
+
+#include <errno.h>
+#include <stdatomic.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+#include <sys/random.h>
+#include <sysexits.h>
+#include <unistd.h>
+
+#include "daemon/clock.h"
+#include "daemon/home.h"
+#include "daemon/log.h"
+#include "daemon/shared_model.h"
+#include "daemon/trainer.h"
+
+struct engine {
+    struct options options;
+    char learning_text[MODEL_STORE_SETTINGS_BYTES];
+    struct features_settings features;
+    int lock_fd;
+    struct store *store;
+    struct model_store *model_store;
+    struct shared_model shared;
+    struct backlog *backlog;
+    struct troubles troubles;
+    struct workspaces workspaces;
+    struct trainer *trainer;
+    struct writer *writer;
+    atomic_uint_fast64_t questions;
+};
+
+/* --- errors into exit codes ---------------------------------------------------------------------
+ */
+
+static int exit_code_of(enum store_code code)
+{
+    switch (code) {
+    case STORE_NO_MEMORY:
+        return EX_OSERR;
+    case STORE_FULL:
+        return EX_TEMPFAIL;
+    case STORE_NEWER:
+        return EX_CONFIG;
+    case STORE_DENIED:
+        return EX_NOPERM;
+    default:
+        return EX_IOERR;
+    }
+}
+
+static int fail_store(char *error, const struct store_error *reason)
+{
+    (void)snprintf(error, ENGINE_ERROR_BYTES, "%s",
+                   reason->text[0] ? reason->text : store_code_sentence(reason->code));
+    return exit_code_of(reason->code);
+}
+
+static int fail_errno(char *error, const char *what, int code)
+{
+    (void)snprintf(error, ENGINE_ERROR_BYTES, "%s: %s", what, strerror(-code));
+    return EX_OSERR;
+}
+
+/* --- the model ----------------------------------------------------------------------------------
+ */
+
+static struct model_settings model_settings_of(const struct options *options)
+{
+    return (struct model_settings){
+        .weights = {.surrogate = options->loss,
+                    .step = options->step,
+                    .specificity = options->specificity},
+        .curve = {.a = options->propensity_a, .b = options->propensity_b},
+        .correction = options->correction,
+        .even_out = options->even_out,
+        .balance = options->balance,
+        .step = options->step,
+        .evidence_half_life_items = options->evidence_half_life};
+}
+
+static struct model_origin origin_of(const struct engine *engine, uint64_t last_seq)
+{
+    return (struct model_origin){.store_uuid = store_uuid(engine->store),
+                                 .settings = engine->learning_text,
+                                 .last_seq = last_seq};
+}
+
+static int last_seq(struct engine *engine, uint64_t *ret_seq, struct store_error *error)
+{
+    struct store_view *view = NULL;
+    int code = store_read(engine->store, &view, error);
+    if (code == STORE_OK) {
+        *ret_seq = store_view_totals(view).seq;
+        store_end(view);
+    }
+    return code;
+}
+
+static int new_model(const struct engine *engine, struct model **ret_model,
+                     struct store_error *error)
+{
+    const struct model_settings settings = model_settings_of(&engine->options);
+    if (model_new(&settings, &engine->features.key, ret_model) < 0) {
+        return store_fail(error, STORE_NO_MEMORY, "there is no memory for a model");
+    }
+    return STORE_OK;
+}
+
+/* Starts over from the items, of which nothing is lost. */
+static int relearn(struct engine *engine, const char *why, struct model **ret_model,
+                   struct store_error *error)
+{
+    log_line(LOG_CAUTION, "%s: all items are learned again; until then answers are incomplete",
+             why);
+    int code = model_keeper_reset(engine->model_store, error);
+    return code == STORE_OK ? new_model(engine, ret_model, error) : code;
+}
+
+static int load_model(struct engine *engine, uint64_t seq, struct model **ret_model,
+                      uint64_t *ret_learned, struct store_error *error)
+{
+    const struct model_origin origin = origin_of(engine, seq);
+    enum model_kept kept = MODEL_KEPT_NONE;
+    struct model *model = NULL;
+    int code = model_keeper_look(engine->model_store, &origin, &kept, ret_learned, error);
+    if (code != STORE_OK) {
+        return code;
+    }
+    if (kept == MODEL_KEPT_OTHER) {
+        return relearn(engine, "the stored model was learned with other settings", ret_model,
+                       error);
+    }
+    code = new_model(engine, &model, error);
+    if (code == STORE_OK && kept == MODEL_KEPT_OURS) {
+        code = model_keeper_load(engine->model_store, model, error);
+    }
+    if (code == STORE_OK) {
+        *ret_model = model;
+        return STORE_OK;
+    }
+    model_free(model);
+    if (code == STORE_CORRUPT) {
+        *error = (struct store_error){0};
+        *ret_learned = 0;
+        return relearn(engine, "the stored model is damaged", ret_model, error);
+    }
+    return code;
+}
+
+/* --- opening ------------------------------------------------------------------------------------
+ */
+
+static int prepare_settings(struct engine *engine, char *error)
+{
+    const struct options *options = &engine->options;
+    if (options_learning_text(options, engine->learning_text, sizeof engine->learning_text) < 0) {
+        return fail_errno(error, "the settings of learning are too long to be stored", -E2BIG);
+    }
+    engine->features = (struct features_settings){.words = {.stemming = options->stemming,
+                                                            .pairs = options->word_pairs,
+                                                            .language = options->language},
+                                                  .title_weight = options->title_weight};
+    if (getrandom(&engine->features.key, sizeof engine->features.key, 0) !=
+        (ssize_t)sizeof engine->features.key) {
+        return fail_errno(error, "there is no randomness", -errno);
+    }
+    return 0;
+}
+
+static int open_environments(struct engine *engine, const char *home, char *error)
+{
+    struct store_error reason = {0};
+    const struct store_settings settings = {.home = home,
+                                            .map_bytes = engine->options.map_size_bytes,
+                                            .reserve_bytes = engine->options.disk_reserve_bytes};
+    if (store_open(&settings, &engine->store, &reason) != STORE_OK) {
+        return fail_store(error, &reason);
+    }
+    if (model_store_open(&settings, &engine->model_store, &reason) != STORE_OK) {
+        store_close(engine->store);
+        return fail_store(error, &reason);
+    }
+    return 0;
+}
+
+static int open_model(struct engine *engine, char *error)
+{
+    struct store_error reason = {0};
+    struct model *model = NULL;
+    uint64_t seq = 0;
+    uint64_t learned = 0;
+    if (last_seq(engine, &seq, &reason) != STORE_OK ||
+        load_model(engine, seq, &model, &learned, &reason) != STORE_OK) {
+        return fail_store(error, &reason);
+    }
+    int code = shared_model_init_take(&engine->shared, model, learned);
+    if (code < 0) {
+        return fail_errno(error, "the model cannot be shared", code);
+    }
+    const struct backlog_start start = {.committed = seq,
+                                        .learned = learned,
+                                        .visible_within_ms = engine->options.visible_within_ms};
+    code = backlog_new(&start, &engine->backlog);
+    if (code < 0) {
+        shared_model_deinit(&engine->shared);
+        return fail_errno(error, "the backlog cannot be followed", code);
+    }
+    return 0;
+}
+
+static void on_kept(void *user)
+{
+    struct engine *engine = user;
+    writer_wake(engine->writer);
+}
+
+static int start_threads(struct engine *engine, const struct engine_settings *settings)
+{
+    const struct writer_settings writer = {.store = engine->store,
+                                           .backlog = engine->backlog,
+                                           .troubles = &engine->troubles,
+                                           .features = &engine->features,
+                                           .user = settings->user,
+                                           .done = settings->changes_done};
+    const struct trainer_settings trainer = {.store = engine->store,
+                                             .model_store = engine->model_store,
+                                             .shared = &engine->shared,
+                                             .backlog = engine->backlog,
+                                             .troubles = &engine->troubles,
+                                             .features = &engine->features,
+                                             .origin = origin_of(engine, 0),
+                                             .flush_every_ms = engine->options.flush_every_ms,
+                                             .flush_changes = engine->options.flush_changes,
+                                             .user = engine,
+                                             .kept = on_kept};
+    int code = writer_new(&writer, &engine->writer);
+    if (code < 0) {
+        return code;
+    }
+    code = trainer_new(&trainer, &engine->trainer);
+    if (code < 0) {
+        backlog_stop(engine->backlog);
+        writer_free(engine->writer);
+    }
+    return code;
+}
+
+int engine_open(const struct engine_settings *settings, struct engine **ret_engine, char *error)
+{
+    struct engine *engine = calloc(1, sizeof *engine);
+    if (!engine) {
+        return fail_errno(error, "the daemon cannot start", -ENOMEM);
+    }
+    engine->options = *settings->options;
+    int exit_code = prepare_settings(engine, error);
+    if (exit_code != 0) {
+        goto fail_settings;
+    }
+    int code = home_open(settings->home, &engine->lock_fd, error);
+    if (code < 0) {
+        exit_code = code == -EWOULDBLOCK                ? EX_TEMPFAIL
+                    : code == -EACCES || code == -EPERM ? EX_NOPERM
+                                                        : EX_IOERR;
+        goto fail_settings;
+    }
+    exit_code = open_environments(engine, settings->home, error);
+    if (exit_code != 0) {
+        goto fail_environments;
+    }
+    exit_code = open_model(engine, error);
+    if (exit_code != 0) {
+        goto fail_model;
+    }
+    code = troubles_init(&engine->troubles);
+    if (code < 0) {
+        exit_code = fail_errno(error, "the daemon cannot start", code);
+        goto fail_troubles;
+    }
+    code = workspaces_init(&engine->workspaces, &engine->features);
+    if (code < 0) {
+        exit_code = fail_errno(error, "the daemon cannot start", code);
+        goto fail_workspaces;
+    }
+    code = start_threads(engine, settings);
+    if (code < 0) {
+        exit_code = fail_errno(error, "a thread cannot be started", code);
+        goto fail_threads;
+    }
+    *ret_engine = engine;
+    return 0;
+fail_threads:
+    workspaces_deinit(&engine->workspaces);
+fail_workspaces:
+    troubles_deinit(&engine->troubles);
+fail_troubles:
+    backlog_free(engine->backlog);
+    shared_model_deinit(&engine->shared);
+fail_model:
+    model_store_close(engine->model_store);
+    store_close(engine->store);
+fail_environments:
+    (void)close(engine->lock_fd); /* ends the lock; nothing is written there */
+fail_settings:
+    free(engine);
+    return exit_code;
+}
+
+void engine_close(struct engine *engine)
+{
+    if (!engine) {
+        return;
+    }
+    backlog_stop(engine->backlog);
+    trainer_free(engine->trainer); /* it wakes the writer, so the writer goes after it */
+    writer_free(engine->writer);
+    workspaces_deinit(&engine->workspaces);
+    troubles_deinit(&engine->troubles);
+    backlog_free(engine->backlog);
+    shared_model_deinit(&engine->shared);
+    model_store_close(engine->model_store);
+    store_close(engine->store);
+    (void)close(engine->lock_fd); /* ends the lock; nothing is written there */
+    free(engine);
+}
+
+/* --- what the methods stand on ------------------------------------------------------------------
+ */
+
+void engine_push(struct engine *engine, struct change *change)
+{
+    writer_push(engine->writer, change);
+}
+
+struct change *engine_take_done(struct engine *engine)
+{
+    return writer_take_done(engine->writer);
+}
+
+struct store *engine_store(struct engine *engine)
+{
+    return engine->store;
+}
+
+struct workspaces *engine_workspaces(struct engine *engine)
+{
+    return &engine->workspaces;
+}
+
+struct troubles *engine_troubles(struct engine *engine)
+{
+    return &engine->troubles;
+}
+
+int engine_ask(struct engine *engine, const struct model_question *question,
+               struct workspace *workspace, struct model_answer *ret_answer, uint64_t *ret_learned)
+{
+    backlog_wait_for_promise(engine->backlog, clock_steady_ms());
+    shared_model_read(&engine->shared);
+    int code = engine->shared.broken
+                   ? -ENOMEM
+                   : model_ask(engine->shared.model, question, workspace->scratch, ret_answer);
+    *ret_learned = engine->shared.learned;
+    shared_model_unlock(&engine->shared);
+    atomic_fetch_add_explicit(&engine->questions, 1, memory_order_relaxed);
+    return code;
+}
+
+double engine_propensity(const struct engine *engine, uint64_t unprompted, uint64_t items)
+{
+    const struct propensity_curve curve = {.a = engine->options.propensity_a,
+                                           .b = engine->options.propensity_b};
+    return propensity_of_curve(&curve, (double)unprompted, (double)items);
+}
+
+struct engine_counts engine_count(struct engine *engine)
+{
+    return (struct engine_counts){
+        .progress = backlog_read(engine->backlog),
+        .questions = atomic_load_explicit(&engine->questions, memory_order_relaxed)};
+}
+
+void engine_measure(struct engine *engine, struct engine_size *ret_size)
+{
+    shared_model_read(&engine->shared);
+    model_measure(engine->shared.model, &ret_size->model);
+    shared_model_unlock(&engine->shared);
+    ret_size->store_bytes = store_file_bytes(engine->store);
+    ret_size->model_bytes = model_store_file_bytes(engine->model_store);
+}

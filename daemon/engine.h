@@ -1,0 +1,81 @@
+/*
+ * engine: a home that is open: the store, the model, and the two threads that change them. What the
+ * methods stand on.
+ */
+#ifndef UNDERTAG_ENGINE_H
+#define UNDERTAG_ENGINE_H
+
+#include <stdint.h>
+
+#include "daemon/backlog.h"
+#include "daemon/options.h"
+#include "daemon/troubles.h"
+#include "daemon/workspace.h"
+#include "daemon/writer.h"
+#include "storage/store.h"
+
+struct engine;
+
+struct engine_settings {
+    const char *home;
+    const struct options *options; /* copied */
+    void *user;
+    void (*changes_done)(void *user); /* engine_take_done has something; any thread */
+};
+
+enum {
+    ENGINE_ERROR_BYTES = 640
+};
+
+/*
+ * Opens the home, loads what is stored of the model, and starts to learn what it is behind. On
+ * failure returns the exit code for main (sysexits.h), with a sentence in `error`.
+ */
+int engine_open(const struct engine_settings *settings, struct engine **ret_engine, char *error)
+    __attribute__((warn_unused_result));
+
+/* Ends both threads, stores the model and closes the home. */
+void engine_close(struct engine *engine);
+
+/* --- changes: loop thread --- */
+
+void engine_push(struct engine *engine, struct change *change);
+struct change *engine_take_done(struct engine *engine);
+
+/* --- reading: any thread --- */
+
+struct store *engine_store(struct engine *engine);
+struct workspaces *engine_workspaces(struct engine *engine);
+
+/*
+ * Asks the model, which has learned what it must have (see backlog.h) and says up to where. The
+ * answer lies in the workspace's scratch. Returns 0, or -ENOMEM where memory ran out, now or when
+ * the model learned last.
+ */
+int engine_ask(struct engine *engine, const struct model_question *question,
+               struct workspace *workspace, struct model_answer *ret_answer, uint64_t *ret_learned)
+    __attribute__((warn_unused_result));
+
+/* The propensity of a tag given `unprompted` times in `items` items, by the curve. */
+double engine_propensity(const struct engine *engine, uint64_t unprompted, uint64_t items);
+
+struct engine_counts {
+    struct backlog_numbers progress;
+    uint64_t questions; /* asked since the start */
+};
+
+/* What can be told without waiting. */
+struct engine_counts engine_count(struct engine *engine);
+
+struct engine_size {
+    struct model_size model;
+    uint64_t store_bytes;
+    uint64_t model_bytes; /* in its file */
+};
+
+/* Waits for the model's lock. */
+void engine_measure(struct engine *engine, struct engine_size *ret_size);
+
+struct troubles *engine_troubles(struct engine *engine);
+
+#endif

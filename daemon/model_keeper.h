@@ -1,0 +1,52 @@
+/*
+ * model_keeper: the learner's model into its store and back. It knows both sides' parts; neither
+ * side knows the other.
+ */
+#ifndef UNDERTAG_MODEL_KEEPER_H
+#define UNDERTAG_MODEL_KEEPER_H
+
+#include <stdbool.h>
+#include <stdint.h>
+
+#include "daemon/learner/model.h"
+#include "storage/model_store.h"
+
+/* What a stored model must have been made from to be taken for ours. */
+struct model_origin {
+    const unsigned char *store_uuid; /* STORE_UUID_BYTES */
+    const char *settings;            /* what it is learned with, as text */
+    uint64_t last_seq;               /* of the store */
+};
+
+enum model_kept {
+    MODEL_KEPT_NONE,  /* nothing is stored yet */
+    MODEL_KEPT_OTHER, /* learned with other settings, or from another store: of no use */
+    MODEL_KEPT_OURS
+};
+
+/*
+ * Says what is stored, and up to which seq it has learned. STORE_CORRUPT where that is beyond the
+ * last seq.
+ */
+int model_keeper_look(struct model_store *store, const struct model_origin *origin,
+                      enum model_kept *ret_kept, uint64_t *ret_learned, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/* Restores what is stored into a new model. */
+int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/* Forgets what is stored. */
+int model_keeper_reset(struct model_store *store, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/*
+ * Stores what has changed since the last time, as of `learned`, and marks it clean. *ret_forgot
+ * says whether words were forgotten, which a scrub should follow. Nobody may learn meanwhile;
+ * asking goes on.
+ */
+int model_keeper_store(struct model_store *store, struct model *model,
+                       const struct model_origin *origin, uint64_t learned, bool *ret_forgot,
+                       struct store_error *error) __attribute__((warn_unused_result));
+
+#endif

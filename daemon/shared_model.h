@@ -1,0 +1,30 @@
+/*
+ * shared_model: the model behind a lock: one learns, many ask.
+ */
+#ifndef UNDERTAG_SHARED_MODEL_H
+#define UNDERTAG_SHARED_MODEL_H
+
+#include <pthread.h>
+#include <stdbool.h>
+#include <stdint.h>
+
+#include "daemon/learner/model.h"
+
+/* The model may be asked under shared_model_read, changed under shared_model_write. */
+struct shared_model {
+    struct model *model;
+    uint64_t learned; /* the seq that the model has learned up to */
+    bool broken;      /* memory ran out within a change: it must not be asked any more */
+    pthread_rwlock_t lock;
+};
+
+/* Takes the model, also on failure. */
+int shared_model_init_take(struct shared_model *shared, struct model *model, uint64_t learned)
+    __attribute__((warn_unused_result));
+void shared_model_deinit(struct shared_model *shared);
+
+void shared_model_read(struct shared_model *shared);
+void shared_model_write(struct shared_model *shared);
+void shared_model_unlock(struct shared_model *shared);
+
+#endif

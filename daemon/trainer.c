@@ -1,0 +1,297 @@
+/*
+ * Happy path: wait until something is committed behind what is learned; read a few changes in one
+ * short view; take out the words of each and learn it under the lock; tell the backlog. Every now
+ * and then the model is stored, which needs no lock, since this thread alone changes it.
+ *
+ * Failure paths: a model that cannot be stored (a full disk) is tried again with the next flush. A
+ * change that cannot be read or learned ends learning for good, until a restart: a model that has
+ * skipped a change would differ from its items for ever. The daemon goes on filing and asking.
+ */
+#include "daemon/trainer.h"
+
+#include <errno.h>
+#include <pthread.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "daemon/clock.h"
+#include "daemon/item_source.h"
+#include "storage/items.h"
+
+enum {
+    CHANGES_A_VIEW = 64,
+    IDLE_MS = 1000,
+    FLUSH_SHARE = 10,      /* storing takes a tenth of the time at most */
+    SCRUB_PAGES = 1024,    /* overwritten at a time */
+    ROUND_LIMIT_US = 20000 /* a view that has been open this long is given up */
+};
+
+/* One of the two items that a change is about, as the learner takes it. */
+struct side {
+    struct item_buffer buffer;
+    struct item_record record;
+    struct item_source source;
+    struct features *features;
+    struct model_item item;
+};
+
+struct trainer {
+    struct trainer_settings settings;
+    pthread_t thread;
+    struct side filed;
+    struct side replaced;
+    struct model_scratch *scratch;
+    uint64_t learned;      /* this thread's own copy */
+    uint64_t kept;         /* the seq of the stored model */
+    uint64_t stored_at_us; /* when it was stored, or tried, last */
+    uint64_t storing_us;   /* how long that took */
+    bool scrub_due;
+    bool failed;
+};
+
+/* --- one change ---------------------------------------------------------------------------------
+ */
+
+/* Reads a record and takes out its features; *ret_found says whether it is an item. */
+static int read_side(struct side *side, struct store_view *view, uint64_t seq, bool *ret_found,
+                     struct store_error *error)
+{
+    int code = items_read(view, seq, &side->buffer, &side->record, error);
+    if (code == STORE_NOT_FOUND) {
+        *error = (struct store_error){0}; /* superseded, and passed before */
+        *ret_found = false;
+        return STORE_OK;
+    }
+    if (code != STORE_OK) {
+        return code;
+    }
+    *ret_found = !side->record.withdrawn;
+    if (side->record.withdrawn) {
+        return STORE_OK;
+    }
+    code = item_source_fill(&side->source, &side->record);
+    if (code == 0) {
+        code = features_extract(side->features, &side->source.source, SIZE_MAX);
+    }
+    if (code != 0) {
+        return store_fail(error, code == -ENOMEM ? STORE_NO_MEMORY : STORE_CORRUPT,
+                          "the words of change %llu cannot be taken out", (unsigned long long)seq);
+    }
+    side->item = (struct model_item){.features = features_list(side->features),
+                                     .feature_count = features_count(side->features),
+                                     .tags = side->record.tags,
+                                     .tag_count = side->record.tag_count,
+                                     .prompted = side->record.prompted,
+                                     .prompted_count = side->record.prompted_count};
+    return STORE_OK;
+}
+
+static int learn_change(struct trainer *trainer, struct store_view *view, uint64_t seq,
+                        uint64_t *ret_cost, struct store_error *error)
+{
+    bool is_filed = false;
+    bool is_replaced = false;
+    trainer->filed.record = (struct item_record){0};
+    int code = read_side(&trainer->filed, view, seq, &is_filed, error);
+    if (code == STORE_OK && trainer->filed.record.replaced > 0) {
+        code = read_side(&trainer->replaced, view, trainer->filed.record.replaced, &is_replaced,
+                         error);
+    }
+    if (code != STORE_OK) {
+        return code;
+    }
+    struct shared_model *shared = trainer->settings.shared;
+    shared_model_write(shared);
+    if (is_filed || is_replaced) {
+        code = model_learn(shared->model, is_filed ? &trainer->filed.item : NULL,
+                           is_replaced ? &trainer->replaced.item : NULL, trainer->scratch);
+    }
+    if (code == 0) {
+        shared->learned = seq;
+    } else {
+        shared->broken = true;
+    }
+    shared_model_unlock(shared);
+    const struct item_record *record = &trainer->filed.record;
+    *ret_cost = backlog_cost(record->title.size + record->text.size, record->tag_count);
+    return code == 0 ? STORE_OK
+                     : store_fail(error, STORE_NO_MEMORY, "there is no memory to learn change %llu",
+                                  (unsigned long long)seq);
+}
+
+/* Learns changes up to `last`, as many as one short view allows. */
+static int learn_some(struct trainer *trainer, uint64_t last, struct store_error *error)
+{
+    struct store_view *view = NULL;
+    int code = store_read(trainer->settings.store, &view, error);
+    if (code != STORE_OK) {
+        return code;
+    }
+    uint64_t begun_us = clock_steady_us();
+    for (size_t i = 0; i < CHANGES_A_VIEW && trainer->learned < last; i++) {
+        uint64_t before_us = clock_steady_us();
+        uint64_t cost = 0;
+        code = learn_change(trainer, view, trainer->learned + 1, &cost, error);
+        if (code != STORE_OK) {
+            break;
+        }
+        uint64_t after_us = clock_steady_us();
+        trainer->learned++;
+        backlog_learned(trainer->settings.backlog, trainer->learned, cost, after_us - before_us);
+        if (after_us - begun_us > ROUND_LIMIT_US) {
+            break;
+        }
+    }
+    store_end(view);
+    return code;
+}
+
+/* --- storing the model --------------------------------------------------------------------------
+ */
+
+static bool is_store_due(const struct trainer *trainer)
+{
+    uint64_t waited_us = clock_steady_us() - trainer->stored_at_us;
+    uint64_t changes = trainer->learned - trainer->kept;
+    return changes > 0 && waited_us >= FLUSH_SHARE * trainer->storing_us &&
+           (waited_us >= trainer->settings.flush_every_ms * 1000 ||
+            changes >= trainer->settings.flush_changes);
+}
+
+static void store_model(struct trainer *trainer)
+{
+    struct store_error error = {0};
+    uint64_t begun_us = clock_steady_us();
+    bool forgot = false;
+    int code = model_keeper_store(trainer->settings.model_store, trainer->settings.shared->model,
+                                  &trainer->settings.origin, trainer->learned, &forgot, &error);
+    trainer->stored_at_us = clock_steady_us();
+    trainer->storing_us = trainer->stored_at_us - begun_us;
+    if (code != STORE_OK) {
+        troubles_begin(trainer->settings.troubles, TROUBLE_KEEPING,
+                       "what was learned cannot be stored (%s); a restart will learn it again",
+                       error.text);
+        return;
+    }
+    troubles_end(trainer->settings.troubles, TROUBLE_KEEPING);
+    trainer->kept = trainer->learned;
+    trainer->scrub_due = trainer->scrub_due || forgot;
+    backlog_kept(trainer->settings.backlog, trainer->kept);
+    trainer->settings.kept(trainer->settings.user);
+}
+
+/* Forgotten words leave the file, too, a stretch at a time while there is nothing else to do. */
+static void scrub(struct trainer *trainer)
+{
+    struct store_error error = {0};
+    size_t left = 0;
+    if (model_store_scrub(trainer->settings.model_store, SCRUB_PAGES, &left, &error) != STORE_OK) {
+        troubles_begin(trainer->settings.troubles, TROUBLE_ERASING,
+                       "forgotten words may still be in the model's file (%s)", error.text);
+    }
+    trainer->scrub_due = left > 0;
+}
+
+/* --- the thread ---------------------------------------------------------------------------------
+ */
+
+static void fail(struct trainer *trainer, const struct store_error *error)
+{
+    trainer->failed = true;
+    troubles_begin(trainer->settings.troubles, TROUBLE_LEARNING,
+                   "learning has stopped at change %llu (%s); restart the daemon to go on",
+                   (unsigned long long)trainer->learned, error->text);
+    backlog_trainer_failed(trainer->settings.backlog);
+}
+
+/* How long to wait for work: until the model is to be stored, if anything is to be stored. */
+static uint64_t idle_ms(const struct trainer *trainer)
+{
+    if (trainer->learned == trainer->kept) {
+        return trainer->scrub_due ? 0 : IDLE_MS;
+    }
+    uint64_t most_ms = trainer->settings.flush_every_ms;
+    return most_ms < IDLE_MS ? most_ms : IDLE_MS;
+}
+
+static void *run(void *argument)
+{
+    struct trainer *trainer = argument;
+    struct backlog *backlog = trainer->settings.backlog;
+    trainer->stored_at_us = clock_steady_us();
+    while (!backlog_is_stopping(backlog)) {
+        struct store_error error = {0};
+        uint64_t behind = trainer->failed ? UINT64_MAX : trainer->learned;
+        uint64_t last = backlog_wait_for_work(backlog, behind, idle_ms(trainer));
+        bool is_idle = last <= behind;
+        if (!is_idle && learn_some(trainer, last, &error) != STORE_OK) {
+            fail(trainer, &error);
+        }
+        if (is_store_due(trainer) && !trainer->failed) {
+            store_model(trainer);
+        } else if (is_idle && trainer->scrub_due) {
+            scrub(trainer);
+        }
+    }
+    if (trainer->learned > trainer->kept && !trainer->failed) {
+        store_model(trainer);
+    }
+    return NULL;
+}
+
+/* --- life ---------------------------------------------------------------------------------------
+ */
+
+static void side_deinit(struct side *side)
+{
+    item_buffer_deinit(&side->buffer);
+    item_source_deinit(&side->source);
+    features_free(side->features);
+}
+
+static void free_trainer(struct trainer *trainer)
+{
+    side_deinit(&trainer->filed);
+    side_deinit(&trainer->replaced);
+    model_scratch_free(trainer->scratch);
+    free(trainer);
+}
+
+int trainer_new(const struct trainer_settings *settings, struct trainer **ret_trainer)
+{
+    struct trainer *trainer = calloc(1, sizeof *trainer);
+    if (!trainer) {
+        return -ENOMEM;
+    }
+    trainer->settings = *settings;
+    trainer->learned = settings->shared->learned;
+    trainer->kept = settings->shared->learned;
+    trainer->scrub_due = true; /* a crash may have come between forgetting and overwriting */
+    int code = features_new(settings->features, &trainer->filed.features);
+    if (code == 0) {
+        code = features_new(settings->features, &trainer->replaced.features);
+    }
+    if (code == 0) {
+        code = model_scratch_new(&trainer->scratch);
+    }
+    if (code == 0) {
+        code = -pthread_create(&trainer->thread, NULL, run, trainer);
+    }
+    if (code < 0) {
+        free_trainer(trainer);
+        return code;
+    }
+    *ret_trainer = trainer;
+    return 0;
+}
+
+void trainer_free(struct trainer *trainer)
+{
+    if (!trainer) {
+        return;
+    }
+    if (pthread_join(trainer->thread, NULL) != 0) {
+        abort(); /* an error of ours alone */
+    }
+    free_trainer(trainer);
+}

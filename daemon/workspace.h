@@ -1,0 +1,41 @@
+/*
+ * workspace: what one thread needs to read items and to ask the model, kept for the next that
+ * comes.
+ */
+#ifndef UNDERTAG_WORKSPACE_H
+#define UNDERTAG_WORKSPACE_H
+
+#include <pthread.h>
+
+#include "daemon/item_source.h"
+#include "daemon/learner/model.h"
+#include "storage/items.h"
+
+struct workspace {
+    struct workspace *next;
+    struct features *features;
+    struct model_scratch *scratch;
+    struct item_buffer buffer;
+    struct item_record record; /* what was last read into the buffer */
+    struct item_source source;
+    struct field_list fields;
+};
+
+/* Those that nobody uses. */
+struct workspaces {
+    pthread_mutex_t mutex;
+    struct workspace *free;
+    const struct features_settings *settings; /* borrowed */
+};
+
+int workspaces_init(struct workspaces *workspaces, const struct features_settings *settings)
+    __attribute__((warn_unused_result));
+
+/* All must have been returned. */
+void workspaces_deinit(struct workspaces *workspaces);
+
+/* One to be used until it is returned. Any thread. NULL: no memory. */
+struct workspace *workspaces_borrow(struct workspaces *workspaces);
+void workspaces_return(struct workspaces *workspaces, struct workspace *workspace);
+
+#endif

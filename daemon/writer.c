@@ -1,0 +1,408 @@
+/*
+ * Happy path: take what is queued, up to a group; wait until the trainer is near enough; make all
+ * changes in one view, erase some of what the stored model has passed, and commit; hand the changes
+ * back. While nothing is queued, erase the rest, and overwrite what that left in the file.
+ *
+ * Failure paths: a change that is refused (an unknown tag, no such item) has changed nothing, and
+ * the group goes on without it. When the view itself fails, the group has changed nothing; where
+ * there was no room the changes are tried one by one, so that a large one does not take the others
+ * with it.
+ */
+#include "daemon/writer.h"
+
+#include <errno.h>
+#include <pthread.h>
+#include <stdlib.h>
+
+#include "daemon/clock.h"
+
+enum {
+    GROUP_CHANGES = 256,
+    ERASED_A_COMMIT = 256,
+    SCRUB_PAGES = 1024
+};
+
+struct change_list {
+    struct change *first;
+    struct change *last;
+};
+
+struct writer {
+    struct writer_settings settings;
+    pthread_t thread;
+    struct features *features; /* to count words with */
+    struct codec_writer record;
+    uint64_t erased; /* what the model's seq was when there was nothing left to erase */
+    bool scrub_due;
+
+    pthread_mutex_t mutex;
+    pthread_cond_t wake;
+    struct change_list queued; /* below: under the mutex */
+    struct change_list done;
+    bool woken;
+    bool stopping;
+};
+
+/* Errors of these are errors of ours alone. */
+static void lock(struct writer *writer)
+{
+    if (pthread_mutex_lock(&writer->mutex) != 0) {
+        abort();
+    }
+}
+
+static void unlock(struct writer *writer)
+{
+    if (pthread_mutex_unlock(&writer->mutex) != 0) {
+        abort();
+    }
+}
+
+static void append(struct change_list *list, struct change *change)
+{
+    change->next = NULL;
+    if (list->last) {
+        list->last->next = change;
+    } else {
+        list->first = change;
+    }
+    list->last = change;
+}
+
+/* --- one change ---------------------------------------------------------------------------------
+ */
+
+static uint64_t cost_of(const struct change *change)
+{
+    return backlog_cost(change->filing.title.size + change->filing.text.size,
+                        change->filing.tag_count);
+}
+
+static bool has_too_many_words(struct writer *writer, const struct change *change)
+{
+    return change->counted &&
+           features_extract(writer->features, change->counted, change->words_limit) == -E2BIG;
+}
+
+/* Whether the view may be gone on with. */
+static bool is_change_alone(enum store_code code)
+{
+    return code == STORE_OK || code == STORE_REFUSED || code == STORE_NOT_FOUND;
+}
+
+static enum store_code apply(struct writer *writer, struct store_view *view, struct change *change)
+{
+    change->error = (struct store_error){0};
+    if (change->has_too_many_words) {
+        change->code = STORE_REFUSED;
+    } else if (change->kind == CHANGE_FILE) {
+        change->code =
+            (enum store_code)items_file(view, &change->filing, &writer->record, &change->filed,
+                                        &change->refusal, &change->error);
+    } else {
+        change->code = (enum store_code)items_withdraw(
+            view, change->filing.id, change->filing.stored_at_ms, change->filing.uid,
+            &writer->record, &change->filed.seq, &change->error);
+    }
+    return change->code;
+}
+
+/* --- a group ------------------------------------------------------------------------------------
+ */
+
+static void tell_trouble(struct writer *writer, const struct store_error *error)
+{
+    troubles_begin(writer->settings.troubles, TROUBLE_STORING, "changes cannot be stored (%s)",
+                   error->text[0] ? error->text : store_code_sentence(error->code));
+}
+
+/* Makes all changes of the group durable, or none; returns the code that stopped it. */
+static enum store_code commit(struct writer *writer, struct change *group,
+                              struct store_error *error)
+{
+    struct store_view *view = NULL;
+    if (store_write(writer->settings.store, &view, error) != STORE_OK) {
+        return error->code;
+    }
+    uint64_t before = store_view_totals(view).seq;
+    uint64_t cost = 0;
+    for (struct change *change = group; change; change = change->next) {
+        if (!is_change_alone(apply(writer, view, change))) {
+            *error = change->error;
+            error->code = change->code;
+            store_end(view);
+            return error->code;
+        }
+        cost += change->code == STORE_OK ? cost_of(change) : 0;
+    }
+    uint64_t after = store_view_totals(view).seq;
+    if (after == before) {
+        store_end(view);
+        return STORE_OK;
+    }
+    size_t erased = 0;
+    uint64_t kept = backlog_read(writer->settings.backlog).kept;
+    if (store_erase_passed(view, kept, ERASED_A_COMMIT, &erased, error) != STORE_OK) {
+        store_end(view);
+        return error->code;
+    }
+    if (store_commit(view, error) != STORE_OK) {
+        return error->code;
+    }
+    writer->scrub_due = writer->scrub_due || erased > 0;
+    troubles_end(writer->settings.troubles, TROUBLE_STORING);
+    backlog_committed(writer->settings.backlog, after, cost, clock_steady_ms());
+    return STORE_OK;
+}
+
+static void commit_or_refuse(struct writer *writer, struct change *group)
+{
+    struct store_error error = {0};
+    if (commit(writer, group, &error) == STORE_OK) {
+        return;
+    }
+    tell_trouble(writer, &error);
+    if (error.code == STORE_FULL && group->next) {
+        while (group) {
+            struct change *rest = group->next;
+            group->next = NULL;
+            commit_or_refuse(writer, group);
+            group->next = rest;
+            group = rest;
+        }
+        return;
+    }
+    for (; group; group = group->next) {
+        group->code = error.code;
+        group->error = error;
+    }
+}
+
+static void hand_back(struct writer *writer, struct change *group)
+{
+    lock(writer);
+    while (group) {
+        struct change *next = group->next;
+        append(&writer->done, group);
+        group = next;
+    }
+    unlock(writer);
+    writer->settings.done(writer->settings.user);
+}
+
+/* Takes as many changes as cost no more than `room`, one at least. */
+static struct change *take_group(struct writer *writer, uint64_t room)
+{
+    struct change_list group = {0};
+    uint64_t cost = 0;
+    lock(writer);
+    for (size_t i = 0; i < GROUP_CHANGES && writer->queued.first; i++) {
+        struct change *change = writer->queued.first;
+        cost += cost_of(change);
+        if (i > 0 && cost > room) {
+            break;
+        }
+        writer->queued.first = change->next;
+        append(&group, change);
+    }
+    if (!writer->queued.first) {
+        writer->queued.last = NULL;
+    }
+    unlock(writer);
+    return group.first;
+}
+
+static void commit_next_group(struct writer *writer)
+{
+    uint64_t room = backlog_wait_for_room(writer->settings.backlog);
+    struct change *group = take_group(writer, room);
+    for (struct change *change = group; change; change = change->next) {
+        change->has_too_many_words = has_too_many_words(writer, change);
+    }
+    commit_or_refuse(writer, group);
+    hand_back(writer, group);
+}
+
+/* --- erasing ------------------------------------------------------------------------------------
+ */
+
+static void tell_erasing(struct writer *writer, const struct store_error *error)
+{
+    troubles_begin(writer->settings.troubles, TROUBLE_ERASING,
+                   "what was withdrawn or revised may still be in the store's file (%s)",
+                   error->text);
+}
+
+/* Erases some of what the stored model has passed; says whether there may be more. */
+static bool erase_some(struct writer *writer, uint64_t kept)
+{
+    struct store_error error = {0};
+    struct store_view *view = NULL;
+    size_t erased = 0;
+    if (store_write(writer->settings.store, &view, &error) != STORE_OK) {
+        tell_erasing(writer, &error);
+        return false;
+    }
+    int code = store_erase_passed(view, kept, ERASED_A_COMMIT, &erased, &error);
+    if (code != STORE_OK || erased == 0) {
+        store_end(view);
+    } else {
+        code = store_commit(view, &error);
+        writer->scrub_due = true;
+    }
+    if (code != STORE_OK) {
+        tell_erasing(writer, &error);
+    }
+    return code == STORE_OK && erased == ERASED_A_COMMIT;
+}
+
+/* A stretch of work that has time; says whether there is more. */
+static bool keep_up(struct writer *writer)
+{
+    uint64_t kept = backlog_read(writer->settings.backlog).kept;
+    if (kept != writer->erased) {
+        if (!erase_some(writer, kept)) {
+            writer->erased = kept;
+        }
+        return true;
+    }
+    if (writer->scrub_due) {
+        struct store_error error = {0};
+        size_t left = 0;
+        if (store_scrub(writer->settings.store, SCRUB_PAGES, &left, &error) != STORE_OK) {
+            tell_erasing(writer, &error);
+        }
+        writer->scrub_due = left > 0;
+        return left > 0;
+    }
+    return false;
+}
+
+/* --- the thread ---------------------------------------------------------------------------------
+ */
+
+/* Waits for something to do. False when there is nothing left and the writer is to stop. */
+static bool wait_for_changes(struct writer *writer, bool has_upkeep, bool *ret_queued)
+{
+    lock(writer);
+    while (!writer->queued.first && !writer->woken && !writer->stopping && !has_upkeep) {
+        (void)pthread_cond_wait(&writer->wake, &writer->mutex);
+    }
+    writer->woken = false;
+    *ret_queued = writer->queued.first != NULL;
+    bool goes_on = *ret_queued || !writer->stopping;
+    unlock(writer);
+    return goes_on;
+}
+
+static void *run(void *argument)
+{
+    struct writer *writer = argument;
+    bool has_upkeep = true;
+    bool is_queued = false;
+    while (wait_for_changes(writer, has_upkeep, &is_queued)) {
+        if (is_queued) {
+            commit_next_group(writer);
+            has_upkeep = true;
+        } else {
+            has_upkeep = keep_up(writer);
+        }
+    }
+    return NULL;
+}
+
+/* --- life ---------------------------------------------------------------------------------------
+ */
+
+static int init_queue(struct writer *writer)
+{
+    int code = -pthread_mutex_init(&writer->mutex, NULL);
+    if (code < 0) {
+        return code;
+    }
+    code = -pthread_cond_init(&writer->wake, NULL);
+    if (code < 0) {
+        (void)pthread_mutex_destroy(&writer->mutex); /* nobody knows it yet */
+    }
+    return code;
+}
+
+static void deinit_queue(struct writer *writer)
+{
+    (void)pthread_cond_destroy(&writer->wake); /* nobody waits any more */
+    (void)pthread_mutex_destroy(&writer->mutex);
+}
+
+int writer_new(const struct writer_settings *settings, struct writer **ret_writer)
+{
+    struct writer *writer = calloc(1, sizeof *writer);
+    if (!writer) {
+        return -ENOMEM;
+    }
+    writer->settings = *settings;
+    writer->scrub_due = true; /* a crash may have come between erasing and overwriting */
+    int code = features_new(settings->features, &writer->features);
+    if (code < 0) {
+        goto fail_features;
+    }
+    code = init_queue(writer);
+    if (code < 0) {
+        goto fail_queue;
+    }
+    code = -pthread_create(&writer->thread, NULL, run, writer);
+    if (code < 0) {
+        goto fail_thread;
+    }
+    *ret_writer = writer;
+    return 0;
+fail_thread:
+    deinit_queue(writer);
+fail_queue:
+    features_free(writer->features);
+fail_features:
+    free(writer);
+    return code;
+}
+
+void writer_free(struct writer *writer)
+{
+    if (!writer) {
+        return;
+    }
+    lock(writer);
+    writer->stopping = true;
+    (void)pthread_cond_signal(&writer->wake);
+    unlock(writer);
+    if (pthread_join(writer->thread, NULL) != 0) {
+        abort(); /* an error of ours alone */
+    }
+    deinit_queue(writer);
+    features_free(writer->features);
+    codec_deinit(&writer->record);
+    free(writer);
+}
+
+void writer_push(struct writer *writer, struct change *change)
+{
+    lock(writer);
+    append(&writer->queued, change);
+    (void)pthread_cond_signal(&writer->wake);
+    unlock(writer);
+}
+
+struct change *writer_take_done(struct writer *writer)
+{
+    lock(writer);
+    struct change *done = writer->done.first;
+    writer->done = (struct change_list){0};
+    unlock(writer);
+    return done;
+}
+
+void writer_wake(struct writer *writer)
+{
+    lock(writer);
+    writer->woken = true;
+    (void)pthread_cond_signal(&writer->wake);
+    unlock(writer);
+}

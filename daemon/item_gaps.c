@@ -1,0 +1,302 @@
+/*
+ * item.gaps: the tags that a filed item, or a draft, most probably lacks.
+ */
+#include <errno.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "daemon/item_read.h"
+#include "daemon/params.h"
+#include "daemon/read_job.h"
+#include "storage/vocabulary.h"
+
+struct gaps_job {
+    struct read_job job;  /* first */
+    struct store_text id; /* empty for a draft */
+    struct store_text title;
+    struct store_text text;
+    struct store_text language;
+    struct params_names tags;
+    const json_t *fields;
+    uint64_t most;
+    double floor;
+    bool why;
+    size_t words_limit;
+
+    struct workspace *workspace;
+    uint32_t *draft_tags;
+};
+
+static void release(struct read_job *base)
+{
+    struct gaps_job *job = (struct gaps_job *)base;
+    params_names_deinit(&job->tags);
+    free(job->draft_tags);
+    if (job->workspace) {
+        workspaces_return(engine_workspaces(job->job.methods->engine), job->workspace);
+    }
+}
+
+static int no_memory(struct fault *fault)
+{
+    return fault_set(fault, FAULT_INTERNAL, NULL, "There is no memory for the answer.");
+}
+
+/* --- what is asked about ------------------------------------------------------------------------
+ */
+
+/* The numbers of a draft's tags; unknown ones are passed over. */
+static int look_up_tags(struct gaps_job *job, struct store_view *view, size_t *ret_count)
+{
+    struct vocabulary_tag tag;
+    size_t count = 0;
+    job->draft_tags = calloc(job->tags.count + 1, sizeof *job->draft_tags);
+    if (!job->draft_tags) {
+        return no_memory(&job->job.fault);
+    }
+    for (size_t i = 0; i < job->tags.count; i++) {
+        struct store_error error = {0};
+        int code =
+            vocabulary_find(view, job->tags.names[i].data, job->tags.names[i].size, &tag, &error);
+        if (code == STORE_OK) {
+            job->draft_tags[count++] = tag.number;
+        } else if (code != STORE_NOT_FOUND) {
+            return read_job_fail(&job->job, &error);
+        }
+    }
+    *ret_count = count;
+    return 0;
+}
+
+static int prepare_draft(struct gaps_job *job, struct store_view *view,
+                         struct features_source *ret_source, struct model_question *question)
+{
+    struct workspace *workspace = job->workspace;
+    char *language = workspace->source.language;
+    memcpy(language, job->language.data, job->language.size);
+    language[job->language.size] = '\0';
+    workspace->fields.count = 0;
+    if (job->fields && field_list_fill(&workspace->fields, job->fields) < 0) {
+        return no_memory(&job->job.fault);
+    }
+    if (look_up_tags(job, view, &question->given_count) < 0) {
+        return job->job.fault.code;
+    }
+    question->given = job->draft_tags;
+    question->tagged = job->tags.count > 0;
+    *ret_source = (struct features_source){.title = job->title.data,
+                                           .title_bytes = job->title.size,
+                                           .text = job->text.data,
+                                           .text_bytes = job->text.size,
+                                           .language = job->language.size > 0 ? language : NULL,
+                                           .fields = workspace->fields.entries,
+                                           .field_count = workspace->fields.count};
+    return 0;
+}
+
+static int prepare_item(struct gaps_job *job, struct store_view *view,
+                        struct features_source *ret_source, struct model_question *question)
+{
+    struct workspace *workspace = job->workspace;
+    if (read_item(&job->job, view, job->id, workspace) < 0) {
+        return job->job.fault.code;
+    }
+    int code = item_source_fill(&workspace->source, &workspace->record);
+    if (code < 0) {
+        return no_memory(&job->job.fault);
+    }
+    *ret_source = workspace->source.source;
+    question->given = workspace->record.tags;
+    question->given_count = workspace->record.tag_count;
+    question->excluded = workspace->record.declined;
+    question->excluded_count = workspace->record.declined_count;
+    question->tagged = true;
+    return 0;
+}
+
+/* What is filed was within the limit of its time; a draft must be within that of today. */
+static int take_out_words(struct gaps_job *job, const struct features_source *source,
+                          struct model_question *question)
+{
+    struct features *features = job->workspace->features;
+    int code = features_extract(features, source, job->id.size > 0 ? SIZE_MAX : job->words_limit);
+    if (code == -E2BIG) {
+        return fault_set(&job->job.fault, FAULT_LIMIT, "/text",
+                         "A draft holds at most words_limit different words, which is %zu.",
+                         job->words_limit);
+    }
+    if (code < 0) {
+        return no_memory(&job->job.fault);
+    }
+    question->features = features_list(features);
+    question->feature_count = features_count(features);
+    return 0;
+}
+
+static int prepare(struct gaps_job *job, struct model_question *question)
+{
+    struct store_view *view = NULL;
+    struct features_source source = {0};
+    if (read_job_view(&job->job, &view) < 0) {
+        return job->job.fault.code;
+    }
+    int code = job->id.size > 0 ? prepare_item(job, view, &source, question)
+                                : prepare_draft(job, view, &source, question);
+    store_end(view);
+    return code < 0 ? code : take_out_words(job, &source, question);
+}
+
+/* --- the answer ---------------------------------------------------------------------------------
+ */
+
+static json_t *words_json(const struct model_question *question, const struct model_gap *gap)
+{
+    json_t *words = json_array();
+    for (size_t i = 0; words && i < gap->word_count; i++) {
+        const struct feature *feature = &question->features[gap->words[i].feature];
+        json_t *word = json_array();
+        int code =
+            json_array_append_new(word, json_stringn(feature->surface, feature->surface_bytes));
+        code |= json_array_append_new(word, json_real(gap->words[i].share));
+        code |= json_array_append_new(words, word);
+        if (code < 0) {
+            json_decref(words);
+            return NULL;
+        }
+    }
+    return words;
+}
+
+static json_t *gap_json(const char *name, const struct model_question *question,
+                        const struct model_gap *gap)
+{
+    json_t *entry =
+        json_pack("{s:s, s:f, s:f}", "tag", name, "chance", gap->chance, "score", gap->score);
+    if (entry && question->why &&
+        json_object_set_new(entry, "words", words_json(question, gap)) < 0) {
+        json_decref(entry);
+        return NULL;
+    }
+    return entry;
+}
+
+/* The model may know tags that were opened after the question's view: names need a new one. */
+static int gaps_json(struct gaps_job *job, const struct model_question *question,
+                     const struct model_answer *answer, json_t *gaps)
+{
+    struct store_view *view = NULL;
+    struct store_error error = {0};
+    struct vocabulary_tag tag;
+    if (read_job_view(&job->job, &view) < 0) {
+        return job->job.fault.code;
+    }
+    int code = 0;
+    for (size_t i = 0; i < answer->gap_count && code == 0; i++) {
+        if (vocabulary_get(view, answer->gaps[i].tag, &tag, &error) != STORE_OK) {
+            code = read_job_fail(&job->job, &error);
+        } else if (json_array_append_new(gaps, gap_json(tag.name, question, &answer->gaps[i])) <
+                   0) {
+            code = no_memory(&job->job.fault);
+        }
+    }
+    store_end(view);
+    return code;
+}
+
+static void run(struct read_job *base)
+{
+    struct gaps_job *job = (struct gaps_job *)base;
+    struct engine *engine = base->methods->engine;
+    struct model_question question = {
+        .most = (size_t)job->most, .floor = job->floor, .why = job->why};
+    struct model_answer answer;
+    uint64_t learned = 0;
+    job->workspace = workspaces_borrow(engine_workspaces(engine));
+    if (!job->workspace) {
+        (void)no_memory(&base->fault);
+        return;
+    }
+    if (prepare(job, &question) < 0) {
+        return;
+    }
+    if (engine_ask(engine, &question, job->workspace, &answer, &learned) < 0) {
+        (void)no_memory(&base->fault);
+        return;
+    }
+    json_t *gaps = json_array();
+    if (gaps_json(job, &question, &answer, gaps) < 0) {
+        json_decref(gaps);
+        return;
+    }
+    base->result = json_pack("{s:o, s:f, s:I, s:b}", "gaps", gaps, "expected", answer.expected,
+                             "learned", (json_int_t)learned, "early", (int)answer.early);
+}
+
+/* --- the request --------------------------------------------------------------------------------
+ */
+
+static int read_draft(struct gaps_job *job, const json_t *params, const struct options *options,
+                      struct fault *fault)
+{
+    size_t text_limit = options->text_limit_bytes;
+    job->fields = json_object_get(params, "fields");
+    if (job->fields && fields_check(job->fields, "/fields", fault) < 0) {
+        return fault->code;
+    }
+    if (params_text(params, "title", text_limit, "text_limit", &job->title, fault) < 0 ||
+        params_text(params, "text", text_limit, "text_limit", &job->text, fault) < 0 ||
+        params_names(params, "tags", &job->tags, fault) < 0) {
+        return fault->code;
+    }
+    if (job->tags.count > options->tags_limit) {
+        return fault_set(fault, FAULT_LIMIT, "/tags",
+                         "A draft has at most tags_limit tags, which is %zu.",
+                         (size_t)options->tags_limit);
+    }
+    return params_language(params, "language", &job->language, fault);
+}
+
+static int check_id_alone(const json_t *params, struct fault *fault)
+{
+    static const char *const DRAFT[] = {"title", "text", "fields", "tags", "language", NULL};
+    for (size_t i = 0; DRAFT[i]; i++) {
+        if (params_has(params, DRAFT[i])) {
+            return fault_set(fault, FAULT_PARAMS, "/id",
+                             "Give id, or a draft, not both: there is %s beside id.", DRAFT[i]);
+        }
+    }
+    return 0;
+}
+
+static int read_request(struct gaps_job *job, const json_t *params, const struct options *options,
+                        struct fault *fault)
+{
+    static const char *const MEMBERS[] = {"id",       "title", "text",  "fields", "tags",
+                                          "language", "most",  "floor", "why",    NULL};
+    job->most = 10;
+    job->floor = 0.05;
+    job->words_limit = options->words_limit;
+    if (params_known(params, MEMBERS, fault) < 0 ||
+        params_whole(params, "most", 0, MODEL_MOST_GAPS, &job->most, fault) < 0 ||
+        params_share(params, "floor", &job->floor, fault) < 0 ||
+        params_flag(params, "why", &job->why, fault) < 0) {
+        return fault->code;
+    }
+    if (!params_has(params, "id")) {
+        return read_draft(job, params, options, fault);
+    }
+    int code = check_id_alone(params, fault);
+    return code < 0 ? code : params_name(params, "id", &job->id, fault);
+}
+
+void item_gaps(struct call *call, const json_t *params)
+{
+    struct gaps_job *job = read_job_new(call, params, sizeof *job);
+    if (!job) {
+        return;
+    }
+    job->job.run = run;
+    job->job.release = release;
+    read_job_start(&job->job,
+                   read_request(job, params, job->job.methods->options, &job->job.fault));
+}

@@ -1,0 +1,227 @@
+/*
+ * item.show and item.list: items as they are stored.
+ */
+#include "daemon/item_read.h"
+
+#include <stdlib.h>
+#include <string.h>
+
+#include "daemon/params.h"
+#include "daemon/times.h"
+#include "storage/vocabulary.h"
+
+enum {
+    LIST_MOST = 10000
+};
+
+int read_item(struct read_job *job, struct store_view *view, struct store_text id,
+              struct workspace *workspace)
+{
+    struct store_error error = {0};
+    uint64_t seq = 0;
+    int code = items_find(view, id, &seq, &error);
+    if (code == STORE_NOT_FOUND) {
+        return fault_set(&job->fault, FAULT_NOT_FOUND, "/id", "There is no item '%.*s'.",
+                         (int)id.size, id.data);
+    }
+    if (code == STORE_OK) {
+        code = items_read(view, seq, &workspace->buffer, &workspace->record, &error);
+    }
+    return code == STORE_OK ? 0 : read_job_fail(job, &error);
+}
+
+/* --- item.show ----------------------------------------------------------------------------------
+ */
+
+struct show_job {
+    struct read_job job; /* first */
+    struct store_text id;
+};
+
+static int compare_strings(const void *left, const void *right)
+{
+    return strcmp(json_string_value(*(json_t *const *)left),
+                  json_string_value(*(json_t *const *)right));
+}
+
+/* The names of tags, in the order of their bytes. NULL: the job holds a fault. */
+static json_t *names_json(struct read_job *job, struct store_view *view, const uint32_t *tags,
+                          size_t count)
+{
+    struct store_error error = {0};
+    struct vocabulary_tag tag;
+    json_t *names = json_array();
+    json_t **sorted = calloc(count + 1, sizeof *sorted);
+    size_t made = 0;
+    int code = names && sorted ? 0 : -1;
+    while (code == 0 && made < count) {
+        if (vocabulary_get(view, tags[made], &tag, &error) != STORE_OK) {
+            code = read_job_fail(job, &error);
+        } else {
+            sorted[made] = json_string(tag.name);
+            code = sorted[made] ? 0 : -1;
+            made += code == 0;
+        }
+    }
+    if (made > 0) {
+        qsort(sorted, made, sizeof *sorted, compare_strings);
+    }
+    for (size_t i = 0; i < made; i++) {
+        code |= json_array_append_new(names, sorted[i]);
+    }
+    free(sorted);
+    if (code == 0) {
+        return names;
+    }
+    (void)fault_set(&job->fault, FAULT_INTERNAL, NULL, "There is no memory for the answer.");
+    json_decref(names);
+    return NULL;
+}
+
+static json_t *text_json(struct store_text text)
+{
+    return json_stringn(text.size > 0 ? text.data : "", text.size);
+}
+
+static json_t *text_or_null(struct store_text text)
+{
+    return text.size > 0 ? text_json(text) : json_null();
+}
+
+static json_t *fields_json(struct store_text fields)
+{
+    return fields.size > 0 ? json_loadb(fields.data, fields.size, 0, NULL) : json_object();
+}
+
+static json_t *item_json(struct read_job *job, struct store_view *view,
+                         const struct item_record *record)
+{
+    char stored_at[TIMES_BYTES];
+    times_format(record->stored_at_ms, stored_at);
+    json_t *tags = names_json(job, view, record->tags, record->tag_count);
+    json_t *prompted = names_json(job, view, record->prompted, record->prompted_count);
+    json_t *declined = names_json(job, view, record->declined, record->declined_count);
+    if (!tags || !prompted || !declined) {
+        json_decref(tags);
+        json_decref(prompted);
+        json_decref(declined);
+        return NULL;
+    }
+    return json_pack("{s:o, s:I, s:o, s:o, s:o, s:o, s:o, s:o, s:s, s:o, s:O, s:o, s:o, s:[], "
+                     "s:[], s:n}",
+                     "id", text_json(record->id), "seq", (json_int_t)record->seq, "title",
+                     text_json(record->title), "text", text_json(record->text), "fields",
+                     fields_json(record->fields), "language", text_or_null(record->language),
+                     "tagger", text_or_null(record->tagger), "filed_at",
+                     text_or_null(record->filed_at), "stored_at", stored_at, "tags", tags, "filed",
+                     tags, "prompted", prompted, "declined", declined, "belongs", "not", "checked");
+}
+
+static void run_show(struct read_job *base)
+{
+    struct show_job *job = (struct show_job *)base;
+    struct workspaces *workspaces = engine_workspaces(base->methods->engine);
+    struct store_view *view = NULL;
+    struct workspace *workspace = workspaces_borrow(workspaces);
+    if (!workspace) {
+        return; /* no result: no memory */
+    }
+    if (read_job_view(base, &view) == 0) {
+        if (read_item(base, view, job->id, workspace) == 0) {
+            base->result = item_json(base, view, &workspace->record);
+        }
+        store_end(view);
+    }
+    workspaces_return(workspaces, workspace);
+}
+
+static int read_show_request(struct show_job *job, const json_t *params, struct fault *fault)
+{
+    static const char *const MEMBERS[] = {"id", NULL};
+    int code = params_known(params, MEMBERS, fault);
+    return code < 0 ? code : params_name(params, "id", &job->id, fault);
+}
+
+void item_show(struct call *call, const json_t *params)
+{
+    struct show_job *job = read_job_new(call, params, sizeof *job);
+    if (!job) {
+        return;
+    }
+    job->job.run = run_show;
+    read_job_start(&job->job, read_show_request(job, params, &job->job.fault));
+}
+
+/* --- item.list ----------------------------------------------------------------------------------
+ */
+
+struct list_job {
+    struct read_job job; /* first */
+    uint64_t since;
+    uint64_t most;
+    json_t *items;
+};
+
+static void release_list(struct read_job *base)
+{
+    json_decref(((struct list_job *)base)->items);
+}
+
+static int add_item(void *user, const struct item_record *record)
+{
+    struct list_job *job = user;
+    return json_array_append_new(
+        job->items, json_pack("{s:o, s:I, s:b}", "id", text_json(record->id), "seq",
+                              (json_int_t)record->seq, "withdrawn", (int)record->withdrawn));
+}
+
+static void run_list(struct read_job *base)
+{
+    struct list_job *job = (struct list_job *)base;
+    struct workspaces *workspaces = engine_workspaces(base->methods->engine);
+    struct workspace *workspace = workspaces_borrow(workspaces);
+    struct store_view *view = NULL;
+    struct store_error error = {0};
+    uint64_t next = 0;
+    job->items = json_array();
+    if (!workspace || !job->items) {
+        if (workspace) {
+            workspaces_return(workspaces, workspace);
+        }
+        return; /* no result: no memory */
+    }
+    if (read_job_view(base, &view) == 0) {
+        int code = items_changed(view, job->since, (size_t)job->most, add_item, job,
+                                 &workspace->buffer, &next, &error);
+        store_end(view);
+        if (code == STORE_OK) {
+            base->result = json_pack("{s:O, s:I}", "items", job->items, "next", (json_int_t)next);
+        } else if (error.code != STORE_OK) {
+            (void)read_job_fail(base, &error); /* told at the end */
+        }
+    }
+    workspaces_return(workspaces, workspace);
+}
+
+static int read_list_request(struct list_job *job, const json_t *params, struct fault *fault)
+{
+    static const char *const MEMBERS[] = {"since", "most", NULL};
+    job->most = 1000;
+    if (params_known(params, MEMBERS, fault) < 0 ||
+        params_whole(params, "since", 0, INT64_MAX, &job->since, fault) < 0 ||
+        params_whole(params, "most", 1, LIST_MOST, &job->most, fault) < 0) {
+        return fault->code;
+    }
+    return 0;
+}
+
+void item_list(struct call *call, const json_t *params)
+{
+    struct list_job *job = read_job_new(call, params, sizeof *job);
+    if (!job) {
+        return;
+    }
+    job->job.run = run_list;
+    job->job.release = release_list;
+    read_job_start(&job->job, read_list_request(job, params, &job->job.fault));
+}

@@ -1,0 +1,273 @@
+/*
+ * undertagd. Happy path: read the command line and the options; open the home; listen; serve until
+ * SIGTERM or SIGINT; drain the connections, store what was learned, close everything.
+ *
+ * Failure paths: whatever cannot be opened ends the program with one sentence and the exit code
+ * that sysexits.h has for it; what had been opened before is closed as at any other end.
+ */
+#include <assert.h>
+#include <errno.h>
+#include <signal.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+#include <sys/stat.h>
+#include <sysexits.h>
+#include <systemd/sd-daemon.h>
+#include <uv.h>
+
+#include "daemon/command_line.h"
+#include "daemon/engine.h"
+#include "daemon/log.h"
+#include "daemon/methods.h"
+#include "daemon/server.h"
+
+enum {
+    SIGNALS = 3
+};
+
+struct program {
+    struct command_line line;
+    struct options options;
+    uv_loop_t loop;
+    uv_signal_t signals[SIGNALS];
+    size_t signal_count; /* that are open */
+    struct methods *methods;
+    struct engine *engine;
+    struct server *server;
+};
+
+/* --- stopping -----------------------------------------------------------------------------------
+ */
+
+/* No call is running any more. The writer's thread wakes the methods, so it must end before them.
+ */
+static void close_all(struct program *program)
+{
+    if (program->engine) {
+        engine_close(program->engine);
+        program->engine = NULL;
+    }
+    if (program->methods) {
+        methods_use(program->methods, NULL);
+        methods_close(program->methods, NULL, NULL);
+        program->methods = NULL;
+    }
+    for (size_t i = 0; i < program->signal_count; i++) {
+        uv_close((uv_handle_t *)&program->signals[i], NULL);
+    }
+    program->signal_count = 0;
+}
+
+static void on_drained(void *user)
+{
+    close_all(user);
+}
+
+static void stop(struct program *program)
+{
+    struct server *server = program->server;
+    if (!server) {
+        return; /* it is stopping already */
+    }
+    program->server = NULL;
+    log_line(LOG_NOTE, "stopping: answering what is under way");
+    (void)sd_notify(0, "STOPPING=1"); /* nobody may be listening */
+    methods_watch(program->methods, NULL);
+    server_drain(server, on_drained, program);
+}
+
+/* --- reading the options again ------------------------------------------------------------------
+ */
+
+static void reload(struct program *program)
+{
+    char error[COMMAND_LINE_ERROR_BYTES];
+    struct options wanted;
+    const char *held_back = NULL;
+    if (command_line_options(&program->line, &wanted, error) != 0) {
+        log_line(LOG_CAUTION, "the options stay as they are: %s", error);
+        return;
+    }
+    size_t count = options_reload(&program->options, &wanted, &held_back);
+    if (count > 0) {
+        log_line(LOG_CAUTION, "options were read again; %s%s takes a restart", held_back,
+                 count > 1 ? " and others" : "");
+    } else {
+        log_line(LOG_NOTE, "options were read again");
+    }
+}
+
+static void on_signal(uv_signal_t *handle, int number)
+{
+    struct program *program = handle->data;
+    if (number == SIGHUP) {
+        reload(program);
+    } else {
+        stop(program);
+    }
+}
+
+/* --- starting -----------------------------------------------------------------------------------
+ */
+
+static int fail(int exit_code, const char *error)
+{
+    log_line(LOG_TROUBLE, "%s", error);
+    return exit_code;
+}
+
+static int watch_signals(struct program *program)
+{
+    static const int NUMBERS[SIGNALS] = {SIGTERM, SIGINT, SIGHUP};
+    for (size_t i = 0; i < SIGNALS; i++) {
+        int code = uv_signal_init(&program->loop, &program->signals[i]);
+        if (code < 0) {
+            return code;
+        }
+        program->signal_count = i + 1;
+        program->signals[i].data = program;
+        code = uv_signal_start(&program->signals[i], on_signal, NUMBERS[i]);
+        if (code < 0) {
+            return code;
+        }
+    }
+    return 0;
+}
+
+/* The folder of a socket that the command line does not name is ours to make. */
+static int make_socket_folder(const struct command_line *line, char *error)
+{
+    char folder[COMMAND_LINE_PATH_BYTES];
+    memcpy(folder, line->socket, sizeof folder);
+    *strrchr(folder, '/') = '\0';
+    if (mkdir(folder, 0755) < 0 && errno != EEXIST) {
+        int code = errno;
+        (void)snprintf(error, COMMAND_LINE_ERROR_BYTES,
+                       "the socket's folder %.300s cannot be made: %s; see --socket", folder,
+                       strerror(code));
+        return code == EACCES || code == EPERM ? EX_NOPERM : EX_IOERR;
+    }
+    return 0;
+}
+
+static int exit_code_of(int uv_code)
+{
+    switch (uv_code) {
+    case UV_EADDRINUSE:
+        return EX_TEMPFAIL;
+    case UV_EACCES:
+    case UV_EPERM:
+        return EX_NOPERM;
+    case UV_ENAMETOOLONG:
+        return EX_USAGE;
+    default:
+        return EX_IOERR;
+    }
+}
+
+static int listen_at(struct program *program)
+{
+    char error[SERVER_ERROR_BYTES];
+    const struct options *options = &program->options;
+    const struct server_settings settings = {.socket_path = program->line.socket,
+                                             .line_limit_bytes = options->line_limit_bytes,
+                                             .unread_limit_bytes = options->unread_limit_bytes,
+                                             .connections_limit =
+                                                 (unsigned)options->connections_limit,
+                                             .drain_ms = (unsigned)options->drain_ms};
+    if (program->line.socket_is_default) {
+        int exit_code = make_socket_folder(&program->line, error);
+        if (exit_code != 0) {
+            return fail(exit_code, error);
+        }
+    }
+    int code = server_new(&program->loop, &settings, methods_table(program->methods),
+                          &program->server, error);
+    if (code < 0) {
+        return fail(exit_code_of(code), error);
+    }
+    methods_watch(program->methods, program->server);
+    return 0;
+}
+
+static int start(struct program *program)
+{
+    char error[ENGINE_ERROR_BYTES];
+    int code = methods_new(&program->loop, &program->options, &program->methods);
+    if (code == 0) {
+        code = watch_signals(program);
+    }
+    if (code < 0) {
+        return fail(EX_OSERR, uv_strerror(code));
+    }
+    const struct engine_settings settings = {.home = program->line.home,
+                                             .options = &program->options,
+                                             .user = program->methods,
+                                             .changes_done = methods_wake};
+    int exit_code = engine_open(&settings, &program->engine, error);
+    if (exit_code != 0) {
+        return fail(exit_code, error);
+    }
+    methods_use(program->methods, program->engine);
+    return listen_at(program);
+}
+
+static void tell_ready(struct program *program)
+{
+    struct backlog_numbers numbers = engine_count(program->engine).progress;
+    log_line(LOG_NOTE, "ready: home %s, socket %s, %llu changes, %llu to learn", program->line.home,
+             program->line.socket, (unsigned long long)numbers.committed,
+             (unsigned long long)(numbers.committed - numbers.learned));
+    (void)sd_notify(0, "READY=1"); /* nobody may be listening */
+}
+
+static int serve(struct program *program)
+{
+    if (signal(SIGPIPE, SIG_IGN) == SIG_ERR || signal(SIGUSR1, SIG_IGN) == SIG_ERR) {
+        return fail(EX_OSERR, strerror(errno));
+    }
+    int code = uv_loop_init(&program->loop);
+    if (code < 0) {
+        return fail(EX_OSERR, uv_strerror(code));
+    }
+    int exit_code = start(program);
+    if (exit_code == 0) {
+        tell_ready(program);
+    } else {
+        close_all(program);
+    }
+    (void)uv_run(&program->loop, UV_RUN_DEFAULT); /* returns when every handle is closed */
+    code = uv_loop_close(&program->loop);
+    assert(code == 0);
+    if (exit_code == 0) {
+        log_line(LOG_NOTE, "stopped");
+    }
+    return exit_code;
+}
+
+int main(int argc, char **argv)
+{
+    struct program program = {0};
+    char error[COMMAND_LINE_ERROR_BYTES];
+    int exit_code = command_line_read(argc, argv, &program.line, error);
+    if (exit_code != 0) {
+        return fail(exit_code, error);
+    }
+    if (program.line.help) {
+        exit_code = fputs(COMMAND_LINE_HELP, stdout) < 0 ? EX_IOERR : 0;
+    } else if (program.line.version) {
+        exit_code = printf("undertagd %s\n", UNDERTAG_VERSION) < 0 ? EX_IOERR : 0;
+    } else {
+        exit_code = command_line_options(&program.line, &program.options, error);
+        if (exit_code != 0) {
+            (void)fail(exit_code, error); /* it is the same code */
+        } else if (program.line.check_config) {
+            exit_code = puts("the options are right") < 0 ? EX_IOERR : 0;
+        } else {
+            exit_code = serve(&program);
+        }
+    }
+    command_line_deinit(&program.line);
+    return exit_code;
+}

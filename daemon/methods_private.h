@@ -1,0 +1,51 @@
+/*
+ * methods_private: what the families of methods share: the context, and the methods themselves for
+ * the table.
+ */
+#ifndef UNDERTAG_METHODS_PRIVATE_H
+#define UNDERTAG_METHODS_PRIVATE_H
+
+#include <uv.h>
+
+#include "daemon/meter.h"
+#include "daemon/methods.h"
+
+struct methods {
+    uv_loop_t *loop;
+    const struct options *options;
+    struct engine *engine;
+    const struct server *server;
+    struct method_table table;
+    uint64_t started_ms;
+    struct meter filed;
+    struct meter learned;
+    struct meter scored;
+
+    uv_async_t changes_done;
+    uv_timer_t sampling;
+    unsigned open_handles;
+    void (*closed)(void *user);
+    void *closed_user;
+};
+
+/* item_change.c */
+void item_file(struct call *call, const json_t *params);
+void item_withdraw(struct call *call, const json_t *params);
+/* Ends the calls of the changes that are done. */
+void item_changes_done(struct change *done);
+
+/* item_gaps.c */
+void item_gaps(struct call *call, const json_t *params);
+
+/* item_read.c */
+void item_show(struct call *call, const json_t *params);
+void item_list(struct call *call, const json_t *params);
+
+/* tag_read.c */
+void tag_show(struct call *call, const json_t *params);
+void tag_list(struct call *call, const json_t *params);
+
+/* daemon_state.c */
+void daemon_state(struct call *call, const json_t *params);
+
+#endif

@@ -1,0 +1,280 @@
+/*
+ * tag.show and tag.list: the vocabulary as it is, with what the propensity curve says of each tag.
+ */
+#include <errno.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "daemon/grow.h"
+#include "daemon/learner/propensity.h"
+#include "daemon/params.h"
+#include "daemon/read_job.h"
+#include "storage/vocabulary.h"
+
+enum {
+    LIST_MOST = 10000
+};
+
+/*
+ * Without checks the curve is all there is to say of a tag, and nobody knows how well it fits this
+ * desk. Its two published relatives, for corpora of other kinds (Jain, Prabhu, Varma, KDD 2016;
+ * values from memory), say how far it may be off.
+ */
+static const struct propensity_curve CURVES_BESIDE[] = {{.a = 0.5, .b = 0.4}, {.a = 0.6, .b = 2.6}};
+
+/* What the curve says of a tag. */
+struct outlook {
+    double p;
+    double low;
+    double high;
+    double expected_true;
+    double missing;
+};
+
+static struct outlook look_out(const struct engine *engine, const struct vocabulary_tag *tag,
+                               uint64_t items)
+{
+    struct outlook outlook = {.p = engine_propensity(engine, tag->unprompted, items)};
+    outlook.low = outlook.p;
+    outlook.high = outlook.p;
+    for (size_t i = 0; i < sizeof CURVES_BESIDE / sizeof CURVES_BESIDE[0]; i++) {
+        double p = propensity_of_curve(&CURVES_BESIDE[i], (double)tag->unprompted, (double)items);
+        outlook.low = p < outlook.low ? p : outlook.low;
+        outlook.high = p > outlook.high ? p : outlook.high;
+    }
+    /* A tag given unprompted stands for 1/p true ones; a prompted one was examined. */
+    outlook.missing = (double)tag->unprompted * (1.0 / outlook.p - 1.0);
+    outlook.expected_true = (double)tag->count + outlook.missing;
+    return outlook;
+}
+
+static const char *state_name(enum vocabulary_state state)
+{
+    return state == VOCABULARY_RETIRED ? "retired" : "open";
+}
+
+/* The tag of a name that a member of params holds. */
+static int find_tag(struct read_job *job, struct store_view *view, const char *pointer,
+                    struct store_text name, struct vocabulary_tag *ret_tag)
+{
+    struct store_error error = {0};
+    int code = vocabulary_find(view, name.data, name.size, ret_tag, &error);
+    if (code == STORE_NOT_FOUND) {
+        return fault_set(&job->fault, FAULT_NOT_FOUND, pointer, "There is no tag '%.*s'.",
+                         (int)name.size, name.data);
+    }
+    return code == STORE_OK ? 0 : read_job_fail(job, &error);
+}
+
+/* --- tag.show -----------------------------------------------------------------------------------
+ */
+
+struct show_job {
+    struct read_job job; /* first */
+    struct store_text tag;
+};
+
+static void run_show(struct read_job *base)
+{
+    struct show_job *job = (struct show_job *)base;
+    struct store_view *view = NULL;
+    struct vocabulary_tag tag;
+    if (read_job_view(base, &view) < 0) {
+        return;
+    }
+    if (find_tag(base, view, "/tag", job->tag, &tag) == 0) {
+        struct outlook outlook =
+            look_out(base->methods->engine, &tag, store_view_totals(view).items);
+        base->result =
+            json_pack("{s:s, s:I, s:I, s:{s:f, s:f, s:f, s:s}, s:f, s:f, s:I, s:s, s:n, s:n, s:[], "
+                      "s:{s:i, s:i}}",
+                      "tag", tag.name, "count", (json_int_t)tag.count, "unprompted",
+                      (json_int_t)tag.unprompted, "propensity", "p", outlook.p, "low", outlook.low,
+                      "high", outlook.high, "from", "curve", "expected_true", outlook.expected_true,
+                      "missing", outlook.missing, "opened_seq", (json_int_t)tag.opened_seq, "state",
+                      state_name(tag.state), "label", "broader", "aliases", "rulings", "belongs", 0,
+                      "not", 0);
+    }
+    store_end(view);
+}
+
+static int read_show_request(struct show_job *job, const json_t *params, struct fault *fault)
+{
+    static const char *const MEMBERS[] = {"tag", NULL};
+    int code = params_known(params, MEMBERS, fault);
+    return code < 0 ? code : params_name(params, "tag", &job->tag, fault);
+}
+
+void tag_show(struct call *call, const json_t *params)
+{
+    struct show_job *job = read_job_new(call, params, sizeof *job);
+    if (!job) {
+        return;
+    }
+    job->job.run = run_show;
+    read_job_start(&job->job, read_show_request(job, params, &job->job.fault));
+}
+
+/* --- tag.list -----------------------------------------------------------------------------------
+ */
+
+enum list_order {
+    ORDER_NAME,
+    ORDER_COUNT,
+    ORDER_MISSING
+};
+
+/* A tag's place in an order by number: falling key, then in the order in which tags were opened. */
+struct ranked {
+    double key;
+    uint32_t number;
+};
+
+struct list_job {
+    struct read_job job; /* first */
+    struct store_text after;
+    uint64_t most;
+    size_t order; /* enum list_order */
+
+    uint64_t items; /* filed, for the curve */
+    json_t *tags;
+    struct vocabulary_tag last; /* of those listed */
+    bool has_more;
+    struct ranked *ranked;
+    size_t ranked_count;
+    size_t ranked_capacity;
+};
+
+static void release_list(struct read_job *base)
+{
+    struct list_job *job = (struct list_job *)base;
+    json_decref(job->tags);
+    free(job->ranked);
+}
+
+/* Lists one more tag; 1 once there are enough. */
+static int add_tag(struct list_job *job, const struct vocabulary_tag *tag)
+{
+    if (json_array_size(job->tags) == job->most) {
+        job->has_more = true;
+        return 1;
+    }
+    struct outlook outlook = look_out(job->job.methods->engine, tag, job->items);
+    job->last = *tag;
+    return json_array_append_new(job->tags,
+                                 json_pack("{s:s, s:I, s:f, s:f, s:s}", "tag", tag->name, "count",
+                                           (json_int_t)tag->count, "p", outlook.p, "missing",
+                                           outlook.missing, "state", state_name(tag->state)));
+}
+
+static int add_by_name(void *user, const struct vocabulary_tag *tag)
+{
+    return add_tag(user, tag);
+}
+
+static struct ranked rank_of(const struct list_job *job, const struct vocabulary_tag *tag)
+{
+    double key = job->order == ORDER_COUNT
+                     ? (double)tag->count
+                     : look_out(job->job.methods->engine, tag, job->items).missing;
+    return (struct ranked){.key = key, .number = tag->number};
+}
+
+static int compare_ranked(const void *left, const void *right)
+{
+    const struct ranked *a = left;
+    const struct ranked *b = right;
+    if (a->key != b->key) {
+        return a->key > b->key ? -1 : 1;
+    }
+    return (a->number > b->number) - (a->number < b->number);
+}
+
+static int add_ranked(void *user, const struct vocabulary_tag *tag)
+{
+    struct list_job *job = user;
+    if (GROW(&job->ranked, &job->ranked_capacity, job->ranked_count + 1) < 0) {
+        return -ENOMEM;
+    }
+    job->ranked[job->ranked_count++] = rank_of(job, tag);
+    return 0;
+}
+
+/* Pages go by the tag they ended with, wherever it stands now: counts move between two pages. */
+static int list_ranked(struct list_job *job, struct store_view *view, struct store_error *error)
+{
+    struct vocabulary_tag tag;
+    struct ranked after = {0};
+    if (job->after.size > 0) {
+        if (find_tag(&job->job, view, "/after", job->after, &tag) < 0) {
+            return -1;
+        }
+        after = rank_of(job, &tag);
+    }
+    int code = vocabulary_by_number(view, add_ranked, job, error);
+    if (code == 0 && job->ranked_count > 0) {
+        qsort(job->ranked, job->ranked_count, sizeof *job->ranked, compare_ranked);
+    }
+    for (size_t i = 0; i < job->ranked_count && code == 0; i++) {
+        if (job->after.size > 0 && compare_ranked(&job->ranked[i], &after) <= 0) {
+            continue;
+        }
+        code = vocabulary_get(view, job->ranked[i].number, &tag, error);
+        if (code == 0) {
+            code = add_tag(job, &tag);
+        }
+    }
+    return code;
+}
+
+static void run_list(struct read_job *base)
+{
+    struct list_job *job = (struct list_job *)base;
+    struct store_view *view = NULL;
+    struct store_error error = {0};
+    job->tags = json_array();
+    if (!job->tags || read_job_view(base, &view) < 0) {
+        return;
+    }
+    job->items = store_view_totals(view).items;
+    int code = job->order == ORDER_NAME ? vocabulary_by_name(view, job->after.data, job->after.size,
+                                                             add_by_name, job, &error)
+                                        : list_ranked(job, view, &error);
+    store_end(view);
+    if (error.code != STORE_OK) {
+        (void)read_job_fail(base, &error); /* told at the end */
+    } else if (code >= 0) {
+        base->result = json_pack("{s:O}", "tags", job->tags);
+        if (base->result && job->has_more &&
+            json_object_set_new(base->result, "next", json_string(job->last.name)) < 0) {
+            json_decref(base->result);
+            base->result = NULL;
+        }
+    }
+}
+
+static int read_list_request(struct list_job *job, const json_t *params, struct fault *fault)
+{
+    static const char *const MEMBERS[] = {"after", "most", "order", NULL};
+    static const char *const ORDERS[] = {
+        [ORDER_NAME] = "name", [ORDER_COUNT] = "count", [ORDER_MISSING] = "missing", NULL};
+    job->most = 1000;
+    if (params_known(params, MEMBERS, fault) < 0 ||
+        params_optional_name(params, "after", &job->after, fault) < 0 ||
+        params_whole(params, "most", 1, LIST_MOST, &job->most, fault) < 0 ||
+        params_choice(params, "order", ORDERS, &job->order, fault) < 0) {
+        return fault->code;
+    }
+    return 0;
+}
+
+void tag_list(struct call *call, const json_t *params)
+{
+    struct list_job *job = read_job_new(call, params, sizeof *job);
+    if (!job) {
+        return;
+    }
+    job->job.run = run_list;
+    job->job.release = release_list;
+    read_job_start(&job->job, read_list_request(job, params, &job->job.fault));
+}

@@ -22,7 +22,7 @@ WARNINGS += -Werror
 endif
 BASE_CFLAGS := -std=c17 -D_GNU_SOURCE -I. -fno-strict-aliasing -pthread $(WARNINGS) \
                -DUNDERTAG_VERSION='"$(VERSION)"'
-DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih zlib
+DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih zlib libsystemd
 CLIENT_PACKAGES := jansson libutf8proc
 # Asked only where something is compiled, so that `make packages` runs on a bare machine.
 PACKAGE_CFLAGS = $(shell pkg-config --cflags $(DAEMON_PACKAGES))
@@ -32,7 +32,8 @@ TEST_LIBS = $(shell pkg-config --libs cmocka)
 
 DAEMON_SOURCES := $(filter-out daemon/main.c,$(wildcard daemon/*.c daemon/learner/*.c daemon/text/*.c))
 STORAGE_SOURCES := $(wildcard storage/*.c)
-CLIENT_SOURCES := $(filter-out client/main.c,$(wildcard client/*.c))
+# What both programs use is in daemon/: the framing of the wire and the places of its files.
+CLIENT_SOURCES := $(filter-out client/main.c,$(wildcard client/*.c)) daemon/lines.c
 UNIT_TESTS := $(patsubst tests/unit/%.c,%,$(wildcard tests/unit/test_*.c))
 INTEGRATION_TESTS := $(patsubst tests/integration/%.c,%,$(wildcard tests/integration/test_*.c))
 REFERENCE_TESTS := $(patsubst tests/reference/%.c,%,$(wildcard tests/reference/test_*.c))

@@ -21,7 +21,7 @@
 #include <time.h>
 #include <unistd.h>
 
-#include "client/lines.h"
+#include "daemon/lines.h"
 
 enum {
     READ_BYTES = 64 * 1024,
@@ -350,6 +350,7 @@ static int send_lines(struct feed *feed, struct input *input, bool *ret_more,
         input->number++;
         int code = 0;
         if (found == LINES_LONG) {
+            feed->counts.bytes += taken;
             refuse(feed, input->source, input->number, "the line is longer than the daemon takes");
         } else {
             size_t mark = input->number == 1 && strncmp(line, MARK, 3) == 0 ? 3 : 0;

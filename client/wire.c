@@ -18,7 +18,7 @@
 #include <sys/un.h>
 #include <unistd.h>
 
-#include "client/lines.h"
+#include "daemon/lines.h"
 
 enum {
     READ_BYTES = 64 * 1024,

@@ -1,4 +1,4 @@
-#include "client/lines.h"
+#include "daemon/lines.h"
 
 #include <assert.h>
 #include <stdint.h>

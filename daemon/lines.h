@@ -4,8 +4,8 @@
  * A line ends with "\n"; a "\r" before it is dropped. A line longer than the limit is not held: its
  * beginning is dropped, its rest passed over, and it is told once as LINES_LONG.
  */
-#ifndef UNDERTAG_CLIENT_LINES_H
-#define UNDERTAG_CLIENT_LINES_H
+#ifndef UNDERTAG_LINES_H
+#define UNDERTAG_LINES_H
 
 #include <stdbool.h>
 #include <stddef.h>

@@ -16,7 +16,8 @@
 
 enum {
     FIXTURE_MAP_BYTES = 64 << 20,
-    FIXTURE_PATH_BYTES = 512
+    FIXTURE_PATH_BYTES = 512,
+    FIXTURE_TAGS = 8 /* in a list of names */
 };
 
 /* --- temporary homes --- */
@@ -174,6 +175,35 @@ static inline struct item_filed fixture_file(struct fixture *fixture, struct ite
     }
     fixture_commit(view);
     return filed;
+}
+
+/* A filing with names in lists that end at NULL. */
+struct names {
+    const char *tags[FIXTURE_TAGS];
+    const char *prompted[FIXTURE_TAGS];
+    const char *declined[FIXTURE_TAGS];
+};
+
+static inline size_t texts_of(const char *const *names, struct store_text *texts)
+{
+    size_t count = 0;
+    for (; count < FIXTURE_TAGS && names[count]; count++) {
+        texts[count] = text_of(names[count]);
+    }
+    return count;
+}
+
+static inline struct item_filed fixture_file_as(struct fixture *fixture, struct item_filing filing,
+                                                struct names names)
+{
+    struct store_text texts[3][FIXTURE_TAGS];
+    filing.tags = texts[0];
+    filing.tag_count = texts_of(names.tags, texts[0]);
+    filing.prompted = texts[1];
+    filing.prompted_count = texts_of(names.prompted, texts[1]);
+    filing.declined = texts[2];
+    filing.declined_count = texts_of(names.declined, texts[2]);
+    return fixture_file(fixture, filing);
 }
 
 /* Files an entry that has only an id and a text. */

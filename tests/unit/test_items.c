@@ -1,6 +1,6 @@
 /*
  * Filing, withdrawing and reading: when an item is new, revised or the same, the chain of what took
- * the place of what, and the counts of tags that move with it.
+ * the place of what, and what the vocabulary refuses.
  */
 #include <setjmp.h>
 #include <stdarg.h>
@@ -12,40 +12,12 @@
 
 #include "tests/unit/store_fixture.h"
 
-enum {
-    MOST_TAGS = 8
-};
-
-/* A filing with names in lists that end at NULL. */
-struct names {
-    const char *tags[MOST_TAGS];
-    const char *prompted[MOST_TAGS];
-    const char *declined[MOST_TAGS];
-};
-
-static size_t texts_of(const char *const *names, struct store_text *texts)
-{
-    size_t count = 0;
-    for (; count < MOST_TAGS && names[count]; count++) {
-        texts[count] = text_of(names[count]);
-    }
-    return count;
-}
-
+/* Files the entry of one night. */
 static struct item_filed file(struct fixture *fixture, struct item_filing filing,
                               struct names names)
 {
-    struct store_text texts[3][MOST_TAGS];
-    filing.tags = texts[0];
-    filing.tag_count = texts_of(names.tags, texts[0]);
-    filing.prompted = texts[1];
-    filing.prompted_count = texts_of(names.prompted, texts[1]);
-    filing.declined = texts[2];
-    filing.declined_count = texts_of(names.declined, texts[2]);
-    if (filing.id.size == 0) {
-        filing.id = text_of("log/1911-02-03");
-    }
-    return fixture_file(fixture, filing);
+    filing.id = text_of("log/1911-02-03");
+    return fixture_file_as(fixture, filing, names);
 }
 
 static const struct item_filing nothing_more;
@@ -365,177 +337,6 @@ static void a_retired_tag_stays_on_an_item_that_has_it(void **state)
     assert_int_equal(fixture_tag(fixture, "gale").state, VOCABULARY_RETIRED);
 }
 
-/* --- counts of tags --- */
-
-static void assert_counts(struct fixture *fixture, const char *name, uint32_t count,
-                          uint32_t unprompted)
-{
-    struct vocabulary_tag tag = fixture_tag(fixture, name);
-    if (tag.count != count || tag.unprompted != unprompted) {
-        fail_msg("%s: %u, of them unprompted %u, not %u and %u", name, tag.count, tag.unprompted,
-                 count, unprompted);
-    }
-}
-
-static void counts_move_with_a_revision(void **state)
-{
-    struct fixture *fixture = *state;
-    (void)file_tags(fixture, (struct names){.tags = {"fog", "gale"}});
-    (void)file(fixture, (struct item_filing){.id = text_of("log/2")},
-               (struct names){.tags = {"fog"}});
-    assert_counts(fixture, "fog", 2, 2);
-    assert_counts(fixture, "gale", 1, 1);
-    (void)file_tags(fixture, (struct names){.tags = {"gale", "wreck"}});
-    assert_counts(fixture, "fog", 1, 1);
-    assert_counts(fixture, "gale", 1, 1);
-    assert_counts(fixture, "wreck", 1, 1);
-}
-
-static void counts_move_with_a_withdrawal(void **state)
-{
-    struct fixture *fixture = *state;
-    (void)file_tags(fixture, (struct names){.tags = {"fog", "gale"}, .prompted = {"gale"}});
-    (void)fixture_withdraw(fixture, "log/1911-02-03");
-    assert_counts(fixture, "fog", 0, 0);
-    assert_counts(fixture, "gale", 0, 0);
-    (void)file_tags(fixture, (struct names){.tags = {"fog"}});
-    assert_counts(fixture, "fog", 1, 1);
-}
-
-static void a_prompted_tag_stays_out_of_the_unprompted_count(void **state)
-{
-    struct fixture *fixture = *state;
-    (void)file_tags(fixture, (struct names){.tags = {"fog", "gale"}, .prompted = {"gale"}});
-    assert_counts(fixture, "fog", 1, 1);
-    assert_counts(fixture, "gale", 1, 0);
-    /* Given again without a prompt, then with one for the other. */
-    (void)file_tags(fixture, (struct names){.tags = {"fog", "gale"}});
-    assert_counts(fixture, "gale", 1, 1);
-    (void)file_tags(fixture, (struct names){.tags = {"fog", "gale"}, .prompted = {"fog"}});
-    assert_counts(fixture, "fog", 1, 0);
-    assert_counts(fixture, "gale", 1, 1);
-}
-
-static void a_declined_tag_is_not_counted(void **state)
-{
-    struct fixture *fixture = *state;
-    (void)file_tags(fixture, (struct names){.tags = {"fog", "gale"}});
-    (void)file_tags(fixture, (struct names){.tags = {"fog"}, .declined = {"gale"}});
-    assert_counts(fixture, "gale", 0, 0);
-    struct item_record record = fixture_record(fixture, 2);
-    assert_int_equal(record.declined_count, 1);
-    assert_int_equal(record.declined[0], fixture_tag(fixture, "gale").number);
-}
-
-/* --- what changed after a seq --- */
-
-struct page {
-    uint64_t seqs[8];
-    size_t count;
-    size_t stop_after;
-};
-
-static int note_change(void *user, const struct item_record *record)
-{
-    struct page *page = user;
-    assert_true(page->count < 8);
-    page->seqs[page->count++] = record->seq;
-    return page->count == page->stop_after ? STORE_STOPPED : STORE_OK;
-}
-
-static uint64_t changed(struct fixture *fixture, uint64_t since, size_t most, struct page *page)
-{
-    struct store_error error = {0};
-    uint64_t next = UINT64_MAX;
-    struct store_view *view = fixture_read(fixture);
-    assert_int_equal(
-        items_changed(view, since, most, note_change, page, &fixture->reading, &next, &error),
-        STORE_OK);
-    store_end(view);
-    return next;
-}
-
-/* Seqs 1 to 6: log/1 filed, log/2 filed, log/1 revised, log/3 filed, log/2 withdrawn, log/4. */
-static void file_six(struct fixture *fixture)
-{
-    (void)fixture_file_text(fixture, "log/1", "fog");
-    (void)fixture_file_text(fixture, "log/2", "gale");
-    (void)fixture_file_text(fixture, "log/1", "fog and gale");
-    (void)fixture_file_text(fixture, "log/3", "calm");
-    (void)fixture_withdraw(fixture, "log/2");
-    (void)fixture_file_text(fixture, "log/4", "wreck");
-}
-
-static void each_changed_item_comes_once_with_its_newest_change(void **state)
-{
-    struct fixture *fixture = *state;
-    struct page page = {0};
-    file_six(fixture);
-    assert_int_equal(changed(fixture, 0, 8, &page), 6);
-    const uint64_t expected[] = {3, 4, 5, 6};
-    assert_int_equal(page.count, 4);
-    assert_memory_equal(page.seqs, expected, sizeof expected);
-}
-
-static void pages_follow_each_other_without_gap_or_overlap(void **state)
-{
-    struct fixture *fixture = *state;
-    struct page first = {0};
-    struct page second = {0};
-    struct page third = {0};
-    file_six(fixture);
-    uint64_t next = changed(fixture, 0, 2, &first);
-    assert_int_equal(next, 4);
-    next = changed(fixture, next, 2, &second);
-    assert_int_equal(next, 6);
-    next = changed(fixture, next, 2, &third);
-    assert_int_equal(next, 6);
-    assert_int_equal(first.seqs[0], 3);
-    assert_int_equal(first.seqs[1], 4);
-    assert_int_equal(second.seqs[0], 5);
-    assert_int_equal(second.seqs[1], 6);
-    assert_int_equal(third.count, 0);
-}
-
-static void erased_changes_are_passed_over(void **state)
-{
-    struct fixture *fixture = *state;
-    struct page page = {0};
-    file_six(fixture);
-    assert_int_equal(fixture_erase(fixture, 6), 2); /* 1 and 2 */
-    assert_int_equal(changed(fixture, 0, 8, &page), 6);
-    assert_int_equal(page.count, 4);
-}
-
-static void behind_the_last_change_there_is_nothing(void **state)
-{
-    struct fixture *fixture = *state;
-    struct page page = {0};
-    assert_int_equal(changed(fixture, 0, 8, &page), 0);
-    file_six(fixture);
-    assert_int_equal(changed(fixture, 6, 8, &page), 6);
-    assert_int_equal(changed(fixture, 99, 8, &page), 99);
-    assert_true(changed(fixture, UINT64_MAX, 8, &page) == UINT64_MAX);
-    assert_int_equal(changed(fixture, 2, 0, &page), 2);
-    assert_int_equal(page.count, 0);
-}
-
-static void the_caller_may_stop_a_page(void **state)
-{
-    struct fixture *fixture = *state;
-    struct store_error error = {0};
-    struct page page = {.stop_after = 2};
-    uint64_t next = 0;
-    file_six(fixture);
-    struct store_view *view = fixture_read(fixture);
-    assert_int_equal(
-        items_changed(view, 0, 8, note_change, &page, &fixture->reading, &next, &error),
-        STORE_STOPPED);
-    store_end(view);
-    assert_int_equal(page.count, 2);
-    assert_int_equal(next, 0);
-}
-
 #define TEST(name) cmocka_unit_test_setup_teardown(name, fixture_setup, fixture_teardown)
 
 int main(void)
@@ -559,15 +360,6 @@ int main(void)
         TEST(an_unknown_tag_that_was_declined_is_refused),
         TEST(a_retired_tag_is_refused_on_an_item_that_does_not_have_it),
         TEST(a_retired_tag_stays_on_an_item_that_has_it),
-        TEST(counts_move_with_a_revision),
-        TEST(counts_move_with_a_withdrawal),
-        TEST(a_prompted_tag_stays_out_of_the_unprompted_count),
-        TEST(a_declined_tag_is_not_counted),
-        TEST(each_changed_item_comes_once_with_its_newest_change),
-        TEST(pages_follow_each_other_without_gap_or_overlap),
-        TEST(erased_changes_are_passed_over),
-        TEST(behind_the_last_change_there_is_nothing),
-        TEST(the_caller_may_stop_a_page),
     };
     return cmocka_run_group_tests_name("items", tests, NULL, NULL);
 }

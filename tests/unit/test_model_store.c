@@ -1,0 +1,397 @@
+/* The learner's model as stored: words, chunks of postings, tags, bins and the head over them. */
+#include "storage/model_store.h"
+
+#include <setjmp.h>
+#include <stdarg.h>
+#include <stdbool.h>
+#include <stddef.h>
+#include <stdint.h>
+
+#include <cmocka.h>
+
+#include "storage/kv.h"
+#include "tests/unit/store_fixture.h"
+
+/* --- fixture --- */
+
+struct stored {
+    char home[FIXTURE_PATH_BYTES];
+    struct store_settings settings;
+    struct model_store *store;
+    struct store_error error;
+    char seen[512]; /* what was loaded, in words */
+    const char *stop_at;
+};
+
+static int setup(void **state)
+{
+    struct stored *stored = calloc(1, sizeof *stored);
+    assert_non_null(stored);
+    home_make(stored->home);
+    stored->settings =
+        (struct store_settings){.home = stored->home, .map_bytes = FIXTURE_MAP_BYTES};
+    assert_int_equal(model_store_open(&stored->settings, &stored->store, &stored->error), STORE_OK);
+    *state = stored;
+    return 0;
+}
+
+static int teardown(void **state)
+{
+    struct stored *stored = *state;
+    model_store_close(stored->store);
+    home_remove(stored->home);
+    free(stored);
+    return 0;
+}
+
+static void reopen(struct stored *stored)
+{
+    model_store_close(stored->store);
+    stored->store = NULL;
+    assert_int_equal(model_store_open(&stored->settings, &stored->store, &stored->error), STORE_OK);
+}
+
+static struct model_store_writing *begin(struct stored *stored)
+{
+    struct model_store_writing *writing = NULL;
+    assert_int_equal(model_store_begin(stored->store, &writing, &stored->error), STORE_OK);
+    return writing;
+}
+
+static void commit(struct stored *stored, struct model_store_writing *writing)
+{
+    assert_int_equal(model_store_commit(writing, &stored->error), STORE_OK);
+}
+
+static struct model_store_word word_of(const char *term, uint32_t number, uint32_t count)
+{
+    return (struct model_store_word){
+        .term = term, .term_bytes = strlen(term), .number = number, .count = count};
+}
+
+static void put_word(struct stored *stored, struct model_store_writing *writing, const char *term,
+                     uint32_t number, uint32_t count)
+{
+    struct model_store_word word = word_of(term, number, count);
+    assert_int_equal(model_store_put_word(writing, &word, &stored->error), STORE_OK);
+}
+
+/* A chunk of two postings, tags 2 and 7. */
+static void put_chunk(struct stored *stored, struct model_store_writing *writing, uint32_t word,
+                      uint32_t number)
+{
+    static const uint32_t tags[] = {2, 7};
+    static const float values[] = {0.5F, -0.25F};
+    static const float accumulators[] = {1.0F, 2.0F};
+    struct model_store_chunk chunk = {.word = word,
+                                      .number = number,
+                                      .count = 2,
+                                      .tags = tags,
+                                      .values = values,
+                                      .accumulators = accumulators};
+    assert_int_equal(model_store_put_chunk(writing, &chunk, &stored->error), STORE_OK);
+}
+
+/* --- loading into words --- */
+
+static int say(struct stored *stored, const char *format, ...)
+    __attribute__((format(printf, 2, 3)));
+
+static int say(struct stored *stored, const char *format, ...)
+{
+    size_t used = strlen(stored->seen);
+    va_list arguments;
+    va_start(arguments, format);
+    (void)vsnprintf(stored->seen + used, sizeof stored->seen - used, format, arguments);
+    va_end(arguments);
+    bool stops = stored->stop_at && strstr(stored->seen, stored->stop_at);
+    return stops ? STORE_STOPPED : STORE_OK;
+}
+
+static int see_word(void *user, const struct model_store_word *word)
+{
+    return say(user, "word %.*s %u x%u; ", (int)word->term_bytes, word->term, word->number,
+               word->count);
+}
+
+static int see_chunk(void *user, const struct model_store_chunk *chunk)
+{
+    int result = say(user, "chunk %u/%u", chunk->word, chunk->number);
+    for (uint32_t i = 0; i < chunk->count && result == STORE_OK; i++) {
+        result = say(user, " %u:%g(%g)", chunk->tags[i], (double)chunk->values[i],
+                     (double)chunk->accumulators[i]);
+    }
+    return result == STORE_OK ? say(user, "; ") : result;
+}
+
+static int see_tag(void *user, const struct model_store_tag *tag)
+{
+    return say(user, "tag %u x%u/%u %g(%g); ", tag->number, tag->count, tag->unprompted,
+               (double)tag->bias, (double)tag->bias_accumulator);
+}
+
+static int see_bin(void *user, const struct model_store_bin *bin)
+{
+    int result = say(user, "bin %u", bin->number);
+    for (uint32_t i = 0; i < bin->count && result == STORE_OK; i++) {
+        result = say(user, " %g", bin->values[i]);
+    }
+    return result == STORE_OK ? say(user, "; ") : result;
+}
+
+static int load(struct stored *stored)
+{
+    struct model_store_sink sink = {
+        .user = stored, .word = see_word, .chunk = see_chunk, .tag = see_tag, .bin = see_bin};
+    stored->seen[0] = '\0';
+    return model_store_load(stored->store, &sink, &stored->error);
+}
+
+static void assert_loads(struct stored *stored, const char *expected)
+{
+    int result = load(stored);
+    if (result != STORE_OK) {
+        fail_msg("%d: %s", result, stored->error.text);
+    }
+    assert_string_equal(stored->seen, expected);
+}
+
+static void put_some_of_each(struct stored *stored)
+{
+    const double values[] = {1.5, -1e300};
+    struct model_store_tag tag = {
+        .number = 7, .count = 40, .unprompted = 31, .bias = -0.5F, .bias_accumulator = 3.0F};
+    struct model_store_bin bin = {.number = 127, .count = 2, .values = values};
+    struct model_store_writing *writing = begin(stored);
+    assert_int_equal(model_store_put_bin(writing, &bin, &stored->error), STORE_OK);
+    assert_int_equal(model_store_put_tag(writing, &tag, &stored->error), STORE_OK);
+    put_chunk(stored, writing, 5, 1);
+    put_chunk(stored, writing, 5, 0);
+    put_word(stored, writing, "gale", 5, 9);
+    put_word(stored, writing, "fog", 300, 2);
+    commit(stored, writing);
+}
+
+/* --- tests --- */
+
+static void what_was_put_is_loaded_words_first_and_chunks_in_order(void **state)
+{
+    struct stored *stored = *state;
+    put_some_of_each(stored);
+    reopen(stored);
+    assert_loads(stored, "word fog 300 x2; word gale 5 x9; "
+                         "chunk 5/0 2:0.5(1) 7:-0.25(2); chunk 5/1 2:0.5(1) 7:-0.25(2); "
+                         "tag 7 x40/31 -0.5(3); bin 127 1.5 -1e+300; ");
+}
+
+static void a_fresh_model_has_neither_head_nor_parts(void **state)
+{
+    struct stored *stored = *state;
+    struct model_store_head head = {.learned = 77};
+    assert_int_equal(model_store_read_head(stored->store, &head, &stored->error), STORE_NOT_FOUND);
+    assert_int_equal(head.learned, 77);
+    assert_loads(stored, "");
+}
+
+static void put_head(struct stored *stored, const struct model_store_head *head)
+{
+    struct model_store_writing *writing = begin(stored);
+    assert_int_equal(model_store_put_head(writing, head, &stored->error), STORE_OK);
+    commit(stored, writing);
+}
+
+static void the_head_is_read_as_it_was_put(void **state)
+{
+    struct stored *stored = *state;
+    struct model_store_head head = {.store_uuid = "fifteen letters",
+                                    .settings = "loss=squared_hinge\nlanguage=\n",
+                                    .learned = UINT64_MAX,
+                                    .documents = 30300,
+                                    .factor_count = 12,
+                                    .factor_sum = 0.1,
+                                    .calibration_gain = 1e12};
+    struct model_store_head again = {0};
+    put_head(stored, &head);
+    reopen(stored);
+    assert_int_equal(model_store_read_head(stored->store, &again, &stored->error), STORE_OK);
+    assert_memory_equal(again.store_uuid, head.store_uuid, STORE_UUID_BYTES);
+    assert_string_equal(again.settings, head.settings);
+    assert_true(again.learned == UINT64_MAX);
+    assert_int_equal(again.documents, 30300);
+    assert_int_equal(again.factor_count, 12);
+    assert_true(again.factor_sum == 0.1);
+    assert_true(again.calibration_gain == 1e12);
+}
+
+static void the_longest_settings_are_kept_whole(void **state)
+{
+    struct stored *stored = *state;
+    struct model_store_head head = {0};
+    struct model_store_head again = {0};
+    memset(head.settings, 'x', MODEL_STORE_SETTINGS_BYTES - 1);
+    put_head(stored, &head);
+    assert_int_equal(model_store_read_head(stored->store, &again, &stored->error), STORE_OK);
+    assert_string_equal(again.settings, head.settings);
+}
+
+static void a_part_put_again_takes_the_place_of_the_first(void **state)
+{
+    struct stored *stored = *state;
+    put_some_of_each(stored);
+    struct model_store_writing *writing = begin(stored);
+    put_word(stored, writing, "fog", 300, 3);
+    commit(stored, writing);
+    assert_int_equal(load(stored), STORE_OK);
+    assert_non_null(strstr(stored->seen, "word fog 300 x3; word gale"));
+}
+
+static void a_forgotten_word_takes_its_chunks_with_it(void **state)
+{
+    struct stored *stored = *state;
+    struct model_store_word gale = word_of("gale", 5, 9);
+    put_some_of_each(stored);
+    struct model_store_writing *writing = begin(stored);
+    put_chunk(stored, writing, 300, 0);
+    assert_int_equal(model_store_forget_word(writing, &gale, &stored->error), STORE_OK);
+    commit(stored, writing);
+    assert_loads(stored, "word fog 300 x2; chunk 300/0 2:0.5(1) 7:-0.25(2); "
+                         "tag 7 x40/31 -0.5(3); bin 127 1.5 -1e+300; ");
+}
+
+static void a_word_that_was_never_stored_is_forgotten_without_a_fuss(void **state)
+{
+    struct stored *stored = *state;
+    struct model_store_word word = word_of("ketch", 6, 1);
+    struct model_store_writing *writing = begin(stored);
+    assert_int_equal(model_store_forget_word(writing, &word, &stored->error), STORE_OK);
+    commit(stored, writing);
+    assert_loads(stored, "");
+}
+
+static void clearing_forgets_everything(void **state)
+{
+    struct stored *stored = *state;
+    struct model_store_head head = {.learned = 9};
+    put_some_of_each(stored);
+    put_head(stored, &head);
+    struct model_store_writing *writing = begin(stored);
+    assert_int_equal(model_store_clear(writing, &stored->error), STORE_OK);
+    commit(stored, writing);
+    assert_loads(stored, "");
+    assert_int_equal(model_store_read_head(stored->store, &head, &stored->error), STORE_NOT_FOUND);
+}
+
+static void what_is_aborted_leaves_nothing(void **state)
+{
+    struct stored *stored = *state;
+    struct model_store_writing *writing = begin(stored);
+    put_word(stored, writing, "fog", 1, 1);
+    model_store_abort(writing);
+    model_store_abort(NULL);
+    assert_loads(stored, "");
+}
+
+static void loading_stops_when_it_is_told_to(void **state)
+{
+    struct stored *stored = *state;
+    put_some_of_each(stored);
+    stored->stop_at = "word gale";
+    assert_int_equal(load(stored), STORE_STOPPED);
+    assert_null(strstr(stored->seen, "chunk"));
+}
+
+/* Writes one entry behind the model's back; the tables are named as model_store.c names them. */
+static void write_entry(struct stored *stored, const char *table, const char *key,
+                        const void *value, size_t size)
+{
+    char directory[FIXTURE_PATH_BYTES + 8];
+    (void)snprintf(directory, sizeof directory, "%s/model", stored->home);
+    struct kv_settings settings = {
+        .directory = directory, .map_bytes = FIXTURE_MAP_BYTES, .tables = &table, .table_count = 1};
+    struct kv *kv = NULL;
+    struct kv_txn *txn = NULL;
+    model_store_close(stored->store);
+    stored->store = NULL;
+    assert_int_equal(kv_open(&settings, &kv, &stored->error), STORE_OK);
+    assert_int_equal(kv_begin(kv, true, &txn, &stored->error), STORE_OK);
+    assert_int_equal(
+        kv_put(txn, 0, kv_bytes_of(key, strlen(key)), kv_bytes_of(value, size), &stored->error),
+        STORE_OK);
+    assert_int_equal(kv_commit(txn, &stored->error), STORE_OK);
+    kv_close(kv);
+    reopen(stored);
+}
+
+static void a_model_of_a_newer_version_is_refused_with_a_sentence(void **state)
+{
+    struct stored *stored = *state;
+    const unsigned char newer[] = {MODEL_STORE_FORMAT + 1, 0, 0, 0};
+    struct model_store_head head = {0};
+    write_entry(stored, "meta", "model", newer, sizeof newer);
+    assert_int_equal(model_store_read_head(stored->store, &head, &stored->error), STORE_NEWER);
+    assert_string_equal(stored->error.text, "the model was written by a newer version of undertag "
+                                            "(format 2, this version reads up to 1)");
+}
+
+static void a_head_that_is_cut_short_is_damage(void **state)
+{
+    struct stored *stored = *state;
+    const unsigned char cut[] = {MODEL_STORE_FORMAT, 0, 0, 0, 1, 2, 3};
+    struct model_store_head head = {0};
+    write_entry(stored, "meta", "model", cut, sizeof cut);
+    assert_int_equal(model_store_read_head(stored->store, &head, &stored->error), STORE_CORRUPT);
+}
+
+static void a_part_whose_checksum_is_wrong_is_damage(void **state)
+{
+    struct stored *stored = *state;
+    const unsigned char wrong[] = {1, 2, 3, 4, 5, 0, 0, 0, 9, 0, 0, 0};
+    write_entry(stored, "words", "gale", wrong, sizeof wrong);
+    assert_int_equal(load(stored), STORE_CORRUPT);
+    assert_string_equal(stored->error.text, "a stored word of the model is damaged");
+    assert_string_equal(stored->seen, "");
+}
+
+static void a_forgotten_word_is_scrubbed_from_the_file(void **state)
+{
+    struct stored *stored = *state;
+    struct model_store_word word = word_of("schoonerwreckage", 1, 1);
+    struct model_store_writing *writing = begin(stored);
+    put_word(stored, writing, "fog", 2, 1);
+    put_word(stored, writing, "schoonerwreckage", 1, 1);
+    commit(stored, writing);
+    assert_true(home_occurrences(stored->home, "model/data.mdb", "schoonerwreckage") > 0);
+    writing = begin(stored);
+    assert_int_equal(model_store_forget_word(writing, &word, &stored->error), STORE_OK);
+    commit(stored, writing);
+    size_t left = 1;
+    for (int calls = 0; left > 0; calls++) {
+        assert_true(calls < 1000);
+        assert_int_equal(model_store_scrub(stored->store, 64, &left, &stored->error), STORE_OK);
+    }
+    assert_int_equal(home_occurrences(stored->home, "model/data.mdb", "schoonerwreckage"), 0);
+    assert_loads(stored, "word fog 2 x1; ");
+}
+
+#define TEST(name) cmocka_unit_test_setup_teardown(name, setup, teardown)
+
+int main(void)
+{
+    const struct CMUnitTest tests[] = {
+        TEST(what_was_put_is_loaded_words_first_and_chunks_in_order),
+        TEST(a_fresh_model_has_neither_head_nor_parts),
+        TEST(the_head_is_read_as_it_was_put),
+        TEST(the_longest_settings_are_kept_whole),
+        TEST(a_part_put_again_takes_the_place_of_the_first),
+        TEST(a_forgotten_word_takes_its_chunks_with_it),
+        TEST(a_word_that_was_never_stored_is_forgotten_without_a_fuss),
+        TEST(clearing_forgets_everything),
+        TEST(what_is_aborted_leaves_nothing),
+        TEST(loading_stops_when_it_is_told_to),
+        TEST(a_model_of_a_newer_version_is_refused_with_a_sentence),
+        TEST(a_head_that_is_cut_short_is_damage),
+        TEST(a_part_whose_checksum_is_wrong_is_damage),
+        TEST(a_forgotten_word_is_scrubbed_from_the_file),
+    };
+    return cmocka_run_group_tests_name("model store", tests, NULL, NULL);
+}

@@ -15,6 +15,7 @@ CFLAGS ?= -O2 -g
 CC ?= cc
 PYTHON ?= /usr/bin/python3
 VERSION := 0.1.0
+JOBS ?= 2
 
 WARNINGS := -Wall -Wextra -Wshadow -Wconversion -Wstrict-prototypes -Wformat=2
 ifeq ($(CI),true)
@@ -57,6 +58,15 @@ BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
 all: $(PROGRAMS)
 
+# One short line a step; `make V=1` shows the commands.
+ifeq ($(V),1)
+Q :=
+say =
+else
+Q := @
+say = @printf '%-8s %s\n' $(1) $(2)
+endif
+
 # --- building -----------------------------------------------------------------------------------
 
 # A build made with other flags is made anew: the stamp changes only when they do.
@@ -67,37 +77,44 @@ $(BUILD)/flags: FORCE
 
 $(BUILD)/%.o: %.c $(BUILD)/flags
 	@mkdir -p $(@D)
-	$(CC) $(BASE_CFLAGS) $(PACKAGE_CFLAGS) $(CPPFLAGS) $(CFLAGS) -MMD -MP -c $< -o $@
+	$(call say,compile,$<)
+	$(Q)$(CC) $(BASE_CFLAGS) $(PACKAGE_CFLAGS) $(CPPFLAGS) $(CFLAGS) -MMD -MP -c $< -o $@
 
 $(LIBRARY): $(LIBRARY_OBJECTS)
 	@rm -f $@
-	$(AR) rcs $@ $^
+	$(Q)$(AR) rcs $@ $^
 
 $(CLIENT_LIBRARY): $(CLIENT_OBJECTS)
 	@rm -f $@
-	$(AR) rcs $@ $^
+	$(Q)$(AR) rcs $@ $^
 
 $(BUILD)/undertagd: $(BUILD)/daemon/main.o $(LIBRARY)
-	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
 
 $(BUILD)/undertag: $(BUILD)/client/main.o $(CLIENT_LIBRARY)
-	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(CLIENT_LIBS) -o $@
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(CLIENT_LIBS) -o $@
 
 $(BUILD)/tests/%: $(BUILD)/tests/unit/%.o $(LIBRARY) $(CLIENT_LIBRARY)
 	@mkdir -p $(@D)
-	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
 
 $(BUILD)/tests/%: $(BUILD)/tests/integration/%.o $(HELPERS) $(LIBRARY)
 	@mkdir -p $(@D)
-	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
 
 $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
 	@mkdir -p $(@D)
-	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -llinear -o $@
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -llinear -o $@
 
-$(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(LIBRARY)
+$(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(LIBRARY) $(CLIENT_LIBRARY)
 	@mkdir -p $(@D)
-	$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
 
 -include $(shell find $(BUILD) -name '*.d' 2>/dev/null)
 
@@ -109,16 +126,18 @@ packages-%: FORCE
 # --- running ------------------------------------------------------------------------------------
 
 demo: packages-build
-	@$(MAKE) --no-print-directory all
-	@sh tests/demo/demo.sh $(BUILD)
+	@$(MAKE) --no-print-directory -j $(JOBS) all
+	@PYTHON=$(PYTHON) sh tests/demo/demo.sh $(BUILD)
 
 test: packages-build packages-test
-	@$(MAKE) --no-print-directory run-tests
+	@$(MAKE) --no-print-directory -j $(JOBS) run-tests
 
 build-tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BENCH_PROGRAMS)
 
+# GROUPS: of unit, integration, reference and python; WRAPPER: what to run the programs under.
+GROUPS ?= unit integration reference python
 run-tests: build-tests
-	@BUILD=$(BUILD) PYTHON=$(PYTHON) sh tests/run $(WRAPPER)
+	@BUILD=$(BUILD) PYTHON=$(PYTHON) WRAPPER='$(WRAPPER)' sh tests/run $(GROUPS)
 
 corpora: $(BUILD)/corpora/D.jsonl $(BUILD)/corpora/W.jsonl
 
@@ -129,6 +148,11 @@ $(BUILD)/corpora/W.jsonl: tests/corpora/make_w.py tests/corpora/corpus.py | pack
 	@$(PYTHON) -B $< $@
 
 # A corpus that cannot be made (no network) is skipped: quality.py says so and ends with 69.
+bench: packages-build packages-quality
+	@$(MAKE) --no-print-directory -j $(JOBS) all $(BENCH_PROGRAMS)
+	-@$(MAKE) --no-print-directory --keep-going corpora
+	@$(PYTHON) -B tests/bench/bench.py $(BUILD) --corpora $(BUILD)/corpora
+
 quality: packages-build packages-quality
 	@$(MAKE) --no-print-directory all
 	-@$(MAKE) --no-print-directory --keep-going corpora
@@ -142,19 +166,24 @@ ALL_HEADERS = $(shell git ls-files '*.h')
 
 lint: packages-build packages-test packages-lint
 	clang-format --dry-run --Werror $(ALL_SOURCES) $(ALL_HEADERS)
-	cppcheck --quiet --std=c11 --enable=warning,performance,portability --inline-suppr \
-	    --error-exitcode=1 -I. daemon storage client
-	clang-tidy --quiet $(ALL_SOURCES) -- $(BASE_CFLAGS) $(PACKAGE_CFLAGS)
-	$(MAKE) BUILD=build-clang CC=clang CI=true build-tests
+	cppcheck --quiet -j $(JOBS) --std=c11 --enable=warning,performance,portability \
+	    --inline-suppr --error-exitcode=1 -I. daemon storage client
+	@echo clang-tidy: $(words $(ALL_SOURCES)) files
+	@printf '%s\n' $(ALL_SOURCES) | xargs -P $(JOBS) -n 4 sh -c \
+	    'clang-tidy --quiet "$$@" -- $(BASE_CFLAGS) $(PACKAGE_CFLAGS) 2>/dev/null' sh
+	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-clang CC=clang CI=true build-tests
 
+# Benchmarks and Python have nothing to say under a sanitizer.
 sanitize: packages-build packages-test packages-lint
-	$(MAKE) BUILD=build-asan CC=clang run-tests \
+	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-asan CC=clang run-tests \
+	    GROUPS='unit integration reference' \
 	    CFLAGS='-O1 -g -fno-omit-frame-pointer -fsanitize=address,undefined -fno-sanitize-recover=all'
-	$(MAKE) BUILD=build-tsan CC=clang CFLAGS='-O1 -g -fsanitize=thread' run-tests
+	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-tsan CC=clang run-tests \
+	    GROUPS='unit integration' CFLAGS='-O1 -g -fsanitize=thread'
 
 valgrind: packages-build packages-test
-	$(MAKE) BUILD=build-valgrind CFLAGS='-O1 -g' run-tests \
-	    WRAPPER='valgrind -q --error-exitcode=99 --leak-check=full --trace-children=no'
+	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-valgrind CFLAGS='-O1 -g' run-tests \
+	    GROUPS=unit WRAPPER='valgrind -q --error-exitcode=99 --leak-check=full'
 
 # --- installing ---------------------------------------------------------------------------------
 

@@ -72,20 +72,6 @@ static int fail_errno(char *error, const char *what, int code)
 /* --- the model ----------------------------------------------------------------------------------
  */
 
-static struct model_settings model_settings_of(const struct options *options)
-{
-    return (struct model_settings){
-        .weights = {.surrogate = options->loss,
-                    .step = options->step,
-                    .specificity = options->specificity},
-        .curve = {.a = options->propensity_a, .b = options->propensity_b},
-        .correction = options->correction,
-        .even_out = options->even_out,
-        .balance = options->balance,
-        .step = options->step,
-        .evidence_half_life_items = options->evidence_half_life};
-}
-
 static struct model_origin origin_of(const struct engine *engine, uint64_t last_seq)
 {
     return (struct model_origin){.store_uuid = store_uuid(engine->store),
@@ -107,7 +93,7 @@ static int last_seq(struct engine *engine, uint64_t *ret_seq, struct store_error
 static int new_model(const struct engine *engine, struct model **ret_model,
                      struct store_error *error)
 {
-    const struct model_settings settings = model_settings_of(&engine->options);
+    const struct model_settings settings = options_model_settings(&engine->options);
     if (model_new(&settings, &engine->features.key, ret_model) < 0) {
         return store_fail(error, STORE_NO_MEMORY, "there is no memory for a model");
     }

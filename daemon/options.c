@@ -1,7 +1,6 @@
 #include "daemon/options.h"
 
 #include <errno.h>
-#include <ini.h>
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -151,12 +150,14 @@ static int refuse(char *error, const struct option *option, const char *value)
                         "option %s is a size from %.0f to %.0f bytes, such as 64MiB, not '%s'",
                         option->name, option->minimum, option->maximum, value);
     case TYPE_WHOLE:
+        return snprintf(error, OPTIONS_ERROR_BYTES,
+                        "option %s is a whole number from %.0f to %.0f, not '%s'", option->name,
+                        option->minimum, option->maximum, value);
     case TYPE_NUMBER:
         break;
     }
-    return snprintf(error, OPTIONS_ERROR_BYTES, "option %s is a %snumber from %g to %g, not '%s'",
-                    option->name, option->type == TYPE_WHOLE ? "whole " : "", option->minimum,
-                    option->maximum, value);
+    return snprintf(error, OPTIONS_ERROR_BYTES, "option %s is a number from %g to %g, not '%s'",
+                    option->name, option->minimum, option->maximum, value);
 }
 
 /* A number with nothing but digits, one point, a sign and an exponent; no hex, no "inf". */
@@ -168,11 +169,13 @@ static bool parse_number(const char *text, const char **ret_end, double *ret_num
     char *end = NULL;
     errno = 0;
     double number = strtod(text, &end); /* the daemon never leaves the "C" locale */
-    if (end == text || errno != 0 || !isfinite(number) || memchr(text, 'x', (size_t)(end - text))) {
+    bool has_hex =
+        memchr(text, 'x', (size_t)(end - text)) || memchr(text, 'X', (size_t)(end - text));
+    if (end == text || errno != 0 || !isfinite(number) || has_hex) {
         return false;
     }
     *ret_end = end;
-    *ret_number = number;
+    *ret_number = number + 0.0; /* minus zero becomes zero */
     return true;
 }
 
@@ -315,65 +318,18 @@ void options_defaults(struct options *ret_options)
     }
 }
 
-/* --- the file ----------------------------------------------------------------------------------
- */
-
-struct reading {
-    struct options options;
-    bool is_set[OPTION_COUNT];
-    bool failed; /* the first error stands; later lines are passed over */
-    char *error;
-};
-
-static int take_line(void *user, const char *section, const char *name, const char *value)
-{
-    struct reading *reading = user;
-    if (reading->failed) {
-        return 1;
-    }
-    const struct option *option = find_option(name, strlen(name));
-    reading->failed = true;
-    if (section[0] != '\0') {
-        (void)snprintf(reading->error, OPTIONS_ERROR_BYTES,
-                       "there are no sections, so no [%s]: options stand by themselves", section);
-        return 0;
-    }
-    if (option && reading->is_set[option - OPTIONS]) {
-        (void)snprintf(reading->error, OPTIONS_ERROR_BYTES, "option %s is set twice", name);
-        return 0;
-    }
-    if (options_set(&reading->options, name, value, reading->error) < 0) {
-        return 0;
-    }
-    reading->failed = false;
-    reading->is_set[option - OPTIONS] = true;
-    return 1;
-}
-
-int options_read_file(struct options *options, const char *path, char *error)
-{
-    char reason[OPTIONS_ERROR_BYTES] = "it is not of the form name = value";
-    struct reading reading = {.options = *options, .error = reason};
-    int line = ini_parse(path, take_line, &reading);
-    if (line == -1) {
-        (void)snprintf(error, OPTIONS_ERROR_BYTES, "%.200s cannot be read: %s", path,
-                       strerror(errno));
-        return -1;
-    }
-    if (line != 0) {
-        (void)snprintf(error, OPTIONS_ERROR_BYTES, "%.120s, line %d: %.340s", path, line, reason);
-        return -1;
-    }
-    *options = reading.options;
-    return 0;
-}
-
 /* --- values into text --------------------------------------------------------------------------
  */
 
 size_t options_count(void)
 {
     return OPTION_COUNT;
+}
+
+size_t options_find(const char *name)
+{
+    const struct option *option = find_option(name, strlen(name));
+    return option ? (size_t)(option - OPTIONS) : OPTION_COUNT;
 }
 
 static void write_value(const struct options *options, const struct option *option, char *text,
@@ -469,4 +425,29 @@ size_t options_reload(struct options *options, const struct options *wanted, con
         }
     }
     return held_back;
+}
+
+/* --- for those who are set ----------------------------------------------------------------------
+ */
+
+struct features_settings options_features_settings(const struct options *options)
+{
+    return (struct features_settings){.words = {.stemming = options->stemming,
+                                                .pairs = options->word_pairs,
+                                                .language = options->language},
+                                      .title_weight = options->title_weight};
+}
+
+struct model_settings options_model_settings(const struct options *options)
+{
+    return (struct model_settings){
+        .weights = {.surrogate = options->loss,
+                    .step = options->step,
+                    .specificity = options->specificity},
+        .curve = {.a = options->propensity_a, .b = options->propensity_b},
+        .correction = options->correction,
+        .even_out = options->even_out,
+        .balance = options->balance,
+        .step = options->step,
+        .evidence_half_life_items = options->evidence_half_life};
 }

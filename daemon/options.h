@@ -12,7 +12,8 @@
 #include <stddef.h>
 #include <stdint.h>
 
-#include "daemon/learner/surrogate.h"
+#include "daemon/learner/model.h"
+#include "daemon/text/features.h"
 
 enum {
     OPTIONS_LANGUAGE_BYTES = 16,
@@ -67,8 +68,8 @@ int options_set_pair(struct options *options, const char *pair, char *error)
     __attribute__((warn_unused_result));
 
 /*
- * Reads a file of `name = value` lines over what is there. An unknown, repeated or wrong line is an
- * error that names file and line. On failure *options is untouched.
+ * Reads a file of `name = value` lines over what is there (options_file.c). An unknown, repeated or
+ * wrong line is an error that names file and line. On failure *options is untouched.
  */
 int options_read_file(struct options *options, const char *path, char *error)
     __attribute__((warn_unused_result));
@@ -81,6 +82,9 @@ size_t options_reload(struct options *options, const struct options *wanted,
                       const char **ret_first);
 
 size_t options_count(void);
+
+/* The place of an option in the table; options_count() where there is none of that name. */
+size_t options_find(const char *name);
 
 enum options_group {
     OPTIONS_LIMIT,
@@ -106,5 +110,9 @@ void options_describe(const struct options *options, size_t index, struct option
  */
 int options_learning_text(const struct options *options, char *text, size_t size)
     __attribute__((warn_unused_result));
+
+/* The settings of the words (but for their key) and of the model. The language is borrowed. */
+struct features_settings options_features_settings(const struct options *options);
+struct model_settings options_model_settings(const struct options *options);
 
 #endif

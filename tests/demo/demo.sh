@@ -11,7 +11,7 @@ here=$(cd "$(dirname "$0")" && pwd)
 python=${PYTHON:-/usr/bin/python3}
 entries=3000
 first_part=2000 # filed in peace; the crash falls into the rest
-held_back=300   # of the rest, so that its filing cannot end before the crash
+bite=20         # lines of the rest at a time, so that the crash finds the filing in its middle
 crash_after=250 # entries of the rest that are in the store
 sample=200      # entries whose proposals are compared with the truth
 
@@ -114,6 +114,16 @@ ids() {
     sed -n "$1,$2s/^{\"id\": \"\([^\"]*\)\".*/\1/p" logbooks.jsonl
 }
 
+# A file in small bites, as a live feed sends it. Ends early when nobody reads any more.
+trickle() {
+    at=1
+    total=$(wc -l <"$1")
+    while [ $at -le "$total" ] && sed -n "$at,$((at + bite - 1))p" "$1"; do
+        at=$((at + bite))
+        sleep 0.02
+    done
+}
+
 holds_items() {
     items=$(state items) && [ "$items" -ge "$1" ]
 }
@@ -182,15 +192,13 @@ say "The filing of the other $(count $rest) entries begins, and in its middle th
 mkfifo pipe
 undertag --json file <pipe >acknowledged 2>filing.log &
 filing=$!
-exec 3>pipe
-head -n $((rest - held_back)) part2.jsonl >&3 3>&- 2>/dev/null &
+trickle part2.jsonl >pipe 2>/dev/null &
 feeder=$!
 wait_until 60 "the filing to be under way" holds_items $((first_part + crash_after))
 kill -9 "$daemon"
 wait "$daemon" 2>/dev/null || true # what it ended with is the kill
 daemon=
-exec 3>&-
-wait "$feeder" || true # the pipe may have broken under it
+wait "$feeder" || true # the pipe has broken under it
 feeder=
 if wait "$filing"; then
     fail "the filing ended well although its daemon was killed"

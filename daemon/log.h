@@ -1,6 +1,7 @@
 /*
  * log: lines for the operator on standard error, one a line, with journald's <N> priorities where
- * systemd reads them. Any thread; a line is written in one call.
+ * systemd reads them. Any thread; a line is written in one call, cut at 1,023 bytes; control
+ * characters in it become spaces.
  */
 #ifndef UNDERTAG_LOG_H
 #define UNDERTAG_LOG_H

@@ -138,10 +138,14 @@ void calibration_fit(const struct calibration *calibration, const struct propens
         }
         weights[b] = bin->pairs / calibration->gain + PRIOR_PAIRS;
         double prior = PRIOR_PAIRS * prior_chance(middle_of_bin(b));
-        ret_curve->chance[b] = fmin((truth / calibration->gain + prior) / weights[b], 1.0);
+        ret_curve->chance[b] = (truth / calibration->gain + prior) / weights[b];
     }
     struct isotonic_pool pools[CALIBRATION_BINS];
     isotonic_fit(ret_curve->chance, weights, pools, CALIBRATION_BINS);
+    /* Only now: a bin that y/p has carried above 1 makes up for its neighbours first. */
+    for (size_t b = 0; b < CALIBRATION_BINS; b++) {
+        ret_curve->chance[b] = fmin(ret_curve->chance[b], 1.0);
+    }
     ret_curve->early = given_above_floor / calibration->gain < ENOUGH_GIVEN;
 }
 

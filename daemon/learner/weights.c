@@ -457,7 +457,8 @@ int weights_restore_chunk(struct weights *weights, const struct weights_chunk *c
         return -ENOMEM;
     }
     struct postings *postings = &weights->words[chunk->word];
-    if (chunk->count > POSTINGS_CHUNK || postings->count != chunk->number * POSTINGS_CHUNK) {
+    if (chunk->count > POSTINGS_CHUNK ||
+        postings->count != (uint64_t)chunk->number * POSTINGS_CHUNK) {
         return -EINVAL;
     }
     uint64_t bytes_before = postings_bytes(postings);

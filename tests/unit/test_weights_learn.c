@@ -1,0 +1,257 @@
+/*
+ * What one example does to the weights: AdaGrad (Duchi et al. 2011) with the importance-aware step.
+ *
+ * By hand, squared hinge, one word of x = 1, a tag never seen: s = -1, slope = -2·(1 + 1) = -4, so
+ * that both accumulators become 16 and both rates .5/√(.1 + 16) = .124611; D = .249222,
+ * α = 2·(1 - e^(-2·.249222))/.249222 = 3.150000; bias and weight become α·rate = .392525.
+ */
+#include "daemon/learner/weights.h"
+
+#include "tests/unit/near.h"
+#include "tests/unit/weights_fixture.h"
+
+static void the_first_example_by_hand(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    struct weights_bias bias = weights_bias(fixture->weights, 0);
+    assert_near((double)bias.value, 0.392525, 1e-5);
+    assert_near((double)bias.accumulator, 16.0, 1e-6);
+    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 2.0 * 0.392525, 1e-5);
+    assert_near(fixture_score_of(fixture, 5, 0), -1.0 + 0.392525, 1e-5);
+}
+
+/* The gradient of the accumulator is that of the loss without the factor. */
+static void a_factor_lengthens_the_step_and_not_the_accumulator(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    fixture_learn_one(fixture, 1, 1, 3.0);
+    /* D as before: 2·(1 - e^(-6·.249222)) = 1.551653 in all. */
+    assert_near(fixture_score_of(fixture, 1, 1), 0.551653, 1e-5);
+    assert_near((double)weights_bias(fixture->weights, 1).accumulator, 16.0, 1e-6);
+}
+
+static void no_factor_carries_a_score_beyond_one(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_learn_one(fixture, 0, 0, 1e9);
+    assert_near(fixture_score_of(fixture, 0, 0), 1.0, 1e-6);
+}
+
+static void a_pair_that_counts_for_nothing_changes_nothing(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_learn_one(fixture, 0, 0, 0.0);
+    assert_near(fixture_score_of(fixture, 0, 0), -1.0, 0.0);
+    assert_int_equal(weights_postings(fixture->weights), 0);
+}
+
+static void what_is_right_already_is_not_learned_again(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_put(fixture, 0, (const uint32_t[]){0}, (const float[]){2.5F}, 1); /* s = 1.5 */
+    fixture_learn_one(fixture, 0, 0, 7.0);
+    assert_near(fixture_score_of(fixture, 0, 0), 1.5, 0.0);
+    assert_near((double)weights_bias(fixture->weights, 0).accumulator, 0.0, 0.0);
+    assert_int_equal(weights_changed_tags(fixture->weights)->count, 0);
+}
+
+static void the_same_example_again_comes_nearer_to_one(void **state)
+{
+    const struct fixture *fixture = *state;
+    double last = -1.0;
+    for (int i = 0; i < 30; i++) {
+        fixture_learn_one(fixture, 0, 0, 1.0);
+        double score = fixture_score_of(fixture, 0, 0);
+        assert_true(score > last && score <= 1.0);
+        last = score;
+    }
+    assert_true(last > 0.9);
+}
+
+/* A longer part of x has the larger gradient and moves its weight further. */
+static void the_word_that_weighs_more_in_the_item_speaks_louder(void **state)
+{
+    const struct fixture *fixture = *state;
+    const struct weights_feature x[] = {fixture_word(0, 0.96F), fixture_word(1, 0.28F)};
+    const struct weights_given given = fixture_given(0, 1.0);
+    float parts[2];
+    fixture_learn(fixture, x, 2, &given, 1);
+    fixture_score(fixture, x, 2);
+    weights_explain(fixture->weights, x, 2, (const uint32_t[]){0}, 1, fixture->scratch, parts);
+    assert_true(parts[0] > parts[1] && parts[1] > 0.0F);
+    /* s rises by α·D: -1 + bias + both parts, and never by more. */
+    assert_near(fixture_tag_score(fixture, 0),
+                -1.0 + (double)weights_bias(fixture->weights, 0).value + (double)parts[0] +
+                    (double)parts[1],
+                1e-6);
+}
+
+/* --- rivals -------------------------------------------------------------------------------------
+ */
+
+static void a_rival_is_pushed_down(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_put(fixture, 0, (const uint32_t[]){1}, (const float[]){0.5F}, 1); /* s = -.5 */
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    double after = fixture_score_of(fixture, 0, 1);
+    assert_true(after < -0.5 && after >= -1.0);
+    assert_true(weights_bias(fixture->weights, 1).value < 0.0F);
+}
+
+static void an_item_without_tags_pushes_all_its_rivals_down(void **state)
+{
+    const struct fixture *fixture = *state;
+    const struct weights_feature x = fixture_word(0, 1.0F);
+    fixture_put(fixture, 0, (const uint32_t[]){0, 1}, (const float[]){0.5F, 1.5F}, 2);
+    fixture_learn(fixture, &x, 1, NULL, 0);
+    assert_true(fixture_score_of(fixture, 0, 0) < -0.5);
+    assert_true(fixture_score_of(fixture, 0, 1) < 0.5);
+}
+
+static void a_tag_at_the_floor_is_no_rival(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_put(fixture, 0, (const uint32_t[]){1}, (const float[]){0.01F}, 1); /* s = -.99 */
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    assert_near(fixture_score_of(fixture, 0, 1), -0.99, 1e-7);
+    assert_near((double)weights_bias(fixture->weights, 1).accumulator, 0.0, 0.0);
+}
+
+static void only_a_tag_that_the_item_has_creates_a_weight(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_put_bias(fixture, 1, 0.9F); /* a rival of everything, by its bias alone */
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    assert_int_equal(weights_postings(fixture->weights), 1);
+    assert_near((double)fixture_score_of(fixture, 0, 1),
+                -1.0 + (double)weights_bias(fixture->weights, 1).value, 0.0);
+    assert_true(weights_bias(fixture->weights, 1).value < 0.9F);
+}
+
+static void a_weight_that_is_there_is_not_created_again(void **state)
+{
+    const struct fixture *fixture = *state;
+    const struct weights_feature x[] = {fixture_word(0, 0.6F), fixture_word(1, 0.8F)};
+    const struct weights_given given[] = {fixture_given(0, 1.0), fixture_given(2, 1.0)};
+    fixture_learn(fixture, x, 2, given, 2);
+    fixture_learn(fixture, x, 2, given, 2);
+    assert_int_equal(weights_postings(fixture->weights), 4);
+}
+
+static void a_tag_that_the_item_does_not_touch_stays_as_it_is(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_put(fixture, 1, (const uint32_t[]){2}, (const float[]){1.5F}, 1);
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    assert_near(fixture_score_of(fixture, 1, 2), 0.5, 0.0);
+}
+
+/* --- the specificity rule -----------------------------------------------------------------------
+ */
+
+static void learn_common_word(const struct fixture *fixture, uint32_t documents, uint32_t tag_count)
+{
+    const struct weights_feature x = {.word = 0, .document_count = documents, .value = 1.0F};
+    const struct weights_given given = {.tag = 0, .tag_count = tag_count, .factor = 1.0};
+    fixture_learn(fixture, &x, 1, &given, 1);
+}
+
+static void a_word_too_common_for_the_tag_creates_no_weight(void **state)
+{
+    struct fixture *fixture = *state;
+    const struct weights_settings settings = {.surrogate = SURROGATE_SQUARED_HINGE,
+                                              .specificity = 100.0};
+    assert_int_equal(fixture_renew(fixture, &settings), 0);
+    learn_common_word(fixture, 301, 3);
+    assert_int_equal(weights_postings(fixture->weights), 0);
+    assert_true(weights_bias(fixture->weights, 0).value > 0.0F); /* the bias learns alone */
+    learn_common_word(fixture, 300, 3);
+    assert_int_equal(weights_postings(fixture->weights), 1);
+}
+
+static void a_weight_that_is_there_is_learned_however_common_the_word(void **state)
+{
+    struct fixture *fixture = *state;
+    const struct weights_settings settings = {.surrogate = SURROGATE_SQUARED_HINGE,
+                                              .specificity = 100.0};
+    assert_int_equal(fixture_renew(fixture, &settings), 0);
+    fixture_put(fixture, 0, (const uint32_t[]){0}, (const float[]){0.5F}, 1);
+    learn_common_word(fixture, 1000000, 1);
+    struct weights_bias bias = weights_bias(fixture->weights, 0);
+    assert_true(fixture_score_of(fixture, 0, 0) > -0.5 + (double)bias.value + 1e-3);
+}
+
+static void without_the_rule_every_word_may_speak(void **state)
+{
+    const struct fixture *fixture = *state;
+    learn_common_word(fixture, 4000000000U, 1);
+    assert_int_equal(weights_postings(fixture->weights), 1);
+}
+
+/* --- the other surrogates -----------------------------------------------------------------------
+ */
+
+/* Slope -1: accumulators 1, rates .5/√1.1 = .476731, D = .953463, α = min(1, 2/D) = 1. */
+static void the_first_example_by_the_hinge(void **state)
+{
+    struct fixture *fixture = *state;
+    const struct weights_settings settings = {.surrogate = SURROGATE_HINGE};
+    assert_int_equal(fixture_renew(fixture, &settings), 0);
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    assert_near((double)weights_bias(fixture->weights, 0).accumulator, 1.0, 1e-6);
+    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 0.953463, 1e-5);
+}
+
+/* m = -1: slope -1/(1 + e^-1) = -.731059, accumulators .534447, rates .5/√.634447 = .627729,
+ * D = 1.255459; z + e^(z-1) = 1.255459 + e^-1 has z = .802532. */
+static void the_first_example_by_the_logistic_loss(void **state)
+{
+    struct fixture *fixture = *state;
+    const struct weights_settings settings = {.surrogate = SURROGATE_LOGISTIC};
+    assert_int_equal(fixture_renew(fixture, &settings), 0);
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    assert_near((double)weights_bias(fixture->weights, 0).accumulator, 0.534447, 1e-5);
+    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 0.802532, 1e-5);
+}
+
+/* σ(s) = .05 at s = -2.944. */
+static void the_logistic_loss_touches_rivals_above_one_in_twenty_alone(void **state)
+{
+    struct fixture *fixture = *state;
+    const struct weights_settings settings = {.surrogate = SURROGATE_LOGISTIC};
+    assert_int_equal(fixture_renew(fixture, &settings), 0);
+    fixture_put(fixture, 0, (const uint32_t[]){1, 2}, (const float[]){-1.9F, -2.0F}, 2);
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    assert_true(fixture_score_of(fixture, 0, 1) < -2.9 - 1e-4);
+    assert_near(fixture_score_of(fixture, 0, 2), -3.0, 0.0);
+}
+
+int main(void)
+{
+#define weights_test(name) cmocka_unit_test_setup_teardown(name, fixture_set_up, fixture_tear_down)
+    const struct CMUnitTest tests[] = {
+        weights_test(the_first_example_by_hand),
+        weights_test(a_factor_lengthens_the_step_and_not_the_accumulator),
+        weights_test(no_factor_carries_a_score_beyond_one),
+        weights_test(a_pair_that_counts_for_nothing_changes_nothing),
+        weights_test(what_is_right_already_is_not_learned_again),
+        weights_test(the_same_example_again_comes_nearer_to_one),
+        weights_test(the_word_that_weighs_more_in_the_item_speaks_louder),
+        weights_test(a_rival_is_pushed_down),
+        weights_test(an_item_without_tags_pushes_all_its_rivals_down),
+        weights_test(a_tag_at_the_floor_is_no_rival),
+        weights_test(only_a_tag_that_the_item_has_creates_a_weight),
+        weights_test(a_weight_that_is_there_is_not_created_again),
+        weights_test(a_tag_that_the_item_does_not_touch_stays_as_it_is),
+        weights_test(a_word_too_common_for_the_tag_creates_no_weight),
+        weights_test(a_weight_that_is_there_is_learned_however_common_the_word),
+        weights_test(without_the_rule_every_word_may_speak),
+        weights_test(the_first_example_by_the_hinge),
+        weights_test(the_first_example_by_the_logistic_loss),
+        weights_test(the_logistic_loss_touches_rivals_above_one_in_twenty_alone),
+    };
+    return cmocka_run_group_tests_name("learning weights", tests, NULL, NULL);
+}

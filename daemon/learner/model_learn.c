@@ -138,10 +138,11 @@ static int move_counts(struct model *model, const struct model_item *item,
 /* --- evidence: what the scores before learning say about what was given -------------------------
  */
 
-/* A tag used for the first time by this very item could not have been proposed. */
-static bool was_known(const struct model *model, uint32_t tag)
+/* A tag used for the first time by this very item, with no weights from one withdrawn since, could
+ * not have been proposed. */
+static bool was_known(const struct model *model, uint32_t tag, double score)
 {
-    return model->tags[tag].count > 1;
+    return model->tags[tag].count > 1 || score > CALIBRATION_FLOOR_SCORE;
 }
 
 static void gather_evidence(struct model *model, const struct model_item *item,
@@ -161,7 +162,8 @@ static void gather_evidence(struct model *model, const struct model_item *item,
     }
     for (size_t i = 0; i < item->tag_count; i++) {
         uint32_t tag = item->tags[i];
-        if (!was_known(model, tag)) {
+        double score = (double)weights_tag_score(model->weights, scratch->weights, tag);
+        if (!was_known(model, tag, score)) {
             rest -= 1.0;
             continue;
         }
@@ -169,7 +171,6 @@ static void gather_evidence(struct model *model, const struct model_item *item,
                            ? CALIBRATION_EXAMINED
                            : calibration_share_class((double)model->tags[tag].unprompted,
                                                      (double)model->documents);
-        double score = (double)weights_tag_score(model->weights, scratch->weights, tag);
         calibration_add_given(calibration, score, share);
     }
     calibration_add_rest(calibration, fmax(rest, 0.0));

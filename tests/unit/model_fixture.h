@@ -1,0 +1,182 @@
+/*
+ * model_fixture: a learner, to be taught with the entries of entries.h and asked about them.
+ */
+#ifndef UNDERTAG_TESTS_MODEL_FIXTURE_H
+#define UNDERTAG_TESTS_MODEL_FIXTURE_H
+
+#include <stdbool.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "daemon/learner/model.h"
+#include "tests/unit/entries.h"
+#include "tests/unit/near.h"
+
+struct learner {
+    struct model *model;
+    struct model_scratch *scratch;
+};
+
+static inline struct model_item entry_item(const struct entry *entry)
+{
+    return (struct model_item){.features = entry->features,
+                               .feature_count = entry->feature_count,
+                               .tags = entry->tags,
+                               .tag_count = entry->tag_count,
+                               .prompted = entry->prompted,
+                               .prompted_count = entry->prompted_count};
+}
+
+static inline struct model_settings learner_settings(void)
+{
+    return (struct model_settings){.weights = {.surrogate = SURROGATE_SQUARED_HINGE},
+                                   .curve = propensity_curve_default(),
+                                   .correction = true,
+                                   .step = 0.5,
+                                   .evidence_half_life_items = 50000.0};
+}
+
+static inline void learner_free(struct learner *learner)
+{
+    model_free(learner->model);
+    model_scratch_free(learner->scratch);
+    *learner = (struct learner){0};
+}
+
+/* In place of whatever the learner holds. */
+static inline void learner_renew(struct learner *learner, const struct model_settings *settings)
+{
+    const struct siphash_key key = {7, 8};
+    learner_free(learner);
+    assert_int_equal(model_new(settings, &key, &learner->model), 0);
+    assert_int_equal(model_scratch_new(&learner->scratch), 0);
+}
+
+static inline int learner_set_up(void **state)
+{
+    static struct learner learner;
+    const struct model_settings settings = learner_settings();
+    learner_renew(&learner, &settings);
+    *state = &learner;
+    return 0;
+}
+
+static inline int learner_tear_down(void **state)
+{
+    learner_free(*state);
+    return 0;
+}
+
+/* Files (`replaced` NULL), revises or (`item` NULL) withdraws an entry. */
+static inline void learner_change(const struct learner *learner, const struct entry *item,
+                                  const struct entry *replaced)
+{
+    struct model_item new_item = item ? entry_item(item) : (struct model_item){0};
+    struct model_item old_item = replaced ? entry_item(replaced) : (struct model_item){0};
+    assert_int_equal(model_learn(learner->model, item ? &new_item : NULL,
+                                 replaced ? &old_item : NULL, learner->scratch),
+                     0);
+}
+
+static inline void learner_file(const struct learner *learner, const char *words,
+                                const uint32_t *tags, size_t tag_count)
+{
+    struct entry entry;
+    entry_set(&entry, words, tags, tag_count);
+    learner_change(learner, &entry, NULL);
+}
+
+/* As learner_file, but all of the tags were prompted. */
+static inline void learner_file_prompted(const struct learner *learner, const char *words,
+                                         const uint32_t *tags, size_t tag_count)
+{
+    struct entry entry;
+    entry_set(&entry, words, tags, tag_count);
+    memcpy(entry.prompted, entry.tags, sizeof entry.tags);
+    entry.prompted_count = tag_count;
+    learner_change(learner, &entry, NULL);
+}
+
+/* Of a draft: every tag with whatever chance. */
+static inline struct model_question entry_question(const struct entry *entry)
+{
+    return (struct model_question){.features = entry->features,
+                                   .feature_count = entry->feature_count,
+                                   .most = MODEL_MOST_GAPS};
+}
+
+static inline struct model_answer learner_answer(const struct learner *learner,
+                                                 const struct model_question *question)
+{
+    struct model_answer answer;
+    assert_int_equal(model_ask(learner->model, question, learner->scratch, &answer), 0);
+    return answer;
+}
+
+/* The answer about a draft of these words. */
+static inline struct model_answer learner_ask(const struct learner *learner, const char *words)
+{
+    struct entry entry;
+    entry_set(&entry, words, NO_TAGS);
+    struct model_question question = entry_question(&entry);
+    return learner_answer(learner, &question);
+}
+
+static inline const struct model_gap *find_gap(const struct model_answer *answer, uint32_t tag)
+{
+    for (size_t i = 0; i < answer->gap_count; i++) {
+        if (answer->gaps[i].tag == tag) {
+            return &answer->gaps[i];
+        }
+    }
+    return NULL;
+}
+
+/* The score of a tag for a draft of these words; the tag is known. */
+static inline double learner_score(const struct learner *learner, const char *words, uint32_t tag)
+{
+    struct model_answer answer = learner_ask(learner, words);
+    const struct model_gap *gap = find_gap(&answer, tag);
+    assert_non_null(gap);
+    return gap ? gap->score : 0.0;
+}
+
+static inline struct model_size learner_size(const struct learner *learner)
+{
+    struct model_size size;
+    model_measure(learner->model, &size);
+    return size;
+}
+
+/* --- a learner that has seen a stream ---------------------------------------------------------
+ */
+
+enum {
+    STREAM_TAGS = 40,
+    STREAM_ITEMS = 800
+};
+
+/* A learner that has seen a stream with a fifth of its tags missing. */
+static inline int stream_set_up(void **state)
+{
+    struct entry entry;
+    uint32_t truth[ENTRY_TAGS];
+    struct stream stream = {.random = {4}, .tag_count = STREAM_TAGS, .given_share = 0.8};
+    (void)learner_set_up(state);
+    for (int i = 0; i < STREAM_ITEMS; i++) {
+        (void)stream_next(&stream, &entry, truth);
+        learner_change(*state, &entry, NULL);
+    }
+    return 0;
+}
+
+/* Speaks for tags 3 and 9, less so for 20. */
+static const char DRAFT[] = "log t3q0 t3q1 t9q1 t9q2 t20q3 n5q0 n6q0";
+
+static inline struct model_question draft_question(struct entry *entry)
+{
+    entry_set(entry, DRAFT, NO_TAGS);
+    return entry_question(entry);
+}
+
+#endif

@@ -2,6 +2,7 @@
 
 #include <errno.h>
 #include <math.h>
+#include <stdatomic.h>
 #include <stdlib.h>
 
 #include "daemon/grow.h"
@@ -15,6 +16,16 @@
  */
 static const double UNSHARED_WORD_SHARE = 0.5;
 
+/*
+ * A scratch may outlive its model, and the next model may lie where that one lay: each begins its
+ * versions where no other comes to, one beyond a million million changes of the one before.
+ */
+static uint64_t first_version(void)
+{
+    static atomic_uint_fast64_t models_made;
+    return (atomic_fetch_add(&models_made, 1) + 1) << 40U;
+}
+
 int model_new(const struct model_settings *settings, const struct siphash_key *key,
               struct model **ret_model)
 {
@@ -23,6 +34,7 @@ int model_new(const struct model_settings *settings, const struct siphash_key *k
         return -ENOMEM;
     }
     made->settings = *settings;
+    made->version = first_version();
     calibration_init(&made->calibration);
     if (dictionary_new(key, &made->dictionary) < 0 ||
         weights_new(&settings->weights, &made->weights) < 0) {

@@ -46,7 +46,7 @@ static double tag_chance(const struct asker *asker, uint32_t tag, double score)
 /* What follows from the model as it is now, kept in the scratch until the model moves on. */
 static void refresh_curve(const struct model *model, struct model_scratch *scratch)
 {
-    if (scratch->model == model && scratch->version == model->version) {
+    if (scratch->version == model->version) {
         return;
     }
     calibration_fit(&model->calibration, &model->settings.curve, (double)model->documents,
@@ -58,7 +58,6 @@ static void refresh_curve(const struct model *model, struct model_scratch *scrat
         scratch->rest_missing[b] =
             to_sum(propensity_missing_chance(propensity, scratch->curve.chance[0]));
     }
-    scratch->model = model;
     scratch->version = model->version;
 }
 
@@ -245,6 +244,9 @@ static int explain(const struct asker *asker, size_t gap_count)
 {
     struct model_scratch *scratch = asker->scratch;
     uint32_t tags[MODEL_MOST_GAPS];
+    if (scratch->x_count == 0) {
+        return 0; /* no known word, no reason */
+    }
     for (size_t i = 0; i < gap_count; i++) {
         tags[i] = scratch->gaps[i].tag;
     }
@@ -301,7 +303,9 @@ int model_ask(const struct model *model, const struct model_question *question,
     if (result < 0) {
         return result;
     }
-    qsort(scratch->gaps, count, sizeof *scratch->gaps, compare_gaps);
+    if (count > 1) { /* with none there may be no array, which qsort does not allow */
+        qsort(scratch->gaps, count, sizeof *scratch->gaps, compare_gaps);
+    }
     size_t shown = count < question->most ? count : question->most;
     if (question->why && shown > 0 && explain(&asker, shown) < 0) {
         return -ENOMEM;

@@ -138,6 +138,7 @@ int model_restore_totals(struct model *model, const struct model_totals *totals)
 
 int model_restored(struct model *model)
 {
+    model->version++;
     memset(model->calibration.changed, 0, sizeof model->calibration.changed);
     return dictionary_restored(model->dictionary);
 }

@@ -34,7 +34,7 @@ struct model {
     uint64_t documents;
     uint64_t factor_count;
     double factor_sum;
-    uint64_t version; /* rises with every change */
+    uint64_t version; /* rises with every change; no two models ever have the same, none has 0 */
 
     struct marks changed_words;
     struct forgotten_word *forgotten;
@@ -68,8 +68,7 @@ struct model_scratch {
     float *parts;
     size_t parts_capacity;
 
-    /* What follows from the evidence as of `version` of `model`. */
-    const struct model *model;
+    /* What follows from the evidence as of this version of a model; 0: nothing yet. */
     uint64_t version;
     struct calibration_curve curve;
     chance_sum rest_missing[CENSUS_BINS]; /* of one tag of the bin that the item does not touch */

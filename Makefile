@@ -147,7 +147,7 @@ $(BUILD)/corpora/D.jsonl: tests/corpora/make_d.py tests/corpora/corpus.py | pack
 $(BUILD)/corpora/W.jsonl: tests/corpora/make_w.py tests/corpora/corpus.py | packages-quality
 	@$(PYTHON) -B $< $@
 
-# A corpus that cannot be made (no network) is skipped: quality.py says so and ends with 69.
+# A corpus that cannot be made (no network) is skipped: the scripts say so and end with 69.
 bench: packages-build packages-quality
 	@$(MAKE) --no-print-directory -j $(JOBS) all $(BENCH_PROGRAMS)
 	-@$(MAKE) --no-print-directory --keep-going corpora

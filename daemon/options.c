@@ -59,7 +59,7 @@ static const struct option OPTIONS[] = {
     {"drain_ms", TYPE_WHOLE, AT(drain_ms), 0, 600000, "5000", NULL, OPTIONS_SETTING, false,
      "Milliseconds that stopping waits for readers that are slow."},
     {"visible_within_ms", TYPE_WHOLE, AT(visible_within_ms), 10, 60000, "1000", NULL,
-     OPTIONS_SETTING, true,
+     OPTIONS_SETTING, false,
      "Milliseconds after an acknowledgement until answers know what it taught; a feed is slowed "
      "for it."},
     {"unknown_tags", TYPE_CHOICE, AT(open_unknown_tags), 0, 0, "open", UNKNOWN_TAGS,
@@ -74,7 +74,10 @@ static const struct option OPTIONS[] = {
     {"flush_every_ms", TYPE_WHOLE, AT(flush_every_ms), 10, 3600000, "2000", NULL, OPTIONS_SETTING,
      false, "Milliseconds after which what was learned is stored."},
     {"flush_changes", TYPE_WHOLE, AT(flush_changes), 1, 10000000, "20000", NULL, OPTIONS_SETTING,
-     false, "Changes after which what was learned is stored, however little time has passed."},
+     false,
+     "Changes after which what was learned is stored before its time; storing still takes a tenth "
+     "of "
+     "the time at most."},
     {"stemming", TYPE_SWITCH, AT(stemming), 0, 0, "off", ON_OFF, OPTIONS_LEARNING, false,
      "Count the stems of words, where Snowball knows the item's language."},
     {"language", TYPE_LANGUAGE, AT(language), 0, 0, "", NULL, OPTIONS_LEARNING, false,

@@ -15,7 +15,6 @@
 #include <sys/socket.h>
 #include <unistd.h>
 
-#include "daemon/lines.h"
 #include "client/wire.h"
 #include "tests/unit/fake_daemon.h"
 
@@ -297,70 +296,6 @@ static void a_path_that_no_socket_can_have_is_refused(void **state)
     assert_unreached("", FAILURE_SETTINGS, "has 0 bytes");
 }
 
-/* --- lines ---------------------------------------------------------------------------------- */
-
-static void put(struct lines *lines, const char *text)
-{
-    size_t length = strlen(text);
-    char *room = lines_room(lines, length);
-    assert_non_null(room);
-    memcpy(room, text, length);
-    lines_added(lines, length);
-}
-
-static void assert_line(struct lines *lines, const char *expected, size_t expected_taken)
-{
-    char *line = NULL;
-    size_t length = 0;
-    size_t taken = 0;
-    assert_int_equal(lines_next(lines, &line, &length, &taken), LINES_LINE);
-    assert_string_equal(line, expected);
-    assert_int_equal(length, strlen(expected));
-    assert_int_equal(taken, expected_taken);
-}
-
-static void lines_come_whole_whatever_their_pieces(void **state)
-{
-    (void)state;
-    struct lines lines;
-    char *line = NULL;
-    size_t length = 0;
-    size_t taken = 0;
-    lines_init(&lines, 100);
-    put(&lines, "one\r\ntw");
-    assert_line(&lines, "one", 5);
-    assert_int_equal(lines_next(&lines, &line, &length, &taken), LINES_NONE);
-    put(&lines, "o\n\nlast");
-    assert_line(&lines, "two", 4);
-    assert_line(&lines, "", 1);
-    assert_int_equal(lines_next(&lines, &line, &length, &taken), LINES_NONE);
-    assert_int_equal(lines_last(&lines, &line, &length, &taken), LINES_LINE);
-    assert_string_equal(line, "last");
-    assert_int_equal(lines_last(&lines, &line, &length, &taken), LINES_NONE);
-    lines_deinit(&lines);
-}
-
-static void a_line_over_the_limit_is_passed_over_without_being_held(void **state)
-{
-    (void)state;
-    struct lines lines;
-    char *line = NULL;
-    size_t length = 0;
-    size_t taken = 0;
-    lines_init(&lines, 10);
-    for (int i = 0; i < 10000; i++) {
-        put(&lines, "far too long ");
-        assert_int_equal(lines_next(&lines, &line, &length, &taken), LINES_NONE);
-    }
-    assert_true(lines.capacity < 1000);
-    put(&lines, "\nshort\n");
-    assert_int_equal(lines_next(&lines, &line, &length, &taken), LINES_LONG);
-    assert_line(&lines, "short", 6);
-    put(&lines, "too long again");
-    assert_int_equal(lines_last(&lines, &line, &length, &taken), LINES_LONG);
-    lines_deinit(&lines);
-}
-
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -380,8 +315,6 @@ int main(void)
         cmocka_unit_test(a_missing_socket_is_named),
         cmocka_unit_test(a_socket_that_nobody_listens_to_is_named),
         cmocka_unit_test(a_path_that_no_socket_can_have_is_refused),
-        cmocka_unit_test(lines_come_whole_whatever_their_pieces),
-        cmocka_unit_test(a_line_over_the_limit_is_passed_over_without_being_held),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -4,6 +4,10 @@
 #include <string.h>
 #include <time.h>
 
+/* What four digits can tell: 0000-01-01T00:00:00Z and the last millisecond of 9999. */
+static const int64_t FIRST_MS = -62167219200000;
+static const int64_t LAST_MS = 253402300799999;
+
 /* Reads `digits` digits. */
 static bool read_number(const char **text, int digits, int *ret_number)
 {
@@ -100,7 +104,11 @@ bool times_parse(const char *text, int64_t *ret_ms)
         return false;
     }
     int64_t seconds = (int64_t)timegm(&at) - (int64_t)offset_minutes * 60;
-    *ret_ms = seconds * 1000 + ms;
+    int64_t found = seconds * 1000 + ms;
+    if (found < FIRST_MS || found > LAST_MS) {
+        return false; /* its offset takes it out of the years that can be written */
+    }
+    *ret_ms = found;
     return true;
 }
 
@@ -113,7 +121,10 @@ void times_format(int64_t ms, char text[TIMES_BYTES])
     if (!gmtime_r(&seconds, &at)) {
         return;
     }
-    size_t used = strftime(text, TIMES_BYTES, "%Y-%m-%dT%H:%M:%S", &at);
+    /* glibc's %Y has no leading zeros. */
+    int year = snprintf(text, TIMES_BYTES, "%04d", at.tm_year + 1900);
+    size_t used = year > 0 ? (size_t)year : 0;
+    used += strftime(text + used, TIMES_BYTES - used, "-%m-%dT%H:%M:%S", &at);
     if (rest > 0) {
         (void)snprintf(text + used, TIMES_BYTES - used, ".%03dZ", (int)rest);
     } else {

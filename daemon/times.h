@@ -12,7 +12,8 @@ enum {
 };
 
 /* Reads a date-time of RFC 3339, section 5.6, into milliseconds since 1970, UTC; what is finer is
- * dropped, a leap second is the second after it. False for anything else. */
+ * dropped, a leap second is the second after it. False for anything else, and for what UTC has no
+ * year of four digits for. */
 bool times_parse(const char *text, int64_t *ret_ms);
 
 /* Writes it as "1911-03-09T18:30:00Z", with milliseconds where there are any. Years 0 to 9999. */

@@ -23,6 +23,10 @@ static int fill_fields(struct item_source *source, struct store_text fields)
     if (!source->parsed_fields) {
         return json_error_code(&error) == json_error_out_of_memory ? -ENOMEM : -EINVAL;
     }
+    struct fault fault = {0};
+    if (fields_check(source->parsed_fields, "", &fault) < 0) {
+        return -EINVAL;
+    }
     return field_list_fill(&source->fields, source->parsed_fields);
 }
 

@@ -7,6 +7,7 @@
 #include <string.h>
 #include <sys/stat.h>
 #include <sys/statvfs.h>
+#include <time.h>
 #include <unistd.h>
 
 #include "storage/kv_private.h"
@@ -140,13 +141,31 @@ static int prepare(struct kv *made, const struct kv_settings *settings, struct s
     return kv_open_environment(made, error);
 }
 
+static int make_gate(struct kv *made)
+{
+    pthread_condattr_t attributes;
+    int result = -1;
+    if (pthread_condattr_init(&attributes) != 0) {
+        return -1;
+    }
+    if (pthread_condattr_setclock(&attributes, CLOCK_MONOTONIC) == 0 &&
+        pthread_cond_init(&made->moved, &attributes) == 0) {
+        result = pthread_mutex_init(&made->gate, NULL) == 0 ? 0 : -1;
+        if (result < 0) {
+            (void)pthread_cond_destroy(&made->moved); /* nobody waits */
+        }
+    }
+    (void)pthread_condattr_destroy(&attributes); /* never fails here */
+    return result;
+}
+
 int kv_open(const struct kv_settings *settings, struct kv **ret_kv, struct store_error *error)
 {
     if (settings->table_count > KV_TABLES) {
         return store_fail(error, STORE_DENIED, "more than %d tables", KV_TABLES);
     }
     struct kv *made = calloc(1, sizeof *made);
-    if (!made || pthread_mutex_init(&made->gate, NULL) != 0) {
+    if (!made || make_gate(made) < 0) {
         free(made);
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
@@ -167,7 +186,8 @@ void kv_close(struct kv *kv)
     if (kv->env) {
         mdb_env_close(kv->env);
     }
-    (void)pthread_mutex_destroy(&kv->gate); /* fails only while it is locked */
+    (void)pthread_cond_destroy(&kv->moved); /* fail only while somebody waits or holds it */
+    (void)pthread_mutex_destroy(&kv->gate);
     free(kv->directory);
     free(kv);
 }
@@ -206,6 +226,9 @@ static int check_room(const struct kv *kv, struct store_error *error)
 static int enter(struct kv *kv, bool write, struct store_error *error)
 {
     (void)pthread_mutex_lock(&kv->gate); /* fails only for mutexes of other kinds */
+    while (kv->is_shut) {
+        (void)pthread_cond_wait(&kv->moved, &kv->gate); /* likewise; it is looked at again */
+    }
     bool open = kv->env != NULL;
     bool refused = write && atomic_load(&kv->broken);
     kv->running += open && !refused ? 1 : 0;
@@ -226,6 +249,9 @@ static void leave(struct kv *kv)
 {
     (void)pthread_mutex_lock(&kv->gate);
     kv->running--;
+    if (kv->running == 0 && kv->is_shut) {
+        (void)pthread_cond_broadcast(&kv->moved); /* never fails for an initialised one */
+    }
     (void)pthread_mutex_unlock(&kv->gate);
 }
 

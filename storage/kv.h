@@ -102,7 +102,8 @@ int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
  * a transaction. *ret_left says how many pages are left to do (at least 1 while another round is
  * due): call again, with other jobs in between, until it is 0; it stays as it was while a reader is
  * in the way. What is deleted during a round makes another one follow. Nothing was deleted since
- * the last round: *ret_left is 0 at once.
+ * the last round: *ret_left is 0 at once. As a round begins, new transactions wait for a moment (20
+ * ms at most) until those that run have ended.
  */
 int kv_scrub(struct kv *kv, size_t most_pages, size_t *ret_left, struct store_error *error)
     __attribute__((warn_unused_result));

@@ -7,6 +7,7 @@
 #include <lmdb.h>
 #include <pthread.h>
 #include <stdatomic.h>
+#include <stdbool.h>
 
 #include "storage/kv.h"
 
@@ -26,9 +27,11 @@ struct kv {
     MDB_dbi tables[KV_TABLES];
     atomic_bool broken; /* a write failed in a way that leaves the file in doubt */
     struct kv_round round;
-    pthread_mutex_t gate; /* over the two below */
+    pthread_mutex_t gate; /* over the three below */
+    pthread_cond_t moved; /* one of the two last has changed */
     MDB_env *env;         /* NULL only after it could not be opened again */
     size_t running;       /* transactions; the environment is closed only while there are none */
+    bool is_shut;         /* new transactions wait */
 };
 
 /* Translates an LMDB code or an errno, once, here. `doing` goes into the sentence. */

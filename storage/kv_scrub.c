@@ -20,17 +20,19 @@
 #include <stdint.h>
 #include <stdlib.h>
 #include <string.h>
+#include <time.h>
 #include <unistd.h>
 
 #include "storage/kv_private.h"
 
 enum {
-    FREE_TABLE = 0,      /* LMDB's own list of free pages: transaction -> count, then pages */
-    FIRST_PAGE = 2,      /* behind the two that hold the roots */
-    LEAST_PAGES = 16,    /* to a call */
-    PAGE_BRANCH = 0x01,  /* flags of a page */
-    PAGE_LEAF = 0x02,    /* likewise */
-    PAGE_OVERFLOW = 0x04 /* the first of a run that holds one large value */
+    MOST_WAIT_NS = 20000000, /* for readers, before a round begins: 20 ms */
+    FREE_TABLE = 0,          /* LMDB's own list of free pages: transaction -> count, then pages */
+    FIRST_PAGE = 2,          /* behind the two that hold the roots */
+    LEAST_PAGES = 16,        /* to a call */
+    PAGE_BRANCH = 0x01,      /* flags of a page */
+    PAGE_LEAF = 0x02,        /* likewise */
+    PAGE_OVERFLOW = 0x04     /* the first of a run that holds one large value */
 };
 
 /* How every page begins. */
@@ -279,13 +281,33 @@ static int go_on(struct kv *kv, size_t most_pages)
     return code;
 }
 
+/*
+ * Keeps new transactions out until those that run have ended, but only for a moment: a transaction
+ * that waits for another of its own thread goes on. The gate is the caller's. True when none runs.
+ */
+static bool shut(struct kv *kv)
+{
+    struct timespec until;
+    int code = clock_gettime(CLOCK_MONOTONIC, &until) == 0 ? 0 : errno;
+    until.tv_nsec += MOST_WAIT_NS;
+    if (until.tv_nsec >= 1000000000L) {
+        until.tv_nsec -= 1000000000L;
+        until.tv_sec++;
+    }
+    kv->is_shut = true;
+    while (kv->running > 0 && code == 0) {
+        code = pthread_cond_timedwait(&kv->moved, &kv->gate, &until);
+    }
+    return kv->running == 0;
+}
+
 /* Opens the environment anew and begins a round, unless a transaction is in the way. */
 static int begin_round(struct kv *kv, struct store_error *error)
 {
     int result = STORE_OK;
     size_t page_bytes = 0;
     (void)pthread_mutex_lock(&kv->gate); /* fails only for mutexes of other kinds */
-    if (kv->running == 0) {
+    if (shut(kv)) {
         mdb_env_close(kv->env);
         kv->env = NULL;
         result = kv_open_environment(kv, error);
@@ -296,6 +318,8 @@ static int begin_round(struct kv *kv, struct store_error *error)
         kv->round.next = FIRST_PAGE;
         kv->round.due = false;
     }
+    kv->is_shut = false;
+    (void)pthread_cond_broadcast(&kv->moved); /* never fails for an initialised one */
     (void)pthread_mutex_unlock(&kv->gate);
     return result;
 }

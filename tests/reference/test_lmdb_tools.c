@@ -145,7 +145,7 @@ static void the_tools_walk_a_scrubbed_store(void **state)
 {
     struct fixture *fixture = *state;
     enum {
-        COUNT = 1000
+        COUNT = 300
     };
     erase_half_of_many(fixture, COUNT);
     fixture_close(fixture);
@@ -154,7 +154,7 @@ static void the_tools_walk_a_scrubbed_store(void **state)
         skip();
     }
     assert_int_equal(entries(statistics, "ids"), COUNT);
-    /* 1,000 filings and 500 withdrawals, of which the 500 withdrawn filings are erased. */
+    /* 300 filings and 150 withdrawals; the 150 withdrawn filings are erased. */
     assert_int_equal(entries(statistics, "records"), COUNT);
     assert_int_equal(entries(statistics, "superseded"), 0);
     const char *dump = output_of("mdb_dump", "-a", fixture->home, "store");

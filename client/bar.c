@@ -29,5 +29,5 @@ void bar_draw(double share, unsigned columns, bool unicode, char *bar)
     for (; length >= steps; length -= steps) {
         end = stpcpy(end, unicode ? BLOCKS[8] : "#");
     }
-    strcpy(end, BLOCKS[length]);
+    (void)stpcpy(end, BLOCKS[length]);
 }

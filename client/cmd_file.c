@@ -324,7 +324,8 @@ static int ask_limit(struct wire *wire, size_t *ret_limit, struct failure *failu
         *failure = own;
         return code;
     }
-    *ret_limit = limit > 2 * ENVELOPE_BYTES ? (size_t)limit - ENVELOPE_BYTES : LINE_LIMIT_BYTES;
+    *ret_limit =
+        limit > (json_int_t)2 * ENVELOPE_BYTES ? (size_t)limit - ENVELOPE_BYTES : LINE_LIMIT_BYTES;
     return 0;
 }
 
@@ -367,7 +368,7 @@ static int file_paths(const struct client *client, struct wire *wire, const char
 {
     struct telling telling = {.client = client};
     struct feed_settings settings = {.window_lines = 512,
-                                     .window_bytes = 4U * 1024 * 1024,
+                                     .window_bytes = (size_t)4 * 1024 * 1024,
                                      .first_wait_ms = 250,
                                      .tries = 8,
                                      .turn_ms = 250};

@@ -77,7 +77,9 @@ static int print_section(const struct client *client, const json_t *state, const
         char label[128];
         (void)snprintf(label, sizeof label, "  %s", member); /* a long one is cut */
         for (char *c = label; *c; c++) {
-            *c = *c == '_' ? ' ' : *c;
+            if (*c == '_') {
+                *c = ' ';
+            }
         }
         if (print_member(client, label, value, unit)) {
             return -1;

@@ -122,7 +122,7 @@ int command_read_input(const struct client *client, const char *what, size_t lim
     size_t length = 0;
     size_t bad = 0;
     int code = read_all(limit_bytes, &text, &length, failure);
-    if (code) {
+    if (code || !text) {
         return code;
     }
     if (length > limit_bytes) {

@@ -36,7 +36,7 @@ static bool add_part(char *line, size_t *columns_left, const char *part)
         return false;
     }
     memset(line + length, ' ', gap);
-    strcpy(line + length + gap, part);
+    (void)stpcpy(line + length + gap, part);
     *columns_left -= columns;
     return true;
 }
@@ -55,7 +55,8 @@ void progress_format(const struct progress_view *view, size_t columns, bool unic
         int pad = BAR_COLUMNS - (int)text_width(bar);
         (void)snprintf(part, sizeof part, "%s%*s %3.0f %%", bar, pad, "",
                        floor(100 * fmin(share, 1)));
-        if (left < 2 * (BAR_COLUMNS + 6)) { /* in a narrow terminal the figures matter more */
+        if (left <
+            (size_t)2 * (BAR_COLUMNS + 6)) { /* in a narrow terminal the figures matter more */
             (void)snprintf(part, sizeof part, "%3.0f %%", floor(100 * fmin(share, 1)));
         }
         (void)add_part(line, &left, part); /* false: the next may still fit */

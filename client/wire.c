@@ -352,7 +352,8 @@ static int read_members(const struct wire *wire, struct wire_answer *answer,
     const json_t *error = json_object_get(answer->root, "error");
     answer->id = json_integer_value(id); /* 0 for null; our own begin with 1 */
     answer->result = json_object_get(answer->root, "result");
-    if (!id || (!json_is_integer(id) && !json_is_null(id)) || !error == !answer->result) {
+    bool is_one_of_both = (error != NULL) != (answer->result != NULL);
+    if (!id || (!json_is_integer(id) && !json_is_null(id)) || !is_one_of_both) {
         return fail_protocol(wire, "a line is no answer of JSON-RPC 2.0", failure);
     }
     if (answer->result) {

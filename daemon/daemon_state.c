@@ -74,15 +74,15 @@ static json_t *loop_json(const struct methods *methods)
 /* Bytes of memory that the process has in use now; 0 where the system does not tell. */
 static json_int_t resident_bytes(void)
 {
+    char line[128];
     FILE *file = fopen("/proc/self/statm", "re");
-    long long pages = 0;
     if (!file) {
         return 0;
     }
-    if (fscanf(file, "%*d %lld", &pages) != 1) {
-        pages = 0;
-    }
-    (void)fclose(file); /* it was only read */
+    char *read = fgets(line, sizeof line, file);
+    (void)fclose(file);                                   /* it was only read */
+    const char *second = read ? strchr(line, ' ') : NULL; /* the first number is address space */
+    long pages = second ? strtol(second, NULL, 10) : 0;
     return (json_int_t)pages * (json_int_t)sysconf(_SC_PAGESIZE);
 }
 

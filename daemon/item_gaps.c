@@ -1,6 +1,7 @@
 /*
  * item.gaps: the tags that a filed item, or a draft, most probably lacks.
  */
+#include <assert.h>
 #include <errno.h>
 #include <stdlib.h>
 #include <string.h>
@@ -152,6 +153,7 @@ static int prepare(struct gaps_job *job, struct model_question *question)
 static json_t *words_json(const struct model_question *question, const struct model_gap *gap)
 {
     json_t *words = json_array();
+    assert(gap->word_count == 0 || question->features); /* words are features of the question */
     for (size_t i = 0; words && i < gap->word_count; i++) {
         const struct feature *feature = &question->features[gap->words[i].feature];
         json_t *word = json_array();

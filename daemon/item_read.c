@@ -38,10 +38,14 @@ struct show_job {
     struct store_text id;
 };
 
-static int compare_strings(const void *left, const void *right)
+struct named {
+    json_t *name;
+};
+
+static int compare_names(const void *left, const void *right)
 {
-    return strcmp(json_string_value(*(json_t *const *)left),
-                  json_string_value(*(json_t *const *)right));
+    return strcmp(json_string_value(((const struct named *)left)->name),
+                  json_string_value(((const struct named *)right)->name));
 }
 
 /* The names of tags, in the order of their bytes. NULL: the job holds a fault. */
@@ -51,23 +55,23 @@ static json_t *names_json(struct read_job *job, struct store_view *view, const u
     struct store_error error = {0};
     struct vocabulary_tag tag;
     json_t *names = json_array();
-    json_t **sorted = calloc(count + 1, sizeof *sorted);
+    struct named *sorted = calloc(count + 1, sizeof *sorted);
     size_t made = 0;
     int code = names && sorted ? 0 : -1;
     while (code == 0 && made < count) {
         if (vocabulary_get(view, tags[made], &tag, &error) != STORE_OK) {
             code = read_job_fail(job, &error);
         } else {
-            sorted[made] = json_string(tag.name);
-            code = sorted[made] ? 0 : -1;
+            sorted[made].name = json_string(tag.name);
+            code = sorted[made].name ? 0 : -1;
             made += code == 0;
         }
     }
     if (made > 0) {
-        qsort(sorted, made, sizeof *sorted, compare_strings);
+        qsort(sorted, made, sizeof *sorted, compare_names);
     }
     for (size_t i = 0; i < made; i++) {
-        code |= json_array_append_new(names, sorted[i]);
+        code |= json_array_append_new(names, sorted[i].name);
     }
     free(sorted);
     if (code == 0) {

@@ -18,8 +18,8 @@ struct methods;
 int methods_new(uv_loop_t *loop, const struct options *options, struct methods **ret_methods)
     __attribute__((warn_unused_result));
 
-/* What engine_settings.changes_done is to call, with the methods; any thread. */
-void methods_wake(void *methods);
+/* What engine_settings.changes_done is to call, with the methods as its user; any thread. */
+void methods_wake(void *user);
 
 /* Serve from this engine; borrowed. Before the first request; NULL after the last. */
 void methods_use(struct methods *methods, struct engine *engine);

@@ -249,7 +249,7 @@ static bool set_language(char *member, const char *value)
         return false;
     }
     memset(member, 0, OPTIONS_LANGUAGE_BYTES);
-    memcpy(member, value, strlen(value));
+    (void)snprintf(member, OPTIONS_LANGUAGE_BYTES, "%s", value); /* it fits */
     return true;
 }
 
@@ -444,9 +444,7 @@ struct features_settings options_features_settings(const struct options *options
 struct model_settings options_model_settings(const struct options *options)
 {
     return (struct model_settings){
-        .weights = {.surrogate = options->loss,
-                    .step = options->step,
-                    .specificity = options->specificity},
+        .weights = {.surrogate = options->loss, .specificity = options->specificity},
         .curve = {.a = options->propensity_a, .b = options->propensity_b},
         .correction = options->correction,
         .even_out = options->even_out,

@@ -155,26 +155,29 @@ static enum store_code commit(struct writer *writer, struct change *group,
     return STORE_OK;
 }
 
-static void commit_or_refuse(struct writer *writer, struct change *group)
+/* Commits the group; one that could not be committed is refused as a whole. */
+static enum store_code commit_or_refuse(struct writer *writer, struct change *group)
 {
     struct store_error error = {0};
-    if (commit(writer, group, &error) == STORE_OK) {
-        return;
+    enum store_code code = commit(writer, group, &error);
+    if (code != STORE_OK) {
+        tell_trouble(writer, &error);
     }
-    tell_trouble(writer, &error);
-    if (error.code == STORE_FULL && group->next) {
-        while (group) {
-            struct change *rest = group->next;
-            group->next = NULL;
-            commit_or_refuse(writer, group);
-            group->next = rest;
-            group = rest;
-        }
-        return;
+    for (struct change *change = group; change && code != STORE_OK; change = change->next) {
+        change->code = code;
+        change->error = error;
     }
-    for (; group; group = group->next) {
-        group->code = error.code;
-        group->error = error;
+    return code;
+}
+
+static void commit_one_by_one(struct writer *writer, struct change *group)
+{
+    while (group) {
+        struct change *rest = group->next;
+        group->next = NULL;
+        (void)commit_or_refuse(writer, group); /* its outcome is in the change */
+        group->next = rest;
+        group = rest;
     }
 }
 
@@ -219,7 +222,9 @@ static void commit_next_group(struct writer *writer)
     for (struct change *change = group; change; change = change->next) {
         change->has_too_many_words = has_too_many_words(writer, change);
     }
-    commit_or_refuse(writer, group);
+    if (commit_or_refuse(writer, group) == STORE_FULL) {
+        commit_one_by_one(writer, group);
+    }
     hand_back(writer, group);
 }
 

@@ -33,7 +33,7 @@ uint64_t postings_bytes(const struct postings *postings)
 static struct postings lay_out(void *block, uint32_t count, uint32_t capacity)
 {
     struct postings laid = {.count = count, .capacity = capacity, .tags = block};
-    laid.values = (float *)(laid.tags + capacity);
+    laid.values = (void *)(laid.tags + capacity);
     laid.accumulators = laid.values + capacity;
     laid.changed = (uint8_t *)(laid.accumulators + capacity);
     return laid;

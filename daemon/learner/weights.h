@@ -24,7 +24,6 @@
 
 struct weights_settings {
     enum surrogate surrogate;
-    double step; /* η above 0; an item whose vocabulary is large may use another, see _learn */
     /* A word creates a weight for a tag only while its document count is at most this many times
      * the tag's count; 0 for no such rule. */
     double specificity;

@@ -30,23 +30,25 @@ void weights_scratch_free(struct weights_scratch *scratch)
     free(scratch);
 }
 
+/* Grows one of several arrays that share their capacity. */
+static int grow_from(void *array, size_t capacity, size_t wanted, size_t size)
+{
+    return grow_array(array, &capacity, wanted, size);
+}
+
 int scratch_reserve_tags(struct weights_scratch *scratch, size_t count)
 {
     if (count <= scratch->tag_capacity) {
         return 0;
     }
-    size_t sums = scratch->tag_capacity;
-    size_t is_touched = scratch->tag_capacity;
-    size_t touched = scratch->tag_capacity ? scratch->tag_capacity + 1 : 0;
-    size_t is_given = scratch->tag_capacity;
-    size_t slot = scratch->tag_capacity;
+    size_t now = scratch->tag_capacity;
     size_t wanted = count + count / 2;
     /* tag_capacity is raised last: what had grown before a failure is only larger than needed. */
-    if (GROW(&scratch->sums, &sums, wanted) < 0 ||
-        GROW(&scratch->is_touched, &is_touched, wanted) < 0 ||
-        GROW(&scratch->touched, &touched, wanted + 1) < 0 ||
-        GROW(&scratch->is_given, &is_given, wanted) < 0 ||
-        GROW(&scratch->slot, &slot, wanted) < 0) {
+    if (grow_from(&scratch->sums, now, wanted, sizeof *scratch->sums) < 0 ||
+        grow_from(&scratch->is_touched, now, wanted, sizeof *scratch->is_touched) < 0 ||
+        grow_from(&scratch->touched, now ? now + 1 : 0, wanted + 1, sizeof *scratch->touched) < 0 ||
+        grow_from(&scratch->is_given, now, wanted, sizeof *scratch->is_given) < 0 ||
+        grow_from(&scratch->slot, now, wanted, sizeof *scratch->slot) < 0) {
         return -ENOMEM;
     }
     scratch->tag_capacity = wanted;

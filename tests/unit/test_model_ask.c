@@ -196,7 +196,7 @@ static void a_filed_item_s_chances_are_those_of_a_missing_tag(void **state)
     struct entry entry;
     struct model_question question;
     double q[2];
-    learner_renew(*state, &(struct model_settings){.weights = {.step = 0.5},
+    learner_renew(*state, &(struct model_settings){.step = 0.5,
                                                    .curve = curve,
                                                    .correction = true,
                                                    .evidence_half_life_items = 1e6});

@@ -35,8 +35,7 @@ static inline int fixture_renew(struct fixture *fixture, const struct weights_se
 static inline int fixture_set_up(void **state)
 {
     static struct fixture fixture;
-    const struct weights_settings settings = {.surrogate = SURROGATE_SQUARED_HINGE,
-                                              .step = FIXTURE_STEP};
+    const struct weights_settings settings = {.surrogate = SURROGATE_SQUARED_HINGE};
     *state = &fixture;
     return fixture_renew(&fixture, &settings);
 }

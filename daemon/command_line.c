@@ -60,6 +60,14 @@ static bool set_path(char path[COMMAND_LINE_PATH_BYTES], const char *start, cons
     return written > 0 && written < COMMAND_LINE_PATH_BYTES;
 }
 
+/* getopt is still within a word of several letters, so argv would name the word before it. */
+static int fail_unknown(char *error, char **argv)
+{
+    const char letter[] = {'-', (char)optopt, '\0'};
+    bool is_letter = optopt > ' ' && optopt < 0x7F; /* 0 or one of ours for a long option */
+    return fail(error, is_letter ? letter : argv[optind - 1], "is no option");
+}
+
 static int take_option(struct command_line *line, int option, char **argv, char *error)
 {
     switch (option) {
@@ -85,7 +93,7 @@ static int take_option(struct command_line *line, int option, char **argv, char 
     case ':':
         return fail(error, argv[optind - 1], "takes a value");
     default:
-        return fail(error, argv[optind - 1], "is no option");
+        return fail_unknown(error, argv);
     }
 }
 

@@ -7,6 +7,7 @@
 
 #include <cmocka.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
 enum {
@@ -75,4 +76,33 @@ void logbook_text(unsigned number, size_t words, char *text, size_t size)
         assert_in_range(length, 1, size - used - 1);
         used += (size_t)length;
     }
+}
+
+static unsigned request(struct peer *peer, unsigned number, size_t words, char *text, size_t size)
+{
+    char tags[LOGBOOK_TAGS_BYTES];
+    logbook_tags(number, tags);
+    logbook_text(number, words, text, size);
+    return peer_request(peer, "item.file", "{'id': 'entry %u', 'text': '%s', 'tags': %s}", number,
+                        text, tags);
+}
+
+void logbook_file(struct peer *peer, unsigned first, unsigned count, size_t words)
+{
+    enum {
+        WINDOW = 64 /* requests under way */
+    };
+    size_t size = 12 * words + 1;
+    char *text = malloc(size);
+    unsigned ids[WINDOW];
+    assert_non_null(text);
+    for (unsigned i = 0; i < count + WINDOW; i++) {
+        if (i >= WINDOW && i - WINDOW < count) {
+            (void)peer_result(peer, ids[i % WINDOW]);
+        }
+        if (i < count) {
+            ids[i % WINDOW] = request(peer, first + i, words, text, size);
+        }
+    }
+    free(text);
 }

@@ -7,6 +7,8 @@
 
 #include <stddef.h>
 
+#include "tests/integration/peer.h"
+
 enum {
     LOGBOOK_TAGS_BYTES = 64
 };
@@ -16,5 +18,8 @@ void logbook_tags(unsigned number, char tags[LOGBOOK_TAGS_BYTES]);
 
 /* Writes a text of that many words; `size` has room for 12 bytes a word. */
 void logbook_text(unsigned number, size_t words, char *text, size_t size);
+
+/* Files the entries from `first` on, with texts of `words` words and ids "entry N". */
+void logbook_file(struct peer *peer, unsigned first, unsigned count, size_t words);
 
 #endif

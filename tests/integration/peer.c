@@ -304,15 +304,32 @@ __attribute__((format(printf, 1, 2))) static json_t *parse(const char *format, .
     return json;
 }
 
+static void assert_equal(const json_t *json, const json_t *wanted)
+{
+    if (!json_equal(json, wanted)) {
+        char *text = json_dumps(json, JSON_COMPACT | JSON_ENCODE_ANY);
+        char *wanted_text = json_dumps(wanted, JSON_COMPACT | JSON_ENCODE_ANY);
+        fail_msg("%s is not %s", text ? text : "nothing", wanted_text);
+    }
+}
+
 void assert_json(const json_t *json, const char *expected)
 {
     json_t *wanted = parse("%s", expected);
-    bool is_equal = json_equal(json, wanted);
+    assert_equal(json, wanted);
     json_decref(wanted);
-    if (!is_equal) {
-        char *text = json_dumps(json, JSON_COMPACT | JSON_ENCODE_ANY);
-        fail_msg("%s is not %s", text, expected);
+}
+
+void assert_members(const json_t *object, const char *expected)
+{
+    json_t *wanted = parse("%s", expected);
+    const char *member = NULL;
+    const json_t *value = NULL;
+    json_object_foreach(wanted, member, value)
+    {
+        assert_equal(json_object_get(object, member), value);
     }
+    json_decref(wanted);
 }
 
 void assert_error(const json_t *error, int code, const char *field)

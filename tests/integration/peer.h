@@ -87,6 +87,9 @@ const char *text_of(struct peer *peer, const json_t *json);
 /* Equal as JSON to what `expected` (with ' for ") says. */
 void assert_json(const json_t *json, const char *expected);
 
+/* Each member of `expected` is there and equal: what has been added since does not matter. */
+void assert_members(const json_t *object, const char *expected);
+
 /* An error of this code, to blame on this member ("" for none), with a sentence. */
 void assert_error(const json_t *error, int code, const char *field);
 

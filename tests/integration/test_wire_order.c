@@ -151,6 +151,25 @@ static void file_large_item(struct peer *peer)
     free(text);
 }
 
+/* Many requests for the large item in one piece: single ones would each take up a socket's room
+ * that is far larger than themselves. Ids from 1. */
+static void ask_for_large_item(struct peer *peer, unsigned times)
+{
+    char *lines = NULL;
+    size_t size = 0;
+    FILE *stream = open_memstream(&lines, &size);
+    assert_non_null(stream);
+    for (unsigned i = 1; i <= times; i++) {
+        assert_true(fprintf(stream,
+                            "{\"jsonrpc\":\"2.0\",\"id\":%u,\"method\":\"item.show\","
+                            "\"params\":{\"id\":\"large\"}}\n",
+                            i) > 0);
+    }
+    assert_int_equal(fclose(stream), 0);
+    peer_send(peer, lines, size);
+    free(lines);
+}
+
 static void a_slow_reader_loses_nothing_and_holds_nobody_up(void **state)
 {
     struct service *service = *state;
@@ -160,9 +179,7 @@ static void a_slow_reader_loses_nothing_and_holds_nobody_up(void **state)
     struct peer slow;
     file_large_item(&service->peer);
     peer_open(&slow, service->daemon.socket);
-    for (unsigned i = 0; i < REQUESTS; i++) {
-        (void)peer_request(&slow, "item.show", "{'id': 'large'}");
-    }
+    ask_for_large_item(&slow, REQUESTS);
     for (unsigned i = 0; i < 100; i++) { /* the others are served meanwhile */
         (void)ask(&service->peer, "item.file", "{'id': 'entry %u', 'tags': []}", i);
     }

@@ -9,7 +9,8 @@
 
 static int no_memory(struct store_error *error)
 {
-    return store_fail(error, STORE_NO_MEMORY, "out of memory");
+    (void)store_fail(error, STORE_NO_MEMORY, "out of memory");
+    return STORE_NO_MEMORY;
 }
 
 static int put_id(struct store_view *view, struct store_text id, struct id_entry entry,

@@ -157,7 +157,7 @@ int items_changed(struct store_view *view, uint64_t since, size_t most,
     size_t given = 0;
     while (given < most && last < UINT64_MAX) {
         uint64_t seq = 0;
-        struct item_record record;
+        struct item_record record = {0};
         struct id_entry entry;
         int result = records_next(view, last + 1, &seq, error);
         if (result == STORE_NOT_FOUND) {

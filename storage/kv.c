@@ -67,7 +67,9 @@ int kv_translate(const struct kv *kv, int code, const char *doing, struct store_
 
 static MDB_val to_val(struct kv_bytes bytes)
 {
-    return (MDB_val){.mv_size = bytes.size, .mv_data = (void *)(uintptr_t)bytes.data};
+    MDB_val val = {.mv_size = bytes.size};
+    memcpy(&val.mv_data, &bytes.data, sizeof val.mv_data); /* it takes no const, but only reads */
+    return val;
 }
 
 static struct kv_bytes from_val(MDB_val value)

@@ -60,7 +60,9 @@ static const char *long_text(size_t lead, const char *character)
 {
     static char text[2000];
     memset(text, 'x', sizeof text - 1);
-    memcpy(text + lead, character, strlen(character));
+    for (size_t i = 0; character[i] != '\0'; i++) {
+        text[lead + i] = character[i];
+    }
     return text;
 }
 

@@ -23,32 +23,32 @@ static int sync_fault;
 static int page_fault; /* of writing whole pages */
 static int root_fault; /* of writing the few bytes that name the new state */
 
-int fdatasync(int file)
+int fdatasync(int fildes)
 {
     if (sync_fault) {
         errno = sync_fault;
         return -1;
     }
-    return (int)syscall(SYS_fdatasync, file);
+    return (int)syscall(SYS_fdatasync, fildes);
 }
 
-ssize_t pwrite(int file, const void *bytes, size_t size, off_t at)
+ssize_t pwrite(int fd, const void *buf, size_t n, off_t offset)
 {
-    int fault = size < 4096 ? root_fault : page_fault;
+    int fault = n < 4096 ? root_fault : page_fault;
     if (fault) {
         errno = fault;
         return -1;
     }
-    return syscall(SYS_pwrite64, file, bytes, size, at);
+    return syscall(SYS_pwrite64, fd, buf, n, offset);
 }
 
-ssize_t writev(int file, const struct iovec *parts, int count)
+ssize_t writev(int fd, const struct iovec *iovec, int count)
 {
     if (page_fault) {
         errno = page_fault;
         return -1;
     }
-    return syscall(SYS_writev, file, parts, count);
+    return syscall(SYS_writev, fd, iovec, count);
 }
 
 /* --- fixture --- */
@@ -378,14 +378,14 @@ static void the_size_of_the_file_is_told(void **state)
     assert_true(before > 0);
     static const unsigned char zeros[KV_VALUE_BYTES];
     struct kv_txn *txn = begin(tables, true);
-    for (char letter = 'a'; letter <= 'z'; letter++) {
-        assert_int_equal(kv_put(txn, LAMPS, kv_bytes_of(&letter, 1),
-                                kv_bytes_of(zeros, sizeof zeros), &tables->error),
+    for (uint8_t key = 0; key < 26; key++) {
+        assert_int_equal(kv_put(txn, LAMPS, kv_bytes_of(&key, 1), kv_bytes_of(zeros, sizeof zeros),
+                                &tables->error),
                          STORE_OK);
     }
     commit(tables, txn);
     /* 26 values of 2,000 bytes, two to a page of 4,096: 13 pages at least. */
-    assert_true(kv_file_bytes(tables->kv) >= before + 13 * 4096);
+    assert_true(kv_file_bytes(tables->kv) >= before + 13 * UINT64_C(4096));
 }
 
 /* --- a disk that fails --- */

@@ -52,13 +52,13 @@ static const char *written(struct caught *caught)
 }
 
 /* systemd.exec(5): JOURNAL_STREAM is the device and inode number of the journal's stream. */
-static void name_journal(ino_t offset)
+static void name_journal(unsigned long long offset)
 {
     struct stat status;
     char stream[64];
     assert_int_equal(fstat(STDERR_FILENO, &status), 0);
     (void)snprintf(stream, sizeof stream, "%llu:%llu", (unsigned long long)status.st_dev,
-                   (unsigned long long)(status.st_ino + offset));
+                   (unsigned long long)status.st_ino + offset);
     assert_int_equal(setenv("JOURNAL_STREAM", stream, 1), 0);
 }
 

@@ -150,9 +150,7 @@ static void a_comment_may_be_as_long_as_it_likes(void **state)
 static void a_line_that_is_too_long_is_not_read_by_half(void **state)
 {
     char text[2000];
-    memset(text, ' ', sizeof text);
-    memcpy(text, "tags_limit = 5", 14);
-    (void)snprintf(text + 1000, sizeof text - 1000, "0\n");
+    (void)snprintf(text, sizeof text, "tags_limit = 5%1000s0\n", "");
     assert_wrong(*state, text, "line 1: the line is too long");
 }
 

@@ -19,7 +19,8 @@ struct peer {
     size_t end;
     size_t capacity;
     unsigned last_id;
-    json_t *kept; /* what was returned */
+    bool may_be_cut; /* the daemon may be killed in the middle of a line */
+    json_t *kept;    /* what was returned */
 };
 
 void peer_open(struct peer *peer, const char *socket_path);
@@ -80,6 +81,9 @@ void wait_until_learned(struct peer *peer);
 json_int_t whole(const json_t *object, const char *member);
 double number(const json_t *object, const char *member);
 const char *string(const json_t *object, const char *member);
+
+/* A copy of a text, kept like the rest. */
+const char *keep_text(struct peer *peer, const char *text);
 
 /* The text of JSON in its shortest form, kept like the rest. */
 const char *text_of(struct peer *peer, const json_t *json);

@@ -51,10 +51,7 @@ static const char *names_of(struct peer *peer, const json_t *page)
         assert_in_range(length, 1, sizeof names - used - 1);
         used += (size_t)length;
     }
-    json_t *text = json_string(names);
-    const char *kept = text_of(peer, text); /* with the quotes of JSON */
-    json_decref(text);
-    return kept;
+    return keep_text(peer, names);
 }
 
 /* --- tag.show -------------------------------------------------------------------------------- */
@@ -124,13 +121,13 @@ static void tags_are_listed_by_name(void **state)
 {
     struct peer *peer = &((struct service *)*state)->peer;
     const json_t *page = ask(peer, "tag.list", "{}");
-    assert_string_equal(names_of(peer, page), "\"anchor bell fog lamp \"");
+    assert_string_equal(names_of(peer, page), "anchor bell fog lamp ");
     assert_null(json_object_get(page, "next"));
     assert_members(json_array_get(json_object_get(page, "tags"), 2),
                    "{'tag': 'fog', 'count': 5, 'state': 'open'}");
     assert_true(number(json_array_get(json_object_get(page, "tags"), 2), "missing") > 0.0);
     assert_string_equal(names_of(peer, ask(peer, "tag.list", "{'order': 'name'}")),
-                        "\"anchor bell fog lamp \"");
+                        "anchor bell fog lamp ");
 }
 
 /* Equal counts keep the order in which the tags were opened: bell before anchor. */
@@ -138,7 +135,7 @@ static void tags_are_listed_by_count(void **state)
 {
     struct peer *peer = &((struct service *)*state)->peer;
     assert_string_equal(names_of(peer, ask(peer, "tag.list", "{'order': 'count'}")),
-                        "\"fog bell anchor lamp \"");
+                        "fog bell anchor lamp ");
 }
 
 /* N (1/p - 1) = N (2.5 / (N + 1.5))^.55: fog 5 x .591 = 2.96, bell 3 x .724 = 2.17, lamp 1, anchor
@@ -147,7 +144,7 @@ static void tags_are_listed_by_what_is_missing(void **state)
 {
     struct peer *peer = &((struct service *)*state)->peer;
     assert_string_equal(names_of(peer, ask(peer, "tag.list", "{'order': 'missing'}")),
-                        "\"fog bell lamp anchor \"");
+                        "fog bell lamp anchor ");
 }
 
 static void each_order_goes_on_where_its_page_ended(void **state)
@@ -181,8 +178,8 @@ static void a_page_of_just_all_has_no_next(void **state)
 static void by_name_a_page_may_begin_behind_a_name_that_is_no_tag(void **state)
 {
     struct peer *peer = &((struct service *)*state)->peer;
-    assert_string_equal(names_of(peer, ask(peer, "tag.list", "{'after': 'c'}")), "\"fog lamp \"");
-    assert_string_equal(names_of(peer, ask(peer, "tag.list", "{'after': 'zebra'}")), "\"\"");
+    assert_string_equal(names_of(peer, ask(peer, "tag.list", "{'after': 'c'}")), "fog lamp ");
+    assert_string_equal(names_of(peer, ask(peer, "tag.list", "{'after': 'zebra'}")), "");
 }
 
 /* Where a tag stands by its number cannot be told of one that is not there. */

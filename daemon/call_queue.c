@@ -8,9 +8,14 @@
 #include "daemon/grow.h"
 
 enum {
-    RUNNING_MOST = 1024,          /* calls of one connection under way at a time */
     LINE_BYTES_MOST = 1024 * 1024 /* lines behind this wait in the connection's buffer */
 };
+
+/*
+ * Calls of one connection under way at a time, by kind. Changes are committed together, so many are
+ * good; reads queue for a few threads, where a crowd of one connection would keep others waiting.
+ */
+static const size_t RUNNING_MOST[] = {[METHOD_READ] = 32, [METHOD_CHANGE] = 1024};
 
 /* --- adding -------------------------------------------------------------------------------------
  */
@@ -139,15 +144,15 @@ void call_queue_add_line(struct call_queue *queue, const char *line, size_t leng
 
 void call_queue_start(struct call_queue *queue, size_t answer_bytes_limit)
 {
-    while (queue->to_start && queue->running < RUNNING_MOST &&
-           queue->answer_bytes < answer_bytes_limit && !queue->broken) {
+    while (queue->to_start && queue->answer_bytes < answer_bytes_limit && !queue->broken) {
         struct call *call = queue->to_start;
         if (call->state != CALL_WAITING) {
             queue->to_start = call->next;
             continue;
         }
         enum method_kind kind = call->request.method->kind;
-        if (queue->running > 0 && queue->running_kind != kind) {
+        if (queue->running >= RUNNING_MOST[kind] ||
+            (queue->running > 0 && queue->running_kind != kind)) {
             return;
         }
         queue->to_start = call->next;

@@ -97,6 +97,7 @@ void methods_wake(void *user)
 void methods_use(struct methods *methods, struct engine *engine)
 {
     methods->engine = engine;
+    on_sample(&methods->sampling); /* rates count from here */
 }
 
 void methods_watch(struct methods *methods, const struct server *server)

@@ -114,20 +114,30 @@ static void the_answer_limit_stops_starting(void **state)
     assert_out(fixture, "c\n");
 }
 
-static void at_most_1024_calls_run_at_a_time(void **state)
+/* Asks for one call more than may run, and sees it start when another has ended. */
+static void assert_at_most(struct fixture *fixture, const char *method, int most)
 {
-    struct fixture *fixture = *state;
-    for (int i = 0; i < 1025; i++) {
-        ask(fixture, "read", 'a');
+    for (int i = 0; i < most + 1; i++) {
+        ask(fixture, method, 'a');
     }
     start(fixture);
-    assert_int_equal(fixture->start_count, 1024);
+    assert_int_equal(fixture->start_count, most);
     call_answer_take(fixture->queue.first, json_true());
     start(fixture);
-    assert_int_equal(fixture->start_count, 1025);
+    assert_int_equal(fixture->start_count, most + 1);
     for (struct call *call = fixture->queue.first->next; call; call = call->next) {
         call_answer_take(call, json_true());
     }
+}
+
+static void at_most_1024_changes_run_at_a_time(void **state)
+{
+    assert_at_most(*state, "change", 1024);
+}
+
+static void at_most_32_reads_run_at_a_time(void **state)
+{
+    assert_at_most(*state, "read", 32);
 }
 
 #define TEST(name) cmocka_unit_test_setup_teardown(name, calls_set_up, calls_tear_down)
@@ -140,7 +150,8 @@ int main(void)
         TEST(there_is_room_until_a_mebibyte_of_lines_waits),
         TEST(a_batch_leaves_its_room_with_its_last_call),
         TEST(the_answer_limit_stops_starting),
-        TEST(at_most_1024_calls_run_at_a_time),
+        TEST(at_most_1024_changes_run_at_a_time),
+        TEST(at_most_32_reads_run_at_a_time),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -140,7 +140,8 @@ static void refuse_long_line(struct connection *connection, size_t bytes)
     call_queue_add_fault(&connection->calls, &fault, bytes);
 }
 
-static void take_lines(struct connection *connection)
+/* Returns whether it stopped for want of room, with lines left perhaps. */
+static bool take_lines(struct connection *connection)
 {
     char *line = NULL;
     size_t length = 0;
@@ -148,7 +149,7 @@ static void take_lines(struct connection *connection)
     while (call_queue_has_room(&connection->calls) && !connection->calls.broken) {
         enum lines_found found = lines_next(&connection->lines, &line, &length, &taken);
         if (found == LINES_NONE) {
-            return;
+            return false;
         }
         if (found == LINES_LONG) {
             refuse_long_line(connection, 1);
@@ -156,6 +157,7 @@ static void take_lines(struct connection *connection)
             call_queue_add_line(&connection->calls, line, length);
         }
     }
+    return true;
 }
 
 static void on_alloc(uv_handle_t *handle, size_t suggested, uv_buf_t *buffer)
@@ -223,7 +225,7 @@ static void pump_once(struct connection *connection)
 {
     size_t limit = connection->settings.unread_limit_bytes;
     size_t unread = connection->filling.size + connection->writing.size;
-    take_lines(connection);
+    bool has_left_lines = take_lines(connection);
     call_queue_start(&connection->calls, limit > unread ? limit - unread : 0);
     if (connection->calls.broken ||
         call_queue_collect(&connection->calls, &connection->filling) < 0) {
@@ -231,6 +233,10 @@ static void pump_once(struct connection *connection)
         return;
     }
     write_more(connection);
+    /* Notifications that were refused make room and nothing that would bring us back. */
+    if (has_left_lines && call_queue_has_room(&connection->calls)) {
+        connection->pump_again = true;
+    }
 }
 
 /* Calls may end, and writes complete, while calls are started: that only asks for another round. */

@@ -3,7 +3,8 @@
 #include <errno.h>
 #include <pthread.h>
 #include <stdlib.h>
-#include <time.h>
+
+#include "daemon/clock.h"
 
 enum {
     MARKS = 256,
@@ -41,20 +42,6 @@ struct backlog {
     bool stopping;
 };
 
-static int init_condition(pthread_cond_t *condition)
-{
-    pthread_condattr_t attributes;
-    if (pthread_condattr_init(&attributes) != 0) {
-        return -ENOMEM;
-    }
-    int code = pthread_condattr_setclock(&attributes, CLOCK_MONOTONIC);
-    if (code == 0) {
-        code = pthread_cond_init(condition, &attributes);
-    }
-    (void)pthread_condattr_destroy(&attributes); /* no failure for an initialised one */
-    return -code;
-}
-
 int backlog_new(const struct backlog_start *start, struct backlog **ret_backlog)
 {
     struct backlog *backlog = calloc(1, sizeof *backlog);
@@ -70,11 +57,11 @@ int backlog_new(const struct backlog_start *start, struct backlog **ret_backlog)
     if (code < 0) {
         goto fail_mutex;
     }
-    code = init_condition(&backlog->committed_more);
+    code = clock_init_condition(&backlog->committed_more);
     if (code < 0) {
         goto fail_committed;
     }
-    code = init_condition(&backlog->learned_more);
+    code = clock_init_condition(&backlog->learned_more);
     if (code < 0) {
         goto fail_learned;
     }
@@ -173,22 +160,9 @@ void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uin
 /* --- trainer ------------------------------------------------------------------------------------
  */
 
-static struct timespec deadline_of(uint64_t timeout_ms)
-{
-    struct timespec deadline = {0};
-    (void)clock_gettime(CLOCK_MONOTONIC, &deadline); /* always there on Linux */
-    deadline.tv_sec += (time_t)(timeout_ms / 1000);
-    deadline.tv_nsec += (long)(timeout_ms % 1000) * 1000000L;
-    if (deadline.tv_nsec >= 1000000000L) {
-        deadline.tv_nsec -= 1000000000L;
-        deadline.tv_sec++;
-    }
-    return deadline;
-}
-
 uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64_t timeout_ms)
 {
-    struct timespec deadline = deadline_of(timeout_ms);
+    struct timespec deadline = clock_deadline(timeout_ms);
     lock(backlog);
     int code = 0;
     while (backlog->numbers.committed <= learned && !backlog->stopping && code == 0) {

@@ -21,6 +21,7 @@
 enum {
     CHANGES_A_VIEW = 64,
     IDLE_MS = 1000,
+    HELD_BACK_MS = 50,
     FLUSH_SHARE = 10,      /* storing takes a tenth of the time at most */
     SCRUB_PAGES = 1024,    /* overwritten at a time */
     ROUND_LIMIT_US = 20000 /* a view that has been open this long is given up */
@@ -46,6 +47,8 @@ struct trainer {
     uint64_t stored_at_us; /* when it was stored, or tried, last */
     uint64_t storing_us;   /* how long that took */
     bool scrub_due;
+    bool scrub_is_held;
+    size_t scrub_left; /* pages, when it was last looked at */
     bool failed;
 };
 
@@ -189,6 +192,9 @@ static void scrub(struct trainer *trainer)
         troubles_begin(trainer->settings.troubles, TROUBLE_ERASING,
                        "forgotten words may still be in the model's file (%s)", error.text);
     }
+    /* What does not get less is held by a reader, who will be gone soon. */
+    trainer->scrub_is_held = left > 0 && left >= trainer->scrub_left && trainer->scrub_left > 0;
+    trainer->scrub_left = left;
     trainer->scrub_due = left > 0;
 }
 
@@ -208,7 +214,7 @@ static void fail(struct trainer *trainer, const struct store_error *error)
 static uint64_t idle_ms(const struct trainer *trainer)
 {
     if (trainer->learned == trainer->kept) {
-        return trainer->scrub_due ? 0 : IDLE_MS;
+        return !trainer->scrub_due ? IDLE_MS : trainer->scrub_is_held ? HELD_BACK_MS : 0;
     }
     uint64_t most_ms = trainer->settings.flush_every_ms;
     return most_ms < IDLE_MS ? most_ms : IDLE_MS;

@@ -19,8 +19,11 @@
 enum {
     GROUP_CHANGES = 256,
     ERASED_A_COMMIT = 256,
-    SCRUB_PAGES = 1024
+    SCRUB_PAGES = 1024,
+    HELD_BACK_MS = 50
 };
+
+#define WAIT_FOR_EVER UINT64_MAX
 
 struct change_list {
     struct change *first;
@@ -34,6 +37,7 @@ struct writer {
     struct codec_writer record;
     uint64_t erased; /* what the model's seq was when there was nothing left to erase */
     bool scrub_due;
+    size_t scrub_left; /* pages, when it was last looked at */
 
     pthread_mutex_t mutex;
     pthread_cond_t wake;
@@ -261,37 +265,50 @@ static bool erase_some(struct writer *writer, uint64_t kept)
     return code == STORE_OK && erased == ERASED_A_COMMIT;
 }
 
-/* A stretch of work that has time; says whether there is more. */
-static bool keep_up(struct writer *writer)
+/* Overwrites some of what was erased; says how long to wait before going on. */
+static uint64_t scrub_some(struct writer *writer)
+{
+    struct store_error error = {0};
+    size_t before = writer->scrub_left;
+    writer->scrub_left = 0;
+    if (store_scrub(writer->settings.store, SCRUB_PAGES, &writer->scrub_left, &error) != STORE_OK) {
+        tell_erasing(writer, &error);
+    }
+    writer->scrub_due = writer->scrub_left > 0;
+    if (!writer->scrub_due) {
+        return WAIT_FOR_EVER;
+    }
+    /* What does not get less is held by a reader, who will be gone soon. */
+    return writer->scrub_left >= before && before > 0 ? HELD_BACK_MS : 0;
+}
+
+/* A stretch of work that has time; says how long to wait before the next, WAIT_FOR_EVER: none. */
+static uint64_t keep_up(struct writer *writer)
 {
     uint64_t kept = backlog_read(writer->settings.backlog).kept;
     if (kept != writer->erased) {
         if (!erase_some(writer, kept)) {
             writer->erased = kept;
         }
-        return true;
+        return 0;
     }
-    if (writer->scrub_due) {
-        struct store_error error = {0};
-        size_t left = 0;
-        if (store_scrub(writer->settings.store, SCRUB_PAGES, &left, &error) != STORE_OK) {
-            tell_erasing(writer, &error);
-        }
-        writer->scrub_due = left > 0;
-        return left > 0;
-    }
-    return false;
+    return writer->scrub_due ? scrub_some(writer) : WAIT_FOR_EVER;
 }
 
 /* --- the thread ---------------------------------------------------------------------------------
  */
 
-/* Waits for something to do. False when there is nothing left and the writer is to stop. */
-static bool wait_for_changes(struct writer *writer, bool has_upkeep, bool *ret_queued)
+/* Waits for something to do, `most_ms` at most. False when there is nothing left and the writer is
+ * to stop. */
+static bool wait_for_changes(struct writer *writer, uint64_t most_ms, bool *ret_queued)
 {
+    struct timespec deadline = clock_deadline(most_ms == WAIT_FOR_EVER ? 0 : most_ms);
+    int code = 0;
     lock(writer);
-    while (!writer->queued.first && !writer->woken && !writer->stopping && !has_upkeep) {
-        (void)pthread_cond_wait(&writer->wake, &writer->mutex);
+    while (!writer->queued.first && !writer->woken && !writer->stopping && code == 0) {
+        code = most_ms == WAIT_FOR_EVER
+                   ? pthread_cond_wait(&writer->wake, &writer->mutex)
+                   : pthread_cond_timedwait(&writer->wake, &writer->mutex, &deadline);
     }
     writer->woken = false;
     *ret_queued = writer->queued.first != NULL;
@@ -303,14 +320,14 @@ static bool wait_for_changes(struct writer *writer, bool has_upkeep, bool *ret_q
 static void *run(void *argument)
 {
     struct writer *writer = argument;
-    bool has_upkeep = true;
+    uint64_t wait_ms = 0;
     bool is_queued = false;
-    while (wait_for_changes(writer, has_upkeep, &is_queued)) {
+    while (wait_for_changes(writer, wait_ms, &is_queued)) {
         if (is_queued) {
             commit_next_group(writer);
-            has_upkeep = true;
+            wait_ms = 0;
         } else {
-            has_upkeep = keep_up(writer);
+            wait_ms = keep_up(writer);
         }
     }
     return NULL;
@@ -325,7 +342,7 @@ static int init_queue(struct writer *writer)
     if (code < 0) {
         return code;
     }
-    code = -pthread_cond_init(&writer->wake, NULL);
+    code = clock_init_condition(&writer->wake);
     if (code < 0) {
         (void)pthread_mutex_destroy(&writer->mutex); /* nobody knows it yet */
     }

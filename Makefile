@@ -169,7 +169,7 @@ lint: packages-build packages-test packages-lint
 	cppcheck --quiet -j $(JOBS) --std=c11 --enable=warning,performance,portability \
 	    --inline-suppr --error-exitcode=1 -I. daemon storage client
 	@echo clang-tidy: $(words $(ALL_SOURCES)) files
-	@printf '%s\n' $(ALL_SOURCES) | xargs -P $(JOBS) -n 4 sh -c \
+	@printf '%s\n' $(ALL_SOURCES) | xargs -P $(JOBS) -n 1 sh -c \
 	    'clang-tidy --quiet "$$@" -- $(BASE_CFLAGS) $(PACKAGE_CFLAGS) 2>/dev/null' sh
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-clang CC=clang CI=true build-tests
 

@@ -22,7 +22,9 @@ static void control_characters_never_pass(void **state)
 {
     (void)state;
     assert_clean("a\033[31mb", TEXT_ONE_LINE, "a\uFFFD[31mb");
-    assert_clean("a\xC2\x9B" "31mb", TEXT_ONE_LINE, "a\uFFFD31mb"); /* CSI as one character */
+    assert_clean("a\xC2\x9B"
+                 "31mb",
+                 TEXT_ONE_LINE, "a\uFFFD31mb"); /* CSI as one character */
     assert_clean("a\x7F\r!", TEXT_ONE_LINE, "a\uFFFD\uFFFD!");
 }
 

@@ -357,9 +357,9 @@ static int read_members(const struct wire *wire, struct wire_answer *answer,
         return fail_protocol(wire, "a line is no answer of JSON-RPC 2.0", failure);
     }
     if (answer->result) {
+        find_result(answer->line, &answer->result_text, &answer->result_text_length);
         /* The line is the answer's, which frees it; the analyzer loses sight of that here. */
         // NOLINTNEXTLINE(clang-analyzer-unix.Malloc)
-        find_result(answer->line, &answer->result_text, &answer->result_text_length);
         return answer->result_text ? 0 : fail_protocol(wire, "a name is written oddly", failure);
     }
     answer->code = json_integer_value(json_object_get(error, "code"));

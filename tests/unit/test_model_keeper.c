@@ -1,0 +1,340 @@
+/* The learner's model into its store and back: it must not matter to any answer. */
+#include "daemon/model_keeper.h"
+
+#include <setjmp.h>
+#include <stdarg.h>
+#include <stddef.h>
+#include <stdint.h>
+
+#include <cmocka.h>
+
+#include "tests/unit/model_fixture.h"
+#include "tests/unit/store_fixture.h"
+
+static const unsigned char UUID[STORE_UUID_BYTES] = "fifteen letters";
+static const unsigned char OTHER_UUID[STORE_UUID_BYTES] = "fifteen LETTERS";
+
+struct keeping {
+    char home[FIXTURE_PATH_BYTES];
+    struct store_settings settings;
+    struct model_store *store;
+    struct model_origin origin;
+    struct stream stream;
+    struct learner learner; /* what is stored */
+    struct learner again;   /* what was restored */
+    struct store_error error;
+};
+
+static int set_up(void **state)
+{
+    struct keeping *keeping = calloc(1, sizeof *keeping);
+    const struct model_settings settings = learner_settings();
+    assert_non_null(keeping);
+    home_make(keeping->home);
+    keeping->settings =
+        (struct store_settings){.home = keeping->home, .map_bytes = FIXTURE_MAP_BYTES};
+    keeping->origin =
+        (struct model_origin){.store_uuid = UUID, .settings = "step=0.5\n", .last_seq = 1000};
+    keeping->stream = (struct stream){.random = {4}, .tag_count = STREAM_TAGS, .given_share = 0.8};
+    assert_int_equal(model_store_open(&keeping->settings, &keeping->store, &keeping->error),
+                     STORE_OK);
+    learner_renew(&keeping->learner, &settings);
+    learner_renew(&keeping->again, &settings);
+    *state = keeping;
+    return 0;
+}
+
+static int tear_down(void **state)
+{
+    struct keeping *keeping = *state;
+    model_store_close(keeping->store);
+    learner_free(&keeping->learner);
+    learner_free(&keeping->again);
+    home_remove(keeping->home);
+    free(keeping);
+    return 0;
+}
+
+/* The next entries of the stream, learned by one or by both. */
+static void learn(struct keeping *keeping, int count, bool by_both)
+{
+    for (int i = 0; i < count; i++) {
+        struct entry entry;
+        uint32_t truth[ENTRY_TAGS];
+        (void)stream_next(&keeping->stream, &entry, truth);
+        learner_change(&keeping->learner, &entry, NULL);
+        if (by_both) {
+            learner_change(&keeping->again, &entry, NULL);
+        }
+    }
+}
+
+/* Says whether words were forgotten. */
+static bool keep(struct keeping *keeping, uint64_t learned)
+{
+    bool forgot = false;
+    int code = model_keeper_store(keeping->store, keeping->learner.model, &keeping->origin, learned,
+                                  &forgot, &keeping->error);
+    if (code != STORE_OK) {
+        fail_msg("%d: %s", code, keeping->error.text);
+    }
+    return forgot;
+}
+
+/* Into a new model, from a store that was opened anew. */
+static int restore(struct keeping *keeping)
+{
+    const struct model_settings settings = learner_settings();
+    model_store_close(keeping->store);
+    keeping->store = NULL;
+    assert_int_equal(model_store_open(&keeping->settings, &keeping->store, &keeping->error),
+                     STORE_OK);
+    learner_renew(&keeping->again, &settings);
+    return model_keeper_load(keeping->store, keeping->again.model, &keeping->error);
+}
+
+static int look(struct keeping *keeping, enum model_kept *ret_kept, uint64_t *ret_learned)
+{
+    return model_keeper_look(keeping->store, &keeping->origin, ret_kept, ret_learned,
+                             &keeping->error);
+}
+
+static void assert_kept(struct keeping *keeping, enum model_kept expected, uint64_t learned)
+{
+    enum model_kept kept = (enum model_kept)77;
+    uint64_t found = 77;
+    assert_int_equal(look(keeping, &kept, &found), STORE_OK);
+    assert_int_equal(kept, expected);
+    assert_int_equal(found, learned);
+    assert_int_equal(keeping->error.code, STORE_OK);
+}
+
+/* To the last bit. */
+static void assert_same_answers(struct keeping *keeping)
+{
+    struct model_answer first = learner_ask(&keeping->learner, DRAFT);
+    struct model_answer second = learner_ask(&keeping->again, DRAFT);
+    assert_true(first.gap_count > 0);
+    assert_int_equal(second.gap_count, first.gap_count);
+    assert_true(second.expected == first.expected);
+    assert_int_equal(second.early, first.early);
+    for (size_t i = 0; i < first.gap_count; i++) {
+        assert_int_equal(second.gaps[i].tag, first.gaps[i].tag);
+        assert_true(second.gaps[i].chance == first.gaps[i].chance);
+        assert_true(second.gaps[i].score == first.gaps[i].score);
+    }
+}
+
+/* --- there and back --- */
+
+static void a_restored_model_answers_the_same(void **state)
+{
+    struct keeping *keeping = *state;
+    learn(keeping, 300, false);
+    assert_false(keep(keeping, 300));
+    assert_int_equal(restore(keeping), STORE_OK);
+    assert_same_answers(keeping);
+}
+
+static void a_restored_model_goes_on_learning_the_same(void **state)
+{
+    struct keeping *keeping = *state;
+    learn(keeping, 300, false);
+    (void)keep(keeping, 300);
+    assert_int_equal(restore(keeping), STORE_OK);
+    learn(keeping, 300, true);
+    assert_same_answers(keeping);
+}
+
+static void what_has_changed_since_is_stored_over_what_was(void **state)
+{
+    struct keeping *keeping = *state;
+    for (uint64_t learned = 100; learned <= 500; learned += 100) {
+        learn(keeping, 100, false);
+        (void)keep(keeping, learned);
+    }
+    assert_kept(keeping, MODEL_KEPT_OURS, 500);
+    assert_int_equal(restore(keeping), STORE_OK);
+    assert_same_answers(keeping);
+}
+
+static void words_that_no_item_has_any_more_are_forgotten(void **state)
+{
+    struct keeping *keeping = *state;
+    struct entry entry;
+    learn(keeping, 100, false);
+    entry_set(&entry, "schoonerwreckage fog", TAGS(3));
+    learner_change(&keeping->learner, &entry, NULL);
+    assert_false(keep(keeping, 101));
+    uint64_t words = learner_size(&keeping->learner).words;
+    learner_change(&keeping->learner, NULL, &entry);
+    assert_true(keep(keeping, 102));
+    assert_int_equal(restore(keeping), STORE_OK);
+    assert_true(learner_size(&keeping->again).words < words);
+    assert_int_equal(learner_size(&keeping->again).words, learner_size(&keeping->learner).words);
+    assert_same_answers(keeping);
+}
+
+static void a_store_that_is_reset_holds_nothing(void **state)
+{
+    struct keeping *keeping = *state;
+    learn(keeping, 100, false);
+    (void)keep(keeping, 100);
+    assert_int_equal(model_keeper_reset(keeping->store, &keeping->error), STORE_OK);
+    assert_kept(keeping, MODEL_KEPT_NONE, 0);
+}
+
+/* --- whose it is --- */
+
+static void a_new_home_holds_no_model(void **state)
+{
+    assert_kept(*state, MODEL_KEPT_NONE, 0);
+}
+
+static void a_stored_model_tells_how_far_it_has_learned(void **state)
+{
+    struct keeping *keeping = *state;
+    (void)keep(keeping, 1000); /* as far as the store goes */
+    assert_kept(keeping, MODEL_KEPT_OURS, 1000);
+}
+
+static void a_model_of_other_settings_is_of_no_use(void **state)
+{
+    struct keeping *keeping = *state;
+    (void)keep(keeping, 12);
+    keeping->origin.settings = "step=0.25\n";
+    assert_kept(keeping, MODEL_KEPT_OTHER, 0);
+    keeping->origin.settings = "step=0.5\n";
+    assert_kept(keeping, MODEL_KEPT_OURS, 12);
+}
+
+static void a_model_of_another_store_is_of_no_use(void **state)
+{
+    struct keeping *keeping = *state;
+    (void)keep(keeping, 12);
+    keeping->origin.store_uuid = OTHER_UUID;
+    keeping->origin.last_seq = 3; /* which says nothing where the store is another */
+    assert_kept(keeping, MODEL_KEPT_OTHER, 0);
+}
+
+static void a_model_that_is_ahead_of_its_store_is_told(void **state)
+{
+    struct keeping *keeping = *state;
+    enum model_kept kept = (enum model_kept)77;
+    uint64_t learned = 77;
+    (void)keep(keeping, 12);
+    keeping->origin.last_seq = 11;
+    assert_int_equal(look(keeping, &kept, &learned), STORE_CORRUPT);
+    assert_string_equal(keeping->error.text,
+                        "the model has learned up to change 12, but the store ends at 11: restore "
+                        "the store, or remove the model to have it learned again");
+    assert_int_equal(kept, 77);
+    assert_int_equal(learned, 77);
+}
+
+/* --- damage --- */
+
+/* Stores a part that model_keeper itself would not have stored. */
+static void put(struct keeping *keeping, const struct model_store_chunk *chunk,
+                const struct model_store_bin *bin)
+{
+    struct model_store_writing *writing = NULL;
+    assert_int_equal(model_store_begin(keeping->store, &writing, &keeping->error), STORE_OK);
+    if (chunk) {
+        assert_int_equal(model_store_put_chunk(writing, chunk, &keeping->error), STORE_OK);
+    }
+    if (bin) {
+        assert_int_equal(model_store_put_bin(writing, bin, &keeping->error), STORE_OK);
+    }
+    assert_int_equal(model_store_commit(writing, &keeping->error), STORE_OK);
+}
+
+static void assert_damaged(struct keeping *keeping, const char *sentence)
+{
+    assert_int_equal(restore(keeping), STORE_CORRUPT);
+    assert_string_equal(keeping->error.text, sentence);
+    keeping->error = (struct store_error){0};
+}
+
+static void a_chunk_without_those_before_it_is_damage(void **state)
+{
+    struct keeping *keeping = *state;
+    static const uint32_t TAG = 0;
+    static const float VALUE = 0.5F;
+    const struct model_store_chunk chunk = {
+        .word = 0, .number = 5, .count = 1, .tags = &TAG, .values = &VALUE, .accumulators = &VALUE};
+    learn(keeping, 10, false);
+    (void)keep(keeping, 10);
+    put(keeping, &chunk, NULL);
+    assert_damaged(keeping, "the stored model does not fit together");
+}
+
+static void a_bin_of_another_size_is_damage(void **state)
+{
+    struct keeping *keeping = *state;
+    static const double VALUES[2] = {1.0, 0.5};
+    const struct model_store_bin bin = {.number = 3, .count = 2, .values = VALUES};
+    learn(keeping, 10, false);
+    (void)keep(keeping, 10);
+    put(keeping, NULL, &bin);
+    assert_damaged(keeping, "the stored model does not fit together");
+}
+
+/* Changes the byte behind a text, wherever that stands in the closed or open file. */
+static void damage_behind(const char *path, const char *text)
+{
+    static char bytes[1 << 20];
+    size_t count = 0;
+    FILE *file = fopen(path, "r+b");
+    assert_non_null(file);
+    size_t size = fread(bytes, 1, sizeof bytes, file);
+    char *at = bytes;
+    while ((at = memmem(at, size - (size_t)(at - bytes), text, strlen(text)))) {
+        at += strlen(text);
+        assert_int_equal(fseek(file, at - bytes, SEEK_SET), 0);
+        assert_int_not_equal(fputc(*at ^ 1, file), EOF);
+        count++;
+    }
+    assert_int_equal(fclose(file), 0);
+    assert_true(count > 0);
+}
+
+/* A word is a key, and what is stored of it stands right behind it in LMDB's pages. */
+static void a_byte_that_went_wrong_in_the_file_is_damage(void **state)
+{
+    struct keeping *keeping = *state;
+    char path[FIXTURE_PATH_BYTES + 32];
+    learner_file(&keeping->learner, "schoonerwreckage fog", TAGS(3));
+    (void)keep(keeping, 1);
+    (void)snprintf(path, sizeof path, "%s/model/data.mdb", keeping->home);
+    damage_behind(path, "schoonerwreckage");
+    assert_damaged(keeping, "a stored word of the model is damaged");
+}
+
+static void a_model_without_a_head_cannot_be_loaded(void **state)
+{
+    assert_damaged(*state, "the stored model does not fit together");
+}
+
+#define TEST(name) cmocka_unit_test_setup_teardown(name, set_up, tear_down)
+
+int main(void)
+{
+    const struct CMUnitTest tests[] = {
+        TEST(a_restored_model_answers_the_same),
+        TEST(a_restored_model_goes_on_learning_the_same),
+        TEST(what_has_changed_since_is_stored_over_what_was),
+        TEST(words_that_no_item_has_any_more_are_forgotten),
+        TEST(a_store_that_is_reset_holds_nothing),
+        TEST(a_new_home_holds_no_model),
+        TEST(a_stored_model_tells_how_far_it_has_learned),
+        TEST(a_model_of_other_settings_is_of_no_use),
+        TEST(a_model_of_another_store_is_of_no_use),
+        TEST(a_model_that_is_ahead_of_its_store_is_told),
+        TEST(a_chunk_without_those_before_it_is_damage),
+        TEST(a_bin_of_another_size_is_damage),
+        TEST(a_byte_that_went_wrong_in_the_file_is_damage),
+        TEST(a_model_without_a_head_cannot_be_loaded),
+    };
+    return cmocka_run_group_tests(tests, NULL, NULL);
+}

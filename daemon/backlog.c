@@ -4,7 +4,7 @@
 #include <pthread.h>
 #include <stdlib.h>
 
-#include "daemon/clock.h"
+#include "daemon/sync.h"
 
 enum {
     MARKS = 256,
@@ -57,11 +57,11 @@ int backlog_new(const struct backlog_start *start, struct backlog **ret_backlog)
     if (code < 0) {
         goto fail_mutex;
     }
-    code = clock_init_condition(&backlog->committed_more);
+    code = sync_init_condition(&backlog->committed_more);
     if (code < 0) {
         goto fail_committed;
     }
-    code = clock_init_condition(&backlog->learned_more);
+    code = sync_init_condition(&backlog->learned_more);
     if (code < 0) {
         goto fail_learned;
     }
@@ -87,21 +87,6 @@ void backlog_free(struct backlog *backlog)
     free(backlog);
 }
 
-/* Errors of these are errors of ours alone. */
-static void lock(struct backlog *backlog)
-{
-    if (pthread_mutex_lock(&backlog->mutex) != 0) {
-        abort();
-    }
-}
-
-static void unlock(struct backlog *backlog)
-{
-    if (pthread_mutex_unlock(&backlog->mutex) != 0) {
-        abort();
-    }
-}
-
 uint64_t backlog_cost(size_t text_bytes, size_t tags)
 {
     return COST_OF_A_CHANGE + text_bytes + COST_OF_A_TAG * tags;
@@ -125,13 +110,13 @@ static bool is_catching_up(const struct backlog *backlog)
 
 uint64_t backlog_wait_for_room(struct backlog *backlog)
 {
-    lock(backlog);
+    sync_lock(&backlog->mutex);
     while (room(backlog) == 0 && !backlog->stopping && !backlog->trainer_failed &&
            !is_catching_up(backlog)) {
         (void)pthread_cond_wait(&backlog->learned_more, &backlog->mutex);
     }
     uint64_t cost = backlog->trainer_failed || is_catching_up(backlog) ? UINT64_MAX : room(backlog);
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
     return cost > 0 ? cost : 1;
 }
 
@@ -149,12 +134,12 @@ static void add_mark(struct backlog *backlog, struct mark mark)
 
 void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t now_ms)
 {
-    lock(backlog);
+    sync_lock(&backlog->mutex);
     backlog->numbers.committed = seq;
     backlog->cost_behind += cost;
     add_mark(backlog, (struct mark){.seq = seq, .at_ms = now_ms});
     (void)pthread_cond_signal(&backlog->committed_more);
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
 }
 
 /* --- trainer ------------------------------------------------------------------------------------
@@ -162,20 +147,20 @@ void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uin
 
 uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64_t timeout_ms)
 {
-    struct timespec deadline = clock_deadline(timeout_ms);
-    lock(backlog);
+    struct timespec deadline = sync_deadline(timeout_ms);
+    sync_lock(&backlog->mutex);
     int code = 0;
     while (backlog->numbers.committed <= learned && !backlog->stopping && code == 0) {
         code = pthread_cond_timedwait(&backlog->committed_more, &backlog->mutex, &deadline);
     }
     uint64_t committed = backlog->numbers.committed;
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
     return committed;
 }
 
 void backlog_learned(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t took_us)
 {
-    lock(backlog);
+    sync_lock(&backlog->mutex);
     bool was_promised = seq > backlog->found;
     backlog->numbers.learned = seq;
     if (was_promised) {
@@ -194,22 +179,22 @@ void backlog_learned(struct backlog *backlog, uint64_t seq, uint64_t cost, uint6
         backlog->mark_count--;
     }
     (void)pthread_cond_broadcast(&backlog->learned_more);
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
 }
 
 void backlog_kept(struct backlog *backlog, uint64_t seq)
 {
-    lock(backlog);
+    sync_lock(&backlog->mutex);
     backlog->numbers.kept = seq;
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
 }
 
 void backlog_trainer_failed(struct backlog *backlog)
 {
-    lock(backlog);
+    sync_lock(&backlog->mutex);
     backlog->trainer_failed = true;
     (void)pthread_cond_broadcast(&backlog->learned_more);
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
 }
 
 /* --- whoever asks -------------------------------------------------------------------------------
@@ -231,35 +216,35 @@ static uint64_t seq_due(const struct backlog *backlog, uint64_t now_ms)
 
 void backlog_wait_for_promise(struct backlog *backlog, uint64_t now_ms)
 {
-    lock(backlog);
+    sync_lock(&backlog->mutex);
     uint64_t due = is_catching_up(backlog) ? 0 : seq_due(backlog, now_ms);
     while (backlog->numbers.learned < due && !backlog->stopping && !backlog->trainer_failed) {
         (void)pthread_cond_wait(&backlog->learned_more, &backlog->mutex);
     }
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
 }
 
 struct backlog_numbers backlog_read(struct backlog *backlog)
 {
-    lock(backlog);
+    sync_lock(&backlog->mutex);
     struct backlog_numbers numbers = backlog->numbers;
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
     return numbers;
 }
 
 void backlog_stop(struct backlog *backlog)
 {
-    lock(backlog);
+    sync_lock(&backlog->mutex);
     backlog->stopping = true;
     (void)pthread_cond_broadcast(&backlog->committed_more);
     (void)pthread_cond_broadcast(&backlog->learned_more);
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
 }
 
 bool backlog_is_stopping(struct backlog *backlog)
 {
-    lock(backlog);
+    sync_lock(&backlog->mutex);
     bool stopping = backlog->stopping;
-    unlock(backlog);
+    sync_unlock(&backlog->mutex);
     return stopping;
 }

@@ -1,6 +1,6 @@
 #include "daemon/clock.h"
 
-#include <errno.h>
+#include <time.h>
 
 uint64_t clock_steady_us(void)
 {
@@ -12,33 +12,6 @@ uint64_t clock_steady_us(void)
 uint64_t clock_steady_ms(void)
 {
     return clock_steady_us() / 1000U;
-}
-
-int clock_init_condition(pthread_cond_t *condition)
-{
-    pthread_condattr_t attributes;
-    if (pthread_condattr_init(&attributes) != 0) {
-        return -ENOMEM;
-    }
-    int code = pthread_condattr_setclock(&attributes, CLOCK_MONOTONIC);
-    if (code == 0) {
-        code = pthread_cond_init(condition, &attributes);
-    }
-    (void)pthread_condattr_destroy(&attributes); /* no failure for an initialised one */
-    return -code;
-}
-
-struct timespec clock_deadline(uint64_t from_now_ms)
-{
-    struct timespec deadline = {0};
-    (void)clock_gettime(CLOCK_MONOTONIC, &deadline); /* always there on Linux */
-    deadline.tv_sec += (time_t)(from_now_ms / 1000U);
-    deadline.tv_nsec += (long)(from_now_ms % 1000U) * 1000000L;
-    if (deadline.tv_nsec >= 1000000000L) {
-        deadline.tv_nsec -= 1000000000L;
-        deadline.tv_sec++;
-    }
-    return deadline;
 }
 
 int64_t clock_wall_ms(void)

@@ -16,6 +16,7 @@
 
 #include "daemon/clock.h"
 #include "daemon/item_source.h"
+#include "daemon/sync.h"
 #include "storage/items.h"
 
 enum {
@@ -296,8 +297,6 @@ void trainer_free(struct trainer *trainer)
     if (!trainer) {
         return;
     }
-    if (pthread_join(trainer->thread, NULL) != 0) {
-        abort(); /* an error of ours alone */
-    }
+    sync_join(trainer->thread);
     free_trainer(trainer);
 }

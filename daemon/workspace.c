@@ -2,6 +2,8 @@
 
 #include <stdlib.h>
 
+#include "daemon/sync.h"
+
 int workspaces_init(struct workspaces *workspaces, const struct features_settings *settings)
 {
     workspaces->free = NULL;
@@ -29,21 +31,6 @@ void workspaces_deinit(struct workspaces *workspaces)
     (void)pthread_mutex_destroy(&workspaces->mutex); /* nobody holds it any more */
 }
 
-/* Errors of these are errors of ours alone. */
-static void lock(struct workspaces *workspaces)
-{
-    if (pthread_mutex_lock(&workspaces->mutex) != 0) {
-        abort();
-    }
-}
-
-static void unlock(struct workspaces *workspaces)
-{
-    if (pthread_mutex_unlock(&workspaces->mutex) != 0) {
-        abort();
-    }
-}
-
 static struct workspace *make_workspace(const struct features_settings *settings)
 {
     struct workspace *workspace = calloc(1, sizeof *workspace);
@@ -60,19 +47,19 @@ static struct workspace *make_workspace(const struct features_settings *settings
 
 struct workspace *workspaces_borrow(struct workspaces *workspaces)
 {
-    lock(workspaces);
+    sync_lock(&workspaces->mutex);
     struct workspace *workspace = workspaces->free;
     if (workspace) {
         workspaces->free = workspace->next;
     }
-    unlock(workspaces);
+    sync_unlock(&workspaces->mutex);
     return workspace ? workspace : make_workspace(workspaces->settings);
 }
 
 void workspaces_return(struct workspaces *workspaces, struct workspace *workspace)
 {
-    lock(workspaces);
+    sync_lock(&workspaces->mutex);
     workspace->next = workspaces->free;
     workspaces->free = workspace;
-    unlock(workspaces);
+    sync_unlock(&workspaces->mutex);
 }

@@ -15,6 +15,7 @@
 #include <stdlib.h>
 
 #include "daemon/clock.h"
+#include "daemon/sync.h"
 
 enum {
     GROUP_CHANGES = 256,
@@ -46,21 +47,6 @@ struct writer {
     bool woken;
     bool stopping;
 };
-
-/* Errors of these are errors of ours alone. */
-static void lock(struct writer *writer)
-{
-    if (pthread_mutex_lock(&writer->mutex) != 0) {
-        abort();
-    }
-}
-
-static void unlock(struct writer *writer)
-{
-    if (pthread_mutex_unlock(&writer->mutex) != 0) {
-        abort();
-    }
-}
 
 static void append(struct change_list *list, struct change *change)
 {
@@ -187,13 +173,13 @@ static void commit_one_by_one(struct writer *writer, struct change *group)
 
 static void hand_back(struct writer *writer, struct change *group)
 {
-    lock(writer);
+    sync_lock(&writer->mutex);
     while (group) {
         struct change *next = group->next;
         append(&writer->done, group);
         group = next;
     }
-    unlock(writer);
+    sync_unlock(&writer->mutex);
     writer->settings.done(writer->settings.user);
 }
 
@@ -202,7 +188,7 @@ static struct change *take_group(struct writer *writer, uint64_t room)
 {
     struct change_list group = {0};
     uint64_t cost = 0;
-    lock(writer);
+    sync_lock(&writer->mutex);
     for (size_t i = 0; i < GROUP_CHANGES && writer->queued.first; i++) {
         struct change *change = writer->queued.first;
         cost += cost_of(change);
@@ -215,7 +201,7 @@ static struct change *take_group(struct writer *writer, uint64_t room)
     if (!writer->queued.first) {
         writer->queued.last = NULL;
     }
-    unlock(writer);
+    sync_unlock(&writer->mutex);
     return group.first;
 }
 
@@ -302,9 +288,9 @@ static uint64_t keep_up(struct writer *writer)
  * to stop. */
 static bool wait_for_changes(struct writer *writer, uint64_t most_ms, bool *ret_queued)
 {
-    struct timespec deadline = clock_deadline(most_ms == WAIT_FOR_EVER ? 0 : most_ms);
+    struct timespec deadline = sync_deadline(most_ms == WAIT_FOR_EVER ? 0 : most_ms);
     int code = 0;
-    lock(writer);
+    sync_lock(&writer->mutex);
     while (!writer->queued.first && !writer->woken && !writer->stopping && code == 0) {
         code = most_ms == WAIT_FOR_EVER
                    ? pthread_cond_wait(&writer->wake, &writer->mutex)
@@ -313,7 +299,7 @@ static bool wait_for_changes(struct writer *writer, uint64_t most_ms, bool *ret_
     writer->woken = false;
     *ret_queued = writer->queued.first != NULL;
     bool goes_on = *ret_queued || !writer->stopping;
-    unlock(writer);
+    sync_unlock(&writer->mutex);
     return goes_on;
 }
 
@@ -342,7 +328,7 @@ static int init_queue(struct writer *writer)
     if (code < 0) {
         return code;
     }
-    code = clock_init_condition(&writer->wake);
+    code = sync_init_condition(&writer->wake);
     if (code < 0) {
         (void)pthread_mutex_destroy(&writer->mutex); /* nobody knows it yet */
     }
@@ -391,13 +377,11 @@ void writer_free(struct writer *writer)
     if (!writer) {
         return;
     }
-    lock(writer);
+    sync_lock(&writer->mutex);
     writer->stopping = true;
     (void)pthread_cond_signal(&writer->wake);
-    unlock(writer);
-    if (pthread_join(writer->thread, NULL) != 0) {
-        abort(); /* an error of ours alone */
-    }
+    sync_unlock(&writer->mutex);
+    sync_join(writer->thread);
     deinit_queue(writer);
     features_free(writer->features);
     codec_deinit(&writer->record);
@@ -406,25 +390,25 @@ void writer_free(struct writer *writer)
 
 void writer_push(struct writer *writer, struct change *change)
 {
-    lock(writer);
+    sync_lock(&writer->mutex);
     append(&writer->queued, change);
     (void)pthread_cond_signal(&writer->wake);
-    unlock(writer);
+    sync_unlock(&writer->mutex);
 }
 
 struct change *writer_take_done(struct writer *writer)
 {
-    lock(writer);
+    sync_lock(&writer->mutex);
     struct change *done = writer->done.first;
     writer->done = (struct change_list){0};
-    unlock(writer);
+    sync_unlock(&writer->mutex);
     return done;
 }
 
 void writer_wake(struct writer *writer)
 {
-    lock(writer);
+    sync_lock(&writer->mutex);
     writer->woken = true;
     (void)pthread_cond_signal(&writer->wake);
-    unlock(writer);
+    sync_unlock(&writer->mutex);
 }

@@ -52,7 +52,7 @@ TEST_PROGRAMS := $(addprefix $(BUILD)/tests/,$(UNIT_TESTS) $(INTEGRATION_TESTS) 
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
 .PHONY: all demo test lint sanitize valgrind corpora quality bench install uninstall clean \
-        packages-build packages-test packages-lint packages-quality build-tests run-tests FORCE
+        build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
 
@@ -120,6 +120,7 @@ $(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(LIBRARY) $(CLIENT_LIBRARY)
 
 # --- packages -----------------------------------------------------------------------------------
 
+# Not .PHONY, which would pass over the pattern; FORCE runs it each time.
 packages-%: FORCE
 	@sh config/install-packages $*
 

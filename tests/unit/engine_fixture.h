@@ -178,7 +178,9 @@ static inline void ask_draft(struct opened *opened, const char *text, struct ask
     *ret_asked = (struct asked){0};
     assert_int_equal(engine_ask(opened->engine, &question, workspace, &answer, &ret_asked->learned),
                      0);
-    memcpy(ret_asked->gaps, answer.gaps, answer.gap_count * sizeof answer.gaps[0]);
+    for (size_t i = 0; i < answer.gap_count; i++) {
+        ret_asked->gaps[i] = answer.gaps[i];
+    }
     ret_asked->count = answer.gap_count;
     ret_asked->expected = answer.expected;
     ret_asked->early = answer.early;

@@ -96,7 +96,7 @@ static const struct option OPTIONS[] = {
     {"balance", TYPE_NUMBER, AT(balance), 0, 0.999999, "0", NULL, OPTIONS_LEARNING, false,
      "The beta of the class balance by effective numbers; 0 for none."},
     {"step", TYPE_NUMBER, AT(step), 0, 10, "0", NULL, OPTIONS_LEARNING, false,
-     "The learner's step; 0 lets the size of the vocabulary decide."},
+     "The learner's step; 0 lets the size of the vocabulary and the loss decide."},
     {"specificity", TYPE_NUMBER, AT(specificity), 0, 1e9, "100", NULL, OPTIONS_LEARNING, false,
      "A word speaks for a tag only while at most this many times as many items hold it; 0 for no "
      "such rule."},

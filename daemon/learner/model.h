@@ -30,7 +30,7 @@ struct model_settings {
     bool correction; /* weigh given pairs by 2/p - 1; off: every pair counts once */
     bool even_out;   /* divide the factors by their running mean over given pairs */
     double balance;  /* β of the effective number of samples; 0: off */
-    double step;     /* η; 0: by the size of the vocabulary */
+    double step;     /* η; 0: by the vocabulary and the loss */
     double evidence_half_life_items;
 };
 

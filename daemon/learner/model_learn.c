@@ -199,12 +199,19 @@ static double given_factor(struct model *model, uint32_t tag, bool prompted)
     return factor * (double)model->factor_count / model->factor_sum;
 }
 
+/*
+ * The logistic loss slopes by 1 at most, the squared hinge by 4 at the base: with the same step it
+ * learns too little in one pass. Measured on two corpora: P@1 .834 with 1, .872 with 8 and 10.
+ */
+static const double LOGISTIC_STEPS = 8.0;
+
 static double step_for(const struct model *model)
 {
     if (model->settings.step > 0.0) {
         return model->settings.step;
     }
-    return model->tag_count >= LARGE_VOCABULARY ? 0.5 : 0.3;
+    double step = model->tag_count >= LARGE_VOCABULARY ? 0.5 : 0.3;
+    return model->settings.weights.surrogate == SURROGATE_LOGISTIC ? LOGISTIC_STEPS * step : step;
 }
 
 static int learn_weights(struct model *model, const struct model_item *item,

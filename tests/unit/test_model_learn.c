@@ -341,13 +341,26 @@ static void the_balance_changes_what_is_learned(void **state)
 /* --- the step -----------------------------------------------------------------------------------
  */
 
-static double score_by_step(struct learner *learner, double step, uint32_t tag)
+static double score_by_step_and_loss(struct learner *learner, enum surrogate loss, double step,
+                                     uint32_t tag)
 {
     struct model_settings settings = learner_settings();
     settings.step = step;
+    settings.weights.surrogate = loss;
     learner_renew(learner, &settings);
     learner_file(learner, "fog", &tag, 1);
     return learner_score(learner, "fog", tag);
+}
+
+static double score_by_step(struct learner *learner, double step, uint32_t tag)
+{
+    return score_by_step_and_loss(learner, SURROGATE_SQUARED_HINGE, step, tag);
+}
+
+static void the_logistic_loss_learns_with_eight_times_the_step(void **state)
+{
+    assert_true(score_by_step_and_loss(*state, SURROGATE_LOGISTIC, 0.0, 900) ==
+                score_by_step_and_loss(*state, SURROGATE_LOGISTIC, 8.0 * 0.3, 900));
 }
 
 static void a_small_vocabulary_learns_with_the_smaller_step(void **state)
@@ -454,6 +467,7 @@ int main(void)
         model_test(the_balance_changes_what_is_learned),
         model_test(a_small_vocabulary_learns_with_the_smaller_step),
         model_test(two_thousand_tags_learn_with_the_larger_step),
+        model_test(the_logistic_loss_learns_with_eight_times_the_step),
         model_test(each_surrogate_learns_a_stream),
         model_test(a_stream_is_learned_although_half_of_its_tags_are_missing),
         model_test(each_setting_learns_a_stream),

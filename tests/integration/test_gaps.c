@@ -278,14 +278,14 @@ static void asking_changes_nothing(void **state)
 /* --- what is seen when ----------------------------------------------------------------------- */
 
 enum {
-    VISIBLE_WITHIN_MS = 200,
+    VISIBLE_WITHIN_MS = 50,
     LARGE_WORDS = 4000, /* so that learning takes longer than storing */
-    LARGE_ENTRIES = 120
+    LARGE_ENTRIES = 300
 };
 
 static int set_up_promise(void **state)
 {
-    *state = service_new("visible_within_ms=200", NULL, NULL);
+    *state = service_new("visible_within_ms=50", NULL, NULL);
     return 0;
 }
 

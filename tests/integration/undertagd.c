@@ -17,6 +17,8 @@
 #include <sys/un.h>
 #include <unistd.h>
 
+#include "tests/integration/peer.h"
+
 /* --- the folder ------------------------------------------------------------------------------ */
 
 void undertagd_path(const struct undertagd *daemon, const char *name,
@@ -127,6 +129,19 @@ static void wait_until_ready(const struct undertagd *daemon, int notify)
     }
 }
 
+/*
+ * The loop has been round once a connection has come and gone. Before that ThreadSanitizer (of
+ * clang 14) may lose a signal: one that comes while a thread enters its first blocking call.
+ */
+static void wait_until_it_turns(const struct undertagd *daemon)
+{
+    struct peer peer;
+    peer_open(&peer, daemon->socket);
+    peer_end_saying(&peer);
+    assert_null(peer_line(&peer));
+    peer_close(&peer);
+}
+
 void undertagd_start(struct undertagd *daemon)
 {
     char program[CHILD_PATH_BYTES];
@@ -153,6 +168,7 @@ void undertagd_start(struct undertagd *daemon)
     child_start(&daemon->child, argv, (const char *const[]){notify_entry, NULL}, nothing, log, log);
     assert_int_equal(close(nothing) | close(log), 0);
     wait_until_ready(daemon, notify);
+    wait_until_it_turns(daemon);
     assert_int_equal(close(notify), 0);
 }
 

@@ -91,6 +91,7 @@ static void opened_again_it_goes_on_as_if_nothing_had_been(void **state)
     struct asked first;
     struct asked second;
     file_stream(opened, &stream, 0, 100);
+    wait_until_learned(opened, 100);
     close_home(opened);
     open_home(opened);
     file_stream(opened, &stream, 100, 50);
@@ -133,6 +134,7 @@ static void settings_that_learning_does_not_depend_on_have_nothing_learned_again
 {
     struct opened *opened = *state;
     (void)FILE_ITEM(opened, "log/1", "fog", "weather");
+    wait_until_learned(opened, 1);
     close_home(opened);
     opened->options.tags_limit = 7;
     open_home(opened);
@@ -271,6 +273,7 @@ static void what_was_left_at_the_end_is_erased_at_the_next_start(void **state)
     struct opened *opened = *state;
     (void)FILE_ITEM(opened, "log/1", "schoonerwreckage", "casualties");
     withdraw_item(opened, "log/1");
+    wait_until_learned(opened, 2);
     close_home(opened); /* which stores the model */
     open_home(opened);
     wait_until_gone(opened, "schoonerwreckage");

@@ -162,16 +162,18 @@ quality: packages-build packages-quality
 
 # --- checks -------------------------------------------------------------------------------------
 
-ALL_SOURCES = $(shell git ls-files '*.c')
-ALL_HEADERS = $(shell git ls-files '*.h')
+ALL_SOURCES = $(shell git ls-files "*.c")
+ALL_HEADERS = $(shell git ls-files "*.h")
 
 lint: packages-build packages-test packages-lint
-	clang-format --dry-run --Werror $(ALL_SOURCES) $(ALL_HEADERS)
-	cppcheck --quiet -j $(JOBS) --std=c11 --enable=warning,performance,portability \
+	@echo clang-format
+	@clang-format --dry-run --Werror $(ALL_SOURCES) $(ALL_HEADERS)
+	@echo cppcheck
+	@cppcheck --quiet -j $(JOBS) --std=c11 --enable=warning,performance,portability \
 	    --inline-suppr --error-exitcode=1 -I. daemon storage client
-	@echo clang-tidy: $(words $(ALL_SOURCES)) files
-	@printf '%s\n' $(ALL_SOURCES) | xargs -P $(JOBS) -n 1 sh -c \
-	    'clang-tidy --quiet "$$@" -- $(BASE_CFLAGS) $(PACKAGE_CFLAGS) 2>/dev/null' sh
+	@echo clang-tidy, $(words $(ALL_SOURCES)) files
+	@printf '%s\n' $(ALL_SOURCES) | xargs -P $(JOBS) -I '{}' \
+	    clang-tidy --quiet '{}' -- $(BASE_CFLAGS) $(PACKAGE_CFLAGS) 2>/dev/null
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-clang CC=clang CI=true build-tests
 
 # Benchmarks and Python have nothing to say under a sanitizer.

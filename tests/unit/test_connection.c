@@ -116,7 +116,7 @@ static void a_long_line_is_refused_once_and_the_connection_lives_on(void **state
 
 /* Answers of 100,000 bytes to a peer that does not read: some lie in the socket, up to 1 MiB with
  * the server, and the rest of the calls has not started. */
-static void reading_stops_while_answers_wait_unread(void **state)
+static void calls_wait_while_answers_wait_unread(void **state)
 {
     struct serving *serving = *state;
     join(serving, 0);
@@ -137,6 +137,40 @@ static void reading_stops_while_answers_wait_unread(void **state)
         assert_non_null(strstr(line, id));
     }
     assert_int_equal(serving->started, 100);
+}
+
+/* How many bytes of `most` the server takes, the socket's own room included. */
+static size_t say_as_much_as_is_taken(struct serving *serving, int client, size_t most)
+{
+    static const char NOTHING[65536];
+    size_t taken = 0;
+    for (int idle = 0; idle < 1000 && taken < most; idle++) {
+        ssize_t count = write(serving->clients[client], NOTHING, sizeof NOTHING);
+        if (count > 0) {
+            taken += (size_t)count;
+            idle = 0;
+        }
+        (void)uv_run(&serving->loop, UV_RUN_NOWAIT);
+    }
+    return taken;
+}
+
+static void a_peer_that_does_not_read_is_not_read_from(void **state)
+{
+    struct serving *serving = *state;
+    enum {
+        MOST = 6 * 1024 * 1024 /* below the limit of a line, so that the server would hold it */
+    };
+    join(serving, 0);
+    join(serving, 1);
+    for (int i = 0; i < 100; i++) {
+        ask(serving, 0, i + 1, "big");
+    }
+    for (int i = 0; i < 1000; i++) {
+        (void)uv_run(&serving->loop, UV_RUN_NOWAIT);
+    }
+    assert_true(say_as_much_as_is_taken(serving, 0, MOST) < MOST / 2);
+    assert_true(say_as_much_as_is_taken(serving, 1, MOST) >= MOST); /* nobody else notices */
 }
 
 /* The long line fills the queue, and what follows it in the same read stays in the buffer. A
@@ -254,7 +288,8 @@ int main(void)
         SERVING_TEST(a_peer_that_waits_holds_up_nobody_else),
         QUIET_TEST(one_connection_too_many_is_told_and_closed),
         QUIET_TEST(a_long_line_is_refused_once_and_the_connection_lives_on),
-        SERVING_TEST(reading_stops_while_answers_wait_unread),
+        SERVING_TEST(calls_wait_while_answers_wait_unread),
+        SERVING_TEST(a_peer_that_does_not_read_is_not_read_from),
         SERVING_TEST(a_request_behind_a_long_notification_is_not_forgotten),
         SERVING_TEST(a_peer_that_has_said_all_still_gets_its_answers),
         SERVING_TEST(a_peer_may_go_while_its_call_runs),

@@ -130,6 +130,34 @@ static void other_settings_have_everything_learned_again(void **state)
     (void)opened_tear_down((void **)&fresh);
 }
 
+static uint64_t words_known(struct opened *opened)
+{
+    struct engine_size size;
+    engine_measure(opened->engine, &size);
+    return size.model.words;
+}
+
+/* With pairs of words "fog bell lamp" is five terms, without them three. */
+static void nothing_of_the_old_model_is_left_when_all_is_learned_again(void **state)
+{
+    struct opened *opened = *state;
+    close_home(opened);
+    opened->options.word_pairs = true;
+    open_home(opened);
+    (void)FILE_ITEM(opened, "log/1", "fog bell lamp", "weather");
+    wait_until_learned(opened, 1);
+    assert_int_equal(words_known(opened), 5);
+    close_home(opened);
+    opened->options.word_pairs = false;
+    open_home(opened);
+    wait_until_learned(opened, 1);
+    assert_int_equal(words_known(opened), 3);
+    close_home(opened);
+    open_home(opened);
+    assert_int_equal(engine_count(opened->engine).progress.kept, 1); /* loaded */
+    assert_int_equal(words_known(opened), 3);
+}
+
 static void settings_that_learning_does_not_depend_on_have_nothing_learned_again(void **state)
 {
     struct opened *opened = *state;
@@ -321,6 +349,7 @@ int main(void)
         TEST(opened_again_it_answers_the_same),
         TEST(opened_again_it_goes_on_as_if_nothing_had_been),
         TEST(other_settings_have_everything_learned_again),
+        TEST(nothing_of_the_old_model_is_left_when_all_is_learned_again),
         TEST(settings_that_learning_does_not_depend_on_have_nothing_learned_again),
         TEST(a_damaged_model_is_learned_again),
         TEST(too_many_words_are_refused_and_change_nothing),

@@ -169,6 +169,7 @@ static void words_that_no_item_has_any_more_are_forgotten(void **state)
     uint64_t words = learner_size(&keeping->learner).words;
     learner_change(&keeping->learner, NULL, &entry);
     assert_true(keep(keeping, 102));
+    assert_false(keep(keeping, 103)); /* once */
     assert_int_equal(restore(keeping), STORE_OK);
     assert_true(learner_size(&keeping->again).words < words);
     assert_int_equal(learner_size(&keeping->again).words, learner_size(&keeping->learner).words);

@@ -8,6 +8,7 @@
 #include "daemon/grow.h"
 
 enum {
+    BATCH_CALLS_AHEAD = 2048,
     LINE_BYTES_MOST = 1024 * 1024 /* lines behind this wait in the connection's buffer */
 };
 
@@ -28,6 +29,7 @@ static void append(struct call_queue *queue, struct call *call)
         queue->first = call;
     }
     queue->last = call;
+    queue->count++;
     if (!queue->to_start && call->state == CALL_WAITING) {
         queue->to_start = call;
     }
@@ -102,39 +104,66 @@ static struct call *add_request(struct call_queue *queue, const json_t *text)
     return call;
 }
 
-static struct call *add_batch(struct call_queue *queue, const json_t *batch)
+static void drop_batch(struct call_queue *queue)
 {
-    struct call *call = NULL;
-    size_t count = json_array_size(batch);
-    for (size_t i = 0; i < count; i++) {
-        call = add_request(queue, json_array_get(batch, i));
+    json_decref(queue->batch);
+    queue->batch = NULL;
+}
+
+/* Makes calls of the batch at hand, but only some ahead of those that have ended: a line may hold
+ * millions of requests. */
+static void unpack_batch(struct call_queue *queue)
+{
+    size_t count = json_array_size(queue->batch);
+    while (call_queue_has_batch_left(queue)) {
+        struct call *call = add_request(queue, json_array_get(queue->batch, queue->batch_at));
         if (!call) {
-            return NULL;
+            return;
         }
-        call->opens_batch = i == 0;
-        call->closes_batch = i + 1 == count;
+        call->opens_batch = queue->batch_at == 0;
+        queue->batch_at++;
+        if (queue->batch_at == count) {
+            call->closes_batch = true;
+            call->line_bytes = queue->batch_bytes;
+            drop_batch(queue);
+        }
     }
-    return call;
+}
+
+static void take_batch(struct call_queue *queue, json_t *batch, size_t length)
+{
+    queue->batch = json_incref(batch);
+    queue->batch_at = 0;
+    queue->batch_bytes = length;
+    queue->line_bytes += length;
+    unpack_batch(queue);
+}
+
+static void add_one(struct call_queue *queue, const json_t *text, size_t length)
+{
+    struct call *call = add_request(queue, text);
+    if (call) {
+        call->line_bytes = length;
+        queue->line_bytes += length;
+    }
 }
 
 void call_queue_add_line(struct call_queue *queue, const char *line, size_t length)
 {
     struct fault fault = {0};
     json_t *text = NULL;
+    assert(!queue->batch); /* there is no room while one is being unpacked */
     if (rpc_parse(line, length, &text, &fault) < 0) {
         call_queue_add_fault(queue, &fault, length);
         return;
     }
-    struct call *last = NULL;
-    if (json_is_array(text) && json_array_size(text) == 0) {
+    if (!json_is_array(text)) {
+        add_one(queue, text, length);
+    } else if (json_array_size(text) > 0) {
+        take_batch(queue, text, length);
+    } else {
         (void)fault_set(&fault, FAULT_REQUEST, NULL, "A batch holds one request at least.");
         call_queue_add_fault(queue, &fault, length);
-    } else {
-        last = json_is_array(text) ? add_batch(queue, text) : add_request(queue, text);
-    }
-    if (last) {
-        last->line_bytes = length;
-        queue->line_bytes += length;
     }
     json_decref(text);
 }
@@ -142,10 +171,22 @@ void call_queue_add_line(struct call_queue *queue, const char *line, size_t leng
 /* --- running ------------------------------------------------------------------------------------
  */
 
+/* Answers behind the head cannot leave before it: it may start however many of them there are. */
+static bool has_answer_room(const struct call_queue *queue, const struct call *call, size_t limit)
+{
+    return queue->answer_bytes < limit || (call == queue->first && limit > 0);
+}
+
 void call_queue_start(struct call_queue *queue, size_t answer_bytes_limit)
 {
-    while (queue->to_start && queue->answer_bytes < answer_bytes_limit && !queue->broken) {
+    if (queue->answer_bytes < answer_bytes_limit) {
+        unpack_batch(queue);
+    }
+    while (queue->to_start && !queue->broken) {
         struct call *call = queue->to_start;
+        if (!has_answer_room(queue, call, answer_bytes_limit)) {
+            return;
+        }
         if (call->state != CALL_WAITING) {
             queue->to_start = call->next;
             continue;
@@ -189,6 +230,7 @@ static void remove_call(struct call_queue *queue, struct call *call)
     if (queue->to_start == call) {
         queue->to_start = call->next;
     }
+    queue->count--;
     queue->line_bytes -= call->line_bytes;
     queue->answer_bytes -= call->answer_bytes;
     free_call(call);
@@ -286,16 +328,25 @@ int call_queue_collect(struct call_queue *queue, struct call_text *text)
 
 bool call_queue_has_room(const struct call_queue *queue)
 {
-    return queue->line_bytes < LINE_BYTES_MOST;
+    return queue->line_bytes < LINE_BYTES_MOST && !queue->batch;
+}
+
+bool call_queue_has_batch_left(const struct call_queue *queue)
+{
+    return queue->batch && queue->count < BATCH_CALLS_AHEAD;
 }
 
 bool call_queue_is_empty(const struct call_queue *queue)
 {
-    return queue->first == NULL;
+    return queue->first == NULL && !queue->batch;
 }
 
 void call_queue_abandon(struct call_queue *queue)
 {
+    if (queue->batch) {
+        queue->line_bytes -= queue->batch_bytes;
+        drop_batch(queue);
+    }
     struct call *call = queue->first;
     while (call) {
         struct call *next = call->next;

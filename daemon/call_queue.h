@@ -44,6 +44,10 @@ struct call_queue {
     struct call *first;
     struct call *last;
     struct call *to_start; /* the first that waits; NULL: none */
+    size_t count;
+    json_t *batch; /* the one whose calls are being made; NULL: none */
+    size_t batch_at;
+    size_t batch_bytes;
     size_t running;
     enum method_kind running_kind; /* where any runs */
     size_t line_bytes;             /* of lines with calls in the queue */
@@ -74,6 +78,9 @@ int call_queue_collect(struct call_queue *queue, struct call_text *text)
 
 /* Whether there is room for another line. */
 bool call_queue_has_room(const struct call_queue *queue);
+
+/* Whether call_queue_start would make more calls of a batch, answers permitting. */
+bool call_queue_has_batch_left(const struct call_queue *queue);
 
 bool call_queue_is_empty(const struct call_queue *queue);
 

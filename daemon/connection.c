@@ -164,6 +164,7 @@ static void on_alloc(uv_handle_t *handle, size_t suggested, uv_buf_t *buffer)
 {
     (void)suggested; /* it knows nothing of us */
     struct connection *connection = handle->data;
+    lines_shrink(&connection->lines, IDLE_BUFFER_BYTES);
     char *room = lines_room(&connection->lines, READ_BYTES);
     *buffer = (uv_buf_t){.base = room, .len = room ? READ_BYTES : 0};
 }
@@ -221,20 +222,34 @@ static void settle(struct connection *connection)
     }
 }
 
-static void pump_once(struct connection *connection)
+/* Closes the connection where it fails. */
+static int collect(struct connection *connection)
 {
-    size_t limit = connection->settings.unread_limit_bytes;
-    size_t unread = connection->filling.size + connection->writing.size;
-    bool has_left_lines = take_lines(connection);
-    call_queue_start(&connection->calls, limit > unread ? limit - unread : 0);
     if (connection->calls.broken ||
         call_queue_collect(&connection->calls, &connection->filling) < 0) {
         connection_close(connection);
+        return -1;
+    }
+    return 0;
+}
+
+static void pump_once(struct connection *connection)
+{
+    size_t limit = connection->settings.unread_limit_bytes;
+    bool has_left_lines = take_lines(connection);
+    if (collect(connection) < 0) {
+        return;
+    }
+    size_t unread = connection->filling.size + connection->writing.size;
+    call_queue_start(&connection->calls, limit > unread ? limit - unread : 0);
+    if (collect(connection) < 0) {
         return;
     }
     write_more(connection);
-    /* Notifications that were refused make room and nothing that would bring us back. */
-    if (has_left_lines && call_queue_has_room(&connection->calls)) {
+    /* What is refused at once makes room, and nothing that would bring us back. */
+    bool has_room = has_left_lines && call_queue_has_room(&connection->calls);
+    if ((has_room || call_queue_has_batch_left(&connection->calls)) &&
+        unread_bytes(connection) < limit) {
         connection->pump_again = true;
     }
 }

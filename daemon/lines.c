@@ -16,6 +16,14 @@ void lines_deinit(struct lines *lines)
     *lines = (struct lines){0};
 }
 
+void lines_shrink(struct lines *lines, size_t most_bytes)
+{
+    if (lines->start == lines->end && lines->capacity > most_bytes) {
+        free(lines->bytes);
+        *lines = (struct lines){.limit_bytes = lines->limit_bytes, .skipping = lines->skipping};
+    }
+}
+
 char *lines_room(struct lines *lines, size_t room)
 {
     if (lines->start > 0 && (lines->start == lines->end || lines->start > lines->capacity / 2)) {

@@ -34,6 +34,9 @@ void lines_deinit(struct lines *lines);
 char *lines_room(struct lines *lines, size_t room);
 void lines_added(struct lines *lines, size_t count);
 
+/* Gives memory beyond `most_bytes` back where nothing is held. */
+void lines_shrink(struct lines *lines, size_t most_bytes);
+
 /*
  * Takes the next line; *ret_line is ended by NUL (and may hold others) and is valid until the next
  * lines_room or lines_deinit; *ret_length is without the line end, *ret_taken with it.

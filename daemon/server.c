@@ -24,6 +24,7 @@
 
 enum {
     BACKLOG = 128,
+    ACCEPT_AGAIN_MS = 100,
     SOCKET_MODE_MASK = 0117 /* leaves 0660 */
 };
 
@@ -35,7 +36,8 @@ struct server {
     unsigned open;
     uv_pipe_t listener;
     uv_timer_t drain_timer;
-    unsigned handles; /* of the two above, not closed yet */
+    uv_timer_t accept_timer;
+    unsigned handles; /* of the three above, not closed yet */
     int lock_fd;
     bool draining;
     void (*done)(void *user);
@@ -76,6 +78,7 @@ static void free_when_over(struct server *server)
     }
     if (!uv_is_closing((uv_handle_t *)&server->drain_timer)) {
         uv_close((uv_handle_t *)&server->drain_timer, on_handle_closed);
+        uv_close((uv_handle_t *)&server->accept_timer, on_handle_closed);
     }
 }
 
@@ -105,13 +108,36 @@ static void add_connection(struct server *server, struct connection *connection)
     server->open++;
 }
 
+static void on_connection(uv_stream_t *listener, int status);
+
+static void on_accept_again(uv_timer_t *timer)
+{
+    struct server *server = timer->data;
+    if (!server->draining) {
+        on_connection((uv_stream_t *)&server->listener, 0);
+    }
+}
+
+/* libuv looks away until what it holds is accepted; without memory for that it must be later. */
+static void look_again_later(struct server *server, int code)
+{
+    if (code != UV_EAGAIN) { /* then nothing is held */
+        code = uv_timer_start(&server->accept_timer, on_accept_again, ACCEPT_AGAIN_MS, 0);
+        assert(code == 0); /* fails only without a callback */
+    }
+}
+
 static void on_connection(uv_stream_t *listener, int status)
 {
     struct server *server = listener->data;
     struct connection *connection = NULL;
-    if (status < 0 || server->draining ||
-        connection_accept(&server->connections, listener, &connection) < 0) {
-        return; /* libuv tells again when there is something to accept */
+    if (status < 0 || server->draining) {
+        return; /* libuv goes on watching */
+    }
+    int code = connection_accept(&server->connections, listener, &connection);
+    if (code < 0) {
+        look_again_later(server, code);
+        return;
     }
     add_connection(server, connection);
     if (server->open > server->settings.connections_limit) {
@@ -176,9 +202,12 @@ static int init_handles(uv_loop_t *loop, struct server *server)
     }
     code = uv_timer_init(loop, &server->drain_timer);
     assert(code == 0); /* libuv documents no failure */
+    code = uv_timer_init(loop, &server->accept_timer);
+    assert(code == 0);
     server->listener.data = server;
     server->drain_timer.data = server;
-    server->handles = 2;
+    server->accept_timer.data = server;
+    server->handles = 3;
     return 0;
 }
 
@@ -222,6 +251,7 @@ int server_new(uv_loop_t *loop, const struct server_settings *settings,
     if (code < 0) {
         uv_close((uv_handle_t *)&server->listener, on_handle_closed);
         uv_close((uv_handle_t *)&server->drain_timer, on_handle_closed);
+        uv_close((uv_handle_t *)&server->accept_timer, on_handle_closed);
         return code;
     }
     *ret_server = server;

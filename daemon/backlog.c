@@ -17,6 +17,10 @@ enum {
 /* The share of the promised time that the writer lets the trainer be behind. */
 static const double BEHIND_SHARE = 0.4;
 
+/* The share of what is learned that may be committed while the backlog of a start is learned, so
+ * that it does end. */
+static const double CATCH_UP_SHARE = 0.5;
+
 /* How fast the measured rate follows what is measured, per second of learning. */
 static const double RATE_FOLLOWS = 4.0;
 
@@ -32,7 +36,9 @@ struct backlog {
     pthread_cond_t learned_more;
     struct backlog_numbers numbers;
     uint64_t visible_within_ms;
-    uint64_t found;           /* changes up to here were there at the start: not promised */
+    uint64_t
+        found; /* up to here was there at the start, or came while that was learned: not promised */
+    uint64_t catch_up_room;   /* cost that may be committed meanwhile */
     uint64_t cost_behind;     /* of what is committed, not learned, and promised */
     double rate;              /* cost a second that the trainer does */
     struct mark marks[MARKS]; /* a ring, rising in both members: what is not learned yet */
@@ -53,6 +59,7 @@ int backlog_new(const struct backlog_start *start, struct backlog **ret_backlog)
     backlog->found = start->committed;
     backlog->visible_within_ms = start->visible_within_ms;
     backlog->rate = RATE_FIRST;
+    backlog->catch_up_room = ROOM_LEAST;
     int code = -pthread_mutex_init(&backlog->mutex, NULL);
     if (code < 0) {
         goto fail_mutex;
@@ -95,27 +102,30 @@ uint64_t backlog_cost(size_t text_bytes, size_t tags)
 /* --- writer -------------------------------------------------------------------------------------
  */
 
-static uint64_t room(const struct backlog *backlog)
-{
-    double most = backlog->rate * (double)backlog->visible_within_ms / 1000.0 * BEHIND_SHARE;
-    uint64_t limit = most > ROOM_LEAST ? (uint64_t)most : ROOM_LEAST;
-    return backlog->cost_behind < limit ? limit - backlog->cost_behind : 0;
-}
-
-/* While the backlog of a start is being learned, feeding goes on at full speed. */
+/* While the backlog of a start is being learned nothing is promised, and what is committed
+ * meanwhile joins it. */
 static bool is_catching_up(const struct backlog *backlog)
 {
     return backlog->numbers.learned < backlog->found;
 }
 
+static uint64_t room(const struct backlog *backlog)
+{
+    if (is_catching_up(backlog)) {
+        return backlog->catch_up_room;
+    }
+    double most = backlog->rate * (double)backlog->visible_within_ms / 1000.0 * BEHIND_SHARE;
+    uint64_t limit = most > ROOM_LEAST ? (uint64_t)most : ROOM_LEAST;
+    return backlog->cost_behind < limit ? limit - backlog->cost_behind : 0;
+}
+
 uint64_t backlog_wait_for_room(struct backlog *backlog)
 {
     sync_lock(&backlog->mutex);
-    while (room(backlog) == 0 && !backlog->stopping && !backlog->trainer_failed &&
-           !is_catching_up(backlog)) {
+    while (room(backlog) == 0 && !backlog->stopping && !backlog->trainer_failed) {
         (void)pthread_cond_wait(&backlog->learned_more, &backlog->mutex);
     }
-    uint64_t cost = backlog->trainer_failed || is_catching_up(backlog) ? UINT64_MAX : room(backlog);
+    uint64_t cost = backlog->trainer_failed ? UINT64_MAX : room(backlog);
     sync_unlock(&backlog->mutex);
     return cost > 0 ? cost : 1;
 }
@@ -135,15 +145,31 @@ static void add_mark(struct backlog *backlog, struct mark mark)
 void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t now_ms)
 {
     sync_lock(&backlog->mutex);
+    if (is_catching_up(backlog)) {
+        backlog->found = seq;
+        backlog->catch_up_room -= cost < backlog->catch_up_room ? cost : backlog->catch_up_room;
+    } else {
+        backlog->cost_behind += cost;
+        add_mark(backlog, (struct mark){.seq = seq, .at_ms = now_ms});
+    }
     backlog->numbers.committed = seq;
-    backlog->cost_behind += cost;
-    add_mark(backlog, (struct mark){.seq = seq, .at_ms = now_ms});
     (void)pthread_cond_signal(&backlog->committed_more);
     sync_unlock(&backlog->mutex);
 }
 
 /* --- trainer ------------------------------------------------------------------------------------
  */
+
+void backlog_pause(struct backlog *backlog, uint64_t time_ms)
+{
+    struct timespec deadline = sync_deadline(time_ms);
+    sync_lock(&backlog->mutex);
+    int code = 0;
+    while (!backlog->stopping && code == 0) {
+        code = pthread_cond_timedwait(&backlog->committed_more, &backlog->mutex, &deadline);
+    }
+    sync_unlock(&backlog->mutex);
+}
 
 uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64_t timeout_ms)
 {
@@ -163,7 +189,9 @@ void backlog_learned(struct backlog *backlog, uint64_t seq, uint64_t cost, uint6
     sync_lock(&backlog->mutex);
     bool was_promised = seq > backlog->found;
     backlog->numbers.learned = seq;
-    if (was_promised) {
+    if (!was_promised) {
+        backlog->catch_up_room += (uint64_t)((double)cost * CATCH_UP_SHARE);
+    } else {
         backlog->cost_behind -= cost < backlog->cost_behind ? cost : backlog->cost_behind;
     }
     if (took_us > 0) {

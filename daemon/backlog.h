@@ -5,7 +5,8 @@
  * The promise it keeps: what was committed `visible_within` ago is learned. The writer waits before
  * it commits more than the trainer can learn in a part of that time; and a reader that comes while
  * the trainer is late all the same waits for it. What was there before a start is not promised:
- * it is a backlog that `learned` tells of.
+ * it is a backlog that `learned` tells of; what comes while it is learned joins it, at half the
+ * speed of learning, so that it ends.
  *
  * All functions may be called from any thread. Times are milliseconds of one steady clock.
  */
@@ -49,6 +50,9 @@ void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uin
  * Returns the last committed seq.
  */
 uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64_t timeout_ms);
+
+/* Waits for the time, or until it is to stop. */
+void backlog_pause(struct backlog *backlog, uint64_t time_ms);
 
 /* The model has learned up to `seq`; what is new of it cost this much and took this long. */
 void backlog_learned(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t took_us);

@@ -49,6 +49,13 @@ uid_t call_uid(const struct call *call);
  * -32603. */
 void call_answer_take(struct call *call, json_t *result);
 
+/* The text of an answer, made on any thread, for call_answer_text_take. NULL: no memory, or nobody
+ * wants an answer. The result is borrowed. */
+char *call_result_text(const struct call *call, json_t *result);
+
+/* Ends the call with such a text, which it takes; NULL as call_result_text gave it. */
+void call_answer_text_take(struct call *call, char *text);
+
 /* Ends the call with an error. */
 void call_fail(struct call *call, const struct fault *fault);
 

@@ -269,6 +269,16 @@ void call_answer_take(struct call *call, json_t *result)
     end_running(call, answer, wanted);
 }
 
+char *call_result_text(const struct call *call, json_t *result)
+{
+    return call->request.id ? rpc_result_text(call->request.id, result) : NULL;
+}
+
+void call_answer_text_take(struct call *call, char *text)
+{
+    end_running(call, text, call->request.id != NULL);
+}
+
 void call_fail(struct call *call, const struct fault *fault)
 {
     bool wanted = call->request.id != NULL;

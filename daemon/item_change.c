@@ -225,7 +225,7 @@ static int fault_of_change(const struct change_job *job, struct fault *fault)
         return 0;
     case STORE_REFUSED:
         if (change->has_too_many_words) {
-            return fault_set(fault, FAULT_LIMIT, "/text",
+            return fault_set(fault, FAULT_LIMIT, change->filing.text.size > 0 ? "/text" : "/title",
                              "An item holds at most words_limit different words, which is %zu: "
                              "file it in parts.",
                              change->words_limit);

@@ -122,7 +122,7 @@ static int take_out_words(struct gaps_job *job, const struct features_source *so
     struct features *features = job->workspace->features;
     int code = features_extract(features, source, job->id.size > 0 ? SIZE_MAX : job->words_limit);
     if (code == -E2BIG) {
-        return fault_set(&job->job.fault, FAULT_LIMIT, "/text",
+        return fault_set(&job->job.fault, FAULT_LIMIT, job->text.size > 0 ? "/text" : "/title",
                          "A draft holds at most words_limit different words, which is %zu.",
                          job->words_limit);
     }
@@ -264,7 +264,7 @@ static int check_id_alone(const json_t *params, struct fault *fault)
     for (size_t i = 0; DRAFT[i]; i++) {
         if (params_has(params, DRAFT[i])) {
             return fault_set(fault, FAULT_PARAMS, "/id",
-                             "Give id, or a draft, not both: there is %s beside id.", DRAFT[i]);
+                             "Give id, or a draft, not both: %s stands beside id.", DRAFT[i]);
         }
     }
     return 0;

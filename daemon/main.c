@@ -11,6 +11,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
+#include <sys/resource.h>
 #include <sys/stat.h>
 #include <sysexits.h>
 #include <systemd/sd-daemon.h>
@@ -23,7 +24,8 @@
 #include "daemon/server.h"
 
 enum {
-    SIGNALS = 3
+    SIGNALS = 3,
+    SPARE_DESCRIPTORS = 64
 };
 
 struct program {
@@ -91,8 +93,8 @@ static void reload(struct program *program)
     }
     size_t count = options_reload(&program->options, &wanted, &held_back);
     if (count > 0) {
-        log_line(LOG_CAUTION, "options were read again; %s%s takes a restart", held_back,
-                 count > 1 ? " and others" : "");
+        log_line(LOG_CAUTION, "options were read again; %s%s", held_back,
+                 count > 1 ? " and others take a restart" : " takes a restart");
     } else {
         log_line(LOG_NOTE, "options were read again");
     }
@@ -222,8 +224,25 @@ static void tell_ready(struct program *program)
     (void)sd_notify(0, "READY=1"); /* nobody may be listening */
 }
 
+/* As many descriptors as connections, and some for the store. */
+static void allow_descriptors(const struct options *options)
+{
+    struct rlimit limit;
+    rlim_t wanted = (rlim_t)options->connections_limit + SPARE_DESCRIPTORS;
+    if (getrlimit(RLIMIT_NOFILE, &limit) < 0 || limit.rlim_cur >= wanted) {
+        return;
+    }
+    limit.rlim_cur = wanted < limit.rlim_max ? wanted : limit.rlim_max;
+    if (setrlimit(RLIMIT_NOFILE, &limit) < 0 || limit.rlim_cur < wanted) {
+        log_line(LOG_CAUTION, "the system allows %llu open files, too few for %llu connections",
+                 (unsigned long long)limit.rlim_cur,
+                 (unsigned long long)options->connections_limit);
+    }
+}
+
 static int serve(struct program *program)
 {
+    allow_descriptors(&program->options);
     if (signal(SIGPIPE, SIG_IGN) == SIG_ERR || signal(SIGUSR1, SIG_IGN) == SIG_ERR) {
         return fail(EX_OSERR, strerror(errno));
     }

@@ -150,6 +150,12 @@ static int check_names(const json_t *list, const char *member, struct fault *fau
     if (!json_is_array(list)) {
         return refuse(fault, member, "is an array of strings.");
     }
+    if (json_array_size(list) > PARAMS_NAMES_MOST) {
+        char pointer[FAULT_FIELD_BYTES];
+        pointer_to_member(pointer, sizeof pointer, "", member);
+        return fault_set(fault, FAULT_LIMIT, pointer, "%s holds more than %d names.", member,
+                         PARAMS_NAMES_MOST);
+    }
     for (size_t i = 0; i < json_array_size(list); i++) {
         const char *wrong = wrong_with_name(json_array_get(list, i));
         if (wrong) {
@@ -223,9 +229,8 @@ int params_text(const json_t *params, const char *member, size_t limit, const ch
     if (json_string_length(value) > limit) {
         char pointer[FAULT_FIELD_BYTES];
         pointer_to_member(pointer, sizeof pointer, "", member);
-        return fault_set(fault, FAULT_LIMIT, pointer,
-                         "%s is longer than %s, %zu bytes: file it in parts.", member, limit_name,
-                         limit);
+        return fault_set(fault, FAULT_LIMIT, pointer, "%s is longer than %s, which is %zu bytes.",
+                         member, limit_name, limit);
     }
     *ret_text = text_of(value);
     return 0;

@@ -16,6 +16,7 @@
 
 enum {
     PARAMS_NAME_BYTES = 255,
+    PARAMS_NAMES_MOST = 100000, /* of one list; a longer one is not even looked at */
     PARAMS_LANGUAGE_BYTES = 35, /* RFC 5646, section 4.4.1: what every program should take */
     PARAMS_TIME_BYTES = 32
 };

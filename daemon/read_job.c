@@ -5,17 +5,21 @@
 static void end(struct read_job *job)
 {
     struct call *call = job->call;
-    json_t *result = job->result;
+    char *text = job->text;
+    bool has_result = job->result != NULL;
     struct fault fault = job->fault;
+    json_decref(job->result);
     if (job->release) {
         job->release(job);
     }
     free(job);
     if (fault.code != 0) {
-        json_decref(result);
+        free(text);
         call_fail(call, &fault);
+    } else if (has_result) {
+        call_answer_text_take(call, text);
     } else {
-        call_answer_take(call, result);
+        call_answer_take(call, NULL);
     }
 }
 
@@ -38,6 +42,9 @@ static void on_work(uv_work_t *work)
 {
     struct read_job *job = work->data;
     job->run(job);
+    if (job->result) {
+        job->text = call_result_text(job->call, job->result); /* a large one takes a while */
+    }
 }
 
 static void on_done(uv_work_t *work, int status)

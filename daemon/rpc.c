@@ -37,6 +37,11 @@ int rpc_parse(const char *line, size_t length, json_t **ret_text, struct fault *
     }
     json_error_t error;
     json_t *text = json_loadb(line, length, JSON_REJECT_DUPLICATES | JSON_DECODE_ANY, &error);
+    if (!text && json_error_code(&error) == json_error_null_character) {
+        return fault_set(fault, FAULT_PARSE, NULL,
+                         "The line cannot be parsed at byte %d: \\u0000 is not allowed.",
+                         error.position);
+    }
     if (!text) {
         return fault_set(fault, FAULT_PARSE, NULL, "The line cannot be parsed at byte %d: %s.",
                          error.position, error.text);

@@ -23,6 +23,8 @@ enum {
     CHANGES_A_VIEW = 64,
     IDLE_MS = 1000,
     HELD_BACK_MS = 50,
+    TRY_AGAIN_MS = 5000,
+    FINISH_MS = 3000,      /* the longest time that stopping spends on overwriting */
     FLUSH_SHARE = 10,      /* storing takes a tenth of the time at most */
     SCRUB_PAGES = 1024,    /* overwritten at a time */
     ROUND_LIMIT_US = 20000 /* a view that has been open this long is given up */
@@ -123,13 +125,21 @@ static int learn_change(struct trainer *trainer, struct store_view *view, uint64
                                   (unsigned long long)seq);
 }
 
+static void wait_for_store(struct trainer *trainer, const struct store_error *error)
+{
+    troubles_begin(trainer->settings.troubles, TROUBLE_LEARNING,
+                   "learning waits for the store (%s)", error->text);
+    backlog_pause(trainer->settings.backlog, IDLE_MS);
+}
+
 /* Learns changes up to `last`, as many as one short view allows. */
 static int learn_some(struct trainer *trainer, uint64_t last, struct store_error *error)
 {
     struct store_view *view = NULL;
     int code = store_read(trainer->settings.store, &view, error);
     if (code != STORE_OK) {
-        return code;
+        wait_for_store(trainer, error); /* no change was skipped */
+        return STORE_OK;
     }
     uint64_t begun_us = clock_steady_us();
     for (size_t i = 0; i < CHANGES_A_VIEW && trainer->learned < last; i++) {
@@ -147,6 +157,9 @@ static int learn_some(struct trainer *trainer, uint64_t last, struct store_error
         }
     }
     store_end(view);
+    if (code == STORE_OK) {
+        troubles_end(trainer->settings.troubles, TROUBLE_LEARNING);
+    }
     return code;
 }
 
@@ -190,8 +203,13 @@ static void scrub(struct trainer *trainer)
     struct store_error error = {0};
     size_t left = 0;
     if (model_store_scrub(trainer->settings.model_store, SCRUB_PAGES, &left, &error) != STORE_OK) {
-        troubles_begin(trainer->settings.troubles, TROUBLE_ERASING,
+        troubles_begin(trainer->settings.troubles, TROUBLE_FORGETTING,
                        "forgotten words may still be in the model's file (%s)", error.text);
+        backlog_pause(trainer->settings.backlog, TRY_AGAIN_MS);
+        return;
+    }
+    if (left == 0) {
+        troubles_end(trainer->settings.troubles, TROUBLE_FORGETTING);
     }
     /* What does not get less is held by a reader, who will be gone soon. */
     trainer->scrub_is_held = left > 0 && left >= trainer->scrub_left && trainer->scrub_left > 0;
@@ -221,6 +239,15 @@ static uint64_t idle_ms(const struct trainer *trainer)
     return most_ms < IDLE_MS ? most_ms : IDLE_MS;
 }
 
+/* What was forgotten shall not wait in the file for the next start. */
+static void finish_scrubbing(struct trainer *trainer)
+{
+    uint64_t last_us = clock_steady_us() + FINISH_MS * 1000ULL;
+    while (trainer->scrub_due && clock_steady_us() < last_us) {
+        scrub(trainer);
+    }
+}
+
 static void *run(void *argument)
 {
     struct trainer *trainer = argument;
@@ -243,6 +270,7 @@ static void *run(void *argument)
     if (trainer->learned > trainer->kept && !trainer->failed) {
         store_model(trainer);
     }
+    finish_scrubbing(trainer);
     return NULL;
 }
 

@@ -8,10 +8,11 @@
 #include <pthread.h>
 
 enum trouble {
-    TROUBLE_STORING,  /* changes cannot be written */
-    TROUBLE_ERASING,  /* what was erased may still be in the files */
-    TROUBLE_LEARNING, /* learning has stopped */
-    TROUBLE_KEEPING,  /* what was learned cannot be written */
+    TROUBLE_STORING,    /* changes cannot be written */
+    TROUBLE_ERASING,    /* what was erased may still be in the store's file */
+    TROUBLE_FORGETTING, /* what was forgotten may still be in the model's */
+    TROUBLE_LEARNING,   /* learning has stopped */
+    TROUBLE_KEEPING,    /* what was learned cannot be written */
     TROUBLE_KINDS
 };
 

@@ -4,9 +4,9 @@
  * back. While nothing is queued, erase the rest, and overwrite what that left in the file.
  *
  * Failure paths: a change that is refused (an unknown tag, no such item) has changed nothing, and
- * the group goes on without it. When the view itself fails, the group has changed nothing; where
- * there was no room the changes are tried one by one, so that a large one does not take the others
- * with it.
+ * the group goes on without it. When the view itself fails, the group has changed nothing; the
+ * changes are then tried one by one, so that a large or a damaged one does not take the others with
+ * it. What cannot be erased or overwritten is tried again after a while.
  */
 #include "daemon/writer.h"
 
@@ -21,7 +21,9 @@ enum {
     GROUP_CHANGES = 256,
     ERASED_A_COMMIT = 256,
     SCRUB_PAGES = 1024,
-    HELD_BACK_MS = 50
+    HELD_BACK_MS = 50,
+    TRY_AGAIN_MS = 5000,
+    FINISH_MS = 3000 /* the longest time that stopping spends on overwriting */
 };
 
 #define WAIT_FOR_EVER UINT64_MAX
@@ -123,7 +125,8 @@ static enum store_code commit(struct writer *writer, struct change *group,
             store_end(view);
             return error->code;
         }
-        cost += change->code == STORE_OK ? cost_of(change) : 0;
+        bool is_new = change->code == STORE_OK && change->filed.seq > before;
+        cost += is_new ? cost_of(change) : 0;
     }
     uint64_t after = store_view_totals(view).seq;
     if (after == before) {
@@ -212,7 +215,8 @@ static void commit_next_group(struct writer *writer)
     for (struct change *change = group; change; change = change->next) {
         change->has_too_many_words = has_too_many_words(writer, change);
     }
-    if (commit_or_refuse(writer, group) == STORE_FULL) {
+    enum store_code code = commit_or_refuse(writer, group);
+    if (code != STORE_OK && code != STORE_BROKEN) {
         commit_one_by_one(writer, group);
     }
     hand_back(writer, group);
@@ -228,15 +232,15 @@ static void tell_erasing(struct writer *writer, const struct store_error *error)
                    error->text);
 }
 
-/* Erases some of what the stored model has passed; says whether there may be more. */
-static bool erase_some(struct writer *writer, uint64_t kept)
+/* Erases some of what the stored model has passed; says how long to wait before going on. */
+static uint64_t erase_some(struct writer *writer, uint64_t kept)
 {
     struct store_error error = {0};
     struct store_view *view = NULL;
     size_t erased = 0;
     if (store_write(writer->settings.store, &view, &error) != STORE_OK) {
         tell_erasing(writer, &error);
-        return false;
+        return TRY_AGAIN_MS;
     }
     int code = store_erase_passed(view, kept, ERASED_A_COMMIT, &erased, &error);
     if (code != STORE_OK || erased == 0) {
@@ -247,8 +251,12 @@ static bool erase_some(struct writer *writer, uint64_t kept)
     }
     if (code != STORE_OK) {
         tell_erasing(writer, &error);
+        return TRY_AGAIN_MS;
     }
-    return code == STORE_OK && erased == ERASED_A_COMMIT;
+    if (erased < ERASED_A_COMMIT) {
+        writer->erased = kept;
+    }
+    return 0;
 }
 
 /* Overwrites some of what was erased; says how long to wait before going on. */
@@ -273,10 +281,7 @@ static uint64_t keep_up(struct writer *writer)
 {
     uint64_t kept = backlog_read(writer->settings.backlog).kept;
     if (kept != writer->erased) {
-        if (!erase_some(writer, kept)) {
-            writer->erased = kept;
-        }
-        return 0;
+        return erase_some(writer, kept);
     }
     return writer->scrub_due ? scrub_some(writer) : WAIT_FOR_EVER;
 }
@@ -303,6 +308,14 @@ static bool wait_for_changes(struct writer *writer, uint64_t most_ms, bool *ret_
     return goes_on;
 }
 
+/* What was withdrawn shall not wait in the file for the next start. */
+static void finish_erasing(struct writer *writer)
+{
+    uint64_t last_ms = clock_steady_ms() + FINISH_MS;
+    while (keep_up(writer) < TRY_AGAIN_MS && clock_steady_ms() < last_ms) {
+    }
+}
+
 static void *run(void *argument)
 {
     struct writer *writer = argument;
@@ -316,6 +329,7 @@ static void *run(void *argument)
             wait_ms = keep_up(writer);
         }
     }
+    finish_erasing(writer);
     return NULL;
 }
 

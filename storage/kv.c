@@ -39,7 +39,7 @@ int kv_translate(const struct kv *kv, int code, const char *doing, struct store_
         return store_fail(error, STORE_NO_MEMORY, "out of memory while %s", doing);
     case MDB_MAP_FULL:
         return store_fail(error, STORE_FULL,
-                          "%s has reached its largest size (option map_size) while %s",
+                          "%s has reached its largest size while %s: raise map_size and restart",
                           kv->directory, doing);
     case ENOSPC:
     case EDQUOT:
@@ -57,8 +57,8 @@ int kv_translate(const struct kv *kv, int code, const char *doing, struct store_
     case EROFS:
     case ENOENT:
     case ENOTDIR:
-        return store_fail(error, STORE_DENIED, "%s cannot be opened: %s", kv->directory,
-                          mdb_strerror(code));
+        return store_fail(error, kv->is_open ? STORE_BROKEN : STORE_DENIED,
+                          "%s cannot be opened: %s", kv->directory, mdb_strerror(code));
     default:
         return store_fail(error, STORE_BROKEN, "%s: %s while %s", kv->directory, mdb_strerror(code),
                           doing);
@@ -176,6 +176,7 @@ int kv_open(const struct kv_settings *settings, struct kv **ret_kv, struct store
         kv_close(made);
         return result;
     }
+    made->is_open = true;
     *ret_kv = made;
     return STORE_OK;
 }
@@ -231,7 +232,9 @@ static int enter(struct kv *kv, bool write, struct store_error *error)
     while (kv->is_shut) {
         (void)pthread_cond_wait(&kv->moved, &kv->gate); /* likewise; it is looked at again */
     }
-    bool open = kv->env != NULL;
+    /* A round of scrubbing may have failed to open it again: perhaps now. */
+    struct store_error reason = {0};
+    bool open = kv->env || kv_open_environment(kv, &reason) == STORE_OK;
     bool refused = write && atomic_load(&kv->broken);
     kv->running += open && !refused ? 1 : 0;
     (void)pthread_mutex_unlock(&kv->gate);
@@ -239,8 +242,8 @@ static int enter(struct kv *kv, bool write, struct store_error *error)
         return STORE_OK;
     }
     if (!open) {
-        return store_fail(error, STORE_BROKEN, "%s could not be opened again: it needs a restart",
-                          kv->directory);
+        return store_fail(error, STORE_BROKEN, "%s could not be opened again (%s)", kv->directory,
+                          reason.text);
     }
     return store_fail(error, STORE_BROKEN,
                       "an earlier write to %s failed: nothing is written until a restart",
@@ -287,7 +290,12 @@ int kv_commit(struct kv_txn *txn, struct store_error *error)
         kv_abort(txn);
         return error->code;
     }
-    int result = kv_translate(kv, mdb_txn_commit(txn->txn), "committing", error);
+    int code = mdb_txn_commit(txn->txn);
+    struct store_error full = {0};
+    if (code == EIO && txn->write && check_room(kv, &full) != STORE_OK) {
+        code = ENOSPC; /* a write cut short by a full disk; the environment is as it was */
+    }
+    int result = kv_translate(kv, code, "committing", error);
     if (result != STORE_OK && result != STORE_FULL && result != STORE_NO_MEMORY) {
         atomic_store(&kv->broken, true);
     }

@@ -25,6 +25,7 @@ struct kv {
     const char *const *names;
     unsigned table_count;
     MDB_dbi tables[KV_TABLES];
+    bool is_open;       /* kv_open has succeeded: a failure now is one of its use */
     atomic_bool broken; /* a write failed in a way that leaves the file in doubt */
     struct kv_round round;
     pthread_mutex_t gate; /* over the three below */

@@ -311,7 +311,9 @@ static int begin_round(struct kv *kv, struct store_error *error)
     size_t page_bytes = 0;
     (void)pthread_mutex_lock(&kv->gate); /* fails only for mutexes of other kinds */
     if (shut(kv)) {
-        mdb_env_close(kv->env);
+        if (kv->env) {
+            mdb_env_close(kv->env);
+        }
         kv->env = NULL;
         result = kv_open_environment(kv, error);
         if (result == STORE_OK) {
@@ -338,7 +340,7 @@ int kv_scrub(struct kv *kv, size_t most_pages, size_t *ret_left, struct store_er
         *ret_left = 0;
         return STORE_OK;
     }
-    if (!kv->env || atomic_load(&kv->broken)) {
+    if (atomic_load(&kv->broken)) {
         return store_fail(error, STORE_BROKEN, "an earlier write to %s failed", kv->directory);
     }
     int result = is_under_way(kv) ? STORE_OK : begin_round(kv, error);
@@ -347,10 +349,7 @@ int kv_scrub(struct kv *kv, size_t most_pages, size_t *ret_left, struct store_er
                               "scrubbing", error);
     }
     if (result != STORE_OK) {
-        kv->round = (struct kv_round){.due = true};
-        if (result != STORE_FULL && result != STORE_NO_MEMORY) {
-            atomic_store(&kv->broken, true);
-        }
+        kv->round = (struct kv_round){.due = true}; /* no byte that is read was changed */
         return result;
     }
     *ret_left = kv->round.end - kv->round.next + (kv->round.due ? 1 : 0);

@@ -102,6 +102,7 @@ int model_reserve_tags(struct model *model, size_t count)
         return -ENOMEM;
     }
     model->census[0] += (uint32_t)(count - model->tag_count);
+    model->unused_tags += count - model->tag_count;
     model->tag_count = count;
     return 0;
 }
@@ -110,6 +111,8 @@ void model_set_tag_counts(struct model *model, uint32_t tag, struct tag_counts c
 {
     model->census[census_bin(model->tags[tag].unprompted)]--;
     model->census[census_bin(counts.unprompted)]++;
+    model->unused_tags -= model->tags[tag].count == 0;
+    model->unused_tags += counts.count == 0;
     model->tags[tag] = counts;
 }
 

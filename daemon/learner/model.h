@@ -76,7 +76,7 @@ struct model_gap {
 struct model_answer {
     const struct model_gap *gaps; /* by falling chance; valid until the scratch is used again */
     size_t gap_count;
-    double expected; /* tags missing (or belonging), over all tags */
+    double expected; /* tags missing (or belonging), over all tags that some item has */
     bool early;
 };
 
@@ -97,7 +97,8 @@ int model_learn(struct model *model, const struct model_item *item,
                 const struct model_item *replaced, struct model_scratch *scratch)
     __attribute__((warn_unused_result));
 
-/* The tags that an item most probably lacks. Returns 0 or -ENOMEM. */
+/* The tags that an item most probably lacks; a tag that no item has (any more) is never one of
+ * them. Returns 0 or -ENOMEM. */
 int model_ask(const struct model *model, const struct model_question *question,
               struct model_scratch *scratch, struct model_answer *ret_answer)
     __attribute__((warn_unused_result));

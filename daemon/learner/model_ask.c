@@ -64,9 +64,18 @@ static void refresh_curve(const struct model *model, struct model_scratch *scrat
 /* --- the sum over all tags ----------------------------------------------------------------------
  */
 
+/* A tag that no item has (any more): all that the learner knows of it may be a mistake. */
+static bool is_unused(const struct asker *asker, uint32_t tag)
+{
+    return asker->model->tags[tag].count == 0;
+}
+
 /* What a tag at the floor adds to the expected number. */
 static chance_sum rest_chance(const struct asker *asker, uint32_t tag)
 {
+    if (is_unused(asker, tag)) {
+        return 0;
+    }
     if (!asker->question->tagged) {
         return asker->scratch->rest_belongs;
     }
@@ -78,13 +87,13 @@ static chance_sum rest_of_all(const struct asker *asker)
 {
     const struct model *model = asker->model;
     if (!asker->question->tagged) {
-        return asker->scratch->rest_belongs * model->tag_count;
+        return asker->scratch->rest_belongs * (model->tag_count - model->unused_tags);
     }
     chance_sum sum = 0;
     for (size_t b = 0; b < CENSUS_BINS; b++) {
         sum += asker->scratch->rest_missing[b] * model->census[b];
     }
-    return sum;
+    return sum - asker->scratch->rest_missing[0] * model->unused_tags; /* given 0 times: bin 0 */
 }
 
 /* Marks what may not be proposed; returns what those tags would add at the floor. */
@@ -138,7 +147,8 @@ static int gather_touched(const struct asker *asker, chance_sum barred_rest, siz
         uint32_t tag = touched[i];
         double score =
             (double)weights_tag_score(asker->model->weights, asker->scratch->weights, tag);
-        if (asker->scratch->barred[tag] || score <= CALIBRATION_FLOOR_SCORE) {
+        if (asker->scratch->barred[tag] || is_unused(asker, tag) ||
+            score <= CALIBRATION_FLOOR_SCORE) {
             continue;
         }
         double chance = tag_chance(asker, tag, score);
@@ -164,7 +174,8 @@ static int gather_every(const struct asker *asker, bool touched_too, size_t *ret
     for (uint32_t tag = 0; tag < asker->model->tag_count; tag++) {
         double score =
             (double)weights_tag_score(asker->model->weights, asker->scratch->weights, tag);
-        if (asker->scratch->barred[tag] || (!touched_too && score > CALIBRATION_FLOOR_SCORE)) {
+        if (asker->scratch->barred[tag] || is_unused(asker, tag) ||
+            (!touched_too && score > CALIBRATION_FLOOR_SCORE)) {
             continue;
         }
         double chance = tag_chance(asker, tag, score);

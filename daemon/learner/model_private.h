@@ -30,6 +30,7 @@ struct model {
     size_t tag_count; /* tags below this number are known */
     size_t tag_capacity;
     uint32_t census[CENSUS_BINS]; /* tags by unprompted count; sums to tag_count */
+    size_t unused_tags;           /* that no item has: never proposed, nothing expected of them */
     struct calibration calibration;
     uint64_t documents;
     uint64_t factor_count;

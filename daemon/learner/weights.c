@@ -3,10 +3,10 @@
 #include <errno.h>
 #include <math.h>
 #include <stdlib.h>
-#include <string.h>
 
 #include "daemon/grow.h"
 #include "daemon/learner/marks.h"
+#include "daemon/learner/weights_private.h"
 #include "daemon/learner/weights_scratch.h"
 
 static const float BASE_SCORE = -1.0F;
@@ -14,34 +14,22 @@ static const float BASE_SCORE = -1.0F;
 /* AdaGrad's accumulators start here, so that the first rate is finite. */
 static const float FIRST_ACCUMULATOR = 0.1F;
 
+/*
+ * The bias is a feature of this value. Measured on two corpora, one pass: against 1, tail recall@10
+ * rises by .013 and .019 and PSP@5 by .002 and .006, P@1 and P@5 fall by .001 on one of them.
+ */
+static const float BIAS_FEATURE = 0.5F;
+
+/*
+ * The bias speaks for a tag on every item, so it stays at 0 or below until this many items have the
+ * tag: one that has just been opened would be proposed everywhere until enough items had pushed it
+ * down again.
+ */
+static const uint32_t BIAS_LEAST_COUNT = 10;
+
 /* The logistic loss is nowhere 0: a rival is touched only while its chance by the margin, σ(s), is
  * above this. */
 static const double LOGISTIC_LEAST_RIVAL = 0.05;
-
-struct tag_entry {
-    struct weights_bias bias;
-    uint32_t raised_at; /* 1 + place in `raised`, 0 when not there */
-};
-
-/*
- * `raised` lists the tags whose bias alone lifts them above the floor: an item touches them even if
- * it shares no word with them. Invariant: raised[biases[t].raised_at - 1] == t.
- */
-struct weights {
-    struct weights_settings settings;
-    struct postings *words;
-    size_t word_capacity;
-    struct tag_entry *biases;
-    size_t tag_count;
-    size_t tag_capacity;
-    uint32_t *raised;
-    size_t raised_count;
-    size_t raised_capacity;
-    uint64_t posting_count;
-    uint64_t posting_bytes;
-    struct marks changed_words;
-    struct marks changed_tags;
-};
 
 int weights_new(const struct weights_settings *settings, struct weights **ret_weights)
 {
@@ -96,8 +84,7 @@ uint64_t weights_bytes(const struct weights *weights)
            marks_bytes(&weights->changed_words) + marks_bytes(&weights->changed_tags);
 }
 
-/* Puts the tag on the list of raised ones, or takes it off, as its bias asks for. */
-static void refresh_raised(struct weights *weights, uint32_t tag)
+void weights_refresh_raised(struct weights *weights, uint32_t tag)
 {
     struct tag_entry *entry = &weights->biases[tag];
     bool is_raised = BASE_SCORE + entry->bias.value > WEIGHTS_FLOOR_SCORE;
@@ -237,7 +224,9 @@ static int activate(struct weights *weights, uint32_t tag, float sign, double fa
     struct scratch_active *active = &scratch->active[scratch->active_count++];
     *active = (struct scratch_active){
         .tag = tag, .sign = sign, .factor = factor, .margin = margin, .slope = (float)slope};
-    active->bias_rate = adagrad_rate(&weights->biases[tag].bias.accumulator, active->slope, step);
+    active->bias_rate =
+        BIAS_FEATURE * BIAS_FEATURE *
+        adagrad_rate(&weights->biases[tag].bias.accumulator, active->slope * BIAS_FEATURE, step);
     active->curvature = (double)active->bias_rate;
     scratch->slot[tag] = (uint32_t)scratch->active_count;
     return 0;
@@ -349,6 +338,21 @@ static int collect_hits(struct weights *weights, const struct weights_feature *f
     return scratch->hit_count > hits_before ? marks_add(&weights->changed_words, feature->word) : 0;
 }
 
+/* Of the tags that have learned alone: they are marked as changed, and what is right already stays
+ * as it is. */
+static void hold_young_biases(struct weights *weights, const struct weights_given *given,
+                              size_t given_count, const struct weights_scratch *scratch)
+{
+    for (size_t i = 0; i < given_count; i++) {
+        struct weights_bias *bias = &weights->biases[given[i].tag].bias;
+        if (scratch->slot[given[i].tag] != 0 && given[i].tag_count < BIAS_LEAST_COUNT &&
+            bias->value > 0.0F) {
+            bias->value = 0.0F;
+            weights_refresh_raised(weights, given[i].tag);
+        }
+    }
+}
+
 static void take_steps(struct weights *weights, struct weights_scratch *scratch)
 {
     for (size_t i = 0; i < scratch->active_count; i++) {
@@ -357,7 +361,7 @@ static void take_steps(struct weights *weights, struct weights_scratch *scratch)
                                        active->curvature);
         weights->biases[active->tag].bias.value +=
             (float)active->alpha * active->sign * active->bias_rate;
-        refresh_raised(weights, active->tag);
+        weights_refresh_raised(weights, active->tag);
     }
     for (size_t i = 0; i < scratch->hit_count; i++) {
         const struct scratch_hit *hit = &scratch->hits[i];
@@ -377,6 +381,7 @@ int weights_learn(struct weights *weights, const struct weights_feature *x, size
     }
     if (result == 0) {
         take_steps(weights, scratch);
+        hold_young_biases(weights, given, given_count, scratch);
     }
     scratch_end_learning(scratch, given, given_count);
     return result;
@@ -391,98 +396,4 @@ void weights_forget_word(struct weights *weights, uint32_t word)
     weights->posting_count -= postings->count;
     weights->posting_bytes -= postings_bytes(postings);
     postings_deinit(postings);
-}
-
-/* --- storing ------------------------------------------------------------------------------------
- */
-
-int weights_changed_chunks(const struct weights *weights,
-                           int (*each)(void *user, const struct weights_chunk *chunk), void *user)
-{
-    for (size_t i = 0; i < weights->changed_words.count; i++) {
-        uint32_t word = weights->changed_words.list[i];
-        const struct postings *postings = &weights->words[word];
-        uint32_t chunks = postings_chunks(postings);
-        for (uint32_t c = 0; c < chunks; c++) {
-            if (!postings->changed[c]) {
-                continue;
-            }
-            uint32_t first = c * POSTINGS_CHUNK;
-            uint32_t left = postings->count - first;
-            struct weights_chunk chunk = {.word = word,
-                                          .number = c,
-                                          .count = left < POSTINGS_CHUNK ? left : POSTINGS_CHUNK,
-                                          .tags = postings->tags + first,
-                                          .values = postings->values + first,
-                                          .accumulators = postings->accumulators + first};
-            int result = each(user, &chunk);
-            if (result != 0) {
-                return result;
-            }
-        }
-    }
-    return 0;
-}
-
-struct weights_bias weights_bias(const struct weights *weights, uint32_t tag)
-{
-    return tag < weights->tag_count ? weights->biases[tag].bias : (struct weights_bias){0};
-}
-
-const struct marks *weights_changed_tags(const struct weights *weights)
-{
-    return &weights->changed_tags;
-}
-
-int weights_mark_tag(struct weights *weights, uint32_t tag)
-{
-    return marks_add(&weights->changed_tags, tag);
-}
-
-void weights_clean(struct weights *weights)
-{
-    for (size_t i = 0; i < weights->changed_words.count; i++) {
-        struct postings *postings = &weights->words[weights->changed_words.list[i]];
-        if (postings->count > 0) {
-            memset(postings->changed, 0, postings_chunks(postings));
-        }
-    }
-    marks_clear(&weights->changed_words);
-    marks_clear(&weights->changed_tags);
-}
-
-int weights_restore_chunk(struct weights *weights, const struct weights_chunk *chunk)
-{
-    if (GROW(&weights->words, &weights->word_capacity, (size_t)chunk->word + 1) < 0) {
-        return -ENOMEM;
-    }
-    struct postings *postings = &weights->words[chunk->word];
-    if (chunk->count > POSTINGS_CHUNK ||
-        postings->count != (uint64_t)chunk->number * POSTINGS_CHUNK) {
-        return -EINVAL;
-    }
-    uint64_t bytes_before = postings_bytes(postings);
-    for (uint32_t j = 0; j < chunk->count; j++) {
-        if (weights_reserve_tags(weights, (size_t)chunk->tags[j] + 1) < 0 ||
-            postings_append(postings, chunk->tags[j], chunk->values[j], chunk->accumulators[j]) <
-                0) {
-            return -ENOMEM;
-        }
-    }
-    if (chunk->count > 0) {
-        postings->changed[chunk->number] = 0;
-    }
-    weights->posting_count += chunk->count;
-    weights->posting_bytes += postings_bytes(postings) - bytes_before;
-    return 0;
-}
-
-int weights_restore_bias(struct weights *weights, uint32_t tag, struct weights_bias bias)
-{
-    if (weights_reserve_tags(weights, (size_t)tag + 1) < 0) {
-        return -ENOMEM;
-    }
-    weights->biases[tag].bias = bias;
-    refresh_raised(weights, tag);
-    return 0;
 }

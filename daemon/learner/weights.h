@@ -9,6 +9,12 @@
  * others. Only a tag that an item has may create a weight. Learning is AdaGrad (Duchi et al. 2011)
  * with the importance-aware step of surrogate.h.
  *
+ * The bias is learned as the weight of a feature of value .5 that every item has: with the loss's
+ * slope g its gradient is .5·g, its rate r = η/√(.1 + G) where G sums (.5·g)², and it adds .5²·r to
+ * the curvature D; b_l, which is .5 times that weight, moves by y·α·.5²·r. It speaks for the tag on
+ * every item, so it is held: an example of a tag that fewer than ten items have leaves it at 0 or
+ * below.
+ *
  * Nothing here is locked: many threads may score (each with its own scratch) while none learns.
  */
 #ifndef UNDERTAG_WEIGHTS_H
@@ -129,7 +135,7 @@ int weights_changed_chunks(const struct weights *weights,
                            int (*each)(void *user, const struct weights_chunk *chunk), void *user)
     __attribute__((warn_unused_result));
 
-/* A tag's bias b_l and its accumulator, to be stored when the tag is among the changed ones. */
+/* A tag's bias b_l and its accumulator G, to be stored when the tag is among the changed ones. */
 struct weights_bias {
     float value;
     float accumulator;

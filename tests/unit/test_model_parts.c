@@ -173,7 +173,10 @@ static void one_item_puts_out_what_it_touched_alone(void **state)
     struct memory *memory = new_memory();
     (void)state;
     learner_renew(&learner, &settings);
-    learner_file(&learner, "fog", TAGS(0));
+    for (int i = 0; i < 10; i++) {
+        learner_file(&learner, "fog", TAGS(0));
+    }
+    learner_file(&learner, "horn", TAGS(0)); /* which the words before it say nothing of */
     memory_store(memory, learner.model);
     learner_file(&learner, "bell lamp", TAGS(1));
     memory_store(memory, learner.model);
@@ -344,6 +347,51 @@ static void a_model_put_back_goes_on_to_the_same_numbers(void **state)
     learner_free(&stopped);
 }
 
+/* An entry revised, one withdrawn, and numbers below a used one that no item ever had: 0 and 1 have
+ * lost their items, 2 and 3 never had any, 4 is in use. */
+static void leave_tags_unused(const struct learner *learner)
+{
+    struct entry fog;
+    struct entry revised;
+    struct entry bell;
+    entry_set(&fog, "fog lamp", TAGS(0));
+    entry_set(&revised, "fog lamp", TAGS(4));
+    entry_set(&bell, "bell lamp", TAGS(1));
+    learner_change(learner, &fog, NULL);
+    learner_change(learner, &bell, NULL);
+    learner_change(learner, &revised, &fog);
+    learner_change(learner, NULL, &bell);
+}
+
+static void tags_that_no_item_has_are_as_unused_after_the_model_was_put_back(void **state)
+{
+    const struct model_settings settings = learner_settings();
+    struct learner whole = {0};
+    struct learner other = {0};
+    struct memory *memory = new_memory();
+    struct entry entry;
+    (void)state;
+    learner_renew(&whole, &settings);
+    learner_renew(&other, &settings);
+    leave_tags_unused(&whole);
+    memory_store(memory, whole.model);
+    memory_restore(memory, other.model);
+    for (int i = 0; i < 4; i++) {
+        entry_set(&entry, i % 2 == 0 ? "fog lamp" : "moon", NO_TAGS);
+        struct model_question question = entry_question(&entry);
+        question.tagged = i / 2 != 0;
+        struct model_answer first = learner_answer(&whole, &question);
+        struct model_answer second = learner_answer(&other, &question);
+        assert_int_equal(second.gap_count, 1);
+        assert_int_equal(second.gaps[0].tag, 4);
+        assert_near(second.expected, second.gaps[0].chance, 1e-11);
+        assert_same_answer(&first, &second);
+    }
+    free(memory);
+    learner_free(&whole);
+    learner_free(&other);
+}
+
 static void a_model_just_put_back_has_nothing_to_store(void **state)
 {
     const struct model_settings settings = learner_settings();
@@ -432,6 +480,7 @@ int main(void)
         cmocka_unit_test(whoever_stores_may_refuse_a_part),
         parts_test(the_same_items_give_the_same_model_whatever_the_key),
         parts_test(a_model_put_back_goes_on_to_the_same_numbers),
+        cmocka_unit_test(tags_that_no_item_has_are_as_unused_after_the_model_was_put_back),
         parts_test(a_model_just_put_back_has_nothing_to_store),
         parts_test(a_question_before_the_model_was_put_back_spoils_no_answer),
         cmocka_unit_test(a_word_is_not_put_back_twice),

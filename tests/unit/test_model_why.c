@@ -7,8 +7,10 @@ static void the_words_are_those_that_taught_the_tag(void **state)
 {
     const struct learner *learner = *state;
     struct entry entry;
-    learner_file(learner, "fog", TAGS(0));
-    learner_file(learner, "bell", TAGS(1));
+    for (int i = 0; i < 10; i++) { /* from the tenth on the bias may have a part */
+        learner_file(learner, "fog", TAGS(0));
+        learner_file(learner, "bell", TAGS(1));
+    }
     entry_set(&entry, "moon bell fog", NO_TAGS);
     struct model_question question = entry_question(&entry);
     question.why = true;
@@ -20,6 +22,20 @@ static void the_words_are_those_that_taught_the_tag(void **state)
     assert_int_equal(bell->word_count, 1);
     assert_int_equal(bell->words[0].feature, 1);
     assert_true(fog->words[0].share > 0.0 && fog->words[0].share < 1.0); /* the bias has a part */
+}
+
+/* Its bias is held at 0. */
+static void for_a_tag_just_opened_its_words_speak_alone(void **state)
+{
+    const struct learner *learner = *state;
+    struct entry entry;
+    learner_file(learner, "fog", TAGS(0));
+    entry_set(&entry, "moon fog", NO_TAGS);
+    struct model_question question = entry_question(&entry);
+    question.why = true;
+    struct model_answer answer = learner_answer(learner, &question);
+    assert_int_equal(answer.gaps[0].word_count, 1);
+    assert_near(answer.gaps[0].words[0].share, 1.0, 0.0);
 }
 
 static void the_shares_of_the_words_fall_and_sum_to_one_at_most(void **state)
@@ -88,17 +104,18 @@ static void of_many_words_the_strongest_eight_are_told(void **state)
 }
 
 /*
- * "fog" in both of two items: idf ln(1 + 2/2). "moon" in none weighs as in one, ln(1 + 2/1), and
- * half of that, since no other item shares it: x = .693147/√(.693147² + .549306²) = .783735. Of the
- * positive part w·x + b the share is s, so that x is the ratio of s/(1 - s) with "moon" and
- * without.
+ * "fog" in each of ten items: idf ln(1 + 10/10). "moon" in none weighs as in one, ln(1 + 10/1), and
+ * half of that, since no other item shares it: x = .693147/√(.693147² + 1.198948²) = .500506. Of
+ * the positive part w·x + b the share is s, so that x is the ratio of s/(1 - s) with "moon" and
+ * without; with ten items b is above 0.
  */
 static void a_word_that_no_other_item_holds_weighs_half(void **state)
 {
     const struct learner *learner = *state;
     double odds[2];
-    learner_file(learner, "fog", TAGS(0));
-    learner_file(learner, "fog", TAGS(0));
+    for (int i = 0; i < 10; i++) {
+        learner_file(learner, "fog", TAGS(0));
+    }
     for (int i = 0; i < 2; i++) {
         struct entry entry;
         entry_set(&entry, i == 0 ? "fog" : "fog moon", NO_TAGS);
@@ -107,7 +124,7 @@ static void a_word_that_no_other_item_holds_weighs_half(void **state)
         double share = learner_answer(learner, &question).gaps[0].words[0].share;
         odds[i] = share / (1.0 - share);
     }
-    assert_near(odds[1] / odds[0], 0.783735, 1e-5);
+    assert_near(odds[1] / odds[0], 0.500506, 1e-5);
 }
 
 static void words_are_told_when_they_are_asked_for_alone(void **state)
@@ -146,6 +163,7 @@ int main(void)
 #define stream_test(name) cmocka_unit_test_setup_teardown(name, stream_set_up, learner_tear_down)
     const struct CMUnitTest tests[] = {
         new_test(the_words_are_those_that_taught_the_tag),
+        new_test(for_a_tag_just_opened_its_words_speak_alone),
         stream_test(the_shares_of_the_words_fall_and_sum_to_one_at_most),
         new_test(of_many_words_the_strongest_eight_are_told),
         new_test(a_word_that_no_other_item_holds_weighs_half),

@@ -1,9 +1,12 @@
 /*
  * What one example does to the weights: AdaGrad (Duchi et al. 2011) with the importance-aware step.
  *
- * By hand, squared hinge, one word of x = 1, a tag never seen: s = -1, slope = -2·(1 + 1) = -4, so
- * that both accumulators become 16 and both rates .5/√(.1 + 16) = .124611; D = .249222,
- * α = 2·(1 - e^(-2·.249222))/.249222 = 3.150000; bias and weight become α·rate = .392525.
+ * By hand, squared hinge, one word of x = 1, a tag never learned that ten items have: s = -1,
+ * slope = -2·(1 + 1) = -4. The word's accumulator becomes 4² = 16 and its rate .5/√(.1 + 16) =
+ * .124611. The bias is a feature of value .5: its accumulator becomes (4·.5)² = 4, its rate
+ * .5/√(.1 + 4) = .246932, and .5² of that is .061733. D = .124611 + .061733 = .186344,
+ * α = 2·(1 - e^(-2·.186344))/.186344 = 3.339198; the weight becomes α·.124611 = .416101 and the
+ * bias α·.061733 = .206139.
  */
 #include "daemon/learner/weights.h"
 
@@ -15,10 +18,10 @@ static void the_first_example_by_hand(void **state)
     const struct fixture *fixture = *state;
     fixture_learn_one(fixture, 0, 0, 1.0);
     struct weights_bias bias = weights_bias(fixture->weights, 0);
-    assert_near((double)bias.value, 0.392525, 1e-5);
-    assert_near((double)bias.accumulator, 16.0, 1e-6);
-    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 2.0 * 0.392525, 1e-5);
-    assert_near(fixture_score_of(fixture, 5, 0), -1.0 + 0.392525, 1e-5);
+    assert_near((double)bias.value, 0.206139, 1e-5);
+    assert_near((double)bias.accumulator, 4.0, 1e-6);
+    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 0.206139 + 0.416101, 1e-5);
+    assert_near(fixture_score_of(fixture, 5, 0), -1.0 + 0.206139, 1e-5);
 }
 
 /* The gradient of the accumulator is that of the loss without the factor. */
@@ -27,9 +30,10 @@ static void a_factor_lengthens_the_step_and_not_the_accumulator(void **state)
     const struct fixture *fixture = *state;
     fixture_learn_one(fixture, 0, 0, 1.0);
     fixture_learn_one(fixture, 1, 1, 3.0);
-    /* D as before: 2·(1 - e^(-6·.249222)) = 1.551653 in all. */
-    assert_near(fixture_score_of(fixture, 1, 1), 0.551653, 1e-5);
-    assert_near((double)weights_bias(fixture->weights, 1).accumulator, 16.0, 1e-6);
+    /* Tag 0 is a rival by its bias and no more. For tag 1 D is as before: the score rises by
+     * 2·(1 - e^(-6·.186344)) = 1.346177 in all. */
+    assert_near(fixture_score_of(fixture, 1, 1), 0.346177, 1e-5);
+    assert_near((double)weights_bias(fixture->weights, 1).accumulator, 4.0, 1e-6);
 }
 
 static void no_factor_carries_a_score_beyond_one(void **state)
@@ -86,6 +90,84 @@ static void the_word_that_weighs_more_in_the_item_speaks_louder(void **state)
                 -1.0 + (double)weights_bias(fixture->weights, 0).value + (double)parts[0] +
                     (double)parts[1],
                 1e-6);
+}
+
+/* --- the bias of a tag that few items have ------------------------------------------------------
+ */
+
+/* Learns an item of one word, of a tag that `tag_count` items have by now. */
+static void learn_of_count(const struct fixture *fixture, uint32_t tag, uint32_t tag_count)
+{
+    const struct weights_feature x = fixture_word(0, 1.0F);
+    const struct weights_given given = {.tag = tag, .tag_count = tag_count, .factor = 1.0};
+    fixture_learn(fixture, &x, 1, &given, 1);
+}
+
+/* The first example's weight is that of the example by hand. */
+static void the_bias_of_a_new_tag_does_not_rise_above_zero(void **state)
+{
+    const struct fixture *fixture = *state;
+    learn_of_count(fixture, 0, 1);
+    assert_near((double)weights_bias(fixture->weights, 0).value, 0.0, 0.0);
+    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 0.416101, 1e-5);
+    for (uint32_t count = 2; count < 10; count++) {
+        learn_of_count(fixture, 0, count);
+        assert_near((double)weights_bias(fixture->weights, 0).value, 0.0, 0.0);
+    }
+    (void)fixture_score_of(fixture, 5, 0);
+    assert_false(weights_is_touched(fixture->scratch, 0));
+}
+
+static void from_the_tenth_item_on_a_tag_s_bias_may_rise_above_zero(void **state)
+{
+    const struct fixture *fixture = *state;
+    for (uint32_t count = 1; count <= 10; count++) {
+        learn_of_count(fixture, 0, count);
+    }
+    double at_ten = (double)weights_bias(fixture->weights, 0).value;
+    assert_true(at_ten > 0.0);
+    learn_of_count(fixture, 0, 11);
+    assert_true((double)weights_bias(fixture->weights, 0).value > at_ten);
+}
+
+/*
+ * As by hand, but lower. From a bias of -.5, s = -1.5: slope -5, accumulators 25 and 6.25, rates
+ * .099801 and .25·.198419 = .049605, D = .149405, α = 2.5·(1 - e^(-2·.149405))/.149405 = 4.322138:
+ * the bias rises by α·.049605 = .214399. From -.1 it would rise by about as much, to above 0.
+ */
+static void a_new_tag_s_bias_rises_to_zero_from_below(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_put_bias(fixture, 0, -0.5F);
+    fixture_put_bias(fixture, 1, -0.1F);
+    learn_of_count(fixture, 0, 1);
+    assert_near((double)weights_bias(fixture->weights, 0).value, -0.5 + 0.214399, 1e-5);
+    learn_of_count(fixture, 1, 1);
+    assert_near((double)weights_bias(fixture->weights, 1).value, 0.0, 0.0);
+}
+
+static void a_tag_that_has_lost_its_items_loses_its_bias_when_it_learns_again(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_put_bias(fixture, 0, 0.5F);
+    (void)fixture_score_of(fixture, 5, 0);
+    assert_true(weights_is_touched(fixture->scratch, 0));
+    learn_of_count(fixture, 0, 3);
+    assert_near((double)weights_bias(fixture->weights, 0).value, 0.0, 0.0);
+    (void)fixture_score_of(fixture, 5, 0);
+    assert_false(weights_is_touched(fixture->scratch, 0));
+    assert_int_equal(weights_changed_tags(fixture->weights)->count, 1);
+}
+
+/* Nothing moves without being marked as changed, the bias that would be held included. */
+static void a_bias_is_left_alone_where_there_is_nothing_to_learn(void **state)
+{
+    const struct fixture *fixture = *state;
+    fixture_put(fixture, 0, (const uint32_t[]){0}, (const float[]){2.0F}, 1); /* s = 1.5 */
+    fixture_put_bias(fixture, 0, 0.5F);
+    learn_of_count(fixture, 0, 3);
+    assert_near((double)weights_bias(fixture->weights, 0).value, 0.5, 0.0);
+    assert_int_equal(weights_changed_tags(fixture->weights)->count, 0);
 }
 
 /* --- rivals -------------------------------------------------------------------------------------
@@ -165,10 +247,10 @@ static void a_word_too_common_for_the_tag_creates_no_weight(void **state)
     const struct weights_settings settings = {.surrogate = SURROGATE_SQUARED_HINGE,
                                               .specificity = 100.0};
     assert_int_equal(fixture_renew(fixture, &settings), 0);
-    learn_common_word(fixture, 301, 3);
+    learn_common_word(fixture, 1001, 10);
     assert_int_equal(weights_postings(fixture->weights), 0);
     assert_true(weights_bias(fixture->weights, 0).value > 0.0F); /* the bias learns alone */
-    learn_common_word(fixture, 300, 3);
+    learn_common_word(fixture, 1000, 10);
     assert_int_equal(weights_postings(fixture->weights), 1);
 }
 
@@ -194,27 +276,29 @@ static void without_the_rule_every_word_may_speak(void **state)
 /* --- the other surrogates -----------------------------------------------------------------------
  */
 
-/* Slope -1: accumulators 1, rates .5/√1.1 = .476731, D = .953463, α = min(1, 2/D) = 1. */
+/* Slope -1: the word's accumulator 1, its rate .5/√1.1 = .476731; the bias's .5² = .25, and
+ * .25·.5/√.35 = .211289; D = .688020, α = min(1, 2/D) = 1. */
 static void the_first_example_by_the_hinge(void **state)
 {
     struct fixture *fixture = *state;
     const struct weights_settings settings = {.surrogate = SURROGATE_HINGE};
     assert_int_equal(fixture_renew(fixture, &settings), 0);
     fixture_learn_one(fixture, 0, 0, 1.0);
-    assert_near((double)weights_bias(fixture->weights, 0).accumulator, 1.0, 1e-6);
-    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 0.953463, 1e-5);
+    assert_near((double)weights_bias(fixture->weights, 0).accumulator, 0.25, 1e-6);
+    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 0.688020, 1e-5);
 }
 
-/* m = -1: slope -1/(1 + e^-1) = -.731059, accumulators .534447, rates .5/√.634447 = .627729,
- * D = 1.255459; z + e^(z-1) = 1.255459 + e^-1 has z = .802532. */
+/* m = -1: slope -1/(1 + e^-1) = -.731059, the word's accumulator .534447, its rate .5/√.634447 =
+ * .627729; the bias's a quarter of that, .133612, and .25·.5/√.233612 = .258620; D = .886350;
+ * z + e^(z-1) = .886350 + e^-1 has z = .590348. */
 static void the_first_example_by_the_logistic_loss(void **state)
 {
     struct fixture *fixture = *state;
     const struct weights_settings settings = {.surrogate = SURROGATE_LOGISTIC};
     assert_int_equal(fixture_renew(fixture, &settings), 0);
     fixture_learn_one(fixture, 0, 0, 1.0);
-    assert_near((double)weights_bias(fixture->weights, 0).accumulator, 0.534447, 1e-5);
-    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 0.802532, 1e-5);
+    assert_near((double)weights_bias(fixture->weights, 0).accumulator, 0.133612, 1e-5);
+    assert_near(fixture_score_of(fixture, 0, 0), -1.0 + 0.590348, 1e-5);
 }
 
 /* σ(s) = .05 at s = -2.944. */
@@ -240,6 +324,11 @@ int main(void)
         weights_test(what_is_right_already_is_not_learned_again),
         weights_test(the_same_example_again_comes_nearer_to_one),
         weights_test(the_word_that_weighs_more_in_the_item_speaks_louder),
+        weights_test(the_bias_of_a_new_tag_does_not_rise_above_zero),
+        weights_test(from_the_tenth_item_on_a_tag_s_bias_may_rise_above_zero),
+        weights_test(a_new_tag_s_bias_rises_to_zero_from_below),
+        weights_test(a_tag_that_has_lost_its_items_loses_its_bias_when_it_learns_again),
+        weights_test(a_bias_is_left_alone_where_there_is_nothing_to_learn),
         weights_test(a_rival_is_pushed_down),
         weights_test(an_item_without_tags_pushes_all_its_rivals_down),
         weights_test(a_tag_at_the_floor_is_no_rival),

@@ -8,7 +8,8 @@
 #include "tests/unit/near.h"
 
 enum {
-    FIXTURE_TAGS = 4
+    FIXTURE_TAGS = 4,
+    FIXTURE_COUNT = 10 /* of each tag unless a test says otherwise: its bias may be above 0 */
 };
 
 struct fixture {
@@ -57,7 +58,7 @@ static inline struct weights_feature fixture_word(uint32_t word, float value)
 
 static inline struct weights_given fixture_given(uint32_t tag, double factor)
 {
-    return (struct weights_given){.tag = tag, .tag_count = 1, .factor = factor};
+    return (struct weights_given){.tag = tag, .tag_count = FIXTURE_COUNT, .factor = factor};
 }
 
 static inline void fixture_score(const struct fixture *fixture, const struct weights_feature *x,

@@ -25,7 +25,7 @@ enum {
 };
 
 static const struct args_option OPTIONS[] = {
-    [MOST] = {"most", ARGS_WHOLE, "N", 1, 1000000, "show at most N tags (default 10)"},
+    [MOST] = {"most", ARGS_WHOLE, "N", 0, 1000, "show at most N tags (default 10)"},
     [FLOOR] = {"floor", ARGS_NUMBER, "X", 0, 1,
                "the least chance that is shown (default 0.05; 0 shows the N best whatever their "
                "chance)"},

@@ -48,13 +48,19 @@ LIBRARY := $(BUILD)/libundertag.a
 CLIENT_LIBRARY := $(BUILD)/libclient.a
 HELPERS := $(call object,$(HELPER_SOURCES))
 PROGRAMS := $(BUILD)/undertagd $(BUILD)/undertag
-TEST_PROGRAMS := $(addprefix $(BUILD)/tests/,$(UNIT_TESTS) $(INTEGRATION_TESTS) $(REFERENCE_TESTS))
+UNIT_PROGRAMS := $(addprefix $(BUILD)/tests/,$(UNIT_TESTS))
+INTEGRATION_PROGRAMS := $(addprefix $(BUILD)/tests/,$(INTEGRATION_TESTS))
+REFERENCE_PROGRAMS := $(addprefix $(BUILD)/tests/,$(REFERENCE_TESTS))
+TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS)
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
 .PHONY: all demo test lint sanitize valgrind corpora quality bench install uninstall clean \
         build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
+# Every rule below names its targets: searching among patterns takes make minutes.
+.SUFFIXES:
+MAKEFLAGS += --no-builtin-rules
 
 all: $(PROGRAMS)
 
@@ -75,7 +81,8 @@ $(BUILD)/flags: FORCE
 	@echo '$(CC) $(BASE_CFLAGS) $(CFLAGS) $(LDFLAGS)' > $@.new
 	@cmp -s $@.new $@ && rm $@.new || mv $@.new $@
 
-$(BUILD)/%.o: %.c $(BUILD)/flags
+OBJECTS := $(sort $(call object,$(wildcard daemon/*.c daemon/*/*.c storage/*.c client/*.c tests/*/*.c)))
+$(OBJECTS): $(BUILD)/%.o: %.c $(BUILD)/flags
 	@mkdir -p $(@D)
 	$(call say,compile,$<)
 	$(Q)$(CC) $(BASE_CFLAGS) $(PACKAGE_CFLAGS) $(CPPFLAGS) $(CFLAGS) -MMD -MP -c $< -o $@
@@ -96,27 +103,27 @@ $(BUILD)/undertag: $(BUILD)/client/main.o $(CLIENT_LIBRARY)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(CLIENT_LIBS) -o $@
 
-$(BUILD)/tests/%: $(BUILD)/tests/unit/%.o $(LIBRARY) $(CLIENT_LIBRARY)
+$(UNIT_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/unit/%.o $(LIBRARY) $(CLIENT_LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
 
-$(BUILD)/tests/%: $(BUILD)/tests/integration/%.o $(HELPERS) $(LIBRARY)
+$(INTEGRATION_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/integration/%.o $(HELPERS) $(LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
 
-$(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
+$(REFERENCE_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -llinear -o $@
 
-$(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(LIBRARY) $(CLIENT_LIBRARY)
+$(BENCH_PROGRAMS): $(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(LIBRARY) $(CLIENT_LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
 
--include $(shell find $(BUILD) -name '*.d' 2>/dev/null)
+-include $(OBJECTS:.o=.d)
 
 # --- packages -----------------------------------------------------------------------------------
 

@@ -100,7 +100,7 @@ static void a_text_as_long_as_the_limit_is_taken_and_one_byte_more_is_not(void *
     assert_int_equal(text.size, 10);
     assert_int_equal(read_text("{'text': 'öööööo'}", &text, &fault), FAULT_LIMIT);
     assert_fault(&fault, FAULT_LIMIT, "/text",
-                 "text is longer than text_limit, 10 bytes: file it in parts.");
+                 "text is longer than text_limit, which is 10 bytes.");
     assert_int_equal(text.size, 10);
 }
 

@@ -248,7 +248,7 @@ static void a_full_map_changes_nothing_and_later_writes_work(void **state)
     store_end(view);
     free(letters);
     assert_int_equal(result, STORE_FULL);
-    assert_non_null(strstr(error.text, "largest size (option map_size)"));
+    assert_non_null(strstr(error.text, "raise map_size"));
     assert_int_equal(fixture_totals(fixture).seq, 1);
     assert_int_equal(fixture_file_text(fixture, "log/2", entry).seq, 2);
     assert_true(is_text(fixture_record(fixture, 2).text, entry));

@@ -188,7 +188,8 @@ sanitize: packages-build packages-test packages-lint
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-asan CC=clang run-tests \
 	    GROUPS='unit integration reference' \
 	    CFLAGS='-O1 -g -fno-omit-frame-pointer -fsanitize=address,undefined -fno-sanitize-recover=all'
-	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-tsan CC=clang run-tests \
+	@TSAN_OPTIONS=suppressions=$(CURDIR)/tests/tsan.supp \
+	$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-tsan CC=clang run-tests \
 	    GROUPS='unit integration' CFLAGS='-O1 -g -fsanitize=thread'
 
 valgrind: packages-build packages-test

@@ -169,8 +169,8 @@ quality: packages-build packages-quality
 
 # --- checks -------------------------------------------------------------------------------------
 
-ALL_SOURCES = $(shell git ls-files "*.c")
-ALL_HEADERS = $(shell git ls-files "*.h")
+ALL_SOURCES = $(shell find client daemon storage tests -name "*.c" | sort)
+ALL_HEADERS = $(shell find client daemon storage tests -name "*.h" | sort)
 
 lint: packages-build packages-test packages-lint
 	@echo clang-format

@@ -5,7 +5,8 @@
  *
  * Failure paths: a model that cannot be stored (a full disk) is tried again with the next flush. A
  * change that cannot be read or learned ends learning for good, until a restart: a model that has
- * skipped a change would differ from its items for ever. The daemon goes on filing and asking.
+ * skipped a change would differ from its items for ever. The daemon goes on filing and asking. A
+ * store that cannot be looked into, and what cannot be overwritten, is tried again after a while.
  */
 #include "daemon/trainer.h"
 
@@ -50,8 +51,8 @@ struct trainer {
     uint64_t stored_at_us; /* when it was stored, or tried, last */
     uint64_t storing_us;   /* how long that took */
     bool scrub_due;
-    bool scrub_is_held;
-    size_t scrub_left; /* pages, when it was last looked at */
+    uint64_t scrub_wait_ms; /* before it is gone on with */
+    size_t scrub_left;      /* pages, when it was last looked at */
     bool failed;
 };
 
@@ -205,14 +206,15 @@ static void scrub(struct trainer *trainer)
     if (model_store_scrub(trainer->settings.model_store, SCRUB_PAGES, &left, &error) != STORE_OK) {
         troubles_begin(trainer->settings.troubles, TROUBLE_FORGETTING,
                        "forgotten words may still be in the model's file (%s)", error.text);
-        backlog_pause(trainer->settings.backlog, TRY_AGAIN_MS);
+        trainer->scrub_wait_ms = TRY_AGAIN_MS;
         return;
     }
     if (left == 0) {
         troubles_end(trainer->settings.troubles, TROUBLE_FORGETTING);
     }
     /* What does not get less is held by a reader, who will be gone soon. */
-    trainer->scrub_is_held = left > 0 && left >= trainer->scrub_left && trainer->scrub_left > 0;
+    bool is_held = left >= trainer->scrub_left && trainer->scrub_left > 0;
+    trainer->scrub_wait_ms = is_held ? HELD_BACK_MS : 0;
     trainer->scrub_left = left;
     trainer->scrub_due = left > 0;
 }
@@ -233,7 +235,7 @@ static void fail(struct trainer *trainer, const struct store_error *error)
 static uint64_t idle_ms(const struct trainer *trainer)
 {
     if (trainer->learned == trainer->kept) {
-        return !trainer->scrub_due ? IDLE_MS : trainer->scrub_is_held ? HELD_BACK_MS : 0;
+        return trainer->scrub_due ? trainer->scrub_wait_ms : IDLE_MS;
     }
     uint64_t most_ms = trainer->settings.flush_every_ms;
     return most_ms < IDLE_MS ? most_ms : IDLE_MS;
@@ -243,7 +245,9 @@ static uint64_t idle_ms(const struct trainer *trainer)
 static void finish_scrubbing(struct trainer *trainer)
 {
     uint64_t last_us = clock_steady_us() + FINISH_MS * 1000ULL;
-    while (trainer->scrub_due && clock_steady_us() < last_us) {
+    trainer->scrub_wait_ms = 0;
+    while (trainer->scrub_due && trainer->scrub_wait_ms < TRY_AGAIN_MS &&
+           clock_steady_us() < last_us) {
         scrub(trainer);
     }
 }

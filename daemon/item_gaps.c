@@ -107,10 +107,10 @@ static int prepare_item(struct gaps_job *job, struct store_view *view,
         return no_memory(&job->job.fault);
     }
     *ret_source = workspace->source.source;
-    question->given = workspace->record.tags;
-    question->given_count = workspace->record.tag_count;
-    question->excluded = workspace->record.declined;
-    question->excluded_count = workspace->record.declined_count;
+    question->given = workspace->record.tags.list;
+    question->given_count = workspace->record.tags.count;
+    question->excluded = workspace->record.known_not.list;
+    question->excluded_count = workspace->record.known_not.count;
     question->tagged = true;
     return 0;
 }

@@ -49,17 +49,16 @@ static int compare_names(const void *left, const void *right)
 }
 
 /* The names of tags, in the order of their bytes. NULL: the job holds a fault. */
-static json_t *names_json(struct read_job *job, struct store_view *view, const uint32_t *tags,
-                          size_t count)
+static json_t *names_json(struct read_job *job, struct store_view *view, struct numbers tags)
 {
     struct store_error error = {0};
     struct vocabulary_tag tag;
     json_t *names = json_array();
-    struct named *sorted = calloc(count + 1, sizeof *sorted);
+    struct named *sorted = calloc(tags.count + 1, sizeof *sorted);
     size_t made = 0;
     int code = names && sorted ? 0 : -1;
-    while (code == 0 && made < count) {
-        if (vocabulary_get(view, tags[made], &tag, &error) != STORE_OK) {
+    while (code == 0 && made < tags.count) {
+        if (vocabulary_get(view, tags.list[made], &tag, &error) != STORE_OK) {
             code = read_job_fail(job, &error);
         } else {
             sorted[made].name = json_string(tag.name);
@@ -97,28 +96,79 @@ static json_t *fields_json(struct store_text fields)
     return fields.size > 0 ? json_loadb(fields.data, fields.size, 0, NULL) : json_object();
 }
 
+static json_t *time_json(int64_t time_ms)
+{
+    char text[TIMES_BYTES];
+    times_format(time_ms, text);
+    return json_string(text);
+}
+
+static json_t *check_json(struct read_job *job, struct store_view *view,
+                          const struct item_check *check)
+{
+    if (!check->is_there) {
+        return json_null();
+    }
+    json_t *tags = names_json(job, view, check->tags);
+    return tags ? json_pack("{s:o, s:s, s:o, s:o}", "tags", tags, "drawn",
+                            check->is_random ? "random" : "picked", "at", time_json(check->at_ms),
+                            "checker", text_or_null(check->checker))
+                : NULL;
+}
+
+static json_t *seconds_json(struct read_job *job, struct store_view *view,
+                            const struct item_record *record)
+{
+    json_t *seconds = json_array();
+    for (size_t i = 0; seconds && i < record->second_count; i++) {
+        const struct item_second *second = &record->seconds[i];
+        json_t *tags = names_json(job, view, second->tags);
+        json_t *entry = tags ? json_pack("{s:o, s:o, s:o}", "tagger", text_json(second->tagger),
+                                         "tags", tags, "filed_at", text_or_null(second->filed_at))
+                             : NULL;
+        if (json_array_append_new(seconds, entry) < 0) {
+            json_decref(seconds);
+            return NULL;
+        }
+    }
+    return seconds;
+}
+
+/* Adds a member; a value that could not be made makes the whole fail. */
+static void add_member(json_t **object, const char *name, json_t *value)
+{
+    if (*object && json_object_set_new(*object, name, value) == 0) {
+        return;
+    }
+    if (!*object) {
+        json_decref(value);
+    }
+    json_decref(*object);
+    *object = NULL;
+}
+
 static json_t *item_json(struct read_job *job, struct store_view *view,
                          const struct item_record *record)
 {
-    char stored_at[TIMES_BYTES];
-    times_format(record->stored_at_ms, stored_at);
-    json_t *tags = names_json(job, view, record->tags, record->tag_count);
-    json_t *prompted = names_json(job, view, record->prompted, record->prompted_count);
-    json_t *declined = names_json(job, view, record->declined, record->declined_count);
-    if (!tags || !prompted || !declined) {
-        json_decref(tags);
-        json_decref(prompted);
-        json_decref(declined);
-        return NULL;
-    }
-    return json_pack("{s:o, s:I, s:o, s:o, s:o, s:o, s:o, s:o, s:s, s:o, s:O, s:o, s:o, s:[], "
-                     "s:[], s:n}",
-                     "id", text_json(record->id), "seq", (json_int_t)record->seq, "title",
-                     text_json(record->title), "text", text_json(record->text), "fields",
-                     fields_json(record->fields), "language", text_or_null(record->language),
-                     "tagger", text_or_null(record->tagger), "filed_at",
-                     text_or_null(record->filed_at), "stored_at", stored_at, "tags", tags, "filed",
-                     tags, "prompted", prompted, "declined", declined, "belongs", "not", "checked");
+    json_t *item = json_object();
+    add_member(&item, "id", text_json(record->id));
+    add_member(&item, "seq", json_integer((json_int_t)record->seq));
+    add_member(&item, "title", text_json(record->title));
+    add_member(&item, "text", text_json(record->text));
+    add_member(&item, "fields", fields_json(record->fields));
+    add_member(&item, "language", text_or_null(record->language));
+    add_member(&item, "tagger", text_or_null(record->tagger));
+    add_member(&item, "filed_at", text_or_null(record->filed_at));
+    add_member(&item, "stored_at", time_json(record->filed_stored_at_ms));
+    add_member(&item, "tags", names_json(job, view, record->tags));
+    add_member(&item, "filed", names_json(job, view, record->filed));
+    add_member(&item, "prompted", names_json(job, view, record->prompted));
+    add_member(&item, "declined", names_json(job, view, record->declined));
+    add_member(&item, "belongs", names_json(job, view, record->belongs));
+    add_member(&item, "not", names_json(job, view, record->denied));
+    add_member(&item, "checked", check_json(job, view, &record->check));
+    add_member(&item, "second", seconds_json(job, view, record));
+    return item;
 }
 
 static void run_show(struct read_job *base)
@@ -174,9 +224,10 @@ static void release_list(struct read_job *base)
 static int add_item(void *user, const struct item_record *record)
 {
     struct list_job *job = user;
-    return json_array_append_new(
-        job->items, json_pack("{s:o, s:I, s:b}", "id", text_json(record->id), "seq",
-                              (json_int_t)record->seq, "withdrawn", (int)record->withdrawn));
+    return json_array_append_new(job->items,
+                                 json_pack("{s:o, s:I, s:b}", "id", text_json(record->id), "seq",
+                                           (json_int_t)record->seq, "withdrawn",
+                                           (int)item_is_withdrawn(record)));
 }
 
 static void run_list(struct read_job *base)

@@ -12,6 +12,7 @@ enum {
 
 static const struct method METHODS[] = {
     {"item.file", METHOD_CHANGE, item_file}, {"item.withdraw", METHOD_CHANGE, item_withdraw},
+    {"item.rule", METHOD_CHANGE, item_rule}, {"item.check", METHOD_CHANGE, item_check},
     {"item.gaps", METHOD_READ, item_gaps},   {"item.show", METHOD_READ, item_show},
     {"item.list", METHOD_READ, item_list},   {"tag.show", METHOD_READ, tag_show},
     {"tag.list", METHOD_READ, tag_list},     {"daemon.state", METHOD_READ, daemon_state},

@@ -28,11 +28,16 @@ struct methods {
     void *closed_user;
 };
 
+/* change_job.c: ends the calls of the changes that are done. */
+void item_changes_done(struct change *done);
+
 /* item_change.c */
 void item_file(struct call *call, const json_t *params);
 void item_withdraw(struct call *call, const json_t *params);
-/* Ends the calls of the changes that are done. */
-void item_changes_done(struct change *done);
+
+/* item_examine.c */
+void item_rule(struct call *call, const json_t *params);
+void item_check(struct call *call, const json_t *params);
 
 /* item_gaps.c */
 void item_gaps(struct call *call, const json_t *params);

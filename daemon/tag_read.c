@@ -34,17 +34,18 @@ struct outlook {
 static struct outlook look_out(const struct engine *engine, const struct vocabulary_tag *tag,
                                uint64_t items)
 {
-    struct outlook outlook = {.p = engine_propensity(engine, tag->unprompted, items)};
+    struct outlook outlook = {.p = engine_propensity(engine, tag->counts.unprompted, items)};
     outlook.low = outlook.p;
     outlook.high = outlook.p;
     for (size_t i = 0; i < sizeof CURVES_BESIDE / sizeof CURVES_BESIDE[0]; i++) {
-        double p = propensity_of_curve(&CURVES_BESIDE[i], (double)tag->unprompted, (double)items);
+        double p = propensity_of_curve(&CURVES_BESIDE[i], (double)tag->counts.unprompted,
+                                       (double)items);
         outlook.low = p < outlook.low ? p : outlook.low;
         outlook.high = p > outlook.high ? p : outlook.high;
     }
     /* A tag given unprompted stands for 1/p true ones; a prompted one was examined. */
-    outlook.missing = (double)tag->unprompted * (1.0 / outlook.p - 1.0);
-    outlook.expected_true = (double)tag->count + outlook.missing;
+    outlook.missing = (double)tag->counts.unprompted * (1.0 / outlook.p - 1.0);
+    outlook.expected_true = (double)tag->counts.count + outlook.missing;
     return outlook;
 }
 
@@ -85,15 +86,15 @@ static void run_show(struct read_job *base)
     if (find_tag(base, view, "/tag", job->tag, &tag) == 0) {
         struct outlook outlook =
             look_out(base->methods->engine, &tag, store_view_totals(view).items);
-        base->result =
-            json_pack("{s:s, s:I, s:I, s:{s:f, s:f, s:f, s:s}, s:f, s:f, s:I, s:s, s:n, s:n, s:[], "
-                      "s:{s:i, s:i}}",
-                      "tag", tag.name, "count", (json_int_t)tag.count, "unprompted",
-                      (json_int_t)tag.unprompted, "propensity", "p", outlook.p, "low", outlook.low,
-                      "high", outlook.high, "from", "curve", "expected_true", outlook.expected_true,
-                      "missing", outlook.missing, "opened_seq", (json_int_t)tag.opened_seq, "state",
-                      state_name(tag.state), "label", "broader", "aliases", "rulings", "belongs", 0,
-                      "not", 0);
+        base->result = json_pack(
+            "{s:s, s:I, s:I, s:{s:f, s:f, s:f, s:s}, s:f, s:f, s:I, s:s, s:n, s:n, s:[], "
+            "s:{s:I, s:I}}",
+            "tag", tag.name, "count", (json_int_t)tag.counts.count, "unprompted",
+            (json_int_t)tag.counts.unprompted, "propensity", "p", outlook.p, "low", outlook.low,
+            "high", outlook.high, "from", "curve", "expected_true", outlook.expected_true,
+            "missing", outlook.missing, "opened_seq", (json_int_t)tag.opened_seq, "state",
+            state_name(tag.state), "label", "broader", "aliases", "rulings", "belongs",
+            (json_int_t)tag.counts.ruled_belongs, "not", (json_int_t)tag.counts.ruled_not);
     }
     store_end(view);
 }
@@ -163,7 +164,7 @@ static int add_tag(struct list_job *job, const struct vocabulary_tag *tag)
     job->last = *tag;
     return json_array_append_new(job->tags,
                                  json_pack("{s:s, s:I, s:f, s:f, s:s}", "tag", tag->name, "count",
-                                           (json_int_t)tag->count, "p", outlook.p, "missing",
+                                           (json_int_t)tag->counts.count, "p", outlook.p, "missing",
                                            outlook.missing, "state", state_name(tag->state)));
 }
 
@@ -175,7 +176,7 @@ static int add_by_name(void *user, const struct vocabulary_tag *tag)
 static struct ranked rank_of(const struct list_job *job, const struct vocabulary_tag *tag)
 {
     double key = job->order == ORDER_COUNT
-                     ? (double)tag->count
+                     ? (double)tag->counts.count
                      : look_out(job->job.methods->engine, tag, job->items).missing;
     return (struct ranked){.key = key, .number = tag->number};
 }

@@ -72,8 +72,8 @@ static int read_side(struct side *side, struct store_view *view, uint64_t seq, b
     if (code != STORE_OK) {
         return code;
     }
-    *ret_found = !side->record.withdrawn;
-    if (side->record.withdrawn) {
+    *ret_found = !item_is_withdrawn(&side->record);
+    if (!*ret_found) {
         return STORE_OK;
     }
     code = item_source_fill(&side->source, &side->record);
@@ -86,10 +86,10 @@ static int read_side(struct side *side, struct store_view *view, uint64_t seq, b
     }
     side->item = (struct model_item){.features = features_list(side->features),
                                      .feature_count = features_count(side->features),
-                                     .tags = side->record.tags,
-                                     .tag_count = side->record.tag_count,
-                                     .prompted = side->record.prompted,
-                                     .prompted_count = side->record.prompted_count};
+                                     .tags = side->record.tags.list,
+                                     .tag_count = side->record.tags.count,
+                                     .prompted = side->record.prompted.list,
+                                     .prompted_count = side->record.prompted.count};
     return STORE_OK;
 }
 
@@ -120,7 +120,7 @@ static int learn_change(struct trainer *trainer, struct store_view *view, uint64
     }
     shared_model_unlock(shared);
     const struct item_record *record = &trainer->filed.record;
-    *ret_cost = backlog_cost(record->title.size + record->text.size, record->tag_count);
+    *ret_cost = backlog_cost(record->title.size + record->text.size, record->filed.count);
     return code == 0 ? STORE_OK
                      : store_fail(error, STORE_NO_MEMORY, "there is no memory to learn change %llu",
                                   (unsigned long long)seq);

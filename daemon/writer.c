@@ -64,6 +64,7 @@ static void append(struct change_list *list, struct change *change)
 /* --- one change ---------------------------------------------------------------------------------
  */
 
+/* What learning the change will take, as far as it can be told before it is made. */
 static uint64_t cost_of(const struct change *change)
 {
     return backlog_cost(change->filing.title.size + change->filing.text.size,
@@ -82,20 +83,47 @@ static bool is_change_alone(enum store_code code)
     return code == STORE_OK || code == STORE_REFUSED || code == STORE_NOT_FOUND;
 }
 
+static int make_change(struct writer *writer, struct store_view *view, struct change *change)
+{
+    const struct item_filing *filing = &change->filing;
+    const struct item_saying saying = {
+        .id = filing->id, .who = filing->tagger, .at_ms = filing->stored_at_ms, .uid = filing->uid};
+    const struct item_names tags = {.names = filing->tags, .count = filing->tag_count};
+    const struct item_names declined = {.names = filing->declined, .count = filing->declined_count};
+    switch (change->kind) {
+    case CHANGE_FILE:
+        return items_file(view, filing, &writer->record, &change->filed, &change->refusal,
+                          &change->error);
+    case CHANGE_WITHDRAW:
+        return items_withdraw(view, filing->id, filing->stored_at_ms, filing->uid, &writer->record,
+                              &change->filed.seq, &change->error);
+    case CHANGE_RULE:
+        return items_rule(view, &saying, tags, declined, &writer->record, &change->filed,
+                          &change->refusal, &change->error);
+    case CHANGE_CHECK:
+        return items_check(view, &saying, tags, change->is_random, &writer->record, &change->filed,
+                           &change->checked, &change->refusal, &change->error);
+    case CHANGE_TAG_AGAIN:
+        return items_tag_again(view, &saying, tags, filing->filed_at, filing->open_unknown,
+                               &writer->record, &change->filed, &change->refusal, &change->error);
+    }
+    return store_fail(&change->error, STORE_CORRUPT, "a change of no kind");
+}
+
+/* A change may be tried twice: what an earlier try has found is gone. */
+static void forget_outcome(struct change *change)
+{
+    free(change->checked.missed);
+    free(change->checked.extra);
+    change->checked = (struct item_checked){0};
+    change->error = (struct store_error){0};
+}
+
 static enum store_code apply(struct writer *writer, struct store_view *view, struct change *change)
 {
-    change->error = (struct store_error){0};
-    if (change->has_too_many_words) {
-        change->code = STORE_REFUSED;
-    } else if (change->kind == CHANGE_FILE) {
-        change->code =
-            (enum store_code)items_file(view, &change->filing, &writer->record, &change->filed,
-                                        &change->refusal, &change->error);
-    } else {
-        change->code = (enum store_code)items_withdraw(
-            view, change->filing.id, change->filing.stored_at_ms, change->filing.uid,
-            &writer->record, &change->filed.seq, &change->error);
-    }
+    forget_outcome(change);
+    change->code = change->has_too_many_words ? STORE_REFUSED
+                                              : (enum store_code)make_change(writer, view, change);
     return change->code;
 }
 
@@ -126,7 +154,7 @@ static enum store_code commit(struct writer *writer, struct change *group,
             return error->code;
         }
         bool is_new = change->code == STORE_OK && change->filed.seq > before;
-        cost += is_new ? cost_of(change) : 0;
+        cost += is_new ? backlog_cost(change->filed.text_bytes, change->filed.tag_count) : 0;
     }
     uint64_t after = store_view_totals(view).seq;
     if (after == before) {

@@ -11,13 +11,17 @@
 #include "daemon/backlog.h"
 #include "daemon/text/features.h"
 #include "daemon/troubles.h"
-#include "storage/items.h"
+#include "storage/items_examine.h"
 
 struct writer;
 
+/* What matters of the filing, beside its id, stored_at_ms and uid: */
 enum change_kind {
-    CHANGE_FILE,
-    CHANGE_WITHDRAW /* of the filing only id, stored_at_ms and uid matter */
+    CHANGE_FILE,      /* everything */
+    CHANGE_WITHDRAW,  /* nothing */
+    CHANGE_RULE,      /* tags: those that belong; declined: those that do not; tagger: the editor */
+    CHANGE_CHECK,     /* tags: the complete list; tagger: the checker */
+    CHANGE_TAG_AGAIN, /* tags, tagger, filed_at, open_unknown */
 };
 
 /* A change on its way; belongs to the caller, who leaves it alone until it is done. */
@@ -27,11 +31,13 @@ struct change {
     struct item_filing filing;
     const struct features_source *counted; /* NULL: it cannot hold too many different words */
     size_t words_limit;
+    bool is_random; /* of a check: the item was drawn at random */
 
     /* The outcome. */
     enum store_code code;
     bool has_too_many_words;
     struct item_filed filed;
+    struct item_checked checked; /* of a check; the owner frees the lists */
     struct item_refusal refusal;
     struct store_error error;
 };

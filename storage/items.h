@@ -5,6 +5,7 @@
 #define UNDERTAG_ITEMS_H
 
 #include "storage/codec.h"
+#include "storage/numbers.h"
 #include "storage/store.h"
 
 /* Bytes that belong to somebody else; not ended by NUL. */
@@ -33,6 +34,7 @@ struct item_filing {
     bool open_unknown;    /* open a tag that is not there; otherwise it is refused */
 };
 
+/* What a stored filing is to the one that comes. */
 enum item_was {
     ITEM_NEW,
     ITEM_REVISED,
@@ -42,13 +44,18 @@ enum item_was {
 struct item_filed {
     uint64_t seq;
     enum item_was was;
+    size_t text_bytes; /* of title and text, and tags: what learning the change will take */
+    size_t tag_count;
 };
 
-/* What a filing was refused for: which list, and which of its entries. */
+/* What a change was refused for: which list, and which of its entries. */
 struct item_refusal {
     enum {
         REFUSED_TAG,
-        REFUSED_DECLINED
+        REFUSED_DECLINED,
+        REFUSED_BELONGS,
+        REFUSED_NOT,
+        REFUSED_TAGGER /* no list: a second tagging by the one who filed the item */
     } list;
     size_t at;
     bool retired; /* otherwise unknown */
@@ -69,33 +76,98 @@ int items_withdraw(struct store_view *view, struct store_text id, int64_t stored
                    uint32_t uid, struct codec_writer *buffer, uint64_t *ret_seq,
                    struct store_error *error) __attribute__((warn_unused_result));
 
-/* One change as stored. Texts and numbers point into the buffer that it was read into. */
+/* Why a record was written. */
+enum item_change {
+    ITEM_FILED,
+    ITEM_RULED,
+    ITEM_CHECKED,
+    ITEM_TAGGED_AGAIN,
+    ITEM_WITHDRAWN
+};
+
+/* An editor's word on one tag of an item; the latest one only. */
+struct item_ruling {
+    uint32_t tag;
+    bool belongs;
+    int64_t at_ms;
+    struct store_text editor;
+};
+
+/* Somebody went through the whole vocabulary. */
+struct item_check {
+    bool is_there;
+    bool is_random; /* the item was drawn at random */
+    int64_t at_ms;
+    struct store_text checker;
+    uint32_t vocabulary;   /* tags below this number were there to be gone through */
+    uint32_t seen;         /* tags on the item before */
+    struct numbers tags;   /* the complete list */
+    struct numbers given;  /* of those nobody had examined before: on the item */
+    struct numbers hidden; /* likewise: missing */
+    struct numbers extra;  /* taken off */
+};
+
+/* The same item as another tagger tagged it, without knowing of the first. */
+struct item_second {
+    struct store_text tagger;
+    struct store_text filed_at;
+    int64_t at_ms;
+    struct numbers tags;
+};
+
+/*
+ * An item as of one change, or a withdrawal, of which only seq, replaced, change, id, stored_at_ms
+ * and uid are there. Texts and numbers point into the buffer that it was read into.
+ */
 struct item_record {
     uint64_t seq;
     uint64_t replaced; /* the seq of the record it took the place of; 0: none */
-    bool withdrawn;    /* then only id, stored_at_ms and uid are there */
+    enum item_change change;
+    int64_t stored_at_ms; /* of this change */
+    uint32_t uid;
     struct store_text id;
+
+    uint64_t filed_seq; /* of the filing */
+    int64_t filed_stored_at_ms;
     struct store_text title;
     struct store_text text;
     struct store_text fields;
     struct store_text language;
     struct store_text tagger;
     struct store_text filed_at;
-    const uint32_t *tags; /* numbers, rising */
-    size_t tag_count;
-    const uint32_t *prompted;
-    size_t prompted_count;
-    const uint32_t *declined;
-    size_t declined_count;
-    int64_t stored_at_ms;
-    uint32_t uid;
+    struct numbers filed; /* as filed; prompted is a part of it, declined is not */
+    struct numbers prompted;
+    struct numbers declined;
+
+    bool filed_after_check;
+    struct item_check check;
+    const struct item_ruling *rulings; /* by tag; at most one each */
+    size_t ruling_count;
+    const struct item_second *seconds; /* by tagger; at most one each */
+    size_t second_count;
+
+    /* What follows from all that. */
+    struct numbers tags;       /* on the item now */
+    struct numbers unprompted; /* of those, given in the filing without a proposal */
+    struct numbers belongs;    /* ruled so */
+    struct numbers denied;     /* ruled not to belong */
+    struct numbers known_not;  /* ruled or declined: never to be proposed */
 };
+
+static inline bool item_is_withdrawn(const struct item_record *record)
+{
+    return record->change == ITEM_WITHDRAWN;
+}
 
 /* What one record is read into; zero-initialised is empty. */
 struct item_buffer {
     struct codec_writer record;
     uint32_t *numbers;
     size_t number_capacity;
+    struct item_ruling *rulings;
+    size_t ruling_capacity;
+    struct item_second *seconds;
+    size_t second_capacity;
 };
 
 void item_buffer_deinit(struct item_buffer *buffer);

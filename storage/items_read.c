@@ -43,85 +43,92 @@ void item_buffer_deinit(struct item_buffer *buffer)
 {
     codec_deinit(&buffer->record);
     free(buffer->numbers);
+    free(buffer->rulings);
+    free(buffer->seconds);
     memset(buffer, 0, sizeof *buffer);
 }
 
-static struct store_text get_text(struct codec_reader *reader)
+struct store_text item_get_text(struct codec_reader *reader)
 {
     struct store_text text;
     text.data = codec_get_blob(reader, &text.size);
     return text;
 }
 
-/* Reads a list of numbers into the buffer, from `at` on; the caller has made room for all lists. */
-static size_t get_numbers(struct codec_reader *reader, uint32_t *into, size_t room)
+/* Reads a list of numbers into the buffer, from *used on. */
+static struct numbers get_numbers(struct codec_reader *reader, struct item_buffer *buffer,
+                                  size_t *used)
 {
     size_t count = codec_get_u32(reader);
-    if (count > room) {
+    if (count > (reader->size - reader->at) / sizeof(uint32_t)) {
         reader->failed = true;
-        return 0;
+        return (struct numbers){0};
     }
+    uint32_t *list = buffer->numbers + *used;
     for (size_t i = 0; i < count; i++) {
-        into[i] = codec_get_u32(reader);
+        list[i] = codec_get_u32(reader);
     }
-    return count;
+    *used += count;
+    return (struct numbers){.list = list, .count = count};
 }
 
-static int read_content(struct codec_reader *reader, struct item_buffer *buffer,
-                        struct item_record *record, struct store_error *error)
+/* Makes room for all numbers that the record may hold, and for what follows from them. */
+static int reserve_numbers(struct item_buffer *buffer, size_t stored, struct store_error *error)
 {
-    record->title = get_text(reader);
-    record->text = get_text(reader);
-    record->fields = get_text(reader);
-    record->language = get_text(reader);
-    /* What is left holds all numbers, four bytes each. */
-    size_t room = (reader->size - reader->at) / sizeof(uint32_t);
+    size_t room = item_evidence_room(stored);
     if (room > buffer->number_capacity) {
         uint32_t *grown = realloc(buffer->numbers, room * sizeof *grown);
         if (!grown) {
-            return store_fail(error, STORE_NO_MEMORY, "out of memory");
+            return items_no_memory(error);
         }
         buffer->numbers = grown;
         buffer->number_capacity = room;
     }
-    uint32_t *next = buffer->numbers;
-    record->tags = next;
-    record->tag_count = get_numbers(reader, next, room);
-    next += record->tag_count;
-    room -= record->tag_count;
-    record->prompted = next;
-    record->prompted_count = get_numbers(reader, next, room);
-    next += record->prompted_count;
-    room -= record->prompted_count;
-    record->declined = next;
-    record->declined_count = get_numbers(reader, next, room);
     return STORE_OK;
+}
+
+static int decode_item(struct codec_reader *reader, struct item_buffer *buffer,
+                       struct item_record *record, struct store_error *error)
+{
+    record->tagger = item_get_text(reader);
+    record->filed_at = item_get_text(reader);
+    struct store_text content = item_get_text(reader);
+    struct codec_reader inner = {.data = (const unsigned char *)content.data, .size = content.size};
+    record->title = item_get_text(&inner);
+    record->text = item_get_text(&inner);
+    record->fields = item_get_text(&inner);
+    record->language = item_get_text(&inner);
+    /* Four bytes are the least that a number takes. */
+    size_t bytes = inner.size - inner.at + reader->size - reader->at;
+    int result = reserve_numbers(buffer, bytes / sizeof(uint32_t), error);
+    if (result != STORE_OK) {
+        return result;
+    }
+    size_t used = 0;
+    record->filed = get_numbers(&inner, buffer, &used);
+    record->prompted = get_numbers(&inner, buffer, &used);
+    record->declined = get_numbers(&inner, buffer, &used);
+    reader->failed = reader->failed || inner.failed;
+    return item_evidence_get(reader, buffer, used, record, error);
 }
 
 static int decode(uint64_t seq, struct item_buffer *buffer, struct item_record *ret_record,
                   struct store_error *error)
 {
     struct codec_reader reader = {.data = buffer->record.data, .size = buffer->record.size};
-    struct item_record record = {.seq = seq};
+    struct item_record record = {.seq = seq, .change = ITEM_WITHDRAWN};
     uint8_t kind = codec_get_u8(&reader);
-    record.withdrawn = kind == RECORD_WITHDRAWAL;
     record.replaced = codec_get_u64(&reader);
     record.stored_at_ms = (int64_t)codec_get_u64(&reader);
     record.uid = codec_get_u32(&reader);
-    record.id = get_text(&reader);
-    if (kind == RECORD_FILING) {
-        record.tagger = get_text(&reader);
-        record.filed_at = get_text(&reader);
-        struct store_text content = get_text(&reader);
-        struct codec_reader inner = {.data = (const unsigned char *)content.data,
-                                     .size = content.size};
-        int result = read_content(&inner, buffer, &record, error);
+    record.id = item_get_text(&reader);
+    if (kind == RECORD_ITEM) {
+        int result = decode_item(&reader, buffer, &record, error);
         if (result != STORE_OK) {
             return result;
         }
-        reader.failed = reader.failed || inner.failed;
     }
-    if (reader.failed || (kind != RECORD_FILING && kind != RECORD_WITHDRAWAL)) {
+    if (reader.failed || (kind != RECORD_ITEM && kind != RECORD_WITHDRAWAL)) {
         return store_fail(error, STORE_CORRUPT, "the record of change %llu is damaged",
                           (unsigned long long)seq);
     }
@@ -136,10 +143,10 @@ struct store_text items_stored_content(const struct codec_writer *record)
     (void)codec_get_u64(&reader);
     (void)codec_get_u64(&reader);
     (void)codec_get_u32(&reader);
-    (void)get_text(&reader); /* id, tagger, filed_at: passed over */
-    (void)get_text(&reader);
-    (void)get_text(&reader);
-    return get_text(&reader);
+    (void)item_get_text(&reader); /* id, tagger, filed_at: passed over */
+    (void)item_get_text(&reader);
+    (void)item_get_text(&reader);
+    return item_get_text(&reader);
 }
 
 int items_read(struct store_view *view, uint64_t seq, struct item_buffer *buffer,

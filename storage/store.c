@@ -29,6 +29,30 @@ static struct kv_bytes meta_key(void)
 /* --- the record of format and totals -----------------------------------------------------------
  */
 
+static void put_evidence(struct codec_writer *record, const struct store_evidence *evidence)
+{
+    codec_put_u64(record, evidence->checks_random);
+    codec_put_u64(record, evidence->checks_picked);
+    codec_put_u64(record, evidence->seen);
+    codec_put_u64(record, evidence->wrong);
+    codec_put_u64(record, evidence->second_items);
+    codec_put_u64(record, evidence->second_first);
+    codec_put_u64(record, evidence->second_second);
+    codec_put_u64(record, evidence->second_both);
+}
+
+static void get_evidence(struct codec_reader *reader, struct store_evidence *evidence)
+{
+    evidence->checks_random = codec_get_u64(reader);
+    evidence->checks_picked = codec_get_u64(reader);
+    evidence->seen = codec_get_u64(reader);
+    evidence->wrong = codec_get_u64(reader);
+    evidence->second_items = codec_get_u64(reader);
+    evidence->second_first = codec_get_u64(reader);
+    evidence->second_second = codec_get_u64(reader);
+    evidence->second_both = codec_get_u64(reader);
+}
+
 static int put_meta(struct store_view *view, struct store_error *error)
 {
     struct codec_writer record = {0};
@@ -37,6 +61,7 @@ static int put_meta(struct store_view *view, struct store_error *error)
     codec_put_u64(&record, view->totals.seq);
     codec_put_u64(&record, view->totals.items);
     codec_put_u64(&record, view->totals.tags);
+    put_evidence(&record, &view->totals.evidence);
     int result = record.failed ? (int)store_fail(error, STORE_NO_MEMORY, "out of memory")
                                : kv_put(view->txn, TABLE_META, meta_key(),
                                         kv_bytes_of(record.data, record.size), error);
@@ -66,7 +91,14 @@ static int get_meta(struct store_view *view, unsigned char uuid[STORE_UUID_BYTES
     view->totals.seq = codec_get_u64(&reader);
     view->totals.items = codec_get_u64(&reader);
     view->totals.tags = codec_get_u64(&reader);
-    if (reader.failed || format == 0) {
+    if (!reader.failed && format < STORE_FORMAT) {
+        return store_fail(error, STORE_DENIED,
+                          "the store has format %u, of an early version whose items cannot be "
+                          "taken over: file them again into a new home",
+                          format);
+    }
+    get_evidence(&reader, &view->totals.evidence);
+    if (reader.failed) {
         return store_fail(error, STORE_CORRUPT, "the store's first record is damaged");
     }
     return STORE_OK;

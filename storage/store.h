@@ -27,7 +27,7 @@
 #include "storage/store_error.h"
 
 enum {
-    STORE_FORMAT = 1,
+    STORE_FORMAT = 2,
     STORE_UUID_BYTES = 16
 };
 
@@ -65,10 +65,23 @@ int store_commit(struct store_view *view, struct store_error *error)
 /* Ends a view; what was put in a writing one is forgotten. NULL is allowed. */
 void store_end(struct store_view *view);
 
+/* What people have looked at, over all items. */
+struct store_evidence {
+    uint64_t checks_random; /* items checked after having been drawn at random */
+    uint64_t checks_picked; /* … otherwise */
+    uint64_t seen;          /* tags that were on randomly checked items */
+    uint64_t wrong;         /* of those, taken off */
+    uint64_t second_items;  /* items with a second tagging; of all second taggings: */
+    uint64_t second_first;  /* tags that the first tagger gave without a proposal */
+    uint64_t second_second; /* tags that the second one gave */
+    uint64_t second_both;   /* tags that both gave */
+};
+
 struct store_totals {
     uint64_t seq;   /* of the last change; 0: none yet */
     uint64_t items; /* filed and not withdrawn */
     uint64_t tags;
+    struct store_evidence evidence;
 };
 
 struct store_totals store_view_totals(const struct store_view *view);

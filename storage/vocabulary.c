@@ -4,6 +4,53 @@
 
 #include "storage/store_private.h"
 
+/* --- counts -------------------------------------------------------------------------------------
+ */
+
+void vocabulary_add(struct vocabulary_counts *counts, const struct vocabulary_counts *change)
+{
+    counts->count += change->count;
+    counts->unprompted += change->unprompted;
+    counts->unchecked += change->unchecked;
+    counts->found += change->found;
+    counts->ruled_belongs += change->ruled_belongs;
+    counts->ruled_not += change->ruled_not;
+    counts->check_true += change->check_true;
+    counts->check_given += change->check_given;
+    counts->second_true += change->second_true;
+    counts->second_given += change->second_given;
+}
+
+static void put_counts(struct codec_writer *writer, const struct vocabulary_counts *counts)
+{
+    codec_put_u32(writer, counts->count);
+    codec_put_u32(writer, counts->unprompted);
+    codec_put_u32(writer, counts->unchecked);
+    codec_put_u32(writer, counts->found);
+    codec_put_u32(writer, counts->ruled_belongs);
+    codec_put_u32(writer, counts->ruled_not);
+    codec_put_u32(writer, counts->check_true);
+    codec_put_u32(writer, counts->check_given);
+    codec_put_u32(writer, counts->second_true);
+    codec_put_u32(writer, counts->second_given);
+}
+
+static struct vocabulary_counts get_counts(struct codec_reader *reader)
+{
+    struct vocabulary_counts counts = {0};
+    counts.count = codec_get_u32(reader);
+    counts.unprompted = codec_get_u32(reader);
+    counts.unchecked = codec_get_u32(reader);
+    counts.found = codec_get_u32(reader);
+    counts.ruled_belongs = codec_get_u32(reader);
+    counts.ruled_not = codec_get_u32(reader);
+    counts.check_true = codec_get_u32(reader);
+    counts.check_given = codec_get_u32(reader);
+    counts.second_true = codec_get_u32(reader);
+    counts.second_given = codec_get_u32(reader);
+    return counts;
+}
+
 /* --- the record of a tag -----------------------------------------------------------------------
  */
 
@@ -15,8 +62,7 @@ static int decode(uint32_t number, struct kv_bytes value, struct vocabulary_tag 
     uint32_t checksum = codec_get_u32(&reader);
     tag.state = codec_get_u8(&reader) == VOCABULARY_RETIRED ? VOCABULARY_RETIRED : VOCABULARY_OPEN;
     tag.opened_seq = codec_get_u64(&reader);
-    tag.count = codec_get_u32(&reader);
-    tag.unprompted = codec_get_u32(&reader);
+    tag.counts = get_counts(&reader);
     size_t bytes = 0;
     const char *name = codec_get_blob(&reader, &bytes);
     if (reader.failed || bytes == 0 || bytes > VOCABULARY_NAME_BYTES ||
@@ -36,8 +82,7 @@ int vocabulary_put(struct store_view *view, const struct vocabulary_tag *tag,
     struct codec_writer inner = {.data = body, .capacity = sizeof body};
     codec_put_u8(&inner, (uint8_t)tag->state);
     codec_put_u64(&inner, tag->opened_seq);
-    codec_put_u32(&inner, tag->count);
-    codec_put_u32(&inner, tag->unprompted);
+    put_counts(&inner, &tag->counts);
     codec_put_blob(&inner, tag->name, strlen(tag->name));
     struct codec_writer outer = {.data = value, .capacity = sizeof value};
     codec_put_u32(&outer, codec_checksum(inner.data, inner.size));

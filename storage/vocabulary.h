@@ -16,12 +16,28 @@ enum {
     VOCABULARY_NAME_BYTES = 255
 };
 
+/* In how many items … */
+struct vocabulary_counts {
+    uint32_t count;         /* it stands now */
+    uint32_t unprompted;    /* of those, it was given without a proposal: N_l */
+    uint32_t unchecked;     /* of those, nobody has gone through all tags */
+    uint32_t found;         /* likewise unchecked: an editor has found it missing */
+    uint32_t ruled_belongs; /* an editor has ruled that it belongs */
+    uint32_t ruled_not;     /* … that it does not */
+    uint32_t check_true;    /* a random check found it to belong, and nobody had looked before */
+    uint32_t check_given;   /* of those, it was there */
+    uint32_t second_true;   /* a second tagger gave it, as often as there are such */
+    uint32_t second_given;  /* of those, the first had given it without a proposal */
+};
+
+/* Adds a change to counts; a negative one wraps around. */
+void vocabulary_add(struct vocabulary_counts *counts, const struct vocabulary_counts *change);
+
 /* A tag as stored. */
 struct vocabulary_tag {
     uint32_t number;
     char name[VOCABULARY_NAME_BYTES + 1];
-    uint32_t count;      /* items that have it now */
-    uint32_t unprompted; /* those to which it was given unprompted */
+    struct vocabulary_counts counts;
     uint64_t opened_seq;
     enum vocabulary_state state;
 };

@@ -248,7 +248,7 @@ static void what_was_not_erased_reads_as_before(void **state)
         struct item_record record = fixture_record(fixture, seq);
         assert_true(is_text(record.text, "lamp lit at dusk, wind south west, two ketches"));
     }
-    assert_true(fixture_record(fixture, 202).withdrawn);
+    assert_int_equal(fixture_record(fixture, 202).change, ITEM_WITHDRAWN);
 }
 
 /* One erased change frees hundreds of pages, whose list then needs pages of its own. */

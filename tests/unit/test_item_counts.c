@@ -18,9 +18,9 @@ static void assert_counts(struct fixture *fixture, const char *name, uint32_t co
                           uint32_t unprompted)
 {
     struct vocabulary_tag tag = fixture_tag(fixture, name);
-    if (tag.count != count || tag.unprompted != unprompted) {
-        fail_msg("%s: %u, of them unprompted %u, not %u and %u", name, tag.count, tag.unprompted,
-                 count, unprompted);
+    if (tag.counts.count != count || tag.counts.unprompted != unprompted) {
+        fail_msg("%s: %u, of them unprompted %u, not %u and %u", name, tag.counts.count,
+                 tag.counts.unprompted, count, unprompted);
     }
 }
 
@@ -70,8 +70,8 @@ static void a_declined_tag_is_not_counted(void **state)
     (void)file_tags(fixture, (struct names){.tags = {"fog"}, .declined = {"gale"}});
     assert_counts(fixture, "gale", 0, 0);
     struct item_record record = fixture_record(fixture, 2);
-    assert_int_equal(record.declined_count, 1);
-    assert_int_equal(record.declined[0], fixture_tag(fixture, "gale").number);
+    assert_int_equal(record.declined.count, 1);
+    assert_int_equal(record.declined.list[0], fixture_tag(fixture, "gale").number);
 }
 
 #define TEST(name) cmocka_unit_test_setup_teardown(name, fixture_setup, fixture_teardown)

@@ -89,7 +89,19 @@ static void a_store_of_a_newer_version_is_refused_with_a_sentence(void **state)
     assert_int_equal(store_open(&fixture->settings, &fixture->store, &error), STORE_NEWER);
     assert_null(fixture->store);
     assert_string_equal(error.text, "the store was written by a newer version of undertag (format "
-                                    "2, this version reads up to 1)");
+                                    "3, this version reads up to 2)");
+}
+
+static void a_store_of_an_early_version_is_refused_with_a_sentence(void **state)
+{
+    struct fixture *fixture = *state;
+    struct store_error error = {0};
+    unsigned char early[4 + STORE_UUID_BYTES + 24] = {1, 0, 0, 0};
+    fixture_close(fixture);
+    write_format(fixture, early, sizeof early);
+    assert_int_equal(store_open(&fixture->settings, &fixture->store, &error), STORE_DENIED);
+    assert_string_equal(error.text, "the store has format 1, of an early version whose items "
+                                    "cannot be taken over: file them again into a new home");
 }
 
 static void a_first_record_that_is_cut_short_is_damage(void **state)
@@ -372,6 +384,7 @@ int main(void)
         TEST(opening_it_again_keeps_what_was_there),
         TEST(each_store_has_a_random_uuid_of_its_own),
         TEST(a_store_of_a_newer_version_is_refused_with_a_sentence),
+        TEST(a_store_of_an_early_version_is_refused_with_a_sentence),
         TEST(a_first_record_that_is_cut_short_is_damage),
         TEST(a_home_that_is_not_there_is_refused_with_a_sentence),
         TEST(a_file_where_the_store_should_be_is_refused),

@@ -38,8 +38,8 @@ static void a_new_tag_is_open_and_counts_nothing(void **state)
     struct vocabulary_tag tag = fixture_tag(fixture, "brume d'\xC3\xA9t\xC3\xA9");
     assert_int_equal(tag.number, number);
     assert_string_equal(tag.name, "brume d'\xC3\xA9t\xC3\xA9");
-    assert_int_equal(tag.count, 0);
-    assert_int_equal(tag.unprompted, 0);
+    assert_int_equal(tag.counts.count, 0);
+    assert_int_equal(tag.counts.unprompted, 0);
     assert_int_equal(tag.opened_seq, 17);
     assert_int_equal(tag.state, VOCABULARY_OPEN);
 }
@@ -50,8 +50,8 @@ static void counts_and_state_are_stored_anew(void **state)
     struct store_error error = {0};
     (void)open_tag(fixture, "fog", 1);
     struct vocabulary_tag tag = fixture_tag(fixture, "fog");
-    tag.count = UINT32_MAX;
-    tag.unprompted = 5;
+    tag.counts.count = UINT32_MAX;
+    tag.counts.unprompted = 5;
     tag.state = VOCABULARY_RETIRED;
     struct store_view *view = fixture_write(fixture);
     assert_int_equal(vocabulary_put(view, &tag, &error), STORE_OK);
@@ -61,8 +61,8 @@ static void counts_and_state_are_stored_anew(void **state)
     assert_int_equal(vocabulary_get(view, tag.number, &again, &error), STORE_OK);
     store_end(view);
     assert_string_equal(again.name, "fog");
-    assert_int_equal(again.count, UINT32_MAX);
-    assert_int_equal(again.unprompted, 5);
+    assert_int_equal(again.counts.count, UINT32_MAX);
+    assert_int_equal(again.counts.unprompted, 5);
     assert_int_equal(again.state, VOCABULARY_RETIRED);
 }
 

@@ -187,7 +187,7 @@ static void a_change_that_is_done_is_in_the_store(void **state)
     assert_int_equal(wait_for(writing, 1), 1);
     assert_done(change, ITEM_NEW, 1);
     assert_true(is_text(fixture_record(writing->store, 1).text, "fog"));
-    assert_int_equal(fixture_tag(writing->store, "weather").count, 1);
+    assert_int_equal(fixture_tag(writing->store, "weather").counts.count, 1);
     assert_int_equal(backlog_read(writing->backlog).committed, 1);
 }
 

@@ -12,7 +12,7 @@ static const double discounts[DISCOUNTED_PLACES] = {1.0, 0.6309297535714575, 0.5
 
 /* Σ_{j<=m} 1/log2(j + 1), by m. */
 static const double ideal_gains[DISCOUNTED_PLACES + 1] = {
-    0.0, 1.0, 1.6309297535714575, 2.1309297535714575, 2.5616063116448506, 2.948459118879392};
+    0.0, 1.0, 1.6309297535714575, 2.1309297535714578, 2.5616063116448506, 2.9484591188793923};
 
 static const char *const names[RANKING_FIGURES] = {"P@1",   "P@3",      "P@5",      "nDCG@5",
                                                    "PSP@1", "PSP@3",    "PSP@5",    "PSnDCG@5",

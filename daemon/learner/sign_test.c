@@ -12,18 +12,19 @@ static double log_factorial(double n)
 double sign_test(uint64_t wins, uint64_t losses)
 {
     static const double negligible = 1e-17;
-    double more = (double)(wins > losses ? wins : losses);
-    double fewer = (double)(wins > losses ? losses : wins);
-    if (more <= fewer) {
+    uint64_t more = wins > losses ? wins : losses;
+    uint64_t fewer = wins > losses ? losses : wins;
+    uint64_t n = more + fewer;
+    if (more == fewer) {
         return 1.0;
     }
     /* From P(X = more) on, each term by the one before; they fall, since more > n/2. */
-    double n = more + fewer;
-    double term = exp(log_factorial(n) - log_factorial(more) - log_factorial(fewer) - n * log(2.0));
+    double term = exp(log_factorial((double)n) - log_factorial((double)more) -
+                      log_factorial((double)fewer) - (double)n * log(2.0));
     double tail = 0.0;
-    for (double k = more; k <= n && term > negligible * tail; k += 1.0) {
+    for (uint64_t k = more; k <= n && term > negligible * tail; k++) {
         tail += term;
-        term *= (n - k) / (k + 1.0);
+        term *= (double)(n - k) / (double)(k + 1);
     }
     return fmin(1.0, 2.0 * tail);
 }

@@ -79,16 +79,19 @@ static void a_gain_is_the_learner_s_sum_over_the_shadow_s(void **state)
     assert_near(gain.p, 0.625, 1e-14);
 }
 
+/* Of three pairs the shadow hits two: Σ(a - 2/3)² = 2/3; √(3/2·2/3)/3 = 1/3. */
 static void what_the_shadow_did_not_score_enters_no_gain(void **state)
 {
     add_times(*state, 5, true, -1);
     add_times(*state, 1, true, 1);
     add_times(*state, 1, false, 1);
+    add_times(*state, 1, false, 0);
     struct standing_in_band all = ask_all(*state, 0);
-    assert_int_equal(all.items, 7);
-    assert_int_equal(all.paired, 2);
-    assert_near(all.with[RANKING_P1].value, 6.0 / 7, 1e-15);
-    assert_near(all.without[RANKING_P1].value, 1.0, 0.0);
+    assert_int_equal(all.items, 8);
+    assert_int_equal(all.paired, 3);
+    assert_near(all.with[RANKING_P1].value, 6.0 / 8, 1e-15);
+    assert_near(all.without[RANKING_P1].value, 2.0 / 3, 1e-15);
+    assert_near(all.without[RANKING_P1].error, 1.0 / 3, 1e-14);
     assert_near(all.gain[RANKING_P1].value, -0.5, 1e-15);
 }
 

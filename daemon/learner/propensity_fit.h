@@ -1,0 +1,113 @@
+/*
+ * propensity_fit: the propensity curve fitted to what full checks of items found, how sure it is,
+ * and the posterior of one tag around it. Pure functions of numbers; any thread.
+ *
+ * A tag given N_l times unprompted among N items has
+ *     logit p = A·ln((N_l + B)/(1 + B)) - ln growth(N) + d(N_l),  growth = max(ln N - 1, 1),
+ * the published curve (Jain, Prabhu, Varma, KDD 2016) written as a logit, and a deviation d, 0
+ * until evidence carries one; p is clipped to [0.01, 1]. d is linear in the count between knots at
+ * the counts 2^k - 1, and constant beyond the last.
+ *
+ * p is read as a share of pairs: of the (item, tag) pairs that are true of tags with this count,
+ * how many were given. Then N_l/p counts the true pairs without bias.
+ */
+#ifndef UNDERTAG_PROPENSITY_FIT_H
+#define UNDERTAG_PROPENSITY_FIT_H
+
+#include <stddef.h>
+
+#include "daemon/learner/propensity.h"
+
+enum {
+    PROPENSITY_KNOTS = 18,
+    /* A symmetric matrix over knots: row by row, each up to its diagonal. */
+    PROPENSITY_COVARIANCES = PROPENSITY_KNOTS * (PROPENSITY_KNOTS + 1) / 2,
+    PROPENSITY_FIT_DOUBLES = 6 + PROPENSITY_KNOTS + PROPENSITY_COVARIANCES
+};
+
+/*
+ * Plain numbers: may be stored and restored as PROPENSITY_FIT_DOUBLES doubles in the order below.
+ */
+struct propensity_fit {
+    double a; /* the curve's A and B */
+    double b;
+    double concentration;                      /* κ > 0: one tag's p ~ Beta(κm, κ(1 - m)) */
+    double deviation_scale;                    /* the prior's step of d per octave; 0: none */
+    double trials;                             /* trials behind the fit; 0: the defaults */
+    double slope_scale;                        /* 1 (spare) */
+    double deviation[PROPENSITY_KNOTS];        /* d at the counts 2^k - 1 */
+    double covariance[PROPENSITY_COVARIANCES]; /* of the logit at the knots */
+};
+
+/* What full checks say of one tag. */
+struct propensity_evidence {
+    double tag_count; /* N_l today, >= 0 (effective, for a tag opened late) */
+    double trials;    /* checked items it truly belongs to; weights make fractions */
+    double given;     /* of these, given before the check; 0 <= given <= trials */
+};
+
+enum propensity_from {
+    PROPENSITY_FROM_CURVE,  /* no check has said anything, of any tag */
+    PROPENSITY_FROM_CHECKS, /* this tag's own trials weigh more than the curve */
+    PROPENSITY_FROM_BOTH
+};
+
+struct propensity_of_tag {
+    double p;             /* the posterior's mean, in [0.01, 1] */
+    double low;           /* its 90 % interval; low <= p <= high */
+    double high;          /* */
+    double concentration; /* α + β of the posterior Beta, own trials included */
+    enum propensity_from from;
+};
+
+/* The fit without evidence: the mean is propensity_of_curve(curve), the spread the prior's. */
+void propensity_fit_default(const struct propensity_curve *curve, struct propensity_fit *ret_fit);
+
+/*
+ * The fit to evidence: maximum a posteriori around `defaults`, the deviation's scale chosen by
+ * marginal likelihood (Laplace) from a small grid that includes 0. Never fails, allocates nothing;
+ * the order of the tags does not matter, to the last bit. Tags without trials change nothing, so
+ * they may be left out; without any trial the result is the default fit. `documents` is N. Takes
+ * some milliseconds.
+ */
+void propensity_fit_evidence(const struct propensity_curve *defaults,
+                             const struct propensity_evidence *tags, size_t count, double documents,
+                             struct propensity_fit *ret_fit);
+
+/* growth(N) = max(ln N - 1, 1): what the _at functions take, once for many tags. */
+double propensity_growth(double documents);
+
+/* p of a tag given `tag_count` times among `documents` items, by the fitted curve; in [0.01, 1]. */
+double propensity_fit_mean(const struct propensity_fit *fit, double tag_count, double documents);
+double propensity_fit_mean_at(const struct propensity_fit *fit, double tag_count, double growth);
+
+/*
+ * The posterior of one tag's p: the curve's Beta updated by the tag's own `trials` and `given`.
+ * The mean alone is cheap: no quantile.
+ */
+struct propensity_of_tag propensity_fit_tag(const struct propensity_fit *fit, double tag_count,
+                                            double documents, double trials, double given);
+double propensity_fit_tag_mean_at(const struct propensity_fit *fit, double tag_count, double growth,
+                                  double trials, double given);
+
+/* The standard deviation of the curve's logit at a count. */
+double propensity_fit_logit_spread(const struct propensity_fit *fit, double tag_count);
+
+/* Where a count lies between knots: `below` and `below + 1` with weights 1 - share and share. */
+struct propensity_place {
+    size_t below; /* <= PROPENSITY_KNOTS - 2 */
+    double share; /* in [0, 1] */
+};
+struct propensity_place propensity_knots_at(double tag_count);
+
+/* g' Σ g: the variance of a sum whose derivatives by the logits at the knots are `gradient`. */
+double propensity_fit_variance(const struct propensity_fit *fit,
+                               const double gradient[PROPENSITY_KNOTS]);
+
+/*
+ * The effective count N_l·N/N_since of a tag opened when N - N_since items had been filed; N_since
+ * is taken as at least 1,000, or N if that is less. A tag opened by being used has N_since = N.
+ */
+double propensity_late_count(double tag_count, double documents, double documents_since);
+
+#endif

@@ -8,8 +8,10 @@
  * until evidence carries one; p is clipped to [0.01, 1]. d is linear in the count between knots at
  * the counts 2^k - 1, and constant beyond the last.
  *
- * p is read as a share of pairs: of the (item, tag) pairs that are true of tags with this count,
- * how many were given. Then N_l/p counts the true pairs without bias.
+ * A tried pair is read at the count of the tag's other pairs: a given one at N_l - 1, a hidden one
+ * at N_l, and none where that is below 1, since only a given pair made such a tag known. (Reading
+ * both at N_l calls tags with one use more complete than they are: measured, .157 for .093.)
+ * ΣN_l/p then counts the true pairs of all tags, of those nobody has used yet included.
  */
 #ifndef UNDERTAG_PROPENSITY_FIT_H
 #define UNDERTAG_PROPENSITY_FIT_H
@@ -32,9 +34,9 @@ struct propensity_fit {
     double a; /* the curve's A and B */
     double b;
     double concentration;                      /* κ > 0: one tag's p ~ Beta(κm, κ(1 - m)) */
-    double deviation_scale;                    /* the prior's step of d per octave; 0: none */
+    double deviation_scale;                    /* the step of d per octave that evidence favours */
     double trials;                             /* trials behind the fit; 0: the defaults */
-    double slope_scale;                        /* 1 (spare) */
+    double documents;                          /* N at the time of the fit; 0: the defaults */
     double deviation[PROPENSITY_KNOTS];        /* d at the counts 2^k - 1 */
     double covariance[PROPENSITY_COVARIANCES]; /* of the logit at the knots */
 };
@@ -65,7 +67,8 @@ void propensity_fit_default(const struct propensity_curve *curve, struct propens
 
 /*
  * The fit to evidence: maximum a posteriori around `defaults`, the deviation's scale chosen by
- * marginal likelihood (Laplace) from a small grid that includes 0. Never fails, allocates nothing;
+ * marginal likelihood (Laplace) on a small grid that includes 0 (the fits are averaged with these
+ * weights, so that nothing jumps). Never fails, allocates nothing;
  * the order of the tags does not matter, to the last bit. Tags without trials change nothing, so
  * they may be left out; without any trial the result is the default fit. `documents` is N. Takes
  * some milliseconds.
@@ -89,6 +92,22 @@ struct propensity_of_tag propensity_fit_tag(const struct propensity_fit *fit, do
                                             double documents, double trials, double given);
 double propensity_fit_tag_mean_at(const struct propensity_fit *fit, double tag_count, double growth,
                                   double trials, double given);
+
+/* What the curve says of one tag, and the trials that are its own. */
+struct propensity_prior {
+    double others; /* the count without the tag's own given trials: where the curve is read */
+    double mean;   /* m, the curve there */
+    double tags;   /* κ: how much tags differ around the curve */
+    double concentration; /* κ, lowered by the curve's own uncertainty: p ~ Beta(cm, c(1 - m)) */
+    double trials;        /* less one where that given pair alone made the tag known */
+    double given;
+};
+struct propensity_prior propensity_fit_prior_at(const struct propensity_fit *fit, double tag_count,
+                                                double growth, double trials, double given);
+
+/* What the p that follows from `prior` rests on. */
+enum propensity_from propensity_from_what(const struct propensity_fit *fit,
+                                          const struct propensity_prior *prior);
 
 /* The standard deviation of the curve's logit at a count. */
 double propensity_fit_logit_spread(const struct propensity_fit *fit, double tag_count);

@@ -1,8 +1,9 @@
 /*
- * Why the mean is exactly U/p - U: the curve's Beta(α, β) is of the p of true pairs. A given pair
- * is met in proportion to p, so the p of given pairs is Beta(α + 1, β), and the mean of 1/p - 1
- * under it is β/α = 1/p - 1 at p = α/(α + β). With p from it, U given pairs leave hidden ones that
- * are beta-negative-binomial: P(h + 1)/P(h) = (U + h)(β + h)/((h + 1)(α + 1 + U + β + h)).
+ * Why the mean is exactly r(1 - p)/p, r = U less the rarity: the curve's Beta(α, β) is of the p of
+ * true pairs. A given pair is met in proportion to p, so the p of given pairs is Beta(α + 1, β),
+ * and the mean of 1/p - 1 under it is β/α = 1/p - 1 at p = α/(α + β). With p from it, r successes
+ * leave hidden pairs that are beta-negative-binomial: P(h + 1)/P(h) = (r + h)(β + h)/((h + 1)(α + 1
+ * + r + β + h)).
  */
 #include "daemon/learner/completeness.h"
 
@@ -21,7 +22,7 @@ static const double LEAST_LOG_CHANCE = -700.0;
 
 /* The hidden pairs' distribution. */
 struct hidden {
-    double successes; /* U */
+    double successes; /* r */
     double alpha;     /* of given pairs: α + 1 */
     double beta;
 };
@@ -33,9 +34,14 @@ static double p_of(const struct propensity_prior *prior)
     return fmin(fmax(p, LEAST_PROPENSITY), 1.0);
 }
 
-static double missing_of(const struct completeness_tag *tag, double p)
+static double successes_of(const struct propensity_fit *fit, const struct completeness_tag *tag)
 {
-    return fmax(tag->unprompted_open / p - tag->unprompted_open - tag->found, 0.0);
+    return fmax(tag->unprompted_open - fit->rarity, 0.0);
+}
+
+static double missing_of(double successes, double p, double found)
+{
+    return fmax(successes * (1.0 - p) / p - found, 0.0);
 }
 
 static double share_of(double count, double missing)
@@ -116,7 +122,8 @@ struct completeness completeness_of_tag(const struct propensity_fit *fit,
     struct propensity_prior prior = propensity_fit_prior_at(
         fit, tag->tag_count, propensity_growth(documents), tag->trials, tag->given);
     double p = p_of(&prior);
-    double missing = missing_of(tag, p);
+    double successes = successes_of(fit, tag);
+    double missing = missing_of(successes, p, tag->found);
     double share = share_of(tag->count, missing);
     double weight = prior.concentration + prior.trials;
     struct completeness result = {
@@ -133,7 +140,7 @@ struct completeness completeness_of_tag(const struct propensity_fit *fit,
         return result;
     }
     if (p < 1.0) {
-        struct hidden hidden = {.successes = fmax(tag->unprompted_open, LEAST_SUCCESSES),
+        struct hidden hidden = {.successes = fmax(successes, LEAST_SUCCESSES),
                                 .alpha = weight * p + 1.0,
                                 .beta = weight * (1.0 - p)};
         struct interval points = hidden_interval(&hidden, tag->found);
@@ -146,8 +153,8 @@ struct completeness completeness_of_tag(const struct propensity_fit *fit,
 double completeness_missing_at(const struct propensity_fit *fit, const struct completeness_tag *tag,
                                double growth)
 {
-    return missing_of(
-        tag, propensity_fit_tag_mean_at(fit, tag->tag_count, growth, tag->trials, tag->given));
+    double p = propensity_fit_tag_mean_at(fit, tag->tag_count, growth, tag->trials, tag->given);
+    return missing_of(successes_of(fit, tag), p, tag->found);
 }
 
 void completeness_sum_init(struct completeness_sum *sum)
@@ -161,8 +168,8 @@ void completeness_sum_add(struct completeness_sum *sum, const struct propensity_
     struct propensity_prior prior =
         propensity_fit_prior_at(fit, tag->tag_count, growth, tag->trials, tag->given);
     double p = p_of(&prior);
-    double missing = missing_of(tag, p);
-    double given = tag->unprompted_open;
+    double given = successes_of(fit, tag);
+    double missing = missing_of(given, p, tag->found);
     sum->count += tag->count;
     sum->missing += missing;
     sum->trials += tag->trials;
@@ -174,12 +181,13 @@ void completeness_sum_add(struct completeness_sum *sum, const struct propensity_
     /* Var 1/p under Beta(α + 1, β) is (1 - p)/(p²(α - 1)); a small α has none: kept finite. */
     double spread = (1.0 - p) / (p * p);
     sum->variance += given * spread + given * given * spread / fmax(alpha - 1.0, 0.5 * alpha);
-    /* dM/dp = -U/p², dp/dm = c/(c + n), dm/dlogit = m(1 - m). */
+    /* dM/dp = -r/p², dp/dm = c/(c + n), dm/dlogit = m(1 - m). */
     double slope =
         -given / (p * p) * prior.concentration / weight * prior.mean * (1.0 - prior.mean);
     struct propensity_place place = propensity_knots_at(prior.others);
     sum->gradient[place.below] += (1.0 - place.share) * slope;
     sum->gradient[place.below + 1] += place.share * slope;
+    sum->rarity_slope -= (1.0 - p) / p;
 }
 
 void completeness_sum_merge(struct completeness_sum *sum, const struct completeness_sum *part)
@@ -187,6 +195,7 @@ void completeness_sum_merge(struct completeness_sum *sum, const struct completen
     sum->count += part->count;
     sum->missing += part->missing;
     sum->variance += part->variance;
+    sum->rarity_slope += part->rarity_slope;
     sum->trials += part->trials;
     for (size_t knot = 0; knot < PROPENSITY_KNOTS; knot++) {
         sum->gradient[knot] += part->gradient[knot];
@@ -207,7 +216,9 @@ struct completeness completeness_of_sum(const struct completeness_sum *sum,
             fit->trials > 0.0 || sum->trials > 0.0 ? PROPENSITY_FROM_BOTH : PROPENSITY_FROM_CURVE,
     };
     if (sum->missing > 0.0) {
-        double variance = sum->variance + propensity_fit_variance(fit, sum->gradient);
+        double rarity = sum->rarity_slope * fit->rarity_spread;
+        double variance =
+            sum->variance + propensity_fit_variance(fit, sum->gradient) + rarity * rarity;
         double ratio = exp(INTERVAL_Z * sqrt(log1p(variance / (sum->missing * sum->missing))));
         result.low = share_of(sum->count, sum->missing * ratio);
         result.high = share_of(sum->count, sum->missing / ratio);

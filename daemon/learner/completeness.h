@@ -3,8 +3,9 @@
  * intervals. Pure functions of numbers; any thread.
  *
  * Of the items not fully checked, U pairs were given unprompted. Given p, the hidden ones are
- * negative binomial (U successes, p) with the mean U/p - U; those since found are no longer
- * missing. share = count/(count + missing).
+ * negative binomial (U - α successes, p) with the mean (U - α)(1 - p)/p, α the fit's `rarity`; a
+ * fit with α = 0 gives the plain U/p - U, which counts the pairs of tags nobody has used yet too.
+ * Those since found are no longer missing. share = count/(count + missing).
  */
 #ifndef UNDERTAG_COMPLETENESS_H
 #define UNDERTAG_COMPLETENESS_H
@@ -25,7 +26,7 @@ struct completeness {
     double low;   /* the 90 % interval of the share as it really is (not of its expectation) */
     double high;
     double given;   /* pairs on record: `count`, or its sum */
-    double missing; /* expected: max(0, U/p - U - found) */
+    double missing; /* expected: max(0, (U - α)(1 - p)/p - found), U at least α */
     enum propensity_from from;
 };
 
@@ -43,6 +44,7 @@ struct completeness_sum {
     double missing;
     double variance;                   /* of the parts that are each tag's own */
     double gradient[PROPENSITY_KNOTS]; /* d missing / d logit of the curve at the knots: shared */
+    double rarity_slope;               /* d missing / dα: shared */
     double trials;
 };
 
@@ -54,8 +56,7 @@ void completeness_sum_merge(struct completeness_sum *sum, const struct completen
 
 /*
  * The total share: the curve's uncertainty is shared by its tags (delta method with the fit's
- * covariance), the rest independent. `from`: checks when own trials carry most tags' weight is not
- * told here: curve without any evidence, else both.
+ * covariance), the rest independent. `from` is the curve without any evidence, else both.
  */
 struct completeness completeness_of_sum(const struct completeness_sum *sum,
                                         const struct propensity_fit *fit);

@@ -1,20 +1,15 @@
 /*
- * The fit. The evidence is summed into bins of counts, in whole multiples of 2^-20, so that its
- * order does not matter. For each scale τ of the deviation the posterior's maximum is found by
+ * The fit to binned evidence. For each scale τ of the deviation the posterior's maximum is found by
  * Fisher scoring, and its marginal likelihood by Laplace; the fits are averaged with these weights.
- * Tags differ around the curve, so a tag with n trials counts as n(κ + 1)/(κ + n) of them
- * (beta-binomial variance), with κ from the squared residuals, in a few rounds.
  *
  * The unknowns are departures: A and ln(B + 1) from the configured ones, and d at the knots, a
  * random walk over octaves whose first value is LEVEL_STEPS steps wide.
  */
+#include "daemon/learner/propensity_private.h"
+
 #include <math.h>
 #include <stdbool.h>
-#include <stdint.h>
 #include <string.h>
-
-#include "daemon/learner/census.h"
-#include "daemon/learner/propensity_fit.h"
 
 enum {
     SHAPES = 2, /* A and ln(B + 1) */
@@ -29,12 +24,6 @@ enum {
 static const double A_SPREAD = 0.06;
 static const double B_SPREAD = 0.4;
 static const double LEVEL_STEPS = 3.0;
-static const double DEFAULT_CONCENTRATION = 30.0;
-/* The prior of κ weighs as much as this many tags. */
-static const double CONCENTRATION_TAGS = 20.0;
-static const double LEAST_RHO = 0.0005;
-static const double MOST_RHO = 0.5;
-
 /* Steps τ per octave and their prior weights; on average τ² is .107². */
 static const struct {
     double scale;
@@ -42,18 +31,11 @@ static const struct {
 } GRID[SCALES] = {{0.0, 0.58},  {0.05, 0.2},  {0.1, 0.15}, {0.2, 0.05},
                   {0.4, 0.015}, {0.8, 0.004}, {1.6, 0.001}};
 
-static const double FIXED_ONE = 1048576.0; /* 2^20 */
-
-struct bins {
-    double given[CENSUS_BINS];
-    double hidden[CENSUS_BINS];
-};
-
 struct problem {
     double a;      /* configured */
     double log_b1; /* ln(B + 1), configured */
     double log_growth;
-    struct bins bins;
+    const struct propensity_bins *bins;
 };
 
 /* A symmetric positive matrix and its factor, lower triangles; `size` rows in use. */
@@ -212,8 +194,8 @@ static double objective_at(const struct problem *problem, const struct matrix *p
     double sum = -0.5 * quadratic(precision, at, product);
     bool deviates = precision->size > SHAPES;
     for (size_t bin = 1; bin < CENSUS_BINS; bin++) {
-        double given = problem->bins.given[bin];
-        double hidden = problem->bins.hidden[bin];
+        double given = problem->bins->given[bin];
+        double hidden = problem->bins->hidden[bin];
         if (given + hidden > 0.0) {
             double logit = slopes_at(problem, at, deviates, census_middle(bin)).logit;
             sum -= given * log1pexp(-logit) + hidden * log1pexp(logit);
@@ -233,8 +215,8 @@ static void score(const struct problem *problem, const struct matrix *precision,
     }
     bool deviates = precision->size > SHAPES;
     for (size_t bin = 1; bin < CENSUS_BINS; bin++) {
-        double given = problem->bins.given[bin];
-        double trials = given + problem->bins.hidden[bin];
+        double given = problem->bins->given[bin];
+        double trials = given + problem->bins->hidden[bin];
         if (!(trials > 0.0)) {
             continue;
         }
@@ -327,38 +309,51 @@ static void add_covariance(const struct problem *problem, const struct mode *mod
     }
 }
 
+/* The posterior weights of the scales; returns the heaviest. */
+static size_t weigh(const struct mode modes[SCALES], double *ret_weights)
+{
+    size_t best = 0;
+    double sum = 0.0;
+    for (size_t i = 0; i < SCALES; i++) {
+        ret_weights[i] = log(GRID[i].weight) + modes[i].evidence;
+        best = ret_weights[i] > ret_weights[best] ? i : best;
+    }
+    double most = ret_weights[best];
+    for (size_t i = 0; i < SCALES; i++) {
+        ret_weights[i] = exp(ret_weights[i] - most);
+        sum += ret_weights[i];
+    }
+    for (size_t i = 0; i < SCALES; i++) {
+        ret_weights[i] /= sum;
+    }
+    return best;
+}
+
 static void average(const struct problem *problem, const struct mode modes[SCALES],
                     struct propensity_fit *fit)
 {
     double weights[SCALES];
+    fit->deviation_scale = GRID[weigh(modes, weights)].scale;
+    /* A and B on average; d is what the average of the logits at the knots has beyond them. */
+    double shapes[UNKNOWNS] = {0};
     double logits[SCALES][PROPENSITY_KNOTS];
     double mean[PROPENSITY_KNOTS] = {0};
-    size_t best = 0;
-    double sum = 0.0;
     for (size_t i = 0; i < SCALES; i++) {
-        weights[i] = log(GRID[i].weight) + modes[i].evidence;
-        best = weights[i] > weights[best] ? i : best;
-    }
-    double most = weights[best];
-    for (size_t i = 0; i < SCALES; i++) {
-        weights[i] = exp(weights[i] - most);
-        sum += weights[i];
-    }
-    for (size_t i = 0; i < SCALES; i++) {
-        weights[i] /= sum;
+        shapes[0] += weights[i] * modes[i].at[0];
+        shapes[1] += weights[i] * modes[i].at[1];
+        bool deviates = modes[i].factor.size > SHAPES;
         for (size_t knot = 0; knot < PROPENSITY_KNOTS; knot++) {
-            bool deviates = modes[i].factor.size > SHAPES;
             logits[i][knot] = slopes_at(problem, modes[i].at, deviates, knot_count(knot)).logit;
             mean[knot] += weights[i] * logits[i][knot];
         }
     }
-    fit->a = problem->a + modes[0].at[0];
-    fit->b = exp(problem->log_b1 + modes[0].at[1]) - 1.0;
-    fit->deviation_scale = GRID[best].scale;
-    memset(fit->covariance, 0, sizeof fit->covariance);
+    fit->a = problem->a + shapes[0];
+    fit->b = exp(problem->log_b1 + shapes[1]) - 1.0;
     for (size_t knot = 0; knot < PROPENSITY_KNOTS; knot++) {
-        fit->deviation[knot] = mean[knot] - logits[0][knot];
+        fit->deviation[knot] =
+            mean[knot] - slopes_at(problem, shapes, false, knot_count(knot)).logit;
     }
+    memset(fit->covariance, 0, sizeof fit->covariance);
     for (size_t i = 0; i < SCALES; i++) {
         double distance[PROPENSITY_KNOTS];
         for (size_t knot = 0; knot < PROPENSITY_KNOTS; knot++) {
@@ -368,129 +363,18 @@ static void average(const struct problem *problem, const struct mode modes[SCALE
     }
 }
 
-static void fit_bins(const struct problem *problem, struct mode modes[SCALES],
-                     struct propensity_fit *fit)
+void propensity_solve(const struct propensity_curve *defaults, double growth,
+                      const struct propensity_bins *bins, struct propensity_fit *fit)
 {
-    for (size_t i = 0; i < SCALES; i++) {
-        find_mode(problem, GRID[i].scale, &modes[i]);
-    }
-    average(problem, modes, fit);
-}
-
-/* --- evidence into bins ------------------------------------------------------------------------
- */
-
-static int64_t fixed(double amount)
-{
-    return llrint(fmin(amount, 1e7) * FIXED_ONE);
-}
-
-static size_t bin_of(double tag_count)
-{
-    return tag_count >= (double)UINT32_MAX ? CENSUS_BINS - 1
-                                           : census_bin((uint32_t)fmax(tag_count, 0.0));
-}
-
-static bool usable(const struct propensity_evidence *tag)
-{
-    return isfinite(tag->tag_count) && isfinite(tag->trials) && tag->trials > 0.0 &&
-           tag->given >= 0.0 && tag->given <= tag->trials;
-}
-
-/* The trials within reach of the fit. */
-static double fill_bins(const struct propensity_evidence *tags, size_t count, double concentration,
-                        struct bins *bins)
-{
-    int64_t given[CENSUS_BINS] = {0};
-    int64_t hidden[CENSUS_BINS] = {0};
-    int64_t trials = 0;
-    for (size_t i = 0; i < count; i++) {
-        const struct propensity_evidence *tag = &tags[i];
-        if (!usable(tag)) {
-            continue;
-        }
-        trials += fixed(tag->trials);
-        double weight = (concentration + 1.0) / (concentration + fmax(tag->trials, 1.0));
-        given[bin_of(tag->tag_count - 1.0)] += fixed(weight * tag->given);
-        hidden[bin_of(tag->tag_count)] += fixed(weight * (tag->trials - tag->given));
-    }
-    for (size_t bin = 0; bin < CENSUS_BINS; bin++) {
-        bins->given[bin] = (double)given[bin] / FIXED_ONE;
-        bins->hidden[bin] = (double)hidden[bin] / FIXED_ONE;
-    }
-    return (double)trials / FIXED_ONE;
-}
-
-/*
- * ρ = 1/(κ + 1) from E (k - nm)² = nm(1 - m)(1 + (n - 1)ρ): per tag z = (k - nm)²/(nm(1 - m)) - 1
- * has the mean (n - 1)ρ, weighted by (n - 1)/(1 + (n - 1)ρ)², about the inverse of its variance.
- */
-static double concentration_of(const struct propensity_fit *fit,
-                               const struct propensity_evidence *tags, size_t count, double growth)
-{
-    double rho0 = 1.0 / (fit->concentration + 1.0);
-    int64_t upper = 0;
-    int64_t lower = 0;
-    for (size_t i = 0; i < count; i++) {
-        const struct propensity_evidence *tag = &tags[i];
-        double others = tag->tag_count - tag->given;
-        if (!usable(tag) || tag->trials <= 1.0 || others < 1.0) {
-            continue;
-        }
-        double m = propensity_fit_mean_at(fit, others, growth);
-        double residual = tag->given - tag->trials * m;
-        double z = residual * residual / fmax(tag->trials * m * (1.0 - m), 1e-3) - 1.0;
-        double more = tag->trials - 1.0;
-        double damped = 1.0 + more * rho0;
-        /* In units of tags: (n - 1)ρ/(1 + (n - 1)ρ) squared would be 1 each at most. */
-        upper += fixed(more / (damped * damped) * rho0 * fmin(z, 1e3));
-        lower += fixed(more / (damped * damped) * rho0 * more);
-    }
-    double prior = CONCENTRATION_TAGS * rho0;
-    double rho_prior = 1.0 / (DEFAULT_CONCENTRATION + 1.0);
-    double rho =
-        ((double)upper / FIXED_ONE + prior * rho_prior) / ((double)lower / FIXED_ONE + prior);
-    return 1.0 / fmin(fmax(rho, LEAST_RHO), MOST_RHO) - 1.0;
-}
-
-static struct problem problem_of(const struct propensity_curve *defaults, double documents)
-{
-    return (struct problem){
+    struct mode modes[SCALES] = {0};
+    const struct problem problem = {
         .a = defaults->a,
         .log_b1 = log(fmax(defaults->b + 1.0, 1e-6)),
-        .log_growth = log(propensity_growth(documents)),
+        .log_growth = log(growth),
+        .bins = bins,
     };
-}
-
-void propensity_fit_default(const struct propensity_curve *curve, struct propensity_fit *ret_fit)
-{
-    struct mode modes[SCALES] = {0};
-    struct problem problem = problem_of(curve, 0.0);
-    memset(ret_fit, 0, sizeof *ret_fit);
-    fit_bins(&problem, modes, ret_fit);
-    ret_fit->a = curve->a;
-    ret_fit->b = curve->b;
-    memset(ret_fit->deviation, 0, sizeof ret_fit->deviation);
-    ret_fit->deviation_scale = 0.0;
-    ret_fit->concentration = DEFAULT_CONCENTRATION;
-}
-
-void propensity_fit_evidence(const struct propensity_curve *defaults,
-                             const struct propensity_evidence *tags, size_t count, double documents,
-                             struct propensity_fit *ret_fit)
-{
-    struct mode modes[SCALES] = {0};
-    struct problem problem = problem_of(defaults, documents);
-    propensity_fit_default(defaults, ret_fit);
-    double growth = propensity_growth(documents);
-    for (int round = 0; round < ROUNDS; round++) {
-        double trials = fill_bins(tags, count, ret_fit->concentration, &problem.bins);
-        if (!(trials > 0.0)) {
-            return;
-        }
-        ret_fit->trials = trials;
-        ret_fit->documents = documents;
-        fit_bins(&problem, modes, ret_fit);
-        ret_fit->concentration = concentration_of(ret_fit, tags, count, growth);
+    for (size_t i = 0; i < SCALES; i++) {
+        find_mode(&problem, GRID[i].scale, &modes[i]);
     }
+    average(&problem, modes, fit);
 }

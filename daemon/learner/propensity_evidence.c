@@ -71,11 +71,13 @@ static double fill_bins(const struct propensity_evidence *tags, size_t count, do
 
 /*
  * ρ = 1/(κ + 1) from E (k - nm)² = nm(1 - m)(1 + (n - 1)ρ): per tag z = (k - nm)²/(nm(1 - m)) - 1
- * has the mean (n - 1)ρ, weighted by (n - 1)/(1 + (n - 1)ρ)², about the inverse of its variance.
+ * has the mean (n - 1)ρ, weighted by (n - 1)/(1 + (n - 1)ρ)², about the inverse of its variance. In
+ * units of the prior's ρ² a tag with 1/ρ trials or more weighs about 1.
  */
 static double concentration_of(const struct propensity_fit *fit,
                                const struct propensity_evidence *tags, size_t count, double growth)
 {
+    const double rho_prior = 1.0 / (DEFAULT_CONCENTRATION + 1.0);
     double rho0 = 1.0 / (fit->concentration + 1.0);
     int64_t upper = 0;
     int64_t lower = 0;
@@ -90,14 +92,12 @@ static double concentration_of(const struct propensity_fit *fit,
         double z = residual * residual / fmax(tag->trials * m * (1.0 - m), 1e-3) - 1.0;
         double more = tag->trials - 1.0;
         double damped = 1.0 + more * rho0;
-        /* In units of tags: (n - 1)ρ/(1 + (n - 1)ρ) squared would be 1 each at most. */
-        upper += fixed(more / (damped * damped) * rho0 * fmin(z, 1e3));
-        lower += fixed(more / (damped * damped) * rho0 * more);
+        double scaled = more * rho_prior * rho_prior / (damped * damped);
+        upper += fixed(scaled * fmin(z, 1e3));
+        lower += fixed(scaled * more);
     }
-    double prior = CONCENTRATION_TAGS * rho0;
-    double rho_prior = 1.0 / (DEFAULT_CONCENTRATION + 1.0);
-    double rho =
-        ((double)upper / FIXED_ONE + prior * rho_prior) / ((double)lower / FIXED_ONE + prior);
+    double rho = ((double)upper / FIXED_ONE + CONCENTRATION_TAGS * rho_prior) /
+                 ((double)lower / FIXED_ONE + CONCENTRATION_TAGS);
     return 1.0 / fmin(fmax(rho, LEAST_RHO), MOST_RHO) - 1.0;
 }
 

@@ -21,9 +21,9 @@ enum {
 };
 
 /* Wide enough for the published variants: A .5 to .6, ln(B + 1) .34 to 1.28. */
-static const double A_SPREAD = 0.06;
+static const double A_SPREAD = 0.05;
 static const double B_SPREAD = 0.4;
-static const double LEVEL_STEPS = 3.0;
+static const double LEVEL_STEPS = 1.0;
 /* Steps τ per octave and their prior weights; on average τ² is .107². */
 static const struct {
     double scale;

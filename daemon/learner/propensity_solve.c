@@ -197,7 +197,7 @@ static double objective_at(const struct problem *problem, const struct matrix *p
         double given = problem->bins->given[bin];
         double hidden = problem->bins->hidden[bin];
         if (given + hidden > 0.0) {
-            double logit = slopes_at(problem, at, deviates, census_middle(bin)).logit;
+            double logit = slopes_at(problem, at, deviates, problem->bins->count[bin]).logit;
             sum -= given * log1pexp(-logit) + hidden * log1pexp(logit);
         }
     }
@@ -220,7 +220,7 @@ static void score(const struct problem *problem, const struct matrix *precision,
         if (!(trials > 0.0)) {
             continue;
         }
-        struct slopes s = slopes_at(problem, at, deviates, census_middle(bin));
+        struct slopes s = slopes_at(problem, at, deviates, problem->bins->count[bin]);
         double p = 1.0 / (1.0 + exp(-s.logit));
         for (size_t i = 0; i < s.count; i++) {
             ret_gradient[s.unknown[i]] += (given - trials * p) * s.slope[i];

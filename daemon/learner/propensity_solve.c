@@ -242,18 +242,19 @@ static bool step_up(const struct problem *problem, const struct matrix *precisio
     solve_lower(&mode->factor, step);
     solve_upper(&mode->factor, step);
     double size = 1.0;
-    for (int halving = 0; halving < HALVINGS; halving++, size *= 0.5) {
+    for (int halving = 0; halving < HALVINGS; halving++) {
         double at[UNKNOWNS] = {0};
         for (size_t row = 0; row < precision->size; row++) {
             at[row] = mode->at[row] + size * step[row];
         }
         double objective = objective_at(problem, precision, at);
         if (objective >= mode->objective) {
-            bool gained = objective - mode->objective > 1e-9;
+            bool gained = objective - mode->objective > 1e-8;
             memcpy(mode->at, at, sizeof at);
             mode->objective = objective;
             return gained;
         }
+        size *= 0.5;
     }
     return false;
 }
@@ -374,6 +375,10 @@ void propensity_solve(const struct propensity_curve *defaults, double growth,
         .bins = bins,
     };
     for (size_t i = 0; i < SCALES; i++) {
+        if (i > 0) {
+            /* The next scale's maximum is not far. */
+            memcpy(modes[i].at, modes[i - 1].at, sizeof modes[i].at);
+        }
         find_mode(&problem, GRID[i].scale, &modes[i]);
     }
     average(&problem, modes, fit);

@@ -42,8 +42,9 @@ static double others_of(size_t i)
  */
 static void add(struct fixture *f, double tag_count, double trials, double given_share)
 {
-    for (double rest = trials; rest > 0.0; rest -= 1.0) {
-        double part = fmin(rest, 1.0);
+    size_t tags = (size_t)ceil(trials);
+    for (size_t i = 0; i < tags; i++) {
+        double part = fmin(trials - (double)i, 1.0);
         assert_true(f->count < EVIDENCE);
         f->evidence[f->count++] = (struct propensity_evidence){tag_count, part, part * given_share};
     }
@@ -366,9 +367,10 @@ static void more_trials_narrow_the_interval(void **state)
 {
     struct fixture *f = *state;
     double width = 1.0;
-    for (double trials = 0.0; trials <= 512.0; trials = trials * 2.0 + 2.0) {
+    const double trials[] = {0.0, 2.0, 6.0, 30.0, 126.0, 510.0};
+    for (size_t i = 0; i < 6; i++) {
         struct propensity_of_tag tag =
-            propensity_fit_tag(&f->none, 1e5, DOCUMENTS, trials, by_default(1e5) * trials);
+            propensity_fit_tag(&f->none, 1e5, DOCUMENTS, trials[i], by_default(1e5) * trials[i]);
         assert_true(tag.high - tag.low < width);
         width = tag.high - tag.low;
     }

@@ -81,6 +81,28 @@ static void more_found_than_expected_leaves_nothing_missing(void **state)
     assert_true(result.low < 0.95 && result.high == 1.0);
 }
 
+/* Ten given at p = .5, eight hidden ones found: what is left has the chances of the hidden pairs
+ * given that there are at least eight. P(H <= h) = I_p(10, h + 1). */
+static void what_was_found_is_taken_as_known_in_the_interval(void **state)
+{
+    struct fixture *f = *state;
+    struct completeness_tag tag = simple_tag(10.0);
+    tag.found = 8.0;
+    tag.count = 18.0;
+    struct completeness result = completeness_of_tag(&f->known, &tag, documents_for(0.5));
+    double below = beta_cdf(0.5, 10.0, 8.0);
+    double least = 8.0;
+    while (beta_cdf(0.5, 10.0, least + 1.0) - below < 0.05 * (1.0 - below)) {
+        least += 1.0;
+    }
+    double most = least;
+    while (beta_cdf(0.5, 10.0, most + 1.0) - below < 0.95 * (1.0 - below)) {
+        most += 1.0;
+    }
+    assert_near(result.high, 18.0 / (18.0 + least - 8.0), 1e-9);
+    assert_near(result.low, 18.0 / (18.0 + most - 8.0), 1e-9);
+}
+
 /* The mean of r(1 - p)/p over given pairs, whose p is Beta(α + 1, β), on a grid. */
 static void missing_is_its_mean_over_the_posterior(void **state)
 {
@@ -261,6 +283,20 @@ static void what_is_each_tag_s_own_evens_out(void **state)
     assert_near(result.low, 40000.0 / (40000.0 + most), 1e-6);
 }
 
+/* p = .5, κ = 102: the p of given pairs is Beta(52, 51), whose 1/p varies by (1 - p)/(p²(α - 1)),
+ * 2/50 (the variance of a Beta prime: 51·102/(50·51²) = .04). U = 1,000 in a tag: 2,000 + 40,000.
+ */
+static void tags_that_differ_are_less_sure_together(void **state)
+{
+    struct fixture *f = *state;
+    f->known.concentration = 102.0;
+    struct completeness_tag tag = simple_tag(1000.0);
+    struct completeness result = of_alike(&f->known, 10, &tag, documents_for(0.5));
+    double sd = sqrt(10.0 * 42000.0) / 10000.0;
+    double most = 10000.0 * exp(INTERVAL_Z * sqrt(log1p(sd * sd)));
+    assert_near(result.low, 10000.0 / (10000.0 + most), 1e-9);
+}
+
 static void sums_in_parts_are_the_sum(void **state)
 {
     struct fixture *f = *state;
@@ -314,6 +350,7 @@ int main(void)
         cmocka_unit_test_setup(missing_pairs_by_hand, set_up),
         cmocka_unit_test_setup(a_tag_used_once_hides_less, set_up),
         cmocka_unit_test_setup(more_found_than_expected_leaves_nothing_missing, set_up),
+        cmocka_unit_test_setup(what_was_found_is_taken_as_known_in_the_interval, set_up),
         cmocka_unit_test_setup(missing_is_its_mean_over_the_posterior, set_up),
         cmocka_unit_test_setup(with_a_known_propensity_the_hidden_are_negative_binomial, set_up),
         cmocka_unit_test_setup(the_interval_holds_the_realised_share_nine_times_in_ten, set_up),
@@ -323,6 +360,7 @@ int main(void)
         cmocka_unit_test_setup(a_sum_is_that_of_its_tags, set_up),
         cmocka_unit_test_setup(what_the_curve_does_not_know_is_shared, set_up),
         cmocka_unit_test_setup(what_is_each_tag_s_own_evens_out, set_up),
+        cmocka_unit_test_setup(tags_that_differ_are_less_sure_together, set_up),
         cmocka_unit_test_setup(sums_in_parts_are_the_sum, set_up),
         cmocka_unit_test_setup(what_rarity_does_not_know_is_shared, set_up),
         cmocka_unit_test_setup(nothing_at_all_is_complete, set_up),

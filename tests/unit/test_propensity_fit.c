@@ -351,6 +351,20 @@ static void a_tag_s_posterior_is_the_enumerated_one(void **state)
     assert_near(prior.others, 193.0, 0.0);
 }
 
+/* Variances add: that of tags around the curve, m(1 - m)/(κ + 1), and the curve's, which is its
+ * logit's times (m(1 - m))²; a Beta of concentration c has m(1 - m)/(c + 1). */
+static void an_unsure_curve_weighs_less_against_trials(void **state)
+{
+    struct fixture *f = *state;
+    struct propensity_prior prior =
+        propensity_fit_prior_at(&f->none, 31.0, propensity_growth(DOCUMENTS), 0.0, 0.0);
+    double spread = prior.mean * (1.0 - prior.mean);
+    double logit = propensity_fit_logit_spread(&f->none, 31.0);
+    double variance = spread / (f->none.concentration + 1.0) + spread * spread * logit * logit;
+    assert_near(spread / (prior.concentration + 1.0), variance, 1e-12);
+    assert_true(prior.concentration < 0.95 * f->none.concentration);
+}
+
 static void a_tag_given_more_often_is_given_more_surely(void **state)
 {
     struct fixture *f = *state;
@@ -442,6 +456,17 @@ static void a_sum_over_one_knot_varies_as_its_logit(void **state)
     assert_near(propensity_fit_variance(&f->none, gradient), 9.0 * spread * spread, 1e-12);
 }
 
+/* 5 lies halfway from the knot at 3 to that at 7. */
+static void between_knots_the_spread_is_that_of_both(void **state)
+{
+    struct fixture *f = *state;
+    double gradient[PROPENSITY_KNOTS] = {0};
+    gradient[2] = 0.5;
+    gradient[3] = 0.5;
+    double spread = propensity_fit_logit_spread(&f->none, 5.0);
+    assert_near(propensity_fit_variance(&f->none, gradient), spread * spread, 1e-12);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -463,6 +488,7 @@ int main(void)
         cmocka_unit_test_setup(rarity_follows_what_rare_tags_hide, set_up),
         cmocka_unit_test_setup(a_fit_survives_as_numbers, set_up),
         cmocka_unit_test_setup(a_tag_s_posterior_is_the_enumerated_one, set_up),
+        cmocka_unit_test_setup(an_unsure_curve_weighs_less_against_trials, set_up),
         cmocka_unit_test_setup(a_tag_given_more_often_is_given_more_surely, set_up),
         cmocka_unit_test_setup(more_trials_narrow_the_interval, set_up),
         cmocka_unit_test_setup(what_a_figure_rests_on_is_told, set_up),
@@ -471,6 +497,7 @@ int main(void)
         cmocka_unit_test_setup(in_a_small_store_no_tag_is_late, set_up),
         cmocka_unit_test_setup(a_count_lies_between_two_knots, set_up),
         cmocka_unit_test_setup(a_sum_over_one_knot_varies_as_its_logit, set_up),
+        cmocka_unit_test_setup(between_knots_the_spread_is_that_of_both, set_up),
     };
     return cmocka_run_group_tests_name("propensity_fit", tests, NULL, NULL);
 }

@@ -45,37 +45,56 @@ static bool usable(const struct propensity_evidence *tag)
            tag->given >= 0.0 && tag->given <= tag->trials;
 }
 
-/* A given pair is put `others` below its tag's count. Returns the trials. */
-static double fill_bins(const struct propensity_evidence *tags, size_t count, double concentration,
-                        double others, struct propensity_bins *ret_bins)
+/* Sums in whole multiples of 2^-20. */
+struct sums {
+    int64_t given[CENSUS_BINS];
+    int64_t hidden[CENSUS_BINS];
+    int64_t apart[CENSUS_BINS]; /* trials times how far their count is from the bin's middle */
+    int64_t trials;
+};
+
+static void sum_pairs(struct sums *sums, int64_t *sum, double tag_count, double amount)
 {
-    int64_t given[CENSUS_BINS] = {0};
-    int64_t hidden[CENSUS_BINS] = {0};
-    int64_t trials = 0;
+    size_t bin = bin_of(tag_count);
+    double apart = tag_count / fmax(census_middle(bin), 1.0) - 1.0;
+    sum[bin] += fixed(amount);
+    sums->apart[bin] += fixed(amount * fmin(fmax(apart, -0.9), 1.0));
+}
+
+/* A given pair is put `less` below its tag's count. Returns the trials. */
+static double fill_bins(const struct propensity_evidence *tags, size_t count, double concentration,
+                        double less, struct propensity_bins *ret_bins)
+{
+    struct sums sums = {0};
     for (size_t i = 0; i < count; i++) {
         const struct propensity_evidence *tag = &tags[i];
         if (!usable(tag)) {
             continue;
         }
-        trials += fixed(tag->trials);
+        sums.trials += fixed(tag->trials);
         double weight = (concentration + 1.0) / (concentration + fmax(tag->trials, 1.0));
-        given[bin_of(tag->tag_count - others)] += fixed(weight * tag->given);
-        hidden[bin_of(tag->tag_count)] += fixed(weight * (tag->trials - tag->given));
+        sum_pairs(&sums, sums.given, tag->tag_count - less, weight * tag->given);
+        sum_pairs(&sums, sums.hidden, tag->tag_count, weight * (tag->trials - tag->given));
     }
     for (size_t bin = 0; bin < CENSUS_BINS; bin++) {
-        ret_bins->given[bin] = (double)given[bin] / FIXED_ONE;
-        ret_bins->hidden[bin] = (double)hidden[bin] / FIXED_ONE;
+        ret_bins->given[bin] = (double)sums.given[bin] / FIXED_ONE;
+        ret_bins->hidden[bin] = (double)sums.hidden[bin] / FIXED_ONE;
+        double trials = (double)(sums.given[bin] + sums.hidden[bin]);
+        double apart = trials > 0.0 ? (double)sums.apart[bin] / trials : 0.0;
+        ret_bins->count[bin] = census_middle(bin) * (1.0 + apart);
     }
-    return (double)trials / FIXED_ONE;
+    return (double)sums.trials / FIXED_ONE;
 }
 
 /*
  * ρ = 1/(κ + 1) from E (k - nm)² = nm(1 - m)(1 + (n - 1)ρ): per tag z = (k - nm)²/(nm(1 - m)) - 1
- * has the mean (n - 1)ρ, weighted by (n - 1)/(1 + (n - 1)ρ)², about the inverse of its variance.
+ * has the mean (n - 1)ρ, weighted by (n - 1)/(1 + (n - 1)ρ)², about the inverse of its variance. In
+ * units of the prior's ρ² a tag with 1/ρ trials or more weighs about 1.
  */
 static double concentration_of(const struct propensity_fit *fit,
                                const struct propensity_evidence *tags, size_t count, double growth)
 {
+    const double rho_prior = 1.0 / (DEFAULT_CONCENTRATION + 1.0);
     double rho0 = 1.0 / (fit->concentration + 1.0);
     int64_t upper = 0;
     int64_t lower = 0;
@@ -90,14 +109,12 @@ static double concentration_of(const struct propensity_fit *fit,
         double z = residual * residual / fmax(tag->trials * m * (1.0 - m), 1e-3) - 1.0;
         double more = tag->trials - 1.0;
         double damped = 1.0 + more * rho0;
-        /* In units of tags: (n - 1)ρ/(1 + (n - 1)ρ) squared would be 1 each at most. */
-        upper += fixed(more / (damped * damped) * rho0 * fmin(z, 1e3));
-        lower += fixed(more / (damped * damped) * rho0 * more);
+        double scaled = more * rho_prior * rho_prior / (damped * damped);
+        upper += fixed(scaled * fmin(z, 1e3));
+        lower += fixed(scaled * more);
     }
-    double prior = CONCENTRATION_TAGS * rho0;
-    double rho_prior = 1.0 / (DEFAULT_CONCENTRATION + 1.0);
-    double rho =
-        ((double)upper / FIXED_ONE + prior * rho_prior) / ((double)lower / FIXED_ONE + prior);
+    double rho = ((double)upper / FIXED_ONE + CONCENTRATION_TAGS * rho_prior) /
+                 ((double)lower / FIXED_ONE + CONCENTRATION_TAGS);
     return 1.0 / fmin(fmax(rho, LEAST_RHO), MOST_RHO) - 1.0;
 }
 

@@ -13,9 +13,10 @@
  * both at N_l calls tags with one use more complete than they are: measured, .157 for .093.)
  * ΣN_l/p then counts the true pairs of all tags, of those nobody has used yet included. A tag that
  * is known hides less: it was seen, and most tags are rare. Where the number of tags that are true
- * of N items falls as N^-(1 + α), U given pairs leave (U - α)(1 - p)/p hidden in the mean (the
- * posterior of N is negative binomial with U - α successes), α being fitted too. On a real corpus
- * with known truth this took the error of the rare tags' share from .045 to .005 (measured).
+ * of n items falls as n^-(1 + α), U given pairs leave (U - α)(1 - p)/p hidden in the mean (the
+ * posterior of n is negative binomial with U - α successes), α being fitted too. On a real corpus
+ * thinned by a published curve this took the error of the share of tags used fewer than 30 times
+ * from .04 to under .01 (measured; other ways of thinning leave up to .03).
  */
 #ifndef UNDERTAG_PROPENSITY_FIT_H
 #define UNDERTAG_PROPENSITY_FIT_H
@@ -41,7 +42,7 @@ struct propensity_fit {
     double deviation_scale;                    /* the step of d per octave that evidence favours */
     double trials;                             /* trials behind the fit; 0: the defaults */
     double documents;                          /* N at the time of the fit; 0: the defaults */
-    double rarity;                             /* α in [0, 1), see below */
+    double rarity;                             /* α in [0, 1), see above */
     double rarity_spread;                      /* its standard deviation */
     double deviation[PROPENSITY_KNOTS];        /* d at the counts 2^k - 1 */
     double covariance[PROPENSITY_COVARIANCES]; /* of the logit at the knots */
@@ -61,9 +62,9 @@ enum propensity_from {
 };
 
 struct propensity_of_tag {
-    double p;             /* the posterior's mean, in [0.01, 1] */
-    double low;           /* its 90 % interval; low <= p <= high */
-    double high;          /* */
+    double p;   /* the posterior's mean, in [0.01, 1] */
+    double low; /* its 90 % interval; low <= p <= high */
+    double high;
     double concentration; /* α + β of the posterior Beta, own trials included */
     enum propensity_from from;
 };

@@ -11,6 +11,7 @@
 struct propensity_bins {
     double given[CENSUS_BINS];
     double hidden[CENSUS_BINS];
+    double count[CENSUS_BINS]; /* the mean count of a bin's trials */
 };
 
 /*

@@ -21,9 +21,9 @@ enum {
 };
 
 /* Wide enough for the published variants: A .5 to .6, ln(B + 1) .34 to 1.28. */
-static const double A_SPREAD = 0.06;
+static const double A_SPREAD = 0.05;
 static const double B_SPREAD = 0.4;
-static const double LEVEL_STEPS = 3.0;
+static const double LEVEL_STEPS = 1.0;
 /* Steps τ per octave and their prior weights; on average τ² is .107². */
 static const struct {
     double scale;
@@ -197,7 +197,7 @@ static double objective_at(const struct problem *problem, const struct matrix *p
         double given = problem->bins->given[bin];
         double hidden = problem->bins->hidden[bin];
         if (given + hidden > 0.0) {
-            double logit = slopes_at(problem, at, deviates, census_middle(bin)).logit;
+            double logit = slopes_at(problem, at, deviates, problem->bins->count[bin]).logit;
             sum -= given * log1pexp(-logit) + hidden * log1pexp(logit);
         }
     }
@@ -220,7 +220,7 @@ static void score(const struct problem *problem, const struct matrix *precision,
         if (!(trials > 0.0)) {
             continue;
         }
-        struct slopes s = slopes_at(problem, at, deviates, census_middle(bin));
+        struct slopes s = slopes_at(problem, at, deviates, problem->bins->count[bin]);
         double p = 1.0 / (1.0 + exp(-s.logit));
         for (size_t i = 0; i < s.count; i++) {
             ret_gradient[s.unknown[i]] += (given - trials * p) * s.slope[i];
@@ -242,18 +242,19 @@ static bool step_up(const struct problem *problem, const struct matrix *precisio
     solve_lower(&mode->factor, step);
     solve_upper(&mode->factor, step);
     double size = 1.0;
-    for (int halving = 0; halving < HALVINGS; halving++, size *= 0.5) {
+    for (int halving = 0; halving < HALVINGS; halving++) {
         double at[UNKNOWNS] = {0};
         for (size_t row = 0; row < precision->size; row++) {
             at[row] = mode->at[row] + size * step[row];
         }
         double objective = objective_at(problem, precision, at);
         if (objective >= mode->objective) {
-            bool gained = objective - mode->objective > 1e-9;
+            bool gained = objective - mode->objective > 1e-8;
             memcpy(mode->at, at, sizeof at);
             mode->objective = objective;
             return gained;
         }
+        size *= 0.5;
     }
     return false;
 }
@@ -374,6 +375,10 @@ void propensity_solve(const struct propensity_curve *defaults, double growth,
         .bins = bins,
     };
     for (size_t i = 0; i < SCALES; i++) {
+        if (i > 0) {
+            /* The next scale's maximum is not far. */
+            memcpy(modes[i].at, modes[i - 1].at, sizeof modes[i].at);
+        }
         find_mode(&problem, GRID[i].scale, &modes[i]);
     }
     average(&problem, modes, fit);

@@ -9,6 +9,7 @@ _Static_assert(sizeof(struct calibrators_bin) == 132 * sizeof(double), "a part h
 _Static_assert(sizeof(struct calibrators_curve) == 129 * sizeof(double), "a part has no padding");
 
 static const double BIN_WIDTH = 0.02;
+static const double BINS_PER_SCORE = 50.0;
 
 /*
  * The prior of a bin weighs as much as this many pairs in the pooled curve, and the pooled curve as
@@ -91,7 +92,7 @@ static size_t bin_of_score(double score)
     if (!(score > CALIBRATORS_FLOOR_SCORE)) {
         return 0;
     }
-    double above = (score - CALIBRATORS_FLOOR_SCORE) / BIN_WIDTH;
+    double above = (score - CALIBRATORS_FLOOR_SCORE) * BINS_PER_SCORE;
     return above >= CALIBRATORS_BINS - 1 ? CALIBRATORS_BINS - 1 : 1 + (size_t)above;
 }
 
@@ -167,13 +168,14 @@ struct estimate {
 
 static double not_given(const struct calibrators_cell *cell)
 {
-    return fmax(cell->pairs - cell->given, 0.0);
+    return cell->pairs > cell->given ? cell->pairs - cell->given : 0.0;
 }
 
 /* Rulings stand for no more pairs than there are. */
 static double examined(const struct calibrators_cell *cell)
 {
-    return fmin(cell->ruled, not_given(cell));
+    double most = not_given(cell);
+    return cell->ruled < most ? cell->ruled : most;
 }
 
 static double found(const struct calibrators_cell *cell)
@@ -232,8 +234,10 @@ static void estimate_groups(const struct calibrators *calibrators, const double 
         const struct calibrators_bin *bin = &calibrators->bins[b];
         move_usual(bin, group_of_class, one, usual);
         for (size_t c = 0; c < CALIBRATORS_CLASSES; c++) {
-            size_t g = group_of_class[c];
-            add_cell(&estimates[g][b], &bin->cells[c], propensities[c], usual[g], one);
+            if (bin->cells[c].pairs > 0.0 || bin->cells[c].known > 0.0) {
+                size_t g = group_of_class[c];
+                add_cell(&estimates[g][b], &bin->cells[c], propensities[c], usual[g], one);
+            }
         }
     }
 }
@@ -246,8 +250,8 @@ static const double CUTS[CALIBRATORS_GROUPS - 1] = {0.3, 0.5, 0.7, 0.85};
 size_t calibrators_group(double propensity)
 {
     size_t group = 0;
-    while (group < CALIBRATORS_GROUPS - 1 && propensity >= CUTS[group]) {
-        group++;
+    for (size_t i = 0; i < CALIBRATORS_GROUPS - 1; i++) {
+        group += propensity >= CUTS[i] ? 1 : 0;
     }
     return group;
 }
@@ -345,7 +349,7 @@ static double chance_on_curve(const struct calibrators_curve *curve, double scor
     if (bin == 0) {
         return curve->chance[0];
     }
-    double off_middle = (score - middle_of_bin(bin)) / BIN_WIDTH;
+    double off_middle = (score - middle_of_bin(bin)) * BINS_PER_SCORE;
     size_t other = off_middle < 0.0 ? bin - 1 : bin + 1;
     if (other >= CALIBRATORS_BINS || other == 0) {
         return curve->chance[bin];

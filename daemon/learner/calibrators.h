@@ -16,8 +16,9 @@
  * that is g/p (Horvitz & Thompson 1952); with all of the others examined it is a plain count. It is
  * linear in g and t, so small bins are not biased by being cut to [0, 1]. A ruling stands for
  * itself alone: those on gaps fall on the likeliest pairs, and say little about the others. (By
- * simulation the likeliest q has less variance where rulings fall at random, but twice the bias
- * where they do not.) Cells of few pairs lean on the λ round about them, see calibrators.c.
+ * simulation the likeliest q has less variance where rulings fall at random, but up to twice
+ * the bias where they do not.) Cells of few pairs lean on the λ round about them, see
+ * calibrators.c.
  *
  * Pairs that were known when filed (prompted or declined) are counted as they are, p = 1.
  *

@@ -39,7 +39,7 @@ static void two_hundred_given_above_the_floor_over_all_groups_are_enough(void **
     add_known(*state, SCORE, HALF, 400, 400);
     fit(*state, &curves);
     assert_true(calibrators_early(&curves));
-    calibrators_add_given(*state, SCORE, SURE);
+    add(*state, SCORE, SURE, 1, 1);
     fit(*state, &curves);
     assert_false(calibrators_early(&curves));
 }

@@ -68,7 +68,8 @@ static void the_chance_is_the_truth_however_much_was_examined(void **state)
     usual_propensities(propensities);
     for (size_t c = 0; c <= RARE; c++) {
         for (size_t i = 0; i < 5; i++) {
-            for (double q = 0.05; q < 1.0; q += 0.3) {
+            for (int percent = 5; percent < 100; percent += 30) {
+                double q = percent / 100.0;
                 calibrators_init(*state);
                 enumerate(*state, SCORE_BIN, c, &(struct world){q, propensities[c], shares[i], 0});
                 assert_near(chance_at(*state, SCORE, c), q, 1e-6);
@@ -164,6 +165,17 @@ static void a_group_with_hardly_any_evidence_keeps_to_the_others(void **state)
     double chance = chance_at(*state, SCORE, RARE);
     assert_true(chance > 0.2);
     assert_near(chance, 0.2, 0.1);
+}
+
+/* By hand: 100 pairs of p = .1, none given, say as much as 10: the pooled curve keeps the weight of
+ * 15·101/11 = 137.7 pairs, so .2·137.7/237.7. Were they taken for 100, .2·15/115 = .026. */
+static void a_pair_seldom_given_says_as_much_less(void **state)
+{
+    for (size_t bin = 1; bin < CALIBRATORS_BINS; bin++) {
+        enumerate(*state, bin, HALF, &(struct world){0.2, 0.5, 0.0, 0.0});
+        add(*state, 0.02 * (double)bin - 0.99, RARE, 100, 0);
+    }
+    assert_near(chance_at(*state, SCORE, RARE), 0.1158699, 1e-6);
 }
 
 /* Tags of one use in a thousand: their class stays as items come in, and what it stands for does
@@ -314,7 +326,8 @@ static void chances_near_one_are_not_too_low_on_the_average(void **state)
         struct calibrators_curves curves;
         calibrators_init(*state);
         for (int i = 0; i < PAIRS * (LAST_BIN - FIRST_BIN + 1); i++) {
-            double score = 0.02 * (FIRST_BIN + i / PAIRS) - 0.99;
+            int bin = FIRST_BIN + i / PAIRS;
+            double score = 0.02 * bin - 0.99;
             add_by_chance(*state, score, HALF, &(struct world){0.9, 0.5, 0.0, 0.0}, &random);
         }
         fit(*state, &curves);
@@ -369,6 +382,7 @@ int main(void)
         calibrators_test(wrongly_given_ones_taken_off_leave_the_truth),
         calibrators_test(groups_are_told_apart),
         calibrators_test(a_group_with_hardly_any_evidence_keeps_to_the_others),
+        calibrators_test(a_pair_seldom_given_says_as_much_less),
         calibrators_test(the_propensity_is_that_of_today),
         calibrators_test(the_chance_rises_with_the_score_whatever_the_evidence),
         calibrators_test(a_chance_is_never_above_one),

@@ -359,11 +359,18 @@ int engine_ask(struct engine *engine, const struct model_question *question,
     return code;
 }
 
-double engine_propensity(const struct engine *engine, uint64_t unprompted, uint64_t items)
+int engine_read_model(struct engine *engine,
+                      void (*read)(void *user, const struct model *model, uint64_t learned),
+                      void *user)
 {
-    const struct propensity_curve curve = {.a = engine->options.propensity_a,
-                                           .b = engine->options.propensity_b};
-    return propensity_of_curve(&curve, (double)unprompted, (double)items);
+    backlog_wait_for_promise(engine->backlog, clock_steady_ms());
+    shared_model_read(&engine->shared);
+    int code = engine->shared.broken ? -ENOMEM : 0;
+    if (code == 0) {
+        read(user, engine->shared.model, engine->shared.learned);
+    }
+    shared_model_unlock(&engine->shared);
+    return code;
 }
 
 struct engine_counts engine_count(struct engine *engine)

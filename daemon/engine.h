@@ -56,8 +56,13 @@ int engine_ask(struct engine *engine, const struct model_question *question,
                struct workspace *workspace, struct model_answer *ret_answer, uint64_t *ret_learned)
     __attribute__((warn_unused_result));
 
-/* The propensity of a tag given `unprompted` times in `items` items, by the curve. */
-double engine_propensity(const struct engine *engine, uint64_t unprompted, uint64_t items);
+/*
+ * Has the model read by `read`, which must not keep it, when it has learned what it must have.
+ * Returns 0, or -ENOMEM where memory ran out when the model learned last.
+ */
+int engine_read_model(struct engine *engine,
+                      void (*read)(void *user, const struct model *model, uint64_t learned),
+                      void *user) __attribute__((warn_unused_result));
 
 struct engine_counts {
     struct backlog_numbers progress;

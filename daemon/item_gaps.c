@@ -111,6 +111,9 @@ static int prepare_item(struct gaps_job *job, struct store_view *view,
     question->given_count = workspace->record.tags.count;
     question->excluded = workspace->record.known_not.list;
     question->excluded_count = workspace->record.known_not.count;
+    question->checked_below =
+        workspace->record.check.is_there ? workspace->record.check.vocabulary : 0;
+    question->number = workspace->record.seq;
     question->tagged = true;
     return 0;
 }

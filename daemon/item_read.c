@@ -6,6 +6,7 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "daemon/answer.h"
 #include "daemon/params.h"
 #include "daemon/times.h"
 #include "storage/vocabulary.h"
@@ -134,40 +135,27 @@ static json_t *seconds_json(struct read_job *job, struct store_view *view,
     return seconds;
 }
 
-/* Adds a member; a value that could not be made makes the whole fail. */
-static void add_member(json_t **object, const char *name, json_t *value)
-{
-    if (*object && json_object_set_new(*object, name, value) == 0) {
-        return;
-    }
-    if (!*object) {
-        json_decref(value);
-    }
-    json_decref(*object);
-    *object = NULL;
-}
-
 static json_t *item_json(struct read_job *job, struct store_view *view,
                          const struct item_record *record)
 {
     json_t *item = json_object();
-    add_member(&item, "id", text_json(record->id));
-    add_member(&item, "seq", json_integer((json_int_t)record->seq));
-    add_member(&item, "title", text_json(record->title));
-    add_member(&item, "text", text_json(record->text));
-    add_member(&item, "fields", fields_json(record->fields));
-    add_member(&item, "language", text_or_null(record->language));
-    add_member(&item, "tagger", text_or_null(record->tagger));
-    add_member(&item, "filed_at", text_or_null(record->filed_at));
-    add_member(&item, "stored_at", time_json(record->filed_stored_at_ms));
-    add_member(&item, "tags", names_json(job, view, record->tags));
-    add_member(&item, "filed", names_json(job, view, record->filed));
-    add_member(&item, "prompted", names_json(job, view, record->prompted));
-    add_member(&item, "declined", names_json(job, view, record->declined));
-    add_member(&item, "belongs", names_json(job, view, record->belongs));
-    add_member(&item, "not", names_json(job, view, record->denied));
-    add_member(&item, "checked", check_json(job, view, &record->check));
-    add_member(&item, "second", seconds_json(job, view, record));
+    answer_add(&item, "id", text_json(record->id));
+    answer_add(&item, "seq", json_integer((json_int_t)record->seq));
+    answer_add(&item, "title", text_json(record->title));
+    answer_add(&item, "text", text_json(record->text));
+    answer_add(&item, "fields", fields_json(record->fields));
+    answer_add(&item, "language", text_or_null(record->language));
+    answer_add(&item, "tagger", text_or_null(record->tagger));
+    answer_add(&item, "filed_at", text_or_null(record->filed_at));
+    answer_add(&item, "stored_at", time_json(record->filed_stored_at_ms));
+    answer_add(&item, "tags", names_json(job, view, record->tags));
+    answer_add(&item, "filed", names_json(job, view, record->filed));
+    answer_add(&item, "prompted", names_json(job, view, record->prompted));
+    answer_add(&item, "declined", names_json(job, view, record->declined));
+    answer_add(&item, "belongs", names_json(job, view, record->belongs));
+    answer_add(&item, "not", names_json(job, view, record->denied));
+    answer_add(&item, "checked", check_json(job, view, &record->check));
+    answer_add(&item, "second", seconds_json(job, view, record));
     return item;
 }
 

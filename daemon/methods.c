@@ -11,11 +11,20 @@ enum {
 };
 
 static const struct method METHODS[] = {
-    {"item.file", METHOD_CHANGE, item_file}, {"item.withdraw", METHOD_CHANGE, item_withdraw},
-    {"item.rule", METHOD_CHANGE, item_rule}, {"item.check", METHOD_CHANGE, item_check},
-    {"item.gaps", METHOD_READ, item_gaps},   {"item.show", METHOD_READ, item_show},
-    {"item.list", METHOD_READ, item_list},   {"tag.show", METHOD_READ, tag_show},
-    {"tag.list", METHOD_READ, tag_list},     {"daemon.state", METHOD_READ, daemon_state},
+    {"item.file", METHOD_CHANGE, item_file},
+    {"item.withdraw", METHOD_CHANGE, item_withdraw},
+    {"item.rule", METHOD_CHANGE, item_rule},
+    {"item.check", METHOD_CHANGE, item_check},
+    {"item.gaps", METHOD_READ, item_gaps},
+    {"item.show", METHOD_READ, item_show},
+    {"item.list", METHOD_READ, item_list},
+    {"tag.show", METHOD_READ, tag_show},
+    {"tag.list", METHOD_READ, tag_list},
+    {"desk.sample", METHOD_READ, desk_sample},
+    {"desk.worklist", METHOD_READ, desk_worklist},
+    {"desk.completeness", METHOD_READ, desk_completeness},
+    {"desk.standing", METHOD_READ, desk_standing},
+    {"daemon.state", METHOD_READ, daemon_state},
 };
 
 static void on_changes_done(uv_async_t *async)

@@ -50,6 +50,12 @@ void item_list(struct call *call, const json_t *params);
 void tag_show(struct call *call, const json_t *params);
 void tag_list(struct call *call, const json_t *params);
 
+/* desk_*.c */
+void desk_sample(struct call *call, const json_t *params);
+void desk_worklist(struct call *call, const json_t *params);
+void desk_completeness(struct call *call, const json_t *params);
+void desk_standing(struct call *call, const json_t *params);
+
 /* daemon_state.c */
 void daemon_state(struct call *call, const json_t *params);
 

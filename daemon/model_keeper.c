@@ -6,10 +6,6 @@
 
 #include "daemon/learner/model_parts.h"
 
-enum {
-    BIN_VALUES = 1 + CALIBRATION_CLASSES /* the pairs, then the given ones by class */
-};
-
 int model_keeper_look(struct model_store *store, const struct model_origin *origin,
                       enum model_kept *ret_kept, uint64_t *ret_learned, struct store_error *error)
 {
@@ -54,33 +50,56 @@ static int load_word(void *user, const struct model_store_word *word)
 
 static int load_chunk(void *user, const struct model_store_chunk *chunk)
 {
-    return model_restore_chunk(user,
-                               &(const struct weights_chunk){.word = chunk->word,
-                                                             .number = chunk->number,
-                                                             .count = chunk->count,
-                                                             .tags = chunk->tags,
-                                                             .values = chunk->values,
-                                                             .accumulators = chunk->accumulators});
+    const struct weights_chunk restored = {.word = chunk->word,
+                                           .number = chunk->number,
+                                           .count = chunk->count,
+                                           .tags = chunk->tags,
+                                           .values = chunk->values,
+                                           .accumulators = chunk->accumulators};
+    return chunk->is_shadow ? model_restore_shadow_chunk(user, &restored)
+                            : model_restore_chunk(user, &restored);
 }
 
 static int load_tag(void *user, const struct model_store_tag *tag)
 {
-    return model_restore_tag(user,
-                             &(const struct model_tag){.number = tag->number,
-                                                       .count = tag->count,
-                                                       .unprompted = tag->unprompted,
-                                                       .bias = tag->bias,
-                                                       .bias_accumulator = tag->bias_accumulator});
+    return model_restore_tag(
+        user,
+        &(const struct model_tag){.number = tag->number,
+                                  .count = tag->count,
+                                  .unprompted = tag->unprompted,
+                                  .trial_halves = tag->trial_halves,
+                                  .given_halves = tag->given_halves,
+                                  .bias = {tag->bias, tag->bias_accumulator},
+                                  .shadow_bias = {tag->shadow_bias, tag->shadow_bias_accumulator}});
 }
 
-static int load_bin(void *user, const struct model_store_bin *bin)
+static int load_figures(void *user, const struct model_store_figures *figures)
 {
-    if (bin->count != BIN_VALUES) {
+    if (figures->kind >= MODEL_FIGURES_KINDS) {
         return -EINVAL;
     }
-    struct calibration_bin restored = {.pairs = bin->values[0]};
-    memcpy(restored.given, bin->values + 1, sizeof restored.given);
-    return model_restore_bin(user, bin->number, &restored);
+    return model_restore_figures(
+        user, &(const struct model_figures){.kind = (enum model_figures_kind)figures->kind,
+                                            .number = figures->number,
+                                            .count = figures->count,
+                                            .values = figures->values});
+}
+
+static int load_entry(void *user, const struct model_store_entry *entry)
+{
+    struct worklist_entry restored = {.number = entry->number,
+                                      .scored = entry->scored,
+                                      .counted = entry->counted,
+                                      .gap_count = entry->tag_count};
+    if (entry->tag_count > WORKLIST_GAPS) {
+        return -EINVAL;
+    }
+    for (uint32_t i = 0; i < entry->tag_count; i++) {
+        const float *values = entry->values + (size_t)i * MODEL_STORE_ENTRY_VALUES;
+        restored.gaps[i] = (struct worklist_gap){
+            .tag = entry->tags[i], .score = values[0], .own = values[1], .counted = values[2]};
+    }
+    return model_restore_entry(user, &restored);
 }
 
 static int fail_to_load(struct store_error *error, int code)
@@ -93,8 +112,12 @@ static int fail_to_load(struct store_error *error, int code)
 
 int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
 {
-    const struct model_store_sink sink = {
-        .user = model, .word = load_word, .chunk = load_chunk, .tag = load_tag, .bin = load_bin};
+    const struct model_store_sink sink = {.user = model,
+                                          .word = load_word,
+                                          .chunk = load_chunk,
+                                          .tag = load_tag,
+                                          .figures = load_figures,
+                                          .entry = load_entry};
     struct model_store_head head;
     int code = model_store_read_head(store, &head, error);
     if (code == STORE_OK) {
@@ -103,11 +126,15 @@ int model_keeper_load(struct model_store *store, struct model *model, struct sto
     if (code != STORE_OK) {
         return error->code != STORE_OK ? (int)error->code : fail_to_load(error, code);
     }
-    code = model_restore_totals(
-        model, &(const struct model_totals){.documents = head.documents,
-                                            .factor_count = head.factor_count,
-                                            .factor_sum = head.factor_sum,
-                                            .calibration_gain = head.calibration_gain});
+    code = model_restore_totals(model,
+                                &(const struct model_totals){.documents = head.documents,
+                                                             .factor_count = head.factor_count,
+                                                             .factor_sum = head.factor_sum,
+                                                             .latest = head.latest,
+                                                             .evidence_items = head.evidence_items,
+                                                             .curves_items = head.curves_items,
+                                                             .fit_halves = head.fit_halves,
+                                                             .evidence_gain = head.evidence_gain});
     if (code == 0) {
         code = model_restored(model);
     }
@@ -147,18 +174,29 @@ static int store_word(void *user, const struct model_word *word)
                                 storing->error);
 }
 
-static int store_chunk(void *user, const struct weights_chunk *chunk)
+static int put_chunk(const struct storing *storing, const struct weights_chunk *chunk,
+                     bool is_shadow)
 {
-    struct storing *storing = user;
     return model_store_put_chunk(
         storing->writing,
-        &(const struct model_store_chunk){.word = chunk->word,
+        &(const struct model_store_chunk){.is_shadow = is_shadow,
+                                          .word = chunk->word,
                                           .number = chunk->number,
                                           .count = chunk->count,
                                           .tags = chunk->tags,
                                           .values = chunk->values,
                                           .accumulators = chunk->accumulators},
         storing->error);
+}
+
+static int store_chunk(void *user, const struct weights_chunk *chunk)
+{
+    return put_chunk(user, chunk, false);
+}
+
+static int store_shadow_chunk(void *user, const struct weights_chunk *chunk)
+{
+    return put_chunk(user, chunk, true);
 }
 
 static int store_tag(void *user, const struct model_tag *tag)
@@ -169,20 +207,54 @@ static int store_tag(void *user, const struct model_tag *tag)
         &(const struct model_store_tag){.number = tag->number,
                                         .count = tag->count,
                                         .unprompted = tag->unprompted,
-                                        .bias = tag->bias,
-                                        .bias_accumulator = tag->bias_accumulator},
+                                        .trial_halves = tag->trial_halves,
+                                        .given_halves = tag->given_halves,
+                                        .bias = tag->bias.value,
+                                        .bias_accumulator = tag->bias.accumulator,
+                                        .shadow_bias = tag->shadow_bias.value,
+                                        .shadow_bias_accumulator = tag->shadow_bias.accumulator},
         storing->error);
 }
 
-static int store_bin(void *user, uint32_t number, const struct calibration_bin *bin)
+static int store_figures(void *user, const struct model_figures *figures)
 {
     struct storing *storing = user;
-    double values[BIN_VALUES] = {bin->pairs};
-    memcpy(values + 1, bin->given, sizeof bin->given);
-    return model_store_put_bin(
+    assert(figures->count <= MODEL_STORE_MOST_FIGURES);
+    return model_store_put_figures(
         storing->writing,
-        &(const struct model_store_bin){.number = number, .count = BIN_VALUES, .values = values},
+        &(const struct model_store_figures){.kind = (uint32_t)figures->kind,
+                                            .number = figures->number,
+                                            .count = (uint32_t)figures->count,
+                                            .values = figures->values},
         storing->error);
+}
+
+static int store_entry(void *user, const struct worklist_entry *entry)
+{
+    struct storing *storing = user;
+    uint32_t tags[WORKLIST_GAPS];
+    float values[WORKLIST_GAPS * MODEL_STORE_ENTRY_VALUES];
+    for (uint32_t i = 0; i < entry->gap_count; i++) {
+        float *of_gap = values + (size_t)i * MODEL_STORE_ENTRY_VALUES;
+        tags[i] = entry->gaps[i].tag;
+        of_gap[0] = entry->gaps[i].score;
+        of_gap[1] = entry->gaps[i].own;
+        of_gap[2] = entry->gaps[i].counted;
+    }
+    return model_store_put_entry(storing->writing,
+                                 &(const struct model_store_entry){.number = entry->number,
+                                                                   .scored = entry->scored,
+                                                                   .counted = entry->counted,
+                                                                   .tag_count = entry->gap_count,
+                                                                   .tags = tags,
+                                                                   .values = values},
+                                 storing->error);
+}
+
+static int remove_entry(void *user, uint64_t number)
+{
+    struct storing *storing = user;
+    return model_store_remove_entry(storing->writing, number, storing->error);
 }
 
 static int store_totals(void *user, const struct model_totals *totals)
@@ -192,7 +264,11 @@ static int store_totals(void *user, const struct model_totals *totals)
                                     .documents = totals->documents,
                                     .factor_count = totals->factor_count,
                                     .factor_sum = totals->factor_sum,
-                                    .calibration_gain = totals->calibration_gain};
+                                    .latest = totals->latest,
+                                    .evidence_items = totals->evidence_items,
+                                    .curves_items = totals->curves_items,
+                                    .fit_halves = totals->fit_halves,
+                                    .evidence_gain = totals->evidence_gain};
     size_t bytes = strlen(storing->origin->settings);
     assert(bytes < sizeof head.settings);
     memcpy(head.store_uuid, storing->origin->store_uuid, STORE_UUID_BYTES);
@@ -209,8 +285,11 @@ int model_keeper_store(struct model_store *store, struct model *model,
                                     .forgotten = store_forgotten,
                                     .word = store_word,
                                     .chunk = store_chunk,
+                                    .shadow_chunk = store_shadow_chunk,
                                     .tag = store_tag,
-                                    .bin = store_bin,
+                                    .figures = store_figures,
+                                    .delisted = remove_entry,
+                                    .listed = store_entry,
                                     .totals = store_totals};
     int code = model_store_begin(store, &storing.writing, error);
     if (code != STORE_OK) {

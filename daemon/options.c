@@ -106,6 +106,9 @@ static const struct option OPTIONS[] = {
      "B of the propensity curve."},
     {"evidence_half_life", TYPE_NUMBER, AT(evidence_half_life), 100, 1e12, "20000", NULL,
      OPTIONS_LEARNING, false, "Items after which evidence behind the chances counts half."},
+    {"shadow", TYPE_SWITCH, AT(shadow), 0, 0, "on", ON_OFF, OPTIONS_LEARNING, false,
+     "Teach a second learner without the correction beside, to show what the correction gains; "
+     "it takes as much memory and time again."},
 };
 #undef AT
 /* clang-format on */
@@ -378,7 +381,11 @@ void options_describe(const struct options *options, size_t index, struct option
 
 int options_learning_text(const struct options *options, char *text, size_t size)
 {
-    size_t used = 0;
+    int head = snprintf(text, size, "learner=%d\n", MODEL_LEARNER_VERSION);
+    if (head < 0 || (size_t)head >= size) {
+        return -1;
+    }
+    size_t used = (size_t)head;
     for (size_t i = 0; i < OPTION_COUNT; i++) {
         if (OPTIONS[i].group != OPTIONS_LEARNING) {
             continue;
@@ -450,5 +457,6 @@ struct model_settings options_model_settings(const struct options *options)
         .even_out = options->even_out,
         .balance = options->balance,
         .step = options->step,
-        .evidence_half_life_items = options->evidence_half_life};
+        .evidence_half_life_items = options->evidence_half_life,
+        .shadow = options->shadow};
 }

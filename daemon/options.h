@@ -52,6 +52,7 @@ struct options {
     double propensity_a;
     double propensity_b;
     double evidence_half_life;
+    bool shadow;
 };
 
 void options_defaults(struct options *ret_options);

@@ -1,12 +1,13 @@
 /*
- * tag.show and tag.list: the vocabulary as it is, with what the propensity curve says of each tag.
+ * tag.show and tag.list: the vocabulary as it is, with what is to be expected of each tag.
  */
 #include <errno.h>
 #include <stdlib.h>
 #include <string.h>
 
+#include "daemon/answer.h"
 #include "daemon/grow.h"
-#include "daemon/learner/propensity.h"
+#include "daemon/outlook.h"
 #include "daemon/params.h"
 #include "daemon/read_job.h"
 #include "storage/vocabulary.h"
@@ -14,40 +15,6 @@
 enum {
     LIST_MOST = 10000
 };
-
-/*
- * Without checks the curve is all there is to say of a tag, and nobody knows how well it fits this
- * desk. Its two published relatives, for corpora of other kinds (Jain, Prabhu, Varma, KDD 2016;
- * values from memory), say how far it may be off.
- */
-static const struct propensity_curve CURVES_BESIDE[] = {{.a = 0.5, .b = 0.4}, {.a = 0.6, .b = 2.6}};
-
-/* What the curve says of a tag. */
-struct outlook {
-    double p;
-    double low;
-    double high;
-    double expected_true;
-    double missing;
-};
-
-static struct outlook look_out(const struct engine *engine, const struct vocabulary_tag *tag,
-                               uint64_t items)
-{
-    struct outlook outlook = {.p = engine_propensity(engine, tag->counts.unprompted, items)};
-    outlook.low = outlook.p;
-    outlook.high = outlook.p;
-    for (size_t i = 0; i < sizeof CURVES_BESIDE / sizeof CURVES_BESIDE[0]; i++) {
-        double p = propensity_of_curve(&CURVES_BESIDE[i], (double)tag->counts.unprompted,
-                                       (double)items);
-        outlook.low = p < outlook.low ? p : outlook.low;
-        outlook.high = p > outlook.high ? p : outlook.high;
-    }
-    /* A tag given unprompted stands for 1/p true ones; a prompted one was examined. */
-    outlook.missing = (double)tag->counts.unprompted * (1.0 / outlook.p - 1.0);
-    outlook.expected_true = (double)tag->counts.count + outlook.missing;
-    return outlook;
-}
 
 static const char *state_name(enum vocabulary_state state)
 {
@@ -75,26 +42,42 @@ struct show_job {
     struct store_text tag;
 };
 
+static json_t *show_json(const struct outlook *outlook, const struct vocabulary_tag *tag)
+{
+    struct propensity_of_tag propensity = outlook_propensity(outlook, &tag->counts);
+    double missing = outlook_missing(outlook, &tag->counts);
+    json_t *result = json_object();
+    answer_add(&result, "tag", json_string(tag->name));
+    answer_add(&result, "count", answer_count(tag->counts.count));
+    answer_add(&result, "unprompted", answer_count(tag->counts.unprompted));
+    answer_add(&result, "propensity",
+               json_pack("{s:f, s:f, s:f, s:s}", "p", propensity.p, "low", propensity.low, "high",
+                         propensity.high, "from", outlook_from(propensity.from)));
+    answer_add(&result, "expected_true", answer_number((double)tag->counts.count + missing));
+    answer_add(&result, "missing", answer_number(missing));
+    answer_add(&result, "opened_seq", answer_count(tag->opened_seq));
+    answer_add(&result, "state", json_string(state_name(tag->state)));
+    answer_add(&result, "label", json_null());
+    answer_add(&result, "broader", json_null());
+    answer_add(&result, "aliases", json_array());
+    answer_add(&result, "rulings",
+               json_pack("{s:o, s:o}", "belongs", answer_count(tag->counts.ruled_belongs), "not",
+                         answer_count(tag->counts.ruled_not)));
+    return result;
+}
+
 static void run_show(struct read_job *base)
 {
     struct show_job *job = (struct show_job *)base;
     struct store_view *view = NULL;
+    struct outlook outlook;
     struct vocabulary_tag tag;
     if (read_job_view(base, &view) < 0) {
         return;
     }
-    if (find_tag(base, view, "/tag", job->tag, &tag) == 0) {
-        struct outlook outlook =
-            look_out(base->methods->engine, &tag, store_view_totals(view).items);
-        base->result = json_pack(
-            "{s:s, s:I, s:I, s:{s:f, s:f, s:f, s:s}, s:f, s:f, s:I, s:s, s:n, s:n, s:[], "
-            "s:{s:I, s:I}}",
-            "tag", tag.name, "count", (json_int_t)tag.counts.count, "unprompted",
-            (json_int_t)tag.counts.unprompted, "propensity", "p", outlook.p, "low", outlook.low,
-            "high", outlook.high, "from", "curve", "expected_true", outlook.expected_true,
-            "missing", outlook.missing, "opened_seq", (json_int_t)tag.opened_seq, "state",
-            state_name(tag.state), "label", "broader", "aliases", "rulings", "belongs",
-            (json_int_t)tag.counts.ruled_belongs, "not", (json_int_t)tag.counts.ruled_not);
+    if (find_tag(base, view, "/tag", job->tag, &tag) == 0 &&
+        outlook_begin(base->methods->engine, store_view_totals(view).items, &outlook) == 0) {
+        base->result = show_json(&outlook, &tag);
     }
     store_end(view);
 }
@@ -137,7 +120,7 @@ struct list_job {
     uint64_t most;
     size_t order; /* enum list_order */
 
-    uint64_t items; /* filed, for the curve */
+    struct outlook outlook;
     json_t *tags;
     struct vocabulary_tag last; /* of those listed */
     bool has_more;
@@ -160,12 +143,13 @@ static int add_tag(struct list_job *job, const struct vocabulary_tag *tag)
         job->has_more = true;
         return 1;
     }
-    struct outlook outlook = look_out(job->job.methods->engine, tag, job->items);
     job->last = *tag;
     return json_array_append_new(job->tags,
-                                 json_pack("{s:s, s:I, s:f, s:f, s:s}", "tag", tag->name, "count",
-                                           (json_int_t)tag->counts.count, "p", outlook.p, "missing",
-                                           outlook.missing, "state", state_name(tag->state)));
+                                 json_pack("{s:s, s:o, s:f, s:f, s:s}", "tag", tag->name, "count",
+                                           answer_count(tag->counts.count), "p",
+                                           outlook_propensity_mean(&job->outlook, &tag->counts),
+                                           "missing", outlook_missing(&job->outlook, &tag->counts),
+                                           "state", state_name(tag->state)));
 }
 
 static int add_by_name(void *user, const struct vocabulary_tag *tag)
@@ -175,9 +159,8 @@ static int add_by_name(void *user, const struct vocabulary_tag *tag)
 
 static struct ranked rank_of(const struct list_job *job, const struct vocabulary_tag *tag)
 {
-    double key = job->order == ORDER_COUNT
-                     ? (double)tag->counts.count
-                     : look_out(job->job.methods->engine, tag, job->items).missing;
+    double key = job->order == ORDER_COUNT ? (double)tag->counts.count
+                                           : outlook_missing(&job->outlook, &tag->counts);
     return (struct ranked){.key = key, .number = tag->number};
 }
 
@@ -237,7 +220,10 @@ static void run_list(struct read_job *base)
     if (!job->tags || read_job_view(base, &view) < 0) {
         return;
     }
-    job->items = store_view_totals(view).items;
+    if (outlook_begin(base->methods->engine, store_view_totals(view).items, &job->outlook) < 0) {
+        store_end(view);
+        return; /* no result: no memory */
+    }
     int code = job->order == ORDER_NAME ? vocabulary_by_name(view, job->after.data, job->after.size,
                                                              add_by_name, job, &error)
                                         : list_ranked(job, view, &error);

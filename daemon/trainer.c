@@ -16,6 +16,7 @@
 #include <string.h>
 
 #include "daemon/clock.h"
+#include "daemon/grow.h"
 #include "daemon/item_source.h"
 #include "daemon/sync.h"
 #include "storage/items.h"
@@ -28,6 +29,7 @@ enum {
     FINISH_MS = 3000,      /* the longest time that stopping spends on overwriting */
     FLUSH_SHARE = 10,      /* storing takes a tenth of the time at most */
     SCRUB_PAGES = 1024,    /* overwritten at a time */
+    RESCORED_A_ROUND = 16, /* items of the worklist, before it looks for changes again */
     ROUND_LIMIT_US = 20000 /* a view that has been open this long is given up */
 };
 
@@ -37,6 +39,8 @@ struct side {
     struct item_record record;
     struct item_source source;
     struct features *features;
+    struct model_trial *trials;
+    size_t trial_capacity;
     struct model_item item;
 };
 
@@ -50,6 +54,8 @@ struct trainer {
     uint64_t kept;         /* the seq of the stored model */
     uint64_t stored_at_us; /* when it was stored, or tried, last */
     uint64_t storing_us;   /* how long that took */
+    bool rescore_due;      /* the model has changed since there was nothing to score again */
+    bool rescored;         /* since the model was stored */
     bool scrub_due;
     uint64_t scrub_wait_ms; /* before it is gone on with */
     size_t scrub_left;      /* pages, when it was last looked at */
@@ -58,6 +64,67 @@ struct trainer {
 
 /* --- one change ---------------------------------------------------------------------------------
  */
+
+/* Looks at whether what belongs was given: a whole one after a check at random, halves where there
+ * are second taggers. */
+static size_t list_trials(const struct item_record *record, struct model_trial *into)
+{
+    enum {
+        WHOLE = 2,
+        HALF = 1
+    };
+    size_t count = 0;
+    const struct item_check *check = &record->check;
+    for (size_t i = 0; check->is_random && i < check->given.count; i++) {
+        into[count++] = (struct model_trial){check->given.list[i], WHOLE, WHOLE};
+    }
+    for (size_t i = 0; check->is_random && i < check->hidden.count; i++) {
+        into[count++] = (struct model_trial){check->hidden.list[i], WHOLE, 0};
+    }
+    for (size_t i = 0; i < record->second_count; i++) {
+        struct numbers tags = record->seconds[i].tags;
+        for (size_t j = 0; j < tags.count; j++) {
+            bool was_given = numbers_hold(record->filed, tags.list[j]) &&
+                             !numbers_hold(record->prompted, tags.list[j]);
+            into[count++] = (struct model_trial){tags.list[j], HALF, was_given ? HALF : 0};
+        }
+    }
+    return count;
+}
+
+static size_t most_trials(const struct item_record *record)
+{
+    size_t most = record->check.given.count + record->check.hidden.count;
+    for (size_t i = 0; i < record->second_count; i++) {
+        most += record->seconds[i].tags.count;
+    }
+    return most;
+}
+
+/* The item as the learner takes it, of the record and the features. */
+static int fill_item(struct side *side, struct store_error *error)
+{
+    const struct item_record *record = &side->record;
+    if (GROW(&side->trials, &side->trial_capacity, most_trials(record)) < 0) {
+        return store_fail(error, STORE_NO_MEMORY, "out of memory");
+    }
+    /* A check goes through the tags of its day; those opened later are as before. */
+    bool is_checked = record->check.is_there;
+    side->item = (struct model_item){.number = record->seq,
+                                     .features = features_list(side->features),
+                                     .feature_count = features_count(side->features),
+                                     .tags = record->tags.list,
+                                     .tag_count = record->tags.count,
+                                     .examined = record->examined.list,
+                                     .examined_count = record->examined.count,
+                                     .known_not = record->known_not.list,
+                                     .known_not_count = record->known_not.count,
+                                     .checked_below = is_checked ? record->check.vocabulary : 0,
+                                     .same_words = record->change != ITEM_FILED,
+                                     .trials = side->trials,
+                                     .trial_count = list_trials(record, side->trials)};
+    return STORE_OK;
+}
 
 /* Reads a record and takes out its features; *ret_found says whether it is an item. */
 static int read_side(struct side *side, struct store_view *view, uint64_t seq, bool *ret_found,
@@ -84,13 +151,7 @@ static int read_side(struct side *side, struct store_view *view, uint64_t seq, b
         return store_fail(error, code == -ENOMEM ? STORE_NO_MEMORY : STORE_CORRUPT,
                           "the words of change %llu cannot be taken out", (unsigned long long)seq);
     }
-    side->item = (struct model_item){.features = features_list(side->features),
-                                     .feature_count = features_count(side->features),
-                                     .tags = side->record.tags.list,
-                                     .tag_count = side->record.tags.count,
-                                     .prompted = side->record.prompted.list,
-                                     .prompted_count = side->record.prompted.count};
-    return STORE_OK;
+    return fill_item(side, error);
 }
 
 static int learn_change(struct trainer *trainer, struct store_view *view, uint64_t seq,
@@ -170,7 +231,7 @@ static int learn_some(struct trainer *trainer, uint64_t last, struct store_error
 static bool is_store_due(const struct trainer *trainer)
 {
     uint64_t waited_us = clock_steady_us() - trainer->stored_at_us;
-    uint64_t changes = trainer->learned - trainer->kept;
+    uint64_t changes = trainer->learned - trainer->kept + (trainer->rescored ? 1 : 0);
     return changes > 0 && waited_us >= FLUSH_SHARE * trainer->storing_us &&
            (waited_us >= trainer->settings.flush_every_ms * 1000 ||
             changes >= trainer->settings.flush_changes);
@@ -193,6 +254,7 @@ static void store_model(struct trainer *trainer)
     }
     troubles_end(trainer->settings.troubles, TROUBLE_KEEPING);
     trainer->kept = trainer->learned;
+    trainer->rescored = false;
     trainer->scrub_due = trainer->scrub_due || forgot;
     backlog_kept(trainer->settings.backlog, trainer->kept);
     trainer->settings.kept(trainer->settings.user);
@@ -219,6 +281,54 @@ static void scrub(struct trainer *trainer)
     trainer->scrub_due = left > 0;
 }
 
+/* --- the worklist -------------------------------------------------------------------------------
+ */
+
+/* Scores one item again; an entry whose item cannot be read any more leaves the worklist. */
+static int rescore_item(struct trainer *trainer, struct store_view *view, uint64_t number,
+                        struct store_error *error)
+{
+    struct shared_model *shared = trainer->settings.shared;
+    struct worklist_entry entry;
+    bool is_filed = false;
+    int code = read_side(&trainer->filed, view, number, &is_filed, error);
+    if (code != STORE_OK) {
+        return code;
+    }
+    /* Nobody else changes the model: scoring needs no lock. */
+    int result =
+        is_filed ? model_rescore(shared->model, &trainer->filed.item, trainer->scratch, &entry) : 0;
+    if (result < 0) {
+        return store_fail(error, STORE_NO_MEMORY, "out of memory");
+    }
+    shared_model_write(shared);
+    result = is_filed ? model_relist(shared->model, &entry) : model_delist(shared->model, number);
+    shared_model_unlock(shared);
+    return result == 0 ? STORE_OK : store_fail(error, STORE_NO_MEMORY, "out of memory");
+}
+
+/* Scores again, while there is time, what the model has outgrown; says whether there is more. */
+static bool rescore_some(struct trainer *trainer)
+{
+    struct store_error error = {0};
+    struct store_view *view = NULL;
+    if (store_read(trainer->settings.store, &view, &error) != STORE_OK) {
+        return false; /* learning will tell, if it lasts */
+    }
+    uint64_t number = 0;
+    int code = STORE_OK;
+    for (size_t i = 0; i < RESCORED_A_ROUND && code == STORE_OK; i++) {
+        number = model_next_stale(trainer->settings.shared->model);
+        if (number == 0) {
+            break;
+        }
+        code = rescore_item(trainer, view, number, &error);
+        trainer->rescored = true;
+    }
+    store_end(view);
+    return code == STORE_OK && number != 0;
+}
+
 /* --- the thread ---------------------------------------------------------------------------------
  */
 
@@ -234,6 +344,9 @@ static void fail(struct trainer *trainer, const struct store_error *error)
 /* How long to wait for work: until the model is to be stored, if anything is to be stored. */
 static uint64_t idle_ms(const struct trainer *trainer)
 {
+    if (trainer->rescore_due) {
+        return 0;
+    }
     if (trainer->learned == trainer->kept) {
         return trainer->scrub_due ? trainer->scrub_wait_ms : IDLE_MS;
     }
@@ -265,13 +378,17 @@ static void *run(void *argument)
         if (!is_idle && learn_some(trainer, last, &error) != STORE_OK) {
             fail(trainer, &error);
         }
+        trainer->rescore_due = !trainer->failed && (is_idle ? trainer->rescore_due : true);
+        if (is_idle && trainer->rescore_due) {
+            trainer->rescore_due = rescore_some(trainer);
+        }
         if (is_store_due(trainer) && !trainer->failed) {
             store_model(trainer);
         } else if (is_idle && trainer->scrub_due) {
             scrub(trainer);
         }
     }
-    if (trainer->learned > trainer->kept && !trainer->failed) {
+    if ((trainer->learned > trainer->kept || trainer->rescored) && !trainer->failed) {
         store_model(trainer);
     }
     finish_scrubbing(trainer);
@@ -286,6 +403,7 @@ static void side_deinit(struct side *side)
     item_buffer_deinit(&side->buffer);
     item_source_deinit(&side->source);
     features_free(side->features);
+    free(side->trials);
 }
 
 static void free_trainer(struct trainer *trainer)
@@ -305,6 +423,7 @@ int trainer_new(const struct trainer_settings *settings, struct trainer **ret_tr
     trainer->settings = *settings;
     trainer->learned = settings->shared->learned;
     trainer->kept = settings->shared->learned;
+    trainer->rescore_due = true;
     trainer->scrub_due = true; /* a crash may have come between forgetting and overwriting */
     int code = features_new(settings->features, &trainer->filed.features);
     if (code == 0) {

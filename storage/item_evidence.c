@@ -208,7 +208,7 @@ int item_evidence_get(struct codec_reader *reader, struct item_buffer *buffer, s
  */
 
 enum {
-    LISTS_THAT_FOLLOW = 9 /* none longer than all that is stored */
+    LISTS_THAT_FOLLOW = 10 /* none longer than all that is stored */
 };
 
 size_t item_evidence_room(size_t stored_numbers)
@@ -251,6 +251,7 @@ void item_evidence_follow(struct item_record *record, uint32_t *room)
     record->tags = take(numbers_without(with, record->denied, room), &room);
     struct numbers given = take(numbers_without(record->filed, record->prompted, room), &room);
     record->unprompted = take(numbers_common(given, record->tags, room), &room);
+    record->examined = take(numbers_without(record->tags, record->unprompted, room), &room);
     struct numbers turned_down = take(numbers_unite(record->declined, record->denied, room), &room);
     record->known_not = take(numbers_without(turned_down, record->tags, room), &room);
 }

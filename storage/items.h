@@ -149,6 +149,7 @@ struct item_record {
     /* What follows from all that. */
     struct numbers tags;       /* on the item now */
     struct numbers unprompted; /* of those, given in the filing without a proposal */
+    struct numbers examined;   /* the others of them */
     struct numbers belongs;    /* ruled so */
     struct numbers denied;     /* ruled not to belong */
     struct numbers known_not;  /* ruled or declined: never to be proposed */

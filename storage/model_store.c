@@ -12,21 +12,25 @@ enum model_table {
     MODEL_META,
     MODEL_WORDS,
     MODEL_CHUNKS,
+    MODEL_SHADOW_CHUNKS,
     MODEL_TAGS,
-    MODEL_BINS,
+    MODEL_FIGURES,
+    MODEL_ENTRIES,
     MODEL_TABLES
 };
 
 static const char *const TABLE_NAMES[MODEL_TABLES] = {
-    [MODEL_META] = "meta", [MODEL_WORDS] = "words", [MODEL_CHUNKS] = "chunks",
-    [MODEL_TAGS] = "tags", [MODEL_BINS] = "bins",
+    [MODEL_META] = "meta",        [MODEL_WORDS] = "words",
+    [MODEL_CHUNKS] = "chunks",    [MODEL_SHADOW_CHUNKS] = "shadow_chunks",
+    [MODEL_TAGS] = "tags",        [MODEL_FIGURES] = "figures",
+    [MODEL_ENTRIES] = "worklist",
 };
 
 static const char HEAD_KEY[] = "model";
 
 enum {
-    LONGEST_LIST = 512
-}; /* postings of a chunk, values of a bin */
+    LONGEST_LIST = 512 /* postings of a chunk */
+};
 
 struct model_store {
     struct kv *kv;
@@ -96,6 +100,10 @@ static int decode_head(struct kv_bytes value, struct model_store_head *ret_head,
                           "version reads up to %d)",
                           format, MODEL_STORE_FORMAT);
     }
+    if (!reader.failed && format > 0 && format < MODEL_STORE_FORMAT) {
+        *ret_head = head;
+        return STORE_OK;
+    }
     for (size_t i = 0; i < STORE_UUID_BYTES; i++) {
         head.store_uuid[i] = codec_get_u8(&reader);
     }
@@ -103,7 +111,11 @@ static int decode_head(struct kv_bytes value, struct model_store_head *ret_head,
     head.documents = codec_get_u64(&reader);
     head.factor_count = codec_get_u64(&reader);
     head.factor_sum = codec_get_f64(&reader);
-    head.calibration_gain = codec_get_f64(&reader);
+    head.latest = codec_get_u64(&reader);
+    head.evidence_items = codec_get_u64(&reader);
+    head.curves_items = codec_get_u64(&reader);
+    head.fit_halves = codec_get_u64(&reader);
+    head.evidence_gain = codec_get_f64(&reader);
     size_t bytes = 0;
     const char *settings = codec_get_blob(&reader, &bytes);
     if (reader.failed || format == 0 || bytes >= sizeof head.settings) {
@@ -165,10 +177,9 @@ static int load_word(void *user, struct kv_cursor *at, struct kv_bytes key, stru
     return loading->sink->word(loading->sink->user, &word);
 }
 
-static int load_chunk(void *user, struct kv_cursor *at, struct kv_bytes key, struct kv_bytes value)
+static int load_weights(const struct loading *loading, bool is_shadow, struct kv_bytes key,
+                        struct kv_bytes value)
 {
-    (void)at;
-    const struct loading *loading = user;
     struct codec_reader reader;
     int result = open_record(value, "chunk", &reader, loading->error);
     if (result != STORE_OK) {
@@ -177,7 +188,8 @@ static int load_chunk(void *user, struct kv_cursor *at, struct kv_bytes key, str
     uint32_t tags[LONGEST_LIST];
     float values[LONGEST_LIST];
     float accumulators[LONGEST_LIST];
-    struct model_store_chunk chunk = {.tags = tags, .values = values, .accumulators = accumulators};
+    struct model_store_chunk chunk = {
+        .is_shadow = is_shadow, .tags = tags, .values = values, .accumulators = accumulators};
     chunk.word = codec_u32_of_key(key.data);
     chunk.number = codec_u32_of_key((const unsigned char *)key.data + 4);
     chunk.count = codec_get_u32(&reader);
@@ -192,6 +204,18 @@ static int load_chunk(void *user, struct kv_cursor *at, struct kv_bytes key, str
     return loading->sink->chunk(loading->sink->user, &chunk);
 }
 
+static int load_chunk(void *user, struct kv_cursor *at, struct kv_bytes key, struct kv_bytes value)
+{
+    (void)at;
+    return load_weights(user, false, key, value);
+}
+
+static int load_shadow(void *user, struct kv_cursor *at, struct kv_bytes key, struct kv_bytes value)
+{
+    (void)at;
+    return load_weights(user, true, key, value);
+}
+
 static int load_tag(void *user, struct kv_cursor *at, struct kv_bytes key, struct kv_bytes value)
 {
     (void)at;
@@ -204,30 +228,66 @@ static int load_tag(void *user, struct kv_cursor *at, struct kv_bytes key, struc
     struct model_store_tag tag = {.number = codec_u32_of_key(key.data)};
     tag.count = codec_get_u32(&reader);
     tag.unprompted = codec_get_u32(&reader);
+    tag.trial_halves = codec_get_u32(&reader);
+    tag.given_halves = codec_get_u32(&reader);
     tag.bias = codec_get_f32(&reader);
     tag.bias_accumulator = codec_get_f32(&reader);
+    tag.shadow_bias = codec_get_f32(&reader);
+    tag.shadow_bias_accumulator = codec_get_f32(&reader);
     return loading->sink->tag(loading->sink->user, &tag);
 }
 
-static int load_bin(void *user, struct kv_cursor *at, struct kv_bytes key, struct kv_bytes value)
+static int load_figures(void *user, struct kv_cursor *at, struct kv_bytes key,
+                        struct kv_bytes value)
 {
     (void)at;
     const struct loading *loading = user;
     struct codec_reader reader;
-    int result = open_record(value, "bin", &reader, loading->error);
+    int result = open_record(value, "list of figures", &reader, loading->error);
     if (result != STORE_OK) {
         return result;
     }
-    double values[LONGEST_LIST];
-    struct model_store_bin bin = {.number = codec_u32_of_key(key.data), .values = values};
-    bin.count = codec_get_u32(&reader);
-    for (uint32_t i = 0; i < bin.count && i < LONGEST_LIST; i++) {
+    double values[MODEL_STORE_MOST_FIGURES];
+    struct model_store_figures figures = {.values = values};
+    figures.kind = codec_u32_of_key(key.data);
+    figures.number = codec_u32_of_key((const unsigned char *)key.data + 4);
+    figures.count = codec_get_u32(&reader);
+    for (uint32_t i = 0; i < figures.count && i < MODEL_STORE_MOST_FIGURES; i++) {
         values[i] = codec_get_f64(&reader);
     }
-    if (reader.failed || bin.count > LONGEST_LIST) {
-        return store_fail(loading->error, STORE_CORRUPT, "a stored bin of the model is damaged");
+    if (reader.failed || figures.count > MODEL_STORE_MOST_FIGURES) {
+        return store_fail(loading->error, STORE_CORRUPT,
+                          "a stored list of figures of the model is damaged");
     }
-    return loading->sink->bin(loading->sink->user, &bin);
+    return loading->sink->figures(loading->sink->user, &figures);
+}
+
+static int load_entry(void *user, struct kv_cursor *at, struct kv_bytes key, struct kv_bytes value)
+{
+    (void)at;
+    const struct loading *loading = user;
+    struct codec_reader reader;
+    int result = open_record(value, "entry", &reader, loading->error);
+    if (result != STORE_OK) {
+        return result;
+    }
+    uint32_t tags[MODEL_STORE_ENTRY_TAGS];
+    float values[MODEL_STORE_ENTRY_TAGS * MODEL_STORE_ENTRY_VALUES];
+    struct model_store_entry entry = {.tags = tags, .values = values};
+    entry.number = codec_u64_of_key(key.data);
+    entry.scored = codec_get_u64(&reader);
+    entry.counted = codec_get_u64(&reader);
+    entry.tag_count = codec_get_u32(&reader);
+    for (uint32_t i = 0; i < entry.tag_count && i < MODEL_STORE_ENTRY_TAGS; i++) {
+        tags[i] = codec_get_u32(&reader);
+        for (uint32_t j = 0; j < MODEL_STORE_ENTRY_VALUES; j++) {
+            values[i * MODEL_STORE_ENTRY_VALUES + j] = codec_get_f32(&reader);
+        }
+    }
+    if (reader.failed || entry.tag_count > MODEL_STORE_ENTRY_TAGS) {
+        return store_fail(loading->error, STORE_CORRUPT, "a stored entry of the model is damaged");
+    }
+    return loading->sink->entry(loading->sink->user, &entry);
 }
 
 int model_store_load(struct model_store *store, const struct model_store_sink *sink,
@@ -236,10 +296,9 @@ int model_store_load(struct model_store *store, const struct model_store_sink *s
     static const struct {
         enum model_table table;
         kv_each each;
-    } walks[] = {{MODEL_WORDS, load_word},
-                 {MODEL_CHUNKS, load_chunk},
-                 {MODEL_TAGS, load_tag},
-                 {MODEL_BINS, load_bin}};
+    } walks[] = {{MODEL_WORDS, load_word},           {MODEL_CHUNKS, load_chunk},
+                 {MODEL_SHADOW_CHUNKS, load_shadow}, {MODEL_TAGS, load_tag},
+                 {MODEL_FIGURES, load_figures},      {MODEL_ENTRIES, load_entry}};
     struct loading loading = {.sink = sink, .error = error};
     struct kv_txn *txn = NULL;
     int result = kv_begin(store->kv, false, &txn, error);
@@ -311,7 +370,11 @@ int model_store_put_head(struct model_store_writing *writing, const struct model
     codec_put_u64(record, head->documents);
     codec_put_u64(record, head->factor_count);
     codec_put_f64(record, head->factor_sum);
-    codec_put_f64(record, head->calibration_gain);
+    codec_put_u64(record, head->latest);
+    codec_put_u64(record, head->evidence_items);
+    codec_put_u64(record, head->curves_items);
+    codec_put_u64(record, head->fit_halves);
+    codec_put_f64(record, head->evidence_gain);
     codec_put_blob(record, head->settings, strlen(head->settings));
     if (record->failed) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
@@ -353,19 +416,32 @@ int model_store_put_word(struct model_store_writing *writing, const struct model
     return put_record(writing, MODEL_WORDS, kv_bytes_of(word->term, word->term_bytes), error);
 }
 
+static int delete_chunks(struct model_store_writing *writing, enum model_table table, uint32_t word,
+                         struct store_error *error)
+{
+    int result = STORE_OK;
+    for (uint32_t number = 0; result == STORE_OK; number++) {
+        unsigned char key[8];
+        codec_key_u32(key, word);
+        codec_key_u32(key + 4, number);
+        result = kv_delete(writing->txn, table, kv_bytes_of(key, sizeof key), error);
+    }
+    return result == STORE_NOT_FOUND ? STORE_OK : result;
+}
+
 int model_store_forget_word(struct model_store_writing *writing,
                             const struct model_store_word *word, struct store_error *error)
 {
     int result =
         kv_delete(writing->txn, MODEL_WORDS, kv_bytes_of(word->term, word->term_bytes), error);
-    for (uint32_t number = 0; result == STORE_OK; number++) {
-        unsigned char key[8];
-        codec_key_u32(key, word->number);
-        codec_key_u32(key + 4, number);
-        result = kv_delete(writing->txn, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
+    if (result == STORE_NOT_FOUND) {
+        return STORE_OK; /* it came and went since the last flush */
     }
-    /* Either there was no such word (it came and went since the last flush) or no more chunk. */
-    return result == STORE_NOT_FOUND ? STORE_OK : result;
+    if (result == STORE_OK) {
+        result = delete_chunks(writing, MODEL_CHUNKS, word->number, error);
+    }
+    return result == STORE_OK ? delete_chunks(writing, MODEL_SHADOW_CHUNKS, word->number, error)
+                              : result;
 }
 
 int model_store_put_chunk(struct model_store_writing *writing,
@@ -381,7 +457,8 @@ int model_store_put_chunk(struct model_store_writing *writing,
     unsigned char key[8];
     codec_key_u32(key, chunk->word);
     codec_key_u32(key + 4, chunk->number);
-    return put_record(writing, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
+    return put_record(writing, chunk->is_shadow ? MODEL_SHADOW_CHUNKS : MODEL_CHUNKS,
+                      kv_bytes_of(key, sizeof key), error);
 }
 
 int model_store_put_tag(struct model_store_writing *writing, const struct model_store_tag *tag,
@@ -390,24 +467,56 @@ int model_store_put_tag(struct model_store_writing *writing, const struct model_
     struct codec_writer *record = begin_record(writing);
     codec_put_u32(record, tag->count);
     codec_put_u32(record, tag->unprompted);
+    codec_put_u32(record, tag->trial_halves);
+    codec_put_u32(record, tag->given_halves);
     codec_put_f32(record, tag->bias);
     codec_put_f32(record, tag->bias_accumulator);
+    codec_put_f32(record, tag->shadow_bias);
+    codec_put_f32(record, tag->shadow_bias_accumulator);
     unsigned char key[4];
     codec_key_u32(key, tag->number);
     return put_record(writing, MODEL_TAGS, kv_bytes_of(key, sizeof key), error);
 }
 
-int model_store_put_bin(struct model_store_writing *writing, const struct model_store_bin *bin,
-                        struct store_error *error)
+int model_store_put_figures(struct model_store_writing *writing,
+                            const struct model_store_figures *figures, struct store_error *error)
 {
     struct codec_writer *record = begin_record(writing);
-    codec_put_u32(record, bin->count);
-    for (uint32_t i = 0; i < bin->count; i++) {
-        codec_put_f64(record, bin->values[i]);
+    codec_put_u32(record, figures->count);
+    for (uint32_t i = 0; i < figures->count; i++) {
+        codec_put_f64(record, figures->values[i]);
     }
-    unsigned char key[4];
-    codec_key_u32(key, bin->number);
-    return put_record(writing, MODEL_BINS, kv_bytes_of(key, sizeof key), error);
+    unsigned char key[8];
+    codec_key_u32(key, figures->kind);
+    codec_key_u32(key + 4, figures->number);
+    return put_record(writing, MODEL_FIGURES, kv_bytes_of(key, sizeof key), error);
+}
+
+int model_store_put_entry(struct model_store_writing *writing,
+                          const struct model_store_entry *entry, struct store_error *error)
+{
+    struct codec_writer *record = begin_record(writing);
+    codec_put_u64(record, entry->scored);
+    codec_put_u64(record, entry->counted);
+    codec_put_u32(record, entry->tag_count);
+    for (uint32_t i = 0; i < entry->tag_count; i++) {
+        codec_put_u32(record, entry->tags[i]);
+        for (uint32_t j = 0; j < MODEL_STORE_ENTRY_VALUES; j++) {
+            codec_put_f32(record, entry->values[i * MODEL_STORE_ENTRY_VALUES + j]);
+        }
+    }
+    unsigned char key[8];
+    codec_key_u64(key, entry->number);
+    return put_record(writing, MODEL_ENTRIES, kv_bytes_of(key, sizeof key), error);
+}
+
+int model_store_remove_entry(struct model_store_writing *writing, uint64_t number,
+                             struct store_error *error)
+{
+    unsigned char key[8];
+    codec_key_u64(key, number);
+    int result = kv_delete(writing->txn, MODEL_ENTRIES, kv_bytes_of(key, sizeof key), error);
+    return result == STORE_NOT_FOUND ? STORE_OK : result;
 }
 
 int model_store_scrub(struct model_store *store, size_t most_pages, size_t *ret_left,

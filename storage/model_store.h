@@ -8,20 +8,22 @@
 #ifndef UNDERTAG_MODEL_STORE_H
 #define UNDERTAG_MODEL_STORE_H
 
+#include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
 
 #include "storage/store.h"
 
 enum {
-    MODEL_STORE_FORMAT = 1,
+    MODEL_STORE_FORMAT = 2,
     MODEL_STORE_SETTINGS_BYTES = 1024
 };
 
 struct model_store;
 struct model_store_writing;
 
-/* What the model as a whole is. */
+/* What the model as a whole is. One that was stored in an older format has nothing but zeros: it is
+ * nobody's. */
 struct model_store_head {
     unsigned char store_uuid[STORE_UUID_BYTES]; /* the store that it was learned from */
     char settings[MODEL_STORE_SETTINGS_BYTES];  /* what it was learned with, as text */
@@ -29,7 +31,11 @@ struct model_store_head {
     uint64_t documents;
     uint64_t factor_count;
     double factor_sum;
-    double calibration_gain;
+    uint64_t latest;
+    uint64_t evidence_items;
+    uint64_t curves_items;
+    uint64_t fit_halves;
+    double evidence_gain;
 };
 
 struct model_store_word {
@@ -39,7 +45,9 @@ struct model_store_word {
     uint32_t count;
 };
 
+/* A chunk of the weights, or of the shadow's. */
 struct model_store_chunk {
+    bool is_shadow;
     uint32_t word;
     uint32_t number;
     uint32_t count;
@@ -52,14 +60,39 @@ struct model_store_tag {
     uint32_t number;
     uint32_t count;
     uint32_t unprompted;
+    uint32_t trial_halves;
+    uint32_t given_halves;
     float bias;
     float bias_accumulator;
+    float shadow_bias;
+    float shadow_bias_accumulator;
 };
 
-struct model_store_bin {
+enum {
+    MODEL_STORE_MOST_FIGURES = 240 /* of one list: it stays in a leaf page */
+};
+
+/* A list of numbers, known by two. */
+struct model_store_figures {
+    uint32_t kind;
     uint32_t number;
     uint32_t count;
     const double *values;
+};
+
+/* An entry of the worklist: by tag, `values` has three numbers each. */
+struct model_store_entry {
+    uint64_t number;
+    uint64_t scored;
+    uint64_t counted;
+    uint32_t tag_count;
+    const uint32_t *tags;
+    const float *values;
+};
+
+enum {
+    MODEL_STORE_ENTRY_TAGS = 64,
+    MODEL_STORE_ENTRY_VALUES = 3
 };
 
 int model_store_open(const struct store_settings *settings, struct model_store **ret_store,
@@ -77,10 +110,11 @@ struct model_store_sink {
     int (*word)(void *user, const struct model_store_word *word);
     int (*chunk)(void *user, const struct model_store_chunk *chunk);
     int (*tag)(void *user, const struct model_store_tag *tag);
-    int (*bin)(void *user, const struct model_store_bin *bin);
+    int (*figures)(void *user, const struct model_store_figures *figures);
+    int (*entry)(void *user, const struct model_store_entry *entry);
 };
 
-/* Words come before chunks, a word's chunks in their order. */
+/* Words come before chunks, a word's chunks in their order; tags before entries. */
 int model_store_load(struct model_store *store, const struct model_store_sink *sink,
                      struct store_error *error) __attribute__((warn_unused_result));
 
@@ -107,8 +141,15 @@ int model_store_put_chunk(struct model_store_writing *writing,
     __attribute__((warn_unused_result));
 int model_store_put_tag(struct model_store_writing *writing, const struct model_store_tag *tag,
                         struct store_error *error) __attribute__((warn_unused_result));
-int model_store_put_bin(struct model_store_writing *writing, const struct model_store_bin *bin,
-                        struct store_error *error) __attribute__((warn_unused_result));
+int model_store_put_figures(struct model_store_writing *writing,
+                            const struct model_store_figures *figures, struct store_error *error)
+    __attribute__((warn_unused_result));
+int model_store_put_entry(struct model_store_writing *writing,
+                          const struct model_store_entry *entry, struct store_error *error)
+    __attribute__((warn_unused_result));
+/* An entry that is not there is no error. */
+int model_store_remove_entry(struct model_store_writing *writing, uint64_t number,
+                             struct store_error *error) __attribute__((warn_unused_result));
 
 /* Overwrites what forgotten words left in the file; see kv_scrub. */
 int model_store_scrub(struct model_store *store, size_t most_pages, size_t *ret_left,

@@ -220,7 +220,8 @@ static void move_usual(const struct calibrators_bin *bin, const size_t *group_of
 }
 
 /* By group and bin, in pairs of now. */
-static void estimate_groups(const struct calibrators *calibrators, const double *propensities,
+static void estimate_groups(const struct calibrators *calibrators, const double *believed,
+                            const double *least,
                             struct estimate estimates[CALIBRATORS_GROUPS][CALIBRATORS_BINS])
 {
     const double one = calibrators->gain;
@@ -228,7 +229,7 @@ static void estimate_groups(const struct calibrators *calibrators, const double 
     double usual[CALIBRATORS_GROUPS] = {0.0};
     memset(estimates, 0, CALIBRATORS_GROUPS * sizeof estimates[0]);
     for (size_t c = 0; c < CALIBRATORS_CLASSES; c++) {
-        group_of_class[c] = calibrators_group(propensities[c]);
+        group_of_class[c] = calibrators_group(believed[c]);
     }
     for (size_t b = 0; b < CALIBRATORS_BINS; b++) {
         const struct calibrators_bin *bin = &calibrators->bins[b];
@@ -236,7 +237,8 @@ static void estimate_groups(const struct calibrators *calibrators, const double 
         for (size_t c = 0; c < CALIBRATORS_CLASSES; c++) {
             if (bin->cells[c].pairs > 0.0 || bin->cells[c].known > 0.0) {
                 size_t g = group_of_class[c];
-                add_cell(&estimates[g][b], &bin->cells[c], propensities[c], usual[g], one);
+                add_cell(&estimates[g][b], &bin->cells[c], fmax(believed[c], least[c]), usual[g],
+                         one);
             }
         }
     }
@@ -316,12 +318,12 @@ static void fit_pooled(struct estimate estimates[CALIBRATORS_GROUPS][CALIBRATORS
 }
 
 void calibrators_fit(const struct calibrators *calibrators,
-                     const double propensities[CALIBRATORS_CLASSES],
-                     struct calibrators_curves *ret_curves)
+                     const double believed[CALIBRATORS_CLASSES],
+                     const double least[CALIBRATORS_CLASSES], struct calibrators_curves *ret_curves)
 {
     struct estimate estimates[CALIBRATORS_GROUPS][CALIBRATORS_BINS];
     double pooled[CALIBRATORS_BINS];
-    estimate_groups(calibrators, propensities, estimates);
+    estimate_groups(calibrators, believed, least, estimates);
     fit_pooled(estimates, pooled);
     for (size_t g = 0; g < CALIBRATORS_GROUPS; g++) {
         struct calibrators_curve *curve = &ret_curves->groups[g];

@@ -130,12 +130,26 @@ struct calibrators_curves {
     struct calibrators_curve groups[CALIBRATORS_GROUPS];
 };
 
+/*
+ * The least propensity that each class can have: of the pairs above any score, more than p of them
+ * cannot have been given. The lower limit of Wilson's interval with z = 3.7, the greatest over
+ * all scores; 0 where little is known. Where it lies above what is believed of a class, more was
+ * given than that belief allows.
+ */
+void calibrators_least(const struct calibrators *calibrators,
+                       double ret_least[CALIBRATORS_CLASSES]);
+
 /* The group of a propensity: 0 below .3, … 4 from .85. */
 size_t calibrators_group(double propensity);
 
-/* The chances as of now; propensities[c] of class c, above 0 and at most 1. */
+/*
+ * The chances as of now. `believed` are the classes' propensities, above 0 and at most 1, which
+ * make the groups; a given pair counts by them, or by `least` (calibrators_least) where that is
+ * more.
+ */
 void calibrators_fit(const struct calibrators *calibrators,
-                     const double propensities[CALIBRATORS_CLASSES],
+                     const double believed[CALIBRATORS_CLASSES],
+                     const double least[CALIBRATORS_CLASSES],
                      struct calibrators_curves *ret_curves);
 
 /* Whether there is too little evidence, and the chances lean on the prior: fewer than 200 given

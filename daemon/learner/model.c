@@ -35,9 +35,14 @@ int model_new(const struct model_settings *settings, const struct siphash_key *k
     }
     made->settings = *settings;
     made->version = first_version();
-    calibration_init(&made->calibration);
+    made->growth = propensity_growth(0.0);
+    propensity_fit_default(&settings->curve, &made->fit);
+    calibrators_init(&made->calibrators);
+    model_refit_curves(made, true);
     if (dictionary_new(key, &made->dictionary) < 0 ||
-        weights_new(&settings->weights, &made->weights) < 0) {
+        weights_new(&settings->weights, &made->weights) < 0 ||
+        (settings->shadow && weights_new(&settings->weights, &made->shadow) < 0) ||
+        standing_new(&made->standing) < 0 || worklist_new(&made->worklist) < 0) {
         model_free(made);
         return -ENOMEM;
     }
@@ -52,6 +57,9 @@ void model_free(struct model *model)
     }
     dictionary_free(model->dictionary);
     weights_free(model->weights);
+    weights_free(model->shadow);
+    standing_free(model->standing);
+    worklist_free(model->worklist);
     free(model->tags);
     marks_deinit(&model->changed_words);
     for (size_t i = 0; i < model->forgotten_count; i++) {
@@ -67,8 +75,8 @@ int model_scratch_new(struct model_scratch **ret_scratch)
     if (!made) {
         return -ENOMEM;
     }
-    if (weights_scratch_new(&made->weights) < 0) {
-        free(made);
+    if (weights_scratch_new(&made->weights) < 0 || weights_scratch_new(&made->shadow) < 0) {
+        model_scratch_free(made);
         return -ENOMEM;
     }
     *ret_scratch = made;
@@ -81,11 +89,15 @@ void model_scratch_free(struct model_scratch *scratch)
         return;
     }
     weights_scratch_free(scratch->weights);
+    weights_scratch_free(scratch->shadow);
     free(scratch->words);
     free(scratch->values);
     free(scratch->x);
     free(scratch->feature_of_x);
     free(scratch->given);
+    free(scratch->shadow_given);
+    free(scratch->own);
+    free(scratch->changed);
     free(scratch->barred);
     free(scratch->gaps);
     free(scratch->parts);
@@ -98,7 +110,8 @@ int model_reserve_tags(struct model *model, size_t count)
         return 0;
     }
     if (GROW(&model->tags, &model->tag_capacity, count) < 0 ||
-        weights_reserve_tags(model->weights, count) < 0) {
+        weights_reserve_tags(model->weights, count) < 0 ||
+        (model->shadow && weights_reserve_tags(model->shadow, count) < 0)) {
         return -ENOMEM;
     }
     model->census[0] += (uint32_t)(count - model->tag_count);
@@ -118,8 +131,57 @@ void model_set_tag_counts(struct model *model, uint32_t tag, struct tag_counts c
 
 double model_propensity(const struct model *model, uint32_t tag)
 {
-    return propensity_of_curve(&model->settings.curve, (double)model->tags[tag].unprompted,
-                               (double)model->documents);
+    const struct tag_counts *counts = &model->tags[tag];
+    return propensity_fit_tag_mean_at(&model->fit, (double)counts->unprompted, model->growth,
+                                      (double)counts->trial_halves / 2.0,
+                                      (double)counts->given_halves / 2.0);
+}
+
+double model_belongs_chance(const struct model *model, uint32_t tag, double score)
+{
+    return calibrators_chance(&model->curves, model_propensity(model, tag), score);
+}
+
+double model_missing_of_belongs(const struct model *model, uint32_t tag, double propensity,
+                                double belongs)
+{
+    size_t class = calibrators_class(model->tags[tag].unprompted, model->documents);
+    return propensity_missing_chance(fmax(propensity, model->least[class]), belongs);
+}
+
+double model_missing_chance(const struct model *model, uint32_t tag, double score)
+{
+    double propensity = model_propensity(model, tag);
+    return model_missing_of_belongs(model, tag, propensity,
+                                    calibrators_chance(&model->curves, propensity, score));
+}
+
+bool model_holds(const uint32_t *tags, size_t count, uint32_t tag)
+{
+    size_t from = 0;
+    while (count > 0) {
+        size_t half = count / 2;
+        if (tags[from + half] == tag) {
+            return true;
+        }
+        if (tags[from + half] < tag) {
+            from += half + 1;
+            count -= half + 1;
+        } else {
+            count = half;
+        }
+    }
+    return false;
+}
+
+const struct propensity_fit *model_fit(const struct model *model)
+{
+    return &model->fit;
+}
+
+const struct standing *model_standing(const struct model *model)
+{
+    return model->standing;
 }
 
 int model_weigh_features(const struct model *model, const struct feature *features, size_t count,
@@ -154,16 +216,36 @@ int model_weigh_features(const struct model *model, const struct feature *featur
     return 0;
 }
 
+int model_score_words(const struct model *model, const struct feature *features, size_t count,
+                      struct model_scratch *scratch)
+{
+    if (GROW(&scratch->words, &scratch->words_capacity, count) < 0) {
+        return -ENOMEM;
+    }
+    for (size_t i = 0; i < count; i++) {
+        scratch->words[i] =
+            dictionary_find(model->dictionary, features[i].term, features[i].term_bytes);
+    }
+    if (model_weigh_features(model, features, count, scratch) < 0) {
+        return -ENOMEM;
+    }
+    return weights_score(model->weights, scratch->x, scratch->x_count, scratch->weights);
+}
+
 void model_measure(const struct model *model, struct model_size *ret_size)
 {
-    *ret_size = (struct model_size){.documents = model->documents,
-                                    .words = dictionary_size(model->dictionary),
-                                    .tags = model->tag_count,
-                                    .postings = weights_postings(model->weights),
-                                    .dictionary_bytes = dictionary_bytes(model->dictionary),
-                                    .weights_bytes = weights_bytes(model->weights),
-                                    .counts_bytes =
-                                        sizeof *model + model->tag_capacity * sizeof *model->tags +
-                                        marks_bytes(&model->changed_words) +
-                                        model->forgotten_capacity * sizeof *model->forgotten};
+    *ret_size = (struct model_size){
+        .documents = model->documents,
+        .words = dictionary_size(model->dictionary),
+        .tags = model->tag_count,
+        .postings = weights_postings(model->weights),
+        .dictionary_bytes = dictionary_bytes(model->dictionary),
+        .weights_bytes = weights_bytes(model->weights),
+        .counts_bytes = sizeof *model + model->tag_capacity * sizeof *model->tags +
+                        marks_bytes(&model->changed_words) +
+                        model->forgotten_capacity * sizeof *model->forgotten,
+        .shadow_bytes = model->shadow ? weights_bytes(model->shadow) : 0,
+        .worklist_bytes = worklist_bytes(model->worklist),
+        .listed = worklist_size(model->worklist),
+        .stale = worklist_count_stale(model->worklist, model_stale_below(model))};
 }

@@ -1,10 +1,12 @@
 /*
  * model: all that learning reads and changes, as of one point in the sequence of changes: counts of
- * items, words and tags, the weights, the normaliser and the calibrator. Pure: features and tag
- * numbers in, numbers out; no clock, no I/O.
+ * items, words and tags, the weights, the normaliser, what people have examined, the propensities
+ * and calibrators that follow from it, the learner's standing and the worklist. Pure: features and
+ * tag numbers in, numbers out; no clock, no I/O.
  *
  * It is a function of the sequence of model_learn calls alone: the same items in the same order
- * give the same numbers to the last bit, also when it was stored and restored in between.
+ * give the same numbers to the last bit, also when it was stored and restored in between. (Only how
+ * fresh the worklist's scores are depends on when there was time for model_rescore.)
  *
  * Not locked: many threads may ask (each with its own scratch) while none learns.
  */
@@ -15,9 +17,10 @@
 #include <stddef.h>
 #include <stdint.h>
 
-#include "daemon/learner/calibration.h"
-#include "daemon/learner/propensity.h"
+#include "daemon/learner/propensity_fit.h"
+#include "daemon/learner/standing.h"
 #include "daemon/learner/weights.h"
+#include "daemon/learner/worklist.h"
 #include "daemon/text/features.h"
 #include "daemon/text/siphash.h"
 
@@ -32,16 +35,39 @@ struct model_settings {
     double balance;  /* β of the effective number of samples; 0: off */
     double step;     /* η; 0: by the vocabulary and the loss */
     double evidence_half_life_items;
+    bool shadow; /* teach a second learner without the correction, to compare with */
 };
 
-/* An item as the learner sees it; all borrowed for the call. Tags are numbers, none twice. */
+/* Goes up when the same changes would teach something else. */
+enum {
+    MODEL_LEARNER_VERSION = 2
+};
+
+/*
+ * A look at whether a tag that belongs to an item was given: whole after a check at random, half
+ * where a second tagger gave the tag, since two taggers overlook the same things.
+ */
+struct model_trial {
+    uint32_t tag;
+    uint8_t halves;       /* 2 or 1 */
+    uint8_t given_halves; /* the same, or 0 where it was not given */
+};
+
+/* An item as the learner sees it; all borrowed for the call. Tags are numbers, rising. */
 struct model_item {
+    uint64_t number; /* of its record; rises from change to change */
     const struct feature *features;
     size_t feature_count;
     const uint32_t *tags;
     size_t tag_count;
-    const uint32_t *prompted; /* those of `tags` that were examined (p = 1) */
-    size_t prompted_count;
+    const uint32_t *examined; /* those of `tags` that somebody pointed out (p = 1) */
+    size_t examined_count;
+    const uint32_t *known_not; /* examined, and they do not belong */
+    size_t known_not_count;
+    uint32_t checked_below; /* somebody went through all tags below this number; 0: nobody did */
+    bool same_words;        /* as what it replaces: only what is known of its tags has changed */
+    const struct model_trial *trials;
+    size_t trial_count;
 };
 
 enum {
@@ -56,6 +82,8 @@ struct model_question {
     size_t given_count;
     const uint32_t *excluded; /* never proposed either, and not counted as missing */
     size_t excluded_count;
+    uint32_t checked_below; /* somebody went through all tags below this number */
+    uint64_t number;        /* of a filed item, whose own share is taken out of the scores; 0 */
     bool tagged;  /* the item is tagged: chances are P(missing | not given), otherwise P(belongs) */
     size_t most;  /* at most MODEL_MOST_GAPS */
     double floor; /* the least chance shown */
@@ -88,10 +116,11 @@ int model_scratch_new(struct model_scratch **ret_scratch) __attribute__((warn_un
 void model_scratch_free(struct model_scratch *scratch);
 
 /*
- * Learns one change: `item` is what was filed (NULL: the item was withdrawn), `replaced` what it
+ * Learns one change: `item` is what it is now (NULL: the item was withdrawn), `replaced` what it
  * takes the place of (NULL: nothing; its counts leave with it). Counts move first; then the item is
- * scored with what was known so far, which is evidence for the calibrator if it is new; then it is
- * learned. Returns 0 or -ENOMEM, after which the model must not be used any more.
+ * scored with what was known so far, which is evidence for the calibrators and the standing if it
+ * is new, or if somebody has examined it; then it is learned. Returns 0 or -ENOMEM, after which the
+ * model must not be used any more.
  */
 int model_learn(struct model *model, const struct model_item *item,
                 const struct model_item *replaced, struct model_scratch *scratch)
@@ -103,6 +132,57 @@ int model_ask(const struct model *model, const struct model_question *question,
               struct model_scratch *scratch, struct model_answer *ret_answer)
     __attribute__((warn_unused_result));
 
+/* --- the worklist -------------------------------------------------------------------------------
+ */
+
+const struct worklist *model_worklist(const struct model *model);
+
+/* The seq below which an entry's scores are called stale: the model has grown by an eighth since.
+ */
+uint64_t model_stale_below(const struct model *model);
+
+/* The number of an item whose scores are the most stale, or 0. */
+uint64_t model_next_stale(struct model *model);
+
+/*
+ * Scores a filed item again for the worklist. As it changes only its entry, model_rescore scores
+ * and may run while others ask, and model_relist puts the entry in, which may not.
+ */
+int model_rescore(const struct model *model, const struct model_item *item,
+                  struct model_scratch *scratch, struct worklist_entry *ret_entry)
+    __attribute__((warn_unused_result));
+int model_relist(struct model *model, const struct worklist_entry *entry)
+    __attribute__((warn_unused_result));
+
+/* Takes out what can be scored no more. */
+int model_delist(struct model *model, uint64_t number) __attribute__((warn_unused_result));
+
+/* P(missing | not given) of a gap of the worklist, as of now. */
+double model_gap_chance(const struct model *model, const struct worklist_gap *gap);
+
+#define MODEL_ANY_TAG UINT32_MAX
+
+/* An item of the worklist by what it promises: the sum of its gaps' chances. */
+struct model_ranked {
+    double expected;
+    uint64_t number;
+};
+
+/*
+ * Ranks all items of the worklist by what they promise now, gaps below `floor` left out, and all
+ * but `tag` unless that is MODEL_ANY_TAG; items that promise nothing are left out. By falling
+ * promise, then by rising number. The caller frees the list. Returns 0 or -ENOMEM.
+ */
+int model_rank_worklist(const struct model *model, uint32_t tag, double floor,
+                        struct model_ranked **ret_ranked, size_t *ret_count)
+    __attribute__((warn_unused_result));
+
+/* --- what follows from what people have examined ------------------------------------------------
+ */
+
+const struct propensity_fit *model_fit(const struct model *model);
+const struct standing *model_standing(const struct model *model);
+
 struct model_size {
     uint64_t documents;
     uint64_t words;
@@ -111,6 +191,10 @@ struct model_size {
     uint64_t dictionary_bytes;
     uint64_t weights_bytes;
     uint64_t counts_bytes;
+    uint64_t shadow_bytes;
+    uint64_t worklist_bytes;
+    uint64_t listed; /* items of the worklist */
+    uint64_t stale;  /* of those, with stale scores */
 };
 
 void model_measure(const struct model *model, struct model_size *ret_size);

@@ -38,25 +38,29 @@ static double prevalence(const struct model *model, uint32_t tag, double propens
 static double tag_chance(const struct asker *asker, uint32_t tag, double score)
 {
     double propensity = model_propensity(asker->model, tag);
-    double belongs = asker->by_prevalence ? prevalence(asker->model, tag, propensity)
-                                          : calibration_chance(&asker->scratch->curve, score);
-    return asker->question->tagged ? propensity_missing_chance(propensity, belongs) : belongs;
+    double belongs = asker->by_prevalence
+                         ? prevalence(asker->model, tag, propensity)
+                         : calibrators_chance(&asker->model->curves, propensity, score);
+    return asker->question->tagged
+               ? model_missing_of_belongs(asker->model, tag, propensity, belongs)
+               : belongs;
 }
 
 /* What follows from the model as it is now, kept in the scratch until the model moves on. */
-static void refresh_curve(const struct model *model, struct model_scratch *scratch)
+static void refresh_rest(const struct model *model, struct model_scratch *scratch)
 {
     if (scratch->version == model->version) {
         return;
     }
-    calibration_fit(&model->calibration, &model->settings.curve, (double)model->documents,
-                    &scratch->curve);
-    scratch->rest_belongs = to_sum(scratch->curve.chance[0]);
+    scratch->most_of_rest = 0.0;
     for (size_t b = 0; b < CENSUS_BINS; b++) {
-        double propensity =
-            propensity_of_curve(&model->settings.curve, census_middle(b), (double)model->documents);
+        size_t class = calibrators_class((uint32_t)census_middle(b), model->documents);
+        double propensity = propensity_fit_mean_at(&model->fit, census_middle(b), model->growth);
+        double belongs = calibrators_chance(&model->curves, propensity, CALIBRATORS_FLOOR_SCORE);
+        scratch->rest_belongs[b] = to_sum(belongs);
         scratch->rest_missing[b] =
-            to_sum(propensity_missing_chance(propensity, scratch->curve.chance[0]));
+            to_sum(propensity_missing_chance(fmax(propensity, model->least[class]), belongs));
+        scratch->most_of_rest = fmax(scratch->most_of_rest, belongs);
     }
     scratch->version = model->version;
 }
@@ -64,36 +68,41 @@ static void refresh_curve(const struct model *model, struct model_scratch *scrat
 /* --- the sum over all tags ----------------------------------------------------------------------
  */
 
-/* A tag that no item has (any more): all that the learner knows of it may be a mistake. */
-static bool is_unused(const struct asker *asker, uint32_t tag)
+static const chance_sum *rest_of_bins(const struct asker *asker)
 {
-    return asker->model->tags[tag].count == 0;
+    return asker->question->tagged ? asker->scratch->rest_missing : asker->scratch->rest_belongs;
 }
 
 /* What a tag at the floor adds to the expected number. */
 static chance_sum rest_chance(const struct asker *asker, uint32_t tag)
 {
-    if (is_unused(asker, tag)) {
-        return 0;
-    }
-    if (!asker->question->tagged) {
-        return asker->scratch->rest_belongs;
-    }
-    return asker->scratch->rest_missing[census_bin(asker->model->tags[tag].unprompted)];
+    return model_is_unused(asker->model, tag)
+               ? 0
+               : rest_of_bins(asker)[census_bin(asker->model->tags[tag].unprompted)];
 }
 
-/* The expected number if every tag were at the floor. */
+/* The expected number if every tag that nobody has checked were at the floor. */
 static chance_sum rest_of_all(const struct asker *asker)
 {
     const struct model *model = asker->model;
-    if (!asker->question->tagged) {
-        return asker->scratch->rest_belongs * (model->tag_count - model->unused_tags);
-    }
+    const chance_sum *rest = rest_of_bins(asker);
     chance_sum sum = 0;
-    for (size_t b = 0; b < CENSUS_BINS; b++) {
-        sum += asker->scratch->rest_missing[b] * model->census[b];
+    if (asker->question->checked_below > 0) {
+        for (uint32_t tag = asker->question->checked_below; tag < model->tag_count; tag++) {
+            sum += rest_chance(asker, tag);
+        }
+        return sum;
     }
-    return sum - asker->scratch->rest_missing[0] * model->unused_tags; /* given 0 times: bin 0 */
+    for (size_t b = 0; b < CENSUS_BINS; b++) {
+        sum += rest[b] * model->census[b];
+    }
+    return sum - rest[0] * model->unused_tags; /* given 0 times: bin 0 */
+}
+
+static bool is_open(const struct asker *asker, uint32_t tag)
+{
+    return !asker->scratch->barred[tag] && !model_is_unused(asker->model, tag) &&
+           tag >= asker->question->checked_below;
 }
 
 /* Marks what may not be proposed; returns what those tags would add at the floor. */
@@ -102,8 +111,8 @@ static chance_sum bar_tags(const struct asker *asker, const uint32_t *tags, size
     chance_sum sum = 0;
     for (size_t i = 0; i < count; i++) {
         if (tags[i] < asker->model->tag_count && !asker->scratch->barred[tags[i]]) {
+            sum += is_open(asker, tags[i]) ? rest_chance(asker, tags[i]) : 0;
             asker->scratch->barred[tags[i]] = 1;
-            sum += rest_chance(asker, tags[i]);
         }
     }
     return sum;
@@ -145,13 +154,12 @@ static int gather_touched(const struct asker *asker, chance_sum barred_rest, siz
     const uint32_t *touched = weights_touched(asker->scratch->weights, &touched_count);
     for (size_t i = 0; i < touched_count; i++) {
         uint32_t tag = touched[i];
-        double score =
-            (double)weights_tag_score(asker->model->weights, asker->scratch->weights, tag);
-        if (asker->scratch->barred[tag] || is_unused(asker, tag) ||
-            score <= CALIBRATION_FLOOR_SCORE) {
+        double score = (double)model_score(asker->model, asker->scratch, tag);
+        double honest = score - (double)asker->scratch->own[tag];
+        if (!is_open(asker, tag) || honest <= CALIBRATORS_FLOOR_SCORE) {
             continue;
         }
-        double chance = tag_chance(asker, tag, score);
+        double chance = tag_chance(asker, tag, honest);
         expected += to_sum(chance) - rest_chance(asker, tag);
         if (chance >= asker->question->floor &&
             add_candidate(asker, tag, score, chance, ret_count) < 0) {
@@ -172,13 +180,12 @@ static int gather_every(const struct asker *asker, bool touched_too, size_t *ret
 {
     chance_sum sum = 0;
     for (uint32_t tag = 0; tag < asker->model->tag_count; tag++) {
-        double score =
-            (double)weights_tag_score(asker->model->weights, asker->scratch->weights, tag);
-        if (asker->scratch->barred[tag] || is_unused(asker, tag) ||
-            (!touched_too && score > CALIBRATION_FLOOR_SCORE)) {
+        double score = (double)model_score(asker->model, asker->scratch, tag);
+        double honest = score - (double)asker->scratch->own[tag];
+        if (!is_open(asker, tag) || (!touched_too && honest > CALIBRATORS_FLOOR_SCORE)) {
             continue;
         }
-        double chance = tag_chance(asker, tag, score);
+        double chance = tag_chance(asker, tag, honest);
         sum += to_sum(chance);
         if (chance >= asker->question->floor &&
             add_candidate(asker, tag, score, chance, ret_count) < 0) {
@@ -197,7 +204,7 @@ static int gather(const struct asker *asker, chance_sum barred_rest, size_t *ret
     }
     int result = gather_touched(asker, barred_rest, ret_count, ret_expected);
     if (result == 0 && *ret_count < asker->question->most &&
-        asker->question->floor <= asker->scratch->curve.chance[0]) {
+        asker->question->floor <= asker->scratch->most_of_rest) {
         chance_sum counted_already = 0;
         result = gather_every(asker, false, ret_count, &counted_already);
     }
@@ -275,30 +282,17 @@ static int explain(const struct asker *asker, size_t gap_count)
 /* --- the question -------------------------------------------------------------------------------
  */
 
-static int score_question(const struct model *model, const struct model_question *question,
-                          struct model_scratch *scratch)
-{
-    if (GROW(&scratch->words, &scratch->words_capacity, question->feature_count) < 0 ||
-        GROW(&scratch->barred, &scratch->barred_capacity, model->tag_count) < 0) {
-        return -ENOMEM;
-    }
-    for (size_t i = 0; i < question->feature_count; i++) {
-        scratch->words[i] = dictionary_find(model->dictionary, question->features[i].term,
-                                            question->features[i].term_bytes);
-    }
-    if (model_weigh_features(model, question->features, question->feature_count, scratch) < 0) {
-        return -ENOMEM;
-    }
-    return weights_score(model->weights, scratch->x, scratch->x_count, scratch->weights);
-}
-
 int model_ask(const struct model *model, const struct model_question *question,
               struct model_scratch *scratch, struct model_answer *ret_answer)
 {
-    if (score_question(model, question, scratch) < 0) {
+    const struct worklist_entry *entry =
+        question->number > 0 ? worklist_find(model->worklist, question->number) : NULL;
+    if (GROW(&scratch->barred, &scratch->barred_capacity, model->tag_count) < 0 ||
+        model_score_words(model, question->features, question->feature_count, scratch) < 0 ||
+        model_take_own(model, entry, scratch) < 0) {
         return -ENOMEM;
     }
-    refresh_curve(model, scratch);
+    refresh_rest(model, scratch);
     struct asker asker = {.model = model,
                           .question = question,
                           .scratch = scratch,
@@ -311,6 +305,7 @@ int model_ask(const struct model *model, const struct model_question *question,
     int result = gather(&asker, barred_rest, &count, &expected);
     unbar_tags(&asker, question->given, question->given_count);
     unbar_tags(&asker, question->excluded, question->excluded_count);
+    model_clear_own(entry, scratch);
     if (result < 0) {
         return result;
     }
@@ -324,6 +319,6 @@ int model_ask(const struct model *model, const struct model_question *question,
     *ret_answer = (struct model_answer){.gaps = scratch->gaps,
                                         .gap_count = shown,
                                         .expected = (double)expected / CHANCE_UNIT,
-                                        .early = scratch->curve.early};
+                                        .early = calibrators_early(&model->curves)};
     return 0;
 }

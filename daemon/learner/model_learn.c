@@ -12,16 +12,6 @@ enum {
     LARGE_VOCABULARY = 2000
 };
 
-static bool is_prompted(const struct model_item *item, uint32_t tag)
-{
-    for (size_t i = 0; i < item->prompted_count; i++) {
-        if (item->prompted[i] == tag) {
-            return true;
-        }
-    }
-    return false;
-}
-
 /* --- counts: what an item brings in and takes with it -------------------------------------------
  */
 
@@ -61,6 +51,9 @@ static int forget_word(struct model *model, uint32_t word)
     model->forgotten[model->forgotten_count++] =
         (struct forgotten_word){.term = copy, .term_bytes = bytes, .number = word};
     weights_forget_word(model->weights, word);
+    if (model->shadow) {
+        weights_forget_word(model->shadow, word);
+    }
     return dictionary_remove(model->dictionary, word);
 }
 
@@ -85,6 +78,11 @@ static int count_words_out(struct model *model, const struct model_item *item)
     return 0;
 }
 
+static bool is_examined(const struct model_item *item, uint32_t tag)
+{
+    return model_holds(item->examined, item->examined_count, tag);
+}
+
 static int count_tags_in(struct model *model, const struct model_item *item)
 {
     for (size_t i = 0; i < item->tag_count; i++) {
@@ -95,7 +93,7 @@ static int count_tags_in(struct model *model, const struct model_item *item)
         }
         struct tag_counts counts = model->tags[tag];
         counts.count++;
-        counts.unprompted += is_prompted(item, tag) ? 0 : 1;
+        counts.unprompted += is_examined(item, tag) ? 0 : 1;
         model_set_tag_counts(model, tag, counts);
     }
     return 0;
@@ -107,7 +105,7 @@ static int count_tags_out(struct model *model, const struct model_item *item)
         uint32_t tag = item->tags[i];
         struct tag_counts counts = model->tags[tag];
         counts.count -= counts.count > 0 ? 1 : 0;
-        counts.unprompted -= counts.unprompted > 0 && !is_prompted(item, tag) ? 1 : 0;
+        counts.unprompted -= counts.unprompted > 0 && !is_examined(item, tag) ? 1 : 0;
         model_set_tag_counts(model, tag, counts);
         if (weights_mark_tag(model->weights, tag) < 0) {
             return -ENOMEM;
@@ -116,76 +114,54 @@ static int count_tags_out(struct model *model, const struct model_item *item)
     return 0;
 }
 
+/* Adds an item's trials to its tags, or takes them out again. */
+static int count_trials(struct model *model, const struct model_item *item, int sign)
+{
+    for (size_t i = 0; i < item->trial_count; i++) {
+        const struct model_trial *trial = &item->trials[i];
+        if (model_reserve_tags(model, (size_t)trial->tag + 1) < 0 ||
+            weights_mark_tag(model->weights, trial->tag) < 0) {
+            return -ENOMEM;
+        }
+        struct tag_counts *counts = &model->tags[trial->tag];
+        counts->trial_halves += (uint32_t)(sign * trial->halves);
+        counts->given_halves += (uint32_t)(sign * trial->given_halves);
+        model->trial_halves += (uint64_t)(int64_t)(sign * trial->halves);
+    }
+    return 0;
+}
+
 /* What is new comes in before what is old leaves, so that a word of both is not forgotten. */
 static int move_counts(struct model *model, const struct model_item *item,
                        const struct model_item *replaced, struct model_scratch *scratch)
 {
+    bool same_words = item && replaced && item->same_words;
     if (item) {
-        if (count_words_in(model, item, scratch) < 0 || count_tags_in(model, item) < 0) {
+        if ((!same_words && count_words_in(model, item, scratch) < 0) ||
+            count_tags_in(model, item) < 0 || count_trials(model, item, 1) < 0) {
             return -ENOMEM;
         }
         model->documents++;
     }
     if (replaced) {
-        if (count_words_out(model, replaced) < 0 || count_tags_out(model, replaced) < 0) {
+        if ((!same_words && count_words_out(model, replaced) < 0) ||
+            count_tags_out(model, replaced) < 0 || count_trials(model, replaced, -1) < 0) {
             return -ENOMEM;
         }
         model->documents--;
     }
+    model->growth = propensity_growth((double)model->documents);
     return 0;
-}
-
-/* --- evidence: what the scores before learning say about what was given -------------------------
- */
-
-/* A tag used for the first time by this very item, with no weights from one withdrawn since, could
- * not have been proposed. */
-static bool was_known(const struct model *model, uint32_t tag, double score)
-{
-    return model->tags[tag].count > 1 || score > CALIBRATION_FLOOR_SCORE;
-}
-
-static void gather_evidence(struct model *model, const struct model_item *item,
-                            struct model_scratch *scratch)
-{
-    struct calibration *calibration = &model->calibration;
-    calibration_age(calibration, model->settings.evidence_half_life_items);
-    size_t touched_count = 0;
-    const uint32_t *touched = weights_touched(scratch->weights, &touched_count);
-    double rest = (double)model->tag_count;
-    for (size_t i = 0; i < touched_count; i++) {
-        double score = (double)weights_tag_score(model->weights, scratch->weights, touched[i]);
-        if (score > CALIBRATION_FLOOR_SCORE) {
-            calibration_add_pair(calibration, score);
-            rest -= 1.0;
-        }
-    }
-    for (size_t i = 0; i < item->tag_count; i++) {
-        uint32_t tag = item->tags[i];
-        double score = (double)weights_tag_score(model->weights, scratch->weights, tag);
-        if (!was_known(model, tag, score)) {
-            rest -= 1.0;
-            continue;
-        }
-        size_t share = is_prompted(item, tag)
-                           ? CALIBRATION_EXAMINED
-                           : calibration_share_class((double)model->tags[tag].unprompted,
-                                                     (double)model->documents);
-        calibration_add_given(calibration, score, share);
-    }
-    calibration_add_rest(calibration, fmax(rest, 0.0));
 }
 
 /* --- learning -----------------------------------------------------------------------------------
  */
 
-/* How many times a given pair counts: the correction for missing tags, the balance of classes, and
- * both relative to their running mean. */
-static double given_factor(struct model *model, uint32_t tag, bool prompted)
+double model_given_factor(struct model *model, uint32_t tag, bool is_examined_pair)
 {
     const struct model_settings *settings = &model->settings;
     double factor = 1.0;
-    if (settings->correction && !prompted) {
+    if (settings->correction && !is_examined_pair) {
         factor = surrogate_given_factor(model_propensity(model, tag));
     }
     if (settings->balance > 0.0) {
@@ -205,7 +181,7 @@ static double given_factor(struct model *model, uint32_t tag, bool prompted)
  */
 static const double LOGISTIC_STEPS = 8.0;
 
-static double step_for(const struct model *model)
+double model_step(const struct model *model)
 {
     if (model->settings.step > 0.0) {
         return model->settings.step;
@@ -215,38 +191,117 @@ static double step_for(const struct model *model)
 }
 
 static int learn_weights(struct model *model, const struct model_item *item,
-                         struct model_scratch *scratch)
+                         struct worklist_entry *entry, struct model_scratch *scratch)
 {
     if (GROW(&scratch->given, &scratch->given_capacity, item->tag_count) < 0) {
         return -ENOMEM;
     }
+    uint32_t watched[WORKLIST_GAPS];
+    float moves[WORKLIST_GAPS];
+    for (uint32_t i = 0; i < entry->gap_count; i++) {
+        watched[i] = entry->gaps[i].tag;
+    }
     for (size_t i = 0; i < item->tag_count; i++) {
         uint32_t tag = item->tags[i];
-        scratch->given[i] =
-            (struct weights_given){.tag = tag,
-                                   .tag_count = model->tags[tag].count,
-                                   .factor = given_factor(model, tag, is_prompted(item, tag))};
+        scratch->given[i] = (struct weights_given){
+            .tag = tag,
+            .tag_count = model->tags[tag].count,
+            .factor = model_given_factor(model, tag, is_examined(item, tag))};
     }
-    return weights_learn(model->weights, scratch->x, scratch->x_count, scratch->given,
-                         item->tag_count, step_for(model), scratch->weights);
+    const struct weights_example example = {.x = scratch->x,
+                                            .count = scratch->x_count,
+                                            .given = scratch->given,
+                                            .given_count = item->tag_count,
+                                            .step = model_step(model),
+                                            .watched = watched,
+                                            .watched_count = entry->gap_count,
+                                            .moves = moves};
+    int result = weights_learn(model->weights, &example, scratch->weights);
+    for (uint32_t i = 0; i < entry->gap_count && result == 0; i++) {
+        entry->gaps[i].own += moves[i];
+    }
+    return result;
+}
+
+/* The shadow learns what everybody would: every pair counts once. */
+static int learn_shadow(struct model *model, const struct model_item *item,
+                        struct model_scratch *scratch)
+{
+    if (GROW(&scratch->shadow_given, &scratch->shadow_given_capacity, item->tag_count) < 0) {
+        return -ENOMEM;
+    }
+    for (size_t i = 0; i < item->tag_count; i++) {
+        scratch->shadow_given[i] = (struct weights_given){
+            .tag = item->tags[i], .tag_count = model->tags[item->tags[i]].count, .factor = 1.0};
+    }
+    const struct weights_example example = {.x = scratch->x,
+                                            .count = scratch->x_count,
+                                            .given = scratch->shadow_given,
+                                            .given_count = item->tag_count,
+                                            .step = model_step(model)};
+    return weights_learn(model->shadow, &example, scratch->shadow);
+}
+
+static int score(struct model *model, const struct model_item *item, struct model_scratch *scratch)
+{
+    if (model_weigh_features(model, item->features, item->feature_count, scratch) < 0 ||
+        weights_score(model->weights, scratch->x, scratch->x_count, scratch->weights) < 0) {
+        return -ENOMEM;
+    }
+    return model->shadow
+               ? weights_score(model->shadow, scratch->x, scratch->x_count, scratch->shadow)
+               : 0;
+}
+
+/* The item's scores before it is learned: as evidence where it is new, and for its entry. */
+static int take_stock(struct model *model, const struct model_item *item,
+                      const struct model_item *replaced, struct model_scratch *scratch,
+                      struct worklist_entry *ret_entry)
+{
+    const struct worklist_entry *old =
+        replaced ? worklist_find(model->worklist, replaced->number) : NULL;
+    if (model_take_own(model, old, scratch) < 0 || model_mark_item(model, item, scratch) < 0) {
+        return -ENOMEM;
+    }
+    model_find_best(model, scratch);
+    if (!replaced) {
+        model_gather_evidence(model, item, scratch);
+    }
+    model_make_entry(model, item, scratch, ret_entry);
+    model_unmark_item(item, scratch);
+    model_clear_own(old, scratch);
+    return 0;
+}
+
+static int learn_item(struct model *model, const struct model_item *item,
+                      const struct model_item *replaced, struct model_scratch *scratch)
+{
+    struct worklist_entry entry;
+    if (score(model, item, scratch) < 0 || take_stock(model, item, replaced, scratch, &entry) < 0 ||
+        learn_weights(model, item, &entry, scratch) < 0 ||
+        (model->shadow && learn_shadow(model, item, scratch) < 0)) {
+        return -ENOMEM;
+    }
+    if (replaced && worklist_remove(model->worklist, replaced->number) < 0) {
+        return -ENOMEM;
+    }
+    return worklist_put(model->worklist, &entry);
 }
 
 int model_learn(struct model *model, const struct model_item *item,
                 const struct model_item *replaced, struct model_scratch *scratch)
 {
     model->version++;
+    if (item && item->number > model->latest) {
+        model->latest = item->number;
+    }
     if (move_counts(model, item, replaced, scratch) < 0) {
         return -ENOMEM;
     }
+    model_refit_propensities(model);
     if (!item) {
-        return 0;
+        return worklist_remove(model->worklist, replaced->number);
     }
-    if (model_weigh_features(model, item->features, item->feature_count, scratch) < 0 ||
-        weights_score(model->weights, scratch->x, scratch->x_count, scratch->weights) < 0) {
-        return -ENOMEM;
-    }
-    if (!replaced) {
-        gather_evidence(model, item, scratch);
-    }
-    return learn_weights(model, item, scratch);
+    return replaced && item->same_words ? model_examine(model, item, replaced, scratch)
+                                        : learn_item(model, item, replaced, scratch);
 }

@@ -34,46 +34,122 @@ static int put_words(const struct model *model, const struct model_sink *sink)
 
 static int put_tag(const struct model *model, const struct model_sink *sink, uint32_t number)
 {
-    struct weights_bias bias = weights_bias(model->weights, number);
+    const struct tag_counts *counts = &model->tags[number];
     struct model_tag tag = {.number = number,
-                            .count = model->tags[number].count,
-                            .unprompted = model->tags[number].unprompted,
-                            .bias = bias.value,
-                            .bias_accumulator = bias.accumulator};
+                            .count = counts->count,
+                            .unprompted = counts->unprompted,
+                            .trial_halves = counts->trial_halves,
+                            .given_halves = counts->given_halves,
+                            .bias = weights_bias(model->weights, number)};
+    if (model->shadow) {
+        tag.shadow_bias = weights_bias(model->shadow, number);
+    }
     return sink->tag(sink->user, &tag);
 }
 
-static int put_bins(const struct model *model, const struct model_sink *sink)
+static int put_tags(const struct model *model, const struct model_sink *sink,
+                    const struct marks *tags)
 {
-    for (uint32_t b = 0; b < CALIBRATION_BINS; b++) {
-        if (model->calibration.changed[b]) {
-            int result = sink->bin(sink->user, b, &model->calibration.bins[b]);
-            if (result != 0) {
-                return result;
-            }
+    int result = 0;
+    for (size_t i = 0; i < tags->count && result == 0; i++) {
+        result = put_tag(model, sink, tags->list[i]);
+    }
+    return result;
+}
+
+static int put_weights(const struct model *model, const struct model_sink *sink)
+{
+    int result = weights_changed_chunks(model->weights, sink->chunk, sink->user);
+    if (result == 0) {
+        result = put_tags(model, sink, weights_changed_tags(model->weights));
+    }
+    if (result == 0 && model->shadow) {
+        result = weights_changed_chunks(model->shadow, sink->shadow_chunk, sink->user);
+    }
+    if (result == 0 && model->shadow) {
+        result = put_tags(model, sink, weights_changed_tags(model->shadow));
+    }
+    return result;
+}
+
+/* --- figures ------------------------------------------------------------------------------------
+ */
+
+static int put_figures(const struct model_sink *sink, enum model_figures_kind kind, size_t number,
+                       const void *values, size_t bytes)
+{
+    const struct model_figures figures = {.kind = kind,
+                                          .number = (uint32_t)number,
+                                          .count = bytes / sizeof(double),
+                                          .values = values};
+    return sink->figures(sink->user, &figures);
+}
+
+static int put_calibrators(const struct model *model, const struct model_sink *sink)
+{
+    int result = 0;
+    for (size_t b = 0; b < CALIBRATORS_BINS && result == 0; b++) {
+        if (model->calibrators.changed[b]) {
+            result = put_figures(sink, MODEL_FIGURES_BIN, b, &model->calibrators.bins[b],
+                                 sizeof model->calibrators.bins[b]);
         }
     }
-    return 0;
+    for (size_t g = 0; g < CALIBRATORS_GROUPS && result == 0 && model->curves_changed; g++) {
+        result = put_figures(sink, MODEL_FIGURES_CURVE, g, &model->curves.groups[g],
+                             sizeof model->curves.groups[g]);
+    }
+    if (result == 0 && model->curves_changed) {
+        result = put_figures(sink, MODEL_FIGURES_LEAST, 0, model->least, sizeof model->least);
+    }
+    if (result == 0 && model->fit_changed) {
+        result = put_figures(sink, MODEL_FIGURES_FIT, 0, &model->fit, sizeof model->fit);
+    }
+    return result;
+}
+
+static int put_standing(const struct model *model, const struct model_sink *sink)
+{
+    double values[STANDING_PART_VALUES];
+    int result = 0;
+    for (size_t part = 0; part < standing_part_count() && result == 0; part++) {
+        if (standing_part_changed(model->standing, part)) {
+            size_t count = standing_part_get(model->standing, part, values);
+            result =
+                put_figures(sink, MODEL_FIGURES_STANDING, part, values, count * sizeof *values);
+        }
+    }
+    return result;
+}
+
+static struct model_totals totals_of(const struct model *model)
+{
+    return (struct model_totals){.documents = model->documents,
+                                 .factor_count = model->factor_count,
+                                 .factor_sum = model->factor_sum,
+                                 .latest = model->latest,
+                                 .evidence_items = model->evidence_items,
+                                 .curves_items = model->curves_items,
+                                 .fit_halves = model->fit_halves,
+                                 .evidence_gain = model->calibrators.gain};
 }
 
 int model_changes(const struct model *model, const struct model_sink *sink)
 {
     int result = put_words(model, sink);
     if (result == 0) {
-        result = weights_changed_chunks(model->weights, sink->chunk, sink->user);
-    }
-    const struct marks *tags = weights_changed_tags(model->weights);
-    for (size_t i = 0; i < tags->count && result == 0; i++) {
-        result = put_tag(model, sink, tags->list[i]);
+        result = put_weights(model, sink);
     }
     if (result == 0) {
-        result = put_bins(model, sink);
+        result = put_calibrators(model, sink);
     }
     if (result == 0) {
-        struct model_totals totals = {.documents = model->documents,
-                                      .factor_count = model->factor_count,
-                                      .factor_sum = model->factor_sum,
-                                      .calibration_gain = model->calibration.gain};
+        result = put_standing(model, sink);
+    }
+    if (result == 0) {
+        result = worklist_changes(model->worklist, sink->listed, sink->delisted, sink->user);
+    }
+    if (result == 0) {
+        const struct model_totals totals = totals_of(model);
         result = sink->totals(sink->user, &totals);
     }
     return result;
@@ -87,8 +163,18 @@ void model_clean(struct model *model)
     model->forgotten_count = 0;
     marks_clear(&model->changed_words);
     weights_clean(model->weights);
-    memset(model->calibration.changed, 0, sizeof model->calibration.changed);
+    if (model->shadow) {
+        weights_clean(model->shadow);
+    }
+    memset(model->calibrators.changed, 0, sizeof model->calibrators.changed);
+    model->curves_changed = false;
+    model->fit_changed = false;
+    standing_clean(model->standing);
+    worklist_clean(model->worklist);
 }
+
+/* --- restoring ----------------------------------------------------------------------------------
+ */
 
 int model_restore_word(struct model *model, const struct model_word *word)
 {
@@ -96,14 +182,25 @@ int model_restore_word(struct model *model, const struct model_word *word)
                               word->count);
 }
 
-int model_restore_chunk(struct model *model, const struct weights_chunk *chunk)
+static int restore_chunk(struct model *model, struct weights *weights,
+                         const struct weights_chunk *chunk)
 {
     for (uint32_t i = 0; i < chunk->count; i++) {
         if (model_reserve_tags(model, (size_t)chunk->tags[i] + 1) < 0) {
             return -ENOMEM;
         }
     }
-    return weights_restore_chunk(model->weights, chunk);
+    return weights_restore_chunk(weights, chunk);
+}
+
+int model_restore_chunk(struct model *model, const struct weights_chunk *chunk)
+{
+    return restore_chunk(model, model->weights, chunk);
+}
+
+int model_restore_shadow_chunk(struct model *model, const struct weights_chunk *chunk)
+{
+    return model->shadow ? restore_chunk(model, model->shadow, chunk) : -EINVAL;
 }
 
 int model_restore_tag(struct model *model, const struct model_tag *tag)
@@ -112,19 +209,63 @@ int model_restore_tag(struct model *model, const struct model_tag *tag)
         return -ENOMEM;
     }
     model_set_tag_counts(model, tag->number,
-                         (struct tag_counts){.count = tag->count, .unprompted = tag->unprompted});
-    return weights_restore_bias(
-        model->weights, tag->number,
-        (struct weights_bias){.value = tag->bias, .accumulator = tag->bias_accumulator});
+                         (struct tag_counts){.count = tag->count,
+                                             .unprompted = tag->unprompted,
+                                             .trial_halves = tag->trial_halves,
+                                             .given_halves = tag->given_halves});
+    model->trial_halves += tag->trial_halves;
+    int result = weights_restore_bias(model->weights, tag->number, tag->bias);
+    return result == 0 && model->shadow
+               ? weights_restore_bias(model->shadow, tag->number, tag->shadow_bias)
+               : result;
 }
 
-int model_restore_bin(struct model *model, uint32_t number, const struct calibration_bin *bin)
+/* Copies a list into plain numbers of exactly its size. */
+static int restore_plain(void *into, size_t bytes, const struct model_figures *figures)
 {
-    if (number >= CALIBRATION_BINS) {
+    if (figures->count * sizeof *figures->values != bytes) {
         return -EINVAL;
     }
-    model->calibration.bins[number] = *bin;
+    memcpy(into, figures->values, bytes);
     return 0;
+}
+
+int model_restore_figures(struct model *model, const struct model_figures *figures)
+{
+    uint32_t number = figures->number;
+    switch (figures->kind) {
+    case MODEL_FIGURES_BIN:
+        return number < CALIBRATORS_BINS
+                   ? restore_plain(&model->calibrators.bins[number],
+                                   sizeof model->calibrators.bins[number], figures)
+                   : -EINVAL;
+    case MODEL_FIGURES_CURVE:
+        return number < CALIBRATORS_GROUPS
+                   ? restore_plain(&model->curves.groups[number],
+                                   sizeof model->curves.groups[number], figures)
+                   : -EINVAL;
+    case MODEL_FIGURES_LEAST:
+        return number == 0 ? restore_plain(model->least, sizeof model->least, figures) : -EINVAL;
+    case MODEL_FIGURES_FIT:
+        return number == 0 ? restore_plain(&model->fit, sizeof model->fit, figures) : -EINVAL;
+    case MODEL_FIGURES_STANDING:
+        return standing_part_restore(model->standing, number, figures->values, figures->count);
+    default:
+        return -EINVAL;
+    }
+}
+
+int model_restore_entry(struct model *model, const struct worklist_entry *entry)
+{
+    if (entry->gap_count > WORKLIST_GAPS) {
+        return -EINVAL;
+    }
+    for (uint32_t i = 0; i < entry->gap_count; i++) {
+        if (entry->gaps[i].tag >= model->tag_count) {
+            return -EINVAL;
+        }
+    }
+    return worklist_put(model->worklist, entry);
 }
 
 int model_restore_totals(struct model *model, const struct model_totals *totals)
@@ -132,13 +273,21 @@ int model_restore_totals(struct model *model, const struct model_totals *totals)
     model->documents = totals->documents;
     model->factor_count = totals->factor_count;
     model->factor_sum = totals->factor_sum;
-    model->calibration.gain = totals->calibration_gain;
+    model->latest = totals->latest;
+    model->evidence_items = totals->evidence_items;
+    model->curves_items = totals->curves_items;
+    model->fit_halves = totals->fit_halves;
+    model->calibrators.gain = totals->evidence_gain;
+    model->growth = propensity_growth((double)model->documents);
     return 0;
 }
 
 int model_restored(struct model *model)
 {
     model->version++;
-    memset(model->calibration.changed, 0, sizeof model->calibration.changed);
+    memset(model->calibrators.changed, 0, sizeof model->calibrators.changed);
+    model->curves_changed = false;
+    standing_clean(model->standing);
+    worklist_clean(model->worklist);
     return dictionary_restored(model->dictionary);
 }

@@ -18,7 +18,11 @@ struct model_totals {
     uint64_t documents;
     uint64_t factor_count; /* given pairs behind the normaliser */
     double factor_sum;     /* their factors */
-    double calibration_gain;
+    uint64_t latest;       /* the greatest number of an item */
+    uint64_t evidence_items;
+    uint64_t curves_items;
+    uint64_t fit_halves;
+    double evidence_gain;
 };
 
 struct model_word {
@@ -32,8 +36,27 @@ struct model_tag {
     uint32_t number;
     uint32_t count;      /* items that have it */
     uint32_t unprompted; /* those to which it was given unprompted: N_l */
-    float bias;
-    float bias_accumulator;
+    uint32_t trial_halves;
+    uint32_t given_halves;
+    struct weights_bias bias;
+    struct weights_bias shadow_bias; /* zeros without a shadow */
+};
+
+/* What is kept as plain lists of numbers. */
+enum model_figures_kind {
+    MODEL_FIGURES_BIN,      /* the calibrators' evidence, by bin */
+    MODEL_FIGURES_CURVE,    /* the calibrators, by group */
+    MODEL_FIGURES_LEAST,    /* the least propensities that the evidence allows, number 0 */
+    MODEL_FIGURES_FIT,      /* the propensities' fit, number 0 */
+    MODEL_FIGURES_STANDING, /* the standing, by its parts */
+    MODEL_FIGURES_KINDS
+};
+
+struct model_figures {
+    enum model_figures_kind kind;
+    uint32_t number;
+    size_t count;
+    const double *values;
 };
 
 /* Takes each part; anything but 0 ends the walk and is returned. */
@@ -42,8 +65,11 @@ struct model_sink {
     int (*forgotten)(void *user, const struct model_word *word); /* count is 0 */
     int (*word)(void *user, const struct model_word *word);
     int (*chunk)(void *user, const struct weights_chunk *chunk);
+    int (*shadow_chunk)(void *user, const struct weights_chunk *chunk);
     int (*tag)(void *user, const struct model_tag *tag);
-    int (*bin)(void *user, uint32_t number, const struct calibration_bin *bin);
+    int (*figures)(void *user, const struct model_figures *figures);
+    int (*delisted)(void *user, uint64_t number); /* gone from the worklist */
+    int (*listed)(void *user, const struct worklist_entry *entry);
     int (*totals)(void *user, const struct model_totals *totals);
 };
 
@@ -57,9 +83,14 @@ int model_restore_word(struct model *model, const struct model_word *word)
     __attribute__((warn_unused_result));
 int model_restore_chunk(struct model *model, const struct weights_chunk *chunk)
     __attribute__((warn_unused_result));
+/* -EINVAL too where this model has no shadow. */
+int model_restore_shadow_chunk(struct model *model, const struct weights_chunk *chunk)
+    __attribute__((warn_unused_result));
 int model_restore_tag(struct model *model, const struct model_tag *tag)
     __attribute__((warn_unused_result));
-int model_restore_bin(struct model *model, uint32_t number, const struct calibration_bin *bin)
+int model_restore_figures(struct model *model, const struct model_figures *figures)
+    __attribute__((warn_unused_result));
+int model_restore_entry(struct model *model, const struct worklist_entry *entry)
     __attribute__((warn_unused_result));
 int model_restore_totals(struct model *model, const struct model_totals *totals)
     __attribute__((warn_unused_result));

@@ -1,10 +1,13 @@
 /*
  * model_private: the model's own insides, for the files that are the model together: model (life),
- * model_learn, model_ask and model_parts.
+ * model_learn (one change), model_evidence (what scores before learning say), model_examine (what
+ * people say), model_worklist, model_ask and model_parts.
  */
 #ifndef UNDERTAG_MODEL_PRIVATE_H
 #define UNDERTAG_MODEL_PRIVATE_H
 
+#include "daemon/learner/calibrators.h"
+#include "daemon/learner/candidates.h"
 #include "daemon/learner/census.h"
 #include "daemon/learner/marks.h"
 #include "daemon/learner/model.h"
@@ -13,6 +16,8 @@
 struct tag_counts {
     uint32_t count;
     uint32_t unprompted; /* N_l */
+    uint32_t trial_halves;
+    uint32_t given_halves;
 };
 
 /* A term that has left the dictionary but not yet the store. */
@@ -31,8 +36,24 @@ struct model {
     size_t tag_capacity;
     uint32_t census[CENSUS_BINS]; /* tags by unprompted count; sums to tag_count */
     size_t unused_tags;           /* that no item has: never proposed, nothing expected of them */
-    struct calibration calibration;
     uint64_t documents;
+    double growth;   /* propensity_growth of them */
+    uint64_t latest; /* the greatest number of an item so far */
+
+    struct calibrators calibrators;    /* evidence */
+    struct calibrators_curves curves;  /* as last fitted to it */
+    double least[CALIBRATORS_CLASSES]; /* of the propensities, as the evidence has it */
+    uint64_t evidence_items;           /* items behind the evidence */
+    uint64_t curves_items;             /* … when the curves were fitted */
+    uint64_t trial_halves;             /* over all tags */
+    uint64_t fit_halves;               /* … when the propensities were fitted */
+    struct propensity_fit fit;
+    struct standing *standing;
+    struct worklist *worklist;
+    struct weights *shadow; /* NULL: none */
+    bool curves_changed;
+    bool fit_changed;
+
     uint64_t factor_count;
     double factor_sum;
     uint64_t version; /* rises with every change; no two models ever have the same, none has 0 */
@@ -71,9 +92,27 @@ struct model_scratch {
 
     /* What follows from the evidence as of this version of a model; 0: nothing yet. */
     uint64_t version;
-    struct calibration_curve curve;
     chance_sum rest_missing[CENSUS_BINS]; /* of one tag of the bin that the item does not touch */
-    chance_sum rest_belongs;              /* likewise, whatever the bin */
+    chance_sum rest_belongs[CENSUS_BINS]; /* likewise */
+    double most_of_rest;                  /* the greatest of those chances */
+
+    struct weights_scratch *shadow;
+    struct weights_given *shadow_given;
+    size_t shadow_given_capacity;
+    struct candidates
+        best[STANDING_BANDS]; /* of the item scored last; [STANDING_ALL] is not used */
+    float *own; /* by tag: the item's own share, to be taken out of its score; otherwise 0 */
+    size_t own_capacity;
+    uint32_t *changed; /* tags of which something has become known */
+    size_t changed_capacity;
+};
+
+/* What is known of a tag of the item at hand, in scratch->barred. */
+enum model_mark {
+    MARK_NONE,
+    MARK_GIVEN,
+    MARK_EXAMINED, /* on the item, pointed out by somebody */
+    MARK_KNOWN_NOT
 };
 
 /* Makes room for tags below `count`, with counts of 0. Returns 0 or -ENOMEM. */
@@ -82,8 +121,82 @@ int model_reserve_tags(struct model *model, size_t count) __attribute__((warn_un
 /* Moves a tag's counts, and the tag's place in the census with them. */
 void model_set_tag_counts(struct model *model, uint32_t tag, struct tag_counts counts);
 
-/* The propensity of a tag as of now. */
+/* The propensity of a tag as of now: the curve's, and what was found of the tag itself. */
 double model_propensity(const struct model *model, uint32_t tag);
+
+/* P(belongs) of a tag with this score, and P(missing | not given). */
+double model_belongs_chance(const struct model *model, uint32_t tag, double score);
+double model_missing_chance(const struct model *model, uint32_t tag, double score);
+
+/* P(missing | not given) from P(belongs): with the tag's propensity, or the least that the evidence
+ * allows for tags as common as this. */
+double model_missing_of_belongs(const struct model *model, uint32_t tag, double propensity,
+                                double belongs);
+
+/* A tag that no item has (any more): all that the learner knows of it may be a mistake. */
+static inline bool model_is_unused(const struct model *model, uint32_t tag)
+{
+    return model->tags[tag].count == 0;
+}
+
+static inline float model_score(const struct model *model, const struct model_scratch *scratch,
+                                uint32_t tag)
+{
+    return weights_tag_score(model->weights, scratch->weights, tag);
+}
+
+/* Whether a rising list of tags holds one. */
+bool model_holds(const uint32_t *tags, size_t count, uint32_t tag);
+
+/* Scores the item's words as they are known; nothing is counted. Returns 0 or -ENOMEM. */
+int model_score_words(const struct model *model, const struct feature *features, size_t count,
+                      struct model_scratch *scratch) __attribute__((warn_unused_result));
+
+/* How many times a given pair counts: the correction for missing tags, the balance of classes, and
+ * both relative to their running mean. */
+double model_given_factor(struct model *model, uint32_t tag, bool is_examined);
+
+/* η for the next example. */
+double model_step(const struct model *model);
+
+/* --- model_evidence ---
+ * Of the item that the scratch has just scored. */
+
+/* Marks the item's tags in scratch->barred, and clears them. */
+int model_mark_item(const struct model *model, const struct model_item *item,
+                    struct model_scratch *scratch) __attribute__((warn_unused_result));
+void model_unmark_item(const struct model_item *item, struct model_scratch *scratch);
+
+/* Fills scratch->best with the best tags of each band, the item's own share taken out. */
+void model_find_best(const struct model *model, struct model_scratch *scratch);
+
+/* A new item: its pairs as evidence, its place in the standing, and what its proposals say of the
+ * chances. The item is marked and scratch->best filled. */
+void model_gather_evidence(struct model *model, const struct model_item *item,
+                           struct model_scratch *scratch);
+
+/* Fits curves and propensities again where enough has come in, or `now`. */
+void model_refit_curves(struct model *model, bool now);
+void model_refit_propensities(struct model *model);
+
+/* --- model_worklist --- */
+
+/* Puts what the entry says of the item's own shares into scratch->own, and takes it out again. */
+int model_take_own(const struct model *model, const struct worklist_entry *entry,
+                   struct model_scratch *scratch) __attribute__((warn_unused_result));
+void model_clear_own(const struct worklist_entry *entry, struct model_scratch *scratch);
+
+/* The entry of the item just scored and marked, with scratch->best filled; the shares are those in
+ * scratch->own. */
+void model_make_entry(const struct model *model, const struct model_item *item,
+                      const struct model_scratch *scratch, struct worklist_entry *ret_entry);
+
+/* --- model_examine --- */
+
+/* Learns what has become known of the tags of an item whose words are the same. */
+int model_examine(struct model *model, const struct model_item *item,
+                  const struct model_item *replaced, struct model_scratch *scratch)
+    __attribute__((warn_unused_result));
 
 /*
  * x of the features whose words are in scratch->words: (1 + ln tf)·idf, L2-normalised over all of

@@ -240,21 +240,36 @@ static bool is_rival(const struct weights *weights, float score)
     return score > WEIGHTS_FLOOR_SCORE;
 }
 
-static int activate_all(struct weights *weights, const struct weights_given *given,
-                        size_t given_count, double step, struct weights_scratch *scratch)
+static int activate_rivals(struct weights *weights, double step, struct weights_scratch *scratch)
 {
-    for (size_t i = 0; i < given_count; i++) {
-        scratch->is_given[given[i].tag] = 1;
-        if (activate(weights, given[i].tag, 1.0F, given[i].factor, step, scratch) < 0) {
-            return -ENOMEM;
-        }
-    }
-    scratch->active_given_count = scratch->active_count;
     for (size_t i = 0; i < scratch->touched_count; i++) {
         uint32_t tag = scratch->touched[i];
         if (!scratch->is_given[tag] &&
             is_rival(weights, weights_tag_score(weights, scratch, tag)) &&
             activate(weights, tag, -1.0F, 1.0, step, scratch) < 0) {
+            return -ENOMEM;
+        }
+    }
+    return 0;
+}
+
+static int activate_all(struct weights *weights, const struct weights_example *example,
+                        struct weights_scratch *scratch)
+{
+    for (size_t i = 0; i < example->given_count; i++) {
+        const struct weights_given *given = &example->given[i];
+        scratch->is_given[given->tag] = 1;
+        if (activate(weights, given->tag, 1.0F, given->factor, example->step, scratch) < 0) {
+            return -ENOMEM;
+        }
+    }
+    if (!example->pairs_alone) {
+        return activate_rivals(weights, example->step, scratch);
+    }
+    for (size_t i = 0; i < example->denied_count; i++) {
+        uint32_t tag = example->denied[i];
+        if (is_rival(weights, weights_tag_score(weights, scratch, tag)) &&
+            activate(weights, tag, -1.0F, 1.0, example->step, scratch) < 0) {
             return -ENOMEM;
         }
     }
@@ -371,19 +386,32 @@ static void take_steps(struct weights *weights, struct weights_scratch *scratch)
     }
 }
 
-int weights_learn(struct weights *weights, const struct weights_feature *x, size_t count,
-                  const struct weights_given *given, size_t given_count, double step,
+/* A step of α along y·rate·x adds α·D·y to the score. */
+static void tell_moves(const struct weights_example *example, const struct weights_scratch *scratch)
+{
+    for (size_t i = 0; i < example->watched_count; i++) {
+        uint32_t slot = scratch->slot[example->watched[i]];
+        const struct scratch_active *active = slot > 0 ? &scratch->active[slot - 1] : NULL;
+        example->moves[i] =
+            active ? (float)(active->alpha * active->curvature) * active->sign : 0.0F;
+    }
+}
+
+int weights_learn(struct weights *weights, const struct weights_example *example,
                   struct weights_scratch *scratch)
 {
-    int result = activate_all(weights, given, given_count, step, scratch);
-    for (size_t i = 0; i < count && result == 0 && scratch->active_count > 0; i++) {
-        result = collect_hits(weights, &x[i], given, given_count, step, scratch);
+    const struct weights_given *given = example->given;
+    int result = activate_all(weights, example, scratch);
+    for (size_t i = 0; i < example->count && result == 0 && scratch->active_count > 0; i++) {
+        result = collect_hits(weights, &example->x[i], given, example->given_count, example->step,
+                              scratch);
     }
     if (result == 0) {
         take_steps(weights, scratch);
-        hold_young_biases(weights, given, given_count, scratch);
+        hold_young_biases(weights, given, example->given_count, scratch);
+        tell_moves(example, scratch);
     }
-    scratch_end_learning(scratch, given, given_count);
+    scratch_end_learning(scratch, given, example->given_count);
     return result;
 }
 

@@ -106,13 +106,24 @@ void weights_explain(const struct weights *weights, const struct weights_feature
                      const uint32_t *tags, size_t tag_count, struct weights_scratch *scratch,
                      float *parts);
 
-/*
- * Learns the item that the scratch has just scored: `given` are its tags (none twice), all others
- * are negatives that count once. `step` is η for this item. Returns 0 or -ENOMEM; after that the
- * weights are as far as the example got and must not be used any more.
- */
-int weights_learn(struct weights *weights, const struct weights_feature *x, size_t count,
-                  const struct weights_given *given, size_t given_count, double step,
+/* What is learned of the item that the scratch has just scored; all borrowed. */
+struct weights_example {
+    const struct weights_feature *x; /* as it was scored */
+    size_t count;
+    const struct weights_given *given; /* tags that it has; none twice */
+    size_t given_count;
+    bool pairs_alone;       /* learn the pairs named here; otherwise all other tags are negatives */
+    const uint32_t *denied; /* negatives where pairs are alone; none of them given */
+    size_t denied_count;
+    double step; /* η for this item */
+    const uint32_t *watched;
+    size_t watched_count;
+    float *moves; /* by watched tag: set to what this adds to its score */
+};
+
+/* Learns an example; each negative counts once. Returns 0 or -ENOMEM; after that the weights are as
+ * far as the example got and must not be used any more. */
+int weights_learn(struct weights *weights, const struct weights_example *example,
                   struct weights_scratch *scratch) __attribute__((warn_unused_result));
 
 /* Forgets a word with all its postings. */

@@ -74,6 +74,5 @@ void scratch_end_learning(struct weights_scratch *scratch, const struct weights_
         scratch->slot[scratch->active[i].tag] = 0;
     }
     scratch->active_count = 0;
-    scratch->active_given_count = 0;
     scratch->hit_count = 0;
 }

@@ -44,7 +44,6 @@ struct weights_scratch {
     uint32_t *slot;    /* by tag, while learning: 1 + place in `active`, or 0 */
     struct scratch_active *active;
     size_t active_count;
-    size_t active_given_count;
     size_t active_capacity;
     struct scratch_hit *hits;
     size_t hit_count;

@@ -19,6 +19,7 @@ struct bench {
     struct model_scratch *scratch;
     uint32_t *tags;
     size_t tag_capacity;
+    uint64_t learned;
 };
 
 static int extract(struct bench *bench, const json_t *item)
@@ -32,6 +33,14 @@ static int extract(struct bench *bench, const json_t *item)
     return features_extract(bench->features, &source, SIZE_MAX);
 }
 
+static int compare_tags(const void *left, const void *right)
+{
+    uint32_t a = *(const uint32_t *)left;
+    uint32_t b = *(const uint32_t *)right;
+    return (a > b) - (a < b);
+}
+
+/* In rising order, as the learner wants them. */
 static int number_tags(struct bench *bench, const json_t *tags, size_t *ret_count)
 {
     size_t count = json_array_size(tags);
@@ -50,6 +59,9 @@ static int number_tags(struct bench *bench, const json_t *tags, size_t *ret_coun
             return -1;
         }
     }
+    if (count > 1) {
+        qsort(bench->tags, count, sizeof *bench->tags, compare_tags);
+    }
     *ret_count = count;
     return 0;
 }
@@ -61,7 +73,8 @@ static int learn(struct bench *bench, const json_t *item)
         number_tags(bench, json_object_get(item, "tags"), &tag_count) < 0) {
         return -1;
     }
-    const struct model_item learned = {.features = features_list(bench->features),
+    const struct model_item learned = {.number = ++bench->learned,
+                                       .features = features_list(bench->features),
                                        .feature_count = features_count(bench->features),
                                        .tags = bench->tags,
                                        .tag_count = tag_count};

@@ -168,7 +168,13 @@ static void learn_entry(struct weights *weights, struct weights_scratch *scratch
         }
     }
     assert_int_equal(weights_score(weights, x, count, scratch), 0);
-    assert_int_equal(weights_learn(weights, x, count, given, given_count, STEP, scratch), 0);
+    assert_int_equal(
+        weights_learn(
+            weights,
+            &(const struct weights_example){
+                .x = x, .count = count, .given = given, .given_count = given_count, .step = STEP},
+            scratch),
+        0);
 }
 
 static void learn_online(const struct corpus *corpus, bool corrected, struct scores *ret_scores)

@@ -5,6 +5,7 @@
 #ifndef UNDERTAG_TESTS_ENTRIES_H
 #define UNDERTAG_TESTS_ENTRIES_H
 
+#include <stdbool.h>
 #include <stdio.h>
 #include <string.h>
 
@@ -18,15 +19,20 @@ enum {
     ENTRY_TEXT = 320
 };
 
-/* An item that holds its own text; it must stay where it is. */
+/* An item that holds its own text; it must stay where it is. Its lists of tags rise. */
 struct entry {
+    uint64_t number; /* one for each that entry_set makes, rising */
     char text[ENTRY_TEXT];
     struct feature features[ENTRY_WORDS];
     size_t feature_count;
     uint32_t tags[ENTRY_TAGS];
     size_t tag_count;
-    uint32_t prompted[ENTRY_TAGS];
-    size_t prompted_count;
+    uint32_t examined[ENTRY_TAGS];
+    size_t examined_count;
+    uint32_t known_not[ENTRY_TAGS];
+    size_t known_not_count;
+    uint32_t checked_below;
+    bool same_words;
 };
 
 /* Several tag numbers as two arguments: the array and its length. */
@@ -34,11 +40,29 @@ struct entry {
     (const uint32_t[]){__VA_ARGS__}, sizeof((const uint32_t[]){__VA_ARGS__}) / sizeof(uint32_t)
 #define NO_TAGS NULL, 0
 
+static inline uint64_t entry_new_number(void)
+{
+    static uint64_t last;
+    return ++last;
+}
+
+/* Puts a tag into its place in a rising list of fewer than ENTRY_TAGS. */
+static inline void entry_add_tag(uint32_t *list, size_t *count, uint32_t tag)
+{
+    size_t at = (*count)++;
+    assert_true(at < ENTRY_TAGS);
+    for (; at > 0 && list[at - 1] > tag; at--) {
+        list[at] = list[at - 1];
+    }
+    list[at] = tag;
+}
+
 /* `words` with a space between each, none twice. */
 static inline void entry_set(struct entry *entry, const char *words, const uint32_t *tags,
                              size_t tag_count)
 {
     memset(entry, 0, sizeof *entry);
+    entry->number = entry_new_number();
     size_t text_bytes = strlen(words);
     assert_true(text_bytes < sizeof entry->text && tag_count <= ENTRY_TAGS);
     memcpy(entry->text, words, text_bytes);
@@ -54,7 +78,7 @@ static inline void entry_set(struct entry *entry, const char *words, const uint3
         at += bytes;
     }
     for (size_t i = 0; i < tag_count; i++) {
-        entry->tags[entry->tag_count++] = tags[i];
+        entry_add_tag(entry->tags, &entry->tag_count, tags[i]);
     }
 }
 

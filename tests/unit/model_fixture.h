@@ -19,12 +19,17 @@ struct learner {
 
 static inline struct model_item entry_item(const struct entry *entry)
 {
-    return (struct model_item){.features = entry->features,
+    return (struct model_item){.number = entry->number,
+                               .features = entry->features,
                                .feature_count = entry->feature_count,
                                .tags = entry->tags,
                                .tag_count = entry->tag_count,
-                               .prompted = entry->prompted,
-                               .prompted_count = entry->prompted_count};
+                               .examined = entry->examined,
+                               .examined_count = entry->examined_count,
+                               .known_not = entry->known_not,
+                               .known_not_count = entry->known_not_count,
+                               .checked_below = entry->checked_below,
+                               .same_words = entry->same_words};
 }
 
 static inline struct model_settings learner_settings(void)
@@ -92,8 +97,8 @@ static inline void learner_file_prompted(const struct learner *learner, const ch
 {
     struct entry entry;
     entry_set(&entry, words, tags, tag_count);
-    memcpy(entry.prompted, entry.tags, sizeof entry.tags);
-    entry.prompted_count = tag_count;
+    memcpy(entry.examined, entry.tags, sizeof entry.tags);
+    entry.examined_count = tag_count;
     learner_change(learner, &entry, NULL);
 }
 

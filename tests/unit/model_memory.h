@@ -6,8 +6,10 @@
 #define UNDERTAG_TESTS_MODEL_MEMORY_H
 
 #include <errno.h>
+#include <stdlib.h>
 #include <string.h>
 
+#include "daemon/learner/calibrators.h"
 #include "daemon/learner/model_parts.h"
 #include "tests/unit/near.h"
 
@@ -15,7 +17,10 @@ enum {
     MEMORY_WORDS = 1200,
     MEMORY_TERM = 24,
     MEMORY_CHUNKS = 3,
-    MEMORY_TAGS = 400
+    MEMORY_TAGS = 400,
+    MEMORY_ENTRIES = 1200,
+    MEMORY_FIGURES = 2500, /* by number: the standing has the most */
+    MEMORY_VALUES = STANDING_PART_VALUES
 };
 
 struct memory_chunk {
@@ -30,6 +35,12 @@ struct memory_word {
     char term[MEMORY_TERM];
     uint32_t count;
     struct memory_chunk chunks[MEMORY_CHUNKS];
+    struct memory_chunk shadow_chunks[MEMORY_CHUNKS];
+};
+
+struct memory_figures {
+    size_t count;
+    double values[MEMORY_VALUES];
 };
 
 /* Large: static or on the heap. */
@@ -37,15 +48,30 @@ struct memory {
     struct memory_word words[MEMORY_WORDS]; /* by number */
     bool has_tag[MEMORY_TAGS];
     struct model_tag tags[MEMORY_TAGS];
-    struct calibration_bin bins[CALIBRATION_BINS];
+    struct memory_figures figures[MODEL_FIGURES_KINDS][MEMORY_FIGURES];
+    struct worklist_entry entries[MEMORY_ENTRIES]; /* in no order */
+    size_t entry_count;
     struct model_totals totals;
     /* Parts put out by the last memory_take. */
     size_t forgotten_out;
     size_t words_out;
     size_t chunks_out;
+    size_t shadow_chunks_out;
     size_t tags_out;
-    size_t bins_out;
+    size_t figures_out;
+    size_t listed_out;
+    size_t delisted_out;
 };
+
+static inline struct memory *memory_new(void)
+{
+    struct memory *memory = calloc(1, sizeof *memory);
+    assert_non_null(memory);
+    return memory;
+}
+
+/* --- out of the model ---------------------------------------------------------------------------
+ */
 
 static inline int memory_forget(void *user, const struct model_word *word)
 {
@@ -70,16 +96,29 @@ static inline int memory_put_word(void *user, const struct model_word *word)
     return 0;
 }
 
-static inline int memory_put_chunk(void *user, const struct weights_chunk *chunk)
+static inline void memory_keep_chunk(struct memory_chunk *kept, const struct weights_chunk *chunk)
 {
-    struct memory *memory = user;
-    assert_true(chunk->word < MEMORY_WORDS && chunk->number < MEMORY_CHUNKS);
-    struct memory_chunk *kept = &memory->words[chunk->word].chunks[chunk->number];
     kept->count = chunk->count;
     memcpy(kept->tags, chunk->tags, chunk->count * sizeof *chunk->tags);
     memcpy(kept->values, chunk->values, chunk->count * sizeof *chunk->values);
     memcpy(kept->accumulators, chunk->accumulators, chunk->count * sizeof *chunk->accumulators);
+}
+
+static inline int memory_put_chunk(void *user, const struct weights_chunk *chunk)
+{
+    struct memory *memory = user;
+    assert_true(chunk->word < MEMORY_WORDS && chunk->number < MEMORY_CHUNKS);
+    memory_keep_chunk(&memory->words[chunk->word].chunks[chunk->number], chunk);
     memory->chunks_out++;
+    return 0;
+}
+
+static inline int memory_put_shadow_chunk(void *user, const struct weights_chunk *chunk)
+{
+    struct memory *memory = user;
+    assert_true(chunk->word < MEMORY_WORDS && chunk->number < MEMORY_CHUNKS);
+    memory_keep_chunk(&memory->words[chunk->word].shadow_chunks[chunk->number], chunk);
+    memory->shadow_chunks_out++;
     return 0;
 }
 
@@ -93,12 +132,50 @@ static inline int memory_put_tag(void *user, const struct model_tag *tag)
     return 0;
 }
 
-static inline int memory_put_bin(void *user, uint32_t number, const struct calibration_bin *bin)
+static inline int memory_put_figures(void *user, const struct model_figures *figures)
 {
     struct memory *memory = user;
-    assert_true(number < CALIBRATION_BINS);
-    memory->bins[number] = *bin;
-    memory->bins_out++;
+    assert_true(figures->kind < MODEL_FIGURES_KINDS && figures->number < MEMORY_FIGURES &&
+                figures->count > 0 && figures->count <= MEMORY_VALUES);
+    struct memory_figures *kept = &memory->figures[figures->kind][figures->number];
+    memset(kept, 0, sizeof *kept);
+    kept->count = figures->count;
+    memcpy(kept->values, figures->values, figures->count * sizeof *figures->values);
+    memory->figures_out++;
+    return 0;
+}
+
+static inline struct worklist_entry *memory_find_entry(struct memory *memory, uint64_t number)
+{
+    for (size_t i = 0; i < memory->entry_count; i++) {
+        if (memory->entries[i].number == number) {
+            return &memory->entries[i];
+        }
+    }
+    return NULL;
+}
+
+static inline int memory_put_entry(void *user, const struct worklist_entry *entry)
+{
+    struct memory *memory = user;
+    struct worklist_entry *kept = memory_find_entry(memory, entry->number);
+    if (!kept) {
+        assert_true(memory->entry_count < MEMORY_ENTRIES);
+        kept = &memory->entries[memory->entry_count++];
+    }
+    *kept = *entry;
+    memory->listed_out++;
+    return 0;
+}
+
+static inline int memory_remove_entry(void *user, uint64_t number)
+{
+    struct memory *memory = user;
+    struct worklist_entry *kept = memory_find_entry(memory, number);
+    if (kept) {
+        *kept = memory->entries[--memory->entry_count];
+    }
+    memory->delisted_out++;
     return 0;
 }
 
@@ -114,8 +191,11 @@ static inline struct model_sink memory_sink(struct memory *memory)
                                .forgotten = memory_forget,
                                .word = memory_put_word,
                                .chunk = memory_put_chunk,
+                               .shadow_chunk = memory_put_shadow_chunk,
                                .tag = memory_put_tag,
-                               .bin = memory_put_bin,
+                               .figures = memory_put_figures,
+                               .delisted = memory_remove_entry,
+                               .listed = memory_put_entry,
                                .totals = memory_put_totals};
 }
 
@@ -126,9 +206,20 @@ static inline void memory_take(struct memory *memory, const struct model *model)
     memory->forgotten_out = 0;
     memory->words_out = 0;
     memory->chunks_out = 0;
+    memory->shadow_chunks_out = 0;
     memory->tags_out = 0;
-    memory->bins_out = 0;
+    memory->figures_out = 0;
+    memory->listed_out = 0;
+    memory->delisted_out = 0;
     assert_int_equal(model_changes(model, &sink), 0);
+}
+
+/* All that memory_take took but the totals. */
+static inline size_t memory_parts_out(const struct memory *memory)
+{
+    return memory->forgotten_out + memory->words_out + memory->chunks_out +
+           memory->shadow_chunks_out + memory->tags_out + memory->figures_out + memory->listed_out +
+           memory->delisted_out;
 }
 
 /* Takes what has changed, and tells the model that it is stored. */
@@ -137,6 +228,9 @@ static inline void memory_store(struct memory *memory, struct model *model)
     memory_take(memory, model);
     model_clean(model);
 }
+
+/* --- back into a model --------------------------------------------------------------------------
+ */
 
 static inline void memory_restore_word(const struct memory *memory, uint32_t number,
                                        struct model *model)
@@ -151,19 +245,41 @@ static inline void memory_restore_word(const struct memory *memory, uint32_t num
     }
 }
 
+static inline struct weights_chunk memory_chunk_of(const struct memory_chunk *kept, uint32_t word,
+                                                   uint32_t number)
+{
+    return (struct weights_chunk){.word = word,
+                                  .number = number,
+                                  .count = kept->count,
+                                  .tags = kept->tags,
+                                  .values = kept->values,
+                                  .accumulators = kept->accumulators};
+}
+
 static inline void memory_restore_chunks(const struct memory *memory, uint32_t word,
                                          struct model *model)
 {
+    const struct memory_word *kept = &memory->words[word];
     for (uint32_t number = 0; number < MEMORY_CHUNKS; number++) {
-        const struct memory_chunk *kept = &memory->words[word].chunks[number];
-        if (kept->count > 0) {
-            struct weights_chunk chunk = {.word = word,
-                                          .number = number,
-                                          .count = kept->count,
-                                          .tags = kept->tags,
-                                          .values = kept->values,
-                                          .accumulators = kept->accumulators};
-            assert_int_equal(model_restore_chunk(model, &chunk), 0);
+        struct weights_chunk chunk = memory_chunk_of(&kept->chunks[number], word, number);
+        struct weights_chunk shadow = memory_chunk_of(&kept->shadow_chunks[number], word, number);
+        assert_int_equal(chunk.count > 0 ? model_restore_chunk(model, &chunk) : 0, 0);
+        assert_int_equal(shadow.count > 0 ? model_restore_shadow_chunk(model, &shadow) : 0, 0);
+    }
+}
+
+static inline void memory_restore_figures(const struct memory *memory, struct model *model)
+{
+    for (int kind = 0; kind < MODEL_FIGURES_KINDS; kind++) {
+        for (uint32_t number = 0; number < MEMORY_FIGURES; number++) {
+            const struct memory_figures *kept = &memory->figures[kind][number];
+            if (kept->count > 0) {
+                struct model_figures figures = {.kind = (enum model_figures_kind)kind,
+                                                .number = number,
+                                                .count = kept->count,
+                                                .values = kept->values};
+                assert_int_equal(model_restore_figures(model, &figures), 0);
+            }
         }
     }
 }
@@ -182,12 +298,16 @@ static inline void memory_restore(const struct memory *memory, struct model *mod
             assert_int_equal(model_restore_tag(model, &memory->tags[tag]), 0);
         }
     }
-    for (uint32_t bin = 0; bin < CALIBRATION_BINS; bin++) {
-        assert_int_equal(model_restore_bin(model, bin, &memory->bins[bin]), 0);
+    memory_restore_figures(memory, model);
+    for (size_t i = 0; i < memory->entry_count; i++) {
+        assert_int_equal(model_restore_entry(model, &memory->entries[i]), 0);
     }
     assert_int_equal(model_restore_totals(model, &memory->totals), 0);
     assert_int_equal(model_restored(model), 0);
 }
+
+/* --- reading ------------------------------------------------------------------------------------
+ */
 
 static inline const struct memory_word *memory_find(const struct memory *memory, const char *term)
 {
@@ -208,8 +328,60 @@ static inline size_t memory_word_count(const struct memory *memory)
     return count;
 }
 
-/* Two stores hold the same to the last bit; the numbers of the words may differ. */
-static inline void memory_assert_same(const struct memory *one, const struct memory *other)
+/* The evidence of one bin and class, in pairs as of now. */
+static inline struct calibrators_cell memory_cell(const struct memory *memory, size_t bin,
+                                                  size_t tag_class)
+{
+    struct calibrators_cell cell = {0};
+    const struct memory_figures *kept = &memory->figures[MODEL_FIGURES_BIN][bin];
+    if (kept->count > 0) {
+        assert_int_equal(kept->count * sizeof *kept->values, sizeof(struct calibrators_bin));
+        memcpy(&cell, (const char *)kept->values + tag_class * sizeof cell, sizeof cell);
+    }
+    double one = memory->totals.evidence_gain;
+    return (struct calibrators_cell){.pairs = cell.pairs / one,
+                                     .given = cell.given / one,
+                                     .known = cell.known / one,
+                                     .known_true = cell.known_true / one,
+                                     .ruled = cell.ruled / one,
+                                     .ruled_true = cell.ruled_true / one};
+}
+
+/* The evidence of a bin over all classes, or of all bins (CALIBRATORS_BINS). */
+static inline struct calibrators_cell memory_evidence(const struct memory *memory, size_t bin)
+{
+    struct calibrators_cell sum = {0};
+    size_t first = bin < CALIBRATORS_BINS ? bin : 0;
+    size_t end = bin < CALIBRATORS_BINS ? bin + 1 : CALIBRATORS_BINS;
+    for (size_t b = first; b < end; b++) {
+        for (size_t c = 0; c < CALIBRATORS_CLASSES; c++) {
+            struct calibrators_cell cell = memory_cell(memory, b, c);
+            sum.pairs += cell.pairs;
+            sum.given += cell.given;
+            sum.known += cell.known;
+            sum.known_true += cell.known_true;
+            sum.ruled += cell.ruled;
+            sum.ruled_true += cell.ruled_true;
+        }
+    }
+    return sum;
+}
+
+/* --- comparing ----------------------------------------------------------------------------------
+ */
+
+static inline void memory_assert_same_entry(const struct worklist_entry *one,
+                                            const struct worklist_entry *other)
+{
+    assert_non_null(other);
+    assert_true(one->number == other->number);
+    assert_true(one->scored == other->scored);
+    assert_true(one->counted == other->counted);
+    assert_int_equal(one->gap_count, other->gap_count);
+    assert_memory_equal(one->gaps, other->gaps, one->gap_count * sizeof *one->gaps);
+}
+
+static inline void memory_assert_same_words(const struct memory *one, const struct memory *other)
 {
     assert_int_equal(memory_word_count(one), memory_word_count(other));
     for (size_t i = 0; i < MEMORY_WORDS; i++) {
@@ -219,12 +391,26 @@ static inline void memory_assert_same(const struct memory *one, const struct mem
             assert_non_null(same);
             assert_int_equal(word->count, same->count);
             assert_memory_equal(word->chunks, same->chunks, sizeof word->chunks);
+            assert_memory_equal(word->shadow_chunks, same->shadow_chunks,
+                                sizeof word->shadow_chunks);
         }
     }
+}
+
+/* Two stores hold the same to the last bit; the numbers of the words may differ, and the order of
+ * the entries. */
+static inline void memory_assert_same(const struct memory *one, struct memory *other)
+{
+    memory_assert_same_words(one, other);
     assert_memory_equal(one->has_tag, other->has_tag, sizeof one->has_tag);
     assert_memory_equal(one->tags, other->tags, sizeof one->tags);
-    assert_memory_equal(one->bins, other->bins, sizeof one->bins);
+    assert_memory_equal(one->figures, other->figures, sizeof one->figures);
     assert_memory_equal(&one->totals, &other->totals, sizeof one->totals);
+    assert_int_equal(one->entry_count, other->entry_count);
+    for (size_t i = 0; i < one->entry_count; i++) {
+        memory_assert_same_entry(&one->entries[i],
+                                 memory_find_entry(other, one->entries[i].number));
+    }
 }
 
 #endif

@@ -11,13 +11,15 @@
 #include <string.h>
 
 #include "storage/items.h"
+#include "storage/items_examine.h"
 #include "storage/store.h"
 #include "storage/vocabulary.h"
 
 enum {
     FIXTURE_MAP_BYTES = 64 << 20,
     FIXTURE_PATH_BYTES = 512,
-    FIXTURE_TAGS = 8 /* in a list of names */
+    FIXTURE_TAGS = 8, /* in a list of names */
+    FIXTURE_TEXT_BYTES = 256
 };
 
 /* --- temporary homes --- */
@@ -161,6 +163,15 @@ static inline bool is_text(struct store_text text, const char *expected)
     return text.size == strlen(expected) && memcmp(text.data, expected, text.size) == 0;
 }
 
+/* Adds a name to a text of FIXTURE_TEXT_BYTES, with a space between two. */
+static inline void fixture_add_name(char *names, const char *name)
+{
+    size_t used = strlen(names);
+    int length =
+        snprintf(names + used, FIXTURE_TEXT_BYTES - used, "%s%s", used > 0 ? " " : "", name);
+    assert_true(length > 0 && (size_t)length < FIXTURE_TEXT_BYTES - used);
+}
+
 /* Files in a view of its own; a tag that is not there is opened. */
 static inline struct item_filed fixture_file(struct fixture *fixture, struct item_filing filing)
 {
@@ -260,6 +271,127 @@ static inline struct vocabulary_tag fixture_tag(struct fixture *fixture, const c
         fail_msg("tag %s: %d %s", name, result, error.text);
     }
     return tag;
+}
+
+/* The item of an id as it is now; its texts are valid until the next one is read. */
+static inline struct item_record fixture_item(struct fixture *fixture, const char *id)
+{
+    struct store_error error = {0};
+    uint64_t seq = 0;
+    struct store_view *view = fixture_read(fixture);
+    int result = items_find(view, text_of(id), &seq, &error);
+    store_end(view);
+    if (result != STORE_OK) {
+        fail_msg("item %s: %d %s", id, result, error.text);
+    }
+    return fixture_record(fixture, seq);
+}
+
+static inline struct vocabulary_counts fixture_counts(struct fixture *fixture, const char *name)
+{
+    return fixture_tag(fixture, name).counts;
+}
+
+static inline void fixture_retire(struct fixture *fixture, const char *name)
+{
+    struct store_error error = {0};
+    struct vocabulary_tag tag = fixture_tag(fixture, name);
+    tag.state = VOCABULARY_RETIRED;
+    struct store_view *view = fixture_write(fixture);
+    assert_int_equal(vocabulary_put(view, &tag, &error), STORE_OK);
+    fixture_commit(view);
+}
+
+/* That a set is that of the names in `expected`, in the order in which they were opened, with a
+ * space between two. */
+static inline void assert_names(struct fixture *fixture, struct numbers numbers,
+                                const char *expected)
+{
+    char names[FIXTURE_TEXT_BYTES] = "";
+    struct store_error error = {0};
+    struct store_view *view = fixture_read(fixture);
+    for (size_t i = 0; i < numbers.count; i++) {
+        struct vocabulary_tag tag = {0};
+        assert_int_equal(vocabulary_get(view, numbers.list[i], &tag, &error), STORE_OK);
+        fixture_add_name(names, tag.name);
+    }
+    store_end(view);
+    assert_string_equal(names, expected);
+}
+
+/* --- what is said of items: each in a view of its own, committed whatever came of it --- */
+
+struct said {
+    int result;
+    struct item_filed filed;
+    struct item_refusal refusal;
+    char missed[FIXTURE_TEXT_BYTES]; /* by a check: names with a space between two */
+    char extra[FIXTURE_TEXT_BYTES];
+};
+
+static inline struct item_saying said_by(const char *who, const char *id)
+{
+    return (struct item_saying){.id = text_of(id), .who = text_of(who)};
+}
+
+struct rulings {
+    const char *belongs[FIXTURE_TAGS];
+    const char *denied[FIXTURE_TAGS];
+};
+
+static inline struct said fixture_rule(struct fixture *fixture, struct item_saying saying,
+                                       struct rulings rulings)
+{
+    struct store_error error = {0};
+    struct store_text texts[2][FIXTURE_TAGS];
+    struct said said = {0};
+    struct item_names belongs = {texts[0], texts_of(rulings.belongs, texts[0])};
+    struct item_names denied = {texts[1], texts_of(rulings.denied, texts[1])};
+    struct store_view *view = fixture_write(fixture);
+    said.result = items_rule(view, &saying, belongs, denied, &fixture->buffer, &said.filed,
+                             &said.refusal, &error);
+    fixture_commit(view);
+    return said;
+}
+
+/* A check says the tags of `names`. */
+static inline struct said fixture_check(struct fixture *fixture, struct item_saying saying,
+                                        bool is_random, struct names names)
+{
+    struct store_error error = {0};
+    struct store_text texts[FIXTURE_TAGS];
+    struct item_checked checked = {0};
+    struct said said = {0};
+    struct item_names tags = {texts, texts_of(names.tags, texts)};
+    struct store_view *view = fixture_write(fixture);
+    said.result = items_check(view, &saying, tags, is_random, &fixture->buffer, &said.filed,
+                              &checked, &said.refusal, &error);
+    fixture_commit(view);
+    for (size_t i = 0; i < checked.missed_count; i++) {
+        fixture_add_name(said.missed, checked.missed[i].name);
+    }
+    for (size_t i = 0; i < checked.extra_count; i++) {
+        fixture_add_name(said.extra, checked.extra[i].name);
+    }
+    free(checked.missed);
+    free(checked.extra);
+    return said;
+}
+
+/* A second tagging with the tags of `names`; `filed_at` is its time. */
+static inline struct said fixture_tag_again(struct fixture *fixture, struct item_saying saying,
+                                            const char *filed_at, bool open_unknown,
+                                            struct names names)
+{
+    struct store_error error = {0};
+    struct store_text texts[FIXTURE_TAGS];
+    struct said said = {0};
+    struct item_names tags = {texts, texts_of(names.tags, texts)};
+    struct store_view *view = fixture_write(fixture);
+    said.result = items_tag_again(view, &saying, tags, text_of(filed_at), open_unknown,
+                                  &fixture->buffer, &said.filed, &said.refusal, &error);
+    fixture_commit(view);
+    return said;
 }
 
 #endif

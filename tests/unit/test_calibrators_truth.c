@@ -196,7 +196,7 @@ static void the_propensity_is_that_of_today(void **state)
             double tag_count = calibrators_class_share(c) * documents[i];
             propensities[c] = propensity_of_curve(&curve, tag_count, documents[i]);
         }
-        calibrators_fit(*state, propensities, &curves);
+        calibrators_fit(*state, propensities, NO_LEAST, &curves);
         double today = propensities[tag_class];
         assert_true(today > last + 0.1);
         assert_near(calibrators_chance(&curves, today, SCORE), 0.1 / today, 1e-5);
@@ -291,7 +291,7 @@ static double mean_of_small_cells(struct calibrators *calibrators, int pairs, do
             size_t tag_class = (size_t)(i / (CALIBRATORS_BINS - 1) % CALIBRATORS_CLASSES);
             add_by_chance(calibrators, score, tag_class, &world, &random);
         }
-        calibrators_fit(calibrators, propensities, &curves);
+        calibrators_fit(calibrators, propensities, NO_LEAST, &curves);
         for (size_t b = 1; b < CALIBRATORS_BINS; b++) {
             sum += curves.groups[1].chance[b];
         }

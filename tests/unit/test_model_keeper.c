@@ -8,6 +8,7 @@
 
 #include <cmocka.h>
 
+#include "daemon/learner/model_parts.h"
 #include "tests/unit/model_fixture.h"
 #include "tests/unit/store_fixture.h"
 
@@ -237,15 +238,15 @@ static void a_model_that_is_ahead_of_its_store_is_told(void **state)
 
 /* Stores a part that model_keeper itself would not have stored. */
 static void put(struct keeping *keeping, const struct model_store_chunk *chunk,
-                const struct model_store_bin *bin)
+                const struct model_store_figures *figures)
 {
     struct model_store_writing *writing = NULL;
     assert_int_equal(model_store_begin(keeping->store, &writing, &keeping->error), STORE_OK);
     if (chunk) {
         assert_int_equal(model_store_put_chunk(writing, chunk, &keeping->error), STORE_OK);
     }
-    if (bin) {
-        assert_int_equal(model_store_put_bin(writing, bin, &keeping->error), STORE_OK);
+    if (figures) {
+        assert_int_equal(model_store_put_figures(writing, figures, &keeping->error), STORE_OK);
     }
     assert_int_equal(model_store_commit(writing, &keeping->error), STORE_OK);
 }
@@ -274,7 +275,8 @@ static void a_bin_of_another_size_is_damage(void **state)
 {
     struct keeping *keeping = *state;
     static const double VALUES[2] = {1.0, 0.5};
-    const struct model_store_bin bin = {.number = 3, .count = 2, .values = VALUES};
+    const struct model_store_figures bin = {
+        .kind = MODEL_FIGURES_BIN, .number = 3, .count = 2, .values = VALUES};
     learn(keeping, 10, false);
     (void)keep(keeping, 10);
     put(keeping, NULL, &bin);

@@ -82,8 +82,7 @@ static void a_withdrawn_item_takes_its_counts_with_it(void **state)
     const struct learner *learner = *state;
     struct entry fog;
     entry_set(&fog, "fog bell", TAGS(0, 1));
-    fog.prompted[0] = 1;
-    fog.prompted_count = 1;
+    entry_add_tag(fog.examined, &fog.examined_count, 1);
     learner_file(learner, "fog lamp", TAGS(0));
     learner_change(learner, &fog, NULL);
     learner_change(learner, NULL, &fog);
@@ -155,25 +154,10 @@ static void when_every_item_is_withdrawn_no_word_is_left(void **state)
 /* --- evidence -----------------------------------------------------------------------------------
  */
 
-struct evidence {
-    double pairs;
-    double given;
-    double examined; /* of the given */
-};
-
-/* In pairs as of now. */
-static struct evidence evidence_of(const struct learner *learner)
+/* All of it, in pairs as of now. */
+static struct calibrators_cell evidence_of(const struct learner *learner)
 {
-    const struct memory *parts = parts_of(learner);
-    struct evidence sum = {0};
-    for (size_t b = 0; b < CALIBRATION_BINS; b++) {
-        sum.pairs += parts->bins[b].pairs / parts->totals.calibration_gain;
-        for (size_t c = 0; c < CALIBRATION_CLASSES; c++) {
-            sum.given += parts->bins[b].given[c] / parts->totals.calibration_gain;
-        }
-        sum.examined += parts->bins[b].given[CALIBRATION_EXAMINED] / parts->totals.calibration_gain;
-    }
-    return sum;
+    return memory_evidence(parts_of(learner), CALIBRATORS_BINS);
 }
 
 static void a_tag_used_for_the_first_time_is_no_evidence(void **state)
@@ -192,14 +176,18 @@ static void every_tag_known_before_is_a_pair(void **state)
     learner_renew(learner, &settings);
     learner_file(learner, "fog", TAGS(0, 1, 2));
     learner_file(learner, "bell", TAGS(1, 3)); /* pairs with 0, 1, 2; 1 is given */
-    struct evidence evidence = evidence_of(learner);
+    struct calibrators_cell evidence = evidence_of(learner);
     assert_near(evidence.pairs, 3.0, 1e-9);
     assert_near(evidence.given, 1.0, 1e-9);
-    assert_near(evidence.examined, 0.0, 0.0);
+    assert_near(evidence.known, 0.0, 0.0);
     learner_renew(learner, &settings);
     learner_file(learner, "fog", TAGS(0));
     learner_file_prompted(learner, "fog", TAGS(0));
-    assert_near(evidence_of(learner).examined, 1.0, 1e-9);
+    evidence = evidence_of(learner);
+    assert_near(evidence.known, 1.0, 1e-9);
+    assert_near(evidence.known_true, 1.0, 1e-9);
+    assert_near(evidence.pairs, 0.0, 0.0); /* what was examined is known, and no longer a pair */
+    assert_near(evidence.given, 0.0, 0.0);
 }
 
 /* A tag that only a withdrawn item had still has its weights: it could have been proposed. */
@@ -214,7 +202,7 @@ static void a_tag_that_comes_back_is_evidence(void **state)
     learner_change(learner, &fog, NULL);
     learner_file(learner, "fog bell", NO_TAGS);
     learner_change(learner, NULL, &fog);
-    struct evidence before = evidence_of(learner);
+    struct calibrators_cell before = evidence_of(learner);
     learner_file(learner, "fog", TAGS(0));
     assert_near(evidence_of(learner).pairs, before.pairs + 1.0, 1e-9);
     assert_near(evidence_of(learner).given, before.given + 1.0, 1e-9);
@@ -244,8 +232,7 @@ static void what_counts_is_the_score_before_learning(void **state)
     learner_renew(learner, &settings);
     learner_file(learner, "fog", TAGS(0));
     learner_file(learner, "fog", TAGS(0));
-    const struct memory *parts = parts_of(learner);
-    assert_true(parts->bins[20].pairs > 0.0);
+    assert_true(memory_evidence(parts_of(learner), 20).pairs > 0.0);
 }
 
 static void a_revision_is_no_new_evidence(void **state)

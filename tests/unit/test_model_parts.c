@@ -45,8 +45,8 @@ static void write_change(struct history *history, struct stream *stream, size_t 
     (void)stream_next(stream, &history->entries[at], truth);
     change->item = &history->entries[at];
     if (kind == 1 && history->entries[at].tag_count > 0) {
-        history->entries[at].prompted[history->entries[at].prompted_count++] =
-            history->entries[at].tags[0];
+        entry_add_tag(history->entries[at].examined, &history->entries[at].examined_count,
+                      history->entries[at].tags[0]);
     }
     history->live[which] = change->item;
 }
@@ -70,13 +70,6 @@ static struct model_settings settings_with_a_mean(void)
     settings.step = 0.0;
     settings.evidence_half_life_items = 20.0; /* the gain is taken back to 1 now and then */
     return settings;
-}
-
-static struct memory *new_memory(void)
-{
-    struct memory *memory = calloc(1, sizeof *memory);
-    assert_non_null(memory);
-    return memory;
 }
 
 /* Changes `from` to `to`, stored every so often and at the end. */
@@ -135,15 +128,11 @@ static void what_is_stored_is_not_put_out_again(void **state)
 {
     struct learner learner = {0};
     const struct model_settings settings = learner_settings();
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     learner_renew(&learner, &settings);
     go_on(*state, 0, 50, &learner, memory);
     memory_store(memory, learner.model);
-    assert_int_equal(memory->words_out, 0);
-    assert_int_equal(memory->forgotten_out, 0);
-    assert_int_equal(memory->chunks_out, 0);
-    assert_int_equal(memory->tags_out, 0);
-    assert_int_equal(memory->bins_out, 0);
+    assert_int_equal(memory_parts_out(memory), 0);
     free(memory);
     learner_free(&learner);
 }
@@ -152,7 +141,7 @@ static void what_was_not_said_to_be_stored_is_put_out_again(void **state)
 {
     struct learner learner = {0};
     const struct model_settings settings = learner_settings();
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     (void)state;
     learner_renew(&learner, &settings);
     learner_file(&learner, "fog", TAGS(0));
@@ -170,7 +159,7 @@ static void one_item_puts_out_what_it_touched_alone(void **state)
 {
     struct learner learner = {0};
     const struct model_settings settings = learner_settings();
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     (void)state;
     learner_renew(&learner, &settings);
     for (int i = 0; i < 10; i++) {
@@ -191,7 +180,7 @@ static void a_forgotten_word_is_put_out_once_by_its_name(void **state)
 {
     struct learner learner = {0};
     const struct model_settings settings = learner_settings();
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     struct entry fog;
     (void)state;
     learner_renew(&learner, &settings);
@@ -215,7 +204,7 @@ static void a_word_that_goes_and_comes_back_is_stored_as_new(void **state)
 {
     struct learner learner = {0};
     const struct model_settings settings = learner_settings();
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     struct entry fog;
     (void)state;
     learner_renew(&learner, &settings);
@@ -239,7 +228,7 @@ static void the_stored_counts_are_those_of_the_live_items(void **state)
     const struct history *history = *state;
     struct learner learner = {0};
     const struct model_settings settings = learner_settings();
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     learner_renew(&learner, &settings);
     go_on(history, 0, CHANGES, &learner, memory);
     assert_int_equal(memory->totals.documents, history->live_count);
@@ -258,8 +247,8 @@ static void the_stored_counts_are_those_of_the_live_items(void **state)
             memory->tags[entry->tags[k]].count--;
             memory->tags[entry->tags[k]].unprompted--;
         }
-        for (size_t k = 0; k < entry->prompted_count; k++) {
-            memory->tags[entry->prompted[k]].unprompted++;
+        for (size_t k = 0; k < entry->examined_count; k++) {
+            memory->tags[entry->examined[k]].unprompted++;
         }
     }
     for (size_t w = 0; w < MEMORY_WORDS; w++) {
@@ -273,20 +262,19 @@ static void the_stored_counts_are_those_of_the_live_items(void **state)
     learner_free(&learner);
 }
 
-static int refuse_bin(void *user, uint32_t number, const struct calibration_bin *bin)
+static int refuse_bin(void *user, const struct model_figures *figures)
 {
     (void)user;
-    (void)bin;
-    return number == 3 ? -ENOSPC : 0;
+    return figures->kind == MODEL_FIGURES_BIN && figures->number == 3 ? -ENOSPC : 0;
 }
 
 static void whoever_stores_may_refuse_a_part(void **state)
 {
     struct learner learner = {0};
     const struct model_settings settings = learner_settings();
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     struct model_sink sink = memory_sink(memory);
-    sink.bin = refuse_bin;
+    sink.figures = refuse_bin;
     (void)state;
     learner_renew(&learner, &settings);
     learner_file(&learner, "fog", TAGS(0));
@@ -306,8 +294,8 @@ static void the_same_items_give_the_same_model_whatever_the_key(void **state)
     const struct model_settings settings = settings_with_a_mean();
     struct learner one = {0};
     struct learner other = {0};
-    struct memory *memory = new_memory();
-    struct memory *other_memory = new_memory();
+    struct memory *memory = memory_new();
+    struct memory *other_memory = memory_new();
     learner_renew(&one, &settings);
     assert_int_equal(model_new(&settings, &other_key, &other.model), 0);
     assert_int_equal(model_scratch_new(&other.scratch), 0);
@@ -327,8 +315,8 @@ static void a_model_put_back_goes_on_to_the_same_numbers(void **state)
     const struct model_settings settings = settings_with_a_mean();
     struct learner whole = {0};
     struct learner stopped = {0};
-    struct memory *memory = new_memory();
-    struct memory *stopped_memory = new_memory();
+    struct memory *memory = memory_new();
+    struct memory *stopped_memory = memory_new();
     learner_renew(&whole, &settings);
     learner_renew(&stopped, &settings);
     go_on(*state, 0, CHANGES, &whole, memory);
@@ -368,7 +356,7 @@ static void tags_that_no_item_has_are_as_unused_after_the_model_was_put_back(voi
     const struct model_settings settings = learner_settings();
     struct learner whole = {0};
     struct learner other = {0};
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     struct entry entry;
     (void)state;
     learner_renew(&whole, &settings);
@@ -396,7 +384,7 @@ static void a_model_just_put_back_has_nothing_to_store(void **state)
 {
     const struct model_settings settings = learner_settings();
     struct learner learner = {0};
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     learner_renew(&learner, &settings);
     go_on(*state, 0, 50, &learner, memory);
     struct model_size size = learner_size(&learner);
@@ -407,8 +395,7 @@ static void a_model_just_put_back_has_nothing_to_store(void **state)
     assert_int_equal(learner_size(&learner).tags, size.tags);
     assert_int_equal(learner_size(&learner).postings, size.postings);
     memory_store(memory, learner.model);
-    assert_int_equal(memory->words_out + memory->chunks_out + memory->tags_out + memory->bins_out,
-                     0);
+    assert_int_equal(memory_parts_out(memory), 0);
     free(memory);
     learner_free(&learner);
 }
@@ -419,7 +406,7 @@ static void a_question_before_the_model_was_put_back_spoils_no_answer(void **sta
     const struct model_settings settings = learner_settings();
     struct learner whole = {0};
     struct learner asked = {0};
-    struct memory *memory = new_memory();
+    struct memory *memory = memory_new();
     learner_renew(&whole, &settings);
     learner_renew(&asked, &settings);
     go_on(*state, 0, 300, &whole, memory);
@@ -452,7 +439,11 @@ static void a_word_is_not_put_back_twice(void **state)
 static void a_chunk_out_of_order_and_a_bin_too_many_are_refused(void **state)
 {
     const struct model_settings settings = learner_settings();
-    const struct calibration_bin bin = {0};
+    const struct calibrators_bin bin = {0};
+    const struct model_figures figures = {.kind = MODEL_FIGURES_BIN,
+                                          .number = CALIBRATORS_BINS,
+                                          .count = sizeof bin / sizeof(double),
+                                          .values = &bin.cells[0].pairs};
     const float number = 0.5F;
     const uint32_t tag = 0;
     const struct weights_chunk chunk = {
@@ -463,7 +454,7 @@ static void a_chunk_out_of_order_and_a_bin_too_many_are_refused(void **state)
     learner_renew(&learner, &settings);
     assert_int_equal(model_restore_word(learner.model, &fog), 0);
     assert_int_equal(model_restore_chunk(learner.model, &chunk), -EINVAL);
-    assert_int_equal(model_restore_bin(learner.model, CALIBRATION_BINS, &bin), -EINVAL);
+    assert_int_equal(model_restore_figures(learner.model, &figures), -EINVAL);
     learner_free(&learner);
 }
 

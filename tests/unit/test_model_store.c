@@ -1,4 +1,5 @@
-/* The learner's model as stored: words, chunks of postings, tags, bins and the head over them. */
+/* The learner's model as stored: words, chunks of postings, tags, lists of figures, the worklist
+ * and the head over them. */
 #include "storage/model_store.h"
 
 #include <setjmp.h>
@@ -77,19 +78,40 @@ static void put_word(struct stored *stored, struct model_store_writing *writing,
 }
 
 /* A chunk of two postings, tags 2 and 7. */
-static void put_chunk(struct stored *stored, struct model_store_writing *writing, uint32_t word,
-                      uint32_t number)
+static void put_chunk_of(struct stored *stored, struct model_store_writing *writing, uint32_t word,
+                         uint32_t number, bool is_shadow)
 {
     static const uint32_t tags[] = {2, 7};
     static const float values[] = {0.5F, -0.25F};
     static const float accumulators[] = {1.0F, 2.0F};
-    struct model_store_chunk chunk = {.word = word,
+    struct model_store_chunk chunk = {.is_shadow = is_shadow,
+                                      .word = word,
                                       .number = number,
                                       .count = 2,
                                       .tags = tags,
                                       .values = values,
                                       .accumulators = accumulators};
     assert_int_equal(model_store_put_chunk(writing, &chunk, &stored->error), STORE_OK);
+}
+
+static void put_chunk(struct stored *stored, struct model_store_writing *writing, uint32_t word,
+                      uint32_t number)
+{
+    put_chunk_of(stored, writing, word, number, false);
+}
+
+/* An entry of two gaps, tags 2 and 7. */
+static void put_entry(struct stored *stored, struct model_store_writing *writing, uint64_t number)
+{
+    static const uint32_t tags[] = {2, 7};
+    static const float values[] = {0.5F, -0.25F, 0.125F, -0.5F, 0.0F, -1.0F};
+    struct model_store_entry entry = {.number = number,
+                                      .scored = 1ULL << 40U,
+                                      .counted = 9,
+                                      .tag_count = 2,
+                                      .tags = tags,
+                                      .values = values};
+    assert_int_equal(model_store_put_entry(writing, &entry, &stored->error), STORE_OK);
 }
 
 /* --- loading into words --- */
@@ -116,7 +138,8 @@ static int see_word(void *user, const struct model_store_word *word)
 
 static int see_chunk(void *user, const struct model_store_chunk *chunk)
 {
-    int result = say(user, "chunk %u/%u", chunk->word, chunk->number);
+    int result =
+        say(user, "%s %u/%u", chunk->is_shadow ? "shadow" : "chunk", chunk->word, chunk->number);
     for (uint32_t i = 0; i < chunk->count && result == STORE_OK; i++) {
         result = say(user, " %u:%g(%g)", chunk->tags[i], (double)chunk->values[i],
                      (double)chunk->accumulators[i]);
@@ -126,23 +149,41 @@ static int see_chunk(void *user, const struct model_store_chunk *chunk)
 
 static int see_tag(void *user, const struct model_store_tag *tag)
 {
-    return say(user, "tag %u x%u/%u %g(%g); ", tag->number, tag->count, tag->unprompted,
-               (double)tag->bias, (double)tag->bias_accumulator);
+    return say(user, "tag %u x%u/%u %u:%u %g(%g) %g(%g); ", tag->number, tag->count,
+               tag->unprompted, tag->given_halves, tag->trial_halves, (double)tag->bias,
+               (double)tag->bias_accumulator, (double)tag->shadow_bias,
+               (double)tag->shadow_bias_accumulator);
 }
 
-static int see_bin(void *user, const struct model_store_bin *bin)
+static int see_figures(void *user, const struct model_store_figures *figures)
 {
-    int result = say(user, "bin %u", bin->number);
-    for (uint32_t i = 0; i < bin->count && result == STORE_OK; i++) {
-        result = say(user, " %g", bin->values[i]);
+    int result = say(user, "figures %u/%u", figures->kind, figures->number);
+    for (uint32_t i = 0; i < figures->count && result == STORE_OK; i++) {
+        result = say(user, " %g", figures->values[i]);
+    }
+    return result == STORE_OK ? say(user, "; ") : result;
+}
+
+static int see_entry(void *user, const struct model_store_entry *entry)
+{
+    int result = say(user, "entry %llu @%llu/%llu", (unsigned long long)entry->number,
+                     (unsigned long long)entry->scored, (unsigned long long)entry->counted);
+    for (uint32_t i = 0; i < entry->tag_count && result == STORE_OK; i++) {
+        const float *values = entry->values + (size_t)i * MODEL_STORE_ENTRY_VALUES;
+        result = say(user, " %u:%g,%g,%g", entry->tags[i], (double)values[0], (double)values[1],
+                     (double)values[2]);
     }
     return result == STORE_OK ? say(user, "; ") : result;
 }
 
 static int load(struct stored *stored)
 {
-    struct model_store_sink sink = {
-        .user = stored, .word = see_word, .chunk = see_chunk, .tag = see_tag, .bin = see_bin};
+    struct model_store_sink sink = {.user = stored,
+                                    .word = see_word,
+                                    .chunk = see_chunk,
+                                    .tag = see_tag,
+                                    .figures = see_figures,
+                                    .entry = see_entry};
     stored->seen[0] = '\0';
     return model_store_load(stored->store, &sink, &stored->error);
 }
@@ -159,18 +200,32 @@ static void assert_loads(struct stored *stored, const char *expected)
 static void put_some_of_each(struct stored *stored)
 {
     const double values[] = {1.5, -1e300};
-    struct model_store_tag tag = {
-        .number = 7, .count = 40, .unprompted = 31, .bias = -0.5F, .bias_accumulator = 3.0F};
-    struct model_store_bin bin = {.number = 127, .count = 2, .values = values};
+    struct model_store_tag tag = {.number = 7,
+                                  .count = 40,
+                                  .unprompted = 31,
+                                  .trial_halves = 5,
+                                  .given_halves = 3,
+                                  .bias = -0.5F,
+                                  .bias_accumulator = 3.0F,
+                                  .shadow_bias = 0.25F,
+                                  .shadow_bias_accumulator = 2.0F};
+    struct model_store_figures figures = {.kind = 1, .number = 127, .count = 2, .values = values};
     struct model_store_writing *writing = begin(stored);
-    assert_int_equal(model_store_put_bin(writing, &bin, &stored->error), STORE_OK);
+    put_entry(stored, writing, 12);
+    assert_int_equal(model_store_put_figures(writing, &figures, &stored->error), STORE_OK);
     assert_int_equal(model_store_put_tag(writing, &tag, &stored->error), STORE_OK);
+    put_chunk_of(stored, writing, 5, 0, true);
     put_chunk(stored, writing, 5, 1);
     put_chunk(stored, writing, 5, 0);
     put_word(stored, writing, "gale", 5, 9);
     put_word(stored, writing, "fog", 300, 2);
     commit(stored, writing);
 }
+
+/* What is there beside words and chunks. */
+#define REST                                                                                       \
+    "tag 7 x40/31 3:5 -0.5(3) 0.25(2); figures 1/127 1.5 -1e+300; "                                \
+    "entry 12 @1099511627776/9 2:0.5,-0.25,0.125 7:-0.5,0,-1; "
 
 /* --- tests --- */
 
@@ -181,7 +236,7 @@ static void what_was_put_is_loaded_words_first_and_chunks_in_order(void **state)
     reopen(stored);
     assert_loads(stored, "word fog 300 x2; word gale 5 x9; "
                          "chunk 5/0 2:0.5(1) 7:-0.25(2); chunk 5/1 2:0.5(1) 7:-0.25(2); "
-                         "tag 7 x40/31 -0.5(3); bin 127 1.5 -1e+300; ");
+                         "shadow 5/0 2:0.5(1) 7:-0.25(2); " REST);
 }
 
 static void a_fresh_model_has_neither_head_nor_parts(void **state)
@@ -209,7 +264,11 @@ static void the_head_is_read_as_it_was_put(void **state)
                                     .documents = 30300,
                                     .factor_count = 12,
                                     .factor_sum = 0.1,
-                                    .calibration_gain = 1e12};
+                                    .latest = 1ULL << 50U,
+                                    .evidence_items = 7,
+                                    .curves_items = 6,
+                                    .fit_halves = 5,
+                                    .evidence_gain = 1e12};
     struct model_store_head again = {0};
     put_head(stored, &head);
     reopen(stored);
@@ -220,7 +279,11 @@ static void the_head_is_read_as_it_was_put(void **state)
     assert_int_equal(again.documents, 30300);
     assert_int_equal(again.factor_count, 12);
     assert_true(again.factor_sum == 0.1);
-    assert_true(again.calibration_gain == 1e12);
+    assert_true(again.latest == 1ULL << 50U);
+    assert_int_equal(again.evidence_items, 7);
+    assert_int_equal(again.curves_items, 6);
+    assert_int_equal(again.fit_halves, 5);
+    assert_true(again.evidence_gain == 1e12);
 }
 
 static void the_longest_settings_are_kept_whole(void **state)
@@ -254,8 +317,7 @@ static void a_forgotten_word_takes_its_chunks_with_it(void **state)
     put_chunk(stored, writing, 300, 0);
     assert_int_equal(model_store_forget_word(writing, &gale, &stored->error), STORE_OK);
     commit(stored, writing);
-    assert_loads(stored, "word fog 300 x2; chunk 300/0 2:0.5(1) 7:-0.25(2); "
-                         "tag 7 x40/31 -0.5(3); bin 127 1.5 -1e+300; ");
+    assert_loads(stored, "word fog 300 x2; chunk 300/0 2:0.5(1) 7:-0.25(2); " REST);
 }
 
 static void a_word_that_was_never_stored_is_forgotten_without_a_fuss(void **state)
@@ -266,6 +328,20 @@ static void a_word_that_was_never_stored_is_forgotten_without_a_fuss(void **stat
     assert_int_equal(model_store_forget_word(writing, &word, &stored->error), STORE_OK);
     commit(stored, writing);
     assert_loads(stored, "");
+}
+
+static void an_entry_that_was_taken_out_is_gone(void **state)
+{
+    struct stored *stored = *state;
+    struct model_store_writing *writing = begin(stored);
+    put_entry(stored, writing, 12);
+    put_entry(stored, writing, 13);
+    commit(stored, writing);
+    writing = begin(stored);
+    assert_int_equal(model_store_remove_entry(writing, 12, &stored->error), STORE_OK);
+    assert_int_equal(model_store_remove_entry(writing, 99, &stored->error), STORE_OK);
+    commit(stored, writing);
+    assert_loads(stored, "entry 13 @1099511627776/9 2:0.5,-0.25,0.125 7:-0.5,0,-1; ");
 }
 
 static void clearing_forgets_everything(void **state)
@@ -330,7 +406,21 @@ static void a_model_of_a_newer_version_is_refused_with_a_sentence(void **state)
     write_entry(stored, "meta", "model", newer, sizeof newer);
     assert_int_equal(model_store_read_head(stored->store, &head, &stored->error), STORE_NEWER);
     assert_string_equal(stored->error.text, "the model was written by a newer version of undertag "
-                                            "(format 2, this version reads up to 1)");
+                                            "(format 3, this version reads up to 2)");
+}
+
+/* Nobody's: whoever asks whose it is finds neither his store nor his settings. */
+static void a_model_of_an_older_version_is_nobody_s(void **state)
+{
+    struct stored *stored = *state;
+    static const unsigned char NOBODY[STORE_UUID_BYTES];
+    const unsigned char older[] = {MODEL_STORE_FORMAT - 1, 0, 0, 0, 'o', 'u', 'r', 's'};
+    struct model_store_head head = {.store_uuid = "fifteen letters", .learned = 77};
+    write_entry(stored, "meta", "model", older, sizeof older);
+    assert_int_equal(model_store_read_head(stored->store, &head, &stored->error), STORE_OK);
+    assert_memory_equal(head.store_uuid, NOBODY, sizeof NOBODY);
+    assert_string_equal(head.settings, "");
+    assert_int_equal(head.learned, 0);
 }
 
 static void a_head_that_is_cut_short_is_damage(void **state)
@@ -385,10 +475,12 @@ int main(void)
         TEST(a_part_put_again_takes_the_place_of_the_first),
         TEST(a_forgotten_word_takes_its_chunks_with_it),
         TEST(a_word_that_was_never_stored_is_forgotten_without_a_fuss),
+        TEST(an_entry_that_was_taken_out_is_gone),
         TEST(clearing_forgets_everything),
         TEST(what_is_aborted_leaves_nothing),
         TEST(loading_stops_when_it_is_told_to),
         TEST(a_model_of_a_newer_version_is_refused_with_a_sentence),
+        TEST(a_model_of_an_older_version_is_nobody_s),
         TEST(a_head_that_is_cut_short_is_damage),
         TEST(a_part_whose_checksum_is_wrong_is_damage),
         TEST(a_forgotten_word_is_scrubbed_from_the_file),

@@ -1,6 +1,7 @@
 /* Tags that have just been opened, and tags that no item has any more. */
 #include "daemon/learner/model.h"
 
+#include "daemon/learner/calibrators.h"
 #include "tests/unit/model_fixture.h"
 
 /* --- tags just opened ---------------------------------------------------------------------------
@@ -54,7 +55,7 @@ static void assert_not_proposed(const struct learner *learner, const struct entr
     for (uint32_t tag = OPENED; tag < OPENED + 2; tag++) {
         const struct model_gap *gap = find_gap(&answer, tag);
         assert_non_null(gap);
-        assert_true(gap->score <= CALIBRATION_FLOOR_SCORE);
+        assert_true(gap->score <= CALIBRATORS_FLOOR_SCORE);
         *most = fmax(*most, gap->chance);
     }
 }
@@ -96,17 +97,17 @@ static const char *lost_words(int i)
  * one. */
 static void lose_a_tag(const struct learner *learner, bool by_revision)
 {
-    struct entry old;
+    static struct entry old[12];
     struct entry revised;
     learner_file(learner, "lamp bell fog", TAGS(0));
     for (int i = 0; i < 12; i++) {
-        learner_file(learner, lost_words(i), TAGS(1));
+        entry_set(&old[i], lost_words(i), TAGS(1));
+        learner_change(learner, &old[i], NULL);
     }
-    assert_true(learner_score(learner, "lamp", 1) > CALIBRATION_FLOOR_SCORE); /* by its bias */
+    assert_true(learner_score(learner, "lamp", 1) > CALIBRATORS_FLOOR_SCORE); /* by its bias */
     for (int i = 0; i < 12; i++) {
-        entry_set(&old, lost_words(i), TAGS(1));
         entry_set(&revised, lost_words(i), NO_TAGS);
-        learner_change(learner, by_revision ? &revised : NULL, &old);
+        learner_change(learner, by_revision ? &revised : NULL, &old[i]);
     }
 }
 

@@ -85,7 +85,12 @@ static inline void fixture_learn(const struct fixture *fixture, const struct wei
                                  size_t given_count)
 {
     fixture_score(fixture, x, count);
-    assert_int_equal(weights_learn(fixture->weights, x, count, given, given_count, FIXTURE_STEP,
+    assert_int_equal(weights_learn(fixture->weights,
+                                   &(const struct weights_example){.x = x,
+                                                                   .count = count,
+                                                                   .given = given,
+                                                                   .given_count = given_count,
+                                                                   .step = FIXTURE_STEP},
                                    fixture->scratch),
                      0);
 }

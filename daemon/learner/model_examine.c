@@ -1,0 +1,246 @@
+/*
+ * What people say of an item after it was filed: a ruling or a check makes pairs known that were
+ * not. They are evidence for the calibrators (where a gap was examined), say whether the chances
+ * shown hold, and are learned as pairs of their own; the item's other pairs were learned when it
+ * was filed.
+ */
+#include <errno.h>
+#include <math.h>
+
+#include "daemon/grow.h"
+#include "daemon/learner/model.h"
+#include "daemon/learner/model_private.h"
+
+/* The tags of one list that are not in another; into scratch->changed behind `at`. */
+static int add_new(const uint32_t *tags, size_t count, const uint32_t *before, size_t before_count,
+                   struct model_scratch *scratch, size_t *at)
+{
+    if (GROW(&scratch->changed, &scratch->changed_capacity, *at + count) < 0) {
+        return -ENOMEM;
+    }
+    for (size_t i = 0; i < count; i++) {
+        if (!model_holds(before, before_count, tags[i])) {
+            scratch->changed[(*at)++] = tags[i];
+        }
+    }
+    return 0;
+}
+
+/* Tags of which something has become known: found to belong, then found not to. */
+struct findings {
+    const uint32_t *found;
+    size_t found_count;
+    const uint32_t *denied;
+    size_t denied_count;
+};
+
+static int find_changes(const struct model_item *item, const struct model_item *replaced,
+                        struct model_scratch *scratch, struct findings *ret_findings)
+{
+    size_t count = 0;
+    if (add_new(item->tags, item->tag_count, replaced->tags, replaced->tag_count, scratch, &count) <
+        0) {
+        return -ENOMEM;
+    }
+    size_t found_count = count;
+    if (add_new(item->known_not, item->known_not_count, replaced->known_not,
+                replaced->known_not_count, scratch, &count) < 0) {
+        return -ENOMEM;
+    }
+    /* What a check has taken off. */
+    for (size_t i = 0; i < replaced->tag_count; i++) {
+        uint32_t tag = replaced->tags[i];
+        if (!model_holds(item->tags, item->tag_count, tag) &&
+            !model_holds(item->known_not, item->known_not_count, tag) &&
+            add_new(&tag, 1, NULL, 0, scratch, &count) < 0) {
+            return -ENOMEM;
+        }
+    }
+    *ret_findings = (struct findings){.found = scratch->changed,
+                                      .found_count = found_count,
+                                      .denied = scratch->changed + found_count,
+                                      .denied_count = count - found_count};
+    return 0;
+}
+
+/* --- gaps that were examined --------------------------------------------------------------------
+ */
+
+/* What is known of how a pair was counted when the item came in. */
+struct counted_pair {
+    double score;
+    size_t class;
+    double weight; /* of the pair's evidence by now */
+};
+
+static struct counted_pair recall(const struct model *model, const struct worklist_entry *entry,
+                                  const struct model_scratch *scratch, uint32_t tag)
+{
+    struct counted_pair pair = {
+        .score = (double)model_score(model, scratch, tag) - (double)scratch->own[tag],
+        .class = calibrators_class(model->tags[tag].unprompted, model->documents),
+        .weight = 1.0};
+    if (entry) {
+        pair.weight = calibrators_weight((double)(model->evidence_items - entry->counted),
+                                         model->settings.evidence_half_life_items);
+    }
+    for (uint32_t i = 0; entry && i < entry->gap_count; i++) {
+        if (entry->gaps[i].tag == tag) {
+            pair.score = (double)entry->gaps[i].counted;
+        }
+    }
+    return pair;
+}
+
+/* A gap: not given, and nobody had examined it. */
+static bool was_gap(const struct model_item *replaced, uint32_t tag)
+{
+    return tag >= replaced->checked_below &&
+           !model_holds(replaced->tags, replaced->tag_count, tag) &&
+           !model_holds(replaced->known_not, replaced->known_not_count, tag);
+}
+
+/* `is_ruling`: somebody ruled on what was proposed; a check finds what it finds. */
+static void count_finding(struct model *model, const struct model_item *replaced,
+                          const struct worklist_entry *entry, const struct model_scratch *scratch,
+                          uint32_t tag, bool belongs, bool is_ruling)
+{
+    if (tag >= model->tag_count) {
+        return; /* opened by this very change */
+    }
+    struct counted_pair pair = recall(model, entry, scratch, tag);
+    if (was_gap(replaced, tag)) {
+        double score = (double)model_score(model, scratch, tag) - (double)scratch->own[tag];
+        calibrators_add_ruled(&model->calibrators, pair.score, pair.class, pair.weight, belongs);
+        if (is_ruling) {
+            standing_ruled(model->standing, model_missing_chance(model, tag, score), belongs);
+        }
+    } else if (!belongs && model_holds(replaced->tags, replaced->tag_count, tag) &&
+               !model_holds(replaced->examined, replaced->examined_count, tag)) {
+        calibrators_take_off(&model->calibrators, pair.score, pair.class, pair.weight);
+    }
+}
+
+/* --- a check: all other gaps are known not to belong --------------------------------------------
+ */
+
+static void count_rest_of_check(struct model *model, const struct model_item *replaced,
+                                const struct worklist_entry *entry,
+                                const struct model_scratch *scratch)
+{
+    double rest[CALIBRATORS_CLASSES] = {0};
+    double weight = 1.0;
+    if (entry) {
+        weight = calibrators_weight((double)(model->evidence_items - entry->counted),
+                                    model->settings.evidence_half_life_items);
+    }
+    for (uint32_t tag = 0; tag < model->tag_count; tag++) {
+        if (model_is_unused(model, tag) || scratch->barred[tag] != MARK_NONE ||
+            !was_gap(replaced, tag)) {
+            continue;
+        }
+        struct counted_pair pair = {
+            .score = -1.0,
+            .class = calibrators_class(model->tags[tag].unprompted, model->documents)};
+        if (weights_is_touched(scratch->weights, tag)) {
+            pair = recall(model, entry, scratch, tag);
+        }
+        if (pair.score > CALIBRATORS_FLOOR_SCORE) {
+            calibrators_add_ruled(&model->calibrators, pair.score, pair.class, weight, false);
+        } else {
+            rest[pair.class] += 1.0;
+        }
+    }
+    for (size_t c = 0; c < CALIBRATORS_CLASSES; c++) {
+        calibrators_rule_rest(&model->calibrators, c, weight, rest[c]);
+    }
+}
+
+/* --- the whole ----------------------------------------------------------------------------------
+ */
+
+static void gather(struct model *model, const struct model_item *item,
+                   const struct model_item *replaced, const struct findings *findings,
+                   const struct worklist_entry *entry, const struct model_scratch *scratch)
+{
+    bool is_check = item->checked_below > replaced->checked_below;
+    for (size_t i = 0; i < findings->found_count; i++) {
+        count_finding(model, replaced, entry, scratch, findings->found[i], true, !is_check);
+    }
+    for (size_t i = 0; i < findings->denied_count; i++) {
+        count_finding(model, replaced, entry, scratch, findings->denied[i], false, !is_check);
+    }
+    if (is_check) {
+        count_rest_of_check(model, replaced, entry, scratch);
+    }
+}
+
+static int learn_pairs(struct model *model, const struct findings *findings,
+                       struct model_scratch *scratch)
+{
+    if (GROW(&scratch->given, &scratch->given_capacity, findings->found_count) < 0) {
+        return -ENOMEM;
+    }
+    for (size_t i = 0; i < findings->found_count; i++) {
+        uint32_t tag = findings->found[i];
+        scratch->given[i] = (struct weights_given){.tag = tag,
+                                                   .tag_count = model->tags[tag].count,
+                                                   .factor = model_given_factor(model, tag, true)};
+    }
+    const struct weights_example example = {.x = scratch->x,
+                                            .count = scratch->x_count,
+                                            .given = scratch->given,
+                                            .given_count = findings->found_count,
+                                            .pairs_alone = true,
+                                            .denied = findings->denied,
+                                            .denied_count = findings->denied_count,
+                                            .step = model_step(model)};
+    return weights_learn(model->weights, &example, scratch->weights);
+}
+
+/* The entry as it is from now on: without what has become known, under the item's new number. */
+static int move_entry(struct model *model, const struct model_item *item,
+                      const struct worklist_entry *entry, const struct model_scratch *scratch)
+{
+    if (!entry) {
+        return 0;
+    }
+    struct worklist_entry moved = *entry;
+    uint64_t number = entry->number;
+    moved.number = item->number;
+    moved.gap_count = 0;
+    for (uint32_t i = 0; i < entry->gap_count; i++) {
+        uint32_t tag = entry->gaps[i].tag;
+        if (scratch->barred[tag] == MARK_NONE && tag >= item->checked_below) {
+            moved.gaps[moved.gap_count++] = entry->gaps[i];
+        }
+    }
+    if (worklist_remove(model->worklist, number) < 0) {
+        return -ENOMEM;
+    }
+    return worklist_put(model->worklist, &moved);
+}
+
+int model_examine(struct model *model, const struct model_item *item,
+                  const struct model_item *replaced, struct model_scratch *scratch)
+{
+    struct findings findings;
+    const struct worklist_entry *entry = worklist_find(model->worklist, replaced->number);
+    if (find_changes(item, replaced, scratch, &findings) < 0 ||
+        model_score_words(model, item->features, item->feature_count, scratch) < 0 ||
+        model_take_own(model, entry, scratch) < 0 || model_mark_item(model, item, scratch) < 0) {
+        return -ENOMEM;
+    }
+    gather(model, item, replaced, &findings, entry, scratch);
+    int result = learn_pairs(model, &findings, scratch);
+    model_clear_own(entry, scratch);
+    if (result == 0) {
+        result = move_entry(model, item, entry, scratch);
+    }
+    model_unmark_item(item, scratch);
+    if (findings.found_count + findings.denied_count > 0 ||
+        item->checked_below != replaced->checked_below) {
+        model_refit_curves(model, true);
+    }
+    return result;
+}

@@ -1,0 +1,222 @@
+/*
+ * Entries of the worklist: what an item may lack, by scores from which the item's own share is
+ * taken out.
+ */
+#include <errno.h>
+#include <stdlib.h>
+
+#include "daemon/grow.h"
+#include "daemon/learner/model.h"
+#include "daemon/learner/model_private.h"
+
+/* A gap that is less likely than this is not worth its place. */
+static const double LEAST_CHANCE = 0.005;
+
+/* Scores are stale once the model has grown by one part in so many. */
+enum {
+    STALE_SHARE = 8
+};
+
+/* --- own shares ---------------------------------------------------------------------------------
+ */
+
+int model_take_own(const struct model *model, const struct worklist_entry *entry,
+                   struct model_scratch *scratch)
+{
+    if (GROW(&scratch->own, &scratch->own_capacity, model->tag_count) < 0) {
+        return -ENOMEM;
+    }
+    for (uint32_t i = 0; entry && i < entry->gap_count; i++) {
+        scratch->own[entry->gaps[i].tag] = entry->gaps[i].own;
+    }
+    return 0;
+}
+
+void model_clear_own(const struct worklist_entry *entry, struct model_scratch *scratch)
+{
+    for (uint32_t i = 0; entry && i < entry->gap_count; i++) {
+        scratch->own[entry->gaps[i].tag] = 0.0F;
+    }
+}
+
+/* --- making an entry ----------------------------------------------------------------------------
+ */
+
+/* Puts a gap among the entry's best, by falling chance. */
+static void insert_gap(struct worklist_entry *entry, double chances[WORKLIST_GAPS],
+                       const struct worklist_gap *gap, double chance)
+{
+    size_t at = entry->gap_count;
+    if (at == WORKLIST_GAPS) {
+        if (chances[at - 1] >= chance) {
+            return;
+        }
+        at--;
+    } else {
+        entry->gap_count++;
+    }
+    while (at > 0 && chances[at - 1] < chance) {
+        entry->gaps[at] = entry->gaps[at - 1];
+        chances[at] = chances[at - 1];
+        at--;
+    }
+    entry->gaps[at] = *gap;
+    chances[at] = chance;
+}
+
+void model_make_entry(const struct model *model, const struct model_item *item,
+                      const struct model_scratch *scratch, struct worklist_entry *ret_entry)
+{
+    double chances[WORKLIST_GAPS];
+    *ret_entry = (struct worklist_entry){
+        .number = item->number, .scored = model->latest, .counted = model->evidence_items};
+    for (enum standing_band band = STANDING_HEAD; band < STANDING_BANDS; band++) {
+        const struct candidates *best = &scratch->best[band];
+        for (size_t i = 0; i < best->count; i++) {
+            uint32_t tag = best->tags[i];
+            if (scratch->barred[tag] != MARK_NONE || tag < item->checked_below) {
+                continue;
+            }
+            double chance = model_missing_chance(model, tag, (double)best->scores[i]);
+            if (chance >= LEAST_CHANCE) {
+                const struct worklist_gap gap = {.tag = tag,
+                                                 .score = best->scores[i],
+                                                 .own = scratch->own[tag],
+                                                 .counted = best->scores[i]};
+                insert_gap(ret_entry, chances, &gap, chance);
+            }
+        }
+    }
+}
+
+/* --- scoring again ------------------------------------------------------------------------------
+ */
+
+/* Pairs that were counted as evidence keep the score that they were counted with. */
+static void keep_counted(const struct worklist_entry *from, struct worklist_entry *to)
+{
+    to->counted = from->counted;
+    for (uint32_t i = 0; i < to->gap_count; i++) {
+        for (uint32_t j = 0; j < from->gap_count; j++) {
+            if (from->gaps[j].tag == to->gaps[i].tag) {
+                to->gaps[i].counted = from->gaps[j].counted;
+            }
+        }
+    }
+}
+
+int model_rescore(const struct model *model, const struct model_item *item,
+                  struct model_scratch *scratch, struct worklist_entry *ret_entry)
+{
+    const struct worklist_entry *entry = worklist_find(model->worklist, item->number);
+    if (model_score_words(model, item->features, item->feature_count, scratch) < 0 ||
+        model_take_own(model, entry, scratch) < 0 || model_mark_item(model, item, scratch) < 0) {
+        return -ENOMEM;
+    }
+    model_find_best(model, scratch);
+    model_make_entry(model, item, scratch, ret_entry);
+    if (entry) {
+        keep_counted(entry, ret_entry);
+    }
+    model_unmark_item(item, scratch);
+    model_clear_own(entry, scratch);
+    return 0;
+}
+
+int model_relist(struct model *model, const struct worklist_entry *entry)
+{
+    return worklist_put(model->worklist, entry);
+}
+
+int model_delist(struct model *model, uint64_t number)
+{
+    return worklist_remove(model->worklist, number);
+}
+
+/* --- reading ------------------------------------------------------------------------------------
+ */
+
+const struct worklist *model_worklist(const struct model *model)
+{
+    return model->worklist;
+}
+
+uint64_t model_stale_below(const struct model *model)
+{
+    return model->latest - model->latest / STALE_SHARE;
+}
+
+uint64_t model_next_stale(struct model *model)
+{
+    const struct worklist_entry *entry =
+        worklist_next_stale(model->worklist, model_stale_below(model));
+    return entry ? entry->number : 0;
+}
+
+double model_gap_chance(const struct model *model, const struct worklist_gap *gap)
+{
+    return model_is_unused(model, gap->tag)
+               ? 0.0
+               : model_missing_chance(model, gap->tag, (double)gap->score);
+}
+
+/* --- ranking ------------------------------------------------------------------------------------
+ */
+
+static int compare_ranked(const void *left, const void *right)
+{
+    const struct model_ranked *a = left;
+    const struct model_ranked *b = right;
+    if (a->expected != b->expected) {
+        return a->expected > b->expected ? -1 : 1;
+    }
+    return (a->number > b->number) - (a->number < b->number);
+}
+
+/* What an entry promises. `propensities` are by tag, worked out once for all entries. */
+static double promise_of(const struct model *model, const struct worklist_entry *entry,
+                         uint32_t tag, double floor, const double *propensities)
+{
+    double expected = 0.0;
+    for (uint32_t i = 0; i < entry->gap_count; i++) {
+        const struct worklist_gap *gap = &entry->gaps[i];
+        if ((tag != MODEL_ANY_TAG && gap->tag != tag) || model_is_unused(model, gap->tag)) {
+            continue;
+        }
+        double propensity = propensities[gap->tag];
+        double chance = model_missing_of_belongs(
+            model, gap->tag, propensity,
+            calibrators_chance(&model->curves, propensity, (double)gap->score));
+        expected += chance >= floor ? chance : 0.0;
+    }
+    return expected;
+}
+
+int model_rank_worklist(const struct model *model, uint32_t tag, double floor,
+                        struct model_ranked **ret_ranked, size_t *ret_count)
+{
+    size_t size = worklist_size(model->worklist);
+    struct model_ranked *ranked = calloc(size + 1, sizeof *ranked);
+    double *propensities = calloc(model->tag_count + 1, sizeof *propensities);
+    if (!ranked || !propensities) {
+        free(ranked);
+        free(propensities);
+        return -ENOMEM;
+    }
+    for (size_t i = 0; i < model->tag_count; i++) {
+        propensities[i] = model_propensity(model, (uint32_t)i);
+    }
+    size_t count = 0;
+    for (size_t i = 0; i < size; i++) {
+        const struct worklist_entry *entry = worklist_at(model->worklist, i);
+        double expected = promise_of(model, entry, tag, floor, propensities);
+        if (expected > 0.0) {
+            ranked[count++] = (struct model_ranked){.expected = expected, .number = entry->number};
+        }
+    }
+    free(propensities);
+    qsort(ranked, count, sizeof *ranked, compare_ranked);
+    *ret_ranked = ranked;
+    *ret_count = count;
+    return 0;
+}

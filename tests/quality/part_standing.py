@@ -4,8 +4,8 @@ Only the daemon knows what it proposed for an item just before it learned it. Th
 items of a chunk are asked about as drafts just before: nearly the same lists. Of these we know the truth ('true P@k')
 and, with the p of that time, what PSP@k should be against the tags given.
 
-The daemon's figures are over items filed with a tag. So are ours that are judged; 'true P@k' over all items, where the
-untagged have true tags too and worse lists, stands beside.
+The daemon's figures are over items filed with a tag. So are ours that are judged; P@k over all items, where the untagged
+have true tags too and worse lists, stands beside, and PSP@k as it were if a tag's first use did not count.
 """
 
 import numpy as np
@@ -32,23 +32,25 @@ class Record:
     def add(self, ranked, truth, given):
         """Amounts of one chunk, with the p of this time; then its tags count."""
         p = figures.propensities(self.counts, self.items)
+        known = figures.inside(given, self.counts > 0)
         hits, seen = figures.hit_matrix(truth, ranked), figures.hit_matrix(given, ranked)
         self._keep(tagged=given.getnnz(axis=1) > 0)
         for k in PLACES:
             gained, best = figures.psp_sums(given, ranked, seen, p, k)
+            _, best_of_known = figures.psp_sums(known, ranked, seen, p, k)
             self._keep(**{f"true P@{k}": hits[:, :k].sum(axis=1) / k, f"P@{k}": seen[:, :k].sum(axis=1) / k,
-                          f"gained {k}": gained, f"best {k}": best})
+                          f"gained {k}": gained, f"best {k}": best, f"best of known {k}": best_of_known})
         self.counts = self.counts + given.getnnz(axis=0)
         self.items += truth.shape[0]
 
     def last(self, items):
-        """{name: (over those filed with a tag, over all)} of the last `items` items, and how many had none."""
+        """{name: (value, what stands beside it)} of the last `items` items, and how many of them had no tag."""
         columns = {name: np.concatenate(parts)[-items:] for name, parts in self.parts.items()}
         tagged = columns["tagged"]
         values = {name: (column[tagged].mean(), column.mean()) for name, column in columns.items() if "P@" in name}
         for k in PLACES:
-            psp = columns[f"gained {k}"].sum() / columns[f"best {k}"].sum()
-            values[f"PSP@{k}"] = (psp, psp)
+            gained = columns[f"gained {k}"].sum()
+            values[f"PSP@{k}"] = (gained / columns[f"best {k}"].sum(), gained / columns[f"best of known {k}"].sum())
         return values, int((~tagged).sum())
 
 
@@ -66,11 +68,11 @@ def file_and_ask(connection, corpus):
 def compare(verdicts, window, ours):
     """The daemon's figures beside ours; those that must agree are judged."""
     of_daemon = window["bands"]["all"]["with"]
-    for name, (value, over_all) in ours.items():
+    for name, (value, other) in ours.items():
         said, error = of_daemon[name]["value"], of_daemon[name]["error"]
-        verdicts.value(name, {"said": said, "ours": value, "ours over all items": over_all})
-        text = f"{name}: said {said or 0:.4f} ± {error or 0:.4f}, ours {value:.4f}"
-        text += f" (over all items {over_all:.4f})" if over_all != value else ""
+        verdicts.value(name, {"said": said, "ours": value, "ours otherwise": other})
+        beside = "without first uses" if name.startswith("PSP") else "over all items"
+        text = f"{name}: said {said or 0:.4f} ± {error or 0:.4f}, ours {value:.4f} ({beside} {other:.4f})"
         if name.startswith("P@"):
             verdicts.say(text)
         else:

@@ -213,6 +213,16 @@ class Standing(unittest.TestCase):
     def test_what_is_found_of_all_that_is_given_makes_a_psp_of_one(self):
         self.assertAlmostEqual(self.record.last(5)[0]["PSP@1"][0], 1.0)
 
+    def test_without_first_uses_a_tag_that_is_new_at_that_time_is_not_missed_in_psp(self):
+        """Only one tag was in use; all of its items are found, and the first uses of the two others cannot be."""
+        used = self.corpus.numbers["oil"]
+        self.corpus.counts[np.arange(3) != used] = 0
+        record = part_standing.Record(self.corpus)
+        record.add(np.full((len(self.corpus.test), 5), used), self.corpus.split.truth_test, self.corpus.given_test)
+        psp, without_first_uses = record.last(len(self.corpus.test))[0]["PSP@1"]
+        self.assertAlmostEqual(without_first_uses, 1.0)
+        self.assertLess(psp, 0.9)
+
     def test_the_p_of_a_chunk_counts_the_chunks_before_and_not_itself(self):
         """With two chunks alike but for p, the sums of the second rest on twice the evidence."""
         given = self.corpus.given_test

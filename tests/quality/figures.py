@@ -15,10 +15,10 @@ BANDS = {"head": (1000, np.inf), "torso": (30, 1000), "tail": (0, 30)}  # traini
 CURVE_A, CURVE_B = 0.55, 1.5
 
 
-def propensities(counts, items):
+def propensities(counts, items, a=CURVE_A, b=CURVE_B):
     """p = 1 / (1 + C (N_l + B)^-A), C = (ln N - 1)(B + 1)^A; ln N - 1 is at least 1, p is within [.01, 1]."""
-    c = max(np.log(items) - 1.0, 1.0) * (CURVE_B + 1.0) ** CURVE_A
-    p = 1.0 / (1.0 + c * (np.asarray(counts, dtype=float) + CURVE_B) ** -CURVE_A)
+    c = max(np.log(items) - 1.0, 1.0) * (b + 1.0) ** a
+    p = 1.0 / (1.0 + c * (np.asarray(counts, dtype=float) + b) ** -a)
     return np.clip(p, 0.01, 1.0)
 
 
@@ -83,9 +83,15 @@ def ndcg(hits, sizes, k):
 
 def psp(truth, ranked, hits, p, k):
     """The sum of 1/p over all hits in the first k places, over the best sum that k places could hold."""
-    gained = np.where(hits[:, :k], 1.0 / p[ranked[:, :k]], 0.0).sum()
-    return gained / sum(best_sum(1.0 / p[truth.indices[start:end]], k)
-                        for start, end in zip(truth.indptr, truth.indptr[1:]))
+    gained, best = psp_sums(truth, ranked, hits, p, k)
+    return gained.sum() / best.sum()
+
+
+def psp_sums(truth, ranked, hits, p, k):
+    """By item, the sum of 1/p over the hits in the first k places, and the best sum that k places could hold."""
+    gained = np.where(hits[:, :k], 1.0 / p[ranked[:, :k]], 0.0).sum(axis=1)
+    return gained, np.array([best_sum(1.0 / p[truth.indices[start:end]], k)
+                             for start, end in zip(truth.indptr, truth.indptr[1:])])
 
 
 def best_sum(values, k):
@@ -106,12 +112,21 @@ def found(truth, ranked, mask, k=10):
     """How many of the band's tags stand in the first k places of the whole list.
 
     R@k: mean over the items that have such a tag; found@k: over all pairs of item and tag alike. For the band
-    "tail" the latter is the figure called 'tail'.
+    "tail" the latter is the figure called 'tail'. macro R@k: mean over the tags that an item has.
     """
-    sizes = inside(truth, mask).getnnz(axis=1)
+    true = inside(truth, mask)
+    sizes = true.getnnz(axis=1)
     hits = hit_matrix(truth, ranked) & mask[ranked]
     kept = sizes > 0
-    return {f"R@{k}": recall(hits[kept], sizes[kept], k), f"found@{k}": hits[:, :k].sum() / sizes.sum()}
+    return {f"R@{k}": recall(hits[kept], sizes[kept], k), f"found@{k}": hits[:, :k].sum() / sizes.sum(),
+            f"macro R@{k}": macro_recall(true, ranked, hits, k)}
+
+
+def macro_recall(truth, ranked, hits, k):
+    """Mean over the tags that an item has of the share of these items where it stands in the first k places."""
+    pairs = truth.getnnz(axis=0)
+    placed = np.bincount(ranked[:, :k][hits[:, :k]], minlength=len(pairs))
+    return (placed[pairs > 0] / pairs[pairs > 0]).mean()
 
 
 def of_band(truth, ranked, counts, items, band):

@@ -1,35 +1,36 @@
 #!/usr/bin/python3
-"""How good the proposals are: D and W through the daemon's real socket, next to a batch solver.
+"""How good the proposals are: D and W through the daemon's real socket, next to a batch solver, and T.
 
 Files the first 80 % of a corpus, asks for the gaps of the last 20 % without their tags, and prints the figures
-beside those of the batch solver on the same split. The figures are defined in figures.py.
+beside those of the batch solver on the same split and of a daemon that does not correct for missing tags. The figures
+are defined in figures.py. T is W with tags hidden on purpose: see thinned.py.
 
 Ends with 0 when every floor is kept, 1 when one is missed, 69 when a corpus was skipped because it is not there (and
 no floor is missed), 70 when the daemon failed.
 """
 
 import argparse
-import json
 import os
 import sys
 import time
 
-import numpy as np
-
 import figures
+import outcome
 import reference
 import report
 import split as splits
+import thinned
 import trial
 import wire
 
 HERE = os.path.dirname(os.path.abspath(__file__))
-EX_UNAVAILABLE, EX_SOFTWARE = 69, 70  # sysexits.h
 FLOORS = {
     "D": {("all", "P@1"): .865, ("all", "P@5"): .470, ("all", "PSP@5"): .705, ("tail", "found@10"): .54},
     "W": {("all", "P@1"): .882, ("all", "P@5"): .745, ("all", "PSP@5"): .400, ("all", "R@10"): .71,
           ("tail", "found@10"): .35},
 }
+CORPORA = (*FLOORS, "T")
+UNCORRECTED = "correction=off"
 
 
 def reference_path(name, options):
@@ -63,18 +64,31 @@ def floors_of(name, by_band):
     return floors
 
 
-def run(name, split, options):
-    """One corpus through the daemon; all that is known about it afterwards."""
-    with trial.daemon(options.daemon, options.set) as connection:
+def filed_and_asked(split, options, settings):
+    """A corpus through a daemon with these settings: what is proposed with which chances, and the seconds it took."""
+    with trial.daemon(options.daemon, settings) as connection:
         filed_s, learned_s = trial.file_items(connection, split.train)
         start = time.monotonic()
         ranked, chances = trial.ask(connection, split.test, split.numbers)
         asked_s = time.monotonic() - start
+    return ranked, chances, {"filed_s": filed_s, "learned_s": learned_s, "asked_s": asked_s}
+
+
+def uncorrected(split, options):
+    """The figures of a daemon that does not correct; None where the settings say whether it does."""
+    if any(setting.startswith("correction=") for setting in options.set):
+        return None
+    ranked, _, _ = filed_and_asked(split, options, [*options.set, UNCORRECTED])
+    return figures.by_band(split.truth_test, ranked, split.counts, len(split.train))
+
+
+def run(name, split, options):
+    """One corpus through the daemon, with the correction and without; all that is known about it afterwards."""
+    ranked, chances, seconds = filed_and_asked(split, options, options.set)
     by_band = figures.by_band(split.truth_test, ranked, split.counts, len(split.train))
     return {"corpus": split.sha256, "settings": options.set, "learned": len(split.train), "asked": len(split.test),
-            "tags": len(split.tags), "filed_s": filed_s, "learned_s": learned_s, "asked_s": asked_s,
-            "undertag": by_band, "chances": chance_figures(split, ranked, chances),
-            "floors": floors_of(name, by_band)}
+            "tags": len(split.tags), **seconds, "undertag": by_band, "uncorrected": uncorrected(split, options),
+            "chances": chance_figures(split, ranked, chances), "floors": floors_of(name, by_band)}
 
 
 def trial_of(name, options):
@@ -97,33 +111,20 @@ def options_of(arguments):
     parser = argparse.ArgumentParser(description="Quality of the proposals on real corpora.")
     parser.add_argument("daemon", nargs="?", default="build/undertagd", help="the daemon's program")
     parser.add_argument("--corpora", metavar="FOLDER", default="build/corpora", help="where D.jsonl and W.jsonl are")
-    parser.add_argument("--corpus", action="append", choices=sorted(FLOORS), help="only this one")
+    parser.add_argument("--corpus", action="append", choices=CORPORA, help="only this one")
     parser.add_argument("--set", action="append", default=[], metavar="NAME=VALUE", help="handed to the daemon")
     parser.add_argument("--json", metavar="FILE", help="keep the figures in a file")
     parser.add_argument("--reference", action="store_true", help="only solve and keep the batch figures")
-    parser.add_argument("--kept", metavar="FOLDER", default="build/quality", help="where D's batch figures are kept")
+    parser.add_argument("--kept", metavar="FOLDER", default="build/quality",
+                        help="where D's batch figures and pictures are kept")
     return parser.parse_args(arguments)
-
-
-def plain(value):
-    """A number of numpy as JSON's."""
-    if isinstance(value, np.generic):
-        return value.item()
-    raise TypeError(f"not for JSON: {type(value)}")
 
 
 def trials(options):
     """The results of the corpora that are there, by name; each is printed as soon as it is known."""
-    names = options.corpus or sorted(FLOORS)
-    results = {name: trial_of(name, options) for name in names}
+    names = options.corpus or (FLOORS if options.reference else CORPORA)
+    results = {name: thinned.run(options) if name == "T" else trial_of(name, options) for name in names}
     return {name: result for name, result in results.items() if result is not None}, len(names)
-
-
-def status(results, wanted):
-    """The exit status."""
-    if not all(floor["kept"] for result in results.values() for floor in result.get("floors", [])):
-        return 1
-    return 0 if len(results) == wanted else EX_UNAVAILABLE
 
 
 def main(arguments=None):
@@ -132,11 +133,10 @@ def main(arguments=None):
         results, wanted = trials(options)
     except (OSError, trial.TrialError, wire.WireError) as error:
         print(f"The trial broke off: {error}.", file=sys.stderr)
-        return EX_SOFTWARE
+        return outcome.EX_SOFTWARE
     if options.json:
-        with open(options.json, "w", encoding="utf-8") as file:
-            json.dump(results, file, indent=1, default=plain)
-    return status(results, wanted)
+        outcome.write(options.json, results)
+    return outcome.status(results, wanted)
 
 
 if __name__ == "__main__":

@@ -2,7 +2,8 @@
 
 import figures
 
-COLUMNS = ("P@1", "P@3", "P@5", "nDCG@5", "PSP@1", "PSP@3", "PSP@5", "R@10", "found@10")
+COLUMNS = ("P@1", "P@3", "P@5", "nDCG@5", "PSP@1", "PSP@3", "PSP@5", "R@10", "found@10", "macro R@10")
+GAINS = (("tail", "found@10"), ("all", "PSP@5"), ("all", "macro R@10"))
 BATCH_NAMES = {"weighted": "batch, 2/p − 1", "plain": "batch, plain"}
 BANDS = ("all", *figures.BANDS)
 
@@ -19,7 +20,7 @@ def cell(column, text):
 
 def figure_row(name, band, values):
     """One line of the table of figures."""
-    cells = [cell(column, shown(values and values[column])) for column in COLUMNS]
+    cells = [cell(column, shown(values and values.get(column))) for column in COLUMNS]
     pairs = f"{values['pairs']:,}" if values else "0"
     return f"{name:<15}{band:<6}{pairs:>8}" + "".join(cells)
 
@@ -41,6 +42,17 @@ def chance_table(chances):
     return lines
 
 
+def gain_lines(corrected, uncorrected):
+    """What the correction for missing tags gains, where both were tried."""
+    for band, figure in GAINS if uncorrected else ():
+        if not corrected[band] or not uncorrected[band]:
+            continue
+        name = figure if band == "all" else f"{figure} of the {band}"
+        with_it, without = corrected[band][figure], uncorrected[band][figure]
+        change = f", {with_it / without - 1:+.1%}" if without > 0 else ""
+        yield f"gain of the correction, {name}: {shown(with_it)} against {shown(without)}{change}"
+
+
 def floor_lines(floors):
     """What each floor asks and what was reached."""
     for floor in floors:
@@ -55,12 +67,15 @@ def lines(name, result):
            f"{result['tags']:,} tags, settings {' '.join(result['settings']) or 'default'}")
     yield (f"filed in {result['filed_s']:.1f} s, learned in {result['learned_s']:.1f} s, "
            f"asked in {result['asked_s']:.1f} s (this client's time included)")
-    yield from figure_table({"undertag": result["undertag"],
+    uncorrected = {"uncorrected": result["uncorrected"]} if result["uncorrected"] else {}
+    yield from figure_table({"undertag": result["undertag"], **uncorrected,
                              **{BATCH_NAMES[kind]: kept["figures"] for kind, kept in result["batch"].items()}})
     yield "found@10: share of all pairs in the top 10; the tail's is the figure 'tail'. Pairs: item and given tag."
+    yield "macro R@10: mean over the tags of the share of their pairs found in the top 10."
     for kind, kept in result["batch"].items():
         yield f"{BATCH_NAMES[kind]}: liblinear, all training items at once, {kept['seconds']:,.0f} s when it was solved"
     if not result["batch"]:
         yield f"batch: no figures kept for this corpus and these features; --reference --corpus {name} solves it."
     yield from chance_table(result["chances"])
+    yield from gain_lines(result["undertag"], result["uncorrected"])
     yield from floor_lines(result["floors"])

@@ -81,6 +81,14 @@ def show_end(log):
         print(f"undertagd: {line}", file=sys.stderr)
 
 
+def settle(connection):
+    """Waits until all that was changed is learned."""
+    def settled():
+        state = connection.call("daemon.state")
+        return state["learned"] == state["seq"] and state["backlog"] == 0
+    wait_for(settled, SETTLE_CAP_S, "learning all that was filed")
+
+
 def file_items(connection, items):
     """Files the items in order and waits until all is learned; seconds until filed, and until learned."""
     start = time.monotonic()
@@ -88,22 +96,28 @@ def file_items(connection, items):
         if answer["was"] != "new":
             raise TrialError(f"an item of the corpus was {answer['was']} in an empty home")
     filed = time.monotonic() - start
-
-    def settled():
-        state = connection.call("daemon.state")
-        return state["learned"] == state["seq"] and state["backlog"] == 0
-    wait_for(settled, SETTLE_CAP_S, "learning all that was filed")
+    settle(connection)
     return filed, time.monotonic() - start
 
 
 def ask(connection, items, numbers):
-    """What is proposed for the items without their tags: tag numbers (-1: no more) and chances, items × DEPTH."""
-    drafts = ({"title": item["title"], "text": item["text"], "most": DEPTH, "floor": 0} for item in items)
-    ranked, chances = np.full((len(items), DEPTH), -1), np.zeros((len(items), DEPTH))
-    for row, answer in enumerate(connection.pipelined("item.gaps", drafts)):
+    """What is proposed for the items as drafts without their tags, items × DEPTH: see `proposals`."""
+    return proposals(connection, [{"title": item["title"], "text": item["text"]} for item in items], numbers)
+
+
+def ask_filed(connection, items, numbers):
+    """What the items are said to lack as they were filed, items × DEPTH: see `proposals`."""
+    return proposals(connection, [{"id": item["id"]} for item in items], numbers)
+
+
+def proposals(connection, asked, numbers):
+    """The first DEPTH gaps whatever their chance: tag numbers (-1: no more) and chances."""
+    ranked, chances = np.full((len(asked), DEPTH), -1), np.zeros((len(asked), DEPTH))
+    requests = ({**one, "most": DEPTH, "floor": 0} for one in asked)
+    for row, answer in enumerate(connection.pipelined("item.gaps", requests)):
         gaps = answer["gaps"]
         ranked[row, :len(gaps)] = [numbers[gap["tag"]] for gap in gaps]
         chances[row, :len(gaps)] = [gap["chance"] for gap in gaps]
         if (np.diff(chances[row]) > 0).any():
-            raise TrialError(f"the gaps of {items[row]['id']} are not by falling chance")
+            raise TrialError(f"the gaps of {str(asked[row])[:80]} are not by falling chance")
     return ranked, chances

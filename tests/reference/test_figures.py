@@ -59,6 +59,16 @@ class Ranking(unittest.TestCase):
         expected = recall_score(self.truth, first(self.ranked, 10), average="micro")
         self.assertAlmostEqual(self.figures["found@10"], expected, places=12)
 
+    def test_macro_recall_at_ten_is_that_of_scikit_learn_over_the_tags_that_an_item_has(self):
+        self.assertTrue(self.truth.any(axis=0).all())
+        expected = recall_score(self.truth, first(self.ranked, 10), average="macro")
+        self.assertAlmostEqual(self.figures["macro R@10"], expected, places=12)
+
+    def test_a_tag_that_no_item_has_does_not_count_in_the_macro_recall(self):
+        self.truth[:, :7] = False
+        expected = recall_score(self.truth, first(self.ranked, 10), average="macro", labels=range(7, TAGS))
+        self.assertAlmostEqual(computed(self.truth, self.ranked, self.counts)["macro R@10"], expected, places=12)
+
     def test_a_perfect_list_has_ndcg_psp_and_recall_of_one(self):
         p = figures.propensities(self.counts, LEARNED)
         ranked = np.argsort(-(self.truth / p), axis=1)[:, :DEPTH]

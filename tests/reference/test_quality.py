@@ -9,6 +9,7 @@ import tempfile
 import unittest
 
 import python_tests
+import outcome
 import quality
 
 FAKE = os.path.join(python_tests.TESTS, "reference", "fake_undertagd.py")
@@ -41,13 +42,13 @@ class Trial(unittest.TestCase):
 
     def test_the_status_is_0_only_when_every_floor_is_kept(self):
         kept, missed = {"floors": [{"kept": True}]}, {"floors": [{"kept": True}, {"kept": False}]}
-        self.assertEqual(quality.status({"D": kept, "W": kept}, 2), 0)
-        self.assertEqual(quality.status({"D": kept, "W": missed}, 2), 1)
+        self.assertEqual(outcome.status({"D": kept, "W": kept}, 2), 0)
+        self.assertEqual(outcome.status({"D": kept, "W": missed}, 2), 1)
 
     def test_a_skipped_corpus_makes_69_unless_a_floor_is_missed(self):
-        self.assertEqual(quality.status({"D": {"floors": [{"kept": True}]}}, 2), 69)
-        self.assertEqual(quality.status({"D": {"floors": [{"kept": False}]}}, 2), 1)
-        self.assertEqual(quality.status({}, 2), 69)
+        self.assertEqual(outcome.status({"D": {"floors": [{"kept": True}]}}, 2), 69)
+        self.assertEqual(outcome.status({"D": {"floors": [{"kept": False}]}}, 2), 1)
+        self.assertEqual(outcome.status({}, 2), 69)
 
     def test_a_corpus_that_is_not_there_is_skipped_with_a_sentence(self):
         status, out, _ = self.run_quality(corpus="W")
@@ -74,6 +75,23 @@ class Trial(unittest.TestCase):
         rows = {line[:15].strip(): line.split() for line in out.splitlines() if " all " in line}
         self.assertIn("1.00", rows["batch, plain"])
         self.assertIn("1.00", rows["batch, 2/p − 1"])
+
+    def test_the_gain_of_the_correction_stands_beside_and_the_uncorrected_figures_too(self):
+        """This daemon finds the same tags either way."""
+        _, out, _ = self.run_quality()
+        self.assertIn("gain of the correction, found@10 of the tail: 1.00 against 1.00, +0.0%", out)
+        self.assertIn("gain of the correction, macro R@10: 1.00 against 1.00, +0.0%", out)
+        self.assertIn("\nuncorrected    all", out)
+
+    def test_settings_that_say_whether_to_correct_are_not_tried_the_other_way(self):
+        _, out, _ = self.run_quality("--set", "correction=off")
+        self.assertNotIn("gain of the correction", out)
+
+    def test_thinned_tags_are_a_corpus_of_their_own_and_need_w(self):
+        status, out, _ = self.run_quality(corpus="T")
+        self.assertEqual(status, 69)
+        self.assertIn("T: skipped", out)
+        self.assertNotIn("D:", out)
 
     def test_the_chances_are_compared_with_what_was_given(self):
         """By hand: 12 drafts, 3 tags each: 12 of .9, all given, and 24 of .05, none given; the mean error is

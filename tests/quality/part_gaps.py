@@ -1,0 +1,78 @@
+"""Tags that were really hidden: how many of the gaps shown are true ones, item by item and down the worklist.
+
+Precision at 1: of the items that lack a known tag, the share whose first gap is one that they lack. The share among
+all items, complete ones too, where no gap can be true, stands beside it.
+"""
+
+import desk
+import figures
+import part_chances
+import trial
+
+FIRST, MOST_WALKED = 5000, 40_000  # gaps of the worklist
+FLOOR_FIRST, FLOOR_WORKLIST, PROMISED = 0.45, 0.75, 0.05
+
+
+def first_gaps(connection, corpus, verdicts):
+    """Precision at 1, of a sample of all filed items and of one of the first fifth."""
+    for name, rows in part_chances.filed_groups(corpus).items():
+        ranked, _ = trial.ask_filed(connection, [corpus.train[row] for row in rows], corpus.numbers)
+        hits = figures.hit_matrix(corpus.hidden_train[rows], ranked)[:, 0]
+        lacking = corpus.hidden_train[rows].getnnz(axis=1) > 0
+        verdicts.value(f"{name} P@1 of all", hits.mean())
+        verdicts.at_least(f"{name}: precision at 1, the {lacking.sum():,} of {len(rows):,} items that lack a known tag "
+                          f"(all items: {hits.mean():.4f})", hits[lacking].mean(), FLOOR_FIRST)
+
+
+class Walk:
+    """The first gaps of a worklist: their chances, and whether they are true; `running` as the daemon said it."""
+
+    def __init__(self):
+        self.chances, self.true, self.running = [], [], None
+
+    def add(self, corpus, entry):
+        """One entry; nothing once FIRST gaps are there."""
+        if len(self.chances) >= FIRST:
+            return
+        row = corpus.rows[entry["id"]]
+        self.chances += [gap["chance"] for gap in entry["gaps"]]
+        self.true += [corpus.misses(row, gap["tag"]) for gap in entry["gaps"]]
+        self.running = entry["running"]
+
+
+def walk(connection, corpus):
+    """The worklist, and what of it falls on the first fifth, as if that were a worklist of its own."""
+    walks, walked = {"worklist": Walk(), "worklist, first fifth": Walk()}, 0
+    for entry in desk.worklist(connection):
+        walks["worklist"].add(corpus, entry)
+        if corpus.rows[entry["id"]] < len(corpus.train) // 5:
+            walks["worklist, first fifth"].add(corpus, entry)
+        walked += len(entry["gaps"])
+        if walked >= MOST_WALKED or all(len(one.chances) >= FIRST for one in walks.values()):
+            break
+    return walks
+
+
+def judge_walk(verdicts, name, walked):
+    """How much of it is true, and whether that many were promised."""
+    found, gaps = sum(walked.true), len(walked.true)
+    verdicts.value(name, {"gaps": gaps, "found": found, "promised": sum(walked.chances)})
+    if gaps == 0:
+        verdicts.failed(f"{name}: it is empty")
+        return
+    verdicts.at_least(f"{name}: share of {gaps:,} gaps that are really missing", found / gaps, FLOOR_WORKLIST)
+    verdicts.at_most(f"{name}: {found:,} found where the chances sum to {sum(walked.chances):,.0f}, off by",
+                     abs(sum(walked.chances) / max(found, 1) - 1), PROMISED)
+
+
+def run(connection, corpus, verdicts, _):
+    """Single items, then the worklist when it is up to date."""
+    first_gaps(connection, corpus, verdicts)
+    desk.wait_for_worklist(connection)
+    walks = walk(connection, corpus)
+    for name, walked in walks.items():
+        judge_walk(verdicts, name, walked)
+    found = sum(walks["worklist"].true)
+    if walks["worklist"].running is not None:
+        verdicts.at_most(f"worklist: running total {walks['worklist'].running:,.0f} against {found:,} found, off by",
+                         abs(walks["worklist"].running / max(found, 1) - 1), PROMISED)

@@ -64,7 +64,9 @@ static int add_figure(struct table *table, const json_t *band, const struct figu
         return 0;
     }
     if (!isnan(low) && !isnan(high)) {
-        (void)snprintf(between, sizeof between, "%+.1f to %+.1f", 100 * low, 100 * high);
+        int digits = fmax(fabs(low), fabs(high)) < 0.0995 ? 1 : 0;
+        (void)snprintf(between, sizeof between, "%+.*f to %+.*f", digits, 100 * low, digits,
+                       100 * high);
     }
     return table_add(
         table, (const char *[]){figure->full, format_figure(answer_number(with, "value"), value),

@@ -91,6 +91,12 @@ char *format_amount(double amount, char *out)
     return format_count((int64_t)llround(amount), out);
 }
 
+char *format_about(double amount, char *out)
+{
+    double unit = fabs(amount) >= 100 ? pow(10, floor(log10(fabs(amount))) - 1) : 1;
+    return format_amount(isfinite(amount) ? round(amount / unit) * unit : amount, out);
+}
+
 char *format_between(double low, double high, char *out)
 {
     char least[FORMAT_BYTES];
@@ -118,6 +124,6 @@ char *format_change(double ratio, char *out)
     if (!isfinite(ratio)) {
         return dash(out);
     }
-    (void)snprintf(out, FORMAT_BYTES, "%+.1f %%", 100 * ratio);
+    (void)snprintf(out, FORMAT_BYTES, "%+.*f %%", fabs(ratio) < 0.0995 ? 1 : 0, 100 * ratio);
     return out;
 }

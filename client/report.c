@@ -48,6 +48,7 @@ void report_bar(struct html *html, double share, double low, double high)
     if (isfinite(low) && isfinite(high)) {
         double from = svg_at(&across, low);
         double to = svg_at(&across, high);
+        svg_line(html, "halo", from, 7, to, 7);
         svg_line(html, "reach", from, 7, to, 7);
         svg_line(html, "reach", from, 0, from, 14);
         svg_line(html, "reach", to, 0, to, 14);
@@ -68,12 +69,13 @@ void report_share_cells(struct html *html, const struct answer_estimate *x)
     report_count_cell(html, x->missing);
     html_put(html, "<td class=\"n\">");
     report_percent(html, x->share);
+    html_put(html, "</td><td class=\"n soft\">");
     if (isfinite(x->low) && isfinite(x->high)) {
-        html_put(html, "<small>");
         report_percent(html, x->low);
         html_put(html, " to ");
         report_percent(html, x->high);
-        html_put(html, "</small>");
+    } else {
+        html_put(html, "\u2013");
     }
     html_put(html, "</td><td class=\"b\">");
     report_bar(html, x->share, x->low, x->high);
@@ -121,7 +123,7 @@ static void write_lead(struct html *html, const struct answer_estimate *all, con
                  "are missing.</p>\n",
                  format_percent(all->share, share),
                  format_count(command_whole(state, "items"), items),
-                 format_amount(all->missing, missing));
+                 format_about(all->missing, missing));
     }
 }
 

@@ -12,7 +12,8 @@ static void table_head(struct html *html, const char *what)
 {
     html_put(html,
              "<table>\n<thead><tr><th>%s</th><th class=\"n\">given</th><th class=\"n\">missing</th>"
-             "<th class=\"n\">on record</th><th></th></tr></thead>\n<tbody>\n",
+             "<th class=\"n\">on record</th><th "
+             "class=\"n\">between</th><th></th></tr></thead>\n<tbody>\n",
              what);
 }
 
@@ -85,7 +86,7 @@ void report_completeness(struct html *html, const json_t *completeness)
     html_put(html, "<p class=\"first\">Rare tags are forgotten more often than common ones, so the "
                    "tags are shown in three bands.</p>\n"
                    "<p>'Given' is counted, 'missing' estimated. The bar is the share on record; "
-                   "the bracket across its end, and the small figures, are the range in which that "
+                   "'between', and the bracket across the bar's end, is the range in which that "
                    "share lies with a probability of 90&nbsp;%%.</p>\n");
     say_source(html, command_text(overall, "from"), json_object_get(completeness, "checks"));
     say_wrong(html, json_object_get(completeness, "wrong"));

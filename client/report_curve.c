@@ -12,7 +12,7 @@ enum {
     WIDTH = 700,
     HEIGHT = 500,
     LEFT = 64,
-    RIGHT = 684,
+    RIGHT = 656,
     SHARE_TOP = 34,
     SHARE_BOTTOM = 164,
     COUNT_TOP = 218,
@@ -94,7 +94,7 @@ static void draw(struct html *html, const struct tag_curve *curve)
     draw_count_frame(html, &across, &counts);
     draw_share_frame(html, &shares);
     svg_path(html, "curve", x, count_y, curve->points);
-    svg_path(html, "other", x, share_y, curve->points);
+    svg_path(html, "curve", x, share_y, curve->points);
     svg_end(html);
 }
 
@@ -115,7 +115,7 @@ static void say_bands(struct html *html, const struct tag_curve *curve)
                  format_count((int64_t)curve->unused, tags));
     }
     html_put(html, "<p>Both scales of the lower drawing grow tenfold from line to line. Further to "
-                   "the right tags are rarer, and the dashed line above falls: more of their uses "
+                   "the right tags are rarer, and the line above falls: more of their uses "
                    "are forgotten.</p>\n");
 }
 

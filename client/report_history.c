@@ -18,7 +18,7 @@ enum {
     RIGHT = 326,
     TOP = 34,
     BOTTOM = 186,
-    X_PARTS = 3
+    X_PARTS = 5
 };
 
 /* One figure over time; arrays of `count` periods. */

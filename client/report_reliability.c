@@ -14,7 +14,7 @@ enum {
     SIDE = 460,
     LEFT = 58,
     RIGHT = 440,
-    TOP = 16,
+    TOP = 30,
     BOTTOM = 398,
     LARGEST = 17, /* radius of the largest dot */
     SMALLEST = 3
@@ -35,7 +35,7 @@ static void draw_frame(struct html *html, const struct svg_scale *across,
     }
     svg_line(html, "even", LEFT, BOTTOM, RIGHT, TOP);
     svg_label(html, "strong", RIGHT, BOTTOM + 44, "end", "chance shown");
-    svg_label(html, "strong", LEFT + 8, TOP + 14, "start", "share that editors confirmed");
+    svg_label(html, "strong", LEFT, TOP - 14, "start", "share that editors confirmed");
 }
 
 static void draw_dot(struct html *html, const struct svg_scale *across, const struct svg_scale *up,

@@ -56,8 +56,13 @@ const char REPORT_STYLE[] =
     "footer strong{color:var(--ink)}\n"
     "@media (max-width:56rem){section{grid-template-columns:minmax(0,1fr);gap:1rem;padding:1.1rem}"
     "main{padding:1.2rem .8rem 2rem}}\n"
-    "@media print{:root{--paper:#fff;--sheet:#fff}@page{margin:16mm}"
-    "body{font-size:9.5pt}main{max-width:none;padding:0}"
-    "section{grid-template-columns:12rem minmax(0,1fr);gap:1.2rem;padding:.8rem 0;margin:.8rem 0 0;"
-    "break-inside:avoid}section.long{break-inside:auto}tr{break-inside:avoid}"
-    ".fill,.track,.dot{print-color-adjust:exact;-webkit-print-color-adjust:exact}}\n";
+    "@media (max-width:36rem){th.soft,td.soft{display:none}}\n"
+    "@media print{:root{--paper:#fff;--sheet:#fff}@page{margin:15mm}"
+    "body{font-size:9pt;line-height:1.4}main{max-width:none;padding:0}.lead{font-size:17pt}"
+    "section{display:block;padding:.7rem 0 0;margin:.9rem 0 0}h2{font-size:11pt;margin:0 0 .3rem}"
+    "p{margin:0 0 .35rem}.say,h2,thead{break-after:avoid}tr,svg,.panels{break-inside:avoid}"
+    "section:has(.wide,.panels,.square){break-inside:avoid}"
+    "td{padding-top:.22rem;padding-bottom:.22rem}.panels{grid-template-columns:1fr 1fr}"
+    ".square{max-width:10.5cm}svg.wide{max-width:15cm}footer{max-width:none;break-inside:avoid}"
+    ".fill,.track,.dot,.curve,.other{print-color-adjust:exact;"
+    "-webkit-print-color-adjust:exact}}\n";

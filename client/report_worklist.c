@@ -66,7 +66,7 @@ void report_worklist(struct html *html, const json_t *worklist)
              rows, format_amount(command_number(json_array_get(items, rows - 1), "running"), sum));
     report_figure(html);
     html_put(html, "<table>\n<thead><tr><th>item</th><th>likely missing, and the chance</th>"
-                   "<th class=\"n\">expected tags</th><th class=\"n\">in all</th></tr></thead>\n"
+                   "<th class=\"n\">expected</th><th class=\"n\">in all</th></tr></thead>\n"
                    "<tbody>\n");
     for (size_t i = 0; i < rows; i++) {
         write_item(html, json_array_get(items, i));

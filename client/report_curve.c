@@ -105,13 +105,13 @@ static void say_bands(struct html *html, const struct tag_curve *curve)
     char share[FORMAT_BYTES];
     double uses = curve->band_uses[0] + curve->band_uses[1] + curve->band_uses[2];
     html_put(html,
-             "<p class=\"first\">Of %s tags in use, %s are given fewer than 30 times; together "
-             "those make up %s of all tags given.</p>\n",
+             "<p class=\"first\">Tags in use: %s. Given fewer than 30 times: %s, which make up %s "
+             "of all tags given.</p>\n",
              format_count((int64_t)curve->tags, tags),
              format_count((int64_t)curve->band_tags[2], tail),
              format_percent(uses > 0 ? curve->band_uses[2] / uses : NAN, share));
     if (curve->unused > 0) {
-        html_put(html, "<p>%s more are open and not given to any item.</p>\n",
+        html_put(html, "<p>Open and not given to any item: %s.</p>\n",
                  format_count((int64_t)curve->unused, tags));
     }
     html_put(html, "<p>Both scales of the lower drawing grow tenfold from line to line. Further to "

@@ -90,7 +90,7 @@ void report_reliability(struct html *html, const json_t *standing)
         return;
     }
     html_put(html,
-             "<p class=\"first\">%s proposals were ruled on by editors.</p>\n"
+             "<p class=\"first\">Proposals that editors ruled on: %s.</p>\n"
              "<p>Each dot stands for those shown with a similar chance; its figure is their "
              "number, and so is its area. On the dotted line, editors confirm as many as the "
              "chances promise. Above it the daemon is too careful, below it too bold. A dot of few "

@@ -59,11 +59,17 @@ void report_worklist(struct html *html, const json_t *worklist)
         report_section_end(html);
         return;
     }
+    html_put(html, "<p class=\"first\">The first ");
+    if (rows > 1) {
+        html_put(html, "%zu items", rows);
+    } else {
+        html_put(html, "item");
+    }
     html_put(html,
-             "<p class=\"first\">The first %zu items of the worklist should give about %s missing "
-             "tags.</p>\n<p>Each tag has the chance that it belongs to the item although it was "
-             "not given. 'undertag worklist' goes on with the list.</p>\n",
-             rows, format_amount(command_number(json_array_get(items, rows - 1), "running"), sum));
+             " of the worklist should give about %s missing tags.</p>\n<p>Each tag has the chance "
+             "that it belongs to the item although it was not given. 'undertag worklist' goes on "
+             "with the list.</p>\n",
+             format_amount(command_number(json_array_get(items, rows - 1), "running"), sum));
     report_figure(html);
     html_put(html, "<table>\n<thead><tr><th>item</th><th>likely missing, and the chance</th>"
                    "<th class=\"n\">expected</th><th class=\"n\">in all</th></tr></thead>\n"

@@ -170,13 +170,15 @@ static int run(struct client *client, const struct args *args, struct failure *f
 {
     const char *path = args->words[0];
     struct wire *wire = NULL;
-    struct report *report = calloc(1, sizeof *report); /* its curve is large */
-    int code = report ? save_check(path, failure) : failure_memory(failure);
+    struct report *report = NULL;
+    int code = save_check(path, failure);
     if (!code) {
         code = wire_open(client->socket_path, &wire, failure);
     }
     if (!code) {
-        code = ask_and_write(client, wire, report, path, failure);
+        report = calloc(1, sizeof *report); /* its curve is large */
+        code =
+            report ? ask_and_write(client, wire, report, path, failure) : failure_memory(failure);
     }
     wire_free(wire);
     free(report);

@@ -67,7 +67,8 @@ char *format_share(double share, char *out)
 
 static char *dash(char *out)
 {
-    return strcpy(out, "-");
+    (void)snprintf(out, FORMAT_BYTES, "-");
+    return out;
 }
 
 char *format_figure(double figure, char *out)

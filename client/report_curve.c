@@ -19,14 +19,14 @@ enum {
     COUNT_BOTTOM = 446
 };
 
-/* The next power of ten, and at least ten, so that a scale has a length. */
-static double power_above(double value)
+/* The exponent of the next power of ten, at least 1, so that a scale has a length. */
+static unsigned decades(double value)
 {
-    double power = 10;
-    while (power < value) {
-        power *= 10;
+    unsigned exponent = 1;
+    while (pow(10, exponent) < value) {
+        exponent++;
     }
-    return power;
+    return exponent;
 }
 
 static void tick_label(struct html *html, double x, double y, const char *anchor, double count)
@@ -51,12 +51,14 @@ static void draw_share_frame(struct html *html, const struct svg_scale *up)
 static void draw_count_frame(struct html *html, const struct svg_scale *across,
                              const struct svg_scale *up)
 {
-    for (double count = 1; count <= up->from; count *= 10) {
+    for (unsigned i = 0; i <= decades(up->from); i++) {
+        double count = pow(10, i);
         double y = svg_at(up, count);
-        svg_line(html, count > 1 ? "grid" : "axis", LEFT, y, RIGHT, y);
+        svg_line(html, i > 0 ? "grid" : "axis", LEFT, y, RIGHT, y);
         tick_label(html, LEFT - 8, y + 4, "end", count);
     }
-    for (double rank = 1; rank <= across->to; rank *= 10) {
+    for (unsigned i = 0; i <= decades(across->to); i++) {
+        double rank = pow(10, i);
         double x = svg_at(across, rank);
         svg_line(html, "grid", x, SHARE_TOP, x, SHARE_BOTTOM);
         svg_line(html, "grid", x, COUNT_TOP, x, COUNT_BOTTOM);
@@ -70,12 +72,12 @@ static void draw_count_frame(struct html *html, const struct svg_scale *across,
 static void draw(struct html *html, const struct tag_curve *curve)
 {
     const struct svg_scale across = {.from = 1,
-                                     .to = power_above((double)curve->tags),
+                                     .to = pow(10, decades((double)curve->tags)),
                                      .start = LEFT,
                                      .end = RIGHT,
                                      .logarithmic = true};
     /* Upwards: the largest value at the top. */
-    const struct svg_scale counts = {.from = power_above(curve->count[0]),
+    const struct svg_scale counts = {.from = pow(10, decades(curve->count[0])),
                                      .to = 1,
                                      .start = COUNT_TOP,
                                      .end = COUNT_BOTTOM,

@@ -92,14 +92,16 @@ static void draw_frame(struct html *html, const struct svg_scale *across,
     double step = up->to - up->from > 0.45 ? 0.2 : 0.1;
     double apart = svg_step(across->to, X_PARTS);
     char label[FORMAT_BYTES];
-    for (double value = up->from; value <= up->to + 1e-6; value += step) {
+    for (int i = 0; up->from + i * step <= up->to + 1e-6; i++) {
+        double value = up->from + i * step;
         double y = svg_at(up, value);
         svg_line(html, "grid", LEFT, y, RIGHT, y);
         (void)snprintf(label, sizeof label, "%.0f %%", 100 * value);
         svg_label(html, "", LEFT - 6, y + 4, "end", label);
     }
     svg_line(html, "axis", LEFT, BOTTOM, RIGHT, BOTTOM);
-    for (double items = 0; items <= across->to * (1 + 1e-9); items += apart) {
+    for (int i = 0; i <= X_PARTS && i * apart <= across->to * (1 + 1e-9); i++) {
+        double items = i * apart;
         double x = svg_at(across, items);
         svg_line(html, "axis", x, BOTTOM, x, BOTTOM + 4);
         svg_label(html, "", x, BOTTOM + 19, items > 0.9 * across->to ? "end" : "middle",

@@ -24,13 +24,14 @@ double svg_step(double most, unsigned parts)
         return 1;
     }
     double power = pow(10, floor(log10(most / parts)));
-    for (;; power *= 10) {
+    for (;;) {
         for (size_t i = 0; i < sizeof STEPS / sizeof STEPS[0]; i++) {
             double step = STEPS[i] * power;
             if (step * parts >= most * (1 - 1e-9)) {
                 return step;
             }
         }
+        power *= 10;
     }
 }
 

@@ -34,7 +34,7 @@ static const struct args_option OPTIONS[] = {
 static int add_estimate(struct table *table, const struct client *client, const char *name,
                         const json_t *object)
 {
-    const struct answer_estimate x = answer_estimate(object);
+    const struct reply_estimate x = reply_estimate(object);
     char given[FORMAT_BYTES];
     char missing[FORMAT_BYTES];
     char share[FORMAT_BYTES] = "-";
@@ -111,7 +111,7 @@ static int print_checks(const struct client *client, const json_t *checks, const
                    "\nSpot checks: %s items drawn at random, %s picked. The figures come from %s.",
                    format_count(command_whole(checks, "random"), random),
                    format_count(command_whole(checks, "picked"), picked),
-                   answer_source(command_text(overall, "from")));
+                   reply_source(command_text(overall, "from")));
     return facts_text(&client->out, sentence, 0);
 }
 
@@ -131,9 +131,9 @@ static int print_wrong(const struct client *client, const json_t *wrong)
                    "%s).",
                    format_count(command_whole(wrong, "wrong"), taken),
                    format_count(command_whole(wrong, "seen"), seen),
-                   format_percent(answer_number(wrong, "share"), share),
-                   format_percent(answer_number(wrong, "low"), low),
-                   format_percent(answer_number(wrong, "high"), high));
+                   format_percent(reply_number(wrong, "share"), share),
+                   format_percent(reply_number(wrong, "low"), low),
+                   format_percent(reply_number(wrong, "high"), high));
     return facts_text(&client->out, sentence, 0);
 }
 
@@ -151,9 +151,9 @@ static int print_second(const struct client *client, const json_t *second)
                    "Second taggings: of %s items. The first tagger found %s of the tags that the "
                    "two together lead to expect; they agree by %s (Rolling) or %s (Hooper).",
                    format_count(command_whole(second, "items"), items),
-                   format_percent(answer_number(second, "found_share"), found),
-                   format_percent(answer_number(second, "rolling"), rolling),
-                   format_percent(answer_number(second, "hooper"), hooper));
+                   format_percent(reply_number(second, "found_share"), found),
+                   format_percent(reply_number(second, "rolling"), rolling),
+                   format_percent(reply_number(second, "hooper"), hooper));
     return facts_text(&client->out, sentence, 0);
 }
 
@@ -174,7 +174,7 @@ static int print(const struct client *client, const json_t *result, const struct
 
 static int run(struct client *client, const struct args *args, struct failure *failure)
 {
-    static const struct command_question QUESTION = {"desk.completeness", ANSWER_COMPLETENESS,
+    static const struct command_question QUESTION = {"desk.completeness", REPLY_COMPLETENESS,
                                                      print};
     json_t *params = json_object();
     int code = params ? 0 : failure_memory(failure);
@@ -196,7 +196,7 @@ static int run(struct client *client, const struct args *args, struct failure *f
 const struct command command_completeness = {
     .name = "completeness",
     .synopsis = "[TAG]",
-    .summary = "the share of the true tags that is on record, and where it is lowest",
+    .summary = "the share of the true tags on record, and where it is lowest",
     .about =
         "For all tags, by how often they are given, and for the tags that lose most: how often "
         "given, how often expected to be missing, the share on record, and the range in which "

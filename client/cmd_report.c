@@ -38,12 +38,12 @@ static void gathered_deinit(struct gathered *gathered)
 
 /* Takes the reference to `params`. */
 static int ask_take(const struct client *client, struct wire *wire, const char *method,
-                    json_t *params, const struct answer_member *shape,
+                    json_t *params, const struct reply_member *shape,
                     struct wire_answer *ret_answer, struct failure *failure)
 {
     int code = wire_call_take(wire, method, params, ret_answer, failure);
     if (!code) {
-        code = answer_check(ret_answer->result, shape, failure);
+        code = reply_check(ret_answer->result, shape, failure);
     }
     if (!code && client->json) {
         command_print_json(client, ret_answer);
@@ -56,14 +56,14 @@ static int gather(const struct client *client, struct wire *wire, struct gathere
 {
     const struct {
         const char *method;
-        const struct answer_member *shape;
+        const struct reply_member *shape;
         struct wire_answer *answer;
         const char *most; /* the member that limits it; NULL: none */
     } questions[] = {
-        {"daemon.state", ANSWER_STATE, &gathered->state, NULL},
-        {"desk.completeness", ANSWER_COMPLETENESS, &gathered->completeness, "most"},
-        {"desk.standing", ANSWER_STANDING, &gathered->standing, NULL},
-        {"desk.worklist", ANSWER_WORKLIST, &gathered->worklist, "most"},
+        {"daemon.state", REPLY_STATE, &gathered->state, NULL},
+        {"desk.completeness", REPLY_COMPLETENESS, &gathered->completeness, "most"},
+        {"desk.standing", REPLY_STANDING, &gathered->standing, NULL},
+        {"desk.worklist", REPLY_WORKLIST, &gathered->worklist, "most"},
     };
     int code = 0;
     for (size_t i = 0; i < sizeof questions / sizeof questions[0] && !code; i++) {
@@ -98,7 +98,7 @@ static int read_tags(const struct client *client, struct wire *wire, struct tag_
     /* "*" leaves out a member whose value is NULL */
     json_t *params =
         json_pack("{s:i,s:s,s:O*}", "most", TAGS_AT_ONCE, "order", "count", "after", *inout_after);
-    int code = ask_take(client, wire, "tag.list", params, ANSWER_TAGS, &answer, failure);
+    int code = ask_take(client, wire, "tag.list", params, REPLY_TAGS, &answer, failure);
     const json_t *tags = json_object_get(answer.result, "tags");
     json_t *next = json_object_get(answer.result, "next");
     bool more = !code && next && !json_is_null(next) && json_array_size(tags) > 0;

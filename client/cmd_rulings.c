@@ -65,7 +65,7 @@ static int print_ruled(const struct client *client, const json_t *result, const 
 
 static int run_rule(struct client *client, const struct args *args, struct failure *failure)
 {
-    static const struct command_question QUESTION = {"item.rule", ANSWER_RULED, print_ruled};
+    static const struct command_question QUESTION = {"item.rule", REPLY_RULED, print_ruled};
     const struct args_value *values = args->values;
     if (!values[BELONGS].given && !values[NOT].given) {
         return failure_set(failure, FAILURE_USAGE,
@@ -160,7 +160,7 @@ static int print_checked(const struct client *client, const json_t *result, cons
 
 static int run_check(struct client *client, const struct args *args, struct failure *failure)
 {
-    static const struct command_question QUESTION = {"item.check", ANSWER_CHECKED, print_checked};
+    static const struct command_question QUESTION = {"item.check", REPLY_CHECKED, print_checked};
     const struct args_value *values = args->values;
     json_t *params = NULL;
     int code = request_new("id", args->words[0], "the ID", &params, failure);
@@ -249,7 +249,7 @@ static int read_sample_size(const char *word, json_t *params, struct failure *fa
 
 static int run_sample(struct client *client, const struct args *args, struct failure *failure)
 {
-    static const struct command_question QUESTION = {"desk.sample", ANSWER_SAMPLE, print_sample};
+    static const struct command_question QUESTION = {"desk.sample", REPLY_SAMPLE, print_sample};
     json_t *params = json_object();
     int code = params ? 0 : failure_memory(failure);
     if (!code && args->word_count > 0) {

@@ -58,8 +58,8 @@ static int add_figure(struct table *table, const json_t *band, const struct figu
     char other[FORMAT_BYTES];
     char change[FORMAT_BYTES];
     char between[2 * FORMAT_BYTES] = "-";
-    double low = answer_number(gain, "low");
-    double high = answer_number(gain, "high");
+    double low = reply_number(gain, "low");
+    double high = reply_number(gain, "high");
     if (!with) {
         return 0;
     }
@@ -69,10 +69,10 @@ static int add_figure(struct table *table, const json_t *band, const struct figu
                        100 * high);
     }
     return table_add(
-        table, (const char *[]){figure->full, format_figure(answer_number(with, "value"), value),
-                                format_figure(answer_number(with, "error"), error),
-                                format_figure(answer_number(without, "value"), other),
-                                format_change(answer_number(gain, "value"), change), between});
+        table, (const char *[]){figure->full, format_figure(reply_number(with, "value"), value),
+                                format_figure(reply_number(with, "error"), error),
+                                format_figure(reply_number(without, "value"), other),
+                                format_change(reply_number(gain, "value"), change), between});
 }
 
 /* Nothing for a band that the answer does not have. */
@@ -187,7 +187,7 @@ static int print(const struct client *client, const json_t *result, const struct
 
 static int run(struct client *client, const struct args *args, struct failure *failure)
 {
-    static const struct command_question QUESTION = {"desk.standing", ANSWER_STANDING, print};
+    static const struct command_question QUESTION = {"desk.standing", REPLY_STANDING, print};
     json_t *params = json_object();
     int code = params ? 0 : failure_memory(failure);
     if (!code) {

@@ -144,7 +144,7 @@ static int show_page(const struct client *client, const struct wire_answer *answ
         command_print_json(client, answer);
         return command_flush(failure);
     }
-    int code = answer_check(answer->result, ANSWER_WORKLIST, failure);
+    int code = reply_check(answer->result, REPLY_WORKLIST, failure);
     if (!code && add_items(table, client, json_object_get(answer->result, "items"), place)) {
         code = failure_memory(failure);
     }

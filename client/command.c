@@ -52,7 +52,7 @@ int command_show_take(const struct client *client, const struct command_question
     if (client->json) {
         command_print_json(client, &answer);
     } else {
-        code = answer_check(answer.result, question->shape, failure);
+        code = reply_check(answer.result, question->shape, failure);
     }
     if (!code && !client->json && question->print(client, answer.result, args)) {
         code = failure_memory(failure);

@@ -10,9 +10,9 @@
 #include <stddef.h>
 #include <stdint.h>
 
-#include "client/answer.h"
 #include "client/args.h"
 #include "client/failure.h"
+#include "client/reply.h"
 #include "client/screen.h"
 #include "client/wire.h"
 
@@ -64,7 +64,7 @@ int command_ask_take(const struct client *client, const char *method, json_t *pa
 /* What to ask, and how to show the answer. */
 struct command_question {
     const char *method;
-    const struct answer_member *shape; /* what `print` relies on */
+    const struct reply_member *shape; /* what `print` relies on */
     int (*print)(const struct client *client, const json_t *result, const struct args *args);
 };
 

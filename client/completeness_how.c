@@ -5,10 +5,10 @@
 #include <stdio.h>
 #include <string.h>
 
-#include "client/answer.h"
 #include "client/command.h"
 #include "client/facts.h"
 #include "client/format.h"
+#include "client/reply.h"
 
 enum {
     PARAGRAPH_BYTES = 1024
@@ -28,7 +28,7 @@ explain(const struct screen *screen, const char *heading, const char *format, ..
     return written < 0 ? -1 : facts_text(screen, paragraph, 2);
 }
 
-static int explain_share(const struct screen *screen, const struct answer_estimate *all)
+static int explain_share(const struct screen *screen, const struct reply_estimate *all)
 {
     char given[FORMAT_BYTES];
     char missing[FORMAT_BYTES];
@@ -60,6 +60,9 @@ static int explain_missing(const struct screen *screen, const json_t *curve)
                        "It was fitted to this desk: to %s uses of tags found in spot checks, each "
                        "of which had been given or forgotten.",
                        trials);
+    } else if (command_whole(curve, "trials") == 0) {
+        (void)snprintf(basis, sizeof basis,
+                       "It is as published: no spot check has shown yet how it is at this desk.");
     } else {
         (void)snprintf(basis, sizeof basis,
                        "It is as published and not fitted to this desk, for which the %s uses of "
@@ -76,7 +79,7 @@ static int explain_missing(const struct screen *screen, const json_t *curve)
                    command_number(curve, "a"), command_number(curve, "b"), basis);
 }
 
-static int explain_interval(const struct screen *screen, const struct answer_estimate *all,
+static int explain_interval(const struct screen *screen, const struct reply_estimate *all,
                             int64_t random_checks)
 {
     char low[FORMAT_BYTES];
@@ -101,7 +104,7 @@ static int explain_interval(const struct screen *screen, const struct answer_est
                    "%s to %s: the range in which the true share of all tags together lies with a "
                    "probability of 90 %%. It comes from %s, with %s items drawn at random. Four "
                    "times as many make it about half as wide.",
-                   low, high, answer_source(all->from), checks);
+                   low, high, reply_source(all->from), checks);
 }
 
 static int explain_wrong(const struct screen *screen, const json_t *wrong)
@@ -117,7 +120,7 @@ static int explain_wrong(const struct screen *screen, const json_t *wrong)
                    "%s. Picked items do not count, since they were picked for a reason.",
                    format_count(command_whole(wrong, "seen"), seen),
                    format_count(command_whole(wrong, "wrong"), taken),
-                   format_percent(answer_number(wrong, "share"), share));
+                   format_percent(reply_number(wrong, "share"), share));
 }
 
 static int explain_second(const struct screen *screen, const json_t *second)
@@ -132,7 +135,7 @@ static int explain_second(const struct screen *screen, const json_t *second)
     double n1 = command_number(second, "first");
     double n2 = command_number(second, "second");
     double common = command_number(second, "both");
-    double found = answer_number(json_object_get(second, "chapman"), "true");
+    double found = reply_number(json_object_get(second, "chapman"), "true");
     return explain(screen, "Second taggings",
                    "Two people tagged the same items without seeing each other's tags: %s tags and "
                    "%s, %s of them the same. The fewer two careful people have in common, the more "
@@ -146,7 +149,7 @@ static int explain_second(const struct screen *screen, const json_t *second)
 
 int completeness_how(const struct screen *screen, const json_t *result)
 {
-    const struct answer_estimate all = answer_estimate(json_object_get(result, "overall"));
+    const struct reply_estimate all = reply_estimate(json_object_get(result, "overall"));
     const json_t *checks = json_object_get(result, "checks");
     if (explain_share(screen, &all) || explain_missing(screen, json_object_get(result, "curve")) ||
         explain_interval(screen, &all, command_whole(checks, "random")) ||

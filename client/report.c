@@ -63,7 +63,7 @@ void report_count_cell(struct html *html, double count)
              isfinite(count) ? format_amount(count, figure) : "\u2013");
 }
 
-void report_share_cells(struct html *html, const struct answer_estimate *x)
+void report_share_cells(struct html *html, const struct reply_estimate *x)
 {
     report_count_cell(html, x->given);
     report_count_cell(html, x->missing);
@@ -106,7 +106,7 @@ static void write_when(struct html *html, time_t made_at)
     html_put(html, "<h1>Tagging report</h1>\n<p class=\"when\">%s</p>\n", day);
 }
 
-static void write_lead(struct html *html, const struct answer_estimate *all, const json_t *state)
+static void write_lead(struct html *html, const struct reply_estimate *all, const json_t *state)
 {
     char items[FORMAT_BYTES];
     char missing[FORMAT_BYTES];
@@ -128,7 +128,7 @@ static void write_lead(struct html *html, const struct answer_estimate *all, con
 }
 
 /* A ruler from 0 to 100 %, filled to the share on record. */
-static void write_ruler(struct html *html, const struct answer_estimate *all)
+static void write_ruler(struct html *html, const struct reply_estimate *all)
 {
     const struct svg_scale across = {.from = 0, .to = 100, .start = 14, .end = 986};
     if (!isfinite(all->share)) {
@@ -180,8 +180,8 @@ static void write_foot(struct html *html, const json_t *state)
 int report_write(const struct report *report, char **ret_page, size_t *ret_length)
 {
     struct html html;
-    const struct answer_estimate all =
-        answer_estimate(json_object_get(report->completeness, "overall"));
+    const struct reply_estimate all =
+        reply_estimate(json_object_get(report->completeness, "overall"));
     if (html_open(&html)) {
         return -1;
     }

@@ -14,7 +14,7 @@
 #include "client/tag_curve.h"
 
 struct report {
-    /* Answers of the known shapes (see answer.h), borrowed. */
+    /* Answers of the known shapes (see reply.h), borrowed. */
     const json_t *state;
     const json_t *completeness;
     const json_t *standing;

@@ -28,7 +28,7 @@ static void say_source(struct html *html, const char *from, const json_t *checks
         return;
     }
     html_put(html, "<p>The figures come from ");
-    html_text(html, answer_source(from));
+    html_text(html, reply_source(from));
     html_put(html, ": %s items drawn at random and %s picked ones were gone through.</p>\n",
              format_count(command_whole(checks, "random"), random),
              format_count(command_whole(checks, "picked"), picked));
@@ -47,12 +47,12 @@ static void say_wrong(struct html *html, const json_t *wrong)
              "did not belong (%s",
              format_count(command_whole(wrong, "seen"), seen),
              format_count(command_whole(wrong, "wrong"), taken),
-             format_percent(answer_number(wrong, "share"), share));
-    if (isfinite(answer_number(wrong, "low")) && isfinite(answer_number(wrong, "high"))) {
+             format_percent(reply_number(wrong, "share"), share));
+    if (isfinite(reply_number(wrong, "low")) && isfinite(reply_number(wrong, "high"))) {
         html_put(html, ", between ");
-        report_percent(html, answer_number(wrong, "low"));
+        report_percent(html, reply_number(wrong, "low"));
         html_put(html, " and ");
-        report_percent(html, answer_number(wrong, "high"));
+        report_percent(html, reply_number(wrong, "high"));
     }
     html_put(html, ").</p>\n");
 }
@@ -67,13 +67,13 @@ static void say_second(struct html *html, const json_t *second)
              "<p>%s items were tagged a second time by somebody else. From what the two have "
              "in common, the first found ",
              format_count(command_whole(second, "items"), items));
-    report_percent(html, answer_number(second, "found_share"));
+    report_percent(html, reply_number(second, "found_share"));
     html_put(html, " of the tags.</p>\n");
 }
 
 static void write_band(struct html *html, const char *name, const char *about, const json_t *object)
 {
-    const struct answer_estimate x = answer_estimate(object);
+    const struct reply_estimate x = reply_estimate(object);
     html_put(html, "<tr><td class=\"name\">%s<small>%s</small></td>", name, about);
     report_share_cells(html, &x);
 }
@@ -115,7 +115,7 @@ void report_losses(struct html *html, const json_t *completeness)
         table_head(html, "tag");
         for (size_t i = 0; i < json_array_size(tags) && i < REPORT_ROWS; i++) {
             const json_t *tag = json_array_get(tags, i);
-            const struct answer_estimate x = answer_estimate(tag);
+            const struct reply_estimate x = reply_estimate(tag);
             html_put(html, "<tr><td class=\"name\">");
             html_text(html, command_text(tag, "tag"));
             html_put(html, "</td>");

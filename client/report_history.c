@@ -52,8 +52,8 @@ static int course_init(struct course *course, const json_t *history, const char 
         const json_t *period = json_array_get(history, i);
         items += command_number(period, "items");
         course->until[i] = items;
-        course->with[i] = answer_number(json_object_get(period, "with"), name);
-        course->without[i] = answer_number(json_object_get(period, "without"), name);
+        course->with[i] = reply_number(json_object_get(period, "with"), name);
+        course->without[i] = reply_number(json_object_get(period, "without"), name);
     }
     return 0;
 }

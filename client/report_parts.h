@@ -4,8 +4,8 @@
 #ifndef UNDERTAG_CLIENT_REPORT_PARTS_H
 #define UNDERTAG_CLIENT_REPORT_PARTS_H
 
-#include "client/answer.h"
 #include "client/html.h"
+#include "client/reply.h"
 #include "client/report.h"
 
 enum {
@@ -24,7 +24,7 @@ void report_bar(struct html *html, double share, double low, double high);
 
 /* Cells of a table: figures right. */
 void report_count_cell(struct html *html, double count);
-void report_share_cells(struct html *html, const struct answer_estimate *x);
+void report_share_cells(struct html *html, const struct reply_estimate *x);
 
 /* A percentage, or a dash. */
 void report_percent(struct html *html, double share);

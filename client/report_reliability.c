@@ -42,7 +42,7 @@ static void draw_dot(struct html *html, const struct svg_scale *across, const st
                      const json_t *bin, double most)
 {
     double shown = command_number(bin, "shown");
-    double chance = answer_number(bin, "mean_chance");
+    double chance = reply_number(bin, "mean_chance");
     char count[FORMAT_BYTES];
     if (!(shown > 0) || !isfinite(chance)) {
         return;

@@ -17,7 +17,7 @@ static void write_gaps(struct html *html, const json_t *gaps)
         html_put(html, "<span class=\"gap\">");
         html_text(html, command_text(gap, "tag"));
         html_put(html, " <b>");
-        report_percent(html, answer_number(gap, "chance"));
+        report_percent(html, reply_number(gap, "chance"));
         html_put(html, "</b></span> ");
     }
     if (count > GAPS_MOST) {

@@ -1,4 +1,4 @@
-#include "client/answer.h"
+#include "client/reply.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -10,59 +10,59 @@ enum {
     PATH_BYTES = 256
 };
 
-static bool is_kind(const json_t *value, enum answer_kind kind)
+static bool is_kind(const json_t *value, enum reply_kind kind)
 {
     switch (kind) {
-    case ANSWER_TEXT:
+    case REPLY_TEXT:
         return json_is_string(value);
-    case ANSWER_NUMBER:
+    case REPLY_NUMBER:
         return json_is_number(value);
-    case ANSWER_TRUTH:
+    case REPLY_TRUTH:
         return json_is_boolean(value);
-    case ANSWER_OBJECT:
+    case REPLY_OBJECT:
         return json_is_object(value);
-    case ANSWER_OBJECTS:
-    case ANSWER_TEXTS:
-    case ANSWER_LIST:
+    case REPLY_OBJECTS:
+    case REPLY_TEXTS:
+    case REPLY_LIST:
         break;
     }
     return json_is_array(value);
 }
 
-static const char *kind_name(enum answer_kind kind)
+static const char *kind_name(enum reply_kind kind)
 {
     switch (kind) {
-    case ANSWER_TEXT:
+    case REPLY_TEXT:
         return "a text";
-    case ANSWER_NUMBER:
+    case REPLY_NUMBER:
         return "a number";
-    case ANSWER_TRUTH:
+    case REPLY_TRUTH:
         return "true or false";
-    case ANSWER_OBJECT:
+    case REPLY_OBJECT:
         return "an object";
-    case ANSWER_OBJECTS:
-    case ANSWER_TEXTS:
-    case ANSWER_LIST:
+    case REPLY_OBJECTS:
+    case REPLY_TEXTS:
+    case REPLY_LIST:
         break;
     }
     return "a list";
 }
 
-static int fail_kind(const char *path, enum answer_kind kind, struct failure *failure)
+static int fail_kind(const char *path, enum reply_kind kind, struct failure *failure)
 {
     return failure_set(failure, FAILURE_PROTOCOL,
                        "the daemon's answer is not one this client knows: %s is not %s", path,
                        kind_name(kind));
 }
 
-static int check_object(const json_t *object, const struct answer_member *shape, const char *path,
+static int check_object(const json_t *object, const struct reply_member *shape, const char *path,
                         struct failure *failure);
 
 /* Checks what a list holds. */
-static int check_entries(const json_t *list, const struct answer_member *member, const char *path,
+static int check_entries(const json_t *list, const struct reply_member *member, const char *path,
                          struct failure *failure)
 {
-    enum answer_kind kind = member->kind == ANSWER_TEXTS ? ANSWER_TEXT : ANSWER_OBJECT;
+    enum reply_kind kind = member->kind == REPLY_TEXTS ? REPLY_TEXT : REPLY_OBJECT;
     size_t i;
     json_t *entry;
     json_array_foreach(list, i, entry)
@@ -80,7 +80,7 @@ static int check_entries(const json_t *list, const struct answer_member *member,
     return 0;
 }
 
-static int check_member(const json_t *value, const struct answer_member *member, const char *path,
+static int check_member(const json_t *value, const struct reply_member *member, const char *path,
                         struct failure *failure)
 {
     if (member->may_be_null && (!value || json_is_null(value))) {
@@ -89,13 +89,13 @@ static int check_member(const json_t *value, const struct answer_member *member,
     if (!is_kind(value, member->kind)) {
         return fail_kind(path, member->kind, failure);
     }
-    if (member->kind == ANSWER_OBJECTS || member->kind == ANSWER_TEXTS) {
+    if (member->kind == REPLY_OBJECTS || member->kind == REPLY_TEXTS) {
         return check_entries(value, member, path, failure);
     }
     return member->inside ? check_object(value, member->inside, path, failure) : 0;
 }
 
-static int check_object(const json_t *object, const struct answer_member *shape, const char *path,
+static int check_object(const json_t *object, const struct reply_member *shape, const char *path,
                         struct failure *failure)
 {
     for (; shape->name; shape++) {
@@ -109,7 +109,7 @@ static int check_object(const json_t *object, const struct answer_member *shape,
     return 0;
 }
 
-int answer_check(const json_t *result, const struct answer_member *shape, struct failure *failure)
+int reply_check(const json_t *result, const struct reply_member *shape, struct failure *failure)
 {
     if (!json_is_object(result)) {
         return failure_set(failure, FAILURE_PROTOCOL,
@@ -118,23 +118,23 @@ int answer_check(const json_t *result, const struct answer_member *shape, struct
     return check_object(result, shape, "", failure);
 }
 
-double answer_number(const json_t *object, const char *name)
+double reply_number(const json_t *object, const char *name)
 {
     const json_t *value = json_object_get(object, name);
     return json_is_number(value) ? json_number_value(value) : NAN;
 }
 
-struct answer_estimate answer_estimate(const json_t *object)
+struct reply_estimate reply_estimate(const json_t *object)
 {
-    return (struct answer_estimate){.share = answer_number(object, "share"),
-                                    .low = answer_number(object, "low"),
-                                    .high = answer_number(object, "high"),
-                                    .given = answer_number(object, "given"),
-                                    .missing = answer_number(object, "missing"),
-                                    .from = command_text(object, "from")};
+    return (struct reply_estimate){.share = reply_number(object, "share"),
+                                   .low = reply_number(object, "low"),
+                                   .high = reply_number(object, "high"),
+                                   .given = reply_number(object, "given"),
+                                   .missing = reply_number(object, "missing"),
+                                   .from = command_text(object, "from")};
 }
 
-const char *answer_source(const char *from)
+const char *reply_source(const char *from)
 {
     static const char *const SOURCES[][2] = {{"curve", "the curve of all tags"},
                                              {"checks", "spot checks"},

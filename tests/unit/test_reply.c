@@ -1,5 +1,5 @@
 /* What a command relies on is there before anything is shown. */
-#include "client/answer.h"
+#include "client/reply.h"
 
 #include <setjmp.h>
 #include <stdarg.h>
@@ -12,20 +12,20 @@
 
 #include "tests/unit/jsons.h"
 
-static const struct answer_member ENTRY[] = {
-    {"tag", ANSWER_TEXT, false, NULL}, {"share", ANSWER_NUMBER, true, NULL}, {0}};
+static const struct reply_member ENTRY[] = {
+    {"tag", REPLY_TEXT, false, NULL}, {"share", REPLY_NUMBER, true, NULL}, {0}};
 
-static const struct answer_member SHAPE[] = {{"seq", ANSWER_NUMBER, false, NULL},
-                                             {"names", ANSWER_TEXTS, true, NULL},
-                                             {"tags", ANSWER_OBJECTS, true, ENTRY},
-                                             {0}};
+static const struct reply_member SHAPE[] = {{"seq", REPLY_NUMBER, false, NULL},
+                                            {"names", REPLY_TEXTS, true, NULL},
+                                            {"tags", REPLY_OBJECTS, true, ENTRY},
+                                            {0}};
 
 /* Checks `text` (with ' for ") and expects a sentence that ends in `end`; "": none. */
 static void assert_check(const char *text, const char *end)
 {
     struct failure failure = {0};
     json_t *result = json_of(text);
-    assert_int_equal(answer_check(result, SHAPE, &failure), *end ? FAILURE_PROTOCOL : 0);
+    assert_int_equal(reply_check(result, SHAPE, &failure), *end ? FAILURE_PROTOCOL : 0);
     size_t length = strlen(failure.message);
     assert_true(length >= strlen(end));
     assert_string_equal(failure.message + length - strlen(end), end);
@@ -66,7 +66,7 @@ static void what_is_not_known_of_an_estimate_is_not_a_number(void **state)
 {
     (void)state;
     json_t *object = json_of("{'share':null,'low':0.25,'given':7,'missing':2.5,'from':'both'}");
-    struct answer_estimate x = answer_estimate(object);
+    struct reply_estimate x = reply_estimate(object);
     assert_true(isnan(x.share) && isnan(x.high));
     assert_true(x.low == 0.25 && x.given == 7 && x.missing == 2.5);
     assert_string_equal(x.from, "both");

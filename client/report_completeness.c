@@ -13,7 +13,7 @@ static void table_head(struct html *html, const char *what)
     html_put(html,
              "<table>\n<thead><tr><th>%s</th><th class=\"n\">given</th><th class=\"n\">missing</th>"
              "<th class=\"n\">on record</th><th "
-             "class=\"n\">between</th><th></th></tr></thead>\n<tbody>\n",
+             "class=\"n soft\">between</th><th></th></tr></thead>\n<tbody>\n",
              what);
 }
 

@@ -24,7 +24,7 @@ enum {
 };
 
 static const struct args_option OPTIONS[] = {
-    [MOST] = {"most", ARGS_WHOLE, "N", 0, 10000,
+    [MOST] = {"most", ARGS_WHOLE, "N", 1, 1000,
               "show at most N of the tags that lose most (default 20)"},
     [HOW] = {"how", ARGS_FLAG, NULL, 0, 0, "explain where each figure comes from"},
 };

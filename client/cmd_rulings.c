@@ -205,7 +205,7 @@ enum {
 };
 
 enum {
-    SAMPLE_MOST = 10000
+    SAMPLE_MOST = 1000
 };
 
 static const struct args_option SAMPLE_OPTIONS[] = {

@@ -45,37 +45,32 @@ static int explain_share(const struct screen *screen, const struct reply_estimat
                    format_share(all->share, share));
 }
 
-/* The share on record that the curve without a fit gives a tag of so many uses is the daemon's to
- * tell; the formula is named, and what went into it. */
+/* The curve as the daemon has it: as published until spot checks have shown something. */
 static int explain_missing(const struct screen *screen, const json_t *curve)
 {
     char trials[FORMAT_BYTES];
-    char basis[256];
+    char basis[320];
     if (!json_is_object(curve)) {
         return 0;
     }
-    (void)format_count(command_whole(curve, "trials"), trials);
     if (json_is_true(json_object_get(curve, "fitted"))) {
         (void)snprintf(basis, sizeof basis,
-                       "It was fitted to this desk: to %s uses of tags found in spot checks, each "
-                       "of which had been given or forgotten.",
-                       trials);
-    } else if (command_whole(curve, "trials") == 0) {
-        (void)snprintf(basis, sizeof basis,
-                       "It is as published: no spot check has shown yet how it is at this desk.");
+                       "Starting from what is published, it was fitted to %s uses of tags that "
+                       "spot checks found, each of which had been given or forgotten; the fewer "
+                       "they are, the closer it stays to what is published.",
+                       format_amount(command_number(curve, "trials"), trials));
     } else {
         (void)snprintf(basis, sizeof basis,
-                       "It is as published and not fitted to this desk, for which the %s uses of "
-                       "tags found in spot checks so far do not suffice.",
-                       trials);
+                       "It is as published: no spot check has shown yet how it is at this desk.");
     }
     return explain(screen, "Missing",
                    "A tag that is often given is seldom forgotten, a rare one often. For a tag "
                    "given n times unprompted, a curve says what share p of its true uses is on "
-                   "record; then n x (1 / p - 1) more are expected to be missing. The curve is "
-                   "p = 1 / (1 + C x (n + B)^-A) (Jain, Prabhu and Varma 2016), here with A = %.2f "
-                   "and B = %.2f. %s Tags that were taken from proposals, ruled on or checked are "
-                   "known and not reckoned with the curve.",
+                   "record; then about n x (1 / p - 1) more are missing (a little fewer for the "
+                   "rarest), less those found since by rulings. The curve is p = 1 / (1 + C x (n + "
+                   "B)^-A) (Jain, Prabhu and Varma 2016), here with A = %.2f and B = %.2f. %s Tags "
+                   "that were taken from proposals and items that were checked are known, and not "
+                   "reckoned with the curve.",
                    command_number(curve, "a"), command_number(curve, "b"), basis);
 }
 
@@ -95,9 +90,10 @@ static int explain_interval(const struct screen *screen, const struct reply_esti
     (void)format_share(all->high, high);
     if (strcmp(all->from, "curve") == 0) {
         return explain(screen, "Between",
-                       "%s to %s for all tags together. No spot checks stand behind it yet: it "
-                       "says how far the published variants of the curve are apart, and this desk "
-                       "may lie outside. Check items that 'undertag sample' draws to learn more.",
+                       "%s to %s for all tags together, with a probability of 90 %%, if this desk "
+                       "forgets about as much as the published curve assumes. No spot check "
+                       "stands behind it yet: check items that 'undertag sample' draws to learn "
+                       "how it is here.",
                        low, high);
     }
     return explain(screen, "Between",

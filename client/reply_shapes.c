@@ -55,7 +55,7 @@ static const struct reply_member WRONG[] = {
     {"high", REPLY_NUMBER, true, NULL},  {"wrong", REPLY_NUMBER, false, NULL},
     {"seen", REPLY_NUMBER, false, NULL}, {0}};
 
-static const struct reply_member CHAPMAN[] = {{"true", REPLY_NUMBER, false, NULL},
+static const struct reply_member CHAPMAN[] = {{"true", REPLY_NUMBER, true, NULL},
                                               {"low", REPLY_NUMBER, true, NULL},
                                               {"high", REPLY_NUMBER, true, NULL},
                                               {0}};

@@ -75,10 +75,21 @@ static int add_figure(struct table *table, const json_t *band, const struct figu
                                 format_change(reply_number(gain, "value"), change), between});
 }
 
-/* Nothing for a band that the answer does not have. */
+static bool is_known(const json_t *band)
+{
+    const json_t *with = json_object_get(band, "with");
+    for (size_t i = 0; i < FIGURES_COUNT; i++) {
+        if (!isnan(reply_number(json_object_get(with, FIGURES[i].name), "value"))) {
+            return true;
+        }
+    }
+    return false;
+}
+
+/* Nothing for a band of which nothing is known. */
 static int print_band(const struct client *client, const char *heading, const json_t *band)
 {
-    if (!json_is_object(band)) {
+    if (!is_known(band)) {
         return 0;
     }
     struct table *table =

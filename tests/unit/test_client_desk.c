@@ -329,6 +329,17 @@ static void a_figure_that_is_not_known_is_a_dash(void **state)
     assert_non_null(strstr(fixture->out, "recall at 10  0.400  0.020        -     -        -\n"));
 }
 
+static void a_band_of_which_nothing_is_known_is_left_out(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture->result = "{\"items\":9,\"bands\":{\"all\":{\"with\":{\"P@1\":{\"value\":0.5,\"error\":"
+                      "null}}},\"head\":{\"with\":{\"P@1\":{\"value\":null,\"error\":null}}}},"
+                      "\"reliability\":[]}";
+    assert_int_equal(run(fixture, "", "standing", NULL), 0);
+    assert_non_null(strstr(fixture->out, "All tags\n"));
+    assert_null(strstr(fixture->out, "Head"));
+}
+
 /* 10 of 40 shown with a chance between 0.2 and 0.4 were confirmed: 0.25. */
 static void reliability_compares_chances_with_rulings(void **state)
 {
@@ -417,6 +428,7 @@ int main(void)
         TEST(an_answer_with_a_hole_in_it_is_not_shown),
         TEST(figures_have_their_full_names_and_the_gain),
         TEST(a_figure_that_is_not_known_is_a_dash),
+        TEST(a_band_of_which_nothing_is_known_is_left_out),
         TEST(reliability_compares_chances_with_rulings),
         TEST(before_the_first_item_there_is_nothing_to_stand_on),
         TEST(show_has_the_proposals_the_check_and_the_second_taggings),

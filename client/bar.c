@@ -31,3 +31,32 @@ void bar_draw(double share, unsigned columns, bool unicode, char *bar)
     }
     (void)stpcpy(end, BLOCKS[length]);
 }
+
+void bar_draw_between(double share, double low, double high, unsigned columns, bool unicode,
+                      char *bar)
+{
+    if (isnan(share) || isnan(low) || isnan(high)) {
+        bar_draw(share, columns, unicode, bar);
+        return;
+    }
+    assert(columns >= 1 && columns <= BAR_COLUMNS_MOST);
+    /* U+2588 full, U+2593 dark, U+2591 light; each from where the one before it ends. */
+    const struct {
+        double until;
+        const char *block;
+    } parts[] = {{fmin(low, share), unicode ? "\u2588" : "#"},
+                 {share, unicode ? "\u2593" : "="},
+                 {fmax(high, share), unicode ? "\u2591" : "-"}};
+    char *end = bar;
+    *end = '\0';
+    unsigned column = 0;
+    for (size_t i = 0; i < sizeof parts / sizeof parts[0]; i++) {
+        unsigned until = (unsigned)lround(between_0_and_1(parts[i].until) * (double)columns);
+        for (; column < until; column++) {
+            end = stpcpy(end, parts[i].block);
+        }
+    }
+    if (column == 0 && share > 0) {
+        (void)stpcpy(end, parts[1].block);
+    }
+}

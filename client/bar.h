@@ -18,4 +18,12 @@ enum {
  */
 void bar_draw(double share, unsigned columns, bool unicode, char *bar);
 
+/*
+ * The same with what is known of the share: full blocks up to `low`, dark ones from there to the
+ * share, light ones on to `high`, by whole columns ('#', '=' and '-' without `unicode`). Where
+ * `low` or `high` is not a number, the plain bar.
+ */
+void bar_draw_between(double share, double low, double high, unsigned columns, bool unicode,
+                      char *bar);
+
 #endif

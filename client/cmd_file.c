@@ -14,6 +14,7 @@
 #include "client/feed.h"
 #include "client/format.h"
 #include "client/progress.h"
+#include "client/request.h"
 #include "client/text.h"
 
 enum {
@@ -25,7 +26,8 @@ enum {
     FILED_AT,
     FIELD,
     PROMPTED,
-    DECLINED
+    DECLINED,
+    INDEPENDENT
 };
 
 enum {
@@ -47,32 +49,11 @@ static const struct args_option OPTIONS[] = {
     [PROMPTED] = {"prompted", ARGS_LIST, "TAG", 0, 0,
                   "one of the tags that was taken from proposals"},
     [DECLINED] = {"declined", ARGS_LIST, "TAG", 0, 0, "a tag that was proposed and turned down"},
+    [INDEPENDENT] = {"independent", ARGS_FLAG, NULL, 0, 0,
+                     "a second tagging by another --tagger, kept beside the first as evidence"},
 };
 
 /* --- one item ------------------------------------------------------------------------------- */
-
-static int add_text(json_t *params, const char *name, const struct args_value *value,
-                    struct failure *failure)
-{
-    if (!value->given) {
-        return 0;
-    }
-    return json_object_set_new(params, name, json_string(value->text)) ? failure_memory(failure)
-                                                                       : 0;
-}
-
-static int add_list(json_t *params, const char *name, const struct args_value *value,
-                    struct failure *failure)
-{
-    json_t *list = json_array();
-    for (size_t i = 0; i < value->list_count; i++) {
-        if (json_array_append_new(list, json_string(value->list[i]))) {
-            json_decref(list);
-            return failure_memory(failure);
-        }
-    }
-    return json_object_set_new(params, name, list) ? failure_memory(failure) : 0;
-}
 
 /* Puts a value beside what the field holds already. */
 static int add_field(json_t *fields, const char *field, struct failure *failure)
@@ -144,16 +125,20 @@ static int make_item(const struct client *client, const struct args_value *value
                  {TAGGER, "tagger"},
                  {FILED_AT, "filed_at"}};
     for (size_t i = 0; i < sizeof TEXTS / sizeof TEXTS[0] && !code; i++) {
-        code = add_text(params, TEXTS[i].member, &values[TEXTS[i].option], failure);
+        code = request_text(params, TEXTS[i].member, &values[TEXTS[i].option], failure);
     }
     if (!code) {
-        code = add_list(params, "tags", &values[TAG], failure);
+        code = request_list(params, "tags", &values[TAG], failure);
     }
     if (!code && values[PROMPTED].given) {
-        code = add_list(params, "prompted", &values[PROMPTED], failure);
+        code = request_list(params, "prompted", &values[PROMPTED], failure);
     }
     if (!code && values[DECLINED].given) {
-        code = add_list(params, "declined", &values[DECLINED], failure);
+        code = request_list(params, "declined", &values[DECLINED], failure);
+    }
+    if (!code && values[INDEPENDENT].given &&
+        json_object_set_new(params, "independent", json_true())) {
+        code = failure_memory(failure);
     }
     if (!code) {
         code = add_fields(params, &values[FIELD], failure);
@@ -453,8 +438,9 @@ const struct command command_file = {
         "  {\"id\": \"log/42\", \"title\": \"Fog at noon\", \"text\": \"...\", \"tags\": "
         "[\"fog\"]}\n"
         "\n"
-        "and may hold fields, language, tagger, filed_at, prompted and declined besides. A line "
-        "that is refused is reported as FILE:LINE: REASON and the others go on. What is "
+        "and may hold fields, language, tagger, filed_at, prompted, declined and independent "
+        "besides. A line that is refused is reported as FILE:LINE: REASON and the others go on. "
+        "What is "
         "acknowledged is durable. To run the same command again after a break is safe: what was "
         "filed already counts as 'same'.\n"
         "\n"

@@ -3,10 +3,12 @@
  */
 #include <stdio.h>
 #include <stdlib.h>
+#include <string.h>
 
 #include "client/command.h"
 #include "client/facts.h"
 #include "client/format.h"
+#include "client/request.h"
 #include "client/table.h"
 
 /* --- show ----------------------------------------------------------------------------------- */
@@ -70,16 +72,6 @@ static int print_fields(const struct client *client, const json_t *fields)
     return 0;
 }
 
-static int print_checked(const struct client *client, const json_t *checked)
-{
-    if (!json_is_object(checked)) {
-        return 0;
-    }
-    const char *drawn = command_text(checked, "drawn");
-    return facts_printf(&client->out, FACTS_NAME_COLUMNS, "checked", "%s%s%s",
-                        command_text(checked, "at"), *drawn ? ", drawn " : "", drawn);
-}
-
 /* "2031-05-04T10:00:00Z by keeper-3", or one of both, or "". */
 static int print_filed(const struct client *client, const json_t *item)
 {
@@ -113,6 +105,43 @@ static bool differs(const json_t *filed, const json_t *tags)
     return json_array_size(filed) != json_array_size(tags);
 }
 
+/* The check, and its tags where they are not the current ones any more. */
+static int print_checked(const struct client *client, const json_t *checked, const json_t *tags)
+{
+    const json_t *list = json_object_get(checked, "tags");
+    if (!json_is_object(checked)) {
+        return 0;
+    }
+    const char *checker = command_text(checked, "checker");
+    const char *drawn =
+        strcmp(command_text(checked, "drawn"), "random") == 0 ? ", drawn at random" : ", picked";
+    if (facts_printf(&client->out, FACTS_NAME_COLUMNS, "checked", "%s%s%s%s",
+                     command_text(checked, "at"), *checker ? " by " : "", checker, drawn)) {
+        return -1;
+    }
+    return differs(list, tags) ? fact_list(client, "as checked", list) : 0;
+}
+
+/* Each second tagging: who and when, and its tags below. */
+static int print_second(const struct client *client, const json_t *taggings)
+{
+    size_t i;
+    json_t *tagging;
+    json_array_foreach(taggings, i, tagging)
+    {
+        const char *at = command_text(tagging, "filed_at");
+        const char *tagger = command_text(tagging, "tagger");
+        const json_t *tags = json_object_get(tagging, "tags");
+        if (facts_printf(&client->out, FACTS_NAME_COLUMNS, "tagged again", "%s%s%s%s%s", at,
+                         *at && *tagger ? " " : "", *tagger ? "by " : "", tagger,
+                         json_array_size(tags) > 0 ? "" : ", without a tag") ||
+            fact_list(client, "", tags)) {
+            return -1;
+        }
+    }
+    return 0;
+}
+
 static int print_item(const struct client *client, const json_t *item)
 {
     const json_t *tags = json_object_get(item, "tags");
@@ -131,9 +160,12 @@ static int print_item(const struct client *client, const json_t *item)
                      ? fact_list(client, "tags", tags)
                      : facts_print(&client->out, FACTS_NAME_COLUMNS, "tags", "none");
     if (result || (differs(filed, tags) && fact_list(client, "as filed", filed)) ||
+        fact_list(client, "prompted", json_object_get(item, "prompted")) ||
+        fact_list(client, "declined", json_object_get(item, "declined")) ||
         fact_list(client, "ruled in", json_object_get(item, "belongs")) ||
         fact_list(client, "ruled out", json_object_get(item, "not")) ||
-        print_checked(client, json_object_get(item, "checked"))) {
+        print_checked(client, json_object_get(item, "checked"), tags) ||
+        print_second(client, json_object_get(item, "second"))) {
         return -1;
     }
     const char *text = command_text(item, "text");
@@ -144,22 +176,11 @@ static int print_item(const struct client *client, const json_t *item)
     return 0;
 }
 
-static int params_with_id(const char *id, json_t **ret_params, struct failure *failure)
-{
-    json_t *string = NULL;
-    int code = command_string(id, "the ID", &string, failure);
-    if (code) {
-        return code;
-    }
-    *ret_params = json_pack("{s:o}", "id", string);
-    return *ret_params ? 0 : failure_memory(failure);
-}
-
 static int run_show(struct client *client, const struct args *args, struct failure *failure)
 {
     json_t *params = NULL;
     struct wire_answer answer = {0};
-    int code = params_with_id(args->words[0], &params, failure);
+    int code = request_new("id", args->words[0], "the ID", &params, failure);
     if (!code) {
         code = command_ask_take(client, "item.show", params, &answer, failure);
     }
@@ -178,7 +199,7 @@ static int run_show(struct client *client, const struct args *args, struct failu
 const struct command command_show = {
     .name = "show",
     .synopsis = "ID",
-    .summary = "a filed item: its text, its tags, what was ruled on it",
+    .summary = "a filed item: its text, its tags, what was ruled and checked",
     .about = "Shows the item as it stands, every acknowledged change included.",
     .least_words = 1,
     .most_words = 1,
@@ -192,7 +213,7 @@ static int withdraw(struct client *client, struct wire *wire, const char *id,
 {
     json_t *params = NULL;
     struct wire_answer answer = {0};
-    int code = params_with_id(id, &params, failure);
+    int code = request_new("id", id, "the ID", &params, failure);
     if (!code) {
         code = wire_call_take(wire, "item.withdraw", params, &answer, failure);
     }

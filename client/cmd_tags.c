@@ -155,7 +155,7 @@ static int run_list(struct client *client, const struct args *args, struct failu
 const struct command command_tags_list = {
     .name = "tags list",
     .synopsis = "",
-    .summary = "the vocabulary: how often each tag is given, and how often missing",
+    .summary = "the vocabulary: how often each tag is given, how often missing",
     .about = "For each tag: the items it is given to, the number of items where it is expected to "
              "be missing, and the share of its true uses that are on record (its propensity).",
     .options = LIST_OPTIONS,

@@ -41,6 +41,26 @@ int command_ask_take(const struct client *client, const char *method, json_t *pa
     return code;
 }
 
+int command_show_take(const struct client *client, const struct command_question *question,
+                      json_t *params, const struct args *args, struct failure *failure)
+{
+    struct wire_answer answer = {0};
+    int code = command_ask_take(client, question->method, params, &answer, failure);
+    if (code) {
+        return code;
+    }
+    if (client->json) {
+        command_print_json(client, &answer);
+    } else {
+        code = reply_check(answer.result, question->shape, failure);
+    }
+    if (!code && !client->json && question->print(client, answer.result, args)) {
+        code = failure_memory(failure);
+    }
+    wire_answer_deinit(&answer);
+    return code;
+}
+
 void command_print_json(const struct client *client, const struct wire_answer *answer)
 {
     FILE *stream = client->out.stream;

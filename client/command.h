@@ -12,6 +12,7 @@
 
 #include "client/args.h"
 #include "client/failure.h"
+#include "client/reply.h"
 #include "client/screen.h"
 #include "client/wire.h"
 
@@ -43,6 +44,13 @@ extern const struct command command_list;
 extern const struct command command_tags_list;
 extern const struct command command_tags_show;
 extern const struct command command_state;
+extern const struct command command_rule;
+extern const struct command command_check;
+extern const struct command command_sample;
+extern const struct command command_worklist;
+extern const struct command command_completeness;
+extern const struct command command_standing;
+extern const struct command command_report;
 
 /* Writes "undertag: " and the sentence, cleaned, to standard error. */
 void command_complain(const struct client *client, const char *format, ...)
@@ -51,6 +59,21 @@ void command_complain(const struct client *client, const char *format, ...)
 /* Connects, asks one thing, closes. Takes the reference to `params` (NULL: no memory). */
 int command_ask_take(const struct client *client, const char *method, json_t *params,
                      struct wire_answer *ret_answer, struct failure *failure)
+    __attribute__((warn_unused_result));
+
+/* What to ask, and how to show the answer. */
+struct command_question {
+    const char *method;
+    const struct reply_member *shape; /* what `print` relies on */
+    int (*print)(const struct client *client, const json_t *result, const struct args *args);
+};
+
+/*
+ * Asks and shows: by `print` (-1: no memory) once the answer has the shape, or with --json as it
+ * came. Takes the reference to `params` (NULL: no memory).
+ */
+int command_show_take(const struct client *client, const struct command_question *question,
+                      json_t *params, const struct args *args, struct failure *failure)
     __attribute__((warn_unused_result));
 
 /*

@@ -1,6 +1,7 @@
 #include "client/format.h"
 
 #include <math.h>
+#include <stdbool.h>
 #include <stdio.h>
 #include <string.h>
 
@@ -61,5 +62,69 @@ char *format_share(double share, char *out)
 {
     int digits = share > 0 && share < 0.00995 ? 3 : 2;
     (void)snprintf(out, FORMAT_BYTES, "%.*f", digits, share);
+    return out;
+}
+
+static char *dash(char *out)
+{
+    (void)snprintf(out, FORMAT_BYTES, "-");
+    return out;
+}
+
+char *format_figure(double figure, char *out)
+{
+    if (!isfinite(figure)) {
+        return dash(out);
+    }
+    (void)snprintf(out, FORMAT_BYTES, "%.3f", figure);
+    return out;
+}
+
+char *format_amount(double amount, char *out)
+{
+    if (!isfinite(amount) || fabs(amount) > 9e15) {
+        return dash(out);
+    }
+    if (fabs(amount) < 9.95 && fabs(amount - round(amount)) > 1e-9) {
+        (void)snprintf(out, FORMAT_BYTES, "%.1f", amount);
+        return out;
+    }
+    return format_count((int64_t)llround(amount), out);
+}
+
+char *format_about(double amount, char *out)
+{
+    double unit = fabs(amount) >= 100 ? pow(10, floor(log10(fabs(amount))) - 1) : 1;
+    return format_amount(isfinite(amount) ? round(amount / unit) * unit : amount, out);
+}
+
+char *format_between(double low, double high, char *out)
+{
+    char least[FORMAT_BYTES];
+    char most[FORMAT_BYTES];
+    if (!isfinite(low) || !isfinite(high)) {
+        return dash(out);
+    }
+    (void)snprintf(out, FORMAT_BYTES, "%.12s to %.12s", format_share(low, least),
+                   format_share(high, most));
+    return out;
+}
+
+char *format_percent(double share, char *out)
+{
+    if (!isfinite(share)) {
+        return dash(out);
+    }
+    bool fine = (share > 0 && share < 0.0995) || (share > 0.99 && share < 1);
+    (void)snprintf(out, FORMAT_BYTES, "%.*f %%", fine ? 1 : 0, 100 * share);
+    return out;
+}
+
+char *format_change(double ratio, char *out)
+{
+    if (!isfinite(ratio)) {
+        return dash(out);
+    }
+    (void)snprintf(out, FORMAT_BYTES, "%+.*f %%", fabs(ratio) < 0.0995 ? 1 : 0, 100 * ratio);
     return out;
 }

@@ -60,6 +60,37 @@ static void a_bar_never_takes_more_than_its_columns(void **state)
     }
 }
 
+/* Of ten columns: full up to the low end, dark to the share, light to the high end. */
+static void an_interval_is_drawn_around_the_end_of_its_bar(void **state)
+{
+    (void)state;
+    char bar[BAR_BYTES];
+    bar_draw_between(.5, .3, .8, 10, true, bar);
+    assert_string_equal(bar, "███▓▓░░░");
+    bar_draw_between(.5, .3, .8, 10, false, bar);
+    assert_string_equal(bar, "###==---");
+}
+
+static void without_an_interval_the_bar_is_a_plain_one(void **state)
+{
+    (void)state;
+    char bar[BAR_BYTES];
+    bar_draw_between(.5, NAN, .8, 4, true, bar);
+    assert_string_equal(bar, "██");
+    bar_draw_between(NAN, .2, .8, 4, true, bar);
+    assert_string_equal(bar, "");
+}
+
+static void an_interval_never_takes_more_than_its_columns(void **state)
+{
+    (void)state;
+    char bar[BAR_BYTES];
+    bar_draw_between(.9, .5, 7, BAR_COLUMNS_MOST, true, bar);
+    assert_int_equal(text_width(bar), BAR_COLUMNS_MOST);
+    bar_draw_between(.01, .001, .012, 10, true, bar); /* all of it less than half a column */
+    assert_string_equal(bar, "▓");
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -68,6 +99,9 @@ int main(void)
         cmocka_unit_test(a_share_out_of_range_is_drawn_as_the_nearest_one),
         cmocka_unit_test(without_unicode_a_bar_is_made_of_whole_marks),
         cmocka_unit_test(a_bar_never_takes_more_than_its_columns),
+        cmocka_unit_test(an_interval_is_drawn_around_the_end_of_its_bar),
+        cmocka_unit_test(without_an_interval_the_bar_is_a_plain_one),
+        cmocka_unit_test(an_interval_never_takes_more_than_its_columns),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -60,7 +60,7 @@ static void read_entry(void *user, const struct model *model, uint64_t learned)
     const struct worklist_entry *entry = worklist_find(model_worklist(model), job->wanted);
     job->entry = entry ? *entry : (struct worklist_entry){.number = job->wanted};
     for (uint32_t i = 0; i < job->entry.gap_count; i++) {
-        job->chances[i] = model_gap_chance(model, &job->entry.gaps[i]);
+        job->chances[i] = model_gap_chance(model, &job->entry, &job->entry.gaps[i]);
     }
 }
 

@@ -90,6 +90,7 @@ static int load_entry(void *user, const struct model_store_entry *entry)
     struct worklist_entry restored = {.number = entry->number,
                                       .scored = entry->scored,
                                       .counted = entry->counted,
+                                      .promise = entry->promise,
                                       .gap_count = entry->tag_count};
     if (entry->tag_count > WORKLIST_GAPS) {
         return -EINVAL;
@@ -245,6 +246,7 @@ static int store_entry(void *user, const struct worklist_entry *entry)
                                  &(const struct model_store_entry){.number = entry->number,
                                                                    .scored = entry->scored,
                                                                    .counted = entry->counted,
+                                                                   .promise = entry->promise,
                                                                    .tag_count = entry->gap_count,
                                                                    .tags = tags,
                                                                    .values = values},

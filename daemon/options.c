@@ -104,7 +104,7 @@ static const struct option OPTIONS[] = {
      "A of the propensity curve."},
     {"propensity_b", TYPE_NUMBER, AT(propensity_b), 0, 1000, "1.5", NULL, OPTIONS_LEARNING, false,
      "B of the propensity curve."},
-    {"evidence_half_life", TYPE_NUMBER, AT(evidence_half_life), 100, 1e12, "20000", NULL,
+    {"evidence_half_life", TYPE_NUMBER, AT(evidence_half_life), 100, 1e12, "5000", NULL,
      OPTIONS_LEARNING, false, "Items after which evidence behind the chances counts half."},
     {"shadow", TYPE_SWITCH, AT(shadow), 0, 0, "on", ON_OFF, OPTIONS_LEARNING, false,
      "Teach a second learner without the correction beside, to show what the correction gains; "

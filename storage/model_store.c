@@ -277,6 +277,7 @@ static int load_entry(void *user, struct kv_cursor *at, struct kv_bytes key, str
     entry.number = codec_u64_of_key(key.data);
     entry.scored = codec_get_u64(&reader);
     entry.counted = codec_get_u64(&reader);
+    entry.promise = codec_get_f32(&reader);
     entry.tag_count = codec_get_u32(&reader);
     for (uint32_t i = 0; i < entry.tag_count && i < MODEL_STORE_ENTRY_TAGS; i++) {
         tags[i] = codec_get_u32(&reader);
@@ -498,6 +499,7 @@ int model_store_put_entry(struct model_store_writing *writing,
     struct codec_writer *record = begin_record(writing);
     codec_put_u64(record, entry->scored);
     codec_put_u64(record, entry->counted);
+    codec_put_f32(record, entry->promise);
     codec_put_u32(record, entry->tag_count);
     for (uint32_t i = 0; i < entry->tag_count; i++) {
         codec_put_u32(record, entry->tags[i]);

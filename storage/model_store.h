@@ -85,6 +85,7 @@ struct model_store_entry {
     uint64_t number;
     uint64_t scored;
     uint64_t counted;
+    float promise;
     uint32_t tag_count;
     const uint32_t *tags;
     const float *values;

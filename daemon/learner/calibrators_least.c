@@ -9,7 +9,7 @@
 #include "daemon/learner/calibrators.h"
 
 /* A limit that chance passes once in some 9,000 times: the greatest of many is taken. */
-static const double SURE_Z = 3.7;
+static const double SURE_Z = 2.3;
 
 /* Fewer pairs say nothing. */
 static const double LEAST_PAIRS = 20.0;

@@ -16,6 +16,9 @@
  */
 static const double UNSHARED_WORD_SHARE = 0.5;
 
+/* Below this chance a gap is not looked at twice: there are thousands of them. */
+static const double AGREEMENT_LEAST_CHANCE = 0.02;
+
 /*
  * A scratch may outlive its model, and the next model may lie where that one lay: each begins its
  * versions where no other comes to, one beyond a million million changes of the one before.
@@ -38,6 +41,7 @@ int model_new(const struct model_settings *settings, const struct siphash_key *k
     made->growth = propensity_growth(0.0);
     propensity_fit_default(&settings->curve, &made->fit);
     calibrators_init(&made->calibrators);
+    agreement_init(&made->agreement);
     model_refit_curves(made, true);
     if (dictionary_new(key, &made->dictionary) < 0 ||
         weights_new(&settings->weights, &made->weights) < 0 ||
@@ -142,18 +146,29 @@ double model_belongs_chance(const struct model *model, uint32_t tag, double scor
     return calibrators_chance(&model->curves, model_propensity(model, tag), score);
 }
 
-double model_missing_of_belongs(const struct model *model, uint32_t tag, double propensity,
-                                double belongs)
+double model_allowed_propensity(const struct model *model, uint32_t tag, double propensity)
 {
-    size_t class = calibrators_class(model->tags[tag].unprompted, model->documents);
-    return propensity_missing_chance(fmax(propensity, model->least[class]), belongs);
+    return fmax(propensity,
+                model->least[calibrators_class(model->tags[tag].unprompted, model->documents)]);
 }
 
-double model_missing_chance(const struct model *model, uint32_t tag, double score)
+double model_missing_of_belongs(const struct model *model, uint32_t tag, double propensity,
+                                double belongs, double promise)
+{
+    double allowed = model_allowed_propensity(model, tag, propensity);
+    double missing = propensity_missing_chance(allowed, belongs);
+    if (missing < AGREEMENT_LEAST_CHANCE) {
+        return missing;
+    }
+    double of_others = promise - (belongs >= AGREEMENT_LEAST ? missing : 0.0);
+    return agreement_chance(&model->agreement, of_others, missing);
+}
+
+double model_missing_chance(const struct model *model, uint32_t tag, double score, double promise)
 {
     double propensity = model_propensity(model, tag);
     return model_missing_of_belongs(model, tag, propensity,
-                                    calibrators_chance(&model->curves, propensity, score));
+                                    calibrators_chance(&model->curves, propensity, score), promise);
 }
 
 bool model_holds(const uint32_t *tags, size_t count, uint32_t tag)

@@ -157,8 +157,9 @@ int model_relist(struct model *model, const struct worklist_entry *entry)
 /* Takes out what can be scored no more. */
 int model_delist(struct model *model, uint64_t number) __attribute__((warn_unused_result));
 
-/* P(missing | not given) of a gap of the worklist, as of now. */
-double model_gap_chance(const struct model *model, const struct worklist_gap *gap);
+/* P(missing | not given) of a gap of an entry of the worklist, as of now. */
+double model_gap_chance(const struct model *model, const struct worklist_entry *entry,
+                        const struct worklist_gap *gap);
 
 #define MODEL_ANY_TAG UINT32_MAX
 

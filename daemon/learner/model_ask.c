@@ -20,6 +20,7 @@ struct asker {
     const struct model_question *question;
     struct model_scratch *scratch;
     bool by_prevalence; /* the item holds no word that any tag has a weight for */
+    double promise;     /* of a tagged item; see agreement.h */
 };
 
 /* --- the chance of one tag ----------------------------------------------------------------------
@@ -42,7 +43,7 @@ static double tag_chance(const struct asker *asker, uint32_t tag, double score)
                          ? prevalence(asker->model, tag, propensity)
                          : calibrators_chance(&asker->model->curves, propensity, score);
     return asker->question->tagged
-               ? model_missing_of_belongs(asker->model, tag, propensity, belongs)
+               ? model_missing_of_belongs(asker->model, tag, propensity, belongs, asker->promise)
                : belongs;
 }
 
@@ -106,13 +107,14 @@ static bool is_open(const struct asker *asker, uint32_t tag)
 }
 
 /* Marks what may not be proposed; returns what those tags would add at the floor. */
-static chance_sum bar_tags(const struct asker *asker, const uint32_t *tags, size_t count)
+static chance_sum bar_tags(const struct asker *asker, const uint32_t *tags, size_t count,
+                           enum model_mark mark)
 {
     chance_sum sum = 0;
     for (size_t i = 0; i < count; i++) {
         if (tags[i] < asker->model->tag_count && !asker->scratch->barred[tags[i]]) {
             sum += is_open(asker, tags[i]) ? rest_chance(asker, tags[i]) : 0;
-            asker->scratch->barred[tags[i]] = 1;
+            asker->scratch->barred[tags[i]] = (uint8_t)mark;
         }
     }
     return sum;
@@ -300,8 +302,13 @@ int model_ask(const struct model *model, const struct model_question *question,
                               !weights_speak(model->weights, scratch->x, scratch->x_count)};
     size_t count = 0;
     chance_sum expected = 0;
-    chance_sum barred_rest = bar_tags(&asker, question->given, question->given_count) +
-                             bar_tags(&asker, question->excluded, question->excluded_count);
+    chance_sum barred_rest =
+        bar_tags(&asker, question->given, question->given_count, MARK_GIVEN) +
+        bar_tags(&asker, question->excluded, question->excluded_count, MARK_KNOWN_NOT);
+    if (question->tagged) {
+        model_find_best(model, scratch);
+        asker.promise = model_promise(model, scratch);
+    }
     int result = gather(&asker, barred_rest, &count, &expected);
     unbar_tags(&asker, question->given, question->given_count);
     unbar_tags(&asker, question->excluded, question->excluded_count);

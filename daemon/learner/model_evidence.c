@@ -75,6 +75,69 @@ void model_find_best(const struct model *model, struct model_scratch *scratch)
     find_best(model, model->weights, scratch->weights, scratch->own, scratch->best);
 }
 
+/* --- agreement ----------------------------------------------------------------------------------
+ */
+
+/* How pairs hang together changes more slowly than scores, and takes more evidence to tell. */
+static const double AGREEMENT_HALF_LIVES = 8.0;
+
+/* A candidate as the calibrators see it. */
+struct rated {
+    double propensity;
+    double belongs;
+    enum model_mark mark;
+};
+
+static struct rated rate(const struct model *model, const struct model_scratch *scratch,
+                         uint32_t tag, float score)
+{
+    double propensity = model_propensity(model, tag);
+    return (struct rated){.propensity = model_allowed_propensity(model, tag, propensity),
+                          .belongs = calibrators_chance(&model->curves, propensity, (double)score),
+                          .mark = (enum model_mark)scratch->barred[tag]};
+}
+
+/* What a candidate adds to what the item promises. */
+static double promise_of(const struct rated *rated)
+{
+    return rated->mark == MARK_NONE && rated->belongs >= AGREEMENT_LEAST
+               ? propensity_missing_chance(rated->propensity, rated->belongs)
+               : 0.0;
+}
+
+double model_promise(const struct model *model, const struct model_scratch *scratch)
+{
+    double promise = 0.0;
+    for (enum standing_band band = STANDING_HEAD; band < STANDING_BANDS; band++) {
+        const struct candidates *best = &scratch->best[band];
+        for (size_t i = 0; i < best->count; i++) {
+            const struct rated rated = rate(model, scratch, best->tags[i], best->scores[i]);
+            promise += promise_of(&rated);
+        }
+    }
+    return promise;
+}
+
+static void count_agreement(struct model *model, const struct model_scratch *scratch)
+{
+    double promise = model_promise(model, scratch);
+    agreement_age(&model->agreement,
+                  AGREEMENT_HALF_LIVES * model->settings.evidence_half_life_items);
+    for (enum standing_band band = STANDING_HEAD; band < STANDING_BANDS; band++) {
+        const struct candidates *best = &scratch->best[band];
+        for (size_t i = 0; i < best->count; i++) {
+            const struct rated rated = rate(model, scratch, best->tags[i], best->scores[i]);
+            double others = promise - promise_of(&rated);
+            double missing = propensity_missing_chance(rated.propensity, rated.belongs);
+            if (rated.mark == MARK_NONE) {
+                agreement_add_not_given(&model->agreement, others, missing);
+            } else if (rated.mark == MARK_GIVEN) {
+                agreement_add_given(&model->agreement, others, missing, rated.propensity);
+            }
+        }
+    }
+}
+
 /* --- pairs as evidence --------------------------------------------------------------------------
  */
 
@@ -178,9 +241,11 @@ static void count_pairs(struct model *model, const struct model_item *item,
 /* --- the standing -------------------------------------------------------------------------------
  */
 
-/* A proposal on its way into the lists: by falling key, then by its tag. */
+/* A proposal on its way into the lists: by falling key, score, then by its tag, as model_ask
+ * shows them. */
 struct proposed {
     double key;
+    double score;
     uint32_t tag;
     struct ranking_proposal proposal;
 };
@@ -191,6 +256,9 @@ static int compare_proposed(const void *left, const void *right)
     const struct proposed *b = right;
     if (a->key != b->key) {
         return a->key > b->key ? -1 : 1;
+    }
+    if (a->score != b->score) {
+        return a->score > b->score ? -1 : 1;
     }
     return (a->tag > b->tag) - (a->tag < b->tag);
 }
@@ -231,6 +299,7 @@ static void fill_lists(const struct model *model, const struct model_scratch *sc
             double score = (double)best[band].scores[i];
             all[count++] = (struct proposed){
                 .key = by_chance ? model_belongs_chance(model, tag, score) : score,
+                .score = score,
                 .tag = tag,
                 .proposal = {.propensity = propensity_on(model, scratch, tag),
                              .is_hit = scratch->barred[tag] == MARK_GIVEN ||
@@ -296,11 +365,13 @@ static void rate_prompts(struct model *model, const struct model_item *item,
     for (size_t i = 0; i < item->examined_count; i++) {
         uint32_t tag = item->examined[i];
         double score = (double)model_score(model, scratch, tag);
-        standing_ruled(model->standing, model_belongs_chance(model, tag, score), true);
+        if (was_known(model, tag, score)) {
+            standing_ruled(model->standing, model_belongs_chance(model, tag, score), true);
+        }
     }
     for (size_t i = 0; i < item->known_not_count; i++) {
         uint32_t tag = item->known_not[i];
-        if (tag < model->tag_count) {
+        if (tag < model->tag_count && !model_is_unused(model, tag)) {
             double score = (double)model_score(model, scratch, tag);
             standing_ruled(model->standing, model_belongs_chance(model, tag, score), false);
         }
@@ -314,7 +385,9 @@ void model_gather_evidence(struct model *model, const struct model_item *item,
     rate_prompts(model, item, scratch);
     calibrators_age(&model->calibrators, model->settings.evidence_half_life_items);
     model->evidence_items++;
+    count_agreement(model, scratch);
     count_pairs(model, item, scratch);
+    model->evidence_changed = true;
     model_refit_curves(model, false);
 }
 
@@ -346,6 +419,7 @@ void model_refit_curves(struct model *model, bool now)
     }
     calibrators_least(&model->calibrators, model->least);
     calibrators_fit(&model->calibrators, believed, model->least, &model->curves);
+    agreement_fit(&model->agreement);
     model->curves_items = model->evidence_items;
     model->curves_changed = true;
 }

@@ -113,7 +113,9 @@ static void count_finding(struct model *model, const struct model_item *replaced
         double score = (double)model_score(model, scratch, tag) - (double)scratch->own[tag];
         calibrators_add_ruled(&model->calibrators, pair.score, pair.class, pair.weight, belongs);
         if (is_ruling) {
-            standing_ruled(model->standing, model_missing_chance(model, tag, score), belongs);
+            double promise = entry ? (double)entry->promise : 0.0;
+            standing_ruled(model->standing, model_missing_chance(model, tag, score, promise),
+                           belongs);
         }
     } else if (!belongs && model_holds(replaced->tags, replaced->tag_count, tag) &&
                !model_holds(replaced->examined, replaced->examined_count, tag)) {
@@ -232,6 +234,7 @@ int model_examine(struct model *model, const struct model_item *item,
         return -ENOMEM;
     }
     gather(model, item, replaced, &findings, entry, scratch);
+    model->evidence_changed = true;
     int result = learn_pairs(model, &findings, scratch);
     model_clear_own(entry, scratch);
     if (result == 0) {

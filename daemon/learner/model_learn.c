@@ -131,6 +131,18 @@ static int count_trials(struct model *model, const struct model_item *item, int 
     return 0;
 }
 
+/* Trials move last: what was shown of a pair knew nothing of the trial that it has become. */
+static int move_trials(struct model *model, const struct model_item *item,
+                       const struct model_item *replaced)
+{
+    if ((item && count_trials(model, item, 1) < 0) ||
+        (replaced && count_trials(model, replaced, -1) < 0)) {
+        return -ENOMEM;
+    }
+    model_refit_propensities(model);
+    return 0;
+}
+
 /* What is new comes in before what is old leaves, so that a word of both is not forgotten. */
 static int move_counts(struct model *model, const struct model_item *item,
                        const struct model_item *replaced, struct model_scratch *scratch)
@@ -138,14 +150,14 @@ static int move_counts(struct model *model, const struct model_item *item,
     bool same_words = item && replaced && item->same_words;
     if (item) {
         if ((!same_words && count_words_in(model, item, scratch) < 0) ||
-            count_tags_in(model, item) < 0 || count_trials(model, item, 1) < 0) {
+            count_tags_in(model, item) < 0) {
             return -ENOMEM;
         }
         model->documents++;
     }
     if (replaced) {
         if ((!same_words && count_words_out(model, replaced) < 0) ||
-            count_tags_out(model, replaced) < 0 || count_trials(model, replaced, -1) < 0) {
+            count_tags_out(model, replaced) < 0) {
             return -ENOMEM;
         }
         model->documents--;
@@ -298,10 +310,13 @@ int model_learn(struct model *model, const struct model_item *item,
     if (move_counts(model, item, replaced, scratch) < 0) {
         return -ENOMEM;
     }
-    model_refit_propensities(model);
+    int result = 0;
     if (!item) {
-        return worklist_remove(model->worklist, replaced->number);
+        result = worklist_remove(model->worklist, replaced->number);
+    } else if (replaced && item->same_words) {
+        result = model_examine(model, item, replaced, scratch);
+    } else {
+        result = learn_item(model, item, replaced, scratch);
     }
-    return replaced && item->same_words ? model_examine(model, item, replaced, scratch)
-                                        : learn_item(model, item, replaced, scratch);
+    return result == 0 ? move_trials(model, item, replaced) : result;
 }

@@ -85,6 +85,18 @@ static int put_figures(const struct model_sink *sink, enum model_figures_kind ki
     return sink->figures(sink->user, &figures);
 }
 
+static int put_agreement(const struct agreement *agreement, const struct model_sink *sink)
+{
+    int result = 0;
+    for (size_t r = 0; r < AGREEMENT_PROMISES && result == 0; r++) {
+        result = put_figures(sink, MODEL_FIGURES_AGREEMENT, r, &agreement->rows[r],
+                             sizeof agreement->rows[r]);
+    }
+    return result == 0 ? put_figures(sink, MODEL_FIGURES_AGREEMENT, AGREEMENT_PROMISES,
+                                     &agreement->gain, sizeof agreement->gain)
+                       : result;
+}
+
 static int put_calibrators(const struct model *model, const struct model_sink *sink)
 {
     int result = 0;
@@ -97,6 +109,9 @@ static int put_calibrators(const struct model *model, const struct model_sink *s
     for (size_t g = 0; g < CALIBRATORS_GROUPS && result == 0 && model->curves_changed; g++) {
         result = put_figures(sink, MODEL_FIGURES_CURVE, g, &model->curves.groups[g],
                              sizeof model->curves.groups[g]);
+    }
+    if (result == 0 && model->evidence_changed) {
+        result = put_agreement(&model->agreement, sink);
     }
     if (result == 0 && model->curves_changed) {
         result = put_figures(sink, MODEL_FIGURES_LEAST, 0, model->least, sizeof model->least);
@@ -167,6 +182,7 @@ void model_clean(struct model *model)
         weights_clean(model->shadow);
     }
     memset(model->calibrators.changed, 0, sizeof model->calibrators.changed);
+    model->evidence_changed = false;
     model->curves_changed = false;
     model->fit_changed = false;
     standing_clean(model->standing);
@@ -246,6 +262,14 @@ int model_restore_figures(struct model *model, const struct model_figures *figur
                    : -EINVAL;
     case MODEL_FIGURES_LEAST:
         return number == 0 ? restore_plain(model->least, sizeof model->least, figures) : -EINVAL;
+    case MODEL_FIGURES_AGREEMENT:
+        if (number == AGREEMENT_PROMISES) {
+            return restore_plain(&model->agreement.gain, sizeof model->agreement.gain, figures);
+        }
+        return number < AGREEMENT_PROMISES
+                   ? restore_plain(&model->agreement.rows[number],
+                                   sizeof model->agreement.rows[number], figures)
+                   : -EINVAL;
     case MODEL_FIGURES_FIT:
         return number == 0 ? restore_plain(&model->fit, sizeof model->fit, figures) : -EINVAL;
     case MODEL_FIGURES_STANDING:
@@ -286,6 +310,7 @@ int model_restored(struct model *model)
 {
     model->version++;
     memset(model->calibrators.changed, 0, sizeof model->calibrators.changed);
+    model->evidence_changed = false;
     model->curves_changed = false;
     standing_clean(model->standing);
     worklist_clean(model->worklist);

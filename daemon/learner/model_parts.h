@@ -44,11 +44,12 @@ struct model_tag {
 
 /* What is kept as plain lists of numbers. */
 enum model_figures_kind {
-    MODEL_FIGURES_BIN,      /* the calibrators' evidence, by bin */
-    MODEL_FIGURES_CURVE,    /* the calibrators, by group */
-    MODEL_FIGURES_LEAST,    /* the least propensities that the evidence allows, number 0 */
-    MODEL_FIGURES_FIT,      /* the propensities' fit, number 0 */
-    MODEL_FIGURES_STANDING, /* the standing, by its parts */
+    MODEL_FIGURES_BIN,       /* the calibrators' evidence, by bin */
+    MODEL_FIGURES_CURVE,     /* the calibrators, by group */
+    MODEL_FIGURES_LEAST,     /* the least propensities that the evidence allows, number 0 */
+    MODEL_FIGURES_AGREEMENT, /* by row, then the gain */
+    MODEL_FIGURES_FIT,       /* the propensities' fit, number 0 */
+    MODEL_FIGURES_STANDING,  /* the standing, by its parts */
     MODEL_FIGURES_KINDS
 };
 

@@ -6,6 +6,7 @@
 #ifndef UNDERTAG_MODEL_PRIVATE_H
 #define UNDERTAG_MODEL_PRIVATE_H
 
+#include "daemon/learner/agreement.h"
 #include "daemon/learner/calibrators.h"
 #include "daemon/learner/candidates.h"
 #include "daemon/learner/census.h"
@@ -40,8 +41,9 @@ struct model {
     double growth;   /* propensity_growth of them */
     uint64_t latest; /* the greatest number of an item so far */
 
-    struct calibrators calibrators;    /* evidence */
-    struct calibrators_curves curves;  /* as last fitted to it */
+    struct calibrators calibrators;   /* evidence */
+    struct calibrators_curves curves; /* as last fitted to it */
+    struct agreement agreement;
     double least[CALIBRATORS_CLASSES]; /* of the propensities, as the evidence has it */
     uint64_t evidence_items;           /* items behind the evidence */
     uint64_t curves_items;             /* … when the curves were fitted */
@@ -51,6 +53,7 @@ struct model {
     struct standing *standing;
     struct worklist *worklist;
     struct weights *shadow; /* NULL: none */
+    bool evidence_changed;
     bool curves_changed;
     bool fit_changed;
 
@@ -124,14 +127,17 @@ void model_set_tag_counts(struct model *model, uint32_t tag, struct tag_counts c
 /* The propensity of a tag as of now: the curve's, and what was found of the tag itself. */
 double model_propensity(const struct model *model, uint32_t tag);
 
-/* P(belongs) of a tag with this score, and P(missing | not given). */
+/* P(belongs) of a tag with this score, and P(missing | not given) of one on an item that
+ * promises so much (model_promise). */
 double model_belongs_chance(const struct model *model, uint32_t tag, double score);
-double model_missing_chance(const struct model *model, uint32_t tag, double score);
+double model_missing_chance(const struct model *model, uint32_t tag, double score, double promise);
 
-/* P(missing | not given) from P(belongs): with the tag's propensity, or the least that the evidence
- * allows for tags as common as this. */
+/* The same from P(belongs), with the tag's propensity. */
 double model_missing_of_belongs(const struct model *model, uint32_t tag, double propensity,
-                                double belongs);
+                                double belongs, double promise);
+
+/* A propensity, or the least that the evidence allows for tags as common as this. */
+double model_allowed_propensity(const struct model *model, uint32_t tag, double propensity);
 
 /* A tag that no item has (any more): all that the learner knows of it may be a mistake. */
 static inline bool model_is_unused(const struct model *model, uint32_t tag)
@@ -169,6 +175,9 @@ void model_unmark_item(const struct model_item *item, struct model_scratch *scra
 
 /* Fills scratch->best with the best tags of each band, the item's own share taken out. */
 void model_find_best(const struct model *model, struct model_scratch *scratch);
+
+/* What the likely tags in scratch->best promise together; the item is marked. */
+double model_promise(const struct model *model, const struct model_scratch *scratch);
 
 /* A new item: its pairs as evidence, its place in the standing, and what its proposals say of the
  * chances. The item is marked and scratch->best filled. */

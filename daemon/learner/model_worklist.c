@@ -68,8 +68,11 @@ void model_make_entry(const struct model *model, const struct model_item *item,
                       const struct model_scratch *scratch, struct worklist_entry *ret_entry)
 {
     double chances[WORKLIST_GAPS];
-    *ret_entry = (struct worklist_entry){
-        .number = item->number, .scored = model->latest, .counted = model->evidence_items};
+    double promise = model_promise(model, scratch);
+    *ret_entry = (struct worklist_entry){.number = item->number,
+                                         .scored = model->latest,
+                                         .counted = model->evidence_items,
+                                         .promise = (float)promise};
     for (enum standing_band band = STANDING_HEAD; band < STANDING_BANDS; band++) {
         const struct candidates *best = &scratch->best[band];
         for (size_t i = 0; i < best->count; i++) {
@@ -77,7 +80,7 @@ void model_make_entry(const struct model *model, const struct model_item *item,
             if (scratch->barred[tag] != MARK_NONE || tag < item->checked_below) {
                 continue;
             }
-            double chance = model_missing_chance(model, tag, (double)best->scores[i]);
+            double chance = model_missing_chance(model, tag, (double)best->scores[i], promise);
             if (chance >= LEAST_CHANCE) {
                 const struct worklist_gap gap = {.tag = tag,
                                                  .score = best->scores[i],
@@ -153,11 +156,12 @@ uint64_t model_next_stale(struct model *model)
     return entry ? entry->number : 0;
 }
 
-double model_gap_chance(const struct model *model, const struct worklist_gap *gap)
+double model_gap_chance(const struct model *model, const struct worklist_entry *entry,
+                        const struct worklist_gap *gap)
 {
     return model_is_unused(model, gap->tag)
                ? 0.0
-               : model_missing_chance(model, gap->tag, (double)gap->score);
+               : model_missing_chance(model, gap->tag, (double)gap->score, (double)entry->promise);
 }
 
 /* --- ranking ------------------------------------------------------------------------------------
@@ -186,7 +190,8 @@ static double promise_of(const struct model *model, const struct worklist_entry 
         double propensity = propensities[gap->tag];
         double chance = model_missing_of_belongs(
             model, gap->tag, propensity,
-            calibrators_chance(&model->curves, propensity, (double)gap->score));
+            calibrators_chance(&model->curves, propensity, (double)gap->score),
+            (double)entry->promise);
         expected += chance >= floor ? chance : 0.0;
     }
     return expected;

@@ -33,6 +33,7 @@ struct worklist_entry {
     uint64_t number;  /* of the item: the seq of its record */
     uint64_t scored;  /* the model's count of changes when the scores were made */
     uint64_t counted; /* … when the pairs were counted as evidence */
+    float promise;    /* of all likely tags, when the scores were made; see agreement.h */
     uint32_t gap_count;
     struct worklist_gap gaps[WORKLIST_GAPS]; /* in no order */
 };

@@ -28,15 +28,23 @@ static double middle_of(size_t cell)
     return 1.0 / (1.0 + exp(-((double)cell - last / 2.0) * CELL_WIDTH));
 }
 
-static size_t row_of(double promise)
+/* Where a promise lies between the rows: `below` and the next one, with weights 1 - share, share.
+ */
+struct row_place {
+    size_t below;
+    double share;
+};
+
+static struct row_place row_place_of(double promise)
 {
-    static const double ABOVE[AGREEMENT_PROMISES - 1] = {0.1, 0.3, 0.6, 1.0, 1.5,
-                                                         2.5, 4.0, 6.0, 8.0};
-    size_t row = 0;
-    while (row < AGREEMENT_PROMISES - 1 && promise > ABOVE[row]) {
-        row++;
+    static const double MIDDLES[AGREEMENT_PROMISES] = {0.0, 0.2,  0.45, 0.8, 1.25,
+                                                       2.0, 3.25, 5.0,  7.0, 10.0};
+    size_t below = 0;
+    while (below < AGREEMENT_PROMISES - 2 && promise >= MIDDLES[below + 1]) {
+        below++;
     }
-    return row;
+    double share = (promise - MIDDLES[below]) / (MIDDLES[below + 1] - MIDDLES[below]);
+    return (struct row_place){.below = below, .share = fmin(fmax(share, 0.0), 1.0)};
 }
 
 void agreement_init(struct agreement *agreement)
@@ -63,7 +71,9 @@ void agreement_age(struct agreement *agreement, double half_life_items)
 
 static struct agreement_cell *cell_of(struct agreement *agreement, double promise, double chance)
 {
-    return &agreement->rows[row_of(promise)].cells[(size_t)lround(place_of(chance))];
+    struct row_place row = row_place_of(promise);
+    size_t nearest = row.share < 0.5 ? row.below : row.below + 1;
+    return &agreement->rows[nearest].cells[(size_t)lround(place_of(chance))];
 }
 
 void agreement_add_not_given(struct agreement *agreement, double promise, double chance)
@@ -94,9 +104,8 @@ void agreement_fit(struct agreement *agreement)
     }
 }
 
-double agreement_chance(const struct agreement *agreement, double promise, double chance)
+static double chance_in_row(const struct agreement_row *row, double chance)
 {
-    const struct agreement_row *row = &agreement->rows[row_of(promise)];
     double place = place_of(chance);
     size_t below = (size_t)place;
     if (below == 0 && chance < middle_of(0)) {
@@ -107,4 +116,11 @@ double agreement_chance(const struct agreement *agreement, double promise, doubl
     }
     double share = place - (double)below;
     return (1.0 - share) * row->chance[below] + share * row->chance[below + 1];
+}
+
+double agreement_chance(const struct agreement *agreement, double promise, double chance)
+{
+    struct row_place row = row_place_of(promise);
+    return (1.0 - row.share) * chance_in_row(&agreement->rows[row.below], chance) +
+           row.share * chance_in_row(&agreement->rows[row.below + 1], chance);
 }

@@ -148,7 +148,13 @@ void calibrators_rule_rest(struct calibrators *calibrators, size_t tag_class, do
 void calibrators_take_off(struct calibrators *calibrators, double score, size_t tag_class,
                           double weight)
 {
-    struct calibrators_cell *cell = change(calibrators, bin_of_score(score), tag_class);
+    size_t bin = bin_of_score(score);
+    size_t at = bin;
+    while (at > 0 && calibrators->bins[at].cells[tag_class].given < weight * calibrators->gain) {
+        at--;
+    }
+    bool is_found = calibrators->bins[at].cells[tag_class].given >= weight * calibrators->gain;
+    struct calibrators_cell *cell = change(calibrators, is_found ? at : bin, tag_class);
     double taken = fmin(weight * calibrators->gain, cell->given);
     cell->given -= taken;
     cell->pairs = fmax(cell->pairs - taken, 0.0);

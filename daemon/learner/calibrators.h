@@ -112,7 +112,8 @@ void calibrators_rule_rest(struct calibrators *calibrators, size_t tag_class, do
                            double pairs);
 
 /* Says that a pair counted as given was wrongly given: it becomes a known one that does not belong.
- * Score, class and weight as above. */
+ * Class and weight as above. The score may be that of today: the pair is looked for from its bin
+ * downwards, since learning a given pair has only raised it. */
 void calibrators_take_off(struct calibrators *calibrators, double score, size_t tag_class,
                           double weight);
 

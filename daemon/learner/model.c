@@ -200,8 +200,9 @@ const struct standing *model_standing(const struct model *model)
 }
 
 int model_weigh_features(const struct model *model, const struct feature *features, size_t count,
-                         struct model_scratch *scratch)
+                         bool is_counted, struct model_scratch *scratch)
 {
+    const double itself = is_counted ? 0.0 : 1.0;
     if (GROW(&scratch->values, &scratch->values_capacity, count) < 0 ||
         GROW(&scratch->x, &scratch->x_capacity, count) < 0 ||
         GROW(&scratch->feature_of_x, &scratch->feature_of_x_capacity, count) < 0) {
@@ -209,12 +210,12 @@ int model_weigh_features(const struct model *model, const struct feature *featur
     }
     for (size_t i = 0; i < count; i++) {
         uint32_t word = scratch->words[i];
-        /* A word that nobody has used yet weighs as one that this item brings in. */
-        double holding =
-            word == DICTIONARY_NONE ? 1.0 : (double)dictionary_count(model->dictionary, word);
+        double known =
+            word == DICTIONARY_NONE ? 0.0 : (double)dictionary_count(model->dictionary, word);
+        double holding = fmax(known + itself, 1.0);
         double share = holding > 1.0 ? 1.0 : UNSHARED_WORD_SHARE;
         scratch->values[i] = (float)(share * tfidf_frequency_weight((double)features[i].frequency) *
-                                     tfidf_idf((double)model->documents, holding));
+                                     tfidf_idf((double)model->documents + itself, holding));
     }
     tfidf_normalise(scratch->values, count);
     scratch->x_count = 0;
@@ -232,7 +233,7 @@ int model_weigh_features(const struct model *model, const struct feature *featur
 }
 
 int model_score_words(const struct model *model, const struct feature *features, size_t count,
-                      struct model_scratch *scratch)
+                      bool is_counted, struct model_scratch *scratch)
 {
     if (GROW(&scratch->words, &scratch->words_capacity, count) < 0) {
         return -ENOMEM;
@@ -241,7 +242,7 @@ int model_score_words(const struct model *model, const struct feature *features,
         scratch->words[i] =
             dictionary_find(model->dictionary, features[i].term, features[i].term_bytes);
     }
-    if (model_weigh_features(model, features, count, scratch) < 0) {
+    if (model_weigh_features(model, features, count, is_counted, scratch) < 0) {
         return -ENOMEM;
     }
     return weights_score(model->weights, scratch->x, scratch->x_count, scratch->weights);

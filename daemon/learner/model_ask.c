@@ -290,7 +290,8 @@ int model_ask(const struct model *model, const struct model_question *question,
     const struct worklist_entry *entry =
         question->number > 0 ? worklist_find(model->worklist, question->number) : NULL;
     if (GROW(&scratch->barred, &scratch->barred_capacity, model->tag_count) < 0 ||
-        model_score_words(model, question->features, question->feature_count, scratch) < 0 ||
+        model_score_words(model, question->features, question->feature_count, question->number > 0,
+                          scratch) < 0 ||
         model_take_own(model, entry, scratch) < 0) {
         return -ENOMEM;
     }
@@ -307,7 +308,7 @@ int model_ask(const struct model *model, const struct model_question *question,
         bar_tags(&asker, question->excluded, question->excluded_count, MARK_KNOWN_NOT);
     if (question->tagged) {
         model_find_best(model, scratch);
-        asker.promise = model_promise(model, scratch);
+        asker.promise = model_promise(model, question->checked_below, scratch);
     }
     int result = gather(&asker, barred_rest, &count, &expected);
     unbar_tags(&asker, question->given, question->given_count);

@@ -105,14 +105,15 @@ static double promise_of(const struct rated *rated)
                : 0.0;
 }
 
-double model_promise(const struct model *model, const struct model_scratch *scratch)
+double model_promise(const struct model *model, uint32_t checked_below,
+                     const struct model_scratch *scratch)
 {
     double promise = 0.0;
     for (enum standing_band band = STANDING_HEAD; band < STANDING_BANDS; band++) {
         const struct candidates *best = &scratch->best[band];
         for (size_t i = 0; i < best->count; i++) {
             const struct rated rated = rate(model, scratch, best->tags[i], best->scores[i]);
-            promise += promise_of(&rated);
+            promise += best->tags[i] >= checked_below ? promise_of(&rated) : 0.0;
         }
     }
     return promise;
@@ -120,7 +121,7 @@ double model_promise(const struct model *model, const struct model_scratch *scra
 
 static void count_agreement(struct model *model, const struct model_scratch *scratch)
 {
-    double promise = model_promise(model, scratch);
+    double promise = model_promise(model, 0, scratch);
     agreement_age(&model->agreement,
                   AGREEMENT_HALF_LIVES * model->settings.evidence_half_life_items);
     for (enum standing_band band = STANDING_HEAD; band < STANDING_BANDS; band++) {
@@ -170,11 +171,12 @@ static size_t counted_class(const struct model *model, uint32_t tag)
     return calibrators_class((uint32_t)census_middle(bin), model->documents);
 }
 
-/* A tag used for the first time by this very item, with no weights from one withdrawn since, could
- * not have been proposed. */
-static bool was_known(const struct model *model, uint32_t tag, double score)
+bool model_was_known(const struct model *model, const struct model_scratch *scratch, uint32_t tag,
+                     double score)
 {
-    return model->tags[tag].count > 1 || score > CALIBRATORS_FLOOR_SCORE;
+    enum model_mark mark = (enum model_mark)scratch->barred[tag];
+    uint32_t own = mark == MARK_GIVEN || mark == MARK_EXAMINED ? 1 : 0;
+    return model->tags[tag].count > own || score > CALIBRATORS_FLOOR_SCORE;
 }
 
 static void count_touched(struct model *model, const struct model_scratch *scratch,
@@ -202,7 +204,7 @@ static void count_tag(struct model *model, const struct model_scratch *scratch, 
     double score = (double)model_score(model, scratch, tag);
     size_t class = class_of(model, scratch, tag);
     bool is_at_floor = score <= CALIBRATORS_FLOOR_SCORE;
-    if (!was_known(model, tag, score)) {
+    if (!model_was_known(model, scratch, tag, score)) {
         rest[counted_class(model, tag)] -= 1.0;
         return;
     }
@@ -263,10 +265,17 @@ static int compare_proposed(const void *left, const void *right)
     return (a->tag > b->tag) - (a->tag < b->tag);
 }
 
+/* As it was before the item came: 1 for a pair that somebody pointed out. */
 static double propensity_on(const struct model *model, const struct model_scratch *scratch,
                             uint32_t tag)
 {
-    return scratch->barred[tag] == MARK_EXAMINED ? 1.0 : model_propensity(model, tag);
+    const struct tag_counts *counts = &model->tags[tag];
+    uint32_t own = scratch->barred[tag] == MARK_GIVEN ? 1 : 0;
+    return scratch->barred[tag] == MARK_EXAMINED
+               ? 1.0
+               : propensity_fit_tag_mean_at(&model->fit, (double)(counts->unprompted - own),
+                                            model->growth, (double)counts->trial_halves / 2.0,
+                                            (double)counts->given_halves / 2.0);
 }
 
 /* What the standing is told of one learner. */
@@ -365,7 +374,7 @@ static void rate_prompts(struct model *model, const struct model_item *item,
     for (size_t i = 0; i < item->examined_count; i++) {
         uint32_t tag = item->examined[i];
         double score = (double)model_score(model, scratch, tag);
-        if (was_known(model, tag, score)) {
+        if (model_was_known(model, scratch, tag, score)) {
             standing_ruled(model->standing, model_belongs_chance(model, tag, score), true);
         }
     }

@@ -105,16 +105,16 @@ static void count_finding(struct model *model, const struct model_item *replaced
                           const struct worklist_entry *entry, const struct model_scratch *scratch,
                           uint32_t tag, bool belongs, bool is_ruling)
 {
-    if (tag >= model->tag_count) {
+    double now = (double)model_score(model, scratch, tag) - (double)scratch->own[tag];
+    if (belongs && !model_was_known(model, scratch, tag, now)) {
         return; /* opened by this very change */
     }
     struct counted_pair pair = recall(model, entry, scratch, tag);
     if (was_gap(replaced, tag)) {
-        double score = (double)model_score(model, scratch, tag) - (double)scratch->own[tag];
         calibrators_add_ruled(&model->calibrators, pair.score, pair.class, pair.weight, belongs);
         if (is_ruling) {
             double promise = entry ? (double)entry->promise : 0.0;
-            standing_ruled(model->standing, model_missing_chance(model, tag, score, promise),
+            standing_ruled(model->standing, model_missing_chance(model, tag, now, promise),
                            belongs);
         }
     } else if (!belongs && model_holds(replaced->tags, replaced->tag_count, tag) &&
@@ -229,7 +229,7 @@ int model_examine(struct model *model, const struct model_item *item,
     struct findings findings;
     const struct worklist_entry *entry = worklist_find(model->worklist, replaced->number);
     if (find_changes(item, replaced, scratch, &findings) < 0 ||
-        model_score_words(model, item->features, item->feature_count, scratch) < 0 ||
+        model_score_words(model, item->features, item->feature_count, true, scratch) < 0 ||
         model_take_own(model, entry, scratch) < 0 || model_mark_item(model, item, scratch) < 0) {
         return -ENOMEM;
     }

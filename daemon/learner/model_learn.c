@@ -256,7 +256,7 @@ static int learn_shadow(struct model *model, const struct model_item *item,
 
 static int score(struct model *model, const struct model_item *item, struct model_scratch *scratch)
 {
-    if (model_weigh_features(model, item->features, item->feature_count, scratch) < 0 ||
+    if (model_weigh_features(model, item->features, item->feature_count, true, scratch) < 0 ||
         weights_score(model->weights, scratch->x, scratch->x_count, scratch->weights) < 0) {
         return -ENOMEM;
     }

@@ -110,7 +110,7 @@ static int put_calibrators(const struct model *model, const struct model_sink *s
         result = put_figures(sink, MODEL_FIGURES_CURVE, g, &model->curves.groups[g],
                              sizeof model->curves.groups[g]);
     }
-    if (result == 0 && model->evidence_changed) {
+    if (result == 0 && (model->evidence_changed || model->curves_changed)) {
         result = put_agreement(&model->agreement, sink);
     }
     if (result == 0 && model->curves_changed) {

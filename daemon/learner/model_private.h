@@ -154,9 +154,11 @@ static inline float model_score(const struct model *model, const struct model_sc
 /* Whether a rising list of tags holds one. */
 bool model_holds(const uint32_t *tags, size_t count, uint32_t tag);
 
-/* Scores the item's words as they are known; nothing is counted. Returns 0 or -ENOMEM. */
+/* Scores words as they are known: those of a filed item, which is counted in, or of a draft, which
+ * is not. Returns 0 or -ENOMEM. */
 int model_score_words(const struct model *model, const struct feature *features, size_t count,
-                      struct model_scratch *scratch) __attribute__((warn_unused_result));
+                      bool is_counted, struct model_scratch *scratch)
+    __attribute__((warn_unused_result));
 
 /* How many times a given pair counts: the correction for missing tags, the balance of classes, and
  * both relative to their running mean. */
@@ -176,8 +178,15 @@ void model_unmark_item(const struct model_item *item, struct model_scratch *scra
 /* Fills scratch->best with the best tags of each band, the item's own share taken out. */
 void model_find_best(const struct model *model, struct model_scratch *scratch);
 
-/* What the likely tags in scratch->best promise together; the item is marked. */
-double model_promise(const struct model *model, const struct model_scratch *scratch);
+/* What the likely tags in scratch->best promise together, those checked left out; the item is
+ * marked. */
+double model_promise(const struct model *model, uint32_t checked_below,
+                     const struct model_scratch *scratch);
+
+/* Whether a tag of the marked item was there before it: one used for the first time by this very
+ * item, with no weights from one withdrawn since, could not have been proposed. */
+bool model_was_known(const struct model *model, const struct model_scratch *scratch, uint32_t tag,
+                     double score);
 
 /* A new item: its pairs as evidence, its place in the standing, and what its proposals say of the
  * chances. The item is marked and scratch->best filled. */
@@ -209,9 +218,11 @@ int model_examine(struct model *model, const struct model_item *item,
 
 /*
  * x of the features whose words are in scratch->words: (1 + ln tf)·idf, L2-normalised over all of
- * them, known or not; only known ones go into scratch->x. Returns 0 or -ENOMEM.
+ * them, known or not; only known ones go into scratch->x. An item weighs the same before it is
+ * counted in as after: `is_counted` says which it is. Returns 0 or -ENOMEM.
  */
 int model_weigh_features(const struct model *model, const struct feature *features, size_t count,
-                         struct model_scratch *scratch) __attribute__((warn_unused_result));
+                         bool is_counted, struct model_scratch *scratch)
+    __attribute__((warn_unused_result));
 
 #endif

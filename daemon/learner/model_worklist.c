@@ -68,7 +68,7 @@ void model_make_entry(const struct model *model, const struct model_item *item,
                       const struct model_scratch *scratch, struct worklist_entry *ret_entry)
 {
     double chances[WORKLIST_GAPS];
-    double promise = model_promise(model, scratch);
+    double promise = model_promise(model, item->checked_below, scratch);
     *ret_entry = (struct worklist_entry){.number = item->number,
                                          .scored = model->latest,
                                          .counted = model->evidence_items,
@@ -112,7 +112,7 @@ int model_rescore(const struct model *model, const struct model_item *item,
                   struct model_scratch *scratch, struct worklist_entry *ret_entry)
 {
     const struct worklist_entry *entry = worklist_find(model->worklist, item->number);
-    if (model_score_words(model, item->features, item->feature_count, scratch) < 0 ||
+    if (model_score_words(model, item->features, item->feature_count, true, scratch) < 0 ||
         model_take_own(model, entry, scratch) < 0 || model_mark_item(model, item, scratch) < 0) {
         return -ENOMEM;
     }

@@ -18,9 +18,9 @@ enum {
     RARITY_STEPS = 100
 };
 
-static const double DEFAULT_CONCENTRATION = 30.0;
+static const double DEFAULT_CONCENTRATION = 60.0;
 /* The prior of κ weighs as much as this many tags. */
-static const double CONCENTRATION_TAGS = 20.0;
+static const double CONCENTRATION_TAGS = 4.0;
 static const double LEAST_RHO = 0.0005;
 static const double MOST_RHO = 0.5;
 /* Vocabularies with few common and many rare terms (common practice) lie around one half. */

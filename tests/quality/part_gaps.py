@@ -1,5 +1,9 @@
 """Tags that were really hidden: how many of the gaps shown are true ones, item by item and down the worklist.
 
+The worklist stands by what an item promises in all, so its first gaps are not the likeliest of the desk. It is walked
+with its default floor, where the promise is judged and the share of true gaps only said, and with the gaps that are
+likelier than not, where both are judged.
+
 Precision at 1: of the items that lack a known tag, the share whose first gap is one that they lack. The share among
 all items, complete ones too, where no gap can be true, stands beside it.
 """
@@ -11,6 +15,7 @@ import trial
 
 FIRST, MOST_WALKED = 5000, 40_000  # gaps of the worklist
 FLOOR_FIRST, FLOOR_WORKLIST, PROMISED = 0.45, 0.75, 0.05
+DEFAULT, LIKELY = 0.2, 0.5  # least chance shown
 
 
 def first_gaps(connection, corpus, verdicts):
@@ -40,39 +45,51 @@ class Walk:
         self.running = entry["running"]
 
 
-def walk(connection, corpus):
+def walk(connection, corpus, least):
     """The worklist, and what of it falls on the first fifth, as if that were a worklist of its own."""
-    walks, walked = {"worklist": Walk(), "worklist, first fifth": Walk()}, 0
-    for entry in desk.worklist(connection):
-        walks["worklist"].add(corpus, entry)
+    whole, fifth = f"worklist from {least}", f"worklist from {least}, first fifth"
+    walks, walked = {whole: Walk(), fifth: Walk()}, 0
+    for entry in desk.worklist(connection, floor=least):
+        walks[whole].add(corpus, entry)
         if corpus.rows[entry["id"]] < len(corpus.train) // 5:
-            walks["worklist, first fifth"].add(corpus, entry)
+            walks[fifth].add(corpus, entry)
         walked += len(entry["gaps"])
         if walked >= MOST_WALKED or all(len(one.chances) >= FIRST for one in walks.values()):
             break
     return walks
 
 
-def judge_walk(verdicts, name, walked):
+def judge_walk(verdicts, name, walked, least):
     """How much of it is true, and whether that many were promised."""
     found, gaps = sum(walked.true), len(walked.true)
     verdicts.value(name, {"gaps": gaps, "found": found, "promised": sum(walked.chances)})
     if gaps == 0:
         verdicts.failed(f"{name}: it is empty")
         return
-    verdicts.at_least(f"{name}: share of {gaps:,} gaps that are really missing", found / gaps, FLOOR_WORKLIST)
+    text = f"{name}: share of {gaps:,} gaps that are really missing"
+    if least >= LIKELY:
+        verdicts.at_least(text, found / gaps, FLOOR_WORKLIST)
+    else:
+        verdicts.say(f"{text}: {found / gaps:.4f}")
     verdicts.at_most(f"{name}: {found:,} found where the chances sum to {sum(walked.chances):,.0f}, off by",
                      abs(sum(walked.chances) / max(found, 1) - 1), PROMISED)
+
+
+def judge_running(verdicts, name, walked):
+    """Whether the sum that the daemon kept itself was found."""
+    found = sum(walked.true)
+    if walked.running is not None:
+        verdicts.at_most(f"{name}: running total {walked.running:,.0f} against {found:,} found, off by",
+                         abs(walked.running / max(found, 1) - 1), PROMISED)
 
 
 def run(connection, corpus, verdicts, _):
     """Single items, then the worklist when it is up to date."""
     first_gaps(connection, corpus, verdicts)
     desk.wait_for_worklist(connection)
-    walks = walk(connection, corpus)
-    for name, walked in walks.items():
-        judge_walk(verdicts, name, walked)
-    found = sum(walks["worklist"].true)
-    if walks["worklist"].running is not None:
-        verdicts.at_most(f"worklist: running total {walks['worklist'].running:,.0f} against {found:,} found, off by",
-                         abs(walks["worklist"].running / max(found, 1) - 1), PROMISED)
+    for least in (DEFAULT, LIKELY):
+        walks = walk(connection, corpus, least)
+        for name, walked in walks.items():
+            judge_walk(verdicts, name, walked, least)
+        whole = f"worklist from {least}"
+        judge_running(verdicts, whole, walks[whole])

@@ -93,6 +93,18 @@ static void no_more_is_taken_off_than_was_given(void **state)
     assert_near(cell->known, 1.0, 0.0);
 }
 
+/* Learning a given pair has raised its score since it was counted. */
+static void a_wrong_pair_is_taken_off_below_its_score_of_today(void **state)
+{
+    struct calibrators *calibrators = *state;
+    add(calibrators, SCORE, HALF, 5, 2);
+    calibrators_take_off(calibrators, SCORE + 0.4, HALF, 1.0);
+    const struct calibrators_cell *cell = &calibrators->bins[SCORE_BIN].cells[HALF];
+    assert_near(cell->given, 1.0, 0.0);
+    assert_near(cell->pairs, 4.0, 0.0);
+    assert_near(cell->known, 1.0, 0.0);
+}
+
 static void a_ruling_counts_beside_the_pairs(void **state)
 {
     struct calibrators *calibrators = *state;
@@ -143,7 +155,7 @@ static void a_bin_is_marked_whatever_is_added_to_it(void **state)
     assert_int_equal(calibrators->changed[39], 1);
     calibrators_add_ruled(calibrators, -0.19, HALF, 1.0, true);
     assert_int_equal(calibrators->changed[40], 1);
-    calibrators_take_off(calibrators, -0.17, HALF, 1.0);
+    calibrators_take_off(calibrators, -0.17, SURE, 1.0); /* none given: where it was looked for */
     assert_int_equal(calibrators->changed[41], 1);
     calibrators_add_rest(calibrators, HALF, 3.0);
     assert_int_equal(calibrators->changed[0], 1);
@@ -382,6 +394,7 @@ int main(void)
         calibrators_test(pairs_surely_given_are_as_good_as_known),
         calibrators_test(what_was_wrongly_given_becomes_known_not_to_belong),
         calibrators_test(no_more_is_taken_off_than_was_given),
+        calibrators_test(a_wrong_pair_is_taken_off_below_its_score_of_today),
         calibrators_test(a_ruling_counts_beside_the_pairs),
         calibrators_test(the_rest_at_the_floor_is_counted_in_one_go),
         calibrators_test(the_rest_lowers_the_chance_at_the_floor),

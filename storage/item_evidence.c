@@ -73,24 +73,6 @@ void item_evidence_put(struct codec_writer *writer, const struct item_record *re
 /* --- out of a record ----------------------------------------------------------------------------
  */
 
-/* Reads a list into the buffer's numbers from *used on; the record has no more than are left. */
-static struct numbers get_numbers(struct codec_reader *reader, struct item_buffer *buffer,
-                                  size_t *used)
-{
-    size_t count = codec_get_u32(reader);
-    if (count > (reader->size - reader->at) / sizeof(uint32_t) ||
-        count > buffer->number_capacity - *used) {
-        reader->failed = true;
-        return (struct numbers){0};
-    }
-    uint32_t *list = buffer->numbers + *used;
-    for (size_t i = 0; i < count; i++) {
-        list[i] = codec_get_u32(reader);
-    }
-    *used += count;
-    return (struct numbers){.list = list, .count = count};
-}
-
 /* The length of a list whose entries take at least `least_bytes` each. */
 static size_t get_length(struct codec_reader *reader, size_t least_bytes)
 {
@@ -142,10 +124,10 @@ static void get_check(struct codec_reader *reader, struct item_buffer *buffer, s
     check->checker = item_get_text(reader);
     check->vocabulary = codec_get_u32(reader);
     check->seen = codec_get_u32(reader);
-    check->tags = get_numbers(reader, buffer, used);
-    check->given = get_numbers(reader, buffer, used);
-    check->hidden = get_numbers(reader, buffer, used);
-    check->extra = get_numbers(reader, buffer, used);
+    check->tags = item_get_numbers(reader, buffer, used);
+    check->given = item_get_numbers(reader, buffer, used);
+    check->hidden = item_get_numbers(reader, buffer, used);
+    check->extra = item_get_numbers(reader, buffer, used);
 }
 
 static int get_seconds(struct codec_reader *reader, struct item_buffer *buffer, size_t *used,
@@ -168,7 +150,7 @@ static int get_seconds(struct codec_reader *reader, struct item_buffer *buffer, 
         second->tagger = item_get_text(reader);
         second->filed_at = item_get_text(reader);
         second->at_ms = (int64_t)codec_get_u64(reader);
-        second->tags = get_numbers(reader, buffer, used);
+        second->tags = item_get_numbers(reader, buffer, used);
     }
     record->seconds = buffer->seconds;
     record->second_count = count;

@@ -45,6 +45,11 @@ void item_put_text(struct codec_writer *writer, struct store_text text);
 struct store_text item_get_text(struct codec_reader *reader);
 void item_put_numbers(struct codec_writer *writer, struct numbers numbers);
 
+/* Reads a list into the buffer's numbers, from *used on; more than the record or the buffer can
+ * hold is a failed read. */
+struct numbers item_get_numbers(struct codec_reader *reader, struct item_buffer *buffer,
+                                size_t *used);
+
 /* --- item_evidence: what was said of an item since it was filed --- */
 
 /* Puts what belongs behind the content; nothing where a plain filing has no evidence. */

@@ -55,12 +55,12 @@ struct store_text item_get_text(struct codec_reader *reader)
     return text;
 }
 
-/* Reads a list of numbers into the buffer, from *used on. */
-static struct numbers get_numbers(struct codec_reader *reader, struct item_buffer *buffer,
-                                  size_t *used)
+struct numbers item_get_numbers(struct codec_reader *reader, struct item_buffer *buffer,
+                                size_t *used)
 {
     size_t count = codec_get_u32(reader);
-    if (count > (reader->size - reader->at) / sizeof(uint32_t)) {
+    if (count > (reader->size - reader->at) / sizeof(uint32_t) ||
+        count > buffer->number_capacity - *used) {
         reader->failed = true;
         return (struct numbers){0};
     }
@@ -105,9 +105,9 @@ static int decode_item(struct codec_reader *reader, struct item_buffer *buffer,
         return result;
     }
     size_t used = 0;
-    record->filed = get_numbers(&inner, buffer, &used);
-    record->prompted = get_numbers(&inner, buffer, &used);
-    record->declined = get_numbers(&inner, buffer, &used);
+    record->filed = item_get_numbers(&inner, buffer, &used);
+    record->prompted = item_get_numbers(&inner, buffer, &used);
+    record->declined = item_get_numbers(&inner, buffer, &used);
     reader->failed = reader->failed || inner.failed;
     return item_evidence_get(reader, buffer, used, record, error);
 }

@@ -1,7 +1,8 @@
 /*
  * model_private: the model's own insides, for the files that are the model together: model (life),
- * model_learn (one change), model_evidence (what scores before learning say), model_examine (what
- * people say), model_worklist, model_ask and model_parts.
+ * model_learn (one change), model_mark (the item at hand), model_evidence, model_agreement and
+ * model_standing (what its scores say before it is learned), model_examine (what people say),
+ * model_refit, model_worklist, model_ask and model_parts.
  */
 #ifndef UNDERTAG_MODEL_PRIVATE_H
 #define UNDERTAG_MODEL_PRIVATE_H
@@ -167,31 +168,51 @@ double model_given_factor(struct model *model, uint32_t tag, bool is_examined);
 /* η for the next example. */
 double model_step(const struct model *model);
 
-/* --- model_evidence ---
- * Of the item that the scratch has just scored. */
+/* --- model_mark: the item at hand --- */
 
 /* Marks the item's tags in scratch->barred, and clears them. */
 int model_mark_item(const struct model *model, const struct model_item *item,
                     struct model_scratch *scratch) __attribute__((warn_unused_result));
 void model_unmark_item(const struct model_item *item, struct model_scratch *scratch);
 
-/* Fills scratch->best with the best tags of each band, the item's own share taken out. */
-void model_find_best(const struct model *model, struct model_scratch *scratch);
-
-/* What the likely tags in scratch->best promise together, those checked left out; the item is
- * marked. */
-double model_promise(const struct model *model, uint32_t checked_below,
-                     const struct model_scratch *scratch);
-
 /* Whether a tag of the marked item was there before it: one used for the first time by this very
  * item, with no weights from one withdrawn since, could not have been proposed. */
 bool model_was_known(const struct model *model, const struct model_scratch *scratch, uint32_t tag,
                      double score);
 
-/* A new item: its pairs as evidence, its place in the standing, and what its proposals say of the
- * chances. The item is marked and scratch->best filled. */
+enum standing_band model_band_of(const struct model *model, uint32_t tag);
+
+/* Fills scratch->best with the best touched tags of each band, the item's own share taken out; or
+ * `best` by the scores of one learner, `own` being NULL where nothing is taken out. */
+void model_find_best(const struct model *model, struct model_scratch *scratch);
+void model_find_best_of(const struct model *model, const struct weights *weights,
+                        const struct weights_scratch *scored, const float *own,
+                        struct candidates best[STANDING_BANDS]);
+
+/* --- model_agreement: of the item just scored and marked, with scratch->best filled --- */
+
+/* What the likely tags promise together, those checked left out. */
+double model_promise(const struct model *model, uint32_t checked_below,
+                     const struct model_scratch *scratch);
+
+/* Counts a new item's likely pairs as evidence for the agreement. */
+void model_count_agreement(struct model *model, const struct model_scratch *scratch);
+
+/* --- model_standing: likewise, of a new item --- */
+
+void model_stand(struct model *model, const struct model_item *item,
+                 const struct model_scratch *scratch);
+void model_rate_prompts(struct model *model, const struct model_item *item,
+                        const struct model_scratch *scratch);
+
+/* --- model_evidence: likewise --- */
+
+/* The item's pairs as evidence, its place in the standing, and what its proposals say of the
+ * chances. */
 void model_gather_evidence(struct model *model, const struct model_item *item,
                            struct model_scratch *scratch);
+
+/* --- model_refit --- */
 
 /* Fits curves and propensities again where enough has come in, or `now`. */
 void model_refit_curves(struct model *model, bool now);

@@ -91,14 +91,19 @@ static int load_entry(void *user, const struct model_store_entry *entry)
                                       .scored = entry->scored,
                                       .counted = entry->counted,
                                       .promise = entry->promise,
-                                      .gap_count = entry->tag_count};
-    if (entry->tag_count > WORKLIST_GAPS) {
+                                      .gap_count = entry->gaps.count,
+                                      .pair_count = entry->pairs.count};
+    if (restored.gap_count > WORKLIST_GAPS || restored.pair_count > WORKLIST_GAPS) {
         return -EINVAL;
     }
-    for (uint32_t i = 0; i < entry->tag_count; i++) {
-        const float *values = entry->values + (size_t)i * MODEL_STORE_ENTRY_VALUES;
-        restored.gaps[i] = (struct worklist_gap){
-            .tag = entry->tags[i], .score = values[0], .own = values[1], .counted = values[2]};
+    for (uint32_t i = 0; i < restored.gap_count; i++) {
+        restored.gaps[i] =
+            (struct worklist_gap){.tag = entry->gaps.tags[i], .score = entry->gaps.values[i]};
+    }
+    for (uint32_t i = 0; i < restored.pair_count; i++) {
+        const float *values = entry->pairs.values + (size_t)i * MODEL_STORE_PAIR_VALUES;
+        restored.pairs[i] = (struct worklist_pair){
+            .tag = entry->pairs.tags[i], .counted = values[0], .own = values[1]};
     }
     return model_restore_entry(user, &restored);
 }
@@ -233,24 +238,29 @@ static int store_figures(void *user, const struct model_figures *figures)
 static int store_entry(void *user, const struct worklist_entry *entry)
 {
     struct storing *storing = user;
-    uint32_t tags[WORKLIST_GAPS];
-    float values[WORKLIST_GAPS * MODEL_STORE_ENTRY_VALUES];
+    uint32_t gap_tags[WORKLIST_GAPS];
+    float scores[WORKLIST_GAPS];
+    uint32_t pair_tags[WORKLIST_GAPS];
+    float pair_values[WORKLIST_GAPS * MODEL_STORE_PAIR_VALUES];
     for (uint32_t i = 0; i < entry->gap_count; i++) {
-        float *of_gap = values + (size_t)i * MODEL_STORE_ENTRY_VALUES;
-        tags[i] = entry->gaps[i].tag;
-        of_gap[0] = entry->gaps[i].score;
-        of_gap[1] = entry->gaps[i].own;
-        of_gap[2] = entry->gaps[i].counted;
+        gap_tags[i] = entry->gaps[i].tag;
+        scores[i] = entry->gaps[i].score;
     }
-    return model_store_put_entry(storing->writing,
-                                 &(const struct model_store_entry){.number = entry->number,
-                                                                   .scored = entry->scored,
-                                                                   .counted = entry->counted,
-                                                                   .promise = entry->promise,
-                                                                   .tag_count = entry->gap_count,
-                                                                   .tags = tags,
-                                                                   .values = values},
-                                 storing->error);
+    for (uint32_t i = 0; i < entry->pair_count; i++) {
+        float *values = pair_values + (size_t)i * MODEL_STORE_PAIR_VALUES;
+        pair_tags[i] = entry->pairs[i].tag;
+        values[0] = entry->pairs[i].counted;
+        values[1] = entry->pairs[i].own;
+    }
+    return model_store_put_entry(
+        storing->writing,
+        &(const struct model_store_entry){.number = entry->number,
+                                          .scored = entry->scored,
+                                          .counted = entry->counted,
+                                          .promise = entry->promise,
+                                          .gaps = {entry->gap_count, gap_tags, scores},
+                                          .pairs = {entry->pair_count, pair_tags, pair_values}},
+        storing->error);
 }
 
 static int remove_entry(void *user, uint64_t number)

@@ -43,7 +43,8 @@ static int put(struct store_view *view, const struct standing_item *standing,
 /* --- names into numbers -------------------------------------------------------------------------
  */
 
-/* The numbers of names that must all be there; a retired tag only where the item has it. */
+/* The numbers of names that must all be there. `present`: a retired tag is refused, unless this
+ * item has it; NULL: it will do. */
 static int resolve(struct store_view *view, struct item_names names,
                    const struct item_record *present, struct item_refusal *refusal, uint32_t *into,
                    struct store_error *error)
@@ -54,7 +55,7 @@ static int resolve(struct store_view *view, struct item_names names,
         if (result != STORE_OK) {
             return result;
         }
-        refusal->retired = retired && !numbers_hold(present->tags, into[i]);
+        refusal->retired = retired && present && !numbers_hold(present->tags, into[i]);
         if (into[i] == NO_NUMBER || refusal->retired) {
             refusal->at = i;
             return STORE_REFUSED;
@@ -106,9 +107,8 @@ int items_rule(struct store_view *view, const struct item_saying *saying, struct
         result = resolve(view, belongs, &record, ret_refusal, numbers, error);
     }
     if (result == STORE_OK) {
-        /* A retired tag may be ruled not to belong. */
         *ret_refusal = (struct item_refusal){.list = REFUSED_NOT};
-        result = resolve(view, denied, &record, ret_refusal, numbers + belongs.count, error);
+        result = resolve(view, denied, NULL, ret_refusal, numbers + belongs.count, error);
     }
     if (result != STORE_OK) {
         goto done;

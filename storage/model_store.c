@@ -262,6 +262,29 @@ static int load_figures(void *user, struct kv_cursor *at, struct kv_bytes key,
     return loading->sink->figures(loading->sink->user, &figures);
 }
 
+/* What an entry's list is read into. */
+struct tagged_room {
+    uint32_t tags[MODEL_STORE_ENTRY_TAGS];
+    float values[MODEL_STORE_ENTRY_TAGS * MODEL_STORE_PAIR_VALUES];
+};
+
+static struct model_store_tagged get_tagged(struct codec_reader *reader, uint32_t values_each,
+                                            struct tagged_room *room)
+{
+    uint32_t count = codec_get_u32(reader);
+    if (count > MODEL_STORE_ENTRY_TAGS) {
+        reader->failed = true;
+        count = 0;
+    }
+    for (uint32_t i = 0; i < count; i++) {
+        room->tags[i] = codec_get_u32(reader);
+        for (uint32_t j = 0; j < values_each; j++) {
+            room->values[i * values_each + j] = codec_get_f32(reader);
+        }
+    }
+    return (struct model_store_tagged){.count = count, .tags = room->tags, .values = room->values};
+}
+
 static int load_entry(void *user, struct kv_cursor *at, struct kv_bytes key, struct kv_bytes value)
 {
     (void)at;
@@ -271,21 +294,15 @@ static int load_entry(void *user, struct kv_cursor *at, struct kv_bytes key, str
     if (result != STORE_OK) {
         return result;
     }
-    uint32_t tags[MODEL_STORE_ENTRY_TAGS];
-    float values[MODEL_STORE_ENTRY_TAGS * MODEL_STORE_ENTRY_VALUES];
-    struct model_store_entry entry = {.tags = tags, .values = values};
-    entry.number = codec_u64_of_key(key.data);
+    struct tagged_room gaps;
+    struct tagged_room pairs;
+    struct model_store_entry entry = {.number = codec_u64_of_key(key.data)};
     entry.scored = codec_get_u64(&reader);
     entry.counted = codec_get_u64(&reader);
     entry.promise = codec_get_f32(&reader);
-    entry.tag_count = codec_get_u32(&reader);
-    for (uint32_t i = 0; i < entry.tag_count && i < MODEL_STORE_ENTRY_TAGS; i++) {
-        tags[i] = codec_get_u32(&reader);
-        for (uint32_t j = 0; j < MODEL_STORE_ENTRY_VALUES; j++) {
-            values[i * MODEL_STORE_ENTRY_VALUES + j] = codec_get_f32(&reader);
-        }
-    }
-    if (reader.failed || entry.tag_count > MODEL_STORE_ENTRY_TAGS) {
+    entry.gaps = get_tagged(&reader, MODEL_STORE_GAP_VALUES, &gaps);
+    entry.pairs = get_tagged(&reader, MODEL_STORE_PAIR_VALUES, &pairs);
+    if (reader.failed) {
         return store_fail(loading->error, STORE_CORRUPT, "a stored entry of the model is damaged");
     }
     return loading->sink->entry(loading->sink->user, &entry);
@@ -493,6 +510,18 @@ int model_store_put_figures(struct model_store_writing *writing,
     return put_record(writing, MODEL_FIGURES, kv_bytes_of(key, sizeof key), error);
 }
 
+static void put_tagged(struct codec_writer *record, const struct model_store_tagged *tagged,
+                       uint32_t values_each)
+{
+    codec_put_u32(record, tagged->count);
+    for (uint32_t i = 0; i < tagged->count; i++) {
+        codec_put_u32(record, tagged->tags[i]);
+        for (uint32_t j = 0; j < values_each; j++) {
+            codec_put_f32(record, tagged->values[i * values_each + j]);
+        }
+    }
+}
+
 int model_store_put_entry(struct model_store_writing *writing,
                           const struct model_store_entry *entry, struct store_error *error)
 {
@@ -500,13 +529,8 @@ int model_store_put_entry(struct model_store_writing *writing,
     codec_put_u64(record, entry->scored);
     codec_put_u64(record, entry->counted);
     codec_put_f32(record, entry->promise);
-    codec_put_u32(record, entry->tag_count);
-    for (uint32_t i = 0; i < entry->tag_count; i++) {
-        codec_put_u32(record, entry->tags[i]);
-        for (uint32_t j = 0; j < MODEL_STORE_ENTRY_VALUES; j++) {
-            codec_put_f32(record, entry->values[i * MODEL_STORE_ENTRY_VALUES + j]);
-        }
-    }
+    put_tagged(record, &entry->gaps, MODEL_STORE_GAP_VALUES);
+    put_tagged(record, &entry->pairs, MODEL_STORE_PAIR_VALUES);
     unsigned char key[8];
     codec_key_u64(key, entry->number);
     return put_record(writing, MODEL_ENTRIES, kv_bytes_of(key, sizeof key), error);

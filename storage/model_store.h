@@ -80,20 +80,27 @@ struct model_store_figures {
     const double *values;
 };
 
-/* An entry of the worklist: by tag, `values` has three numbers each. */
+/* Numbers that go with tags: `values` has as many for each tag as the list says. */
+struct model_store_tagged {
+    uint32_t count;
+    const uint32_t *tags;
+    const float *values;
+};
+
+/* An entry of the worklist. */
 struct model_store_entry {
     uint64_t number;
     uint64_t scored;
     uint64_t counted;
     float promise;
-    uint32_t tag_count;
-    const uint32_t *tags;
-    const float *values;
+    struct model_store_tagged gaps;  /* with a value each */
+    struct model_store_tagged pairs; /* with two */
 };
 
 enum {
-    MODEL_STORE_ENTRY_TAGS = 64,
-    MODEL_STORE_ENTRY_VALUES = 3
+    MODEL_STORE_ENTRY_TAGS = 64, /* at most, in either list */
+    MODEL_STORE_GAP_VALUES = 1,
+    MODEL_STORE_PAIR_VALUES = 2
 };
 
 int model_store_open(const struct store_settings *settings, struct model_store **ret_store,

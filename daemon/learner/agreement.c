@@ -11,6 +11,9 @@ static const double LEAN_PAIRS = 20.0;
 /* Cells are this wide in the logit of the chance, and centred on 0. */
 static const double CELL_WIDTH = 0.5;
 
+/* Nobody has seen enough to be surer that a tag is missing. */
+static const double SUREST = 0.99;
+
 static const double LARGEST_GAIN = 1e12;
 
 /* A cell's place as a number, its middle being a whole one; from 0 to the last. */
@@ -99,7 +102,7 @@ void agreement_fit(struct agreement *agreement)
         }
         isotonic_fit(row->chance, weights, pools, AGREEMENT_CHANCES);
         for (size_t c = 0; c < AGREEMENT_CHANCES; c++) {
-            row->chance[c] = fmin(row->chance[c], 1.0);
+            row->chance[c] = fmin(row->chance[c], SUREST);
         }
     }
 }

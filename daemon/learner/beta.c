@@ -108,9 +108,10 @@ struct interval proportion_interval_z(double hits, double trials, double z)
     double z2 = z * z / trials;
     double middle = share + 0.5 * z2;
     double half = z * sqrt(share * (1.0 - share) / trials + 0.25 * z2 / trials);
+    /* Exact where rounding would leave a speck. */
     return (struct interval){
-        .low = fmax((middle - half) / (1.0 + z2), 0.0),
-        .high = fmin((middle + half) / (1.0 + z2), 1.0),
+        .low = hits > 0.0 ? fmax((middle - half) / (1.0 + z2), 0.0) : 0.0,
+        .high = hits < trials ? fmin((middle + half) / (1.0 + z2), 1.0) : 1.0,
     };
 }
 

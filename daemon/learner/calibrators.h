@@ -133,7 +133,7 @@ struct calibrators_curves {
 
 /*
  * The least propensity that each class can have: of the pairs above any score, more than p of them
- * cannot have been given. The lower limit of Wilson's interval with z = 3.7, the greatest over
+ * cannot have been given. The lower limit of Wilson's interval with z = 2.3, the greatest over
  * all scores; 0 where little is known. Where it lies above what is believed of a class, more was
  * given than that belief allows.
  */

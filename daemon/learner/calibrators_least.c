@@ -8,7 +8,12 @@
 #include "daemon/learner/beta.h"
 #include "daemon/learner/calibrators.h"
 
-/* A limit that chance passes once in some 9,000 times: the greatest of many is taken. */
+/*
+ * A limit that chance passes once in some 90 times, and as the greatest of many is taken, in 5 to
+ * 10 of 100 classes (by .08 at most, in a simulation). It is no test: too high a limit costs
+ * little, and one that is passed in 1 of 1,000 leaves W's complete tags to the curve, P@1 .873, not
+ * .882.
+ */
 static const double SURE_Z = 2.3;
 
 /* Fewer pairs say nothing. */

@@ -161,7 +161,10 @@ double model_missing_of_belongs(const struct model *model, uint32_t tag, double 
         return missing;
     }
     double of_others = promise - (belongs >= AGREEMENT_LEAST ? missing : 0.0);
-    return agreement_chance(&model->agreement, of_others, missing);
+    double agreed = agreement_chance(&model->agreement, of_others, missing);
+    /* By and by, so that the order of two gaps does not turn round at the border. */
+    double share = fmin((missing - AGREEMENT_LEAST_CHANCE) / AGREEMENT_LEAST_CHANCE, 1.0);
+    return (1.0 - share) * missing + share * agreed;
 }
 
 double model_missing_chance(const struct model *model, uint32_t tag, double score, double promise)

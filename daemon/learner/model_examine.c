@@ -11,6 +11,9 @@
 #include "daemon/learner/model.h"
 #include "daemon/learner/model_private.h"
 
+/* What is less likely is not proposed, unless somebody asks for it. */
+static const double LEAST_PROPOSED = 0.05;
+
 /* The tags of one list that are not in another; into scratch->changed behind `at`. */
 static int add_new(const uint32_t *tags, size_t count, const uint32_t *before, size_t before_count,
                    struct model_scratch *scratch, size_t *at)
@@ -84,9 +87,9 @@ static struct counted_pair recall(const struct model *model, const struct workli
         pair.weight = calibrators_weight((double)(model->evidence_items - entry->counted),
                                          model->settings.evidence_half_life_items);
     }
-    for (uint32_t i = 0; entry && i < entry->gap_count; i++) {
-        if (entry->gaps[i].tag == tag) {
-            pair.score = (double)entry->gaps[i].counted;
+    for (uint32_t i = 0; entry && i < entry->pair_count; i++) {
+        if (entry->pairs[i].tag == tag) {
+            pair.score = (double)entry->pairs[i].counted;
         }
     }
     return pair;
@@ -100,23 +103,39 @@ static bool was_gap(const struct model_item *replaced, uint32_t tag)
            !model_holds(replaced->known_not, replaced->known_not_count, tag);
 }
 
-/* `is_ruling`: somebody ruled on what was proposed; a check finds what it finds. */
-static void count_finding(struct model *model, const struct model_item *replaced,
-                          const struct worklist_entry *entry, const struct model_scratch *scratch,
-                          uint32_t tag, bool belongs, bool is_ruling)
+/* What is needed to count what was found. */
+struct examining {
+    struct model *model;
+    const struct model_item *replaced;
+    const struct worklist_entry *entry; /* of the item as it was; NULL: none */
+    const struct model_scratch *scratch;
+    double promise; /* of the item as it was */
+    bool is_check;
+};
+
+/* A ruling on what was proposed says whether its chance held; a check finds what it finds, proposed
+ * or not. */
+static void rate(const struct examining *examining, uint32_t tag, double score, bool belongs)
 {
+    double chance = model_missing_chance(examining->model, tag, score, examining->promise);
+    if (!examining->is_check && chance >= LEAST_PROPOSED) {
+        standing_ruled(examining->model->standing, chance, belongs);
+    }
+}
+
+static void count_finding(const struct examining *examining, uint32_t tag, bool belongs)
+{
+    struct model *model = examining->model;
+    const struct model_item *replaced = examining->replaced;
+    const struct model_scratch *scratch = examining->scratch;
     double now = (double)model_score(model, scratch, tag) - (double)scratch->own[tag];
     if (belongs && !model_was_known(model, scratch, tag, now)) {
         return; /* opened by this very change */
     }
-    struct counted_pair pair = recall(model, entry, scratch, tag);
+    struct counted_pair pair = recall(model, examining->entry, scratch, tag);
     if (was_gap(replaced, tag)) {
+        rate(examining, tag, now, belongs);
         calibrators_add_ruled(&model->calibrators, pair.score, pair.class, pair.weight, belongs);
-        if (is_ruling) {
-            double promise = entry ? (double)entry->promise : 0.0;
-            standing_ruled(model->standing, model_missing_chance(model, tag, now, promise),
-                           belongs);
-        }
     } else if (!belongs && model_holds(replaced->tags, replaced->tag_count, tag) &&
                !model_holds(replaced->examined, replaced->examined_count, tag)) {
         calibrators_take_off(&model->calibrators, pair.score, pair.class, pair.weight);
@@ -126,10 +145,11 @@ static void count_finding(struct model *model, const struct model_item *replaced
 /* --- a check: all other gaps are known not to belong --------------------------------------------
  */
 
-static void count_rest_of_check(struct model *model, const struct model_item *replaced,
-                                const struct worklist_entry *entry,
-                                const struct model_scratch *scratch)
+static void count_rest_of_check(const struct examining *examining)
 {
+    struct model *model = examining->model;
+    const struct worklist_entry *entry = examining->entry;
+    const struct model_scratch *scratch = examining->scratch;
     double rest[CALIBRATORS_CLASSES] = {0};
     double weight = 1.0;
     if (entry) {
@@ -138,7 +158,7 @@ static void count_rest_of_check(struct model *model, const struct model_item *re
     }
     for (uint32_t tag = 0; tag < model->tag_count; tag++) {
         if (model_is_unused(model, tag) || scratch->barred[tag] != MARK_NONE ||
-            !was_gap(replaced, tag)) {
+            !was_gap(examining->replaced, tag)) {
             continue;
         }
         struct counted_pair pair = {
@@ -161,19 +181,16 @@ static void count_rest_of_check(struct model *model, const struct model_item *re
 /* --- the whole ----------------------------------------------------------------------------------
  */
 
-static void gather(struct model *model, const struct model_item *item,
-                   const struct model_item *replaced, const struct findings *findings,
-                   const struct worklist_entry *entry, const struct model_scratch *scratch)
+static void gather(const struct examining *examining, const struct findings *findings)
 {
-    bool is_check = item->checked_below > replaced->checked_below;
     for (size_t i = 0; i < findings->found_count; i++) {
-        count_finding(model, replaced, entry, scratch, findings->found[i], true, !is_check);
+        count_finding(examining, findings->found[i], true);
     }
     for (size_t i = 0; i < findings->denied_count; i++) {
-        count_finding(model, replaced, entry, scratch, findings->denied[i], false, !is_check);
+        count_finding(examining, findings->denied[i], false);
     }
-    if (is_check) {
-        count_rest_of_check(model, replaced, entry, scratch);
+    if (examining->is_check) {
+        count_rest_of_check(examining);
     }
 }
 
@@ -223,26 +240,45 @@ static int move_entry(struct model *model, const struct model_item *item,
     return worklist_put(model->worklist, &moved);
 }
 
+/* Scores the item, and says what it promised before anybody had examined it. */
+static int look_back(const struct model *model, const struct model_item *item,
+                     const struct model_item *replaced, const struct worklist_entry *entry,
+                     struct model_scratch *scratch, double *ret_promise)
+{
+    if (model_score_words(model, item->features, item->feature_count, true, scratch) < 0 ||
+        model_take_own(model, entry, scratch) < 0 ||
+        model_mark_item(model, replaced, scratch) < 0) {
+        return -ENOMEM;
+    }
+    model_find_best(model, scratch);
+    *ret_promise = model_promise(model, replaced->checked_below, scratch);
+    model_unmark_item(replaced, scratch);
+    return 0;
+}
+
 int model_examine(struct model *model, const struct model_item *item,
                   const struct model_item *replaced, struct model_scratch *scratch)
 {
     struct findings findings;
-    const struct worklist_entry *entry = worklist_find(model->worklist, replaced->number);
+    struct examining examining = {.model = model,
+                                  .replaced = replaced,
+                                  .entry = worklist_find(model->worklist, replaced->number),
+                                  .scratch = scratch,
+                                  .is_check = item->checked_below > replaced->checked_below};
     if (find_changes(item, replaced, scratch, &findings) < 0 ||
-        model_score_words(model, item->features, item->feature_count, true, scratch) < 0 ||
-        model_take_own(model, entry, scratch) < 0 || model_mark_item(model, item, scratch) < 0) {
+        look_back(model, item, replaced, examining.entry, scratch, &examining.promise) < 0 ||
+        model_mark_item(model, item, scratch) < 0) {
         return -ENOMEM;
     }
-    gather(model, item, replaced, &findings, entry, scratch);
+    gather(&examining, &findings);
     model->evidence_changed = true;
     int result = learn_pairs(model, &findings, scratch);
-    model_clear_own(entry, scratch);
+    model_clear_own(examining.entry, scratch);
     if (result == 0) {
-        result = move_entry(model, item, entry, scratch);
+        result = move_entry(model, item, examining.entry, scratch);
     }
     model_unmark_item(item, scratch);
-    if (findings.found_count + findings.denied_count > 0 ||
-        item->checked_below != replaced->checked_below) {
+    if (findings.found_count + findings.denied_count > 0 || examining.is_check) {
         model_refit_curves(model, true);
     }
     return result;

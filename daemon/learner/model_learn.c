@@ -210,8 +210,8 @@ static int learn_weights(struct model *model, const struct model_item *item,
     }
     uint32_t watched[WORKLIST_GAPS];
     float moves[WORKLIST_GAPS];
-    for (uint32_t i = 0; i < entry->gap_count; i++) {
-        watched[i] = entry->gaps[i].tag;
+    for (uint32_t i = 0; i < entry->pair_count; i++) {
+        watched[i] = entry->pairs[i].tag;
     }
     for (size_t i = 0; i < item->tag_count; i++) {
         uint32_t tag = item->tags[i];
@@ -226,11 +226,11 @@ static int learn_weights(struct model *model, const struct model_item *item,
                                             .given_count = item->tag_count,
                                             .step = model_step(model),
                                             .watched = watched,
-                                            .watched_count = entry->gap_count,
+                                            .watched_count = entry->pair_count,
                                             .moves = moves};
     int result = weights_learn(model->weights, &example, scratch->weights);
-    for (uint32_t i = 0; i < entry->gap_count && result == 0; i++) {
-        entry->gaps[i].own += moves[i];
+    for (uint32_t i = 0; i < entry->pair_count && result == 0; i++) {
+        entry->pairs[i].own += moves[i];
     }
     return result;
 }
@@ -280,6 +280,7 @@ static int take_stock(struct model *model, const struct model_item *item,
         model_gather_evidence(model, item, scratch);
     }
     model_make_entry(model, item, scratch, ret_entry);
+    model_note_pairs(ret_entry, scratch);
     model_unmark_item(item, scratch);
     model_clear_own(old, scratch);
     return 0;

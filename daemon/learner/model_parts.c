@@ -281,11 +281,16 @@ int model_restore_figures(struct model *model, const struct model_figures *figur
 
 int model_restore_entry(struct model *model, const struct worklist_entry *entry)
 {
-    if (entry->gap_count > WORKLIST_GAPS) {
+    if (entry->gap_count > WORKLIST_GAPS || entry->pair_count > WORKLIST_GAPS) {
         return -EINVAL;
     }
     for (uint32_t i = 0; i < entry->gap_count; i++) {
         if (entry->gaps[i].tag >= model->tag_count) {
+            return -EINVAL;
+        }
+    }
+    for (uint32_t i = 0; i < entry->pair_count; i++) {
+        if (entry->pairs[i].tag >= model->tag_count) {
             return -EINVAL;
         }
     }

@@ -225,8 +225,11 @@ int model_take_own(const struct model *model, const struct worklist_entry *entry
                    struct model_scratch *scratch) __attribute__((warn_unused_result));
 void model_clear_own(const struct worklist_entry *entry, struct model_scratch *scratch);
 
-/* The entry of the item just scored and marked, with scratch->best filled; the shares are those in
- * scratch->own. */
+/* Notes the entry's gaps as the pairs that are about to be learned, with the own shares that an
+ * earlier filing has left in scratch->own. */
+void model_note_pairs(struct worklist_entry *entry, const struct model_scratch *scratch);
+
+/* The entry of the item just scored and marked, with scratch->best filled, but for its pairs. */
 void model_make_entry(const struct model *model, const struct model_item *item,
                       const struct model_scratch *scratch, struct worklist_entry *ret_entry);
 

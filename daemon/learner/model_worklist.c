@@ -4,6 +4,7 @@
  */
 #include <errno.h>
 #include <stdlib.h>
+#include <string.h>
 
 #include "daemon/grow.h"
 #include "daemon/learner/model.h"
@@ -26,16 +27,16 @@ int model_take_own(const struct model *model, const struct worklist_entry *entry
     if (GROW(&scratch->own, &scratch->own_capacity, model->tag_count) < 0) {
         return -ENOMEM;
     }
-    for (uint32_t i = 0; entry && i < entry->gap_count; i++) {
-        scratch->own[entry->gaps[i].tag] = entry->gaps[i].own;
+    for (uint32_t i = 0; entry && i < entry->pair_count; i++) {
+        scratch->own[entry->pairs[i].tag] = entry->pairs[i].own;
     }
     return 0;
 }
 
 void model_clear_own(const struct worklist_entry *entry, struct model_scratch *scratch)
 {
-    for (uint32_t i = 0; entry && i < entry->gap_count; i++) {
-        scratch->own[entry->gaps[i].tag] = 0.0F;
+    for (uint32_t i = 0; entry && i < entry->pair_count; i++) {
+        scratch->own[entry->pairs[i].tag] = 0.0F;
     }
 }
 
@@ -82,30 +83,32 @@ void model_make_entry(const struct model *model, const struct model_item *item,
             }
             double chance = model_missing_chance(model, tag, (double)best->scores[i], promise);
             if (chance >= LEAST_CHANCE) {
-                const struct worklist_gap gap = {.tag = tag,
-                                                 .score = best->scores[i],
-                                                 .own = scratch->own[tag],
-                                                 .counted = best->scores[i]};
+                const struct worklist_gap gap = {.tag = tag, .score = best->scores[i]};
                 insert_gap(ret_entry, chances, &gap, chance);
             }
         }
     }
 }
 
+void model_note_pairs(struct worklist_entry *entry, const struct model_scratch *scratch)
+{
+    entry->pair_count = entry->gap_count;
+    for (uint32_t i = 0; i < entry->gap_count; i++) {
+        entry->pairs[i] = (struct worklist_pair){.tag = entry->gaps[i].tag,
+                                                 .counted = entry->gaps[i].score,
+                                                 .own = scratch->own[entry->gaps[i].tag]};
+    }
+}
+
 /* --- scoring again ------------------------------------------------------------------------------
  */
 
-/* Pairs that were counted as evidence keep the score that they were counted with. */
-static void keep_counted(const struct worklist_entry *from, struct worklist_entry *to)
+/* What was learned stays as it was. */
+static void keep_pairs(const struct worklist_entry *from, struct worklist_entry *to)
 {
     to->counted = from->counted;
-    for (uint32_t i = 0; i < to->gap_count; i++) {
-        for (uint32_t j = 0; j < from->gap_count; j++) {
-            if (from->gaps[j].tag == to->gaps[i].tag) {
-                to->gaps[i].counted = from->gaps[j].counted;
-            }
-        }
-    }
+    to->pair_count = from->pair_count;
+    memcpy(to->pairs, from->pairs, sizeof to->pairs);
 }
 
 int model_rescore(const struct model *model, const struct model_item *item,
@@ -119,7 +122,7 @@ int model_rescore(const struct model *model, const struct model_item *item,
     model_find_best(model, scratch);
     model_make_entry(model, item, scratch, ret_entry);
     if (entry) {
-        keep_counted(entry, ret_entry);
+        keep_pairs(entry, ret_entry);
     }
     model_unmark_item(item, scratch);
     model_clear_own(entry, scratch);

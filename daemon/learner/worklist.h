@@ -4,9 +4,10 @@
  * wanted, so that they are always today's.
  *
  * An entry is made from the scores before the item is learned. What learning the item has then
- * added to each score (its own share) is kept beside it: when the item is scored again later, the
- * share is taken out. The linear scorer makes that exact but for what the item's steps changed in
- * the steps of others.
+ * added to each score (its own share) is kept apart: when the item is scored again later, the share
+ * is taken out. The linear scorer makes that exact but for what the item's steps changed in the
+ * steps of others. What was learned stays as it was, whenever and however often there is time to
+ * score again: what people say of the item later is counted by it.
  *
  * Pure numbers; not locked.
  */
@@ -24,18 +25,25 @@ enum {
 /* One tag that the item may lack. */
 struct worklist_gap {
     uint32_t tag;
-    float score;   /* without the item's own share */
+    float score; /* without the item's own share */
+};
+
+/* A pair of the item with a tag that it lacked, as it was learned. */
+struct worklist_pair {
+    uint32_t tag;
+    float counted; /* the score with which it was counted as evidence */
     float own;     /* what learning the item has added to the tag's score; mostly below 0 */
-    float counted; /* the score with which the pair was counted as evidence */
 };
 
 struct worklist_entry {
     uint64_t number;  /* of the item: the seq of its record */
-    uint64_t scored;  /* the model's count of changes when the scores were made */
-    uint64_t counted; /* … when the pairs were counted as evidence */
+    uint64_t scored;  /* the latest number when the scores were made */
+    uint64_t counted; /* the items behind the evidence when the pairs were counted */
     float promise;    /* of all likely tags, when the scores were made; see agreement.h */
     uint32_t gap_count;
-    struct worklist_gap gaps[WORKLIST_GAPS]; /* in no order */
+    struct worklist_gap gaps[WORKLIST_GAPS]; /* the likeliest first, when the scores were made */
+    uint32_t pair_count;
+    struct worklist_pair pairs[WORKLIST_GAPS]; /* the gaps of the day on which it was learned */
 };
 
 struct worklist;

@@ -2,7 +2,8 @@
 # The demo behind `make demo`: undertag's main job on an invented stream, with a crash in its middle.
 # Usage: sh tests/demo/demo.sh BUILD      (BUILD: the folder with undertagd and undertag)
 #
-# Everything happens in a temporary home and on a socket of its own, and is removed at the end.
+# Everything happens in a temporary home and on a socket of its own, and is removed at the end; only
+# the report stays, in BUILD.
 set -eu
 
 shown=${1:?usage: demo.sh BUILD}
@@ -14,7 +15,11 @@ first_part=2000 # filed in peace; the crash falls into the rest
 bite=20         # lines of the rest at a time, so that the crash finds the filing in its middle
 crash_after=250 # entries of the rest that are in the store
 sample=200      # entries whose proposals are compared with the truth
+checks=100      # entries that are checked
+report=$shown/demo-report.html
 
+tab=$(printf '\t')
+start=$PWD
 work=$(mktemp -d "${TMPDIR:-/tmp}/undertag-demo.XXXXXX")
 socket=$work/socket
 daemon='' filing='' feeder=''
@@ -84,7 +89,14 @@ tally() {
 
 # Shows a command as a person would type it, and runs it.
 show() {
-    printf '%s$ undertag %s%s\n' "$strong" "$*" "$plain"
+    printf '%s$ undertag' "$strong"
+    for word in "$@"; do
+        case $word in
+        *' '*) printf " '%s'" "$word" ;;
+        *) printf ' %s' "$word" ;;
+        esac
+    done
+    printf '%s\n' "$plain"
     undertag "$@" || fail "'undertag $*' ended with $?"
 }
 
@@ -153,42 +165,27 @@ tail -n +$((first_part + 1)) logbooks.jsonl >part2.jsonl
 rest=$((entries - first_part))
 say "$(count $entries) entries from the logbooks of a trust of lighthouses and harbours that" \
     "never was. Its keepers tagged them and forgot many tags, rare ones most often." \
-    "One line of the stream:"
-sed -n "${first_part}p" logbooks.jsonl | fold -s -w 74 | sed 's/^/  /; s/ *$//'
-
-heading "2. Filing"
-say "A daemon starts in an empty home and takes the first $(count $first_part) entries. Each is" \
-    "on disk before it is acknowledged, and the daemon learns from it at once."
+    "A daemon starts in an empty home and takes $(count $first_part) of them. Each is on disk" \
+    "before it is acknowledged, and the daemon learns from it at once."
 start_daemon
 show file part1.jsonl
 wait_until 60 "the daemon to learn what was filed" has_learned_all
-show state | sed '/^Rehearsal/,$d'
 
-heading "3. What do filed entries lack?"
-say "Two of the entries just filed, with the words that speak for each proposal. The" \
-    "chance is the probability that the tag belongs there although it was not given."
-ids $((first_part - 1)) $first_part >examples
-while read -r id; do
-    echo
-    tally entry logbooks.jsonl "$id" || fail "$id is not in the stream"
-    show gaps "$id" --most 3 --why </dev/null
-    tally forgotten truth.jsonl "$id" || fail "$id is not in the truth"
-done <examples
-
-heading "4. What does a draft need?"
-say "A draft has no tags yet, so here the chance is that the tag belongs. It comes" \
-    "from standard input:"
+heading "2. What does a filed entry lack?"
+example=$(ids $((first_part - 1)) $((first_part - 1)))
+tally entry logbooks.jsonl "$example" || fail "$example is not in the stream"
+show gaps "$example" --most 1 --why </dev/null
+tally forgotten truth.jsonl "$example" || fail "$example is not in the truth"
+say "The chance is the probability that the tag belongs there although it was not" \
+    "given. Below it: the words that speak for it. For a draft, that it belongs:"
 cat >draft <<'END'
 Thick weather from the south-east since noon and the siren going all the
-while. Two in bed with the influenza; the doctor lay off in the boat and
-could not land. The auditor, who came for the books, was sick over them.
+while. Two in bed with the influenza; the doctor could not land.
 END
 sed 's/^/  /' draft
-show gaps --most 6 <draft
+show gaps --most 3 <draft
 
-heading "5. A crash"
-say "The filing of the other $(count $rest) entries begins, and in its middle the daemon is" \
-    "killed with -9, which it can neither see coming nor catch."
+heading "3. A crash"
 mkfifo pipe
 undertag --json file <pipe >acknowledged 2>filing.log &
 filing=$!
@@ -210,51 +207,76 @@ start_daemon
 kept=$(($(state items) - first_part))
 undertag --json list --most $entries >list.json || fail "'undertag list' ended with $?"
 lost=$(tally lost logbooks.jsonl $((first_part + acknowledged)) <list.json)
-say "Acknowledged before the crash: $(count "$acknowledged") entries. Started again, the daemon" \
-    "has $(count $kept) of the $(count $rest). Of all $(count $((first_part + acknowledged)))" \
-    "entries that were ever acknowledged, $lost are lost."
+say "While the other $(count $rest) are filed, the daemon is killed with -9, which it can" \
+    "neither foresee nor catch. $(count "$acknowledged") had been acknowledged; started again, it has" \
+    "$(count $kept). Of all $(count $((first_part + acknowledged))) that were ever acknowledged," \
+    "$lost are lost. The feed is simply run again: what had been filed is 'same'."
 [ "$lost" -eq 0 ] || fail "$lost acknowledged entries are lost"
 [ "$kept" -ge "$acknowledged" ] || fail "only $kept of $acknowledged entries are there"
-
-heading "6. The same again"
-say "After a break a feed is simply run again: what had been filed is 'same', and" \
-    "only the rest is new."
 show file part2.jsonl
 [ "$(state items)" -eq $entries ] || fail "there are $(state items) entries instead of $entries"
 wait_until 60 "the daemon to learn what was filed" has_learned_all
 
-heading "7. Were the proposals right?"
+heading "4. Are the proposals right?"
 say "The generator of the logbooks knows which tags each entry deserves; the daemon" \
     "never sees that. For $sample entries, the three best proposals of each:"
-echo
 ids 1 $entries | awk -v step=$((entries / sample)) 'NR % step == 0' >sampled
 while read -r id; do
     printf '%s\t' "$id"
     undertag --json gaps "$id" --most 3 --floor 0 || exit 1
 done <sampled >answers || fail "the daemon did not answer for each of $sample entries"
 tally proposals logbooks.jsonl truth.jsonl answers || fail "the proposals could not be counted"
-echo
-say "Where more were forgotten than the chances say: they lean on a published curve of" \
-    "how often desks forget a tag, and these keepers forget more."
 
-heading "8. The end"
-say "The daemon is told to stop with SIGTERM."
+heading "5. How much is missing?"
+say "An editor checks $checks entries drawn at random against the whole vocabulary, which" \
+    "tells how much this desk forgets. Before, only a published curve did."
+undertag --json completeness >before.json || fail "'undertag completeness' ended with $?"
+undertag sample $checks --seed 41 >to-check || fail "'undertag sample' ended with $?"
+tally check logbooks.jsonl truth.jsonl <to-check >said || fail "the checker has nothing to say"
+while IFS= read -r line; do
+    IFS=$tab
+    set -f # a tag is no pattern
+    # shellcheck disable=SC2086 # the words are what it splits into
+    set -- $line
+    set +f
+    unset IFS
+    undertag check "$@" --drawn random --checker K. >checked </dev/null ||
+        fail "'undertag check $1' ended with $?"
+done <said
+wait_until 60 "the daemon to learn from the checks" has_learned_all
+show completeness --most 2
+undertag --json completeness >after.json || fail "'undertag completeness' ended with $?"
+say "The share on record as it was said to be, and the true one:"
+tally complete logbooks.jsonl truth.jsonl to-check before.json after.json ||
+    fail "the shares could not be compared"
+
+heading "6. Where would an editor find most?"
+show worklist --most 2 --floor 0.8
+undertag --json worklist --most 1 --floor 0.8 >head.json || fail "'undertag worklist' ended with $?"
+undertag --json worklist --most 100 >worklist.json || fail "'undertag worklist' ended with $?"
+tally promise truth.jsonl <worklist.json || fail "the promise could not be compared"
+say "An editor rules on the first two. That takes effect at once, and teaches:"
+tally rule truth.jsonl <head.json >ruling || fail "the editor has nothing to say"
+set --
+while IFS= read -r word; do
+    set -- "$@" "$word"
+done <ruling
+show rule "$@"
+say "All of this as one page, which stays:"
+cd "$start"
+show report "$report"
+
+heading "The end"
 kill -TERM "$daemon"
 wait_until 20 "the daemon to stop" ended "$daemon"
 status=0
 wait "$daemon" || status=$?
 daemon=
 [ "$status" -eq 0 ] || fail "the daemon ended with $status"
-say "It has ended well, and its temporary home is removed."
-
-heading "What to try next"
 cat <<END
-The same with a daemon of your own, whose home stays:
+The daemon has ended well, and its home is removed. One of your own stays:
   $shown/undertagd --home ~/logbooks --socket ~/logbooks.socket &
   export UNDERTAG_SOCKET=~/logbooks.socket
   $(dirname "$0")/logbooks.py | $shown/undertag file
-  $shown/undertag tags list
-  echo 'Rockets seen from the bar after supper.' | $shown/undertag gaps --why
-Items of your own are JSON Lines with id, title, text and tags, in place of the
-logbooks. All the rest: $shown/undertag --help
+All the rest: $shown/undertag --help
 END

@@ -171,8 +171,10 @@ static void a_tag_is_less_likely_missing_where_an_editor_has_looked(void **state
         ask(peer, "item.gaps", "{'text': 'dense fog, horn', 'tags': ['birds'], 'floor': 0}");
     double q = number(find(untagged, "fog"), "chance");
     double p = number(json_object_get(ask(peer, "tag.show", "{'tag': 'fog'}"), "propensity"), "p");
-    assert_true(p > 0.0 && p < 1.0 && q > 0.0);
-    assert_near(number(find(tagged, "fog"), "chance"), (1.0 - p) * q / (1.0 - p * q));
+    double missing = number(find(tagged, "fog"), "chance");
+    /* Bayes' rule, then in view of the item's other tags: by how much is test_agreement's. */
+    assert_true(p > 0.0 && p < 1.0 && missing > 0.0 && missing < q);
+    assert_true(fabs(missing - (1.0 - p) * q / (1.0 - p * q)) < 0.1);
 }
 
 /* --- most, floor, why ------------------------------------------------------------------------ */
@@ -237,7 +239,9 @@ static void the_words_behind_a_gap_are_those_of_the_text(void **state)
         find(ask(peer, "item.gaps", "{'text': '%s', 'floor': 0}", TEXT), "fog"), "words"));
 }
 
-static void a_draft_and_the_same_item_get_the_same_gaps(void **state)
+/* Having learned the item, the model takes what it lacks for less likely; that is not held against
+ * the item itself. */
+static void an_item_s_own_share_is_taken_out_of_its_chances(void **state)
 {
     struct peer *peer = &((struct service *)*state)->peer;
     static const char MEMBERS[] = "'text': 'dense fog on the quay', 'tags': ['lamp'], "
@@ -246,7 +250,16 @@ static void a_draft_and_the_same_item_get_the_same_gaps(void **state)
     wait_until_learned(peer);
     const json_t *item = ask(peer, "item.gaps", "{'id': 'x', 'floor': 0, 'why': true}");
     const json_t *draft = ask(peer, "item.gaps", "{%s, 'floor': 0, 'why': true}", MEMBERS);
-    assert_string_equal(text_of(peer, item), text_of(peer, draft));
+    size_t i = 0;
+    const json_t *gap = NULL;
+    assert_int_equal(json_array_size(gaps_of(item)), json_array_size(gaps_of(draft)));
+    json_array_foreach(gaps_of(item), i, gap)
+    {
+        const json_t *same = find(draft, string(gap, "tag"));
+        assert_near(number(gap, "score"), number(same, "score"));
+        assert_true(json_equal(json_object_get(gap, "words"), json_object_get(same, "words")));
+    }
+    assert_true(number(find(item, "fog"), "chance") > number(find(draft, "fog"), "chance"));
     (void)ask(peer, "item.withdraw", "{'id': 'x'}");
     wait_until_learned(peer);
 }
@@ -359,7 +372,7 @@ int main(void)
         cmocka_unit_test(nothing_below_the_floor_is_shown),
         cmocka_unit_test(expected_does_not_depend_on_what_is_shown),
         cmocka_unit_test(the_words_behind_a_gap_are_those_of_the_text),
-        cmocka_unit_test(a_draft_and_the_same_item_get_the_same_gaps),
+        cmocka_unit_test(an_item_s_own_share_is_taken_out_of_its_chances),
         cmocka_unit_test(an_id_and_a_draft_are_not_asked_about_together),
         cmocka_unit_test(asking_changes_nothing),
     };

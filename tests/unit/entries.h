@@ -9,6 +9,7 @@
 #include <stdio.h>
 #include <string.h>
 
+#include "daemon/learner/model.h"
 #include "daemon/text/features.h"
 #include "tests/unit/near.h"
 #include "tests/unit/repeatable.h"
@@ -33,6 +34,8 @@ struct entry {
     size_t known_not_count;
     uint32_t checked_below;
     bool same_words;
+    struct model_trial trials[ENTRY_TAGS];
+    size_t trial_count;
 };
 
 /* Several tag numbers as two arguments: the array and its length. */
@@ -55,6 +58,15 @@ static inline void entry_add_tag(uint32_t *list, size_t *count, uint32_t tag)
         list[at] = list[at - 1];
     }
     list[at] = tag;
+}
+
+static inline bool entry_list_holds(const uint32_t *list, size_t count, uint32_t tag)
+{
+    size_t at = 0;
+    while (at < count && list[at] != tag) {
+        at++;
+    }
+    return at < count;
 }
 
 /* `words` with a space between each, none twice. */
@@ -80,6 +92,37 @@ static inline void entry_set(struct entry *entry, const char *words, const uint3
     for (size_t i = 0; i < tag_count; i++) {
         entry_add_tag(entry->tags, &entry->tag_count, tags[i]);
     }
+}
+
+/* --- what is said of an entry -------------------------------------------------------------------
+ * The entry as it is afterwards: the same words, which stay where they were. */
+
+static inline void entry_follow(struct entry *next, const struct entry *before)
+{
+    *next = *before;
+    next->number = entry_new_number();
+    next->same_words = true;
+}
+
+/* A tag is found to belong. */
+static inline void entry_find_tag(struct entry *entry, uint32_t tag)
+{
+    entry_add_tag(entry->tags, &entry->tag_count, tag);
+    entry_add_tag(entry->examined, &entry->examined_count, tag);
+}
+
+/* A tag that is not on it is found not to belong. */
+static inline void entry_deny_tag(struct entry *entry, uint32_t tag)
+{
+    entry_add_tag(entry->known_not, &entry->known_not_count, tag);
+}
+
+/* A check at random says whether a tag that belongs was given. */
+static inline void entry_try_tag(struct entry *entry, uint32_t tag, bool was_given)
+{
+    assert_true(entry->trial_count < ENTRY_TAGS);
+    entry->trials[entry->trial_count++] =
+        (struct model_trial){.tag = tag, .halves = 2, .given_halves = was_given ? 2 : 0};
 }
 
 /* --- an invented stream -------------------------------------------------------------------------

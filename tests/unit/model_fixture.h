@@ -29,7 +29,9 @@ static inline struct model_item entry_item(const struct entry *entry)
                                .known_not = entry->known_not,
                                .known_not_count = entry->known_not_count,
                                .checked_below = entry->checked_below,
-                               .same_words = entry->same_words};
+                               .same_words = entry->same_words,
+                               .trials = entry->trials,
+                               .trial_count = entry->trial_count};
 }
 
 static inline struct model_settings learner_settings(void)
@@ -127,6 +129,25 @@ static inline struct model_answer learner_ask(const struct learner *learner, con
     return learner_answer(learner, &question);
 }
 
+/* To the last bit. */
+static inline void assert_same_answer(const struct model_answer *one,
+                                      const struct model_answer *other)
+{
+    assert_int_equal(one->gap_count, other->gap_count);
+    assert_true(one->expected == other->expected);
+    assert_int_equal(one->early, other->early);
+    for (size_t i = 0; i < one->gap_count; i++) {
+        assert_int_equal(one->gaps[i].tag, other->gaps[i].tag);
+        assert_true(one->gaps[i].chance == other->gaps[i].chance);
+        assert_true(one->gaps[i].score == other->gaps[i].score);
+        assert_int_equal(one->gaps[i].word_count, other->gaps[i].word_count);
+        for (size_t k = 0; k < one->gaps[i].word_count; k++) {
+            assert_int_equal(one->gaps[i].words[k].feature, other->gaps[i].words[k].feature);
+            assert_true(one->gaps[i].words[k].share == other->gaps[i].words[k].share);
+        }
+    }
+}
+
 static inline const struct model_gap *find_gap(const struct model_answer *answer, uint32_t tag)
 {
     for (size_t i = 0; i < answer->gap_count; i++) {
@@ -151,6 +172,83 @@ static inline struct model_size learner_size(const struct learner *learner)
     struct model_size size;
     model_measure(learner->model, &size);
     return size;
+}
+
+/* What the reliability table says of all chances together. */
+struct learner_rated {
+    uint64_t shown;
+    uint64_t confirmed;
+    double chances; /* their sum */
+};
+
+static inline struct learner_rated learner_rated(const struct learner *learner)
+{
+    struct reliability_row rows[RELIABILITY_CLASSES];
+    struct learner_rated sum = {0};
+    standing_reliability(model_standing(learner->model), rows);
+    for (size_t i = 0; i < RELIABILITY_CLASSES; i++) {
+        sum.shown += rows[i].shown;
+        sum.confirmed += rows[i].confirmed;
+        sum.chances += rows[i].shown > 0 ? (double)rows[i].shown * rows[i].mean_chance : 0.0;
+    }
+    return sum;
+}
+
+/* --- the worklist -------------------------------------------------------------------------------
+ */
+
+/* What the worklist says of an entry; NULL: nothing. */
+static inline const struct worklist_entry *learner_listed(const struct learner *learner,
+                                                          const struct entry *entry)
+{
+    return worklist_find(model_worklist(learner->model), entry->number);
+}
+
+/* The pair of an entry with a tag, as it was learned; NULL: none. */
+static inline const struct worklist_pair *listed_pair(const struct worklist_entry *entry,
+                                                      uint32_t tag)
+{
+    for (uint32_t i = 0; i < entry->pair_count; i++) {
+        if (entry->pairs[i].tag == tag) {
+            return &entry->pairs[i];
+        }
+    }
+    return NULL;
+}
+
+static inline const struct worklist_gap *listed_gap(const struct worklist_entry *listed,
+                                                    uint32_t tag)
+{
+    for (uint32_t i = 0; listed && i < listed->gap_count; i++) {
+        if (listed->gaps[i].tag == tag) {
+            return &listed->gaps[i];
+        }
+    }
+    return NULL;
+}
+
+/* Scores an entry again and puts it in. */
+static inline void learner_rescore(const struct learner *learner, const struct entry *entry)
+{
+    const struct model_item item = entry_item(entry);
+    struct worklist_entry listed;
+    assert_int_equal(model_rescore(learner->model, &item, learner->scratch, &listed), 0);
+    assert_int_equal(model_relist(learner->model, &listed), 0);
+}
+
+/* Of an entry as it is filed: what it may lack, every tag with whatever chance. */
+static inline struct model_question filed_question(const struct entry *entry)
+{
+    return (struct model_question){.features = entry->features,
+                                   .feature_count = entry->feature_count,
+                                   .given = entry->tags,
+                                   .given_count = entry->tag_count,
+                                   .excluded = entry->known_not,
+                                   .excluded_count = entry->known_not_count,
+                                   .checked_below = entry->checked_below,
+                                   .number = entry->number,
+                                   .tagged = true,
+                                   .most = MODEL_MOST_GAPS};
 }
 
 /* --- a learner that has seen a stream ---------------------------------------------------------

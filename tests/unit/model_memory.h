@@ -377,8 +377,11 @@ static inline void memory_assert_same_entry(const struct worklist_entry *one,
     assert_true(one->number == other->number);
     assert_true(one->scored == other->scored);
     assert_true(one->counted == other->counted);
+    assert_true(one->promise == other->promise);
     assert_int_equal(one->gap_count, other->gap_count);
     assert_memory_equal(one->gaps, other->gaps, one->gap_count * sizeof *one->gaps);
+    assert_int_equal(one->pair_count, other->pair_count);
+    assert_memory_equal(one->pairs, other->pairs, one->pair_count * sizeof *one->pairs);
 }
 
 static inline void memory_assert_same_words(const struct memory *one, const struct memory *other)
@@ -397,6 +400,18 @@ static inline void memory_assert_same_words(const struct memory *one, const stru
     }
 }
 
+static inline void memory_assert_same_figures(const struct memory *one, const struct memory *other)
+{
+    for (size_t kind = 0; kind < MODEL_FIGURES_KINDS; kind++) {
+        for (size_t number = 0; number < MEMORY_FIGURES; number++) {
+            if (memcmp(&one->figures[kind][number], &other->figures[kind][number],
+                       sizeof one->figures[kind][number]) != 0) {
+                fail_msg("figures %zu of kind %zu differ", number, kind);
+            }
+        }
+    }
+}
+
 /* Two stores hold the same to the last bit; the numbers of the words may differ, and the order of
  * the entries. */
 static inline void memory_assert_same(const struct memory *one, struct memory *other)
@@ -404,7 +419,7 @@ static inline void memory_assert_same(const struct memory *one, struct memory *o
     memory_assert_same_words(one, other);
     assert_memory_equal(one->has_tag, other->has_tag, sizeof one->has_tag);
     assert_memory_equal(one->tags, other->tags, sizeof one->tags);
-    assert_memory_equal(one->figures, other->figures, sizeof one->figures);
+    memory_assert_same_figures(one, other);
     assert_memory_equal(&one->totals, &other->totals, sizeof one->totals);
     assert_int_equal(one->entry_count, other->entry_count);
     for (size_t i = 0; i < one->entry_count; i++) {

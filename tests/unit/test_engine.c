@@ -89,6 +89,41 @@ static void opened_again_it_answers_the_same(void **state)
     assert_same_asked(&before, &after);
 }
 
+/* What the model knows of itself. */
+struct known {
+    struct standing_answer standing;
+    size_t listed;
+    uint64_t learned;
+};
+
+static void copy_known(void *user, const struct model *model, uint64_t learned)
+{
+    struct known *known = user;
+    standing_ask(model_standing(model), 0, &known->standing);
+    known->listed = worklist_size(model_worklist(model));
+    known->learned = learned;
+}
+
+static void opened_again_its_standing_and_worklist_are_the_same(void **state)
+{
+    struct opened *opened = *state;
+    struct stream stream = new_stream();
+    struct known before = {.listed = 0};
+    struct known after = {.listed = 0};
+    file_stream(opened, &stream, 0, 100);
+    assert_int_equal(engine_read_model(opened->engine, copy_known, &before), 0);
+    assert_int_equal(before.learned, 100); /* it waits for what was promised */
+    assert_int_equal(before.listed, 100);
+    assert_int_equal(before.standing.items, 100);
+    assert_true(before.standing.bands[STANDING_ALL].with[RANKING_P1].value > 0.0);
+    assert_true(before.standing.bands[STANDING_ALL].without[RANKING_P1].value > 0.0);
+    close_home(opened);
+    open_home(opened);
+    assert_int_equal(engine_read_model(opened->engine, copy_known, &after), 0);
+    assert_int_equal(after.listed, 100);
+    assert_memory_equal(&after.standing, &before.standing, sizeof before.standing);
+}
+
 /* A home that was closed in between against one that was not. */
 static void opened_again_it_goes_on_as_if_nothing_had_been(void **state)
 {
@@ -355,6 +390,7 @@ int main(void)
         TEST(the_home_can_be_measured),
         TEST(before_any_check_a_propensity_is_that_of_the_curve),
         TEST(opened_again_it_answers_the_same),
+        TEST(opened_again_its_standing_and_worklist_are_the_same),
         TEST(opened_again_it_goes_on_as_if_nothing_had_been),
         TEST(other_settings_have_everything_learned_again),
         TEST(nothing_of_the_old_model_is_left_when_all_is_learned_again),

@@ -10,6 +10,7 @@
 
 #include "daemon/learner/model_parts.h"
 #include "tests/unit/model_fixture.h"
+#include "tests/unit/model_memory.h"
 #include "tests/unit/store_fixture.h"
 
 static const unsigned char UUID[STORE_UUID_BYTES] = "fifteen letters";
@@ -26,10 +27,17 @@ struct keeping {
     struct store_error error;
 };
 
+static struct model_settings settings_with_a_shadow(void)
+{
+    struct model_settings settings = learner_settings();
+    settings.shadow = true;
+    return settings;
+}
+
 static int set_up(void **state)
 {
     struct keeping *keeping = calloc(1, sizeof *keeping);
-    const struct model_settings settings = learner_settings();
+    const struct model_settings settings = settings_with_a_shadow();
     assert_non_null(keeping);
     home_make(keeping->home);
     keeping->settings =
@@ -85,7 +93,7 @@ static bool keep(struct keeping *keeping, uint64_t learned)
 /* Into a new model, from a store that was opened anew. */
 static int restore(struct keeping *keeping)
 {
-    const struct model_settings settings = learner_settings();
+    const struct model_settings settings = settings_with_a_shadow();
     model_store_close(keeping->store);
     keeping->store = NULL;
     assert_int_equal(model_store_open(&keeping->settings, &keeping->store, &keeping->error),
@@ -126,6 +134,42 @@ static void assert_same_answers(struct keeping *keeping)
     }
 }
 
+/* The worklist, the standing and the propensities, to the last bit. */
+static void assert_knows_the_same(struct keeping *keeping)
+{
+    const struct worklist *first = model_worklist(keeping->learner.model);
+    const struct worklist *second = model_worklist(keeping->again.model);
+    struct standing_answer standings[2];
+    assert_true(worklist_size(first) > 0);
+    assert_int_equal(worklist_size(second), worklist_size(first));
+    for (size_t i = 0; i < worklist_size(first); i++) {
+        const struct worklist_entry *entry = worklist_at(first, i);
+        memory_assert_same_entry(entry, worklist_find(second, entry->number));
+    }
+    standing_ask(model_standing(keeping->learner.model), 0, &standings[0]);
+    standing_ask(model_standing(keeping->again.model), 0, &standings[1]);
+    assert_memory_equal(&standings[1], &standings[0], sizeof standings[0]);
+    assert_memory_equal(model_fit(keeping->again.model), model_fit(keeping->learner.model),
+                        sizeof(struct propensity_fit));
+    assert_true(model_stale_below(keeping->again.model) ==
+                model_stale_below(keeping->learner.model));
+}
+
+/* A draft is filed without its tags, which a check finds. */
+static void examine(struct keeping *keeping)
+{
+    static struct entry filed;
+    struct entry checked;
+    entry_set(&filed, DRAFT, TAGS(20));
+    learner_change(&keeping->learner, &filed, NULL);
+    entry_follow(&checked, &filed);
+    entry_find_tag(&checked, 3);
+    entry_try_tag(&checked, 3, false);
+    entry_try_tag(&checked, 20, true);
+    checked.checked_below = STREAM_TAGS;
+    learner_change(&keeping->learner, &checked, &filed);
+}
+
 /* --- there and back --- */
 
 static void a_restored_model_answers_the_same(void **state)
@@ -145,6 +189,21 @@ static void a_restored_model_goes_on_learning_the_same(void **state)
     assert_int_equal(restore(keeping), STORE_OK);
     learn(keeping, 300, true);
     assert_same_answers(keeping);
+    assert_knows_the_same(keeping);
+}
+
+static void a_restored_model_knows_what_was_found(void **state)
+{
+    struct keeping *keeping = *state;
+    learn(keeping, 200, false);
+    examine(keeping);
+    (void)keep(keeping, 300);
+    assert_int_equal(restore(keeping), STORE_OK);
+    assert_knows_the_same(keeping);
+    assert_near(model_fit(keeping->again.model)->trials, 2.0, 0.0);
+    learn(keeping, 100, true);
+    assert_same_answers(keeping);
+    assert_knows_the_same(keeping);
 }
 
 static void what_has_changed_since_is_stored_over_what_was(void **state)
@@ -326,6 +385,7 @@ int main(void)
     const struct CMUnitTest tests[] = {
         TEST(a_restored_model_answers_the_same),
         TEST(a_restored_model_goes_on_learning_the_same),
+        TEST(a_restored_model_knows_what_was_found),
         TEST(what_has_changed_since_is_stored_over_what_was),
         TEST(words_that_no_item_has_any_more_are_forgotten),
         TEST(a_store_that_is_reset_holds_nothing),

@@ -104,13 +104,14 @@ static void put_chunk(struct stored *stored, struct model_store_writing *writing
 static void put_entry(struct stored *stored, struct model_store_writing *writing, uint64_t number)
 {
     static const uint32_t tags[] = {2, 7};
-    static const float values[] = {0.5F, -0.25F, 0.125F, -0.5F, 0.0F, -1.0F};
+    static const float scores[] = {0.5F, -0.5F};
+    static const float values[] = {-0.25F, 0.125F, 0.0F, -1.0F};
     struct model_store_entry entry = {.number = number,
                                       .scored = 1ULL << 40U,
                                       .counted = 9,
-                                      .tag_count = 2,
-                                      .tags = tags,
-                                      .values = values};
+                                      .promise = 0.75F,
+                                      .gaps = {2, tags, scores},
+                                      .pairs = {2, tags, values}};
     assert_int_equal(model_store_put_entry(writing, &entry, &stored->error), STORE_OK);
 }
 
@@ -168,10 +169,15 @@ static int see_entry(void *user, const struct model_store_entry *entry)
 {
     int result = say(user, "entry %llu @%llu/%llu", (unsigned long long)entry->number,
                      (unsigned long long)entry->scored, (unsigned long long)entry->counted);
-    for (uint32_t i = 0; i < entry->tag_count && result == STORE_OK; i++) {
-        const float *values = entry->values + (size_t)i * MODEL_STORE_ENTRY_VALUES;
-        result = say(user, " %u:%g,%g,%g", entry->tags[i], (double)values[0], (double)values[1],
-                     (double)values[2]);
+    if (result == STORE_OK) {
+        result = say(user, " %g", (double)entry->promise);
+    }
+    for (uint32_t i = 0; i < entry->gaps.count && result == STORE_OK; i++) {
+        result = say(user, " %u:%g", entry->gaps.tags[i], (double)entry->gaps.values[i]);
+    }
+    for (uint32_t i = 0; i < entry->pairs.count && result == STORE_OK; i++) {
+        const float *values = entry->pairs.values + (size_t)i * MODEL_STORE_PAIR_VALUES;
+        result = say(user, " %u:%g,%g", entry->pairs.tags[i], (double)values[0], (double)values[1]);
     }
     return result == STORE_OK ? say(user, "; ") : result;
 }
@@ -225,7 +231,7 @@ static void put_some_of_each(struct stored *stored)
 /* What is there beside words and chunks. */
 #define REST                                                                                       \
     "tag 7 x40/31 3:5 -0.5(3) 0.25(2); figures 1/127 1.5 -1e+300; "                                \
-    "entry 12 @1099511627776/9 2:0.5,-0.25,0.125 7:-0.5,0,-1; "
+    "entry 12 @1099511627776/9 0.75 2:0.5 7:-0.5 2:-0.25,0.125 7:0,-1; "
 
 /* --- tests --- */
 
@@ -341,7 +347,7 @@ static void an_entry_that_was_taken_out_is_gone(void **state)
     assert_int_equal(model_store_remove_entry(writing, 12, &stored->error), STORE_OK);
     assert_int_equal(model_store_remove_entry(writing, 99, &stored->error), STORE_OK);
     commit(stored, writing);
-    assert_loads(stored, "entry 13 @1099511627776/9 2:0.5,-0.25,0.125 7:-0.5,0,-1; ");
+    assert_loads(stored, "entry 13 @1099511627776/9 0.75 2:0.5 7:-0.5 2:-0.25,0.125 7:0,-1; ");
 }
 
 static void clearing_forgets_everything(void **state)

@@ -31,15 +31,6 @@ static void file_entry(const struct learner *learner, const struct entry *entry,
     learner_change(learner, entry, NULL);
 }
 
-static struct model_question filed_question(const struct entry *entry)
-{
-    struct model_question question = entry_question(entry);
-    question.tagged = true;
-    question.given = entry->tags;
-    question.given_count = entry->tag_count;
-    return question;
-}
-
 static void add_expected(const struct learner *learner, const struct entry *entry, double *sum)
 {
     struct model_question question = filed_question(entry);

@@ -104,27 +104,30 @@ static void of_many_words_the_strongest_eight_are_told(void **state)
 }
 
 /*
- * "fog" in each of ten items: idf ln(1 + 10/10). "moon" in none weighs as in one, ln(1 + 10/1), and
- * half of that, since no other item shares it: x = .693147/√(.693147² + 1.198948²) = .500506. Of
- * the positive part w·x + b the share is s, so that x is the ratio of s/(1 - s) with "moon" and
- * without; with ten items b is above 0.
+ * By hand, of an entry filed with "fog moon" among twenty of "fog": "fog" is held by all 21, so its
+ * idf is ln 2 = .693147; "moon" by this one alone, ln 22 = 3.091042, of which a half counts,
+ * 1.545521, since no other item shares it: x = .693147/√(.693147² + 1.545521²) = .409217. Of the
+ * positive part w·x + b the share is s, so that x is the ratio of s/(1 - s) with "moon" and
+ * without; with so many items b is above 0.
  */
 static void a_word_that_no_other_item_holds_weighs_half(void **state)
 {
     const struct learner *learner = *state;
+    struct entry filed;
     double odds[2];
-    for (int i = 0; i < 10; i++) {
+    entry_set(&filed, "fog moon", NO_TAGS);
+    learner_change(learner, &filed, NULL);
+    for (int i = 0; i < 20; i++) {
         learner_file(learner, "fog", TAGS(0));
     }
-    for (int i = 0; i < 2; i++) {
-        struct entry entry;
-        entry_set(&entry, i == 0 ? "fog" : "fog moon", NO_TAGS);
-        struct model_question question = entry_question(&entry);
-        question.why = true;
+    struct model_question question = filed_question(&filed);
+    question.why = true;
+    for (size_t words = 1; words <= 2; words++) {
+        question.feature_count = words;
         double share = learner_answer(learner, &question).gaps[0].words[0].share;
-        odds[i] = share / (1.0 - share);
+        odds[words - 1] = share / (1.0 - share);
     }
-    assert_near(odds[1] / odds[0], 0.500506, 1e-5);
+    assert_near(odds[1] / odds[0], 0.409217, 1e-5);
 }
 
 static void words_are_told_when_they_are_asked_for_alone(void **state)

@@ -8,8 +8,10 @@
 
 #include <cmocka.h>
 #include <pthread.h>
+#include <sched.h>
 #include <unistd.h>
 
+#include "tests/unit/near.h"
 #include "tests/unit/store_fixture.h"
 
 enum {
@@ -31,6 +33,14 @@ struct training {
     pthread_cond_t kept;
     size_t kept_count; /* under the mutex: how often the model was stored */
 };
+
+static const struct model_settings MODEL_SETTINGS = {
+    .weights = {.surrogate = SURROGATE_SQUARED_HINGE},
+    .curve = {.a = 0.55, .b = 1.5},
+    .correction = true,
+    .step = 0.5,
+    .evidence_half_life_items = 50000.0,
+    .shadow = true};
 
 /* --- the fixture --- */
 
@@ -55,17 +65,12 @@ static void wait_until_kept(struct training *training, size_t count)
 static void open_parts(struct training *training)
 {
     static const struct siphash_key KEY = {7, 8};
-    const struct model_settings model_settings = {.weights = {.surrogate = SURROGATE_SQUARED_HINGE},
-                                                  .curve = propensity_curve_default(),
-                                                  .correction = true,
-                                                  .step = 0.5,
-                                                  .evidence_half_life_items = 50000.0};
     const struct backlog_start start = {.visible_within_ms = 0};
     struct model *model = NULL;
     assert_int_equal(
         model_store_open(&training->store->settings, &training->model_store, &training->error),
         STORE_OK);
-    assert_int_equal(model_new(&model_settings, &KEY, &model), 0);
+    assert_int_equal(model_new(&MODEL_SETTINGS, &KEY, &model), 0);
     assert_int_equal(shared_model_init_take(&training->shared, model, 0), 0);
     assert_int_equal(backlog_new(&start, &training->backlog), 0);
     assert_int_equal(troubles_init(&training->troubles), 0);
@@ -158,6 +163,15 @@ static struct model_size size_of(struct training *training)
     return size;
 }
 
+/* The trials behind the propensities. */
+static double trials_of(struct training *training)
+{
+    shared_model_read(&training->shared);
+    double trials = model_fit(training->shared.model)->trials;
+    shared_model_unlock(&training->shared);
+    return trials;
+}
+
 /* Up to where the stored model has learned; 0: none is stored. */
 static uint64_t stored(struct training *training)
 {
@@ -230,6 +244,138 @@ static void a_change_that_was_erased_is_passed_over(void **state)
     assert_int_equal(learned(training), 2);
     assert_int_equal(size_of(training).documents, 1);
     assert_int_equal(size_of(training).words, 2);
+}
+
+/* --- what is said of items later --- */
+
+/* An entry on weather, and one on casualties, so that both tags are there. */
+static void file_two(struct training *training)
+{
+    file(training, "log/1", "fog bell");
+    (void)fixture_file_as(training->store,
+                          (struct item_filing){.id = text_of("log/2"), .text = text_of("wreck")},
+                          (struct names){.tags = {"casualties"}});
+}
+
+static void what_is_said_of_an_item_is_learned_with_it(void **state)
+{
+    struct training *training = *state;
+    file_two(training);
+    struct said said = fixture_rule(training->store, said_by("ann", "log/1"),
+                                    (struct rulings){.belongs = {"casualties"}});
+    assert_int_equal(said.result, STORE_OK);
+    commit(training);
+    start(training);
+    assert_int_equal(learned(training), 3);
+    assert_int_equal(size_of(training).documents, 2);
+    assert_int_equal(size_of(training).words, 3);
+    assert_int_equal(size_of(training).listed, 2);
+}
+
+/* By the time it is learned, the filing that was ruled on is gone. */
+static void a_ruling_on_a_filing_that_was_erased_is_learned_as_new(void **state)
+{
+    struct training *training = *state;
+    file_two(training);
+    (void)fixture_rule(training->store, said_by("ann", "log/1"),
+                       (struct rulings){.belongs = {"casualties"}});
+    assert_int_equal(fixture_erase(training->store, 3), 1);
+    commit(training);
+    start(training);
+    assert_int_equal(learned(training), 3);
+    assert_int_equal(size_of(training).documents, 2);
+    assert_int_equal(size_of(training).words, 3);
+}
+
+/* The check goes through weather, which was given, and casualties, which was not. */
+static void a_check_at_random_tries_what_belongs(void **state)
+{
+    struct training *training = *state;
+    file_two(training);
+    struct said said = fixture_check(training->store, said_by("ann", "log/1"), true,
+                                     (struct names){.tags = {"weather", "casualties"}});
+    assert_int_equal(said.result, STORE_OK);
+    commit(training);
+    start(training);
+    assert_int_equal(learned(training), 3);
+    assert_near(trials_of(training), 2.0, 0.0);
+    (void)fixture_withdraw(training->store, "log/1");
+    commit(training);
+    assert_int_equal(learned(training), 4);
+    assert_near(trials_of(training), 0.0, 0.0);
+}
+
+static void a_check_of_a_chosen_item_tries_nothing(void **state)
+{
+    struct training *training = *state;
+    file_two(training);
+    (void)fixture_check(training->store, said_by("ann", "log/1"), false,
+                        (struct names){.tags = {"weather", "casualties"}});
+    commit(training);
+    start(training);
+    assert_int_equal(learned(training), 3);
+    assert_near(trials_of(training), 0.0, 0.0);
+}
+
+/* Two taggers overlook the same things: half a trial each, given or not. */
+static void a_second_tagging_tries_by_halves(void **state)
+{
+    struct training *training = *state;
+    file_two(training);
+    struct said said =
+        fixture_tag_again(training->store, said_by("bea", "log/1"), "2031-05-04T03:02:01Z", false,
+                          (struct names){.tags = {"weather", "casualties"}});
+    assert_int_equal(said.result, STORE_OK);
+    commit(training);
+    start(training);
+    assert_int_equal(learned(training), 3);
+    assert_near(trials_of(training), 1.0, 0.0);
+}
+
+/* --- the worklist --- */
+
+static void file_many(struct training *training, int count)
+{
+    for (int i = 0; i < count; i++) {
+        char id[16];
+        (void)snprintf(id, sizeof id, "log/%d", i);
+        file(training, id, i % 2 ? "fog bell" : "fog lamp");
+    }
+    commit(training);
+}
+
+/* Scores older than the newest eighth are stale, until there is time. */
+static void when_there_is_nothing_to_learn_stale_items_are_scored_again(void **state)
+{
+    struct training *training = *state;
+    file_many(training, 40);
+    start(training);
+    assert_int_equal(learned(training), 40);
+    while (size_of(training).stale > 0) {
+        (void)sched_yield();
+    }
+    assert_int_equal(size_of(training).listed, 40);
+}
+
+static void what_was_scored_again_is_stored(void **state)
+{
+    struct training *training = *state;
+    struct model *again = NULL;
+    struct model_size size;
+    const struct siphash_key key = {9, 9};
+    file_many(training, 40);
+    start(training);
+    assert_int_equal(learned(training), 40);
+    while (size_of(training).stale > 0) {
+        (void)sched_yield();
+    }
+    stop(training);
+    assert_int_equal(model_new(&MODEL_SETTINGS, &key, &again), 0);
+    assert_int_equal(model_keeper_load(training->model_store, again, &training->error), STORE_OK);
+    model_measure(again, &size);
+    assert_int_equal(size.listed, 40);
+    assert_int_equal(size.stale, 0);
+    model_free(again);
 }
 
 /* --- storing --- */
@@ -333,6 +479,13 @@ int main(void)
         TEST(more_changes_than_one_view_takes_are_learned),
         TEST(what_was_revised_or_withdrawn_is_unlearned),
         TEST(a_change_that_was_erased_is_passed_over),
+        TEST(what_is_said_of_an_item_is_learned_with_it),
+        TEST(a_ruling_on_a_filing_that_was_erased_is_learned_as_new),
+        TEST(a_check_at_random_tries_what_belongs),
+        TEST(a_check_of_a_chosen_item_tries_nothing),
+        TEST(a_second_tagging_tries_by_halves),
+        TEST(when_there_is_nothing_to_learn_stale_items_are_scored_again),
+        TEST(what_was_scored_again_is_stored),
         TEST(the_model_is_stored_after_so_many_changes),
         TEST(the_model_is_stored_after_some_time),
         TEST(the_model_is_stored_when_the_trainer_stops),

@@ -109,6 +109,11 @@ void model_gather_evidence(struct model *model, const struct model_item *item,
     model->evidence_items++;
     model_count_agreement(model, scratch);
     count_pairs(model, item, scratch);
+    if (item->checked_below > 0) { /* all is learned again, and the filing's record is gone */
+        struct model_item before = *item;
+        before.checked_below = 0;
+        model_count_checked(model, &before, NULL, scratch);
+    }
     model->evidence_changed = true;
     model_refit_curves(model, false);
 }

@@ -145,11 +145,9 @@ static void count_finding(const struct examining *examining, uint32_t tag, bool 
 /* --- a check: all other gaps are known not to belong --------------------------------------------
  */
 
-static void count_rest_of_check(const struct examining *examining)
+void model_count_checked(struct model *model, const struct model_item *before,
+                         const struct worklist_entry *entry, const struct model_scratch *scratch)
 {
-    struct model *model = examining->model;
-    const struct worklist_entry *entry = examining->entry;
-    const struct model_scratch *scratch = examining->scratch;
     double rest[CALIBRATORS_CLASSES] = {0};
     double weight = 1.0;
     if (entry) {
@@ -158,7 +156,7 @@ static void count_rest_of_check(const struct examining *examining)
     }
     for (uint32_t tag = 0; tag < model->tag_count; tag++) {
         if (model_is_unused(model, tag) || scratch->barred[tag] != MARK_NONE ||
-            !was_gap(examining->replaced, tag)) {
+            !was_gap(before, tag)) {
             continue;
         }
         struct counted_pair pair = {
@@ -190,7 +188,8 @@ static void gather(const struct examining *examining, const struct findings *fin
         count_finding(examining, findings->denied[i], false);
     }
     if (examining->is_check) {
-        count_rest_of_check(examining);
+        model_count_checked(examining->model, examining->replaced, examining->entry,
+                            examining->scratch);
     }
 }
 

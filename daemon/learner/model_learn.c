@@ -281,6 +281,9 @@ static int take_stock(struct model *model, const struct model_item *item,
     }
     model_make_entry(model, item, scratch, ret_entry);
     model_note_pairs(ret_entry, scratch);
+    if (old) {
+        model_keep_counted(old, ret_entry);
+    }
     model_unmark_item(item, scratch);
     model_clear_own(old, scratch);
     return 0;

@@ -229,11 +229,19 @@ void model_clear_own(const struct worklist_entry *entry, struct model_scratch *s
  * earlier filing has left in scratch->own. */
 void model_note_pairs(struct worklist_entry *entry, const struct model_scratch *scratch);
 
+/* A revision's pairs were counted when the item was filed, with the scores of that day. */
+void model_keep_counted(const struct worklist_entry *old, struct worklist_entry *entry);
+
 /* The entry of the item just scored and marked, with scratch->best filled, but for its pairs. */
 void model_make_entry(const struct model *model, const struct model_item *item,
                       const struct model_scratch *scratch, struct worklist_entry *ret_entry);
 
 /* --- model_examine --- */
+
+/* Counts as examined, and not belonging, all gaps of an item that a check has gone through: those
+ * that it had `before` and has no more. Marked as it is now; `entry` is from before, or NULL. */
+void model_count_checked(struct model *model, const struct model_item *before,
+                         const struct worklist_entry *entry, const struct model_scratch *scratch);
 
 /* Learns what has become known of the tags of an item whose words are the same. */
 int model_examine(struct model *model, const struct model_item *item,

@@ -100,6 +100,18 @@ void model_note_pairs(struct worklist_entry *entry, const struct model_scratch *
     }
 }
 
+void model_keep_counted(const struct worklist_entry *old, struct worklist_entry *entry)
+{
+    entry->counted = old->counted;
+    for (uint32_t i = 0; i < entry->pair_count; i++) {
+        for (uint32_t j = 0; j < old->pair_count; j++) {
+            if (old->pairs[j].tag == entry->pairs[i].tag) {
+                entry->pairs[i].counted = old->pairs[j].counted;
+            }
+        }
+    }
+}
+
 /* --- scoring again ------------------------------------------------------------------------------
  */
 

@@ -179,6 +179,7 @@ static void a_check_rules_on_every_gap(void **state)
     examine(examining);
     assert_added(examining,
                  (struct calibrators_cell){.ruled = STREAM_TAGS - 1.0, .ruled_true = 1.0});
+    assert_int_equal(learner_rated(&examining->learner).shown, 0); /* nothing was proposed */
 }
 
 static void a_check_rules_on_no_gap_twice(void **state)

@@ -37,7 +37,11 @@ int items_entry(struct store_view *view, struct store_text id, struct id_entry *
 /* The content of a stored item, for comparing it with a new one; points into the record. */
 struct store_text items_stored_content(const struct codec_writer *record);
 
-int items_no_memory(struct store_error *error);
+static inline int items_no_memory(struct store_error *error)
+{
+    (void)store_fail(error, STORE_NO_MEMORY, "out of memory");
+    return STORE_NO_MEMORY;
+}
 
 /* --- texts and numbers in a record --- */
 

@@ -7,12 +7,6 @@
 #include "storage/items_private.h"
 #include "storage/store_private.h"
 
-int items_no_memory(struct store_error *error)
-{
-    (void)store_fail(error, STORE_NO_MEMORY, "out of memory");
-    return STORE_NO_MEMORY;
-}
-
 /* --- into a record ------------------------------------------------------------------------------
  */
 

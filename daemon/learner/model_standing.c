@@ -66,7 +66,7 @@ static void fill_lists(const struct model *model, const struct model_scratch *sc
                        const struct candidates best[STANDING_BANDS], bool by_chance,
                        struct lists *lists)
 {
-    struct proposed all[STANDING_BANDS * CANDIDATES_MOST];
+    struct proposed all[STANDING_BANDS * CANDIDATES_MOST] = {0};
     size_t count = 0;
     for (enum standing_band band = STANDING_HEAD; band < STANDING_BANDS; band++) {
         struct proposed *of_band = all + count;

@@ -68,7 +68,7 @@ static void insert_gap(struct worklist_entry *entry, double chances[WORKLIST_GAP
 void model_make_entry(const struct model *model, const struct model_item *item,
                       const struct model_scratch *scratch, struct worklist_entry *ret_entry)
 {
-    double chances[WORKLIST_GAPS];
+    double chances[WORKLIST_GAPS] = {0};
     double promise = model_promise(model, item->checked_below, scratch);
     *ret_entry = (struct worklist_entry){.number = item->number,
                                          .scored = model->latest,

@@ -404,10 +404,8 @@ static inline void memory_assert_same_figures(const struct memory *one, const st
 {
     for (size_t kind = 0; kind < MODEL_FIGURES_KINDS; kind++) {
         for (size_t number = 0; number < MEMORY_FIGURES; number++) {
-            if (memcmp(&one->figures[kind][number], &other->figures[kind][number],
-                       sizeof one->figures[kind][number]) != 0) {
-                fail_msg("figures %zu of kind %zu differ", number, kind);
-            }
+            assert_memory_equal(&one->figures[kind][number], &other->figures[kind][number],
+                                sizeof one->figures[kind][number]);
         }
     }
 }

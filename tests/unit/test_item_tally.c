@@ -108,7 +108,8 @@ static int tear_down(void **state)
 static uint32_t draw_tags(struct run *run)
 {
     uint32_t all = (1U << TAGS) - 1U;
-    return (uint32_t)(repeatable_next(&run->random) & repeatable_next(&run->random)) & all;
+    uint32_t half = (uint32_t)repeatable_next(&run->random);
+    return half & (uint32_t)repeatable_next(&run->random) & all;
 }
 
 static struct item_names names_of(uint32_t bits, struct store_text texts[TAGS + 1])

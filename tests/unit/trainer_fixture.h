@@ -1,0 +1,163 @@
+/*
+ * trainer_fixture: a trainer at work on a store of its own, told of what was filed. Everything is
+ * promised at once. Include cmocka.h first.
+ */
+#ifndef UNDERTAG_TESTS_TRAINER_FIXTURE_H
+#define UNDERTAG_TESTS_TRAINER_FIXTURE_H
+
+#include <pthread.h>
+#include <unistd.h>
+
+#include "daemon/trainer.h"
+#include "tests/unit/store_fixture.h"
+
+enum {
+    HOUR_MS = 3600 * 1000,
+    GUARD_S = 120 /* a test that waits for what never comes ends */
+};
+
+struct training {
+    struct fixture *store;
+    struct model_store *model_store;
+    struct shared_model shared;
+    struct backlog *backlog;
+    struct troubles troubles;
+    struct features_settings features;
+    struct trainer_settings settings;
+    struct trainer *trainer;
+    struct store_error error;
+    pthread_mutex_t mutex;
+    pthread_cond_t kept;
+    size_t kept_count; /* under the mutex: how often the model was stored */
+};
+
+static const struct model_settings MODEL_SETTINGS = {
+    .weights = {.surrogate = SURROGATE_SQUARED_HINGE},
+    .curve = {.a = 0.55, .b = 1.5},
+    .correction = true,
+    .step = 0.5,
+    .evidence_half_life_items = 50000.0,
+    .shadow = true};
+
+/* --- the fixture --- */
+
+static inline void on_kept(void *user)
+{
+    struct training *training = user;
+    (void)pthread_mutex_lock(&training->mutex);
+    training->kept_count++;
+    (void)pthread_cond_signal(&training->kept);
+    (void)pthread_mutex_unlock(&training->mutex);
+}
+
+static inline void wait_until_kept(struct training *training, size_t count)
+{
+    (void)pthread_mutex_lock(&training->mutex);
+    while (training->kept_count < count) {
+        (void)pthread_cond_wait(&training->kept, &training->mutex);
+    }
+    (void)pthread_mutex_unlock(&training->mutex);
+}
+
+static inline void open_parts(struct training *training)
+{
+    static const struct siphash_key KEY = {7, 8};
+    const struct backlog_start start = {.visible_within_ms = 0};
+    struct model *model = NULL;
+    assert_int_equal(
+        model_store_open(&training->store->settings, &training->model_store, &training->error),
+        STORE_OK);
+    assert_int_equal(model_new(&MODEL_SETTINGS, &KEY, &model), 0);
+    assert_int_equal(shared_model_init_take(&training->shared, model, 0), 0);
+    assert_int_equal(backlog_new(&start, &training->backlog), 0);
+    assert_int_equal(troubles_init(&training->troubles), 0);
+    assert_int_equal(pthread_mutex_init(&training->mutex, NULL), 0);
+    assert_int_equal(pthread_cond_init(&training->kept, NULL), 0);
+    training->features = (struct features_settings){.title_weight = 1.5, .key = KEY};
+}
+
+static inline int training_set_up(void **state)
+{
+    struct training *training = calloc(1, sizeof *training);
+    assert_non_null(training);
+    (void)alarm(GUARD_S);
+    assert_int_equal(fixture_setup((void **)&training->store), 0);
+    open_parts(training);
+    training->settings = (struct trainer_settings){
+        .store = training->store->store,
+        .model_store = training->model_store,
+        .shared = &training->shared,
+        .backlog = training->backlog,
+        .troubles = &training->troubles,
+        .features = &training->features,
+        .origin = {.store_uuid = store_uuid(training->store->store), .settings = "step=0.5\n"},
+        .flush_every_ms = HOUR_MS,
+        .flush_changes = 1000 * 1000,
+        .user = training,
+        .kept = on_kept};
+    *state = training;
+    return 0;
+}
+
+static inline void start(struct training *training)
+{
+    assert_int_equal(trainer_new(&training->settings, &training->trainer), 0);
+}
+
+static inline void stop(struct training *training)
+{
+    backlog_stop(training->backlog);
+    trainer_free(training->trainer);
+    training->trainer = NULL;
+}
+
+static inline int training_tear_down(void **state)
+{
+    struct training *training = *state;
+    stop(training);
+    shared_model_deinit(&training->shared);
+    backlog_free(training->backlog);
+    troubles_deinit(&training->troubles);
+    model_store_close(training->model_store);
+    (void)pthread_cond_destroy(&training->kept);
+    (void)pthread_mutex_destroy(&training->mutex);
+    (void)fixture_teardown((void **)&training->store);
+    free(training);
+    return 0;
+}
+
+/* --- changes --- */
+
+static inline void file(struct training *training, const char *id, const char *text)
+{
+    const struct names names = {.tags = {"weather"}};
+    (void)fixture_file_as(training->store,
+                          (struct item_filing){.id = text_of(id), .text = text_of(text)}, names);
+}
+
+/* Tells of all that was filed. */
+static inline void commit(struct training *training)
+{
+    backlog_committed(training->backlog, fixture_totals(training->store).seq, 1000, 0);
+}
+
+/* Waits, since everything is promised at once. */
+static inline uint64_t learned(struct training *training)
+{
+    backlog_wait_for_promise(training->backlog, 1);
+    shared_model_read(&training->shared);
+    uint64_t seq = training->shared.learned;
+    shared_model_unlock(&training->shared);
+    return seq;
+}
+
+static inline struct model_size size_of(struct training *training)
+{
+    struct model_size size;
+    shared_model_read(&training->shared);
+    model_measure(training->shared.model, &size);
+    shared_model_unlock(&training->shared);
+    return size;
+}
+
+#endif

@@ -331,10 +331,10 @@ static struct facts facts_of(const struct item_record *record)
     }
     for (size_t i = 0; i < record->second_count; i++) {
         size_t tagger = 0;
-        while (!is_text(record->seconds[i].tagger, TAGGER[tagger])) {
+        while (tagger < TAGGERS - 1 && !is_text(record->seconds[i].tagger, TAGGER[tagger])) {
             tagger++;
-            assert_true(tagger < TAGGERS);
         }
+        assert_true(is_text(record->seconds[i].tagger, TAGGER[tagger]));
         assert_false(facts.has_second[tagger]);
         facts.has_second[tagger] = 1;
         facts.second[tagger] = bits_of(record->seconds[i].tags);

@@ -64,6 +64,9 @@ struct numbers item_get_numbers(struct codec_reader *reader, struct item_buffer 
         reader->failed = true;
         return (struct numbers){0};
     }
+    if (count == 0) {
+        return (struct numbers){0}; /* there may be no buffer at all */
+    }
     uint32_t *list = buffer->numbers + *used;
     for (size_t i = 0; i < count; i++) {
         list[i] = codec_get_u32(reader);

@@ -41,6 +41,9 @@ static int find_changes(const struct model_item *item, const struct model_item *
                         struct model_scratch *scratch, struct findings *ret_findings)
 {
     size_t count = 0;
+    if (GROW(&scratch->changed, &scratch->changed_capacity, 1) < 0) {
+        return -ENOMEM;
+    }
     if (add_new(item->tags, item->tag_count, replaced->tags, replaced->tag_count, scratch, &count) <
         0) {
         return -ENOMEM;
@@ -128,6 +131,9 @@ static void count_finding(const struct examining *examining, uint32_t tag, bool 
     struct model *model = examining->model;
     const struct model_item *replaced = examining->replaced;
     const struct model_scratch *scratch = examining->scratch;
+    if (tag >= model->tag_count) {
+        return; /* no item has ever had it */
+    }
     double now = (double)model_score(model, scratch, tag) - (double)scratch->own[tag];
     if (belongs && !model_was_known(model, scratch, tag, now)) {
         return; /* opened by this very change */

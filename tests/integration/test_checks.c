@@ -447,6 +447,7 @@ static void the_desk_concludes_the_same_after_a_restart(void **state)
         {"tag.show", "{'tag': 'lamp'}"},
         {"tag.list", "{'order': 'missing'}"},
         {"item.show", "{'id': 'entry 6'}"},
+        {"item.gaps", "{'id': 'entry 100', 'floor': 0}"},
         {"item.gaps", "{'text': 'dense fog on the reef', 'floor': 0, 'why': true}"},
     };
     enum {

@@ -239,27 +239,21 @@ static void the_words_behind_a_gap_are_those_of_the_text(void **state)
         find(ask(peer, "item.gaps", "{'text': '%s', 'floor': 0}", TEXT), "fog"), "words"));
 }
 
-/* Having learned the item, the model takes what it lacks for less likely; that is not held against
- * the item itself. */
+/* Having learned the item, the model takes what it lacks for less likely, which is not held against
+ * the item itself: its gaps are as likely as they were just before it was filed. */
 static void an_item_s_own_share_is_taken_out_of_its_chances(void **state)
 {
     struct peer *peer = &((struct service *)*state)->peer;
     static const char MEMBERS[] = "'text': 'dense fog on the quay', 'tags': ['lamp'], "
                                   "'fields': {'desk': 'north'}";
+    const json_t *draft = ask(peer, "item.gaps", "{%s, 'floor': 0}", MEMBERS);
+    double before = number(find(draft, "fog"), "chance");
+    double score = number(find(draft, "fog"), "score");
     (void)ask(peer, "item.file", "{'id': 'x', %s}", MEMBERS);
     wait_until_learned(peer);
-    const json_t *item = ask(peer, "item.gaps", "{'id': 'x', 'floor': 0, 'why': true}");
-    const json_t *draft = ask(peer, "item.gaps", "{%s, 'floor': 0, 'why': true}", MEMBERS);
-    size_t i = 0;
-    const json_t *gap = NULL;
-    assert_int_equal(json_array_size(gaps_of(item)), json_array_size(gaps_of(draft)));
-    json_array_foreach(gaps_of(item), i, gap)
-    {
-        const json_t *same = find(draft, string(gap, "tag"));
-        assert_near(number(gap, "score"), number(same, "score"));
-        assert_true(json_equal(json_object_get(gap, "words"), json_object_get(same, "words")));
-    }
-    assert_true(number(find(item, "fog"), "chance") > number(find(draft, "fog"), "chance"));
+    const json_t *item = ask(peer, "item.gaps", "{'id': 'x', 'floor': 0}");
+    assert_true(number(find(item, "fog"), "score") < score);
+    assert_true(fabs(number(find(item, "fog"), "chance") - before) < 0.05);
     (void)ask(peer, "item.withdraw", "{'id': 'x'}");
     wait_until_learned(peer);
 }

@@ -131,7 +131,9 @@ static void learn_both(struct learner *learner, struct learner *uncorrected,
     for (int i = 0; i < RECOUNTED; i++) {
         (void)stream_next(&stream, &entry, truth);
         struct model_answer answer = ask_about(uncorrected, &entry);
-        memcpy(gaps, answer.gaps, answer.gap_count * sizeof *gaps);
+        for (size_t g = 0; g < answer.gap_count; g++) {
+            gaps[g] = answer.gaps[g];
+        }
         qsort(gaps, answer.gap_count, sizeof *gaps, compare_by_score);
         answer.gaps = gaps;
         recount_item(recount, &entry, &answer);

@@ -117,6 +117,25 @@ static void a_tag_opened_by_a_ruling_is_learned_once(void **state)
     assert_near(learner_score(learner, "fog", 0), -0.583899, 1e-5);
 }
 
+/* Tag 77 is in the vocabulary, but on no item. With the logistic loss every other tag is a rival.
+ */
+static void a_tag_that_nobody_has_used_is_denied_without_a_trace(void **state)
+{
+    struct examining *examining = *state;
+    struct model_settings settings = learner_settings();
+    settings.weights.surrogate = SURROGATE_LOGISTIC;
+    learner_renew(&examining->learner, &settings);
+    entry_set(&examining->filed, "fog", TAGS(0));
+    learner_change(&examining->learner, &examining->filed, NULL);
+    double score = learner_score(&examining->learner, "fog", 0);
+    entry_follow(&examining->ruled, &examining->filed);
+    entry_deny_tag(&examining->ruled, 77);
+    examine(examining);
+    assert_int_equal(learner_size(&examining->learner).tags, 1);
+    assert_near(learner_score(&examining->learner, "fog", 0), score, 0.0);
+    assert_added(examining, (struct calibrators_cell){.ruled = 0.0});
+}
+
 /* --- counts -------------------------------------------------------------------------------------
  */
 
@@ -268,6 +287,7 @@ int main(void)
         TEST(a_ruling_that_a_tag_does_not_belong_moves_no_other_tag),
         TEST(the_shadow_learns_nothing_of_what_is_said_later),
         TEST(a_tag_opened_by_a_ruling_is_learned_once),
+        TEST(a_tag_that_nobody_has_used_is_denied_without_a_trace),
         TEST(a_tag_that_was_found_is_counted_but_not_as_unprompted),
         TEST(a_tag_that_was_taken_off_is_counted_no_more),
         TEST(an_examined_item_that_is_withdrawn_leaves_no_count),

@@ -214,6 +214,25 @@ static void a_check_takes_the_rest_for_counted_where_it_was(void **state)
     assert_true(memory_evidence(examining->after, 0).ruled > 20.0); /* tags of other words */
 }
 
+/* The record of the filing is gone. Somebody went through tags 0 to 2, and 0 is on the item; 3 and
+ * 4 were opened later. */
+static void a_check_counts_again_when_all_is_learned_again(void **state)
+{
+    struct examining *examining = *state;
+    struct model_settings settings = learner_settings();
+    settings.evidence_half_life_items = 1e18;
+    learner_renew(&examining->learner, &settings);
+    learner_file(&examining->learner, "fog", TAGS(0, 1, 2));
+    learner_file(&examining->learner, "bell", TAGS(3, 4));
+    memory_take(examining->before, examining->learner.model);
+    entry_set(&examining->filed, "fog bell", TAGS(0));
+    examining->filed.same_words = true;
+    examining->filed.checked_below = 3;
+    learner_change(&examining->learner, &examining->filed, NULL);
+    memory_take(examining->after, examining->learner.model);
+    assert_added(examining, (struct calibrators_cell){.pairs = 5.0, .given = 1.0, .ruled = 2.0});
+}
+
 /* After one item more, of a half-life of one. */
 static void a_ruling_weighs_what_its_pair_still_weighs(void **state)
 {
@@ -251,6 +270,7 @@ int main(void)
         TEST(a_check_rules_on_every_gap),
         TEST(a_check_rules_on_no_gap_twice),
         TEST(a_check_takes_the_rest_for_counted_where_it_was),
+        TEST(a_check_counts_again_when_all_is_learned_again),
         TEST(a_ruling_weighs_what_its_pair_still_weighs),
     };
     return cmocka_run_group_tests_name("rulings and checks", tests, NULL, NULL);

@@ -360,6 +360,28 @@ static void a_revised_item_has_an_entry_of_its_new_words(void **state)
     assert_int_equal(learner_size(&listing->learner).listed, listed);
 }
 
+/* Its pairs were evidence on the day that it was filed, and are no second time. */
+static void a_revision_keeps_the_scores_that_its_pairs_were_counted_with(void **state)
+{
+    struct listing *listing = *state;
+    const struct entry *entry = doubtful(listing);
+    const struct worklist_entry before = *learner_listed(&listing->learner, entry);
+    struct entry revised;
+    size_t moved = 0;
+    go_on(listing, 100);
+    entry_follow(&revised, entry);
+    revised.same_words = false;
+    learner_change(&listing->learner, &revised, entry);
+    const struct worklist_entry *after = learner_listed(&listing->learner, &revised);
+    assert_true(after->counted == before.counted);
+    for (uint32_t i = 0; i < after->pair_count; i++) {
+        const struct worklist_pair *was = listed_pair(&before, after->pairs[i].tag);
+        assert_true(!was || after->pairs[i].counted == was->counted);
+        moved += was && listed_gap(after, was->tag)->score != was->counted;
+    }
+    assert_true(moved > 0);
+}
+
 static void a_withdrawn_item_leaves_the_worklist(void **state)
 {
     const struct listing *listing = *state;
@@ -461,6 +483,7 @@ int main(void)
         listing_test(what_is_found_not_to_belong_leaves_the_entry_for_good),
         listing_test(the_entry_follows_the_item_to_its_new_number),
         listing_test(a_revised_item_has_an_entry_of_its_new_words),
+        listing_test(a_revision_keeps_the_scores_that_its_pairs_were_counted_with),
         listing_test(a_withdrawn_item_leaves_the_worklist),
         listing_test(what_is_declined_when_the_item_is_filed_is_no_gap),
         listing_test(a_checked_item_promises_nothing),

@@ -218,8 +218,11 @@ static int find_tag(struct worklist_job *job, struct store_view *view)
         return fault_set(&job->job.fault, FAULT_NOT_FOUND, "/tag", "There is no tag '%.*s'.",
                          (int)job->tag.size, job->tag.data);
     }
+    if (code != STORE_OK) {
+        return read_job_fail(&job->job, &error);
+    }
     job->tag_number = tag.number;
-    return code == STORE_OK ? 0 : read_job_fail(&job->job, &error);
+    return 0;
 }
 
 static void run(struct read_job *base)

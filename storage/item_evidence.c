@@ -190,7 +190,7 @@ int item_evidence_get(struct codec_reader *reader, struct item_buffer *buffer, s
  */
 
 enum {
-    LISTS_THAT_FOLLOW = 10 /* none longer than all that is stored */
+    LISTS_THAT_FOLLOW = 11 /* none longer than all that is stored */
 };
 
 size_t item_evidence_room(size_t stored_numbers)
@@ -227,6 +227,7 @@ void item_evidence_follow(struct item_record *record, uint32_t *room)
         base = record->check.tags;
         if (record->filed_after_check) {
             base = take(numbers_unite(base, record->filed, room), &room);
+            base = take(numbers_without(base, record->declined, room), &room);
         }
     }
     struct numbers with = take(numbers_unite(base, record->belongs, room), &room);

@@ -36,6 +36,12 @@ int items_look_up(struct store_view *view, struct store_text name, uint32_t *ret
     return result;
 }
 
+/* On the item as it is, or as it was filed: what is filed again is the same. */
+static bool is_on_item(const struct item_record *present, uint32_t number)
+{
+    return present && (numbers_hold(present->tags, number) || numbers_hold(present->filed, number));
+}
+
 /* Looks every name up; finds the first that the vocabulary refuses before anything is changed. */
 static int resolve(struct store_view *view, const struct item_filing *filing,
                    const struct item_record *present, struct resolved *resolved,
@@ -49,8 +55,7 @@ static int resolve(struct store_view *view, const struct item_filing *filing,
             return result;
         }
         bool unknown = *next == NO_NUMBER;
-        if ((unknown && !filing->open_unknown) ||
-            (retired && !(present && numbers_hold(present->tags, *next)))) {
+        if ((unknown && !filing->open_unknown) || (retired && !is_on_item(present, *next))) {
             *ret_refusal = (struct item_refusal){.list = REFUSED_TAG, .at = i, .retired = retired};
             return STORE_REFUSED;
         }
@@ -155,6 +160,20 @@ static size_t keep_rulings(const struct item_record *present, const struct item_
     return kept;
 }
 
+/* Nobody is a second tagger beside himself. Likewise. */
+static size_t keep_seconds(const struct item_record *present, struct store_text tagger,
+                           struct item_second *into)
+{
+    size_t kept = 0;
+    for (size_t i = 0; i < present->second_count; i++) {
+        struct store_text other = present->seconds[i].tagger;
+        if (other.size != tagger.size || memcmp(other.data, tagger.data, tagger.size) != 0) {
+            into[kept++] = present->seconds[i];
+        }
+    }
+    return kept;
+}
+
 /* Files over what stands; what people have said of the item stays. */
 static int write_filing(struct store_view *view, const struct item_filing *filing,
                         const struct resolved *resolved, const struct standing_item *standing,
@@ -172,20 +191,22 @@ static int write_filing(struct store_view *view, const struct item_filing *filin
                                  .prompted = prompted_of(filing, resolved),
                                  .declined = declined_of(filing, resolved),
                                  .filed_after_check = present->check.is_there,
-                                 .check = present->check,
-                                 .seconds = present->seconds,
-                                 .second_count = present->second_count};
+                                 .check = present->check};
     struct item_ruling *rulings = calloc(present->ruling_count + 1, sizeof *rulings);
-    int result = rulings ? STORE_OK : items_no_memory(error);
+    struct item_second *seconds = calloc(present->second_count + 1, sizeof *seconds);
+    int result = rulings && seconds ? STORE_OK : items_no_memory(error);
     if (result == STORE_OK) {
         record.rulings = rulings;
         record.ruling_count = keep_rulings(present, &record, rulings);
+        record.seconds = seconds;
+        record.second_count = keep_seconds(present, filing->tagger, seconds);
         result = items_put(
             view, standing, &record,
             (struct store_text){.data = (const char *)content->data, .size = content->size}, buffer,
             error);
     }
     free(rulings);
+    free(seconds);
     return result;
 }
 

@@ -143,7 +143,7 @@ struct item_record {
     struct item_check check;
     const struct item_ruling *rulings; /* by tag; at most one each */
     size_t ruling_count;
-    const struct item_second *seconds; /* by tagger; at most one each */
+    const struct item_second *seconds; /* at most one a tagger */
     size_t second_count;
 
     /* What follows from all that. */

@@ -43,8 +43,7 @@ static int put(struct store_view *view, const struct standing_item *standing,
 /* --- names into numbers -------------------------------------------------------------------------
  */
 
-/* The numbers of names that must all be there. `present`: a retired tag is refused, unless this
- * item has it; NULL: it will do. */
+/* The numbers of names that must all be there; a retired tag only where the item has it. */
 static int resolve(struct store_view *view, struct item_names names,
                    const struct item_record *present, struct item_refusal *refusal, uint32_t *into,
                    struct store_error *error)
@@ -55,7 +54,7 @@ static int resolve(struct store_view *view, struct item_names names,
         if (result != STORE_OK) {
             return result;
         }
-        refusal->retired = retired && present && !numbers_hold(present->tags, into[i]);
+        refusal->retired = retired && !numbers_hold(present->tags, into[i]);
         if (into[i] == NO_NUMBER || refusal->retired) {
             refusal->at = i;
             return STORE_REFUSED;
@@ -108,7 +107,7 @@ int items_rule(struct store_view *view, const struct item_saying *saying, struct
     }
     if (result == STORE_OK) {
         *ret_refusal = (struct item_refusal){.list = REFUSED_NOT};
-        result = resolve(view, denied, NULL, ret_refusal, numbers + belongs.count, error);
+        result = resolve(view, denied, &record, ret_refusal, numbers + belongs.count, error);
     }
     if (result != STORE_OK) {
         goto done;
@@ -190,6 +189,16 @@ static struct numbers compare(const struct item_record *present, struct item_che
     return missed;
 }
 
+/* What an earlier check had gone through is no trial any more; its own trials stay. */
+static void keep_trials(const struct item_check *earlier, struct item_check *check)
+{
+    if (earlier->is_there) {
+        check->is_random = check->is_random || earlier->is_random;
+        check->given = earlier->given;
+        check->hidden = earlier->hidden;
+    }
+}
+
 int items_check(struct store_view *view, const struct item_saying *saying, struct item_names tags,
                 bool is_random, struct codec_writer *buffer, struct item_filed *ret_filed,
                 struct item_checked *ret_checked, struct item_refusal *ret_refusal,
@@ -227,6 +236,7 @@ int items_check(struct store_view *view, const struct item_saying *saying, struc
                                        .tags = {numbers, numbers_sort_unique(numbers, tags.count)}};
     record.filed_after_check = false;
     struct numbers missed = compare(&standing.record, &record.check, longest, room);
+    keep_trials(&standing.record.check, &record.check);
     record.ruling_count = keep_agreeing(rulings, &record);
     record.rulings = rulings;
     result = name_tags(view, missed, &checked.missed, &checked.missed_count, error);

@@ -112,7 +112,7 @@ void model_gather_evidence(struct model *model, const struct model_item *item,
     if (item->checked_below > 0) { /* all is learned again, and the filing's record is gone */
         struct model_item before = *item;
         before.checked_below = 0;
-        model_count_checked(model, &before, NULL, scratch);
+        model_count_checked(model, item->checked_below, &before, NULL, scratch);
     }
     model->evidence_changed = true;
     model_refit_curves(model, false);

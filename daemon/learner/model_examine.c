@@ -37,8 +37,9 @@ struct findings {
     size_t denied_count;
 };
 
-static int find_changes(const struct model_item *item, const struct model_item *replaced,
-                        struct model_scratch *scratch, struct findings *ret_findings)
+static int find_changes(const struct model *model, const struct model_item *item,
+                        const struct model_item *replaced, struct model_scratch *scratch,
+                        struct findings *ret_findings)
 {
     size_t count = 0;
     if (GROW(&scratch->changed, &scratch->changed_capacity, 1) < 0) {
@@ -62,10 +63,17 @@ static int find_changes(const struct model_item *item, const struct model_item *
             return -ENOMEM;
         }
     }
+    size_t denied_count = 0;
+    uint32_t *denied = scratch->changed + found_count;
+    for (size_t i = 0; i < count - found_count; i++) {
+        if (denied[i] < model->tag_count) { /* some item has had it */
+            denied[denied_count++] = denied[i];
+        }
+    }
     *ret_findings = (struct findings){.found = scratch->changed,
                                       .found_count = found_count,
-                                      .denied = scratch->changed + found_count,
-                                      .denied_count = count - found_count};
+                                      .denied = denied,
+                                      .denied_count = denied_count};
     return 0;
 }
 
@@ -112,7 +120,8 @@ struct examining {
     const struct model_item *replaced;
     const struct worklist_entry *entry; /* of the item as it was; NULL: none */
     const struct model_scratch *scratch;
-    double promise; /* of the item as it was */
+    double promise;         /* of the item as it was */
+    uint32_t checked_below; /* of the item as it is */
     bool is_check;
 };
 
@@ -131,9 +140,6 @@ static void count_finding(const struct examining *examining, uint32_t tag, bool 
     struct model *model = examining->model;
     const struct model_item *replaced = examining->replaced;
     const struct model_scratch *scratch = examining->scratch;
-    if (tag >= model->tag_count) {
-        return; /* no item has ever had it */
-    }
     double now = (double)model_score(model, scratch, tag) - (double)scratch->own[tag];
     if (belongs && !model_was_known(model, scratch, tag, now)) {
         return; /* opened by this very change */
@@ -151,7 +157,7 @@ static void count_finding(const struct examining *examining, uint32_t tag, bool 
 /* --- a check: all other gaps are known not to belong --------------------------------------------
  */
 
-void model_count_checked(struct model *model, const struct model_item *before,
+void model_count_checked(struct model *model, uint32_t below, const struct model_item *before,
                          const struct worklist_entry *entry, const struct model_scratch *scratch)
 {
     double rest[CALIBRATORS_CLASSES] = {0};
@@ -160,7 +166,7 @@ void model_count_checked(struct model *model, const struct model_item *before,
         weight = calibrators_weight((double)(model->evidence_items - entry->counted),
                                     model->settings.evidence_half_life_items);
     }
-    for (uint32_t tag = 0; tag < model->tag_count; tag++) {
+    for (uint32_t tag = 0; tag < model->tag_count && tag < below; tag++) {
         if (model_is_unused(model, tag) || scratch->barred[tag] != MARK_NONE ||
             !was_gap(before, tag)) {
             continue;
@@ -194,8 +200,8 @@ static void gather(const struct examining *examining, const struct findings *fin
         count_finding(examining, findings->denied[i], false);
     }
     if (examining->is_check) {
-        model_count_checked(examining->model, examining->replaced, examining->entry,
-                            examining->scratch);
+        model_count_checked(examining->model, examining->checked_below, examining->replaced,
+                            examining->entry, examining->scratch);
     }
 }
 
@@ -269,8 +275,9 @@ int model_examine(struct model *model, const struct model_item *item,
                                   .replaced = replaced,
                                   .entry = worklist_find(model->worklist, replaced->number),
                                   .scratch = scratch,
+                                  .checked_below = item->checked_below,
                                   .is_check = item->checked_below > replaced->checked_below};
-    if (find_changes(item, replaced, scratch, &findings) < 0 ||
+    if (find_changes(model, item, replaced, scratch, &findings) < 0 ||
         look_back(model, item, replaced, examining.entry, scratch, &examining.promise) < 0 ||
         model_mark_item(model, item, scratch) < 0) {
         return -ENOMEM;

@@ -238,9 +238,10 @@ void model_make_entry(const struct model *model, const struct model_item *item,
 
 /* --- model_examine --- */
 
-/* Counts as examined, and not belonging, all gaps of an item that a check has gone through: those
- * that it had `before` and has no more. Marked as it is now; `entry` is from before, or NULL. */
-void model_count_checked(struct model *model, const struct model_item *before,
+/* Counts as examined, and not belonging, the gaps of an item that a check of all tags `below` has
+ * gone through: those that it had `before` and has no more. Marked as it is now; `entry` is from
+ * before, or NULL. */
+void model_count_checked(struct model *model, uint32_t below, const struct model_item *before,
                          const struct worklist_entry *entry, const struct model_scratch *scratch);
 
 /* Learns what has become known of the tags of an item whose words are the same. */

@@ -306,21 +306,13 @@ static void an_unknown_tag_is_refused_and_nothing_is_changed(void **state)
     assert_refused(fixture, (struct rulings){.denied = {"mermaid"}}, REFUSED_NOT, 0, false);
 }
 
-static void a_retired_tag_may_not_be_ruled_in_on_an_item_that_does_not_have_it(void **state)
+static void a_retired_tag_is_refused_on_an_item_that_does_not_have_it(void **state)
 {
     struct fixture *fixture = *state;
     fixture_retire(fixture, "lamp");
     assert_refused(fixture, (struct rulings){.belongs = {"bell", "lamp"}}, REFUSED_BELONGS, 1,
                    true);
-}
-
-/* Nobody has to wait with that until it comes back. */
-static void a_retired_tag_may_be_ruled_out_of_any_item(void **state)
-{
-    struct fixture *fixture = *state;
-    fixture_retire(fixture, "lamp");
-    (void)rule(fixture, (struct rulings){.denied = {"lamp"}});
-    assert_ruled(fixture, "fog gale", "", "lamp");
+    assert_refused(fixture, (struct rulings){.denied = {"lamp"}}, REFUSED_NOT, 0, true);
 }
 
 static void a_retired_tag_may_be_ruled_on_where_the_item_has_it(void **state)
@@ -384,8 +376,7 @@ int main(void)
         TEST(the_same_filing_has_the_seq_of_the_last_revision),
         TEST(an_older_filing_is_a_revision),
         TEST(an_unknown_tag_is_refused_and_nothing_is_changed),
-        TEST(a_retired_tag_may_not_be_ruled_in_on_an_item_that_does_not_have_it),
-        TEST(a_retired_tag_may_be_ruled_out_of_any_item),
+        TEST(a_retired_tag_is_refused_on_an_item_that_does_not_have_it),
         TEST(a_retired_tag_may_be_ruled_on_where_the_item_has_it),
         TEST(what_is_not_there_cannot_be_ruled_on),
         TEST(rulings_go_with_a_withdrawn_item),

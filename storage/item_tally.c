@@ -91,8 +91,8 @@ static size_t count_mentions(const struct item_record *item)
     if (!item) {
         return 0;
     }
-    size_t count =
-        item->filed.count + item->ruling_count + item->check.tags.count + item->check.extra.count;
+    size_t count = item->filed.count + item->ruling_count + item->check.tags.count +
+                   item->check.given.count + item->check.hidden.count;
     for (size_t i = 0; i < item->second_count; i++) {
         count += item->seconds[i].tags.count;
     }
@@ -108,7 +108,9 @@ static size_t add_mentions(uint32_t *into, size_t at, const struct item_record *
     at = add_list(into, at, item->belongs);
     at = add_list(into, at, item->denied);
     at = add_list(into, at, item->check.tags);
-    at = add_list(into, at, item->check.extra);
+    at = add_list(into, at,
+                  item->check.given); /* of an earlier check, they may not be in its tags */
+    at = add_list(into, at, item->check.hidden);
     for (size_t i = 0; i < item->second_count; i++) {
         at = add_list(into, at, item->seconds[i].tags);
     }

@@ -55,7 +55,10 @@ static uint32_t tags_of(const struct facts *facts)
 {
     uint32_t base = facts->filed;
     if (facts->is_checked) {
-        base = facts->list | (facts->is_filed_after ? facts->filed : 0);
+        base = facts->list;
+        if (facts->is_filed_after) {
+            base = (base | facts->filed) & ~facts->declined;
+        }
     }
     return (base | facts->belongs) & ~facts->denied;
 }
@@ -190,15 +193,17 @@ static void check_facts(struct facts *facts, uint32_t list, bool is_random)
     uint32_t before = tags_of(facts);
     uint32_t turned_down = (facts->declined | facts->denied) & ~before;
     uint32_t trials = list & ~facts->prompted & ~facts->belongs & ~turned_down;
-    facts->given = trials & facts->filed;
-    facts->hidden = trials & ~facts->filed;
+    if (!facts->is_checked) { /* what one check has gone through is no trial for the next */
+        facts->given = trials & facts->filed;
+        facts->hidden = trials & ~facts->filed;
+    }
     facts->extra = before & ~list;
     facts->seen = count_bits(before);
     facts->belongs &= list;
     facts->denied &= ~list;
     facts->list = list;
+    facts->is_random = is_random || (facts->is_checked && facts->is_random);
     facts->is_checked = 1;
-    facts->is_random = is_random;
     facts->is_filed_after = 0;
 }
 

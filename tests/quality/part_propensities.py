@@ -33,10 +33,12 @@ def said(connection, corpus):
 
 def judge(verdicts, name, by_checks, of_true_curve):
     """Few checks do no harm, and many help, unless the default curve is the true one."""
-    verdicts.say(f"{name}: error of p over pairs after {FEW} checks: {by_checks[FEW]['over pairs']:.4f}")
-    verdicts.at_most(f"{name}: error of p over tags after {FEW} checks", by_checks[FEW]["over tags"],
-                     by_checks[0]["over tags"] + WORSE)
     for mean, before in by_checks[0].items():
+        text, after = f"{name}: error of p {mean} after {FEW} checks", by_checks[FEW][mean]
+        if mean == "over tags":
+            verdicts.at_most(text, after, before + WORSE)
+        else:
+            verdicts.say(f"{text}: {after:.4f}")
         text, after = f"{name}: error of p {mean} after {MANY:,} checks", by_checks[MANY][mean]
         if of_true_curve[mean] < HALF * before:
             verdicts.at_most(text, after, HALF * before)

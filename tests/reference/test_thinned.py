@@ -245,8 +245,8 @@ class Propensities(unittest.TestCase):
         self.assertAlmostEqual(means["over pairs"], .175)
 
     def verdicts_on(self, few, many, of_true_curve):
-        by_checks = {checks: {"over pairs": value} for checks, value in ((0, .02), (50, few), (2000, many))}
-        kept = judged(lambda heard: part_propensities.judge(heard, "steep", by_checks, {"over pairs": of_true_curve}))
+        by_checks = {checks: {"over tags": value} for checks, value in ((0, .02), (50, few), (2000, many))}
+        kept = judged(lambda heard: part_propensities.judge(heard, "steep", by_checks, {"over tags": of_true_curve}))
         return list(kept.values())
 
     def test_few_checks_may_do_a_hundredth_of_harm_and_many_must_halve_the_error(self):

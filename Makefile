@@ -194,7 +194,7 @@ sanitize: packages-build packages-test packages-lint
 
 valgrind: packages-build packages-test
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-valgrind CFLAGS='-O1 -g' run-tests \
-	    GROUPS=unit WRAPPER='valgrind -q --error-exitcode=99 --leak-check=full'
+	    GROUPS=unit WRAPPER='valgrind -q --fair-sched=yes --error-exitcode=99 --leak-check=full'
 
 # --- installing ---------------------------------------------------------------------------------
 

@@ -3,7 +3,8 @@
  * model_clean comes out part by part; what was stored goes back in the same parts.
  *
  * Storing: forgotten words first, then everything else in any order, then model_clean once it is
- * durable. Restoring: into a new model, words before chunks, model_restored at the end.
+ * durable. Restoring: into a new model, words before chunks, tags before entries, model_restored at
+ * the end.
  */
 #ifndef UNDERTAG_MODEL_PARTS_H
 #define UNDERTAG_MODEL_PARTS_H

@@ -155,6 +155,15 @@ static inline float model_score(const struct model *model, const struct model_sc
 /* Whether a rising list of tags holds one. */
 bool model_holds(const uint32_t *tags, size_t count, uint32_t tag);
 
+/*
+ * x of the features whose words are in scratch->words: (1 + ln tf)·idf, L2-normalised over all of
+ * them, known or not; only known ones go into scratch->x. An item weighs the same before it is
+ * counted in as after: `is_counted` says which it is. Returns 0 or -ENOMEM.
+ */
+int model_weigh_features(const struct model *model, const struct feature *features, size_t count,
+                         bool is_counted, struct model_scratch *scratch)
+    __attribute__((warn_unused_result));
+
 /* Scores words as they are known: those of a filed item, which is counted in, or of a draft, which
  * is not. Returns 0 or -ENOMEM. */
 int model_score_words(const struct model *model, const struct feature *features, size_t count,
@@ -247,15 +256,6 @@ void model_count_checked(struct model *model, uint32_t below, const struct model
 /* Learns what has become known of the tags of an item whose words are the same. */
 int model_examine(struct model *model, const struct model_item *item,
                   const struct model_item *replaced, struct model_scratch *scratch)
-    __attribute__((warn_unused_result));
-
-/*
- * x of the features whose words are in scratch->words: (1 + ln tf)·idf, L2-normalised over all of
- * them, known or not; only known ones go into scratch->x. An item weighs the same before it is
- * counted in as after: `is_counted` says which it is. Returns 0 or -ENOMEM.
- */
-int model_weigh_features(const struct model *model, const struct feature *features, size_t count,
-                         bool is_counted, struct model_scratch *scratch)
     __attribute__((warn_unused_result));
 
 #endif

@@ -1,0 +1,33 @@
+/*
+ * model_store_private: the model store's own insides, for the two files that are it together:
+ * model_store (life, writing) and model_store_read.
+ */
+#ifndef UNDERTAG_MODEL_STORE_PRIVATE_H
+#define UNDERTAG_MODEL_STORE_PRIVATE_H
+
+#include "storage/codec.h"
+#include "storage/kv.h"
+#include "storage/model_store.h"
+
+enum model_table {
+    MODEL_META,
+    MODEL_WORDS,
+    MODEL_CHUNKS,
+    MODEL_SHADOW_CHUNKS,
+    MODEL_TAGS,
+    MODEL_FIGURES,
+    MODEL_ENTRIES,
+    MODEL_TABLES
+};
+
+struct model_store {
+    struct kv *kv;
+};
+
+/* The key of the one record in MODEL_META. */
+static inline struct kv_bytes model_store_head_key(void)
+{
+    return kv_bytes_of("model", 5);
+}
+
+#endif

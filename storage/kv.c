@@ -412,6 +412,57 @@ int kv_walk_delete(struct kv_cursor *at, struct store_error *error)
     return kv_translate(at->txn->kv, mdb_cursor_del(at->cursor, 0), "deleting", error);
 }
 
+int kv_cursor_open(struct kv_txn *txn, unsigned table, struct kv_cursor **ret_cursor,
+                   struct store_error *error)
+{
+    struct kv_cursor *made = calloc(1, sizeof *made);
+    if (!made) {
+        return store_fail(error, STORE_NO_MEMORY, "out of memory");
+    }
+    made->txn = txn;
+    int code = mdb_cursor_open(txn->txn, txn->kv->tables[table], &made->cursor);
+    if (code != MDB_SUCCESS) {
+        free(made);
+        return kv_translate(txn->kv, code, "opening a cursor", error);
+    }
+    *ret_cursor = made;
+    return STORE_OK;
+}
+
+void kv_cursor_close(struct kv_cursor *cursor)
+{
+    if (cursor) {
+        mdb_cursor_close(cursor->cursor);
+        free(cursor);
+    }
+}
+
+static int move(struct kv_cursor *cursor, MDB_val *key, MDB_cursor_op how, struct kv_bytes *ret_key,
+                struct kv_bytes *ret_value, struct store_error *error)
+{
+    MDB_val value;
+    int code = mdb_cursor_get(cursor->cursor, key, &value, how);
+    if (code == MDB_SUCCESS) {
+        *ret_key = from_val(*key);
+        *ret_value = from_val(value);
+    }
+    return kv_translate(cursor->txn->kv, code, "reading", error);
+}
+
+int kv_seek(struct kv_cursor *cursor, struct kv_bytes from, struct kv_bytes *ret_key,
+            struct kv_bytes *ret_value, struct store_error *error)
+{
+    MDB_val key = to_val(from);
+    return move(cursor, &key, MDB_SET_RANGE, ret_key, ret_value, error);
+}
+
+int kv_next(struct kv_cursor *cursor, struct kv_bytes *ret_key, struct kv_bytes *ret_value,
+            struct store_error *error)
+{
+    MDB_val key = {0};
+    return move(cursor, &key, MDB_NEXT, ret_key, ret_value, error);
+}
+
 int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
             struct kv_bytes *ret_value, struct store_error *error)
 {

@@ -91,6 +91,19 @@ int kv_walk(struct kv_txn *txn, unsigned table, struct kv_bytes from, kv_each ea
 int kv_walk_delete(struct kv_cursor *at, struct store_error *error)
     __attribute__((warn_unused_result));
 
+/*
+ * A cursor over a table, for as long as its transaction, which it must be closed before. kv_seek
+ * goes to the first entry at or behind a key, kv_next to the one behind; STORE_NOT_FOUND at the end.
+ */
+int kv_cursor_open(struct kv_txn *txn, unsigned table, struct kv_cursor **ret_cursor,
+                   struct store_error *error) __attribute__((warn_unused_result));
+void kv_cursor_close(struct kv_cursor *cursor);
+int kv_seek(struct kv_cursor *cursor, struct kv_bytes from, struct kv_bytes *ret_key,
+            struct kv_bytes *ret_value, struct store_error *error)
+    __attribute__((warn_unused_result));
+int kv_next(struct kv_cursor *cursor, struct kv_bytes *ret_key, struct kv_bytes *ret_value,
+            struct store_error *error) __attribute__((warn_unused_result));
+
 /* The entry with the greatest key; STORE_NOT_FOUND in an empty table. */
 int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
             struct kv_bytes *ret_value, struct store_error *error)

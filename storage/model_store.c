@@ -8,10 +8,9 @@
 #include "storage/model_store_private.h"
 
 static const char *const TABLE_NAMES[MODEL_TABLES] = {
-    [MODEL_META] = "meta",        [MODEL_WORDS] = "words",
-    [MODEL_CHUNKS] = "chunks",    [MODEL_SHADOW_CHUNKS] = "shadow_chunks",
-    [MODEL_TAGS] = "tags",        [MODEL_FIGURES] = "figures",
-    [MODEL_ENTRIES] = "worklist",
+    [MODEL_META] = "meta",         [MODEL_WORDS] = "words",
+    [MODEL_CHUNKS] = "chunks",     [MODEL_TAGS] = "tags",
+    [MODEL_FIGURES] = "figures",   [MODEL_ENTRIES] = "worklist",
 };
 
 struct model_store_writing {
@@ -121,6 +120,9 @@ int model_store_put_head(struct model_store_writing *writing, const struct model
     codec_put_u64(record, head->curves_items);
     codec_put_u64(record, head->fit_halves);
     codec_put_f64(record, head->evidence_gain);
+    codec_put_u64(record, head->words);
+    codec_put_u64(record, head->next_word);
+    codec_put_u64(record, head->postings);
     codec_put_blob(record, head->settings, strlen(head->settings));
     if (record->failed) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
@@ -162,7 +164,7 @@ int model_store_put_word(struct model_store_writing *writing, const struct model
     return put_record(writing, MODEL_WORDS, kv_bytes_of(word->term, word->term_bytes), error);
 }
 
-static int delete_chunks(struct model_store_writing *writing, enum model_table table, uint32_t word,
+static int delete_chunks(struct model_store_writing *writing, uint32_t word,
                          struct store_error *error)
 {
     int result = STORE_OK;
@@ -170,7 +172,7 @@ static int delete_chunks(struct model_store_writing *writing, enum model_table t
         unsigned char key[8];
         codec_key_u32(key, word);
         codec_key_u32(key + 4, number);
-        result = kv_delete(writing->txn, table, kv_bytes_of(key, sizeof key), error);
+        result = kv_delete(writing->txn, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
     }
     return result == STORE_NOT_FOUND ? STORE_OK : result;
 }
@@ -183,28 +185,18 @@ int model_store_forget_word(struct model_store_writing *writing,
     if (result == STORE_NOT_FOUND) {
         return STORE_OK; /* it came and went since the last flush */
     }
-    if (result == STORE_OK) {
-        result = delete_chunks(writing, MODEL_CHUNKS, word->number, error);
-    }
-    return result == STORE_OK ? delete_chunks(writing, MODEL_SHADOW_CHUNKS, word->number, error)
-                              : result;
+    return result == STORE_OK ? delete_chunks(writing, word->number, error) : result;
 }
 
 int model_store_put_chunk(struct model_store_writing *writing,
                           const struct model_store_chunk *chunk, struct store_error *error)
 {
     struct codec_writer *record = begin_record(writing);
-    codec_put_u32(record, chunk->count);
-    for (uint32_t i = 0; i < chunk->count; i++) {
-        codec_put_u32(record, chunk->tags[i]);
-        codec_put_f32(record, chunk->values[i]);
-        codec_put_f32(record, chunk->accumulators[i]);
-    }
+    codec_put_raw(record, chunk->bytes.data, chunk->bytes.size);
     unsigned char key[8];
     codec_key_u32(key, chunk->word);
     codec_key_u32(key + 4, chunk->number);
-    return put_record(writing, chunk->is_shadow ? MODEL_SHADOW_CHUNKS : MODEL_CHUNKS,
-                      kv_bytes_of(key, sizeof key), error);
+    return put_record(writing, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
 }
 
 int model_store_put_tag(struct model_store_writing *writing, const struct model_store_tag *tag,

@@ -12,10 +12,11 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "storage/kv.h"
 #include "storage/store.h"
 
 enum {
-    MODEL_STORE_FORMAT = 2,
+    MODEL_STORE_FORMAT = 3,
     MODEL_STORE_SETTINGS_BYTES = 1024
 };
 
@@ -36,6 +37,9 @@ struct model_store_head {
     uint64_t curves_items;
     uint64_t fit_halves;
     double evidence_gain;
+    uint64_t words; /* that some item holds */
+    uint64_t next_word;
+    uint64_t postings;
 };
 
 struct model_store_word {
@@ -45,15 +49,11 @@ struct model_store_word {
     uint32_t count;
 };
 
-/* A chunk of the weights, or of the shadow's. */
+/* A chunk of a word's postings; what the bytes mean is the learner's. */
 struct model_store_chunk {
-    bool is_shadow;
     uint32_t word;
     uint32_t number;
-    uint32_t count;
-    const uint32_t *tags;
-    const float *values;
-    const float *accumulators;
+    struct kv_bytes bytes;
 };
 
 struct model_store_tag {
@@ -112,17 +112,15 @@ uint64_t model_store_file_bytes(const struct model_store *store);
 int model_store_read_head(struct model_store *store, struct model_store_head *ret_head,
                           struct store_error *error) __attribute__((warn_unused_result));
 
-/* Takes what was stored, part by part; anything but 0 ends the reading and is returned. */
+/* Takes what is held in memory, part by part; anything but 0 ends the reading and is returned. */
 struct model_store_sink {
     void *user;
-    int (*word)(void *user, const struct model_store_word *word);
-    int (*chunk)(void *user, const struct model_store_chunk *chunk);
     int (*tag)(void *user, const struct model_store_tag *tag);
     int (*figures)(void *user, const struct model_store_figures *figures);
-    int (*entry)(void *user, const struct model_store_entry *entry);
 };
 
-/* Words come before chunks, a word's chunks in their order; tags before entries. */
+/* Gives what is held in memory: the tags by their numbers, then the figures. Words, chunks and
+ * entries are read when they are wanted (model_view.h). */
 int model_store_load(struct model_store *store, const struct model_store_sink *sink,
                      struct store_error *error) __attribute__((warn_unused_result));
 

@@ -1,6 +1,7 @@
 /*
- * model_store_private: the model store's own insides, for the two files that are it together:
- * model_store (life, writing) and model_store_read.
+ * model_store_private: the model store's own insides, for the files that are it together:
+ * model_store (life, writing), model_store_read (what is held in memory) and model_view (what is
+ * not).
  */
 #ifndef UNDERTAG_MODEL_STORE_PRIVATE_H
 #define UNDERTAG_MODEL_STORE_PRIVATE_H
@@ -13,7 +14,6 @@ enum model_table {
     MODEL_META,
     MODEL_WORDS,
     MODEL_CHUNKS,
-    MODEL_SHADOW_CHUNKS,
     MODEL_TAGS,
     MODEL_FIGURES,
     MODEL_ENTRIES,
@@ -29,5 +29,10 @@ static inline struct kv_bytes model_store_head_key(void)
 {
     return kv_bytes_of("model", 5);
 }
+
+/* The body of a checked record: what follows its checksum. */
+int model_store_open_record(struct kv_bytes value, const char *what,
+                            struct codec_reader *ret_reader, struct store_error *error)
+    __attribute__((warn_unused_result));
 
 #endif

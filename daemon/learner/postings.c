@@ -1,79 +1,448 @@
+/*
+ * Chunks lie in an array of places, the free ones on a list, and are let go by a clock hand: a
+ * chunk that was admitted since the hand came by gets another round (second chance).
+ */
 #include "daemon/learner/postings.h"
 
 #include <errno.h>
 #include <stdlib.h>
 #include <string.h>
 
-enum {
-    POSTING_BYTES = sizeof(uint32_t) + 2 * sizeof(float)
+#include "daemon/grow.h"
+#include "daemon/learner/postings_index.h"
+
+struct postings {
+    size_t stride;
+    size_t tag_limit;
+    struct postings_index index;
+    struct chunk *chunks;
+    size_t chunk_count; /* places that have been taken once */
+    size_t chunk_capacity;
+    uint32_t *free_places;
+    size_t free_count;
+    size_t free_capacity;
+    uint32_t *changed; /* places; one that was dropped and taken again may stand here twice */
+    size_t changed_count;
+    size_t changed_capacity;
+    uint64_t number_bytes;
+    size_t hand;
 };
 
-static size_t chunks_of(size_t postings)
+enum {
+    FIRST_CAPACITY = 4,   /* postings */
+    ALLOCATION_BYTES = 16 /* what malloc takes for itself */
+};
+
+int postings_new(size_t lanes, struct postings **ret_postings)
 {
-    return (postings + POSTINGS_CHUNK - 1) / POSTINGS_CHUNK;
+    struct postings *made = calloc(1, sizeof *made);
+    if (!made) {
+        return -ENOMEM;
+    }
+    made->stride = 1 + lanes;
+    *ret_postings = made;
+    return 0;
 }
 
-static size_t block_bytes(size_t capacity)
+void postings_free(struct postings *postings)
 {
-    return capacity * POSTING_BYTES + chunks_of(capacity);
+    if (!postings) {
+        return;
+    }
+    for (size_t i = 0; i < postings->chunk_count; i++) {
+        free(postings->chunks[i].numbers);
+    }
+    free(postings->chunks);
+    free(postings->free_places);
+    free(postings->changed);
+    index_deinit(&postings->index);
+    free(postings);
 }
 
-void postings_deinit(struct postings *postings)
+size_t postings_stride(const struct postings *postings)
 {
-    free(postings->tags);
-    memset(postings, 0, sizeof *postings);
+    return postings->stride;
+}
+
+void postings_limit_tags(struct postings *postings, size_t tag_count)
+{
+    postings->tag_limit = tag_count;
 }
 
 uint64_t postings_bytes(const struct postings *postings)
 {
-    return block_bytes(postings->capacity);
+    return sizeof *postings + index_bytes(&postings->index) +
+           postings->chunk_capacity * sizeof *postings->chunks +
+           postings->free_capacity * sizeof *postings->free_places +
+           postings->changed_capacity * sizeof *postings->changed + postings->number_bytes;
 }
 
-/* Where the arrays lie in a block of the given capacity. */
-static struct postings lay_out(void *block, uint32_t count, uint32_t capacity)
+/* --- places -------------------------------------------------------------------------------------
+ */
+
+static uint64_t bytes_of(const struct postings *postings, size_t capacity)
 {
-    struct postings laid = {.count = count, .capacity = capacity, .tags = block};
-    laid.values = (void *)(laid.tags + capacity);
-    laid.accumulators = laid.values + capacity;
-    laid.changed = (uint8_t *)(laid.accumulators + capacity);
-    return laid;
+    return capacity * postings->stride * sizeof(uint32_t) + ALLOCATION_BYTES;
 }
 
-static int enlarge(struct postings *postings)
+/* Takes a place for a chunk with room for so many postings. */
+static int take_place(struct postings *postings, uint32_t word, uint32_t number, size_t capacity,
+                      uint32_t *ret_place)
 {
-    if (postings->capacity > UINT32_MAX / 2) {
+    if (postings->free_count == 0 &&
+        (GROW(&postings->chunks, &postings->chunk_capacity, postings->chunk_count + 1) < 0 ||
+         GROW(&postings->free_places, &postings->free_capacity, postings->chunk_count + 1) < 0)) {
         return -ENOMEM;
     }
-    uint32_t capacity = postings->capacity + postings->capacity / 2 + 4;
-    void *block = calloc(1, block_bytes(capacity));
-    if (!block) {
+    uint32_t *numbers = calloc(capacity * postings->stride, sizeof *numbers);
+    if (!numbers) {
         return -ENOMEM;
     }
-    struct postings larger = lay_out(block, postings->count, capacity);
-    if (postings->count > 0) {
-        memcpy(larger.tags, postings->tags, postings->count * sizeof *larger.tags);
-        memcpy(larger.values, postings->values, postings->count * sizeof *larger.values);
-        memcpy(larger.accumulators, postings->accumulators,
-               postings->count * sizeof *larger.accumulators);
-        memcpy(larger.changed, postings->changed, chunks_of(postings->count));
-    }
-    void *old = postings->tags;
-    *postings = larger;
-    free(old);
+    uint32_t place = postings->free_count > 0 ? postings->free_places[--postings->free_count]
+                                              : (uint32_t)postings->chunk_count++;
+    postings->chunks[place] = (struct chunk){.word = word,
+                                             .number = number,
+                                             .capacity = (uint16_t)capacity,
+                                             .is_there = true,
+                                             .is_used = true,
+                                             .numbers = numbers};
+    postings->number_bytes += bytes_of(postings, capacity);
+    *ret_place = place;
     return 0;
 }
 
-int postings_append(struct postings *postings, uint32_t tag, float value, float accumulator)
+static void free_place(struct postings *postings, uint32_t place)
 {
-    if (postings->count == postings->capacity && enlarge(postings) < 0) {
+    struct chunk *chunk = &postings->chunks[place];
+    postings->number_bytes -= bytes_of(postings, chunk->capacity);
+    free(chunk->numbers);
+    *chunk = (struct chunk){0};
+    postings->free_places[postings->free_count++] = place; /* there is room for every place */
+}
+
+struct chunk *postings_at(const struct postings *postings, uint32_t place)
+{
+    return &postings->chunks[place];
+}
+
+uint32_t postings_chunks(const struct postings *postings, uint32_t word)
+{
+    const struct index_word *entry = index_find(&postings->index, word);
+    return entry ? entry->chunk_count : 0;
+}
+
+uint32_t postings_place(const struct postings *postings, uint32_t word, uint32_t number)
+{
+    return index_places(index_find(&postings->index, word))[number] - 1;
+}
+
+/* --- from the base ------------------------------------------------------------------------------
+ */
+
+/* Whether bytes of the base are postings. */
+static bool are_postings(const struct postings *postings, struct base_bytes bytes)
+{
+    size_t posting_bytes = postings->stride * sizeof(uint32_t);
+    bool fit = bytes.size > 0 && bytes.size % posting_bytes == 0 &&
+               bytes.size <= POSTINGS_CHUNK * posting_bytes;
+    for (size_t at = 0; fit && at < bytes.size; at += posting_bytes) {
+        uint32_t tag = 0;
+        memcpy(&tag, bytes.data + at, sizeof tag);
+        fit = tag < postings->tag_limit;
+    }
+    return fit;
+}
+
+static int read_base(const struct postings *postings, const struct base *base, uint32_t word,
+                     uint32_t number, struct base_bytes *ret_bytes)
+{
+    if (!base) {
+        return -ENOENT;
+    }
+    int result = base->chunk(base->user, word, number, ret_bytes);
+    return result == 0 && !are_postings(postings, *ret_bytes) ? -EIO : result;
+}
+
+/* --- reading ------------------------------------------------------------------------------------
+ */
+
+void postings_walk_begin(const struct postings *postings, const struct base *base, uint32_t word,
+                         struct postings_walk *ret_walk)
+{
+    const struct index_word *entry = index_find(&postings->index, word);
+    ret_walk->postings = postings;
+    ret_walk->base = base;
+    ret_walk->word = word;
+    ret_walk->number = 0;
+    ret_walk->chunk_count = entry ? entry->chunk_count : UINT32_MAX;
+    ret_walk->known = entry ? index_places(entry) : NULL;
+}
+
+int postings_walk_next(struct postings_walk *walk, const uint32_t **ret_numbers, size_t *ret_count)
+{
+    uint32_t number = walk->number;
+    if (number == walk->chunk_count) {
+        return -ENOENT;
+    }
+    walk->number++;
+    uint32_t place = walk->known ? walk->known[number] : 0;
+    if (place != 0) {
+        const struct chunk *chunk = &walk->postings->chunks[place - 1];
+        *ret_numbers = chunk->numbers;
+        *ret_count = chunk->count;
+        return 0;
+    }
+    struct base_bytes bytes;
+    int result = read_base(walk->postings, walk->base, walk->word, number, &bytes);
+    if (result == -ENOENT && walk->known) {
+        return -EIO; /* the index knows of it */
+    }
+    if (result == 0) {
+        memcpy(walk->buffer, bytes.data, bytes.size); /* aligned */
+        *ret_numbers = walk->buffer;
+        *ret_count = bytes.size / (walk->postings->stride * sizeof(uint32_t));
+    }
+    return result;
+}
+
+/* --- changing -----------------------------------------------------------------------------------
+ */
+
+/* Reads one chunk into memory; -ENOENT where it is not stored. */
+static int admit_chunk(struct postings *postings, const struct base *base, uint32_t word,
+                       uint32_t number)
+{
+    struct base_bytes bytes;
+    int result = read_base(postings, base, word, number, &bytes);
+    if (result < 0) {
+        return result;
+    }
+    size_t count = bytes.size / (postings->stride * sizeof(uint32_t));
+    struct index_word *entry = NULL;
+    uint32_t place = 0;
+    if (index_add(&postings->index, word, &entry) < 0 ||
+        (number == entry->chunk_count && index_add_chunk(&postings->index, entry) < 0)) {
         return -ENOMEM;
     }
-    uint32_t at = postings->count++;
-    /* The arrays are those of the larger block; the analyzer sees the smaller one's in them. */
-    // NOLINTNEXTLINE(clang-analyzer-unix.Malloc)
-    postings->tags[at] = tag;
-    postings->values[at] = value;
-    postings->accumulators[at] = accumulator;
-    postings->changed[at / POSTINGS_CHUNK] = 1;
+    if (take_place(postings, word, number, count, &place) < 0) {
+        return -ENOMEM;
+    }
+    memcpy(postings->chunks[place].numbers, bytes.data, bytes.size);
+    postings->chunks[place].count = (uint16_t)count;
+    index_set_place(entry, number, place + 1);
     return 0;
+}
+
+int postings_admit(struct postings *postings, const struct base *base, uint32_t word)
+{
+    const struct index_word *entry = index_find(&postings->index, word);
+    if (!entry) {
+        int result = 0;
+        for (uint32_t number = 0; result == 0; number++) {
+            result = admit_chunk(postings, base, word, number);
+        }
+        return result == -ENOENT ? 0 : result;
+    }
+    for (uint32_t number = 0; number < entry->chunk_count; number++) {
+        uint32_t place = index_places(entry)[number];
+        if (place != 0) {
+            postings->chunks[place - 1].is_used = true;
+            continue;
+        }
+        int result = admit_chunk(postings, base, word, number);
+        if (result < 0) {
+            return result == -ENOENT ? -EIO : result;
+        }
+    }
+    return 0;
+}
+
+int postings_touch(struct postings *postings, uint32_t place)
+{
+    struct chunk *chunk = &postings->chunks[place];
+    if (chunk->is_changed) {
+        return 0;
+    }
+    if (GROW(&postings->changed, &postings->changed_capacity, postings->changed_count + 1) < 0) {
+        return -ENOMEM;
+    }
+    postings->changed[postings->changed_count++] = place;
+    chunk->is_changed = true;
+    return 0;
+}
+
+static int enlarge_chunk(struct postings *postings, struct chunk *chunk)
+{
+    size_t capacity = chunk->capacity + chunk->capacity / 2U + FIRST_CAPACITY;
+    capacity = capacity < POSTINGS_CHUNK ? capacity : POSTINGS_CHUNK;
+    uint32_t *numbers =
+        realloc(chunk->numbers, capacity * postings->stride * sizeof *chunk->numbers);
+    if (!numbers) {
+        return -ENOMEM;
+    }
+    postings->number_bytes += bytes_of(postings, capacity) - bytes_of(postings, chunk->capacity);
+    chunk->numbers = numbers;
+    chunk->capacity = (uint16_t)capacity;
+    return 0;
+}
+
+/* The last chunk of a word, if it has room for one more. */
+static struct chunk *last_with_room(const struct postings *postings, const struct index_word *entry)
+{
+    if (!entry || entry->chunk_count == 0) {
+        return NULL;
+    }
+    struct chunk *last = &postings->chunks[index_places(entry)[entry->chunk_count - 1] - 1];
+    return last->count < POSTINGS_CHUNK ? last : NULL;
+}
+
+static int add_chunk(struct postings *postings, uint32_t word, struct chunk **ret_chunk)
+{
+    struct index_word *entry = NULL;
+    uint32_t place = 0;
+    if (index_add(&postings->index, word, &entry) < 0 ||
+        take_place(postings, word, entry->chunk_count, FIRST_CAPACITY, &place) < 0) {
+        return -ENOMEM;
+    }
+    if (index_add_chunk(&postings->index, entry) < 0) {
+        free_place(postings, place);
+        return -ENOMEM;
+    }
+    index_set_place(entry, entry->chunk_count - 1, place + 1);
+    *ret_chunk = &postings->chunks[place];
+    return 0;
+}
+
+int postings_append(struct postings *postings, uint32_t word, uint32_t tag, uint32_t *ret_place,
+                    uint32_t *ret_at)
+{
+    struct chunk *chunk = last_with_room(postings, index_find(&postings->index, word));
+    if (!chunk && add_chunk(postings, word, &chunk) < 0) {
+        return -ENOMEM;
+    }
+    if (chunk->count == chunk->capacity && enlarge_chunk(postings, chunk) < 0) {
+        return -ENOMEM;
+    }
+    uint32_t place = (uint32_t)(chunk - postings->chunks);
+    if (postings_touch(postings, place) < 0) {
+        return -ENOMEM;
+    }
+    uint32_t *posting = chunk->numbers + chunk->count * postings->stride;
+    memset(posting, 0, postings->stride * sizeof *posting);
+    posting[0] = tag;
+    *ret_place = place;
+    *ret_at = chunk->count++;
+    return 0;
+}
+
+uint64_t postings_drop(struct postings *postings, uint32_t word)
+{
+    const struct index_word *entry = index_find(&postings->index, word);
+    uint64_t dropped = 0;
+    for (uint32_t number = 0; entry && number < entry->chunk_count; number++) {
+        uint32_t place = index_places(entry)[number];
+        if (place != 0) {
+            dropped += postings->chunks[place - 1].count;
+            free_place(postings, place - 1);
+        }
+    }
+    index_remove(&postings->index, word);
+    return dropped;
+}
+
+/* --- storing ------------------------------------------------------------------------------------
+ */
+
+struct listed {
+    uint64_t order;
+    uint32_t place;
+};
+
+static int compare_listed(const void *left, const void *right)
+{
+    uint64_t a = ((const struct listed *)left)->order;
+    uint64_t b = ((const struct listed *)right)->order;
+    return (a > b) - (a < b);
+}
+
+/* In place of the list its places by rising word and number, each once; those that are gone are
+ * left out. */
+static size_t sort_changed(const struct postings *postings, struct listed *list, uint32_t *places)
+{
+    size_t count = 0;
+    for (size_t i = 0; i < postings->changed_count; i++) {
+        uint32_t place = postings->changed[i];
+        const struct chunk *chunk = &postings->chunks[place];
+        if (chunk->is_there && chunk->is_changed) {
+            list[count++] = (struct listed){(uint64_t)chunk->word << 32U | chunk->number, place};
+        }
+    }
+    if (count > 1) {
+        qsort(list, count, sizeof *list, compare_listed);
+    }
+    size_t kept = 0;
+    for (size_t i = 0; i < count; i++) {
+        if (i == 0 || list[i].place != list[i - 1].place) {
+            places[kept++] = list[i].place;
+        }
+    }
+    return kept;
+}
+
+int postings_changed(const struct postings *postings, uint32_t **ret_places, size_t *ret_count)
+{
+    size_t most = postings->changed_count;
+    struct listed *list = calloc(most + 1, sizeof *list);
+    uint32_t *places = calloc(most + 1, sizeof *places);
+    if (!list || !places) {
+        free(list);
+        free(places);
+        return -ENOMEM;
+    }
+    *ret_count = sort_changed(postings, list, places);
+    *ret_places = places;
+    free(list);
+    return 0;
+}
+
+size_t postings_changed_count(const struct postings *postings)
+{
+    return postings->changed_count;
+}
+
+void postings_clean(struct postings *postings)
+{
+    for (size_t i = 0; i < postings->changed_count; i++) {
+        postings->chunks[postings->changed[i]].is_changed = false;
+    }
+    postings->changed_count = 0;
+}
+
+static void let_go(struct postings *postings, uint32_t place)
+{
+    uint32_t word = postings->chunks[place].word;
+    struct index_word *entry = index_find(&postings->index, word);
+    index_set_place(entry, postings->chunks[place].number, 0);
+    if (entry->held == 0) {
+        index_remove(&postings->index, word);
+    }
+    free_place(postings, place);
+}
+
+void postings_trim(struct postings *postings, uint64_t bytes)
+{
+    /* Twice round: the first may find every chunk used. */
+    for (size_t left = 2 * postings->chunk_count; left > 0 && postings_bytes(postings) > bytes;
+         left--) {
+        postings->hand = postings->hand + 1 < postings->chunk_count ? postings->hand + 1 : 0;
+        struct chunk *chunk = &postings->chunks[postings->hand];
+        if (!chunk->is_there || chunk->is_changed) {
+            continue;
+        }
+        if (chunk->is_used) {
+            chunk->is_used = false;
+        } else {
+            let_go(postings, (uint32_t)postings->hand);
+        }
+    }
 }

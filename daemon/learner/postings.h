@@ -1,40 +1,112 @@
 /*
- * postings: one word's (tag, weight, accumulator) triples, as three arrays side by side so that
- * scoring reads only tags and weights. Postings are only ever appended; their order is kept.
+ * postings: which tags a word speaks for: (tag, cell) pairs, in chunks of a size that stays in a
+ * leaf page of the store, and one coded form in memory and there. A posting has a cell for each
+ * lane: learners that share the list of tags but not the weights.
+ *
+ * Memory holds what has changed since it was stored, and what was wanted lately; other chunks are
+ * read from the base. What is in memory changes only the time that something takes, never what
+ * comes out. Not locked: many threads may walk while none changes.
+ *
+ * A posting is a tag, followed by a cell for each lane: 4 bytes each, in the machine's own order.
  */
 #ifndef UNDERTAG_POSTINGS_H
 #define UNDERTAG_POSTINGS_H
 
+#include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
 
-enum {
-    POSTINGS_CHUNK = 160
-}; /* postings to a stored chunk */
+#include "daemon/base.h"
 
-/* Zero-initialised is empty. Read freely; change by the functions below, or values in place. */
-struct postings {
-    uint32_t count;
-    uint32_t capacity;
-    uint32_t *tags; /* owns the block that all four arrays lie in */
-    float *values;
-    float *accumulators;
-    uint8_t *changed; /* by chunk */
+enum {
+    POSTINGS_CHUNK = 160, /* postings to a chunk */
+    POSTINGS_MOST_LANES = 2,
+    POSTINGS_MOST_NUMBERS = POSTINGS_CHUNK * (1 + POSTINGS_MOST_LANES)
 };
 
-void postings_deinit(struct postings *postings);
+/* Read freely; cells may be changed in place after postings_touch. */
+struct chunk {
+    uint32_t word;
+    uint32_t number; /* of the word's, from 0 */
+    uint16_t count;
+    uint16_t capacity;
+    bool is_there; /* otherwise the place is free */
+    bool is_changed;
+    bool is_used;      /* since the clock hand passed */
+    uint32_t *numbers; /* postings, one after the other */
+};
 
-/* Appends a posting and marks its chunk as changed. Returns 0 or -ENOMEM. */
-int postings_append(struct postings *postings, uint32_t tag, float value, float accumulator)
+struct postings;
+
+int postings_new(size_t lanes, struct postings **ret_postings) __attribute__((warn_unused_result));
+void postings_free(struct postings *postings);
+
+/* Numbers to a posting: 1 + lanes. */
+size_t postings_stride(const struct postings *postings);
+
+/* What is stored and names a tag from here on is damaged. */
+void postings_limit_tags(struct postings *postings, size_t tag_count);
+
+/* Bytes held in memory. */
+uint64_t postings_bytes(const struct postings *postings);
+
+/* --- reading --- */
+
+/* Walks a word's chunks, whether they are in memory or not. */
+struct postings_walk {
+    const struct postings *postings;
+    const struct base *base;
+    uint32_t word;
+    uint32_t number;       /* of the chunk that comes next */
+    uint32_t chunk_count;  /* where the word is known in memory */
+    const uint32_t *known; /* by chunk: 1 + its place, 0 where it is not in memory; or NULL */
+    uint32_t buffer[POSTINGS_MOST_NUMBERS];
+};
+
+void postings_walk_begin(const struct postings *postings, const struct base *base, uint32_t word,
+                         struct postings_walk *ret_walk);
+
+/* The next chunk's postings, valid until the next step; 0, -ENOENT behind the last one, -EIO where
+ * what is stored cannot be read or does not fit, or -ENOMEM. */
+int postings_walk_next(struct postings_walk *walk, const uint32_t **ret_numbers, size_t *ret_count);
+
+/* --- changing --- */
+
+/* Brings all of a word's chunks into memory. Returns 0, -EIO or -ENOMEM. */
+int postings_admit(struct postings *postings, const struct base *base, uint32_t word)
     __attribute__((warn_unused_result));
 
-/* Chunks that the postings take. */
-static inline uint32_t postings_chunks(const struct postings *postings)
-{
-    return (postings->count + POSTINGS_CHUNK - 1) / POSTINGS_CHUNK;
-}
+/* The number of chunks of an admitted word, and the place of one of them. */
+uint32_t postings_chunks(const struct postings *postings, uint32_t word);
+uint32_t postings_place(const struct postings *postings, uint32_t word, uint32_t number);
 
-/* Bytes of the block. */
-uint64_t postings_bytes(const struct postings *postings);
+/* The chunk at a place; valid until something is admitted, appended or trimmed. */
+struct chunk *postings_at(const struct postings *postings, uint32_t place);
+
+/* Marks a chunk as changed. Returns 0 or -ENOMEM. */
+int postings_touch(struct postings *postings, uint32_t place) __attribute__((warn_unused_result));
+
+/* Appends a posting without a weight to an admitted word; its chunk's place, and its own in the
+ * chunk. Returns 0 or -ENOMEM. */
+int postings_append(struct postings *postings, uint32_t word, uint32_t tag, uint32_t *ret_place,
+                    uint32_t *ret_at) __attribute__((warn_unused_result));
+
+/* Drops an admitted word's chunks, changed or not; how many postings they had. */
+uint64_t postings_drop(struct postings *postings, uint32_t word);
+
+/* --- storing --- */
+
+/* Chunks that have changed since the last postings_clean, by rising word and number. The caller
+ * frees the list. Returns 0 or -ENOMEM. */
+int postings_changed(const struct postings *postings, uint32_t **ret_places, size_t *ret_count)
+    __attribute__((warn_unused_result));
+size_t postings_changed_count(const struct postings *postings);
+
+/* All is stored. */
+void postings_clean(struct postings *postings);
+
+/* Lets go of chunks that are stored and were not admitted lately, until there are at most so many
+ * bytes, or nothing more can go. */
+void postings_trim(struct postings *postings, uint64_t bytes);
 
 #endif

@@ -1,6 +1,7 @@
 /*
  * weights: the linear scorer of every tag, kept by word: a word's postings are its (tag, weight)
- * pairs, so that an item visits only the postings of its own words.
+ * pairs, so that an item visits only the postings of its own words. They are read from the base
+ * where they are not in memory (postings.h), and their numbers are coded (cell.h).
  *
  *   s_l(x) = -1 + b_l + Σ_i w_il·x_i
  *
@@ -15,7 +16,11 @@
  * every item, so it is held: an example of a tag that fewer than ten items have leaves it at 0 or
  * below.
  *
- * Nothing here is locked: many threads may score (each with its own scratch) while none learns.
+ * Two learners may share the postings, each in a lane of its own: the shadow sees the same items and
+ * learns them with other factors.
+ *
+ * Nothing here is locked: many threads may score (each with its own scratch and base) while none
+ * changes the weights.
  */
 #ifndef UNDERTAG_WEIGHTS_H
 #define UNDERTAG_WEIGHTS_H
@@ -24,18 +29,25 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "daemon/base.h"
 #include "daemon/learner/marks.h"
-#include "daemon/learner/postings.h"
 #include "daemon/learner/surrogate.h"
+
+enum weights_lane {
+    WEIGHTS_MAIN,
+    WEIGHTS_SHADOW,
+    WEIGHTS_LANES
+};
 
 struct weights_settings {
     enum surrogate surrogate;
     /* A word creates a weight for a tag only while its document count is at most this many times
      * the tag's count; 0 for no such rule. */
     double specificity;
+    bool shadow; /* there is a second lane */
 };
 
-/* One feature of x. Numbers are small and dense, so that arrays may be indexed by them. */
+/* One feature of x. */
 struct weights_feature {
     uint32_t word;
     uint32_t document_count; /* items that hold the word, this one included */
@@ -45,14 +57,14 @@ struct weights_feature {
 /* A tag that the item has. */
 struct weights_given {
     uint32_t tag;
-    uint32_t tag_count; /* items that have the tag, this one included */
-    double factor;      /* how many times the pair counts, >= 0 */
+    uint32_t tag_count;            /* items that have the tag, this one included */
+    double factors[WEIGHTS_LANES]; /* how many times the pair counts, >= 0 */
 };
 
-enum {
-    /* Postings are stored by chunks of this many: a record of 12 bytes each stays in a leaf page.
-     */
-    WEIGHTS_CHUNK_POSTINGS = POSTINGS_CHUNK
+/* A tag with its score. */
+struct weights_rival {
+    uint32_t tag;
+    float score;
 };
 
 struct weights;
@@ -68,7 +80,7 @@ void weights_free(struct weights *weights);
 /* Makes room for tags below `count`, their bias 0. Returns 0 or -ENOMEM. */
 int weights_reserve_tags(struct weights *weights, size_t count) __attribute__((warn_unused_result));
 
-/* Postings held, over all words. */
+/* Postings over all words, in memory or not. */
 uint64_t weights_postings(const struct weights *weights);
 
 /* Bytes held in memory. */
@@ -76,75 +88,95 @@ uint64_t weights_bytes(const struct weights *weights);
 
 int weights_scratch_new(struct weights_scratch **ret_scratch) __attribute__((warn_unused_result));
 void weights_scratch_free(struct weights_scratch *scratch);
+uint64_t weights_scratch_bytes(const struct weights_scratch *scratch);
 
 /*
- * Scores x (L2-normalised, no word twice) against every tag that it touches: those with a posting
- * of one of its words and those whose bias alone lifts them above the floor. The touched tags and
- * their sums stay in the scratch until its next use. Returns 0 or -ENOMEM.
+ * Scores x (L2-normalised, no word twice) in the first `lanes` lanes against every tag that it
+ * touches: those with a posting of one of its words and those whose bias alone lifts them above the
+ * floor. The sums stay in the scratch until its next use. Returns 0, -ENOMEM, or -EIO where the
+ * base cannot be read.
  */
-int weights_score(const struct weights *weights, const struct weights_feature *x, size_t count,
+int weights_score(const struct weights *weights, const struct base *base,
+                  const struct weights_feature *x, size_t count, size_t lanes,
                   struct weights_scratch *scratch) __attribute__((warn_unused_result));
 
-/* The touched tags, in no order; valid until the scratch is used again. */
-const uint32_t *weights_touched(const struct weights_scratch *scratch, size_t *ret_count);
+/* The touched tags with a score above the floor, in no order; valid until the scratch is used
+ * again. */
+const struct weights_rival *weights_rivals(const struct weights_scratch *scratch,
+                                           enum weights_lane lane, size_t *ret_count);
 
 bool weights_is_touched(const struct weights_scratch *scratch, uint32_t tag);
 
-/* Whether any word of x has a weight for any tag. */
-bool weights_speak(const struct weights *weights, const struct weights_feature *x, size_t count);
+/* Whether any word of the item just scored has a weight for any tag. */
+bool weights_speak(const struct weights_scratch *scratch);
 
 /* s_l of any tag, after weights_score: a touched one's score, otherwise -1 + b_l. */
 float weights_tag_score(const struct weights *weights, const struct weights_scratch *scratch,
-                        uint32_t tag);
+                        enum weights_lane lane, uint32_t tag);
 
 /*
  * What each feature adds to each tag's score: parts[k·count + i] = w_il·x_i for l = tags[k], 0
  * where there is no weight. `tags` holds no tag twice, each below the reserved number of tags. Uses
- * the scratch, whose scores stay.
+ * the scratch, whose scores stay. Returns 0, -ENOMEM or -EIO.
  */
-void weights_explain(const struct weights *weights, const struct weights_feature *x, size_t count,
-                     const uint32_t *tags, size_t tag_count, struct weights_scratch *scratch,
-                     float *parts);
+int weights_explain(const struct weights *weights, const struct base *base,
+                    const struct weights_feature *x, size_t count, const uint32_t *tags,
+                    size_t tag_count, struct weights_scratch *scratch, float *parts)
+    __attribute__((warn_unused_result));
 
 /* What is learned of the item that the scratch has just scored; all borrowed. */
 struct weights_example {
+    uint64_t number;                 /* of the change: no two examples have the same */
     const struct weights_feature *x; /* as it was scored */
     size_t count;
+    size_t lanes;                      /* that learn it; they have been scored */
     const struct weights_given *given; /* tags that it has; none twice */
     size_t given_count;
     bool pairs_alone;       /* learn the pairs named here; otherwise all other tags are negatives */
     const uint32_t *denied; /* negatives where pairs are alone; none of them given */
     size_t denied_count;
-    double step; /* η for this item */
-    const uint32_t *watched;
+    double step;             /* η for this item */
+    const uint32_t *watched; /* by the main lane */
     size_t watched_count;
     float *moves; /* by watched tag: set to what this adds to its score */
 };
 
-/* Learns an example; each negative counts once. Returns 0 or -ENOMEM; after that the weights are as
- * far as the example got and must not be used any more. */
+/* Brings the postings of x's words into memory, as learning needs them. Returns 0, -ENOMEM or -EIO.
+ */
+int weights_admit(struct weights *weights, const struct base *base, const struct weights_feature *x,
+                  size_t count) __attribute__((warn_unused_result));
+
+/* Learns an example whose words are admitted; each negative counts once. Returns 0 or -ENOMEM;
+ * after that the weights are as far as the example got and must not be used any more. */
 int weights_learn(struct weights *weights, const struct weights_example *example,
                   struct weights_scratch *scratch) __attribute__((warn_unused_result));
 
-/* Forgets a word with all its postings. */
-void weights_forget_word(struct weights *weights, uint32_t word);
+/* Forgets a word with all its postings, stored ones included. Returns 0, -ENOMEM or -EIO. */
+int weights_forget_word(struct weights *weights, const struct base *base, uint32_t word)
+    __attribute__((warn_unused_result));
+
+/* Lets go of what is stored and was not wanted lately, until there are at most so many bytes or
+ * nothing more can go. */
+void weights_trim(struct weights *weights, uint64_t bytes);
 
 /* --- for those who store the weights ------------------------------------------------------------
  * What has changed since the last weights_clean is marked, chunk by chunk and tag by tag. */
 
+/* A chunk of a word's postings in the form in which the base gives it back. */
 struct weights_chunk {
     uint32_t word;
     uint32_t number; /* of the word's chunks, from 0 */
-    uint32_t count;
-    const uint32_t *tags;
-    const float *values;
-    const float *accumulators;
+    struct base_bytes bytes;
 };
 
-/* Calls `each` for every changed chunk; anything but 0 ends it and is returned. */
+/* Calls `each` for every changed chunk, by rising word and number; anything but 0 ends it and is
+ * returned. -ENOMEM. */
 int weights_changed_chunks(const struct weights *weights,
                            int (*each)(void *user, const struct weights_chunk *chunk), void *user)
     __attribute__((warn_unused_result));
+
+/* How many of them there are, or a few more. */
+size_t weights_changed_count(const struct weights *weights);
 
 /* A tag's bias b_l and its accumulator G, to be stored when the tag is among the changed ones. */
 struct weights_bias {
@@ -152,7 +184,8 @@ struct weights_bias {
     float accumulator;
 };
 
-struct weights_bias weights_bias(const struct weights *weights, uint32_t tag);
+struct weights_bias weights_bias(const struct weights *weights, enum weights_lane lane,
+                                 uint32_t tag);
 
 /* The tags that have changed: their bias, or what the owner has marked; weights_clean empties it.
  */
@@ -164,11 +197,10 @@ int weights_mark_tag(struct weights *weights, uint32_t tag) __attribute__((warn_
 /* Marks everything as stored. */
 void weights_clean(struct weights *weights);
 
-/* Puts back what was stored: a word's chunks in their order. Nothing is marked as changed.
- * Returns 0, -ENOMEM, or -EINVAL for a chunk out of order or over the size. */
-int weights_restore_chunk(struct weights *weights, const struct weights_chunk *chunk)
-    __attribute__((warn_unused_result));
-int weights_restore_bias(struct weights *weights, uint32_t tag, struct weights_bias bias)
-    __attribute__((warn_unused_result));
+/* Puts back what was stored and is kept in memory: a tag's bias in a lane that there is, and the
+ * number of postings. Nothing is marked as changed. Returns 0 or -ENOMEM. */
+int weights_restore_bias(struct weights *weights, enum weights_lane lane, uint32_t tag,
+                         struct weights_bias bias) __attribute__((warn_unused_result));
+void weights_restore_postings(struct weights *weights, uint64_t postings);
 
 #endif

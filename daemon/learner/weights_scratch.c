@@ -11,6 +11,7 @@ int weights_scratch_new(struct weights_scratch **ret_scratch)
     if (!made) {
         return -ENOMEM;
     }
+    made->lanes = 1;
     *ret_scratch = made;
     return 0;
 }
@@ -23,6 +24,9 @@ void weights_scratch_free(struct weights_scratch *scratch)
     free(scratch->sums);
     free(scratch->is_touched);
     free(scratch->touched);
+    for (size_t lane = 0; lane < WEIGHTS_LANES; lane++) {
+        free(scratch->rivals[lane].list);
+    }
     free(scratch->is_given);
     free(scratch->slot);
     free(scratch->active);
@@ -30,36 +34,67 @@ void weights_scratch_free(struct weights_scratch *scratch)
     free(scratch);
 }
 
-/* Grows one of several arrays that share their capacity. */
-static int grow_from(void *array, size_t capacity, size_t wanted, size_t size)
+uint64_t weights_scratch_bytes(const struct weights_scratch *scratch)
 {
-    return grow_array(array, &capacity, wanted, size);
+    uint64_t bytes = sizeof *scratch +
+                     scratch->tag_capacity * (scratch->lanes_room * sizeof *scratch->sums +
+                                              sizeof *scratch->is_touched +
+                                              sizeof *scratch->touched) +
+                     scratch->slot_capacity * sizeof *scratch->slot + scratch->given_capacity +
+                     scratch->active_capacity * sizeof *scratch->active +
+                     scratch->hit_capacity * sizeof *scratch->hits;
+    for (size_t lane = 0; lane < WEIGHTS_LANES; lane++) {
+        bytes += scratch->rivals[lane].capacity * sizeof *scratch->rivals[lane].list;
+    }
+    return bytes;
 }
 
-int scratch_reserve_tags(struct weights_scratch *scratch, size_t count)
+int scratch_reserve_tags(struct weights_scratch *scratch, size_t count, size_t lanes)
 {
-    if (count <= scratch->tag_capacity) {
+    scratch->lanes = lanes;
+    if (count <= scratch->tag_capacity && lanes <= scratch->lanes_room) {
         return 0;
     }
-    size_t now = scratch->tag_capacity;
-    size_t wanted = count + count / 2;
-    /* tag_capacity is raised last: what had grown before a failure is only larger than needed. */
-    if (grow_from(&scratch->sums, now, wanted, sizeof *scratch->sums) < 0 ||
-        grow_from(&scratch->is_touched, now, wanted, sizeof *scratch->is_touched) < 0 ||
-        grow_from(&scratch->touched, now ? now + 1 : 0, wanted + 1, sizeof *scratch->touched) < 0 ||
-        grow_from(&scratch->is_given, now, wanted, sizeof *scratch->is_given) < 0 ||
-        grow_from(&scratch->slot, now, wanted, sizeof *scratch->slot) < 0) {
+    size_t wanted = count <= scratch->tag_capacity ? count : count + count / 4;
+    size_t room = lanes > scratch->lanes_room ? lanes : scratch->lanes_room;
+    float *sums = calloc(wanted * room + 1, sizeof *sums);
+    uint8_t *is_touched = calloc(wanted + 1, sizeof *is_touched);
+    uint32_t *touched = calloc(wanted + 1, sizeof *touched);
+    if (!sums || !is_touched || !touched) {
+        free(sums);
+        free(is_touched);
+        free(touched);
         return -ENOMEM;
     }
+    free(scratch->sums);
+    free(scratch->is_touched);
+    free(scratch->touched);
+    scratch->sums = sums;
+    scratch->is_touched = is_touched;
+    scratch->touched = touched;
     scratch->tag_capacity = wanted;
+    scratch->lanes_room = room;
     return 0;
+}
+
+int scratch_reserve_slots(struct weights_scratch *scratch)
+{
+    return GROW(&scratch->slot, &scratch->slot_capacity, scratch->tag_capacity * scratch->lanes) <
+                       0 ||
+                   GROW(&scratch->is_given, &scratch->given_capacity, scratch->tag_capacity) < 0
+               ? -ENOMEM
+               : 0;
 }
 
 void scratch_clear(struct weights_scratch *scratch)
 {
+    size_t lanes = scratch->lanes;
     for (size_t i = 0; i < scratch->touched_count; i++) {
-        scratch->sums[scratch->touched[i]] = 0.0F;
-        scratch->is_touched[scratch->touched[i]] = 0;
+        uint32_t tag = scratch->touched[i];
+        for (size_t lane = 0; lane < lanes; lane++) {
+            scratch->sums[tag * lanes + lane] = 0.0F;
+        }
+        scratch->is_touched[tag] = 0;
     }
     scratch->touched_count = 0;
 }
@@ -71,7 +106,8 @@ void scratch_end_learning(struct weights_scratch *scratch, const struct weights_
         scratch->is_given[given[i].tag] = 0;
     }
     for (size_t i = 0; i < scratch->active_count; i++) {
-        scratch->slot[scratch->active[i].tag] = 0;
+        const struct scratch_active *active = &scratch->active[i];
+        scratch->slot[active->tag * scratch->lanes + active->lane] = 0;
     }
     scratch->active_count = 0;
     scratch->hit_count = 0;

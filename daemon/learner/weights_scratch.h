@@ -10,13 +10,16 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "daemon/learner/postings.h"
 #include "daemon/learner/weights.h"
 
-/* A tag that has a loss on the example. */
+/* A tag that has a loss on the example, in one of the lanes. */
 struct scratch_active {
     uint32_t tag;
+    uint32_t tag_count; /* of a given one */
     uint32_t last_word; /* the word of its newest hit, when has_word */
     bool has_word;
+    enum weights_lane lane;
     float sign; /* y */
     float slope;
     float bias_rate;
@@ -26,22 +29,36 @@ struct scratch_active {
     double alpha;
 };
 
-/* A posting that takes part in the step. */
+/* A cell that takes part in the step. */
 struct scratch_hit {
-    uint32_t word;
-    uint32_t at; /* place in the word's postings */
+    uint32_t place; /* of its chunk */
+    uint32_t at;    /* of its number in the chunk */
     uint32_t slot;
     float direction; /* y·rate·x: the weight moves by α times this */
+    uint64_t noise;
+};
+
+struct scratch_rivals {
+    struct weights_rival *list;
+    size_t count;
+    size_t capacity;
 };
 
 struct weights_scratch {
     size_t tag_capacity;
-    float *sums;         /* Σ w·x of a touched tag, otherwise 0 */
+    size_t lanes;        /* that were scored last */
+    size_t lanes_room;   /* that there is room for */
+    float *sums;         /* by tag and lane: Σ w·x of a touched tag, otherwise 0 */
     uint8_t *is_touched; /* by tag */
     uint32_t *touched;   /* one more than tags, for the write that is not kept */
     size_t touched_count;
+    bool has_spoken;
+    struct scratch_rivals rivals[WEIGHTS_LANES];
+    struct postings_walk walk;
+    uint32_t *slot; /* by tag and lane, while learning: 1 + place in `active`, or 0 */
+    size_t slot_capacity;
     uint8_t *is_given; /* by tag, while learning */
-    uint32_t *slot;    /* by tag, while learning: 1 + place in `active`, or 0 */
+    size_t given_capacity;
     struct scratch_active *active;
     size_t active_count;
     size_t active_capacity;
@@ -50,8 +67,12 @@ struct weights_scratch {
     size_t hit_capacity;
 };
 
-int scratch_reserve_tags(struct weights_scratch *scratch, size_t count)
+/* Makes room for scores, and forgets the lanes scored last; the scratch has been cleared. */
+int scratch_reserve_tags(struct weights_scratch *scratch, size_t count, size_t lanes)
     __attribute__((warn_unused_result));
+
+/* Makes room in `slot` and `is_given` for what has been scored. */
+int scratch_reserve_slots(struct weights_scratch *scratch) __attribute__((warn_unused_result));
 
 /* Forgets the item scored last. */
 void scratch_clear(struct weights_scratch *scratch);
@@ -61,6 +82,15 @@ static inline void scratch_touch(struct weights_scratch *scratch, uint32_t tag)
     scratch->touched[scratch->touched_count] = tag;
     scratch->touched_count += !scratch->is_touched[tag];
     scratch->is_touched[tag] = 1;
+}
+
+/* Σ w·x; 0 for a tag that is not touched. */
+static inline float scratch_sum(const struct weights_scratch *scratch, enum weights_lane lane,
+                                uint32_t tag)
+{
+    return tag < scratch->tag_capacity && lane < scratch->lanes
+               ? scratch->sums[tag * scratch->lanes + lane]
+               : 0.0F;
 }
 
 /* Empties what only learning uses. */

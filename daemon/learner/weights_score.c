@@ -1,0 +1,180 @@
+/* Scoring: from the words of an item to the tags that they touch. */
+#include <errno.h>
+#include <string.h>
+
+#include "daemon/grow.h"
+#include "daemon/learner/cell.h"
+#include "daemon/learner/weights.h"
+#include "daemon/learner/weights_private.h"
+#include "daemon/learner/weights_scratch.h"
+
+/* Adds a chunk's part of the scores. The numbers of lanes are constants where this is called, so
+ * that there is no loop over them; `x` is the feature's value by the step of a cell. */
+static inline __attribute__((always_inline)) void
+add_postings(const uint32_t *numbers, size_t count, size_t stride, size_t lanes, float x,
+             struct weights_scratch *scratch)
+{
+    float *sums = scratch->sums;
+    uint8_t *is_touched = scratch->is_touched;
+    uint32_t *touched = scratch->touched;
+    size_t touched_count = scratch->touched_count;
+    for (size_t j = 0; j < count; j++) {
+        const uint32_t *posting = numbers + j * stride;
+        uint32_t tag = posting[0];
+        /* Without a branch: written always, kept when it is the first visit. */
+        touched[touched_count] = tag;
+        touched_count += !is_touched[tag];
+        is_touched[tag] = 1;
+        for (size_t lane = 0; lane < lanes; lane++) {
+            sums[tag * lanes + lane] += (float)cell_weight(posting[1 + lane]) * x;
+        }
+    }
+    scratch->touched_count = touched_count;
+}
+
+static void add_chunk(const uint32_t *numbers, size_t count, size_t stride, float x,
+                      struct weights_scratch *scratch)
+{
+    if (scratch->lanes == WEIGHTS_LANES) {
+        add_postings(numbers, count, 1 + WEIGHTS_LANES, WEIGHTS_LANES, x, scratch);
+    } else if (stride == 2) {
+        add_postings(numbers, count, 2, 1, x, scratch);
+    } else {
+        add_postings(numbers, count, 1 + WEIGHTS_LANES, 1, x, scratch);
+    }
+}
+
+static int add_word(const struct weights *weights, const struct base *base,
+                    const struct weights_feature *feature, struct weights_scratch *scratch)
+{
+    size_t stride = postings_stride(weights->postings);
+    struct postings_walk *walk = &scratch->walk;
+    const uint32_t *numbers = NULL;
+    size_t count = 0;
+    int result = 0;
+    postings_walk_begin(weights->postings, base, feature->word, walk);
+    while ((result = postings_walk_next(walk, &numbers, &count)) == 0) {
+        add_chunk(numbers, count, stride, feature->value * CELL_STEP, scratch);
+    }
+    return result == -ENOENT ? 0 : result;
+}
+
+/* The touched tags that are above the floor. */
+static int list_rivals(const struct weights *weights, struct weights_scratch *scratch)
+{
+    size_t lanes = scratch->lanes;
+    for (size_t lane = 0; lane < lanes; lane++) {
+        struct scratch_rivals *rivals = &scratch->rivals[lane];
+        if (GROW(&rivals->list, &rivals->capacity, scratch->touched_count + 1) < 0) {
+            return -ENOMEM;
+        }
+        size_t count = 0;
+        for (size_t i = 0; i < scratch->touched_count; i++) {
+            uint32_t tag = scratch->touched[i];
+            float score = WEIGHTS_BASE_SCORE + weights->tags[tag].biases[lane].value +
+                          scratch->sums[tag * lanes + lane];
+            rivals->list[count] = (struct weights_rival){tag, score};
+            count += score > WEIGHTS_FLOOR_SCORE;
+        }
+        rivals->count = count;
+    }
+    return 0;
+}
+
+int weights_score(const struct weights *weights, const struct base *base,
+                  const struct weights_feature *x, size_t count, size_t lanes,
+                  struct weights_scratch *scratch)
+{
+    scratch_clear(scratch);
+    if (scratch_reserve_tags(scratch, weights->tag_count, lanes) < 0) {
+        return -ENOMEM;
+    }
+    for (size_t i = 0; i < count; i++) {
+        int result = add_word(weights, base, &x[i], scratch);
+        if (result < 0) {
+            return result;
+        }
+    }
+    scratch->has_spoken = scratch->touched_count > 0;
+    for (size_t i = 0; i < weights->raised_count; i++) {
+        scratch_touch(scratch, weights->raised[i]);
+    }
+    return list_rivals(weights, scratch);
+}
+
+const struct weights_rival *weights_rivals(const struct weights_scratch *scratch,
+                                           enum weights_lane lane, size_t *ret_count)
+{
+    *ret_count = scratch->rivals[lane].count;
+    return scratch->rivals[lane].list;
+}
+
+bool weights_is_touched(const struct weights_scratch *scratch, uint32_t tag)
+{
+    return tag < scratch->tag_capacity && scratch->is_touched[tag];
+}
+
+bool weights_speak(const struct weights_scratch *scratch)
+{
+    return scratch->has_spoken;
+}
+
+float weights_tag_score(const struct weights *weights, const struct weights_scratch *scratch,
+                        enum weights_lane lane, uint32_t tag)
+{
+    return WEIGHTS_BASE_SCORE + weights_bias(weights, lane, tag).value +
+           scratch_sum(scratch, lane, tag);
+}
+
+/* --- explaining ---------------------------------------------------------------------------------
+ */
+
+static void explain_chunk(const uint32_t *numbers, size_t count, size_t stride, float x,
+                          const struct weights_scratch *scratch, float *parts, size_t parts_a_tag)
+{
+    for (size_t j = 0; j < count; j++) {
+        const uint32_t *posting = numbers + j * stride;
+        uint32_t slot = scratch->slot[posting[0]];
+        if (slot != 0) {
+            parts[(slot - 1) * parts_a_tag] = (float)cell_weight(posting[1]) * x;
+        }
+    }
+}
+
+static int explain_word(const struct weights *weights, const struct base *base,
+                        const struct weights_feature *feature, struct weights_scratch *scratch,
+                        float *parts, size_t parts_a_tag)
+{
+    size_t stride = postings_stride(weights->postings);
+    struct postings_walk *walk = &scratch->walk;
+    const uint32_t *numbers = NULL;
+    size_t count = 0;
+    int result = 0;
+    postings_walk_begin(weights->postings, base, feature->word, walk);
+    while ((result = postings_walk_next(walk, &numbers, &count)) == 0) {
+        explain_chunk(numbers, count, stride, feature->value * CELL_STEP, scratch, parts,
+                      parts_a_tag);
+    }
+    return result == -ENOENT ? 0 : result;
+}
+
+int weights_explain(const struct weights *weights, const struct base *base,
+                    const struct weights_feature *x, size_t count, const uint32_t *tags,
+                    size_t tag_count, struct weights_scratch *scratch, float *parts)
+{
+    if (scratch_reserve_slots(scratch) < 0) {
+        return -ENOMEM;
+    }
+    for (size_t k = 0; k < tag_count; k++) {
+        scratch->slot[tags[k]] = (uint32_t)k + 1;
+    }
+    memset(parts, 0, tag_count * count * sizeof *parts);
+    int result = 0;
+    for (size_t i = 0; i < count && result == 0; i++) {
+        result = explain_word(weights, base, &x[i], scratch, parts + i, count);
+    }
+    for (size_t k = 0; k < tag_count; k++) {
+        scratch->slot[tags[k]] = 0;
+    }
+    return result;
+}

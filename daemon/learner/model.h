@@ -24,6 +24,7 @@
 #include "daemon/text/features.h"
 #include "daemon/text/siphash.h"
 
+struct base;
 struct model;
 struct model_scratch;
 
@@ -141,21 +142,25 @@ const struct worklist *model_worklist(const struct model *model);
  */
 uint64_t model_stale_below(const struct model *model);
 
-/* The number of an item whose scores are the most stale, or 0. */
-uint64_t model_next_stale(struct model *model);
+/* The number of the next item whose scores are stale. Returns 0, -ENOENT where none is, -ENOMEM or
+ * -EIO. */
+int model_next_stale(struct model *model, const struct base *base, uint64_t *ret_number)
+    __attribute__((warn_unused_result));
 
 /*
  * Scores a filed item again for the worklist. As it changes only its entry, model_rescore scores
- * and may run while others ask, and model_relist puts the entry in, which may not.
+ * and may run while others ask, and model_relist puts the entry in, which may not. Each returns 0,
+ * -ENOMEM or -EIO.
  */
 int model_rescore(const struct model *model, const struct model_item *item,
                   struct model_scratch *scratch, struct worklist_entry *ret_entry)
     __attribute__((warn_unused_result));
-int model_relist(struct model *model, const struct worklist_entry *entry)
+int model_relist(struct model *model, const struct base *base, const struct worklist_entry *entry)
     __attribute__((warn_unused_result));
 
 /* Takes out what can be scored no more. */
-int model_delist(struct model *model, uint64_t number) __attribute__((warn_unused_result));
+int model_delist(struct model *model, const struct base *base, uint64_t number)
+    __attribute__((warn_unused_result));
 
 /* P(missing | not given) of a gap of an entry of the worklist, as of now. */
 double model_gap_chance(const struct model *model, const struct worklist_entry *entry,
@@ -172,10 +177,10 @@ struct model_ranked {
 /*
  * Ranks all items of the worklist by what they promise now, gaps below `floor` left out, and all
  * but `tag` unless that is MODEL_ANY_TAG; items that promise nothing are left out. By falling
- * promise, then by rising number. The caller frees the list. Returns 0 or -ENOMEM.
+ * promise, then by rising number. The caller frees the list. Returns 0, -ENOMEM or -EIO.
  */
-int model_rank_worklist(const struct model *model, uint32_t tag, double floor,
-                        struct model_ranked **ret_ranked, size_t *ret_count)
+int model_rank_worklist(const struct model *model, const struct base *base, uint32_t tag,
+                        double floor, struct model_ranked **ret_ranked, size_t *ret_count)
     __attribute__((warn_unused_result));
 
 /* --- what follows from what people have examined ------------------------------------------------

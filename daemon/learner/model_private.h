@@ -75,6 +75,7 @@ struct model {
 typedef uint64_t chance_sum;
 
 struct model_scratch {
+    const struct base *base; /* through which its owner's thread reads; NULL: nothing is stored */
     struct weights_scratch *weights;
     uint32_t *words; /* by feature: its word, or DICTIONARY_NONE */
     size_t words_capacity;
@@ -228,6 +229,11 @@ void model_refit_curves(struct model *model, bool now);
 void model_refit_propensities(struct model *model);
 
 /* --- model_worklist --- */
+
+/* The worklist's entry of an item, with tags that the model knows. Returns 0, -ENOENT, -ENOMEM or
+ * -EIO. */
+int model_find_entry(const struct model *model, const struct base *base, uint64_t number,
+                     struct worklist_entry *ret_entry) __attribute__((warn_unused_result));
 
 /* Puts what the entry says of the item's own shares into scratch->own, and takes it out again. */
 int model_take_own(const struct model *model, const struct worklist_entry *entry,

@@ -18,6 +18,39 @@ enum {
     STALE_SHARE = 8
 };
 
+/* --- entries of the worklist --------------------------------------------------------------------
+ */
+
+/* What was stored is read only now, and its tags are about to be places in arrays. */
+static bool knows_tags(const struct model *model, const struct worklist_entry *entry)
+{
+    for (uint32_t i = 0; i < entry->gap_count; i++) {
+        if (entry->gaps[i].tag >= model->tag_count) {
+            return false;
+        }
+    }
+    for (uint32_t i = 0; i < entry->pair_count; i++) {
+        if (entry->pairs[i].tag >= model->tag_count) {
+            return false;
+        }
+    }
+    return true;
+}
+
+int model_find_entry(const struct model *model, const struct base *base, uint64_t number,
+                     struct worklist_entry *ret_entry)
+{
+    struct worklist_entry entry;
+    int result = worklist_find(model->worklist, base, number, &entry);
+    if (result == 0 && !knows_tags(model, &entry)) {
+        return -EIO;
+    }
+    if (result == 0) {
+        *ret_entry = entry;
+    }
+    return result;
+}
+
 /* --- own shares ---------------------------------------------------------------------------------
  */
 
@@ -126,7 +159,12 @@ static void keep_pairs(const struct worklist_entry *from, struct worklist_entry 
 int model_rescore(const struct model *model, const struct model_item *item,
                   struct model_scratch *scratch, struct worklist_entry *ret_entry)
 {
-    const struct worklist_entry *entry = worklist_find(model->worklist, item->number);
+    struct worklist_entry listed;
+    int result = model_find_entry(model, scratch->base, item->number, &listed);
+    if (result < 0 && result != -ENOENT) {
+        return result;
+    }
+    const struct worklist_entry *entry = result == 0 ? &listed : NULL;
     if (model_score_words(model, item->features, item->feature_count, true, scratch) < 0 ||
         model_take_own(model, entry, scratch) < 0 || model_mark_item(model, item, scratch) < 0) {
         return -ENOMEM;
@@ -141,14 +179,14 @@ int model_rescore(const struct model *model, const struct model_item *item,
     return 0;
 }
 
-int model_relist(struct model *model, const struct worklist_entry *entry)
+int model_relist(struct model *model, const struct base *base, const struct worklist_entry *entry)
 {
-    return worklist_put(model->worklist, entry);
+    return worklist_put(model->worklist, base, entry);
 }
 
-int model_delist(struct model *model, uint64_t number)
+int model_delist(struct model *model, const struct base *base, uint64_t number)
 {
-    return worklist_remove(model->worklist, number);
+    return worklist_remove(model->worklist, base, number);
 }
 
 /* --- reading ------------------------------------------------------------------------------------
@@ -164,11 +202,14 @@ uint64_t model_stale_below(const struct model *model)
     return model->latest - model->latest / STALE_SHARE;
 }
 
-uint64_t model_next_stale(struct model *model)
+int model_next_stale(struct model *model, const struct base *base, uint64_t *ret_number)
 {
-    const struct worklist_entry *entry =
-        worklist_next_stale(model->worklist, model_stale_below(model));
-    return entry ? entry->number : 0;
+    struct worklist_entry entry;
+    int result = worklist_next_stale(model->worklist, base, model_stale_below(model), &entry);
+    if (result == 0) {
+        *ret_number = entry.number;
+    }
+    return result;
 }
 
 double model_gap_chance(const struct model *model, const struct worklist_entry *entry,
@@ -212,31 +253,63 @@ static double promise_of(const struct model *model, const struct worklist_entry 
     return expected;
 }
 
-int model_rank_worklist(const struct model *model, uint32_t tag, double floor,
-                        struct model_ranked **ret_ranked, size_t *ret_count)
+struct ranking {
+    struct model_ranked *items;
+    size_t count;
+    size_t capacity;
+};
+
+static int rank_item(struct ranking *ranking, uint64_t number, double expected)
 {
-    size_t size = worklist_size(model->worklist);
-    struct model_ranked *ranked = calloc(size + 1, sizeof *ranked);
+    if (expected <= 0.0) {
+        return 0;
+    }
+    if (GROW(&ranking->items, &ranking->capacity, ranking->count + 1) < 0) {
+        return -ENOMEM;
+    }
+    ranking->items[ranking->count++] =
+        (struct model_ranked){.expected = expected, .number = number};
+    return 0;
+}
+
+/* The items that promise something, by number. */
+static int rank_items(const struct model *model, const struct base *base, uint32_t tag,
+                      double floor, const double *propensities, struct ranking *ranking)
+{
+    struct worklist_entry entry = {.number = 0};
+    int result = GROW(&ranking->items, &ranking->capacity, 1); /* there is a list without items */
+    while (result == 0) {
+        result = worklist_after(model->worklist, base, entry.number, &entry);
+        if (result == 0 && !knows_tags(model, &entry)) {
+            result = -EIO;
+        }
+        if (result == 0) {
+            result = rank_item(ranking, entry.number,
+                               promise_of(model, &entry, tag, floor, propensities));
+        }
+    }
+    return result == -ENOENT ? 0 : result;
+}
+
+int model_rank_worklist(const struct model *model, const struct base *base, uint32_t tag,
+                        double floor, struct model_ranked **ret_ranked, size_t *ret_count)
+{
     double *propensities = calloc(model->tag_count + 1, sizeof *propensities);
-    if (!ranked || !propensities) {
-        free(ranked);
-        free(propensities);
+    if (!propensities) {
         return -ENOMEM;
     }
     for (size_t i = 0; i < model->tag_count; i++) {
         propensities[i] = model_propensity(model, (uint32_t)i);
     }
-    size_t count = 0;
-    for (size_t i = 0; i < size; i++) {
-        const struct worklist_entry *entry = worklist_at(model->worklist, i);
-        double expected = promise_of(model, entry, tag, floor, propensities);
-        if (expected > 0.0) {
-            ranked[count++] = (struct model_ranked){.expected = expected, .number = entry->number};
-        }
-    }
+    struct ranking ranking = {0};
+    int result = rank_items(model, base, tag, floor, propensities, &ranking);
     free(propensities);
-    qsort(ranked, count, sizeof *ranked, compare_ranked);
-    *ret_ranked = ranked;
-    *ret_count = count;
+    if (result < 0) {
+        free(ranking.items);
+        return result;
+    }
+    qsort(ranking.items, ranking.count, sizeof *ranking.items, compare_ranked);
+    *ret_ranked = ranking.items;
+    *ret_count = ranking.count;
     return 0;
 }

@@ -1,43 +1,26 @@
 /*
- * The entries lie behind each other in no order; a table of open addressing leads from an item's
- * number to its place. What was taken out leaves its place to the last entry.
+ * A change hides what the base has under its number. Whether there is something beneath a change is
+ * found out once, when the change is made; the totals are kept by what a change replaces.
  */
 #include "daemon/learner/worklist.h"
 
+#include <assert.h>
 #include <errno.h>
 #include <stdlib.h>
-#include <string.h>
 
-#include "daemon/grow.h"
+#include "daemon/base.h"
+#include "daemon/learner/worklist_overlay.h"
+#include "daemon/learner/worklist_totals.h"
 
 struct worklist {
-    struct worklist_entry *entries;
-    uint8_t *is_changed; /* by place */
-    size_t count;
-    size_t capacity;
-    size_t changed_capacity;
-    uint32_t *table; /* 1 + place, or 0; a power of two long, at most half full */
-    size_t table_size;
-    uint64_t *gone;
-    size_t gone_count;
-    size_t gone_capacity;
-    size_t turn; /* the place that is looked at next for stale scores */
-};
-
-enum {
-    FIRST_TABLE = 64
+    struct worklist_overlay overlay;
+    struct worklist_totals totals;
 };
 
 int worklist_new(struct worklist **ret_worklist)
 {
     struct worklist *made = calloc(1, sizeof *made);
     if (!made) {
-        return -ENOMEM;
-    }
-    made->table_size = FIRST_TABLE;
-    made->table = calloc(made->table_size, sizeof *made->table);
-    if (!made->table) {
-        free(made);
         return -ENOMEM;
     }
     *ret_worklist = made;
@@ -49,149 +32,173 @@ void worklist_free(struct worklist *worklist)
     if (!worklist) {
         return;
     }
-    free(worklist->entries);
-    free(worklist->is_changed);
-    free(worklist->table);
-    free(worklist->gone);
+    overlay_clear(&worklist->overlay);
     free(worklist);
 }
 
 size_t worklist_size(const struct worklist *worklist)
 {
-    return worklist->count;
+    return worklist->totals.size;
 }
 
 uint64_t worklist_bytes(const struct worklist *worklist)
 {
-    return sizeof *worklist + worklist->capacity * sizeof *worklist->entries +
-           worklist->changed_capacity + worklist->table_size * sizeof *worklist->table +
-           worklist->gone_capacity * sizeof *worklist->gone;
+    return sizeof *worklist + overlay_bytes(&worklist->overlay);
 }
 
-/* --- the table ----------------------------------------------------------------------------------
+/* --- reading ------------------------------------------------------------------------------------
  */
 
-/* Fibonacci hashing: numbers that follow each other are spread. */
-static size_t slot_of(const struct worklist *worklist, uint64_t number)
+static bool is_sound(const struct worklist_entry *entry)
 {
-    return (size_t)(number * 0x9E3779B97F4A7C15U >> 32U) & (worklist->table_size - 1);
+    return entry->gap_count <= WORKLIST_GAPS && entry->pair_count <= WORKLIST_GAPS;
 }
 
-/* The slot of a number, or the empty one where it would be. */
-static size_t find_slot(const struct worklist *worklist, uint64_t number)
+static int stored_entry(const struct base *base, uint64_t number, struct worklist_entry *ret_entry)
 {
-    size_t slot = slot_of(worklist, number);
-    while (worklist->table[slot] != 0 &&
-           worklist->entries[worklist->table[slot] - 1].number != number) {
-        slot = (slot + 1) & (worklist->table_size - 1);
-    }
-    return slot;
+    int result = base ? base->entry(base->user, number, ret_entry) : -ENOENT;
+    return result == 0 && !(ret_entry->number == number && is_sound(ret_entry)) ? -EIO : result;
 }
 
-static int grow_table(struct worklist *worklist)
+static int stored_after(const struct base *base, uint64_t number, struct worklist_entry *ret_entry)
 {
-    if (2 * (worklist->count + 1) <= worklist->table_size) {
+    int result = base ? base->entry_after(base->user, number, ret_entry) : -ENOENT;
+    return result == 0 && !(ret_entry->number > number && is_sound(ret_entry)) ? -EIO : result;
+}
+
+int worklist_find(const struct worklist *worklist, const struct base *base, uint64_t number,
+                  struct worklist_entry *ret_entry)
+{
+    const struct worklist_change *change = overlay_find(&worklist->overlay, number);
+    if (change) {
+        const struct worklist_entry *entry = overlay_entry(&worklist->overlay, change);
+        if (!entry) {
+            return -ENOENT;
+        }
+        *ret_entry = *entry;
         return 0;
     }
-    uint32_t *grown = calloc(2 * worklist->table_size, sizeof *grown);
-    if (!grown) {
+    struct worklist_entry stored;
+    int result = stored_entry(base, number, &stored);
+    if (result == 0) {
+        *ret_entry = stored;
+    }
+    return result;
+}
+
+/* Changes are looked at up to the next stored entry; those passed over are gone and are not met
+ * again in a walk. */
+int worklist_after(const struct worklist *worklist, const struct base *base, uint64_t number,
+                   struct worklist_entry *ret_entry)
+{
+    const struct worklist_overlay *overlay = &worklist->overlay;
+    struct worklist_entry stored;
+    int result = stored_after(base, number, &stored);
+    const struct worklist_change *change = overlay_after(overlay, number);
+    while (change && (result == -ENOENT || (result == 0 && change->number <= stored.number))) {
+        const struct worklist_entry *entry = overlay_entry(overlay, change);
+        if (entry) {
+            *ret_entry = *entry;
+            return 0;
+        }
+        if (result == 0 && change->number == stored.number) {
+            result = stored_after(base, change->number, &stored);
+        }
+        change = overlay_after(overlay, change->number);
+    }
+    if (result == 0) {
+        *ret_entry = stored;
+    }
+    return result;
+}
+
+size_t worklist_count_stale(const struct worklist *worklist, uint64_t scored)
+{
+    return totals_below(&worklist->totals, scored);
+}
+
+/* --- changing -----------------------------------------------------------------------------------
+ */
+
+/* What a change of that number replaces, as the totals have it; -EIO where they do not. */
+static int find_replaced(const struct worklist *worklist, const struct base *base, uint64_t number,
+                         struct worklist_entry *ret_entry)
+{
+    int result = worklist_find(worklist, base, number, ret_entry);
+    return result == 0 && !totals_may_hold(&worklist->totals, ret_entry->scored) ? -EIO : result;
+}
+
+int worklist_put(struct worklist *worklist, const struct base *base,
+                 const struct worklist_entry *entry)
+{
+    assert(entry->number > 0);
+    struct worklist_entry replaced;
+    int result = find_replaced(worklist, base, entry->number, &replaced);
+    if (result < 0 && result != -ENOENT) {
+        return result;
+    }
+    bool is_there = result == 0;
+    if (overlay_put(&worklist->overlay, entry, is_there) < 0) {
         return -ENOMEM;
     }
-    free(worklist->table);
-    worklist->table = grown;
-    worklist->table_size *= 2;
-    for (size_t i = 0; i < worklist->count; i++) {
-        worklist->table[find_slot(worklist, worklist->entries[i].number)] = (uint32_t)i + 1;
+    if (is_there) {
+        totals_take(&worklist->totals, replaced.scored);
     }
+    totals_add(&worklist->totals, entry->scored);
     return 0;
 }
 
-/* Empties a slot, and moves what had to go on from it back towards its own place. */
-static void empty_slot(struct worklist *worklist, size_t slot)
+int worklist_remove(struct worklist *worklist, const struct base *base, uint64_t number)
 {
-    size_t mask = worklist->table_size - 1;
-    worklist->table[slot] = 0;
-    for (size_t at = (slot + 1) & mask; worklist->table[at] != 0; at = (at + 1) & mask) {
-        uint32_t place = worklist->table[at];
-        worklist->table[at] = 0;
-        worklist->table[find_slot(worklist, worklist->entries[place - 1].number)] = place;
+    struct worklist_entry replaced;
+    int result = find_replaced(worklist, base, number, &replaced);
+    if (result < 0) {
+        return result == -ENOENT ? 0 : result;
     }
-}
-
-/* --- entries ------------------------------------------------------------------------------------
- */
-
-const struct worklist_entry *worklist_find(const struct worklist *worklist, uint64_t number)
-{
-    uint32_t place = worklist->table[find_slot(worklist, number)];
-    return place == 0 ? NULL : &worklist->entries[place - 1];
-}
-
-const struct worklist_entry *worklist_at(const struct worklist *worklist, size_t place)
-{
-    return &worklist->entries[place];
-}
-
-int worklist_put(struct worklist *worklist, const struct worklist_entry *entry)
-{
-    if (GROW(&worklist->entries, &worklist->capacity, worklist->count + 1) < 0 ||
-        GROW(&worklist->is_changed, &worklist->changed_capacity, worklist->count + 1) < 0 ||
-        grow_table(worklist) < 0) {
+    if (overlay_remove(&worklist->overlay, number) < 0) {
         return -ENOMEM;
     }
-    size_t slot = find_slot(worklist, entry->number);
-    if (worklist->table[slot] == 0) {
-        worklist->table[slot] = (uint32_t)++worklist->count;
-    }
-    size_t place = worklist->table[slot] - 1;
-    worklist->entries[place] = *entry;
-    worklist->is_changed[place] = 1;
-    return 0;
-}
-
-int worklist_remove(struct worklist *worklist, uint64_t number)
-{
-    size_t slot = find_slot(worklist, number);
-    if (worklist->table[slot] == 0) {
-        return 0;
-    }
-    if (GROW(&worklist->gone, &worklist->gone_capacity, worklist->gone_count + 1) < 0) {
-        return -ENOMEM;
-    }
-    worklist->gone[worklist->gone_count++] = number;
-    size_t place = worklist->table[slot] - 1;
-    empty_slot(worklist, slot);
-    size_t last = worklist->count - 1;
-    if (place != last) {
-        worklist->table[find_slot(worklist, worklist->entries[last].number)] = (uint32_t)place + 1;
-        worklist->entries[place] = worklist->entries[last];
-        worklist->is_changed[place] = worklist->is_changed[last];
-    }
-    worklist->count = last;
+    totals_take(&worklist->totals, replaced.scored);
     return 0;
 }
 
 /* --- turns --------------------------------------------------------------------------------------
  */
 
-const struct worklist_entry *worklist_next_stale(struct worklist *worklist, uint64_t scored)
+/* The first entry behind `number`, up to `last`, with scores from below the limit. */
+static int find_stale(const struct worklist *worklist, const struct base *base, uint64_t number,
+                      uint64_t last, uint64_t limit, struct worklist_entry *ret_entry)
 {
-    for (size_t looked_at = 0; looked_at < worklist->count; looked_at++) {
-        worklist->turn = worklist->turn + 1 < worklist->count ? worklist->turn + 1 : 0;
-        if (worklist->entries[worklist->turn].scored < scored) {
-            return &worklist->entries[worklist->turn];
+    struct worklist_entry entry = {.number = number};
+    do {
+        int result = worklist_after(worklist, base, entry.number, &entry);
+        if (result < 0) {
+            return result;
         }
-    }
-    return NULL;
+        if (entry.number > last) {
+            return -ENOENT;
+        }
+    } while (entry.scored >= limit);
+    *ret_entry = entry;
+    return 0;
 }
 
-size_t worklist_count_stale(const struct worklist *worklist, uint64_t scored)
+int worklist_next_stale(struct worklist *worklist, const struct base *base, uint64_t scored,
+                        struct worklist_entry *ret_entry)
 {
-    size_t stale = 0;
-    for (size_t i = 0; i < worklist->count; i++) {
-        stale += worklist->entries[i].scored < scored;
+    if (worklist_count_stale(worklist, scored) == 0) {
+        return -ENOENT;
     }
-    return stale;
+    uint64_t limit = totals_limit(&worklist->totals, scored);
+    uint64_t turn = worklist->totals.turn;
+    int result = find_stale(worklist, base, turn, UINT64_MAX, limit, ret_entry);
+    if (result == -ENOENT) {
+        result = find_stale(worklist, base, 0, turn, limit, ret_entry);
+    }
+    if (result == 0) {
+        totals_set_turn(&worklist->totals, ret_entry->number);
+    }
+    return result == -ENOENT ? -EIO : result; /* counted and not there: not the base it was */
 }
 
 /* --- storing ------------------------------------------------------------------------------------
@@ -201,15 +208,20 @@ int worklist_changes(const struct worklist *worklist,
                      int (*put)(void *user, const struct worklist_entry *entry),
                      int (*gone)(void *user, uint64_t number), void *user)
 {
+    const struct worklist_overlay *overlay = &worklist->overlay;
+    const struct worklist_change *change = NULL;
     int result = 0;
-    for (size_t i = 0; i < worklist->gone_count && result == 0; i++) {
-        if (!worklist_find(worklist, worklist->gone[i])) {
-            result = gone(user, worklist->gone[i]);
+    for (change = overlay_after(overlay, 0); change && result == 0;
+         change = overlay_after(overlay, change->number)) {
+        if (!overlay_entry(overlay, change)) {
+            result = gone(user, change->number);
         }
     }
-    for (size_t i = 0; i < worklist->count && result == 0; i++) {
-        if (worklist->is_changed[i]) {
-            result = put(user, &worklist->entries[i]);
+    for (change = overlay_after(overlay, 0); change && result == 0;
+         change = overlay_after(overlay, change->number)) {
+        const struct worklist_entry *entry = overlay_entry(overlay, change);
+        if (entry) {
+            result = put(user, entry);
         }
     }
     return result;
@@ -217,8 +229,33 @@ int worklist_changes(const struct worklist *worklist,
 
 void worklist_clean(struct worklist *worklist)
 {
-    worklist->gone_count = 0;
-    if (worklist->count > 0) {
-        memset(worklist->is_changed, 0, worklist->count);
-    }
+    overlay_clear(&worklist->overlay);
+    totals_clean(&worklist->totals);
+}
+
+size_t worklist_part_count(void)
+{
+    return TOTALS_PARTS;
+}
+
+bool worklist_part_changed(const struct worklist *worklist, size_t part)
+{
+    return part < TOTALS_PARTS && worklist->totals.changed[part];
+}
+
+size_t worklist_part_get(const struct worklist *worklist, size_t part,
+                         double ret_values[WORKLIST_PART_VALUES])
+{
+    return totals_part_get(&worklist->totals, part, ret_values);
+}
+
+int worklist_part_restore(struct worklist *worklist, size_t part, const double *values,
+                          size_t count)
+{
+    return totals_part_restore(&worklist->totals, part, values, count);
+}
+
+int worklist_restored(struct worklist *worklist)
+{
+    return totals_restored(&worklist->totals);
 }

@@ -9,7 +9,14 @@
  * steps of others. What was learned stays as it was, whenever and however often there is time to
  * score again: what people say of the item later is counted by it.
  *
- * Pure numbers; not locked.
+ * Only what has changed since the last worklist_clean lies in memory; the rest is read from the
+ * base (base.h) that each call is given, which is as the last worklist_clean left it, or has the
+ * changes in it already. Counts are kept, not taken. Numbers of items are from 1 on.
+ *
+ * Pure: no clock, no I/O of its own; what it says is a function of the calls, however often what
+ * has changed was stored in between. Not locked: many threads may read, each through a base of its
+ * own, while nobody changes it. What reads returns 0, -ENOENT where there is no such entry, or the
+ * base's -EIO or -ENOMEM; -EIO too where the base holds what cannot be.
  */
 #ifndef UNDERTAG_WORKLIST_H
 #define UNDERTAG_WORKLIST_H
@@ -19,8 +26,11 @@
 #include <stdint.h>
 
 enum {
-    WORKLIST_GAPS = 12
+    WORKLIST_GAPS = 12,
+    WORKLIST_PART_VALUES = 128 /* at most, to a stored part */
 };
+
+struct base;
 
 /* One tag that the item may lack. */
 struct worklist_gap {
@@ -51,39 +61,78 @@ struct worklist;
 int worklist_new(struct worklist **ret_worklist) __attribute__((warn_unused_result));
 void worklist_free(struct worklist *worklist);
 
+/* How many entries there are, stored ones and others. */
 size_t worklist_size(const struct worklist *worklist);
+
+/* Memory of what has changed and of the counts. */
 uint64_t worklist_bytes(const struct worklist *worklist);
 
-/* The entry of an item; NULL where there is none. Valid until the worklist changes. */
-const struct worklist_entry *worklist_find(const struct worklist *worklist, uint64_t number);
+/* --- reading ------------------------------------------------------------------------------------
+ */
 
-/* The entries by place, from 0 to below the size; a change may move them. */
-const struct worklist_entry *worklist_at(const struct worklist *worklist, size_t place);
+/* The entry of an item. */
+int worklist_find(const struct worklist *worklist, const struct base *base, uint64_t number,
+                  struct worklist_entry *ret_entry) __attribute__((warn_unused_result));
 
-/* Puts an entry in, in the place of the one with its number. Returns 0 or -ENOMEM. */
-int worklist_put(struct worklist *worklist, const struct worklist_entry *entry)
-    __attribute__((warn_unused_result));
-
-/* Takes an entry out, if it is there. Returns 0 or -ENOMEM. */
-int worklist_remove(struct worklist *worklist, uint64_t number) __attribute__((warn_unused_result));
+/* The entry with the next greater number; -ENOENT behind the last. From 0 on it leads through all
+ * entries. */
+int worklist_after(const struct worklist *worklist, const struct base *base, uint64_t number,
+                   struct worklist_entry *ret_entry) __attribute__((warn_unused_result));
 
 /*
- * The next entry in turn whose scores are older than `scored`, for scoring it again; NULL when none
- * is. All entries get their turn.
+ * How many entries have scores older than `scored`, without reading any. Where numbers have become
+ * great, `scored` is rounded down a little (by less than a part in 2,048 of the greatest one), so
+ * that what is counted as stale really is.
  */
-const struct worklist_entry *worklist_next_stale(struct worklist *worklist, uint64_t scored);
-
-/* How many entries have scores older than that. */
 size_t worklist_count_stale(const struct worklist *worklist, uint64_t scored);
 
-/* --- for those who store it: what has changed since the last worklist_clean --- */
+/* --- changing: 0, -ENOMEM or -EIO, with nothing changed -----------------------------------------
+ */
 
-/* Calls `put` for each entry that is new or changed and `gone` for the number of each that was
- * taken out; anything but 0 ends it and is returned. */
+/* Puts an entry in, in the place of the one with its number. */
+int worklist_put(struct worklist *worklist, const struct base *base,
+                 const struct worklist_entry *entry) __attribute__((warn_unused_result));
+
+/* Takes an entry out, if it is there. */
+int worklist_remove(struct worklist *worklist, const struct base *base, uint64_t number)
+    __attribute__((warn_unused_result));
+
+/*
+ * The next entry in turn, by number and round again, of those that worklist_count_stale counts, for
+ * scoring it again; -ENOENT, and nothing is read, when it counts none. Others may read at the same
+ * time: it changes only whose turn it is.
+ */
+int worklist_next_stale(struct worklist *worklist, const struct base *base, uint64_t scored,
+                        struct worklist_entry *ret_entry) __attribute__((warn_unused_result));
+
+/* --- for those who store it: what has changed since the last worklist_clean ---------------------
+ */
+
+/* Calls `gone` for the number of each stored entry that was taken out, then `put` for each that is
+ * new or changed, both by rising number; anything but 0 ends it and is returned. */
 int worklist_changes(const struct worklist *worklist,
                      int (*put)(void *user, const struct worklist_entry *entry),
                      int (*gone)(void *user, uint64_t number), void *user)
     __attribute__((warn_unused_result));
+
+/* The counts, in parts that are numbered from 0 to below worklist_part_count, which never changes.
+ * worklist_part_get returns how many values a part has: 1 to WORKLIST_PART_VALUES. */
+size_t worklist_part_count(void);
+bool worklist_part_changed(const struct worklist *worklist, size_t part);
+size_t worklist_part_get(const struct worklist *worklist, size_t part,
+                         double ret_values[WORKLIST_PART_VALUES]);
+
+/* Everything has been stored, in one transaction, and nothing has changed since worklist_changes:
+ * it is read from the base from now on, and its memory is given back. */
 void worklist_clean(struct worklist *worklist);
+
+/*
+ * Puts the counts back, into a new worklist, in any order; a part that was never stored need not
+ * be. Returns 0, or -EINVAL for what cannot be that part. Then worklist_restored: 0, or -EINVAL
+ * where the parts do not belong together.
+ */
+int worklist_part_restore(struct worklist *worklist, size_t part, const double *values,
+                          size_t count) __attribute__((warn_unused_result));
+int worklist_restored(struct worklist *worklist) __attribute__((warn_unused_result));
 
 #endif

@@ -1,39 +1,43 @@
+/*
+ * A word in memory is on one of three lists. It comes as *clean* from the base, or as *changed*
+ * when it is new; a clean word whose count is set becomes changed; a word that is removed becomes
+ * *forgotten*. When all is stored, the changed become clean and the forgotten are let go. Only
+ * clean words may be trimmed, since the base has them as they are.
+ *
+ * The table by term has the latest word of each term, be it forgotten: that is how the dictionary
+ * knows not to look for it in the base. When the term comes again its new word takes that place,
+ * and the forgotten one is on its list only. The table by number has the words that are not
+ * forgotten.
+ *
+ * All that can fail in dictionary_intern comes before the first change.
+ */
 #include "daemon/text/dictionary.h"
 
+#include <assert.h>
 #include <errno.h>
-#include <stdbool.h>
 #include <stdlib.h>
 #include <string.h>
 
-#include "daemon/grow.h"
+#include "daemon/text/dictionary_table.h"
 
-struct entry {
-    char *term; /* NULL: the number is free */
-    uint32_t bytes;
-    uint32_t count;
-    uint64_t hash;
+struct entry_list {
+    struct dictionary_entry *first;
+    struct dictionary_entry *last;
 };
 
-/*
- * An open-addressing table of numbers (1 + word, 0 empty) with linear probing, at most two thirds
- * full; removal moves later members of the run back, so there are no tombstones.
- */
 struct dictionary {
     struct siphash_key key;
-    struct entry *entries;
-    size_t entry_capacity;
-    size_t entries_used; /* numbers given out so far, free ones included */
-    uint32_t *free_words;
-    size_t free_count;
-    size_t free_capacity;
-    uint32_t *table;
-    size_t table_size; /* a power of two */
-    size_t size;
-    uint64_t term_bytes;
+    struct dictionary_totals totals;
+    struct dictionary_table by_term;
+    struct dictionary_table by_number;
+    struct entry_list
+        lists[DICTIONARY_STATES]; /* by state, in the order in which words came to it */
+    uint64_t entry_bytes;
 };
 
+/* What the allocator adds to a block, about. */
 enum {
-    FIRST_TABLE_SIZE = 1024
+    BLOCK_BYTES = 16
 };
 
 int dictionary_new(const struct siphash_key *key, struct dictionary **ret_dictionary)
@@ -43,14 +47,23 @@ int dictionary_new(const struct siphash_key *key, struct dictionary **ret_dictio
         return -ENOMEM;
     }
     made->key = *key;
-    made->table_size = FIRST_TABLE_SIZE;
-    made->table = calloc(made->table_size, sizeof *made->table);
-    if (!made->table) {
-        free(made);
+    if (dictionary_table_init(&made->by_term, DICTIONARY_BY_TERM, &made->key) < 0 ||
+        dictionary_table_init(&made->by_number, DICTIONARY_BY_NUMBER, &made->key) < 0) {
+        dictionary_free(made);
         return -ENOMEM;
     }
     *ret_dictionary = made;
     return 0;
+}
+
+static void free_list(struct entry_list *list)
+{
+    for (struct dictionary_entry *entry = list->first; entry;) {
+        struct dictionary_entry *after = entry->after;
+        free(entry);
+        entry = after;
+    }
+    *list = (struct entry_list){0};
 }
 
 void dictionary_free(struct dictionary *dictionary)
@@ -58,205 +71,294 @@ void dictionary_free(struct dictionary *dictionary)
     if (!dictionary) {
         return;
     }
-    for (size_t i = 0; i < dictionary->entries_used; i++) {
-        free(dictionary->entries[i].term);
+    for (size_t i = 0; i < DICTIONARY_STATES; i++) {
+        free_list(&dictionary->lists[i]);
     }
-    free(dictionary->entries);
-    free(dictionary->free_words);
-    free(dictionary->table);
+    dictionary_table_deinit(&dictionary->by_term);
+    dictionary_table_deinit(&dictionary->by_number);
     free(dictionary);
 }
 
-/* The slot that holds the term, or the empty one where it would go. */
-static size_t find_slot(const struct dictionary *dictionary, uint64_t hash, const char *term,
-                        size_t bytes)
+void dictionary_totals(const struct dictionary *dictionary, struct dictionary_totals *ret_totals)
 {
-    size_t mask = dictionary->table_size - 1;
-    size_t slot = (size_t)hash & mask;
-    while (dictionary->table[slot] != 0) {
-        const struct entry *entry = &dictionary->entries[dictionary->table[slot] - 1];
-        if (entry->hash == hash && entry->bytes == bytes && memcmp(entry->term, term, bytes) == 0) {
-            break;
-        }
-        slot = (slot + 1) & mask;
-    }
-    return slot;
+    *ret_totals = dictionary->totals;
 }
 
-uint32_t dictionary_find(const struct dictionary *dictionary, const char *term, size_t bytes)
+int dictionary_restore_totals(struct dictionary *dictionary, const struct dictionary_totals *totals)
 {
-    uint64_t hash = siphash(&dictionary->key, term, bytes);
-    return dictionary->table[find_slot(dictionary, hash, term, bytes)] - 1; /* 0 - 1 is NONE */
-}
-
-static int enlarge_table(struct dictionary *dictionary)
-{
-    size_t size = dictionary->table_size * 2;
-    uint32_t *table = calloc(size, sizeof *table);
-    if (!table) {
-        return -ENOMEM;
-    }
-    for (size_t i = 0; i < dictionary->table_size; i++) {
-        if (dictionary->table[i] == 0) {
-            continue;
-        }
-        size_t slot = (size_t)dictionary->entries[dictionary->table[i] - 1].hash & (size - 1);
-        while (table[slot] != 0) {
-            slot = (slot + 1) & (size - 1);
-        }
-        table[slot] = dictionary->table[i];
-    }
-    free(dictionary->table);
-    dictionary->table = table;
-    dictionary->table_size = size;
-    return 0;
-}
-
-/* Puts a term that is not there under a number that is free, and into the table. */
-static int place(struct dictionary *dictionary, const char *term, size_t bytes, uint64_t hash,
-                 uint32_t word)
-{
-    if ((dictionary->size + 1) * 3 > dictionary->table_size * 2 && enlarge_table(dictionary) < 0) {
-        return -ENOMEM;
-    }
-    if (GROW(&dictionary->entries, &dictionary->entry_capacity, (size_t)word + 1) < 0) {
-        return -ENOMEM;
-    }
-    char *copy = malloc(bytes ? bytes : 1);
-    if (!copy) {
-        return -ENOMEM;
-    }
-    memcpy(copy, term, bytes);
-    dictionary->entries[word] =
-        (struct entry){.term = copy, .bytes = (uint32_t)bytes, .count = 0, .hash = hash};
-    dictionary->table[find_slot(dictionary, hash, term, bytes)] = word + 1;
-    dictionary->size++;
-    dictionary->term_bytes += bytes;
-    return 0;
-}
-
-int dictionary_intern(struct dictionary *dictionary, const char *term, size_t bytes,
-                      uint32_t *ret_word)
-{
-    uint64_t hash = siphash(&dictionary->key, term, bytes);
-    uint32_t found = dictionary->table[find_slot(dictionary, hash, term, bytes)];
-    if (found != 0) {
-        *ret_word = found - 1;
-        return 0;
-    }
-    bool reuse = dictionary->free_count > 0;
-    if (!reuse && dictionary->entries_used >= DICTIONARY_NONE - 1) {
-        return -ENOMEM;
-    }
-    uint32_t word = reuse ? dictionary->free_words[dictionary->free_count - 1]
-                          : (uint32_t)dictionary->entries_used;
-    if (place(dictionary, term, bytes, hash, word) < 0) {
-        return -ENOMEM;
-    }
-    if (reuse) {
-        dictionary->free_count--;
-    } else {
-        dictionary->entries_used++;
-    }
-    *ret_word = word;
-    return 0;
-}
-
-int dictionary_restore(struct dictionary *dictionary, const char *term, size_t bytes, uint32_t word,
-                       uint32_t count)
-{
-    bool taken = word < dictionary->entries_used && dictionary->entries[word].term;
-    if (word == DICTIONARY_NONE || taken ||
-        dictionary_find(dictionary, term, bytes) != DICTIONARY_NONE) {
+    if (totals->size > totals->next_number) {
         return -EINVAL;
     }
-    if (place(dictionary, term, bytes, siphash(&dictionary->key, term, bytes), word) < 0) {
-        return -ENOMEM;
-    }
-    dictionary->entries[word].count = count;
-    if (word >= dictionary->entries_used) {
-        dictionary->entries_used = (size_t)word + 1;
-    }
+    dictionary->totals = *totals;
     return 0;
 }
 
-static int add_free(struct dictionary *dictionary, uint32_t word)
+/* --- lists and blocks ---------------------------------------------------------------------------
+ */
+
+static void append(struct dictionary *dictionary, struct dictionary_entry *entry,
+                   enum dictionary_state state)
 {
-    if (GROW(&dictionary->free_words, &dictionary->free_capacity, dictionary->free_count + 1) < 0) {
-        return -ENOMEM;
+    struct entry_list *list = &dictionary->lists[state];
+    entry->state = (unsigned char)state;
+    entry->before = list->last;
+    entry->after = NULL;
+    *(list->last ? &list->last->after : &list->first) = entry;
+    list->last = entry;
+}
+
+static void unlink_entry(struct dictionary *dictionary, struct dictionary_entry *entry)
+{
+    struct entry_list *list = &dictionary->lists[entry->state];
+    *(entry->before ? &entry->before->after : &list->first) = entry->after;
+    *(entry->after ? &entry->after->before : &list->last) = entry->before;
+}
+
+static void move(struct dictionary *dictionary, struct dictionary_entry *entry,
+                 enum dictionary_state state)
+{
+    unlink_entry(dictionary, entry);
+    append(dictionary, entry, state);
+}
+
+static uint64_t block_bytes(size_t term_bytes)
+{
+    return sizeof(struct dictionary_entry) + term_bytes + BLOCK_BYTES;
+}
+
+/* Lets a word go from memory. */
+static void drop(struct dictionary *dictionary, struct dictionary_entry *entry)
+{
+    unlink_entry(dictionary, entry);
+    dictionary_table_take_out(&dictionary->by_term, entry);
+    dictionary_table_take_out(&dictionary->by_number, entry);
+    dictionary->entry_bytes -= block_bytes(entry->bytes);
+    free(entry);
+}
+
+/* --- looking up ---------------------------------------------------------------------------------
+ */
+
+static int read_base(const struct dictionary *dictionary, const struct base *base, const char *term,
+                     size_t bytes, struct base_word *ret_found)
+{
+    struct base_word found = {0};
+    if (!base) {
+        return -ENOENT;
     }
-    dictionary->free_words[dictionary->free_count++] = word;
+    int result = base->word(base->user, term, bytes, &found);
+    if (result < 0) {
+        return result;
+    }
+    /* A number that was never given out, or that another term has. */
+    if (found.number >= dictionary->totals.next_number ||
+        dictionary_table_find_number(&dictionary->by_number, found.number)) {
+        return -EIO;
+    }
+    *ret_found = found;
     return 0;
 }
 
-int dictionary_restored(struct dictionary *dictionary)
+int dictionary_find(const struct dictionary *dictionary, const struct base *base, const char *term,
+                    size_t bytes, struct base_word *ret_found)
 {
-    for (size_t i = dictionary->entries_used; i > 0; i--) {
-        if (!dictionary->entries[i - 1].term && add_free(dictionary, (uint32_t)(i - 1)) < 0) {
-            return -ENOMEM;
-        }
+    uint32_t hash = dictionary_table_hash(&dictionary->key, term, bytes);
+    const struct dictionary_entry *entry =
+        dictionary_table_find_term(&dictionary->by_term, hash, term, bytes);
+    if (!entry) {
+        return read_base(dictionary, base, term, bytes, ret_found);
     }
+    if (entry->state == DICTIONARY_FORGOTTEN) {
+        return -ENOENT;
+    }
+    *ret_found = (struct base_word){.number = entry->number, .count = entry->count};
     return 0;
 }
 
-/* Empties a slot and closes the gap: a later member of the run moves back when it may lie there. */
-static void empty_slot(struct dictionary *dictionary, size_t slot)
+static struct dictionary_entry *entry_of(const struct dictionary *dictionary, uint32_t word)
 {
-    size_t mask = dictionary->table_size - 1;
-    size_t next = slot;
-    for (;;) {
-        next = (next + 1) & mask;
-        uint32_t member = dictionary->table[next];
-        if (member == 0) {
-            break;
-        }
-        size_t home = (size_t)dictionary->entries[member - 1].hash & mask;
-        if (((next - home) & mask) >= ((next - slot) & mask)) {
-            dictionary->table[slot] = member;
-            slot = next;
-        }
-    }
-    dictionary->table[slot] = 0;
-}
-
-int dictionary_remove(struct dictionary *dictionary, uint32_t word)
-{
-    struct entry *entry = &dictionary->entries[word];
-    if (add_free(dictionary, word) < 0) {
-        return -ENOMEM;
-    }
-    empty_slot(dictionary, find_slot(dictionary, entry->hash, entry->term, entry->bytes));
-    dictionary->size--;
-    dictionary->term_bytes -= entry->bytes;
-    free(entry->term);
-    *entry = (struct entry){0};
-    return 0;
+    struct dictionary_entry *entry = dictionary_table_find_number(&dictionary->by_number, word);
+    assert(entry); /* the caller interned it */
+    return entry;
 }
 
 uint32_t dictionary_count(const struct dictionary *dictionary, uint32_t word)
 {
-    return dictionary->entries[word].count;
-}
-
-void dictionary_set_count(struct dictionary *dictionary, uint32_t word, uint32_t count)
-{
-    dictionary->entries[word].count = count;
+    return entry_of(dictionary, word)->count;
 }
 
 const char *dictionary_term(const struct dictionary *dictionary, uint32_t word, size_t *ret_bytes)
 {
-    *ret_bytes = dictionary->entries[word].bytes;
-    return dictionary->entries[word].term;
+    const struct dictionary_entry *entry = entry_of(dictionary, word);
+    *ret_bytes = entry->bytes;
+    return entry->term;
+}
+
+/* --- coming and going ---------------------------------------------------------------------------
+ */
+
+/* An entry on no list and in no table, for which there is room in both. NULL: no memory. */
+static struct dictionary_entry *make_entry(struct dictionary *dictionary, const char *term,
+                                           size_t bytes)
+{
+    if (bytes > SIZE_MAX - sizeof(struct dictionary_entry) ||
+        dictionary_table_reserve(&dictionary->by_term) < 0 ||
+        dictionary_table_reserve(&dictionary->by_number) < 0) {
+        return NULL;
+    }
+    struct dictionary_entry *entry = malloc(sizeof *entry + bytes);
+    if (!entry) {
+        return NULL;
+    }
+    *entry = (struct dictionary_entry){
+        .bytes = bytes, .hash = dictionary_table_hash(&dictionary->key, term, bytes)};
+    memcpy(entry->term, term, bytes);
+    return entry;
+}
+
+/* Takes a word of a term into memory that has none, or a forgotten one, there. */
+static int place(struct dictionary *dictionary, const char *term, size_t bytes,
+                 const struct base_word *word, enum dictionary_state state)
+{
+    struct dictionary_entry *entry = make_entry(dictionary, term, bytes);
+    if (!entry) {
+        return -ENOMEM;
+    }
+    entry->number = word->number;
+    entry->count = word->count;
+    const struct dictionary_entry *forgotten =
+        dictionary_table_find_term(&dictionary->by_term, entry->hash, term, bytes);
+    if (forgotten) {
+        dictionary_table_take_out(&dictionary->by_term, forgotten);
+    }
+    dictionary_table_add(&dictionary->by_term, entry);
+    dictionary_table_add(&dictionary->by_number, entry);
+    append(dictionary, entry, state);
+    dictionary->entry_bytes += block_bytes(bytes);
+    return 0;
+}
+
+static int add_new(struct dictionary *dictionary, const char *term, size_t bytes,
+                   uint32_t *ret_word)
+{
+    const struct base_word word = {.number = dictionary->totals.next_number, .count = 0};
+    if (word.number == DICTIONARY_NONE ||
+        place(dictionary, term, bytes, &word, DICTIONARY_CHANGED) < 0) {
+        return -ENOMEM;
+    }
+    dictionary->totals.next_number++;
+    dictionary->totals.size++;
+    *ret_word = word.number;
+    return 0;
+}
+
+/* Looks for a term that is not in memory in the base. */
+static int admit(struct dictionary *dictionary, const struct base *base, const char *term,
+                 size_t bytes, uint32_t *ret_word)
+{
+    struct base_word found = {0};
+    int result = read_base(dictionary, base, term, bytes, &found);
+    if (result == 0) {
+        result = place(dictionary, term, bytes, &found, DICTIONARY_CLEAN);
+    }
+    if (result == 0) {
+        *ret_word = found.number;
+    }
+    return result;
+}
+
+int dictionary_intern(struct dictionary *dictionary, const struct base *base, const char *term,
+                      size_t bytes, uint32_t *ret_word)
+{
+    uint32_t hash = dictionary_table_hash(&dictionary->key, term, bytes);
+    struct dictionary_entry *entry =
+        dictionary_table_find_term(&dictionary->by_term, hash, term, bytes);
+    if (entry && entry->state != DICTIONARY_FORGOTTEN) {
+        entry->is_recent = true;
+        *ret_word = entry->number;
+        return 0;
+    }
+    int result = entry ? -ENOENT : admit(dictionary, base, term, bytes, ret_word);
+    return result == -ENOENT ? add_new(dictionary, term, bytes, ret_word) : result;
+}
+
+void dictionary_set_count(struct dictionary *dictionary, uint32_t word, uint32_t count)
+{
+    struct dictionary_entry *entry = entry_of(dictionary, word);
+    entry->count = count;
+    if (entry->state != DICTIONARY_CHANGED) {
+        move(dictionary, entry, DICTIONARY_CHANGED);
+    }
+}
+
+void dictionary_remove(struct dictionary *dictionary, uint32_t word)
+{
+    struct dictionary_entry *entry = entry_of(dictionary, word);
+    dictionary_table_take_out(&dictionary->by_number, entry);
+    move(dictionary, entry, DICTIONARY_FORGOTTEN);
+    entry->count = 0;
+    dictionary->totals.size--;
+}
+
+/* --- storing and trimming -----------------------------------------------------------------------
+ */
+
+static int tell(const struct entry_list *list,
+                int (*told)(void *user, const struct dictionary_word *word), void *user)
+{
+    int result = 0;
+    for (const struct dictionary_entry *entry = list->first; entry && result == 0;
+         entry = entry->after) {
+        const struct dictionary_word word = {.term = entry->term,
+                                             .term_bytes = entry->bytes,
+                                             .number = entry->number,
+                                             .count = entry->count};
+        result = told(user, &word);
+    }
+    return result;
+}
+
+int dictionary_changes(const struct dictionary *dictionary,
+                       int (*put)(void *user, const struct dictionary_word *word),
+                       int (*gone)(void *user, const struct dictionary_word *word), void *user)
+{
+    int result = tell(&dictionary->lists[DICTIONARY_FORGOTTEN], gone, user);
+    return result != 0 ? result : tell(&dictionary->lists[DICTIONARY_CHANGED], put, user);
+}
+
+void dictionary_clean(struct dictionary *dictionary)
+{
+    while (dictionary->lists[DICTIONARY_FORGOTTEN].first) {
+        drop(dictionary, dictionary->lists[DICTIONARY_FORGOTTEN].first);
+    }
+    while (dictionary->lists[DICTIONARY_CHANGED].first) {
+        move(dictionary, dictionary->lists[DICTIONARY_CHANGED].first, DICTIONARY_CLEAN);
+    }
+}
+
+/* The clean words are a queue: the one in front goes, unless it was interned again since it came to
+ * the queue or since it was in front last; then it has a second chance at the end. */
+void dictionary_trim(struct dictionary *dictionary, uint64_t bytes)
+{
+    struct dictionary_entry *front = dictionary->lists[DICTIONARY_CLEAN].first;
+    while (front && dictionary_bytes(dictionary) > bytes) {
+        if (front->is_recent) {
+            front->is_recent = false;
+            move(dictionary, front, DICTIONARY_CLEAN);
+        } else {
+            drop(dictionary, front);
+        }
+        front = dictionary->lists[DICTIONARY_CLEAN].first;
+    }
 }
 
 size_t dictionary_size(const struct dictionary *dictionary)
 {
-    return dictionary->size;
+    return dictionary->totals.size;
 }
 
 uint64_t dictionary_bytes(const struct dictionary *dictionary)
 {
-    return sizeof *dictionary + dictionary->entry_capacity * sizeof *dictionary->entries +
-           dictionary->table_size * sizeof *dictionary->table +
-           dictionary->free_capacity * sizeof *dictionary->free_words + dictionary->term_bytes;
+    return sizeof *dictionary + dictionary_table_bytes(&dictionary->by_term) +
+           dictionary_table_bytes(&dictionary->by_number) + dictionary->entry_bytes;
 }

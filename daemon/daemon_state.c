@@ -108,7 +108,7 @@ static json_t *state_json(const struct state_job *job, struct store_totals total
     struct backlog_numbers progress = engine_count(engine).progress;
     const json_t *of_loop = job->of_loop;
     return json_pack(
-        "{s:s, s:i, s:O, s:I, s:I, s:I, s:I, s:I, s:I, s:I, s:{s:I, s:I, s:I, s:I, s:I, s:I}, "
+        "{s:s, s:i, s:O, s:I, s:I, s:I, s:I, s:I, s:I, s:I, s:{s:I, s:I, s:I, s:I, s:I, s:I, s:I}, "
         "s:{s:I, s:I}, "
         "s:O, s:O, s:O, s:O, s:{s:i}, s:{s:I, s:I}, s:n, s:o}",
         "version", UNDERTAG_VERSION, "format", (int)STORE_FORMAT, "uptime_s",
@@ -119,8 +119,8 @@ static json_t *state_json(const struct state_job *job, struct store_totals total
         (json_int_t)(progress.committed - progress.learned), "memory", "resident", resident_bytes(),
         "dictionary", (json_int_t)size.model.dictionary_bytes, "weights",
         (json_int_t)size.model.weights_bytes, "counts", (json_int_t)size.model.counts_bytes,
-        "shadow", (json_int_t)size.model.shadow_bytes, "worklist",
-        (json_int_t)size.model.worklist_bytes, "disk", "store", (json_int_t)size.store_bytes,
+        "worklist", (json_int_t)size.model.worklist_bytes, "asking", (json_int_t)size.asking_bytes,
+        "budget", (json_int_t)size.budget_bytes, "disk", "store", (json_int_t)size.store_bytes,
         "model", (json_int_t)size.model_bytes, "connections",
         json_object_get(of_loop, "connections"), "rates", json_object_get(of_loop, "rates"),
         "limits", json_object_get(of_loop, "limits"), "settings",

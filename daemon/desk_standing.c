@@ -19,8 +19,10 @@ struct standing_job {
     struct reliability_row reliability[RELIABILITY_CLASSES];
 };
 
-static void read_standing(void *user, const struct model *model, uint64_t learned)
+static void read_standing(void *user, const struct model *model, const struct base *base,
+                          uint64_t learned)
 {
+    (void)base;
     struct standing_job *job = user;
     const struct standing *standing = model_standing(model);
     job->learned = learned;

@@ -65,7 +65,7 @@ static size_t find_start(struct worklist_job *job, const struct model_ranked *ra
 }
 
 /* Copies the page out with today's chances, so that it is of one moment. */
-static int copy_page(struct worklist_job *job, const struct model *model,
+static int copy_page(struct worklist_job *job, const struct model *model, const struct base *base,
                      const struct model_ranked *ranked, size_t count)
 {
     size_t left = count - find_start(job, ranked, count);
@@ -78,7 +78,10 @@ static int copy_page(struct worklist_job *job, const struct model *model,
     }
     for (size_t i = 0; i < job->page_count; i++) {
         struct listed *listed = &job->page[i];
-        listed->entry = *worklist_find(model_worklist(model), first[i].number);
+        int result = worklist_find(model_worklist(model), base, first[i].number, &listed->entry);
+        if (result < 0) {
+            return result == -ENOENT ? -EIO : result; /* it has just been ranked */
+        }
         for (uint32_t g = 0; g < listed->entry.gap_count; g++) {
             listed->chances[g] = model_gap_chance(model, &listed->entry, &listed->entry.gaps[g]);
         }
@@ -86,16 +89,16 @@ static int copy_page(struct worklist_job *job, const struct model *model,
     return 0;
 }
 
-static void rank(void *user, const struct model *model, uint64_t learned)
+static void rank(void *user, const struct model *model, const struct base *base, uint64_t learned)
 {
     struct worklist_job *job = user;
     struct model_ranked *ranked = NULL;
     size_t count = 0;
     job->learned = learned;
     job->kept = worklist_size(model_worklist(model));
-    job->code = model_rank_worklist(model, job->tag_number, job->floor, &ranked, &count);
+    job->code = model_rank_worklist(model, base, job->tag_number, job->floor, &ranked, &count);
     if (job->code == 0) {
-        job->code = copy_page(job, model, ranked, count);
+        job->code = copy_page(job, model, base, ranked, count);
     }
     free(ranked);
 }
@@ -266,6 +269,9 @@ static void run(struct read_job *base)
     }
     store_end(view); /* ranking may take a while, and what it finds may be newer than this view */
     if (code < 0 || engine_read_model(engine, rank, job) < 0 || job->code < 0) {
+        if (job->code == -EIO) {
+            (void)read_job_fail_model(base);
+        }
         return;
     }
     if (!job->is_after_listed) {

@@ -18,6 +18,7 @@
 #include "daemon/clock.h"
 #include "daemon/home.h"
 #include "daemon/log.h"
+#include "daemon/model_base.h"
 #include "daemon/shared_model.h"
 #include "daemon/trainer.h"
 
@@ -187,7 +188,7 @@ static int open_model(struct engine *engine, char *error)
         load_model(engine, seq, &model, &learned, &reason) != STORE_OK) {
         return fail_store(error, &reason);
     }
-    int code = shared_model_init_take(&engine->shared, model, learned);
+    int code = shared_model_init_take(&engine->shared, model, engine->model_store, learned);
     if (code < 0) {
         return fail_errno(error, "the model cannot be shared", code);
     }
@@ -225,6 +226,8 @@ static int start_threads(struct engine *engine, const struct engine_settings *se
                                              .origin = origin_of(engine, 0),
                                              .flush_every_ms = engine->options.flush_every_ms,
                                              .flush_changes = engine->options.flush_changes,
+                                             .memory_bytes = engine->options.memory_budget_bytes,
+                                             .workspaces = &engine->workspaces,
                                              .user = engine,
                                              .kept = on_kept};
     int code = writer_new(&writer, &engine->writer);
@@ -350,25 +353,34 @@ int engine_ask(struct engine *engine, const struct model_question *question,
 {
     backlog_wait_for_promise(engine->backlog, clock_steady_ms());
     shared_model_read(&engine->shared);
+    struct model_base base;
+    model_base_enter(&base, engine->shared.store);
+    model_scratch_read(workspace->scratch, &base.base);
     int code = engine->shared.broken
                    ? -ENOMEM
                    : model_ask(engine->shared.model, question, workspace->scratch, ret_answer);
     *ret_learned = engine->shared.learned;
+    model_scratch_read(workspace->scratch, NULL);
+    model_base_leave(&base);
     shared_model_unlock(&engine->shared);
     atomic_fetch_add_explicit(&engine->questions, 1, memory_order_relaxed);
     return code;
 }
 
 int engine_read_model(struct engine *engine,
-                      void (*read)(void *user, const struct model *model, uint64_t learned),
+                      void (*read)(void *user, const struct model *model, const struct base *base,
+                                   uint64_t learned),
                       void *user)
 {
     backlog_wait_for_promise(engine->backlog, clock_steady_ms());
     shared_model_read(&engine->shared);
     int code = engine->shared.broken ? -ENOMEM : 0;
+    struct model_base base;
+    model_base_enter(&base, engine->shared.store);
     if (code == 0) {
-        read(user, engine->shared.model, engine->shared.learned);
+        read(user, engine->shared.model, &base.base, engine->shared.learned);
     }
+    model_base_leave(&base);
     shared_model_unlock(&engine->shared);
     return code;
 }
@@ -386,5 +398,7 @@ void engine_measure(struct engine *engine, struct engine_size *ret_size)
     model_measure(engine->shared.model, &ret_size->model);
     shared_model_unlock(&engine->shared);
     ret_size->store_bytes = store_file_bytes(engine->store);
+    ret_size->asking_bytes = workspaces_bytes(&engine->workspaces);
+    ret_size->budget_bytes = engine->options.memory_budget_bytes;
     ret_size->model_bytes = model_store_file_bytes(engine->model_store);
 }

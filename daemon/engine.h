@@ -49,8 +49,8 @@ struct workspaces *engine_workspaces(struct engine *engine);
 
 /*
  * Asks the model, which has learned what it must have (see backlog.h) and says up to where. The
- * answer lies in the workspace's scratch. Returns 0, or -ENOMEM where memory ran out, now or when
- * the model learned last.
+ * answer lies in the workspace's scratch. Returns 0; -ENOMEM where memory ran out, now or when the
+ * model learned last; -EIO where what is stored of the model cannot be read.
  */
 int engine_ask(struct engine *engine, const struct model_question *question,
                struct workspace *workspace, struct model_answer *ret_answer, uint64_t *ret_learned)
@@ -61,7 +61,8 @@ int engine_ask(struct engine *engine, const struct model_question *question,
  * Returns 0, or -ENOMEM where memory ran out when the model learned last.
  */
 int engine_read_model(struct engine *engine,
-                      void (*read)(void *user, const struct model *model, uint64_t learned),
+                      void (*read)(void *user, const struct model *model, const struct base *base,
+                                   uint64_t learned),
                       void *user) __attribute__((warn_unused_result));
 
 struct engine_counts {
@@ -75,7 +76,9 @@ struct engine_counts engine_count(struct engine *engine);
 struct engine_size {
     struct model_size model;
     uint64_t store_bytes;
-    uint64_t model_bytes; /* in its file */
+    uint64_t model_bytes;  /* in its file */
+    uint64_t asking_bytes; /* held for those who ask */
+    uint64_t budget_bytes; /* for memory */
 };
 
 /* Waits for the model's lock. */

@@ -224,8 +224,9 @@ static void run(struct read_job *base)
     if (prepare(job, &question) < 0) {
         return;
     }
-    if (engine_ask(engine, &question, job->workspace, &answer, &learned) < 0) {
-        (void)no_memory(&base->fault);
+    int code = engine_ask(engine, &question, job->workspace, &answer, &learned);
+    if (code < 0) {
+        (void)(code == -EIO ? read_job_fail_model(base) : no_memory(&base->fault));
         return;
     }
     json_t *gaps = json_array();

@@ -40,26 +40,6 @@ int model_keeper_look(struct model_store *store, const struct model_origin *orig
 /* --- from the store into the model --------------------------------------------------------------
  */
 
-static int load_word(void *user, const struct model_store_word *word)
-{
-    return model_restore_word(user, &(const struct model_word){.term = word->term,
-                                                               .term_bytes = word->term_bytes,
-                                                               .number = word->number,
-                                                               .count = word->count});
-}
-
-static int load_chunk(void *user, const struct model_store_chunk *chunk)
-{
-    const struct weights_chunk restored = {.word = chunk->word,
-                                           .number = chunk->number,
-                                           .count = chunk->count,
-                                           .tags = chunk->tags,
-                                           .values = chunk->values,
-                                           .accumulators = chunk->accumulators};
-    return chunk->is_shadow ? model_restore_shadow_chunk(user, &restored)
-                            : model_restore_chunk(user, &restored);
-}
-
 static int load_tag(void *user, const struct model_store_tag *tag)
 {
     return model_restore_tag(
@@ -85,29 +65,6 @@ static int load_figures(void *user, const struct model_store_figures *figures)
                                             .values = figures->values});
 }
 
-static int load_entry(void *user, const struct model_store_entry *entry)
-{
-    struct worklist_entry restored = {.number = entry->number,
-                                      .scored = entry->scored,
-                                      .counted = entry->counted,
-                                      .promise = entry->promise,
-                                      .gap_count = entry->gaps.count,
-                                      .pair_count = entry->pairs.count};
-    if (restored.gap_count > WORKLIST_GAPS || restored.pair_count > WORKLIST_GAPS) {
-        return -EINVAL;
-    }
-    for (uint32_t i = 0; i < restored.gap_count; i++) {
-        restored.gaps[i] =
-            (struct worklist_gap){.tag = entry->gaps.tags[i], .score = entry->gaps.values[i]};
-    }
-    for (uint32_t i = 0; i < restored.pair_count; i++) {
-        const float *values = entry->pairs.values + (size_t)i * MODEL_STORE_PAIR_VALUES;
-        restored.pairs[i] = (struct worklist_pair){
-            .tag = entry->pairs.tags[i], .counted = values[0], .own = values[1]};
-    }
-    return model_restore_entry(user, &restored);
-}
-
 static int fail_to_load(struct store_error *error, int code)
 {
     if (code == -ENOMEM) {
@@ -116,14 +73,24 @@ static int fail_to_load(struct store_error *error, int code)
     return store_fail(error, STORE_CORRUPT, "the stored model does not fit together");
 }
 
+static struct model_totals totals_of(const struct model_store_head *head)
+{
+    return (struct model_totals){
+        .documents = head->documents,
+        .factor_count = head->factor_count,
+        .factor_sum = head->factor_sum,
+        .latest = head->latest,
+        .evidence_items = head->evidence_items,
+        .curves_items = head->curves_items,
+        .fit_halves = head->fit_halves,
+        .evidence_gain = head->evidence_gain,
+        .words = {.next_number = (uint32_t)head->next_word, .size = (uint32_t)head->words},
+        .postings = head->postings};
+}
+
 int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
 {
-    const struct model_store_sink sink = {.user = model,
-                                          .word = load_word,
-                                          .chunk = load_chunk,
-                                          .tag = load_tag,
-                                          .figures = load_figures,
-                                          .entry = load_entry};
+    const struct model_store_sink sink = {.user = model, .tag = load_tag, .figures = load_figures};
     struct model_store_head head;
     int code = model_store_read_head(store, &head, error);
     if (code == STORE_OK) {
@@ -132,15 +99,10 @@ int model_keeper_load(struct model_store *store, struct model *model, struct sto
     if (code != STORE_OK) {
         return error->code != STORE_OK ? (int)error->code : fail_to_load(error, code);
     }
-    code = model_restore_totals(model,
-                                &(const struct model_totals){.documents = head.documents,
-                                                             .factor_count = head.factor_count,
-                                                             .factor_sum = head.factor_sum,
-                                                             .latest = head.latest,
-                                                             .evidence_items = head.evidence_items,
-                                                             .curves_items = head.curves_items,
-                                                             .fit_halves = head.fit_halves,
-                                                             .evidence_gain = head.evidence_gain});
+    const struct model_totals totals = totals_of(&head);
+    code = head.words > UINT32_MAX || head.next_word > UINT32_MAX
+               ? -EINVAL
+               : model_restore_totals(model, &totals);
     if (code == 0) {
         code = model_restored(model);
     }
@@ -158,7 +120,7 @@ struct storing {
     struct store_error *error;
 };
 
-static int store_forgotten(void *user, const struct model_word *word)
+static int store_forgotten(void *user, const struct dictionary_word *word)
 {
     struct storing *storing = user;
     storing->forgot = true;
@@ -169,7 +131,7 @@ static int store_forgotten(void *user, const struct model_word *word)
                                    storing->error);
 }
 
-static int store_word(void *user, const struct model_word *word)
+static int store_word(void *user, const struct dictionary_word *word)
 {
     struct storing *storing = user;
     return model_store_put_word(storing->writing,
@@ -180,29 +142,15 @@ static int store_word(void *user, const struct model_word *word)
                                 storing->error);
 }
 
-static int put_chunk(const struct storing *storing, const struct weights_chunk *chunk,
-                     bool is_shadow)
-{
-    return model_store_put_chunk(
-        storing->writing,
-        &(const struct model_store_chunk){.is_shadow = is_shadow,
-                                          .word = chunk->word,
-                                          .number = chunk->number,
-                                          .count = chunk->count,
-                                          .tags = chunk->tags,
-                                          .values = chunk->values,
-                                          .accumulators = chunk->accumulators},
-        storing->error);
-}
-
 static int store_chunk(void *user, const struct weights_chunk *chunk)
 {
-    return put_chunk(user, chunk, false);
-}
-
-static int store_shadow_chunk(void *user, const struct weights_chunk *chunk)
-{
-    return put_chunk(user, chunk, true);
+    struct storing *storing = user;
+    return model_store_put_chunk(storing->writing,
+                                 &(const struct model_store_chunk){
+                                     .word = chunk->word,
+                                     .number = chunk->number,
+                                     .bytes = kv_bytes_of(chunk->bytes.data, chunk->bytes.size)},
+                                 storing->error);
 }
 
 static int store_tag(void *user, const struct model_tag *tag)
@@ -280,7 +228,10 @@ static int store_totals(void *user, const struct model_totals *totals)
                                     .evidence_items = totals->evidence_items,
                                     .curves_items = totals->curves_items,
                                     .fit_halves = totals->fit_halves,
-                                    .evidence_gain = totals->evidence_gain};
+                                    .evidence_gain = totals->evidence_gain,
+                                    .words = totals->words.size,
+                                    .next_word = totals->words.next_number,
+                                    .postings = totals->postings};
     size_t bytes = strlen(storing->origin->settings);
     assert(bytes < sizeof head.settings);
     memcpy(head.store_uuid, storing->origin->store_uuid, STORE_UUID_BYTES);
@@ -288,7 +239,7 @@ static int store_totals(void *user, const struct model_totals *totals)
     return model_store_put_head(storing->writing, &head, storing->error);
 }
 
-int model_keeper_store(struct model_store *store, struct model *model,
+int model_keeper_store(struct model_store *store, const struct model *model,
                        const struct model_origin *origin, uint64_t learned, bool *ret_forgot,
                        struct store_error *error)
 {
@@ -297,7 +248,6 @@ int model_keeper_store(struct model_store *store, struct model *model,
                                     .forgotten = store_forgotten,
                                     .word = store_word,
                                     .chunk = store_chunk,
-                                    .shadow_chunk = store_shadow_chunk,
                                     .tag = store_tag,
                                     .figures = store_figures,
                                     .delisted = remove_entry,
@@ -310,11 +260,10 @@ int model_keeper_store(struct model_store *store, struct model *model,
     code = model_changes(model, &sink);
     if (code != STORE_OK) {
         model_store_abort(storing.writing);
-        return code;
+        return error->code != STORE_OK ? code : store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
     code = model_store_commit(storing.writing, error);
     if (code == STORE_OK) {
-        model_clean(model);
         *ret_forgot = storing.forgot;
     }
     return code;

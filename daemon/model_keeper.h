@@ -32,7 +32,7 @@ int model_keeper_look(struct model_store *store, const struct model_origin *orig
                       enum model_kept *ret_kept, uint64_t *ret_learned, struct store_error *error)
     __attribute__((warn_unused_result));
 
-/* Restores what is stored into a new model. */
+/* Restores into a new model what is to be in memory; the rest it reads through a model_base. */
 int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
     __attribute__((warn_unused_result));
 
@@ -41,11 +41,11 @@ int model_keeper_reset(struct model_store *store, struct store_error *error)
     __attribute__((warn_unused_result));
 
 /*
- * Stores what has changed since the last time, as of `learned`, and marks it clean. *ret_forgot
- * says whether words were forgotten, which a scrub should follow. Nobody may learn meanwhile;
- * asking goes on.
+ * Stores what has changed since the last time, as of `learned`; model_clean is the caller's, under
+ * the model's lock. *ret_forgot says whether words were forgotten, which a scrub should follow.
+ * Nobody may learn meanwhile; asking goes on.
  */
-int model_keeper_store(struct model_store *store, struct model *model,
+int model_keeper_store(struct model_store *store, const struct model *model,
                        const struct model_origin *origin, uint64_t learned, bool *ret_forgot,
                        struct store_error *error) __attribute__((warn_unused_result));
 

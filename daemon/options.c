@@ -78,6 +78,10 @@ static const struct option OPTIONS[] = {
      "Changes after which what was learned is stored before its time; storing still takes a tenth "
      "of "
      "the time at most."},
+    {"memory_budget", TYPE_BYTES, AT(memory_budget_bytes), 64 * MIB, 1024 * GIB, "1GiB", NULL,
+     OPTIONS_SETTING, false,
+     "Memory for words, weights and what waits to be stored; what does not fit is read from the "
+     "disk when it is wanted."},
     {"stemming", TYPE_SWITCH, AT(stemming), 0, 0, "off", ON_OFF, OPTIONS_LEARNING, false,
      "Count the stems of words, where Snowball knows the item's language."},
     {"language", TYPE_LANGUAGE, AT(language), 0, 0, "", NULL, OPTIONS_LEARNING, false,

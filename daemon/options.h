@@ -37,6 +37,7 @@ struct options {
     uint64_t disk_reserve_bytes;
     uint64_t flush_every_ms;
     uint64_t flush_changes;
+    uint64_t memory_budget_bytes;
     /* words */
     bool stemming;
     char language[OPTIONS_LANGUAGE_BYTES];

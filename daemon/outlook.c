@@ -2,8 +2,10 @@
 
 static const double SECOND_WEIGHT = 0.5;
 
-static void read_fit(void *user, const struct model *model, uint64_t learned)
+static void read_fit(void *user, const struct model *model, const struct base *base,
+                     uint64_t learned)
 {
+    (void)base;
     struct outlook *outlook = user;
     outlook->fit = *model_fit(model);
     outlook->learned = learned;

@@ -81,6 +81,13 @@ int read_job_fail(struct read_job *job, const struct store_error *error)
     return fault_of_store(&job->fault, error);
 }
 
+int read_job_fail_model(struct read_job *job)
+{
+    return fault_set(&job->fault, FAULT_INTERNAL, NULL,
+                     "A part of what was learned cannot be read from HOME/model. Nothing that was "
+                     "filed is lost: without that folder a restart learns it again.");
+}
+
 int fault_of_store(struct fault *fault, const struct store_error *error)
 {
     const char *reason = error->text[0] ? error->text : store_code_sentence(error->code);

@@ -40,6 +40,9 @@ int read_job_view(struct read_job *job, struct store_view **ret_view)
 /* Turns an error of storage into the job's fault; returns the fault's code. */
 int read_job_fail(struct read_job *job, const struct store_error *error);
 
+/* The job's fault where what is stored of the model cannot be read. */
+int read_job_fail_model(struct read_job *job);
+
 /* The fault that an error of storage is to a caller; returns its code. */
 int fault_of_store(struct fault *fault, const struct store_error *error);
 

@@ -19,7 +19,8 @@ static int init_lock(pthread_rwlock_t *lock)
     return -code;
 }
 
-int shared_model_init_take(struct shared_model *shared, struct model *model, uint64_t learned)
+int shared_model_init_take(struct shared_model *shared, struct model *model,
+                           struct model_store *store, uint64_t learned)
 {
     int code = init_lock(&shared->lock);
     if (code < 0) {
@@ -27,6 +28,7 @@ int shared_model_init_take(struct shared_model *shared, struct model *model, uin
         return code;
     }
     shared->model = model;
+    shared->store = store;
     shared->learned = learned;
     shared->broken = false;
     return 0;

@@ -9,17 +9,20 @@
 #include <stdint.h>
 
 #include "daemon/learner/model.h"
+#include "storage/model_store.h"
 
 /* The model may be asked under shared_model_read, changed under shared_model_write. */
 struct shared_model {
     struct model *model;
-    uint64_t learned; /* the seq that the model has learned up to */
-    bool broken;      /* memory ran out within a change: it must not be asked any more */
+    struct model_store *store; /* what the model reads through a model_base */
+    uint64_t learned;          /* the seq that the model has learned up to */
+    bool broken;               /* a change was learned by half: it must not be asked any more */
     pthread_rwlock_t lock;
 };
 
-/* Takes the model, also on failure. */
-int shared_model_init_take(struct shared_model *shared, struct model *model, uint64_t learned)
+/* Takes the model, also on failure; the store stays the caller's. */
+int shared_model_init_take(struct shared_model *shared, struct model *model,
+                           struct model_store *store, uint64_t learned)
     __attribute__((warn_unused_result));
 void shared_model_deinit(struct shared_model *shared);
 

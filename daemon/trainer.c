@@ -18,6 +18,9 @@
 #include "daemon/clock.h"
 #include "daemon/grow.h"
 #include "daemon/item_source.h"
+#include "daemon/learner/model_parts.h"
+#include "daemon/memory_shares.h"
+#include "daemon/model_base.h"
 #include "daemon/sync.h"
 #include "storage/items.h"
 
@@ -50,16 +53,19 @@ struct trainer {
     struct side filed;
     struct side replaced;
     struct model_scratch *scratch;
-    uint64_t learned;      /* this thread's own copy */
-    uint64_t kept;         /* the seq of the stored model */
-    uint64_t stored_at_us; /* when it was stored, or tried, last */
-    uint64_t storing_us;   /* how long that took */
-    bool rescore_due;      /* the model has changed since there was nothing to score again */
-    bool rescored;         /* since the model was stored */
+    struct model_base base; /* entered for a round */
+    uint64_t learned;       /* this thread's own copy */
+    uint64_t kept;          /* the seq of the stored model */
+    uint64_t stored_at_us;  /* when it was stored, or tried, last */
+    uint64_t storing_us;    /* how long that took */
+    bool rescore_due;       /* the model has changed since there was nothing to score again */
+    bool rescored;          /* since the model was stored */
     bool scrub_due;
     uint64_t scrub_wait_ms; /* before it is gone on with */
     size_t scrub_left;      /* pages, when it was last looked at */
+    struct memory_shares shares;
     bool failed;
+    bool store_failed; /* when the model was stored last */
 };
 
 /* --- one change ---------------------------------------------------------------------------------
@@ -154,6 +160,18 @@ static int read_side(struct side *side, struct store_view *view, uint64_t seq, b
     return fill_item(side, error);
 }
 
+static int fail_to_learn(const struct trainer *trainer, int code, uint64_t seq,
+                         struct store_error *error)
+{
+    if (code == -ENOMEM) {
+        return store_fail(error, STORE_NO_MEMORY, "there is no memory to learn change %llu",
+                          (unsigned long long)seq);
+    }
+    const struct store_error *reason = &trainer->base.error;
+    return store_fail(error, STORE_CORRUPT, "what was learned before cannot be read: %s",
+                      reason->text[0] ? reason->text : "it does not fit together");
+}
+
 static int learn_change(struct trainer *trainer, struct store_view *view, uint64_t seq,
                         uint64_t *ret_cost, struct store_error *error)
 {
@@ -173,6 +191,7 @@ static int learn_change(struct trainer *trainer, struct store_view *view, uint64
     if (is_filed || is_replaced) {
         code = model_learn(shared->model, is_filed ? &trainer->filed.item : NULL,
                            is_replaced ? &trainer->replaced.item : NULL, trainer->scratch);
+        model_trim(shared->model, trainer->shares.dictionary, trainer->shares.weights);
     }
     if (code == 0) {
         shared->learned = seq;
@@ -182,9 +201,7 @@ static int learn_change(struct trainer *trainer, struct store_view *view, uint64
     shared_model_unlock(shared);
     const struct item_record *record = &trainer->filed.record;
     *ret_cost = backlog_cost(record->title.size + record->text.size, record->filed.count);
-    return code == 0 ? STORE_OK
-                     : store_fail(error, STORE_NO_MEMORY, "there is no memory to learn change %llu",
-                                  (unsigned long long)seq);
+    return code == 0 ? STORE_OK : fail_to_learn(trainer, code, seq, error);
 }
 
 static void wait_for_store(struct trainer *trainer, const struct store_error *error)
@@ -192,6 +209,30 @@ static void wait_for_store(struct trainer *trainer, const struct store_error *er
     troubles_begin(trainer->settings.troubles, TROUBLE_LEARNING,
                    "learning waits for the store (%s)", error->text);
     backlog_pause(trainer->settings.backlog, IDLE_MS);
+}
+
+/* --- memory -------------------------------------------------------------------------------------
+ */
+
+static void share_memory(struct trainer *trainer)
+{
+    struct model_size size;
+    model_measure(trainer->settings.shared->model, &size);
+    uint64_t taken = size.counts_bytes + model_scratch_bytes(trainer->scratch) +
+                     workspaces_bytes(trainer->settings.workspaces);
+    trainer->shares = memory_shares_of(trainer->settings.memory_bytes, taken);
+}
+
+/* Whether the model must be stored before more is learned. */
+static bool is_full(const struct trainer *trainer)
+{
+    return model_changed_bytes(trainer->settings.shared->model) > trainer->shares.changed;
+}
+
+static void enter_base(struct trainer *trainer)
+{
+    model_base_enter(&trainer->base, trainer->settings.model_store);
+    model_scratch_read(trainer->scratch, &trainer->base.base);
 }
 
 /* Learns changes up to `last`, as many as one short view allows. */
@@ -204,6 +245,8 @@ static int learn_some(struct trainer *trainer, uint64_t last, struct store_error
         return STORE_OK;
     }
     uint64_t begun_us = clock_steady_us();
+    share_memory(trainer);
+    enter_base(trainer);
     for (size_t i = 0; i < CHANGES_A_VIEW && trainer->learned < last; i++) {
         uint64_t before_us = clock_steady_us();
         uint64_t cost = 0;
@@ -214,10 +257,11 @@ static int learn_some(struct trainer *trainer, uint64_t last, struct store_error
         uint64_t after_us = clock_steady_us();
         trainer->learned++;
         backlog_learned(trainer->settings.backlog, trainer->learned, cost, after_us - before_us);
-        if (after_us - begun_us > ROUND_LIMIT_US) {
+        if (after_us - begun_us > ROUND_LIMIT_US || is_full(trainer)) {
             break;
         }
     }
+    model_base_leave(&trainer->base);
     store_end(view);
     if (code == STORE_OK) {
         troubles_end(trainer->settings.troubles, TROUBLE_LEARNING);
@@ -232,6 +276,9 @@ static bool is_store_due(const struct trainer *trainer)
 {
     uint64_t waited_us = clock_steady_us() - trainer->stored_at_us;
     uint64_t changes = trainer->learned - trainer->kept + (trainer->rescored ? 1 : 0);
+    if (is_full(trainer)) {
+        return !trainer->store_failed || waited_us >= IDLE_MS * 1000ULL;
+    }
     return changes > 0 && waited_us >= FLUSH_SHARE * trainer->storing_us &&
            (waited_us >= trainer->settings.flush_every_ms * 1000 ||
             changes >= trainer->settings.flush_changes);
@@ -246,12 +293,16 @@ static void store_model(struct trainer *trainer)
                                   &trainer->settings.origin, trainer->learned, &forgot, &error);
     trainer->stored_at_us = clock_steady_us();
     trainer->storing_us = trainer->stored_at_us - begun_us;
+    trainer->store_failed = code != STORE_OK;
     if (code != STORE_OK) {
         troubles_begin(trainer->settings.troubles, TROUBLE_KEEPING,
                        "what was learned cannot be stored (%s); a restart will learn it again",
                        error.text);
         return;
     }
+    shared_model_write(trainer->settings.shared);
+    model_clean(trainer->settings.shared->model);
+    shared_model_unlock(trainer->settings.shared);
     troubles_end(trainer->settings.troubles, TROUBLE_KEEPING);
     trainer->kept = trainer->learned;
     trainer->rescored = false;
@@ -298,13 +349,13 @@ static int rescore_item(struct trainer *trainer, struct store_view *view, uint64
     /* Nobody else changes the model: scoring needs no lock. */
     int result =
         is_filed ? model_rescore(shared->model, &trainer->filed.item, trainer->scratch, &entry) : 0;
-    if (result < 0) {
-        return store_fail(error, STORE_NO_MEMORY, "out of memory");
+    if (result == 0) {
+        shared_model_write(shared);
+        result = is_filed ? model_relist(shared->model, &trainer->base.base, &entry)
+                          : model_delist(shared->model, &trainer->base.base, number);
+        shared_model_unlock(shared);
     }
-    shared_model_write(shared);
-    result = is_filed ? model_relist(shared->model, &entry) : model_delist(shared->model, number);
-    shared_model_unlock(shared);
-    return result == 0 ? STORE_OK : store_fail(error, STORE_NO_MEMORY, "out of memory");
+    return result == 0 ? STORE_OK : fail_to_learn(trainer, result, number, error);
 }
 
 /* Scores again, while there is time, what the model has outgrown; says whether there is more. */
@@ -316,17 +367,19 @@ static bool rescore_some(struct trainer *trainer)
         return false; /* learning will tell, if it lasts */
     }
     uint64_t number = 0;
+    int next = 0;
     int code = STORE_OK;
-    for (size_t i = 0; i < RESCORED_A_ROUND && code == STORE_OK; i++) {
-        number = model_next_stale(trainer->settings.shared->model);
-        if (number == 0) {
-            break;
+    enter_base(trainer);
+    for (size_t i = 0; i < RESCORED_A_ROUND && code == STORE_OK && next == 0; i++) {
+        next = model_next_stale(trainer->settings.shared->model, &trainer->base.base, &number);
+        if (next == 0) {
+            code = rescore_item(trainer, view, number, &error);
+            trainer->rescored = true;
         }
-        code = rescore_item(trainer, view, number, &error);
-        trainer->rescored = true;
     }
+    model_base_leave(&trainer->base);
     store_end(view);
-    return code == STORE_OK && number != 0;
+    return code == STORE_OK && next == 0 && !is_full(trainer);
 }
 
 /* --- the thread ---------------------------------------------------------------------------------
@@ -375,7 +428,11 @@ static void *run(void *argument)
         uint64_t behind = trainer->failed ? UINT64_MAX : trainer->learned;
         uint64_t last = backlog_wait_for_work(backlog, behind, idle_ms(trainer));
         bool is_idle = last <= behind;
-        if (!is_idle && learn_some(trainer, last, &error) != STORE_OK) {
+        bool must_wait = is_full(trainer); /* what was learned could not be stored */
+        if (must_wait) {
+            backlog_pause(backlog, IDLE_MS);
+        }
+        if (!is_idle && !must_wait && learn_some(trainer, last, &error) != STORE_OK) {
             fail(trainer, &error);
         }
         trainer->rescore_due = !trainer->failed && (is_idle ? trainer->rescore_due : true);
@@ -421,6 +478,7 @@ int trainer_new(const struct trainer_settings *settings, struct trainer **ret_tr
         return -ENOMEM;
     }
     trainer->settings = *settings;
+    trainer->shares = memory_shares_of(settings->memory_bytes, 0);
     trainer->learned = settings->shared->learned;
     trainer->kept = settings->shared->learned;
     trainer->rescore_due = true;

@@ -11,6 +11,7 @@
 #include "daemon/model_keeper.h"
 #include "daemon/shared_model.h"
 #include "daemon/troubles.h"
+#include "daemon/workspace.h"
 #include "storage/store.h"
 
 struct trainer;
@@ -26,6 +27,8 @@ struct trainer_settings {
     struct model_origin origin;
     uint64_t flush_every_ms;
     uint64_t flush_changes;
+    uint64_t memory_bytes;         /* for the whole process; see trainer.c */
+    struct workspaces *workspaces; /* of those who ask, for what they take of it */
     void *user;
     void (*kept)(void *user); /* the stored model has moved on; trainer's thread */
 };

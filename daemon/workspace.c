@@ -7,6 +7,7 @@
 int workspaces_init(struct workspaces *workspaces, const struct features_settings *settings)
 {
     workspaces->free = NULL;
+    workspaces->bytes = 0;
     workspaces->settings = settings;
     return -pthread_mutex_init(&workspaces->mutex, NULL);
 }
@@ -58,8 +59,19 @@ struct workspace *workspaces_borrow(struct workspaces *workspaces)
 
 void workspaces_return(struct workspaces *workspaces, struct workspace *workspace)
 {
+    uint64_t bytes = model_scratch_bytes(workspace->scratch);
     sync_lock(&workspaces->mutex);
+    workspaces->bytes += bytes - workspace->bytes;
+    workspace->bytes = bytes;
     workspace->next = workspaces->free;
     workspaces->free = workspace;
     sync_unlock(&workspaces->mutex);
+}
+
+uint64_t workspaces_bytes(struct workspaces *workspaces)
+{
+    sync_lock(&workspaces->mutex);
+    uint64_t bytes = workspaces->bytes;
+    sync_unlock(&workspaces->mutex);
+    return bytes;
 }

@@ -13,6 +13,7 @@
 
 struct workspace {
     struct workspace *next;
+    uint64_t bytes; /* of the scratch, when it was returned last */
     struct features *features;
     struct model_scratch *scratch;
     struct item_buffer buffer;
@@ -25,6 +26,7 @@ struct workspace {
 struct workspaces {
     pthread_mutex_t mutex;
     struct workspace *free;
+    uint64_t bytes;                           /* of all, borrowed ones too */
     const struct features_settings *settings; /* borrowed */
 };
 
@@ -37,5 +39,8 @@ void workspaces_deinit(struct workspaces *workspaces);
 /* One to be used until it is returned. Any thread. NULL: no memory. */
 struct workspace *workspaces_borrow(struct workspaces *workspaces);
 void workspaces_return(struct workspaces *workspaces, struct workspace *workspace);
+
+/* What all of them hold for asking the model. Any thread. */
+uint64_t workspaces_bytes(struct workspaces *workspaces);
 
 #endif

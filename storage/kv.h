@@ -93,7 +93,8 @@ int kv_walk_delete(struct kv_cursor *at, struct store_error *error)
 
 /*
  * A cursor over a table, for as long as its transaction, which it must be closed before. kv_seek
- * goes to the first entry at or behind a key, kv_next to the one behind; STORE_NOT_FOUND at the end.
+ * goes to the first entry at or behind a key, kv_next to the one behind; STORE_NOT_FOUND at the
+ * end.
  */
 int kv_cursor_open(struct kv_txn *txn, unsigned table, struct kv_cursor **ret_cursor,
                    struct store_error *error) __attribute__((warn_unused_result));

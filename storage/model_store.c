@@ -8,9 +8,8 @@
 #include "storage/model_store_private.h"
 
 static const char *const TABLE_NAMES[MODEL_TABLES] = {
-    [MODEL_META] = "meta",         [MODEL_WORDS] = "words",
-    [MODEL_CHUNKS] = "chunks",     [MODEL_TAGS] = "tags",
-    [MODEL_FIGURES] = "figures",   [MODEL_ENTRIES] = "worklist",
+    [MODEL_META] = "meta", [MODEL_WORDS] = "words",     [MODEL_CHUNKS] = "chunks",
+    [MODEL_TAGS] = "tags", [MODEL_FIGURES] = "figures", [MODEL_ENTRIES] = "worklist",
 };
 
 struct model_store_writing {

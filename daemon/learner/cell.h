@@ -57,7 +57,8 @@ static inline uint16_t cell_accumulator_code(uint32_t cell)
 /* The accumulator, CELL_FIRST_ACCUMULATOR included; of a cell that is there. */
 static inline float cell_accumulator(uint32_t cell)
 {
-    uint32_t bits = ((cell >> 16U) << CELL_FRACTION_DROPPED) + ((uint32_t)CELL_LEAST_EXPONENT << 23U);
+    uint32_t bits =
+        ((cell >> 16U) << CELL_FRACTION_DROPPED) + ((uint32_t)CELL_LEAST_EXPONENT << 23U);
     float value = 0.0F;
     memcpy(&value, &bits, sizeof value);
     return value;

@@ -19,6 +19,9 @@ static const double UNSHARED_WORD_SHARE = 0.5;
 /* Below this chance a gap is not looked at twice: there are thousands of them. */
 static const double AGREEMENT_LEAST_CHANCE = 0.02;
 
+/* What a changed chunk of postings takes while it is stored: itself, and a page of the store. */
+static const uint64_t CHANGED_CHUNK_BYTES = 6144;
+
 /*
  * A scratch may outlive its model, and the next model may lie where that one lay: each begins its
  * versions where no other comes to, one beyond a million million changes of the one before.
@@ -43,9 +46,9 @@ int model_new(const struct model_settings *settings, const struct siphash_key *k
     calibrators_init(&made->calibrators);
     agreement_init(&made->agreement);
     model_refit_curves(made, true);
+    made->settings.weights.shadow = settings->shadow;
     if (dictionary_new(key, &made->dictionary) < 0 ||
-        weights_new(&settings->weights, &made->weights) < 0 ||
-        (settings->shadow && weights_new(&settings->weights, &made->shadow) < 0) ||
+        weights_new(&made->settings.weights, &made->weights) < 0 ||
         standing_new(&made->standing) < 0 || worklist_new(&made->worklist) < 0) {
         model_free(made);
         return -ENOMEM;
@@ -61,15 +64,9 @@ void model_free(struct model *model)
     }
     dictionary_free(model->dictionary);
     weights_free(model->weights);
-    weights_free(model->shadow);
     standing_free(model->standing);
     worklist_free(model->worklist);
     free(model->tags);
-    marks_deinit(&model->changed_words);
-    for (size_t i = 0; i < model->forgotten_count; i++) {
-        free(model->forgotten[i].term);
-    }
-    free(model->forgotten);
     free(model);
 }
 
@@ -79,7 +76,7 @@ int model_scratch_new(struct model_scratch **ret_scratch)
     if (!made) {
         return -ENOMEM;
     }
-    if (weights_scratch_new(&made->weights) < 0 || weights_scratch_new(&made->shadow) < 0) {
+    if (weights_scratch_new(&made->weights) < 0) {
         model_scratch_free(made);
         return -ENOMEM;
     }
@@ -93,13 +90,11 @@ void model_scratch_free(struct model_scratch *scratch)
         return;
     }
     weights_scratch_free(scratch->weights);
-    weights_scratch_free(scratch->shadow);
     free(scratch->words);
     free(scratch->values);
     free(scratch->x);
     free(scratch->feature_of_x);
     free(scratch->given);
-    free(scratch->shadow_given);
     free(scratch->own);
     free(scratch->changed);
     free(scratch->barred);
@@ -108,14 +103,26 @@ void model_scratch_free(struct model_scratch *scratch)
     free(scratch);
 }
 
+void model_scratch_read(struct model_scratch *scratch, const struct base *base)
+{
+    scratch->base = base;
+}
+
+uint64_t model_scratch_bytes(const struct model_scratch *scratch)
+{
+    return sizeof *scratch + weights_scratch_bytes(scratch->weights) + scratch->barred_capacity +
+           scratch->own_capacity * sizeof *scratch->own +
+           scratch->gap_capacity * sizeof *scratch->gaps +
+           scratch->parts_capacity * sizeof *scratch->parts;
+}
+
 int model_reserve_tags(struct model *model, size_t count)
 {
     if (count <= model->tag_count) {
         return 0;
     }
     if (GROW(&model->tags, &model->tag_capacity, count) < 0 ||
-        weights_reserve_tags(model->weights, count) < 0 ||
-        (model->shadow && weights_reserve_tags(model->shadow, count) < 0)) {
+        weights_reserve_tags(model->weights, count) < 0) {
         return -ENOMEM;
     }
     model->census[0] += (uint32_t)(count - model->tag_count);
@@ -212,10 +219,7 @@ int model_weigh_features(const struct model *model, const struct feature *featur
         return -ENOMEM;
     }
     for (size_t i = 0; i < count; i++) {
-        uint32_t word = scratch->words[i];
-        double known =
-            word == DICTIONARY_NONE ? 0.0 : (double)dictionary_count(model->dictionary, word);
-        double holding = fmax(known + itself, 1.0);
+        double holding = fmax((double)scratch->words[i].count + itself, 1.0);
         double share = holding > 1.0 ? 1.0 : UNSHARED_WORD_SHARE;
         scratch->values[i] = (float)(share * tfidf_frequency_weight((double)features[i].frequency) *
                                      tfidf_idf((double)model->documents + itself, holding));
@@ -223,14 +227,13 @@ int model_weigh_features(const struct model *model, const struct feature *featur
     tfidf_normalise(scratch->values, count);
     scratch->x_count = 0;
     for (size_t i = 0; i < count; i++) {
-        if (scratch->words[i] == DICTIONARY_NONE) {
+        const struct base_word *word = &scratch->words[i];
+        if (word->number == DICTIONARY_NONE) {
             continue;
         }
         scratch->feature_of_x[scratch->x_count] = (uint32_t)i;
         scratch->x[scratch->x_count++] = (struct weights_feature){
-            .word = scratch->words[i],
-            .document_count = dictionary_count(model->dictionary, scratch->words[i]),
-            .value = scratch->values[i]};
+            .word = word->number, .document_count = word->count, .value = scratch->values[i]};
     }
     return 0;
 }
@@ -242,13 +245,31 @@ int model_score_words(const struct model *model, const struct feature *features,
         return -ENOMEM;
     }
     for (size_t i = 0; i < count; i++) {
-        scratch->words[i] =
-            dictionary_find(model->dictionary, features[i].term, features[i].term_bytes);
+        int result = dictionary_find(model->dictionary, scratch->base, features[i].term,
+                                     features[i].term_bytes, &scratch->words[i]);
+        if (result == -ENOENT) {
+            scratch->words[i] = (struct base_word){.number = DICTIONARY_NONE};
+        } else if (result < 0) {
+            return result;
+        }
     }
     if (model_weigh_features(model, features, count, is_counted, scratch) < 0) {
         return -ENOMEM;
     }
-    return weights_score(model->weights, scratch->x, scratch->x_count, scratch->weights);
+    return weights_score(model->weights, scratch->base, scratch->x, scratch->x_count, 1,
+                         scratch->weights);
+}
+
+void model_trim(struct model *model, uint64_t dictionary_most, uint64_t weights_most)
+{
+    dictionary_trim(model->dictionary, dictionary_most);
+    weights_trim(model->weights, weights_most);
+}
+
+uint64_t model_changed_bytes(const struct model *model)
+{
+    return weights_changed_count(model->weights) * CHANGED_CHUNK_BYTES +
+           worklist_bytes(model->worklist);
 }
 
 void model_measure(const struct model *model, struct model_size *ret_size)
@@ -261,9 +282,7 @@ void model_measure(const struct model *model, struct model_size *ret_size)
         .dictionary_bytes = dictionary_bytes(model->dictionary),
         .weights_bytes = weights_bytes(model->weights),
         .counts_bytes = sizeof *model + model->tag_capacity * sizeof *model->tags +
-                        marks_bytes(&model->changed_words) +
-                        model->forgotten_capacity * sizeof *model->forgotten,
-        .shadow_bytes = model->shadow ? weights_bytes(model->shadow) : 0,
+                        standing_bytes(model->standing),
         .worklist_bytes = worklist_bytes(model->worklist),
         .listed = worklist_size(model->worklist),
         .stale = worklist_count_stale(model->worklist, model_stale_below(model))};

@@ -17,6 +17,7 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "daemon/base.h"
 #include "daemon/learner/propensity_fit.h"
 #include "daemon/learner/standing.h"
 #include "daemon/learner/weights.h"
@@ -24,7 +25,6 @@
 #include "daemon/text/features.h"
 #include "daemon/text/siphash.h"
 
-struct base;
 struct model;
 struct model_scratch;
 
@@ -41,7 +41,7 @@ struct model_settings {
 
 /* Goes up when the same changes would teach something else. */
 enum {
-    MODEL_LEARNER_VERSION = 2
+    MODEL_LEARNER_VERSION = 3
 };
 
 /*
@@ -115,20 +115,25 @@ void model_free(struct model *model);
 
 int model_scratch_new(struct model_scratch **ret_scratch) __attribute__((warn_unused_result));
 void model_scratch_free(struct model_scratch *scratch);
+uint64_t model_scratch_bytes(const struct model_scratch *scratch);
+
+/* Whatever uses the scratch reads what is not in memory through this base, until another is named;
+ * NULL, as at first: nothing is stored. */
+void model_scratch_read(struct model_scratch *scratch, const struct base *base);
 
 /*
  * Learns one change: `item` is what it is now (NULL: the item was withdrawn), `replaced` what it
  * takes the place of (NULL: nothing; its counts leave with it). Counts move first; then the item is
  * scored with what was known so far, which is evidence for the calibrators and the standing if it
- * is new, or if somebody has examined it; then it is learned. Returns 0 or -ENOMEM, after which the
- * model must not be used any more.
+ * is new, or if somebody has examined it; then it is learned. Returns 0, -ENOMEM, or -EIO where the
+ * base cannot be read; after either the model must not be used any more.
  */
 int model_learn(struct model *model, const struct model_item *item,
                 const struct model_item *replaced, struct model_scratch *scratch)
     __attribute__((warn_unused_result));
 
 /* The tags that an item most probably lacks; a tag that no item has (any more) is never one of
- * them. Returns 0 or -ENOMEM. */
+ * them. Returns 0, -ENOMEM or -EIO. */
 int model_ask(const struct model *model, const struct model_question *question,
               struct model_scratch *scratch, struct model_answer *ret_answer)
     __attribute__((warn_unused_result));
@@ -183,6 +188,16 @@ int model_rank_worklist(const struct model *model, const struct base *base, uint
                         double floor, struct model_ranked **ret_ranked, size_t *ret_count)
     __attribute__((warn_unused_result));
 
+/* --- memory -------------------------------------------------------------------------------------
+ */
+
+/* Lets go of words and weights that are stored and were not wanted lately, until they take at most
+ * so many bytes or nothing more can go. */
+void model_trim(struct model *model, uint64_t dictionary_most, uint64_t weights_most);
+
+/* About how much memory it will take to store what has changed, the store's pages included. */
+uint64_t model_changed_bytes(const struct model *model);
+
 /* --- what follows from what people have examined ------------------------------------------------
  */
 
@@ -197,7 +212,6 @@ struct model_size {
     uint64_t dictionary_bytes;
     uint64_t weights_bytes;
     uint64_t counts_bytes;
-    uint64_t shadow_bytes;
     uint64_t worklist_bytes;
     uint64_t listed; /* items of the worklist */
     uint64_t stale;  /* of those, with stale scores */

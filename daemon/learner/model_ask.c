@@ -152,11 +152,12 @@ static int gather_touched(const struct asker *asker, chance_sum barred_rest, siz
                           chance_sum *ret_expected)
 {
     chance_sum expected = rest_of_all(asker) - barred_rest;
-    size_t touched_count = 0;
-    const uint32_t *touched = weights_touched(asker->scratch->weights, &touched_count);
-    for (size_t i = 0; i < touched_count; i++) {
-        uint32_t tag = touched[i];
-        double score = (double)model_score(asker->model, asker->scratch, tag);
+    size_t count = 0;
+    const struct weights_rival *rivals =
+        weights_rivals(asker->scratch->weights, WEIGHTS_MAIN, &count);
+    for (size_t i = 0; i < count; i++) {
+        uint32_t tag = rivals[i].tag;
+        double score = (double)rivals[i].score;
         double honest = score - (double)asker->scratch->own[tag];
         if (!is_open(asker, tag) || honest <= CALIBRATORS_FLOOR_SCORE) {
             continue;
@@ -249,7 +250,8 @@ static void insert_word(struct model_gap *gap, uint32_t feature, double share)
 
 static void explain_gap(const struct asker *asker, struct model_gap *gap, const float *parts)
 {
-    double positive = fmax((double)weights_bias(asker->model->weights, gap->tag).value, 0.0);
+    double positive =
+        fmax((double)weights_bias(asker->model->weights, WEIGHTS_MAIN, gap->tag).value, 0.0);
     for (size_t i = 0; i < asker->scratch->x_count; i++) {
         positive += fmax((double)parts[i], 0.0);
     }
@@ -273,46 +275,72 @@ static int explain(const struct asker *asker, size_t gap_count)
     if (GROW(&scratch->parts, &scratch->parts_capacity, gap_count * scratch->x_count) < 0) {
         return -ENOMEM;
     }
-    weights_explain(asker->model->weights, scratch->x, scratch->x_count, tags, gap_count,
-                    scratch->weights, scratch->parts);
-    for (size_t i = 0; i < gap_count; i++) {
+    int result = weights_explain(asker->model->weights, scratch->base, scratch->x, scratch->x_count,
+                                 tags, gap_count, scratch->weights, scratch->parts);
+    for (size_t i = 0; i < gap_count && result == 0; i++) {
         explain_gap(asker, &scratch->gaps[i], scratch->parts + i * scratch->x_count);
     }
-    return 0;
+    return result;
 }
 
 /* --- the question -------------------------------------------------------------------------------
  */
 
+/* Scores the question's words, and finds what the item's own share is; *ret_entry is NULL where the
+ * worklist has no entry of it. */
+static int score_question(const struct model *model, const struct model_question *question,
+                          struct model_scratch *scratch, struct worklist_entry *room,
+                          const struct worklist_entry **ret_entry)
+{
+    bool is_filed = question->number > 0;
+    int result =
+        is_filed ? model_find_entry(model, scratch->base, question->number, room) : -ENOENT;
+    if (result < 0 && result != -ENOENT) {
+        return result;
+    }
+    *ret_entry = result == 0 ? room : NULL;
+    if (GROW(&scratch->barred, &scratch->barred_capacity, model->tag_count) < 0) {
+        return -ENOMEM;
+    }
+    result =
+        model_score_words(model, question->features, question->feature_count, is_filed, scratch);
+    return result == 0 ? model_take_own(model, *ret_entry, scratch) : result;
+}
+
+/* Gathers the gaps of the question just scored. */
+static int gather_gaps(struct asker *asker, size_t *ret_count, chance_sum *ret_expected)
+{
+    const struct model_question *question = asker->question;
+    chance_sum barred_rest =
+        bar_tags(asker, question->given, question->given_count, MARK_GIVEN) +
+        bar_tags(asker, question->excluded, question->excluded_count, MARK_KNOWN_NOT);
+    if (question->tagged) {
+        model_find_best(asker->model, asker->scratch);
+        asker->promise = model_promise(asker->model, question->checked_below, asker->scratch);
+    }
+    int result = gather(asker, barred_rest, ret_count, ret_expected);
+    unbar_tags(asker, question->given, question->given_count);
+    unbar_tags(asker, question->excluded, question->excluded_count);
+    return result;
+}
+
 int model_ask(const struct model *model, const struct model_question *question,
               struct model_scratch *scratch, struct model_answer *ret_answer)
 {
-    const struct worklist_entry *entry =
-        question->number > 0 ? worklist_find(model->worklist, question->number) : NULL;
-    if (GROW(&scratch->barred, &scratch->barred_capacity, model->tag_count) < 0 ||
-        model_score_words(model, question->features, question->feature_count, question->number > 0,
-                          scratch) < 0 ||
-        model_take_own(model, entry, scratch) < 0) {
-        return -ENOMEM;
+    struct worklist_entry room;
+    const struct worklist_entry *entry = NULL;
+    int result = score_question(model, question, scratch, &room, &entry);
+    if (result < 0) {
+        return result;
     }
     refresh_rest(model, scratch);
     struct asker asker = {.model = model,
                           .question = question,
                           .scratch = scratch,
-                          .by_prevalence =
-                              !weights_speak(model->weights, scratch->x, scratch->x_count)};
+                          .by_prevalence = !weights_speak(scratch->weights)};
     size_t count = 0;
     chance_sum expected = 0;
-    chance_sum barred_rest =
-        bar_tags(&asker, question->given, question->given_count, MARK_GIVEN) +
-        bar_tags(&asker, question->excluded, question->excluded_count, MARK_KNOWN_NOT);
-    if (question->tagged) {
-        model_find_best(model, scratch);
-        asker.promise = model_promise(model, question->checked_below, scratch);
-    }
-    int result = gather(&asker, barred_rest, &count, &expected);
-    unbar_tags(&asker, question->given, question->given_count);
-    unbar_tags(&asker, question->excluded, question->excluded_count);
+    result = gather_gaps(&asker, &count, &expected);
     model_clear_own(entry, scratch);
     if (result < 0) {
         return result;
@@ -321,12 +349,12 @@ int model_ask(const struct model *model, const struct model_question *question,
         qsort(scratch->gaps, count, sizeof *scratch->gaps, compare_gaps);
     }
     size_t shown = count < question->most ? count : question->most;
-    if (question->why && shown > 0 && explain(&asker, shown) < 0) {
-        return -ENOMEM;
+    if (question->why && shown > 0) {
+        result = explain(&asker, shown);
     }
     *ret_answer = (struct model_answer){.gaps = scratch->gaps,
                                         .gap_count = shown,
                                         .expected = (double)expected / CHANCE_UNIT,
                                         .early = calibrators_early(&model->curves)};
-    return 0;
+    return result;
 }

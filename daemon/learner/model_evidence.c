@@ -42,11 +42,11 @@ static size_t counted_class(const struct model *model, uint32_t tag)
 static void count_touched(struct model *model, const struct model_scratch *scratch,
                           double rest[CALIBRATORS_CLASSES])
 {
-    size_t touched_count = 0;
-    const uint32_t *touched = weights_touched(scratch->weights, &touched_count);
-    for (size_t i = 0; i < touched_count; i++) {
-        uint32_t tag = touched[i];
-        double score = (double)model_score(model, scratch, tag);
+    size_t count = 0;
+    const struct weights_rival *rivals = weights_rivals(scratch->weights, WEIGHTS_MAIN, &count);
+    for (size_t i = 0; i < count; i++) {
+        uint32_t tag = rivals[i].tag;
+        double score = (double)rivals[i].score;
         if (score <= CALIBRATORS_FLOOR_SCORE || model_is_unused(model, tag)) {
             continue;
         }

@@ -119,7 +119,7 @@ struct examining {
     struct model *model;
     const struct model_item *replaced;
     const struct worklist_entry *entry; /* of the item as it was; NULL: none */
-    const struct model_scratch *scratch;
+    struct model_scratch *scratch;
     double promise;         /* of the item as it was */
     uint32_t checked_below; /* of the item as it is */
     bool is_check;
@@ -205,27 +205,31 @@ static void gather(const struct examining *examining, const struct findings *fin
     }
 }
 
-static int learn_pairs(struct model *model, const struct findings *findings,
-                       struct model_scratch *scratch)
+static int learn_pairs(struct model *model, const struct model_item *item,
+                       const struct findings *findings, struct model_scratch *scratch)
 {
     if (GROW(&scratch->given, &scratch->given_capacity, findings->found_count) < 0) {
         return -ENOMEM;
     }
     for (size_t i = 0; i < findings->found_count; i++) {
         uint32_t tag = findings->found[i];
-        scratch->given[i] = (struct weights_given){.tag = tag,
-                                                   .tag_count = model->tags[tag].count,
-                                                   .factor = model_given_factor(model, tag, true)};
+        scratch->given[i] =
+            (struct weights_given){.tag = tag,
+                                   .tag_count = model->tags[tag].count,
+                                   .factors = {model_given_factor(model, tag, true)}};
     }
-    const struct weights_example example = {.x = scratch->x,
+    const struct weights_example example = {.number = item->number,
+                                            .x = scratch->x,
                                             .count = scratch->x_count,
+                                            .lanes = 1, /* the shadow knows no rulings */
                                             .given = scratch->given,
                                             .given_count = findings->found_count,
                                             .pairs_alone = true,
                                             .denied = findings->denied,
                                             .denied_count = findings->denied_count,
                                             .step = model_step(model)};
-    return weights_learn(model->weights, &example, scratch->weights);
+    int result = weights_admit(model->weights, scratch->base, scratch->x, scratch->x_count);
+    return result == 0 ? weights_learn(model->weights, &example, scratch->weights) : result;
 }
 
 /* The entry as it is from now on: without what has become known, under the item's new number. */
@@ -245,10 +249,8 @@ static int move_entry(struct model *model, const struct model_item *item,
             moved.gaps[moved.gap_count++] = entry->gaps[i];
         }
     }
-    if (worklist_remove(model->worklist, number) < 0) {
-        return -ENOMEM;
-    }
-    return worklist_put(model->worklist, &moved);
+    int result = worklist_remove(model->worklist, scratch->base, number);
+    return result == 0 ? worklist_put(model->worklist, scratch->base, &moved) : result;
 }
 
 /* Scores the item, and says what it promised before anybody had examined it. */
@@ -256,8 +258,11 @@ static int look_back(const struct model *model, const struct model_item *item,
                      const struct model_item *replaced, const struct worklist_entry *entry,
                      struct model_scratch *scratch, double *ret_promise)
 {
-    if (model_score_words(model, item->features, item->feature_count, true, scratch) < 0 ||
-        model_take_own(model, entry, scratch) < 0 ||
+    int result = model_score_words(model, item->features, item->feature_count, true, scratch);
+    if (result < 0) {
+        return result;
+    }
+    if (model_take_own(model, entry, scratch) < 0 ||
         model_mark_item(model, replaced, scratch) < 0) {
         return -ENOMEM;
     }
@@ -267,31 +272,48 @@ static int look_back(const struct model *model, const struct model_item *item,
     return 0;
 }
 
+/* All of it, with what the worklist says of the item. */
+static int examine(struct examining *examining, const struct model_item *item,
+                   struct findings *findings)
+{
+    struct model *model = examining->model;
+    struct model_scratch *scratch = examining->scratch;
+    const struct model_item *replaced = examining->replaced;
+    int result = look_back(model, item, replaced, examining->entry, scratch, &examining->promise);
+    if (result < 0 || model_mark_item(model, item, scratch) < 0) {
+        return result < 0 ? result : -ENOMEM;
+    }
+    gather(examining, findings);
+    model->evidence_changed = true;
+    result = learn_pairs(model, item, findings, scratch);
+    model_clear_own(examining->entry, scratch);
+    if (result == 0) {
+        result = move_entry(model, item, examining->entry, scratch);
+    }
+    model_unmark_item(item, scratch);
+    if (findings->found_count + findings->denied_count > 0 || examining->is_check) {
+        model_refit_curves(model, true);
+    }
+    return result;
+}
+
 int model_examine(struct model *model, const struct model_item *item,
                   const struct model_item *replaced, struct model_scratch *scratch)
 {
     struct findings findings;
+    struct worklist_entry listed;
+    int result = model_find_entry(model, scratch->base, replaced->number, &listed);
+    if (result < 0 && result != -ENOENT) {
+        return result;
+    }
     struct examining examining = {.model = model,
                                   .replaced = replaced,
-                                  .entry = worklist_find(model->worklist, replaced->number),
+                                  .entry = result == 0 ? &listed : NULL,
                                   .scratch = scratch,
                                   .checked_below = item->checked_below,
                                   .is_check = item->checked_below > replaced->checked_below};
-    if (find_changes(model, item, replaced, scratch, &findings) < 0 ||
-        look_back(model, item, replaced, examining.entry, scratch, &examining.promise) < 0 ||
-        model_mark_item(model, item, scratch) < 0) {
+    if (find_changes(model, item, replaced, scratch, &findings) < 0) {
         return -ENOMEM;
     }
-    gather(&examining, &findings);
-    model->evidence_changed = true;
-    int result = learn_pairs(model, &findings, scratch);
-    model_clear_own(examining.entry, scratch);
-    if (result == 0) {
-        result = move_entry(model, item, examining.entry, scratch);
-    }
-    model_unmark_item(item, scratch);
-    if (findings.found_count + findings.denied_count > 0 || examining.is_check) {
-        model_refit_curves(model, true);
-    }
-    return result;
+    return examine(&examining, item, &findings);
 }

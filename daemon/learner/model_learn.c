@@ -1,7 +1,6 @@
 #include <errno.h>
 #include <math.h>
 #include <stdlib.h>
-#include <string.h>
 
 #include "daemon/grow.h"
 #include "daemon/learner/model.h"
@@ -24,58 +23,45 @@ static int count_words_in(struct model *model, const struct model_item *item,
     for (size_t i = 0; i < item->feature_count; i++) {
         const struct feature *feature = &item->features[i];
         uint32_t word = 0;
-        if (dictionary_intern(model->dictionary, feature->term, feature->term_bytes, &word) < 0 ||
-            marks_add(&model->changed_words, word) < 0) {
-            return -ENOMEM;
+        int result = dictionary_intern(model->dictionary, scratch->base, feature->term,
+                                       feature->term_bytes, &word);
+        if (result < 0) {
+            return result;
         }
-        dictionary_set_count(model->dictionary, word,
-                             dictionary_count(model->dictionary, word) + 1);
-        scratch->words[i] = word;
+        uint32_t count = dictionary_count(model->dictionary, word) + 1;
+        dictionary_set_count(model->dictionary, word, count);
+        scratch->words[i] = (struct base_word){.number = word, .count = count};
     }
     return 0;
 }
 
-/* Takes a word that no item holds any more out of the model, and keeps its name for the store. */
-static int forget_word(struct model *model, uint32_t word)
+/* Takes one item out of a word's count; a word that no item holds any more is forgotten. */
+static int count_word_out(struct model *model, const struct feature *feature,
+                          const struct base *base)
 {
-    size_t bytes = 0;
-    const char *term = dictionary_term(model->dictionary, word, &bytes);
-    if (GROW(&model->forgotten, &model->forgotten_capacity, model->forgotten_count + 1) < 0) {
-        return -ENOMEM;
+    uint32_t word = 0;
+    int result =
+        dictionary_intern(model->dictionary, base, feature->term, feature->term_bytes, &word);
+    if (result < 0) {
+        return result;
     }
-    char *copy = malloc(bytes ? bytes : 1);
-    if (!copy) {
-        return -ENOMEM;
+    uint32_t count = dictionary_count(model->dictionary, word);
+    if (count > 1) {
+        dictionary_set_count(model->dictionary, word, count - 1);
+        return 0;
     }
-    memcpy(copy, term, bytes);
-    model->forgotten[model->forgotten_count++] =
-        (struct forgotten_word){.term = copy, .term_bytes = bytes, .number = word};
-    weights_forget_word(model->weights, word);
-    if (model->shadow) {
-        weights_forget_word(model->shadow, word);
-    }
-    return dictionary_remove(model->dictionary, word);
+    dictionary_remove(model->dictionary, word);
+    return weights_forget_word(model->weights, base, word);
 }
 
-static int count_words_out(struct model *model, const struct model_item *item)
+static int count_words_out(struct model *model, const struct model_item *item,
+                           const struct base *base)
 {
-    for (size_t i = 0; i < item->feature_count; i++) {
-        const struct feature *feature = &item->features[i];
-        uint32_t word = dictionary_find(model->dictionary, feature->term, feature->term_bytes);
-        if (word == DICTIONARY_NONE) {
-            continue; /* cannot be: every item was counted in */
-        }
-        uint32_t count = dictionary_count(model->dictionary, word);
-        if (count > 1) {
-            dictionary_set_count(model->dictionary, word, count - 1);
-            if (marks_add(&model->changed_words, word) < 0) {
-                return -ENOMEM;
-            }
-        } else if (forget_word(model, word) < 0) {
-            return -ENOMEM;
-        }
+    int result = 0;
+    for (size_t i = 0; i < item->feature_count && result == 0; i++) {
+        result = count_word_out(model, &item->features[i], base);
     }
-    return 0;
+    return result;
 }
 
 static bool is_examined(const struct model_item *item, uint32_t tag)
@@ -148,22 +134,23 @@ static int move_counts(struct model *model, const struct model_item *item,
                        const struct model_item *replaced, struct model_scratch *scratch)
 {
     bool same_words = item && replaced && item->same_words;
+    int result = 0;
     if (item) {
-        if ((!same_words && count_words_in(model, item, scratch) < 0) ||
-            count_tags_in(model, item) < 0) {
-            return -ENOMEM;
+        result = same_words ? 0 : count_words_in(model, item, scratch);
+        if (result == 0) {
+            result = count_tags_in(model, item);
         }
         model->documents++;
     }
-    if (replaced) {
-        if ((!same_words && count_words_out(model, replaced) < 0) ||
-            count_tags_out(model, replaced) < 0) {
-            return -ENOMEM;
+    if (replaced && result == 0) {
+        result = same_words ? 0 : count_words_out(model, replaced, scratch->base);
+        if (result == 0) {
+            result = count_tags_out(model, replaced);
         }
         model->documents--;
     }
     model->growth = propensity_growth((double)model->documents);
-    return 0;
+    return result;
 }
 
 /* --- learning -----------------------------------------------------------------------------------
@@ -202,26 +189,46 @@ double model_step(const struct model *model)
     return model->settings.weights.surrogate == SURROGATE_LOGISTIC ? LOGISTIC_STEPS * step : step;
 }
 
-static int learn_weights(struct model *model, const struct model_item *item,
-                         struct worklist_entry *entry, struct model_scratch *scratch)
+/* The item's tags, as each lane counts them: the shadow learns what everybody would, that every
+ * pair counts once. */
+static int fill_given(struct model *model, const struct model_item *item,
+                      struct model_scratch *scratch)
 {
     if (GROW(&scratch->given, &scratch->given_capacity, item->tag_count) < 0) {
         return -ENOMEM;
     }
+    for (size_t i = 0; i < item->tag_count; i++) {
+        uint32_t tag = item->tags[i];
+        double factor = model_given_factor(model, tag, is_examined(item, tag));
+        scratch->given[i] =
+            (struct weights_given){.tag = tag,
+                                   .tag_count = model->tags[tag].count,
+                                   .factors = {[WEIGHTS_MAIN] = factor, [WEIGHTS_SHADOW] = 1.0}};
+    }
+    return 0;
+}
+
+static size_t lanes_of(const struct model *model)
+{
+    return model->settings.shadow ? WEIGHTS_LANES : 1;
+}
+
+/* Learns the item in all lanes; what that moves of the entry's pairs becomes their own share. */
+static int learn_weights(struct model *model, const struct model_item *item,
+                         struct worklist_entry *entry, struct model_scratch *scratch)
+{
     uint32_t watched[WORKLIST_GAPS];
     float moves[WORKLIST_GAPS];
     for (uint32_t i = 0; i < entry->pair_count; i++) {
         watched[i] = entry->pairs[i].tag;
     }
-    for (size_t i = 0; i < item->tag_count; i++) {
-        uint32_t tag = item->tags[i];
-        scratch->given[i] = (struct weights_given){
-            .tag = tag,
-            .tag_count = model->tags[tag].count,
-            .factor = model_given_factor(model, tag, is_examined(item, tag))};
+    if (fill_given(model, item, scratch) < 0) {
+        return -ENOMEM;
     }
-    const struct weights_example example = {.x = scratch->x,
+    const struct weights_example example = {.number = item->number,
+                                            .x = scratch->x,
                                             .count = scratch->x_count,
+                                            .lanes = lanes_of(model),
                                             .given = scratch->given,
                                             .given_count = item->tag_count,
                                             .step = model_step(model),
@@ -235,34 +242,15 @@ static int learn_weights(struct model *model, const struct model_item *item,
     return result;
 }
 
-/* The shadow learns what everybody would: every pair counts once. */
-static int learn_shadow(struct model *model, const struct model_item *item,
-                        struct model_scratch *scratch)
-{
-    if (GROW(&scratch->shadow_given, &scratch->shadow_given_capacity, item->tag_count) < 0) {
-        return -ENOMEM;
-    }
-    for (size_t i = 0; i < item->tag_count; i++) {
-        scratch->shadow_given[i] = (struct weights_given){
-            .tag = item->tags[i], .tag_count = model->tags[item->tags[i]].count, .factor = 1.0};
-    }
-    const struct weights_example example = {.x = scratch->x,
-                                            .count = scratch->x_count,
-                                            .given = scratch->shadow_given,
-                                            .given_count = item->tag_count,
-                                            .step = model_step(model)};
-    return weights_learn(model->shadow, &example, scratch->shadow);
-}
-
 static int score(struct model *model, const struct model_item *item, struct model_scratch *scratch)
 {
-    if (model_weigh_features(model, item->features, item->feature_count, true, scratch) < 0 ||
-        weights_score(model->weights, scratch->x, scratch->x_count, scratch->weights) < 0) {
-        return -ENOMEM;
+    int result = model_weigh_features(model, item->features, item->feature_count, true, scratch);
+    if (result == 0) {
+        result = weights_admit(model->weights, scratch->base, scratch->x, scratch->x_count);
     }
-    return model->shadow
-               ? weights_score(model->shadow, scratch->x, scratch->x_count, scratch->shadow)
-               : 0;
+    return result == 0 ? weights_score(model->weights, scratch->base, scratch->x, scratch->x_count,
+                                       lanes_of(model), scratch->weights)
+                       : result;
 }
 
 /* The item's scores before it is learned: as evidence where it is new, and for its entry. */
@@ -270,8 +258,13 @@ static int take_stock(struct model *model, const struct model_item *item,
                       const struct model_item *replaced, struct model_scratch *scratch,
                       struct worklist_entry *ret_entry)
 {
-    const struct worklist_entry *old =
-        replaced ? worklist_find(model->worklist, replaced->number) : NULL;
+    struct worklist_entry listed;
+    int result =
+        replaced ? model_find_entry(model, scratch->base, replaced->number, &listed) : -ENOENT;
+    if (result < 0 && result != -ENOENT) {
+        return result;
+    }
+    const struct worklist_entry *old = result == 0 ? &listed : NULL;
     if (model_take_own(model, old, scratch) < 0 || model_mark_item(model, item, scratch) < 0) {
         return -ENOMEM;
     }
@@ -293,15 +286,17 @@ static int learn_item(struct model *model, const struct model_item *item,
                       const struct model_item *replaced, struct model_scratch *scratch)
 {
     struct worklist_entry entry;
-    if (score(model, item, scratch) < 0 || take_stock(model, item, replaced, scratch, &entry) < 0 ||
-        learn_weights(model, item, &entry, scratch) < 0 ||
-        (model->shadow && learn_shadow(model, item, scratch) < 0)) {
-        return -ENOMEM;
+    int result = score(model, item, scratch);
+    if (result == 0) {
+        result = take_stock(model, item, replaced, scratch, &entry);
     }
-    if (replaced && worklist_remove(model->worklist, replaced->number) < 0) {
-        return -ENOMEM;
+    if (result == 0) {
+        result = learn_weights(model, item, &entry, scratch);
     }
-    return worklist_put(model->worklist, &entry);
+    if (result == 0 && replaced) {
+        result = worklist_remove(model->worklist, scratch->base, replaced->number);
+    }
+    return result == 0 ? worklist_put(model->worklist, scratch->base, &entry) : result;
 }
 
 int model_learn(struct model *model, const struct model_item *item,
@@ -311,12 +306,12 @@ int model_learn(struct model *model, const struct model_item *item,
     if (item && item->number > model->latest) {
         model->latest = item->number;
     }
-    if (move_counts(model, item, replaced, scratch) < 0) {
-        return -ENOMEM;
+    int result = move_counts(model, item, replaced, scratch);
+    if (result < 0) {
+        return result;
     }
-    int result = 0;
     if (!item) {
-        result = worklist_remove(model->worklist, replaced->number);
+        result = worklist_remove(model->worklist, scratch->base, replaced->number);
     } else if (replaced && item->same_words) {
         result = model_examine(model, item, replaced, scratch);
     } else {

@@ -48,18 +48,18 @@ enum standing_band model_band_of(const struct model *model, uint32_t tag)
     return standing_band_of((double)model->tags[tag].count);
 }
 
-void model_find_best_of(const struct model *model, const struct weights *weights,
-                        const struct weights_scratch *scored, const float *own,
-                        struct candidates best[STANDING_BANDS])
+static void find_best(const struct model *model, const struct model_scratch *scratch,
+                      enum weights_lane lane, const float *own,
+                      struct candidates best[STANDING_BANDS])
 {
     for (size_t b = 0; b < STANDING_BANDS; b++) {
         best[b].count = 0;
     }
-    size_t touched_count = 0;
-    const uint32_t *touched = weights_touched(scored, &touched_count);
-    for (size_t i = 0; i < touched_count; i++) {
-        uint32_t tag = touched[i];
-        float score = weights_tag_score(weights, scored, tag) - (own ? own[tag] : 0.0F);
+    size_t count = 0;
+    const struct weights_rival *rivals = weights_rivals(scratch->weights, lane, &count);
+    for (size_t i = 0; i < count; i++) {
+        uint32_t tag = rivals[i].tag;
+        float score = rivals[i].score - (own ? own[tag] : 0.0F);
         if (score > WEIGHTS_FLOOR_SCORE && !model_is_unused(model, tag)) {
             candidates_add(&best[model_band_of(model, tag)], tag, score);
         }
@@ -68,7 +68,13 @@ void model_find_best_of(const struct model *model, const struct weights *weights
 
 void model_find_best(const struct model *model, struct model_scratch *scratch)
 {
-    model_find_best_of(model, model->weights, scratch->weights, scratch->own, scratch->best);
+    find_best(model, scratch, WEIGHTS_MAIN, scratch->own, scratch->best);
+}
+
+void model_find_best_of_shadow(const struct model *model, const struct model_scratch *scratch,
+                               struct candidates best[STANDING_BANDS])
+{
+    find_best(model, scratch, WEIGHTS_SHADOW, NULL, best);
 }
 
 bool model_was_known(const struct model *model, const struct model_scratch *scratch, uint32_t tag,

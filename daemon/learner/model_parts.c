@@ -6,32 +6,6 @@
 
 #include "daemon/learner/model_private.h"
 
-static int put_words(const struct model *model, const struct model_sink *sink)
-{
-    for (size_t i = 0; i < model->forgotten_count; i++) {
-        const struct forgotten_word *gone = &model->forgotten[i];
-        struct model_word word = {
-            .term = gone->term, .term_bytes = gone->term_bytes, .number = gone->number};
-        int result = sink->forgotten(sink->user, &word);
-        if (result != 0) {
-            return result;
-        }
-    }
-    for (size_t i = 0; i < model->changed_words.count; i++) {
-        struct model_word word = {.number = model->changed_words.list[i]};
-        word.term = dictionary_term(model->dictionary, word.number, &word.term_bytes);
-        if (!word.term) {
-            continue; /* changed and then forgotten */
-        }
-        word.count = dictionary_count(model->dictionary, word.number);
-        int result = sink->word(sink->user, &word);
-        if (result != 0) {
-            return result;
-        }
-    }
-    return 0;
-}
-
 static int put_tag(const struct model *model, const struct model_sink *sink, uint32_t number)
 {
     const struct tag_counts *counts = &model->tags[number];
@@ -40,10 +14,8 @@ static int put_tag(const struct model *model, const struct model_sink *sink, uin
                             .unprompted = counts->unprompted,
                             .trial_halves = counts->trial_halves,
                             .given_halves = counts->given_halves,
-                            .bias = weights_bias(model->weights, number)};
-    if (model->shadow) {
-        tag.shadow_bias = weights_bias(model->shadow, number);
-    }
+                            .bias = weights_bias(model->weights, WEIGHTS_MAIN, number),
+                            .shadow_bias = weights_bias(model->weights, WEIGHTS_SHADOW, number)};
     return sink->tag(sink->user, &tag);
 }
 
@@ -60,16 +32,7 @@ static int put_tags(const struct model *model, const struct model_sink *sink,
 static int put_weights(const struct model *model, const struct model_sink *sink)
 {
     int result = weights_changed_chunks(model->weights, sink->chunk, sink->user);
-    if (result == 0) {
-        result = put_tags(model, sink, weights_changed_tags(model->weights));
-    }
-    if (result == 0 && model->shadow) {
-        result = weights_changed_chunks(model->shadow, sink->shadow_chunk, sink->user);
-    }
-    if (result == 0 && model->shadow) {
-        result = put_tags(model, sink, weights_changed_tags(model->shadow));
-    }
-    return result;
+    return result == 0 ? put_tags(model, sink, weights_changed_tags(model->weights)) : result;
 }
 
 /* --- figures ------------------------------------------------------------------------------------
@@ -136,21 +99,38 @@ static int put_standing(const struct model *model, const struct model_sink *sink
     return result;
 }
 
+static int put_worklist(const struct model *model, const struct model_sink *sink)
+{
+    double values[WORKLIST_PART_VALUES];
+    int result = worklist_changes(model->worklist, sink->listed, sink->delisted, sink->user);
+    for (size_t part = 0; part < worklist_part_count() && result == 0; part++) {
+        if (worklist_part_changed(model->worklist, part)) {
+            size_t count = worklist_part_get(model->worklist, part, values);
+            result =
+                put_figures(sink, MODEL_FIGURES_WORKLIST, part, values, count * sizeof *values);
+        }
+    }
+    return result;
+}
+
 static struct model_totals totals_of(const struct model *model)
 {
-    return (struct model_totals){.documents = model->documents,
-                                 .factor_count = model->factor_count,
-                                 .factor_sum = model->factor_sum,
-                                 .latest = model->latest,
-                                 .evidence_items = model->evidence_items,
-                                 .curves_items = model->curves_items,
-                                 .fit_halves = model->fit_halves,
-                                 .evidence_gain = model->calibrators.gain};
+    struct model_totals totals = {.documents = model->documents,
+                                  .factor_count = model->factor_count,
+                                  .factor_sum = model->factor_sum,
+                                  .latest = model->latest,
+                                  .evidence_items = model->evidence_items,
+                                  .curves_items = model->curves_items,
+                                  .fit_halves = model->fit_halves,
+                                  .evidence_gain = model->calibrators.gain,
+                                  .postings = weights_postings(model->weights)};
+    dictionary_totals(model->dictionary, &totals.words);
+    return totals;
 }
 
 int model_changes(const struct model *model, const struct model_sink *sink)
 {
-    int result = put_words(model, sink);
+    int result = dictionary_changes(model->dictionary, sink->word, sink->forgotten, sink->user);
     if (result == 0) {
         result = put_weights(model, sink);
     }
@@ -161,7 +141,7 @@ int model_changes(const struct model *model, const struct model_sink *sink)
         result = put_standing(model, sink);
     }
     if (result == 0) {
-        result = worklist_changes(model->worklist, sink->listed, sink->delisted, sink->user);
+        result = put_worklist(model, sink);
     }
     if (result == 0) {
         const struct model_totals totals = totals_of(model);
@@ -172,15 +152,8 @@ int model_changes(const struct model *model, const struct model_sink *sink)
 
 void model_clean(struct model *model)
 {
-    for (size_t i = 0; i < model->forgotten_count; i++) {
-        free(model->forgotten[i].term);
-    }
-    model->forgotten_count = 0;
-    marks_clear(&model->changed_words);
+    dictionary_clean(model->dictionary);
     weights_clean(model->weights);
-    if (model->shadow) {
-        weights_clean(model->shadow);
-    }
     memset(model->calibrators.changed, 0, sizeof model->calibrators.changed);
     model->evidence_changed = false;
     model->curves_changed = false;
@@ -191,33 +164,6 @@ void model_clean(struct model *model)
 
 /* --- restoring ----------------------------------------------------------------------------------
  */
-
-int model_restore_word(struct model *model, const struct model_word *word)
-{
-    return dictionary_restore(model->dictionary, word->term, word->term_bytes, word->number,
-                              word->count);
-}
-
-static int restore_chunk(struct model *model, struct weights *weights,
-                         const struct weights_chunk *chunk)
-{
-    for (uint32_t i = 0; i < chunk->count; i++) {
-        if (model_reserve_tags(model, (size_t)chunk->tags[i] + 1) < 0) {
-            return -ENOMEM;
-        }
-    }
-    return weights_restore_chunk(weights, chunk);
-}
-
-int model_restore_chunk(struct model *model, const struct weights_chunk *chunk)
-{
-    return restore_chunk(model, model->weights, chunk);
-}
-
-int model_restore_shadow_chunk(struct model *model, const struct weights_chunk *chunk)
-{
-    return model->shadow ? restore_chunk(model, model->shadow, chunk) : -EINVAL;
-}
 
 int model_restore_tag(struct model *model, const struct model_tag *tag)
 {
@@ -230,9 +176,9 @@ int model_restore_tag(struct model *model, const struct model_tag *tag)
                                              .trial_halves = tag->trial_halves,
                                              .given_halves = tag->given_halves});
     model->trial_halves += tag->trial_halves;
-    int result = weights_restore_bias(model->weights, tag->number, tag->bias);
-    return result == 0 && model->shadow
-               ? weights_restore_bias(model->shadow, tag->number, tag->shadow_bias)
+    int result = weights_restore_bias(model->weights, WEIGHTS_MAIN, tag->number, tag->bias);
+    return result == 0 && model->settings.shadow
+               ? weights_restore_bias(model->weights, WEIGHTS_SHADOW, tag->number, tag->shadow_bias)
                : result;
 }
 
@@ -274,27 +220,11 @@ int model_restore_figures(struct model *model, const struct model_figures *figur
         return number == 0 ? restore_plain(&model->fit, sizeof model->fit, figures) : -EINVAL;
     case MODEL_FIGURES_STANDING:
         return standing_part_restore(model->standing, number, figures->values, figures->count);
+    case MODEL_FIGURES_WORKLIST:
+        return worklist_part_restore(model->worklist, number, figures->values, figures->count);
     default:
         return -EINVAL;
     }
-}
-
-int model_restore_entry(struct model *model, const struct worklist_entry *entry)
-{
-    if (entry->gap_count > WORKLIST_GAPS || entry->pair_count > WORKLIST_GAPS) {
-        return -EINVAL;
-    }
-    for (uint32_t i = 0; i < entry->gap_count; i++) {
-        if (entry->gaps[i].tag >= model->tag_count) {
-            return -EINVAL;
-        }
-    }
-    for (uint32_t i = 0; i < entry->pair_count; i++) {
-        if (entry->pairs[i].tag >= model->tag_count) {
-            return -EINVAL;
-        }
-    }
-    return worklist_put(model->worklist, entry);
 }
 
 int model_restore_totals(struct model *model, const struct model_totals *totals)
@@ -308,7 +238,8 @@ int model_restore_totals(struct model *model, const struct model_totals *totals)
     model->fit_halves = totals->fit_halves;
     model->calibrators.gain = totals->evidence_gain;
     model->growth = propensity_growth((double)model->documents);
-    return 0;
+    weights_restore_postings(model->weights, totals->postings);
+    return dictionary_restore_totals(model->dictionary, &totals->words);
 }
 
 int model_restored(struct model *model)
@@ -318,6 +249,5 @@ int model_restored(struct model *model)
     model->evidence_changed = false;
     model->curves_changed = false;
     standing_clean(model->standing);
-    worklist_clean(model->worklist);
-    return dictionary_restored(model->dictionary);
+    return worklist_restored(model->worklist);
 }

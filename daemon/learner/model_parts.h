@@ -2,9 +2,9 @@
  * model_parts: the model taken apart for those who store it. What has changed since the last
  * model_clean comes out part by part; what was stored goes back in the same parts.
  *
- * Storing: forgotten words first, then everything else in any order, then model_clean once it is
- * durable. Restoring: into a new model, words before chunks, tags before entries, model_restored at
- * the end.
+ * Storing: in the order in which model_changes gives them, then model_clean once it is durable:
+ * from then on words, chunks and entries are read from the base. Restoring: into a new model, what
+ * is held in memory (tags, figures, totals), in any order; model_restored at the end.
  */
 #ifndef UNDERTAG_MODEL_PARTS_H
 #define UNDERTAG_MODEL_PARTS_H
@@ -13,6 +13,7 @@
 #include <stdint.h>
 
 #include "daemon/learner/model.h"
+#include "daemon/text/dictionary.h"
 
 /* The counts that are no word's and no tag's. */
 struct model_totals {
@@ -24,13 +25,8 @@ struct model_totals {
     uint64_t curves_items;
     uint64_t fit_halves;
     double evidence_gain;
-};
-
-struct model_word {
-    const char *term; /* not ended by NUL */
-    size_t term_bytes;
-    uint32_t number;
-    uint32_t count;
+    struct dictionary_totals words;
+    uint64_t postings;
 };
 
 struct model_tag {
@@ -51,6 +47,7 @@ enum model_figures_kind {
     MODEL_FIGURES_AGREEMENT, /* by row, then the gain */
     MODEL_FIGURES_FIT,       /* the propensities' fit, number 0 */
     MODEL_FIGURES_STANDING,  /* the standing, by its parts */
+    MODEL_FIGURES_WORKLIST,  /* the worklist's counts, by their parts */
     MODEL_FIGURES_KINDS
 };
 
@@ -64,10 +61,9 @@ struct model_figures {
 /* Takes each part; anything but 0 ends the walk and is returned. */
 struct model_sink {
     void *user;
-    int (*forgotten)(void *user, const struct model_word *word); /* count is 0 */
-    int (*word)(void *user, const struct model_word *word);
+    int (*forgotten)(void *user, const struct dictionary_word *word); /* before all others */
+    int (*word)(void *user, const struct dictionary_word *word);
     int (*chunk)(void *user, const struct weights_chunk *chunk);
-    int (*shadow_chunk)(void *user, const struct weights_chunk *chunk);
     int (*tag)(void *user, const struct model_tag *tag);
     int (*figures)(void *user, const struct model_figures *figures);
     int (*delisted)(void *user, uint64_t number); /* gone from the worklist */
@@ -81,18 +77,9 @@ int model_changes(const struct model *model, const struct model_sink *sink)
 void model_clean(struct model *model);
 
 /* Each returns 0, -ENOMEM, or -EINVAL for what cannot belong to one model. */
-int model_restore_word(struct model *model, const struct model_word *word)
-    __attribute__((warn_unused_result));
-int model_restore_chunk(struct model *model, const struct weights_chunk *chunk)
-    __attribute__((warn_unused_result));
-/* -EINVAL too where this model has no shadow. */
-int model_restore_shadow_chunk(struct model *model, const struct weights_chunk *chunk)
-    __attribute__((warn_unused_result));
 int model_restore_tag(struct model *model, const struct model_tag *tag)
     __attribute__((warn_unused_result));
 int model_restore_figures(struct model *model, const struct model_figures *figures)
-    __attribute__((warn_unused_result));
-int model_restore_entry(struct model *model, const struct worklist_entry *entry)
     __attribute__((warn_unused_result));
 int model_restore_totals(struct model *model, const struct model_totals *totals)
     __attribute__((warn_unused_result));

@@ -22,13 +22,6 @@ struct tag_counts {
     uint32_t given_halves;
 };
 
-/* A term that has left the dictionary but not yet the store. */
-struct forgotten_word {
-    char *term;
-    size_t term_bytes;
-    uint32_t number;
-};
-
 struct model {
     struct model_settings settings;
     struct dictionary *dictionary;
@@ -53,7 +46,6 @@ struct model {
     struct propensity_fit fit;
     struct standing *standing;
     struct worklist *worklist;
-    struct weights *shadow; /* NULL: none */
     bool evidence_changed;
     bool curves_changed;
     bool fit_changed;
@@ -61,11 +53,6 @@ struct model {
     uint64_t factor_count;
     double factor_sum;
     uint64_t version; /* rises with every change; no two models ever have the same, none has 0 */
-
-    struct marks changed_words;
-    struct forgotten_word *forgotten;
-    size_t forgotten_count;
-    size_t forgotten_capacity;
 };
 
 /*
@@ -77,7 +64,7 @@ typedef uint64_t chance_sum;
 struct model_scratch {
     const struct base *base; /* through which its owner's thread reads; NULL: nothing is stored */
     struct weights_scratch *weights;
-    uint32_t *words; /* by feature: its word, or DICTIONARY_NONE */
+    struct base_word *words; /* by feature: its word, or DICTIONARY_NONE */
     size_t words_capacity;
     float *values; /* by feature: its x */
     size_t values_capacity;
@@ -101,9 +88,6 @@ struct model_scratch {
     chance_sum rest_belongs[CENSUS_BINS]; /* likewise */
     double most_of_rest;                  /* the greatest of those chances */
 
-    struct weights_scratch *shadow;
-    struct weights_given *shadow_given;
-    size_t shadow_given_capacity;
     struct candidates
         best[STANDING_BANDS]; /* of the item scored last; [STANDING_ALL] is not used */
     float *own; /* by tag: the item's own share, to be taken out of its score; otherwise 0 */
@@ -150,7 +134,7 @@ static inline bool model_is_unused(const struct model *model, uint32_t tag)
 static inline float model_score(const struct model *model, const struct model_scratch *scratch,
                                 uint32_t tag)
 {
-    return weights_tag_score(model->weights, scratch->weights, tag);
+    return weights_tag_score(model->weights, scratch->weights, WEIGHTS_MAIN, tag);
 }
 
 /* Whether a rising list of tags holds one. */
@@ -166,7 +150,7 @@ int model_weigh_features(const struct model *model, const struct feature *featur
     __attribute__((warn_unused_result));
 
 /* Scores words as they are known: those of a filed item, which is counted in, or of a draft, which
- * is not. Returns 0 or -ENOMEM. */
+ * is not. Returns 0, -ENOMEM or -EIO. */
 int model_score_words(const struct model *model, const struct feature *features, size_t count,
                       bool is_counted, struct model_scratch *scratch)
     __attribute__((warn_unused_result));
@@ -193,11 +177,10 @@ bool model_was_known(const struct model *model, const struct model_scratch *scra
 enum standing_band model_band_of(const struct model *model, uint32_t tag);
 
 /* Fills scratch->best with the best touched tags of each band, the item's own share taken out; or
- * `best` by the scores of one learner, `own` being NULL where nothing is taken out. */
+ * `best` by the scores of the shadow. */
 void model_find_best(const struct model *model, struct model_scratch *scratch);
-void model_find_best_of(const struct model *model, const struct weights *weights,
-                        const struct weights_scratch *scored, const float *own,
-                        struct candidates best[STANDING_BANDS]);
+void model_find_best_of_shadow(const struct model *model, const struct model_scratch *scratch,
+                               struct candidates best[STANDING_BANDS]);
 
 /* --- model_agreement: of the item just scored and marked, with scratch->best filled --- */
 

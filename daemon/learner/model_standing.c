@@ -124,12 +124,13 @@ void model_stand(struct model *model, const struct model_item *item,
     short_item.tag_count = item->tag_count < TRUTH_TAGS ? item->tag_count : TRUTH_TAGS;
     fill_truths(model, &short_item, scratch, room, truths);
     fill_lists(model, scratch, scratch->best, true, &with);
-    if (model->shadow) {
+    bool has_shadow = model->settings.shadow;
+    if (has_shadow) {
         struct candidates best[STANDING_BANDS];
-        model_find_best_of(model, model->shadow, scratch->shadow, NULL, best);
+        model_find_best_of_shadow(model, scratch, best);
         fill_lists(model, scratch, best, false, &without);
     }
-    standing_add(model->standing, truths, with.lists, model->shadow ? without.lists : NULL);
+    standing_add(model->standing, truths, with.lists, has_shadow ? without.lists : NULL);
 }
 
 /* --- proposals that the desk was prompted with --------------------------------------------------

@@ -28,6 +28,11 @@ void standing_free(struct standing *standing)
     free(standing);
 }
 
+uint64_t standing_bytes(const struct standing *standing)
+{
+    return sizeof *standing;
+}
+
 const char *standing_band_name(enum standing_band band)
 {
     return band_names[band];

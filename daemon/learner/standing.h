@@ -42,6 +42,7 @@ struct standing;
 /* Returns 0 or -ENOMEM. */
 int standing_new(struct standing **ret_standing) __attribute__((warn_unused_result));
 void standing_free(struct standing *standing);
+uint64_t standing_bytes(const struct standing *standing);
 
 /* "all", "head", "torso", "tail". */
 const char *standing_band_name(enum standing_band band);

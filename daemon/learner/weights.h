@@ -16,8 +16,8 @@
  * every item, so it is held: an example of a tag that fewer than ten items have leaves it at 0 or
  * below.
  *
- * Two learners may share the postings, each in a lane of its own: the shadow sees the same items and
- * learns them with other factors.
+ * Two learners may share the postings, each in a lane of its own: the shadow sees the same items
+ * and learns them with other factors.
  *
  * Nothing here is locked: many threads may score (each with its own scratch and base) while none
  * changes the weights.

@@ -10,9 +10,10 @@
 
 /* Adds a chunk's part of the scores. The numbers of lanes are constants where this is called, so
  * that there is no loop over them; `x` is the feature's value by the step of a cell. */
-static inline __attribute__((always_inline)) void
-add_postings(const uint32_t *numbers, size_t count, size_t stride, size_t lanes, float x,
-             struct weights_scratch *scratch)
+static inline __attribute__((always_inline)) void add_postings(const uint32_t *numbers,
+                                                               size_t count, size_t stride,
+                                                               size_t lanes, float x,
+                                                               struct weights_scratch *scratch)
 {
     float *sums = scratch->sums;
     uint8_t *is_touched = scratch->is_touched;

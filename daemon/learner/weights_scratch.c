@@ -36,13 +36,13 @@ void weights_scratch_free(struct weights_scratch *scratch)
 
 uint64_t weights_scratch_bytes(const struct weights_scratch *scratch)
 {
-    uint64_t bytes = sizeof *scratch +
-                     scratch->tag_capacity * (scratch->lanes_room * sizeof *scratch->sums +
-                                              sizeof *scratch->is_touched +
-                                              sizeof *scratch->touched) +
-                     scratch->slot_capacity * sizeof *scratch->slot + scratch->given_capacity +
-                     scratch->active_capacity * sizeof *scratch->active +
-                     scratch->hit_capacity * sizeof *scratch->hits;
+    uint64_t bytes =
+        sizeof *scratch +
+        scratch->tag_capacity * (scratch->lanes_room * sizeof *scratch->sums +
+                                 sizeof *scratch->is_touched + sizeof *scratch->touched) +
+        scratch->slot_capacity * sizeof *scratch->slot + scratch->given_capacity +
+        scratch->active_capacity * sizeof *scratch->active +
+        scratch->hit_capacity * sizeof *scratch->hits;
     for (size_t lane = 0; lane < WEIGHTS_LANES; lane++) {
         bytes += scratch->rivals[lane].capacity * sizeof *scratch->rivals[lane].list;
     }

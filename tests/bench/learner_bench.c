@@ -54,8 +54,8 @@ static int number_tags(struct bench *bench, const json_t *tags, size_t *ret_coun
     }
     for (size_t i = 0; i < count; i++) {
         const json_t *tag = json_array_get(tags, i);
-        if (dictionary_intern(bench->tag_names, json_string_value(tag), json_string_length(tag),
-                              &bench->tags[i]) < 0) {
+        if (dictionary_intern(bench->tag_names, NULL, json_string_value(tag),
+                              json_string_length(tag), &bench->tags[i]) < 0) {
             return -1;
         }
     }

@@ -1,0 +1,21 @@
+#include "daemon/memory_shares.h"
+
+/* The program itself, its libraries, and what answers are made of. */
+static const uint64_t PROGRAM_BYTES = 8U << 20U;
+
+enum {
+    CHANGED_PART = 4,   /* a quarter of the budget is for storing */
+    LEAST_PART = 8,     /* an eighth of it is always left to the caches */
+    DICTIONARY_PART = 4 /* a quarter of what is left is for words */
+};
+
+struct memory_shares memory_shares_of(uint64_t budget, uint64_t taken)
+{
+    uint64_t changed = budget / CHANGED_PART;
+    uint64_t gone = changed + PROGRAM_BYTES + taken;
+    uint64_t least = budget / LEAST_PART;
+    uint64_t left = budget > gone + least ? budget - gone : least;
+    return (struct memory_shares){.dictionary = left / DICTIONARY_PART,
+                                  .weights = left - left / DICTIONARY_PART,
+                                  .changed = changed};
+}

@@ -134,7 +134,7 @@ int worklist_put(struct worklist *worklist, const struct base *base,
     assert(entry->number > 0);
     struct worklist_entry replaced;
     int result = find_replaced(worklist, base, entry->number, &replaced);
-    if (result < 0 && result != -ENOENT) {
+    if (result != 0 && result != -ENOENT) {
         return result;
     }
     bool is_there = result == 0;
@@ -152,7 +152,7 @@ int worklist_remove(struct worklist *worklist, const struct base *base, uint64_t
 {
     struct worklist_entry replaced;
     int result = find_replaced(worklist, base, number, &replaced);
-    if (result < 0) {
+    if (result != 0) {
         return result == -ENOENT ? 0 : result;
     }
     if (overlay_remove(&worklist->overlay, number) < 0) {

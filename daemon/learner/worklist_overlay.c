@@ -123,7 +123,8 @@ const struct worklist_entry *overlay_entry(const struct worklist_overlay *overla
 /* Puts an empty block in, which is to be filled at once. */
 static int add_block(struct worklist_overlay *overlay, size_t at)
 {
-    if (GROW(&overlay->blocks, &overlay->block_capacity, overlay->block_count + 1) < 0) {
+    if (grow_array((void **)&overlay->blocks, &overlay->block_capacity, overlay->block_count + 1,
+                   sizeof(struct overlay_block *)) < 0) {
         return -ENOMEM;
     }
     struct overlay_block *added = malloc(sizeof *added);

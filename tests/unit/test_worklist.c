@@ -305,6 +305,18 @@ static void what_was_never_stored_is_not_told_as_gone(void **state)
     assert_changes(*state, "4@40 ", "");
 }
 
+static void of_many_that_come_and_go_nothing_is_told(void **state)
+{
+    for (uint64_t i = 1; i <= 1000; i++) {
+        put(*state, i, i);
+    }
+    for (uint64_t i = 1; i <= 1000; i++) {
+        take_out(*state, i);
+    }
+    assert_size(*state, 0);
+    assert_changes(*state, "", "");
+}
+
 static void what_comes_back_is_not_told_as_gone(void **state)
 {
     put_two_and_store(*state);
@@ -354,6 +366,7 @@ int main(void)
         TEST(what_was_taken_out_is_told_once_by_its_number),
         TEST(what_was_changed_and_then_taken_out_is_told_as_gone),
         TEST(what_was_never_stored_is_not_told_as_gone),
+        TEST(of_many_that_come_and_go_nothing_is_told),
         TEST(what_comes_back_is_not_told_as_gone),
         TEST(whoever_stores_may_refuse),
     };

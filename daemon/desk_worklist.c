@@ -78,7 +78,7 @@ static int copy_page(struct worklist_job *job, const struct model *model, const 
     }
     for (size_t i = 0; i < job->page_count; i++) {
         struct listed *listed = &job->page[i];
-        int result = worklist_find(model_worklist(model), base, first[i].number, &listed->entry);
+        int result = model_find_entry(model, base, first[i].number, &listed->entry);
         if (result < 0) {
             return result == -ENOENT ? -EIO : result; /* it has just been ranked */
         }

@@ -50,7 +50,8 @@ static int load_tag(void *user, const struct model_store_tag *tag)
                                   .trial_halves = tag->trial_halves,
                                   .given_halves = tag->given_halves,
                                   .bias = {tag->bias, tag->bias_accumulator},
-                                  .shadow_bias = {tag->shadow_bias, tag->shadow_bias_accumulator}});
+                                  .shadow_bias = {tag->shadow_bias, tag->shadow_bias_accumulator},
+                                  .given_count = tag->last_count});
 }
 
 static int load_figures(void *user, const struct model_store_figures *figures)
@@ -85,7 +86,8 @@ static struct model_totals totals_of(const struct model_store_head *head)
         .fit_halves = head->fit_halves,
         .evidence_gain = head->evidence_gain,
         .words = {.next_number = (uint32_t)head->next_word, .size = (uint32_t)head->words},
-        .postings = head->postings};
+        .postings = head->postings,
+        .pruned = {.unspecific = head->pruned_unspecific, .tiny = head->pruned_tiny}};
 }
 
 int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
@@ -142,6 +144,12 @@ static int store_word(void *user, const struct dictionary_word *word)
                                 storing->error);
 }
 
+static int cut_chunk(void *user, const struct weights_chunk *chunk)
+{
+    struct storing *storing = user;
+    return model_store_remove_chunk(storing->writing, chunk->word, chunk->number, storing->error);
+}
+
 static int store_chunk(void *user, const struct weights_chunk *chunk)
 {
     struct storing *storing = user;
@@ -166,7 +174,8 @@ static int store_tag(void *user, const struct model_tag *tag)
                                         .bias = tag->bias.value,
                                         .bias_accumulator = tag->bias.accumulator,
                                         .shadow_bias = tag->shadow_bias.value,
-                                        .shadow_bias_accumulator = tag->shadow_bias.accumulator},
+                                        .shadow_bias_accumulator = tag->shadow_bias.accumulator,
+                                        .last_count = tag->given_count},
         storing->error);
 }
 
@@ -231,7 +240,9 @@ static int store_totals(void *user, const struct model_totals *totals)
                                     .evidence_gain = totals->evidence_gain,
                                     .words = totals->words.size,
                                     .next_word = totals->words.next_number,
-                                    .postings = totals->postings};
+                                    .postings = totals->postings,
+                                    .pruned_unspecific = totals->pruned.unspecific,
+                                    .pruned_tiny = totals->pruned.tiny};
     size_t bytes = strlen(storing->origin->settings);
     assert(bytes < sizeof head.settings);
     memcpy(head.store_uuid, storing->origin->store_uuid, STORE_UUID_BYTES);
@@ -247,6 +258,7 @@ int model_keeper_store(struct model_store *store, const struct model *model,
     const struct model_sink sink = {.user = &storing,
                                     .forgotten = store_forgotten,
                                     .word = store_word,
+                                    .cut_chunk = cut_chunk,
                                     .chunk = store_chunk,
                                     .tag = store_tag,
                                     .figures = store_figures,

@@ -122,6 +122,8 @@ int model_store_put_head(struct model_store_writing *writing, const struct model
     codec_put_u64(record, head->words);
     codec_put_u64(record, head->next_word);
     codec_put_u64(record, head->postings);
+    codec_put_u64(record, head->pruned_unspecific);
+    codec_put_u64(record, head->pruned_tiny);
     codec_put_blob(record, head->settings, strlen(head->settings));
     if (record->failed) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
@@ -161,6 +163,16 @@ int model_store_put_word(struct model_store_writing *writing, const struct model
     codec_put_u32(record, word->number);
     codec_put_u32(record, word->count);
     return put_record(writing, MODEL_WORDS, kv_bytes_of(word->term, word->term_bytes), error);
+}
+
+int model_store_remove_chunk(struct model_store_writing *writing, uint32_t word, uint32_t number,
+                             struct store_error *error)
+{
+    unsigned char key[8];
+    codec_key_u32(key, word);
+    codec_key_u32(key + 4, number);
+    int result = kv_delete(writing->txn, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
+    return result == STORE_NOT_FOUND ? STORE_OK : result;
 }
 
 static int delete_chunks(struct model_store_writing *writing, uint32_t word,
@@ -210,6 +222,7 @@ int model_store_put_tag(struct model_store_writing *writing, const struct model_
     codec_put_f32(record, tag->bias_accumulator);
     codec_put_f32(record, tag->shadow_bias);
     codec_put_f32(record, tag->shadow_bias_accumulator);
+    codec_put_u32(record, tag->last_count);
     unsigned char key[4];
     codec_key_u32(key, tag->number);
     return put_record(writing, MODEL_TAGS, kv_bytes_of(key, sizeof key), error);

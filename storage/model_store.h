@@ -40,6 +40,8 @@ struct model_store_head {
     uint64_t words; /* that some item holds */
     uint64_t next_word;
     uint64_t postings;
+    uint64_t pruned_unspecific;
+    uint64_t pruned_tiny;
 };
 
 struct model_store_word {
@@ -66,6 +68,7 @@ struct model_store_tag {
     float bias_accumulator;
     float shadow_bias;
     float shadow_bias_accumulator;
+    uint32_t last_count;
 };
 
 enum {
@@ -145,6 +148,9 @@ int model_store_forget_word(struct model_store_writing *writing,
 int model_store_put_chunk(struct model_store_writing *writing,
                           const struct model_store_chunk *chunk, struct store_error *error)
     __attribute__((warn_unused_result));
+/* A chunk that is not there is no error. */
+int model_store_remove_chunk(struct model_store_writing *writing, uint32_t word, uint32_t number,
+                             struct store_error *error) __attribute__((warn_unused_result));
 int model_store_put_tag(struct model_store_writing *writing, const struct model_store_tag *tag,
                         struct store_error *error) __attribute__((warn_unused_result));
 int model_store_put_figures(struct model_store_writing *writing,

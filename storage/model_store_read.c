@@ -33,6 +33,8 @@ static int decode_head(struct kv_bytes value, struct model_store_head *ret_head,
     head.words = codec_get_u64(&reader);
     head.next_word = codec_get_u64(&reader);
     head.postings = codec_get_u64(&reader);
+    head.pruned_unspecific = codec_get_u64(&reader);
+    head.pruned_tiny = codec_get_u64(&reader);
     size_t bytes = 0;
     const char *settings = codec_get_blob(&reader, &bytes);
     if (reader.failed || format == 0 || bytes >= sizeof head.settings) {
@@ -96,6 +98,7 @@ static int load_tag(void *user, struct kv_cursor *at, struct kv_bytes key, struc
     tag.bias_accumulator = codec_get_f32(&reader);
     tag.shadow_bias = codec_get_f32(&reader);
     tag.shadow_bias_accumulator = codec_get_f32(&reader);
+    tag.last_count = codec_get_u32(&reader);
     return loading->sink->tag(loading->sink->user, &tag);
 }
 

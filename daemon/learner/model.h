@@ -167,6 +167,11 @@ int model_relist(struct model *model, const struct base *base, const struct work
 int model_delist(struct model *model, const struct base *base, uint64_t number)
     __attribute__((warn_unused_result));
 
+/* The worklist's entry of an item, with tags that the model knows. Returns 0, -ENOENT, -ENOMEM or
+ * -EIO. */
+int model_find_entry(const struct model *model, const struct base *base, uint64_t number,
+                     struct worklist_entry *ret_entry) __attribute__((warn_unused_result));
+
 /* P(missing | not given) of a gap of an entry of the worklist, as of now. */
 double model_gap_chance(const struct model *model, const struct worklist_entry *entry,
                         const struct worklist_gap *gap);

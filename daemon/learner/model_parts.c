@@ -15,7 +15,8 @@ static int put_tag(const struct model *model, const struct model_sink *sink, uin
                             .trial_halves = counts->trial_halves,
                             .given_halves = counts->given_halves,
                             .bias = weights_bias(model->weights, WEIGHTS_MAIN, number),
-                            .shadow_bias = weights_bias(model->weights, WEIGHTS_SHADOW, number)};
+                            .shadow_bias = weights_bias(model->weights, WEIGHTS_SHADOW, number),
+                            .given_count = weights_tag_count(model->weights, number)};
     return sink->tag(sink->user, &tag);
 }
 
@@ -31,7 +32,10 @@ static int put_tags(const struct model *model, const struct model_sink *sink,
 
 static int put_weights(const struct model *model, const struct model_sink *sink)
 {
-    int result = weights_changed_chunks(model->weights, sink->chunk, sink->user);
+    int result = weights_cut_chunks(model->weights, sink->cut_chunk, sink->user);
+    if (result == 0) {
+        result = weights_changed_chunks(model->weights, sink->chunk, sink->user);
+    }
     return result == 0 ? put_tags(model, sink, weights_changed_tags(model->weights)) : result;
 }
 
@@ -123,7 +127,8 @@ static struct model_totals totals_of(const struct model *model)
                                   .curves_items = model->curves_items,
                                   .fit_halves = model->fit_halves,
                                   .evidence_gain = model->calibrators.gain,
-                                  .postings = weights_postings(model->weights)};
+                                  .postings = weights_postings(model->weights),
+                                  .pruned = weights_pruned(model->weights)};
     dictionary_totals(model->dictionary, &totals.words);
     return totals;
 }
@@ -177,6 +182,9 @@ int model_restore_tag(struct model *model, const struct model_tag *tag)
                                              .given_halves = tag->given_halves});
     model->trial_halves += tag->trial_halves;
     int result = weights_restore_bias(model->weights, WEIGHTS_MAIN, tag->number, tag->bias);
+    if (result == 0) {
+        result = weights_restore_count(model->weights, tag->number, tag->given_count);
+    }
     return result == 0 && model->settings.shadow
                ? weights_restore_bias(model->weights, WEIGHTS_SHADOW, tag->number, tag->shadow_bias)
                : result;
@@ -238,7 +246,7 @@ int model_restore_totals(struct model *model, const struct model_totals *totals)
     model->fit_halves = totals->fit_halves;
     model->calibrators.gain = totals->evidence_gain;
     model->growth = propensity_growth((double)model->documents);
-    weights_restore_postings(model->weights, totals->postings);
+    weights_restore_postings(model->weights, totals->postings, totals->pruned);
     return dictionary_restore_totals(model->dictionary, &totals->words);
 }
 

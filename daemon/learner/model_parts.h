@@ -27,6 +27,7 @@ struct model_totals {
     double evidence_gain;
     struct dictionary_totals words;
     uint64_t postings;
+    struct weights_pruned pruned;
 };
 
 struct model_tag {
@@ -37,6 +38,7 @@ struct model_tag {
     uint32_t given_halves;
     struct weights_bias bias;
     struct weights_bias shadow_bias; /* zeros without a shadow */
+    uint32_t given_count;            /* items that had it when it was given last */
 };
 
 /* What is kept as plain lists of numbers. */
@@ -63,6 +65,7 @@ struct model_sink {
     void *user;
     int (*forgotten)(void *user, const struct dictionary_word *word); /* before all others */
     int (*word)(void *user, const struct dictionary_word *word);
+    int (*cut_chunk)(void *user, const struct weights_chunk *chunk); /* is no more */
     int (*chunk)(void *user, const struct weights_chunk *chunk);
     int (*tag)(void *user, const struct model_tag *tag);
     int (*figures)(void *user, const struct model_figures *figures);

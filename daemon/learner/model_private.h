@@ -213,11 +213,6 @@ void model_refit_propensities(struct model *model);
 
 /* --- model_worklist --- */
 
-/* The worklist's entry of an item, with tags that the model knows. Returns 0, -ENOENT, -ENOMEM or
- * -EIO. */
-int model_find_entry(const struct model *model, const struct base *base, uint64_t number,
-                     struct worklist_entry *ret_entry) __attribute__((warn_unused_result));
-
 /* Puts what the entry says of the item's own shares into scratch->own, and takes it out again. */
 int model_take_own(const struct model *model, const struct worklist_entry *entry,
                    struct model_scratch *scratch) __attribute__((warn_unused_result));

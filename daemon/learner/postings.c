@@ -24,6 +24,9 @@ struct postings {
     uint32_t *changed; /* places; one that was dropped and taken again may stand here twice */
     size_t changed_count;
     size_t changed_capacity;
+    struct postings_cut *cuts;
+    size_t cut_count;
+    size_t cut_capacity;
     uint64_t number_bytes;
     size_t hand;
 };
@@ -55,6 +58,7 @@ void postings_free(struct postings *postings)
     free(postings->chunks);
     free(postings->free_places);
     free(postings->changed);
+    free(postings->cuts);
     index_deinit(&postings->index);
     free(postings);
 }
@@ -74,7 +78,8 @@ uint64_t postings_bytes(const struct postings *postings)
     return sizeof *postings + index_bytes(&postings->index) +
            postings->chunk_capacity * sizeof *postings->chunks +
            postings->free_capacity * sizeof *postings->free_places +
-           postings->changed_capacity * sizeof *postings->changed + postings->number_bytes;
+           postings->changed_capacity * sizeof *postings->changed +
+           postings->cut_capacity * sizeof *postings->cuts + postings->number_bytes;
 }
 
 /* --- places -------------------------------------------------------------------------------------
@@ -134,6 +139,16 @@ uint32_t postings_chunks(const struct postings *postings, uint32_t word)
 uint32_t postings_place(const struct postings *postings, uint32_t word, uint32_t number)
 {
     return index_places(index_find(&postings->index, word))[number] - 1;
+}
+
+size_t postings_count(const struct postings *postings, uint32_t word)
+{
+    const struct index_word *entry = index_find(&postings->index, word);
+    if (!entry || entry->chunk_count == 0) {
+        return 0;
+    }
+    uint32_t last = entry->chunk_count - 1; /* all others are full */
+    return (size_t)last * POSTINGS_CHUNK + postings->chunks[index_places(entry)[last] - 1].count;
 }
 
 /* --- from the base ------------------------------------------------------------------------------
@@ -335,6 +350,52 @@ int postings_append(struct postings *postings, uint32_t word, uint32_t tag, uint
     return 0;
 }
 
+/* Lets the chunks from a number on go, and notes that the store shall forget them. */
+static int cut_chunks(struct postings *postings, struct index_word *entry, uint32_t from)
+{
+    if (from == entry->chunk_count) {
+        return 0;
+    }
+    if (GROW(&postings->cuts, &postings->cut_capacity, postings->cut_count + 1) < 0) {
+        return -ENOMEM;
+    }
+    postings->cuts[postings->cut_count++] =
+        (struct postings_cut){.word = entry->key - 1, .from = from, .until = entry->chunk_count};
+    for (uint32_t number = from; number < entry->chunk_count; number++) {
+        uint32_t place = index_places(entry)[number] - 1;
+        index_set_place(entry, number, 0);
+        free_place(postings, place);
+    }
+    index_cut_chunks(entry, from);
+    return 0;
+}
+
+int postings_replace(struct postings *postings, uint32_t word, const uint32_t *numbers,
+                     size_t count)
+{
+    struct index_word *entry = index_find(&postings->index, word);
+    uint32_t chunks = (uint32_t)((count + POSTINGS_CHUNK - 1) / POSTINGS_CHUNK);
+    if (cut_chunks(postings, entry, chunks) < 0) {
+        return -ENOMEM;
+    }
+    for (uint32_t number = 0; number < chunks; number++) {
+        uint32_t place = index_places(entry)[number] - 1;
+        struct chunk *chunk = &postings->chunks[place];
+        size_t first = (size_t)number * POSTINGS_CHUNK;
+        size_t left = count - first;
+        if (postings_touch(postings, place) < 0) {
+            return -ENOMEM;
+        }
+        chunk->count = (uint16_t)(left < POSTINGS_CHUNK ? left : POSTINGS_CHUNK);
+        memcpy(chunk->numbers, numbers + first * postings->stride,
+               chunk->count * postings->stride * sizeof *numbers);
+    }
+    if (chunks == 0) {
+        index_remove(&postings->index, word);
+    }
+    return 0;
+}
+
 uint64_t postings_drop(struct postings *postings, uint32_t word)
 {
     const struct index_word *entry = index_find(&postings->index, word);
@@ -410,8 +471,15 @@ size_t postings_changed_count(const struct postings *postings)
     return postings->changed_count;
 }
 
+const struct postings_cut *postings_cuts(const struct postings *postings, size_t *ret_count)
+{
+    *ret_count = postings->cut_count;
+    return postings->cuts;
+}
+
 void postings_clean(struct postings *postings)
 {
+    postings->cut_count = 0;
     for (size_t i = 0; i < postings->changed_count; i++) {
         postings->chunks[postings->changed[i]].is_changed = false;
     }

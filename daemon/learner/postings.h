@@ -76,9 +76,11 @@ int postings_walk_next(struct postings_walk *walk, const uint32_t **ret_numbers,
 int postings_admit(struct postings *postings, const struct base *base, uint32_t word)
     __attribute__((warn_unused_result));
 
-/* The number of chunks of an admitted word, and the place of one of them. */
+/* The number of chunks of an admitted word, the place of one of them, and how many postings they
+ * hold together. */
 uint32_t postings_chunks(const struct postings *postings, uint32_t word);
 uint32_t postings_place(const struct postings *postings, uint32_t word, uint32_t number);
+size_t postings_count(const struct postings *postings, uint32_t word);
 
 /* The chunk at a place; valid until something is admitted, appended or trimmed. */
 struct chunk *postings_at(const struct postings *postings, uint32_t place);
@@ -91,6 +93,11 @@ int postings_touch(struct postings *postings, uint32_t place) __attribute__((war
 int postings_append(struct postings *postings, uint32_t word, uint32_t tag, uint32_t *ret_place,
                     uint32_t *ret_at) __attribute__((warn_unused_result));
 
+/* Puts other postings in the place of an admitted word's, at most as many, into as few chunks as
+ * they need. Returns 0 or -ENOMEM. */
+int postings_replace(struct postings *postings, uint32_t word, const uint32_t *numbers,
+                     size_t count) __attribute__((warn_unused_result));
+
 /* Drops an admitted word's chunks, changed or not; how many postings they had. */
 uint64_t postings_drop(struct postings *postings, uint32_t word);
 
@@ -101,6 +108,16 @@ uint64_t postings_drop(struct postings *postings, uint32_t word);
 int postings_changed(const struct postings *postings, uint32_t **ret_places, size_t *ret_count)
     __attribute__((warn_unused_result));
 size_t postings_changed_count(const struct postings *postings);
+
+/* The chunks of a word that postings_replace has left over, from the first one on. */
+struct postings_cut {
+    uint32_t word;
+    uint32_t from;
+    uint32_t until; /* the number behind the last one */
+};
+
+/* What was cut off since the last postings_clean; it goes before what has changed. */
+const struct postings_cut *postings_cuts(const struct postings *postings, size_t *ret_count);
 
 /* All is stored. */
 void postings_clean(struct postings *postings);

@@ -134,6 +134,11 @@ int index_add_chunk(struct postings_index *index, struct index_word *entry)
     return 0;
 }
 
+void index_cut_chunks(struct index_word *entry, uint32_t from)
+{
+    entry->chunk_count = from;
+}
+
 void index_set_place(struct index_word *entry, uint32_t number, uint32_t place)
 {
     uint32_t *places = entry->capacity > 0 ? entry->places.many : &entry->places.one;

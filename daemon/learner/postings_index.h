@@ -50,6 +50,9 @@ static inline const uint32_t *index_places(const struct index_word *entry)
     return entry->capacity > 0 ? entry->places.many : &entry->places.one;
 }
 
+/* Forgets the chunks from a number on; none of them is in memory. */
+void index_cut_chunks(struct index_word *entry, uint32_t from);
+
 /* Notes where a chunk is: 1 + place, or 0 for nowhere. */
 void index_set_place(struct index_word *entry, uint32_t number, uint32_t place);
 

@@ -53,6 +53,11 @@ uint64_t weights_postings(const struct weights *weights)
     return weights->posting_count;
 }
 
+struct weights_pruned weights_pruned(const struct weights *weights)
+{
+    return weights->pruned;
+}
+
 uint64_t weights_bytes(const struct weights *weights)
 {
     return sizeof *weights + postings_bytes(weights->postings) +
@@ -107,6 +112,23 @@ void weights_trim(struct weights *weights, uint64_t bytes)
 /* --- storing ------------------------------------------------------------------------------------
  */
 
+int weights_cut_chunks(const struct weights *weights,
+                       int (*each)(void *user, const struct weights_chunk *chunk), void *user)
+{
+    size_t count = 0;
+    const struct postings_cut *cuts = postings_cuts(weights->postings, &count);
+    for (size_t i = 0; i < count; i++) {
+        for (uint32_t number = cuts[i].from; number < cuts[i].until; number++) {
+            const struct weights_chunk gone = {.word = cuts[i].word, .number = number};
+            int result = each(user, &gone);
+            if (result != 0) {
+                return result;
+            }
+        }
+    }
+    return 0;
+}
+
 int weights_changed_chunks(const struct weights *weights,
                            int (*each)(void *user, const struct weights_chunk *chunk), void *user)
 {
@@ -137,6 +159,11 @@ struct weights_bias weights_bias(const struct weights *weights, enum weights_lan
     return tag < weights->tag_count ? weights->tags[tag].biases[lane] : (struct weights_bias){0};
 }
 
+uint32_t weights_tag_count(const struct weights *weights, uint32_t tag)
+{
+    return tag < weights->tag_count ? weights->tags[tag].count : 0;
+}
+
 const struct marks *weights_changed_tags(const struct weights *weights)
 {
     return &weights->changed_tags;
@@ -164,7 +191,18 @@ int weights_restore_bias(struct weights *weights, enum weights_lane lane, uint32
     return 0;
 }
 
-void weights_restore_postings(struct weights *weights, uint64_t postings)
+int weights_restore_count(struct weights *weights, uint32_t tag, uint32_t count)
+{
+    if (weights_reserve_tags(weights, (size_t)tag + 1) < 0) {
+        return -ENOMEM;
+    }
+    weights->tags[tag].count = count;
+    return 0;
+}
+
+void weights_restore_postings(struct weights *weights, uint64_t postings,
+                              struct weights_pruned pruned)
 {
     weights->posting_count = postings;
+    weights->pruned = pruned;
 }

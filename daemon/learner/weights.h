@@ -83,6 +83,15 @@ int weights_reserve_tags(struct weights *weights, size_t count) __attribute__((w
 /* Postings over all words, in memory or not. */
 uint64_t weights_postings(const struct weights *weights);
 
+/* Postings that were left out again when a word's were put in order: those of words that had become
+ * too common for the tag (see specificity), and those with next to no weight. */
+struct weights_pruned {
+    uint64_t unspecific;
+    uint64_t tiny;
+};
+
+struct weights_pruned weights_pruned(const struct weights *weights);
+
 /* Bytes held in memory. */
 uint64_t weights_bytes(const struct weights *weights);
 
@@ -169,6 +178,11 @@ struct weights_chunk {
     struct base_bytes bytes;
 };
 
+/* Calls `each` for every chunk that is no more (its bytes are empty); likewise. */
+int weights_cut_chunks(const struct weights *weights,
+                       int (*each)(void *user, const struct weights_chunk *chunk), void *user)
+    __attribute__((warn_unused_result));
+
 /* Calls `each` for every changed chunk, by rising word and number; anything but 0 ends it and is
  * returned. -ENOMEM. */
 int weights_changed_chunks(const struct weights *weights,
@@ -184,6 +198,9 @@ struct weights_bias {
     float accumulator;
 };
 
+/* How many items had the tag when it was given last. */
+uint32_t weights_tag_count(const struct weights *weights, uint32_t tag);
+
 struct weights_bias weights_bias(const struct weights *weights, enum weights_lane lane,
                                  uint32_t tag);
 
@@ -197,10 +214,14 @@ int weights_mark_tag(struct weights *weights, uint32_t tag) __attribute__((warn_
 /* Marks everything as stored. */
 void weights_clean(struct weights *weights);
 
-/* Puts back what was stored and is kept in memory: a tag's bias in a lane that there is, and the
- * number of postings. Nothing is marked as changed. Returns 0 or -ENOMEM. */
+/* Puts back what was stored and is kept in memory: a tag's bias in a lane that there is, the tag's
+ * count when it was given last, and the numbers of postings. Nothing is marked as changed. Returns
+ * 0 or -ENOMEM. */
 int weights_restore_bias(struct weights *weights, enum weights_lane lane, uint32_t tag,
                          struct weights_bias bias) __attribute__((warn_unused_result));
-void weights_restore_postings(struct weights *weights, uint64_t postings);
+int weights_restore_count(struct weights *weights, uint32_t tag, uint32_t count)
+    __attribute__((warn_unused_result));
+void weights_restore_postings(struct weights *weights, uint64_t postings,
+                              struct weights_pruned pruned);
 
 #endif

@@ -115,6 +115,7 @@ static int activate_lane(const struct learning *learning, enum weights_lane lane
                                               .sign = 1.0F,
                                               .factor = given->factors[lane]};
         learning->scratch->is_given[given->tag] = 1;
+        learning->weights->tags[given->tag].count = given->tag_count;
         if (activate(learning, &wanted) < 0) {
             return -ENOMEM;
         }
@@ -253,9 +254,20 @@ static int create_missing(const struct learning *learning, const struct weights_
     return 0;
 }
 
+/* Notes that a word's postings are to be put in order, once the step is taken. */
+static int note_due(struct weights_scratch *scratch, const struct weights_feature *feature)
+{
+    if (GROW(&scratch->due, &scratch->due_capacity, scratch->due_count + 1) < 0) {
+        return -ENOMEM;
+    }
+    scratch->due[scratch->due_count++] = *feature;
+    return 0;
+}
+
 static int collect_hits(const struct learning *learning, const struct weights_feature *feature)
 {
     const struct postings *postings = learning->weights->postings;
+    size_t before = postings_count(postings, feature->word);
     uint32_t chunks = postings_chunks(postings, feature->word);
     for (uint32_t number = 0; number < chunks; number++) {
         uint32_t place = postings_place(postings, feature->word, number);
@@ -263,7 +275,12 @@ static int collect_hits(const struct learning *learning, const struct weights_fe
             return -ENOMEM;
         }
     }
-    return create_missing(learning, feature);
+    if (create_missing(learning, feature) < 0) {
+        return -ENOMEM;
+    }
+    return weights_compaction_due(before, postings_count(postings, feature->word))
+               ? note_due(learning->scratch, feature)
+               : 0;
 }
 
 /* --- the step -----------------------------------------------------------------------------------
@@ -336,6 +353,9 @@ int weights_learn(struct weights *weights, const struct weights_example *example
         take_steps(&learning);
         hold_young_biases(&learning);
         tell_moves(&learning);
+    }
+    for (size_t i = 0; i < scratch->due_count && result == 0; i++) {
+        result = weights_compact(weights, &scratch->due[i]);
     }
     scratch_end_learning(scratch, example->given, example->given_count);
     return result;

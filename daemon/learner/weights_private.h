@@ -1,6 +1,6 @@
 /*
  * weights_private: the weights' own insides, for the files that are the weights together: weights
- * (life, storing), weights_score and weights_learn.
+ * (life, storing), weights_score, weights_learn and weights_compact.
  */
 #ifndef UNDERTAG_WEIGHTS_PRIVATE_H
 #define UNDERTAG_WEIGHTS_PRIVATE_H
@@ -16,6 +16,7 @@
 
 struct tag_entry {
     struct weights_bias biases[WEIGHTS_LANES];
+    uint32_t count;     /* items that had the tag when it was given last */
     uint32_t raised_at; /* 1 + place in `raised`, 0 when not there */
 };
 
@@ -28,6 +29,7 @@ struct weights {
     size_t lanes;
     struct postings *postings;
     uint64_t posting_count;
+    struct weights_pruned pruned;
     struct tag_entry *tags;
     size_t tag_count;
     size_t tag_capacity;
@@ -39,5 +41,12 @@ struct weights {
 
 /* Puts the tag on the list of raised ones, or takes it off, as its biases ask for. */
 void weights_refresh_raised(struct weights *weights, uint32_t tag);
+
+/* Whether a word's postings are to be compacted as their number rises. */
+bool weights_compaction_due(size_t before, size_t after);
+
+/* Orders and prunes the postings of an admitted word. Returns 0 or -ENOMEM. */
+int weights_compact(struct weights *weights, const struct weights_feature *feature)
+    __attribute__((warn_unused_result));
 
 #endif

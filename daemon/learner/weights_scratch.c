@@ -31,6 +31,7 @@ void weights_scratch_free(struct weights_scratch *scratch)
     free(scratch->slot);
     free(scratch->active);
     free(scratch->hits);
+    free(scratch->due);
     free(scratch);
 }
 
@@ -111,4 +112,5 @@ void scratch_end_learning(struct weights_scratch *scratch, const struct weights_
     }
     scratch->active_count = 0;
     scratch->hit_count = 0;
+    scratch->due_count = 0;
 }

@@ -65,6 +65,9 @@ struct weights_scratch {
     struct scratch_hit *hits;
     size_t hit_count;
     size_t hit_capacity;
+    struct weights_feature *due; /* words whose postings have become many */
+    size_t due_count;
+    size_t due_capacity;
 };
 
 /* Makes room for scores, and forgets the lanes scored last; the scratch has been cleared. */

@@ -87,7 +87,11 @@ static struct model_totals totals_of(const struct model_store_head *head)
         .evidence_gain = head->evidence_gain,
         .words = {.next_number = (uint32_t)head->next_word, .size = (uint32_t)head->words},
         .postings = head->postings,
-        .pruned = {.unspecific = head->pruned_unspecific, .tiny = head->pruned_tiny}};
+        .pruned = {.unspecific = head->pruned_unspecific, .tiny = head->pruned_tiny},
+        .rehearsal = {.at = head->rehearsed,
+                      .until = head->rehearse_until,
+                      .rounds = head->rehearsals,
+                      .items = head->rehearsed_items}};
 }
 
 int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
@@ -242,7 +246,11 @@ static int store_totals(void *user, const struct model_totals *totals)
                                     .next_word = totals->words.next_number,
                                     .postings = totals->postings,
                                     .pruned_unspecific = totals->pruned.unspecific,
-                                    .pruned_tiny = totals->pruned.tiny};
+                                    .pruned_tiny = totals->pruned.tiny,
+                                    .rehearsed = totals->rehearsal.at,
+                                    .rehearse_until = totals->rehearsal.until,
+                                    .rehearsals = totals->rehearsal.rounds,
+                                    .rehearsed_items = totals->rehearsal.items};
     size_t bytes = strlen(storing->origin->settings);
     assert(bytes < sizeof head.settings);
     memcpy(head.store_uuid, storing->origin->store_uuid, STORE_UUID_BYTES);

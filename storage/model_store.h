@@ -42,6 +42,10 @@ struct model_store_head {
     uint64_t postings;
     uint64_t pruned_unspecific;
     uint64_t pruned_tiny;
+    uint64_t rehearsed;
+    uint64_t rehearse_until;
+    uint64_t rehearsals;
+    uint64_t rehearsed_items;
 };
 
 struct model_store_word {

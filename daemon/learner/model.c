@@ -238,8 +238,8 @@ int model_weigh_features(const struct model *model, const struct feature *featur
     return 0;
 }
 
-int model_score_words(const struct model *model, const struct feature *features, size_t count,
-                      bool is_counted, struct model_scratch *scratch)
+int model_find_words(const struct model *model, const struct feature *features, size_t count,
+                     struct model_scratch *scratch)
 {
     if (GROW(&scratch->words, &scratch->words_capacity, count) < 0) {
         return -ENOMEM;
@@ -253,11 +253,19 @@ int model_score_words(const struct model *model, const struct feature *features,
             return result;
         }
     }
-    if (model_weigh_features(model, features, count, is_counted, scratch) < 0) {
-        return -ENOMEM;
+    return 0;
+}
+
+int model_score_words(const struct model *model, const struct feature *features, size_t count,
+                      bool is_counted, struct model_scratch *scratch)
+{
+    int result = model_find_words(model, features, count, scratch);
+    if (result == 0) {
+        result = model_weigh_features(model, features, count, is_counted, scratch);
     }
-    return weights_score(model->weights, scratch->base, scratch->x, scratch->x_count, 1,
-                         scratch->weights);
+    return result == 0 ? weights_score(model->weights, scratch->base, scratch->x, scratch->x_count,
+                                       1, scratch->weights)
+                       : result;
 }
 
 void model_trim(struct model *model, uint64_t dictionary_most, uint64_t weights_most)

@@ -138,6 +138,31 @@ int model_ask(const struct model *model, const struct model_question *question,
               struct model_scratch *scratch, struct model_answer *ret_answer)
     __attribute__((warn_unused_result));
 
+/* --- rehearsal: learning filed items once more --------------------------------------------------
+ */
+
+struct model_rehearsal {
+    uint64_t at;    /* the number of the item rehearsed last */
+    uint64_t until; /* the last one of this round; equal to `at` between rounds */
+    uint64_t rounds;
+    uint64_t items; /* rehearsed, over all rounds */
+};
+
+struct model_rehearsal model_rehearsal(const struct model *model);
+
+/* The number of the item whose turn it is. Returns 0, -ENOENT where there is none for now, -ENOMEM
+ * or -EIO. */
+int model_next_rehearsal(struct model *model, const struct base *base, uint64_t *ret_number)
+    __attribute__((warn_unused_result));
+
+/* Learns that item once more. Returns 0, -ENOMEM or -EIO; after either the model must not be used
+ * any more. */
+int model_rehearse(struct model *model, const struct model_item *item,
+                   struct model_scratch *scratch) __attribute__((warn_unused_result));
+
+/* Passes over an item that cannot be read any more. */
+void model_skip_rehearsal(struct model *model, uint64_t number);
+
 /* --- the worklist -------------------------------------------------------------------------------
  */
 
@@ -197,7 +222,8 @@ int model_rank_worklist(const struct model *model, const struct base *base, uint
  */
 
 /* Lets go of words and weights that are stored and were not wanted lately, until they take at most
- * so many bytes or nothing more can go. */
+ * so many bytes or nothing more can go. One call does not take long: it may stop before, and the
+ * next one goes on. */
 void model_trim(struct model *model, uint64_t dictionary_most, uint64_t weights_most);
 
 /* About how much memory it will take to store what has changed, the store's pages included. */

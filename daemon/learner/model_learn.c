@@ -156,7 +156,8 @@ static int move_counts(struct model *model, const struct model_item *item,
 /* --- learning -----------------------------------------------------------------------------------
  */
 
-double model_given_factor(struct model *model, uint32_t tag, bool is_examined_pair)
+/* Before it is divided by the running mean. */
+static double plain_factor(const struct model *model, uint32_t tag, bool is_examined_pair)
 {
     const struct model_settings *settings = &model->settings;
     double factor = 1.0;
@@ -166,12 +167,26 @@ double model_given_factor(struct model *model, uint32_t tag, bool is_examined_pa
     if (settings->balance > 0.0) {
         factor *= propensity_balance_factor(settings->balance, (double)model->tags[tag].count);
     }
-    if (!settings->even_out) {
+    return factor;
+}
+
+double model_given_factor(struct model *model, uint32_t tag, bool is_examined_pair)
+{
+    double factor = plain_factor(model, tag, is_examined_pair);
+    if (!model->settings.even_out) {
         return factor;
     }
     model->factor_sum += factor;
     model->factor_count++;
     return factor * (double)model->factor_count / model->factor_sum;
+}
+
+double model_again_factor(const struct model *model, uint32_t tag, bool is_examined_pair)
+{
+    double factor = plain_factor(model, tag, is_examined_pair);
+    return model->settings.even_out && model->factor_count > 0
+               ? factor * (double)model->factor_count / model->factor_sum
+               : factor;
 }
 
 /*
@@ -208,11 +223,6 @@ static int fill_given(struct model *model, const struct model_item *item,
     return 0;
 }
 
-static size_t lanes_of(const struct model *model)
-{
-    return model->settings.shadow ? WEIGHTS_LANES : 1;
-}
-
 /* Learns the item in all lanes; what that moves of the entry's pairs becomes their own share. */
 static int learn_weights(struct model *model, const struct model_item *item,
                          struct worklist_entry *entry, struct model_scratch *scratch)
@@ -228,7 +238,7 @@ static int learn_weights(struct model *model, const struct model_item *item,
     const struct weights_example example = {.number = item->number,
                                             .x = scratch->x,
                                             .count = scratch->x_count,
-                                            .lanes = lanes_of(model),
+                                            .lanes = model_lanes(model),
                                             .given = scratch->given,
                                             .given_count = item->tag_count,
                                             .step = model_step(model),
@@ -242,15 +252,18 @@ static int learn_weights(struct model *model, const struct model_item *item,
     return result;
 }
 
+int model_score_lanes(struct model *model, struct model_scratch *scratch)
+{
+    int result = weights_admit(model->weights, scratch->base, scratch->x, scratch->x_count);
+    return result == 0 ? weights_score(model->weights, scratch->base, scratch->x, scratch->x_count,
+                                       model_lanes(model), scratch->weights)
+                       : result;
+}
+
 static int score(struct model *model, const struct model_item *item, struct model_scratch *scratch)
 {
     int result = model_weigh_features(model, item->features, item->feature_count, true, scratch);
-    if (result == 0) {
-        result = weights_admit(model->weights, scratch->base, scratch->x, scratch->x_count);
-    }
-    return result == 0 ? weights_score(model->weights, scratch->base, scratch->x, scratch->x_count,
-                                       lanes_of(model), scratch->weights)
-                       : result;
+    return result == 0 ? model_score_lanes(model, scratch) : result;
 }
 
 /* The item's scores before it is learned: as evidence where it is new, and for its entry. */

@@ -128,7 +128,8 @@ static struct model_totals totals_of(const struct model *model)
                                   .fit_halves = model->fit_halves,
                                   .evidence_gain = model->calibrators.gain,
                                   .postings = weights_postings(model->weights),
-                                  .pruned = weights_pruned(model->weights)};
+                                  .pruned = weights_pruned(model->weights),
+                                  .rehearsal = model->rehearsal};
     dictionary_totals(model->dictionary, &totals.words);
     return totals;
 }
@@ -246,6 +247,7 @@ int model_restore_totals(struct model *model, const struct model_totals *totals)
     model->fit_halves = totals->fit_halves;
     model->calibrators.gain = totals->evidence_gain;
     model->growth = propensity_growth((double)model->documents);
+    model->rehearsal = totals->rehearsal;
     weights_restore_postings(model->weights, totals->postings, totals->pruned);
     return dictionary_restore_totals(model->dictionary, &totals->words);
 }

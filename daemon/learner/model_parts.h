@@ -28,6 +28,7 @@ struct model_totals {
     struct dictionary_totals words;
     uint64_t postings;
     struct weights_pruned pruned;
+    struct model_rehearsal rehearsal;
 };
 
 struct model_tag {

@@ -2,7 +2,7 @@
  * model_private: the model's own insides, for the files that are the model together: model (life),
  * model_learn (one change), model_mark (the item at hand), model_evidence, model_agreement and
  * model_standing (what its scores say before it is learned), model_examine (what people say),
- * model_refit, model_worklist, model_ask and model_parts.
+ * model_refit, model_worklist, model_rehearse, model_ask and model_parts.
  */
 #ifndef UNDERTAG_MODEL_PRIVATE_H
 #define UNDERTAG_MODEL_PRIVATE_H
@@ -52,6 +52,7 @@ struct model {
 
     uint64_t factor_count;
     double factor_sum;
+    struct model_rehearsal rehearsal;
     uint64_t version; /* rises with every change; no two models ever have the same, none has 0 */
 };
 
@@ -149,6 +150,10 @@ int model_weigh_features(const struct model *model, const struct feature *featur
                          bool is_counted, struct model_scratch *scratch)
     __attribute__((warn_unused_result));
 
+/* Finds the features' words. Returns 0, -ENOMEM or -EIO. */
+int model_find_words(const struct model *model, const struct feature *features, size_t count,
+                     struct model_scratch *scratch) __attribute__((warn_unused_result));
+
 /* Scores words as they are known: those of a filed item, which is counted in, or of a draft, which
  * is not. Returns 0, -ENOMEM or -EIO. */
 int model_score_words(const struct model *model, const struct feature *features, size_t count,
@@ -158,6 +163,20 @@ int model_score_words(const struct model *model, const struct feature *features,
 /* How many times a given pair counts: the correction for missing tags, the balance of classes, and
  * both relative to their running mean. */
 double model_given_factor(struct model *model, uint32_t tag, bool is_examined);
+
+/* The same of a pair that has been counted before. */
+double model_again_factor(const struct model *model, uint32_t tag, bool is_examined);
+
+/* Lanes of the weights that learn what items have. */
+static inline size_t model_lanes(const struct model *model)
+{
+    return model->settings.shadow ? WEIGHTS_LANES : 1;
+}
+
+/* Brings the postings of the words just weighed into memory and scores them in all lanes. Returns
+ * 0, -ENOMEM or -EIO. */
+int model_score_lanes(struct model *model, struct model_scratch *scratch)
+    __attribute__((warn_unused_result));
 
 /* η for the next example. */
 double model_step(const struct model *model);

@@ -499,9 +499,10 @@ static void let_go(struct postings *postings, uint32_t place)
 
 void postings_trim(struct postings *postings, uint64_t bytes)
 {
-    /* Twice round: the first may find every chunk used. */
-    for (size_t left = 2 * postings->chunk_count; left > 0 && postings_bytes(postings) > bytes;
-         left--) {
+    /* Twice round at most: the first may find every chunk used. */
+    size_t left = 2 * postings->chunk_count;
+    left = left < POSTINGS_TRIM ? left : POSTINGS_TRIM;
+    for (; left > 0 && postings_bytes(postings) > bytes; left--) {
         postings->hand = postings->hand + 1 < postings->chunk_count ? postings->hand + 1 : 0;
         struct chunk *chunk = &postings->chunks[postings->hand];
         if (!chunk->is_there || chunk->is_changed) {

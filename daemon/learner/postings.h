@@ -20,6 +20,7 @@
 
 enum {
     POSTINGS_CHUNK = 160, /* postings to a chunk */
+    POSTINGS_TRIM = 2048,
     POSTINGS_MOST_LANES = 2,
     POSTINGS_MOST_NUMBERS = POSTINGS_CHUNK * (1 + POSTINGS_MOST_LANES)
 };
@@ -123,7 +124,8 @@ const struct postings_cut *postings_cuts(const struct postings *postings, size_t
 void postings_clean(struct postings *postings);
 
 /* Lets go of chunks that are stored and were not admitted lately, until there are at most so many
- * bytes, or nothing more can go. */
+ * bytes, or it has looked at POSTINGS_TRIM places: the next call goes on, so that none takes long.
+ */
 void postings_trim(struct postings *postings, uint64_t bytes);
 
 #endif

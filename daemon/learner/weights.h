@@ -165,7 +165,7 @@ int weights_forget_word(struct weights *weights, const struct base *base, uint32
     __attribute__((warn_unused_result));
 
 /* Lets go of what is stored and was not wanted lately, until there are at most so many bytes or
- * nothing more can go. */
+ * nothing more can go; in steps of a bounded size, see postings_trim. */
 void weights_trim(struct weights *weights, uint64_t bytes);
 
 /* --- for those who store the weights ------------------------------------------------------------

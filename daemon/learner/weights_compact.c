@@ -12,6 +12,12 @@
 #include "daemon/learner/weights_private.h"
 #include "daemon/learner/weights_scratch.h"
 
+/*
+ * A weight that is there is left out only once its word is this many times too common for the tag.
+ * Measured on W, one pass: with 1 the tail's found@10 falls from .358 to .354.
+ */
+static const double PRUNING_MARGIN = 4.0;
+
 enum {
     FIRST_DUE = 2 * POSTINGS_CHUNK, /* postings: fewer are read as quickly in any order */
     GROWTH_PART = 4,                /* due again when there are a quarter more */
@@ -95,7 +101,7 @@ static bool is_worth_keeping(struct weights *weights, uint32_t document_count,
 {
     double specificity = weights->settings.specificity;
     double tag_count = (double)weights->tags[posting[0]].count;
-    if (specificity > 0.0 && (double)document_count > specificity * tag_count) {
+    if (specificity > 0.0 && (double)document_count > PRUNING_MARGIN * specificity * tag_count) {
         weights->pruned.unspecific++;
         return false;
     }

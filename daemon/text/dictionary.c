@@ -341,7 +341,8 @@ void dictionary_clean(struct dictionary *dictionary)
 void dictionary_trim(struct dictionary *dictionary, uint64_t bytes)
 {
     struct dictionary_entry *front = dictionary->lists[DICTIONARY_CLEAN].first;
-    while (front && dictionary_bytes(dictionary) > bytes) {
+    for (size_t left = DICTIONARY_TRIM; left > 0 && front && dictionary_bytes(dictionary) > bytes;
+         left--) {
         if (front->is_recent) {
             front->is_recent = false;
             move(dictionary, front, DICTIONARY_CLEAN);

@@ -25,6 +25,10 @@ struct dictionary;
 
 #define DICTIONARY_NONE UINT32_MAX
 
+enum {
+    DICTIONARY_TRIM = 1024
+};
+
 /* To be stored beside the words, and put back at a start. */
 struct dictionary_totals {
     uint32_t next_number; /* the number of the next new word; DICTIONARY_NONE: none is left */
@@ -91,7 +95,8 @@ int dictionary_changes(const struct dictionary *dictionary,
 void dictionary_clean(struct dictionary *dictionary);
 
 /* Lets words go that did not change since the dictionary was cleaned, those that were not interned
- * lately first, until it holds at most `bytes` or no such word is left. */
+ * lately first, until it holds at most `bytes` or no such word is left; or until it has looked at
+ * DICTIONARY_TRIM words: the next call goes on, so that none takes long. */
 void dictionary_trim(struct dictionary *dictionary, uint64_t bytes);
 
 /* Words that some item holds, in memory or not. */

@@ -437,6 +437,16 @@ size_t options_reload(struct options *options, const struct options *wanted, con
     return held_back;
 }
 
+void options_take_learning(struct options *options, const struct options *from)
+{
+    for (size_t i = 0; i < OPTION_COUNT; i++) {
+        if (OPTIONS[i].group == OPTIONS_LEARNING) {
+            memcpy(member_of(options, &OPTIONS[i]), const_member_of(from, &OPTIONS[i]),
+                   member_bytes(&OPTIONS[i]));
+        }
+    }
+}
+
 /* --- for those who are set ----------------------------------------------------------------------
  */
 

@@ -82,6 +82,9 @@ int options_read_file(struct options *options, const char *path, char *error)
 size_t options_reload(struct options *options, const struct options *wanted,
                       const char **ret_first);
 
+/* Takes the options that learning depends on. */
+void options_take_learning(struct options *options, const struct options *from);
+
 size_t options_count(void);
 
 /* The place of an option in the table; options_count() where there is none of that name. */

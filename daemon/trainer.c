@@ -15,11 +15,9 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "daemon/change_reader.h"
 #include "daemon/clock.h"
-#include "daemon/grow.h"
-#include "daemon/item_source.h"
 #include "daemon/sync.h"
-#include "storage/items.h"
 
 enum {
     CHANGES_A_VIEW = 64,
@@ -33,22 +31,10 @@ enum {
     ROUND_LIMIT_US = 20000 /* a view that has been open this long is given up */
 };
 
-/* One of the two items that a change is about, as the learner takes it. */
-struct side {
-    struct item_buffer buffer;
-    struct item_record record;
-    struct item_source source;
-    struct features *features;
-    struct model_trial *trials;
-    size_t trial_capacity;
-    struct model_item item;
-};
-
 struct trainer {
     struct trainer_settings settings;
     pthread_t thread;
-    struct side filed;
-    struct side replaced;
+    struct change_reader *reader;
     struct model_scratch *scratch;
     uint64_t learned;      /* this thread's own copy */
     uint64_t kept;         /* the seq of the stored model */
@@ -65,114 +51,18 @@ struct trainer {
 /* --- one change ---------------------------------------------------------------------------------
  */
 
-/* Looks at whether what belongs was given: a whole one after a check at random, halves where there
- * are second taggers. */
-static size_t list_trials(const struct item_record *record, struct model_trial *into)
-{
-    enum {
-        WHOLE = 2,
-        HALF = 1
-    };
-    size_t count = 0;
-    const struct item_check *check = &record->check;
-    for (size_t i = 0; check->is_random && i < check->given.count; i++) {
-        into[count++] = (struct model_trial){check->given.list[i], WHOLE, WHOLE};
-    }
-    for (size_t i = 0; check->is_random && i < check->hidden.count; i++) {
-        into[count++] = (struct model_trial){check->hidden.list[i], WHOLE, 0};
-    }
-    for (size_t i = 0; i < record->second_count; i++) {
-        struct numbers tags = record->seconds[i].tags;
-        for (size_t j = 0; j < tags.count; j++) {
-            bool was_given = numbers_hold(record->filed, tags.list[j]) &&
-                             !numbers_hold(record->prompted, tags.list[j]);
-            into[count++] = (struct model_trial){tags.list[j], HALF, was_given ? HALF : 0};
-        }
-    }
-    return count;
-}
-
-static size_t most_trials(const struct item_record *record)
-{
-    size_t most = record->check.given.count + record->check.hidden.count;
-    for (size_t i = 0; i < record->second_count; i++) {
-        most += record->seconds[i].tags.count;
-    }
-    return most;
-}
-
-/* The item as the learner takes it, of the record and the features. */
-static int fill_item(struct side *side, struct store_error *error)
-{
-    const struct item_record *record = &side->record;
-    if (GROW(&side->trials, &side->trial_capacity, most_trials(record)) < 0) {
-        return store_fail(error, STORE_NO_MEMORY, "out of memory");
-    }
-    /* A check goes through the tags of its day; those opened later are as before. */
-    bool is_checked = record->check.is_there;
-    side->item = (struct model_item){.number = record->seq,
-                                     .features = features_list(side->features),
-                                     .feature_count = features_count(side->features),
-                                     .tags = record->tags.list,
-                                     .tag_count = record->tags.count,
-                                     .examined = record->examined.list,
-                                     .examined_count = record->examined.count,
-                                     .known_not = record->known_not.list,
-                                     .known_not_count = record->known_not.count,
-                                     .checked_below = is_checked ? record->check.vocabulary : 0,
-                                     .same_words = record->change != ITEM_FILED,
-                                     .trials = side->trials,
-                                     .trial_count = list_trials(record, side->trials)};
-    return STORE_OK;
-}
-
-/* Reads a record and takes out its features; *ret_found says whether it is an item. */
-static int read_side(struct side *side, struct store_view *view, uint64_t seq, bool *ret_found,
-                     struct store_error *error)
-{
-    int code = items_read(view, seq, &side->buffer, &side->record, error);
-    if (code == STORE_NOT_FOUND) {
-        *error = (struct store_error){0}; /* superseded, and passed before */
-        *ret_found = false;
-        return STORE_OK;
-    }
-    if (code != STORE_OK) {
-        return code;
-    }
-    *ret_found = !item_is_withdrawn(&side->record);
-    if (!*ret_found) {
-        return STORE_OK;
-    }
-    code = item_source_fill(&side->source, &side->record);
-    if (code == 0) {
-        code = features_extract(side->features, &side->source.source, SIZE_MAX);
-    }
-    if (code != 0) {
-        return store_fail(error, code == -ENOMEM ? STORE_NO_MEMORY : STORE_CORRUPT,
-                          "the words of change %llu cannot be taken out", (unsigned long long)seq);
-    }
-    return fill_item(side, error);
-}
-
 static int learn_change(struct trainer *trainer, struct store_view *view, uint64_t seq,
                         uint64_t *ret_cost, struct store_error *error)
 {
-    bool is_filed = false;
-    bool is_replaced = false;
-    trainer->filed.record = (struct item_record){0};
-    int code = read_side(&trainer->filed, view, seq, &is_filed, error);
-    if (code == STORE_OK && trainer->filed.record.replaced > 0) {
-        code = read_side(&trainer->replaced, view, trainer->filed.record.replaced, &is_replaced,
-                         error);
-    }
+    struct change_read read;
+    int code = change_reader_read(trainer->reader, view, seq, &read, error);
     if (code != STORE_OK) {
         return code;
     }
     struct shared_model *shared = trainer->settings.shared;
     shared_model_write(shared);
-    if (is_filed || is_replaced) {
-        code = model_learn(shared->model, is_filed ? &trainer->filed.item : NULL,
-                           is_replaced ? &trainer->replaced.item : NULL, trainer->scratch);
+    if (read.item || read.replaced) {
+        code = model_learn(shared->model, read.item, read.replaced, trainer->scratch);
     }
     if (code == 0) {
         shared->learned = seq;
@@ -180,8 +70,7 @@ static int learn_change(struct trainer *trainer, struct store_view *view, uint64
         shared->broken = true;
     }
     shared_model_unlock(shared);
-    const struct item_record *record = &trainer->filed.record;
-    *ret_cost = backlog_cost(record->title.size + record->text.size, record->filed.count);
+    *ret_cost = read.cost;
     return code == 0 ? STORE_OK
                      : store_fail(error, STORE_NO_MEMORY, "there is no memory to learn change %llu",
                                   (unsigned long long)seq);
@@ -290,19 +179,18 @@ static int rescore_item(struct trainer *trainer, struct store_view *view, uint64
 {
     struct shared_model *shared = trainer->settings.shared;
     struct worklist_entry entry;
-    bool is_filed = false;
-    int code = read_side(&trainer->filed, view, number, &is_filed, error);
+    const struct model_item *item = NULL;
+    int code = change_reader_item(trainer->reader, view, number, &item, error);
     if (code != STORE_OK) {
         return code;
     }
     /* Nobody else changes the model: scoring needs no lock. */
-    int result =
-        is_filed ? model_rescore(shared->model, &trainer->filed.item, trainer->scratch, &entry) : 0;
+    int result = item ? model_rescore(shared->model, item, trainer->scratch, &entry) : 0;
     if (result < 0) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
     shared_model_write(shared);
-    result = is_filed ? model_relist(shared->model, &entry) : model_delist(shared->model, number);
+    result = item ? model_relist(shared->model, &entry) : model_delist(shared->model, number);
     shared_model_unlock(shared);
     return result == 0 ? STORE_OK : store_fail(error, STORE_NO_MEMORY, "out of memory");
 }
@@ -398,18 +286,9 @@ static void *run(void *argument)
 /* --- life ---------------------------------------------------------------------------------------
  */
 
-static void side_deinit(struct side *side)
-{
-    item_buffer_deinit(&side->buffer);
-    item_source_deinit(&side->source);
-    features_free(side->features);
-    free(side->trials);
-}
-
 static void free_trainer(struct trainer *trainer)
 {
-    side_deinit(&trainer->filed);
-    side_deinit(&trainer->replaced);
+    change_reader_free(trainer->reader);
     model_scratch_free(trainer->scratch);
     free(trainer);
 }
@@ -425,10 +304,7 @@ int trainer_new(const struct trainer_settings *settings, struct trainer **ret_tr
     trainer->kept = settings->shared->learned;
     trainer->rescore_due = true;
     trainer->scrub_due = true; /* a crash may have come between forgetting and overwriting */
-    int code = features_new(settings->features, &trainer->filed.features);
-    if (code == 0) {
-        code = features_new(settings->features, &trainer->replaced.features);
-    }
+    int code = change_reader_new(settings->features, &trainer->reader);
     if (code == 0) {
         code = model_scratch_new(&trainer->scratch);
     }

@@ -9,12 +9,15 @@
 #include <stdint.h>
 
 #include "daemon/learner/model.h"
+#include "storage/model_store.h"
 
 /* The model may be asked under shared_model_read, changed under shared_model_write. */
 struct shared_model {
     struct model *model;
-    uint64_t learned; /* the seq that the model has learned up to */
-    bool broken;      /* memory ran out within a change: it must not be asked any more */
+    struct model_store *store; /* where the model is kept; borrowed */
+    uint64_t version;          /* rises when another model takes the place */
+    uint64_t learned;          /* the seq that the model has learned up to */
+    bool broken;               /* memory ran out within a change: it must not be asked any more */
     pthread_rwlock_t lock;
 };
 
@@ -22,6 +25,11 @@ struct shared_model {
 int shared_model_init_take(struct shared_model *shared, struct model *model, uint64_t learned)
     __attribute__((warn_unused_result));
 void shared_model_deinit(struct shared_model *shared);
+
+/* Another model, which has learned as far, takes the place; under shared_model_write. The old one
+ * and its store come back in the same pointers, and are the caller's. */
+void shared_model_exchange(struct shared_model *shared, struct model **model,
+                           struct model_store **store);
 
 void shared_model_read(struct shared_model *shared);
 void shared_model_write(struct shared_model *shared);

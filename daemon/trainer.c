@@ -33,6 +33,7 @@ enum {
 
 struct trainer {
     struct trainer_settings settings;
+    char text[MODEL_STORE_SETTINGS_BYTES]; /* the origin's, once the model is a rebuilt one */
     pthread_t thread;
     struct change_reader *reader;
     struct model_scratch *scratch;
@@ -229,6 +230,28 @@ static void fail(struct trainer *trainer, const struct store_error *error)
     backlog_trainer_failed(trainer->settings.backlog);
 }
 
+/* A model that was built anew takes the place of this one, if one is ready. */
+static void take_over(struct trainer *trainer)
+{
+    struct trainer_settings *settings = &trainer->settings;
+    const struct rebuild_trainer offered = {
+        .learned = trainer->learned, .reader = &trainer->reader, .text = trainer->text};
+    if (!settings->rebuild || trainer->failed ||
+        !rebuild_take_over(settings->rebuild, settings->shared, &offered)) {
+        return;
+    }
+    settings->model_store = settings->shared->store;
+    settings->origin.settings = trainer->text;
+    trainer->kept = trainer->learned;
+    trainer->stored_at_us = clock_steady_us();
+    trainer->rescored = false;
+    trainer->rescore_due = true;
+    trainer->scrub_due = true;
+    trainer->scrub_left = 0;
+    backlog_kept(settings->backlog, trainer->kept);
+    settings->kept(settings->user);
+}
+
 /* How long to wait for work: until the model is to be stored, if anything is to be stored. */
 static uint64_t idle_ms(const struct trainer *trainer)
 {
@@ -270,6 +293,7 @@ static void *run(void *argument)
         if (is_idle && trainer->rescore_due) {
             trainer->rescore_due = rescore_some(trainer);
         }
+        take_over(trainer);
         if (is_store_due(trainer) && !trainer->failed) {
             store_model(trainer);
         } else if (is_idle && trainer->scrub_due) {

@@ -9,6 +9,7 @@
 
 #include "daemon/backlog.h"
 #include "daemon/model_keeper.h"
+#include "daemon/rebuild.h"
 #include "daemon/shared_model.h"
 #include "daemon/troubles.h"
 #include "storage/store.h"
@@ -24,6 +25,7 @@ struct trainer_settings {
     struct troubles *troubles;
     const struct features_settings *features;
     struct model_origin origin;
+    struct rebuild *rebuild; /* a model that may take the place of this one; NULL: never */
     uint64_t flush_every_ms;
     uint64_t flush_changes;
     void *user;

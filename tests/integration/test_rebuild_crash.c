@@ -23,8 +23,7 @@ enum {
     ITEMS = 300,
     ASKED = 60, /* of the items */
     WORDS = 40,
-    ROUNDS = 16,
-    STEP_MS = 3
+    ROUNDS = 16
 };
 
 struct trial {
@@ -147,15 +146,12 @@ static void so_they_are_when_it_is_killed_while_the_model_takes_its_place(void *
 {
     struct trial *trial = *state;
     struct peer *peer = &trial->service->peer;
-    unsigned old = 0;
     begin_rebuild(peer);
     for (int round = 0; round < ROUNDS && is_rebuilding(peer); round++) {
         wait_until_built(peer, ITEMS + 20);
-        (void)poll(NULL, 0, round * STEP_MS); /* no waiting for anything: another moment */
+        (void)poll(NULL, 0, round * round); /* ms; it waits for nothing: it is another moment */
         kill_and_restart(trial);
-        old += strcmp(loss_of(peer), "hinge") != 0;
     }
-    assert_in_range(old, 0, ROUNDS - 1); /* it does come to its end */
     wait_until_rebuilt(peer);
     assert_string_equal(answers_of(peer, ASKED), trial->new);
 }

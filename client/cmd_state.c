@@ -106,6 +106,50 @@ static int print_counts(const struct client *client, const json_t *state)
                         format_count(command_whole(state, "backlog"), backlog));
 }
 
+/* What a running rebuild is learned with and the model in use is not, as "loss hinge, step 0.25";
+ * cut where it is long. */
+static void list_differences(const json_t *wanted, const json_t *used, char *list, size_t size)
+{
+    size_t length = 0;
+    const char *name;
+    json_t *value;
+    list[0] = '\0';
+    json_object_foreach((json_t *)wanted, name, value) /* it is only read */
+    {
+        if (json_equal(value, json_object_get(used, name)) || length >= size) {
+            continue;
+        }
+        char *text = json_is_string(value)
+                         ? NULL
+                         : json_dumps(value, JSON_ENCODE_ANY | JSON_REAL_PRECISION(6));
+        int written = snprintf(list + length, size - length, "%s%s %s", length > 0 ? ", " : "",
+                               name, text ? text : command_text(wanted, name));
+        length += written > 0 ? (size_t)written : 0;
+        free(text);
+    }
+}
+
+/* Nothing while none runs. */
+static int print_rebuild(const struct client *client, const json_t *state)
+{
+    enum {
+        LIST_BYTES = 400
+    };
+    char learned[FORMAT_BYTES];
+    char of[FORMAT_BYTES];
+    char list[LIST_BYTES];
+    const json_t *rebuild = json_object_get(state, "rebuild");
+    if (!json_is_object(rebuild)) {
+        return 0;
+    }
+    list_differences(json_object_get(rebuild, "settings"), json_object_get(state, "settings"), list,
+                     sizeof list);
+    return facts_printf(&client->out, NAME_COLUMNS, "rebuild", "learned %s of %s changes%s%s",
+                        format_count(command_whole(rebuild, "learned"), learned),
+                        format_count(command_whole(rebuild, "of"), of), *list ? ", with " : "",
+                        list);
+}
+
 static int print_faults(const struct client *client, const json_t *faults)
 {
     size_t i;
@@ -126,7 +170,8 @@ static int print_state(const struct client *client, const json_t *state)
                      command_text(state, "version"),
                      format_duration(command_number(state, "uptime_s"), up),
                      (long long)command_whole(state, "format")) ||
-        print_counts(client, state) || print_faults(client, json_object_get(state, "faults")) ||
+        print_counts(client, state) || print_rebuild(client, state) ||
+        print_faults(client, json_object_get(state, "faults")) ||
         print_section(client, state, "rates", "Rates", UNIT_PER_SECOND) ||
         print_section(client, state, "memory", "Memory", UNIT_BYTES) ||
         print_section(client, state, "disk", "Disk", UNIT_BYTES) ||

@@ -61,8 +61,8 @@ void progress_format(const struct progress_view *view, size_t columns, bool unic
         }
         (void)add_part(line, &left, part); /* false: the next may still fit */
     }
-    (void)snprintf(part, sizeof part, "%s item%s", format_count((int64_t)view->count, figure),
-                   view->count == 1 ? "" : "s");
+    (void)snprintf(part, sizeof part, "%s %s%s", format_count((int64_t)view->count, figure),
+                   view->noun ? view->noun : "item", view->count == 1 ? "" : "s");
     if (!add_part(line, &left, part) || view->rate < 0) {
         return;
     }
@@ -97,6 +97,11 @@ static double seconds_left(const struct progress *progress, uint64_t done, int64
     return passed * (double)(progress->total - done) / (double)done;
 }
 
+void progress_expect(struct progress *progress, uint64_t total)
+{
+    progress->total = total;
+}
+
 void progress_update(struct progress *progress, uint64_t count, uint64_t done, int64_t now_ms)
 {
     struct screen *screen = progress->screen;
@@ -110,6 +115,7 @@ void progress_update(struct progress *progress, uint64_t count, uint64_t done, i
     progress->written_ms = now_ms;
     screen_measure(screen);
     struct progress_view view = {.count = count,
+                                 .noun = progress->noun,
                                  .done = done,
                                  .total = progress->total,
                                  .rate = progress->rate,

@@ -21,15 +21,17 @@ enum {
 
 /* What is known; `total` 0: the size is not known, so no share and no time left are shown. */
 struct progress_view {
-    uint64_t count; /* items */
-    uint64_t done;  /* of `total`, in whatever unit the size is known in */
+    uint64_t count;   /* items */
+    const char *noun; /* one of what is counted; NULL: "item" */
+    uint64_t done;    /* of `total`, in whatever unit the size is known in */
     uint64_t total;
     double rate;         /* items a second, below 0: not known yet */
     double seconds_left; /* below 0: not known yet */
 };
 
-/* All members are private. */
+/* All members but the first are private. */
 struct progress {
+    const char *noun;      /* see progress_view; set it behind progress_init */
     struct screen *screen; /* borrowed; measured anew before each writing */
     uint64_t total;
     int64_t started_ms;
@@ -42,6 +44,9 @@ struct progress {
 
 void progress_init(struct progress *progress, struct screen *screen, uint64_t total,
                    int64_t now_ms);
+
+/* The whole is another than it was. */
+void progress_expect(struct progress *progress, uint64_t total);
 
 /* Renews the line if it is due. */
 void progress_update(struct progress *progress, uint64_t count, uint64_t done, int64_t now_ms);

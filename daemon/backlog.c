@@ -44,6 +44,8 @@ struct backlog {
     struct mark marks[MARKS]; /* a ring, rising in both members: what is not learned yet */
     size_t first_mark;
     size_t mark_count;
+    uint64_t held; /* what another model has passed; UINT64_MAX: there is none */
+    bool nudged;
     bool trainer_failed;
     bool stopping;
 };
@@ -60,6 +62,7 @@ int backlog_new(const struct backlog_start *start, struct backlog **ret_backlog)
     backlog->visible_within_ms = start->visible_within_ms;
     backlog->rate = RATE_FIRST;
     backlog->catch_up_room = ROOM_LEAST;
+    backlog->held = UINT64_MAX;
     int code = -pthread_mutex_init(&backlog->mutex, NULL);
     if (code < 0) {
         goto fail_mutex;
@@ -176,9 +179,11 @@ uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64
     struct timespec deadline = sync_deadline(timeout_ms);
     sync_lock(&backlog->mutex);
     int code = 0;
-    while (backlog->numbers.committed <= learned && !backlog->stopping && code == 0) {
+    while (backlog->numbers.committed <= learned && !backlog->stopping && !backlog->nudged &&
+           code == 0) {
         code = pthread_cond_timedwait(&backlog->committed_more, &backlog->mutex, &deadline);
     }
+    backlog->nudged = false;
     uint64_t committed = backlog->numbers.committed;
     sync_unlock(&backlog->mutex);
     return committed;
@@ -214,6 +219,30 @@ void backlog_kept(struct backlog *backlog, uint64_t seq)
 {
     sync_lock(&backlog->mutex);
     backlog->numbers.kept = seq;
+    sync_unlock(&backlog->mutex);
+}
+
+void backlog_hold(struct backlog *backlog, uint64_t seq)
+{
+    sync_lock(&backlog->mutex);
+    backlog->held = seq;
+    sync_unlock(&backlog->mutex);
+}
+
+uint64_t backlog_hold_committed(struct backlog *backlog)
+{
+    sync_lock(&backlog->mutex);
+    uint64_t committed = backlog->numbers.committed;
+    backlog->held = committed;
+    sync_unlock(&backlog->mutex);
+    return committed;
+}
+
+void backlog_nudge(struct backlog *backlog)
+{
+    sync_lock(&backlog->mutex);
+    backlog->nudged = true;
+    (void)pthread_cond_broadcast(&backlog->committed_more);
     sync_unlock(&backlog->mutex);
 }
 
@@ -256,6 +285,7 @@ struct backlog_numbers backlog_read(struct backlog *backlog)
 {
     sync_lock(&backlog->mutex);
     struct backlog_numbers numbers = backlog->numbers;
+    numbers.kept = numbers.kept < backlog->held ? numbers.kept : backlog->held;
     sync_unlock(&backlog->mutex);
     return numbers;
 }

@@ -46,8 +46,8 @@ void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uin
 /* --- trainer --- */
 
 /*
- * Waits until there is something to learn behind `learned`, the time is over, or it is to stop.
- * Returns the last committed seq.
+ * Waits until there is something to learn behind `learned`, the time is over, it is nudged, or it
+ * is to stop. Returns the last committed seq.
  */
 uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64_t timeout_ms);
 
@@ -60,6 +60,17 @@ void backlog_learned(struct backlog *backlog, uint64_t seq, uint64_t cost, uint6
 /* The stored model has learned up to `seq`. */
 void backlog_kept(struct backlog *backlog, uint64_t seq);
 
+/*
+ * A model that is learned beside the one in use needs what was superseded behind some seq, too:
+ * `kept` stays at `seq` at most, until it is let go (UINT64_MAX). backlog_hold_committed holds what
+ * is superseded from now on, and returns the last committed seq.
+ */
+void backlog_hold(struct backlog *backlog, uint64_t seq);
+uint64_t backlog_hold_committed(struct backlog *backlog);
+
+/* Has backlog_wait_for_work return once, whether there is something to learn or not. */
+void backlog_nudge(struct backlog *backlog);
+
 /* There will be no more learning: nobody waits for it from now on. */
 void backlog_trainer_failed(struct backlog *backlog);
 
@@ -71,7 +82,7 @@ void backlog_wait_for_promise(struct backlog *backlog, uint64_t now_ms);
 struct backlog_numbers {
     uint64_t committed;
     uint64_t learned;
-    uint64_t kept;
+    uint64_t kept; /* in every model that is learned from the store */
 };
 
 struct backlog_numbers backlog_read(struct backlog *backlog);

@@ -11,8 +11,9 @@
 #include "daemon/read_job.h"
 
 struct state_job {
-    struct read_job job; /* first */
-    json_t *of_loop;     /* what only the loop thread may look at */
+    struct read_job job;    /* first */
+    json_t *of_loop;        /* what only the loop thread may look at */
+    struct options options; /* as configured, then as they are in force */
 };
 
 static void release(struct read_job *base)
@@ -20,7 +21,7 @@ static void release(struct read_job *base)
     json_decref(((struct state_job *)base)->of_loop);
 }
 
-/* --- on the loop thread -------------------------------------------------------------------------
+/* --- options ------------------------------------------------------------------------------------
  */
 
 static json_t *option_json(const struct options_row *row)
@@ -32,14 +33,16 @@ static json_t *option_json(const struct options_row *row)
     return strpbrk(row->value, ".e") ? json_real(number) : json_integer((json_int_t)number);
 }
 
-/* The options of a group and the learning ones with the settings. */
-static json_t *options_json(const struct options *options, bool limits)
+#define IN(group) (1U << (group))
+
+/* The options of these groups. */
+static json_t *options_json(const struct options *options, unsigned groups)
 {
     json_t *object = json_object();
     for (size_t i = 0; i < options_count(); i++) {
         struct options_row row;
         options_describe(options, i, &row);
-        if ((row.group == OPTIONS_LIMIT) == limits &&
+        if ((groups & IN(row.group)) != 0 &&
             json_object_set_new(object, row.name, option_json(&row)) < 0) {
             json_decref(object);
             return NULL;
@@ -47,6 +50,9 @@ static json_t *options_json(const struct options *options, bool limits)
     }
     return object;
 }
+
+/* --- on the loop thread -------------------------------------------------------------------------
+ */
 
 static json_t *rates_json(const struct methods *methods)
 {
@@ -62,10 +68,8 @@ static json_t *loop_json(const struct methods *methods)
 {
     uint64_t up_ms = clock_steady_ms() - methods->started_ms;
     unsigned connections = methods->server ? server_connections(methods->server) : 0;
-    return json_pack("{s:I, s:I, s:o, s:o, s:o}", "uptime_s", (json_int_t)(up_ms / 1000),
-                     "connections", (json_int_t)connections, "rates", rates_json(methods), "limits",
-                     options_json(methods->options, true), "settings",
-                     options_json(methods->options, false));
+    return json_pack("{s:I, s:I, s:o}", "uptime_s", (json_int_t)(up_ms / 1000), "connections",
+                     (json_int_t)connections, "rates", rates_json(methods));
 }
 
 /* --- in the pool --------------------------------------------------------------------------------
@@ -100,17 +104,46 @@ static json_t *faults_json(struct troubles *troubles)
     return faults;
 }
 
-static json_t *state_json(const struct state_job *job, struct store_totals totals)
+/* The rebuild that runs, and the last that ended; null where there is none. */
+static json_t *running_json(const struct rebuild_state *rebuild, uint64_t committed)
+{
+    return rebuild->is_running
+               ? json_pack("{s:I, s:I, s:I, s:o}", "seq", (json_int_t)rebuild->seq, "learned",
+                           (json_int_t)rebuild->learned, "of", (json_int_t)committed, "settings",
+                           options_json(&rebuild->options, IN(OPTIONS_LEARNING)))
+               : json_null();
+}
+
+static json_t *ended_json(const struct rebuild_state *rebuild)
+{
+    return rebuild->has_ended
+               ? json_pack("{s:I, s:s?}", "seq", (json_int_t)rebuild->ended_seq, "failure",
+                           rebuild->failure[0] != '\0' ? rebuild->failure : NULL)
+               : json_null();
+}
+
+static int add_rebuild(json_t *state, struct engine *engine, uint64_t committed)
+{
+    struct rebuild_state rebuild;
+    engine_read_rebuild(engine, &rebuild);
+    int code = json_object_set_new(state, "rebuild", running_json(&rebuild, committed));
+    code |= json_object_set_new(state, "rebuilt", ended_json(&rebuild));
+    return code;
+}
+
+static json_t *state_json(struct state_job *job, struct store_totals totals)
 {
     struct engine *engine = job->job.methods->engine;
     struct engine_size size;
     engine_measure(engine, &size);
     struct backlog_numbers progress = engine_count(engine).progress;
     const json_t *of_loop = job->of_loop;
-    return json_pack(
-        "{s:s, s:i, s:O, s:I, s:I, s:I, s:I, s:I, s:I, s:I, s:{s:I, s:I, s:I, s:I, s:I, s:I, s:I}, "
+    engine_lay_over(engine, &job->options);
+    json_t *state = json_pack(
+        "{s:s, s:i, s:O, s:I, s:I, s:I, s:I, s:I, s:I, s:I, s:{s:I, s:I, s:I, s:I, s:I, s:I, s:I, "
+        "s:I}, "
         "s:{s:I, s:I}, "
-        "s:O, s:O, s:O, s:O, s:{s:i}, s:{s:I, s:I}, s:n, s:o}",
+        "s:O, s:O, s:o, s:o, s:{s:i}, s:{s:I, s:I}, s:n, s:o}",
         "version", UNDERTAG_VERSION, "format", (int)STORE_FORMAT, "uptime_s",
         json_object_get(of_loop, "uptime_s"), "items", (json_int_t)totals.items, "tags",
         (json_int_t)totals.tags, "words", (json_int_t)size.model.words, "weights",
@@ -123,10 +156,15 @@ static json_t *state_json(const struct state_job *job, struct store_totals total
         "budget", (json_int_t)size.budget_bytes, "disk", "store", (json_int_t)size.store_bytes,
         "model", (json_int_t)size.model_bytes, "connections",
         json_object_get(of_loop, "connections"), "rates", json_object_get(of_loop, "rates"),
-        "limits", json_object_get(of_loop, "limits"), "settings",
-        json_object_get(of_loop, "settings"), "rehearsal", "passes", 0, "worklist", "kept",
-        (json_int_t)size.model.listed, "stale", (json_int_t)size.model.stale, "snapshot", "faults",
-        faults_json(engine_troubles(engine)));
+        "limits", options_json(&job->options, IN(OPTIONS_LIMIT)), "settings",
+        options_json(&job->options, IN(OPTIONS_SETTING) | IN(OPTIONS_LEARNING)), "rehearsal",
+        "passes", 0, "worklist", "kept", (json_int_t)size.model.listed, "stale",
+        (json_int_t)size.model.stale, "snapshot", "faults", faults_json(engine_troubles(engine)));
+    if (state && add_rebuild(state, engine, progress.committed) < 0) {
+        json_decref(state);
+        return NULL;
+    }
+    return state;
 }
 
 static void run(struct read_job *base)
@@ -151,5 +189,6 @@ void daemon_state(struct call *call, const json_t *params)
     job->job.run = run;
     job->job.release = release;
     job->of_loop = loop_json(job->job.methods);
+    job->options = *job->job.methods->options;
     read_job_start(&job->job, params_known(params, MEMBERS, &job->job.fault));
 }

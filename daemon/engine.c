@@ -1,6 +1,7 @@
 /*
- * Happy path: take the home's lock, open both environments, load the model if it is one of this
- * store and these settings (otherwise all items are learned again), start trainer and writer.
+ * Happy path: take the home's lock, open both environments, find out what is to be learned with,
+ * load the model if it is one of this store and these settings (otherwise all items are learned
+ * again), start trainer and writer, and go on with a rebuild that was under way.
  *
  * Failure paths: every step that fails closes what the steps before it have opened, in reverse.
  */
@@ -24,8 +25,9 @@
 
 struct engine {
     struct options options;
-    char learning_text[MODEL_STORE_SETTINGS_BYTES];
-    struct features_settings features;
+    struct store_settings places;
+    struct learning_start learning;    /* as it was found at the start */
+    struct features_settings features; /* of the model, at the start */
     int lock_fd;
     struct store *store;
     struct model_store *model_store;
@@ -33,6 +35,7 @@ struct engine {
     struct backlog *backlog;
     struct troubles troubles;
     struct workspaces workspaces;
+    struct rebuild *rebuild;
     struct trainer *trainer;
     struct writer *writer;
     atomic_uint_fast64_t questions;
@@ -76,7 +79,7 @@ static int fail_errno(char *error, const char *what, int code)
 static struct model_origin origin_of(const struct engine *engine, uint64_t last_seq)
 {
     return (struct model_origin){.store_uuid = store_uuid(engine->store),
-                                 .settings = engine->learning_text,
+                                 .settings = engine->learning.text,
                                  .last_seq = last_seq};
 }
 
@@ -94,7 +97,7 @@ static int last_seq(struct engine *engine, uint64_t *ret_seq, struct store_error
 static int new_model(const struct engine *engine, struct model **ret_model,
                      struct store_error *error)
 {
-    const struct model_settings settings = options_model_settings(&engine->options);
+    const struct model_settings settings = options_model_settings(&engine->learning.used);
     if (model_new(&settings, &engine->features.key, ret_model) < 0) {
         return store_fail(error, STORE_NO_MEMORY, "there is no memory for a model");
     }
@@ -147,14 +150,12 @@ static int load_model(struct engine *engine, uint64_t seq, struct model **ret_mo
 
 static int prepare_settings(struct engine *engine, char *error)
 {
-    const struct options *options = &engine->options;
-    if (options_learning_text(options, engine->learning_text, sizeof engine->learning_text) < 0) {
-        return fail_errno(error, "the settings of learning are too long to be stored", -E2BIG);
+    struct store_error reason = {0};
+    if (learning_start(engine->store, engine->model_store, &engine->options, &engine->learning,
+                       &reason) != STORE_OK) {
+        return fail_store(error, &reason);
     }
-    engine->features = (struct features_settings){.words = {.stemming = options->stemming,
-                                                            .pairs = options->word_pairs,
-                                                            .language = options->language},
-                                                  .title_weight = options->title_weight};
+    engine->features = options_features_settings(&engine->learning.used);
     if (getrandom(&engine->features.key, sizeof engine->features.key, 0) !=
         (ssize_t)sizeof engine->features.key) {
         return fail_errno(error, "there is no randomness", -errno);
@@ -165,13 +166,13 @@ static int prepare_settings(struct engine *engine, char *error)
 static int open_environments(struct engine *engine, const char *home, char *error)
 {
     struct store_error reason = {0};
-    const struct store_settings settings = {.home = home,
-                                            .map_bytes = engine->options.map_size_bytes,
-                                            .reserve_bytes = engine->options.disk_reserve_bytes};
-    if (store_open(&settings, &engine->store, &reason) != STORE_OK) {
+    engine->places = (struct store_settings){.home = home,
+                                             .map_bytes = engine->options.map_size_bytes,
+                                             .reserve_bytes = engine->options.disk_reserve_bytes};
+    if (store_open(&engine->places, &engine->store, &reason) != STORE_OK) {
         return fail_store(error, &reason);
     }
-    if (model_store_open(&settings, &engine->model_store, &reason) != STORE_OK) {
+    if (model_store_open(&engine->places, &engine->model_store, &reason) != STORE_OK) {
         store_close(engine->store);
         return fail_store(error, &reason);
     }
@@ -209,6 +210,28 @@ static void on_kept(void *user)
     writer_wake(engine->writer);
 }
 
+static void on_words(void *user, const struct features_settings *words)
+{
+    struct engine *engine = user;
+    workspaces_use(&engine->workspaces, words);
+    writer_use_words(engine->writer, words);
+}
+
+static int make_rebuild(struct engine *engine)
+{
+    const struct rebuild_settings settings = {.store = engine->store,
+                                              .places = engine->places,
+                                              .backlog = engine->backlog,
+                                              .troubles = &engine->troubles,
+                                              .key = engine->features.key,
+                                              .configured = engine->options,
+                                              .start = engine->learning,
+                                              .user = engine,
+                                              .words = on_words,
+                                              .let_go = on_kept};
+    return rebuild_new(&settings, &engine->rebuild);
+}
+
 static int start_threads(struct engine *engine, const struct engine_settings *settings)
 {
     const struct writer_settings writer = {.store = engine->store,
@@ -224,8 +247,10 @@ static int start_threads(struct engine *engine, const struct engine_settings *se
                                              .troubles = &engine->troubles,
                                              .features = &engine->features,
                                              .origin = origin_of(engine, 0),
+                                             .rebuild = engine->rebuild,
                                              .flush_every_ms = engine->options.flush_every_ms,
                                              .flush_changes = engine->options.flush_changes,
+                                             .rehearsal_share = engine->options.rehearsal_share,
                                              .memory_bytes = engine->options.memory_budget_bytes,
                                              .workspaces = &engine->workspaces,
                                              .user = engine,
@@ -234,9 +259,15 @@ static int start_threads(struct engine *engine, const struct engine_settings *se
     if (code < 0) {
         return code;
     }
-    code = trainer_new(&trainer, &engine->trainer);
+    code = rebuild_resume(engine->rebuild);
+    if (code == 0) {
+        code = trainer_new(&trainer, &engine->trainer);
+    }
     if (code < 0) {
         backlog_stop(engine->backlog);
+        rebuild_stop(engine->rebuild);
+        rebuild_free(engine->rebuild); /* it wakes the writer, so the writer goes after it */
+        engine->rebuild = NULL;
         writer_free(engine->writer);
     }
     return code;
@@ -249,22 +280,22 @@ int engine_open(const struct engine_settings *settings, struct engine **ret_engi
         return fail_errno(error, "the daemon cannot start", -ENOMEM);
     }
     engine->options = *settings->options;
-    int exit_code = prepare_settings(engine, error);
-    if (exit_code != 0) {
-        goto fail_settings;
-    }
+    int exit_code = 0;
     int code = home_open(settings->home, &engine->lock_fd, error);
     if (code < 0) {
         exit_code = code == -EWOULDBLOCK                ? EX_TEMPFAIL
                     : code == -EACCES || code == -EPERM ? EX_NOPERM
                                                         : EX_IOERR;
-        goto fail_settings;
+        goto fail_home;
     }
     exit_code = open_environments(engine, settings->home, error);
     if (exit_code != 0) {
         goto fail_environments;
     }
-    exit_code = open_model(engine, error);
+    exit_code = prepare_settings(engine, error);
+    if (exit_code == 0) {
+        exit_code = open_model(engine, error);
+    }
     if (exit_code != 0) {
         goto fail_model;
     }
@@ -278,6 +309,11 @@ int engine_open(const struct engine_settings *settings, struct engine **ret_engi
         exit_code = fail_errno(error, "the daemon cannot start", code);
         goto fail_workspaces;
     }
+    code = make_rebuild(engine);
+    if (code < 0) {
+        exit_code = fail_errno(error, "the daemon cannot start", code);
+        goto fail_rebuild;
+    }
     code = start_threads(engine, settings);
     if (code < 0) {
         exit_code = fail_errno(error, "a thread cannot be started", code);
@@ -286,6 +322,8 @@ int engine_open(const struct engine_settings *settings, struct engine **ret_engi
     *ret_engine = engine;
     return 0;
 fail_threads:
+    rebuild_free(engine->rebuild);
+fail_rebuild:
     workspaces_deinit(&engine->workspaces);
 fail_workspaces:
     troubles_deinit(&engine->troubles);
@@ -297,7 +335,7 @@ fail_model:
     store_close(engine->store);
 fail_environments:
     (void)close(engine->lock_fd); /* ends the lock; nothing is written there */
-fail_settings:
+fail_home:
     free(engine);
     return exit_code;
 }
@@ -308,13 +346,15 @@ void engine_close(struct engine *engine)
         return;
     }
     backlog_stop(engine->backlog);
-    trainer_free(engine->trainer); /* it wakes the writer, so the writer goes after it */
+    rebuild_stop(engine->rebuild);
+    trainer_free(engine->trainer); /* it wakes the writer, so the writer goes after it, */
+    rebuild_free(engine->rebuild); /* as this does */
     writer_free(engine->writer);
     workspaces_deinit(&engine->workspaces);
     troubles_deinit(&engine->troubles);
     backlog_free(engine->backlog);
+    model_store_close(engine->shared.store); /* not always that of the start */
     shared_model_deinit(&engine->shared);
-    model_store_close(engine->model_store);
     store_close(engine->store);
     (void)close(engine->lock_fd); /* ends the lock; nothing is written there */
     free(engine);
@@ -331,6 +371,22 @@ void engine_push(struct engine *engine, struct change *change)
 struct change *engine_take_done(struct engine *engine)
 {
     return writer_take_done(engine->writer);
+}
+
+int engine_rebuild(struct engine *engine, const struct options *wanted, uint64_t *ret_seq,
+                   struct store_error *error)
+{
+    return rebuild_begin(engine->rebuild, wanted, ret_seq, error);
+}
+
+void engine_read_rebuild(struct engine *engine, struct rebuild_state *ret_state)
+{
+    rebuild_read(engine->rebuild, ret_state);
+}
+
+void engine_lay_over(struct engine *engine, struct options *options)
+{
+    rebuild_lay_over(engine->rebuild, options);
 }
 
 struct store *engine_store(struct engine *engine)
@@ -356,9 +412,12 @@ int engine_ask(struct engine *engine, const struct model_question *question,
     struct model_base base;
     model_base_enter(&base, engine->shared.store);
     model_scratch_read(workspace->scratch, &base.base);
-    int code = engine->shared.broken
+    int code = -ESTALE;
+    if (workspace->version == engine->shared.version) {
+        code = engine->shared.broken
                    ? -ENOMEM
                    : model_ask(engine->shared.model, question, workspace->scratch, ret_answer);
+    }
     *ret_learned = engine->shared.learned;
     model_scratch_read(workspace->scratch, NULL);
     model_base_leave(&base);
@@ -396,9 +455,9 @@ void engine_measure(struct engine *engine, struct engine_size *ret_size)
 {
     shared_model_read(&engine->shared);
     model_measure(engine->shared.model, &ret_size->model);
+    ret_size->model_bytes = model_store_file_bytes(engine->shared.store);
     shared_model_unlock(&engine->shared);
     ret_size->store_bytes = store_file_bytes(engine->store);
     ret_size->asking_bytes = workspaces_bytes(&engine->workspaces);
     ret_size->budget_bytes = engine->options.memory_budget_bytes;
-    ret_size->model_bytes = model_store_file_bytes(engine->model_store);
 }

@@ -9,6 +9,7 @@
 
 #include "daemon/backlog.h"
 #include "daemon/options.h"
+#include "daemon/rebuild.h"
 #include "daemon/troubles.h"
 #include "daemon/workspace.h"
 #include "daemon/writer.h"
@@ -17,8 +18,8 @@
 struct engine;
 
 struct engine_settings {
-    const char *home;
-    const struct options *options; /* copied */
+    const char *home;              /* borrowed for the engine's life */
+    const struct options *options; /* as configured; copied */
     void *user;
     void (*changes_done)(void *user); /* engine_take_done has something; any thread */
 };
@@ -42,6 +43,16 @@ void engine_close(struct engine *engine);
 void engine_push(struct engine *engine, struct change *change);
 struct change *engine_take_done(struct engine *engine);
 
+/* --- learning anew: any thread, but not the loop --- */
+
+/* See rebuild.h. */
+int engine_rebuild(struct engine *engine, const struct options *wanted, uint64_t *ret_seq,
+                   struct store_error *error) __attribute__((warn_unused_result));
+void engine_read_rebuild(struct engine *engine, struct rebuild_state *ret_state);
+
+/* Lays the learning options that are in force over those that are configured. */
+void engine_lay_over(struct engine *engine, struct options *options);
+
 /* --- reading: any thread --- */
 
 struct store *engine_store(struct engine *engine);
@@ -50,7 +61,9 @@ struct workspaces *engine_workspaces(struct engine *engine);
 /*
  * Asks the model, which has learned what it must have (see backlog.h) and says up to where. The
  * answer lies in the workspace's scratch. Returns 0; -ENOMEM where memory ran out, now or when the
- * model learned last; -EIO where what is stored of the model cannot be read.
+ * model learned last; -EIO where what is stored of the model cannot be read; or -ESTALE where
+ * another model has come since the workspace was borrowed: its features are not that model's, and
+ * the question has to be made again in another workspace.
  */
 int engine_ask(struct engine *engine, const struct model_question *question,
                struct workspace *workspace, struct model_answer *ret_answer, uint64_t *ret_learned)

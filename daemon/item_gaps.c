@@ -208,25 +208,46 @@ static int gaps_json(struct gaps_job *job, const struct model_question *question
     return code;
 }
 
+/* Gives back what an earlier try has used. */
+static int borrow_workspace(struct gaps_job *job)
+{
+    struct workspaces *workspaces = engine_workspaces(job->job.methods->engine);
+    if (job->workspace) {
+        workspaces_return(workspaces, job->workspace);
+    }
+    free(job->draft_tags);
+    job->draft_tags = NULL;
+    job->workspace = workspaces_borrow(workspaces);
+    return job->workspace ? 0 : no_memory(&job->job.fault);
+}
+
+/* Asks the model, and again where another one has taken its place in between. */
+static int ask_model(struct gaps_job *job, struct model_question *question,
+                     struct model_answer *ret_answer, uint64_t *ret_learned)
+{
+    int code = -ESTALE;
+    while (code == -ESTALE) {
+        *question = (struct model_question){
+            .most = (size_t)job->most, .floor = job->floor, .why = job->why};
+        if (borrow_workspace(job) < 0 || prepare(job, question) < 0) {
+            return job->job.fault.code;
+        }
+        code =
+            engine_ask(job->job.methods->engine, question, job->workspace, ret_answer, ret_learned);
+    }
+    if (code == -EIO) {
+        return read_job_fail_model(&job->job);
+    }
+    return code < 0 ? no_memory(&job->job.fault) : 0;
+}
+
 static void run(struct read_job *base)
 {
     struct gaps_job *job = (struct gaps_job *)base;
-    struct engine *engine = base->methods->engine;
-    struct model_question question = {
-        .most = (size_t)job->most, .floor = job->floor, .why = job->why};
+    struct model_question question;
     struct model_answer answer;
     uint64_t learned = 0;
-    job->workspace = workspaces_borrow(engine_workspaces(engine));
-    if (!job->workspace) {
-        (void)no_memory(&base->fault);
-        return;
-    }
-    if (prepare(job, &question) < 0) {
-        return;
-    }
-    int code = engine_ask(engine, &question, job->workspace, &answer, &learned);
-    if (code < 0) {
-        (void)(code == -EIO ? read_job_fail_model(base) : no_memory(&base->fault));
+    if (ask_model(job, &question, &answer, &learned) < 0) {
         return;
     }
     json_t *gaps = json_array();

@@ -25,6 +25,7 @@ static const struct method METHODS[] = {
     {"desk.completeness", METHOD_READ, desk_completeness},
     {"desk.standing", METHOD_READ, desk_standing},
     {"daemon.state", METHOD_READ, daemon_state},
+    {"daemon.rebuild", METHOD_READ, daemon_rebuild}, /* after all that was filed before it */
 };
 
 static void on_changes_done(uv_async_t *async)

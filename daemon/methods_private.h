@@ -59,4 +59,7 @@ void desk_standing(struct call *call, const json_t *params);
 /* daemon_state.c */
 void daemon_state(struct call *call, const json_t *params);
 
+/* daemon_rebuild.c */
+void daemon_rebuild(struct call *call, const json_t *params);
+
 #endif

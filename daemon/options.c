@@ -82,6 +82,10 @@ static const struct option OPTIONS[] = {
      OPTIONS_SETTING, false,
      "Memory for words, weights and what waits to be stored; what does not fit is read from the "
      "disk when it is wanted."},
+    {"rehearsal_share", TYPE_NUMBER, AT(rehearsal_share), 0, 1, "0.25", NULL, OPTIONS_SETTING,
+     false,
+     "Share of a core for learning each filed item once more while there is nothing else to do; 0 "
+     "for none."},
     {"stemming", TYPE_SWITCH, AT(stemming), 0, 0, "off", ON_OFF, OPTIONS_LEARNING, false,
      "Count the stems of words, where Snowball knows the item's language."},
     {"language", TYPE_LANGUAGE, AT(language), 0, 0, "", NULL, OPTIONS_LEARNING, false,
@@ -439,6 +443,16 @@ size_t options_reload(struct options *options, const struct options *wanted, con
         }
     }
     return held_back;
+}
+
+void options_take_learning(struct options *options, const struct options *from)
+{
+    for (size_t i = 0; i < OPTION_COUNT; i++) {
+        if (OPTIONS[i].group == OPTIONS_LEARNING) {
+            memcpy(member_of(options, &OPTIONS[i]), const_member_of(from, &OPTIONS[i]),
+                   member_bytes(&OPTIONS[i]));
+        }
+    }
 }
 
 /* --- for those who are set ----------------------------------------------------------------------

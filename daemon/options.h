@@ -38,6 +38,7 @@ struct options {
     uint64_t flush_every_ms;
     uint64_t flush_changes;
     uint64_t memory_budget_bytes;
+    double rehearsal_share;
     /* words */
     bool stemming;
     char language[OPTIONS_LANGUAGE_BYTES];
@@ -82,6 +83,9 @@ int options_read_file(struct options *options, const char *path, char *error)
  */
 size_t options_reload(struct options *options, const struct options *wanted,
                       const char **ret_first);
+
+/* Takes the options that learning depends on. */
+void options_take_learning(struct options *options, const struct options *from);
 
 size_t options_count(void);
 

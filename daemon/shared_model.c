@@ -29,6 +29,7 @@ int shared_model_init_take(struct shared_model *shared, struct model *model,
     }
     shared->model = model;
     shared->store = store;
+    shared->version = 0;
     shared->learned = learned;
     shared->broken = false;
     return 0;
@@ -38,6 +39,18 @@ void shared_model_deinit(struct shared_model *shared)
 {
     (void)pthread_rwlock_destroy(&shared->lock); /* nobody holds it any more */
     model_free(shared->model);
+}
+
+void shared_model_exchange(struct shared_model *shared, struct model **model,
+                           struct model_store **store)
+{
+    struct model *old_model = shared->model;
+    struct model_store *old_store = shared->store;
+    shared->model = *model;
+    shared->store = *store;
+    shared->version++;
+    *model = old_model;
+    *store = old_store;
 }
 
 /* Errors of these are errors of ours alone. */

@@ -14,9 +14,11 @@
 /* The model may be asked under shared_model_read, changed under shared_model_write. */
 struct shared_model {
     struct model *model;
-    struct model_store *store; /* what the model reads through a model_base */
-    uint64_t learned;          /* the seq that the model has learned up to */
-    bool broken;               /* a change was learned by half: it must not be asked any more */
+    struct model_store
+        *store;       /* where the model is kept, and read from by a model_base; borrowed */
+    uint64_t version; /* rises when another model takes the place */
+    uint64_t learned; /* the seq that the model has learned up to */
+    bool broken;      /* a change was learned by half: it must not be asked any more */
     pthread_rwlock_t lock;
 };
 
@@ -25,6 +27,11 @@ int shared_model_init_take(struct shared_model *shared, struct model *model,
                            struct model_store *store, uint64_t learned)
     __attribute__((warn_unused_result));
 void shared_model_deinit(struct shared_model *shared);
+
+/* Another model, which has learned as far, takes the place; under shared_model_write. The old one
+ * and its store come back in the same pointers, and are the caller's. */
+void shared_model_exchange(struct shared_model *shared, struct model **model,
+                           struct model_store **store);
 
 void shared_model_read(struct shared_model *shared);
 void shared_model_write(struct shared_model *shared);

@@ -1,7 +1,8 @@
 /*
  * Happy path: wait until something is committed behind what is learned; read a few changes in one
  * short view; take out the words of each and learn it under the lock; tell the backlog. Every now
- * and then the model is stored, which needs no lock, since this thread alone changes it.
+ * and then the model is stored, which needs no lock, since this thread alone changes it. When there
+ * is nothing to learn, stale entries of the worklist are scored again, then items rehearsed.
  *
  * Failure paths: a model that cannot be stored (a full disk) is tried again with the next flush. A
  * change that cannot be read or learned ends learning for good, until a restart: a model that has
@@ -15,16 +16,15 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "daemon/change_reader.h"
 #include "daemon/clock.h"
-#include "daemon/grow.h"
-#include "daemon/item_source.h"
 #include "daemon/learner/model_parts.h"
 #include "daemon/memory_shares.h"
 #include "daemon/model_base.h"
 #include "daemon/sync.h"
-#include "storage/items.h"
 
 enum {
+    REHEARSAL_US = 1000, /* then it looks for changes again */
     CHANGES_A_VIEW = 64,
     IDLE_MS = 1000,
     HELD_BACK_MS = 50,
@@ -36,129 +36,31 @@ enum {
     ROUND_LIMIT_US = 20000 /* a view that has been open this long is given up */
 };
 
-/* One of the two items that a change is about, as the learner takes it. */
-struct side {
-    struct item_buffer buffer;
-    struct item_record record;
-    struct item_source source;
-    struct features *features;
-    struct model_trial *trials;
-    size_t trial_capacity;
-    struct model_item item;
-};
-
 struct trainer {
     struct trainer_settings settings;
+    char text[MODEL_STORE_SETTINGS_BYTES]; /* the origin's, once the model is a rebuilt one */
     pthread_t thread;
-    struct side filed;
-    struct side replaced;
+    struct change_reader *reader;
     struct model_scratch *scratch;
     struct model_base base; /* entered for a round */
-    uint64_t learned;       /* this thread's own copy */
-    uint64_t kept;          /* the seq of the stored model */
-    uint64_t stored_at_us;  /* when it was stored, or tried, last */
-    uint64_t storing_us;    /* how long that took */
-    bool rescore_due;       /* the model has changed since there was nothing to score again */
-    bool rescored;          /* since the model was stored */
+    struct memory_shares shares;
+    uint64_t learned;      /* this thread's own copy */
+    uint64_t kept;         /* the seq of the stored model */
+    uint64_t stored_at_us; /* when it was stored, or tried, last */
+    uint64_t storing_us;   /* how long that took */
+    bool rescore_due;      /* the model has changed since there was nothing to score again */
+    bool idly_changed;     /* by scoring again or rehearsal, since the model was stored */
+    bool rehearse_due;
+    uint64_t rest_until_us; /* rehearsal takes no more than its share */
     bool scrub_due;
     uint64_t scrub_wait_ms; /* before it is gone on with */
     size_t scrub_left;      /* pages, when it was last looked at */
-    struct memory_shares shares;
     bool failed;
-    bool store_failed; /* when the model was stored last */
+    bool store_failed; /* when the model was to be stored last */
 };
 
 /* --- one change ---------------------------------------------------------------------------------
  */
-
-/* Looks at whether what belongs was given: a whole one after a check at random, halves where there
- * are second taggers. */
-static size_t list_trials(const struct item_record *record, struct model_trial *into)
-{
-    enum {
-        WHOLE = 2,
-        HALF = 1
-    };
-    size_t count = 0;
-    const struct item_check *check = &record->check;
-    for (size_t i = 0; check->is_random && i < check->given.count; i++) {
-        into[count++] = (struct model_trial){check->given.list[i], WHOLE, WHOLE};
-    }
-    for (size_t i = 0; check->is_random && i < check->hidden.count; i++) {
-        into[count++] = (struct model_trial){check->hidden.list[i], WHOLE, 0};
-    }
-    for (size_t i = 0; i < record->second_count; i++) {
-        struct numbers tags = record->seconds[i].tags;
-        for (size_t j = 0; j < tags.count; j++) {
-            bool was_given = numbers_hold(record->filed, tags.list[j]) &&
-                             !numbers_hold(record->prompted, tags.list[j]);
-            into[count++] = (struct model_trial){tags.list[j], HALF, was_given ? HALF : 0};
-        }
-    }
-    return count;
-}
-
-static size_t most_trials(const struct item_record *record)
-{
-    size_t most = record->check.given.count + record->check.hidden.count;
-    for (size_t i = 0; i < record->second_count; i++) {
-        most += record->seconds[i].tags.count;
-    }
-    return most;
-}
-
-/* The item as the learner takes it, of the record and the features. */
-static int fill_item(struct side *side, struct store_error *error)
-{
-    const struct item_record *record = &side->record;
-    if (GROW(&side->trials, &side->trial_capacity, most_trials(record)) < 0) {
-        return store_fail(error, STORE_NO_MEMORY, "out of memory");
-    }
-    /* A check goes through the tags of its day; those opened later are as before. */
-    bool is_checked = record->check.is_there;
-    side->item = (struct model_item){.number = record->seq,
-                                     .features = features_list(side->features),
-                                     .feature_count = features_count(side->features),
-                                     .tags = record->tags.list,
-                                     .tag_count = record->tags.count,
-                                     .examined = record->examined.list,
-                                     .examined_count = record->examined.count,
-                                     .known_not = record->known_not.list,
-                                     .known_not_count = record->known_not.count,
-                                     .checked_below = is_checked ? record->check.vocabulary : 0,
-                                     .same_words = record->change != ITEM_FILED,
-                                     .trials = side->trials,
-                                     .trial_count = list_trials(record, side->trials)};
-    return STORE_OK;
-}
-
-/* Reads a record and takes out its features; *ret_found says whether it is an item. */
-static int read_side(struct side *side, struct store_view *view, uint64_t seq, bool *ret_found,
-                     struct store_error *error)
-{
-    int code = items_read(view, seq, &side->buffer, &side->record, error);
-    if (code == STORE_NOT_FOUND) {
-        *error = (struct store_error){0}; /* superseded, and passed before */
-        *ret_found = false;
-        return STORE_OK;
-    }
-    if (code != STORE_OK) {
-        return code;
-    }
-    *ret_found = !item_is_withdrawn(&side->record);
-    if (!*ret_found) {
-        return STORE_OK;
-    }
-    code = item_source_fill(&side->source, &side->record);
-    if (code == 0) {
-        code = features_extract(side->features, &side->source.source, SIZE_MAX);
-    }
-    if (code != 0) {
-        return store_fail(error, code == -ENOMEM ? STORE_NO_MEMORY : STORE_CORRUPT,
-                          "the words of change %llu cannot be taken out", (unsigned long long)seq);
-    }
-    return fill_item(side, error);
-}
 
 static int fail_to_learn(const struct trainer *trainer, int code, uint64_t seq,
                          struct store_error *error)
@@ -175,22 +77,15 @@ static int fail_to_learn(const struct trainer *trainer, int code, uint64_t seq,
 static int learn_change(struct trainer *trainer, struct store_view *view, uint64_t seq,
                         uint64_t *ret_cost, struct store_error *error)
 {
-    bool is_filed = false;
-    bool is_replaced = false;
-    trainer->filed.record = (struct item_record){0};
-    int code = read_side(&trainer->filed, view, seq, &is_filed, error);
-    if (code == STORE_OK && trainer->filed.record.replaced > 0) {
-        code = read_side(&trainer->replaced, view, trainer->filed.record.replaced, &is_replaced,
-                         error);
-    }
+    struct change_read read;
+    int code = change_reader_read(trainer->reader, view, seq, &read, error);
     if (code != STORE_OK) {
         return code;
     }
     struct shared_model *shared = trainer->settings.shared;
     shared_model_write(shared);
-    if (is_filed || is_replaced) {
-        code = model_learn(shared->model, is_filed ? &trainer->filed.item : NULL,
-                           is_replaced ? &trainer->replaced.item : NULL, trainer->scratch);
+    if (read.item || read.replaced) {
+        code = model_learn(shared->model, read.item, read.replaced, trainer->scratch);
         model_trim(shared->model, trainer->shares.dictionary, trainer->shares.weights);
     }
     if (code == 0) {
@@ -199,8 +94,7 @@ static int learn_change(struct trainer *trainer, struct store_view *view, uint64
         shared->broken = true;
     }
     shared_model_unlock(shared);
-    const struct item_record *record = &trainer->filed.record;
-    *ret_cost = backlog_cost(record->title.size + record->text.size, record->filed.count);
+    *ret_cost = read.cost;
     return code == 0 ? STORE_OK : fail_to_learn(trainer, code, seq, error);
 }
 
@@ -211,16 +105,20 @@ static void wait_for_store(struct trainer *trainer, const struct store_error *er
     backlog_pause(trainer->settings.backlog, IDLE_MS);
 }
 
-/* --- memory -------------------------------------------------------------------------------------
+/* --- a round ------------------------------------------------------------------------------------
  */
 
 static void share_memory(struct trainer *trainer)
 {
+    const struct trainer_settings *settings = &trainer->settings;
     struct model_size size;
-    model_measure(trainer->settings.shared->model, &size);
+    model_measure(settings->shared->model, &size);
     uint64_t taken = size.counts_bytes + model_scratch_bytes(trainer->scratch) +
-                     workspaces_bytes(trainer->settings.workspaces);
-    trainer->shares = memory_shares_of(trainer->settings.memory_bytes, taken);
+                     workspaces_bytes(settings->workspaces);
+    if (settings->rebuild && rebuild_is_running(settings->rebuild)) {
+        taken += settings->memory_bytes / REBUILD_MEMORY_PART;
+    }
+    trainer->shares = memory_shares_of(settings->memory_bytes, taken);
 }
 
 /* Whether the model must be stored before more is learned. */
@@ -229,24 +127,35 @@ static bool is_full(const struct trainer *trainer)
     return model_changed_bytes(trainer->settings.shared->model) > trainer->shares.changed;
 }
 
-static void enter_base(struct trainer *trainer)
+/* Opens what a round reads. The model and its store fit together until end_round. */
+static int begin_round(struct trainer *trainer, struct store_view **ret_view,
+                       struct store_error *error)
 {
-    model_base_enter(&trainer->base, trainer->settings.model_store);
-    model_scratch_read(trainer->scratch, &trainer->base.base);
+    int code = store_read(trainer->settings.store, ret_view, error);
+    if (code == STORE_OK) {
+        share_memory(trainer);
+        model_base_enter(&trainer->base, trainer->settings.model_store);
+        model_scratch_read(trainer->scratch, &trainer->base.base);
+    }
+    return code;
+}
+
+static void end_round(struct trainer *trainer, struct store_view *view)
+{
+    model_base_leave(&trainer->base);
+    store_end(view);
 }
 
 /* Learns changes up to `last`, as many as one short view allows. */
 static int learn_some(struct trainer *trainer, uint64_t last, struct store_error *error)
 {
     struct store_view *view = NULL;
-    int code = store_read(trainer->settings.store, &view, error);
+    int code = begin_round(trainer, &view, error);
     if (code != STORE_OK) {
         wait_for_store(trainer, error); /* no change was skipped */
         return STORE_OK;
     }
     uint64_t begun_us = clock_steady_us();
-    share_memory(trainer);
-    enter_base(trainer);
     for (size_t i = 0; i < CHANGES_A_VIEW && trainer->learned < last; i++) {
         uint64_t before_us = clock_steady_us();
         uint64_t cost = 0;
@@ -261,8 +170,7 @@ static int learn_some(struct trainer *trainer, uint64_t last, struct store_error
             break;
         }
     }
-    model_base_leave(&trainer->base);
-    store_end(view);
+    end_round(trainer, view);
     if (code == STORE_OK) {
         troubles_end(trainer->settings.troubles, TROUBLE_LEARNING);
     }
@@ -275,7 +183,7 @@ static int learn_some(struct trainer *trainer, uint64_t last, struct store_error
 static bool is_store_due(const struct trainer *trainer)
 {
     uint64_t waited_us = clock_steady_us() - trainer->stored_at_us;
-    uint64_t changes = trainer->learned - trainer->kept + (trainer->rescored ? 1 : 0);
+    uint64_t changes = trainer->learned - trainer->kept + (trainer->idly_changed ? 1 : 0);
     if (is_full(trainer)) {
         return !trainer->store_failed || waited_us >= IDLE_MS * 1000ULL;
     }
@@ -305,7 +213,7 @@ static void store_model(struct trainer *trainer)
     shared_model_unlock(trainer->settings.shared);
     troubles_end(trainer->settings.troubles, TROUBLE_KEEPING);
     trainer->kept = trainer->learned;
-    trainer->rescored = false;
+    trainer->idly_changed = false;
     trainer->scrub_due = trainer->scrub_due || forgot;
     backlog_kept(trainer->settings.backlog, trainer->kept);
     trainer->settings.kept(trainer->settings.user);
@@ -341,18 +249,18 @@ static int rescore_item(struct trainer *trainer, struct store_view *view, uint64
 {
     struct shared_model *shared = trainer->settings.shared;
     struct worklist_entry entry;
-    bool is_filed = false;
-    int code = read_side(&trainer->filed, view, number, &is_filed, error);
+    const struct model_item *item = NULL;
+    int code = change_reader_item(trainer->reader, view, number, &item, error);
     if (code != STORE_OK) {
         return code;
     }
     /* Nobody else changes the model: scoring needs no lock. */
-    int result =
-        is_filed ? model_rescore(shared->model, &trainer->filed.item, trainer->scratch, &entry) : 0;
+    int result = item ? model_rescore(shared->model, item, trainer->scratch, &entry) : 0;
     if (result == 0) {
+        const struct base *base = &trainer->base.base;
         shared_model_write(shared);
-        result = is_filed ? model_relist(shared->model, &trainer->base.base, &entry)
-                          : model_delist(shared->model, &trainer->base.base, number);
+        result = item ? model_relist(shared->model, base, &entry)
+                      : model_delist(shared->model, base, number);
         shared_model_unlock(shared);
     }
     return result == 0 ? STORE_OK : fail_to_learn(trainer, result, number, error);
@@ -363,23 +271,92 @@ static bool rescore_some(struct trainer *trainer)
 {
     struct store_error error = {0};
     struct store_view *view = NULL;
-    if (store_read(trainer->settings.store, &view, &error) != STORE_OK) {
+    if (begin_round(trainer, &view, &error) != STORE_OK) {
         return false; /* learning will tell, if it lasts */
     }
     uint64_t number = 0;
     int next = 0;
     int code = STORE_OK;
-    enter_base(trainer);
     for (size_t i = 0; i < RESCORED_A_ROUND && code == STORE_OK && next == 0; i++) {
         next = model_next_stale(trainer->settings.shared->model, &trainer->base.base, &number);
         if (next == 0) {
             code = rescore_item(trainer, view, number, &error);
-            trainer->rescored = true;
+            trainer->idly_changed = true;
         }
     }
-    model_base_leave(&trainer->base);
-    store_end(view);
+    end_round(trainer, view);
     return code == STORE_OK && next == 0 && !is_full(trainer);
+}
+
+/* --- rehearsal ----------------------------------------------------------------------------------
+ */
+
+/* Whose turn it is; -ENOENT for nobody's. */
+static int next_rehearsal(struct trainer *trainer, uint64_t *ret_number)
+{
+    struct shared_model *shared = trainer->settings.shared;
+    shared_model_write(shared);
+    int result = model_next_rehearsal(shared->model, &trainer->base.base, ret_number);
+    shared_model_unlock(shared);
+    return result;
+}
+
+static int rehearse_item(struct trainer *trainer, struct store_view *view, uint64_t number,
+                         struct store_error *error)
+{
+    struct shared_model *shared = trainer->settings.shared;
+    const struct model_item *item = NULL;
+    int code = change_reader_item(trainer->reader, view, number, &item, error);
+    if (code != STORE_OK) {
+        return code;
+    }
+    int result = 0;
+    shared_model_write(shared);
+    if (item) {
+        result = model_rehearse(shared->model, item, trainer->scratch);
+        model_trim(shared->model, trainer->shares.dictionary, trainer->shares.weights);
+        shared->broken = shared->broken || result < 0;
+    } else {
+        model_skip_rehearsal(shared->model, number);
+    }
+    shared_model_unlock(shared);
+    return result == 0 ? STORE_OK : fail_to_learn(trainer, result, number, error);
+}
+
+/* Rehearses for a moment, and rests for as long as its share asks for. Says in *ret_more whether
+ * there is more. */
+static int rehearse_some(struct trainer *trainer, bool *ret_more, struct store_error *error)
+{
+    struct store_view *view = NULL;
+    uint64_t begun_us = clock_steady_us();
+    uint64_t now_us = begun_us;
+    uint64_t number = 0;
+    int next = 0;
+    *ret_more = false;
+    if (begin_round(trainer, &view, error) != STORE_OK) {
+        *error = (struct store_error){0}; /* learning will tell, if it lasts */
+        return STORE_OK;
+    }
+    int code = STORE_OK;
+    while (code == STORE_OK && next == 0 && now_us - begun_us < REHEARSAL_US && !is_full(trainer)) {
+        next = next_rehearsal(trainer, &number);
+        if (next == 0) {
+            code = rehearse_item(trainer, view, number, error);
+            trainer->idly_changed = true;
+        }
+        now_us = clock_steady_us();
+    }
+    end_round(trainer, view);
+    double share = trainer->settings.rehearsal_share;
+    trainer->rest_until_us = now_us + (uint64_t)((double)(now_us - begun_us) * (1.0 / share - 1.0));
+    *ret_more = next == 0;
+    return code;
+}
+
+static bool may_rehearse(const struct trainer *trainer)
+{
+    return trainer->rehearse_due && !trainer->rescore_due && !is_full(trainer) &&
+           clock_steady_us() >= trainer->rest_until_us;
 }
 
 /* --- the thread ---------------------------------------------------------------------------------
@@ -394,13 +371,40 @@ static void fail(struct trainer *trainer, const struct store_error *error)
     backlog_trainer_failed(trainer->settings.backlog);
 }
 
+/* A model that was built anew takes the place of this one, if one is ready. */
+static void take_over(struct trainer *trainer)
+{
+    struct trainer_settings *settings = &trainer->settings;
+    const struct rebuild_trainer offered = {
+        .learned = trainer->learned, .reader = &trainer->reader, .text = trainer->text};
+    if (!settings->rebuild || trainer->failed ||
+        !rebuild_take_over(settings->rebuild, settings->shared, &offered)) {
+        return;
+    }
+    settings->model_store = settings->shared->store;
+    settings->origin.settings = trainer->text;
+    trainer->kept = trainer->learned;
+    trainer->stored_at_us = clock_steady_us();
+    trainer->idly_changed = false;
+    trainer->rescore_due = true;
+    trainer->rehearse_due = settings->rehearsal_share > 0.0;
+    trainer->scrub_due = true;
+    trainer->scrub_left = 0;
+    backlog_kept(settings->backlog, trainer->kept);
+    settings->kept(settings->user);
+}
+
 /* How long to wait for work: until the model is to be stored, if anything is to be stored. */
 static uint64_t idle_ms(const struct trainer *trainer)
 {
     if (trainer->rescore_due) {
         return 0;
     }
-    if (trainer->learned == trainer->kept) {
+    if (trainer->rehearse_due) {
+        uint64_t now_us = clock_steady_us();
+        return now_us < trainer->rest_until_us ? (trainer->rest_until_us - now_us) / 1000 + 1 : 0;
+    }
+    if (trainer->learned == trainer->kept && !trainer->idly_changed) {
         return trainer->scrub_due ? trainer->scrub_wait_ms : IDLE_MS;
     }
     uint64_t most_ms = trainer->settings.flush_every_ms;
@@ -418,6 +422,23 @@ static void finish_scrubbing(struct trainer *trainer)
     }
 }
 
+/* What can be done while there is nothing to learn; anything learned makes all of it due. */
+static void work_idly(struct trainer *trainer, bool is_idle)
+{
+    struct store_error error = {0};
+    if (trainer->failed || !is_idle) {
+        trainer->rescore_due = !trainer->failed;
+        trainer->rehearse_due = !trainer->failed && trainer->settings.rehearsal_share > 0.0;
+        return;
+    }
+    if (trainer->rescore_due) {
+        trainer->rescore_due = rescore_some(trainer);
+    } else if (may_rehearse(trainer) &&
+               rehearse_some(trainer, &trainer->rehearse_due, &error) != STORE_OK) {
+        fail(trainer, &error);
+    }
+}
+
 static void *run(void *argument)
 {
     struct trainer *trainer = argument;
@@ -428,24 +449,20 @@ static void *run(void *argument)
         uint64_t behind = trainer->failed ? UINT64_MAX : trainer->learned;
         uint64_t last = backlog_wait_for_work(backlog, behind, idle_ms(trainer));
         bool is_idle = last <= behind;
-        bool must_wait = is_full(trainer); /* what was learned could not be stored */
-        if (must_wait) {
+        if (is_full(trainer)) { /* what was learned could not be stored */
             backlog_pause(backlog, IDLE_MS);
-        }
-        if (!is_idle && !must_wait && learn_some(trainer, last, &error) != STORE_OK) {
+        } else if (!is_idle && learn_some(trainer, last, &error) != STORE_OK) {
             fail(trainer, &error);
         }
-        trainer->rescore_due = !trainer->failed && (is_idle ? trainer->rescore_due : true);
-        if (is_idle && trainer->rescore_due) {
-            trainer->rescore_due = rescore_some(trainer);
-        }
+        work_idly(trainer, is_idle);
+        take_over(trainer);
         if (is_store_due(trainer) && !trainer->failed) {
             store_model(trainer);
         } else if (is_idle && trainer->scrub_due) {
             scrub(trainer);
         }
     }
-    if ((trainer->learned > trainer->kept || trainer->rescored) && !trainer->failed) {
+    if ((trainer->learned > trainer->kept || trainer->idly_changed) && !trainer->failed) {
         store_model(trainer);
     }
     finish_scrubbing(trainer);
@@ -455,18 +472,9 @@ static void *run(void *argument)
 /* --- life ---------------------------------------------------------------------------------------
  */
 
-static void side_deinit(struct side *side)
-{
-    item_buffer_deinit(&side->buffer);
-    item_source_deinit(&side->source);
-    features_free(side->features);
-    free(side->trials);
-}
-
 static void free_trainer(struct trainer *trainer)
 {
-    side_deinit(&trainer->filed);
-    side_deinit(&trainer->replaced);
+    change_reader_free(trainer->reader);
     model_scratch_free(trainer->scratch);
     free(trainer);
 }
@@ -478,15 +486,13 @@ int trainer_new(const struct trainer_settings *settings, struct trainer **ret_tr
         return -ENOMEM;
     }
     trainer->settings = *settings;
-    trainer->shares = memory_shares_of(settings->memory_bytes, 0);
     trainer->learned = settings->shared->learned;
     trainer->kept = settings->shared->learned;
     trainer->rescore_due = true;
+    trainer->rehearse_due = settings->rehearsal_share > 0.0;
+    trainer->shares = memory_shares_of(settings->memory_bytes, 0);
     trainer->scrub_due = true; /* a crash may have come between forgetting and overwriting */
-    int code = features_new(settings->features, &trainer->filed.features);
-    if (code == 0) {
-        code = features_new(settings->features, &trainer->replaced.features);
-    }
+    int code = change_reader_new(settings->features, &trainer->reader);
     if (code == 0) {
         code = model_scratch_new(&trainer->scratch);
     }

@@ -9,6 +9,7 @@
 
 #include "daemon/backlog.h"
 #include "daemon/model_keeper.h"
+#include "daemon/rebuild.h"
 #include "daemon/shared_model.h"
 #include "daemon/troubles.h"
 #include "daemon/workspace.h"
@@ -25,8 +26,10 @@ struct trainer_settings {
     struct troubles *troubles;
     const struct features_settings *features;
     struct model_origin origin;
+    struct rebuild *rebuild; /* a model that may take the place of this one; NULL: never */
     uint64_t flush_every_ms;
     uint64_t flush_changes;
+    double rehearsal_share;        /* of a core, for items learned again; 0: none */
     uint64_t memory_bytes;         /* for the whole process; see trainer.c */
     struct workspaces *workspaces; /* of those who ask, for what they take of it */
     void *user;

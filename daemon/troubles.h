@@ -13,6 +13,7 @@ enum trouble {
     TROUBLE_FORGETTING, /* what was forgotten may still be in the model's */
     TROUBLE_LEARNING,   /* learning has stopped */
     TROUBLE_KEEPING,    /* what was learned cannot be written */
+    TROUBLE_REBUILDING, /* the last rebuild has failed */
     TROUBLE_KINDS
 };
 

@@ -1,14 +1,27 @@
 #include "daemon/workspace.h"
 
+#include <stdbool.h>
+#include <stdio.h>
 #include <stdlib.h>
+#include <string.h>
 
 #include "daemon/sync.h"
+
+/* The copy has a language of its own. */
+static void copy_settings(struct workspaces *workspaces, const struct features_settings *settings)
+{
+    const char *language = settings->words.language ? settings->words.language : "";
+    workspaces->settings = *settings;
+    (void)snprintf(workspaces->language, sizeof workspaces->language, "%s", language); /* it fits */
+    workspaces->settings.words.language = workspaces->language;
+}
 
 int workspaces_init(struct workspaces *workspaces, const struct features_settings *settings)
 {
     workspaces->free = NULL;
     workspaces->bytes = 0;
-    workspaces->settings = settings;
+    workspaces->version = 0;
+    copy_settings(workspaces, settings);
     return -pthread_mutex_init(&workspaces->mutex, NULL);
 }
 
@@ -22,13 +35,32 @@ static void free_workspace(struct workspace *workspace)
     free(workspace);
 }
 
+static void free_all(struct workspace *workspace)
+{
+    while (workspace) {
+        struct workspace *next = workspace->next;
+        free_workspace(workspace);
+        workspace = next;
+    }
+}
+
+void workspaces_use(struct workspaces *workspaces, const struct features_settings *settings)
+{
+    sync_lock(&workspaces->mutex);
+    struct workspace *outdated = workspaces->free;
+    workspaces->free = NULL;
+    workspaces->version++;
+    for (const struct workspace *at = outdated; at; at = at->next) {
+        workspaces->bytes -= at->bytes;
+    }
+    copy_settings(workspaces, settings);
+    sync_unlock(&workspaces->mutex);
+    free_all(outdated);
+}
+
 void workspaces_deinit(struct workspaces *workspaces)
 {
-    while (workspaces->free) {
-        struct workspace *workspace = workspaces->free;
-        workspaces->free = workspace->next;
-        free_workspace(workspace);
-    }
+    free_all(workspaces->free);
     (void)pthread_mutex_destroy(&workspaces->mutex); /* nobody holds it any more */
 }
 
@@ -50,22 +82,40 @@ struct workspace *workspaces_borrow(struct workspaces *workspaces)
 {
     sync_lock(&workspaces->mutex);
     struct workspace *workspace = workspaces->free;
+    struct features_settings settings = workspaces->settings;
+    uint64_t version = workspaces->version;
+    char language[WORKSPACE_LANGUAGE_BYTES];
+    memcpy(language, workspaces->language, sizeof language);
     if (workspace) {
         workspaces->free = workspace->next;
     }
     sync_unlock(&workspaces->mutex);
-    return workspace ? workspace : make_workspace(workspaces->settings);
+    if (workspace) {
+        return workspace;
+    }
+    settings.words.language = language;
+    workspace = make_workspace(&settings);
+    if (workspace) {
+        workspace->version = version;
+    }
+    return workspace;
 }
 
 void workspaces_return(struct workspaces *workspaces, struct workspace *workspace)
 {
     uint64_t bytes = model_scratch_bytes(workspace->scratch);
     sync_lock(&workspaces->mutex);
-    workspaces->bytes += bytes - workspace->bytes;
-    workspace->bytes = bytes;
-    workspace->next = workspaces->free;
-    workspaces->free = workspace;
+    bool is_outdated = workspace->version != workspaces->version;
+    workspaces->bytes += (is_outdated ? 0 : bytes) - workspace->bytes;
+    if (!is_outdated) {
+        workspace->bytes = bytes;
+        workspace->next = workspaces->free;
+        workspaces->free = workspace;
+    }
     sync_unlock(&workspaces->mutex);
+    if (is_outdated) {
+        free_workspace(workspace);
+    }
 }
 
 uint64_t workspaces_bytes(struct workspaces *workspaces)

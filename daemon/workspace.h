@@ -11,9 +11,14 @@
 #include "daemon/learner/model.h"
 #include "storage/items.h"
 
+enum {
+    WORKSPACE_LANGUAGE_BYTES = 16
+};
+
 struct workspace {
     struct workspace *next;
-    uint64_t bytes; /* of the scratch, when it was returned last */
+    uint64_t version; /* of the words that it takes out */
+    uint64_t bytes;   /* of the scratch, when it was returned last */
     struct features *features;
     struct model_scratch *scratch;
     struct item_buffer buffer;
@@ -26,12 +31,18 @@ struct workspace {
 struct workspaces {
     pthread_mutex_t mutex;
     struct workspace *free;
-    uint64_t bytes;                           /* of all, borrowed ones too */
-    const struct features_settings *settings; /* borrowed */
+    uint64_t bytes; /* of all, borrowed ones too */
+    struct features_settings settings;
+    char language[WORKSPACE_LANGUAGE_BYTES]; /* of the settings */
+    uint64_t version;                        /* of the settings, from 0 */
 };
 
+/* The settings are copied. */
 int workspaces_init(struct workspaces *workspaces, const struct features_settings *settings)
     __attribute__((warn_unused_result));
+
+/* Other words are taken out in what is borrowed from now on. Any thread. */
+void workspaces_use(struct workspaces *workspaces, const struct features_settings *settings);
 
 /* All must have been returned. */
 void workspaces_deinit(struct workspaces *workspaces);

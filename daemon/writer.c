@@ -46,6 +46,7 @@ struct writer {
     pthread_cond_t wake;
     struct change_list queued; /* below: under the mutex */
     struct change_list done;
+    struct features *other_words; /* to count with from now on; NULL: no others */
     bool woken;
     bool stopping;
 };
@@ -69,6 +70,18 @@ static uint64_t cost_of(const struct change *change)
 {
     return backlog_cost(change->filing.title.size + change->filing.text.size,
                         change->filing.tag_count);
+}
+
+static void take_other_words(struct writer *writer)
+{
+    sync_lock(&writer->mutex);
+    struct features *other = writer->other_words;
+    writer->other_words = NULL;
+    sync_unlock(&writer->mutex);
+    if (other) {
+        features_free(writer->features);
+        writer->features = other;
+    }
 }
 
 static bool has_too_many_words(struct writer *writer, const struct change *change)
@@ -240,6 +253,7 @@ static void commit_next_group(struct writer *writer)
 {
     uint64_t room = backlog_wait_for_room(writer->settings.backlog);
     struct change *group = take_group(writer, room);
+    take_other_words(writer);
     for (struct change *change = group; change; change = change->next) {
         change->has_too_many_words = has_too_many_words(writer, change);
     }
@@ -426,8 +440,22 @@ void writer_free(struct writer *writer)
     sync_join(writer->thread);
     deinit_queue(writer);
     features_free(writer->features);
+    features_free(writer->other_words);
     codec_deinit(&writer->record);
     free(writer);
+}
+
+void writer_use_words(struct writer *writer, const struct features_settings *settings)
+{
+    struct features *words = NULL;
+    if (features_new(settings, &words) < 0) {
+        return;
+    }
+    sync_lock(&writer->mutex);
+    struct features *unused = writer->other_words;
+    writer->other_words = words;
+    sync_unlock(&writer->mutex);
+    features_free(unused);
 }
 
 void writer_push(struct writer *writer, struct change *change)

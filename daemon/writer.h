@@ -59,6 +59,10 @@ int writer_new(const struct writer_settings *settings, struct writer **ret_write
 /* Commits what is queued, ends the thread and frees the writer. */
 void writer_free(struct writer *writer);
 
+/* Counts other words from now on; where there is no memory for it, those it counted before. Any
+ * thread. */
+void writer_use_words(struct writer *writer, const struct features_settings *settings);
+
 /* Queues a change. Any thread. */
 void writer_push(struct writer *writer, struct change *change);
 

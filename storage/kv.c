@@ -1,6 +1,7 @@
 #include "storage/kv.h"
 
 #include <errno.h>
+#include <fcntl.h>
 #include <limits.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -204,6 +205,19 @@ uint64_t kv_file_bytes(const struct kv *kv)
         return 0;
     }
     return (uint64_t)status.st_size;
+}
+
+int kv_exchange(struct kv *one, struct kv *other, struct store_error *error)
+{
+    if (renameat2(AT_FDCWD, one->directory, AT_FDCWD, other->directory, RENAME_EXCHANGE) < 0) {
+        int code = errno;
+        return store_fail(error, STORE_BROKEN, "%s and %s cannot be exchanged: %s", one->directory,
+                          other->directory, strerror(code));
+    }
+    char *directory = one->directory;
+    one->directory = other->directory;
+    other->directory = directory;
+    return STORE_OK;
 }
 
 /* --- transactions ------------------------------------------------------------------------------

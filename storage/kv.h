@@ -51,6 +51,15 @@ void kv_close(struct kv *kv);
 /* Bytes of the file. */
 uint64_t kv_file_bytes(const struct kv *kv);
 
+/*
+ * Has two open environments of one file system change their directories' names, in one step of the
+ * file system: a crash leaves both as they were or both exchanged. It is durable once the
+ * directory that holds them has been synced. Nobody else may use either meanwhile. On failure both
+ * are as they were.
+ */
+int kv_exchange(struct kv *one, struct kv *other, struct store_error *error)
+    __attribute__((warn_unused_result));
+
 int kv_begin(struct kv *kv, bool write, struct kv_txn **ret_txn, struct store_error *error)
     __attribute__((warn_unused_result));
 

@@ -20,8 +20,14 @@ struct model_store_writing {
 int model_store_open(const struct store_settings *settings, struct model_store **ret_store,
                      struct store_error *error)
 {
+    return model_store_open_in(settings, "model", ret_store, error);
+}
+
+int model_store_open_in(const struct store_settings *settings, const char *folder,
+                        struct model_store **ret_store, struct store_error *error)
+{
     char directory[PATH_MAX];
-    int length = snprintf(directory, sizeof directory, "%s/model", settings->home);
+    int length = snprintf(directory, sizeof directory, "%s/%s", settings->home, folder);
     if (length < 0 || (size_t)length >= sizeof directory) {
         return store_fail(error, STORE_DENIED, "the path of the home is too long");
     }

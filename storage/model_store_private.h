@@ -24,6 +24,11 @@ struct model_store {
     struct kv *kv;
 };
 
+/* As model_store_open, in another folder of the home. */
+int model_store_open_in(const struct store_settings *settings, const char *folder,
+                        struct model_store **ret_store, struct store_error *error)
+    __attribute__((warn_unused_result));
+
 /* The key of the one record in MODEL_META. */
 static inline struct kv_bytes model_store_head_key(void)
 {

@@ -6,16 +6,17 @@
  * read, at once. A record that a later change takes the place of stays until the learner has passed
  * that change (store_erase_passed): until then its words and tags can still be taken out.
  *
- *   meta        one record: format, UUID, last seq, counts
+ *   meta        one record: format, UUID, last seq, counts; and notes (store_notes.h)
  *   ids         id -> the seq of its newest change, and whether that withdrew it
  *   records     (seq, piece) -> the change, in pieces that stay in a leaf page
  *   superseded  seq -> the seq of the record that it took the place of
  *   tags        number -> name, counts, state
  *   tag_names   name -> number
  *
- * Any number of threads may read (store_read); one thread writes (store_write). No view may outlive
- * one job. Failure leaves everything as it was: what was put in a writing view is there only once
- * store_commit has returned 0, and then it is durable.
+ * Any number of threads may read (store_read); one at a time writes (store_write; others wait), and
+ * one alone, the writer, deletes and scrubs. No view may outlive one job. Failure leaves everything
+ * as it was: what was put in a writing view is there only once store_commit has returned 0, and
+ * then it is durable.
  */
 #ifndef UNDERTAG_STORE_H
 #define UNDERTAG_STORE_H

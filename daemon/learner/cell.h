@@ -80,7 +80,8 @@ static inline uint16_t cell_code_accumulator(float value, uint64_t noise)
 static inline int16_t cell_move_weight(int16_t weight, float change, uint64_t noise)
 {
     float chance = (float)((noise >> 32U) & 0xFFFFFFU) * 0x1p-24F;
-    float moved = floorf((float)weight + change / CELL_STEP + chance);
+    /* Rounded before it is added: beside a large weight the chance would be rounded, too. */
+    float moved = (float)weight + floorf(change / CELL_STEP + chance);
     moved = fminf(fmaxf(moved, -(float)CELL_MOST_WEIGHT), (float)CELL_MOST_WEIGHT);
     return (int16_t)moved;
 }

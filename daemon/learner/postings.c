@@ -256,6 +256,9 @@ int postings_admit(struct postings *postings, const struct base *base, uint32_t 
         for (uint32_t number = 0; result == 0; number++) {
             result = admit_chunk(postings, base, word, number);
         }
+        if (result != -ENOENT) {
+            (void)postings_drop(postings, word); /* a part would pass for the whole */
+        }
         return result == -ENOENT ? 0 : result;
     }
     for (uint32_t number = 0; number < entry->chunk_count; number++) {
@@ -390,10 +393,7 @@ int postings_replace(struct postings *postings, uint32_t word, const uint32_t *n
         memcpy(chunk->numbers, numbers + first * postings->stride,
                chunk->count * postings->stride * sizeof *numbers);
     }
-    if (chunks == 0) {
-        index_remove(&postings->index, word);
-    }
-    return 0;
+    return 0; /* a word without chunks stays known: the base still has some */
 }
 
 uint64_t postings_drop(struct postings *postings, uint32_t word)
@@ -479,6 +479,12 @@ const struct postings_cut *postings_cuts(const struct postings *postings, size_t
 
 void postings_clean(struct postings *postings)
 {
+    for (size_t i = 0; i < postings->cut_count; i++) {
+        const struct index_word *entry = index_find(&postings->index, postings->cuts[i].word);
+        if (entry && entry->chunk_count == 0) {
+            index_remove(&postings->index, postings->cuts[i].word);
+        }
+    }
     postings->cut_count = 0;
     for (size_t i = 0; i < postings->changed_count; i++) {
         postings->chunks[postings->changed[i]].is_changed = false;

@@ -5,8 +5,8 @@
  */
 #include <errno.h>
 #include <stdlib.h>
+#include <string.h>
 
-#include "daemon/grow.h"
 #include "daemon/learner/cell.h"
 #include "daemon/learner/weights.h"
 #include "daemon/learner/weights_private.h"
@@ -24,24 +24,32 @@ enum {
     LEAST_WEIGHT = 3                /* steps of a cell: .0015; less is next to nothing */
 };
 
-bool weights_compaction_due(size_t before, size_t after)
+static size_t count_main(const struct weights *weights, uint32_t word)
 {
+    size_t stride = postings_stride(weights->postings);
+    uint32_t chunks = postings_chunks(weights->postings, word);
+    size_t count = 0;
+    for (uint32_t number = 0; number < chunks; number++) {
+        const struct chunk *chunk =
+            postings_at(weights->postings, postings_place(weights->postings, word, number));
+        for (size_t j = 0; j < chunk->count; j++) {
+            count += chunk->numbers[j * stride + 1] != 0;
+        }
+    }
+    return count;
+}
+
+bool weights_compaction_due(const struct weights *weights, uint32_t word, size_t created)
+{
+    if (created == 0 || postings_count(weights->postings, word) < FIRST_DUE) {
+        return false;
+    }
+    size_t after = count_main(weights, word);
     size_t due = FIRST_DUE;
-    while (due <= before) {
+    while (due <= after - created) {
         due += due / GROWTH_PART;
     }
     return due <= after;
-}
-
-/* The heaviest of a posting's cells, in steps. */
-static uint32_t impact(const uint32_t *posting, size_t stride)
-{
-    uint32_t most = 0;
-    for (size_t i = 1; i < stride; i++) {
-        uint32_t weight = (uint32_t)abs(cell_weight(posting[i]));
-        most = weight > most ? weight : most;
-    }
-    return most;
 }
 
 /* Postings of like impact stay together: by powers of two, then by tag. */
@@ -95,18 +103,31 @@ static int init(struct weights *weights, size_t count, struct compaction *ret_co
     return 0;
 }
 
-/* Whether a posting stays; one that goes is counted. */
-static bool is_worth_keeping(struct weights *weights, uint32_t document_count,
-                             const uint32_t *posting, uint32_t steps)
+static uint32_t steps_of(uint32_t cell)
+{
+    return (uint32_t)abs(cell_weight(cell));
+}
+
+/* Empties the cells of a posting that are not worth their place, lane by lane, so that no lane
+ * depends on another; what goes from the main lane is counted. Whether any cell is left. */
+static bool prune(struct weights *weights, uint32_t document_count, uint32_t *posting,
+                  size_t stride)
 {
     double specificity = weights->settings.specificity;
     double tag_count = (double)weights->tags[posting[0]].count;
-    if (specificity > 0.0 && (double)document_count > PRUNING_MARGIN * specificity * tag_count) {
-        weights->pruned.unspecific++;
-        return false;
+    bool is_unspecific =
+        specificity > 0.0 && (double)document_count > PRUNING_MARGIN * specificity * tag_count;
+    bool is_any_left = false;
+    for (size_t i = 1; i < stride; i++) {
+        bool is_tiny = steps_of(posting[i]) < LEAST_WEIGHT;
+        if (i == 1 + WEIGHTS_MAIN && posting[i] != 0) {
+            weights->pruned.unspecific += is_unspecific;
+            weights->pruned.tiny += is_tiny && !is_unspecific;
+        }
+        posting[i] = is_unspecific || is_tiny ? 0 : posting[i];
+        is_any_left = is_any_left || posting[i] != 0;
     }
-    weights->pruned.tiny += steps < LEAST_WEIGHT;
-    return steps >= LEAST_WEIGHT;
+    return is_any_left;
 }
 
 static void choose(struct compaction *compaction, const struct weights_feature *feature)
@@ -119,14 +140,11 @@ static void choose(struct compaction *compaction, const struct weights_feature *
         const struct chunk *chunk = postings_at(
             weights->postings, postings_place(weights->postings, feature->word, number));
         for (size_t j = 0; j < chunk->count; j++, at++) {
-            const uint32_t *posting = chunk->numbers + j * stride;
-            uint32_t steps = impact(posting, stride);
-            for (size_t i = 0; i < stride; i++) {
-                compaction->copy[at * stride + i] = posting[i];
-            }
-            if (is_worth_keeping(weights, feature->document_count, posting, steps)) {
-                compaction->kept[compaction->kept_count++] =
-                    (struct ordered){order_of(steps, posting[0]), at};
+            uint32_t *posting = compaction->copy + at * stride;
+            memcpy(posting, chunk->numbers + j * stride, stride * sizeof *posting);
+            if (prune(weights, feature->document_count, posting, stride)) {
+                uint64_t order = order_of(steps_of(posting[1 + WEIGHTS_MAIN]), posting[0]);
+                compaction->kept[compaction->kept_count++] = (struct ordered){order, at};
             }
         }
     }
@@ -145,10 +163,8 @@ int weights_compact(struct weights *weights, const struct weights_feature *featu
         qsort(compaction.kept, compaction.kept_count, sizeof *compaction.kept, compare_ordered);
     }
     for (size_t k = 0; k < compaction.kept_count; k++) {
-        const uint32_t *posting = compaction.copy + compaction.kept[k].at * stride;
-        for (size_t i = 0; i < stride; i++) {
-            compaction.sorted[k * stride + i] = posting[i];
-        }
+        memcpy(compaction.sorted + k * stride, compaction.copy + compaction.kept[k].at * stride,
+               stride * sizeof *compaction.copy);
     }
     weights->posting_count -= count - compaction.kept_count;
     int result = postings_replace(weights->postings, feature->word, compaction.sorted,

@@ -78,8 +78,25 @@ static int activate_rival(const struct learning *learning, enum weights_lane lan
     return is_rival ? activate(learning, &wanted) : 0;
 }
 
+/* The logistic loss has rivals below the floor, too. */
+static int activate_touched(const struct learning *learning, enum weights_lane lane)
+{
+    const struct weights_scratch *scratch = learning->scratch;
+    for (size_t i = 0; i < scratch->touched_count; i++) {
+        uint32_t tag = scratch->touched[i];
+        float score = weights_tag_score(learning->weights, scratch, lane, tag);
+        if (!scratch->is_given[tag] && activate_rival(learning, lane, tag, score) < 0) {
+            return -ENOMEM;
+        }
+    }
+    return 0;
+}
+
 static int activate_rivals(const struct learning *learning, enum weights_lane lane)
 {
+    if (learning->weights->settings.surrogate == SURROGATE_LOGISTIC) {
+        return activate_touched(learning, lane);
+    }
     size_t count = 0;
     const struct weights_rival *rivals = weights_rivals(learning->scratch, lane, &count);
     for (size_t i = 0; i < count; i++) {
@@ -104,6 +121,16 @@ static int activate_denied(const struct learning *learning, enum weights_lane la
     return 0;
 }
 
+static int note_count(struct weights *weights, const struct weights_given *given)
+{
+    struct tag_entry *entry = &weights->tags[given->tag];
+    if (entry->count == given->tag_count) {
+        return 0;
+    }
+    entry->count = given->tag_count;
+    return marks_add(&weights->changed_tags, given->tag);
+}
+
 static int activate_lane(const struct learning *learning, enum weights_lane lane)
 {
     const struct weights_example *example = learning->example;
@@ -115,7 +142,9 @@ static int activate_lane(const struct learning *learning, enum weights_lane lane
                                               .sign = 1.0F,
                                               .factor = given->factors[lane]};
         learning->scratch->is_given[given->tag] = 1;
-        learning->weights->tags[given->tag].count = given->tag_count;
+        if (note_count(learning->weights, given) < 0) {
+            return -ENOMEM;
+        }
         if (activate(learning, &wanted) < 0) {
             return -ENOMEM;
         }
@@ -180,10 +209,13 @@ static int collect_posting(const struct learning *learning, const struct weights
         }
         uint32_t cell_at = at + 1 + (uint32_t)lane;
         uint32_t cell = postings_at(learning->weights->postings, place)->numbers[cell_at];
-        if ((cell != 0 || may_create(learning->weights, feature, &scratch->active[slot - 1])) &&
-            add_hit(learning, feature, place, cell_at, slot - 1) < 0) {
+        if (cell == 0 && !may_create(learning->weights, feature, &scratch->active[slot - 1])) {
+            continue;
+        }
+        if (add_hit(learning, feature, place, cell_at, slot - 1) < 0) {
             return -ENOMEM;
         }
+        learning->scratch->created += cell == 0 && lane == WEIGHTS_MAIN;
     }
     return 0;
 }
@@ -267,7 +299,7 @@ static int note_due(struct weights_scratch *scratch, const struct weights_featur
 static int collect_hits(const struct learning *learning, const struct weights_feature *feature)
 {
     const struct postings *postings = learning->weights->postings;
-    size_t before = postings_count(postings, feature->word);
+    learning->scratch->created = 0;
     uint32_t chunks = postings_chunks(postings, feature->word);
     for (uint32_t number = 0; number < chunks; number++) {
         uint32_t place = postings_place(postings, feature->word, number);
@@ -278,7 +310,7 @@ static int collect_hits(const struct learning *learning, const struct weights_fe
     if (create_missing(learning, feature) < 0) {
         return -ENOMEM;
     }
-    return weights_compaction_due(before, postings_count(postings, feature->word))
+    return weights_compaction_due(learning->weights, feature->word, learning->scratch->created)
                ? note_due(learning->scratch, feature)
                : 0;
 }

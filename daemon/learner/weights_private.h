@@ -42,8 +42,9 @@ struct weights {
 /* Puts the tag on the list of raised ones, or takes it off, as its biases ask for. */
 void weights_refresh_raised(struct weights *weights, uint32_t tag);
 
-/* Whether a word's postings are to be compacted as their number rises. */
-bool weights_compaction_due(size_t before, size_t after);
+/* Whether a word's postings are to be compacted, now that so many weights of the main lane have
+ * come. */
+bool weights_compaction_due(const struct weights *weights, uint32_t word, size_t created);
 
 /* Orders and prunes the postings of an admitted word. Returns 0 or -ENOMEM. */
 int weights_compact(struct weights *weights, const struct weights_feature *feature)

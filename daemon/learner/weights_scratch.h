@@ -65,6 +65,7 @@ struct weights_scratch {
     struct scratch_hit *hits;
     size_t hit_count;
     size_t hit_capacity;
+    size_t created;              /* cells of the main lane that are new, of the word at hand */
     struct weights_feature *due; /* words whose postings have become many */
     size_t due_count;
     size_t due_capacity;

@@ -42,6 +42,15 @@ static void before_the_rate_is_known_the_count_stands_alone(void **state)
     assert_line(&view, 79, "0 items");
 }
 
+static void what_is_counted_may_be_something_else(void **state)
+{
+    (void)state;
+    const struct progress_view one = {.count = 1, .noun = "change", .rate = -1, .seconds_left = -1};
+    const struct progress_view two = {.count = 2, .noun = "change", .rate = -1, .seconds_left = -1};
+    assert_line(&one, 79, "1 change");
+    assert_line(&two, 79, "2 changes");
+}
+
 static void what_does_not_fit_a_narrow_terminal_is_left_out(void **state)
 {
     (void)state;
@@ -143,6 +152,7 @@ int main(void)
         cmocka_unit_test(the_line_tells_share_count_rate_and_time_left),
         cmocka_unit_test(without_a_known_size_there_is_no_share_and_no_time_left),
         cmocka_unit_test(before_the_rate_is_known_the_count_stands_alone),
+        cmocka_unit_test(what_is_counted_may_be_something_else),
         cmocka_unit_test(what_does_not_fit_a_narrow_terminal_is_left_out),
         cmocka_unit_test_setup_teardown(the_line_renews_itself_at_most_ten_times_a_second, set_up,
                                         tear_down),

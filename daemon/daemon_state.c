@@ -6,6 +6,7 @@
 #include <string.h>
 #include <unistd.h>
 
+#include "daemon/answer.h"
 #include "daemon/clock.h"
 #include "daemon/params.h"
 #include "daemon/read_job.h"
@@ -75,19 +76,78 @@ static json_t *loop_json(const struct methods *methods)
 /* --- in the pool --------------------------------------------------------------------------------
  */
 
-/* Bytes of memory that the process has in use now; 0 where the system does not tell. */
-static json_int_t resident_bytes(void)
+/* Bytes of memory that the process has in use now: all, and what is not a part of a file (the rest
+ * the system can take back at any time). Zeros where the system does not tell. */
+struct process_memory {
+    uint64_t resident;
+    uint64_t anonymous;
+};
+
+static struct process_memory read_process_memory(void)
 {
     char line[128];
     FILE *file = fopen("/proc/self/statm", "re");
     if (!file) {
-        return 0;
+        return (struct process_memory){0};
     }
     char *read = fgets(line, sizeof line, file);
-    (void)fclose(file);                                   /* it was only read */
-    const char *second = read ? strchr(line, ' ') : NULL; /* the first number is address space */
-    long pages = second ? strtol(second, NULL, 10) : 0;
-    return (json_int_t)pages * (json_int_t)sysconf(_SC_PAGESIZE);
+    (void)fclose(file);                         /* it was only read */
+    char *at = read ? strchr(line, ' ') : NULL; /* the first number is address space */
+    if (!at) {
+        return (struct process_memory){0};
+    }
+    uint64_t page = (uint64_t)sysconf(_SC_PAGESIZE);
+    uint64_t resident = strtoull(at, &at, 10);
+    uint64_t of_files = strtoull(at, NULL, 10);
+    return (struct process_memory){.resident = resident * page,
+                                   .anonymous = (resident - of_files) * page};
+}
+
+static json_t *memory_json(const struct engine_size *size)
+{
+    struct process_memory process = read_process_memory();
+    json_t *memory = json_object();
+    answer_add(&memory, "resident", answer_count(process.resident));
+    answer_add(&memory, "anonymous", answer_count(process.anonymous));
+    answer_add(&memory, "budget", answer_count(size->budget_bytes));
+    answer_add(&memory, "dictionary", answer_count(size->model.dictionary_bytes));
+    answer_add(&memory, "weights", answer_count(size->model.weights_bytes));
+    answer_add(&memory, "counts", answer_count(size->model.counts_bytes));
+    answer_add(&memory, "worklist", answer_count(size->model.worklist_bytes));
+    answer_add(&memory, "asking", answer_count(size->asking_bytes));
+    return memory;
+}
+
+static json_t *disk_json(const struct engine_size *size)
+{
+    json_t *disk = json_object();
+    answer_add(&disk, "store", answer_count(size->store_bytes));
+    answer_add(&disk, "model", answer_count(size->model_bytes));
+    return disk;
+}
+
+static json_t *rehearsal_json(const struct model_rehearsal *rehearsal)
+{
+    json_t *object = json_object();
+    answer_add(&object, "passes", answer_count(rehearsal->rounds));
+    answer_add(&object, "items", answer_count(rehearsal->items));
+    return object;
+}
+
+static json_t *pruned_json(const struct model_size *size)
+{
+    json_t *object = json_object();
+    answer_add(&object, "unspecific", answer_count(size->pruned.unspecific));
+    answer_add(&object, "tiny", answer_count(size->pruned.tiny));
+    return object;
+}
+
+static json_t *worklist_json(const struct model_size *size)
+{
+    json_t *object = json_object();
+    answer_add(&object, "kept", answer_count(size->listed));
+    answer_add(&object, "stale", answer_count(size->stale));
+    return object;
 }
 
 static json_t *faults_json(struct troubles *troubles)
@@ -122,13 +182,19 @@ static json_t *ended_json(const struct rebuild_state *rebuild)
                : json_null();
 }
 
-static int add_rebuild(json_t *state, struct engine *engine, uint64_t committed)
+static void add_rebuild(json_t **state, struct engine *engine, uint64_t committed)
 {
     struct rebuild_state rebuild;
     engine_read_rebuild(engine, &rebuild);
-    int code = json_object_set_new(state, "rebuild", running_json(&rebuild, committed));
-    code |= json_object_set_new(state, "rebuilt", ended_json(&rebuild));
-    return code;
+    answer_add(state, "rebuild", running_json(&rebuild, committed));
+    answer_add(state, "rebuilt", ended_json(&rebuild));
+}
+
+static void add_progress(json_t **state, const struct backlog_numbers *progress)
+{
+    answer_add(state, "seq", answer_count(progress->committed));
+    answer_add(state, "learned", answer_count(progress->learned));
+    answer_add(state, "backlog", answer_count(progress->committed - progress->learned));
 }
 
 static json_t *state_json(struct state_job *job, struct store_totals totals)
@@ -136,31 +202,28 @@ static json_t *state_json(struct state_job *job, struct store_totals totals)
     struct engine *engine = job->job.methods->engine;
     struct engine_size size;
     engine_measure(engine, &size);
-    struct backlog_numbers progress = engine_count(engine).progress;
-    const json_t *of_loop = job->of_loop;
     engine_lay_over(engine, &job->options);
-    json_t *state = json_pack(
-        "{s:s, s:i, s:O, s:I, s:I, s:I, s:I, s:I, s:I, s:I, s:{s:I, s:I, s:I, s:I, s:I, s:I, s:I, "
-        "s:I}, "
-        "s:{s:I, s:I}, "
-        "s:O, s:O, s:o, s:o, s:{s:i}, s:{s:I, s:I}, s:n, s:o}",
-        "version", UNDERTAG_VERSION, "format", (int)STORE_FORMAT, "uptime_s",
-        json_object_get(of_loop, "uptime_s"), "items", (json_int_t)totals.items, "tags",
-        (json_int_t)totals.tags, "words", (json_int_t)size.model.words, "weights",
-        (json_int_t)size.model.postings, "seq", (json_int_t)progress.committed, "learned",
-        (json_int_t)progress.learned, "backlog",
-        (json_int_t)(progress.committed - progress.learned), "memory", "resident", resident_bytes(),
-        "dictionary", (json_int_t)size.model.dictionary_bytes, "weights",
-        (json_int_t)size.model.weights_bytes, "counts", (json_int_t)size.model.counts_bytes,
-        "worklist", (json_int_t)size.model.worklist_bytes, "asking", (json_int_t)size.asking_bytes,
-        "budget", (json_int_t)size.budget_bytes, "disk", "store", (json_int_t)size.store_bytes,
-        "model", (json_int_t)size.model_bytes, "connections",
-        json_object_get(of_loop, "connections"), "rates", json_object_get(of_loop, "rates"),
-        "limits", options_json(&job->options, IN(OPTIONS_LIMIT)), "settings",
-        options_json(&job->options, IN(OPTIONS_SETTING) | IN(OPTIONS_LEARNING)), "rehearsal",
-        "passes", 0, "worklist", "kept", (json_int_t)size.model.listed, "stale",
-        (json_int_t)size.model.stale, "snapshot", "faults", faults_json(engine_troubles(engine)));
-    if (state && add_rebuild(state, engine, progress.committed) < 0) {
+    struct backlog_numbers progress = engine_count(engine).progress;
+    json_t *state = json_object();
+    answer_add(&state, "version", json_string(UNDERTAG_VERSION));
+    answer_add(&state, "format", json_integer(STORE_FORMAT));
+    answer_add(&state, "items", answer_count(totals.items));
+    answer_add(&state, "tags", answer_count(totals.tags));
+    answer_add(&state, "words", answer_count(size.model.words));
+    answer_add(&state, "weights", answer_count(size.model.postings));
+    answer_add(&state, "pruned", pruned_json(&size.model));
+    add_progress(&state, &progress);
+    answer_add(&state, "memory", memory_json(&size));
+    answer_add(&state, "disk", disk_json(&size));
+    answer_add(&state, "limits", options_json(&job->options, IN(OPTIONS_LIMIT)));
+    answer_add(&state, "settings",
+               options_json(&job->options, IN(OPTIONS_SETTING) | IN(OPTIONS_LEARNING)));
+    answer_add(&state, "rehearsal", rehearsal_json(&size.rehearsal));
+    answer_add(&state, "worklist", worklist_json(&size.model));
+    answer_add(&state, "snapshot", json_null());
+    answer_add(&state, "faults", faults_json(engine_troubles(engine)));
+    add_rebuild(&state, engine, progress.committed);
+    if (state && json_object_update(state, job->of_loop) < 0) {
         json_decref(state);
         return NULL;
     }

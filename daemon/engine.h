@@ -89,7 +89,8 @@ struct engine_counts engine_count(struct engine *engine);
 struct engine_size {
     struct model_size model;
     uint64_t store_bytes;
-    uint64_t model_bytes;  /* in its file */
+    uint64_t model_bytes; /* in its file */
+    struct model_rehearsal rehearsal;
     uint64_t asking_bytes; /* held for those who ask */
     uint64_t budget_bytes; /* for memory */
 };

@@ -287,6 +287,7 @@ void model_measure(const struct model *model, struct model_size *ret_size)
         .words = dictionary_size(model->dictionary),
         .tags = model->tag_count,
         .postings = weights_postings(model->weights),
+        .pruned = weights_pruned(model->weights),
         .dictionary_bytes = dictionary_bytes(model->dictionary),
         .weights_bytes = weights_bytes(model->weights),
         .counts_bytes = sizeof *model + model->tag_capacity * sizeof *model->tags +

@@ -240,6 +240,7 @@ struct model_size {
     uint64_t words;
     uint64_t tags;
     uint64_t postings;
+    struct weights_pruned pruned;
     uint64_t dictionary_bytes;
     uint64_t weights_bytes;
     uint64_t counts_bytes;

@@ -47,6 +47,9 @@ def daemon(program, settings):
     with tempfile.TemporaryDirectory(prefix="undertag-quality-") as folder:
         path = os.path.join(folder, "socket")
         command = [program, "--home", os.path.join(folder, "home"), "--socket", path]
+        # Unless asked for, nothing is rehearsed: what there is time for would make a difference.
+        if not any(setting.startswith("rehearsal_share=") for setting in settings):
+            settings = ["rehearsal_share=0", *settings]
         for setting in settings:
             command += ["--set", setting]
         with open(os.path.join(folder, "log"), "w+b") as log, \

@@ -78,6 +78,7 @@ static inline int opened_set_up(void **state)
     (void)alarm(ENGINE_GUARD_S);
     home_make(opened->home);
     options_defaults(&opened->options);
+    opened->options.rehearsal_share = 0.0; /* what there is time for would make a difference */
     opened->options.visible_within_ms = 0;
     opened->options.map_size_bytes = FIXTURE_MAP_BYTES;
     opened->options.disk_reserve_bytes = 0;

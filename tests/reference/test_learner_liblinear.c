@@ -155,7 +155,7 @@ static size_t features_of(const struct entry *entry, struct weights_feature *x)
 }
 
 static void learn_entry(struct weights *weights, struct weights_scratch *scratch,
-                        const struct entry *entry, bool corrected)
+                        const struct entry *entry, uint64_t number, bool corrected)
 {
     struct weights_feature x[WORDS_OF_ENTRY];
     struct weights_given given[TAGS];
@@ -164,17 +164,21 @@ static void learn_entry(struct weights *weights, struct weights_scratch *scratch
     for (uint32_t tag = 0; tag < TAGS; tag++) {
         if (entry->is_given[tag]) {
             given[given_count++] = (struct weights_given){
-                .tag = tag, .tag_count = 1, .factor = corrected ? given_factor(tag) : 1.0};
+                .tag = tag, .tag_count = 1, .factors = {corrected ? given_factor(tag) : 1.0}};
         }
     }
-    assert_int_equal(weights_score(weights, x, count, scratch), 0);
-    assert_int_equal(
-        weights_learn(
-            weights,
-            &(const struct weights_example){
-                .x = x, .count = count, .given = given, .given_count = given_count, .step = STEP},
-            scratch),
-        0);
+    assert_int_equal(weights_score(weights, NULL, x, count, 1, scratch), 0);
+    assert_int_equal(weights_admit(weights, NULL, x, count), 0);
+    assert_int_equal(weights_learn(weights,
+                                   &(const struct weights_example){.number = number,
+                                                                   .lanes = 1,
+                                                                   .x = x,
+                                                                   .count = count,
+                                                                   .given = given,
+                                                                   .given_count = given_count,
+                                                                   .step = STEP},
+                                   scratch),
+                     0);
 }
 
 static void learn_online(const struct corpus *corpus, bool corrected, struct scores *ret_scores)
@@ -186,16 +190,17 @@ static void learn_online(const struct corpus *corpus, bool corrected, struct sco
     assert_int_equal(weights_new(&settings, &weights), 0);
     assert_int_equal(weights_scratch_new(&scratch), 0);
     assert_int_equal(weights_reserve_tags(weights, TAGS), 0);
+    uint64_t number = 0;
     for (int pass = 0; pass < PASSES; pass++) {
         for (size_t i = 0; i < TRAINED; i++) {
-            learn_entry(weights, scratch, &corpus->entries[i], corrected);
+            learn_entry(weights, scratch, &corpus->entries[i], number++, corrected);
         }
     }
     for (size_t i = 0; i < TESTED; i++) {
         size_t count = features_of(&corpus->entries[TRAINED + i], x);
-        assert_int_equal(weights_score(weights, x, count, scratch), 0);
+        assert_int_equal(weights_score(weights, NULL, x, count, 1, scratch), 0);
         for (uint32_t tag = 0; tag < TAGS; tag++) {
-            ret_scores->of[i][tag] = (double)weights_tag_score(weights, scratch, tag);
+            ret_scores->of[i][tag] = (double)weights_tag_score(weights, scratch, WEIGHTS_MAIN, tag);
         }
     }
     weights_scratch_free(scratch);

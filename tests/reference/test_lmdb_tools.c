@@ -169,15 +169,18 @@ static void put_model(struct model_store *model)
     struct model_store_writing *writing = NULL;
     struct model_store_head head = {.learned = 5};
     struct model_store_word words[] = {{"fog", 3, 0, 2}, {"gale", 4, 1, 1}};
+    static const float values[] = {-0.25F, 0.125F};
     const uint32_t tag = 0;
-    const float value = 0.5F;
-    struct model_store_chunk chunk = {
-        .count = 1, .tags = &tag, .values = &value, .accumulators = &value};
+    const float score = 0.5F;
+    struct model_store_chunk chunk = {.bytes = kv_bytes_of("fog's", 5)};
+    struct model_store_entry entry = {
+        .number = 5, .gaps = {1, &tag, &score}, .pairs = {1, &tag, values}};
     assert_int_equal(model_store_begin(model, &writing, &error), STORE_OK);
     assert_int_equal(model_store_put_head(writing, &head, &error), STORE_OK);
     assert_int_equal(model_store_put_word(writing, &words[0], &error), STORE_OK);
     assert_int_equal(model_store_put_word(writing, &words[1], &error), STORE_OK);
     assert_int_equal(model_store_put_chunk(writing, &chunk, &error), STORE_OK);
+    assert_int_equal(model_store_put_entry(writing, &entry, &error), STORE_OK);
     assert_int_equal(model_store_commit(writing, &error), STORE_OK);
 }
 
@@ -193,12 +196,13 @@ static void the_tools_count_the_entries_of_the_model(void **state)
     if (!statistics) {
         skip();
     }
-    assert_int_equal(entries(statistics, "Main DB"), 7); /* tables */
+    assert_int_equal(entries(statistics, "Main DB"), 6); /* tables */
     assert_int_equal(entries(statistics, "meta"), 1);
     assert_int_equal(entries(statistics, "words"), 2);
     assert_int_equal(entries(statistics, "chunks"), 1);
     assert_int_equal(entries(statistics, "tags"), 0);
     assert_int_equal(entries(statistics, "figures"), 0);
+    assert_int_equal(entries(statistics, "worklist"), 1);
 }
 
 #define TEST(name) cmocka_unit_test_setup_teardown(name, fixture_setup, fixture_teardown)

@@ -114,4 +114,114 @@ static inline void fake_base_store(struct fake_base *fake, struct worklist *work
     worklist_clean(worklist);
 }
 
+/* --- chunks -------------------------------------------------------------------------------------
+ */
+
+struct fake_chunk {
+    uint64_t key; /* word and number */
+    unsigned char *block;
+    size_t size; /* of what lies one byte into the block */
+};
+
+/* A base of chunks alone. Its bytes are aligned for nothing, as those of a store may be. */
+struct fake_chunks {
+    struct base base;
+    struct fake_chunk *list; /* by word and number */
+    size_t count;
+    size_t capacity;
+    size_t reads;
+    int error; /* what reading gives; 0: the chunks */
+};
+
+/* The place of the first chunk with that word and number or behind them. */
+static inline size_t fake_chunks_place(const struct fake_chunks *fake, uint32_t word,
+                                       uint32_t number)
+{
+    uint64_t key = (uint64_t)word << 32U | number;
+    size_t low = 0;
+    size_t high = fake->count;
+    while (low < high) {
+        size_t middle = low + (high - low) / 2;
+        if (fake->list[middle].key < key) {
+            low = middle + 1;
+        } else {
+            high = middle;
+        }
+    }
+    return low;
+}
+
+static inline bool fake_chunks_hold(const struct fake_chunks *fake, uint32_t word, uint32_t number)
+{
+    size_t place = fake_chunks_place(fake, word, number);
+    return place < fake->count && fake->list[place].key == ((uint64_t)word << 32U | number);
+}
+
+static inline int fake_chunks_chunk(void *user, uint32_t word, uint32_t number,
+                                    struct base_bytes *ret_bytes)
+{
+    struct fake_chunks *fake = user;
+    fake->reads++;
+    if (fake->error != 0 || !fake_chunks_hold(fake, word, number)) {
+        return fake->error != 0 ? fake->error : -ENOENT;
+    }
+    const struct fake_chunk *chunk = &fake->list[fake_chunks_place(fake, word, number)];
+    *ret_bytes = (struct base_bytes){.data = chunk->block + 1, .size = chunk->size};
+    return 0;
+}
+
+static inline void fake_chunks_init(struct fake_chunks *fake)
+{
+    *fake = (struct fake_chunks){.base = {.chunk = fake_chunks_chunk}};
+    fake->base.user = fake;
+}
+
+/* Takes out so many chunks, from that number on. */
+static inline void fake_chunks_cut(struct fake_chunks *fake, uint32_t word, uint32_t number,
+                                   size_t count)
+{
+    size_t place = fake_chunks_place(fake, word, number);
+    assert_true(place + count <= fake->count);
+    for (size_t i = 0; i < count; i++) {
+        free(fake->list[place + i].block);
+    }
+    memmove(&fake->list[place], &fake->list[place + count],
+            (fake->count - place - count) * sizeof *fake->list);
+    fake->count -= count;
+}
+
+static inline void fake_chunks_forget_word(struct fake_chunks *fake, uint32_t word)
+{
+    size_t count = fake_chunks_place(fake, word + 1, 0) - fake_chunks_place(fake, word, 0);
+    if (count > 0) {
+        fake_chunks_cut(fake, word, 0, count);
+    }
+}
+
+static inline void fake_chunks_put(struct fake_chunks *fake, uint32_t word, uint32_t number,
+                                   const void *data, size_t size)
+{
+    if (fake_chunks_hold(fake, word, number)) {
+        fake_chunks_cut(fake, word, number, 1);
+    }
+    size_t place = fake_chunks_place(fake, word, number);
+    unsigned char *block = malloc(size + 1);
+    assert_non_null(block);
+    assert_int_equal(GROW(&fake->list, &fake->capacity, fake->count + 1), 0);
+    memmove(&fake->list[place + 1], &fake->list[place], (fake->count - place) * sizeof *fake->list);
+    memcpy(block + 1, data, size);
+    fake->list[place] =
+        (struct fake_chunk){.key = (uint64_t)word << 32U | number, .block = block, .size = size};
+    fake->count++;
+}
+
+static inline void fake_chunks_deinit(struct fake_chunks *fake)
+{
+    for (size_t i = 0; i < fake->count; i++) {
+        free(fake->list[i].block);
+    }
+    free(fake->list);
+    *fake = (struct fake_chunks){0};
+}
+
 #endif

@@ -4,10 +4,13 @@
 #ifndef UNDERTAG_TESTS_MODEL_FIXTURE_H
 #define UNDERTAG_TESTS_MODEL_FIXTURE_H
 
+#include <errno.h>
+#include <math.h>
 #include <stdbool.h>
 #include <stdlib.h>
 #include <string.h>
 
+#include "daemon/learner/cell.h"
 #include "daemon/learner/model.h"
 #include "tests/unit/entries.h"
 #include "tests/unit/near.h"
@@ -15,7 +18,21 @@
 struct learner {
     struct model *model;
     struct model_scratch *scratch;
+    const struct base *base; /* what is stored; NULL: nothing */
 };
+
+/*
+ * A weight is a whole number of steps (cell.h), and each time that an item moves it it is rounded
+ * up or down, by less than a step. A score is the sum of w·x over n words with Σx² = 1, so that
+ * Σx ≤ √n: learning an item of n words moves a score by what it should but for less than so much.
+ */
+static inline double rounding_of_words(size_t count)
+{
+    return (double)CELL_STEP * sqrt((double)count);
+}
+
+/* Of an entry of one word, learned once. */
+#define ONE_ROUNDING ((double)CELL_STEP)
 
 static inline struct model_item entry_item(const struct entry *entry)
 {
@@ -72,6 +89,23 @@ static inline int learner_tear_down(void **state)
 {
     learner_free(*state);
     return 0;
+}
+
+/* Whatever the learner has not in memory it reads there from now on. */
+static inline void learner_read(struct learner *learner, const struct base *base)
+{
+    learner->base = base;
+    model_scratch_read(learner->scratch, base);
+}
+
+/* Lets go of words and weights down to these bytes. One call of model_trim may stop before it has
+ * come so far; as few as a test has it has gone round in these. */
+static inline void learner_trim(const struct learner *learner, uint64_t dictionary_most,
+                                uint64_t weights_most)
+{
+    for (int i = 0; i < 12; i++) {
+        model_trim(learner->model, dictionary_most, weights_most);
+    }
 }
 
 /* Files (`replaced` NULL), revises or (`item` NULL) withdraws an entry. */
@@ -148,6 +182,33 @@ static inline void assert_same_answer(const struct model_answer *one,
     }
 }
 
+static inline void assert_same_standing(const struct learner *one, const struct learner *other)
+{
+    struct standing_answer answers[2];
+    memset(answers, 0, sizeof answers); /* padding, too */
+    standing_ask(model_standing(one->model), 0, &answers[0]);
+    standing_ask(model_standing(other->model), 0, &answers[1]);
+    assert_memory_equal(&answers[1], &answers[0], sizeof answers[0]);
+}
+
+/* Of a worklist that promises something. */
+static inline void assert_same_ranking(const struct learner *one, const struct learner *other)
+{
+    const struct learner *const learners[] = {one, other};
+    struct model_ranked *ranked[2] = {NULL, NULL};
+    size_t counts[2] = {0, 0};
+    for (size_t i = 0; i < 2; i++) {
+        assert_int_equal(model_rank_worklist(learners[i]->model, learners[i]->base, MODEL_ANY_TAG,
+                                             0.0, &ranked[i], &counts[i]),
+                         0);
+    }
+    assert_true(counts[0] > 0);
+    assert_int_equal(counts[1], counts[0]);
+    assert_memory_equal(ranked[1], ranked[0], counts[0] * sizeof *ranked[0]);
+    free(ranked[0]);
+    free(ranked[1]);
+}
+
 static inline const struct model_gap *find_gap(const struct model_answer *answer, uint32_t tag)
 {
     for (size_t i = 0; i < answer->gap_count; i++) {
@@ -197,11 +258,29 @@ static inline struct learner_rated learner_rated(const struct learner *learner)
 /* --- the worklist -------------------------------------------------------------------------------
  */
 
-/* What the worklist says of an entry; NULL: nothing. */
-static inline const struct worklist_entry *learner_listed(const struct learner *learner,
-                                                          const struct entry *entry)
+/* Whether the worklist has an entry, and what it says. */
+static inline bool learner_find_listed(const struct learner *learner, const struct entry *entry,
+                                       struct worklist_entry *ret_listed)
 {
-    return worklist_find(model_worklist(learner->model), entry->number);
+    int result =
+        worklist_find(model_worklist(learner->model), learner->base, entry->number, ret_listed);
+    assert_true(result == 0 || result == -ENOENT);
+    return result == 0;
+}
+
+static inline bool learner_lists(const struct learner *learner, const struct entry *entry)
+{
+    struct worklist_entry listed;
+    return learner_find_listed(learner, entry, &listed);
+}
+
+/* What the worklist says of an entry that it has. */
+static inline struct worklist_entry learner_listed(const struct learner *learner,
+                                                   const struct entry *entry)
+{
+    struct worklist_entry listed = {0};
+    assert_true(learner_find_listed(learner, entry, &listed));
+    return listed;
 }
 
 /* The pair of an entry with a tag, as it was learned; NULL: none. */
@@ -219,12 +298,20 @@ static inline const struct worklist_pair *listed_pair(const struct worklist_entr
 static inline const struct worklist_gap *listed_gap(const struct worklist_entry *listed,
                                                     uint32_t tag)
 {
-    for (uint32_t i = 0; listed && i < listed->gap_count; i++) {
+    for (uint32_t i = 0; i < listed->gap_count; i++) {
         if (listed->gaps[i].tag == tag) {
             return &listed->gaps[i];
         }
     }
     return NULL;
+}
+
+/* Whether the worklist says that an entry, which it has, may lack a tag. */
+static inline bool learner_lists_gap(const struct learner *learner, const struct entry *entry,
+                                     uint32_t tag)
+{
+    const struct worklist_entry listed = learner_listed(learner, entry);
+    return listed_gap(&listed, tag) != NULL;
 }
 
 /* Scores an entry again and puts it in. */
@@ -233,7 +320,7 @@ static inline void learner_rescore(const struct learner *learner, const struct e
     const struct model_item item = entry_item(entry);
     struct worklist_entry listed;
     assert_int_equal(model_rescore(learner->model, &item, learner->scratch, &listed), 0);
-    assert_int_equal(model_relist(learner->model, &listed), 0);
+    assert_int_equal(model_relist(learner->model, learner->base, &listed), 0);
 }
 
 /* Of an entry as it is filed: what it may lack, every tag with whatever chance. */

@@ -7,12 +7,32 @@
 #include <stdint.h>
 
 #include <cmocka.h>
+#include <errno.h>
 #include <sysexits.h>
 
+#include "storage/kv.h"
 #include "tests/unit/engine_fixture.h"
 
 /* Speaks for the stream's tags 3 and 9. */
 static const char DRAFT[] = "log t3q0 t3q1 t9q1 t9q2 n5q0";
+
+/* The code of a question whose answer does not matter. */
+static int try_ask_draft(struct opened *opened, const char *text)
+{
+    struct workspaces *workspaces = engine_workspaces(opened->engine);
+    struct workspace *workspace = workspaces_borrow(workspaces);
+    const struct features_source source = {.text = text, .text_bytes = strlen(text)};
+    struct model_answer answer;
+    uint64_t learned = 0;
+    assert_non_null(workspace);
+    assert_int_equal(features_extract(workspace->features, &source, SIZE_MAX), 0);
+    const struct model_question question = {.features = features_list(workspace->features),
+                                            .feature_count = features_count(workspace->features),
+                                            .most = ASKED_GAPS};
+    int code = engine_ask(opened->engine, &question, workspace, &answer, &learned);
+    workspaces_return(workspaces, workspace);
+    return code;
+}
 
 static struct stream new_stream(void)
 {
@@ -53,10 +73,14 @@ static void the_home_can_be_measured(void **state)
     assert_int_equal(size.model.tags, 1);
     assert_true(size.store_bytes > 0);
     assert_true(size.model_bytes > 0);
+    assert_true(size.asking_bytes > 0);
+    assert_int_equal(size.budget_bytes, opened->options.memory_budget_bytes);
 }
 
-static void copy_fit(void *user, const struct model *model, uint64_t learned)
+static void copy_fit(void *user, const struct model *model, const struct base *base,
+                     uint64_t learned)
 {
+    (void)base;
     assert_int_equal(learned, 0);
     *(struct propensity_fit *)user = *model_fit(model);
 }
@@ -96,8 +120,10 @@ struct known {
     uint64_t learned;
 };
 
-static void copy_known(void *user, const struct model *model, uint64_t learned)
+static void copy_known(void *user, const struct model *model, const struct base *base,
+                       uint64_t learned)
 {
+    (void)base;
     struct known *known = user;
     standing_ask(model_standing(model), 0, &known->standing);
     known->listed = worklist_size(model_worklist(model));
@@ -212,42 +238,87 @@ static void settings_that_learning_does_not_depend_on_have_nothing_learned_again
     assert_int_equal(engine_count(opened->engine).progress.kept, 1);
 }
 
-/* Changes the byte behind a text, in a file of the closed home. */
-static void damage_behind(const struct opened *opened, const char *name, const char *text)
+/* Puts a value into a table of the closed home's model; model_store.c names them so. */
+static void write_model(struct opened *opened, const char *table, struct kv_bytes key,
+                        struct kv_bytes value)
 {
-    static char bytes[4 << 20];
-    char path[FIXTURE_PATH_BYTES + 32];
-    size_t count = 0;
-    (void)snprintf(path, sizeof path, "%s/%s", opened->home, name);
-    FILE *file = fopen(path, "r+b");
-    assert_non_null(file);
-    size_t size = fread(bytes, 1, sizeof bytes, file);
-    char *at = bytes;
-    while ((at = memmem(at, size - (size_t)(at - bytes), text, strlen(text)))) {
-        at += strlen(text);
-        assert_int_equal(fseek(file, at - bytes, SEEK_SET), 0);
-        assert_int_not_equal(fputc(*at ^ 1, file), EOF);
-        count++;
-    }
-    assert_int_equal(fclose(file), 0);
-    assert_true(count > 0);
+    char directory[FIXTURE_PATH_BYTES + 8];
+    struct store_error error = {0};
+    struct kv *kv = NULL;
+    struct kv_txn *txn = NULL;
+    (void)snprintf(directory, sizeof directory, "%s/model", opened->home);
+    const struct kv_settings settings = {
+        .directory = directory, .map_bytes = FIXTURE_MAP_BYTES, .tables = &table, .table_count = 1};
+    assert_int_equal(kv_open(&settings, &kv, &error), STORE_OK);
+    assert_int_equal(kv_begin(kv, true, &txn, &error), STORE_OK);
+    assert_int_equal(kv_put(txn, 0, key, value, &error), STORE_OK);
+    assert_int_equal(kv_commit(txn, &error), STORE_OK);
+    kv_close(kv);
 }
 
-static void a_damaged_model_is_learned_again(void **state)
+/* What is filed and asked, with something done to the closed home in between, is learned again. */
+static void assert_learned_again(struct opened *opened, const char *table, struct kv_bytes key,
+                                 struct kv_bytes value)
 {
-    struct opened *opened = *state;
     struct stream stream = new_stream();
     struct asked before;
     struct asked after;
     file_stream(opened, &stream, 0, 100);
-    (void)FILE_ITEM(opened, "log/wreck", "schoonerwreckage", "casualties");
     ask_draft(opened, DRAFT, &before);
     close_home(opened);
-    damage_behind(opened, "model/data.mdb", "schoonerwreckage");
+    write_model(opened, table, key, value);
     open_home(opened);
-    wait_until_learned(opened, 101);
+    assert_int_equal(engine_count(opened->engine).progress.kept, 0);
+    wait_until_learned(opened, 100);
     ask_draft(opened, DRAFT, &after);
     assert_same_asked(&before, &after);
+    close_home(opened);
+    open_home(opened);
+    assert_int_equal(engine_count(opened->engine).progress.kept, 100); /* and stored as ours */
+    ask_draft(opened, DRAFT, &after);
+    assert_same_asked(&before, &after);
+}
+
+/* The tags are loaded at a start; their first one has the number 0. */
+static void a_damaged_model_is_learned_again(void **state)
+{
+    static const unsigned char tag[4];
+    assert_learned_again(*state, "tags", kv_bytes_of(tag, sizeof tag), kv_bytes_of("fog", 3));
+}
+
+/* Format 2 had a table more; what is there of it must not be in the way. */
+static void a_model_of_an_older_format_is_learned_again(void **state)
+{
+    struct opened *opened = *state;
+    const unsigned char format_2[] = {2, 0, 0, 0, 'o', 'u', 'r', 's'};
+    close_home(opened);
+    write_model(opened, "shadow_chunks", kv_bytes_of("gale", 4), kv_bytes_of("fog", 3));
+    open_home(opened);
+    assert_learned_again(opened, "meta", kv_bytes_of("model", 5),
+                         kv_bytes_of(format_2, sizeof format_2));
+}
+
+/* Words are not loaded at a start, so that their damage is met when they are wanted. */
+static void a_damaged_word_is_told_to_who_asks_for_it_and_stops_learning(void **state)
+{
+    struct opened *opened = *state;
+    struct asked asked;
+    char sentence[TROUBLE_BYTES];
+    (void)FILE_ITEM(opened, "log/1", "schoonerwreckage", "casualties");
+    (void)FILE_ITEM(opened, "log/2", "fog", "weather");
+    wait_until_learned(opened, 2);
+    close_home(opened);
+    write_model(opened, "words", kv_bytes_of("schoonerwreckage", 16), kv_bytes_of("fog", 3));
+    open_home(opened);
+    ask_draft(opened, "fog", &asked); /* what is whole is answered */
+    assert_int_equal(asked.count, 2);
+    assert_int_equal(try_ask_draft(opened, "schoonerwreckage"), -EIO);
+    (void)FILE_ITEM(opened, "log/3", "schoonerwreckage", "casualties");
+    assert_int_equal(try_ask_draft(opened, "fog"), -ENOMEM); /* no more, since it knows a half */
+    troubles_read(engine_troubles(opened->engine), TROUBLE_LEARNING, sentence);
+    assert_string_equal(sentence, "learning has stopped at change 2 (what was learned before "
+                                  "cannot be read: a stored word of the model is damaged); "
+                                  "restart the daemon to go on");
 }
 
 /* --- refusals --- */
@@ -396,6 +467,8 @@ int main(void)
         TEST(nothing_of_the_old_model_is_left_when_all_is_learned_again),
         TEST(settings_that_learning_does_not_depend_on_have_nothing_learned_again),
         TEST(a_damaged_model_is_learned_again),
+        TEST(a_model_of_an_older_format_is_learned_again),
+        TEST(a_damaged_word_is_told_to_who_asks_for_it_and_stops_learning),
         TEST(too_many_words_are_refused_and_change_nothing),
         TEST(a_refused_change_is_not_learned),
         TEST(a_home_in_use_is_refused),

@@ -1,6 +1,7 @@
 /* The learner's model into its store and back: it must not matter to any answer. */
 #include "daemon/model_keeper.h"
 
+#include <errno.h>
 #include <setjmp.h>
 #include <stdarg.h>
 #include <stddef.h>
@@ -9,6 +10,7 @@
 #include <cmocka.h>
 
 #include "daemon/learner/model_parts.h"
+#include "daemon/model_base.h"
 #include "tests/unit/model_fixture.h"
 #include "tests/unit/model_memory.h"
 #include "tests/unit/store_fixture.h"
@@ -20,6 +22,7 @@ struct keeping {
     char home[FIXTURE_PATH_BYTES];
     struct store_settings settings;
     struct model_store *store;
+    struct model_base base; /* that both learners read */
     struct model_origin origin;
     struct stream stream;
     struct learner learner; /* what is stored */
@@ -32,6 +35,14 @@ static struct model_settings settings_with_a_shadow(void)
     struct model_settings settings = learner_settings();
     settings.shadow = true;
     return settings;
+}
+
+/* What is stored now is what both read from now on. */
+static void enter_base(struct keeping *keeping)
+{
+    model_base_enter(&keeping->base, keeping->store);
+    learner_read(&keeping->learner, &keeping->base.base);
+    learner_read(&keeping->again, &keeping->base.base);
 }
 
 static int set_up(void **state)
@@ -49,6 +60,7 @@ static int set_up(void **state)
                      STORE_OK);
     learner_renew(&keeping->learner, &settings);
     learner_renew(&keeping->again, &settings);
+    enter_base(keeping);
     *state = keeping;
     return 0;
 }
@@ -56,6 +68,7 @@ static int set_up(void **state)
 static int tear_down(void **state)
 {
     struct keeping *keeping = *state;
+    model_base_leave(&keeping->base);
     model_store_close(keeping->store);
     learner_free(&keeping->learner);
     learner_free(&keeping->again);
@@ -82,11 +95,14 @@ static void learn(struct keeping *keeping, int count, bool by_both)
 static bool keep(struct keeping *keeping, uint64_t learned)
 {
     bool forgot = false;
+    model_base_leave(&keeping->base);
     int code = model_keeper_store(keeping->store, keeping->learner.model, &keeping->origin, learned,
                                   &forgot, &keeping->error);
     if (code != STORE_OK) {
         fail_msg("%d: %s", code, keeping->error.text);
     }
+    model_clean(keeping->learner.model);
+    enter_base(keeping);
     return forgot;
 }
 
@@ -94,11 +110,13 @@ static bool keep(struct keeping *keeping, uint64_t learned)
 static int restore(struct keeping *keeping)
 {
     const struct model_settings settings = settings_with_a_shadow();
+    model_base_leave(&keeping->base);
     model_store_close(keeping->store);
     keeping->store = NULL;
     assert_int_equal(model_store_open(&keeping->settings, &keeping->store, &keeping->error),
                      STORE_OK);
     learner_renew(&keeping->again, &settings);
+    enter_base(keeping);
     return model_keeper_load(keeping->store, keeping->again.model, &keeping->error);
 }
 
@@ -142,10 +160,13 @@ static void assert_knows_the_same(struct keeping *keeping)
     struct standing_answer standings[2];
     assert_true(worklist_size(first) > 0);
     assert_int_equal(worklist_size(second), worklist_size(first));
-    for (size_t i = 0; i < worklist_size(first); i++) {
-        const struct worklist_entry *entry = worklist_at(first, i);
-        memory_assert_same_entry(entry, worklist_find(second, entry->number));
+    struct worklist_entry entry = {.number = 0};
+    struct worklist_entry same = {.number = 0};
+    while (worklist_after(first, &keeping->base.base, entry.number, &entry) == 0) {
+        assert_int_equal(worklist_after(second, &keeping->base.base, same.number, &same), 0);
+        memory_assert_same_entry(&entry, &same);
     }
+    assert_int_equal(worklist_after(second, &keeping->base.base, same.number, &same), -ENOENT);
     standing_ask(model_standing(keeping->learner.model), 0, &standings[0]);
     standing_ask(model_standing(keeping->again.model), 0, &standings[1]);
     assert_memory_equal(&standings[1], &standings[0], sizeof standings[0]);
@@ -204,6 +225,26 @@ static void a_restored_model_knows_what_was_found(void **state)
     learn(keeping, 100, true);
     assert_same_answers(keeping);
     assert_knows_the_same(keeping);
+}
+
+/* Tags and figures are in memory at once; words and weights come when they are wanted. */
+static void a_restored_model_holds_words_and_weights_only_when_they_are_wanted(void **state)
+{
+    struct keeping *keeping = *state;
+    learn(keeping, 300, false);
+    (void)keep(keeping, 300);
+    assert_int_equal(restore(keeping), STORE_OK);
+    struct model_size all = learner_size(&keeping->learner);
+    struct model_size before = learner_size(&keeping->again);
+    assert_int_equal(before.words, all.words);
+    assert_int_equal(before.postings, all.postings);
+    assert_int_equal(before.listed, all.listed);
+    assert_true(before.weights_bytes < all.weights_bytes / 2);
+    assert_true(before.dictionary_bytes < all.dictionary_bytes / 2);
+    assert_null(keeping->base.view); /* nothing was read */
+    learn(keeping, 1, true);
+    assert_non_null(keeping->base.view);
+    assert_true(learner_size(&keeping->again).weights_bytes > before.weights_bytes);
 }
 
 static void what_has_changed_since_is_stored_over_what_was(void **state)
@@ -297,7 +338,7 @@ static void a_model_that_is_ahead_of_its_store_is_told(void **state)
 
 /* Stores a part that model_keeper itself would not have stored. */
 static void put(struct keeping *keeping, const struct model_store_chunk *chunk,
-                const struct model_store_figures *figures)
+                const struct model_store_figures *figures, const struct model_store_head *head)
 {
     struct model_store_writing *writing = NULL;
     assert_int_equal(model_store_begin(keeping->store, &writing, &keeping->error), STORE_OK);
@@ -306,6 +347,9 @@ static void put(struct keeping *keeping, const struct model_store_chunk *chunk,
     }
     if (figures) {
         assert_int_equal(model_store_put_figures(writing, figures, &keeping->error), STORE_OK);
+    }
+    if (head) {
+        assert_int_equal(model_store_put_head(writing, head, &keeping->error), STORE_OK);
     }
     assert_int_equal(model_store_commit(writing, &keeping->error), STORE_OK);
 }
@@ -317,17 +361,40 @@ static void assert_damaged(struct keeping *keeping, const char *sentence)
     keeping->error = (struct store_error){0};
 }
 
-static void a_chunk_without_those_before_it_is_damage(void **state)
+/* Asks the restored model about one word. */
+static int ask_about(struct keeping *keeping, const char *word)
+{
+    struct entry entry;
+    struct model_answer answer;
+    entry_set(&entry, word, NO_TAGS);
+    const struct model_question question = entry_question(&entry);
+    return model_ask(keeping->again.model, &question, keeping->again.scratch, &answer);
+}
+
+/* The first word has the number 0. */
+static void a_chunk_that_is_no_list_of_postings_is_met_when_it_is_wanted(void **state)
 {
     struct keeping *keeping = *state;
-    static const uint32_t TAG = 0;
-    static const float VALUE = 0.5F;
-    const struct model_store_chunk chunk = {
-        .word = 0, .number = 5, .count = 1, .tags = &TAG, .values = &VALUE, .accumulators = &VALUE};
-    learn(keeping, 10, false);
-    (void)keep(keeping, 10);
-    put(keeping, &chunk, NULL);
-    assert_damaged(keeping, "the stored model does not fit together");
+    const struct model_store_chunk chunk = {.word = 0, .bytes = kv_bytes_of("short", 5)};
+    learner_file(&keeping->learner, "schoonerwreckage", TAGS(3));
+    learner_file(&keeping->learner, "fog", TAGS(4));
+    (void)keep(keeping, 2);
+    put(keeping, &chunk, NULL, NULL);
+    assert_int_equal(restore(keeping), STORE_OK);
+    assert_int_equal(ask_about(keeping, "fog"), 0);
+    assert_int_equal(ask_about(keeping, "schoonerwreckage"), -EIO);
+}
+
+/* More words than numbers were given out, or than there are numbers. */
+static void totals_that_cannot_be_are_damage(void **state)
+{
+    struct keeping *keeping = *state;
+    const struct model_store_head heads[] = {{.words = 3, .next_word = 2},
+                                             {.words = 1ULL << 32U, .next_word = 1ULL << 32U}};
+    for (size_t i = 0; i < sizeof heads / sizeof heads[0]; i++) {
+        put(keeping, NULL, NULL, &heads[i]);
+        assert_damaged(keeping, "the stored model does not fit together");
+    }
 }
 
 static void a_bin_of_another_size_is_damage(void **state)
@@ -338,7 +405,7 @@ static void a_bin_of_another_size_is_damage(void **state)
         .kind = MODEL_FIGURES_BIN, .number = 3, .count = 2, .values = VALUES};
     learn(keeping, 10, false);
     (void)keep(keeping, 10);
-    put(keeping, NULL, &bin);
+    put(keeping, NULL, &bin, NULL);
     assert_damaged(keeping, "the stored model does not fit together");
 }
 
@@ -362,7 +429,7 @@ static void damage_behind(const char *path, const char *text)
 }
 
 /* A word is a key, and what is stored of it stands right behind it in LMDB's pages. */
-static void a_byte_that_went_wrong_in_the_file_is_damage(void **state)
+static void a_byte_that_went_wrong_in_a_word_is_met_when_it_is_wanted(void **state)
 {
     struct keeping *keeping = *state;
     char path[FIXTURE_PATH_BYTES + 32];
@@ -370,7 +437,10 @@ static void a_byte_that_went_wrong_in_the_file_is_damage(void **state)
     (void)keep(keeping, 1);
     (void)snprintf(path, sizeof path, "%s/model/data.mdb", keeping->home);
     damage_behind(path, "schoonerwreckage");
-    assert_damaged(keeping, "a stored word of the model is damaged");
+    assert_int_equal(restore(keeping), STORE_OK);
+    assert_int_equal(ask_about(keeping, "fog"), 0);
+    assert_int_equal(ask_about(keeping, "schoonerwreckage"), -EIO);
+    assert_string_equal(keeping->base.error.text, "a stored word of the model is damaged");
 }
 
 static void a_model_without_a_head_cannot_be_loaded(void **state)
@@ -386,6 +456,7 @@ int main(void)
         TEST(a_restored_model_answers_the_same),
         TEST(a_restored_model_goes_on_learning_the_same),
         TEST(a_restored_model_knows_what_was_found),
+        TEST(a_restored_model_holds_words_and_weights_only_when_they_are_wanted),
         TEST(what_has_changed_since_is_stored_over_what_was),
         TEST(words_that_no_item_has_any_more_are_forgotten),
         TEST(a_store_that_is_reset_holds_nothing),
@@ -394,9 +465,10 @@ int main(void)
         TEST(a_model_of_other_settings_is_of_no_use),
         TEST(a_model_of_another_store_is_of_no_use),
         TEST(a_model_that_is_ahead_of_its_store_is_told),
-        TEST(a_chunk_without_those_before_it_is_damage),
+        TEST(a_chunk_that_is_no_list_of_postings_is_met_when_it_is_wanted),
+        TEST(totals_that_cannot_be_are_damage),
         TEST(a_bin_of_another_size_is_damage),
-        TEST(a_byte_that_went_wrong_in_the_file_is_damage),
+        TEST(a_byte_that_went_wrong_in_a_word_is_met_when_it_is_wanted),
         TEST(a_model_without_a_head_cannot_be_loaded),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);

@@ -2,6 +2,7 @@
  */
 #include "daemon/learner/model.h"
 
+#include <errno.h>
 #include <stdlib.h>
 
 #include "tests/unit/model_fixture.h"
@@ -14,8 +15,9 @@ struct ranking {
 static struct ranking rank(const struct learner *learner, uint32_t tag, double floor)
 {
     struct ranking ranking = {.items = NULL, .count = 77};
-    assert_int_equal(
-        model_rank_worklist(learner->model, tag, floor, &ranking.items, &ranking.count), 0);
+    assert_int_equal(model_rank_worklist(learner->model, learner->base, tag, floor, &ranking.items,
+                                         &ranking.count),
+                     0);
     return ranking;
 }
 
@@ -35,22 +37,38 @@ static double promise_of(const struct learner *learner, const struct worklist_en
     return sum;
 }
 
+/* The next entry of the worklist, from number 0 on. */
+static bool step(const struct learner *learner, struct worklist_entry *entry)
+{
+    int result =
+        worklist_after(model_worklist(learner->model), learner->base, entry->number, entry);
+    assert_true(result == 0 || result == -ENOENT);
+    return result == 0;
+}
+
+static struct worklist_entry listed_at(const struct learner *learner, uint64_t number)
+{
+    struct worklist_entry entry = {0};
+    assert_int_equal(worklist_find(model_worklist(learner->model), learner->base, number, &entry),
+                     0);
+    return entry;
+}
+
 /* Every item that promises something is there once, with the sum of its gaps. */
 static void assert_ranked(const struct learner *learner, uint32_t tag, double floor)
 {
-    const struct worklist *worklist = model_worklist(learner->model);
+    struct worklist_entry listed = {.number = 0};
     struct ranking ranking = rank(learner, tag, floor);
     size_t promising = 0;
-    for (size_t i = 0; i < worklist_size(worklist); i++) {
-        promising += promise_of(learner, worklist_at(worklist, i), tag, floor) > 0.0;
+    while (step(learner, &listed)) {
+        promising += promise_of(learner, &listed, tag, floor) > 0.0;
     }
     assert_true(promising > 0);
     assert_int_equal(ranking.count, promising);
     for (size_t i = 0; i < ranking.count; i++) {
         const struct model_ranked *item = &ranking.items[i];
-        const struct worklist_entry *entry = worklist_find(worklist, item->number);
-        assert_non_null(entry);
-        assert_near(item->expected, promise_of(learner, entry, tag, floor), 1e-12);
+        const struct worklist_entry entry = listed_at(learner, item->number);
+        assert_near(item->expected, promise_of(learner, &entry, tag, floor), 1e-12);
         assert_true(i == 0 || item->expected < item[-1].expected ||
                     (item->expected == item[-1].expected && item->number > item[-1].number));
     }
@@ -90,12 +108,11 @@ static void of_equal_promises_the_older_item_comes_first(void **state)
 {
     const struct learner *learner = *state;
     struct ranking before = rank(learner, MODEL_ANY_TAG, 0.0);
-    struct worklist_entry best =
-        *worklist_find(model_worklist(learner->model), before.items[0].number);
+    struct worklist_entry best = listed_at(learner, before.items[0].number);
     for (uint64_t number = best.number + 100000; number > best.number + 99997; number--) {
         struct worklist_entry same = best;
         same.number = number;
-        assert_int_equal(model_relist(learner->model, &same), 0);
+        assert_int_equal(model_relist(learner->model, learner->base, &same), 0);
     }
     struct ranking ranking = rank(learner, MODEL_ANY_TAG, 0.0);
     assert_int_equal(ranking.count, before.count + 3);
@@ -130,50 +147,47 @@ static void a_tag_that_no_item_has_any_more_is_missing_nowhere(void **state)
     assert_true(ranking.items[0].number == lacking.number);
     free(ranking.items);
     learner_change(learner, NULL, &tagged);
-    const struct worklist_entry *listed = learner_listed(learner, &lacking);
-    assert_near(model_gap_chance(learner->model, listed, listed_gap(listed, 0)), 0.0, 0.0);
+    const struct worklist_entry listed = learner_listed(learner, &lacking);
+    assert_near(model_gap_chance(learner->model, &listed, listed_gap(&listed, 0)), 0.0, 0.0);
     ranking = rank(learner, MODEL_ANY_TAG, 0.0);
     assert_int_equal(ranking.count, 0);
     free(ranking.items);
 }
 
 /* A gap that is not likely: other gaps have no say in its chance. */
-static const struct worklist_gap *unlikely_gap(const struct learner *learner,
-                                               const struct worklist_entry **ret_entry)
+static struct worklist_gap unlikely_gap(const struct learner *learner,
+                                        struct worklist_entry *ret_entry)
 {
-    const struct worklist *worklist = model_worklist(learner->model);
-    for (size_t i = 0; i < worklist_size(worklist); i++) {
-        const struct worklist_entry *entry = worklist_at(worklist, i);
-        for (uint32_t g = 0; g < entry->gap_count; g++) {
-            double chance = model_gap_chance(learner->model, entry, &entry->gaps[g]);
+    *ret_entry = (struct worklist_entry){.number = 0};
+    while (step(learner, ret_entry)) {
+        for (uint32_t g = 0; g < ret_entry->gap_count; g++) {
+            double chance = model_gap_chance(learner->model, ret_entry, &ret_entry->gaps[g]);
             if (chance > 0.005 && chance < 0.02) {
-                *ret_entry = entry;
-                return &entry->gaps[g];
+                return ret_entry->gaps[g];
             }
         }
     }
     fail_msg("every gap is likely");
-    return NULL;
+    return (struct worklist_gap){0};
 }
 
 /* Ten checks find its tag given wherever it belongs: less of it is missing, whatever the scores. */
 static void chances_are_of_today_though_the_scores_are_not(void **state)
 {
     const struct learner *learner = *state;
-    const struct worklist_entry *entry = NULL;
-    const struct worklist_gap gap = *unlikely_gap(learner, &entry);
-    uint64_t number = entry->number;
-    double before = model_gap_chance(learner->model, entry, &gap);
+    struct worklist_entry entry;
+    const struct worklist_gap gap = unlikely_gap(learner, &entry);
+    double before = model_gap_chance(learner->model, &entry, &gap);
     for (int i = 0; i < 10; i++) {
         struct entry checked;
         entry_set(&checked, "n1q0", &gap.tag, 1);
         entry_try_tag(&checked, gap.tag, true);
         learner_change(learner, &checked, NULL);
     }
-    entry = worklist_find(model_worklist(learner->model), number);
-    const struct worklist_gap *now = listed_gap(entry, gap.tag);
+    entry = listed_at(learner, entry.number);
+    const struct worklist_gap *now = listed_gap(&entry, gap.tag);
     assert_memory_equal(now, &gap, sizeof gap);
-    assert_true(model_gap_chance(learner->model, entry, now) < 0.9 * before);
+    assert_true(model_gap_chance(learner->model, &entry, now) < 0.9 * before);
 }
 
 /* --- scoring again ------------------------------------------------------------------------------
@@ -200,20 +214,30 @@ static void scores_are_stale_once_the_model_has_grown_by_an_eighth(void **state)
     assert_int_equal(learner_size(learner).stale, 2);
 }
 
+/* 0: none is left. */
+static uint64_t next_stale(const struct learner *learner)
+{
+    uint64_t number = 0;
+    int result = model_next_stale(learner->model, learner->base, &number);
+    assert_true(result == 0 || result == -ENOENT);
+    assert_true((number != 0) == (result == 0));
+    return number;
+}
+
 static void stale_items_are_named_one_after_the_other_until_none_is_left(void **state)
 {
     const struct learner *learner = *state;
     struct entry entries[3];
     file_three(learner, entries);
-    uint64_t first = model_next_stale(learner->model);
-    uint64_t second = model_next_stale(learner->model);
+    uint64_t first = next_stale(learner);
+    uint64_t second = next_stale(learner);
     assert_true((first == 8 && second == 12) || (first == 12 && second == 8));
     learner_rescore(learner, &entries[0]);
     assert_int_equal(learner_size(learner).stale, 1);
-    assert_int_equal(model_next_stale(learner->model), 12);
+    assert_int_equal(next_stale(learner), 12);
     learner_rescore(learner, &entries[1]);
-    assert_int_equal(model_next_stale(learner->model), 0);
-    assert_int_equal(learner_listed(learner, &entries[1])->scored, 16);
+    assert_int_equal(next_stale(learner), 0);
+    assert_int_equal(learner_listed(learner, &entries[1]).scored, 16);
 }
 
 /* The model's time is that of the greatest number, also when items leave it. */
@@ -232,9 +256,9 @@ static void what_can_be_scored_no_more_is_taken_out(void **state)
     const struct learner *learner = *state;
     struct entry entries[3];
     file_three(learner, entries);
-    assert_int_equal(model_delist(learner->model, 8), 0);
-    assert_int_equal(model_delist(learner->model, 8), 0);
-    assert_null(learner_listed(learner, &entries[0]));
+    assert_int_equal(model_delist(learner->model, learner->base, 8), 0);
+    assert_int_equal(model_delist(learner->model, learner->base, 8), 0);
+    assert_false(learner_lists(learner, &entries[0]));
     assert_int_equal(learner_size(learner).listed, 2);
 }
 

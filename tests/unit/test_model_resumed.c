@@ -163,9 +163,10 @@ static void learn(const struct learner *learner, const struct change *change)
 }
 
 /* Changes `from` to `to`, stored every so often and at the end. */
-static void go_on(const struct history *history, size_t from, size_t to,
-                  const struct learner *learner, struct memory *memory)
+static void go_on(const struct history *history, size_t from, size_t to, struct learner *learner,
+                  struct memory *memory)
 {
+    learner_read(learner, &memory->base);
     for (size_t i = from; i < to; i++) {
         learn(learner, &history->changes[i]);
         if (i % STORE_EVERY == 0) {
@@ -209,11 +210,10 @@ static void the_stored_counts_are_those_of_the_live_items(void **state)
         for (size_t k = 0; k < entry->feature_count; k++) {
             char term[MEMORY_TERM] = "";
             memcpy(term, entry->features[k].term, entry->features[k].term_bytes);
-            for (size_t w = 0; w < MEMORY_WORDS; w++) {
-                if (memory->words[w].is_set && strcmp(memory->words[w].term, term) == 0) {
-                    memory->words[w].count--;
-                }
-            }
+            struct base_word word = {0};
+            assert_int_equal(memory_read_word(memory, term, entry->features[k].term_bytes, &word),
+                             0);
+            memory->words[word.number].count--;
         }
         for (size_t k = 0; k < entry->tag_count; k++) {
             memory->tags[entry->tags[k]].count--;
@@ -267,11 +267,12 @@ static void the_same_items_give_the_same_model_whatever_the_key(void **state)
 }
 
 /* Put back, in the place of a model that is gone. */
-static void resume(const struct memory *memory, const struct model_settings *settings,
+static void resume(struct memory *memory, const struct model_settings *settings,
                    struct learner *learner)
 {
     learner_renew(learner, settings);
     memory_restore(memory, learner->model);
+    learner_read(learner, &memory->base);
 }
 
 /* Stopped thirty times, put back, and gone on with. */
@@ -304,8 +305,7 @@ static void a_model_put_back_goes_on_to_the_same_numbers(void **state)
 static void assert_eventful(const struct memory *memory)
 {
     double half_lives = (double)memory->totals.evidence_items / 10.0;
-    assert_true(memory_find(memory, "log")->chunks[1].count > 0);
-    assert_true(memory_find(memory, "log")->shadow_chunks[1].count > 0);
+    assert_true(memory_find(memory, "log")->chunks[1].size > 0);
     assert_true(memory->totals.evidence_gain < exp2(half_lives - 1.0)); /* taken back to 1 */
     assert_true(memory->totals.curves_items < memory->totals.evidence_items);
     assert_true(memory->totals.fit_halves > 100);
@@ -329,12 +329,13 @@ static void what_was_stored_part_by_part_is_all_that_the_model_holds(void **stat
     struct memory *all = memory_new();
     learner_renew(&stored, &settings);
     learner_renew(&other, &settings);
+    learner_read(&stored, &memory->base);
     for (size_t i = 0; i < CHANGES; i++) {
         learn(&stored, &history->changes[i]);
         learn(&other, &history->changes[i]);
         memory_store(memory, stored.model);
         if (i % 50 == 49 || takes_trials_along(&history->changes[i])) {
-            memset(all, 0, sizeof *all);
+            memory_clear(all);
             memory_take(all, other.model);
             memory_assert_same(memory, all);
         }
@@ -344,6 +345,123 @@ static void what_was_stored_part_by_part_is_all_that_the_model_holds(void **stat
     free(all);
     learner_free(&stored);
     learner_free(&other);
+}
+
+/* --- what is in memory and what is not ----------------------------------------------------------
+ * A history learned by one model that is never stored or trimmed, and by another that reads what it
+ * has let go. */
+
+enum {
+    EVERY = 6 /* is stored about that often */
+};
+
+struct pair {
+    struct learner whole; /* never stored */
+    struct learner other; /* stored in `memory` */
+    struct memory *memory;
+    struct memory *all; /* of the whole one, at the end */
+};
+
+static void pair_init(struct pair *pair, const struct model_settings *settings)
+{
+    *pair = (struct pair){.memory = memory_new(), .all = memory_new()};
+    learner_renew(&pair->whole, settings);
+    learner_renew(&pair->other, settings);
+    learner_read(&pair->other, &pair->memory->base);
+}
+
+static void pair_deinit(struct pair *pair)
+{
+    free(pair->memory);
+    free(pair->all);
+    learner_free(&pair->whole);
+    learner_free(&pair->other);
+}
+
+static void learn_with_both(struct pair *pair, const struct change *change)
+{
+    learn(&pair->whole, change);
+    learn(&pair->other, change);
+}
+
+/* What is asked, listed and stored of a filed item. */
+static void assert_same_of_entry(const struct pair *pair, const struct entry *entry)
+{
+    struct model_question question = filed_question(entry);
+    struct model_answer first = learner_answer(&pair->whole, &question);
+    struct model_answer second = learner_answer(&pair->other, &question);
+    const struct worklist_entry listed = learner_listed(&pair->whole, entry);
+    const struct worklist_entry same = learner_listed(&pair->other, entry);
+    assert_same_answer(&first, &second);
+    memory_assert_same_entry(&listed, &same);
+}
+
+/* All that there is, to the last bit. */
+static void assert_same_models(struct pair *pair, const struct history *history)
+{
+    assert_same_answers(&pair->whole, &pair->other);
+    assert_same_standing(&pair->whole, &pair->other);
+    assert_same_ranking(&pair->whole, &pair->other);
+    for (size_t i = 0; i < history->live_count; i++) {
+        assert_same_of_entry(pair, history->live[i]);
+    }
+    memory_take(pair->all, pair->whole.model);
+    memory_store(pair->memory, pair->other.model);
+    memory_assert_same(pair->all, pair->memory);
+}
+
+static void a_model_stored_now_and_then_and_trimmed_each_time_is_the_same_model(void **state)
+{
+    const struct history *history = *state;
+    const struct model_settings settings = settings_with_everything();
+    struct repeatable random = {21};
+    struct pair pair;
+    pair_init(&pair, &settings);
+    for (size_t i = 0; i < CHANGES; i++) {
+        learn_with_both(&pair, &history->changes[i]);
+        if (repeatable_below(&random, EVERY) == 0) {
+            memory_store(pair.memory, pair.other.model);
+        }
+        learner_trim(&pair.other, 0, 0);
+        if (i % 100 == 99) {
+            assert_same_answers(&pair.whole, &pair.other);
+        }
+    }
+    assert_true(pair.memory->read.words > CHANGES && pair.memory->read.chunks > CHANGES);
+    assert_true(pair.memory->read.entries > CHANGES);
+    assert_same_models(&pair, history);
+    assert_eventful(pair.memory);
+    pair_deinit(&pair);
+}
+
+/* What was learned since the last time that it was stored is gone with it, and is learned again. */
+static void a_model_thrown_away_now_and_then_is_the_same_model(void **state)
+{
+    const struct history *history = *state;
+    const struct model_settings settings = settings_with_everything();
+    struct repeatable random = {22};
+    struct pair pair;
+    size_t stored = 0; /* changes that are */
+    size_t thrown = 0;
+    pair_init(&pair, &settings);
+    memory_store(pair.memory, pair.other.model); /* there is something to begin with again */
+    for (size_t i = 0; i < CHANGES; i++) {
+        learn_with_both(&pair, &history->changes[i]);
+        uint32_t drawn = repeatable_below(&random, 2 * EVERY);
+        if (drawn < 2) {
+            memory_store(pair.memory, pair.other.model);
+            stored = i + 1;
+        } else if (drawn == 2) {
+            resume(pair.memory, &settings, &pair.other);
+            thrown++;
+            for (size_t again = stored; again <= i; again++) {
+                learn(&pair.other, &history->changes[again]);
+            }
+        }
+    }
+    assert_true(thrown > 30);
+    assert_same_models(&pair, history);
+    pair_deinit(&pair);
 }
 
 /* The scratch keeps the chances as of the empty model; they must not outlive it. */
@@ -358,6 +476,7 @@ static void a_question_before_the_model_was_put_back_spoils_no_answer(void **sta
     go_on(*state, 0, 300, &whole, memory);
     (void)learner_ask(&asked, "log");
     memory_restore(memory, asked.model);
+    learner_read(&asked, &memory->base);
     assert_same_answers(&whole, &asked);
     free(memory);
     learner_free(&whole);
@@ -372,6 +491,8 @@ int main(void)
         history_test(the_same_items_give_the_same_model_whatever_the_key),
         history_test(a_model_put_back_goes_on_to_the_same_numbers),
         history_test(what_was_stored_part_by_part_is_all_that_the_model_holds),
+        history_test(a_model_stored_now_and_then_and_trimmed_each_time_is_the_same_model),
+        history_test(a_model_thrown_away_now_and_then_is_the_same_model),
         history_test(a_question_before_the_model_was_put_back_spoils_no_answer),
     };
     return cmocka_run_group_tests_name("stored and gone on with", tests, NULL, NULL);

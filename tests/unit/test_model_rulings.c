@@ -114,9 +114,9 @@ static void a_ruling_stands_beside_the_pair_that_was_counted(void **state)
         learner_file(&examining->learner, "log t3q0 n7q0", TAGS(3));
     }
     learner_rescore(&examining->learner, &examining->filed);
-    const struct worklist_entry *listed = learner_listed(&examining->learner, &examining->filed);
-    const struct worklist_pair pair = *listed_pair(listed, 3);
-    assert_int_not_equal(bin_of(listed_gap(listed, 3)->score), bin_of(pair.counted));
+    const struct worklist_entry listed = learner_listed(&examining->learner, &examining->filed);
+    const struct worklist_pair pair = *listed_pair(&listed, 3);
+    assert_int_not_equal(bin_of(listed_gap(&listed, 3)->score), bin_of(pair.counted));
     entry_find_tag(&examining->ruled, 3);
     examine(examining);
     assert_added(examining, (struct calibrators_cell){.ruled = 1.0, .ruled_true = 1.0});

@@ -97,10 +97,15 @@ static void a_check_at_random_tries_what_belongs(void **state)
 
 static size_t gaps_of(struct training *training, uint64_t seq)
 {
+    struct worklist_entry entry = {.number = 0};
+    struct model_base base;
     shared_model_read(&training->shared);
-    size_t gaps = worklist_find(model_worklist(training->shared.model), seq)->gap_count;
+    model_base_enter(&base, training->model_store);
+    assert_int_equal(worklist_find(model_worklist(training->shared.model), &base.base, seq, &entry),
+                     0);
+    model_base_leave(&base);
     shared_model_unlock(&training->shared);
-    return gaps;
+    return entry.gap_count;
 }
 
 /* The unchecked entry may lack the other tag, the checked one may not. */

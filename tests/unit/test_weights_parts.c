@@ -9,16 +9,15 @@
 
 enum {
     MOST_CHUNKS = 8,
-    MANY_TAGS = 2 * WEIGHTS_CHUNK_POSTINGS + 5
+    MANY_TAGS = 2 * POSTINGS_CHUNK + 5,
+    POSTING_BYTES = 8 /* of one lane */
 };
 
 /* Copies of the chunks that were put out. */
 struct put_out {
     size_t count;
     struct weights_chunk chunks[MOST_CHUNKS];
-    uint32_t tags[MOST_CHUNKS][WEIGHTS_CHUNK_POSTINGS];
-    float values[MOST_CHUNKS][WEIGHTS_CHUNK_POSTINGS];
-    float accumulators[MOST_CHUNKS][WEIGHTS_CHUNK_POSTINGS];
+    uint32_t numbers[MOST_CHUNKS][POSTINGS_MOST_NUMBERS];
 };
 
 static int keep(void *user, const struct weights_chunk *chunk)
@@ -27,12 +26,8 @@ static int keep(void *user, const struct weights_chunk *chunk)
     assert_true(out->count < MOST_CHUNKS);
     size_t at = out->count++;
     out->chunks[at] = *chunk;
-    memcpy(out->tags[at], chunk->tags, chunk->count * sizeof *chunk->tags);
-    memcpy(out->values[at], chunk->values, chunk->count * sizeof *chunk->values);
-    memcpy(out->accumulators[at], chunk->accumulators, chunk->count * sizeof *chunk->accumulators);
-    out->chunks[at].tags = out->tags[at];
-    out->chunks[at].values = out->values[at];
-    out->chunks[at].accumulators = out->accumulators[at];
+    assert_true(chunk->bytes.size <= sizeof out->numbers[at]);
+    memcpy(out->numbers[at], chunk->bytes.data, chunk->bytes.size);
     return 0;
 }
 
@@ -45,7 +40,7 @@ static struct put_out *changed(const struct fixture *fixture)
 }
 
 /* One word that has a weight for each of many tags. */
-static void learn_many(const struct fixture *fixture)
+static void learn_many(struct fixture *fixture)
 {
     static struct weights_given given[MANY_TAGS];
     const struct weights_feature x = fixture_word(3, 1.0F);
@@ -66,17 +61,18 @@ static void nothing_learned_is_nothing_changed(void **state)
     assert_int_equal(weights_changed_tags(fixture->weights)->count, 0);
 }
 
+/* Slope -4: the accumulator is .1 + 16, and of 16 to 32 a cell can say every 64th. */
 static void an_example_changes_the_chunk_of_its_word_and_its_tag(void **state)
 {
-    const struct fixture *fixture = *state;
+    struct fixture *fixture = *state;
     fixture_learn_one(fixture, 3, 1, 1.0);
     const struct put_out *out = changed(fixture);
     assert_int_equal(out->count, 1);
     assert_int_equal(out->chunks[0].word, 3);
     assert_int_equal(out->chunks[0].number, 0);
-    assert_int_equal(out->chunks[0].count, 1);
-    assert_int_equal(out->tags[0][0], 1);
-    assert_float_equal(out->accumulators[0][0], 16.0F, 1e-5F); /* slope -4 */
+    assert_int_equal(out->chunks[0].bytes.size, POSTING_BYTES);
+    assert_int_equal(out->numbers[0][0], 1);
+    assert_near((double)cell_accumulator(out->numbers[0][1]), 16.1, 1.0 / 64.0);
     const struct marks *tags = weights_changed_tags(fixture->weights);
     assert_int_equal(tags->count, 1);
     assert_int_equal(tags->list[0], 1);
@@ -84,7 +80,7 @@ static void an_example_changes_the_chunk_of_its_word_and_its_tag(void **state)
 
 static void what_is_stored_has_not_changed(void **state)
 {
-    const struct fixture *fixture = *state;
+    struct fixture *fixture = *state;
     fixture_learn_one(fixture, 3, 1, 1.0);
     weights_clean(fixture->weights);
     assert_int_equal(changed(fixture)->count, 0);
@@ -93,7 +89,7 @@ static void what_is_stored_has_not_changed(void **state)
 
 static void a_rival_that_lost_has_changed_too(void **state)
 {
-    const struct fixture *fixture = *state;
+    struct fixture *fixture = *state;
     fixture_learn_one(fixture, 3, 1, 1.0);
     fixture_learn_one(fixture, 3, 1, 9.0);
     weights_clean(fixture->weights);
@@ -105,47 +101,44 @@ static void a_rival_that_lost_has_changed_too(void **state)
 
 static void many_weights_of_a_word_come_in_chunks(void **state)
 {
-    const struct fixture *fixture = *state;
+    struct fixture *fixture = *state;
     learn_many(fixture);
     const struct put_out *out = changed(fixture);
     assert_int_equal(out->count, 3);
     for (uint32_t i = 0; i < 3; i++) {
         assert_int_equal(out->chunks[i].number, i);
-        assert_int_equal(out->chunks[i].count, i < 2 ? WEIGHTS_CHUNK_POSTINGS : 5);
+        assert_int_equal(out->chunks[i].bytes.size, POSTING_BYTES * (i < 2 ? POSTINGS_CHUNK : 5));
     }
 }
 
 /* Weights of 0 for many tags, none of them a rival: a tag that is given is the only one to move. */
-static void put_many_zeros(const struct fixture *fixture)
+static void put_many_zeros(struct fixture *fixture)
 {
     uint32_t tags[MANY_TAGS];
     static const float zeros[MANY_TAGS];
     for (uint32_t i = 0; i < MANY_TAGS; i++) {
         tags[i] = i;
     }
-    for (uint32_t first = 0; first < MANY_TAGS; first += WEIGHTS_CHUNK_POSTINGS) {
+    assert_int_equal(weights_reserve_tags(fixture->weights, MANY_TAGS), 0);
+    for (uint32_t first = 0; first < MANY_TAGS; first += POSTINGS_CHUNK) {
         uint32_t left = MANY_TAGS - first;
-        struct weights_chunk chunk = {
-            .word = 3,
-            .number = first / WEIGHTS_CHUNK_POSTINGS,
-            .count = left < WEIGHTS_CHUNK_POSTINGS ? left : WEIGHTS_CHUNK_POSTINGS,
-            .tags = tags + first,
-            .values = zeros,
-            .accumulators = zeros};
-        assert_int_equal(weights_restore_chunk(fixture->weights, &chunk), 0);
+        fixture_put_chunk(fixture, 3, first / POSTINGS_CHUNK, tags + first, zeros,
+                          left < POSTINGS_CHUNK ? left : POSTINGS_CHUNK);
     }
 }
 
 static void a_weight_that_moves_changes_its_own_chunk_alone(void **state)
 {
-    const struct fixture *fixture = *state;
+    struct fixture *fixture = *state;
     put_many_zeros(fixture);
-    fixture_learn_one(fixture, 3, WEIGHTS_CHUNK_POSTINGS, 1.0); /* the second chunk's first */
+    fixture_learn_one(fixture, 3, POSTINGS_CHUNK, 1.0); /* the second chunk's first */
     const struct put_out *out = changed(fixture);
     assert_int_equal(out->count, 1);
     assert_int_equal(out->chunks[0].number, 1);
-    assert_int_equal(out->tags[0][0], WEIGHTS_CHUNK_POSTINGS);
-    assert_true(out->values[0][0] > 0.0F);
+    assert_int_equal(out->chunks[0].bytes.size, POSTING_BYTES * POSTINGS_CHUNK);
+    assert_int_equal(out->numbers[0][0], POSTINGS_CHUNK);
+    assert_true(cell_weight(out->numbers[0][1]) > 0);
+    assert_int_equal(weights_postings(fixture->weights), MANY_TAGS); /* none is new */
 }
 
 static int refuse(void *user, const struct weights_chunk *chunk)
@@ -157,7 +150,7 @@ static int refuse(void *user, const struct weights_chunk *chunk)
 
 static void whoever_stores_may_refuse(void **state)
 {
-    const struct fixture *fixture = *state;
+    struct fixture *fixture = *state;
     int times = 0;
     learn_many(fixture);
     assert_int_equal(weights_changed_chunks(fixture->weights, refuse, &times), -ENOSPC);
@@ -167,14 +160,14 @@ static void whoever_stores_may_refuse(void **state)
 
 static void a_forgotten_word_has_no_chunk_to_store(void **state)
 {
-    const struct fixture *fixture = *state;
+    struct fixture *fixture = *state;
     fixture_learn_one(fixture, 3, 1, 1.0);
-    weights_forget_word(fixture->weights, 3);
+    fixture_forget(fixture, 3);
     assert_int_equal(changed(fixture)->count, 0);
     weights_clean(fixture->weights);
     fixture_learn_one(fixture, 3, 2, 1.0);
     assert_int_equal(changed(fixture)->count, 1);
-    assert_int_equal(changed(fixture)->tags[0][0], 2);
+    assert_int_equal(changed(fixture)->numbers[0][0], 2);
 }
 
 static void the_owner_may_mark_a_tag(void **state)
@@ -189,6 +182,7 @@ static void the_owner_may_mark_a_tag(void **state)
 /* --- put back -----------------------------------------------------------------------------------
  */
 
+/* The other one's base holds the chunks that were put out; its biases are put back. */
 static void what_is_put_back_scores_and_learns_as_before(void **state)
 {
     struct fixture *fixture = *state;
@@ -196,66 +190,82 @@ static void what_is_put_back_scores_and_learns_as_before(void **state)
     const struct weights_settings settings = {.surrogate = SURROGATE_SQUARED_HINGE};
     learn_many(fixture);
     assert_int_equal(fixture_renew(&other, &settings), 0);
-    const struct put_out *out = changed(fixture);
-    for (size_t i = 0; i < out->count; i++) {
-        assert_int_equal(weights_restore_chunk(other.weights, &out->chunks[i]), 0);
-    }
+    assert_int_equal(weights_changed_chunks(fixture->weights, fixture_keep, &other.stored), 0);
     for (uint32_t tag = 0; tag < MANY_TAGS; tag++) {
-        struct weights_bias bias = weights_bias(fixture->weights, tag);
-        assert_int_equal(weights_restore_bias(other.weights, tag, bias), 0);
+        assert_int_equal(
+            weights_restore_bias(other.weights, WEIGHTS_MAIN, tag, fixture_bias(fixture, tag)), 0);
     }
-    assert_int_equal(weights_postings(other.weights), MANY_TAGS);
+    weights_restore_postings(other.weights, MANY_TAGS, weights_pruned(fixture->weights));
+    other.number = fixture->number;
     fixture_learn_one(fixture, 3, 7, 1.0);
     fixture_learn_one(&other, 3, 7, 1.0);
+    assert_int_equal(weights_postings(other.weights), MANY_TAGS);
     for (uint32_t tag = 0; tag < MANY_TAGS; tag++) {
-        assert_true(fixture_score_of(fixture, 3, tag) == fixture_score_of(&other, 3, tag));
+        assert_near(fixture_score_of(fixture, 3, tag), fixture_score_of(&other, 3, tag), 0.0);
     }
-    weights_free(other.weights);
-    weights_scratch_free(other.scratch);
+    fixture_end(&other);
 }
 
 static void nothing_put_back_is_marked_as_changed(void **state)
 {
-    const struct fixture *fixture = *state;
+    struct fixture *fixture = *state;
+    const struct weights_feature x = fixture_word(3, 1.0F);
     fixture_put(fixture, 3, (const uint32_t[]){0, 1}, (const float[]){0.5F, 0.5F}, 2);
     fixture_put_bias(fixture, 0, 0.5F);
+    assert_int_equal(weights_admit(fixture->weights, &fixture->stored.base, &x, 1), 0);
     assert_int_equal(changed(fixture)->count, 0);
+    assert_int_equal(weights_changed_count(fixture->weights), 0);
     assert_int_equal(weights_changed_tags(fixture->weights)->count, 0);
 }
 
-static int put_back(const struct fixture *fixture, uint32_t number, uint32_t count)
-{
-    static const uint32_t tags[WEIGHTS_CHUNK_POSTINGS + 1];
-    static const float numbers[WEIGHTS_CHUNK_POSTINGS + 1];
-    const struct weights_chunk chunk = {.word = 3,
-                                        .number = number,
-                                        .count = count,
-                                        .tags = tags,
-                                        .values = numbers,
-                                        .accumulators = numbers};
-    return weights_restore_chunk(fixture->weights, &chunk);
-}
+/* --- damaged ------------------------------------------------------------------------------------
+ */
 
-static void a_chunk_out_of_order_is_refused(void **state)
+/* What every use of word 3 gives. */
+static void assert_damaged(const struct fixture *fixture)
 {
-    const struct fixture *fixture = *state;
-    assert_int_equal(put_back(fixture, 1, 1), -EINVAL);
-    assert_int_equal(put_back(fixture, 0, WEIGHTS_CHUNK_POSTINGS), 0);
-    assert_int_equal(put_back(fixture, 0, 1), -EINVAL);
-    assert_int_equal(put_back(fixture, 2, 1), -EINVAL);
-    assert_int_equal(put_back(fixture, 1, 10), 0);
-    assert_int_equal(put_back(fixture, 2, 1), -EINVAL); /* the one before was not full */
-}
-
-/* 2^27 chunks of 160 postings are 5·2^32 postings: 0 in 32 bits. */
-static void a_chunk_whose_place_cannot_be_counted_is_refused(void **state)
-{
-    assert_int_equal(put_back(*state, 1U << 27U, 1), -EINVAL);
+    const struct weights_feature x = fixture_word(3, 1.0F);
+    const struct base *base = &fixture->stored.base;
+    float part = 0.0F;
+    fixture_score(fixture, NULL, 0); /* for what explaining needs of the scratch */
+    assert_int_equal(weights_explain(fixture->weights, base, &x, 1, (const uint32_t[]){0}, 1,
+                                     fixture->scratch, &part),
+                     -EIO);
+    assert_int_equal(weights_score(fixture->weights, base, &x, 1, 1, fixture->scratch), -EIO);
+    assert_int_equal(weights_admit(fixture->weights, base, &x, 1), -EIO);
+    assert_int_equal(weights_forget_word(fixture->weights, base, 3), -EIO);
 }
 
 static void a_chunk_over_the_size_is_refused(void **state)
 {
-    assert_int_equal(put_back(*state, 0, WEIGHTS_CHUNK_POSTINGS + 1), -EINVAL);
+    struct fixture *fixture = *state;
+    static const uint32_t numbers[2 * (POSTINGS_CHUNK + 1)];
+    fake_chunks_put(&fixture->stored, 3, 0, numbers, sizeof numbers);
+    assert_damaged(fixture);
+}
+
+static void a_chunk_of_a_tag_that_is_not_known_is_refused(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture_put(fixture, 3, (const uint32_t[]){0, FIXTURE_TAGS}, (const float[]){0.5F, 0.5F}, 2);
+    assert_damaged(fixture);
+    assert_int_equal(weights_reserve_tags(fixture->weights, FIXTURE_TAGS + 1), 0);
+    assert_near(fixture_score_of(fixture, 3, FIXTURE_TAGS), -0.5, 0.0);
+}
+
+static void an_error_of_the_base_is_handed_on(void **state)
+{
+    struct fixture *fixture = *state;
+    const struct weights_feature x = fixture_word(3, 1.0F);
+    fixture_put(fixture, 3, (const uint32_t[]){0}, (const float[]){0.5F}, 1);
+    fixture->stored.error = -EIO;
+    assert_damaged(fixture);
+    fixture->stored.error = -ENOMEM;
+    assert_int_equal(
+        weights_score(fixture->weights, &fixture->stored.base, &x, 1, 1, fixture->scratch),
+        -ENOMEM);
+    fixture->stored.error = 0;
+    assert_near(fixture_score_of(fixture, 3, 0), -0.5, 0.0);
 }
 
 int main(void)
@@ -273,9 +283,9 @@ int main(void)
         weights_test(the_owner_may_mark_a_tag),
         weights_test(what_is_put_back_scores_and_learns_as_before),
         weights_test(nothing_put_back_is_marked_as_changed),
-        weights_test(a_chunk_out_of_order_is_refused),
-        weights_test(a_chunk_whose_place_cannot_be_counted_is_refused),
         weights_test(a_chunk_over_the_size_is_refused),
+        weights_test(a_chunk_of_a_tag_that_is_not_known_is_refused),
+        weights_test(an_error_of_the_base_is_handed_on),
     };
     return cmocka_run_group_tests_name("storing weights", tests, NULL, NULL);
 }

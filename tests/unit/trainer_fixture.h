@@ -8,21 +8,25 @@
 #include <pthread.h>
 #include <unistd.h>
 
+#include "daemon/model_base.h"
 #include "daemon/trainer.h"
 #include "tests/unit/store_fixture.h"
 
 enum {
     HOUR_MS = 3600 * 1000,
+    LARGE_BUDGET_BYTES = 1 << 30,
     GUARD_S = 120 /* a test that waits for what never comes ends */
 };
 
 struct training {
     struct fixture *store;
+    struct store_settings model_settings; /* of the model's store */
     struct model_store *model_store;
     struct shared_model shared;
     struct backlog *backlog;
     struct troubles troubles;
     struct features_settings features;
+    struct workspaces workspaces;
     struct trainer_settings settings;
     struct trainer *trainer;
     struct store_error error;
@@ -59,21 +63,52 @@ static inline void wait_until_kept(struct training *training, size_t count)
     (void)pthread_mutex_unlock(&training->mutex);
 }
 
+static const struct siphash_key TRAINING_KEY = {7, 8};
+
+/* Opens the model's store, and takes up the model as it is stored there, if it is. */
+static inline void open_model(struct training *training)
+{
+    struct model_origin origin = training->settings.origin;
+    enum model_kept kept = MODEL_KEPT_NONE;
+    struct model *model = NULL;
+    uint64_t seq = 0;
+    assert_int_equal(
+        model_store_open(&training->model_settings, &training->model_store, &training->error),
+        STORE_OK);
+    origin.last_seq = fixture_totals(training->store).seq;
+    assert_int_equal(
+        model_keeper_look(training->model_store, &origin, &kept, &seq, &training->error), STORE_OK);
+    assert_int_not_equal(kept, MODEL_KEPT_OTHER);
+    assert_int_equal(model_new(&MODEL_SETTINGS, &TRAINING_KEY, &model), 0);
+    if (kept == MODEL_KEPT_OURS) {
+        assert_int_equal(model_keeper_load(training->model_store, model, &training->error),
+                         STORE_OK);
+    }
+    assert_int_equal(shared_model_init_take(&training->shared, model, training->model_store, seq),
+                     0);
+    const struct backlog_start start = {.learned = seq, .committed = seq};
+    assert_int_equal(backlog_new(&start, &training->backlog), 0);
+    training->settings.model_store = training->model_store;
+    training->settings.backlog = training->backlog;
+}
+
+static inline void close_model(struct training *training)
+{
+    shared_model_deinit(&training->shared);
+    backlog_free(training->backlog);
+    training->backlog = NULL;
+    model_store_close(training->model_store);
+    training->model_store = NULL;
+}
+
 static inline void open_parts(struct training *training)
 {
-    static const struct siphash_key KEY = {7, 8};
-    const struct backlog_start start = {.visible_within_ms = 0};
-    struct model *model = NULL;
-    assert_int_equal(
-        model_store_open(&training->store->settings, &training->model_store, &training->error),
-        STORE_OK);
-    assert_int_equal(model_new(&MODEL_SETTINGS, &KEY, &model), 0);
-    assert_int_equal(shared_model_init_take(&training->shared, model, 0), 0);
-    assert_int_equal(backlog_new(&start, &training->backlog), 0);
     assert_int_equal(troubles_init(&training->troubles), 0);
     assert_int_equal(pthread_mutex_init(&training->mutex, NULL), 0);
     assert_int_equal(pthread_cond_init(&training->kept, NULL), 0);
-    training->features = (struct features_settings){.title_weight = 1.5, .key = KEY};
+    training->features = (struct features_settings){.title_weight = 1.5, .key = TRAINING_KEY};
+    assert_int_equal(workspaces_init(&training->workspaces, &training->features), 0);
+    training->model_settings = training->store->settings;
 }
 
 static inline int training_set_up(void **state)
@@ -85,16 +120,17 @@ static inline int training_set_up(void **state)
     open_parts(training);
     training->settings = (struct trainer_settings){
         .store = training->store->store,
-        .model_store = training->model_store,
         .shared = &training->shared,
-        .backlog = training->backlog,
         .troubles = &training->troubles,
         .features = &training->features,
         .origin = {.store_uuid = store_uuid(training->store->store), .settings = "step=0.5\n"},
         .flush_every_ms = HOUR_MS,
         .flush_changes = 1000 * 1000,
+        .memory_bytes = LARGE_BUDGET_BYTES,
+        .workspaces = &training->workspaces,
         .user = training,
         .kept = on_kept};
+    open_model(training);
     *state = training;
     return 0;
 }
@@ -114,11 +150,12 @@ static inline void stop(struct training *training)
 static inline int training_tear_down(void **state)
 {
     struct training *training = *state;
-    stop(training);
-    shared_model_deinit(&training->shared);
-    backlog_free(training->backlog);
+    if (training->backlog) {
+        stop(training);
+        close_model(training);
+    }
+    workspaces_deinit(&training->workspaces);
     troubles_deinit(&training->troubles);
-    model_store_close(training->model_store);
     (void)pthread_cond_destroy(&training->kept);
     (void)pthread_mutex_destroy(&training->mutex);
     (void)fixture_teardown((void **)&training->store);

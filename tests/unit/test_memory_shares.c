@@ -1,0 +1,65 @@
+/* How the memory budget is divided. */
+#include "daemon/memory_shares.h"
+
+#include <setjmp.h>
+#include <stdarg.h>
+#include <stddef.h>
+#include <stdint.h>
+
+#include <cmocka.h>
+
+static const uint64_t MIB = 1U << 20U;
+
+/* Of 64 MiB 16 wait to be stored and 8 are the program's: 40 are left, 10 of them for words. */
+static void the_smallest_budget_leaves_a_share_for_each(void **state)
+{
+    (void)state;
+    struct memory_shares shares = memory_shares_of(64 * MIB, 0);
+    assert_int_equal(shares.changed, 16 * MIB);
+    assert_int_equal(shares.dictionary, 10 * MIB);
+    assert_int_equal(shares.weights, 30 * MIB);
+}
+
+/* Of 1024 MiB 256 wait to be stored, 8 are the program's and 60 are taken: 700 are left. */
+static void what_others_take_is_not_shared_out(void **state)
+{
+    (void)state;
+    struct memory_shares shares = memory_shares_of(1024 * MIB, 60 * MIB);
+    assert_int_equal(shares.changed, 256 * MIB);
+    assert_int_equal(shares.dictionary, 175 * MIB);
+    assert_int_equal(shares.weights, 525 * MIB);
+}
+
+/* 64 - 16 - 8 - 32 would be 8, which is an eighth of the budget: the least that is left. */
+static void the_caches_keep_an_eighth_of_the_budget(void **state)
+{
+    (void)state;
+    const uint64_t taken[] = {32 * MIB, 33 * MIB, 500 * MIB, UINT64_MAX / 2};
+    for (size_t i = 0; i < sizeof taken / sizeof taken[0]; i++) {
+        struct memory_shares shares = memory_shares_of(64 * MIB, taken[i]);
+        assert_int_equal(shares.changed, 16 * MIB);
+        assert_int_equal(shares.dictionary, 2 * MIB);
+        assert_int_equal(shares.weights, 6 * MIB);
+    }
+}
+
+static void the_shares_never_come_to_more_than_the_budget(void **state)
+{
+    (void)state;
+    for (uint64_t budget = 64; budget <= 4096; budget += 7) {
+        struct memory_shares shares = memory_shares_of(budget * MIB, 3 * MIB);
+        assert_true(shares.changed + shares.dictionary + shares.weights <= budget * MIB);
+        assert_true(shares.dictionary > 0 && shares.weights > shares.dictionary);
+    }
+}
+
+int main(void)
+{
+    const struct CMUnitTest tests[] = {
+        cmocka_unit_test(the_smallest_budget_leaves_a_share_for_each),
+        cmocka_unit_test(what_others_take_is_not_shared_out),
+        cmocka_unit_test(the_caches_keep_an_eighth_of_the_budget),
+        cmocka_unit_test(the_shares_never_come_to_more_than_the_budget),
+    };
+    return cmocka_run_group_tests_name("memory shares", tests, NULL, NULL);
+}

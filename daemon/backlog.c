@@ -47,6 +47,7 @@ struct backlog {
     uint64_t held; /* what another model has passed; UINT64_MAX: there is none */
     bool nudged;
     bool trainer_failed;
+    bool trainer_waits;
     bool stopping;
 };
 
@@ -122,13 +123,19 @@ static uint64_t room(const struct backlog *backlog)
     return backlog->cost_behind < limit ? limit - backlog->cost_behind : 0;
 }
 
+/* Then nobody waits for what will not come, or not soon. */
+static bool is_nobody_learning(const struct backlog *backlog)
+{
+    return backlog->trainer_failed || backlog->trainer_waits;
+}
+
 uint64_t backlog_wait_for_room(struct backlog *backlog)
 {
     sync_lock(&backlog->mutex);
-    while (room(backlog) == 0 && !backlog->stopping && !backlog->trainer_failed) {
+    while (room(backlog) == 0 && !backlog->stopping && !is_nobody_learning(backlog)) {
         (void)pthread_cond_wait(&backlog->learned_more, &backlog->mutex);
     }
-    uint64_t cost = backlog->trainer_failed ? UINT64_MAX : room(backlog);
+    uint64_t cost = is_nobody_learning(backlog) ? UINT64_MAX : room(backlog);
     sync_unlock(&backlog->mutex);
     return cost > 0 ? cost : 1;
 }
@@ -254,6 +261,14 @@ void backlog_trainer_failed(struct backlog *backlog)
     sync_unlock(&backlog->mutex);
 }
 
+void backlog_trainer_waits(struct backlog *backlog, bool waits)
+{
+    sync_lock(&backlog->mutex);
+    backlog->trainer_waits = waits;
+    (void)pthread_cond_broadcast(&backlog->learned_more);
+    sync_unlock(&backlog->mutex);
+}
+
 /* --- whoever asks -------------------------------------------------------------------------------
  */
 
@@ -275,7 +290,7 @@ void backlog_wait_for_promise(struct backlog *backlog, uint64_t now_ms)
 {
     sync_lock(&backlog->mutex);
     uint64_t due = is_catching_up(backlog) ? 0 : seq_due(backlog, now_ms);
-    while (backlog->numbers.learned < due && !backlog->stopping && !backlog->trainer_failed) {
+    while (backlog->numbers.learned < due && !backlog->stopping && !is_nobody_learning(backlog)) {
         (void)pthread_cond_wait(&backlog->learned_more, &backlog->mutex);
     }
     sync_unlock(&backlog->mutex);

@@ -74,6 +74,10 @@ void backlog_nudge(struct backlog *backlog);
 /* There will be no more learning: nobody waits for it from now on. */
 void backlog_trainer_failed(struct backlog *backlog);
 
+/* Learning waits for something that may take long, or goes on again: nobody waits for it meanwhile.
+ */
+void backlog_trainer_waits(struct backlog *backlog, bool waits);
+
 /* --- whoever asks --- */
 
 /* Waits until what was committed visible_within_ms before now is learned. */

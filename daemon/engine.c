@@ -415,7 +415,7 @@ int engine_ask(struct engine *engine, const struct model_question *question,
     int code = -ESTALE;
     if (workspace->version == engine->shared.version) {
         code = engine->shared.broken
-                   ? -ENOMEM
+                   ? engine->shared.broken
                    : model_ask(engine->shared.model, question, workspace->scratch, ret_answer);
     }
     *ret_learned = engine->shared.learned;
@@ -433,7 +433,7 @@ int engine_read_model(struct engine *engine,
 {
     backlog_wait_for_promise(engine->backlog, clock_steady_ms());
     shared_model_read(&engine->shared);
-    int code = engine->shared.broken ? -ENOMEM : 0;
+    int code = engine->shared.broken;
     struct model_base base;
     model_base_enter(&base, engine->shared.store);
     if (code == 0) {

@@ -71,7 +71,8 @@ int engine_ask(struct engine *engine, const struct model_question *question,
 
 /*
  * Has the model read by `read`, which must not keep it, when it has learned what it must have.
- * Returns 0, or -ENOMEM where memory ran out when the model learned last.
+ * Returns 0, -ENOMEM where memory ran out when the model learned last, or -EIO where what was
+ * stored of it could not be read then.
  */
 int engine_read_model(struct engine *engine,
                       void (*read)(void *user, const struct model *model, const struct base *base,

@@ -29,7 +29,9 @@ static int read_chunk(void *user, uint32_t word, uint32_t number, struct base_by
     if (code == STORE_OK) {
         code = model_view_chunk(base->view, word, number, &bytes, &base->error);
     }
-    *ret_bytes = (struct base_bytes){.data = bytes.data, .size = bytes.size};
+    if (code == STORE_OK) {
+        *ret_bytes = (struct base_bytes){.data = bytes.data, .size = bytes.size};
+    }
     return tell(base, code);
 }
 
@@ -41,7 +43,9 @@ static int read_word(void *user, const char *term, size_t term_bytes, struct bas
     if (code == STORE_OK) {
         code = model_view_word(base->view, term, term_bytes, &word, &base->error);
     }
-    *ret_word = (struct base_word){.number = word.number, .count = word.count};
+    if (code == STORE_OK) {
+        *ret_word = (struct base_word){.number = word.number, .count = word.count};
+    }
     return tell(base, code);
 }
 

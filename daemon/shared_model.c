@@ -31,7 +31,7 @@ int shared_model_init_take(struct shared_model *shared, struct model *model,
     shared->store = store;
     shared->version = 0;
     shared->learned = learned;
-    shared->broken = false;
+    shared->broken = 0;
     return 0;
 }
 

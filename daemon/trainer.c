@@ -19,6 +19,7 @@
 #include "daemon/change_reader.h"
 #include "daemon/clock.h"
 #include "daemon/learner/model_parts.h"
+#include "daemon/log.h"
 #include "daemon/memory_shares.h"
 #include "daemon/model_base.h"
 #include "daemon/sync.h"
@@ -57,6 +58,7 @@ struct trainer {
     size_t scrub_left;      /* pages, when it was last looked at */
     bool failed;
     bool store_failed; /* when the model was to be stored last */
+    bool waits;        /* until it can be stored */
 };
 
 /* --- one change ---------------------------------------------------------------------------------
@@ -91,7 +93,7 @@ static int learn_change(struct trainer *trainer, struct store_view *view, uint64
     if (code == 0) {
         shared->learned = seq;
     } else {
-        shared->broken = true;
+        shared->broken = code;
     }
     shared_model_unlock(shared);
     *ret_cost = read.cost;
@@ -285,7 +287,7 @@ static bool rescore_some(struct trainer *trainer)
         }
     }
     end_round(trainer, view);
-    return code == STORE_OK && next == 0 && !is_full(trainer);
+    return code == STORE_OK && next == 0;
 }
 
 /* --- rehearsal ----------------------------------------------------------------------------------
@@ -315,7 +317,7 @@ static int rehearse_item(struct trainer *trainer, struct store_view *view, uint6
     if (item) {
         result = model_rehearse(shared->model, item, trainer->scratch);
         model_trim(shared->model, trainer->shares.dictionary, trainer->shares.weights);
-        shared->broken = shared->broken || result < 0;
+        shared->broken = result;
     } else {
         model_skip_rehearsal(shared->model, number);
     }
@@ -364,7 +366,13 @@ static bool may_rehearse(const struct trainer *trainer)
 
 static void fail(struct trainer *trainer, const struct store_error *error)
 {
+    struct store_error reason = {0};
     trainer->failed = true;
+    /* What was learned before is damaged, and loading it would not find out: learn it anew. */
+    if (trainer->base.error.code == STORE_CORRUPT &&
+        model_keeper_reset(trainer->settings.model_store, &reason) == STORE_OK) {
+        log_line(LOG_CAUTION, "the stored model is damaged: a restart learns all items again");
+    }
     troubles_begin(trainer->settings.troubles, TROUBLE_LEARNING,
                    "learning has stopped at change %llu (%s); restart the daemon to go on",
                    (unsigned long long)trainer->learned, error->text);
@@ -422,6 +430,17 @@ static void finish_scrubbing(struct trainer *trainer)
     }
 }
 
+/* What was learned could not be stored, and there is no room for more. */
+static bool must_wait(struct trainer *trainer)
+{
+    bool waits = is_full(trainer);
+    if (waits != trainer->waits) {
+        trainer->waits = waits;
+        backlog_trainer_waits(trainer->settings.backlog, waits);
+    }
+    return waits;
+}
+
 /* What can be done while there is nothing to learn; anything learned makes all of it due. */
 static void work_idly(struct trainer *trainer, bool is_idle)
 {
@@ -429,6 +448,9 @@ static void work_idly(struct trainer *trainer, bool is_idle)
     if (trainer->failed || !is_idle) {
         trainer->rescore_due = !trainer->failed;
         trainer->rehearse_due = !trainer->failed && trainer->settings.rehearsal_share > 0.0;
+        return;
+    }
+    if (is_full(trainer)) {
         return;
     }
     if (trainer->rescore_due) {
@@ -449,7 +471,7 @@ static void *run(void *argument)
         uint64_t behind = trainer->failed ? UINT64_MAX : trainer->learned;
         uint64_t last = backlog_wait_for_work(backlog, behind, idle_ms(trainer));
         bool is_idle = last <= behind;
-        if (is_full(trainer)) { /* what was learned could not be stored */
+        if (must_wait(trainer)) {
             backlog_pause(backlog, IDLE_MS);
         } else if (!is_idle && learn_some(trainer, last, &error) != STORE_OK) {
             fail(trainer, &error);

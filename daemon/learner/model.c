@@ -19,8 +19,11 @@ static const double UNSHARED_WORD_SHARE = 0.5;
 /* Below this chance a gap is not looked at twice: there are thousands of them. */
 static const double AGREEMENT_LEAST_CHANCE = 0.02;
 
-/* What a changed chunk of postings takes while it is stored: itself, and a page of the store. */
+/* What is changed takes a page of the store while it is stored, and a chunk itself another half.
+ * Words are small: all together they take not much more pages than they fill. */
+static const uint64_t PAGE_BYTES = 4096;
 static const uint64_t CHANGED_CHUNK_BYTES = 6144;
+static const uint64_t WORD_BYTES = 128;
 
 /*
  * A scratch may outlive its model, and the next model may lie where that one lay: each begins its
@@ -276,8 +279,10 @@ void model_trim(struct model *model, uint64_t dictionary_most, uint64_t weights_
 
 uint64_t model_changed_bytes(const struct model *model)
 {
+    uint64_t words = dictionary_changed_count(model->dictionary) * PAGE_BYTES;
+    uint64_t all_words = dictionary_size(model->dictionary) * WORD_BYTES;
     return weights_changed_count(model->weights) * CHANGED_CHUNK_BYTES +
-           worklist_bytes(model->worklist);
+           worklist_bytes(model->worklist) + (words < all_words ? words : all_words);
 }
 
 void model_measure(const struct model *model, struct model_size *ret_size)

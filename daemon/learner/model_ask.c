@@ -148,13 +148,9 @@ static int add_candidate(const struct asker *asker, uint32_t tag, double score, 
 }
 
 /* The tags above the floor, and the expected number over all. */
-static int gather_touched(const struct asker *asker, chance_sum barred_rest, size_t *ret_count,
-                          chance_sum *ret_expected)
+static int gather_rivals(const struct asker *asker, const struct weights_rival *rivals,
+                         size_t count, size_t *ret_count, chance_sum *expected)
 {
-    chance_sum expected = rest_of_all(asker) - barred_rest;
-    size_t count = 0;
-    const struct weights_rival *rivals =
-        weights_rivals(asker->scratch->weights, WEIGHTS_MAIN, &count);
     for (size_t i = 0; i < count; i++) {
         uint32_t tag = rivals[i].tag;
         double score = (double)rivals[i].score;
@@ -163,14 +159,26 @@ static int gather_touched(const struct asker *asker, chance_sum barred_rest, siz
             continue;
         }
         double chance = tag_chance(asker, tag, honest);
-        expected += to_sum(chance) - rest_chance(asker, tag);
+        *expected += to_sum(chance) - rest_chance(asker, tag);
         if (chance >= asker->question->floor &&
             add_candidate(asker, tag, score, chance, ret_count) < 0) {
             return -ENOMEM;
         }
     }
-    *ret_expected = expected;
     return 0;
+}
+
+static int gather_touched(const struct asker *asker, chance_sum barred_rest, size_t *ret_count,
+                          chance_sum *ret_expected)
+{
+    const struct model_scratch *scratch = asker->scratch;
+    size_t count = 0;
+    const struct weights_rival *rivals = weights_rivals(scratch->weights, WEIGHTS_MAIN, &count);
+    *ret_expected = rest_of_all(asker) - barred_rest;
+    int result = gather_rivals(asker, rivals, count, ret_count, ret_expected);
+    return result == 0 ? gather_rivals(asker, scratch->lifted, scratch->lifted_count, ret_count,
+                                       ret_expected)
+                       : result;
 }
 
 /*
@@ -352,9 +360,12 @@ int model_ask(const struct model *model, const struct model_question *question,
     if (question->why && shown > 0) {
         result = explain(&asker, shown);
     }
+    if (result < 0) {
+        return result;
+    }
     *ret_answer = (struct model_answer){.gaps = scratch->gaps,
                                         .gap_count = shown,
                                         .expected = (double)expected / CHANCE_UNIT,
                                         .early = calibrators_early(&model->curves)};
-    return result;
+    return 0;
 }

@@ -48,15 +48,9 @@ enum standing_band model_band_of(const struct model *model, uint32_t tag)
     return standing_band_of((double)model->tags[tag].count);
 }
 
-static void find_best(const struct model *model, const struct model_scratch *scratch,
-                      enum weights_lane lane, const float *own,
-                      struct candidates best[STANDING_BANDS])
+static void add_best(const struct model *model, const struct weights_rival *rivals, size_t count,
+                     const float *own, struct candidates best[STANDING_BANDS])
 {
-    for (size_t b = 0; b < STANDING_BANDS; b++) {
-        best[b].count = 0;
-    }
-    size_t count = 0;
-    const struct weights_rival *rivals = weights_rivals(scratch->weights, lane, &count);
     for (size_t i = 0; i < count; i++) {
         uint32_t tag = rivals[i].tag;
         float score = rivals[i].score - (own ? own[tag] : 0.0F);
@@ -66,9 +60,22 @@ static void find_best(const struct model *model, const struct model_scratch *scr
     }
 }
 
+static void find_best(const struct model *model, const struct model_scratch *scratch,
+                      enum weights_lane lane, const float *own,
+                      struct candidates best[STANDING_BANDS])
+{
+    for (size_t b = 0; b < STANDING_BANDS; b++) {
+        best[b].count = 0;
+    }
+    size_t count = 0;
+    const struct weights_rival *rivals = weights_rivals(scratch->weights, lane, &count);
+    add_best(model, rivals, count, own, best);
+}
+
 void model_find_best(const struct model *model, struct model_scratch *scratch)
 {
     find_best(model, scratch, WEIGHTS_MAIN, scratch->own, scratch->best);
+    add_best(model, scratch->lifted, scratch->lifted_count, scratch->own, scratch->best);
 }
 
 void model_find_best_of_shadow(const struct model *model, const struct model_scratch *scratch,

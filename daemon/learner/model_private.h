@@ -93,6 +93,9 @@ struct model_scratch {
         best[STANDING_BANDS]; /* of the item scored last; [STANDING_ALL] is not used */
     float *own; /* by tag: the item's own share, to be taken out of its score; otherwise 0 */
     size_t own_capacity;
+    /* Tags that only their own share has pushed down to the floor: no rivals, but candidates. */
+    struct weights_rival lifted[WORKLIST_GAPS];
+    size_t lifted_count;
     uint32_t *changed; /* tags of which something has become known */
     size_t changed_capacity;
 };
@@ -180,6 +183,7 @@ int model_score_lanes(struct model *model, struct model_scratch *scratch)
 
 /* η for the next example. */
 double model_step(const struct model *model);
+double model_rehearsal_step(const struct model *model);
 
 /* --- model_mark: the item at hand --- */
 
@@ -232,7 +236,8 @@ void model_refit_propensities(struct model *model);
 
 /* --- model_worklist --- */
 
-/* Puts what the entry says of the item's own shares into scratch->own, and takes it out again. */
+/* Puts what the entry says of the own shares of the item just scored into scratch->own, and takes
+ * it out again. */
 int model_take_own(const struct model *model, const struct worklist_entry *entry,
                    struct model_scratch *scratch) __attribute__((warn_unused_result));
 void model_clear_own(const struct worklist_entry *entry, struct model_scratch *scratch);

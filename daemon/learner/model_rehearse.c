@@ -11,14 +11,6 @@
 #include "daemon/learner/model.h"
 #include "daemon/learner/model_private.h"
 
-/*
- * Of the step with which items are learned. Measured on two corpora, a second pass with .33 (D) and
- * .2 (W): P@1 +.004 and +.002, P@5 +.003 and +.004, PSP@5 +.005 and +.002, R@10 +.005 and +.008,
- * tail +.014 and +.012; a third with half of that moves nothing by more than .002 but the tail,
- * -.005 and -.003.
- */
-static const double REHEARSAL_STEP = 0.25;
-
 enum {
     ROUND_PART = 8 /* a round begins when an eighth of all numbers is beyond the last one */
 };
@@ -93,7 +85,7 @@ static int learn_again(struct model *model, const struct model_item *item,
                                             .lanes = model_lanes(model),
                                             .given = scratch->given,
                                             .given_count = item->tag_count,
-                                            .step = REHEARSAL_STEP * model_step(model),
+                                            .step = model_rehearsal_step(model),
                                             .watched = watched,
                                             .watched_count = entry->pair_count,
                                             .moves = moves};

@@ -60,8 +60,15 @@ int model_take_own(const struct model *model, const struct worklist_entry *entry
     if (GROW(&scratch->own, &scratch->own_capacity, model->tag_count) < 0) {
         return -ENOMEM;
     }
+    scratch->lifted_count = 0;
     for (uint32_t i = 0; entry && i < entry->pair_count; i++) {
-        scratch->own[entry->pairs[i].tag] = entry->pairs[i].own;
+        uint32_t tag = entry->pairs[i].tag;
+        float score = model_score(model, scratch, tag);
+        float honest = score - entry->pairs[i].own;
+        scratch->own[tag] = entry->pairs[i].own;
+        if (score <= WEIGHTS_FLOOR_SCORE && honest > WEIGHTS_FLOOR_SCORE) {
+            scratch->lifted[scratch->lifted_count++] = (struct weights_rival){tag, score};
+        }
     }
     return 0;
 }
@@ -71,6 +78,7 @@ void model_clear_own(const struct worklist_entry *entry, struct model_scratch *s
     for (uint32_t i = 0; entry && i < entry->pair_count; i++) {
         scratch->own[entry->pairs[i].tag] = 0.0F;
     }
+    scratch->lifted_count = 0;
 }
 
 /* --- making an entry ----------------------------------------------------------------------------
@@ -165,9 +173,15 @@ int model_rescore(const struct model *model, const struct model_item *item,
         return result;
     }
     const struct worklist_entry *entry = result == 0 ? &listed : NULL;
-    if (model_score_words(model, item->features, item->feature_count, true, scratch) < 0 ||
-        model_take_own(model, entry, scratch) < 0 || model_mark_item(model, item, scratch) < 0) {
-        return -ENOMEM;
+    result = model_score_words(model, item->features, item->feature_count, true, scratch);
+    if (result == 0) {
+        result = model_mark_item(model, item, scratch);
+    }
+    if (result == 0) {
+        result = model_take_own(model, entry, scratch);
+    }
+    if (result < 0) {
+        return result;
     }
     model_find_best(model, scratch);
     model_make_entry(model, item, scratch, ret_entry);

@@ -23,6 +23,7 @@
 struct entry_list {
     struct dictionary_entry *first;
     struct dictionary_entry *last;
+    size_t count;
 };
 
 struct dictionary {
@@ -105,6 +106,7 @@ static void append(struct dictionary *dictionary, struct dictionary_entry *entry
     entry->after = NULL;
     *(list->last ? &list->last->after : &list->first) = entry;
     list->last = entry;
+    list->count++;
 }
 
 static void unlink_entry(struct dictionary *dictionary, struct dictionary_entry *entry)
@@ -112,6 +114,7 @@ static void unlink_entry(struct dictionary *dictionary, struct dictionary_entry 
     struct entry_list *list = &dictionary->lists[entry->state];
     *(entry->before ? &entry->before->after : &list->first) = entry->after;
     *(entry->after ? &entry->after->before : &list->last) = entry->before;
+    list->count--;
 }
 
 static void move(struct dictionary *dictionary, struct dictionary_entry *entry,
@@ -351,6 +354,12 @@ void dictionary_trim(struct dictionary *dictionary, uint64_t bytes)
         }
         front = dictionary->lists[DICTIONARY_CLEAN].first;
     }
+}
+
+size_t dictionary_changed_count(const struct dictionary *dictionary)
+{
+    return dictionary->lists[DICTIONARY_CHANGED].count +
+           dictionary->lists[DICTIONARY_FORGOTTEN].count;
 }
 
 size_t dictionary_size(const struct dictionary *dictionary)

@@ -91,6 +91,9 @@ int dictionary_changes(const struct dictionary *dictionary,
                        int (*gone)(void *user, const struct dictionary_word *word), void *user)
     __attribute__((warn_unused_result));
 
+/* How many words that tells of. */
+size_t dictionary_changed_count(const struct dictionary *dictionary);
+
 /* All changes have been stored, and every base that is used from now on has them. */
 void dictionary_clean(struct dictionary *dictionary);
 

@@ -51,12 +51,15 @@ class Bench:
     def examples(self, name):
         """A corpus as features and numbers."""
         if name not in self._examples:
-            folder = tempfile.mkdtemp(dir=self.folder)
-            self._examples[name] = examples.Examples(self.build, folder, self.split(name))
+            self._examples[name] = examples.Examples(self.build, self.folder_new(), self.split(name))
         return self._examples[name]
 
-    def folder_for(self, name):
-        """A folder for what is to be kept, beside the programs."""
+    def folder_new(self):
+        """An empty folder that is gone in the end."""
+        return tempfile.mkdtemp(dir=self.folder)
+
+    def kept_path(self, name):
+        """Where a file goes that is kept, beside the programs."""
         path = os.path.join(self.build, "bench", name)
         os.makedirs(os.path.dirname(path), exist_ok=True)
         return path

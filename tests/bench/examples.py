@@ -60,10 +60,10 @@ class Examples:
             joined(given, "indices", "<u4").tofile(file)
             factors(self.counts, self.items).astype("<f8").tofile(file)
 
-    def learn(self, kind, passes=1, specificity=DEFAULT_SPECIFICITY):
+    def learn(self, kind, passes=1, specificity=DEFAULT_SPECIFICITY, step=None):
         """What examples_bench says of a learner, and the best tags of each item asked about, pass by pass."""
         command = [os.path.join(self.build, "bench/examples_bench"), self.path, self.ranks, kind, str(passes),
-                   str(self.step), str(specificity)]
+                   str(step or self.step), str(specificity)]
         said = json.loads(subprocess.run(command, check=True, capture_output=True, text=True).stdout)
         ranked = np.fromfile(self.ranks, dtype="<u4").astype(np.int64)
         ranked[ranked == NO_TAG] = -1

@@ -34,11 +34,11 @@ static int run(struct examples *examples, const struct learner *learner, FILE *r
 {
     printf("{\"seconds\": [");
     for (long pass = 0; pass < passes; pass++) {
-        double begun = bench_now_s();
+        double begun = bench_cpu_s();
         if (examples_learn(examples, pass == 0, step, learner) < 0) {
             return -1;
         }
-        printf("%s%.6f", pass > 0 ? ", " : "", bench_now_s() - begun);
+        printf("%s%.6f", pass > 0 ? ", " : "", bench_cpu_s() - begun);
         if (rank_all(examples, learner, ranks) < 0) {
             return -1;
         }

@@ -93,8 +93,9 @@ static int measure(struct wire *wire, const struct synthetic *synthetic, uint64_
             double learned = bench_now_s();
             double right = first_right(wire, synthetic, end, failure);
             printf("{\"filed_s\": %.6f, \"learned_s\": %.6f, \"first_right\": %.4f, "
-                   "\"state\": %s}\n",
-                   filed - begun, learned - begun, right, state.result_text);
+                   "\"state\": %.*s}\n",
+                   filed - begun, learned - begun, right, (int)state.result_text_length,
+                   state.result_text);
         }
     }
     wire_answer_deinit(&state);

@@ -84,7 +84,7 @@ def run_part(bench, name):
         return None
     try:
         part.run(bench, lines)
-    except (subprocess.CalledProcessError, trial.TrialError, wire.WireError, OSError) as error:
+    except (subprocess.CalledProcessError, trial.TrialError, wire.WireError, OSError, ValueError) as error:
         lines.failed(str(error))
     return lines
 

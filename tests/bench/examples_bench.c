@@ -1,6 +1,6 @@
 /*
- * examples_bench: a learner alone, its features given: passes over the items to be learned against
- * the clock, and after each pass the best tags of every item to be asked about.
+ * examples_bench: a learner alone, its features given: passes over the items to be learned in the
+ * processor's time, and after each pass the best tags of every item to be asked about.
  *
  *   examples_bench EXAMPLES RANKS weights|plain PASSES STEP SPECIFICITY
  *

@@ -3,6 +3,9 @@
 import os
 import socket
 import struct
+import time
+
+FLUSHED_CAP_S = 120
 
 
 def pid_of(connection):
@@ -28,3 +31,14 @@ def disk_bytes(connection):
     home = os.path.join(os.path.dirname(connection.socket.getpeername()), "home")
     return sum(os.stat(os.path.join(folder, name)).st_blocks * 512
                for folder, _, names in os.walk(home) for name in names)
+
+
+def wait_flushed(connection):
+    """Waits until the model is stored: until the disk has stayed the same for longer than a flush lets wait."""
+    still_s = 2 * connection.call("daemon.state")["settings"]["flush_every_ms"] / 1000
+    end, since, seen = time.monotonic() + FLUSHED_CAP_S, time.monotonic(), None
+    while time.monotonic() < min(end, since + still_s):
+        disk = connection.call("daemon.state")["disk"]
+        if disk != seen:
+            since, seen = time.monotonic(), disk
+        time.sleep(0.05)  # between two looks

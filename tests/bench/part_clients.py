@@ -21,7 +21,8 @@ def run(bench, lines):
     lines.say(f"{'items a second':<28}" + "".join(f"{name:>12}" for name in FIGURES.values()))
     for clients in (1, MANY):
         medians = [statistics.median(one[clients][figure] for one in rounds) for figure in FIGURES]
-        lines.say(f"{clients:>2} client{'s' if clients > 1 else '':<19}" + "".join(f"{rate:>12,.0f}" for rate in medians))
+        label = f"{clients} client{'s' if clients > 1 else ''}"
+        lines.say(f"{label:<28}" + "".join(f"{rate:>12,.0f}" for rate in medians))
     lines.keep(rounds=rounds)
     for figure, name in FIGURES.items():
         ratio = statistics.median(one[MANY][figure] / one[1][figure] for one in rounds)

@@ -29,6 +29,7 @@ def step(bench, connection, first, end):
     """The row of one more step."""
     said = bench.program("synthetic_bench", connection.socket.getpeername(), first, end, WORDS, TAGS, "grow")
     state = said["state"]
+    house.wait_flushed(connection)
     values = (end, state["tags"], state["weights"], house.anonymous_bytes(connection) / 1e6,
               house.stated_bytes(state) / 1e6, house.disk_bytes(connection) / 1e6,
               said["learned_s"] / (end - first) * 1e6)

@@ -23,6 +23,7 @@ def run(bench, lines):
             rates.append(BLOCK / said["learned_s"])
             lines.say(f"{state['items']:>10,}{rates[-1]:>10,.0f}{state['tags']:>10,}{state['words']:>12,}"
                       f"{state['weights']:>14,}{said['first_right']:>18.3f}")
+        house.wait_flushed(connection)
         memory, disk = house.anonymous_bytes(connection), house.disk_bytes(connection)
     lines.say(f"memory of its own {memory / 1e6:,.0f} MB (RssAnon), disk {disk / 1e6:,.0f} MB")
     lines.keep(rates=rates, memory_bytes=memory, disk_bytes=disk)

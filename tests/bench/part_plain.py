@@ -26,7 +26,7 @@ def run(bench, lines):
             if name not in reached:
                 reached[name] = given.figures(ranked[0])
     medians = {name: statistics.median(many) for name, many in rates.items()}
-    lines.say(f"{'learner alone, features given, on W':<36}{'items/s':>10}{'weights':>12}"
+    lines.say(f"{'on W, one core, features given':<36}{'items/s':>10}{'weights':>12}"
               + "".join(f"{figure:>8}" for figure in SHOWN))
     for name in KINDS:
         lines.say(f"{name:<36}{medians[name]:>10,.0f}{postings[name]:>12,}"

@@ -21,7 +21,8 @@ def run(bench, lines):
     rows = [("postings of an item", [f"{said[name]['postings']:,.0f}" for name in COLUMNS]),
             ("reading them, µs", [f"{reading[name] * 1e6:.1f}" for name in COLUMNS]),
             ("scoring an item, top 10, µs", [f"{said[name]['score_s'] * 1e6:.1f}" for name in COLUMNS]),
-            ("scoring / reading its own postings", [f"{said[name]['score_s'] / reading[name]:.2f}" for name in COLUMNS])]
+            ("scoring / reading its own postings",
+             [f"{said[name]['score_s'] / reading[name]:.2f}" for name in COLUMNS])]
     for name, cells in rows:
         lines.say(f"{name:<44}" + "".join(f"{cell:>14}" for cell in cells))
     lines.keep(**said)

@@ -75,12 +75,14 @@ static int ask(struct wire *wire, const struct phase *drafts, size_t most,
                const struct feeder *feeder, struct times *times, struct failure *failure)
 {
     times->count = 0;
+    size_t at = 0;
     do {
-        const char *draft = drafts->params[times->count % drafts->count];
-        if (call_once(wire, drafts->method, draft, &times->seconds[times->count], failure) < 0) {
+        if (call_once(wire, drafts->method, drafts->params[at], &times->seconds[times->count],
+                      failure) < 0) {
             return failure->code;
         }
         times->count++;
+        at = at + 1 < drafts->count ? at + 1 : 0;
     } while (times->count < most && !(feeder && atomic_load(&feeder->done)));
     return 0;
 }

@@ -44,7 +44,7 @@ static int compare_times(const void *left, const void *right)
 /* Sorts them; there is at least one. */
 static void print_times(const char *name, struct times *times)
 {
-    assert(times->count > 0);
+    assert(times->seconds && times->count > 0);
     qsort(times->seconds, times->count, sizeof *times->seconds, compare_times);
     printf("\"%s\": {\"calls\": %zu, \"p50_s\": %.9f, \"p99_s\": %.9f, \"most_s\": %.9f}, ", name,
            times->count, times->seconds[times->count / 2], times->seconds[times->count * 99 / 100],

@@ -9,6 +9,7 @@ import argparse
 import importlib
 import json
 import os
+import signal
 import subprocess
 import sys
 import tempfile
@@ -113,6 +114,7 @@ def chosen(options):
 
 def main():
     options = read_options()
+    signal.signal(signal.SIGTERM, lambda *_: sys.exit(EX_SOFTWARE))  # so that no daemon and no home stays behind
     with tempfile.TemporaryDirectory(prefix="undertag-bench-") as folder:
         bench = Bench(options, folder)
         ran = [lines for name in chosen(options) if (lines := run_part(bench, name))]

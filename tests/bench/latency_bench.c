@@ -44,7 +44,7 @@ static int compare_times(const void *left, const void *right)
 /* Sorts them; there is at least one. */
 static void print_times(const char *name, struct times *times)
 {
-    assert(times->seconds && times->count > 0);
+    assert(times->count > 0);
     qsort(times->seconds, times->count, sizeof *times->seconds, compare_times);
     printf("\"%s\": {\"calls\": %zu, \"p50_s\": %.9f, \"p99_s\": %.9f, \"most_s\": %.9f}, ", name,
            times->count, times->seconds[times->count / 2], times->seconds[times->count * 99 / 100],
@@ -76,6 +76,7 @@ static int ask(struct wire *wire, const struct phase *drafts, size_t most,
 {
     times->count = 0;
     size_t at = 0;
+    assert(drafts->count > 0);
     do {
         if (call_once(wire, drafts->method, drafts->params[at], &times->seconds[times->count],
                       failure) < 0) {

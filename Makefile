@@ -39,7 +39,8 @@ UNIT_TESTS := $(patsubst tests/unit/%.c,%,$(wildcard tests/unit/test_*.c))
 INTEGRATION_TESTS := $(patsubst tests/integration/%.c,%,$(wildcard tests/integration/test_*.c))
 REFERENCE_TESTS := $(patsubst tests/reference/%.c,%,$(wildcard tests/reference/test_*.c))
 HELPER_SOURCES := $(filter-out tests/integration/test_%.c,$(wildcard tests/integration/*.c))
-BENCH_SOURCES := $(wildcard tests/bench/*.c)
+BENCH_SOURCES := $(wildcard tests/bench/*_bench.c)
+BENCH_HELPER_SOURCES := $(filter-out $(BENCH_SOURCES),$(wildcard tests/bench/*.c))
 
 object = $(patsubst %.c,$(BUILD)/%.o,$(1))
 LIBRARY_OBJECTS := $(call object,$(DAEMON_SOURCES) $(STORAGE_SOURCES))
@@ -47,6 +48,7 @@ CLIENT_OBJECTS := $(call object,$(CLIENT_SOURCES))
 LIBRARY := $(BUILD)/libundertag.a
 CLIENT_LIBRARY := $(BUILD)/libclient.a
 HELPERS := $(call object,$(HELPER_SOURCES))
+BENCH_HELPERS := $(call object,$(BENCH_HELPER_SOURCES))
 PROGRAMS := $(BUILD)/undertagd $(BUILD)/undertag
 UNIT_PROGRAMS := $(addprefix $(BUILD)/tests/,$(UNIT_TESTS))
 INTEGRATION_PROGRAMS := $(addprefix $(BUILD)/tests/,$(INTEGRATION_TESTS))
@@ -118,7 +120,7 @@ $(REFERENCE_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -llinear -o $@
 
-$(BENCH_PROGRAMS): $(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(LIBRARY) $(CLIENT_LIBRARY)
+$(BENCH_PROGRAMS): $(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(BENCH_HELPERS) $(LIBRARY) $(CLIENT_LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
@@ -156,10 +158,12 @@ $(BUILD)/corpora/W.jsonl: tests/corpora/make_w.py tests/corpora/corpus.py | pack
 	@$(PYTHON) -B $< $@
 
 # A corpus that cannot be made (no network) is skipped: the scripts say so and end with 69.
+# BENCH: what to measure, as in `make bench BENCH='--part plain'`; `--long` adds the long parts.
+BENCH ?=
 bench: packages-build packages-quality
 	@$(MAKE) --no-print-directory -j $(JOBS) all $(BENCH_PROGRAMS)
 	-@$(MAKE) --no-print-directory --keep-going corpora
-	@$(PYTHON) -B tests/bench/bench.py $(BUILD) --corpora $(BUILD)/corpora
+	@$(PYTHON) -B tests/bench/bench.py $(BUILD) --corpora $(BUILD)/corpora $(BENCH)
 
 quality: packages-build packages-quality
 	@$(MAKE) --no-print-directory all

@@ -1,80 +1,132 @@
 #!/usr/bin/python3
-"""How fast it is, as ratios within one run: the daemon through its socket beside the learner alone.
+"""How fast it is, as ratios within one run, each with its target: see DEVELOPERS.md, "Reading make bench".
 
-Each round runs learner_bench (one thread, no socket, no disk) and daemon_bench (the real daemon, every filing
-durable before it is acknowledged) on the same corpus, one after the other; the table shows the medians of the
-rounds. These machines are noisy: compare within a table, not between two.
+A benchmark reports: it ends with 0 whatever the targets, with 69 where no part could run for want of a corpus, and
+with 70 where a part broke. These machines are noisy: compare within a part, not between two runs.
 """
 
 import argparse
+import importlib
 import json
 import os
-import statistics
+import signal
 import subprocess
 import sys
+import tempfile
 
 HERE = os.path.dirname(os.path.abspath(__file__))
-sys.path.insert(0, os.path.join(os.path.dirname(HERE), "quality"))
+sys.path[:0] = [HERE, os.path.join(os.path.dirname(HERE), "quality")]
 sys.dont_write_bytecode = True
-import trial  # noqa: E402  (the path is set above)
+import examples  # noqa: E402  (the path is set above)
+import split as splits  # noqa: E402
+import trial  # noqa: E402
+import wire  # noqa: E402
+from lines import Lines  # noqa: E402
 
-EX_UNAVAILABLE = 69  # sysexits.h
-ROWS = [
-    ("items filed a second, durable", "daemon", "filed_per_s", "{:,.0f}"),
-    ("items filed and learned a second", "daemon", "learned_per_s", "{:,.0f}"),
-    ("items learned a second, learner alone", "alone", "items_per_s", "{:,.0f}"),
-    ("ratio: through the daemon / alone", "ratio", "learned", "{:.2f}"),
-    ("drafts scored a second, pipelined", "daemon", "questions_per_s", "{:,.0f}"),
-    ("drafts scored a second, one by one", "daemon", "single_questions_per_s", "{:,.0f}"),
-    ("drafts scored a second, learner alone", "alone", "questions_per_s", "{:,.0f}"),
-    ("weights", "daemon", "weights", "{:,.0f}"),
-    ("memory of the daemon, MB", "daemon", "memory_mb", "{:,.0f}"),
-    ("memory of the learner alone, MB", "alone", "memory_mb", "{:,.0f}"),
-]
+EX_UNAVAILABLE, EX_SOFTWARE = 69, 70  # sysexits.h
+PARTS = ("daemon", "plain", "batch", "onevsrest", "reading", "latency", "clients", "large", "growth")
 
 
-def figures_of(command):
-    """What a benchmark printed."""
-    printed = subprocess.run(command, check=True, capture_output=True, text=True).stdout
-    figures = json.loads(printed)
-    figures["memory_mb"] = figures["memory_bytes"] / 1e6
-    return figures
+class Bench:
+    """What the parts share: where things are, and the corpora, read once."""
+
+    def __init__(self, options, folder):
+        self.build, self.corpora, self.folder = options.build, options.corpora, folder
+        self.rounds, self.quick = options.rounds, options.quick
+        self._splits, self._examples = {}, {}
+
+    def corpus(self, name):
+        """The path of a corpus."""
+        return os.path.join(self.corpora, f"{name}.jsonl")
+
+    def has(self, name):
+        """Whether the corpus was made."""
+        return os.path.exists(self.corpus(name))
+
+    def split(self, name):
+        """A corpus, the first 80 % to be learned."""
+        if name not in self._splits:
+            self._splits[name] = splits.Split(self.corpus(name))
+        return self._splits[name]
+
+    def examples(self, name):
+        """A corpus as features and numbers."""
+        if name not in self._examples:
+            self._examples[name] = examples.Examples(self.build, self.folder_new(), self.split(name))
+        return self._examples[name]
+
+    def folder_new(self):
+        """An empty folder that is gone in the end."""
+        return tempfile.mkdtemp(dir=self.folder)
+
+    def kept_path(self, name):
+        """Where a file goes that is kept, beside the programs."""
+        path = os.path.join(self.build, "bench", name)
+        os.makedirs(os.path.dirname(path), exist_ok=True)
+        return path
+
+    def program(self, name, *arguments):
+        """What one of the programs in C printed."""
+        command = [os.path.join(self.build, "bench", name), *map(str, arguments)]
+        return json.loads(subprocess.run(command, check=True, stdout=subprocess.PIPE, text=True).stdout)
+
+    def daemon(self, settings=()):
+        """A daemon in an empty home of its own, to be used with `with`."""
+        return trial.daemon(os.path.join(self.build, "undertagd"), list(settings))
 
 
-def run_round(build, corpus):
-    """One round: both programs."""
-    alone = figures_of([os.path.join(build, "bench/learner_bench"), corpus])
-    with trial.daemon(os.path.join(build, "undertagd"), []) as connection:
-        path = connection.socket.getpeername()
-        daemon = figures_of([os.path.join(build, "bench/daemon_bench"), path, corpus])
-    return {"alone": alone, "daemon": daemon, "ratio": {"learned": daemon["learned_per_s"] / alone["items_per_s"]}}
+def run_part(bench, name):
+    """The lines of one part; None where a corpus that it needs is not there."""
+    part, lines = importlib.import_module(f"part_{name}"), Lines(name)
+    print(f"\n{name}: {part.__doc__.splitlines()[0]}", flush=True)
+    missing = [corpus for corpus in part.NEEDS if not bench.has(corpus)]
+    if missing:
+        lines.say(f"skipped, {', '.join(missing)} is not there (make corpora makes it)")
+        return None
+    try:
+        part.run(bench, lines)
+    except (subprocess.CalledProcessError, trial.TrialError, wire.WireError, OSError, ValueError) as error:
+        lines.failed(str(error))
+    return lines
 
 
-def print_table(columns):
-    """`columns`: by corpus, its rounds."""
-    print("\n" + " " * 40 + "".join(f"{name:>16}" for name in columns))
-    for label, side, figure, form in ROWS:
-        medians = [statistics.median(run[side][figure] for run in rounds) for rounds in columns.values()]
-        print(f"{label:<40}" + "".join(f"{form.format(median):>16}" for median in medians))
+def read_options():
+    """The command line."""
+    parser = argparse.ArgumentParser(description="Speed, as ratios within one run.")
+    parser.add_argument("build", help="the folder with the programs")
+    parser.add_argument("--corpora", metavar="FOLDER", required=True, help="where D.jsonl and W.jsonl are")
+    parser.add_argument("--part", action="append", choices=PARTS, help="only this one; may be given more than once")
+    parser.add_argument("--long", action="store_true", help="the parts that take long, too")
+    parser.add_argument("--quick", action="store_true", help="a smaller top for the long parts")
+    parser.add_argument("--rounds", type=int, default=3, help="how often a ratio is taken; the median is shown")
+    parser.add_argument("--json", metavar="FILE", help="where the figures go, too")
+    return parser.parse_args()
+
+
+def chosen(options):
+    """The names of the parts to run; what was named but is long needs --long all the same."""
+    for name in options.part or PARTS:
+        if options.long or not importlib.import_module(f"part_{name}").LONG:
+            yield name
+        else:
+            print(f"\n{name}: only with --long", flush=True)
 
 
 def main():
-    parser = argparse.ArgumentParser(description="Speed on real corpora, as ratios within one run.")
-    parser.add_argument("build", help="the folder with the programs")
-    parser.add_argument("--corpora", metavar="FOLDER", required=True, help="where D.jsonl and W.jsonl are")
-    parser.add_argument("--rounds", type=int, default=3)
-    options = parser.parse_args()
-    columns = {}
-    for name in ("D", "W"):
-        corpus = os.path.join(options.corpora, f"{name}.jsonl")
-        if os.path.exists(corpus):
-            columns[name] = [run_round(options.build, corpus) for _ in range(options.rounds)]
-        else:
-            print(f"{name}: skipped, {corpus} is not there (make corpora makes it).")
-    if not columns:
+    options = read_options()
+    signal.signal(signal.SIGTERM, lambda *_: sys.exit(EX_SOFTWARE))  # so that no daemon and no home stays behind
+    with tempfile.TemporaryDirectory(prefix="undertag-bench-") as folder:
+        bench = Bench(options, folder)
+        ran = [lines for name in chosen(options) if (lines := run_part(bench, name))]
+    if not ran:
         return EX_UNAVAILABLE
-    print_table(columns)
-    return 0
+    targets = [target for lines in ran for target in lines.targets]
+    print(f"\n{sum(target['kept'] for target in targets)} of {len(targets)} targets kept")
+    if options.json:
+        with open(options.json, "w", encoding="utf-8") as file:
+            json.dump({"targets": targets, "values": {lines.part: lines.values for lines in ran}}, file, indent=1,
+                      default=float)
+    return EX_SOFTWARE if any("reached" not in target for target in targets) else 0
 
 
 if __name__ == "__main__":

@@ -91,7 +91,8 @@ static struct model_totals totals_of(const struct model_store_head *head)
         .rehearsal = {.at = head->rehearsed,
                       .until = head->rehearse_until,
                       .rounds = head->rehearsals,
-                      .items = head->rehearsed_items}};
+                      .items = head->rehearsed_items},
+        .examples = head->examples};
 }
 
 int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
@@ -250,7 +251,8 @@ static int store_totals(void *user, const struct model_totals *totals)
                                     .rehearsed = totals->rehearsal.at,
                                     .rehearse_until = totals->rehearsal.until,
                                     .rehearsals = totals->rehearsal.rounds,
-                                    .rehearsed_items = totals->rehearsal.items};
+                                    .rehearsed_items = totals->rehearsal.items,
+                                    .examples = totals->examples};
     size_t bytes = strlen(storing->origin->settings);
     assert(bytes < sizeof head.settings);
     memcpy(head.store_uuid, storing->origin->store_uuid, STORE_UUID_BYTES);

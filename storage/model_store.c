@@ -134,6 +134,7 @@ int model_store_put_head(struct model_store_writing *writing, const struct model
     codec_put_u64(record, head->rehearse_until);
     codec_put_u64(record, head->rehearsals);
     codec_put_u64(record, head->rehearsed_items);
+    codec_put_u64(record, head->examples);
     codec_put_blob(record, head->settings, strlen(head->settings));
     if (record->failed) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");

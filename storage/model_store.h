@@ -46,6 +46,7 @@ struct model_store_head {
     uint64_t rehearse_until;
     uint64_t rehearsals;
     uint64_t rehearsed_items;
+    uint64_t examples;
 };
 
 struct model_store_word {

@@ -39,6 +39,7 @@ static int decode_head(struct kv_bytes value, struct model_store_head *ret_head,
     head.rehearse_until = codec_get_u64(&reader);
     head.rehearsals = codec_get_u64(&reader);
     head.rehearsed_items = codec_get_u64(&reader);
+    head.examples = codec_get_u64(&reader);
     size_t bytes = 0;
     const char *settings = codec_get_blob(&reader, &bytes);
     if (reader.failed || format == 0 || bytes >= sizeof head.settings) {

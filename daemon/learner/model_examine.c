@@ -205,8 +205,8 @@ static void gather(const struct examining *examining, const struct findings *fin
     }
 }
 
-static int learn_pairs(struct model *model, const struct model_item *item,
-                       const struct findings *findings, struct model_scratch *scratch)
+static int learn_pairs(struct model *model, const struct findings *findings,
+                       struct model_scratch *scratch)
 {
     if (GROW(&scratch->given, &scratch->given_capacity, findings->found_count) < 0) {
         return -ENOMEM;
@@ -218,7 +218,7 @@ static int learn_pairs(struct model *model, const struct model_item *item,
                                    .tag_count = model->tags[tag].count,
                                    .factors = {model_given_factor(model, tag, true)}};
     }
-    const struct weights_example example = {.number = item->number,
+    const struct weights_example example = {.number = ++model->examples,
                                             .x = scratch->x,
                                             .count = scratch->x_count,
                                             .lanes = 1, /* the shadow knows no rulings */
@@ -285,7 +285,7 @@ static int examine(struct examining *examining, const struct model_item *item,
     }
     gather(examining, findings);
     model->evidence_changed = true;
-    result = learn_pairs(model, item, findings, scratch);
+    result = learn_pairs(model, findings, scratch);
     model_clear_own(examining->entry, scratch);
     if (result == 0) {
         result = move_entry(model, item, examining->entry, scratch);

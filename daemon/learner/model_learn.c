@@ -250,7 +250,7 @@ static int learn_weights(struct model *model, const struct model_item *item,
     if (fill_given(model, item, scratch) < 0) {
         return -ENOMEM;
     }
-    const struct weights_example example = {.number = item->number,
+    const struct weights_example example = {.number = ++model->examples,
                                             .x = scratch->x,
                                             .count = scratch->x_count,
                                             .lanes = model_lanes(model),

@@ -129,7 +129,8 @@ static struct model_totals totals_of(const struct model *model)
                                   .evidence_gain = model->calibrators.gain,
                                   .postings = weights_postings(model->weights),
                                   .pruned = weights_pruned(model->weights),
-                                  .rehearsal = model->rehearsal};
+                                  .rehearsal = model->rehearsal,
+                                  .examples = model->examples};
     dictionary_totals(model->dictionary, &totals.words);
     return totals;
 }
@@ -248,6 +249,7 @@ int model_restore_totals(struct model *model, const struct model_totals *totals)
     model->calibrators.gain = totals->evidence_gain;
     model->growth = propensity_growth((double)model->documents);
     model->rehearsal = totals->rehearsal;
+    model->examples = totals->examples;
     weights_restore_postings(model->weights, totals->postings, totals->pruned);
     return dictionary_restore_totals(model->dictionary, &totals->words);
 }

@@ -29,6 +29,7 @@ struct model_totals {
     uint64_t postings;
     struct weights_pruned pruned;
     struct model_rehearsal rehearsal;
+    uint64_t examples;
 };
 
 struct model_tag {

@@ -53,7 +53,8 @@ struct model {
     uint64_t factor_count;
     double factor_sum;
     struct model_rehearsal rehearsal;
-    uint64_t version; /* rises with every change; no two models ever have the same, none has 0 */
+    uint64_t examples; /* learned so far; what chance rounds by */
+    uint64_t version;  /* rises with every change; no two models ever have the same, none has 0 */
 };
 
 /*

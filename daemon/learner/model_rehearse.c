@@ -15,9 +15,6 @@ enum {
     ROUND_PART = 8 /* a round begins when an eighth of all numbers is beyond the last one */
 };
 
-/* Rounding by chance must not be that of the first time. */
-static const uint64_t ANOTHER_TIME = 1ULL << 62U;
-
 int model_next_rehearsal(struct model *model, const struct base *base, uint64_t *ret_number)
 {
     struct model_rehearsal *rehearsal = &model->rehearsal;
@@ -79,7 +76,7 @@ static int learn_again(struct model *model, const struct model_item *item,
     for (uint32_t i = 0; i < entry->pair_count; i++) {
         watched[i] = entry->pairs[i].tag;
     }
-    const struct weights_example example = {.number = item->number + ANOTHER_TIME,
+    const struct weights_example example = {.number = ++model->examples,
                                             .x = scratch->x,
                                             .count = scratch->x_count,
                                             .lanes = model_lanes(model),

@@ -135,7 +135,7 @@ int weights_explain(const struct weights *weights, const struct base *base,
 
 /* What is learned of the item that the scratch has just scored; all borrowed. */
 struct weights_example {
-    uint64_t number;                 /* of the change: no two examples have the same */
+    uint64_t number;                 /* no two examples have the same; what chance rounds by */
     const struct weights_feature *x; /* as it was scored */
     size_t count;
     size_t lanes;                      /* that learn it; they have been scored */

@@ -9,27 +9,7 @@
 #include <string.h>
 
 #include "daemon/grow.h"
-#include "daemon/learner/postings_index.h"
-
-struct postings {
-    size_t stride;
-    size_t tag_limit;
-    struct postings_index index;
-    struct chunk *chunks;
-    size_t chunk_count; /* places that have been taken once */
-    size_t chunk_capacity;
-    uint32_t *free_places;
-    size_t free_count;
-    size_t free_capacity;
-    uint32_t *changed; /* places; one that was dropped and taken again may stand here twice */
-    size_t changed_count;
-    size_t changed_capacity;
-    struct postings_cut *cuts;
-    size_t cut_count;
-    size_t cut_capacity;
-    uint64_t number_bytes;
-    size_t hand;
-};
+#include "daemon/learner/postings_private.h"
 
 enum {
     FIRST_CAPACITY = 4,   /* postings */
@@ -116,13 +96,13 @@ static int take_place(struct postings *postings, uint32_t word, uint32_t number,
     return 0;
 }
 
-static void free_place(struct postings *postings, uint32_t place)
+void postings_free_place(struct postings *postings, uint32_t place)
 {
     struct chunk *chunk = &postings->chunks[place];
     postings->number_bytes -= bytes_of(postings, chunk->capacity);
+    postings->free_places[postings->free_count++] = place; /* there is room for every place */
     free(chunk->numbers);
     *chunk = (struct chunk){0};
-    postings->free_places[postings->free_count++] = place; /* there is room for every place */
 }
 
 struct chunk *postings_at(const struct postings *postings, uint32_t place)
@@ -323,7 +303,7 @@ static int add_chunk(struct postings *postings, uint32_t word, struct chunk **re
         return -ENOMEM;
     }
     if (index_add_chunk(&postings->index, entry) < 0) {
-        free_place(postings, place);
+        postings_free_place(postings, place);
         return -ENOMEM;
     }
     index_set_place(entry, entry->chunk_count - 1, place + 1);
@@ -367,7 +347,7 @@ static int cut_chunks(struct postings *postings, struct index_word *entry, uint3
     for (uint32_t number = from; number < entry->chunk_count; number++) {
         uint32_t place = index_places(entry)[number] - 1;
         index_set_place(entry, number, 0);
-        free_place(postings, place);
+        postings_free_place(postings, place);
     }
     index_cut_chunks(entry, from);
     return 0;
@@ -404,120 +384,9 @@ uint64_t postings_drop(struct postings *postings, uint32_t word)
         uint32_t place = index_places(entry)[number];
         if (place != 0) {
             dropped += postings->chunks[place - 1].count;
-            free_place(postings, place - 1);
+            postings_free_place(postings, place - 1);
         }
     }
     index_remove(&postings->index, word);
     return dropped;
-}
-
-/* --- storing ------------------------------------------------------------------------------------
- */
-
-struct listed {
-    uint64_t order;
-    uint32_t place;
-};
-
-static int compare_listed(const void *left, const void *right)
-{
-    uint64_t a = ((const struct listed *)left)->order;
-    uint64_t b = ((const struct listed *)right)->order;
-    return (a > b) - (a < b);
-}
-
-/* In place of the list its places by rising word and number, each once; those that are gone are
- * left out. */
-static size_t sort_changed(const struct postings *postings, struct listed *list, uint32_t *places)
-{
-    size_t count = 0;
-    for (size_t i = 0; i < postings->changed_count; i++) {
-        uint32_t place = postings->changed[i];
-        const struct chunk *chunk = &postings->chunks[place];
-        if (chunk->is_there && chunk->is_changed) {
-            list[count++] = (struct listed){(uint64_t)chunk->word << 32U | chunk->number, place};
-        }
-    }
-    if (count > 1) {
-        qsort(list, count, sizeof *list, compare_listed);
-    }
-    size_t kept = 0;
-    for (size_t i = 0; i < count; i++) {
-        if (i == 0 || list[i].place != list[i - 1].place) {
-            places[kept++] = list[i].place;
-        }
-    }
-    return kept;
-}
-
-int postings_changed(const struct postings *postings, uint32_t **ret_places, size_t *ret_count)
-{
-    size_t most = postings->changed_count;
-    struct listed *list = calloc(most + 1, sizeof *list);
-    uint32_t *places = calloc(most + 1, sizeof *places);
-    if (!list || !places) {
-        free(list);
-        free(places);
-        return -ENOMEM;
-    }
-    *ret_count = sort_changed(postings, list, places);
-    *ret_places = places;
-    free(list);
-    return 0;
-}
-
-size_t postings_changed_count(const struct postings *postings)
-{
-    return postings->changed_count;
-}
-
-const struct postings_cut *postings_cuts(const struct postings *postings, size_t *ret_count)
-{
-    *ret_count = postings->cut_count;
-    return postings->cuts;
-}
-
-void postings_clean(struct postings *postings)
-{
-    for (size_t i = 0; i < postings->cut_count; i++) {
-        const struct index_word *entry = index_find(&postings->index, postings->cuts[i].word);
-        if (entry && entry->chunk_count == 0) {
-            index_remove(&postings->index, postings->cuts[i].word);
-        }
-    }
-    postings->cut_count = 0;
-    for (size_t i = 0; i < postings->changed_count; i++) {
-        postings->chunks[postings->changed[i]].is_changed = false;
-    }
-    postings->changed_count = 0;
-}
-
-static void let_go(struct postings *postings, uint32_t place)
-{
-    uint32_t word = postings->chunks[place].word;
-    struct index_word *entry = index_find(&postings->index, word);
-    index_set_place(entry, postings->chunks[place].number, 0);
-    if (entry->held == 0) {
-        index_remove(&postings->index, word);
-    }
-    free_place(postings, place);
-}
-
-void postings_trim(struct postings *postings, uint64_t bytes)
-{
-    /* Twice round at most: the first may find every chunk used. */
-    size_t left = 2 * postings->chunk_count;
-    left = left < POSTINGS_TRIM ? left : POSTINGS_TRIM;
-    for (; left > 0 && postings_bytes(postings) > bytes; left--) {
-        postings->hand = postings->hand + 1 < postings->chunk_count ? postings->hand + 1 : 0;
-        struct chunk *chunk = &postings->chunks[postings->hand];
-        if (!chunk->is_there || chunk->is_changed) {
-            continue;
-        }
-        if (chunk->is_used) {
-            chunk->is_used = false;
-        } else {
-            let_go(postings, (uint32_t)postings->hand);
-        }
-    }
 }

@@ -71,7 +71,7 @@ class Bench:
         return json.loads(subprocess.run(command, check=True, stdout=subprocess.PIPE, text=True).stdout)
 
     def daemon(self, settings=()):
-        """A daemon in an empty home of its own, to be used with `with`."""
+        """A daemon in an empty home of its own, to be used with `with`; it rehearses only if the settings say so."""
         return trial.daemon(os.path.join(self.build, "undertagd"), list(settings))
 
 

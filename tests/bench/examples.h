@@ -27,6 +27,7 @@ struct examples {
     uint32_t *given;
     double *factors; /* by tag */
     /* counted here */
+    bool is_counted;
     uint32_t *word_counts;
     uint32_t *tag_counts;
     struct weights_feature *x; /* of the item at hand, as is the next */
@@ -125,37 +126,43 @@ static inline void examples_count(struct examples *examples, uint64_t item)
     }
 }
 
-/* Valid until the next item is taken. */
-static inline struct example examples_take(struct examples *examples, uint64_t item, double step)
+/* Valid until the next item is taken. `pass` is from 0. */
+static inline struct example examples_take(struct examples *examples, uint64_t item, uint64_t pass,
+                                           double step)
 {
     uint64_t start = examples->given_starts[item];
     size_t count = (size_t)(examples->given_starts[item + 1] - start);
     for (size_t i = 0; i < count; i++) {
         uint32_t tag = examples->given[start + i];
-        examples->item_given[i] = (struct weights_given){
-            .tag = tag, .tag_count = examples->tag_counts[tag], .factor = examples->factors[tag]};
+        examples->item_given[i] =
+            (struct weights_given){.tag = tag,
+                                   .tag_count = examples->tag_counts[tag],
+                                   .factors = {[WEIGHTS_MAIN] = examples->factors[tag]}};
     }
-    return (struct example){.x = examples->x,
+    return (struct example){.number = pass * examples->items + item + 1,
+                            .x = examples->x,
                             .count = examples_x(examples, item),
                             .given = examples->item_given,
                             .given_count = count,
                             .step = step};
 }
 
-/* One pass over the items to be learned; the first one counts words and tags. 0 or -ENOMEM. */
-static inline int examples_learn(struct examples *examples, bool is_first, double step,
+/* One pass over the items to be learned; the first one counts words and tags, unless they have been
+ * counted before. 0 or -ENOMEM. */
+static inline int examples_learn(struct examples *examples, uint64_t pass, double step,
                                  const struct learner *learner)
 {
     for (uint64_t item = 0; item < examples->learned; item++) {
-        if (is_first) {
+        if (!examples->is_counted) {
             examples_count(examples, item);
         }
-        const struct example example = examples_take(examples, item, step);
+        const struct example example = examples_take(examples, item, pass, step);
         int result = learner->learn(learner->self, &example);
         if (result < 0) {
             return result;
         }
     }
+    examples->is_counted = true;
     return 0;
 }
 

@@ -26,6 +26,11 @@ def step_of(tags):
     return LARGE_STEP if tags >= LARGE_VOCABULARY else SMALL_STEP
 
 
+def again_of(tags):
+    """The part of the step with which the daemon rehearses, for a vocabulary of this size."""
+    return 1 / 5 if tags >= LARGE_VOCABULARY else 1 / 3
+
+
 def factors(counts, items, even_out=True):
     """2/p - 1 by tag, over its mean over the given pairs."""
     factor = 2.0 / figures.propensities(counts, items) - 1.0
@@ -44,6 +49,7 @@ class Examples:
             self.truth_train, self.truth_test = self.truth_train[:, tags], self.truth_test[:, tags]
         self.counts, self.items = self.truth_train.getnnz(axis=0), self.truth_train.shape[0]
         self.step = step_of(self.truth_train.shape[1])
+        self.again = self.step * again_of(self.truth_train.shape[1])
         self._write()
 
     def _write(self):
@@ -60,10 +66,10 @@ class Examples:
             joined(given, "indices", "<u4").tofile(file)
             factors(self.counts, self.items).astype("<f8").tofile(file)
 
-    def learn(self, kind, passes=1, specificity=DEFAULT_SPECIFICITY, step=None):
+    def learn(self, kind, passes=1, specificity=DEFAULT_SPECIFICITY):
         """What examples_bench says of a learner, and the best tags of each item asked about, pass by pass."""
         command = [os.path.join(self.build, "bench/examples_bench"), self.path, self.ranks, kind, str(passes),
-                   str(step or self.step), str(specificity)]
+                   str(self.step), str(self.again), str(specificity)]
         said = json.loads(subprocess.run(command, check=True, capture_output=True, text=True).stdout)
         ranked = np.fromfile(self.ranks, dtype="<u4").astype(np.int64)
         ranked[ranked == NO_TAG] = -1

@@ -2,10 +2,11 @@
  * examples_bench: a learner alone, its features given: passes over the items to be learned in the
  * processor's time, and after each pass the best tags of every item to be asked about.
  *
- *   examples_bench EXAMPLES RANKS weights|plain PASSES STEP SPECIFICITY
+ *   examples_bench EXAMPLES RANKS weights|plain PASSES STEP AGAIN SPECIFICITY
  *
- * RANKS gets u32 tag numbers, DEPTH an item, pass after pass. A SPECIFICITY below 0 is the daemon's
- * default; the plain learner has none.
+ * The first pass takes the STEP, what comes after it the step AGAIN. RANKS gets u32 tag numbers,
+ * DEPTH an item, pass after pass. A SPECIFICITY below 0 is the daemon's default; the plain learner
+ * has none.
  */
 #include <string.h>
 
@@ -30,12 +31,12 @@ static int rank_all(struct examples *examples, const struct learner *learner, FI
 }
 
 static int run(struct examples *examples, const struct learner *learner, FILE *ranks, long passes,
-               double step)
+               double step, double again)
 {
     printf("{\"seconds\": [");
     for (long pass = 0; pass < passes; pass++) {
         double begun = bench_cpu_s();
-        if (examples_learn(examples, pass == 0, step, learner) < 0) {
+        if (examples_learn(examples, (uint64_t)pass, pass == 0 ? step : again, learner) < 0) {
             return -1;
         }
         printf("%s%.6f", pass > 0 ? ", " : "", bench_cpu_s() - begun);
@@ -52,9 +53,10 @@ int main(int argc, char **argv)
 {
     struct examples examples;
     struct learner learner = {0};
-    if (argc != 7) {
-        (void)fprintf(stderr, "usage: examples_bench EXAMPLES RANKS weights|plain PASSES STEP "
-                              "SPECIFICITY\n");
+    if (argc != 8) {
+        (void)fprintf(stderr,
+                      "usage: examples_bench EXAMPLES RANKS weights|plain PASSES STEP AGAIN "
+                      "SPECIFICITY\n");
         return EXIT_FAILURE;
     }
     FILE *ranks = fopen(argv[2], "wbe");
@@ -68,9 +70,10 @@ int main(int argc, char **argv)
     }
     int code = strcmp(argv[3], "plain") == 0
                    ? plain_learner_new(examples.words, examples.tags, &learner)
-                   : weights_learner_new(examples.tags, strtod(argv[6], NULL), &learner);
+                   : weights_learner_new(examples.tags, strtod(argv[7], NULL), &learner);
     if (code == 0) {
-        code = run(&examples, &learner, ranks, strtol(argv[4], NULL, 10), strtod(argv[5], NULL));
+        code = run(&examples, &learner, ranks, strtol(argv[4], NULL, 10), strtod(argv[5], NULL),
+                   strtod(argv[6], NULL));
         learner.free(learner.self);
     }
     examples_deinit(&examples);

@@ -6,6 +6,7 @@ import struct
 import time
 
 FLUSHED_CAP_S = 120
+PARTS = ("dictionary", "weights", "counts", "worklist", "asking")  # of daemon.state's memory
 
 
 def pid_of(connection):
@@ -23,7 +24,7 @@ def anonymous_bytes(connection):
 
 def stated_bytes(state):
     """What daemon.state says its parts hold."""
-    return sum(size for part, size in state["memory"].items() if part != "resident")
+    return sum(state["memory"][part] for part in PARTS)
 
 
 def disk_bytes(connection):

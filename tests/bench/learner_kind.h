@@ -12,6 +12,7 @@
 
 /* An item to learn; all borrowed. */
 struct example {
+    uint64_t number; /* no two examples have the same */
     const struct weights_feature *x;
     size_t count;
     const struct weights_given *given; /* no tag twice */
@@ -41,7 +42,9 @@ int weights_learner_new(size_t tags, double specificity, struct learner *ret_lea
 int plain_learner_new(size_t words, size_t tags, struct learner *ret_learner)
     __attribute__((warn_unused_result));
 
-/* How many postings each word has. It takes the weights apart: only learner->free may follow. */
-void weights_learner_count(struct learner *learner, uint32_t *ret_postings, size_t words);
+/* How many postings each word has; 0 or -ENOMEM. It takes the weights apart: only learner->free may
+ * follow. */
+int weights_learner_count(struct learner *learner, uint32_t *ret_postings, size_t words)
+    __attribute__((warn_unused_result));
 
 #endif

@@ -119,8 +119,8 @@ static int activate_all(struct plain *plain, const struct example *example)
     int result = 0;
     for (size_t i = 0; i < example->given_count && result == 0; i++) {
         plain->is_given[example->given[i].tag] = 1;
-        result =
-            activate(plain, example->given[i].tag, 1.0F, example->given[i].factor, example->step);
+        result = activate(plain, example->given[i].tag, 1.0F,
+                          example->given[i].factors[WEIGHTS_MAIN], example->step);
     }
     for (size_t tag = 0; tag < plain->tag_count && result == 0; tag++) {
         if (tag_score(plain, tag) > FLOOR_SCORE && !plain->is_given[tag]) {
@@ -228,7 +228,7 @@ static int rank(void *self, const struct weights_feature *x, size_t count, uint3
                 size_t most)
 {
     struct plain *plain = self;
-    struct best best = {.most = most};
+    struct best best = best_of(most);
     score(plain, x, count);
     for (size_t tag = 0; tag < plain->tag_count; tag++) {
         best_offer(&best, (uint32_t)tag, tag_score(plain, tag));

@@ -82,8 +82,7 @@ static double postings_of_items(const struct examples *examples, const uint32_t 
 }
 
 /* Learns with one setting, and prints what scoring costs then. */
-static int measure(struct examples *examples, bool is_first, double specificity, double step,
-                   const char *name)
+static int measure(struct examples *examples, double specificity, double step, const char *name)
 {
     struct learner learner = {0};
     uint32_t *postings = calloc(examples->words + 1, sizeof *postings);
@@ -92,9 +91,11 @@ static int measure(struct examples *examples, bool is_first, double specificity,
         return -1;
     }
     double seconds = -1.0;
-    if (examples_learn(examples, is_first, step, &learner) == 0) {
+    if (examples_learn(examples, 0, step, &learner) == 0) {
         seconds = scoring_time(examples, &learner);
-        weights_learner_count(&learner, postings, examples->words);
+        if (weights_learner_count(&learner, postings, examples->words) < 0) {
+            seconds = -1.0;
+        }
         printf("\"%s\": {\"score_s\": %.9f, \"postings\": %.1f}, ", name, seconds,
                postings_of_items(examples, postings));
     }
@@ -115,8 +116,8 @@ int main(int argc, char **argv)
     }
     double step = strtod(argv[2], NULL);
     printf("{");
-    int code = measure(&examples, true, DEFAULT_SPECIFICITY, step, "kept") < 0 ||
-               measure(&examples, false, 0.0, step, "full") < 0;
+    int code = measure(&examples, DEFAULT_SPECIFICITY, step, "kept") < 0 ||
+               measure(&examples, 0.0, step, "full") < 0;
     printf("\"read_bytes_per_s\": %.0f}\n", reading_rate());
     examples_deinit(&examples);
     return code ? EXIT_FAILURE : EXIT_SUCCESS;

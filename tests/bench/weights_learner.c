@@ -14,15 +14,25 @@ struct weights_learner {
     struct weights_scratch *scratch;
 };
 
+/* One lane, and nothing stored: all postings are in memory. */
+enum {
+    LANES = 1
+};
+static const struct base *const NO_BASE = NULL;
+
 static int learn(void *self, const struct example *example)
 {
     struct weights_learner *learner = self;
-    const struct weights_example taught = {.x = example->x,
+    const struct weights_example taught = {.number = example->number,
+                                           .x = example->x,
                                            .count = example->count,
+                                           .lanes = LANES,
                                            .given = example->given,
                                            .given_count = example->given_count,
                                            .step = example->step};
-    if (weights_score(learner->weights, example->x, example->count, learner->scratch) < 0) {
+    if (weights_admit(learner->weights, NO_BASE, example->x, example->count) < 0 ||
+        weights_score(learner->weights, NO_BASE, example->x, example->count, LANES,
+                      learner->scratch) < 0) {
         return -ENOMEM;
     }
     return weights_learn(learner->weights, &taught, learner->scratch);
@@ -32,15 +42,15 @@ static int rank(void *self, const struct weights_feature *x, size_t count, uint3
                 size_t most)
 {
     struct weights_learner *learner = self;
-    struct best best = {.most = most};
-    size_t touched_count = 0;
-    if (weights_score(learner->weights, x, count, learner->scratch) < 0) {
+    struct best best = best_of(most);
+    size_t rival_count = 0;
+    if (weights_score(learner->weights, NO_BASE, x, count, LANES, learner->scratch) < 0) {
         return -ENOMEM;
     }
-    const uint32_t *touched = weights_touched(learner->scratch, &touched_count);
-    for (size_t i = 0; i < touched_count; i++) {
-        best_offer(&best, touched[i],
-                   weights_tag_score(learner->weights, learner->scratch, touched[i]));
+    const struct weights_rival *rivals =
+        weights_rivals(learner->scratch, WEIGHTS_MAIN, &rival_count);
+    for (size_t i = 0; i < rival_count; i++) {
+        best_offer(&best, rivals[i].tag, rivals[i].score);
     }
     best_list(&best, NO_TAG, ret_tags);
     return 0;
@@ -64,6 +74,7 @@ int weights_learner_new(size_t tags, double specificity, struct learner *ret_lea
     struct options options;
     options_defaults(&options);
     struct weights_settings settings = options_model_settings(&options).weights;
+    settings.shadow = false;
     if (specificity >= 0.0) {
         settings.specificity = specificity;
     }
@@ -84,12 +95,15 @@ int weights_learner_new(size_t tags, double specificity, struct learner *ret_lea
     return 0;
 }
 
-void weights_learner_count(struct learner *learner, uint32_t *ret_postings, size_t words)
+int weights_learner_count(struct learner *learner, uint32_t *ret_postings, size_t words)
 {
     struct weights *weights = ((struct weights_learner *)learner->self)->weights;
     for (size_t word = 0; word < words; word++) {
         uint64_t before = weights_postings(weights);
-        weights_forget_word(weights, (uint32_t)word);
+        if (weights_forget_word(weights, NO_BASE, (uint32_t)word) < 0) {
+            return -ENOMEM;
+        }
         ret_postings[word] = (uint32_t)(before - weights_postings(weights));
     }
+    return 0;
 }

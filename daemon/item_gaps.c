@@ -221,24 +221,27 @@ static int borrow_workspace(struct gaps_job *job)
     return job->workspace ? 0 : no_memory(&job->job.fault);
 }
 
-/* Asks the model, and again where another one has taken its place in between. */
-static int ask_model(struct gaps_job *job, struct model_question *question,
-                     struct model_answer *ret_answer, uint64_t *ret_learned)
+/* Asks the model, and again where another one has taken its place in between. False: the job has a
+ * fault. */
+static bool ask_model(struct gaps_job *job, struct model_question *question,
+                      struct model_answer *ret_answer, uint64_t *ret_learned)
 {
     int code = -ESTALE;
     while (code == -ESTALE) {
         *question = (struct model_question){
             .most = (size_t)job->most, .floor = job->floor, .why = job->why};
         if (borrow_workspace(job) < 0 || prepare(job, question) < 0) {
-            return job->job.fault.code;
+            return false;
         }
         code =
             engine_ask(job->job.methods->engine, question, job->workspace, ret_answer, ret_learned);
     }
     if (code == -EIO) {
-        return read_job_fail_model(&job->job);
+        (void)read_job_fail_model(&job->job);
+    } else if (code < 0) {
+        (void)no_memory(&job->job.fault);
     }
-    return code < 0 ? no_memory(&job->job.fault) : 0;
+    return code == 0;
 }
 
 static void run(struct read_job *base)
@@ -247,7 +250,7 @@ static void run(struct read_job *base)
     struct model_question question;
     struct model_answer answer;
     uint64_t learned = 0;
-    if (ask_model(job, &question, &answer, &learned) < 0) {
+    if (!ask_model(job, &question, &answer, &learned)) {
         return;
     }
     json_t *gaps = json_array();

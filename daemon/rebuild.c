@@ -117,15 +117,22 @@ static bool is_keep_due(const struct rebuild *rebuild)
             build->learned - build->kept >= FLUSHES * options->flush_changes);
 }
 
+/* Up to where it can be learned now: up to the moment whether the trainer has come there or not. */
+static uint64_t goal(struct rebuild *rebuild)
+{
+    uint64_t moment = rebuild->build.settings.moment;
+    uint64_t learned = backlog_read(rebuild->settings.backlog).learned;
+    return learned > moment ? learned : moment;
+}
+
 static bool is_near(struct rebuild *rebuild)
 {
-    return rebuild->build.learned + NEAR_CHANGES >= backlog_read(rebuild->settings.backlog).learned;
+    return rebuild->build.learned + NEAR_CHANGES >= goal(rebuild);
 }
 
 static int build_on(struct rebuild *rebuild)
 {
-    int code = build_learn(&rebuild->build, backlog_read(rebuild->settings.backlog).learned,
-                           &rebuild->error);
+    int code = build_learn(&rebuild->build, goal(rebuild), &rebuild->error);
     publish(rebuild);
     bool is_due = code == STORE_OK && (is_keep_due(rebuild) || build_is_full(&rebuild->build));
     return is_due ? keep(rebuild) : code;
@@ -293,10 +300,13 @@ static void *run(void *argument)
 /* --- the trainer --------------------------------------------------------------------------------
  */
 
-static bool begin_taking(struct rebuild *rebuild)
+/* Not before the trainer has come to the moment: what comes up to there is not learned as it learns
+ * (see build.h). Behind it the trainer is never behind the build. */
+static bool begin_taking(struct rebuild *rebuild, uint64_t learned)
 {
     sync_lock(&rebuild->mutex);
-    bool is_ready = rebuild->phase == READY && !rebuild->stopping;
+    bool is_ready =
+        rebuild->phase == READY && !rebuild->stopping && learned >= rebuild->notes.next.seq;
     if (is_ready) {
         rebuild->phase = TAKING;
     }
@@ -344,7 +354,7 @@ static int exchange(struct rebuild *rebuild, struct shared_model *shared,
 bool rebuild_take_over(struct rebuild *rebuild, struct shared_model *shared,
                        const struct rebuild_trainer *trainer)
 {
-    if (!begin_taking(rebuild)) {
+    if (!begin_taking(rebuild, trainer->learned)) {
         return false;
     }
     int code = catch_up(rebuild, trainer->learned);

@@ -86,9 +86,10 @@ struct rebuild_trainer {
 };
 
 /*
- * Where a built model waits for it: has it learn the rest, up to the change that the one in use has
- * learned, and puts it with its store and its reader in that one's place. True when it did; the
- * stored model then has learned that far as well.
+ * Where a built model waits for it, and the trainer has come to the change that it began with: has
+ * it learn the rest, up to the change that the one in use has learned, and puts it with its store
+ * and its reader in that one's place. True when it did; the stored model then has learned that far
+ * as well.
  */
 bool rebuild_take_over(struct rebuild *rebuild, struct shared_model *shared,
                        const struct rebuild_trainer *trainer);

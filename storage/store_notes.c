@@ -1,5 +1,6 @@
 #include "storage/store_notes.h"
 
+#include <stdbool.h>
 #include <stdio.h>
 #include <string.h>
 
@@ -13,27 +14,32 @@ enum {
     KEY_BYTES = sizeof PREFIX + STORE_NOTE_NAME_BYTES
 };
 
-static int make_key(const char *name, char key[KEY_BYTES], struct kv_bytes *ret_key,
-                    struct store_error *error)
+/* False where the name is too long. */
+static bool make_key(const char *name, char key[KEY_BYTES], size_t *ret_size)
 {
     int length = snprintf(key, KEY_BYTES, "%s%s", PREFIX, name);
     if (length < 0 || length >= KEY_BYTES) {
-        return store_fail(error, STORE_DENIED, "a note's name is too long");
+        return false;
     }
-    *ret_key = kv_bytes_of(key, (size_t)length);
-    return STORE_OK;
+    *ret_size = (size_t)length;
+    return true;
+}
+
+static int fail_name(struct store_error *error)
+{
+    return store_fail(error, STORE_DENIED, "a note's name is too long");
 }
 
 int store_get_note(struct store_view *view, const char *name, struct codec_writer *into,
                    struct store_error *error)
 {
-    char text[KEY_BYTES];
-    struct kv_bytes key;
-    struct kv_bytes value;
-    int result = make_key(name, text, &key, error);
-    if (result == STORE_OK) {
-        result = kv_get(view->txn, TABLE_META, key, &value, error);
+    char key[KEY_BYTES];
+    size_t key_bytes = 0;
+    struct kv_bytes value = {0};
+    if (!make_key(name, key, &key_bytes)) {
+        return fail_name(error);
     }
+    int result = kv_get(view->txn, TABLE_META, kv_bytes_of(key, key_bytes), &value, error);
     if (result != STORE_OK) {
         return result;
     }
@@ -51,21 +57,20 @@ int store_get_note(struct store_view *view, const char *name, struct codec_write
 int store_put_note(struct store_view *view, const char *name, const void *data, size_t size,
                    struct store_error *error)
 {
-    char text[KEY_BYTES];
-    struct kv_bytes key;
+    char key[KEY_BYTES];
+    size_t key_bytes = 0;
     if (size > STORE_NOTE_BYTES) {
         return store_fail(error, STORE_DENIED, "the note '%s' is too long: %zu bytes", name, size);
     }
-    int result = make_key(name, text, &key, error);
-    if (result != STORE_OK) {
-        return result;
+    if (!make_key(name, key, &key_bytes)) {
+        return fail_name(error);
     }
     struct codec_writer record = {0};
     codec_put_u32(&record, codec_checksum(data, size));
     codec_put_raw(&record, data, size);
-    result = record.failed
-                 ? (int)store_fail(error, STORE_NO_MEMORY, "out of memory")
-                 : kv_put(view->txn, TABLE_META, key, kv_bytes_of(record.data, record.size), error);
+    int result = record.failed ? (int)store_fail(error, STORE_NO_MEMORY, "out of memory")
+                               : kv_put(view->txn, TABLE_META, kv_bytes_of(key, key_bytes),
+                                        kv_bytes_of(record.data, record.size), error);
     codec_deinit(&record);
     return result;
 }

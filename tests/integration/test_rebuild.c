@@ -226,6 +226,14 @@ static void file_many(struct peer *peer)
     }
 }
 
+/* What the model in use has learned is stored at once: so the writer would erase what was
+ * superseded, if the build did not need it. */
+static int set_up_quick_to_erase(void **state)
+{
+    *state = service_new("flush_every_ms=10", "flush_changes=1", NULL);
+    return 0;
+}
+
 /* A change made during a rebuild is as if it had been made behind it. */
 static void what_is_changed_meanwhile_is_in_the_new_model(void **state)
 {
@@ -353,7 +361,8 @@ int main(void)
         TEST(items_filed_later_are_learned_with_the_other_settings),
         TEST(settings_that_are_not_named_stay_as_an_earlier_rebuild_has_left_them),
         TEST(an_option_that_is_changed_in_the_configuration_is_the_configurations_again),
-        TEST(what_is_changed_meanwhile_is_in_the_new_model),
+        cmocka_unit_test_setup_teardown(what_is_changed_meanwhile_is_in_the_new_model,
+                                        set_up_quick_to_erase, service_tear_down),
         TEST(the_state_tells_how_far_it_has_come_and_with_what),
         TEST(a_second_rebuild_is_refused_while_one_runs),
         TEST(stopping_ends_it_and_the_next_start_goes_on),

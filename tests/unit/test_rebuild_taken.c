@@ -55,8 +55,7 @@ static void open_parts(struct taking *taking)
     assert_int_equal(
         model_store_open(&taking->store->settings, &taking->model_store, &taking->error), STORE_OK);
     assert_int_equal(model_new(&settings, &KEY, &model), 0);
-    assert_int_equal(shared_model_init_take(&taking->shared, model, 0), 0);
-    taking->shared.store = taking->model_store;
+    assert_int_equal(shared_model_init_take(&taking->shared, model, taking->model_store, 0), 0);
     assert_int_equal(backlog_new(&start, &taking->backlog), 0);
     assert_int_equal(troubles_init(&taking->troubles), 0);
     assert_int_equal(change_reader_new(&words, &taking->reader), 0);

@@ -64,6 +64,7 @@ static int activate(const struct learning *learning, const struct scratch_active
     active.curvature = (double)active.bias_rate;
     scratch->active[scratch->active_count++] = active;
     scratch->slot[active.tag * scratch->lanes + active.lane] = (uint32_t)scratch->active_count;
+    scratch->marks[active.tag] |= SCRATCH_ACTIVE;
     return 0;
 }
 
@@ -85,7 +86,8 @@ static int activate_touched(const struct learning *learning, enum weights_lane l
     for (size_t i = 0; i < scratch->touched_count; i++) {
         uint32_t tag = scratch->touched[i];
         float score = weights_tag_score(learning->weights, scratch, lane, tag);
-        if (!scratch->is_given[tag] && activate_rival(learning, lane, tag, score) < 0) {
+        if (!(scratch->marks[tag] & SCRATCH_GIVEN) &&
+            activate_rival(learning, lane, tag, score) < 0) {
             return -ENOMEM;
         }
     }
@@ -100,7 +102,7 @@ static int activate_rivals(const struct learning *learning, enum weights_lane la
     size_t count = 0;
     const struct weights_rival *rivals = weights_rivals(learning->scratch, lane, &count);
     for (size_t i = 0; i < count; i++) {
-        if (!learning->scratch->is_given[rivals[i].tag] &&
+        if (!(learning->scratch->marks[rivals[i].tag] & SCRATCH_GIVEN) &&
             activate_rival(learning, lane, rivals[i].tag, rivals[i].score) < 0) {
             return -ENOMEM;
         }
@@ -141,7 +143,7 @@ static int activate_lane(const struct learning *learning, enum weights_lane lane
                                               .lane = lane,
                                               .sign = 1.0F,
                                               .factor = given->factors[lane]};
-        learning->scratch->is_given[given->tag] = 1;
+        learning->scratch->marks[given->tag] |= SCRATCH_GIVEN;
         if (note_count(learning->weights, given) < 0) {
             return -ENOMEM;
         }
@@ -228,13 +230,10 @@ static int collect_chunk(const struct learning *learning, const struct weights_f
     const struct chunk *chunk = postings_at(postings, place);
     size_t stride = postings_stride(postings);
     const uint32_t *numbers = chunk->numbers;
+    const uint8_t *marks = scratch->marks;
     for (size_t j = 0; j < chunk->count; j++) {
         uint32_t tag = numbers[j * stride];
-        uint32_t slots = scratch->slot[tag * scratch->lanes];
-        if (scratch->lanes == WEIGHTS_LANES) {
-            slots |= scratch->slot[tag * WEIGHTS_LANES + WEIGHTS_SHADOW];
-        }
-        if (slots != 0 &&
+        if ((marks[tag] & SCRATCH_ACTIVE) != 0 &&
             collect_posting(learning, feature, place, (uint32_t)(j * stride), tag) < 0) {
             return -ENOMEM;
         }

@@ -16,18 +16,17 @@ static inline __attribute__((always_inline)) void add_postings(const uint32_t *n
                                                                struct weights_scratch *scratch)
 {
     float *sums = scratch->sums;
-    uint8_t *is_touched = scratch->is_touched;
     uint32_t *touched = scratch->touched;
     size_t touched_count = scratch->touched_count;
     for (size_t j = 0; j < count; j++) {
         const uint32_t *posting = numbers + j * stride;
         uint32_t tag = posting[0];
+        float *sum = sums + tag * lanes;
         /* Without a branch: written always, kept when it is the first visit. */
         touched[touched_count] = tag;
-        touched_count += !is_touched[tag];
-        is_touched[tag] = 1;
+        touched_count += scratch_is_untouched(*sum);
         for (size_t lane = 0; lane < lanes; lane++) {
-            sums[tag * lanes + lane] += (float)cell_weight(posting[1 + lane]) * x;
+            sum[lane] += (float)cell_weight(posting[1 + lane]) * x;
         }
     }
     scratch->touched_count = touched_count;
@@ -60,24 +59,38 @@ static int add_word(const struct weights *weights, const struct base *base,
     return result == -ENOENT ? 0 : result;
 }
 
-/* The touched tags that are above the floor. */
-static int list_rivals(const struct weights *weights, struct weights_scratch *scratch)
+static inline void add_rival(const struct weights *weights, struct scratch_rivals *rivals,
+                             uint32_t tag, enum weights_lane lane, float sum)
+{
+    float score = WEIGHTS_BASE_SCORE + weights->tags[tag].biases[lane].value + sum;
+    rivals->list[rivals->count] = (struct weights_rival){tag, score};
+    rivals->count += score > WEIGHTS_FLOOR_SCORE;
+}
+
+/* The touched tags that are above the floor: by words that speak for them, or by their bias, which
+ * is that of a raised one. */
+static int list_rivals(const struct weights *weights, struct weights_scratch *scratch,
+                       enum weights_lane lane)
 {
     size_t lanes = scratch->lanes;
-    for (size_t lane = 0; lane < lanes; lane++) {
-        struct scratch_rivals *rivals = &scratch->rivals[lane];
-        if (GROW(&rivals->list, &rivals->capacity, scratch->touched_count + 1) < 0) {
-            return -ENOMEM;
+    struct scratch_rivals *rivals = &scratch->rivals[lane];
+    if (GROW(&rivals->list, &rivals->capacity, scratch->touched_count + 1) < 0) {
+        return -ENOMEM;
+    }
+    rivals->count = 0;
+    for (size_t i = 0; i < scratch->touched_count; i++) {
+        uint32_t tag = scratch->touched[i];
+        float sum = scratch->sums[tag * lanes + lane];
+        if (sum > 0.0F) {
+            add_rival(weights, rivals, tag, lane, sum);
         }
-        size_t count = 0;
-        for (size_t i = 0; i < scratch->touched_count; i++) {
-            uint32_t tag = scratch->touched[i];
-            float score = WEIGHTS_BASE_SCORE + weights->tags[tag].biases[lane].value +
-                          scratch->sums[tag * lanes + lane];
-            rivals->list[count] = (struct weights_rival){tag, score};
-            count += score > WEIGHTS_FLOOR_SCORE;
+    }
+    for (size_t i = 0; i < weights->raised_count; i++) {
+        uint32_t tag = weights->raised[i];
+        float sum = scratch->sums[tag * lanes + lane];
+        if (!(sum > 0.0F)) {
+            add_rival(weights, rivals, tag, lane, sum);
         }
-        rivals->count = count;
     }
     return 0;
 }
@@ -100,7 +113,11 @@ int weights_score(const struct weights *weights, const struct base *base,
     for (size_t i = 0; i < weights->raised_count; i++) {
         scratch_touch(scratch, weights->raised[i]);
     }
-    return list_rivals(weights, scratch);
+    int result = 0;
+    for (size_t lane = 0; lane < lanes && result == 0; lane++) {
+        result = list_rivals(weights, scratch, (enum weights_lane)lane);
+    }
+    return result;
 }
 
 const struct weights_rival *weights_rivals(const struct weights_scratch *scratch,
@@ -112,7 +129,8 @@ const struct weights_rival *weights_rivals(const struct weights_scratch *scratch
 
 bool weights_is_touched(const struct weights_scratch *scratch, uint32_t tag)
 {
-    return tag < scratch->tag_capacity && scratch->is_touched[tag];
+    return tag < scratch->tag_capacity &&
+           !scratch_is_untouched(scratch->sums[tag * scratch->lanes]);
 }
 
 bool weights_speak(const struct weights_scratch *scratch)

@@ -22,12 +22,11 @@ void weights_scratch_free(struct weights_scratch *scratch)
         return;
     }
     free(scratch->sums);
-    free(scratch->is_touched);
     free(scratch->touched);
     for (size_t lane = 0; lane < WEIGHTS_LANES; lane++) {
         free(scratch->rivals[lane].list);
     }
-    free(scratch->is_given);
+    free(scratch->marks);
     free(scratch->slot);
     free(scratch->active);
     free(scratch->hits);
@@ -37,13 +36,12 @@ void weights_scratch_free(struct weights_scratch *scratch)
 
 uint64_t weights_scratch_bytes(const struct weights_scratch *scratch)
 {
-    uint64_t bytes =
-        sizeof *scratch +
-        scratch->tag_capacity * (scratch->lanes_room * sizeof *scratch->sums +
-                                 sizeof *scratch->is_touched + sizeof *scratch->touched) +
-        scratch->slot_capacity * sizeof *scratch->slot + scratch->given_capacity +
-        scratch->active_capacity * sizeof *scratch->active +
-        scratch->hit_capacity * sizeof *scratch->hits;
+    size_t by_tag = scratch->lanes_room * sizeof *scratch->sums + sizeof *scratch->touched;
+    uint64_t bytes = sizeof *scratch + scratch->tag_capacity * by_tag +
+                     scratch->slot_capacity * sizeof *scratch->slot + scratch->mark_capacity +
+                     scratch->active_capacity * sizeof *scratch->active +
+                     scratch->hit_capacity * sizeof *scratch->hits +
+                     scratch->due_capacity * sizeof *scratch->due;
     for (size_t lane = 0; lane < WEIGHTS_LANES; lane++) {
         bytes += scratch->rivals[lane].capacity * sizeof *scratch->rivals[lane].list;
     }
@@ -58,20 +56,19 @@ int scratch_reserve_tags(struct weights_scratch *scratch, size_t count, size_t l
     }
     size_t wanted = count <= scratch->tag_capacity ? count : count + count / 4;
     size_t room = lanes > scratch->lanes_room ? lanes : scratch->lanes_room;
-    float *sums = calloc(wanted * room + 1, sizeof *sums);
-    uint8_t *is_touched = calloc(wanted + 1, sizeof *is_touched);
-    uint32_t *touched = calloc(wanted + 1, sizeof *touched);
-    if (!sums || !is_touched || !touched) {
+    float *sums = malloc((wanted * room + 1) * sizeof *sums);
+    uint32_t *touched = malloc((wanted + 1) * sizeof *touched);
+    if (!sums || !touched) {
         free(sums);
-        free(is_touched);
         free(touched);
         return -ENOMEM;
     }
+    for (size_t i = 0; i < wanted * room; i++) {
+        sums[i] = SCRATCH_UNTOUCHED;
+    }
     free(scratch->sums);
-    free(scratch->is_touched);
     free(scratch->touched);
     scratch->sums = sums;
-    scratch->is_touched = is_touched;
     scratch->touched = touched;
     scratch->tag_capacity = wanted;
     scratch->lanes_room = room;
@@ -80,11 +77,10 @@ int scratch_reserve_tags(struct weights_scratch *scratch, size_t count, size_t l
 
 int scratch_reserve_slots(struct weights_scratch *scratch)
 {
-    return GROW(&scratch->slot, &scratch->slot_capacity, scratch->tag_capacity * scratch->lanes) <
-                       0 ||
-                   GROW(&scratch->is_given, &scratch->given_capacity, scratch->tag_capacity) < 0
-               ? -ENOMEM
-               : 0;
+    size_t tags = scratch->tag_capacity;
+    bool has_room = GROW(&scratch->slot, &scratch->slot_capacity, tags * scratch->lanes) == 0 &&
+                    GROW(&scratch->marks, &scratch->mark_capacity, tags) == 0;
+    return has_room ? 0 : -ENOMEM;
 }
 
 void scratch_clear(struct weights_scratch *scratch)
@@ -93,9 +89,8 @@ void scratch_clear(struct weights_scratch *scratch)
     for (size_t i = 0; i < scratch->touched_count; i++) {
         uint32_t tag = scratch->touched[i];
         for (size_t lane = 0; lane < lanes; lane++) {
-            scratch->sums[tag * lanes + lane] = 0.0F;
+            scratch->sums[tag * lanes + lane] = SCRATCH_UNTOUCHED;
         }
-        scratch->is_touched[tag] = 0;
     }
     scratch->touched_count = 0;
 }
@@ -104,11 +99,12 @@ void scratch_end_learning(struct weights_scratch *scratch, const struct weights_
                           size_t given_count)
 {
     for (size_t i = 0; i < given_count; i++) {
-        scratch->is_given[given[i].tag] = 0;
+        scratch->marks[given[i].tag] = 0;
     }
     for (size_t i = 0; i < scratch->active_count; i++) {
         const struct scratch_active *active = &scratch->active[i];
         scratch->slot[active->tag * scratch->lanes + active->lane] = 0;
+        scratch->marks[active->tag] = 0;
     }
     scratch->active_count = 0;
     scratch->hit_count = 0;

@@ -9,9 +9,15 @@
 #include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
+#include <string.h>
 
 #include "daemon/learner/postings.h"
 #include "daemon/learner/weights.h"
+
+enum scratch_mark {
+    SCRATCH_GIVEN = 1,
+    SCRATCH_ACTIVE = 2 /* in any lane */
+};
 
 /* A tag that has a loss on the example, in one of the lanes. */
 struct scratch_active {
@@ -46,19 +52,18 @@ struct scratch_rivals {
 
 struct weights_scratch {
     size_t tag_capacity;
-    size_t lanes;        /* that were scored last */
-    size_t lanes_room;   /* that there is room for */
-    float *sums;         /* by tag and lane: Σ w·x of a touched tag, otherwise 0 */
-    uint8_t *is_touched; /* by tag */
-    uint32_t *touched;   /* one more than tags, for the write that is not kept */
+    size_t lanes;      /* that were scored last */
+    size_t lanes_room; /* that there is room for */
+    float *sums;       /* by tag and lane: Σ w·x of a touched tag, otherwise SCRATCH_UNTOUCHED */
+    uint32_t *touched; /* one more than tags, for the write that is not kept */
     size_t touched_count;
     bool has_spoken;
     struct scratch_rivals rivals[WEIGHTS_LANES];
     struct postings_walk walk;
     uint32_t *slot; /* by tag and lane, while learning: 1 + place in `active`, or 0 */
     size_t slot_capacity;
-    uint8_t *is_given; /* by tag, while learning */
-    size_t given_capacity;
+    uint8_t *marks; /* by tag, while learning: scratch_mark bits */
+    size_t mark_capacity;
     struct scratch_active *active;
     size_t active_count;
     size_t active_capacity;
@@ -75,17 +80,32 @@ struct weights_scratch {
 int scratch_reserve_tags(struct weights_scratch *scratch, size_t count, size_t lanes)
     __attribute__((warn_unused_result));
 
-/* Makes room in `slot` and `is_given` for what has been scored. */
+/* Makes room in `slot` and `marks` for what has been scored. */
 int scratch_reserve_slots(struct weights_scratch *scratch) __attribute__((warn_unused_result));
 
 /* Forgets the item scored last. */
 void scratch_clear(struct weights_scratch *scratch);
 
+/*
+ * The sum of a tag that nothing has touched, in the first lane: minus zero. A sum never comes to
+ * it: x is above 0, a cell's weight is a whole number, and what cancels out is plus zero.
+ */
+#define SCRATCH_UNTOUCHED (-0.0F)
+
+static inline bool scratch_is_untouched(float sum)
+{
+    uint32_t bits = 0;
+    memcpy(&bits, &sum, sizeof bits);
+    return bits == 0x80000000U;
+}
+
 static inline void scratch_touch(struct weights_scratch *scratch, uint32_t tag)
 {
-    scratch->touched[scratch->touched_count] = tag;
-    scratch->touched_count += !scratch->is_touched[tag];
-    scratch->is_touched[tag] = 1;
+    float *sum = &scratch->sums[tag * scratch->lanes];
+    if (scratch_is_untouched(*sum)) {
+        *sum = 0.0F;
+        scratch->touched[scratch->touched_count++] = tag;
+    }
 }
 
 /* Σ w·x; 0 for a tag that is not touched. */

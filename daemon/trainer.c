@@ -59,19 +59,20 @@ struct trainer {
     bool failed;
     bool store_failed; /* when the model was to be stored last */
     bool waits;        /* until it can be stored */
+    bool is_damaged;   /* what is stored of the model */
 };
 
 /* --- one change ---------------------------------------------------------------------------------
  */
 
-static int fail_to_learn(const struct trainer *trainer, int code, uint64_t seq,
-                         struct store_error *error)
+static int fail_to_learn(struct trainer *trainer, int code, uint64_t seq, struct store_error *error)
 {
     if (code == -ENOMEM) {
         return store_fail(error, STORE_NO_MEMORY, "there is no memory to learn change %llu",
                           (unsigned long long)seq);
     }
     const struct store_error *reason = &trainer->base.error;
+    trainer->is_damaged = reason->code == STORE_OK || reason->code == STORE_CORRUPT;
     return store_fail(error, STORE_CORRUPT, "what was learned before cannot be read: %s",
                       reason->text[0] ? reason->text : "it does not fit together");
 }
@@ -369,9 +370,11 @@ static void fail(struct trainer *trainer, const struct store_error *error)
     struct store_error reason = {0};
     trainer->failed = true;
     /* What was learned before is damaged, and loading it would not find out: learn it anew. */
-    if (trainer->base.error.code == STORE_CORRUPT &&
-        model_keeper_reset(trainer->settings.model_store, &reason) == STORE_OK) {
-        log_line(LOG_CAUTION, "the stored model is damaged: a restart learns all items again");
+    if (trainer->is_damaged) {
+        int code = model_keeper_reset(trainer->settings.model_store, &reason);
+        log_line(LOG_CAUTION, "the stored model is damaged: %s",
+                 code == STORE_OK ? "a restart learns all items again"
+                                  : "stop the daemon and remove the folder model");
     }
     troubles_begin(trainer->settings.troubles, TROUBLE_LEARNING,
                    "learning has stopped at change %llu (%s); restart the daemon to go on",

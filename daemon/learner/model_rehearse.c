@@ -15,6 +15,13 @@ enum {
     ROUND_PART = 8 /* a round begins when an eighth of all numbers is beyond the last one */
 };
 
+/* Has come to that number; the last one ends the round. */
+static void move_on(struct model_rehearsal *rehearsal, uint64_t number)
+{
+    rehearsal->at = number;
+    rehearsal->rounds += number == rehearsal->until;
+}
+
 int model_next_rehearsal(struct model *model, const struct base *base, uint64_t *ret_number)
 {
     struct model_rehearsal *rehearsal = &model->rehearsal;
@@ -28,8 +35,7 @@ int model_next_rehearsal(struct model *model, const struct base *base, uint64_t 
     struct worklist_entry entry;
     int result = worklist_after(model->worklist, base, rehearsal->at, &entry);
     if (result == -ENOENT || (result == 0 && entry.number > rehearsal->until)) {
-        rehearsal->at = rehearsal->until;
-        rehearsal->rounds++;
+        move_on(rehearsal, rehearsal->until);
         return -ENOENT;
     }
     if (result == 0) {
@@ -40,7 +46,7 @@ int model_next_rehearsal(struct model *model, const struct base *base, uint64_t 
 
 void model_skip_rehearsal(struct model *model, uint64_t number)
 {
-    model->rehearsal.at = number;
+    move_on(&model->rehearsal, number);
 }
 
 struct model_rehearsal model_rehearsal(const struct model *model)
@@ -118,7 +124,7 @@ int model_rehearse(struct model *model, const struct model_item *item,
     if (result == 0) {
         result = worklist_put(model->worklist, scratch->base, &entry);
     }
-    model->rehearsal.at = item->number;
+    move_on(&model->rehearsal, item->number);
     model->rehearsal.items++;
     return result;
 }

@@ -30,6 +30,7 @@ void weights_free(struct weights *weights)
     postings_free(weights->postings);
     free(weights->tags);
     free(weights->raised);
+    free(weights->lifts);
     marks_deinit(&weights->changed_tags);
     free(weights);
 }
@@ -40,8 +41,12 @@ int weights_reserve_tags(struct weights *weights, size_t count)
         return 0;
     }
     if (GROW(&weights->tags, &weights->tag_capacity, count) < 0 ||
-        GROW(&weights->raised, &weights->raised_capacity, count) < 0) {
+        GROW(&weights->raised, &weights->raised_capacity, count) < 0 ||
+        GROW(&weights->lifts, &weights->lift_capacity, count * weights->lanes) < 0) {
         return -ENOMEM;
+    }
+    for (size_t i = weights->tag_count * weights->lanes; i < count * weights->lanes; i++) {
+        weights->lifts[i] = WEIGHTS_BASE_SCORE;
     }
     weights->tag_count = count;
     postings_limit_tags(weights->postings, count);
@@ -62,7 +67,8 @@ uint64_t weights_bytes(const struct weights *weights)
 {
     return sizeof *weights + postings_bytes(weights->postings) +
            weights->tag_capacity * sizeof *weights->tags +
-           weights->raised_capacity * sizeof *weights->raised + marks_bytes(&weights->changed_tags);
+           weights->raised_capacity * sizeof *weights->raised +
+           weights->lift_capacity * sizeof *weights->lifts + marks_bytes(&weights->changed_tags);
 }
 
 void weights_refresh_raised(struct weights *weights, uint32_t tag)
@@ -70,8 +76,9 @@ void weights_refresh_raised(struct weights *weights, uint32_t tag)
     struct tag_entry *entry = &weights->tags[tag];
     bool is_raised = false;
     for (size_t lane = 0; lane < weights->lanes; lane++) {
-        is_raised =
-            is_raised || WEIGHTS_BASE_SCORE + entry->biases[lane].value > WEIGHTS_FLOOR_SCORE;
+        float lift = WEIGHTS_BASE_SCORE + entry->biases[lane].value;
+        weights->lifts[tag * weights->lanes + lane] = lift;
+        is_raised = is_raised || lift > WEIGHTS_FLOOR_SCORE;
     }
     if (is_raised && entry->raised_at == 0) {
         weights->raised[weights->raised_count++] = tag;

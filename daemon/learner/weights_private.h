@@ -33,13 +33,15 @@ struct weights {
     struct tag_entry *tags;
     size_t tag_count;
     size_t tag_capacity;
+    float *lifts; /* by tag and lane: WEIGHTS_BASE_SCORE and the bias, close together for scoring */
+    size_t lift_capacity;
     uint32_t *raised;
     size_t raised_count;
     size_t raised_capacity;
     struct marks changed_tags;
 };
 
-/* Puts the tag on the list of raised ones, or takes it off, as its biases ask for. */
+/* After a bias has changed: the tag's lifts, and whether it is on the list of raised ones. */
 void weights_refresh_raised(struct weights *weights, uint32_t tag);
 
 /* Whether a word's postings are to be compacted, now that so many weights of the main lane have

@@ -44,54 +44,73 @@ static void add_chunk(const uint32_t *numbers, size_t count, size_t stride, floa
     }
 }
 
-static int add_word(const struct weights *weights, const struct base *base,
-                    const struct weights_feature *feature, struct weights_scratch *scratch)
+/* Adds what was noted, in its order. */
+static void add_runs(struct weights_scratch *scratch, size_t stride)
+{
+    for (size_t i = 0; i < scratch->run_count; i++) {
+        const struct scratch_run *run = &scratch->runs[i];
+        add_chunk(run->numbers, run->count, stride, run->x, scratch);
+    }
+    scratch->run_count = 0;
+}
+
+/* Notes a chunk that is in memory, and has the processor fetch its beginning. */
+static int note_run(struct weights_scratch *scratch, const uint32_t *numbers, size_t count, float x)
+{
+    if (GROW(&scratch->runs, &scratch->run_capacity, scratch->run_count + 1) < 0) {
+        return -ENOMEM;
+    }
+    __builtin_prefetch(numbers);
+    scratch->runs[scratch->run_count++] =
+        (struct scratch_run){.numbers = numbers, .count = (uint32_t)count, .x = x};
+    return 0;
+}
+
+/* Notes a word's chunks; what had to be read is added at once, since its bytes do not stay. */
+static int note_word(const struct weights *weights, const struct base *base,
+                     const struct weights_feature *feature, struct weights_scratch *scratch)
 {
     size_t stride = postings_stride(weights->postings);
+    float x = feature->value * CELL_STEP;
     struct postings_walk *walk = &scratch->walk;
     const uint32_t *numbers = NULL;
     size_t count = 0;
     int result = 0;
     postings_walk_begin(weights->postings, base, feature->word, walk);
     while ((result = postings_walk_next(walk, &numbers, &count)) == 0) {
-        add_chunk(numbers, count, stride, feature->value * CELL_STEP, scratch);
+        if (numbers == walk->buffer) {
+            add_runs(scratch, stride); /* words are added in their order */
+            add_chunk(numbers, count, stride, x, scratch);
+        } else if (note_run(scratch, numbers, count, x) < 0) {
+            return -ENOMEM;
+        }
     }
     return result == -ENOENT ? 0 : result;
 }
 
-static inline void add_rival(const struct weights *weights, struct scratch_rivals *rivals,
-                             uint32_t tag, enum weights_lane lane, float sum)
-{
-    float score = WEIGHTS_BASE_SCORE + weights->tags[tag].biases[lane].value + sum;
-    rivals->list[rivals->count] = (struct weights_rival){tag, score};
-    rivals->count += score > WEIGHTS_FLOOR_SCORE;
-}
-
-/* The touched tags that are above the floor: by words that speak for them, or by their bias, which
- * is that of a raised one. */
+/* The touched tags that are above the floor. */
 static int list_rivals(const struct weights *weights, struct weights_scratch *scratch,
                        enum weights_lane lane)
 {
     size_t lanes = scratch->lanes;
+    size_t lifts_a_tag = weights->lanes;
+    size_t touched_count = scratch->touched_count;
     struct scratch_rivals *rivals = &scratch->rivals[lane];
-    if (GROW(&rivals->list, &rivals->capacity, scratch->touched_count + 1) < 0) {
+    if (GROW(&rivals->list, &rivals->capacity, touched_count + 1) < 0) {
         return -ENOMEM;
     }
-    rivals->count = 0;
-    for (size_t i = 0; i < scratch->touched_count; i++) {
-        uint32_t tag = scratch->touched[i];
-        float sum = scratch->sums[tag * lanes + lane];
-        if (sum > 0.0F) {
-            add_rival(weights, rivals, tag, lane, sum);
-        }
+    const uint32_t *touched = scratch->touched;
+    const float *sums = scratch->sums + lane;
+    const float *lifts = weights->lifts + lane;
+    struct weights_rival *list = rivals->list;
+    size_t count = 0;
+    for (size_t i = 0; i < touched_count; i++) {
+        uint32_t tag = touched[i];
+        float score = lifts[tag * lifts_a_tag] + sums[tag * lanes];
+        list[count] = (struct weights_rival){tag, score};
+        count += score > WEIGHTS_FLOOR_SCORE;
     }
-    for (size_t i = 0; i < weights->raised_count; i++) {
-        uint32_t tag = weights->raised[i];
-        float sum = scratch->sums[tag * lanes + lane];
-        if (!(sum > 0.0F)) {
-            add_rival(weights, rivals, tag, lane, sum);
-        }
-    }
+    rivals->count = count;
     return 0;
 }
 
@@ -103,12 +122,14 @@ int weights_score(const struct weights *weights, const struct base *base,
     if (scratch_reserve_tags(scratch, weights->tag_count, lanes) < 0) {
         return -ENOMEM;
     }
+    scratch->run_count = 0;
     for (size_t i = 0; i < count; i++) {
-        int result = add_word(weights, base, &x[i], scratch);
+        int result = note_word(weights, base, &x[i], scratch);
         if (result < 0) {
             return result;
         }
     }
+    add_runs(scratch, postings_stride(weights->postings));
     scratch->has_spoken = scratch->touched_count > 0;
     for (size_t i = 0; i < weights->raised_count; i++) {
         scratch_touch(scratch, weights->raised[i]);

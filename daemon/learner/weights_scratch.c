@@ -26,6 +26,7 @@ void weights_scratch_free(struct weights_scratch *scratch)
     for (size_t lane = 0; lane < WEIGHTS_LANES; lane++) {
         free(scratch->rivals[lane].list);
     }
+    free(scratch->runs);
     free(scratch->marks);
     free(scratch->slot);
     free(scratch->active);
@@ -41,7 +42,8 @@ uint64_t weights_scratch_bytes(const struct weights_scratch *scratch)
                      scratch->slot_capacity * sizeof *scratch->slot + scratch->mark_capacity +
                      scratch->active_capacity * sizeof *scratch->active +
                      scratch->hit_capacity * sizeof *scratch->hits +
-                     scratch->due_capacity * sizeof *scratch->due;
+                     scratch->due_capacity * sizeof *scratch->due +
+                     scratch->run_capacity * sizeof *scratch->runs;
     for (size_t lane = 0; lane < WEIGHTS_LANES; lane++) {
         bytes += scratch->rivals[lane].capacity * sizeof *scratch->rivals[lane].list;
     }

@@ -44,6 +44,13 @@ struct scratch_hit {
     uint64_t noise;
 };
 
+/* Postings that are in memory, to be added to the sums. */
+struct scratch_run {
+    const uint32_t *numbers;
+    uint32_t count;
+    float x; /* the feature's value by the step of a cell */
+};
+
 struct scratch_rivals {
     struct weights_rival *list;
     size_t count;
@@ -59,6 +66,9 @@ struct weights_scratch {
     size_t touched_count;
     bool has_spoken;
     struct scratch_rivals rivals[WEIGHTS_LANES];
+    struct scratch_run *runs;
+    size_t run_count;
+    size_t run_capacity;
     struct postings_walk walk;
     uint32_t *slot; /* by tag and lane, while learning: 1 + place in `active`, or 0 */
     size_t slot_capacity;

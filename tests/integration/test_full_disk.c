@@ -12,6 +12,7 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "tests/integration/logbook.h"
 #include "tests/integration/program.h"
 #include "tests/integration/service.h"
 
@@ -203,9 +204,56 @@ static void the_client_ends_with_try_again(void **state)
     assert_non_null(strstr(run.error, "disk_reserve"));
 }
 
+/* --- a model that cannot be stored ----------------------------------------------------------- */
+
+enum {
+    ENTRIES = 400,
+    WORDS = 60 /* of some 5,000 different ones, more than 64 MiB have room for unstored */
+};
+
+/* What was filed with memory for all of it is to be learned again with little, and no room. */
+static int set_up_unstorable(void **state)
+{
+    struct service *service =
+        service_new("disk_reserve=0", "memory_budget=1GiB", "flush_every_ms=3600000");
+    logbook_file(&service->peer, 0, ENTRIES, WORDS);
+    undertagd_kill(&service->daemon);
+    service->daemon.settings[0] = "disk_reserve=1024GiB";
+    service->daemon.settings[1] = "memory_budget=64MiB";
+    service_restart(service);
+    undertagd_wait_for(&service->daemon, "what was learned cannot be stored");
+    *state = service;
+    return 0;
+}
+
+static void while_the_model_cannot_be_stored_questions_are_answered(void **state)
+{
+    struct service *service = *state;
+    struct peer *peer = &service->peer;
+    const json_t *answer = ask(peer, "item.gaps", "{'text': 'dense fog', 'floor': 0}");
+    assert_in_range(whole(answer, "learned"), 1, ENTRIES - 1);
+    assert_true(json_array_size(json_object_get(answer, "gaps")) > 0);
+    const json_t *faults = json_object_get(ask(peer, "daemon.state", "{}"), "faults");
+    assert_int_equal(json_array_size(faults), 1);
+    assert_non_null(strstr(json_string_value(json_array_get(faults, 0)), "disk_reserve"));
+    assert_int_equal(ask_seq(peer), ENTRIES);
+}
+
+static void once_the_model_can_be_stored_the_rest_is_learned(void **state)
+{
+    struct service *service = *state;
+    service->daemon.settings[0] = "disk_reserve=0";
+    service_stop_and_start(service);
+    wait_until_learned(&service->peer);
+    assert_int_equal(ask_learned(&service->peer), ENTRIES);
+    assert_json(json_object_get(ask(&service->peer, "daemon.state", "{}"), "faults"), "[]");
+}
+
 #define TEST_OF_MAP(name) cmocka_unit_test_setup_teardown(name, set_up_small_map, service_tear_down)
 #define TEST_OF_RESERVE(name)                                                                      \
     cmocka_unit_test_setup_teardown(name, set_up_reserve, service_tear_down)
+#define TEST_OF_MODEL(name)                                                                        \
+    cmocka_unit_test_setup_teardown(name, set_up_unstorable, service_tear_down)
 
 int main(void)
 {
@@ -219,6 +267,8 @@ int main(void)
         TEST_OF_RESERVE(below_the_reserve_nothing_is_changed),
         TEST_OF_RESERVE(below_the_reserve_the_same_is_still_the_same),
         TEST_OF_RESERVE(the_client_ends_with_try_again),
+        TEST_OF_MODEL(while_the_model_cannot_be_stored_questions_are_answered),
+        TEST_OF_MODEL(once_the_model_can_be_stored_the_rest_is_learned),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -150,12 +150,13 @@ void undertagd_start(struct undertagd *daemon)
     child_program("undertagd", program);
     undertagd_path(daemon, "notify", notify_path);
     (void)snprintf(notify_entry, sizeof notify_entry, "NOTIFY_SOCKET=%s", notify_path);
-    const char *argv[5 + 2 * (1 + UNDERTAGD_SETTINGS) + 3] = {program, "--home", daemon->home, "--socket",
-                                                        daemon->socket};
+    const char *argv[5 + 2 * (1 + UNDERTAGD_SETTINGS) + 3] = {program, "--home", daemon->home,
+                                                              "--socket", daemon->socket};
     size_t count = 5;
     bool says_rehearsal = false;
     for (size_t i = 0; i < UNDERTAGD_SETTINGS && daemon->settings[i]; i++) {
-        says_rehearsal = says_rehearsal || strncmp(daemon->settings[i], "rehearsal_share=", 16) == 0;
+        says_rehearsal =
+            says_rehearsal || strncmp(daemon->settings[i], "rehearsal_share=", 16) == 0;
     }
     if (!says_rehearsal && !daemon->config) { /* what it has had time for would make a difference */
         argv[count++] = "--set";

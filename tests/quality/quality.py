@@ -2,8 +2,8 @@
 """How good the proposals are: D and W through the daemon's real socket, next to a batch solver, and T.
 
 Files the first 80 % of a corpus, asks for the gaps of the last 20 % without their tags, and prints the figures
-beside those of the batch solver on the same split and of a daemon that does not correct for missing tags. The figures
-are defined in figures.py. T is W with tags hidden on purpose: see thinned.py.
+beside those of the daemon once it has rehearsed, of a daemon that does not correct for missing tags, and of the batch
+solver on the same split. The figures are defined in figures.py. T is W with tags hidden on purpose: see thinned.py.
 
 Ends with 0 when every floor is kept, 1 when one is missed, 69 when a corpus was skipped because it is not there (and
 no floor is missed), 70 when the daemon failed.
@@ -29,8 +29,16 @@ FLOORS = {
     "W": {("all", "P@1"): .882, ("all", "P@5"): .745, ("all", "PSP@5"): .400, ("all", "R@10"): .71,
           ("tail", "found@10"): .35},
 }
+# Once all items have been learned a second time. Neither of GAINED may be below what one pass has reached, besides.
+REHEARSED_FLOORS = {
+    "D": {("all", "P@1"): .870, ("all", "P@5"): .472, ("all", "PSP@5"): .712, ("tail", "found@10"): .57},
+    "W": {("all", "P@1"): .882, ("all", "P@5"): .748, ("all", "PSP@5"): .407, ("all", "R@10"): .715,
+          ("tail", "found@10"): .36},
+}
+GAINED = (("all", "P@1"), ("tail", "found@10"))
 CORPORA = (*FLOORS, "T")
 UNCORRECTED = "correction=off"
+REHEARSING = "rehearsal_share=1"
 
 
 def reference_path(name, options):
@@ -54,41 +62,81 @@ def chance_figures(split, ranked, chances):
     return by_band
 
 
+def reached(by_band, band, figure):
+    """A figure; None where there are no figures, or no pairs in the band."""
+    return by_band[band][figure] if by_band and by_band[band] else None
+
+
+def floor(by_band, place, least, of):
+    """One floor and whether it is kept; nothing was reached in a band without pairs."""
+    value = reached(by_band, *place)
+    return {"of": of, "band": place[0], "figure": place[1], "least": least, "reached": value,
+            "kept": value is not None and bool(value >= least)}
+
+
 def floors_of(name, by_band):
-    """Each floor of a corpus and whether it is kept; nothing was reached in a band without pairs."""
-    floors = []
-    for (band, figure), least in FLOORS[name].items():
-        reached = by_band[band] and by_band[band][figure]
-        floors.append({"band": band, "figure": figure, "least": least, "reached": reached,
-                       "kept": reached is not None and bool(reached >= least)})
-    return floors
+    """Each floor of a corpus after one pass."""
+    return [floor(by_band, place, least, "") for place, least in FLOORS[name].items()]
 
 
-def filed_and_asked(split, options, settings):
-    """A corpus through a daemon with these settings: what is proposed with which chances, and the seconds it took."""
-    with trial.daemon(options.daemon, settings) as connection:
-        filed_s, learned_s = trial.file_items(connection, split.train)
+def rehearsed_floors_of(name, by_band, one_pass):
+    """Each floor of a corpus that was rehearsed once: those of its own, and what one pass has reached."""
+    floors = REHEARSED_FLOORS[name].copy()
+    for place in GAINED:
+        floors[place] = max(floors[place], reached(one_pass, *place) or 0)
+    return [floor(by_band, place, least, "rehearsed once") for place, least in floors.items()]
+
+
+def filed_and_asked(split, connection):
+    """What is proposed with which chances once all was filed, and the seconds it took."""
+    filed_s, learned_s = trial.file_items(connection, split.train)
+    start = time.monotonic()
+    ranked, chances = trial.ask(connection, split.test, split.numbers)
+    return ranked, chances, {"filed_s": filed_s, "learned_s": learned_s, "asked_s": time.monotonic() - start}
+
+
+def figures_of(split, ranked):
+    """The figures of what was proposed."""
+    return figures.by_band(split.truth_test, ranked, split.counts, len(split.train))
+
+
+def rehearsed(split, options, folder):
+    """The figures once what was filed in the folder was rehearsed, and the seconds that took; None where the settings
+    say how much is rehearsed, and without figures where the daemon does not rehearse."""
+    if trial.says_rehearsal(options.set):
+        return None
+    with trial.running(options.daemon, folder, [*options.set, REHEARSING]) as connection:
         start = time.monotonic()
-        ranked, chances = trial.ask(connection, split.test, split.numbers)
-        asked_s = time.monotonic() - start
-    return ranked, chances, {"filed_s": filed_s, "learned_s": learned_s, "asked_s": asked_s}
+        if not trial.rehearse(connection, len(split.train)):
+            return {"figures": None}
+        seconds = time.monotonic() - start
+        ranked, _ = trial.ask(connection, split.test, split.numbers)
+    return {"figures": figures_of(split, ranked), "seconds": seconds}
 
 
 def uncorrected(split, options):
     """The figures of a daemon that does not correct; None where the settings say whether it does."""
     if any(setting.startswith("correction=") for setting in options.set):
         return None
-    ranked, _, _ = filed_and_asked(split, options, [*options.set, UNCORRECTED])
-    return figures.by_band(split.truth_test, ranked, split.counts, len(split.train))
+    with trial.daemon(options.daemon, [*options.set, UNCORRECTED]) as connection:
+        ranked, _, _ = filed_and_asked(split, connection)
+    return figures_of(split, ranked)
 
 
 def run(name, split, options):
-    """One corpus through the daemon, with the correction and without; all that is known about it afterwards."""
-    ranked, chances, seconds = filed_and_asked(split, options, options.set)
-    by_band = figures.by_band(split.truth_test, ranked, split.counts, len(split.train))
+    """One corpus through the daemon, then rehearsed, and without the correction; all that is known about it."""
+    with trial.home() as folder:
+        with trial.running(options.daemon, folder, options.set) as connection:
+            ranked, chances, seconds = filed_and_asked(split, connection)
+        again = rehearsed(split, options, folder)
+    by_band = figures_of(split, ranked)
+    floors = floors_of(name, by_band)
+    if again:
+        floors += rehearsed_floors_of(name, again["figures"], by_band)
     return {"corpus": split.sha256, "settings": options.set, "learned": len(split.train), "asked": len(split.test),
-            "tags": len(split.tags), **seconds, "undertag": by_band, "uncorrected": uncorrected(split, options),
-            "chances": chance_figures(split, ranked, chances), "floors": floors_of(name, by_band)}
+            "tags": len(split.tags), **seconds, "undertag": by_band, "rehearsed": again,
+            "uncorrected": uncorrected(split, options), "chances": chance_figures(split, ranked, chances),
+            "floors": floors}
 
 
 def trial_of(name, options):

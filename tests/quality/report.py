@@ -57,6 +57,7 @@ def floor_lines(floors):
     """What each floor asks and what was reached."""
     for floor in floors:
         name = floor["figure"] if floor["band"] == "all" else f"{floor['figure']} of the {floor['band']}"
+        name += f", {floor['of']}" if floor["of"] else ""
         verdict = "kept" if floor["kept"] else "MISSED"
         yield f"floor {name}: {shown(floor['least'])}, reached {shown(floor['reached'])}: {verdict}"
 
@@ -67,8 +68,12 @@ def lines(name, result):
            f"{result['tags']:,} tags, settings {' '.join(result['settings']) or 'default'}")
     yield (f"filed in {result['filed_s']:.1f} s, learned in {result['learned_s']:.1f} s, "
            f"asked in {result['asked_s']:.1f} s (this client's time included)")
+    rehearsed = result["rehearsed"] or {"figures": None}
+    if rehearsed["figures"]:
+        yield f"rehearsed once in {rehearsed['seconds']:.1f} s, after a restart"
+    again = {"rehearsed once": rehearsed["figures"]} if rehearsed["figures"] else {}
     uncorrected = {"uncorrected": result["uncorrected"]} if result["uncorrected"] else {}
-    yield from figure_table({"undertag": result["undertag"], **uncorrected,
+    yield from figure_table({"undertag": result["undertag"], **again, **uncorrected,
                              **{BATCH_NAMES[kind]: kept["figures"] for kind, kept in result["batch"].items()}})
     yield "found@10: share of all pairs in the top 10; the tail's is the figure 'tail'. Pairs: item and given tag."
     yield "macro R@10: mean over the tags of the share of their pairs found in the top 10."

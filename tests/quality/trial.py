@@ -14,6 +14,7 @@ import wire
 DEPTH = 20
 START_CAP_S = 30
 SETTLE_CAP_S = 900
+REHEARSAL_CAP_S = 300
 STOP_CAP_S = 120
 
 
@@ -44,26 +45,44 @@ def accepts(path, process):
 @contextlib.contextmanager
 def daemon(program, settings):
     """A daemon in a temporary home, with a connection to it; ended, and its home removed, afterwards."""
-    with tempfile.TemporaryDirectory(prefix="undertag-quality-") as folder:
-        path = os.path.join(folder, "socket")
-        command = [program, "--home", os.path.join(folder, "home"), "--socket", path]
-        # Unless asked for, nothing is rehearsed: what there is time for would make a difference.
-        if not any(setting.startswith("rehearsal_share=") for setting in settings):
-            settings = ["rehearsal_share=0", *settings]
-        for setting in settings:
-            command += ["--set", setting]
-        with open(os.path.join(folder, "log"), "w+b") as log, \
-                subprocess.Popen(command, stdin=subprocess.DEVNULL, stderr=log) as process:
-            try:
-                wait_for(lambda: accepts(path, process), START_CAP_S, "the start of the daemon")
-                with wire.Wire(path) as connection:
-                    yield connection
-                stop(process)
-            except Exception:
-                show_end(log)
-                raise
-            finally:
-                process.kill()
+    with home() as folder, running(program, folder, settings) as connection:
+        yield connection
+
+
+def home():
+    """A temporary folder for a daemon's home, for several runs one after the other."""
+    return tempfile.TemporaryDirectory(prefix="undertag-quality-")
+
+
+@contextlib.contextmanager
+def running(program, folder, settings):
+    """A run of a daemon with its home in the folder, with a connection to it; ended afterwards."""
+    path = os.path.join(folder, "socket")
+    with contextlib.suppress(FileNotFoundError):
+        os.remove(path)  # of a run before
+    command = [program, "--home", os.path.join(folder, "home"), "--socket", path]
+    # Unless asked for, nothing is rehearsed: what there is time for would make a difference.
+    if not says_rehearsal(settings):
+        settings = ["rehearsal_share=0", *settings]
+    for setting in settings:
+        command += ["--set", setting]
+    with open(os.path.join(folder, "log"), "w+b") as log, \
+            subprocess.Popen(command, stdin=subprocess.DEVNULL, stderr=log) as process:
+        try:
+            wait_for(lambda: accepts(path, process), START_CAP_S, "the start of the daemon")
+            with wire.Wire(path) as connection:
+                yield connection
+            stop(process)
+        except Exception:
+            show_end(log)
+            raise
+        finally:
+            process.kill()
+
+
+def says_rehearsal(settings):
+    """Whether the settings say how much is rehearsed."""
+    return any(setting.startswith("rehearsal_share=") for setting in settings)
 
 
 def stop(process):
@@ -90,6 +109,18 @@ def settle(connection):
         state = connection.call("daemon.state")
         return state["learned"] == state["seq"] and state["backlog"] == 0
     wait_for(settled, SETTLE_CAP_S, "learning all that was filed")
+
+
+def rehearse(connection, items):
+    """Waits until so many items have been rehearsed in one round; False where the daemon does not rehearse."""
+    if "rehearsal" not in connection.call("daemon.state"):
+        return False
+
+    def rehearsed():
+        rehearsal = connection.call("daemon.state")["rehearsal"]
+        return rehearsal["passes"] >= 1 and rehearsal["items"] >= items
+    wait_for(rehearsed, REHEARSAL_CAP_S, "rehearsing all that was filed")
+    return True
 
 
 def file_items(connection, items):

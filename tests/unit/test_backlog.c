@@ -351,6 +351,46 @@ static void a_failed_trainer_is_not_asked_to_keep_the_promise(void **state)
     backlog_wait_for_promise(fixture->backlog, 1000);
 }
 
+/* --- learning that waits --- */
+
+static void while_learning_waits_the_gate_is_open_and_no_longer(void **state)
+{
+    struct fixture *fixture = *state;
+    backlog_committed(fixture->backlog, 2, ROOM, 0);
+    waiter_start(&fixture->waiter, wait_for_room, fixture);
+    assert_waits(&fixture->waiter);
+    backlog_trainer_waits(fixture->backlog, true);
+    waiter_join(&fixture->waiter);
+    assert_true(fixture->returned == UINT64_MAX);
+    backlog_committed(fixture->backlog, 3, ROOM, 0);
+    assert_true(backlog_wait_for_room(fixture->backlog) == UINT64_MAX);
+    backlog_trainer_waits(fixture->backlog, false);
+    waiter_start(&fixture->waiter, wait_for_room, fixture);
+    assert_waits(&fixture->waiter);
+    backlog_learned(fixture->backlog, 2, ROOM, 0); /* the third fills the room again */
+    assert_waits(&fixture->waiter);
+    backlog_learned(fixture->backlog, 3, ROOM, 0);
+    waiter_join(&fixture->waiter);
+    assert_int_equal(fixture->returned, ROOM);
+}
+
+static void while_learning_waits_the_promise_is_not_waited_for(void **state)
+{
+    struct fixture *fixture = *state;
+    backlog_committed(fixture->backlog, 2, 100, 0);
+    fixture->now_ms = 1000;
+    waiter_start(&fixture->waiter, wait_for_promise, fixture);
+    assert_waits(&fixture->waiter);
+    backlog_trainer_waits(fixture->backlog, true);
+    waiter_join(&fixture->waiter);
+    backlog_wait_for_promise(fixture->backlog, 1000);
+    backlog_trainer_waits(fixture->backlog, false);
+    waiter_start(&fixture->waiter, wait_for_promise, fixture);
+    assert_waits(&fixture->waiter);
+    backlog_learned(fixture->backlog, 2, 100, 0);
+    waiter_join(&fixture->waiter);
+}
+
 /* --- stopping --- */
 
 static void stopping_wakes_everybody_and_nobody_waits_again(void **state)
@@ -415,6 +455,8 @@ int main(void)
         TEST(the_trainer_waits_for_work),
         TEST(a_failed_trainer_opens_the_gate),
         TEST(a_failed_trainer_is_not_asked_to_keep_the_promise),
+        TEST(while_learning_waits_the_gate_is_open_and_no_longer),
+        TEST(while_learning_waits_the_promise_is_not_waited_for),
         TEST(stopping_wakes_everybody_and_nobody_waits_again),
         TEST(stopping_wakes_the_trainer),
     };

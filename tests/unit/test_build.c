@@ -14,6 +14,9 @@
 #include "tests/unit/model_memory.h"
 #include "tests/unit/store_fixture.h"
 
+/* Far more than these items take. */
+static const uint64_t BUDGET_BYTES = 64U << 20U;
+
 struct building {
     struct fixture *store;
     struct options options;
@@ -47,7 +50,8 @@ static int try_open(struct building *building, uint64_t number, uint64_t moment)
                                             .options = &building->options,
                                             .key = {7, 8},
                                             .number = number,
-                                            .moment = moment};
+                                            .moment = moment,
+                                            .memory_bytes = BUDGET_BYTES};
     return build_open(&settings, &building->build, &building->error);
 }
 

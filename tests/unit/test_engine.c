@@ -298,27 +298,44 @@ static void a_model_of_an_older_format_is_learned_again(void **state)
                          kv_bytes_of(format_2, sizeof format_2));
 }
 
-/* Words are not loaded at a start, so that their damage is met when they are wanted. */
-static void a_damaged_word_is_told_to_who_asks_for_it_and_stops_learning(void **state)
+/* Words are not loaded at a start: the damage of one is met when it is wanted, here by log/3. */
+static void meet_a_damaged_word(struct opened *opened)
 {
-    struct opened *opened = *state;
-    struct asked asked;
-    char sentence[TROUBLE_BYTES];
     (void)FILE_ITEM(opened, "log/1", "schoonerwreckage", "casualties");
     (void)FILE_ITEM(opened, "log/2", "fog", "weather");
     wait_until_learned(opened, 2);
     close_home(opened);
     write_model(opened, "words", kv_bytes_of("schoonerwreckage", 16), kv_bytes_of("fog", 3));
     open_home(opened);
-    ask_draft(opened, "fog", &asked); /* what is whole is answered */
-    assert_int_equal(asked.count, 2);
+    assert_int_equal(try_ask_draft(opened, "fog"), 0); /* what is whole is answered */
     assert_int_equal(try_ask_draft(opened, "schoonerwreckage"), -EIO);
     (void)FILE_ITEM(opened, "log/3", "schoonerwreckage", "casualties");
-    assert_int_equal(try_ask_draft(opened, "fog"), -ENOMEM); /* no more, since it knows a half */
+}
+
+static void a_damaged_word_is_told_to_who_asks_and_stops_learning(void **state)
+{
+    struct opened *opened = *state;
+    char sentence[TROUBLE_BYTES];
+    meet_a_damaged_word(opened);
+    assert_int_equal(try_ask_draft(opened, "fog"), -EIO); /* no more, since it knows a half */
+    assert_int_equal(engine_read_model(opened->engine, copy_known, NULL), -EIO);
     troubles_read(engine_troubles(opened->engine), TROUBLE_LEARNING, sentence);
     assert_string_equal(sentence, "learning has stopped at change 2 (what was learned before "
                                   "cannot be read: a stored word of the model is damaged); "
                                   "restart the daemon to go on");
+}
+
+static void after_a_damaged_word_a_restart_learns_everything_again(void **state)
+{
+    struct opened *opened = *state;
+    struct asked again;
+    meet_a_damaged_word(opened);
+    (void)try_ask_draft(opened, "fog"); /* waits until it is met */
+    close_home(opened);
+    open_home(opened);
+    wait_until_learned(opened, 3);
+    ask_draft(opened, "schoonerwreckage", &again);
+    assert_int_equal(again.gaps[0].tag, tag_number(opened, "casualties"));
 }
 
 /* --- refusals --- */
@@ -468,7 +485,8 @@ int main(void)
         TEST(settings_that_learning_does_not_depend_on_have_nothing_learned_again),
         TEST(a_damaged_model_is_learned_again),
         TEST(a_model_of_an_older_format_is_learned_again),
-        TEST(a_damaged_word_is_told_to_who_asks_for_it_and_stops_learning),
+        TEST(a_damaged_word_is_told_to_who_asks_and_stops_learning),
+        TEST(after_a_damaged_word_a_restart_learns_everything_again),
         TEST(too_many_words_are_refused_and_change_nothing),
         TEST(a_refused_change_is_not_learned),
         TEST(a_home_in_use_is_refused),

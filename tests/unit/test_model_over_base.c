@@ -32,6 +32,16 @@ static void learn_stream(const struct learner *learner, int count)
     }
 }
 
+/* With nothing learned and nothing stored. */
+static struct learner *begin_anew(struct stored *stored)
+{
+    const struct model_settings settings = learner_settings();
+    memory_clear(stored->memory);
+    learner_renew(&stored->learner, &settings);
+    learner_read(&stored->learner, &stored->memory->base);
+    return &stored->learner;
+}
+
 static void begin_again(struct stored *stored)
 {
     const struct model_settings settings = learner_settings();
@@ -43,11 +53,8 @@ static void begin_again(struct stored *stored)
 static int set_up(void **state)
 {
     static struct stored stored;
-    const struct model_settings settings = learner_settings();
     stored.memory = memory_new();
-    learner_renew(&stored.learner, &settings);
-    learner_read(&stored.learner, &stored.memory->base);
-    learn_stream(&stored.learner, STORED_ITEMS);
+    learn_stream(begin_anew(&stored), STORED_ITEMS);
     entry_set(&stored.filed, DRAFT, TAGS(20));
     learner_change(&stored.learner, &stored.filed, NULL);
     memory_store(stored.memory, stored.learner.model);
@@ -101,9 +108,7 @@ static void lose_and_find_fog(struct stored *stored, struct moments moments)
     struct learner *const learners[] = {&stored->learner, &whole};
     const struct model_settings settings = learner_settings();
     struct entry entries[4];
-    memory_clear(stored->memory);
-    learner_renew(&stored->learner, &settings);
-    learner_read(&stored->learner, &stored->memory->base);
+    (void)begin_anew(stored);
     learner_renew(&whole, &settings);
     entry_set(&entries[0], "bell", TAGS(0, 1));
     entry_set(&entries[1], "fog", TAGS(1));
@@ -167,12 +172,8 @@ static void a_stored_word_goes_and_comes_again_as_new_after_that_was_stored(void
 static void what_is_to_be_stored_grows_with_what_is_learned_and_is_gone_when_it_is(void **state)
 {
     struct stored *stored = *state;
-    const struct model_settings settings = learner_settings();
     uint64_t changed[3];
-    learner_renew(&stored->learner, &settings);
-    uint64_t nothing = model_changed_bytes(stored->learner.model);
-    memory_clear(stored->memory);
-    learner_read(&stored->learner, &stored->memory->base);
+    uint64_t nothing = model_changed_bytes(begin_anew(stored)->model);
     for (size_t i = 0; i < 3; i++) {
         learn_stream(&stored->learner, 50);
         learner_file(&stored->learner, i == 0 ? "fog" : i == 1 ? "bell" : "horn", TAGS(1));
@@ -183,6 +184,20 @@ static void what_is_to_be_stored_grows_with_what_is_learned_and_is_gone_when_it_
     assert_true(changed[2] - nothing > 4096 * stored->memory->out.chunks);
     assert_true(stored->memory->out.chunks > 100);
     assert_int_equal(model_changed_bytes(stored->learner.model), nothing);
+}
+
+/* Five words of no tag, so without weights: 12 bytes each, and the term. */
+static void words_that_are_not_stored_are_among_what_is_to_be_stored(void **state)
+{
+    static const char *const WORDS[] = {"fog", "bell horn lamp oil wick"};
+    uint64_t changed[2];
+    for (size_t i = 0; i < 2; i++) {
+        const struct learner *learner = begin_anew(*state);
+        learner_file(learner, "fog", NO_TAGS);
+        learner_file(learner, WORDS[i], NO_TAGS);
+        changed[i] = model_changed_bytes(learner->model);
+    }
+    assert_true(changed[1] >= changed[0] + strlen(WORDS[1]) + 60);
 }
 
 static void a_model_read_from_its_base_has_nothing_to_store(void **state)
@@ -198,11 +213,7 @@ static void a_model_read_from_its_base_has_nothing_to_store(void **state)
 static void what_is_stored_is_let_go_of_and_nothing_else(void **state)
 {
     struct stored *stored = *state;
-    const struct model_settings settings = learner_settings();
-    struct learner *learner = &stored->learner;
-    learner_renew(learner, &settings);
-    memory_clear(stored->memory);
-    learner_read(learner, &stored->memory->base);
+    struct learner *learner = begin_anew(stored);
     learn_stream(learner, 300);
     struct model_size full = learner_size(learner);
     learner_trim(learner, 0, 0); /* nothing is stored yet */
@@ -470,6 +481,7 @@ int main(void)
         TEST(a_stored_word_goes_and_comes_again_as_new_before_it_is_stored),
         TEST(a_stored_word_goes_and_comes_again_as_new_after_that_was_stored),
         TEST(what_is_to_be_stored_grows_with_what_is_learned_and_is_gone_when_it_is),
+        TEST(words_that_are_not_stored_are_among_what_is_to_be_stored),
         TEST(a_model_read_from_its_base_has_nothing_to_store),
         TEST(what_is_stored_is_let_go_of_and_nothing_else),
         TEST(as_much_is_kept_as_there_is_room_for),

@@ -420,6 +420,16 @@ static void assert_held_up(struct training *training, const char *reason)
     assert_true(changed_bytes(training) <= LEAST_BUDGET_BYTES / 4 + ONE_ENTRY_BYTES);
 }
 
+/* Has the small one learn until it must store the model and cannot. */
+static void fill_disk(struct training *small)
+{
+    small->settings.memory_bytes = LEAST_BUDGET_BYTES;
+    file_many(small, MANY);
+    atomic_store(&disk_is_full, true);
+    start(small);
+    assert_held_up(small, "is full");
+}
+
 static void a_model_that_has_no_room_waits_for_a_larger_map_and_is_the_same(void **state)
 {
     struct pair *pair = *state;
@@ -453,17 +463,24 @@ static void learning_goes_on_when_the_disk_has_room_again(void **state)
     struct pair *pair = *state;
     struct training *small = pair->small;
     char sentence[TROUBLE_BYTES];
-    small->settings.memory_bytes = LEAST_BUDGET_BYTES;
-    file_many(small, MANY);
-    atomic_store(&disk_is_full, true);
-    start(small);
-    assert_held_up(small, "is full");
+    fill_disk(small);
     assert_int_equal(backlog_read(small->backlog).kept, 0);
     atomic_store(&disk_is_full, false);
-    assert_int_equal(learned(small), MANY);
+    (void)most_changed(small, MANY);
     troubles_read(&small->troubles, TROUBLE_KEEPING, sentence);
     assert_string_equal(sentence, "");
     assert_same_in_the_end(pair, MANY);
+}
+
+/* All is committed and promised at once, and neither who asks nor the writer waits for it. */
+static void while_the_model_cannot_be_stored_nobody_waits_for_learning(void **state)
+{
+    struct pair *pair = *state;
+    struct training *small = pair->small;
+    fill_disk(small);
+    assert_true(learned(small) < MANY);
+    assert_true(ask(small, "t3 w5 w77 w1200").count > 0);
+    assert_true(backlog_wait_for_room(small->backlog) == UINT64_MAX);
 }
 
 #define TEST(name) cmocka_unit_test_setup_teardown(name, pair_set_up, pair_tear_down)
@@ -476,6 +493,7 @@ int main(void)
         TEST(words_and_weights_keep_to_their_shares),
         TEST(a_model_that_has_no_room_waits_for_a_larger_map_and_is_the_same),
         TEST(learning_goes_on_when_the_disk_has_room_again),
+        TEST(while_the_model_cannot_be_stored_nobody_waits_for_learning),
     };
     return cmocka_run_group_tests_name("trainer and memory", tests, NULL, NULL);
 }

@@ -55,14 +55,45 @@ static void a_pair_that_counts_for_nothing_changes_nothing(void **state)
     assert_int_equal(weights_postings(fixture->weights), 0);
 }
 
+/* The tag's count is what it was when it was given last. */
+static void note_count(const struct fixture *fixture, uint32_t tag, uint32_t count)
+{
+    assert_int_equal(weights_restore_count(fixture->weights, tag, count), 0);
+}
+
 static void what_is_right_already_is_not_learned_again(void **state)
 {
     struct fixture *fixture = *state;
     fixture_put(fixture, 0, (const uint32_t[]){0}, (const float[]){2.5F}, 1); /* s = 1.5 */
+    note_count(fixture, 0, FIXTURE_COUNT);
     fixture_learn_one(fixture, 0, 0, 7.0);
     assert_near(fixture_score_of(fixture, 0, 0), 1.5, 0.0);
     assert_near((double)fixture_bias(fixture, 0).accumulator, 0.0, 0.0);
     assert_int_equal(weights_changed_tags(fixture->weights)->count, 0);
+}
+
+static void a_given_tag_s_count_is_noted_even_where_it_is_right_already(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture_put(fixture, 0, (const uint32_t[]){0}, (const float[]){2.5F}, 1); /* s = 1.5 */
+    note_count(fixture, 0, FIXTURE_COUNT - 1);
+    fixture_learn_one(fixture, 0, 0, 7.0);
+    assert_int_equal(weights_tag_count(fixture->weights, 0), FIXTURE_COUNT);
+    assert_int_equal(weights_changed_tags(fixture->weights)->count, 1);
+    assert_int_equal(weights_changed_tags(fixture->weights)->list[0], 0);
+    assert_near(fixture_score_of(fixture, 0, 0), 1.5, 0.0);
+    assert_near((double)fixture_bias(fixture, 0).accumulator, 0.0, 0.0);
+}
+
+/* Rivals are counted by the items that have them. */
+static void a_rival_s_count_is_left_alone(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture_put(fixture, 0, (const uint32_t[]){1}, (const float[]){0.5F}, 1); /* s = -.5 */
+    note_count(fixture, 1, 7);
+    fixture_learn_one(fixture, 0, 0, 1.0);
+    assert_true(fixture_bias(fixture, 1).accumulator > 0.0F);
+    assert_int_equal(weights_tag_count(fixture->weights, 1), 7);
 }
 
 /* Rounding never takes a weight back from where it was, nor further than a step beyond 1. */
@@ -169,6 +200,7 @@ static void a_bias_is_left_alone_where_there_is_nothing_to_learn(void **state)
     struct fixture *fixture = *state;
     fixture_put(fixture, 0, (const uint32_t[]){0}, (const float[]){2.0F}, 1); /* s = 1.5 */
     fixture_put_bias(fixture, 0, 0.5F);
+    note_count(fixture, 0, 3);
     learn_of_count(fixture, 0, 3);
     assert_near((double)fixture_bias(fixture, 0).value, 0.5, 0.0);
     assert_int_equal(weights_changed_tags(fixture->weights)->count, 0);
@@ -327,6 +359,8 @@ int main(void)
         weights_test(no_factor_carries_a_score_beyond_one),
         weights_test(a_pair_that_counts_for_nothing_changes_nothing),
         weights_test(what_is_right_already_is_not_learned_again),
+        weights_test(a_given_tag_s_count_is_noted_even_where_it_is_right_already),
+        weights_test(a_rival_s_count_is_left_alone),
         weights_test(the_same_example_again_comes_nearer_to_one),
         weights_test(the_word_that_weighs_more_in_the_item_speaks_louder),
         weights_test(the_bias_of_a_new_tag_does_not_rise_above_zero),

@@ -7,6 +7,7 @@
  */
 #include <assert.h>
 #include <errno.h>
+#include <malloc.h>
 #include <signal.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -269,6 +270,9 @@ int main(int argc, char **argv)
 {
     struct program program = {0};
     char error[COMMAND_LINE_ERROR_BYTES];
+    /* The threads share two heaps: one each would hold holes that nobody else can use. It may only
+     * fail for an argument that is none. */
+    (void)mallopt(M_ARENA_MAX, 2);
     int exit_code = command_line_read(argc, argv, &program.line, error);
     if (exit_code != 0) {
         return fail(exit_code, error);

@@ -24,7 +24,7 @@ import wire  # noqa: E402
 from lines import Lines  # noqa: E402
 
 EX_UNAVAILABLE, EX_SOFTWARE = 69, 70  # sysexits.h
-PARTS = ("daemon", "plain", "batch", "onevsrest", "reading", "latency", "clients", "large", "growth", "soak")
+PARTS = ("daemon", "plain", "batch", "onevsrest", "reading", "latency", "clients", "large", "growth", "restart", "soak")
 
 
 class Bench:
@@ -73,6 +73,10 @@ class Bench:
     def daemon(self, settings=()):
         """A daemon in an empty home of its own, to be used with `with`; it rehearses only if the settings say so."""
         return trial.daemon(os.path.join(self.build, "undertagd"), list(settings))
+
+    def daemon_in(self, folder, settings=()):
+        """A daemon in a folder that stays, so that it can be started there once more."""
+        return trial.daemon_in(folder, os.path.join(self.build, "undertagd"), list(settings))
 
 
 def run_part(bench, name):

@@ -12,7 +12,7 @@ import numpy as np
 import wire
 
 DEPTH = 20
-START_CAP_S = 30
+START_CAP_S, START_PAUSE_S = 30, 0.005
 SETTLE_CAP_S = 900
 STOP_CAP_S = 120
 
@@ -21,13 +21,13 @@ class TrialError(Exception):
     """The daemon did not do its part; the text says which."""
 
 
-def wait_for(condition, cap_s, what):
+def wait_for(condition, cap_s, what, pause_s=0.05):
     """Asks `condition` until it holds, for `cap_s` at most."""
     end = time.monotonic() + cap_s
     while not condition():
         if time.monotonic() > end:
             raise TrialError(f"{what} did not happen within {cap_s} s")
-        time.sleep(0.05)  # between two looks at the condition
+        time.sleep(pause_s)  # between two looks at the condition
 
 
 def accepts(path, process):
@@ -44,26 +44,33 @@ def accepts(path, process):
 @contextlib.contextmanager
 def daemon(program, settings):
     """A daemon in a temporary home, with a connection to it; ended, and its home removed, afterwards."""
-    with tempfile.TemporaryDirectory(prefix="undertag-quality-") as folder:
-        path = os.path.join(folder, "socket")
-        command = [program, "--home", os.path.join(folder, "home"), "--socket", path]
-        # Unless asked for, nothing is rehearsed: what there is time for would make a difference.
-        if not any(setting.startswith("rehearsal_share=") for setting in settings):
-            settings = ["rehearsal_share=0", *settings]
-        for setting in settings:
-            command += ["--set", setting]
-        with open(os.path.join(folder, "log"), "w+b") as log, \
-                subprocess.Popen(command, stdin=subprocess.DEVNULL, stderr=log) as process:
-            try:
-                wait_for(lambda: accepts(path, process), START_CAP_S, "the start of the daemon")
-                with wire.Wire(path) as connection:
-                    yield connection
-                stop(process)
-            except Exception:
-                show_end(log)
-                raise
-            finally:
-                process.kill()
+    with tempfile.TemporaryDirectory(prefix="undertag-quality-") as folder, \
+            daemon_in(folder, program, settings) as connection:
+        yield connection
+
+
+@contextlib.contextmanager
+def daemon_in(folder, program, settings):
+    """The same in a folder that stays, home and all: so it can be started there again."""
+    path = os.path.join(folder, "socket")
+    command = [program, "--home", os.path.join(folder, "home"), "--socket", path]
+    # Unless asked for, nothing is rehearsed: what there is time for would make a difference.
+    if not any(setting.startswith("rehearsal_share=") for setting in settings):
+        settings = ["rehearsal_share=0", *settings]
+    for setting in settings:
+        command += ["--set", setting]
+    with open(os.path.join(folder, "log"), "w+b") as log, \
+            subprocess.Popen(command, stdin=subprocess.DEVNULL, stderr=log) as process:
+        try:
+            wait_for(lambda: accepts(path, process), START_CAP_S, "the start of the daemon", START_PAUSE_S)
+            with wire.Wire(path) as connection:
+                yield connection
+            stop(process)
+        except Exception:
+            show_end(log)
+            raise
+        finally:
+            process.kill()
 
 
 def stop(process):

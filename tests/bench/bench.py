@@ -24,7 +24,7 @@ import wire  # noqa: E402
 from lines import Lines  # noqa: E402
 
 EX_UNAVAILABLE, EX_SOFTWARE = 69, 70  # sysexits.h
-PARTS = ("daemon", "plain", "batch", "onevsrest", "reading", "latency", "clients", "large", "growth")
+PARTS = ("daemon", "plain", "batch", "onevsrest", "reading", "latency", "clients", "large", "growth", "restart", "soak")
 
 
 class Bench:
@@ -32,7 +32,7 @@ class Bench:
 
     def __init__(self, options, folder):
         self.build, self.corpora, self.folder = options.build, options.corpora, folder
-        self.rounds, self.quick = options.rounds, options.quick
+        self.rounds, self.quick, self.minutes = options.rounds, options.quick, options.minutes
         self._splits, self._examples = {}, {}
 
     def corpus(self, name):
@@ -74,6 +74,10 @@ class Bench:
         """A daemon in an empty home of its own, to be used with `with`; it rehearses only if the settings say so."""
         return trial.daemon(os.path.join(self.build, "undertagd"), list(settings))
 
+    def daemon_in(self, folder, settings=()):
+        """A daemon in a folder that stays, so that it can be started there once more."""
+        return trial.running(os.path.join(self.build, "undertagd"), folder, list(settings))
+
 
 def run_part(bench, name):
     """The lines of one part; None where a corpus that it needs is not there."""
@@ -99,6 +103,7 @@ def read_options():
     parser.add_argument("--long", action="store_true", help="the parts that take long, too")
     parser.add_argument("--quick", action="store_true", help="a smaller top for the long parts")
     parser.add_argument("--rounds", type=int, default=3, help="how often a ratio is taken; the median is shown")
+    parser.add_argument("--minutes", type=float, default=20, help="how long the part soak goes on")
     parser.add_argument("--json", metavar="FILE", help="where the figures go, too")
     return parser.parse_args()
 

@@ -1,11 +1,15 @@
 """What a running daemon takes: memory as the system counts it and as the daemon says, and disk."""
 
 import os
+import shutil
 import socket
 import struct
+import subprocess
 import time
 
 FLUSHED_CAP_S = 120
+ENVIRONMENTS = ("store", "model")  # folders of the home
+READERS_HEADING = "Reader Table Status"  # of mdb_stat -r
 PARTS = ("dictionary", "weights", "counts", "worklist", "asking")  # of daemon.state's memory
 
 
@@ -18,8 +22,30 @@ def pid_of(connection):
 def anonymous_bytes(connection):
     """Memory that is the daemon's own: RssAnon, which leaves out what is mapped from files."""
     with open(f"/proc/{pid_of(connection)}/status", encoding="ascii") as file:
-        line = next(line for line in file if line.startswith("RssAnon:"))
+        line = next((line for line in file if line.startswith("RssAnon:")), None)
+    if line is None:
+        raise ValueError("the daemon has ended")
     return int(line.split()[1]) * 1024
+
+
+def descriptors(connection):
+    """How many descriptors the daemon has open."""
+    return len(os.listdir(f"/proc/{pid_of(connection)}/fd"))
+
+
+def stale_readers(connection):
+    """By environment, reader slots of processes that are no more; None without mdb_stat (lmdb-utils)."""
+    if not shutil.which("mdb_stat"):
+        return None
+    found = {}
+    for name in ENVIRONMENTS:
+        command = ["mdb_stat", "-r", os.path.join(home_of(connection), name)]
+        said = subprocess.run(command, check=False, stdout=subprocess.PIPE, text=True).stdout
+        if READERS_HEADING not in said:  # its status says nothing: it is 1 where all went well
+            raise ValueError(f"{' '.join(command)} said nothing of readers")
+        pids = [words[0] for words in map(str.split, said.splitlines()) if len(words) == 3 and words[0].isdigit()]
+        found[name] = sum(not os.path.exists(f"/proc/{pid}") for pid in pids)
+    return found
 
 
 def stated_bytes(state):
@@ -27,11 +53,15 @@ def stated_bytes(state):
     return sum(state["memory"][part] for part in PARTS)
 
 
+def home_of(connection):
+    """Where the daemon keeps things."""
+    return os.path.join(os.path.dirname(connection.socket.getpeername()), "home")
+
+
 def disk_bytes(connection):
     """What the home takes on disk, holes left out."""
-    home = os.path.join(os.path.dirname(connection.socket.getpeername()), "home")
     return sum(os.stat(os.path.join(folder, name)).st_blocks * 512
-               for folder, _, names in os.walk(home) for name in names)
+               for folder, _, names in os.walk(home_of(connection)) for name in names)
 
 
 def wait_flushed(connection):

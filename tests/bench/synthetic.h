@@ -6,7 +6,8 @@
  * share ln((k + 1)/k)/ln(n + 1). Each tag has words of its own, drawn once, and lends some of them
  * to its items: so there is something to learn. With `walk` every item also takes the next two tags
  * in a fixed order, so that all of them come to be used; without, the vocabulary grows as Zipf's
- * law has it.
+ * law has it. With `flat` the words that speak for nothing are drawn from the vocabulary alike, not
+ * by Zipf's law: then few items share a word, and nearly all of their weights are new.
  */
 #ifndef UNDERTAG_BENCH_SYNTHETIC_H
 #define UNDERTAG_BENCH_SYNTHETIC_H
@@ -22,8 +23,9 @@ enum {
     SYNTHETIC_WALK_TAGS = 2,
     SYNTHETIC_OWN_WORDS = 6,  /* of a tag */
     SYNTHETIC_LENT_WORDS = 3, /* of those, to an item that has the tag */
-    SYNTHETIC_WORDS = 12,     /* of an item, that speak for nothing */
-    SYNTHETIC_BYTES = 2048    /* an item takes less */
+    SYNTHETIC_WORDS = 12,     /* of an item, that speak for nothing, unless it is said otherwise */
+    SYNTHETIC_BYTES = 2048,   /* an item takes less, those words left out */
+    SYNTHETIC_WORD_BYTES = 9  /* a word takes at most, its space included */
 };
 
 struct synthetic {
@@ -31,6 +33,8 @@ struct synthetic {
     uint32_t words;
     uint32_t tags;
     bool walk;
+    bool flat;
+    uint32_t empty_words; /* of an item, that speak for nothing; 0: SYNTHETIC_WORDS */
 };
 
 /* The next of a sequence of 64 random bits (splitmix64: Steele, Lea, Flood, OOPSLA 2014). */
@@ -57,6 +61,13 @@ static inline uint32_t synthetic_own_word(const struct synthetic *synthetic, uin
 {
     uint64_t state = synthetic->seed ^ (((uint64_t)tag + 1) << 24) ^ which;
     return (uint32_t)(synthetic_bits(&state) % synthetic->words);
+}
+
+/* A word that speaks for nothing. */
+static inline uint32_t synthetic_empty_word(const struct synthetic *synthetic, uint64_t *state)
+{
+    return synthetic->flat ? (uint32_t)(synthetic_bits(state) % synthetic->words)
+                           : synthetic_zipf(state, synthetic->words);
 }
 
 struct synthetic_text {
@@ -93,15 +104,17 @@ static inline char *synthetic_item(const struct synthetic *synthetic, uint64_t i
 {
     uint32_t tags[SYNTHETIC_ZIPF_TAGS + SYNTHETIC_WALK_TAGS];
     uint64_t state = synthetic->seed + item * 0x2545f4914f6cdd1dU;
-    struct synthetic_text text = {.bytes = malloc(SYNTHETIC_BYTES)};
+    uint32_t empty_words = synthetic->empty_words ? synthetic->empty_words : SYNTHETIC_WORDS;
+    size_t capacity = SYNTHETIC_BYTES + (size_t)empty_words * SYNTHETIC_WORD_BYTES;
+    struct synthetic_text text = {.bytes = malloc(capacity)};
     if (!text.bytes) {
         return NULL;
     }
     size_t tag_count = synthetic_tags(synthetic, item, &state, tags);
-    text.length = (size_t)snprintf(text.bytes, SYNTHETIC_BYTES, "{\"id\":\"s%llu\",\"text\":\"",
+    text.length = (size_t)snprintf(text.bytes, capacity, "{\"id\":\"s%llu\",\"text\":\"",
                                    (unsigned long long)item);
-    for (int i = 0; i < SYNTHETIC_WORDS; i++) {
-        synthetic_put_word(&text, synthetic_zipf(&state, synthetic->words));
+    for (uint32_t i = 0; i < empty_words; i++) {
+        synthetic_put_word(&text, synthetic_empty_word(synthetic, &state));
     }
     for (size_t i = 0; i < tag_count; i++) {
         for (int j = 0; j < SYNTHETIC_LENT_WORDS; j++) {
@@ -110,10 +123,10 @@ static inline char *synthetic_item(const struct synthetic *synthetic, uint64_t i
         }
     }
     for (size_t i = 0; i < tag_count; i++) {
-        text.length += (size_t)snprintf(text.bytes + text.length, SYNTHETIC_BYTES - text.length,
+        text.length += (size_t)snprintf(text.bytes + text.length, capacity - text.length,
                                         "%s\"t%u\"", i == 0 ? "\",\"tags\":[" : ",", tags[i]);
     }
-    (void)snprintf(text.bytes + text.length, SYNTHETIC_BYTES - text.length, "]}"); /* it fits */
+    (void)snprintf(text.bytes + text.length, capacity - text.length, "]}"); /* it fits */
     return text.bytes;
 }
 

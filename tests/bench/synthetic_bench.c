@@ -3,37 +3,19 @@
  * every filing is acknowledged and all is learned; then it is asked about some that come later, to
  * see that there was something to learn.
  *
- *   synthetic_bench SOCKET FIRST END WORDS TAGS walk|grow
+ *   synthetic_bench SOCKET FIRST END WORDS TAGS walk|grow|fill
+ *
+ * `fill` makes many weights in little time: items of many words that few others have.
  */
 #include <string.h>
 
-#include "tests/bench/phase.h"
-#include "tests/bench/synthetic.h"
+#include "tests/bench/synthetic_phase.h"
 
 enum {
     SEED = 1911,
-    QUESTIONS = 500
+    QUESTIONS = 500,
+    FILL_WORDS = 200 /* of an item */
 };
-
-static int make_phase(const struct synthetic *synthetic, uint64_t first, uint64_t end,
-                      struct phase *ret_phase)
-{
-    struct phase phase = {.method = "item.file", .window = PHASE_WINDOW};
-    phase.params = calloc(end - first + 1, sizeof *phase.params);
-    for (uint64_t item = first; phase.params && item < end; item++) {
-        phase.params[phase.count] = synthetic_item(synthetic, item);
-        if (!phase.params[phase.count]) {
-            break;
-        }
-        phase.count++;
-    }
-    if (phase.count < end - first) {
-        phase_deinit(&phase);
-        return -1;
-    }
-    *ret_phase = phase;
-    return 0;
-}
 
 static bool has_tag(const json_t *tags, const json_t *tag)
 {
@@ -68,7 +50,7 @@ static double first_right(struct wire *wire, const struct synthetic *synthetic, 
 {
     struct phase later = {0};
     int hits = 0;
-    if (make_phase(synthetic, end, end + QUESTIONS, &later) < 0) {
+    if (phase_of_synthetic(synthetic, end, end + QUESTIONS, &later) < 0) {
         return failure_memory(failure);
     }
     for (size_t i = 0; i < later.count && failure->code == 0; i++) {
@@ -83,7 +65,7 @@ static int measure(struct wire *wire, const struct synthetic *synthetic, uint64_
 {
     struct phase filing = {0};
     struct wire_answer state = {0};
-    if (make_phase(synthetic, first, end, &filing) < 0) {
+    if (phase_of_synthetic(synthetic, first, end, &filing) < 0) {
         return failure_memory(failure);
     }
     double begun = bench_now_s();
@@ -108,13 +90,17 @@ int main(int argc, char **argv)
     struct wire *wire = NULL;
     struct failure failure = {0};
     if (argc != 7) {
-        (void)fprintf(stderr, "usage: synthetic_bench SOCKET FIRST END WORDS TAGS walk|grow\n");
+        (void)fprintf(stderr,
+                      "usage: synthetic_bench SOCKET FIRST END WORDS TAGS walk|grow|fill\n");
         return EXIT_FAILURE;
     }
+    bool fill = strcmp(argv[6], "fill") == 0;
     const struct synthetic synthetic = {.seed = SEED,
                                         .words = (uint32_t)strtoul(argv[4], NULL, 10),
                                         .tags = (uint32_t)strtoul(argv[5], NULL, 10),
-                                        .walk = strcmp(argv[6], "walk") == 0};
+                                        .walk = fill || strcmp(argv[6], "walk") == 0,
+                                        .flat = fill,
+                                        .empty_words = fill ? FILL_WORDS : 0};
     if (wire_open(argv[1], &wire, &failure) == 0) {
         (void)measure(wire, &synthetic, strtoull(argv[2], NULL, 10), strtoull(argv[3], NULL, 10),
                       &failure); /* the failure tells */

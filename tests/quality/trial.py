@@ -12,7 +12,7 @@ import numpy as np
 import wire
 
 DEPTH = 20
-START_CAP_S = 30
+START_CAP_S, START_PAUSE_S = 30, 0.005
 SETTLE_CAP_S = 900
 REHEARSAL_CAP_S = 300
 STOP_CAP_S = 120
@@ -22,13 +22,13 @@ class TrialError(Exception):
     """The daemon did not do its part; the text says which."""
 
 
-def wait_for(condition, cap_s, what):
+def wait_for(condition, cap_s, what, pause_s=0.05):
     """Asks `condition` until it holds, for `cap_s` at most."""
     end = time.monotonic() + cap_s
     while not condition():
         if time.monotonic() > end:
             raise TrialError(f"{what} did not happen within {cap_s} s")
-        time.sleep(0.05)  # between two looks at the condition
+        time.sleep(pause_s)  # between two looks at the condition
 
 
 def accepts(path, process):
@@ -69,7 +69,7 @@ def running(program, folder, settings):
     with open(os.path.join(folder, "log"), "w+b") as log, \
             subprocess.Popen(command, stdin=subprocess.DEVNULL, stderr=log) as process:
         try:
-            wait_for(lambda: accepts(path, process), START_CAP_S, "the start of the daemon")
+            wait_for(lambda: accepts(path, process), START_CAP_S, "the start of the daemon", START_PAUSE_S)
             with wire.Wire(path) as connection:
                 yield connection
             stop(process)

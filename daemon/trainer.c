@@ -12,60 +12,33 @@
 #include "daemon/trainer.h"
 
 #include <errno.h>
-#include <pthread.h>
+#include <malloc.h>
 #include <stdlib.h>
 #include <string.h>
 
-#include "daemon/change_reader.h"
 #include "daemon/clock.h"
 #include "daemon/learner/model_parts.h"
 #include "daemon/log.h"
-#include "daemon/memory_shares.h"
-#include "daemon/model_base.h"
 #include "daemon/sync.h"
+#include "daemon/trainer_private.h"
 
 enum {
-    REHEARSAL_US = 1000, /* then it looks for changes again */
     CHANGES_A_VIEW = 64,
     IDLE_MS = 1000,
     HELD_BACK_MS = 50,
     TRY_AGAIN_MS = 5000,
-    FINISH_MS = 3000,      /* the longest time that stopping spends on overwriting */
-    FLUSH_SHARE = 10,      /* storing takes a tenth of the time at most */
-    SCRUB_PAGES = 1024,    /* overwritten at a time */
-    RESCORED_A_ROUND = 16, /* items of the worklist, before it looks for changes again */
+    FINISH_MS = 3000,   /* the longest time that stopping spends on overwriting */
+    FLUSH_SHARE = 10,   /* storing takes a tenth of the time at most */
+    SCRUB_PAGES = 1024, /* overwritten at a time */
+    SMALL_BUDGET = 256 << 20,
     ROUND_LIMIT_US = 20000 /* a view that has been open this long is given up */
-};
-
-struct trainer {
-    struct trainer_settings settings;
-    char text[MODEL_STORE_SETTINGS_BYTES]; /* the origin's, once the model is a rebuilt one */
-    pthread_t thread;
-    struct change_reader *reader;
-    struct model_scratch *scratch;
-    struct model_base base; /* entered for a round */
-    struct memory_shares shares;
-    uint64_t learned;      /* this thread's own copy */
-    uint64_t kept;         /* the seq of the stored model */
-    uint64_t stored_at_us; /* when it was stored, or tried, last */
-    uint64_t storing_us;   /* how long that took */
-    bool rescore_due;      /* the model has changed since there was nothing to score again */
-    bool idly_changed;     /* by scoring again or rehearsal, since the model was stored */
-    bool rehearse_due;
-    uint64_t rest_until_us; /* rehearsal takes no more than its share */
-    bool scrub_due;
-    uint64_t scrub_wait_ms; /* before it is gone on with */
-    size_t scrub_left;      /* pages, when it was last looked at */
-    bool failed;
-    bool store_failed; /* when the model was to be stored last */
-    bool waits;        /* until it can be stored */
-    bool is_damaged;   /* what is stored of the model */
 };
 
 /* --- one change ---------------------------------------------------------------------------------
  */
 
-static int fail_to_learn(struct trainer *trainer, int code, uint64_t seq, struct store_error *error)
+int trainer_fail_to_learn(struct trainer *trainer, int code, uint64_t seq,
+                          struct store_error *error)
 {
     if (code == -ENOMEM) {
         return store_fail(error, STORE_NO_MEMORY, "there is no memory to learn change %llu",
@@ -98,7 +71,7 @@ static int learn_change(struct trainer *trainer, struct store_view *view, uint64
     }
     shared_model_unlock(shared);
     *ret_cost = read.cost;
-    return code == 0 ? STORE_OK : fail_to_learn(trainer, code, seq, error);
+    return code == 0 ? STORE_OK : trainer_fail_to_learn(trainer, code, seq, error);
 }
 
 static void wait_for_store(struct trainer *trainer, const struct store_error *error)
@@ -124,15 +97,13 @@ static void share_memory(struct trainer *trainer)
     trainer->shares = memory_shares_of(settings->memory_bytes, taken);
 }
 
-/* Whether the model must be stored before more is learned. */
-static bool is_full(const struct trainer *trainer)
+bool trainer_is_full(const struct trainer *trainer)
 {
     return model_changed_bytes(trainer->settings.shared->model) > trainer->shares.changed;
 }
 
-/* Opens what a round reads. The model and its store fit together until end_round. */
-static int begin_round(struct trainer *trainer, struct store_view **ret_view,
-                       struct store_error *error)
+int trainer_begin_round(struct trainer *trainer, struct store_view **ret_view,
+                        struct store_error *error)
 {
     int code = store_read(trainer->settings.store, ret_view, error);
     if (code == STORE_OK) {
@@ -143,7 +114,7 @@ static int begin_round(struct trainer *trainer, struct store_view **ret_view,
     return code;
 }
 
-static void end_round(struct trainer *trainer, struct store_view *view)
+void trainer_end_round(struct trainer *trainer, struct store_view *view)
 {
     model_base_leave(&trainer->base);
     store_end(view);
@@ -153,7 +124,7 @@ static void end_round(struct trainer *trainer, struct store_view *view)
 static int learn_some(struct trainer *trainer, uint64_t last, struct store_error *error)
 {
     struct store_view *view = NULL;
-    int code = begin_round(trainer, &view, error);
+    int code = trainer_begin_round(trainer, &view, error);
     if (code != STORE_OK) {
         wait_for_store(trainer, error); /* no change was skipped */
         return STORE_OK;
@@ -169,11 +140,11 @@ static int learn_some(struct trainer *trainer, uint64_t last, struct store_error
         uint64_t after_us = clock_steady_us();
         trainer->learned++;
         backlog_learned(trainer->settings.backlog, trainer->learned, cost, after_us - before_us);
-        if (after_us - begun_us > ROUND_LIMIT_US || is_full(trainer)) {
+        if (after_us - begun_us > ROUND_LIMIT_US || trainer_is_full(trainer)) {
             break;
         }
     }
-    end_round(trainer, view);
+    trainer_end_round(trainer, view);
     if (code == STORE_OK) {
         troubles_end(trainer->settings.troubles, TROUBLE_LEARNING);
     }
@@ -187,7 +158,7 @@ static bool is_store_due(const struct trainer *trainer)
 {
     uint64_t waited_us = clock_steady_us() - trainer->stored_at_us;
     uint64_t changes = trainer->learned - trainer->kept + (trainer->idly_changed ? 1 : 0);
-    if (is_full(trainer)) {
+    if (trainer_is_full(trainer)) {
         return !trainer->store_failed || waited_us >= IDLE_MS * 1000ULL;
     }
     return changes > 0 && waited_us >= FLUSH_SHARE * trainer->storing_us &&
@@ -214,6 +185,11 @@ static void store_model(struct trainer *trainer)
     shared_model_write(trainer->settings.shared);
     model_clean(trainer->settings.shared->model);
     shared_model_unlock(trainer->settings.shared);
+    /* The pages that storing took lie in holes now; with a small budget they are a good part of it.
+     */
+    if (trainer->settings.memory_bytes <= SMALL_BUDGET) {
+        (void)malloc_trim(0); /* says only whether there was something */
+    }
     troubles_end(trainer->settings.troubles, TROUBLE_KEEPING);
     trainer->kept = trainer->learned;
     trainer->idly_changed = false;
@@ -243,129 +219,10 @@ static void scrub(struct trainer *trainer)
     trainer->scrub_due = left > 0;
 }
 
-/* --- the worklist -------------------------------------------------------------------------------
- */
-
-/* Scores one item again; an entry whose item cannot be read any more leaves the worklist. */
-static int rescore_item(struct trainer *trainer, struct store_view *view, uint64_t number,
-                        struct store_error *error)
-{
-    struct shared_model *shared = trainer->settings.shared;
-    struct worklist_entry entry;
-    const struct model_item *item = NULL;
-    int code = change_reader_item(trainer->reader, view, number, &item, error);
-    if (code != STORE_OK) {
-        return code;
-    }
-    /* Nobody else changes the model: scoring needs no lock. */
-    int result = item ? model_rescore(shared->model, item, trainer->scratch, &entry) : 0;
-    if (result == 0) {
-        const struct base *base = &trainer->base.base;
-        shared_model_write(shared);
-        result = item ? model_relist(shared->model, base, &entry)
-                      : model_delist(shared->model, base, number);
-        shared_model_unlock(shared);
-    }
-    return result == 0 ? STORE_OK : fail_to_learn(trainer, result, number, error);
-}
-
-/* Scores again, while there is time, what the model has outgrown; says whether there is more. */
-static bool rescore_some(struct trainer *trainer)
-{
-    struct store_error error = {0};
-    struct store_view *view = NULL;
-    if (begin_round(trainer, &view, &error) != STORE_OK) {
-        return false; /* learning will tell, if it lasts */
-    }
-    uint64_t number = 0;
-    int next = 0;
-    int code = STORE_OK;
-    for (size_t i = 0; i < RESCORED_A_ROUND && code == STORE_OK && next == 0; i++) {
-        next = model_next_stale(trainer->settings.shared->model, &trainer->base.base, &number);
-        if (next == 0) {
-            code = rescore_item(trainer, view, number, &error);
-            trainer->idly_changed = true;
-        }
-    }
-    end_round(trainer, view);
-    return code == STORE_OK && next == 0;
-}
-
-/* --- rehearsal ----------------------------------------------------------------------------------
- */
-
-/* Whose turn it is; -ENOENT for nobody's. */
-static int next_rehearsal(struct trainer *trainer, uint64_t *ret_number)
-{
-    struct shared_model *shared = trainer->settings.shared;
-    shared_model_write(shared);
-    int result = model_next_rehearsal(shared->model, &trainer->base.base, ret_number);
-    shared_model_unlock(shared);
-    return result;
-}
-
-static int rehearse_item(struct trainer *trainer, struct store_view *view, uint64_t number,
-                         struct store_error *error)
-{
-    struct shared_model *shared = trainer->settings.shared;
-    const struct model_item *item = NULL;
-    int code = change_reader_item(trainer->reader, view, number, &item, error);
-    if (code != STORE_OK) {
-        return code;
-    }
-    int result = 0;
-    shared_model_write(shared);
-    if (item) {
-        result = model_rehearse(shared->model, item, trainer->scratch);
-        model_trim(shared->model, trainer->shares.dictionary, trainer->shares.weights);
-        shared->broken = result;
-    } else {
-        model_skip_rehearsal(shared->model, number);
-    }
-    shared_model_unlock(shared);
-    return result == 0 ? STORE_OK : fail_to_learn(trainer, result, number, error);
-}
-
-/* Rehearses for a moment, and rests for as long as its share asks for. Says in *ret_more whether
- * there is more. */
-static int rehearse_some(struct trainer *trainer, bool *ret_more, struct store_error *error)
-{
-    struct store_view *view = NULL;
-    uint64_t begun_us = clock_steady_us();
-    uint64_t now_us = begun_us;
-    uint64_t number = 0;
-    int next = 0;
-    *ret_more = false;
-    if (begin_round(trainer, &view, error) != STORE_OK) {
-        *error = (struct store_error){0}; /* learning will tell, if it lasts */
-        return STORE_OK;
-    }
-    int code = STORE_OK;
-    while (code == STORE_OK && next == 0 && now_us - begun_us < REHEARSAL_US && !is_full(trainer)) {
-        next = next_rehearsal(trainer, &number);
-        if (next == 0) {
-            code = rehearse_item(trainer, view, number, error);
-            trainer->idly_changed = true;
-        }
-        now_us = clock_steady_us();
-    }
-    end_round(trainer, view);
-    double share = trainer->settings.rehearsal_share;
-    trainer->rest_until_us = now_us + (uint64_t)((double)(now_us - begun_us) * (1.0 / share - 1.0));
-    *ret_more = next == 0;
-    return code;
-}
-
-static bool may_rehearse(const struct trainer *trainer)
-{
-    return trainer->rehearse_due && !trainer->rescore_due && !is_full(trainer) &&
-           clock_steady_us() >= trainer->rest_until_us;
-}
-
 /* --- the thread ---------------------------------------------------------------------------------
  */
 
-static void fail(struct trainer *trainer, const struct store_error *error)
+void trainer_fail(struct trainer *trainer, const struct store_error *error)
 {
     struct store_error reason = {0};
     trainer->failed = true;
@@ -436,32 +293,12 @@ static void finish_scrubbing(struct trainer *trainer)
 /* What was learned could not be stored, and there is no room for more. */
 static bool must_wait(struct trainer *trainer)
 {
-    bool waits = is_full(trainer);
+    bool waits = trainer_is_full(trainer);
     if (waits != trainer->waits) {
         trainer->waits = waits;
         backlog_trainer_waits(trainer->settings.backlog, waits);
     }
     return waits;
-}
-
-/* What can be done while there is nothing to learn; anything learned makes all of it due. */
-static void work_idly(struct trainer *trainer, bool is_idle)
-{
-    struct store_error error = {0};
-    if (trainer->failed || !is_idle) {
-        trainer->rescore_due = !trainer->failed;
-        trainer->rehearse_due = !trainer->failed && trainer->settings.rehearsal_share > 0.0;
-        return;
-    }
-    if (is_full(trainer)) {
-        return;
-    }
-    if (trainer->rescore_due) {
-        trainer->rescore_due = rescore_some(trainer);
-    } else if (may_rehearse(trainer) &&
-               rehearse_some(trainer, &trainer->rehearse_due, &error) != STORE_OK) {
-        fail(trainer, &error);
-    }
 }
 
 static void *run(void *argument)
@@ -477,9 +314,9 @@ static void *run(void *argument)
         if (must_wait(trainer)) {
             backlog_pause(backlog, IDLE_MS);
         } else if (!is_idle && learn_some(trainer, last, &error) != STORE_OK) {
-            fail(trainer, &error);
+            trainer_fail(trainer, &error);
         }
-        work_idly(trainer, is_idle);
+        trainer_work_idly(trainer, is_idle);
         take_over(trainer);
         if (is_store_due(trainer) && !trainer->failed) {
             store_model(trainer);

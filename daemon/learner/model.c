@@ -20,10 +20,11 @@ static const double UNSHARED_WORD_SHARE = 0.5;
 static const double AGREEMENT_LEAST_CHANCE = 0.02;
 
 /* What is changed takes a page of the store while it is stored, and a chunk itself another half.
- * Words are small: all together they take not much more pages than they fill. */
+ * Words and tags are small: all together they take not much more pages than they fill. */
 static const uint64_t PAGE_BYTES = 4096;
 static const uint64_t CHANGED_CHUNK_BYTES = 6144;
 static const uint64_t WORD_BYTES = 128;
+static const uint64_t TAG_BYTES = 96;
 
 /*
  * A scratch may outlive its model, and the next model may lie where that one lay: each begins its
@@ -277,12 +278,20 @@ void model_trim(struct model *model, uint64_t dictionary_most, uint64_t weights_
     weights_trim(model->weights, weights_most);
 }
 
+/* Pages that so many small records lie in, of which all together take so many bytes. */
+static uint64_t pages_of(uint64_t changed, uint64_t all_bytes)
+{
+    return changed * PAGE_BYTES < all_bytes ? changed * PAGE_BYTES : all_bytes;
+}
+
 uint64_t model_changed_bytes(const struct model *model)
 {
-    uint64_t words = dictionary_changed_count(model->dictionary) * PAGE_BYTES;
-    uint64_t all_words = dictionary_size(model->dictionary) * WORD_BYTES;
+    uint64_t words = dictionary_changed_count(model->dictionary);
+    uint64_t tags = weights_changed_tags(model->weights)->count;
     return weights_changed_count(model->weights) * CHANGED_CHUNK_BYTES +
-           worklist_bytes(model->worklist) + (words < all_words ? words : all_words);
+           2 * worklist_bytes(model->worklist) + /* in memory, and in pages */
+           pages_of(words, dictionary_size(model->dictionary) * WORD_BYTES) +
+           pages_of(tags, model->tag_count * TAG_BYTES);
 }
 
 void model_measure(const struct model *model, struct model_size *ret_size)

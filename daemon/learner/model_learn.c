@@ -181,7 +181,8 @@ double model_given_factor(struct model *model, uint32_t tag, bool is_examined_pa
     return factor * (double)model->factor_count / model->factor_sum;
 }
 
-double model_again_factor(const struct model *model, uint32_t tag, bool is_examined_pair)
+/* The same of a pair that has been counted before. */
+static double again_factor(const struct model *model, uint32_t tag, bool is_examined_pair)
 {
     double factor = plain_factor(model, tag, is_examined_pair);
     return model->settings.even_out && model->factor_count > 0
@@ -213,7 +214,7 @@ double model_step(const struct model *model)
 static const double REHEARSAL_PART_SMALL = 1.0 / 3.0;
 static const double REHEARSAL_PART_LARGE = 0.2;
 
-double model_rehearsal_step(const struct model *model)
+static double rehearsal_step(const struct model *model)
 {
     bool is_large = model->tag_count >= LARGE_VOCABULARY;
     return model_step(model) * (is_large ? REHEARSAL_PART_LARGE : REHEARSAL_PART_SMALL);
@@ -221,7 +222,7 @@ double model_rehearsal_step(const struct model *model)
 
 /* The item's tags, as each lane counts them: the shadow learns what everybody would, that every
  * pair counts once. */
-static int fill_given(struct model *model, const struct model_item *item,
+static int fill_given(struct model *model, const struct model_item *item, bool again,
                       struct model_scratch *scratch)
 {
     if (GROW(&scratch->given, &scratch->given_capacity, item->tag_count) < 0) {
@@ -229,7 +230,8 @@ static int fill_given(struct model *model, const struct model_item *item,
     }
     for (size_t i = 0; i < item->tag_count; i++) {
         uint32_t tag = item->tags[i];
-        double factor = model_given_factor(model, tag, is_examined(item, tag));
+        double factor = again ? again_factor(model, tag, is_examined(item, tag))
+                              : model_given_factor(model, tag, is_examined(item, tag));
         scratch->given[i] =
             (struct weights_given){.tag = tag,
                                    .tag_count = model->tags[tag].count,
@@ -238,16 +240,15 @@ static int fill_given(struct model *model, const struct model_item *item,
     return 0;
 }
 
-/* Learns the item in all lanes; what that moves of the entry's pairs becomes their own share. */
-static int learn_weights(struct model *model, const struct model_item *item,
-                         struct worklist_entry *entry, struct model_scratch *scratch)
+int model_learn_weights(struct model *model, const struct model_item *item, bool again,
+                        struct worklist_entry *entry, struct model_scratch *scratch)
 {
     uint32_t watched[WORKLIST_GAPS];
     float moves[WORKLIST_GAPS];
     for (uint32_t i = 0; i < entry->pair_count; i++) {
         watched[i] = entry->pairs[i].tag;
     }
-    if (fill_given(model, item, scratch) < 0) {
+    if (fill_given(model, item, again, scratch) < 0) {
         return -ENOMEM;
     }
     const struct weights_example example = {.number = ++model->examples,
@@ -256,7 +257,8 @@ static int learn_weights(struct model *model, const struct model_item *item,
                                             .lanes = model_lanes(model),
                                             .given = scratch->given,
                                             .given_count = item->tag_count,
-                                            .step = model_step(model),
+                                            .step =
+                                                again ? rehearsal_step(model) : model_step(model),
                                             .watched = watched,
                                             .watched_count = entry->pair_count,
                                             .moves = moves};
@@ -319,7 +321,7 @@ static int learn_item(struct model *model, const struct model_item *item,
         result = take_stock(model, item, replaced, scratch, &entry);
     }
     if (result == 0) {
-        result = learn_weights(model, item, &entry, scratch);
+        result = model_learn_weights(model, item, false, &entry, scratch);
     }
     if (result == 0 && replaced) {
         result = worklist_remove(model->worklist, scratch->base, replaced->number);

@@ -168,14 +168,17 @@ int model_score_words(const struct model *model, const struct feature *features,
  * both relative to their running mean. */
 double model_given_factor(struct model *model, uint32_t tag, bool is_examined);
 
-/* The same of a pair that has been counted before. */
-double model_again_factor(const struct model *model, uint32_t tag, bool is_examined);
-
 /* Lanes of the weights that learn what items have. */
 static inline size_t model_lanes(const struct model *model)
 {
     return model->settings.shadow ? WEIGHTS_LANES : 1;
 }
+
+/* Learns the item just scored, for the first time or again (rehearsal), in all lanes; what that
+ * moves of the entry's pairs becomes their own share. Returns 0 or -ENOMEM. */
+int model_learn_weights(struct model *model, const struct model_item *item, bool again,
+                        struct worklist_entry *entry, struct model_scratch *scratch)
+    __attribute__((warn_unused_result));
 
 /* Brings the postings of the words just weighed into memory and scores them in all lanes. Returns
  * 0, -ENOMEM or -EIO. */
@@ -184,7 +187,6 @@ int model_score_lanes(struct model *model, struct model_scratch *scratch)
 
 /* η for the next example. */
 double model_step(const struct model *model);
-double model_rehearsal_step(const struct model *model);
 
 /* --- model_mark: the item at hand --- */
 

@@ -7,7 +7,6 @@
  */
 #include <errno.h>
 
-#include "daemon/grow.h"
 #include "daemon/learner/model.h"
 #include "daemon/learner/model_private.h"
 
@@ -54,51 +53,6 @@ struct model_rehearsal model_rehearsal(const struct model *model)
     return model->rehearsal;
 }
 
-/* The item's tags, with factors that leave the running mean as it is. */
-static int fill_given(const struct model *model, const struct model_item *item,
-                      struct model_scratch *scratch)
-{
-    if (GROW(&scratch->given, &scratch->given_capacity, item->tag_count) < 0) {
-        return -ENOMEM;
-    }
-    for (size_t i = 0; i < item->tag_count; i++) {
-        uint32_t tag = item->tags[i];
-        bool is_examined = model_holds(item->examined, item->examined_count, tag);
-        scratch->given[i] = (struct weights_given){
-            .tag = tag,
-            .tag_count = model->tags[tag].count,
-            .factors = {[WEIGHTS_MAIN] = model_again_factor(model, tag, is_examined),
-                        [WEIGHTS_SHADOW] = 1.0}};
-    }
-    return 0;
-}
-
-/* Learns it, and adds what that moves to the own shares of the entry's pairs. */
-static int learn_again(struct model *model, const struct model_item *item,
-                       struct worklist_entry *entry, struct model_scratch *scratch)
-{
-    uint32_t watched[WORKLIST_GAPS];
-    float moves[WORKLIST_GAPS];
-    for (uint32_t i = 0; i < entry->pair_count; i++) {
-        watched[i] = entry->pairs[i].tag;
-    }
-    const struct weights_example example = {.number = ++model->examples,
-                                            .x = scratch->x,
-                                            .count = scratch->x_count,
-                                            .lanes = model_lanes(model),
-                                            .given = scratch->given,
-                                            .given_count = item->tag_count,
-                                            .step = model_rehearsal_step(model),
-                                            .watched = watched,
-                                            .watched_count = entry->pair_count,
-                                            .moves = moves};
-    int result = weights_learn(model->weights, &example, scratch->weights);
-    for (uint32_t i = 0; i < entry->pair_count && result == 0; i++) {
-        entry->pairs[i].own += moves[i];
-    }
-    return result;
-}
-
 int model_rehearse(struct model *model, const struct model_item *item,
                    struct model_scratch *scratch)
 {
@@ -113,14 +67,11 @@ int model_rehearse(struct model *model, const struct model_item *item,
     if (result == 0) {
         result = model_score_lanes(model, scratch);
     }
-    if (result == 0) {
-        result = fill_given(model, item, scratch);
-    }
     if (result < 0) {
         return result;
     }
     model->version++;
-    result = learn_again(model, item, &entry, scratch);
+    result = model_learn_weights(model, item, true, &entry, scratch);
     if (result == 0) {
         result = worklist_put(model->worklist, scratch->base, &entry);
     }

@@ -175,7 +175,8 @@ static void assert_changed(const struct postings *postings, const struct told *e
     size_t count = 0;
     assert_int_equal(postings_changed(postings, &places, &count), 0);
     assert_int_equal(count, expected_count);
-    for (size_t i = 0; i < count; i++) {
+    assert_non_null(places);
+    for (size_t i = 0; places && i < expected_count; i++) {
         const struct chunk *chunk = postings_at(postings, places[i]);
         assert_int_equal(chunk->word, expected[i].word);
         assert_int_equal(chunk->number, expected[i].number);

@@ -96,6 +96,10 @@ static int list_rivals(const struct weights *weights, struct weights_scratch *sc
     size_t lifts_a_tag = weights->lanes;
     size_t touched_count = scratch->touched_count;
     struct scratch_rivals *rivals = &scratch->rivals[lane];
+    rivals->count = 0;
+    if (touched_count == 0) {
+        return 0; /* there may be no tags, and no arrays */
+    }
     if (GROW(&rivals->list, &rivals->capacity, touched_count + 1) < 0) {
         return -ENOMEM;
     }

@@ -215,7 +215,7 @@ const struct command command_rebuild = {
     .summary = "learn all items anew, with other settings if you like",
     .about = "A second model is learned from the stored items beside the one in use, and takes its "
              "place once it has caught up. Until then nothing changes but that the daemon needs "
-             "the memory of both. Settings that are not given stay as they are; those that are "
+             "the disk of both. Settings that are not given stay as they are; those that are "
              "stay in force after a restart, until the configuration is changed on them. Leaving "
              "this command does not end the rebuild: 'undertag state' shows how far it is.",
     .options = OPTIONS,

@@ -176,6 +176,7 @@ static int print_state(const struct client *client, const json_t *state)
         print_section(client, state, "memory", "Memory", UNIT_BYTES) ||
         print_section(client, state, "disk", "Disk", UNIT_BYTES) ||
         print_section(client, state, "rehearsal", "Rehearsal", UNIT_NONE) ||
+        print_section(client, state, "pruned", "Weights left out again", UNIT_NONE) ||
         print_section(client, state, "snapshot", "Last snapshot", UNIT_NONE) ||
         print_section(client, state, "limits", "Limits", UNIT_NONE) ||
         print_section(client, state, "settings", "Settings", UNIT_NONE)) {

@@ -116,7 +116,7 @@ static const struct option OPTIONS[] = {
      OPTIONS_LEARNING, false, "Items after which evidence behind the chances counts half."},
     {"shadow", TYPE_SWITCH, AT(shadow), 0, 0, "on", ON_OFF, OPTIONS_LEARNING, false,
      "Teach a second learner without the correction beside, to show what the correction gains; "
-     "it takes as much memory and time again."},
+     "it takes half of the weights' memory again, and some time."},
 };
 #undef AT
 /* clang-format on */

@@ -18,7 +18,7 @@ struct shared_model {
         *store;       /* where the model is kept, and read from by a model_base; borrowed */
     uint64_t version; /* rises when another model takes the place */
     uint64_t learned; /* the seq that the model has learned up to */
-    int broken;       /* 0, or why a change was learned by half: it must not be asked any more */
+    int broken;       /* 0, or why it must not be asked any more: half a change, or damage */
     pthread_rwlock_t lock;
 };
 

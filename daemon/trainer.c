@@ -222,16 +222,25 @@ static void scrub(struct trainer *trainer)
 /* --- the thread ---------------------------------------------------------------------------------
  */
 
-void trainer_fail(struct trainer *trainer, const struct store_error *error)
+/* What was learned before is damaged, and loading it would not find out: it is to be learned anew.
+ * Nobody may ask any more, since there is nothing left to read. */
+static void give_up_stored(struct trainer *trainer)
 {
     struct store_error reason = {0};
+    shared_model_write(trainer->settings.shared);
+    trainer->settings.shared->broken = -EIO;
+    shared_model_unlock(trainer->settings.shared);
+    int code = model_keeper_reset(trainer->settings.model_store, &reason);
+    log_line(LOG_CAUTION, "the stored model is damaged: %s",
+             code == STORE_OK ? "a restart learns all items again"
+                              : "stop the daemon and remove the folder model");
+}
+
+void trainer_fail(struct trainer *trainer, const struct store_error *error)
+{
     trainer->failed = true;
-    /* What was learned before is damaged, and loading it would not find out: learn it anew. */
     if (trainer->is_damaged) {
-        int code = model_keeper_reset(trainer->settings.model_store, &reason);
-        log_line(LOG_CAUTION, "the stored model is damaged: %s",
-                 code == STORE_OK ? "a restart learns all items again"
-                                  : "stop the daemon and remove the folder model");
+        give_up_stored(trainer);
     }
     troubles_begin(trainer->settings.troubles, TROUBLE_LEARNING,
                    "learning has stopped at change %llu (%s); restart the daemon to go on",

@@ -36,12 +36,12 @@ static int rescore_item(struct trainer *trainer, struct store_view *view, uint64
     return result == 0 ? STORE_OK : trainer_fail_to_learn(trainer, result, number, error);
 }
 
-/* Scores again, while there is time, what the model has outgrown; says whether there is more. */
-static bool rescore_some(struct trainer *trainer)
+/* Scores again, while there is time, what the model has outgrown; says whether there is more. What
+ * cannot be scored now is left until something has been learned. */
+static bool rescore_some(struct trainer *trainer, struct store_error *error)
 {
-    struct store_error error = {0};
     struct store_view *view = NULL;
-    if (trainer_begin_round(trainer, &view, &error) != STORE_OK) {
+    if (trainer_begin_round(trainer, &view, error) != STORE_OK) {
         return false; /* learning will tell, if it lasts */
     }
     uint64_t number = 0;
@@ -50,8 +50,10 @@ static bool rescore_some(struct trainer *trainer)
     for (size_t i = 0; i < RESCORED_A_ROUND && code == STORE_OK && next == 0; i++) {
         next = model_next_stale(trainer->settings.shared->model, &trainer->base.base, &number);
         if (next == 0) {
-            code = rescore_item(trainer, view, number, &error);
+            code = rescore_item(trainer, view, number, error);
             trainer->idly_changed = true;
+        } else if (next != -ENOENT) {
+            code = trainer_fail_to_learn(trainer, next, trainer->learned, error);
         }
     }
     trainer_end_round(trainer, view);
@@ -114,6 +116,8 @@ static int rehearse_some(struct trainer *trainer, bool *ret_more, struct store_e
         if (next == 0) {
             code = rehearse_item(trainer, view, number, error);
             trainer->idly_changed = true;
+        } else if (next != -ENOENT) {
+            code = trainer_fail_to_learn(trainer, next, trainer->learned, error);
         }
         now_us = clock_steady_us();
     }
@@ -145,7 +149,10 @@ void trainer_work_idly(struct trainer *trainer, bool is_idle)
         return;
     }
     if (trainer->rescore_due) {
-        trainer->rescore_due = rescore_some(trainer);
+        trainer->rescore_due = rescore_some(trainer, &error);
+        if (trainer->is_damaged) {
+            trainer_fail(trainer, &error);
+        }
     } else if (may_rehearse(trainer) &&
                rehearse_some(trainer, &trainer->rehearse_due, &error) != STORE_OK) {
         trainer_fail(trainer, &error);

@@ -6,7 +6,7 @@
  *
  * It is a function of the sequence of model_learn calls alone: the same items in the same order
  * give the same numbers to the last bit, also when it was stored and restored in between. (Only how
- * fresh the worklist's scores are depends on when there was time for model_rescore.)
+ * fresh the worklist's scores are, and what was rehearsed, depends on when there was time for it.)
  *
  * Not locked: many threads may ask (each with its own scratch) while none learns.
  */

@@ -5,6 +5,7 @@
 #include "daemon/trainer.h"
 
 #include <errno.h>
+#include <sched.h>
 #include <setjmp.h>
 #include <stdarg.h>
 #include <stddef.h>
@@ -221,6 +222,31 @@ static void after_a_damaged_entry_everything_is_learned_again(void **state)
     assert_damage_is_learned_over(*state, damage_entry, "entry");
 }
 
+/* Twice as many changes make the scores of the first entries stale. */
+static void damage_that_scoring_again_meets_is_told_and_learned_over(void **state)
+{
+    struct training *training = *state;
+    char sentence[TROUBLE_BYTES] = "";
+    learn_and_stop(training);
+    damage_entry(training);
+    open_model(training);
+    for (int i = 0; i < ENTRIES; i++) {
+        char id[16];
+        (void)snprintf(id, sizeof id, "calm/%d", i);
+        file(training, id, "calm sea, lamp lit");
+    }
+    commit(training);
+    start(training);
+    while (sentence[0] == '\0') { /* nothing else would ever tell */
+        (void)sched_yield();
+        troubles_read(&training->troubles, TROUBLE_LEARNING, sentence);
+    }
+    stop(training);
+    assert_non_null(strstr(sentence, "a stored entry of the model is damaged"));
+    assert_int_equal(training->shared.broken, -EIO); /* what they would read is gone */
+    assert_int_equal(kept_now(training), MODEL_KEPT_NONE);
+}
+
 /* --- what it says --- */
 
 /* Standard error goes into a pipe for as long as the trainer runs. */
@@ -258,6 +284,7 @@ int main(void)
         TEST(after_a_damaged_word_everything_is_learned_again),
         TEST(after_a_damaged_chunk_everything_is_learned_again),
         TEST(after_a_damaged_entry_everything_is_learned_again),
+        TEST(damage_that_scoring_again_meets_is_told_and_learned_over),
         TEST(that_all_will_be_learned_again_stands_in_the_log),
     };
     return cmocka_run_group_tests_name("trainer and damage", tests, NULL, NULL);

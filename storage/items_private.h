@@ -18,11 +18,16 @@
  * evidence stands in item_evidence.c; a record that ends before it is a filing that nobody has
  * looked at yet.
  *
- * The entry of an id is: seq u64 · withdrawn u8.
+ * The entry of an id is: seq u64 · withdrawn u8 · seal.
  */
 enum record_kind {
     RECORD_ITEM = 1,
     RECORD_WITHDRAWAL = 2
+};
+
+enum {
+    ID_BYTES = 255,
+    ID_ENTRY_BYTES = 9 /* the seal not counted */
 };
 
 struct id_entry {

@@ -6,6 +6,7 @@
 #include <string.h>
 #include <sys/random.h>
 
+#include "storage/seal.h"
 #include "storage/store_private.h"
 
 static const char *const TABLE_NAMES[STORE_TABLES] = {
@@ -62,6 +63,7 @@ static int put_meta(struct store_view *view, struct store_error *error)
     codec_put_u64(&record, view->totals.items);
     codec_put_u64(&record, view->totals.tags);
     put_evidence(&record, &view->totals.evidence);
+    seal_put(&record, meta_key());
     int result = record.failed ? (int)store_fail(error, STORE_NO_MEMORY, "out of memory")
                                : kv_put(view->txn, TABLE_META, meta_key(),
                                         kv_bytes_of(record.data, record.size), error);
@@ -98,7 +100,7 @@ static int get_meta(struct store_view *view, unsigned char uuid[STORE_UUID_BYTES
                           format);
     }
     get_evidence(&reader, &view->totals.evidence);
-    if (reader.failed) {
+    if (reader.failed || !seal_holds(meta_key(), value, reader.at)) {
         return store_fail(error, STORE_CORRUPT, "the store's first record is damaged");
     }
     return STORE_OK;
@@ -269,6 +271,7 @@ struct passed {
     size_t count;
     uint64_t successors[ERASE_BATCH];
     uint64_t replaced[ERASE_BATCH];
+    struct store_error *error;
 };
 
 static int collect_passed(void *user, struct kv_cursor *at, struct kv_bytes key,
@@ -280,6 +283,13 @@ static int collect_passed(void *user, struct kv_cursor *at, struct kv_bytes key,
     if (successor > passed->learned || passed->count == passed->most) {
         return STORE_STOPPED;
     }
+    if (!seal_holds(key, value, sizeof(uint64_t))) {
+        /* What comes before it is erased; it is told when nothing does. */
+        return passed->count > 0 ? STORE_STOPPED
+                                 : (int)store_fail(passed->error, STORE_CORRUPT,
+                                                   "what change %llu replaced is damaged",
+                                                   (unsigned long long)successor);
+    }
     passed->successors[passed->count] = successor;
     passed->replaced[passed->count] = codec_u64_of_key(value.data);
     passed->count++;
@@ -289,7 +299,8 @@ static int collect_passed(void *user, struct kv_cursor *at, struct kv_bytes key,
 int store_erase_passed(struct store_view *view, uint64_t learned, size_t most, size_t *ret_erased,
                        struct store_error *error)
 {
-    struct passed passed = {.learned = learned, .most = most < ERASE_BATCH ? most : ERASE_BATCH};
+    struct passed passed = {
+        .learned = learned, .most = most < ERASE_BATCH ? most : ERASE_BATCH, .error = error};
     int result =
         kv_walk(view->txn, TABLE_SUPERSEDED, kv_bytes_of(NULL, 0), collect_passed, &passed, error);
     if (result != STORE_OK && result != STORE_STOPPED) {

@@ -358,6 +358,9 @@ int postings_replace(struct postings *postings, uint32_t word, const uint32_t *n
 {
     struct index_word *entry = index_find(&postings->index, word);
     uint32_t chunks = (uint32_t)((count + POSTINGS_CHUNK - 1) / POSTINGS_CHUNK);
+    if (!entry) {
+        return 0; /* an admitted word without postings: none can take their place */
+    }
     if (cut_chunks(postings, entry, chunks) < 0) {
         return -ENOMEM;
     }

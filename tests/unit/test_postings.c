@@ -244,6 +244,17 @@ static void what_was_dropped_is_not_told(void **state)
 /* --- replacing ----------------------------------------------------------------------------------
  */
 
+static void a_word_without_postings_has_none_to_replace(void **state)
+{
+    struct postings *postings = *state;
+    size_t cuts = 77;
+    assert_int_equal(postings_admit(postings, NULL, WORD), 0);
+    assert_int_equal(postings_replace(postings, WORD, NULL, 0), 0);
+    (void)postings_cuts(postings, &cuts);
+    assert_int_equal(cuts, 0);
+    assert_int_equal(postings_count(postings, WORD), 0);
+}
+
 static void fewer_postings_take_fewer_chunks_and_the_rest_is_cut(void **state)
 {
     struct postings *postings = *state;
@@ -335,6 +346,7 @@ int main(void)
         postings_test(what_has_changed_is_told_by_rising_word_and_number),
         postings_test(a_place_that_was_dropped_and_taken_again_is_told_once),
         postings_test(what_was_dropped_is_not_told),
+        postings_test(a_word_without_postings_has_none_to_replace),
         postings_test(fewer_postings_take_fewer_chunks_and_the_rest_is_cut),
         postings_test(what_was_cut_is_told_until_it_is_stored),
         postings_test(the_blocks_have_room_for_all_that_is_in_them),

@@ -7,6 +7,7 @@
  */
 #include <assert.h>
 #include <errno.h>
+#include <jansson.h>
 #include <malloc.h>
 #include <signal.h>
 #include <stdio.h>
@@ -273,6 +274,8 @@ int main(int argc, char **argv)
     /* The threads share two heaps: one each would hold holes that nobody else can use. It may only
      * fail for an argument that is none. */
     (void)mallopt(M_ARENA_MAX, 2);
+    /* At random, and before there are threads: nobody can choose names that collide. */
+    json_object_seed(0);
     int exit_code = command_line_read(argc, argv, &program.line, error);
     if (exit_code != 0) {
         return fail(exit_code, error);

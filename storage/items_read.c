@@ -30,7 +30,7 @@ int items_entry(struct store_view *view, struct store_text id, struct id_entry *
 int items_find(struct store_view *view, struct store_text id, uint64_t *ret_seq,
                struct store_error *error)
 {
-    struct id_entry entry;
+    struct id_entry entry = {0};
     int result = items_entry(view, id, &entry, error);
     if (result == STORE_OK && entry.withdrawn) {
         return STORE_NOT_FOUND;
@@ -174,7 +174,7 @@ int items_changed(struct store_view *view, uint64_t since, size_t most,
     while (given < most && last < UINT64_MAX) {
         uint64_t seq = 0;
         struct item_record record = {0};
-        struct id_entry entry;
+        struct id_entry entry = {0};
         int result = records_next(view, last + 1, &seq, error);
         if (result == STORE_NOT_FOUND) {
             *ret_next = view->totals.seq > since ? view->totals.seq : since;

@@ -14,7 +14,7 @@ static inline void damage_value(struct fixture *fixture, enum store_table table,
 {
     struct store_error error = {0};
     struct kv_bytes value = {0};
-    unsigned char copy[KV_ENTRY_BYTES];
+    unsigned char copy[KV_ENTRY_BYTES] = {0};
     struct store_view *view = fixture_write(fixture);
     assert_int_equal(kv_get(view->txn, table, key, &value, &error), STORE_OK);
     assert_true(at < value.size && value.size <= sizeof copy);

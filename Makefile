@@ -5,6 +5,7 @@
 #   make test       unit, integration and reference tests
 #   make lint       format check, clang-tidy, cppcheck, a clang build
 #   make sanitize   the tests under ASan+UBSan and TSan; make valgrind: the unit tests
+#   make fuzz       each fuzz target for FUZZ_SECONDS, under ASan and UBSan
 #   make corpora    D and W from Debian's own packages; make quality, make bench: figures on them
 #   make install    DESTDIR and PREFIX as usual
 
@@ -53,10 +54,14 @@ PROGRAMS := $(BUILD)/undertagd $(BUILD)/undertag
 UNIT_PROGRAMS := $(addprefix $(BUILD)/tests/,$(UNIT_TESTS))
 INTEGRATION_PROGRAMS := $(addprefix $(BUILD)/tests/,$(INTEGRATION_TESTS))
 REFERENCE_PROGRAMS := $(addprefix $(BUILD)/tests/,$(REFERENCE_TESTS))
-TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS)
+FUZZ_SOURCES := $(wildcard tests/fuzz/fuzz_*.c)
+# One target, two programs: replaying files, and looking for more of them (see `make fuzz`).
+FUZZ_PROGRAMS := $(patsubst tests/fuzz/%.c,$(BUILD)/tests/%,$(FUZZ_SOURCES))
+FUZZERS := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzzers/%,$(FUZZ_SOURCES))
+TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FUZZ_PROGRAMS)
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
-.PHONY: all demo test lint sanitize valgrind corpora quality bench install uninstall clean \
+.PHONY: all demo test lint sanitize valgrind fuzz build-fuzzers corpora quality bench install uninstall clean \
         build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
@@ -120,6 +125,17 @@ $(REFERENCE_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -llinear -o $@
 
+$(FUZZ_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/fuzz/%.o $(BUILD)/tests/fuzz/replay.o $(LIBRARY)
+	@mkdir -p $(@D)
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
+
+# libFuzzer brings the main function; LDFLAGS name it.
+$(FUZZERS): $(BUILD)/fuzzers/%: $(BUILD)/tests/fuzz/%.o $(LIBRARY)
+	@mkdir -p $(@D)
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
+
 $(BENCH_PROGRAMS): $(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(BENCH_HELPERS) $(LIBRARY) $(CLIENT_LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
@@ -144,8 +160,8 @@ test: packages-build packages-test
 
 build-tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BENCH_PROGRAMS)
 
-# GROUPS: of unit, integration, reference and python; WRAPPER: what to run the programs under.
-GROUPS ?= unit integration reference python
+# GROUPS: of unit, integration, reference, fuzz and python; WRAPPER: what to run the programs under.
+GROUPS ?= unit integration reference fuzz python
 run-tests: build-tests
 	@BUILD=$(BUILD) PYTHON=$(PYTHON) WRAPPER='$(WRAPPER)' sh tests/run $(GROUPS)
 
@@ -190,7 +206,7 @@ lint: packages-build packages-test packages-lint
 # Benchmarks and Python have nothing to say under a sanitizer.
 sanitize: packages-build packages-test packages-lint
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-asan CC=clang run-tests \
-	    GROUPS='unit integration reference' \
+	    GROUPS='unit integration reference fuzz' \
 	    CFLAGS='-O1 -g -fno-omit-frame-pointer -fsanitize=address,undefined -fno-sanitize-recover=all'
 	@TSAN_OPTIONS=suppressions=$(CURDIR)/tests/tsan.supp \
 	$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-tsan CC=clang run-tests \
@@ -199,6 +215,17 @@ sanitize: packages-build packages-test packages-lint
 valgrind: packages-build packages-test
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-valgrind CFLAGS='-O1 -g' run-tests \
 	    GROUPS=unit WRAPPER='valgrind -q --fair-sched=yes --error-exitcode=99 --leak-check=full'
+
+# FUZZ_TARGETS: which, as in `make fuzz FUZZ_TARGETS=text`; all of them otherwise.
+FUZZ_SECONDS ?= 600
+FUZZ_TARGETS ?= $(patsubst tests/fuzz/fuzz_%.c,%,$(FUZZ_SOURCES))
+fuzz: packages-build packages-lint
+	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-fuzz CC=clang build-fuzzers \
+	    CFLAGS='-O1 -g -fno-omit-frame-pointer -fsanitize=fuzzer-no-link,address,undefined -fno-sanitize-recover=all' \
+	    LDFLAGS='-fsanitize=fuzzer'
+	@BUILD=build-fuzz sh tests/fuzz/run $(FUZZ_SECONDS) $(FUZZ_TARGETS)
+
+build-fuzzers: $(FUZZERS)
 
 # --- installing ---------------------------------------------------------------------------------
 

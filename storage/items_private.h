@@ -18,7 +18,7 @@
  * evidence stands in item_evidence.c; a record that ends before it is a filing that nobody has
  * looked at yet.
  *
- * The entry of an id is: seq u64 · withdrawn u8 · seal.
+ * The entry of an id is: seq u64 · withdrawn u8 · proof.
  */
 enum record_kind {
     RECORD_ITEM = 1,
@@ -27,7 +27,7 @@ enum record_kind {
 
 enum {
     ID_BYTES = 255,
-    ID_ENTRY_BYTES = 9 /* the seal not counted */
+    ID_ENTRY_BYTES = 9 /* the proof not counted */
 };
 
 struct id_entry {

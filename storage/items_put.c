@@ -5,7 +5,7 @@
 #include <stdlib.h>
 
 #include "storage/items_private.h"
-#include "storage/seal.h"
+#include "storage/proof.h"
 #include "storage/store_private.h"
 
 /* --- into a record ------------------------------------------------------------------------------
@@ -48,12 +48,12 @@ static void encode(struct codec_writer *writer, const struct item_record *record
 static int put_id(struct store_view *view, struct store_text id, struct id_entry entry,
                   struct store_error *error)
 {
-    unsigned char value[ID_ENTRY_BYTES + SEAL_BYTES];
+    unsigned char value[ID_ENTRY_BYTES + PROOF_BYTES];
     struct codec_writer writer = {.data = value, .capacity = sizeof value};
     struct kv_bytes key = kv_bytes_of(id.data, id.size);
     codec_put_u64(&writer, entry.seq);
     codec_put_u8(&writer, entry.withdrawn ? 1 : 0);
-    seal_put(&writer, key);
+    proof_put(&writer, key);
     return kv_put(view->txn, TABLE_IDS, key, kv_bytes_of(value, sizeof value), error);
 }
 
@@ -61,11 +61,11 @@ static int put_superseded(struct store_view *view, uint64_t seq, uint64_t replac
                           struct store_error *error)
 {
     unsigned char key[8];
-    unsigned char value[8 + SEAL_BYTES];
+    unsigned char value[8 + PROOF_BYTES];
     struct codec_writer writer = {.data = value, .size = 8, .capacity = sizeof value};
     codec_key_u64(key, seq);
     codec_key_u64(value, replaced);
-    seal_put(&writer, kv_bytes_of(key, sizeof key));
+    proof_put(&writer, kv_bytes_of(key, sizeof key));
     return kv_append(view->txn, TABLE_SUPERSEDED, kv_bytes_of(key, sizeof key),
                      kv_bytes_of(value, sizeof value), error);
 }

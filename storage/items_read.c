@@ -2,7 +2,7 @@
 #include <string.h>
 
 #include "storage/items_private.h"
-#include "storage/seal.h"
+#include "storage/proof.h"
 #include "storage/store_private.h"
 
 /* --- ids ---------------------------------------------------------------------------------------
@@ -17,7 +17,7 @@ int items_entry(struct store_view *view, struct store_text id, struct id_entry *
     if (result != STORE_OK) {
         return result;
     }
-    if (!seal_holds(key, value, ID_ENTRY_BYTES)) {
+    if (!proof_holds(key, value, ID_ENTRY_BYTES)) {
         return store_fail(error, STORE_CORRUPT, "the entry of the id '%.*s' is damaged",
                           (int)id.size, id.data);
     }

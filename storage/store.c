@@ -6,7 +6,7 @@
 #include <string.h>
 #include <sys/random.h>
 
-#include "storage/seal.h"
+#include "storage/proof.h"
 #include "storage/store_private.h"
 
 static const char *const TABLE_NAMES[STORE_TABLES] = {
@@ -63,7 +63,7 @@ static int put_meta(struct store_view *view, struct store_error *error)
     codec_put_u64(&record, view->totals.items);
     codec_put_u64(&record, view->totals.tags);
     put_evidence(&record, &view->totals.evidence);
-    seal_put(&record, meta_key());
+    proof_put(&record, meta_key());
     int result = record.failed ? (int)store_fail(error, STORE_NO_MEMORY, "out of memory")
                                : kv_put(view->txn, TABLE_META, meta_key(),
                                         kv_bytes_of(record.data, record.size), error);
@@ -100,7 +100,7 @@ static int get_meta(struct store_view *view, unsigned char uuid[STORE_UUID_BYTES
                           format);
     }
     get_evidence(&reader, &view->totals.evidence);
-    if (reader.failed || !seal_holds(meta_key(), value, reader.at)) {
+    if (reader.failed || !proof_holds(meta_key(), value, reader.at)) {
         return store_fail(error, STORE_CORRUPT, "the store's first record is damaged");
     }
     return STORE_OK;
@@ -283,7 +283,7 @@ static int collect_passed(void *user, struct kv_cursor *at, struct kv_bytes key,
     if (successor > passed->learned || passed->count == passed->most) {
         return STORE_STOPPED;
     }
-    if (!seal_holds(key, value, sizeof(uint64_t))) {
+    if (!proof_holds(key, value, sizeof(uint64_t))) {
         /* What comes before it is erased; it is told when nothing does. */
         return passed->count > 0 ? STORE_STOPPED
                                  : (int)store_fail(passed->error, STORE_CORRUPT,

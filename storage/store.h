@@ -13,7 +13,7 @@
  *   tags        number -> name, counts, state
  *   tag_names   name -> number
  *
- * Every value carries a checksum: in front, or a seal behind it (seal.h).
+ * Every value carries a checksum: in front, or a proof behind it (proof.h).
  *
  * Any number of threads may read (store_read); one at a time writes (store_write; others wait), and
  * one alone, the writer, deletes and scrubs. No view may outlive one job. Failure leaves everything

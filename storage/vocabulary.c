@@ -2,7 +2,7 @@
 
 #include <string.h>
 
-#include "storage/seal.h"
+#include "storage/proof.h"
 #include "storage/store_private.h"
 
 enum {
@@ -102,7 +102,7 @@ int vocabulary_put(struct store_view *view, const struct vocabulary_tag *tag,
 static int decode_number(struct kv_bytes name, struct kv_bytes value, uint32_t *ret_number,
                          struct store_error *error)
 {
-    if (!seal_holds(name, value, NUMBER_BYTES)) {
+    if (!proof_holds(name, value, NUMBER_BYTES)) {
         return store_fail(error, STORE_CORRUPT, "the entry of the tag '%.*s' is damaged",
                           (int)name.size, (const char *)name.data);
     }
@@ -151,11 +151,11 @@ int vocabulary_open(struct store_view *view, const char *name, size_t bytes, uin
     }
     struct vocabulary_tag tag = {.number = (uint32_t)view->totals.tags, .opened_seq = opened_seq};
     memcpy(tag.name, name, bytes);
-    unsigned char number[NUMBER_BYTES + SEAL_BYTES];
+    unsigned char number[NUMBER_BYTES + PROOF_BYTES];
     struct codec_writer writer = {.data = number, .size = NUMBER_BYTES, .capacity = sizeof number};
     struct kv_bytes key = kv_bytes_of(name, bytes);
     codec_key_u32(number, tag.number);
-    seal_put(&writer, key);
+    proof_put(&writer, key);
     int result = kv_put(view->txn, TABLE_TAG_NAMES, key, kv_bytes_of(number, sizeof number), error);
     if (result == STORE_OK) {
         result = vocabulary_put(view, &tag, error);

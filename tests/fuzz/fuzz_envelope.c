@@ -249,7 +249,7 @@ uint8_t *fuzz_made(size_t number, size_t *ret_size)
     case 4: /* brackets in a string do not nest */
         return fuzz_repeated(SHOW, "\\\"[{", 64, "", ret_size);
     case 5: /* a batch with one request for each few bytes */
-        return fuzz_repeated("[1", ",1", 100000, "]", ret_size);
+        return fuzz_repeated("[1", ",1", 20000, "]", ret_size);
     case 6:
         return fuzz_repeated("{\"jsonrpc\":\"2.0\",\"id\":1,\"method\":\"", "\xC3\xA9", 4U << 20U,
                              "\"}", ret_size);
@@ -257,7 +257,7 @@ uint8_t *fuzz_made(size_t number, size_t *ret_size)
         return fuzz_repeated("{\"jsonrpc\":\"2.0\",\"method\":\"item.show\",\"id\":", "9",
                              1U << 20U, "}", ret_size);
     case 8:
-        return many_members(300000, ret_size);
+        return many_members(100000, ret_size);
     default:
         return NULL;
     }

@@ -8,7 +8,7 @@
 #include "storage/items_examine.h"
 #include "storage/items_latest.h"
 #include "storage/items_private.h"
-#include "storage/seal.h"
+#include "storage/proof.h"
 #include "storage/store_notes.h"
 #include "storage/store_private.h"
 #include "storage/vocabulary.h"
@@ -275,17 +275,17 @@ static int take_entry(void *user, struct kv_cursor *at, struct kv_bytes key, str
     return entry->left-- > 0 ? STORE_OK : STORE_STOPPED; /* the last one where there are fewer */
 }
 
-/* A value that ends before its seal is one of an earlier version, which had none. */
-static bool is_unsealed(unsigned table, size_t size)
+/* A value that ends before its proof is one of an earlier version, which had none. */
+static bool is_unproven(unsigned table, size_t size)
 {
-    static const size_t UNSEALED[STORE_TABLES] = {
+    static const size_t UNPROVEN[STORE_TABLES] = {
         [TABLE_IDS] = ID_ENTRY_BYTES, [TABLE_SUPERSEDED] = 8, [TABLE_TAG_NAMES] = 4};
-    return size == UNSEALED[table];
+    return size == UNPROVEN[table];
 }
 
 static void damage(struct store_view *view, struct fuzz_input *input)
 {
-    /* TABLE_META is read as a view begins; see tests/unit/test_store.c. */
+    /* TABLE_META is read as a view begins; see tests/unit/test_store_damage.c. */
     unsigned table = TABLE_IDS + fuzz_byte(input) % (STORE_TABLES - 1U);
     struct entry entry = {.left = fuzz_byte(input) % 16U};
     struct store_error error = {0};
@@ -297,7 +297,7 @@ static void damage(struct store_view *view, struct fuzz_input *input)
     if (entry.value.size > 0 && mask != 0) {
         entry.value.data[at] ^= mask;
     } else {
-        entry.value.size = is_unsealed(table, at) ? 0 : at;
+        entry.value.size = is_unproven(table, at) ? 0 : at;
     }
     if (entry.key.size > 0) {
         code = kv_put(view->txn, table, kv_bytes_of(entry.key.data, entry.key.size),
@@ -325,7 +325,7 @@ static void craft(struct store_view *view, struct fuzz_input *input)
     codec_put_u64(&entry, seq);
     codec_put_u8(&entry, 0);
     struct kv_bytes key = kv_bytes_of(ID[id], strlen(ID[id]));
-    seal_put(&entry, key);
+    proof_put(&entry, key);
     code = kv_put(view->txn, TABLE_IDS, key, kv_bytes_of(entry.data, entry.size), &error);
     FUZZ_NEED(code == STORE_OK, error.text);
     codec_deinit(&record);

@@ -9,7 +9,7 @@
 
 #include "storage/items_latest.h"
 #include "storage/items_private.h"
-#include "storage/seal.h"
+#include "storage/proof.h"
 #include "tests/unit/damage.h"
 
 static void an_id_does_not_lead_to_another_item(void **state)
@@ -104,7 +104,7 @@ static void craft_record(struct fixture *fixture, const char *id, uint64_t repla
 {
     struct store_error error = {0};
     struct codec_writer *record = &fixture->buffer;
-    unsigned char value[ID_ENTRY_BYTES + SEAL_BYTES];
+    unsigned char value[ID_ENTRY_BYTES + PROOF_BYTES];
     struct codec_writer entry = {.data = value, .capacity = sizeof value};
     struct store_view *view = fixture_write(fixture);
     codec_reset(record);
@@ -117,7 +117,7 @@ static void craft_record(struct fixture *fixture, const char *id, uint64_t repla
     assert_int_equal(records_put(view, view->totals.seq, record, &error), STORE_OK);
     codec_put_u64(&entry, view->totals.seq);
     codec_put_u8(&entry, 1);
-    seal_put(&entry, damage_key("log/1"));
+    proof_put(&entry, damage_key("log/1"));
     assert_int_equal(
         kv_put(view->txn, TABLE_IDS, damage_key("log/1"), kv_bytes_of(value, sizeof value), &error),
         STORE_OK);

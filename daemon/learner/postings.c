@@ -38,6 +38,7 @@ void postings_free(struct postings *postings)
     free(postings->chunks);
     free(postings->free_places);
     free(postings->changed);
+    free(postings->sealed);
     free(postings->cuts);
     index_deinit(&postings->index);
     free(postings);
@@ -58,8 +59,14 @@ uint64_t postings_bytes(const struct postings *postings)
     return sizeof *postings + index_bytes(&postings->index) +
            postings->chunk_capacity * sizeof *postings->chunks +
            postings->free_capacity * sizeof *postings->free_places +
-           postings->changed_capacity * sizeof *postings->changed +
+           (postings->changed_capacity + postings->sealed_capacity) * sizeof *postings->changed +
            postings->cut_capacity * sizeof *postings->cuts + postings->number_bytes;
+}
+
+uint64_t postings_chunk_bytes(const struct postings *postings)
+{
+    size_t held = postings->chunk_count - postings->free_count;
+    return sizeof *postings->chunks + (held > 0 ? postings->number_bytes / held : 0);
 }
 
 /* --- places -------------------------------------------------------------------------------------

@@ -289,6 +289,101 @@ static void what_was_cut_is_told_until_it_is_stored(void **state)
     assert_int_equal(postings_count(postings, WORD), POSTINGS_CHUNK + 1);
 }
 
+/* --- on the way to the store --------------------------------------------------------------------
+ */
+
+static void what_is_sealed_is_told_until_it_is_stored(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    append_to(postings, 40, 2);
+    const struct told both[] = {{20, 0, 1}, {40, 0, 2}};
+    assert_changed(postings, both, 2);
+    postings_stored(postings);
+    assert_changed(postings, both + 1, 1);
+}
+
+static void what_changes_while_it_is_stored_is_still_to_be_stored(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    append_to(postings, 40, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    append_to(postings, 20, 1);
+    postings_stored(postings);
+    const struct told expected[] = {{20, 0, 2}};
+    assert_changed(postings, expected, 1);
+}
+
+/* A place that was given back and taken again stands for another chunk. */
+static void what_is_dropped_while_it_is_stored_leaves_its_place_to_others(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    (void)postings_drop(postings, 20);
+    append_to(postings, 40, 3);
+    const struct told expected[] = {{40, 0, 3}};
+    assert_changed(postings, expected, 1);
+    postings_stored(postings);
+    assert_changed(postings, expected, 1);
+}
+
+static void what_did_not_arrive_is_sealed_once_more_with_what_came_since(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    append_to(postings, 20, 1);
+    append_to(postings, 40, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    const struct told both[] = {{20, 0, 2}, {40, 0, 1}};
+    assert_changed(postings, both, 2);
+    postings_stored(postings);
+    assert_changed(postings, NULL, 0);
+}
+
+static void what_is_sealed_is_not_let_go_of(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    postings_trim(postings, 0);
+    assert_int_equal(postings_count(postings, 20), 1);
+    postings_stored(postings);
+    postings_trim(postings, 0);
+    assert_int_equal(postings_count(postings, 20), 0);
+}
+
+static size_t cut_count(const struct postings *postings)
+{
+    size_t count = 0;
+    (void)postings_cuts(postings, &count);
+    return count;
+}
+
+/* Its first cut is stored while the second, of all that is left, is not: what the store has of it
+ * still must not be looked for. */
+static void a_word_cut_again_while_it_is_stored_stays_known_to_be_empty(void **state)
+{
+    struct postings *postings = *state;
+    const uint32_t numbers[STRIDE] = {1, 1};
+    append(postings, POSTINGS_CHUNK + 1);
+    postings_clean(postings);
+    assert_int_equal(postings_replace(postings, WORD, numbers, 1), 0);
+    assert_int_equal(postings_seal(postings), 0);
+    assert_int_equal(postings_replace(postings, WORD, numbers, 0), 0);
+    postings_stored(postings);
+    struct postings_walk walk;
+    postings_walk_begin(postings, NULL, WORD, &walk);
+    assert_int_equal(walk.chunk_count, 0);
+    assert_int_equal(cut_count(postings), 2);
+    assert_int_equal(postings_seal(postings), 0);
+    postings_stored(postings);
+    assert_int_equal(cut_count(postings), 0);
+}
+
 /* --- size ---------------------------------------------------------------------------------------
  */
 
@@ -337,6 +432,12 @@ int main(void)
         postings_test(what_was_dropped_is_not_told),
         postings_test(fewer_postings_take_fewer_chunks_and_the_rest_is_cut),
         postings_test(what_was_cut_is_told_until_it_is_stored),
+        postings_test(what_is_sealed_is_told_until_it_is_stored),
+        postings_test(what_changes_while_it_is_stored_is_still_to_be_stored),
+        postings_test(what_is_dropped_while_it_is_stored_leaves_its_place_to_others),
+        postings_test(what_did_not_arrive_is_sealed_once_more_with_what_came_since),
+        postings_test(what_is_sealed_is_not_let_go_of),
+        postings_test(a_word_cut_again_while_it_is_stored_stays_known_to_be_empty),
         postings_test(the_blocks_have_room_for_all_that_is_in_them),
         postings_test(dropped_postings_are_gone_and_the_word_may_be_used_again),
     };

@@ -117,15 +117,12 @@ struct chunk *postings_at(const struct postings *postings, uint32_t place)
     return &postings->chunks[place];
 }
 
-uint32_t postings_chunks(const struct postings *postings, uint32_t word)
+uint32_t postings_chunks(const struct postings *postings, uint32_t word,
+                         const uint32_t **ret_places)
 {
     const struct index_word *entry = index_find(&postings->index, word);
+    *ret_places = entry ? index_places(entry) : NULL;
     return entry ? entry->chunk_count : 0;
-}
-
-uint32_t postings_place(const struct postings *postings, uint32_t word, uint32_t number)
-{
-    return index_places(index_find(&postings->index, word))[number] - 1;
 }
 
 size_t postings_count(const struct postings *postings, uint32_t word)

@@ -81,10 +81,11 @@ int postings_walk_next(struct postings_walk *walk, const uint32_t **ret_numbers,
 int postings_admit(struct postings *postings, const struct base *base, uint32_t word)
     __attribute__((warn_unused_result));
 
-/* The number of chunks of an admitted word, the place of one of them, and how many postings they
- * hold together. */
-uint32_t postings_chunks(const struct postings *postings, uint32_t word);
-uint32_t postings_place(const struct postings *postings, uint32_t word, uint32_t number);
+/* The chunks of an admitted word: how many there are, and by chunk 1 + its place. Valid until something is admitted, appended, dropped or trimmed. */
+uint32_t postings_chunks(const struct postings *postings, uint32_t word,
+                         const uint32_t **ret_places);
+
+/* How many postings an admitted word has. */
 size_t postings_count(const struct postings *postings, uint32_t word);
 
 /* The chunk at a place; valid until something is admitted, appended or trimmed. */

@@ -5,6 +5,7 @@
 #include <stdlib.h>
 
 #include "tests/unit/near.h"
+#include "tests/unit/postings_look.h"
 
 enum {
     LANES = 1,
@@ -43,7 +44,7 @@ static void append(struct postings *postings, uint32_t count)
 
 static struct chunk *chunk_of(const struct postings *postings, uint32_t word, uint32_t number)
 {
-    return postings_at(postings, postings_place(postings, word, number));
+    return postings_at(postings, place_of(postings, word, number));
 }
 
 static void a_word_without_postings_has_no_chunk(void **state)
@@ -52,7 +53,7 @@ static void a_word_without_postings_has_no_chunk(void **state)
     struct postings_walk walk;
     const uint32_t *numbers = NULL;
     size_t count = 0;
-    assert_int_equal(postings_chunks(postings, WORD), 0);
+    assert_int_equal(chunks_of(postings, WORD), 0);
     assert_int_equal(postings_count(postings, WORD), 0);
     postings_walk_begin(postings, NULL, WORD, &walk);
     assert_int_equal(postings_walk_next(&walk, &numbers, &count), -ENOENT);
@@ -97,11 +98,11 @@ static void a_chunk_holds_one_hundred_and_sixty(void **state)
 {
     struct postings *postings = *state;
     append(postings, 1);
-    assert_int_equal(postings_chunks(postings, WORD), 1);
+    assert_int_equal(chunks_of(postings, WORD), 1);
     append(postings, 159);
-    assert_int_equal(postings_chunks(postings, WORD), 1);
+    assert_int_equal(chunks_of(postings, WORD), 1);
     append(postings, 1);
-    assert_int_equal(postings_chunks(postings, WORD), 2);
+    assert_int_equal(chunks_of(postings, WORD), 2);
     assert_int_equal(chunk_of(postings, WORD, 0)->count, 160);
     assert_int_equal(chunk_of(postings, WORD, 1)->count, 1);
 }
@@ -139,8 +140,8 @@ static void a_touch_marks_a_chunk_once(void **state)
     struct postings *postings = *state;
     append(postings, 2 * POSTINGS_CHUNK + 1);
     postings_clean(postings);
-    assert_int_equal(postings_touch(postings, postings_place(postings, WORD, 1)), 0);
-    assert_int_equal(postings_touch(postings, postings_place(postings, WORD, 1)), 0);
+    assert_int_equal(postings_touch(postings, place_of(postings, WORD, 1)), 0);
+    assert_int_equal(postings_touch(postings, place_of(postings, WORD, 1)), 0);
     assert_int_equal(postings_changed_count(postings), 1);
     assert_false(chunk_of(postings, WORD, 0)->is_changed);
     assert_true(chunk_of(postings, WORD, 1)->is_changed);
@@ -154,7 +155,7 @@ static void marks_outlive_a_larger_block(void **state)
     append(postings, POSTINGS_CHUNK + 1);
     postings_clean(postings);
     append(postings, POSTINGS_CHUNK - 1);
-    assert_int_equal(postings_chunks(postings, WORD), 2);
+    assert_int_equal(chunks_of(postings, WORD), 2);
     assert_false(chunk_of(postings, WORD, 0)->is_changed);
     assert_true(chunk_of(postings, WORD, 1)->is_changed);
     postings_clean(postings);
@@ -285,7 +286,7 @@ static void what_was_cut_is_told_until_it_is_stored(void **state)
     (void)postings_cuts(postings, &cut_count);
     assert_int_equal(cut_count, 0);
     append(postings, POSTINGS_CHUNK); /* it grows again from where it was cut */
-    assert_int_equal(postings_chunks(postings, WORD), 2);
+    assert_int_equal(chunks_of(postings, WORD), 2);
     assert_int_equal(postings_count(postings, WORD), POSTINGS_CHUNK + 1);
 }
 
@@ -406,7 +407,7 @@ static void dropped_postings_are_gone_and_the_word_may_be_used_again(void **stat
     uint64_t bytes = postings_bytes(postings);
     append(postings, 10);
     assert_int_equal(postings_drop(postings, WORD), 10);
-    assert_int_equal(postings_chunks(postings, WORD), 0);
+    assert_int_equal(chunks_of(postings, WORD), 0);
     assert_int_equal(postings_drop(postings, WORD), 0);
     assert_true(postings_bytes(postings) < bytes + 10 * STRIDE * sizeof(uint32_t));
     append(postings, 1);

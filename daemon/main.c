@@ -24,6 +24,7 @@
 #include "daemon/log.h"
 #include "daemon/methods.h"
 #include "daemon/server.h"
+#include "daemon/verify_home.h"
 
 enum {
     SIGNALS = 3,
@@ -290,6 +291,8 @@ int main(int argc, char **argv)
             (void)fail(exit_code, error); /* it is the same code */
         } else if (program.line.check_config) {
             exit_code = puts("the options are right") < 0 ? EX_IOERR : 0;
+        } else if (program.line.verify) {
+            exit_code = verify_home(program.line.home, &program.options, stdout);
         } else {
             exit_code = serve(&program);
         }

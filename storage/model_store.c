@@ -41,7 +41,8 @@ int model_store_open_in(const struct store_settings *settings, const char *folde
                                       .map_bytes = settings->map_bytes,
                                       .reserve_bytes = settings->reserve_bytes,
                                       .tables = TABLE_NAMES,
-                                      .table_count = MODEL_TABLES};
+                                      .table_count = MODEL_TABLES,
+                                      .read_only = settings->read_only};
     int result = kv_open(&kv_settings, &made->kv, error);
     if (result != STORE_OK) {
         free(made);
@@ -143,6 +144,7 @@ int model_store_put_head(struct model_store_writing *writing, const struct model
     codec_put_u64(record, head->rehearsed_items);
     codec_put_u64(record, head->examples);
     codec_put_blob(record, head->settings, strlen(head->settings));
+    codec_put_u32(record, codec_checksum(record->data, record->size));
     if (record->failed) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
@@ -170,7 +172,8 @@ static int put_record(struct model_store_writing *writing, enum model_table tabl
     }
     struct codec_writer checksum = {.data = record->data, .capacity = CHECKSUM_BYTES};
     codec_put_u32(&checksum,
-                  codec_checksum(record->data + CHECKSUM_BYTES, record->size - CHECKSUM_BYTES));
+                  codec_checksum_of_two(key.data, key.size, record->data + CHECKSUM_BYTES,
+                                        record->size - CHECKSUM_BYTES));
     return kv_batch_put(writing->batch, table, key, kv_bytes_of(record->data, record->size), error);
 }
 

@@ -16,7 +16,7 @@
 #include "storage/store.h"
 
 enum {
-    MODEL_STORE_FORMAT = 3,
+    MODEL_STORE_FORMAT = 4,
     MODEL_STORE_SETTINGS_BYTES = 1024
 };
 

@@ -120,7 +120,7 @@ static int make_uuid(unsigned char uuid[STORE_UUID_BYTES], struct store_error *e
 }
 
 /* Gives a new store its first record, or reads that of an old one. */
-static int begin_life(struct store *store, struct store_error *error)
+static int begin_life(struct store *store, bool read_only, struct store_error *error)
 {
     struct store_view view = {.store = store};
     int result = kv_begin(store->kv, false, &view.txn, error);
@@ -131,6 +131,9 @@ static int begin_life(struct store *store, struct store_error *error)
     kv_abort(view.txn);
     if (result != STORE_NOT_FOUND) {
         return result;
+    }
+    if (read_only) {
+        return store_fail(error, STORE_CORRUPT, "the store's first record is gone");
     }
     result = make_uuid(store->uuid, error);
     if (result != STORE_OK) {
@@ -164,10 +167,11 @@ int store_open(const struct store_settings *settings, struct store **ret_store,
                                       .map_bytes = settings->map_bytes,
                                       .reserve_bytes = settings->reserve_bytes,
                                       .tables = TABLE_NAMES,
-                                      .table_count = STORE_TABLES};
+                                      .table_count = STORE_TABLES,
+                                      .read_only = settings->read_only};
     int result = kv_open(&kv_settings, &made->kv, error);
     if (result == STORE_OK) {
-        result = begin_life(made, error);
+        result = begin_life(made, settings->read_only, error);
     }
     if (result != STORE_OK) {
         store_close(made);

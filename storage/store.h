@@ -41,6 +41,7 @@ struct store_settings {
     const char *home; /* the environment is HOME/store */
     size_t map_bytes;
     size_t reserve_bytes;
+    bool read_only; /* it must be there, and stays as it is */
 };
 
 /* Opens or makes the store of a home. STORE_NEWER where a later version wrote it. */

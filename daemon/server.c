@@ -39,6 +39,7 @@ struct server {
     uv_timer_t accept_timer;
     unsigned handles; /* of the three above, not closed yet */
     int lock_fd;
+    uint32_t socket_group;
     bool draining;
     void (*done)(void *user);
     void *user;
@@ -194,6 +195,13 @@ static int bind_and_listen(struct server *server, char *error)
     return code < 0 ? fail(error, code, "cannot listen at", server->socket_path) : 0;
 }
 
+/* Whoever may connect by the file's mode may be a member of its group. */
+static uint32_t group_of(const char *path)
+{
+    struct stat status;
+    return lstat(path, &status) == 0 && S_ISSOCK(status.st_mode) ? status.st_gid : RIGHTS_NO_ID;
+}
+
 static int init_handles(uv_loop_t *loop, struct server *server)
 {
     int code = uv_pipe_init(loop, &server->listener, 0);
@@ -254,8 +262,14 @@ int server_new(uv_loop_t *loop, const struct server_settings *settings,
         uv_close((uv_handle_t *)&server->accept_timer, on_handle_closed);
         return code;
     }
+    server->socket_group = group_of(server->socket_path);
     *ret_server = server;
     return 0;
+}
+
+uint32_t server_socket_group(const struct server *server)
+{
+    return server->socket_group;
 }
 
 unsigned server_connections(const struct server *server)

@@ -37,6 +37,9 @@ int server_new(uv_loop_t *loop, const struct server_settings *settings,
                const struct method_table *table, struct server **ret_server, char *error)
     __attribute__((warn_unused_result));
 
+/* The group that the socket's file belongs to; RIGHTS_NO_ID where it cannot be told. */
+uint32_t server_socket_group(const struct server *server);
+
 /* Connections open now. */
 unsigned server_connections(const struct server *server);
 

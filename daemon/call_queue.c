@@ -103,12 +103,11 @@ static struct call *add_request(struct call_queue *queue, const json_t *text)
     if (!call) {
         return NULL;
     }
-    if (rpc_read(text, queue->table, &call->request, &fault) < 0) {
+    if (rpc_read(text, queue->table, &call->request, &fault) < 0 ||
+        (!queue->stopping && check_right(queue, call->request.method, &fault) < 0)) {
         end_with_fault(call, &fault);
     } else if (queue->stopping) {
         refuse_stopping(call);
-    } else if (check_right(queue, call->request.method, &fault) < 0) {
-        end_with_fault(call, &fault);
     }
     append(queue, call);
     return call;

@@ -321,6 +321,14 @@ static void every_change_is_recorded_with_its_user(void **state)
                    "{'tag': 'fog', 'belongs': true, 'editor': null, 'uid': 61911}");
 }
 
+static void a_rebuild_is_logged_with_its_user(void **state)
+{
+    struct office *office = enter(state);
+    reload(office, "may_operate = 61911\n");
+    (void)ask(come(office, EDITOR), "daemon.rebuild", "{}");
+    assert_true(undertagd_said(&office->daemon, "rebuild: user 61911 asked for it"));
+}
+
 #define TEST(name) cmocka_unit_test_setup_teardown(name, set_up, tear_down)
 
 int main(void)
@@ -338,6 +346,7 @@ int main(void)
         TEST(a_refusal_leaves_the_connection_and_the_order_of_answers),
         TEST(refusals_are_logged_a_few_at_a_time),
         TEST(every_change_is_recorded_with_its_user),
+        TEST(a_rebuild_is_logged_with_its_user),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

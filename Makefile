@@ -3,15 +3,17 @@
 #   make            build/undertagd and build/undertag
 #   make demo       the main job on an invented stream
 #   make test       unit, integration and reference tests
-#   make lint       format check, clang-tidy, cppcheck, a clang build
+#   make lint       format check, clang-tidy, cppcheck, a clang build, the units of systemd
 #   make sanitize   the tests under ASan+UBSan and TSan; make valgrind: the unit tests
 #   make fuzz       each fuzz target for FUZZ_SECONDS, under ASan and UBSan
 #   make corpora    D and W from Debian's own packages; make quality, make bench: figures on them
-#   make install    DESTDIR and PREFIX as usual
+#   make install    DESTDIR, PREFIX and SYSCONFDIR as usual
 
 BUILD ?= build
 PREFIX ?= /usr/local
 DESTDIR ?=
+# Where the service looks for its configuration.
+SYSCONFDIR ?= $(if $(filter /usr /usr/local,$(PREFIX)),/etc,$(PREFIX)/etc)
 CFLAGS ?= -O2 -g
 CC ?= cc
 PYTHON ?= /usr/bin/python3
@@ -61,7 +63,7 @@ FUZZERS := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzzers/%,$(FUZZ_SOURCES))
 TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FUZZ_PROGRAMS)
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
-.PHONY: all demo test lint sanitize valgrind fuzz build-fuzzers corpora quality bench install uninstall clean \
+.PHONY: all demo test lint check-units sanitize valgrind fuzz build-fuzzers corpora quality bench install uninstall clean \
         build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
@@ -202,6 +204,12 @@ lint: packages-build packages-test packages-lint
 	@printf '%s\n' $(ALL_SOURCES) | xargs -P $(JOBS) -I '{}' \
 	    clang-tidy --quiet '{}' -- $(BASE_CFLAGS) $(PACKAGE_CFLAGS) 2>/dev/null
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-clang CC=clang CI=true build-tests
+	@echo the units of systemd
+	@$(MAKE) --no-print-directory -s check-units
+
+check-units: packages-build packages-lint
+	@$(MAKE) --no-print-directory -j $(JOBS) all
+	@sh config/check-units $(BUILD)
 
 # Benchmarks and Python have nothing to say under a sanitizer.
 sanitize: packages-build packages-test packages-lint
@@ -229,14 +237,33 @@ build-fuzzers: $(FUZZERS)
 
 # --- installing ---------------------------------------------------------------------------------
 
+UNITS := undertagd.service undertagd.socket
+DOC_DIR = $(PREFIX)/share/doc/undertag
+UNIT_DIR = $(PREFIX)/lib/systemd/system
+SYSUSERS_DIR = $(PREFIX)/lib/sysusers.d
+TMPFILES_DIR = $(PREFIX)/lib/tmpfiles.d
+CONFIG_DIR = $(SYSCONFDIR)/undertag
+
+# A configuration that is there already stays as it is.
 install: all
-	install -d $(DESTDIR)$(PREFIX)/bin $(DESTDIR)$(PREFIX)/share/doc/undertag
+	install -d $(addprefix $(DESTDIR),$(PREFIX)/bin $(DOC_DIR) $(UNIT_DIR) $(SYSUSERS_DIR) \
+	    $(TMPFILES_DIR) $(CONFIG_DIR))
 	install -m 755 $(PROGRAMS) $(DESTDIR)$(PREFIX)/bin
-	install -m 644 README.md LICENSE config/undertag.ini $(DESTDIR)$(PREFIX)/share/doc/undertag
+	install -m 644 README.md LICENSE config/undertag.ini $(DESTDIR)$(DOC_DIR)
+	test -e $(DESTDIR)$(CONFIG_DIR)/undertag.ini || \
+	    install -m 644 config/undertag.ini $(DESTDIR)$(CONFIG_DIR)
+	for unit in $(UNITS); do \
+	    sed 's|/usr/local|$(PREFIX)|g; s|/etc/undertag|$(CONFIG_DIR)|g' config/$$unit \
+	        > $(DESTDIR)$(UNIT_DIR)/$$unit && chmod 644 $(DESTDIR)$(UNIT_DIR)/$$unit || exit 1; \
+	done
+	install -m 644 config/undertag.sysusers $(DESTDIR)$(SYSUSERS_DIR)/undertag.conf
+	install -m 644 config/undertag.tmpfiles $(DESTDIR)$(TMPFILES_DIR)/undertag.conf
 
 uninstall:
 	rm -f $(DESTDIR)$(PREFIX)/bin/undertagd $(DESTDIR)$(PREFIX)/bin/undertag
-	rm -rf $(DESTDIR)$(PREFIX)/share/doc/undertag
+	rm -f $(addprefix $(DESTDIR)$(UNIT_DIR)/,$(UNITS)) $(DESTDIR)$(SYSUSERS_DIR)/undertag.conf \
+	    $(DESTDIR)$(TMPFILES_DIR)/undertag.conf
+	rm -rf $(DESTDIR)$(DOC_DIR)
 
 clean:
 	rm -rf build build-*

@@ -350,7 +350,9 @@ static uint64_t keep_up(struct writer *writer)
 static bool wait_for_changes(struct writer *writer, uint64_t most_ms, bool *ret_queued)
 {
     struct timespec deadline = sync_deadline(most_ms == WAIT_FOR_EVER ? 0 : most_ms);
+    struct heartbeat *heartbeat = backlog_heartbeat(writer->settings.backlog);
     int code = 0;
+    heartbeat_rest(heartbeat, HEART_WRITER);
     sync_lock(&writer->mutex);
     while (!writer->queued.first && !writer->woken && !writer->stopping && code == 0) {
         code = most_ms == WAIT_FOR_EVER
@@ -361,6 +363,7 @@ static bool wait_for_changes(struct writer *writer, uint64_t most_ms, bool *ret_
     *ret_queued = writer->queued.first != NULL;
     bool goes_on = *ret_queued || !writer->stopping;
     sync_unlock(&writer->mutex);
+    heartbeat_work(heartbeat, HEART_WRITER);
     return goes_on;
 }
 

@@ -99,6 +99,7 @@ static int put_record(struct store_view *view, const struct standing_item *stand
     if (record->change == ITEM_FILED) {
         record->filed_seq = record->seq;
         record->filed_stored_at_ms = record->stored_at_ms;
+        record->filed_uid = record->uid;
     }
     encode(buffer, record, content);
     if (buffer->failed) {

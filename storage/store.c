@@ -93,7 +93,7 @@ static int get_meta(struct store_view *view, unsigned char uuid[STORE_UUID_BYTES
     view->totals.seq = codec_get_u64(&reader);
     view->totals.items = codec_get_u64(&reader);
     view->totals.tags = codec_get_u64(&reader);
-    if (!reader.failed && format < STORE_FORMAT) {
+    if (!reader.failed && format < STORE_FORMAT_OLDEST) {
         return store_fail(error, STORE_DENIED,
                           "the store has format %u, of an early version whose items cannot be "
                           "taken over: file them again into a new home",

@@ -30,7 +30,8 @@
 #include "storage/store_error.h"
 
 enum {
-    STORE_FORMAT = 2,
+    STORE_FORMAT = 3,
+    STORE_FORMAT_OLDEST = 2, /* that is still read; the first commit makes it the present one */
     STORE_UUID_BYTES = 16
 };
 

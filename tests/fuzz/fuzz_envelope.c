@@ -38,8 +38,8 @@ static void hold(struct call *call, const json_t *params)
     world->held[world->held_count++] = call;
 }
 
-static const struct method METHODS[] = {{"item.show", METHOD_READ, show},
-                                        {"item.file", METHOD_CHANGE, hold}};
+static const struct method METHODS[] = {{"item.show", METHOD_READ, RIGHT_READ, show},
+                                        {"item.file", METHOD_CHANGE, RIGHT_FILE, hold}};
 
 static void on_ended(void *user)
 {
@@ -193,8 +193,8 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
     struct world world = {.held_count = 0};
     world.table = (struct method_table){
         .methods = METHODS, .count = sizeof METHODS / sizeof METHODS[0], .context = &world};
-    world.queue =
-        (struct call_queue){.table = &world.table, .user = &world, .ended = on_ended, .uid = 1911};
+    world.queue = (struct call_queue){
+        .table = &world.table, .user = &world, .ended = on_ended, .peer = {.uid = 1911}};
     while (input.size > 0) {
         struct fuzz_input line = fuzz_until(&input, '\n');
         char *copy = fuzz_copy(line);

@@ -53,8 +53,10 @@ static void open_world(void)
                                              .changes_done = methods_wake};
     FUZZ_NEED(engine_open(&settings, &world.engine, error) == 0, error);
     methods_use(world.methods, world.engine);
-    world.queue = (struct call_queue){
-        .table = methods_table(world.methods), .user = &world, .ended = on_ended, .uid = 1911};
+    world.queue = (struct call_queue){.table = methods_table(world.methods),
+                                      .user = &world,
+                                      .ended = on_ended,
+                                      .peer = {.uid = 1911}};
     world.inputs = 0;
 }
 

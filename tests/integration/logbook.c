@@ -13,7 +13,7 @@
 enum {
     SUBJECTS = 8,
     WORDS = 4,
-    BESIDE = 5000 /* other words, of no subject */
+    BESIDE = 200000 /* other words, of no subject */
 };
 
 static const struct {

@@ -207,8 +207,8 @@ static void the_client_ends_with_try_again(void **state)
 /* --- a model that cannot be stored ----------------------------------------------------------- */
 
 enum {
-    ENTRIES = 400,
-    WORDS = 60 /* of some 5,000 different ones, more than 64 MiB have room for unstored */
+    ENTRIES = 1200,
+    WORDS = 60 /* most of them in no other entry: more than 64 MiB have room for unstored */
 };
 
 /* What was filed with memory for all of it is to be learned again with little, and no room. */

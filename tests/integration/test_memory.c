@@ -19,7 +19,7 @@
 
 enum {
     ITEMS = 900,
-    WORDS = 40, /* of some 5,000 different ones, more than 64 MiB have room for unstored */
+    WORDS = 40, /* most of them in no other entry: more than 64 MiB have room for unstored */
     DRAFTS = 20,
     MIB = 1 << 20
 };

@@ -16,9 +16,9 @@
 #include "tests/integration/weights_checksum.h"
 
 enum {
-    CHANGES = 400,
+    CHANGES = 900,
     WINDOW = 32, /* changes under way */
-    WORDS = 60,  /* of some 5,000 different ones, more than 64 MiB have room for unstored */
+    WORDS = 60,  /* most of them in no other entry: more than 64 MiB have room for unstored */
     TEXT_BYTES = 12 * WORDS + 1
 };
 

@@ -107,7 +107,7 @@ def rehearsed(split, options, folder):
         return None
     with trial.running(options.daemon, folder, [*options.set, REHEARSING]) as connection:
         start = time.monotonic()
-        if not trial.rehearse(connection, len(split.train)):
+        if not trial.rehearse(connection):
             return {"figures": None}
         seconds = time.monotonic() - start
         ranked, _ = trial.ask(connection, split.test, split.numbers)

@@ -138,7 +138,7 @@ int model_ask(const struct model *model, const struct model_question *question,
               struct model_scratch *scratch, struct model_answer *ret_answer)
     __attribute__((warn_unused_result));
 
-/* --- rehearsal: learning filed items once more --------------------------------------------------
+/* --- rehearsal: learning filed items again ------------------------------------------------------
  */
 
 struct model_rehearsal {
@@ -158,7 +158,7 @@ uint64_t model_rehearsals_due(const struct model *model);
 int model_next_rehearsal(struct model *model, const struct base *base, uint64_t *ret_number)
     __attribute__((warn_unused_result));
 
-/* Learns that item once more. Returns 0, -ENOMEM or -EIO; after either the model must not be used
+/* Learns that item again. Returns 0, -ENOMEM or -EIO; after either the model must not be used
  * any more. */
 int model_rehearse(struct model *model, const struct model_item *item,
                    struct model_scratch *scratch) __attribute__((warn_unused_result));

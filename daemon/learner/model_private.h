@@ -189,7 +189,7 @@ int model_score_lanes(struct model *model, struct model_scratch *scratch)
 double model_step(const struct model *model);
 double model_rehearsal_step(const struct model *model);
 
-/* Whether the vocabulary is one of many tags, whose settings differ from those for a few hundred. */
+/* Whether there are so many tags that steps differ from those for a few hundred. */
 bool model_is_large(const struct model *model);
 
 /* --- model_mark: the item at hand --- */

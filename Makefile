@@ -3,14 +3,17 @@
 #   make            build/undertagd and build/undertag
 #   make demo       the main job on an invented stream
 #   make test       unit, integration and reference tests
-#   make lint       format check, clang-tidy, cppcheck, a clang build
+#   make lint       format check, clang-tidy, cppcheck, a clang build, the units of systemd
 #   make sanitize   the tests under ASan+UBSan and TSan; make valgrind: the unit tests
+#   make fuzz       each fuzz target for FUZZ_SECONDS, under ASan and UBSan
 #   make corpora    D and W from Debian's own packages; make quality, make bench: figures on them
-#   make install    DESTDIR and PREFIX as usual
+#   make install    DESTDIR, PREFIX and SYSCONFDIR as usual
 
 BUILD ?= build
 PREFIX ?= /usr/local
 DESTDIR ?=
+# Where the service looks for its configuration.
+SYSCONFDIR ?= $(if $(filter /usr /usr/local,$(PREFIX)),/etc,$(PREFIX)/etc)
 CFLAGS ?= -O2 -g
 CC ?= cc
 PYTHON ?= /usr/bin/python3
@@ -53,10 +56,14 @@ PROGRAMS := $(BUILD)/undertagd $(BUILD)/undertag
 UNIT_PROGRAMS := $(addprefix $(BUILD)/tests/,$(UNIT_TESTS))
 INTEGRATION_PROGRAMS := $(addprefix $(BUILD)/tests/,$(INTEGRATION_TESTS))
 REFERENCE_PROGRAMS := $(addprefix $(BUILD)/tests/,$(REFERENCE_TESTS))
-TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS)
+FUZZ_SOURCES := $(wildcard tests/fuzz/fuzz_*.c)
+# One target, two programs: replaying files, and looking for more of them (see `make fuzz`).
+FUZZ_PROGRAMS := $(patsubst tests/fuzz/%.c,$(BUILD)/tests/%,$(FUZZ_SOURCES))
+FUZZERS := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzzers/%,$(FUZZ_SOURCES))
+TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FUZZ_PROGRAMS)
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
-.PHONY: all demo test lint sanitize valgrind corpora quality bench install uninstall clean \
+.PHONY: all demo test lint check-units sanitize valgrind fuzz build-fuzzers corpora quality bench install uninstall clean \
         build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
@@ -120,6 +127,17 @@ $(REFERENCE_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -llinear -o $@
 
+$(FUZZ_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/fuzz/%.o $(BUILD)/tests/fuzz/replay.o $(LIBRARY)
+	@mkdir -p $(@D)
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
+
+# libFuzzer brings the main function; LDFLAGS name it.
+$(FUZZERS): $(BUILD)/fuzzers/%: $(BUILD)/tests/fuzz/%.o $(LIBRARY)
+	@mkdir -p $(@D)
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) -o $@
+
 $(BENCH_PROGRAMS): $(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(BENCH_HELPERS) $(LIBRARY) $(CLIENT_LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
@@ -144,8 +162,8 @@ test: packages-build packages-test
 
 build-tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BENCH_PROGRAMS)
 
-# GROUPS: of unit, integration, reference and python; WRAPPER: what to run the programs under.
-GROUPS ?= unit integration reference python
+# GROUPS: of unit, integration, reference, fuzz and python; WRAPPER: what to run the programs under.
+GROUPS ?= unit integration reference fuzz python
 run-tests: build-tests
 	@BUILD=$(BUILD) PYTHON=$(PYTHON) WRAPPER='$(WRAPPER)' sh tests/run $(GROUPS)
 
@@ -186,11 +204,17 @@ lint: packages-build packages-test packages-lint
 	@printf '%s\n' $(ALL_SOURCES) | xargs -P $(JOBS) -I '{}' \
 	    clang-tidy --quiet '{}' -- $(BASE_CFLAGS) $(PACKAGE_CFLAGS) 2>/dev/null
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-clang CC=clang CI=true build-tests
+	@echo the units of systemd
+	@$(MAKE) --no-print-directory -s check-units
+
+check-units: packages-build packages-lint
+	@$(MAKE) --no-print-directory -j $(JOBS) all
+	@sh config/check-units $(BUILD)
 
 # Benchmarks and Python have nothing to say under a sanitizer.
 sanitize: packages-build packages-test packages-lint
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-asan CC=clang run-tests \
-	    GROUPS='unit integration reference' \
+	    GROUPS='unit integration reference fuzz' \
 	    CFLAGS='-O1 -g -fno-omit-frame-pointer -fsanitize=address,undefined -fno-sanitize-recover=all'
 	@TSAN_OPTIONS=suppressions=$(CURDIR)/tests/tsan.supp \
 	$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-tsan CC=clang run-tests \
@@ -200,16 +224,46 @@ valgrind: packages-build packages-test
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-valgrind CFLAGS='-O1 -g' run-tests \
 	    GROUPS=unit WRAPPER='valgrind -q --fair-sched=yes --error-exitcode=99 --leak-check=full'
 
+# FUZZ_TARGETS: which, as in `make fuzz FUZZ_TARGETS=text`; all of them otherwise.
+FUZZ_SECONDS ?= 600
+FUZZ_TARGETS ?= $(patsubst tests/fuzz/fuzz_%.c,%,$(FUZZ_SOURCES))
+fuzz: packages-build packages-lint
+	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-fuzz CC=clang build-fuzzers \
+	    CFLAGS='-O1 -g -fno-omit-frame-pointer -fsanitize=fuzzer-no-link,address,undefined -fno-sanitize-recover=all' \
+	    LDFLAGS='-fsanitize=fuzzer'
+	@BUILD=build-fuzz sh tests/fuzz/run $(FUZZ_SECONDS) $(FUZZ_TARGETS)
+
+build-fuzzers: $(FUZZERS)
+
 # --- installing ---------------------------------------------------------------------------------
 
+UNITS := undertagd.service undertagd.socket
+DOC_DIR = $(PREFIX)/share/doc/undertag
+UNIT_DIR = $(PREFIX)/lib/systemd/system
+SYSUSERS_DIR = $(PREFIX)/lib/sysusers.d
+TMPFILES_DIR = $(PREFIX)/lib/tmpfiles.d
+CONFIG_DIR = $(SYSCONFDIR)/undertag
+
+# A configuration that is there already stays as it is.
 install: all
-	install -d $(DESTDIR)$(PREFIX)/bin $(DESTDIR)$(PREFIX)/share/doc/undertag
+	install -d $(addprefix $(DESTDIR),$(PREFIX)/bin $(DOC_DIR) $(UNIT_DIR) $(SYSUSERS_DIR) \
+	    $(TMPFILES_DIR) $(CONFIG_DIR))
 	install -m 755 $(PROGRAMS) $(DESTDIR)$(PREFIX)/bin
-	install -m 644 README.md LICENSE config/undertag.ini $(DESTDIR)$(PREFIX)/share/doc/undertag
+	install -m 644 README.md LICENSE config/undertag.ini $(DESTDIR)$(DOC_DIR)
+	test -e $(DESTDIR)$(CONFIG_DIR)/undertag.ini || \
+	    install -m 644 config/undertag.ini $(DESTDIR)$(CONFIG_DIR)
+	for unit in $(UNITS); do \
+	    sed 's|/usr/local|$(PREFIX)|g; s|/etc/undertag|$(CONFIG_DIR)|g' config/$$unit \
+	        > $(DESTDIR)$(UNIT_DIR)/$$unit && chmod 644 $(DESTDIR)$(UNIT_DIR)/$$unit || exit 1; \
+	done
+	install -m 644 config/undertag.sysusers $(DESTDIR)$(SYSUSERS_DIR)/undertag.conf
+	install -m 644 config/undertag.tmpfiles $(DESTDIR)$(TMPFILES_DIR)/undertag.conf
 
 uninstall:
 	rm -f $(DESTDIR)$(PREFIX)/bin/undertagd $(DESTDIR)$(PREFIX)/bin/undertag
-	rm -rf $(DESTDIR)$(PREFIX)/share/doc/undertag
+	rm -f $(addprefix $(DESTDIR)$(UNIT_DIR)/,$(UNITS)) $(DESTDIR)$(SYSUSERS_DIR)/undertag.conf \
+	    $(DESTDIR)$(TMPFILES_DIR)/undertag.conf
+	rm -rf $(DESTDIR)$(DOC_DIR)
 
 clean:
 	rm -rf build build-*

@@ -1,6 +1,7 @@
 /*
  * undertag: asks a running undertagd. Options, the table of commands, and how it ends.
  */
+#include <jansson.h>
 #include <signal.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -283,6 +284,7 @@ int main(int argc, char **argv)
     struct client client = {0};
     struct request request = {0};
     struct failure failure = {0};
+    json_object_seed(0); /* at random: nobody can choose names that collide */
     screen_init(&client.out, stdout);
     screen_init(&client.err, stderr);
     if (signal(SIGPIPE, SIG_IGN) == SIG_ERR) {

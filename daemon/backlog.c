@@ -49,6 +49,7 @@ struct backlog {
     bool trainer_failed;
     bool trainer_waits;
     bool stopping;
+    struct heartbeat heartbeat; /* not under the mutex */
 };
 
 int backlog_new(const struct backlog_start *start, struct backlog **ret_backlog)
@@ -131,12 +132,14 @@ static bool is_nobody_learning(const struct backlog *backlog)
 
 uint64_t backlog_wait_for_room(struct backlog *backlog)
 {
+    heartbeat_rest(&backlog->heartbeat, HEART_WRITER);
     sync_lock(&backlog->mutex);
     while (room(backlog) == 0 && !backlog->stopping && !is_nobody_learning(backlog)) {
         (void)pthread_cond_wait(&backlog->learned_more, &backlog->mutex);
     }
     uint64_t cost = is_nobody_learning(backlog) ? UINT64_MAX : room(backlog);
     sync_unlock(&backlog->mutex);
+    heartbeat_work(&backlog->heartbeat, HEART_WRITER);
     return cost > 0 ? cost : 1;
 }
 
@@ -154,6 +157,7 @@ static void add_mark(struct backlog *backlog, struct mark mark)
 
 void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t now_ms)
 {
+    heartbeat_work(&backlog->heartbeat, HEART_WRITER);
     sync_lock(&backlog->mutex);
     if (is_catching_up(backlog)) {
         backlog->found = seq;
@@ -173,17 +177,20 @@ void backlog_committed(struct backlog *backlog, uint64_t seq, uint64_t cost, uin
 void backlog_pause(struct backlog *backlog, uint64_t time_ms)
 {
     struct timespec deadline = sync_deadline(time_ms);
+    heartbeat_rest(&backlog->heartbeat, HEART_TRAINER);
     sync_lock(&backlog->mutex);
     int code = 0;
     while (!backlog->stopping && code == 0) {
         code = pthread_cond_timedwait(&backlog->committed_more, &backlog->mutex, &deadline);
     }
     sync_unlock(&backlog->mutex);
+    heartbeat_work(&backlog->heartbeat, HEART_TRAINER);
 }
 
 uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64_t timeout_ms)
 {
     struct timespec deadline = sync_deadline(timeout_ms);
+    heartbeat_rest(&backlog->heartbeat, HEART_TRAINER);
     sync_lock(&backlog->mutex);
     int code = 0;
     while (backlog->numbers.committed <= learned && !backlog->stopping && !backlog->nudged &&
@@ -193,11 +200,13 @@ uint64_t backlog_wait_for_work(struct backlog *backlog, uint64_t learned, uint64
     backlog->nudged = false;
     uint64_t committed = backlog->numbers.committed;
     sync_unlock(&backlog->mutex);
+    heartbeat_work(&backlog->heartbeat, HEART_TRAINER);
     return committed;
 }
 
 void backlog_learned(struct backlog *backlog, uint64_t seq, uint64_t cost, uint64_t took_us)
 {
+    heartbeat_work(&backlog->heartbeat, HEART_TRAINER);
     sync_lock(&backlog->mutex);
     bool was_promised = seq > backlog->found;
     backlog->numbers.learned = seq;
@@ -303,6 +312,11 @@ struct backlog_numbers backlog_read(struct backlog *backlog)
     numbers.kept = numbers.kept < backlog->held ? numbers.kept : backlog->held;
     sync_unlock(&backlog->mutex);
     return numbers;
+}
+
+struct heartbeat *backlog_heartbeat(struct backlog *backlog)
+{
+    return &backlog->heartbeat;
 }
 
 void backlog_stop(struct backlog *backlog)

@@ -17,6 +17,8 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "daemon/heartbeat.h"
+
 struct backlog;
 
 struct backlog_start {
@@ -90,6 +92,9 @@ struct backlog_numbers {
 };
 
 struct backlog_numbers backlog_read(struct backlog *backlog);
+
+/* Of the writer and the trainer. What they do here moves it; the writer also waits elsewhere. */
+struct heartbeat *backlog_heartbeat(struct backlog *backlog);
 
 /* Everybody who waits returns, now and from now on. */
 void backlog_stop(struct backlog *backlog);

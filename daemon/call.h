@@ -15,9 +15,9 @@
 
 #include <jansson.h>
 #include <stddef.h>
-#include <sys/types.h>
 
 #include "daemon/fault.h"
+#include "daemon/rights.h"
 
 struct call;
 
@@ -29,6 +29,7 @@ enum method_kind {
 struct method {
     const char *name; /* as on the wire: "item.file" */
     enum method_kind kind;
+    enum right right; /* what a peer must be allowed */
     /* Loop thread. `params` is an object, borrowed until the call has ended. */
     void (*start)(struct call *call, const json_t *params);
 };
@@ -37,13 +38,17 @@ struct method_table {
     const struct method *methods;
     size_t count;
     void *context; /* what call_context returns; belongs to the caller of server_new */
+    /* Whether the peer may call the method: 0, or a code with the fault filled. NULL: everybody may
+     * call everything. Loop thread. */
+    int (*check)(void *context, const struct method *method, const struct rights_peer *peer,
+                 struct fault *fault);
 };
 
 /* What the method table was made with. */
 void *call_context(const struct call *call);
 
-/* The user id of the peer, from the socket's credentials. */
-uid_t call_uid(const struct call *call);
+/* The user id of the peer, from the socket's credentials; RIGHTS_NO_ID where nobody knows it. */
+uint32_t call_uid(const struct call *call);
 
 /* Ends the call with a result, of which it takes the reference. NULL (no memory) ends it with
  * -32603. */

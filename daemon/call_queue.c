@@ -88,6 +88,14 @@ void call_queue_add_fault(struct call_queue *queue, const struct fault *fault, s
     append(queue, call);
 }
 
+/* Whether the peer may call it, by what the table says now. */
+static int check_right(const struct call_queue *queue, const struct method *method,
+                       struct fault *fault)
+{
+    const struct method_table *table = queue->table;
+    return table->check ? table->check(table->context, method, &queue->peer, fault) : 0;
+}
+
 static struct call *add_request(struct call_queue *queue, const json_t *text)
 {
     struct fault fault = {0};
@@ -95,7 +103,8 @@ static struct call *add_request(struct call_queue *queue, const json_t *text)
     if (!call) {
         return NULL;
     }
-    if (rpc_read(text, queue->table, &call->request, &fault) < 0) {
+    if (rpc_read(text, queue->table, &call->request, &fault) < 0 ||
+        (!queue->stopping && check_right(queue, call->request.method, &fault) < 0)) {
         end_with_fault(call, &fault);
     } else if (queue->stopping) {
         refuse_stopping(call);
@@ -250,9 +259,9 @@ void *call_context(const struct call *call)
     return call->queue->table->context;
 }
 
-uid_t call_uid(const struct call *call)
+uint32_t call_uid(const struct call *call)
 {
-    return call->queue->uid;
+    return call->queue->peer.uid;
 }
 
 void call_answer_take(struct call *call, json_t *result)

@@ -37,7 +37,7 @@ struct call_queue {
     const struct method_table *table;
     void *user;
     void (*ended)(void *user); /* a call has ended, perhaps while call_queue_start runs */
-    uid_t uid;                 /* of the peer */
+    struct rights_peer peer;   /* borrowed for the queue's life */
     bool stopping;             /* refuse what has not started with -32006 */
     bool broken; /* out of memory: the order of answers cannot be kept; close the connection */
 

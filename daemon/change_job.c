@@ -4,6 +4,7 @@
 #include <string.h>
 
 #include "daemon/clock.h"
+#include "daemon/item_source.h"
 #include "daemon/pointer.h"
 #include "daemon/read_job.h"
 
@@ -111,7 +112,7 @@ static int fault_of_change(const struct change_job *job, struct fault *fault)
         return 0;
     case STORE_REFUSED:
         if (change->has_too_many_words) {
-            return fault_set(fault, FAULT_LIMIT, change->filing.text.size > 0 ? "/text" : "/title",
+            return fault_set(fault, FAULT_LIMIT, item_source_longest(change->counted),
                              "An item holds at most words_limit different words, which is %zu: "
                              "file it in parts.",
                              change->words_limit);

@@ -20,6 +20,7 @@ const char COMMAND_LINE_HELP[] =
     "  --config FILE      options, one 'name = value' a line\n"
     "  --set NAME=VALUE   one option, over what the file says; may be repeated\n"
     "  --check-config     say whether the options are right, and end\n"
+    "  --verify           look through the home for damage, change nothing, and end\n"
     "  --version          print the version, and end\n"
     "  --help             print this, and end\n"
     "\n"
@@ -32,6 +33,7 @@ enum {
     OPTION_CONFIG,
     OPTION_SET,
     OPTION_CHECK,
+    OPTION_VERIFY,
     OPTION_VERSION,
     OPTION_HELP
 };
@@ -42,6 +44,7 @@ static const struct option LONG_OPTIONS[] = {
     {"config", required_argument, NULL, OPTION_CONFIG},
     {"set", required_argument, NULL, OPTION_SET},
     {"check-config", no_argument, NULL, OPTION_CHECK},
+    {"verify", no_argument, NULL, OPTION_VERIFY},
     {"version", no_argument, NULL, OPTION_VERSION},
     {"help", no_argument, NULL, OPTION_HELP},
     {NULL, 0, NULL, 0},
@@ -83,6 +86,9 @@ static int take_option(struct command_line *line, int option, char **argv, char 
         return 0;
     case OPTION_CHECK:
         line->check_config = true;
+        return 0;
+    case OPTION_VERIFY:
+        line->verify = true;
         return 0;
     case OPTION_VERSION:
         line->version = true;

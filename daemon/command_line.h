@@ -23,6 +23,7 @@ struct command_line {
     const char **settings;  /* name=value, as given; owned */
     size_t setting_count;
     bool check_config;
+    bool verify;
     bool version;
     bool help;
 };

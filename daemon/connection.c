@@ -13,10 +13,10 @@
 #include <assert.h>
 #include <stdlib.h>
 #include <string.h>
-#include <sys/socket.h>
 
 #include "daemon/call_queue.h"
 #include "daemon/lines.h"
+#include "daemon/peer_identity.h"
 
 enum {
     READ_BYTES = 64 * 1024,
@@ -54,6 +54,7 @@ static void free_when_over(struct connection *connection)
     lines_deinit(&connection->lines);
     free(connection->filling.bytes);
     free(connection->writing.bytes);
+    peer_identity_deinit(&connection->calls.peer);
     if (connection->settings.gone) {
         connection->settings.gone(connection->settings.user, connection);
     }
@@ -286,16 +287,11 @@ static void on_call_ended(void *user)
 /* --- life ---------------------------------------------------------------------------------------
  */
 
-static uid_t peer_uid(uv_pipe_t *handle)
+static void read_peer(uv_pipe_t *handle, struct rights_peer *peer)
 {
-    uv_os_fd_t fd = -1;
-    struct ucred peer;
-    socklen_t size = sizeof peer;
-    if (uv_fileno((uv_handle_t *)handle, &fd) < 0 ||
-        getsockopt(fd, SOL_SOCKET, SO_PEERCRED, &peer, &size) < 0) {
-        return (uid_t)-1;
-    }
-    return peer.uid;
+    uv_os_fd_t fd = -1; /* which nobody is behind */
+    (void)uv_fileno((uv_handle_t *)handle, &fd);
+    peer_identity_read(fd, peer);
 }
 
 int connection_accept(const struct connection_settings *settings, uv_stream_t *listener,
@@ -319,10 +315,9 @@ int connection_accept(const struct connection_settings *settings, uv_stream_t *l
         return code;
     }
     lines_init(&connection->lines, settings->line_limit_bytes);
-    connection->calls = (struct call_queue){.table = settings->table,
-                                            .user = connection,
-                                            .ended = on_call_ended,
-                                            .uid = peer_uid(&connection->handle)};
+    connection->calls =
+        (struct call_queue){.table = settings->table, .user = connection, .ended = on_call_ended};
+    read_peer(&connection->handle, &connection->calls.peer);
     *ret_connection = connection;
     return 0;
 }

@@ -6,6 +6,7 @@
 #include <stdio.h>
 #include <string.h>
 
+#include "daemon/log.h"
 #include "daemon/params.h"
 #include "daemon/pointer.h"
 #include "daemon/read_job.h"
@@ -17,6 +18,7 @@ enum {
 struct rebuild_job {
     struct read_job job; /* first */
     struct options configured;
+    uint32_t uid; /* who asked */
 };
 
 static int fail_setting(struct fault *fault, const char *name, const char *sentence)
@@ -105,6 +107,7 @@ static void run(struct read_job *base)
     } else if (code < 0) {
         (void)read_job_fail(base, &error);
     } else {
+        log_line(LOG_NOTE, "rebuild: user %lu asked for it", (unsigned long)job->uid);
         base->result = json_pack("{s:I}", "seq", (json_int_t)seq);
     }
 }
@@ -117,6 +120,7 @@ void daemon_rebuild(struct call *call, const json_t *params)
         return;
     }
     job->job.run = run;
+    job->uid = call_uid(call);
     job->configured = *job->job.methods->options;
     read_job_start(&job->job, params_known(params, MEMBERS, &job->job.fault));
 }

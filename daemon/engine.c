@@ -399,6 +399,11 @@ struct workspaces *engine_workspaces(struct engine *engine)
     return &engine->workspaces;
 }
 
+struct heartbeat *engine_heartbeat(struct engine *engine)
+{
+    return backlog_heartbeat(engine->backlog);
+}
+
 struct troubles *engine_troubles(struct engine *engine)
 {
     return &engine->troubles;

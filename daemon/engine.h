@@ -100,6 +100,9 @@ struct engine_size {
 /* Waits for the model's lock. */
 void engine_measure(struct engine *engine, struct engine_size *ret_size);
 
+/* Whether the two threads move. */
+struct heartbeat *engine_heartbeat(struct engine *engine);
+
 struct troubles *engine_troubles(struct engine *engine);
 
 #endif

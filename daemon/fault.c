@@ -35,6 +35,20 @@ static void make_valid(char *text, int written, size_t size)
     }
 }
 
+/* A sentence is one line, and says nothing to a terminal but itself. The characters are those of
+ * Unicode's general category Cc. */
+static void hide_controls(char *text)
+{
+    for (unsigned char *at = (unsigned char *)text; *at != '\0'; at++) {
+        if (*at < 0x20 || *at == 0x7F) {
+            *at = '?';
+        } else if (*at == 0xC2 && at[1] >= 0x80 && at[1] < 0xA0) {
+            *at = '?';
+            at[1] = '?';
+        }
+    }
+}
+
 int fault_set(struct fault *fault, enum fault_code code, const char *field, const char *format, ...)
 {
     if (fault->code != 0) {
@@ -48,5 +62,6 @@ int fault_set(struct fault *fault, enum fault_code code, const char *field, cons
     written = vsnprintf(fault->message, sizeof fault->message, format, arguments);
     va_end(arguments);
     make_valid(fault->message, written, sizeof fault->message);
+    hide_controls(fault->message);
     return fault->code;
 }

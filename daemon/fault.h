@@ -38,7 +38,8 @@ enum {
 struct fault {
     int code;                      /* 0 while there is none */
     char field[FAULT_FIELD_BYTES]; /* JSON Pointer into params; "" where no member is to blame */
-    char message[FAULT_MESSAGE_BYTES]; /* one sentence, UTF-8, never cut inside a character */
+    char message[FAULT_MESSAGE_BYTES]; /* one sentence, UTF-8, never cut inside a character, with
+                                        * '?' for control characters */
 };
 
 /*

@@ -125,7 +125,7 @@ static int take_out_words(struct gaps_job *job, const struct features_source *so
     struct features *features = job->workspace->features;
     int code = features_extract(features, source, job->id.size > 0 ? SIZE_MAX : job->words_limit);
     if (code == -E2BIG) {
-        return fault_set(&job->job.fault, FAULT_LIMIT, job->text.size > 0 ? "/text" : "/title",
+        return fault_set(&job->job.fault, FAULT_LIMIT, item_source_longest(source),
                          "A draft holds at most words_limit different words, which is %zu.",
                          job->words_limit);
     }

@@ -104,6 +104,12 @@ static json_t *time_json(int64_t time_ms)
     return json_string(text);
 }
 
+/* The user that a change came from; null where that was not noted. */
+static json_t *uid_json(uint32_t uid)
+{
+    return uid == ITEM_NO_UID ? json_null() : json_integer((json_int_t)uid);
+}
+
 static json_t *check_json(struct read_job *job, struct store_view *view,
                           const struct item_check *check)
 {
@@ -111,9 +117,9 @@ static json_t *check_json(struct read_job *job, struct store_view *view,
         return json_null();
     }
     json_t *tags = names_json(job, view, check->tags);
-    return tags ? json_pack("{s:o, s:s, s:o, s:o}", "tags", tags, "drawn",
+    return tags ? json_pack("{s:o, s:s, s:o, s:o, s:o}", "tags", tags, "drawn",
                             check->is_random ? "random" : "picked", "at", time_json(check->at_ms),
-                            "checker", text_or_null(check->checker))
+                            "checker", text_or_null(check->checker), "uid", uid_json(check->uid))
                 : NULL;
 }
 
@@ -124,15 +130,41 @@ static json_t *seconds_json(struct read_job *job, struct store_view *view,
     for (size_t i = 0; seconds && i < record->second_count; i++) {
         const struct item_second *second = &record->seconds[i];
         json_t *tags = names_json(job, view, second->tags);
-        json_t *entry = tags ? json_pack("{s:o, s:o, s:o}", "tagger", text_json(second->tagger),
-                                         "tags", tags, "filed_at", text_or_null(second->filed_at))
-                             : NULL;
+        json_t *entry = tags
+                            ? json_pack("{s:o, s:o, s:o, s:o}", "tagger", text_json(second->tagger),
+                                        "tags", tags, "filed_at", text_or_null(second->filed_at),
+                                        "uid", uid_json(second->uid))
+                            : NULL;
         if (json_array_append_new(seconds, entry) < 0) {
             json_decref(seconds);
             return NULL;
         }
     }
     return seconds;
+}
+
+static json_t *rulings_json(struct read_job *job, struct store_view *view,
+                            const struct item_record *record)
+{
+    struct store_error error = {0};
+    struct vocabulary_tag tag;
+    json_t *rulings = json_array();
+    for (size_t i = 0; rulings && i < record->ruling_count; i++) {
+        const struct item_ruling *ruling = &record->rulings[i];
+        json_t *entry = NULL;
+        if (vocabulary_get(view, ruling->tag, &tag, &error) != STORE_OK) {
+            (void)read_job_fail(job, &error); /* told at the end */
+        } else {
+            entry = json_pack("{s:s, s:b, s:o, s:o, s:o}", "tag", tag.name, "belongs",
+                              (int)ruling->belongs, "editor", text_or_null(ruling->editor), "at",
+                              time_json(ruling->at_ms), "uid", uid_json(ruling->uid));
+        }
+        if (json_array_append_new(rulings, entry) < 0) {
+            json_decref(rulings);
+            return NULL;
+        }
+    }
+    return rulings;
 }
 
 static json_t *item_json(struct read_job *job, struct store_view *view,
@@ -146,6 +178,7 @@ static json_t *item_json(struct read_job *job, struct store_view *view,
     answer_add(&item, "fields", fields_json(record->fields));
     answer_add(&item, "language", text_or_null(record->language));
     answer_add(&item, "tagger", text_or_null(record->tagger));
+    answer_add(&item, "uid", uid_json(record->filed_uid));
     answer_add(&item, "filed_at", text_or_null(record->filed_at));
     answer_add(&item, "stored_at", time_json(record->filed_stored_at_ms));
     answer_add(&item, "tags", names_json(job, view, record->tags));
@@ -154,6 +187,7 @@ static json_t *item_json(struct read_job *job, struct store_view *view,
     answer_add(&item, "declined", names_json(job, view, record->declined));
     answer_add(&item, "belongs", names_json(job, view, record->belongs));
     answer_add(&item, "not", names_json(job, view, record->denied));
+    answer_add(&item, "rulings", rulings_json(job, view, record));
     answer_add(&item, "checked", check_json(job, view, &record->check));
     answer_add(&item, "second", seconds_json(job, view, record));
     return item;

@@ -49,3 +49,15 @@ int item_source_fill(struct item_source *source, const struct item_record *recor
                                               .field_count = source->fields.count};
     return 0;
 }
+
+const char *item_source_longest(const struct features_source *source)
+{
+    size_t fields_bytes = 0;
+    for (size_t i = 0; i < source->field_count; i++) {
+        fields_bytes += strlen(source->fields[i].name) + strlen(source->fields[i].value);
+    }
+    if (fields_bytes > source->text_bytes && fields_bytes > source->title_bytes) {
+        return "/fields";
+    }
+    return source->title_bytes > source->text_bytes ? "/title" : "/text";
+}

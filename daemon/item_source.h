@@ -29,4 +29,8 @@ void item_source_deinit(struct item_source *source);
 int item_source_fill(struct item_source *source, const struct item_record *record)
     __attribute__((warn_unused_result));
 
+/* Which member of params has most of the words, as a JSON Pointer: the one to blame where there are
+ * too many. */
+const char *item_source_longest(const struct features_source *source);
+
 #endif

@@ -59,16 +59,17 @@ void lines_added(struct lines *lines, size_t count)
 static enum lines_found take(struct lines *lines, size_t stop, size_t taken, char **ret_line,
                              size_t *ret_length, size_t *ret_taken)
 {
-    char *line = lines->bytes + lines->start;
-    size_t length = stop - lines->start;
+    size_t start = lines->start;
+    size_t length = stop - start;
     bool was_skipping = lines->skipping;
     lines->start += taken;
     lines->scanned = lines->start;
     lines->skipping = false;
     *ret_taken = taken;
     if (was_skipping || length > lines->limit_bytes) {
-        return LINES_LONG;
+        return LINES_LONG; /* there may be no bytes at all */
     }
+    char *line = lines->bytes + start;
     if (length > 0 && line[length - 1] == '\r') {
         length--;
     }

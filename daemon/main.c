@@ -7,6 +7,7 @@
  */
 #include <assert.h>
 #include <errno.h>
+#include <jansson.h>
 #include <malloc.h>
 #include <signal.h>
 #include <stdio.h>
@@ -15,14 +16,16 @@
 #include <sys/resource.h>
 #include <sys/stat.h>
 #include <sysexits.h>
-#include <systemd/sd-daemon.h>
 #include <uv.h>
 
 #include "daemon/command_line.h"
 #include "daemon/engine.h"
 #include "daemon/log.h"
+#include "daemon/manager.h"
 #include "daemon/methods.h"
 #include "daemon/server.h"
+#include "daemon/verify_home.h"
+#include "daemon/watchdog.h"
 
 enum {
     SIGNALS = 3,
@@ -38,6 +41,9 @@ struct program {
     struct methods *methods;
     struct engine *engine;
     struct server *server;
+    int passed_fd; /* a socket that was passed in; 0: none, or given to the server */
+    struct watchdog watchdog;
+    bool is_watched; /* the watchdog is open */
 };
 
 /* --- stopping -----------------------------------------------------------------------------------
@@ -47,6 +53,10 @@ struct program {
  */
 static void close_all(struct program *program)
 {
+    if (program->is_watched) {
+        watchdog_close(&program->watchdog);
+        program->is_watched = false;
+    }
     if (program->engine) {
         engine_close(program->engine);
         program->engine = NULL;
@@ -75,7 +85,7 @@ static void stop(struct program *program)
     }
     program->server = NULL;
     log_line(LOG_NOTE, "stopping: answering what is under way");
-    (void)sd_notify(0, "STOPPING=1"); /* nobody may be listening */
+    manager_stopping();
     methods_watch(program->methods, NULL);
     server_drain(server, on_drained, program);
 }
@@ -104,9 +114,11 @@ static void reload(struct program *program)
 static void on_signal(uv_signal_t *handle, int number)
 {
     struct program *program = handle->data;
-    if (number == SIGHUP) {
+    if (number == SIGHUP && program->server) {
+        manager_reloading();
         reload(program);
-    } else {
+        manager_ready();
+    } else if (number != SIGHUP) {
         stop(program);
     }
 }
@@ -174,12 +186,13 @@ static int listen_at(struct program *program)
     char error[SERVER_ERROR_BYTES];
     const struct options *options = &program->options;
     const struct server_settings settings = {.socket_path = program->line.socket,
+                                             .passed_fd = program->passed_fd,
                                              .line_limit_bytes = options->line_limit_bytes,
                                              .unread_limit_bytes = options->unread_limit_bytes,
                                              .connections_limit =
                                                  (unsigned)options->connections_limit,
                                              .drain_ms = (unsigned)options->drain_ms};
-    if (program->line.socket_is_default) {
+    if (program->line.socket_is_default && program->passed_fd == 0) {
         int exit_code = make_socket_folder(&program->line, error);
         if (exit_code != 0) {
             return fail(exit_code, error);
@@ -187,6 +200,7 @@ static int listen_at(struct program *program)
     }
     int code = server_new(&program->loop, &settings, methods_table(program->methods),
                           &program->server, error);
+    program->passed_fd = 0;
     if (code < 0) {
         return fail(exit_code_of(code), error);
     }
@@ -213,6 +227,8 @@ static int start(struct program *program)
         return fail(exit_code, error);
     }
     methods_use(program->methods, program->engine);
+    watchdog_start(&program->watchdog, &program->loop, engine_heartbeat(program->engine));
+    program->is_watched = true;
     return listen_at(program);
 }
 
@@ -220,9 +236,9 @@ static void tell_ready(struct program *program)
 {
     struct backlog_numbers numbers = engine_count(program->engine).progress;
     log_line(LOG_NOTE, "ready: home %s, socket %s, %llu changes, %llu to learn", program->line.home,
-             program->line.socket, (unsigned long long)numbers.committed,
+             server_socket_path(program->server), (unsigned long long)numbers.committed,
              (unsigned long long)(numbers.committed - numbers.learned));
-    (void)sd_notify(0, "READY=1"); /* nobody may be listening */
+    manager_ready();
 }
 
 /* As many descriptors as connections, and some for the store. */
@@ -246,6 +262,10 @@ static int serve(struct program *program)
     allow_descriptors(&program->options);
     if (signal(SIGPIPE, SIG_IGN) == SIG_ERR || signal(SIGUSR1, SIG_IGN) == SIG_ERR) {
         return fail(EX_OSERR, strerror(errno));
+    }
+    char error[MANAGER_ERROR_BYTES];
+    if (manager_take_socket(&program->passed_fd, error) < 0) {
+        return fail(EX_CONFIG, error);
     }
     int code = uv_loop_init(&program->loop);
     if (code < 0) {
@@ -273,6 +293,8 @@ int main(int argc, char **argv)
     /* The threads share two heaps: one each would hold holes that nobody else can use. It may only
      * fail for an argument that is none. */
     (void)mallopt(M_ARENA_MAX, 2);
+    /* At random, and before there are threads: nobody can choose names that collide. */
+    json_object_seed(0);
     int exit_code = command_line_read(argc, argv, &program.line, error);
     if (exit_code != 0) {
         return fail(exit_code, error);
@@ -287,6 +309,8 @@ int main(int argc, char **argv)
             (void)fail(exit_code, error); /* it is the same code */
         } else if (program.line.check_config) {
             exit_code = puts("the options are right") < 0 ? EX_IOERR : 0;
+        } else if (program.line.verify) {
+            exit_code = verify_home(program.line.home, &program.options, stdout);
         } else {
             exit_code = serve(&program);
         }

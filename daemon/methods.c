@@ -2,6 +2,7 @@
 
 #include <assert.h>
 #include <stdlib.h>
+#include <unistd.h>
 
 #include "daemon/clock.h"
 #include "daemon/methods_private.h"
@@ -11,22 +12,30 @@ enum {
 };
 
 static const struct method METHODS[] = {
-    {"item.file", METHOD_CHANGE, item_file},
-    {"item.withdraw", METHOD_CHANGE, item_withdraw},
-    {"item.rule", METHOD_CHANGE, item_rule},
-    {"item.check", METHOD_CHANGE, item_check},
-    {"item.gaps", METHOD_READ, item_gaps},
-    {"item.show", METHOD_READ, item_show},
-    {"item.list", METHOD_READ, item_list},
-    {"tag.show", METHOD_READ, tag_show},
-    {"tag.list", METHOD_READ, tag_list},
-    {"desk.sample", METHOD_READ, desk_sample},
-    {"desk.worklist", METHOD_READ, desk_worklist},
-    {"desk.completeness", METHOD_READ, desk_completeness},
-    {"desk.standing", METHOD_READ, desk_standing},
-    {"daemon.state", METHOD_READ, daemon_state},
-    {"daemon.rebuild", METHOD_READ, daemon_rebuild}, /* after all that was filed before it */
+    {"item.file", METHOD_CHANGE, RIGHT_FILE, item_file},
+    {"item.withdraw", METHOD_CHANGE, RIGHT_FILE, item_withdraw},
+    {"item.rule", METHOD_CHANGE, RIGHT_RULE, item_rule},
+    {"item.check", METHOD_CHANGE, RIGHT_RULE, item_check},
+    {"item.gaps", METHOD_READ, RIGHT_READ, item_gaps},
+    {"item.show", METHOD_READ, RIGHT_READ, item_show},
+    {"item.list", METHOD_READ, RIGHT_READ, item_list},
+    {"tag.show", METHOD_READ, RIGHT_READ, tag_show},
+    {"tag.list", METHOD_READ, RIGHT_READ, tag_list},
+    {"desk.sample", METHOD_READ, RIGHT_READ, desk_sample},
+    {"desk.worklist", METHOD_READ, RIGHT_READ, desk_worklist},
+    {"desk.completeness", METHOD_READ, RIGHT_READ, desk_completeness},
+    {"desk.standing", METHOD_READ, RIGHT_READ, desk_standing},
+    {"daemon.state", METHOD_READ, RIGHT_READ, daemon_state},
+    /* a read, so that it comes after all that was filed before it */
+    {"daemon.rebuild", METHOD_READ, RIGHT_OPERATE, daemon_rebuild},
 };
+
+static int check_right(void *context, const struct method *method, const struct rights_peer *peer,
+                       struct fault *fault)
+{
+    struct methods *methods = context;
+    return gate_check(&methods->gate, method, peer, clock_steady_ms(), fault);
+}
 
 static void on_changes_done(uv_async_t *async)
 {
@@ -44,6 +53,7 @@ static void on_sample(uv_timer_t *timer)
     }
     struct engine_counts counts = engine_count(methods->engine);
     uint64_t now_ms = clock_steady_ms();
+    gate_tell(&methods->gate, now_ms);
     meter_sample(&methods->filed, counts.progress.committed, now_ms);
     meter_sample(&methods->learned, counts.progress.learned, now_ms);
     meter_sample(&methods->scored, counts.questions, now_ms);
@@ -79,8 +89,12 @@ int methods_new(uv_loop_t *loop, const struct options *options, struct methods *
     }
     methods->loop = loop;
     methods->options = options;
-    methods->table = (struct method_table){
-        .methods = METHODS, .count = sizeof METHODS / sizeof METHODS[0], .context = methods};
+    methods->gate = (struct gate){.options = options,
+                                  .house = {.owner = geteuid(), .socket_group = RIGHTS_NO_ID}};
+    methods->table = (struct method_table){.methods = METHODS,
+                                           .count = sizeof METHODS / sizeof METHODS[0],
+                                           .context = methods,
+                                           .check = check_right};
     methods->started_ms = clock_steady_ms();
     int code = uv_async_init(loop, &methods->changes_done, on_changes_done);
     if (code < 0) {
@@ -114,6 +128,9 @@ void methods_use(struct methods *methods, struct engine *engine)
 void methods_watch(struct methods *methods, const struct server *server)
 {
     methods->server = server;
+    if (server) {
+        methods->gate.house.socket_group = server_socket_group(server);
+    }
 }
 
 const struct method_table *methods_table(const struct methods *methods)

@@ -24,7 +24,7 @@ void methods_wake(void *user);
 /* Serve from this engine; borrowed. Before the first request; NULL after the last. */
 void methods_use(struct methods *methods, struct engine *engine);
 
-/* For the number of connections; NULL: no server (any more). */
+/* For the number of connections and the group of the socket; NULL: no server (any more). */
 void methods_watch(struct methods *methods, const struct server *server);
 
 const struct method_table *methods_table(const struct methods *methods);

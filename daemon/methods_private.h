@@ -7,6 +7,7 @@
 
 #include <uv.h>
 
+#include "daemon/gate.h"
 #include "daemon/meter.h"
 #include "daemon/methods.h"
 
@@ -15,6 +16,7 @@ struct methods {
     const struct options *options;
     struct engine *engine;
     const struct server *server;
+    struct gate gate;
     struct method_table table;
     uint64_t started_ms;
     struct meter filed;

@@ -5,7 +5,7 @@
  *
  * Rules, so that a model and its base fit together: enter a base while the model's lock is held, or
  * on the one thread that changes the model; leave it before the lock is given back, and before the
- * model is marked as stored (model_clean).
+ * model is told that something is stored (model_stored, model_clean).
  */
 #ifndef UNDERTAG_MODEL_BASE_H
 #define UNDERTAG_MODEL_BASE_H

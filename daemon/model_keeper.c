@@ -260,9 +260,10 @@ static int store_totals(void *user, const struct model_totals *totals)
     return model_store_put_head(storing->writing, &head, storing->error);
 }
 
-int model_keeper_store(struct model_store *store, const struct model *model,
-                       const struct model_origin *origin, uint64_t learned, bool *ret_forgot,
-                       struct store_error *error)
+int model_keeper_collect(struct model_store *store, const struct model *model,
+                         const struct model_origin *origin, uint64_t learned,
+                         struct model_store_writing **ret_writing, bool *ret_forgot,
+                         struct store_error *error)
 {
     struct storing storing = {.origin = origin, .learned = learned, .error = error};
     const struct model_sink sink = {.user = &storing,
@@ -284,9 +285,23 @@ int model_keeper_store(struct model_store *store, const struct model *model,
         model_store_abort(storing.writing);
         return error->code != STORE_OK ? code : store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
-    code = model_store_commit(storing.writing, error);
+    *ret_writing = storing.writing;
+    *ret_forgot = storing.forgot;
+    return STORE_OK;
+}
+
+int model_keeper_store(struct model_store *store, const struct model *model,
+                       const struct model_origin *origin, uint64_t learned, bool *ret_forgot,
+                       struct store_error *error)
+{
+    struct model_store_writing *writing = NULL;
+    bool forgot = false;
+    int code = model_keeper_collect(store, model, origin, learned, &writing, &forgot, error);
     if (code == STORE_OK) {
-        *ret_forgot = storing.forgot;
+        code = model_store_commit(writing, error);
+    }
+    if (code == STORE_OK) {
+        *ret_forgot = forgot;
     }
     return code;
 }

@@ -41,10 +41,17 @@ int model_keeper_reset(struct model_store *store, struct store_error *error)
     __attribute__((warn_unused_result));
 
 /*
- * Stores what has changed since the last time, as of `learned`; model_clean is the caller's, under
- * the model's lock. *ret_forgot says whether words were forgotten, which a scrub should follow.
- * Nobody may learn meanwhile; asking goes on.
+ * Collects what has changed and is not stored, as of `learned`, to be committed with
+ * model_store_commit. *ret_forgot says whether words were forgotten, which a scrub should follow.
+ * Nobody may learn meanwhile; asking goes on. model_seal is the caller's, before anything else is
+ * learned and under the model's lock, and model_stored once it is committed.
  */
+int model_keeper_collect(struct model_store *store, const struct model *model,
+                         const struct model_origin *origin, uint64_t learned,
+                         struct model_store_writing **ret_writing, bool *ret_forgot,
+                         struct store_error *error) __attribute__((warn_unused_result));
+
+/* The same, and commits it; model_clean is the caller's, under the model's lock. */
 int model_keeper_store(struct model_store *store, const struct model *model,
                        const struct model_origin *origin, uint64_t learned, bool *ret_forgot,
                        struct store_error *error) __attribute__((warn_unused_result));

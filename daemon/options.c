@@ -1,45 +1,13 @@
 #include "daemon/options.h"
 
-#include <errno.h>
-#include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
-#include "daemon/text/words.h"
-
-enum option_type {
-    TYPE_WHOLE,
-    TYPE_BYTES,
-    TYPE_NUMBER,
-    TYPE_SWITCH,
-    TYPE_CHOICE,
-    TYPE_LANGUAGE
-};
-
-struct option {
-    const char *name;
-    enum option_type type;
-    size_t offset;
-    double minimum;
-    double maximum;
-    const char *initial;
-    const char *const *choices; /* of TYPE_CHOICE, by value; of TYPE_SWITCH, off then on */
-    enum options_group group;
-    bool on_reload;
-    const char *sentence;
-};
+#include "daemon/options_private.h"
 
 static const char *const ON_OFF[] = {"off", "on", NULL};
 static const char *const UNKNOWN_TAGS[] = {"refuse", "open", NULL};
-static const char *const LOSSES[] = {[SURROGATE_SQUARED_HINGE] = "squared_hinge",
-                                     [SURROGATE_HINGE] = "hinge",
-                                     [SURROGATE_LOGISTIC] = "logistic",
-                                     NULL};
-
-#define KIB 1024.0
-#define MIB (1024.0 * KIB)
-#define GIB (1024.0 * MIB)
 
 /* clang-format off: a table is read by its columns */
 #define AT(member) offsetof(struct options, member)
@@ -58,6 +26,16 @@ static const struct option OPTIONS[] = {
      "The most different words of an item."},
     {"drain_ms", TYPE_WHOLE, AT(drain_ms), 0, 600000, "5000", NULL, OPTIONS_SETTING, false,
      "Milliseconds that stopping waits for readers that are slow."},
+    {"may_read", TYPE_PEERS, AT(may[RIGHT_READ]), 0, 0, "@socket", NULL, OPTIONS_SETTING, true,
+     "Who may read what is stored and ask for proposals, beside root and the daemon's own user."},
+    {"may_file", TYPE_PEERS, AT(may[RIGHT_FILE]), 0, 0, "@socket", NULL, OPTIONS_SETTING, true,
+     "Who may file and withdraw items."},
+    {"may_rule", TYPE_PEERS, AT(may[RIGHT_RULE]), 0, 0, "@socket", NULL, OPTIONS_SETTING, true,
+     "Who may rule on gaps and check items."},
+    {"may_vocabulary", TYPE_PEERS, AT(may[RIGHT_VOCABULARY]), 0, 0, "", NULL, OPTIONS_SETTING, true,
+     "Who may change the vocabulary itself."},
+    {"may_operate", TYPE_PEERS, AT(may[RIGHT_OPERATE]), 0, 0, "", NULL, OPTIONS_SETTING, true,
+     "Who may operate the daemon, such as having its model learned anew."},
     {"visible_within_ms", TYPE_WHOLE, AT(visible_within_ms), 10, 60000, "1000", NULL,
      OPTIONS_SETTING, false,
      "Milliseconds after an acknowledgement until answers know what it taught; a feed is slowed "
@@ -94,7 +72,7 @@ static const struct option OPTIONS[] = {
      "Count each two neighbouring words as a term of their own."},
     {"title_weight", TYPE_NUMBER, AT(title_weight), 0.1, 100, "1.5", NULL, OPTIONS_LEARNING, false,
      "How many times a word of the title counts."},
-    {"loss", TYPE_CHOICE, AT(loss), 0, 0, "squared_hinge", LOSSES, OPTIONS_LEARNING, false,
+    {"loss", TYPE_CHOICE, AT(loss), 0, 0, "squared_hinge", OPTION_LOSSES, OPTIONS_LEARNING, false,
      "The convex surrogate that is learned with."},
     {"correction", TYPE_SWITCH, AT(correction), 0, 0, "on", ON_OFF, OPTIONS_LEARNING, false,
      "Weigh given tags by 2/p - 1, p being the tag's propensity."},
@@ -135,150 +113,8 @@ static const void *const_member_of(const struct options *options, const struct o
     return (const char *)options + option->offset;
 }
 
-/* --- text into values --------------------------------------------------------------------------
+/* --- setting ------------------------------------------------------------------------------------
  */
-
-static int refuse(char *error, const struct option *option, const char *value)
-{
-    switch (option->type) {
-    case TYPE_SWITCH:
-        return snprintf(error, OPTIONS_ERROR_BYTES, "option %s is on or off, not '%s'",
-                        option->name, value);
-    case TYPE_CHOICE: {
-        int used = snprintf(error, OPTIONS_ERROR_BYTES, "option %s is one of", option->name);
-        for (size_t i = 0; option->choices[i] && used > 0 && used < OPTIONS_ERROR_BYTES; i++) {
-            used += snprintf(error + used, OPTIONS_ERROR_BYTES - (size_t)used, "%s %s",
-                             i ? "," : "", option->choices[i]);
-        }
-        if (used > 0 && used < OPTIONS_ERROR_BYTES) {
-            used += snprintf(error + used, OPTIONS_ERROR_BYTES - (size_t)used, "; not '%s'", value);
-        }
-        return used;
-    }
-    case TYPE_LANGUAGE:
-        return snprintf(error, OPTIONS_ERROR_BYTES,
-                        "option %s is empty or a code such as en that Snowball knows, not '%s'",
-                        option->name, value);
-    case TYPE_BYTES:
-        return snprintf(error, OPTIONS_ERROR_BYTES,
-                        "option %s is a size from %.0f to %.0f bytes, such as 64MiB, not '%s'",
-                        option->name, option->minimum, option->maximum, value);
-    case TYPE_WHOLE:
-        return snprintf(error, OPTIONS_ERROR_BYTES,
-                        "option %s is a whole number from %.0f to %.0f, not '%s'", option->name,
-                        option->minimum, option->maximum, value);
-    case TYPE_NUMBER:
-        break;
-    }
-    return snprintf(error, OPTIONS_ERROR_BYTES, "option %s is a number from %g to %g, not '%s'",
-                    option->name, option->minimum, option->maximum, value);
-}
-
-/* A number with nothing but digits, one point, a sign and an exponent; no hex, no "inf". */
-static bool parse_number(const char *text, const char **ret_end, double *ret_number)
-{
-    if (strspn(text, "+-.0123456789") == 0) {
-        return false;
-    }
-    char *end = NULL;
-    errno = 0;
-    double number = strtod(text, &end); /* the daemon never leaves the "C" locale */
-    bool has_hex =
-        memchr(text, 'x', (size_t)(end - text)) || memchr(text, 'X', (size_t)(end - text));
-    if (end == text || errno != 0 || !isfinite(number) || has_hex) {
-        return false;
-    }
-    *ret_end = end;
-    *ret_number = number + 0.0; /* minus zero becomes zero */
-    return true;
-}
-
-static bool parse_bytes(const char *text, double *ret_number)
-{
-    static const struct {
-        const char *suffix;
-        double factor;
-    } units[] = {{"", 1.0}, {"KiB", KIB}, {"MiB", MIB}, {"GiB", GIB}};
-    const char *end = NULL;
-    double number = 0.0;
-    if (!parse_number(text, &end, &number)) {
-        return false;
-    }
-    while (*end == ' ') {
-        end++;
-    }
-    for (size_t i = 0; i < sizeof units / sizeof units[0]; i++) {
-        if (strcmp(end, units[i].suffix) == 0) {
-            *ret_number = number * units[i].factor;
-            return true;
-        }
-    }
-    return false;
-}
-
-static bool set_amount(const struct option *option, void *member, const char *value)
-{
-    double number = 0.0;
-    const char *end = "";
-    bool parsed = option->type == TYPE_BYTES ? parse_bytes(value, &number)
-                                             : parse_number(value, &end, &number) && *end == '\0';
-    if (!parsed || number < option->minimum || number > option->maximum) {
-        return false;
-    }
-    if (option->type == TYPE_NUMBER) {
-        memcpy(member, &number, sizeof number);
-        return true;
-    }
-    if (number != floor(number)) {
-        return false;
-    }
-    uint64_t whole = (uint64_t)number;
-    memcpy(member, &whole, sizeof whole);
-    return true;
-}
-
-static bool set_choice(const struct option *option, void *member, const char *value)
-{
-    for (int i = 0; option->choices[i]; i++) {
-        if (strcmp(value, option->choices[i]) != 0) {
-            continue;
-        }
-        if (option->choices == LOSSES) {
-            *(enum surrogate *)member = (enum surrogate)i;
-        } else {
-            *(bool *)member = i != 0;
-        }
-        return true;
-    }
-    return false;
-}
-
-static bool set_language(char *member, const char *value)
-{
-    if (strlen(value) >= OPTIONS_LANGUAGE_BYTES ||
-        (value[0] != '\0' && !words_stems_language(value))) {
-        return false;
-    }
-    memset(member, 0, OPTIONS_LANGUAGE_BYTES);
-    (void)snprintf(member, OPTIONS_LANGUAGE_BYTES, "%s", value); /* it fits */
-    return true;
-}
-
-static bool set_value(const struct option *option, void *member, const char *value)
-{
-    switch (option->type) {
-    case TYPE_SWITCH:
-    case TYPE_CHOICE:
-        return set_choice(option, member, value);
-    case TYPE_LANGUAGE:
-        return set_language(member, value);
-    case TYPE_WHOLE:
-    case TYPE_BYTES:
-    case TYPE_NUMBER:
-        break;
-    }
-    return set_amount(option, member, value);
-}
 
 static const struct option *find_option(const char *name, size_t bytes)
 {
@@ -299,8 +135,8 @@ int options_set(struct options *options, const char *name, const char *value, ch
                        name);
         return -1;
     }
-    if (!set_value(option, member_of(options, option), value)) {
-        (void)refuse(error, option, value);
+    if (!option_read(option, member_of(options, option), value)) {
+        option_refuse(option, value, error);
         return -1;
     }
     return 0;
@@ -326,7 +162,7 @@ void options_defaults(struct options *ret_options)
 {
     memset(ret_options, 0, sizeof *ret_options);
     for (size_t i = 0; i < OPTION_COUNT; i++) {
-        if (!set_value(&OPTIONS[i], member_of(ret_options, &OPTIONS[i]), OPTIONS[i].initial)) {
+        if (!option_read(&OPTIONS[i], member_of(ret_options, &OPTIONS[i]), OPTIONS[i].initial)) {
             abort(); /* our own table is wrong */
         }
     }
@@ -346,34 +182,6 @@ size_t options_find(const char *name)
     return option ? (size_t)(option - OPTIONS) : OPTION_COUNT;
 }
 
-static void write_value(const struct options *options, const struct option *option, char *text,
-                        size_t size)
-{
-    const void *member = const_member_of(options, option);
-    uint64_t whole = 0;
-    double number = 0.0;
-    switch (option->type) {
-    case TYPE_WHOLE:
-    case TYPE_BYTES:
-        memcpy(&whole, member, sizeof whole);
-        (void)snprintf(text, size, "%llu", (unsigned long long)whole);
-        return;
-    case TYPE_NUMBER:
-        memcpy(&number, member, sizeof number);
-        (void)snprintf(text, size, "%.17g", number);
-        return;
-    case TYPE_LANGUAGE:
-        (void)snprintf(text, size, "%s", (const char *)member);
-        return;
-    case TYPE_SWITCH:
-    case TYPE_CHOICE:
-        break;
-    }
-    int at = option->choices == LOSSES ? (int)*(const enum surrogate *)member
-                                       : (int)*(const bool *)member;
-    (void)snprintf(text, size, "%s", option->choices[at]);
-}
-
 void options_describe(const struct options *options, size_t index, struct options_row *ret_row)
 {
     const struct option *option = &OPTIONS[index];
@@ -384,7 +192,7 @@ void options_describe(const struct options *options, size_t index, struct option
                                     .is_number = option->type == TYPE_WHOLE ||
                                                  option->type == TYPE_BYTES ||
                                                  option->type == TYPE_NUMBER};
-    write_value(options, option, ret_row->value, sizeof ret_row->value);
+    option_write(option, const_member_of(options, option), ret_row->value, sizeof ret_row->value);
 }
 
 int options_learning_text(const struct options *options, char *text, size_t size)
@@ -399,7 +207,7 @@ int options_learning_text(const struct options *options, char *text, size_t size
             continue;
         }
         char value[64];
-        write_value(options, &OPTIONS[i], value, sizeof value);
+        option_write(&OPTIONS[i], const_member_of(options, &OPTIONS[i]), value, sizeof value);
         int written = snprintf(text + used, size - used, "%s=%s\n", OPTIONS[i].name, value);
         if (written < 0 || (size_t)written >= size - used) {
             return -1;
@@ -409,23 +217,6 @@ int options_learning_text(const struct options *options, char *text, size_t size
     return 0;
 }
 
-static size_t member_bytes(const struct option *option)
-{
-    switch (option->type) {
-    case TYPE_SWITCH:
-        return sizeof(bool);
-    case TYPE_CHOICE:
-        return option->choices == LOSSES ? sizeof(enum surrogate) : sizeof(bool);
-    case TYPE_LANGUAGE:
-        return OPTIONS_LANGUAGE_BYTES;
-    case TYPE_WHOLE:
-    case TYPE_BYTES:
-    case TYPE_NUMBER:
-        break;
-    }
-    return sizeof(uint64_t);
-}
-
 size_t options_reload(struct options *options, const struct options *wanted, const char **ret_first)
 {
     size_t held_back = 0;
@@ -433,11 +224,11 @@ size_t options_reload(struct options *options, const struct options *wanted, con
         const struct option *option = &OPTIONS[i];
         const void *from = const_member_of(wanted, option);
         void *into = member_of(options, option);
-        if (memcmp(from, into, member_bytes(option)) == 0) {
+        if (memcmp(from, into, option_bytes(option)) == 0) {
             continue;
         }
         if (option->on_reload) {
-            memcpy(into, from, member_bytes(option));
+            memcpy(into, from, option_bytes(option));
         } else if (held_back++ == 0) {
             *ret_first = option->name;
         }
@@ -450,7 +241,7 @@ void options_take_learning(struct options *options, const struct options *from)
     for (size_t i = 0; i < OPTION_COUNT; i++) {
         if (OPTIONS[i].group == OPTIONS_LEARNING) {
             memcpy(member_of(options, &OPTIONS[i]), const_member_of(from, &OPTIONS[i]),
-                   member_bytes(&OPTIONS[i]));
+                   option_bytes(&OPTIONS[i]));
         }
     }
 }

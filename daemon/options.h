@@ -12,12 +12,14 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "daemon/accounts.h"
 #include "daemon/learner/model.h"
 #include "daemon/text/features.h"
 
 enum {
     OPTIONS_LANGUAGE_BYTES = 16,
-    OPTIONS_ERROR_BYTES = 512
+    OPTIONS_ERROR_BYTES = 512,
+    OPTIONS_VALUE_BYTES = ACCOUNTS_TEXT_BYTES /* the longest value as text */
 };
 
 struct options {
@@ -30,6 +32,7 @@ struct options {
     uint64_t words_limit;
     uint64_t drain_ms;
     uint64_t visible_within_ms;
+    struct rights_list may[RIGHT_KINDS];
     /* the vocabulary */
     bool open_unknown_tags;
     /* the store */
@@ -105,7 +108,7 @@ struct options_row {
     enum options_group group;
     bool is_number;
     bool on_reload;
-    char value[64];
+    char value[OPTIONS_VALUE_BYTES];
 };
 
 void options_describe(const struct options *options, size_t index, struct options_row *ret_row);

@@ -39,6 +39,7 @@ struct server {
     uv_timer_t accept_timer;
     unsigned handles; /* of the three above, not closed yet */
     int lock_fd;
+    uint32_t socket_group;
     bool draining;
     void (*done)(void *user);
     void *user;
@@ -161,6 +162,29 @@ static int fail(char *error, int code, const char *what, const char *path)
     return code;
 }
 
+static int take_path(struct server *server, const char *path, char *error)
+{
+    int length = snprintf(server->socket_path, sizeof server->socket_path, "%s", path);
+    if (length <= 0 || (size_t)length >= sizeof server->socket_path) {
+        (void)snprintf(error, SERVER_ERROR_BYTES,
+                       "the socket's path is 1 to %zu bytes long, not %zu: choose a shorter one",
+                       sizeof server->socket_path - 1, strlen(path));
+        return UV_ENAMETOOLONG;
+    }
+    return 0;
+}
+
+/* The path of a socket that was passed in; one without a file has none. */
+static void take_path_of(struct server *server, int fd)
+{
+    struct sockaddr_un address = {0};
+    socklen_t size = sizeof address;
+    if (getsockname(fd, (struct sockaddr *)&address, &size) == 0 && address.sun_path[0] != '\0') {
+        (void)snprintf(server->socket_path, sizeof server->socket_path, "%.*s",
+                       (int)sizeof address.sun_path - 1, address.sun_path);
+    }
+}
+
 static int take_lock(struct server *server, char *error)
 {
     char path[sizeof server->socket_path + 8];
@@ -182,6 +206,13 @@ static int remove_stale_socket(const char *path, char *error)
     return unlink(path) < 0 ? fail(error, -errno, "cannot remove the stale socket", path) : 0;
 }
 
+/* Nobody else may listen at the path, and what a daemon that died has left there goes. */
+static int claim_path(struct server *server, char *error)
+{
+    int code = take_lock(server, error);
+    return code < 0 ? code : remove_stale_socket(server->socket_path, error);
+}
+
 /* The mode must be right from the first moment: what chmod makes right later was open before. */
 static int bind_and_listen(struct server *server, char *error)
 {
@@ -189,6 +220,25 @@ static int bind_and_listen(struct server *server, char *error)
     int code = uv_pipe_bind(&server->listener, server->socket_path);
     (void)umask(mask); /* cannot fail */
     if (code == 0) {
+        code = uv_listen((uv_stream_t *)&server->listener, BACKLOG, on_connection);
+    }
+    return code < 0 ? fail(error, code, "cannot listen at", server->socket_path) : 0;
+}
+
+/* Whoever may connect by the file's mode may be a member of its group. */
+static uint32_t group_of(const char *path)
+{
+    struct stat status;
+    return lstat(path, &status) == 0 && S_ISSOCK(status.st_mode) ? status.st_gid : RIGHTS_NO_ID;
+}
+
+static int listen_at_passed(struct server *server, char *error)
+{
+    int fd = server->settings.passed_fd;
+    int code = uv_pipe_open(&server->listener, fd);
+    if (code < 0) {
+        (void)close(fd); /* it was not taken */
+    } else {
         code = uv_listen((uv_stream_t *)&server->listener, BACKLOG, on_connection);
     }
     return code < 0 ? fail(error, code, "cannot listen at", server->socket_path) : 0;
@@ -211,24 +261,36 @@ static int init_handles(uv_loop_t *loop, struct server *server)
     return 0;
 }
 
+static int begin(uv_loop_t *loop, struct server *server, char *error)
+{
+    int passed_fd = server->settings.passed_fd;
+    int code = 0;
+    if (passed_fd > 0) {
+        take_path_of(server, passed_fd);
+    } else {
+        code = take_path(server, server->settings.socket_path, error);
+        code = code < 0 ? code : claim_path(server, error);
+    }
+    code = code < 0 ? code : init_handles(loop, server);
+    if (code < 0 && passed_fd > 0) {
+        (void)close(passed_fd); /* nobody is connected to it yet */
+    }
+    return code;
+}
+
 int server_new(uv_loop_t *loop, const struct server_settings *settings,
                const struct method_table *table, struct server **ret_server, char *error)
 {
     struct server *server = calloc(1, sizeof *server);
     if (!server) {
-        return fail(error, UV_ENOMEM, "cannot serve", settings->socket_path);
+        (void)snprintf(error, SERVER_ERROR_BYTES, "cannot serve: %s", uv_strerror(UV_ENOMEM));
+        if (settings->passed_fd > 0) {
+            (void)close(settings->passed_fd); /* nobody is connected to it yet */
+        }
+        return UV_ENOMEM;
     }
     server->settings = *settings;
     server->lock_fd = -1;
-    int length =
-        snprintf(server->socket_path, sizeof server->socket_path, "%s", settings->socket_path);
-    if (length <= 0 || (size_t)length >= sizeof server->socket_path) {
-        (void)snprintf(error, SERVER_ERROR_BYTES,
-                       "the socket's path is 1 to %zu bytes long, not %zu: choose a shorter one",
-                       sizeof server->socket_path - 1, strlen(settings->socket_path));
-        free_server(server);
-        return UV_ENAMETOOLONG;
-    }
     server->connections =
         (struct connection_settings){.loop = loop,
                                      .table = table,
@@ -236,26 +298,32 @@ int server_new(uv_loop_t *loop, const struct server_settings *settings,
                                      .unread_limit_bytes = settings->unread_limit_bytes,
                                      .user = server,
                                      .gone = on_gone};
-    int code = take_lock(server, error);
-    if (code == 0) {
-        code = remove_stale_socket(server->socket_path, error);
-    }
-    if (code == 0) {
-        code = init_handles(loop, server);
-    }
+    int code = begin(loop, server, error);
     if (code < 0) {
         free_server(server);
         return code;
     }
-    code = bind_and_listen(server, error);
+    code =
+        settings->passed_fd > 0 ? listen_at_passed(server, error) : bind_and_listen(server, error);
     if (code < 0) {
         uv_close((uv_handle_t *)&server->listener, on_handle_closed);
         uv_close((uv_handle_t *)&server->drain_timer, on_handle_closed);
         uv_close((uv_handle_t *)&server->accept_timer, on_handle_closed);
         return code;
     }
+    server->socket_group = group_of(server->socket_path);
     *ret_server = server;
     return 0;
+}
+
+const char *server_socket_path(const struct server *server)
+{
+    return server->socket_path;
+}
+
+uint32_t server_socket_group(const struct server *server)
+{
+    return server->socket_group;
 }
 
 unsigned server_connections(const struct server *server)
@@ -279,7 +347,8 @@ void server_drain(struct server *server, void (*done)(void *user), void *user)
     server->draining = true;
     server->done = done;
     server->user = user;
-    /* Closing the listener removes the socket's file, too: we hold the lock until the end. */
+    /* Closing a listener that was bound here removes the socket's file, too: we hold the lock until
+     * the end. */
     uv_close((uv_handle_t *)&server->listener, on_handle_closed);
     int code = uv_timer_start(&server->drain_timer, on_drain_over, server->settings.drain_ms, 0);
     assert(code == 0); /* fails only without a callback */

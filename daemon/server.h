@@ -5,6 +5,9 @@
  * the lock's holder may), binds with mode 0660 from the first moment and listens. server_drain
  * stops listening, refuses new calls with -32006, lets running calls end and their answers be read
  * (for drain_ms at most), closes everything, and calls back once. Loop thread only.
+ *
+ * A socket that was passed in, bound and listening already, belongs to whoever passed it: there is
+ * no lock, and its file stays at the end.
  */
 #ifndef UNDERTAG_SERVER_H
 #define UNDERTAG_SERVER_H
@@ -18,6 +21,7 @@ struct server;
 
 struct server_settings {
     const char *socket_path;    /* copied; at most 107 bytes, longer is refused with a sentence */
+    int passed_fd;              /* instead: one that was passed in, taken in any case; 0: none */
     size_t line_limit_bytes;    /* a longer line gets -32003 and is skipped without being held */
     size_t unread_limit_bytes;  /* unread answers a connection before reading from it stops */
     unsigned connections_limit; /* one more gets a -32003 line and is closed */
@@ -36,6 +40,12 @@ enum {
 int server_new(uv_loop_t *loop, const struct server_settings *settings,
                const struct method_table *table, struct server **ret_server, char *error)
     __attribute__((warn_unused_result));
+
+/* Where it listens; of a socket that was passed in, as the system has it. */
+const char *server_socket_path(const struct server *server);
+
+/* The group that the socket's file belongs to; RIGHTS_NO_ID where it cannot be told. */
+uint32_t server_socket_group(const struct server *server);
 
 /* Connections open now. */
 unsigned server_connections(const struct server *server);

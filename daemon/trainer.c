@@ -1,18 +1,17 @@
 /*
  * Happy path: wait until something is committed behind what is learned; read a few changes in one
  * short view; take out the words of each and learn it under the lock; tell the backlog. Every now
- * and then the model is stored, which needs no lock, since this thread alone changes it. When there
- * is nothing to learn, stale entries of the worklist are scored again, then items rehearsed.
+ * and then the model is stored (trainer_storing). When there is nothing to learn, stale entries of
+ * the worklist are scored again, then items rehearsed.
  *
- * Failure paths: a model that cannot be stored (a full disk) is tried again with the next flush. A
- * change that cannot be read or learned ends learning for good, until a restart: a model that has
- * skipped a change would differ from its items for ever. The daemon goes on filing and asking. A
- * store that cannot be looked into, and what cannot be overwritten, is tried again after a while.
+ * Failure paths: a change that cannot be read or learned ends learning for good, until a restart: a
+ * model that has skipped a change would differ from its items for ever. The daemon goes on filing
+ * and asking. A store that cannot be looked into, and what cannot be overwritten, is tried again
+ * after a while.
  */
 #include "daemon/trainer.h"
 
 #include <errno.h>
-#include <malloc.h>
 #include <stdlib.h>
 #include <string.h>
 
@@ -27,10 +26,8 @@ enum {
     IDLE_MS = 1000,
     HELD_BACK_MS = 50,
     TRY_AGAIN_MS = 5000,
-    FINISH_MS = 3000,   /* the longest time that stopping spends on overwriting */
-    FLUSH_SHARE = 10,   /* storing takes a tenth of the time at most */
-    SCRUB_PAGES = 1024, /* overwritten at a time */
-    SMALL_BUDGET = 256 << 20,
+    FINISH_MS = 3000,      /* the longest time that stopping spends on overwriting */
+    SCRUB_PAGES = 1024,    /* overwritten at a time */
     ROUND_LIMIT_US = 20000 /* a view that has been open this long is given up */
 };
 
@@ -97,11 +94,6 @@ static void share_memory(struct trainer *trainer)
     trainer->shares = memory_shares_of(settings->memory_bytes, taken);
 }
 
-bool trainer_is_full(const struct trainer *trainer)
-{
-    return model_changed_bytes(trainer->settings.shared->model) > trainer->shares.changed;
-}
-
 int trainer_begin_round(struct trainer *trainer, struct store_view **ret_view,
                         struct store_error *error)
 {
@@ -151,52 +143,8 @@ static int learn_some(struct trainer *trainer, uint64_t last, struct store_error
     return code;
 }
 
-/* --- storing the model --------------------------------------------------------------------------
+/* --- scrubbing ----------------------------------------------------------------------------------
  */
-
-static bool is_store_due(const struct trainer *trainer)
-{
-    uint64_t waited_us = clock_steady_us() - trainer->stored_at_us;
-    uint64_t changes = trainer->learned - trainer->kept + (trainer->idly_changed ? 1 : 0);
-    if (trainer_is_full(trainer)) {
-        return !trainer->store_failed || waited_us >= IDLE_MS * 1000ULL;
-    }
-    return changes > 0 && waited_us >= FLUSH_SHARE * trainer->storing_us &&
-           (waited_us >= trainer->settings.flush_every_ms * 1000 ||
-            changes >= trainer->settings.flush_changes);
-}
-
-static void store_model(struct trainer *trainer)
-{
-    struct store_error error = {0};
-    uint64_t begun_us = clock_steady_us();
-    bool forgot = false;
-    int code = model_keeper_store(trainer->settings.model_store, trainer->settings.shared->model,
-                                  &trainer->settings.origin, trainer->learned, &forgot, &error);
-    trainer->stored_at_us = clock_steady_us();
-    trainer->storing_us = trainer->stored_at_us - begun_us;
-    trainer->store_failed = code != STORE_OK;
-    if (code != STORE_OK) {
-        troubles_begin(trainer->settings.troubles, TROUBLE_KEEPING,
-                       "what was learned cannot be stored (%s); a restart will learn it again",
-                       error.text);
-        return;
-    }
-    shared_model_write(trainer->settings.shared);
-    model_clean(trainer->settings.shared->model);
-    shared_model_unlock(trainer->settings.shared);
-    /* The pages that storing took lie in holes now; with a small budget they are a good part of it.
-     */
-    if (trainer->settings.memory_bytes <= SMALL_BUDGET) {
-        (void)malloc_trim(0); /* says only whether there was something */
-    }
-    troubles_end(trainer->settings.troubles, TROUBLE_KEEPING);
-    trainer->kept = trainer->learned;
-    trainer->idly_changed = false;
-    trainer->scrub_due = trainer->scrub_due || forgot;
-    backlog_kept(trainer->settings.backlog, trainer->kept);
-    trainer->settings.kept(trainer->settings.user);
-}
 
 /* Forgotten words leave the file, too, a stretch at a time while there is nothing else to do. */
 static void scrub(struct trainer *trainer)
@@ -227,6 +175,7 @@ static void scrub(struct trainer *trainer)
 static void give_up_stored(struct trainer *trainer)
 {
     struct store_error reason = {0};
+    trainer_end_storing(trainer, true);
     shared_model_write(trainer->settings.shared);
     trainer->settings.shared->broken = -EIO;
     shared_model_unlock(trainer->settings.shared);
@@ -254,14 +203,14 @@ static void take_over(struct trainer *trainer)
     struct trainer_settings *settings = &trainer->settings;
     const struct rebuild_trainer offered = {
         .learned = trainer->learned, .reader = &trainer->reader, .text = trainer->text};
-    if (!settings->rebuild || trainer->failed ||
+    if (!settings->rebuild || trainer->failed || trainer->is_storing ||
         !rebuild_take_over(settings->rebuild, settings->shared, &offered)) {
         return;
     }
     settings->model_store = settings->shared->store;
     settings->origin.settings = trainer->text;
     trainer->kept = trainer->learned;
-    trainer->stored_at_us = clock_steady_us();
+    trainer->sealed_at_us = clock_steady_us();
     trainer->idly_changed = false;
     trainer->rescore_due = true;
     trainer->rehearse_due = settings->rehearsal_share > 0.0;
@@ -280,6 +229,9 @@ static uint64_t idle_ms(const struct trainer *trainer)
     if (trainer->rehearse_due) {
         uint64_t now_us = clock_steady_us();
         return now_us < trainer->rest_until_us ? (trainer->rest_until_us - now_us) / 1000 + 1 : 0;
+    }
+    if (trainer->is_storing) {
+        return IDLE_MS; /* its end is a nudge */
     }
     if (trainer->learned == trainer->kept && !trainer->idly_changed) {
         return trainer->scrub_due ? trainer->scrub_wait_ms : IDLE_MS;
@@ -302,6 +254,9 @@ static void finish_scrubbing(struct trainer *trainer)
 /* What was learned could not be stored, and there is no room for more. */
 static bool must_wait(struct trainer *trainer)
 {
+    if (trainer_is_full(trainer)) {
+        trainer_end_storing(trainer, true); /* that may make room */
+    }
     bool waits = trainer_is_full(trainer);
     if (waits != trainer->waits) {
         trainer->waits = waits;
@@ -314,12 +269,13 @@ static void *run(void *argument)
 {
     struct trainer *trainer = argument;
     struct backlog *backlog = trainer->settings.backlog;
-    trainer->stored_at_us = clock_steady_us();
+    trainer->sealed_at_us = clock_steady_us();
     while (!backlog_is_stopping(backlog)) {
         struct store_error error = {0};
         uint64_t behind = trainer->failed ? UINT64_MAX : trainer->learned;
         uint64_t last = backlog_wait_for_work(backlog, behind, idle_ms(trainer));
         bool is_idle = last <= behind;
+        trainer_end_storing(trainer, false);
         if (must_wait(trainer)) {
             backlog_pause(backlog, IDLE_MS);
         } else if (!is_idle && learn_some(trainer, last, &error) != STORE_OK) {
@@ -327,15 +283,12 @@ static void *run(void *argument)
         }
         trainer_work_idly(trainer, is_idle);
         take_over(trainer);
-        if (is_store_due(trainer) && !trainer->failed) {
-            store_model(trainer);
-        } else if (is_idle && trainer->scrub_due) {
+        trainer_store_if_due(trainer);
+        if (is_idle && trainer->scrub_due && !trainer->is_storing) {
             scrub(trainer);
         }
     }
-    if ((trainer->learned > trainer->kept || trainer->idly_changed) && !trainer->failed) {
-        store_model(trainer);
-    }
+    trainer_store_last(trainer);
     finish_scrubbing(trainer);
     return NULL;
 }
@@ -345,6 +298,7 @@ static void *run(void *argument)
 
 static void free_trainer(struct trainer *trainer)
 {
+    storer_free(trainer->storer);
     change_reader_free(trainer->reader);
     model_scratch_free(trainer->scratch);
     free(trainer);
@@ -366,6 +320,9 @@ int trainer_new(const struct trainer_settings *settings, struct trainer **ret_tr
     int code = change_reader_new(settings->features, &trainer->reader);
     if (code == 0) {
         code = model_scratch_new(&trainer->scratch);
+    }
+    if (code == 0) {
+        code = storer_new(settings->backlog, &trainer->storer);
     }
     if (code == 0) {
         code = -pthread_create(&trainer->thread, NULL, run, trainer);

@@ -1,6 +1,7 @@
 /*
  * trainer_private: the trainer's own insides, for the files that are it together: trainer (changes,
- * storing, the thread) and trainer_idle (what is done while there is nothing to learn).
+ * the thread), trainer_storing (the model into its store) and trainer_idle (what is done while
+ * there is nothing to learn).
  */
 #ifndef UNDERTAG_TRAINER_PRIVATE_H
 #define UNDERTAG_TRAINER_PRIVATE_H
@@ -10,20 +11,25 @@
 #include "daemon/change_reader.h"
 #include "daemon/memory_shares.h"
 #include "daemon/model_base.h"
+#include "daemon/storer.h"
 #include "daemon/trainer.h"
 
 struct trainer {
     struct trainer_settings settings;
     char text[MODEL_STORE_SETTINGS_BYTES]; /* the origin's, once the model is a rebuilt one */
     pthread_t thread;
+    struct storer *storer;
     struct change_reader *reader;
     struct model_scratch *scratch;
     struct model_base base; /* entered for a round */
     struct memory_shares shares;
-    uint64_t learned;      /* this thread's own copy */
-    uint64_t kept;         /* the seq of the stored model */
-    uint64_t stored_at_us; /* when it was stored, or tried, last */
-    uint64_t storing_us;   /* how long that took */
+    uint64_t learned; /* this thread's own copy */
+    uint64_t kept;    /* the seq of the stored model */
+    uint64_t sealed;  /* of what is being stored, if anything is */
+    bool is_storing;
+    bool forgot;           /* words, with what is being stored */
+    uint64_t sealed_at_us; /* when storing was begun, or tried, last */
+    uint64_t storing_us;   /* how long that took last */
     bool rescore_due;      /* the model has changed since there was nothing to score again */
     bool idly_changed;     /* by scoring again or rehearsal, since the model was stored */
     bool rehearse_due;
@@ -41,6 +47,16 @@ struct trainer {
 int trainer_begin_round(struct trainer *trainer, struct store_view **ret_view,
                         struct store_error *error) __attribute__((warn_unused_result));
 void trainer_end_round(struct trainer *trainer, struct store_view *view);
+
+/* Begins to store the model where that is due; it is stored while this thread goes on. */
+void trainer_store_if_due(struct trainer *trainer);
+
+/* Takes note of what has been stored; waits for what is being stored if `waits`. No round may be
+ * open. */
+void trainer_end_storing(struct trainer *trainer, bool waits);
+
+/* Stores, before the end, what was learned last. */
+void trainer_store_last(struct trainer *trainer);
 
 /* Whether the model must be stored before more is learned. */
 bool trainer_is_full(const struct trainer *trainer);

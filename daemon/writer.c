@@ -149,6 +149,28 @@ static void tell_trouble(struct writer *writer, const struct store_error *error)
                    error->text[0] ? error->text : store_code_sentence(error->code));
 }
 
+static void tell_erasing(struct writer *writer, const struct store_error *error)
+{
+    troubles_begin(writer->settings.troubles, TROUBLE_ERASING,
+                   "what was withdrawn or revised may still be in the store's file (%s)",
+                   error->text);
+}
+
+/* Erases some of what the stored model has passed, along with a group. Damage there is told, and
+ * keeps no change back: nothing was erased then. */
+static int erase_along(struct writer *writer, struct store_view *view, size_t *ret_erased,
+                       struct store_error *error)
+{
+    uint64_t kept = backlog_read(writer->settings.backlog).kept;
+    int code = store_erase_passed(view, kept, ERASED_A_COMMIT, ret_erased, error);
+    if (code != STORE_CORRUPT) {
+        return code;
+    }
+    tell_erasing(writer, error);
+    *error = (struct store_error){0};
+    return STORE_OK;
+}
+
 /* Makes all changes of the group durable, or none; returns the code that stopped it. */
 static enum store_code commit(struct writer *writer, struct change *group,
                               struct store_error *error)
@@ -175,8 +197,7 @@ static enum store_code commit(struct writer *writer, struct change *group,
         return STORE_OK;
     }
     size_t erased = 0;
-    uint64_t kept = backlog_read(writer->settings.backlog).kept;
-    if (store_erase_passed(view, kept, ERASED_A_COMMIT, &erased, error) != STORE_OK) {
+    if (erase_along(writer, view, &erased, error) != STORE_OK) {
         store_end(view);
         return error->code;
     }
@@ -267,13 +288,6 @@ static void commit_next_group(struct writer *writer)
 /* --- erasing ------------------------------------------------------------------------------------
  */
 
-static void tell_erasing(struct writer *writer, const struct store_error *error)
-{
-    troubles_begin(writer->settings.troubles, TROUBLE_ERASING,
-                   "what was withdrawn or revised may still be in the store's file (%s)",
-                   error->text);
-}
-
 /* Erases some of what the stored model has passed; says how long to wait before going on. */
 static uint64_t erase_some(struct writer *writer, uint64_t kept)
 {
@@ -336,7 +350,9 @@ static uint64_t keep_up(struct writer *writer)
 static bool wait_for_changes(struct writer *writer, uint64_t most_ms, bool *ret_queued)
 {
     struct timespec deadline = sync_deadline(most_ms == WAIT_FOR_EVER ? 0 : most_ms);
+    struct heartbeat *heartbeat = backlog_heartbeat(writer->settings.backlog);
     int code = 0;
+    heartbeat_rest(heartbeat, HEART_WRITER);
     sync_lock(&writer->mutex);
     while (!writer->queued.first && !writer->woken && !writer->stopping && code == 0) {
         code = most_ms == WAIT_FOR_EVER
@@ -347,6 +363,7 @@ static bool wait_for_changes(struct writer *writer, uint64_t most_ms, bool *ret_
     *ret_queued = writer->queued.first != NULL;
     bool goes_on = *ret_queued || !writer->stopping;
     sync_unlock(&writer->mutex);
+    heartbeat_work(heartbeat, HEART_WRITER);
     return goes_on;
 }
 

@@ -165,3 +165,9 @@ uint32_t codec_checksum(const void *data, size_t size)
 {
     return (uint32_t)crc32_z(crc32_z(0, NULL, 0), data, size);
 }
+
+uint32_t codec_checksum_of_two(const void *first, size_t first_size, const void *second,
+                               size_t second_size)
+{
+    return (uint32_t)crc32_z(codec_checksum(first, first_size), second, second_size);
+}

@@ -56,4 +56,8 @@ uint64_t codec_u64_of_key(const void *key);
 /* CRC-32 (ISO 3309, as zlib has it). */
 uint32_t codec_checksum(const void *data, size_t size);
 
+/* The same of two pieces, one behind the other. */
+uint32_t codec_checksum_of_two(const void *first, size_t first_size, const void *second,
+                               size_t second_size);
+
 #endif

@@ -5,6 +5,8 @@
  *   check: 0, 1 (picked) or 2 (random) u8, and unless 0: at u64 · checker blob · vocabulary u32 ·
  *     seen u32 · the numbers of tags, given, hidden, extra
  *   seconds: count u32, then tagger blob · filed_at blob · at u64 · numbers of tags each
+ *   users: u32 each of the filing, the check (where there is one), the rulings, the seconds
+ * The users came with format 3: a record that ends before them does not say.
  */
 #include <stdlib.h>
 
@@ -42,6 +44,20 @@ static void put_check(struct codec_writer *writer, const struct item_check *chec
     item_put_numbers(writer, check->extra);
 }
 
+static void put_users(struct codec_writer *writer, const struct item_record *record)
+{
+    codec_put_u32(writer, record->filed_uid);
+    if (record->check.is_there) {
+        codec_put_u32(writer, record->check.uid);
+    }
+    for (size_t i = 0; i < record->ruling_count; i++) {
+        codec_put_u32(writer, record->rulings[i].uid);
+    }
+    for (size_t i = 0; i < record->second_count; i++) {
+        codec_put_u32(writer, record->seconds[i].uid);
+    }
+}
+
 void item_evidence_put(struct codec_writer *writer, const struct item_record *record)
 {
     if (!has_evidence(record)) {
@@ -68,6 +84,7 @@ void item_evidence_put(struct codec_writer *writer, const struct item_record *re
         codec_put_u64(writer, (uint64_t)second->at_ms);
         item_put_numbers(writer, second->tags);
     }
+    put_users(writer, record);
 }
 
 /* --- out of a record ----------------------------------------------------------------------------
@@ -157,12 +174,30 @@ static int get_seconds(struct codec_reader *reader, struct item_buffer *buffer, 
     return STORE_OK;
 }
 
+/* Nobody where the record was written before users were noted. */
+static void get_users(struct codec_reader *reader, struct item_buffer *buffer,
+                      struct item_record *record)
+{
+    bool is_noted = reader->at < reader->size;
+    record->filed_uid = is_noted ? codec_get_u32(reader) : ITEM_NO_UID;
+    if (record->check.is_there) {
+        record->check.uid = is_noted ? codec_get_u32(reader) : ITEM_NO_UID;
+    }
+    for (size_t i = 0; i < record->ruling_count; i++) {
+        buffer->rulings[i].uid = is_noted ? codec_get_u32(reader) : ITEM_NO_UID;
+    }
+    for (size_t i = 0; i < record->second_count; i++) {
+        buffer->seconds[i].uid = is_noted ? codec_get_u32(reader) : ITEM_NO_UID;
+    }
+}
+
 int item_evidence_get(struct codec_reader *reader, struct item_buffer *buffer, size_t used,
                       struct item_record *record, struct store_error *error)
 {
     record->change = ITEM_FILED;
     record->filed_seq = record->seq;
     record->filed_stored_at_ms = record->stored_at_ms;
+    record->filed_uid = record->uid;
     if (reader->at < reader->size) {
         record->change = (enum item_change)codec_get_u8(reader);
         uint64_t filed_seq = codec_get_u64(reader);
@@ -178,6 +213,7 @@ int item_evidence_get(struct codec_reader *reader, struct item_buffer *buffer, s
         if (result != STORE_OK) {
             return result;
         }
+        get_users(reader, buffer, record);
         reader->failed = reader->failed || record->change >= ITEM_WITHDRAWN;
     }
     if (!reader->failed) {

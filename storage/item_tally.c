@@ -166,3 +166,30 @@ int item_tally_move(struct store_view *view, const struct item_record *from,
     view->totals.items -= from ? 1 : 0;
     return result;
 }
+
+int item_tally_add(struct vocabulary_counts *counts, uint64_t tag_count,
+                   const struct item_record *item)
+{
+    size_t room = count_mentions(item);
+    uint32_t *mentioned = calloc(room ? room : 1, sizeof *mentioned);
+    if (!mentioned) {
+        return STORE_NO_MEMORY;
+    }
+    size_t count = numbers_sort_unique(mentioned, add_mentions(mentioned, 0, item));
+    int result = STORE_OK;
+    for (size_t i = 0; i < count; i++) {
+        if (mentioned[i] < tag_count) {
+            add_item(&counts[mentioned[i]], item, mentioned[i], 1);
+        } else {
+            result = STORE_CORRUPT;
+        }
+    }
+    free(mentioned);
+    return result;
+}
+
+void item_tally_totals(struct store_totals *totals, const struct item_record *item)
+{
+    add_totals(&totals->evidence, item, 1);
+    totals->items++;
+}

@@ -85,9 +85,13 @@ enum item_change {
     ITEM_WITHDRAWN
 };
 
+/* Who was not noted: a store of format 2 kept the user of an item's latest change only. */
+#define ITEM_NO_UID UINT32_MAX
+
 /* An editor's word on one tag of an item; the latest one only. */
 struct item_ruling {
     uint32_t tag;
+    uint32_t uid; /* who said so; likewise below */
     bool belongs;
     int64_t at_ms;
     struct store_text editor;
@@ -97,6 +101,7 @@ struct item_ruling {
 struct item_check {
     bool is_there;
     bool is_random; /* the item was drawn at random */
+    uint32_t uid;
     int64_t at_ms;
     struct store_text checker;
     uint32_t vocabulary;   /* tags below this number were there to be gone through */
@@ -111,6 +116,7 @@ struct item_check {
 struct item_second {
     struct store_text tagger;
     struct store_text filed_at;
+    uint32_t uid;
     int64_t at_ms;
     struct numbers tags;
 };
@@ -128,6 +134,7 @@ struct item_record {
     struct store_text id;
 
     uint64_t filed_seq; /* of the filing */
+    uint32_t filed_uid;
     int64_t filed_stored_at_ms;
     struct store_text title;
     struct store_text text;

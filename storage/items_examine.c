@@ -82,8 +82,11 @@ static size_t add_rulings(struct item_ruling *into, size_t count, struct numbers
         while (at < count && into[at].tag != tags.list[i]) {
             at++;
         }
-        into[at] = (struct item_ruling){
-            .tag = tags.list[i], .belongs = belongs, .at_ms = saying->at_ms, .editor = saying->who};
+        into[at] = (struct item_ruling){.tag = tags.list[i],
+                                        .uid = saying->uid,
+                                        .belongs = belongs,
+                                        .at_ms = saying->at_ms,
+                                        .editor = saying->who};
         count += at == count;
     }
     return count;
@@ -230,6 +233,7 @@ int items_check(struct store_view *view, const struct item_saying *saying, struc
     }
     record.check = (struct item_check){.is_there = true,
                                        .is_random = is_random,
+                                       .uid = saying->uid,
                                        .at_ms = saying->at_ms,
                                        .checker = saying->who,
                                        .vocabulary = (uint32_t)view->totals.tags,
@@ -348,8 +352,11 @@ int items_tag_again(struct store_view *view, const struct item_saying *saying,
     if (record.second_count > 0) {
         memcpy(seconds, record.seconds, record.second_count * sizeof *seconds);
     }
-    seconds[at] = (struct item_second){
-        .tagger = saying->who, .filed_at = filed_at, .at_ms = saying->at_ms, .tags = set};
+    seconds[at] = (struct item_second){.tagger = saying->who,
+                                       .filed_at = filed_at,
+                                       .uid = saying->uid,
+                                       .at_ms = saying->at_ms,
+                                       .tags = set};
     bool is_new = at == record.second_count;
     record.second_count += is_new;
     record.seconds = seconds;

@@ -19,6 +19,10 @@ int items_was_latest(struct store_view *view, struct store_text id, uint64_t seq
             return store_fail(error, STORE_CORRUPT, "the record of change %llu is gone",
                               (unsigned long long)latest);
         }
+        if (result == STORE_OK && record.replaced >= latest) {
+            return store_fail(error, STORE_CORRUPT, "the record of change %llu is damaged",
+                              (unsigned long long)latest);
+        }
         latest = result == STORE_OK ? record.replaced : 0;
     }
     if (result == STORE_OK) {

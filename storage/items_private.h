@@ -7,6 +7,7 @@
 #define UNDERTAG_ITEMS_PRIVATE_H
 
 #include "storage/items.h"
+#include "storage/vocabulary.h"
 
 /*
  * A record is
@@ -18,11 +19,16 @@
  * evidence stands in item_evidence.c; a record that ends before it is a filing that nobody has
  * looked at yet.
  *
- * The entry of an id is: seq u64 · withdrawn u8.
+ * The entry of an id is: seq u64 · withdrawn u8 · proof.
  */
 enum record_kind {
     RECORD_ITEM = 1,
     RECORD_WITHDRAWAL = 2
+};
+
+enum {
+    ID_BYTES = 255,
+    ID_ENTRY_BYTES = 9 /* the proof not counted */
 };
 
 struct id_entry {
@@ -77,6 +83,14 @@ void item_evidence_follow(struct item_record *record, uint32_t *room);
 int item_tally_move(struct store_view *view, const struct item_record *from,
                     const struct item_record *to, struct store_error *error)
     __attribute__((warn_unused_result));
+
+/* Adds what an item counts to the counts of its tags, which are by number. STORE_CORRUPT, with
+ * those of the others added, where it holds a tag that is none of them. */
+int item_tally_add(struct vocabulary_counts *counts, uint64_t tag_count,
+                   const struct item_record *item) __attribute__((warn_unused_result));
+
+/* Adds what it counts to the store's totals. */
+void item_tally_totals(struct store_totals *totals, const struct item_record *item);
 
 /* --- the steps of a change --- */
 

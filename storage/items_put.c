@@ -5,6 +5,7 @@
 #include <stdlib.h>
 
 #include "storage/items_private.h"
+#include "storage/proof.h"
 #include "storage/store_private.h"
 
 /* --- into a record ------------------------------------------------------------------------------
@@ -47,21 +48,24 @@ static void encode(struct codec_writer *writer, const struct item_record *record
 static int put_id(struct store_view *view, struct store_text id, struct id_entry entry,
                   struct store_error *error)
 {
-    unsigned char value[9];
+    unsigned char value[ID_ENTRY_BYTES + PROOF_BYTES];
     struct codec_writer writer = {.data = value, .capacity = sizeof value};
+    struct kv_bytes key = kv_bytes_of(id.data, id.size);
     codec_put_u64(&writer, entry.seq);
     codec_put_u8(&writer, entry.withdrawn ? 1 : 0);
-    return kv_put(view->txn, TABLE_IDS, kv_bytes_of(id.data, id.size),
-                  kv_bytes_of(value, sizeof value), error);
+    proof_put(&writer, key);
+    return kv_put(view->txn, TABLE_IDS, key, kv_bytes_of(value, sizeof value), error);
 }
 
 static int put_superseded(struct store_view *view, uint64_t seq, uint64_t replaced,
                           struct store_error *error)
 {
     unsigned char key[8];
-    unsigned char value[8];
+    unsigned char value[8 + PROOF_BYTES];
+    struct codec_writer writer = {.data = value, .size = 8, .capacity = sizeof value};
     codec_key_u64(key, seq);
     codec_key_u64(value, replaced);
+    proof_put(&writer, kv_bytes_of(key, sizeof key));
     return kv_append(view->txn, TABLE_SUPERSEDED, kv_bytes_of(key, sizeof key),
                      kv_bytes_of(value, sizeof value), error);
 }
@@ -95,6 +99,7 @@ static int put_record(struct store_view *view, const struct standing_item *stand
     if (record->change == ITEM_FILED) {
         record->filed_seq = record->seq;
         record->filed_stored_at_ms = record->stored_at_ms;
+        record->filed_uid = record->uid;
     }
     encode(buffer, record, content);
     if (buffer->failed) {

@@ -2,6 +2,7 @@
 #include <string.h>
 
 #include "storage/items_private.h"
+#include "storage/proof.h"
 #include "storage/store_private.h"
 
 /* --- ids ---------------------------------------------------------------------------------------
@@ -11,21 +12,25 @@ int items_entry(struct store_view *view, struct store_text id, struct id_entry *
                 struct store_error *error)
 {
     struct kv_bytes value = {0};
-    int result = kv_get(view->txn, TABLE_IDS, kv_bytes_of(id.data, id.size), &value, error);
+    struct kv_bytes key = kv_bytes_of(id.data, id.size);
+    int result = kv_get(view->txn, TABLE_IDS, key, &value, error);
     if (result != STORE_OK) {
         return result;
+    }
+    if (!proof_holds(key, value, ID_ENTRY_BYTES)) {
+        return store_fail(error, STORE_CORRUPT, "the entry of the id '%.*s' is damaged",
+                          (int)id.size, id.data);
     }
     struct codec_reader reader = {.data = value.data, .size = value.size};
     ret_entry->seq = codec_get_u64(&reader);
     ret_entry->withdrawn = codec_get_u8(&reader) != 0;
-    return reader.failed ? (int)store_fail(error, STORE_CORRUPT, "the entry of an id is damaged")
-                         : STORE_OK;
+    return STORE_OK;
 }
 
 int items_find(struct store_view *view, struct store_text id, uint64_t *ret_seq,
                struct store_error *error)
 {
-    struct id_entry entry;
+    struct id_entry entry = {0};
     int result = items_entry(view, id, &entry, error);
     if (result == STORE_OK && entry.withdrawn) {
         return STORE_NOT_FOUND;
@@ -131,7 +136,8 @@ static int decode(uint64_t seq, struct item_buffer *buffer, struct item_record *
             return result;
         }
     }
-    if (reader.failed || (kind != RECORD_ITEM && kind != RECORD_WITHDRAWAL)) {
+    bool has_id = record.id.size > 0 && record.id.size <= ID_BYTES;
+    if (reader.failed || !has_id || (kind != RECORD_ITEM && kind != RECORD_WITHDRAWAL)) {
         return store_fail(error, STORE_CORRUPT, "the record of change %llu is damaged",
                           (unsigned long long)seq);
     }
@@ -168,7 +174,7 @@ int items_changed(struct store_view *view, uint64_t since, size_t most,
     while (given < most && last < UINT64_MAX) {
         uint64_t seq = 0;
         struct item_record record = {0};
-        struct id_entry entry;
+        struct id_entry entry = {0};
         int result = records_next(view, last + 1, &seq, error);
         if (result == STORE_NOT_FOUND) {
             *ret_next = view->totals.seq > since ? view->totals.seq : since;

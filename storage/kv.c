@@ -84,9 +84,9 @@ static struct kv_bytes from_val(MDB_val value)
 static int open_tables(struct kv *kv, struct store_error *error)
 {
     MDB_txn *txn = NULL;
-    int code = mdb_txn_begin(kv->env, NULL, 0, &txn);
+    int code = mdb_txn_begin(kv->env, NULL, kv->read_only ? MDB_RDONLY : 0, &txn);
     for (unsigned i = 0; i < kv->table_count && code == MDB_SUCCESS; i++) {
-        code = mdb_dbi_open(txn, kv->names[i], MDB_CREATE, &kv->tables[i]);
+        code = mdb_dbi_open(txn, kv->names[i], kv->read_only ? 0 : MDB_CREATE, &kv->tables[i]);
     }
     if (code == MDB_SUCCESS) {
         code = mdb_txn_commit(txn);
@@ -113,11 +113,14 @@ int kv_open_environment(struct kv *kv, struct store_error *error)
     }
     if (code == MDB_SUCCESS) {
         /* Readers come from a pool of threads: a slot is the transaction's, not the thread's. */
-        code = mdb_env_open(kv->env, kv->directory, MDB_NOTLS | MDB_NORDAHEAD, 0600);
+        unsigned flags = MDB_NOTLS | MDB_NORDAHEAD | (kv->read_only ? MDB_RDONLY : 0);
+        code = mdb_env_open(kv->env, kv->directory, flags, 0600);
     }
     int result = kv_translate(kv, code, "opening it", error);
-    if (result == STORE_OK) {
+    if (result == STORE_OK && !kv->read_only) {
         (void)mdb_reader_check(kv->env, &dead); /* only tidies up: a failure changes nothing */
+    }
+    if (result == STORE_OK) {
         result = open_tables(kv, error);
     }
     if (result != STORE_OK && kv->env) {
@@ -133,12 +136,13 @@ static int prepare(struct kv *made, const struct kv_settings *settings, struct s
     made->reserve_bytes = settings->reserve_bytes;
     made->names = settings->tables;
     made->table_count = settings->table_count;
+    made->read_only = settings->read_only;
     made->round.due = true; /* an earlier life may have ended between erasing and scrubbing */
     made->directory = strdup(settings->directory);
     if (!made->directory) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
-    if (mkdir(settings->directory, 0700) < 0 && errno != EEXIST) {
+    if (!settings->read_only && mkdir(settings->directory, 0700) < 0 && errno != EEXIST) {
         return kv_translate(made, errno, "making it", error);
     }
     return kv_open_environment(made, error);
@@ -405,9 +409,14 @@ int kv_walk(struct kv_txn *txn, unsigned table, struct kv_bytes from, kv_each ea
     }
     MDB_val key = to_val(from);
     MDB_val value;
-    int result = STORE_OK;
+    uint64_t left = 0; /* damage can lead round in a circle */
+    int result = kv_count(txn, table, &left, error);
     code = mdb_cursor_get(at.cursor, &key, &value, from.size ? MDB_SET_RANGE : MDB_FIRST);
     while (code == MDB_SUCCESS && result == STORE_OK) {
+        if (left-- == 0) {
+            code = MDB_CORRUPTED;
+            break;
+        }
         result = each(user, &at, from_val(key), from_val(value));
         if (result == STORE_OK) {
             code = mdb_cursor_get(at.cursor, &key, &value, MDB_NEXT);

@@ -41,6 +41,7 @@ struct kv_settings {
     const char *const *tables; /* names; a table is then named by its place in the list; borrowed
                                   until kv_close */
     unsigned table_count;
+    bool read_only; /* nothing is made or changed, not even on opening */
 };
 
 /* Opens or makes the environment with its tables. */

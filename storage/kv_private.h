@@ -24,6 +24,7 @@ struct kv {
     size_t reserve_bytes;
     const char *const *names;
     unsigned table_count;
+    bool read_only;
     MDB_dbi tables[KV_TABLES];
     bool is_open;       /* kv_open has succeeded: a failure now is one of its use */
     atomic_bool broken; /* a write failed in a way that leaves the file in doubt */

@@ -5,6 +5,7 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "storage/kv_batch.h"
 #include "storage/model_store_private.h"
 
 static const char *const TABLE_NAMES[MODEL_TABLES] = {
@@ -13,7 +14,8 @@ static const char *const TABLE_NAMES[MODEL_TABLES] = {
 };
 
 struct model_store_writing {
-    struct kv_txn *txn;
+    struct kv *kv;
+    struct kv_batch *batch;
     struct codec_writer record;
 };
 
@@ -39,7 +41,8 @@ int model_store_open_in(const struct store_settings *settings, const char *folde
                                       .map_bytes = settings->map_bytes,
                                       .reserve_bytes = settings->reserve_bytes,
                                       .tables = TABLE_NAMES,
-                                      .table_count = MODEL_TABLES};
+                                      .table_count = MODEL_TABLES,
+                                      .read_only = settings->read_only};
     int result = kv_open(&kv_settings, &made->kv, error);
     if (result != STORE_OK) {
         free(made);
@@ -72,7 +75,8 @@ int model_store_begin(struct model_store *store, struct model_store_writing **re
     if (!made) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
-    int result = kv_begin(store->kv, true, &made->txn, error);
+    made->kv = store->kv;
+    int result = kv_batch_new(&made->batch, error);
     if (result != STORE_OK) {
         free(made);
         return result;
@@ -81,18 +85,22 @@ int model_store_begin(struct model_store *store, struct model_store_writing **re
     return STORE_OK;
 }
 
+uint64_t model_store_writing_bytes(const struct model_store_writing *writing)
+{
+    return kv_batch_bytes(writing->batch) + writing->record.capacity;
+}
+
 int model_store_commit(struct model_store_writing *writing, struct store_error *error)
 {
-    int result = kv_commit(writing->txn, error);
-    codec_deinit(&writing->record);
-    free(writing);
+    int result = kv_batch_commit(writing->batch, writing->kv, error);
+    model_store_abort(writing);
     return result;
 }
 
 void model_store_abort(struct model_store_writing *writing)
 {
     if (writing) {
-        kv_abort(writing->txn);
+        kv_batch_free(writing->batch);
         codec_deinit(&writing->record);
         free(writing);
     }
@@ -101,7 +109,7 @@ void model_store_abort(struct model_store_writing *writing)
 int model_store_clear(struct model_store_writing *writing, struct store_error *error)
 {
     for (unsigned table = 0; table < MODEL_TABLES; table++) {
-        int result = kv_clear(writing->txn, table, error);
+        int result = kv_batch_delete_all(writing->batch, table, (struct kv_bytes){0}, error);
         if (result != STORE_OK) {
             return result;
         }
@@ -136,11 +144,12 @@ int model_store_put_head(struct model_store_writing *writing, const struct model
     codec_put_u64(record, head->rehearsed_items);
     codec_put_u64(record, head->examples);
     codec_put_blob(record, head->settings, strlen(head->settings));
+    codec_put_u32(record, codec_checksum(record->data, record->size));
     if (record->failed) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
-    return kv_put(writing->txn, MODEL_META, model_store_head_key(),
-                  kv_bytes_of(record->data, record->size), error);
+    return kv_batch_put(writing->batch, MODEL_META, model_store_head_key(),
+                        kv_bytes_of(record->data, record->size), error);
 }
 
 /* Begins a checked record: the checksum is filled in when it is put. */
@@ -163,8 +172,9 @@ static int put_record(struct model_store_writing *writing, enum model_table tabl
     }
     struct codec_writer checksum = {.data = record->data, .capacity = CHECKSUM_BYTES};
     codec_put_u32(&checksum,
-                  codec_checksum(record->data + CHECKSUM_BYTES, record->size - CHECKSUM_BYTES));
-    return kv_put(writing->txn, table, key, kv_bytes_of(record->data, record->size), error);
+                  codec_checksum_of_two(key.data, key.size, record->data + CHECKSUM_BYTES,
+                                        record->size - CHECKSUM_BYTES));
+    return kv_batch_put(writing->batch, table, key, kv_bytes_of(record->data, record->size), error);
 }
 
 int model_store_put_word(struct model_store_writing *writing, const struct model_store_word *word,
@@ -182,32 +192,19 @@ int model_store_remove_chunk(struct model_store_writing *writing, uint32_t word,
     unsigned char key[8];
     codec_key_u32(key, word);
     codec_key_u32(key + 4, number);
-    int result = kv_delete(writing->txn, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
-    return result == STORE_NOT_FOUND ? STORE_OK : result;
-}
-
-static int delete_chunks(struct model_store_writing *writing, uint32_t word,
-                         struct store_error *error)
-{
-    int result = STORE_OK;
-    for (uint32_t number = 0; result == STORE_OK; number++) {
-        unsigned char key[8];
-        codec_key_u32(key, word);
-        codec_key_u32(key + 4, number);
-        result = kv_delete(writing->txn, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
-    }
-    return result == STORE_NOT_FOUND ? STORE_OK : result;
+    return kv_batch_delete(writing->batch, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
 }
 
 int model_store_forget_word(struct model_store_writing *writing,
                             const struct model_store_word *word, struct store_error *error)
 {
-    int result =
-        kv_delete(writing->txn, MODEL_WORDS, kv_bytes_of(word->term, word->term_bytes), error);
-    if (result == STORE_NOT_FOUND) {
-        return STORE_OK; /* it came and went since the last flush */
-    }
-    return result == STORE_OK ? delete_chunks(writing, word->number, error) : result;
+    unsigned char beginning[4];
+    codec_key_u32(beginning, word->number);
+    int result = kv_batch_delete(writing->batch, MODEL_WORDS,
+                                 kv_bytes_of(word->term, word->term_bytes), error);
+    return result == STORE_OK ? kv_batch_delete_all(writing->batch, MODEL_CHUNKS,
+                                                    kv_bytes_of(beginning, sizeof beginning), error)
+                              : result;
 }
 
 int model_store_put_chunk(struct model_store_writing *writing,
@@ -284,8 +281,7 @@ int model_store_remove_entry(struct model_store_writing *writing, uint64_t numbe
 {
     unsigned char key[8];
     codec_key_u64(key, number);
-    int result = kv_delete(writing->txn, MODEL_ENTRIES, kv_bytes_of(key, sizeof key), error);
-    return result == STORE_NOT_FOUND ? STORE_OK : result;
+    return kv_batch_delete(writing->batch, MODEL_ENTRIES, kv_bytes_of(key, sizeof key), error);
 }
 
 int model_store_scrub(struct model_store *store, size_t most_pages, size_t *ret_left,

@@ -16,7 +16,7 @@
 #include "storage/store.h"
 
 enum {
-    MODEL_STORE_FORMAT = 3,
+    MODEL_STORE_FORMAT = 4,
     MODEL_STORE_SETTINGS_BYTES = 1024
 };
 
@@ -132,8 +132,15 @@ struct model_store_sink {
 int model_store_load(struct model_store *store, const struct model_store_sink *sink,
                      struct store_error *error) __attribute__((warn_unused_result));
 
+/*
+ * Writing: what is to change is collected, by a thread that may be any, and then committed, by
+ * another one if that suits, in one transaction. Nothing of it is in the store before. Both commit
+ * and abort free the writing; at most one of a store may be committing at a time.
+ */
 int model_store_begin(struct model_store *store, struct model_store_writing **ret_writing,
                       struct store_error *error) __attribute__((warn_unused_result));
+/* Bytes of memory that a writing takes. */
+uint64_t model_store_writing_bytes(const struct model_store_writing *writing);
 int model_store_commit(struct model_store_writing *writing, struct store_error *error)
     __attribute__((warn_unused_result));
 void model_store_abort(struct model_store_writing *writing);

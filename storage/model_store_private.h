@@ -35,8 +35,12 @@ static inline struct kv_bytes model_store_head_key(void)
     return kv_bytes_of("model", 5);
 }
 
-/* The body of a checked record: what follows its checksum. */
-int model_store_open_record(struct kv_bytes value, const char *what,
+/* The head, in a transaction. STORE_NOT_FOUND where no model has been stored yet. */
+int model_store_get_head(struct kv_txn *txn, struct model_store_head *ret_head,
+                         struct store_error *error) __attribute__((warn_unused_result));
+
+/* The body of a checked record: what follows the checksum, which is that of key and body. */
+int model_store_open_record(struct kv_bytes key, struct kv_bytes value, const char *what,
                             struct codec_reader *ret_reader, struct store_error *error)
     __attribute__((warn_unused_result));
 

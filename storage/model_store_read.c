@@ -42,12 +42,22 @@ static int decode_head(struct kv_bytes value, struct model_store_head *ret_head,
     head.examples = codec_get_u64(&reader);
     size_t bytes = 0;
     const char *settings = codec_get_blob(&reader, &bytes);
-    if (reader.failed || format == 0 || bytes >= sizeof head.settings) {
+    uint32_t right = codec_checksum(reader.data, reader.at);
+    if (codec_get_u32(&reader) != right || reader.failed || format == 0 ||
+        bytes >= sizeof head.settings) {
         return store_fail(error, STORE_CORRUPT, "the model's first record is damaged");
     }
     memcpy(head.settings, settings, bytes);
     *ret_head = head;
     return STORE_OK;
+}
+
+int model_store_get_head(struct kv_txn *txn, struct model_store_head *ret_head,
+                         struct store_error *error)
+{
+    struct kv_bytes value = {0};
+    int result = kv_get(txn, MODEL_META, model_store_head_key(), &value, error);
+    return result == STORE_OK ? decode_head(value, ret_head, error) : result;
 }
 
 int model_store_read_head(struct model_store *store, struct model_store_head *ret_head,
@@ -58,11 +68,7 @@ int model_store_read_head(struct model_store *store, struct model_store_head *re
     if (result != STORE_OK) {
         return result;
     }
-    struct kv_bytes value = {0};
-    result = kv_get(txn, MODEL_META, model_store_head_key(), &value, error);
-    if (result == STORE_OK) {
-        result = decode_head(value, ret_head, error);
-    }
+    result = model_store_get_head(txn, ret_head, error);
     kv_abort(txn);
     return result;
 }
@@ -72,13 +78,13 @@ struct loading {
     struct store_error *error;
 };
 
-int model_store_open_record(struct kv_bytes value, const char *what,
+int model_store_open_record(struct kv_bytes key, struct kv_bytes value, const char *what,
                             struct codec_reader *ret_reader, struct store_error *error)
 {
     struct codec_reader reader = {.data = value.data, .size = value.size};
     uint32_t checksum = codec_get_u32(&reader);
-    if (reader.failed ||
-        codec_checksum(reader.data + reader.at, reader.size - reader.at) != checksum) {
+    if (reader.failed || codec_checksum_of_two(key.data, key.size, reader.data + reader.at,
+                                               reader.size - reader.at) != checksum) {
         return store_fail(error, STORE_CORRUPT, "a stored %s of the model is damaged", what);
     }
     *ret_reader = reader;
@@ -90,7 +96,7 @@ static int load_tag(void *user, struct kv_cursor *at, struct kv_bytes key, struc
     (void)at;
     const struct loading *loading = user;
     struct codec_reader reader;
-    int result = model_store_open_record(value, "tag", &reader, loading->error);
+    int result = model_store_open_record(key, value, "tag", &reader, loading->error);
     if (result != STORE_OK) {
         return result;
     }
@@ -113,7 +119,7 @@ static int load_figures(void *user, struct kv_cursor *at, struct kv_bytes key,
     (void)at;
     const struct loading *loading = user;
     struct codec_reader reader;
-    int result = model_store_open_record(value, "list of figures", &reader, loading->error);
+    int result = model_store_open_record(key, value, "list of figures", &reader, loading->error);
     if (result != STORE_OK) {
         return result;
     }

@@ -106,7 +106,8 @@ int model_view_chunk(struct model_view *view, uint32_t word, uint32_t number,
     view->number = number;
     struct codec_reader reader;
     if (result == STORE_OK) {
-        result = model_store_open_record(value, "chunk", &reader, error);
+        result =
+            model_store_open_record(kv_bytes_of(key, sizeof key), value, "chunk", &reader, error);
     }
     if (result == STORE_OK) {
         *ret_bytes = kv_bytes_of(reader.data + reader.at, reader.size - reader.at);
@@ -122,9 +123,10 @@ int model_view_word(struct model_view *view, const char *term, size_t term_bytes
 {
     struct kv_bytes value = {0};
     struct codec_reader reader;
-    int result = kv_get(view->txn, MODEL_WORDS, kv_bytes_of(term, term_bytes), &value, error);
+    struct kv_bytes key = kv_bytes_of(term, term_bytes);
+    int result = kv_get(view->txn, MODEL_WORDS, key, &value, error);
     if (result == STORE_OK) {
-        result = model_store_open_record(value, "word", &reader, error);
+        result = model_store_open_record(key, value, "word", &reader, error);
     }
     if (result != STORE_OK) {
         return result;
@@ -143,7 +145,7 @@ static int decode_entry(struct model_view *view, struct kv_bytes key, struct kv_
                         struct model_store_entry *ret_entry, struct store_error *error)
 {
     struct codec_reader reader;
-    int result = model_store_open_record(value, "entry", &reader, error);
+    int result = model_store_open_record(key, value, "entry", &reader, error);
     if (result != STORE_OK) {
         return result;
     }

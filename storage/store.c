@@ -6,6 +6,7 @@
 #include <string.h>
 #include <sys/random.h>
 
+#include "storage/proof.h"
 #include "storage/store_private.h"
 
 static const char *const TABLE_NAMES[STORE_TABLES] = {
@@ -62,6 +63,7 @@ static int put_meta(struct store_view *view, struct store_error *error)
     codec_put_u64(&record, view->totals.items);
     codec_put_u64(&record, view->totals.tags);
     put_evidence(&record, &view->totals.evidence);
+    proof_put(&record, meta_key());
     int result = record.failed ? (int)store_fail(error, STORE_NO_MEMORY, "out of memory")
                                : kv_put(view->txn, TABLE_META, meta_key(),
                                         kv_bytes_of(record.data, record.size), error);
@@ -91,14 +93,14 @@ static int get_meta(struct store_view *view, unsigned char uuid[STORE_UUID_BYTES
     view->totals.seq = codec_get_u64(&reader);
     view->totals.items = codec_get_u64(&reader);
     view->totals.tags = codec_get_u64(&reader);
-    if (!reader.failed && format < STORE_FORMAT) {
+    if (!reader.failed && format < STORE_FORMAT_OLDEST) {
         return store_fail(error, STORE_DENIED,
                           "the store has format %u, of an early version whose items cannot be "
                           "taken over: file them again into a new home",
                           format);
     }
     get_evidence(&reader, &view->totals.evidence);
-    if (reader.failed) {
+    if (reader.failed || !proof_holds(meta_key(), value, reader.at)) {
         return store_fail(error, STORE_CORRUPT, "the store's first record is damaged");
     }
     return STORE_OK;
@@ -118,7 +120,7 @@ static int make_uuid(unsigned char uuid[STORE_UUID_BYTES], struct store_error *e
 }
 
 /* Gives a new store its first record, or reads that of an old one. */
-static int begin_life(struct store *store, struct store_error *error)
+static int begin_life(struct store *store, bool read_only, struct store_error *error)
 {
     struct store_view view = {.store = store};
     int result = kv_begin(store->kv, false, &view.txn, error);
@@ -129,6 +131,9 @@ static int begin_life(struct store *store, struct store_error *error)
     kv_abort(view.txn);
     if (result != STORE_NOT_FOUND) {
         return result;
+    }
+    if (read_only) {
+        return store_fail(error, STORE_CORRUPT, "the store's first record is gone");
     }
     result = make_uuid(store->uuid, error);
     if (result != STORE_OK) {
@@ -162,10 +167,11 @@ int store_open(const struct store_settings *settings, struct store **ret_store,
                                       .map_bytes = settings->map_bytes,
                                       .reserve_bytes = settings->reserve_bytes,
                                       .tables = TABLE_NAMES,
-                                      .table_count = STORE_TABLES};
+                                      .table_count = STORE_TABLES,
+                                      .read_only = settings->read_only};
     int result = kv_open(&kv_settings, &made->kv, error);
     if (result == STORE_OK) {
-        result = begin_life(made, error);
+        result = begin_life(made, settings->read_only, error);
     }
     if (result != STORE_OK) {
         store_close(made);
@@ -269,6 +275,7 @@ struct passed {
     size_t count;
     uint64_t successors[ERASE_BATCH];
     uint64_t replaced[ERASE_BATCH];
+    struct store_error *error;
 };
 
 static int collect_passed(void *user, struct kv_cursor *at, struct kv_bytes key,
@@ -280,6 +287,13 @@ static int collect_passed(void *user, struct kv_cursor *at, struct kv_bytes key,
     if (successor > passed->learned || passed->count == passed->most) {
         return STORE_STOPPED;
     }
+    if (!proof_holds(key, value, sizeof(uint64_t))) {
+        /* What comes before it is erased; it is told when nothing does. */
+        return passed->count > 0 ? STORE_STOPPED
+                                 : (int)store_fail(passed->error, STORE_CORRUPT,
+                                                   "what change %llu replaced is damaged",
+                                                   (unsigned long long)successor);
+    }
     passed->successors[passed->count] = successor;
     passed->replaced[passed->count] = codec_u64_of_key(value.data);
     passed->count++;
@@ -289,7 +303,8 @@ static int collect_passed(void *user, struct kv_cursor *at, struct kv_bytes key,
 int store_erase_passed(struct store_view *view, uint64_t learned, size_t most, size_t *ret_erased,
                        struct store_error *error)
 {
-    struct passed passed = {.learned = learned, .most = most < ERASE_BATCH ? most : ERASE_BATCH};
+    struct passed passed = {
+        .learned = learned, .most = most < ERASE_BATCH ? most : ERASE_BATCH, .error = error};
     int result =
         kv_walk(view->txn, TABLE_SUPERSEDED, kv_bytes_of(NULL, 0), collect_passed, &passed, error);
     if (result != STORE_OK && result != STORE_STOPPED) {

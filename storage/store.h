@@ -13,6 +13,8 @@
  *   tags        number -> name, counts, state
  *   tag_names   name -> number
  *
+ * Every value carries a checksum: in front, or a proof behind it (proof.h).
+ *
  * Any number of threads may read (store_read); one at a time writes (store_write; others wait), and
  * one alone, the writer, deletes and scrubs. No view may outlive one job. Failure leaves everything
  * as it was: what was put in a writing view is there only once store_commit has returned 0, and
@@ -28,7 +30,8 @@
 #include "storage/store_error.h"
 
 enum {
-    STORE_FORMAT = 2,
+    STORE_FORMAT = 3,
+    STORE_FORMAT_OLDEST = 2, /* that is still read; the first commit makes it the present one */
     STORE_UUID_BYTES = 16
 };
 
@@ -39,6 +42,7 @@ struct store_settings {
     const char *home; /* the environment is HOME/store */
     size_t map_bytes;
     size_t reserve_bytes;
+    bool read_only; /* it must be there, and stays as it is */
 };
 
 /* Opens or makes the store of a home. STORE_NEWER where a later version wrote it. */
@@ -89,7 +93,8 @@ struct store_totals store_view_totals(const struct store_view *view);
 
 /*
  * Erases the records whose successors the learner has durably passed: those superseded by a change
- * up to `learned`. At most `most` a call; says how many it erased.
+ * up to `learned`. At most `most` a call; says how many it erased. It stops before what is damaged
+ * in the list of them; STORE_CORRUPT, with nothing erased, where that comes first.
  */
 int store_erase_passed(struct store_view *view, uint64_t learned, size_t most, size_t *ret_erased,
                        struct store_error *error) __attribute__((warn_unused_result));

@@ -2,7 +2,12 @@
 
 #include <string.h>
 
+#include "storage/proof.h"
 #include "storage/store_private.h"
+
+enum {
+    NUMBER_BYTES = 4
+};
 
 /* --- counts -------------------------------------------------------------------------------------
  */
@@ -93,6 +98,18 @@ int vocabulary_put(struct store_view *view, const struct vocabulary_tag *tag,
                   kv_bytes_of(outer.data, outer.size), error);
 }
 
+/* The number that stands under a name. */
+static int decode_number(struct kv_bytes name, struct kv_bytes value, uint32_t *ret_number,
+                         struct store_error *error)
+{
+    if (!proof_holds(name, value, NUMBER_BYTES)) {
+        return store_fail(error, STORE_CORRUPT, "the entry of the tag '%.*s' is damaged",
+                          (int)name.size, (const char *)name.data);
+    }
+    *ret_number = codec_u32_of_key(value.data);
+    return STORE_OK;
+}
+
 /* --- by name and by number ---------------------------------------------------------------------
  */
 
@@ -110,11 +127,16 @@ int vocabulary_find(struct store_view *view, const char *name, size_t bytes,
                     struct vocabulary_tag *ret_tag, struct store_error *error)
 {
     struct kv_bytes value = {0};
-    int result = kv_get(view->txn, TABLE_TAG_NAMES, kv_bytes_of(name, bytes), &value, error);
+    struct kv_bytes key = kv_bytes_of(name, bytes);
+    uint32_t number = 0;
+    int result = kv_get(view->txn, TABLE_TAG_NAMES, key, &value, error);
+    if (result == STORE_OK) {
+        result = decode_number(key, value, &number, error);
+    }
     if (result != STORE_OK) {
         return result;
     }
-    result = vocabulary_get(view, codec_u32_of_key(value.data), ret_tag, error);
+    result = vocabulary_get(view, number, ret_tag, error);
     if (result == STORE_NOT_FOUND) {
         return store_fail(error, STORE_CORRUPT, "a tag's name stands without its record");
     }
@@ -129,10 +151,12 @@ int vocabulary_open(struct store_view *view, const char *name, size_t bytes, uin
     }
     struct vocabulary_tag tag = {.number = (uint32_t)view->totals.tags, .opened_seq = opened_seq};
     memcpy(tag.name, name, bytes);
-    unsigned char number[4];
+    unsigned char number[NUMBER_BYTES + PROOF_BYTES];
+    struct codec_writer writer = {.data = number, .size = NUMBER_BYTES, .capacity = sizeof number};
+    struct kv_bytes key = kv_bytes_of(name, bytes);
     codec_key_u32(number, tag.number);
-    int result = kv_put(view->txn, TABLE_TAG_NAMES, kv_bytes_of(name, bytes),
-                        kv_bytes_of(number, sizeof number), error);
+    proof_put(&writer, key);
+    int result = kv_put(view->txn, TABLE_TAG_NAMES, key, kv_bytes_of(number, sizeof number), error);
     if (result == STORE_OK) {
         result = vocabulary_put(view, &tag, error);
     }
@@ -163,7 +187,11 @@ static int visit_name(void *user, struct kv_cursor *at, struct kv_bytes key, str
         return STORE_OK;
     }
     struct vocabulary_tag tag;
-    int result = vocabulary_get(walk->view, codec_u32_of_key(value.data), &tag, walk->error);
+    uint32_t number = 0;
+    int result = decode_number(key, value, &number, walk->error);
+    if (result == STORE_OK) {
+        result = vocabulary_get(walk->view, number, &tag, walk->error);
+    }
     return result == STORE_OK ? walk->each(walk->user, &tag) : result;
 }
 

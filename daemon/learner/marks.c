@@ -27,6 +27,20 @@ int marks_add(struct marks *marks, uint32_t number)
     return 0;
 }
 
+int marks_join(struct marks *marks, const struct marks *other)
+{
+    int result = 0;
+    for (size_t i = 0; i < other->count && result == 0; i++) {
+        result = marks_add(marks, other->list[i]);
+    }
+    return result;
+}
+
+bool marks_has(const struct marks *marks, uint32_t number)
+{
+    return number < marks->is_set_capacity && marks->is_set[number];
+}
+
 void marks_clear(struct marks *marks)
 {
     for (size_t i = 0; i < marks->count; i++) {

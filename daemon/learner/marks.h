@@ -5,6 +5,7 @@
 #ifndef UNDERTAG_MARKS_H
 #define UNDERTAG_MARKS_H
 
+#include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
 
@@ -21,6 +22,11 @@ void marks_deinit(struct marks *marks);
 
 /* Adds a number; adding it again changes nothing. Returns 0 or -ENOMEM. */
 int marks_add(struct marks *marks, uint32_t number) __attribute__((warn_unused_result));
+
+/* Adds all of another set's numbers. Returns 0, or -ENOMEM with some of them added. */
+int marks_join(struct marks *marks, const struct marks *other) __attribute__((warn_unused_result));
+
+bool marks_has(const struct marks *marks, uint32_t number);
 
 /* Empties the set and keeps its memory. */
 void marks_clear(struct marks *marks);

@@ -19,12 +19,13 @@ static const double UNSHARED_WORD_SHARE = 0.5;
 /* Below this chance a gap is not looked at twice: there are thousands of them. */
 static const double AGREEMENT_LEAST_CHANCE = 0.02;
 
-/* What is changed takes a page of the store while it is stored, and a chunk itself another half.
- * Words and tags are small: all together they take not much more pages than they fill. */
-static const uint64_t PAGE_BYTES = 4096;
-static const uint64_t CHANGED_CHUNK_BYTES = 6144;
-static const uint64_t WORD_BYTES = 128;
-static const uint64_t TAG_BYTES = 96;
+/* What the store takes for a record, its share of half-filled pages included; a posting in it is
+ * counted apart. */
+static const double PAGE_BYTES = 4096.0;
+static const double FILLED_SHARE = 0.6;
+static const double CHUNK_BYTES = 64.0;
+static const double WORD_BYTES = 128.0;
+static const double TAG_BYTES = 96.0;
 
 /*
  * A scratch may outlive its model, and the next model may lie where that one lay: each begins its
@@ -278,20 +279,27 @@ void model_trim(struct model *model, uint64_t dictionary_most, uint64_t weights_
     weights_trim(model->weights, weights_most);
 }
 
-/* Pages that so many small records lie in, of which all together take so many bytes. */
-static uint64_t pages_of(uint64_t changed, uint64_t all_bytes)
+/* The pages that so many records take while they are stored, of a table of so many bytes: the
+ * expected number of pages of which at least one record is among them, drawn alike. */
+static uint64_t pages_of(double records, double table_bytes)
 {
-    return changed * PAGE_BYTES < all_bytes ? changed * PAGE_BYTES : all_bytes;
+    double pages = 1.0 + table_bytes / PAGE_BYTES;
+    return (uint64_t)(pages * -expm1(-records / pages) * PAGE_BYTES);
 }
 
 uint64_t model_changed_bytes(const struct model *model)
 {
-    uint64_t words = dictionary_changed_count(model->dictionary);
-    uint64_t tags = weights_changed_tags(model->weights)->count;
-    return weights_changed_count(model->weights) * CHANGED_CHUNK_BYTES +
-           2 * worklist_bytes(model->worklist) + /* in memory, and in pages */
-           pages_of(words, dictionary_size(model->dictionary) * WORD_BYTES) +
-           pages_of(tags, model->tag_count * TAG_BYTES);
+    uint64_t chunks = weights_changed_count(model->weights);
+    double words = (double)dictionary_size(model->dictionary);
+    double postings = (double)weights_postings(model->weights);
+    double chunk_table = words * CHUNK_BYTES +
+                         postings * (double)weights_posting_bytes(model->weights) / FILLED_SHARE;
+    return 2 * chunks * weights_chunk_bytes(model->weights) + /* in memory, and as collected */
+           2 * worklist_bytes(model->worklist) +              /* likewise */
+           pages_of((double)chunks, chunk_table) +
+           pages_of((double)dictionary_changed_count(model->dictionary), words * WORD_BYTES) +
+           pages_of((double)weights_changed_tag_count(model->weights),
+                    (double)model->tag_count * TAG_BYTES);
 }
 
 void model_measure(const struct model *model, struct model_size *ret_size)

@@ -5,9 +5,17 @@
 #include <string.h>
 
 #include "daemon/learner/model_private.h"
+#include "daemon/learner/part_marks.h"
 
-static int put_tag(const struct model *model, const struct model_sink *sink, uint32_t number)
+struct tag_putting {
+    const struct model *model;
+    const struct model_sink *sink;
+};
+
+static int put_tag(void *user, uint32_t number)
 {
+    const struct tag_putting *putting = user;
+    const struct model *model = putting->model;
     const struct tag_counts *counts = &model->tags[number];
     struct model_tag tag = {.number = number,
                             .count = counts->count,
@@ -17,17 +25,7 @@ static int put_tag(const struct model *model, const struct model_sink *sink, uin
                             .bias = weights_bias(model->weights, WEIGHTS_MAIN, number),
                             .shadow_bias = weights_bias(model->weights, WEIGHTS_SHADOW, number),
                             .given_count = weights_tag_count(model->weights, number)};
-    return sink->tag(sink->user, &tag);
-}
-
-static int put_tags(const struct model *model, const struct model_sink *sink,
-                    const struct marks *tags)
-{
-    int result = 0;
-    for (size_t i = 0; i < tags->count && result == 0; i++) {
-        result = put_tag(model, sink, tags->list[i]);
-    }
-    return result;
+    return putting->sink->tag(putting->sink->user, &tag);
 }
 
 static int put_weights(const struct model *model, const struct model_sink *sink)
@@ -36,7 +34,8 @@ static int put_weights(const struct model *model, const struct model_sink *sink)
     if (result == 0) {
         result = weights_changed_chunks(model->weights, sink->chunk, sink->user);
     }
-    return result == 0 ? put_tags(model, sink, weights_changed_tags(model->weights)) : result;
+    struct tag_putting putting = {.model = model, .sink = sink};
+    return result == 0 ? weights_changed_tags(model->weights, put_tag, &putting) : result;
 }
 
 /* --- figures ------------------------------------------------------------------------------------
@@ -66,24 +65,26 @@ static int put_agreement(const struct agreement *agreement, const struct model_s
 
 static int put_calibrators(const struct model *model, const struct model_sink *sink)
 {
+    bool curves_changed = model->curves_changed || model->sealed.curves;
+    bool evidence_changed = model->evidence_changed || model->sealed.evidence || curves_changed;
     int result = 0;
     for (size_t b = 0; b < CALIBRATORS_BINS && result == 0; b++) {
-        if (model->calibrators.changed[b]) {
+        if (model->calibrators.changed[b] || model->sealed.bins[b]) {
             result = put_figures(sink, MODEL_FIGURES_BIN, b, &model->calibrators.bins[b],
                                  sizeof model->calibrators.bins[b]);
         }
     }
-    for (size_t g = 0; g < CALIBRATORS_GROUPS && result == 0 && model->curves_changed; g++) {
+    for (size_t g = 0; g < CALIBRATORS_GROUPS && result == 0 && curves_changed; g++) {
         result = put_figures(sink, MODEL_FIGURES_CURVE, g, &model->curves.groups[g],
                              sizeof model->curves.groups[g]);
     }
-    if (result == 0 && (model->evidence_changed || model->curves_changed)) {
+    if (result == 0 && evidence_changed) {
         result = put_agreement(&model->agreement, sink);
     }
-    if (result == 0 && model->curves_changed) {
+    if (result == 0 && curves_changed) {
         result = put_figures(sink, MODEL_FIGURES_LEAST, 0, model->least, sizeof model->least);
     }
-    if (result == 0 && model->fit_changed) {
+    if (result == 0 && (model->fit_changed || model->sealed.fit)) {
         result = put_figures(sink, MODEL_FIGURES_FIT, 0, &model->fit, sizeof model->fit);
     }
     return result;
@@ -157,16 +158,45 @@ int model_changes(const struct model *model, const struct model_sink *sink)
     return result;
 }
 
+static void seal_figures(struct model *model)
+{
+    part_marks_seal(model->calibrators.changed, model->sealed.bins, CALIBRATORS_BINS);
+    model->sealed.evidence |= model->evidence_changed;
+    model->sealed.curves |= model->curves_changed;
+    model->sealed.fit |= model->fit_changed;
+    model->evidence_changed = false;
+    model->curves_changed = false;
+    model->fit_changed = false;
+    standing_seal(model->standing);
+}
+
+int model_seal(struct model *model)
+{
+    if (weights_seal(model->weights) < 0 || worklist_seal(model->worklist) < 0) {
+        return -ENOMEM; /* a part may be sealed, and comes out again */
+    }
+    dictionary_seal(model->dictionary);
+    seal_figures(model);
+    return 0;
+}
+
+void model_stored(struct model *model)
+{
+    weights_stored(model->weights);
+    worklist_stored(model->worklist);
+    dictionary_stored(model->dictionary);
+    standing_stored(model->standing);
+    model->sealed = (struct figures_sealed){0};
+}
+
 void model_clean(struct model *model)
 {
     dictionary_clean(model->dictionary);
     weights_clean(model->weights);
-    memset(model->calibrators.changed, 0, sizeof model->calibrators.changed);
-    model->evidence_changed = false;
-    model->curves_changed = false;
-    model->fit_changed = false;
-    standing_clean(model->standing);
     worklist_clean(model->worklist);
+    seal_figures(model);
+    standing_stored(model->standing);
+    model->sealed = (struct figures_sealed){0};
 }
 
 /* --- restoring ----------------------------------------------------------------------------------

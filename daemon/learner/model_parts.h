@@ -1,10 +1,14 @@
 /*
- * model_parts: the model taken apart for those who store it. What has changed since the last
- * model_clean comes out part by part; what was stored goes back in the same parts.
+ * model_parts: the model taken apart for those who store it. What has changed and is not stored
+ * comes out part by part; what was stored goes back in the same parts.
  *
  * Storing: in the order in which model_changes gives them, then model_clean once it is durable:
- * from then on words, chunks and entries are read from the base. Restoring: into a new model, what
- * is held in memory (tags, figures, totals), in any order; model_restored at the end.
+ * from then on words, chunks and entries are read from the base. Or beside learning: model_changes,
+ * whose parts are copied, and model_seal before anything else is learned; what changes from here on
+ * is told apart from what is sealed, which stays in memory until it is durable and model_stored
+ * says so. What does not arrive comes out once more with the next model_changes. Restoring: into a
+ * new model, what is held in memory (tags, figures, totals), in any order; model_restored at the
+ * end.
  */
 #ifndef UNDERTAG_MODEL_PARTS_H
 #define UNDERTAG_MODEL_PARTS_H
@@ -79,6 +83,11 @@ struct model_sink {
 int model_changes(const struct model *model, const struct model_sink *sink)
     __attribute__((warn_unused_result));
 
+/* Returns 0, or -ENOMEM with everything still to be stored. */
+int model_seal(struct model *model) __attribute__((warn_unused_result));
+void model_stored(struct model *model);
+
+/* Everything is stored, sealed or not. */
 void model_clean(struct model *model);
 
 /* Each returns 0, -ENOMEM, or -EINVAL for what cannot belong to one model. */

@@ -22,6 +22,14 @@ struct tag_counts {
     uint32_t given_halves;
 };
 
+/* Figures that are on their way to the store. */
+struct figures_sealed {
+    uint8_t bins[CALIBRATORS_BINS];
+    bool evidence;
+    bool curves;
+    bool fit;
+};
+
 struct model {
     struct model_settings settings;
     struct dictionary *dictionary;
@@ -49,6 +57,7 @@ struct model {
     bool evidence_changed;
     bool curves_changed;
     bool fit_changed;
+    struct figures_sealed sealed;
 
     uint64_t factor_count;
     double factor_sum;

@@ -38,6 +38,7 @@ void postings_free(struct postings *postings)
     free(postings->chunks);
     free(postings->free_places);
     free(postings->changed);
+    free(postings->sealed);
     free(postings->cuts);
     index_deinit(&postings->index);
     free(postings);
@@ -58,8 +59,14 @@ uint64_t postings_bytes(const struct postings *postings)
     return sizeof *postings + index_bytes(&postings->index) +
            postings->chunk_capacity * sizeof *postings->chunks +
            postings->free_capacity * sizeof *postings->free_places +
-           postings->changed_capacity * sizeof *postings->changed +
+           (postings->changed_capacity + postings->sealed_capacity) * sizeof *postings->changed +
            postings->cut_capacity * sizeof *postings->cuts + postings->number_bytes;
+}
+
+uint64_t postings_chunk_bytes(const struct postings *postings)
+{
+    size_t held = postings->chunk_count - postings->free_count;
+    return sizeof *postings->chunks + (held > 0 ? postings->number_bytes / held : 0);
 }
 
 /* --- places -------------------------------------------------------------------------------------
@@ -110,15 +117,12 @@ struct chunk *postings_at(const struct postings *postings, uint32_t place)
     return &postings->chunks[place];
 }
 
-uint32_t postings_chunks(const struct postings *postings, uint32_t word)
+uint32_t postings_chunks(const struct postings *postings, uint32_t word,
+                         const uint32_t **ret_places)
 {
     const struct index_word *entry = index_find(&postings->index, word);
+    *ret_places = entry ? index_places(entry) : NULL;
     return entry ? entry->chunk_count : 0;
-}
-
-uint32_t postings_place(const struct postings *postings, uint32_t word, uint32_t number)
-{
-    return index_places(index_find(&postings->index, word))[number] - 1;
 }
 
 size_t postings_count(const struct postings *postings, uint32_t word)
@@ -358,6 +362,9 @@ int postings_replace(struct postings *postings, uint32_t word, const uint32_t *n
 {
     struct index_word *entry = index_find(&postings->index, word);
     uint32_t chunks = (uint32_t)((count + POSTINGS_CHUNK - 1) / POSTINGS_CHUNK);
+    if (!entry) {
+        return 0; /* an admitted word without postings: none can take their place */
+    }
     if (cut_chunks(postings, entry, chunks) < 0) {
         return -ENOMEM;
     }

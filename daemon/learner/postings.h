@@ -33,6 +33,7 @@ struct chunk {
     uint16_t capacity;
     bool is_there; /* otherwise the place is free */
     bool is_changed;
+    bool is_sealed;    /* on its way to the store; may have changed again since */
     bool is_used;      /* since the clock hand passed */
     uint32_t *numbers; /* postings, one after the other */
 };
@@ -50,6 +51,9 @@ void postings_limit_tags(struct postings *postings, size_t tag_count);
 
 /* Bytes held in memory. */
 uint64_t postings_bytes(const struct postings *postings);
+
+/* Bytes of a chunk in memory, on average. */
+uint64_t postings_chunk_bytes(const struct postings *postings);
 
 /* --- reading --- */
 
@@ -77,10 +81,11 @@ int postings_walk_next(struct postings_walk *walk, const uint32_t **ret_numbers,
 int postings_admit(struct postings *postings, const struct base *base, uint32_t word)
     __attribute__((warn_unused_result));
 
-/* The number of chunks of an admitted word, the place of one of them, and how many postings they
- * hold together. */
-uint32_t postings_chunks(const struct postings *postings, uint32_t word);
-uint32_t postings_place(const struct postings *postings, uint32_t word, uint32_t number);
+/* The chunks of an admitted word: how many there are, and by chunk 1 + its place. Valid until something is admitted, appended, dropped or trimmed. */
+uint32_t postings_chunks(const struct postings *postings, uint32_t word,
+                         const uint32_t **ret_places);
+
+/* How many postings an admitted word has. */
 size_t postings_count(const struct postings *postings, uint32_t word);
 
 /* The chunk at a place; valid until something is admitted, appended or trimmed. */
@@ -104,8 +109,8 @@ uint64_t postings_drop(struct postings *postings, uint32_t word);
 
 /* --- storing --- */
 
-/* Chunks that have changed since the last postings_clean, by rising word and number. The caller
- * frees the list. Returns 0 or -ENOMEM. */
+/* Chunks that have changed and are not stored, sealed ones too, by rising word and number. The
+ * caller frees the list. Returns 0 or -ENOMEM. */
 int postings_changed(const struct postings *postings, uint32_t **ret_places, size_t *ret_count)
     __attribute__((warn_unused_result));
 size_t postings_changed_count(const struct postings *postings);
@@ -117,10 +122,20 @@ struct postings_cut {
     uint32_t until; /* the number behind the last one */
 };
 
-/* What was cut off since the last postings_clean; it goes before what has changed. */
+/* What was cut off and is not stored; it goes before what has changed. */
 const struct postings_cut *postings_cuts(const struct postings *postings, size_t *ret_count);
 
-/* All is stored. */
+/*
+ * What has changed is on its way to the store, as it is now: it stays in memory, apart from what
+ * changes from here on. What was sealed before and did not arrive is sealed with it. Returns 0, or
+ * -ENOMEM with nothing changed.
+ */
+int postings_seal(struct postings *postings) __attribute__((warn_unused_result));
+
+/* What was sealed is stored. */
+void postings_stored(struct postings *postings);
+
+/* All is stored, sealed or not. */
 void postings_clean(struct postings *postings);
 
 /* Lets go of chunks that are stored and were not admitted lately, until there are at most so many

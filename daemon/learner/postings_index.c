@@ -25,31 +25,6 @@ uint64_t index_bytes(const struct postings_index *index)
     return index->slot_count * sizeof *index->slots + index->list_bytes;
 }
 
-/* Fibonacci hashing: the numbers of words that came together are spread. */
-static size_t slot_of(const struct postings_index *index, uint32_t key)
-{
-    return (size_t)(key * 0x9E3779B97F4A7C15U >> 32U) & (index->slot_count - 1);
-}
-
-/* The slot of a key, or the empty one where it would go. */
-static size_t find_slot(const struct postings_index *index, uint32_t key)
-{
-    size_t slot = slot_of(index, key);
-    while (index->slots[slot].key != 0 && index->slots[slot].key != key) {
-        slot = (slot + 1) & (index->slot_count - 1);
-    }
-    return slot;
-}
-
-struct index_word *index_find(const struct postings_index *index, uint32_t word)
-{
-    if (index->slot_count == 0) {
-        return NULL;
-    }
-    struct index_word *found = &index->slots[find_slot(index, word + 1)];
-    return found->key != 0 ? found : NULL;
-}
-
 static int enlarge(struct postings_index *index)
 {
     size_t before = index->slot_count;
@@ -62,7 +37,7 @@ static int enlarge(struct postings_index *index)
     larger.slot_count = after;
     for (size_t i = 0; i < before; i++) {
         if (index->slots[i].key != 0) {
-            larger.slots[find_slot(&larger, index->slots[i].key)] = index->slots[i];
+            larger.slots[index_slot(&larger, index->slots[i].key)] = index->slots[i];
         }
     }
     free(index->slots);
@@ -79,7 +54,7 @@ int index_add(struct postings_index *index, uint32_t word, struct index_word **r
     if (3 * (index->size + 1) > 2 * index->slot_count && enlarge(index) < 0) {
         return -ENOMEM;
     }
-    struct index_word *entry = &index->slots[find_slot(index, word + 1)];
+    struct index_word *entry = &index->slots[index_slot(index, word + 1)];
     *entry = (struct index_word){.key = word + 1};
     index->size++;
     *ret_entry = entry;
@@ -103,7 +78,7 @@ void index_remove(struct postings_index *index, uint32_t word)
     for (size_t at = (slot + 1) & mask; index->slots[at].key != 0; at = (at + 1) & mask) {
         struct index_word moved = index->slots[at];
         index->slots[at] = (struct index_word){0};
-        index->slots[find_slot(index, moved.key)] = moved;
+        index->slots[index_slot(index, moved.key)] = moved;
     }
 }
 

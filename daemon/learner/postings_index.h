@@ -33,8 +33,32 @@ struct postings_index {
 void index_deinit(struct postings_index *index);
 uint64_t index_bytes(const struct postings_index *index);
 
+/* Where a key is looked for first. Fibonacci hashing: the numbers of words that came together are
+ * spread. */
+static inline size_t index_home(const struct postings_index *index, uint32_t key)
+{
+    return (size_t)(key * 0x9E3779B97F4A7C15U >> 32U) & (index->slot_count - 1);
+}
+
+/* The slot of a key, or the empty one where it would go. There are slots. */
+static inline size_t index_slot(const struct postings_index *index, uint32_t key)
+{
+    size_t slot = index_home(index, key);
+    while (index->slots[slot].key != 0 && index->slots[slot].key != key) {
+        slot = (slot + 1) & (index->slot_count - 1);
+    }
+    return slot;
+}
+
 /* NULL where the word is not known. Valid until a word is added or removed. */
-struct index_word *index_find(const struct postings_index *index, uint32_t word);
+static inline struct index_word *index_find(const struct postings_index *index, uint32_t word)
+{
+    if (index->slot_count == 0) {
+        return NULL;
+    }
+    struct index_word *found = &index->slots[index_slot(index, word + 1)];
+    return found->key != 0 ? found : NULL;
+}
 
 /* The word's entry, new where there is none. Returns 0 or -ENOMEM. */
 int index_add(struct postings_index *index, uint32_t word, struct index_word **ret_entry)

@@ -21,9 +21,13 @@ struct postings {
     uint32_t *changed; /* places; one that was dropped and taken again may stand here twice */
     size_t changed_count;
     size_t changed_capacity;
-    struct postings_cut *cuts;
+    uint32_t *sealed; /* places, likewise */
+    size_t sealed_count;
+    size_t sealed_capacity;
+    struct postings_cut *cuts; /* the sealed ones first */
     size_t cut_count;
     size_t cut_capacity;
+    size_t sealed_cut_count;
     uint64_t number_bytes;
     size_t hand;
 };

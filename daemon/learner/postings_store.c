@@ -1,7 +1,9 @@
 /* What of the postings has changed, to be stored, and how memory lets go of what is stored. */
 #include <errno.h>
 #include <stdlib.h>
+#include <string.h>
 
+#include "daemon/grow.h"
 #include "daemon/learner/postings.h"
 #include "daemon/learner/postings_private.h"
 
@@ -17,18 +19,25 @@ static int compare_listed(const void *left, const void *right)
     return (a > b) - (a < b);
 }
 
-/* In place of the list its places by rising word and number, each once; those that are gone are
- * left out. */
-static size_t sort_changed(const struct postings *postings, struct listed *list, uint32_t *places)
+static size_t list_places(const struct postings *postings, const uint32_t *places, size_t count,
+                          struct listed *ret_list)
 {
-    size_t count = 0;
-    for (size_t i = 0; i < postings->changed_count; i++) {
-        uint32_t place = postings->changed[i];
-        const struct chunk *chunk = &postings->chunks[place];
-        if (chunk->is_there && chunk->is_changed) {
-            list[count++] = (struct listed){(uint64_t)chunk->word << 32U | chunk->number, place};
+    size_t listed = 0;
+    for (size_t i = 0; i < count; i++) {
+        const struct chunk *chunk = &postings->chunks[places[i]];
+        if (chunk->is_there && (chunk->is_changed || chunk->is_sealed)) {
+            ret_list[listed++] =
+                (struct listed){(uint64_t)chunk->word << 32U | chunk->number, places[i]};
         }
     }
+    return listed;
+}
+
+/* Places by rising word and number, each once; those that are gone are left out. */
+static size_t sort_places(const struct postings *postings, struct listed *list, uint32_t *places)
+{
+    size_t count = list_places(postings, postings->sealed, postings->sealed_count, list);
+    count += list_places(postings, postings->changed, postings->changed_count, list + count);
     if (count > 1) {
         qsort(list, count, sizeof *list, compare_listed);
     }
@@ -43,7 +52,7 @@ static size_t sort_changed(const struct postings *postings, struct listed *list,
 
 int postings_changed(const struct postings *postings, uint32_t **ret_places, size_t *ret_count)
 {
-    size_t most = postings->changed_count;
+    size_t most = postings_changed_count(postings);
     struct listed *list = calloc(most + 1, sizeof *list);
     uint32_t *places = calloc(most + 1, sizeof *places);
     if (!list || !places) {
@@ -51,7 +60,7 @@ int postings_changed(const struct postings *postings, uint32_t **ret_places, siz
         free(places);
         return -ENOMEM;
     }
-    *ret_count = sort_changed(postings, list, places);
+    *ret_count = sort_places(postings, list, places);
     *ret_places = places;
     free(list);
     return 0;
@@ -59,7 +68,7 @@ int postings_changed(const struct postings *postings, uint32_t **ret_places, siz
 
 size_t postings_changed_count(const struct postings *postings)
 {
-    return postings->changed_count;
+    return postings->sealed_count + postings->changed_count;
 }
 
 const struct postings_cut *postings_cuts(const struct postings *postings, size_t *ret_count)
@@ -68,19 +77,65 @@ const struct postings_cut *postings_cuts(const struct postings *postings, size_t
     return postings->cuts;
 }
 
-void postings_clean(struct postings *postings)
+int postings_seal(struct postings *postings)
 {
-    for (size_t i = 0; i < postings->cut_count; i++) {
-        const struct index_word *entry = index_find(&postings->index, postings->cuts[i].word);
-        if (entry && entry->chunk_count == 0) {
-            index_remove(&postings->index, postings->cuts[i].word);
+    if (GROW(&postings->sealed, &postings->sealed_capacity, postings_changed_count(postings)) < 0) {
+        return -ENOMEM;
+    }
+    for (size_t i = 0; i < postings->changed_count; i++) {
+        uint32_t place = postings->changed[i];
+        struct chunk *chunk = &postings->chunks[place];
+        if (chunk->is_there && chunk->is_changed && !chunk->is_sealed) {
+            postings->sealed[postings->sealed_count++] = place;
+            chunk->is_sealed = true;
+        }
+        chunk->is_changed = false;
+    }
+    postings->changed_count = 0;
+    postings->sealed_cut_count = postings->cut_count;
+    return 0;
+}
+
+/* A word without chunks was known only so that nobody looks for those that were cut off; while
+ * some of them are stored yet, it stays so, and the cut with it. */
+static void forget_cuts(struct postings *postings)
+{
+    size_t left = postings->cut_count - postings->sealed_cut_count;
+    size_t kept = 0;
+    for (size_t i = 0; i < postings->sealed_cut_count; i++) {
+        const struct postings_cut cut = postings->cuts[i];
+        const struct index_word *entry = index_find(&postings->index, cut.word);
+        if (entry && entry->chunk_count == 0 && left > 0) {
+            postings->cuts[kept++] = cut;
+        } else if (entry && entry->chunk_count == 0) {
+            index_remove(&postings->index, cut.word);
         }
     }
-    postings->cut_count = 0;
+    memmove(postings->cuts + kept, postings->cuts + postings->sealed_cut_count,
+            left * sizeof *postings->cuts);
+    postings->cut_count = kept + left;
+    postings->sealed_cut_count = 0;
+}
+
+void postings_stored(struct postings *postings)
+{
+    if (postings->sealed_cut_count > 0) {
+        forget_cuts(postings);
+    }
+    for (size_t i = 0; i < postings->sealed_count; i++) {
+        postings->chunks[postings->sealed[i]].is_sealed = false;
+    }
+    postings->sealed_count = 0;
+}
+
+void postings_clean(struct postings *postings)
+{
     for (size_t i = 0; i < postings->changed_count; i++) {
         postings->chunks[postings->changed[i]].is_changed = false;
     }
     postings->changed_count = 0;
+    postings->sealed_cut_count = postings->cut_count;
+    postings_stored(postings);
 }
 
 static void let_go(struct postings *postings, uint32_t place)
@@ -102,7 +157,7 @@ void postings_trim(struct postings *postings, uint64_t bytes)
     for (; left > 0 && postings_bytes(postings) > bytes; left--) {
         postings->hand = postings->hand + 1 < postings->chunk_count ? postings->hand + 1 : 0;
         struct chunk *chunk = &postings->chunks[postings->hand];
-        if (!chunk->is_there || chunk->is_changed) {
+        if (!chunk->is_there || chunk->is_changed || chunk->is_sealed) {
             continue;
         }
         if (chunk->is_used) {

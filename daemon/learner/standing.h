@@ -142,6 +142,8 @@ size_t standing_part_get(const struct standing *standing, size_t part,
                          double ret_values[STANDING_PART_VALUES]);
 
 /* Marks everything as stored. */
+void standing_seal(struct standing *standing);
+void standing_stored(struct standing *standing);
 void standing_clean(struct standing *standing);
 
 /* Puts back what was stored, into a new standing, in any order; nothing is marked as changed.

@@ -9,6 +9,7 @@
 #include <math.h>
 #include <string.h>
 
+#include "daemon/learner/part_marks.h"
 #include "daemon/learner/standing_private.h"
 
 enum {
@@ -26,11 +27,22 @@ size_t standing_part_count(void)
 
 bool standing_part_changed(const struct standing *standing, size_t part)
 {
-    return part < STANDING_PARTS && standing->changed[part];
+    return part < STANDING_PARTS && (standing->changed[part] || standing->sealed[part]);
+}
+
+void standing_seal(struct standing *standing)
+{
+    part_marks_seal(standing->changed, standing->sealed, STANDING_PARTS);
+}
+
+void standing_stored(struct standing *standing)
+{
+    memset(standing->sealed, 0, sizeof standing->sealed);
 }
 
 void standing_clean(struct standing *standing)
 {
+    standing_stored(standing);
     memset(standing->changed, 0, sizeof standing->changed);
 }
 

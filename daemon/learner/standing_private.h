@@ -29,6 +29,7 @@ struct standing {
     struct reliability reliability;
     struct tally cells[STANDING_CELLS][STANDING_BANDS];
     uint8_t changed[STANDING_PARTS];
+    uint8_t sealed[STANDING_PARTS];
 };
 
 static inline size_t standing_cell_part(size_t cell, size_t band)

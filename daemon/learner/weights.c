@@ -32,6 +32,7 @@ void weights_free(struct weights *weights)
     free(weights->raised);
     free(weights->lifts);
     marks_deinit(&weights->changed_tags);
+    marks_deinit(&weights->sealed_tags);
     free(weights);
 }
 
@@ -68,7 +69,8 @@ uint64_t weights_bytes(const struct weights *weights)
     return sizeof *weights + postings_bytes(weights->postings) +
            weights->tag_capacity * sizeof *weights->tags +
            weights->raised_capacity * sizeof *weights->raised +
-           weights->lift_capacity * sizeof *weights->lifts + marks_bytes(&weights->changed_tags);
+           weights->lift_capacity * sizeof *weights->lifts + marks_bytes(&weights->changed_tags) +
+           marks_bytes(&weights->sealed_tags);
 }
 
 void weights_refresh_raised(struct weights *weights, uint32_t tag)
@@ -155,6 +157,16 @@ int weights_changed_chunks(const struct weights *weights,
     return result;
 }
 
+uint64_t weights_posting_bytes(const struct weights *weights)
+{
+    return postings_stride(weights->postings) * sizeof(uint32_t);
+}
+
+uint64_t weights_chunk_bytes(const struct weights *weights)
+{
+    return postings_chunk_bytes(weights->postings);
+}
+
 size_t weights_changed_count(const struct weights *weights)
 {
     return postings_changed_count(weights->postings);
@@ -171,9 +183,24 @@ uint32_t weights_tag_count(const struct weights *weights, uint32_t tag)
     return tag < weights->tag_count ? weights->tags[tag].count : 0;
 }
 
-const struct marks *weights_changed_tags(const struct weights *weights)
+int weights_changed_tags(const struct weights *weights, int (*each)(void *user, uint32_t tag),
+                         void *user)
 {
-    return &weights->changed_tags;
+    const struct marks *sealed = &weights->sealed_tags;
+    const struct marks *changed = &weights->changed_tags;
+    int result = 0;
+    for (size_t i = 0; i < sealed->count && result == 0; i++) {
+        result = each(user, sealed->list[i]);
+    }
+    for (size_t i = 0; i < changed->count && result == 0; i++) {
+        result = marks_has(sealed, changed->list[i]) ? 0 : each(user, changed->list[i]);
+    }
+    return result;
+}
+
+size_t weights_changed_tag_count(const struct weights *weights)
+{
+    return weights->sealed_tags.count + weights->changed_tags.count;
 }
 
 int weights_mark_tag(struct weights *weights, uint32_t tag)
@@ -181,9 +208,26 @@ int weights_mark_tag(struct weights *weights, uint32_t tag)
     return marks_add(&weights->changed_tags, tag);
 }
 
+int weights_seal(struct weights *weights)
+{
+    if (marks_join(&weights->sealed_tags, &weights->changed_tags) < 0 ||
+        postings_seal(weights->postings) < 0) {
+        return -ENOMEM;
+    }
+    marks_clear(&weights->changed_tags);
+    return 0;
+}
+
+void weights_stored(struct weights *weights)
+{
+    postings_stored(weights->postings);
+    marks_clear(&weights->sealed_tags);
+}
+
 void weights_clean(struct weights *weights)
 {
     postings_clean(weights->postings);
+    marks_clear(&weights->sealed_tags);
     marks_clear(&weights->changed_tags);
 }
 

@@ -186,7 +186,7 @@ int weights_forget_word(struct weights *weights, const struct base *base, uint32
 void weights_trim(struct weights *weights, uint64_t bytes);
 
 /* --- for those who store the weights ------------------------------------------------------------
- * What has changed since the last weights_clean is marked, chunk by chunk and tag by tag. */
+ * What has changed is marked, chunk by chunk and tag by tag, until it is stored. */
 
 /* A chunk of a word's postings in the form in which the base gives it back. */
 struct weights_chunk {
@@ -206,6 +206,10 @@ int weights_changed_chunks(const struct weights *weights,
                            int (*each)(void *user, const struct weights_chunk *chunk), void *user)
     __attribute__((warn_unused_result));
 
+/* Bytes of a posting, and of a chunk in memory on average. */
+uint64_t weights_posting_bytes(const struct weights *weights);
+uint64_t weights_chunk_bytes(const struct weights *weights);
+
 /* How many of them there are, or a few more. */
 size_t weights_changed_count(const struct weights *weights);
 
@@ -221,12 +225,19 @@ uint32_t weights_tag_count(const struct weights *weights, uint32_t tag);
 struct weights_bias weights_bias(const struct weights *weights, enum weights_lane lane,
                                  uint32_t tag);
 
-/* The tags that have changed: their bias, or what the owner has marked; weights_clean empties it.
- */
-const struct marks *weights_changed_tags(const struct weights *weights);
+/* Calls `each` for every tag that has changed and is not stored: its bias, or what the owner has
+ * marked; anything but 0 ends it and is returned. */
+int weights_changed_tags(const struct weights *weights, int (*each)(void *user, uint32_t tag),
+                         void *user) __attribute__((warn_unused_result));
+size_t weights_changed_tag_count(const struct weights *weights); /* or a few more */
 
 /* Marks a tag as changed for a reason of the owner's. Returns 0 or -ENOMEM. */
 int weights_mark_tag(struct weights *weights, uint32_t tag) __attribute__((warn_unused_result));
+
+/* What has changed is on its way to the store, and what was sealed has arrived (see postings.h).
+ * Returns 0, or -ENOMEM with everything still to be stored. */
+int weights_seal(struct weights *weights) __attribute__((warn_unused_result));
+void weights_stored(struct weights *weights);
 
 /* Marks everything as stored. */
 void weights_clean(struct weights *weights);

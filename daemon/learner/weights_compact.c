@@ -27,11 +27,11 @@ enum {
 static size_t count_main(const struct weights *weights, uint32_t word)
 {
     size_t stride = postings_stride(weights->postings);
-    uint32_t chunks = postings_chunks(weights->postings, word);
+    const uint32_t *places = NULL;
+    uint32_t chunks = postings_chunks(weights->postings, word, &places);
     size_t count = 0;
     for (uint32_t number = 0; number < chunks; number++) {
-        const struct chunk *chunk =
-            postings_at(weights->postings, postings_place(weights->postings, word, number));
+        const struct chunk *chunk = postings_at(weights->postings, places[number] - 1);
         for (size_t j = 0; j < chunk->count; j++) {
             count += chunk->numbers[j * stride + 1] != 0;
         }
@@ -134,11 +134,11 @@ static void choose(struct compaction *compaction, const struct weights_feature *
 {
     struct weights *weights = compaction->weights;
     size_t stride = compaction->stride;
-    uint32_t chunks = postings_chunks(weights->postings, feature->word);
+    const uint32_t *places = NULL;
+    uint32_t chunks = postings_chunks(weights->postings, feature->word, &places);
     uint32_t at = 0;
     for (uint32_t number = 0; number < chunks; number++) {
-        const struct chunk *chunk = postings_at(
-            weights->postings, postings_place(weights->postings, feature->word, number));
+        const struct chunk *chunk = postings_at(weights->postings, places[number] - 1);
         for (size_t j = 0; j < chunk->count; j++, at++) {
             uint32_t *posting = compaction->copy + at * stride;
             memcpy(posting, chunk->numbers + j * stride, stride * sizeof *posting);

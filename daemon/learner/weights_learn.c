@@ -299,10 +299,10 @@ static int collect_hits(const struct learning *learning, const struct weights_fe
 {
     const struct postings *postings = learning->weights->postings;
     learning->scratch->created = 0;
-    uint32_t chunks = postings_chunks(postings, feature->word);
+    const uint32_t *places = NULL;
+    uint32_t chunks = postings_chunks(postings, feature->word, &places);
     for (uint32_t number = 0; number < chunks; number++) {
-        uint32_t place = postings_place(postings, feature->word, number);
-        if (collect_chunk(learning, feature, place) < 0) {
+        if (collect_chunk(learning, feature, places[number] - 1) < 0) {
             return -ENOMEM;
         }
     }

@@ -39,6 +39,7 @@ struct weights {
     size_t raised_count;
     size_t raised_capacity;
     struct marks changed_tags;
+    struct marks sealed_tags;
 };
 
 /* After a bias has changed: the tag's lifts, and whether it is on the list of raised ones. */

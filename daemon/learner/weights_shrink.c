@@ -72,9 +72,11 @@ int weights_shrink(struct weights *weights, const struct weights_shrinkage *shri
     for (size_t i = 0; i < shrinkage->count; i++) {
         const struct weights_feature *feature = &shrinkage->x[i];
         double strength = part_of(shrinkage, feature) * shrinkage->step / shrinkage->cost;
-        uint32_t chunks = strength > 0.0 ? postings_chunks(weights->postings, feature->word) : 0;
+        const uint32_t *places = NULL;
+        uint32_t chunks =
+            strength > 0.0 ? postings_chunks(weights->postings, feature->word, &places) : 0;
         for (uint32_t number = 0; number < chunks; number++) {
-            uint32_t place = postings_place(weights->postings, feature->word, number);
+            uint32_t place = places[number] - 1;
             if (postings_touch(weights->postings, place) < 0) {
                 return -ENOMEM;
             }

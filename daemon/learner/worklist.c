@@ -13,7 +13,8 @@
 #include "daemon/learner/worklist_totals.h"
 
 struct worklist {
-    struct worklist_overlay overlay;
+    struct worklist_overlay overlay; /* what has changed since it was sealed last */
+    struct worklist_overlay sealed;  /* beneath it: what is on its way to the base */
     struct worklist_totals totals;
 };
 
@@ -33,6 +34,7 @@ void worklist_free(struct worklist *worklist)
         return;
     }
     overlay_clear(&worklist->overlay);
+    overlay_clear(&worklist->sealed);
     free(worklist);
 }
 
@@ -43,7 +45,7 @@ size_t worklist_size(const struct worklist *worklist)
 
 uint64_t worklist_bytes(const struct worklist *worklist)
 {
-    return sizeof *worklist + overlay_bytes(&worklist->overlay);
+    return sizeof *worklist + overlay_bytes(&worklist->overlay) + overlay_bytes(&worklist->sealed);
 }
 
 /* --- reading ------------------------------------------------------------------------------------
@@ -66,16 +68,48 @@ static int stored_after(const struct base *base, uint64_t number, struct worklis
     return result == 0 && !(ret_entry->number > number && is_sound(ret_entry)) ? -EIO : result;
 }
 
+/* A change that hides what the base has. */
+struct hiding {
+    bool is_there;
+    uint64_t number;
+    const struct worklist_entry *entry; /* NULL: gone */
+};
+
+static struct hiding hiding_of(const struct worklist_overlay *overlay,
+                               const struct worklist_change *change)
+{
+    return change ? (struct hiding){.is_there = true,
+                                    .number = change->number,
+                                    .entry = overlay_entry(overlay, change)}
+                  : (struct hiding){0};
+}
+
+static struct hiding hiding_at(const struct worklist *worklist, uint64_t number)
+{
+    const struct worklist_change *change = overlay_find(&worklist->overlay, number);
+    return change ? hiding_of(&worklist->overlay, change)
+                  : hiding_of(&worklist->sealed, overlay_find(&worklist->sealed, number));
+}
+
+/* The one with the next greater number; of two with the same the later. */
+static struct hiding hiding_after(const struct worklist *worklist, uint64_t number)
+{
+    const struct worklist_change *change = overlay_after(&worklist->overlay, number);
+    const struct worklist_change *sealed = overlay_after(&worklist->sealed, number);
+    return change && (!sealed || change->number <= sealed->number)
+               ? hiding_of(&worklist->overlay, change)
+               : hiding_of(&worklist->sealed, sealed);
+}
+
 int worklist_find(const struct worklist *worklist, const struct base *base, uint64_t number,
                   struct worklist_entry *ret_entry)
 {
-    const struct worklist_change *change = overlay_find(&worklist->overlay, number);
-    if (change) {
-        const struct worklist_entry *entry = overlay_entry(&worklist->overlay, change);
-        if (!entry) {
+    struct hiding hiding = hiding_at(worklist, number);
+    if (hiding.is_there) {
+        if (!hiding.entry) {
             return -ENOENT;
         }
-        *ret_entry = *entry;
+        *ret_entry = *hiding.entry;
         return 0;
     }
     struct worklist_entry stored;
@@ -91,20 +125,19 @@ int worklist_find(const struct worklist *worklist, const struct base *base, uint
 int worklist_after(const struct worklist *worklist, const struct base *base, uint64_t number,
                    struct worklist_entry *ret_entry)
 {
-    const struct worklist_overlay *overlay = &worklist->overlay;
     struct worklist_entry stored;
     int result = stored_after(base, number, &stored);
-    const struct worklist_change *change = overlay_after(overlay, number);
-    while (change && (result == -ENOENT || (result == 0 && change->number <= stored.number))) {
-        const struct worklist_entry *entry = overlay_entry(overlay, change);
-        if (entry) {
-            *ret_entry = *entry;
+    struct hiding hiding = hiding_after(worklist, number);
+    while (hiding.is_there &&
+           (result == -ENOENT || (result == 0 && hiding.number <= stored.number))) {
+        if (hiding.entry) {
+            *ret_entry = *hiding.entry;
             return 0;
         }
-        if (result == 0 && change->number == stored.number) {
-            result = stored_after(base, change->number, &stored);
+        if (result == 0 && hiding.number == stored.number) {
+            result = stored_after(base, hiding.number, &stored);
         }
-        change = overlay_after(overlay, change->number);
+        hiding = hiding_after(worklist, hiding.number);
     }
     if (result == 0) {
         *ret_entry = stored;
@@ -208,28 +241,42 @@ int worklist_changes(const struct worklist *worklist,
                      int (*put)(void *user, const struct worklist_entry *entry),
                      int (*gone)(void *user, uint64_t number), void *user)
 {
-    const struct worklist_overlay *overlay = &worklist->overlay;
-    const struct worklist_change *change = NULL;
+    struct hiding hiding;
     int result = 0;
-    for (change = overlay_after(overlay, 0); change && result == 0;
-         change = overlay_after(overlay, change->number)) {
-        if (!overlay_entry(overlay, change)) {
-            result = gone(user, change->number);
-        }
+    for (hiding = hiding_after(worklist, 0); hiding.is_there && result == 0;
+         hiding = hiding_after(worklist, hiding.number)) {
+        result = hiding.entry ? 0 : gone(user, hiding.number);
     }
-    for (change = overlay_after(overlay, 0); change && result == 0;
-         change = overlay_after(overlay, change->number)) {
-        const struct worklist_entry *entry = overlay_entry(overlay, change);
-        if (entry) {
-            result = put(user, entry);
-        }
+    for (hiding = hiding_after(worklist, 0); hiding.is_there && result == 0;
+         hiding = hiding_after(worklist, hiding.number)) {
+        result = hiding.entry ? put(user, hiding.entry) : 0;
     }
     return result;
+}
+
+int worklist_seal(struct worklist *worklist)
+{
+    if (overlay_is_empty(&worklist->sealed)) {
+        overlay_clear(&worklist->sealed);
+        worklist->sealed = worklist->overlay;
+        worklist->overlay = (struct worklist_overlay){0};
+    } else if (overlay_join(&worklist->sealed, &worklist->overlay) < 0) {
+        return -ENOMEM;
+    }
+    totals_seal(&worklist->totals);
+    return 0;
+}
+
+void worklist_stored(struct worklist *worklist)
+{
+    totals_stored(&worklist->totals);
+    overlay_clear(&worklist->sealed);
 }
 
 void worklist_clean(struct worklist *worklist)
 {
     overlay_clear(&worklist->overlay);
+    overlay_clear(&worklist->sealed);
     totals_clean(&worklist->totals);
 }
 
@@ -240,7 +287,7 @@ size_t worklist_part_count(void)
 
 bool worklist_part_changed(const struct worklist *worklist, size_t part)
 {
-    return part < TOTALS_PARTS && worklist->totals.changed[part];
+    return part < TOTALS_PARTS && (worklist->totals.changed[part] || worklist->totals.sealed[part]);
 }
 
 size_t worklist_part_get(const struct worklist *worklist, size_t part,

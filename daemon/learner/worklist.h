@@ -9,9 +9,9 @@
  * steps of others. What was learned stays as it was, whenever and however often there is time to
  * score again: what people say of the item later is counted by it.
  *
- * Only what has changed since the last worklist_clean lies in memory; the rest is read from the
- * base (base.h) that each call is given, which is as the last worklist_clean left it, or has the
- * changes in it already. Counts are kept, not taken. Numbers of items are from 1 on.
+ * Only what has changed and is not stored lies in memory; the rest is read from the base (base.h)
+ * that each call is given, which has what worklist_stored was last told of, or has the changes in
+ * it already. Counts are kept, not taken. Numbers of items are from 1 on.
  *
  * Pure: no clock, no I/O of its own; what it says is a function of the calls, however often what
  * has changed was stored in between. Not locked: many threads may read, each through a base of its
@@ -105,7 +105,7 @@ int worklist_remove(struct worklist *worklist, const struct base *base, uint64_t
 int worklist_next_stale(struct worklist *worklist, const struct base *base, uint64_t scored,
                         struct worklist_entry *ret_entry) __attribute__((warn_unused_result));
 
-/* --- for those who store it: what has changed since the last worklist_clean ---------------------
+/* --- for those who store it: what has changed and is not stored ---------------------------------
  */
 
 /* Calls `gone` for the number of each stored entry that was taken out, then `put` for each that is
@@ -122,8 +122,17 @@ bool worklist_part_changed(const struct worklist *worklist, size_t part);
 size_t worklist_part_get(const struct worklist *worklist, size_t part,
                          double ret_values[WORKLIST_PART_VALUES]);
 
-/* Everything has been stored, in one transaction, and nothing has changed since worklist_changes:
- * it is read from the base from now on, and its memory is given back. */
+/*
+ * What worklist_changes has given is on its way to the base, in one transaction; what was sealed
+ * before and did not arrive goes with it. The parts count as unchanged from here on. Returns 0, or
+ * -ENOMEM with everything still to be stored.
+ */
+int worklist_seal(struct worklist *worklist) __attribute__((warn_unused_result));
+
+/* It has arrived: it is read from the base from now on, and its memory is given back. */
+void worklist_stored(struct worklist *worklist);
+
+/* Everything has been stored, sealed or not. */
 void worklist_clean(struct worklist *worklist);
 
 /*

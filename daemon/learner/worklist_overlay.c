@@ -38,6 +38,11 @@ void overlay_clear(struct worklist_overlay *overlay)
     *overlay = (struct worklist_overlay){0};
 }
 
+bool overlay_is_empty(const struct worklist_overlay *overlay)
+{
+    return overlay->block_count == 0;
+}
+
 uint64_t overlay_bytes(const struct worklist_overlay *overlay)
 {
     return overlay->block_capacity * sizeof(struct overlay_block *) +
@@ -245,5 +250,20 @@ int overlay_remove(struct worklist_overlay *overlay, uint64_t number)
     if (!change->is_stored) {
         drop_change(overlay, number);
     }
+    return 0;
+}
+
+int overlay_join(struct worklist_overlay *beneath, struct worklist_overlay *above)
+{
+    const struct worklist_change *change = NULL;
+    for (change = overlay_after(above, 0); change; change = overlay_after(above, change->number)) {
+        const struct worklist_entry *entry = overlay_entry(above, change);
+        int result = entry ? overlay_put(beneath, entry, change->is_stored)
+                           : overlay_remove(beneath, change->number);
+        if (result < 0) {
+            return result;
+        }
+    }
+    overlay_clear(above);
     return 0;
 }

@@ -34,6 +34,8 @@ struct worklist_overlay {
 /* Forgets everything and gives the memory back. */
 void overlay_clear(struct worklist_overlay *overlay);
 
+bool overlay_is_empty(const struct worklist_overlay *overlay);
+
 uint64_t overlay_bytes(const struct worklist_overlay *overlay);
 
 /* The change with that number, and the first one with a greater number; NULL: none. Valid until the
@@ -56,6 +58,13 @@ int overlay_put(struct worklist_overlay *overlay, const struct worklist_entry *e
  * leaves nothing behind. Returns 0, or -ENOMEM with nothing changed.
  */
 int overlay_remove(struct worklist_overlay *overlay, uint64_t number)
+    __attribute__((warn_unused_result));
+
+/*
+ * Lays the changes of an overlay over those of the one beneath it, which then has them all; the one
+ * above is empty. Returns 0, or -ENOMEM with a part of them in both, which is as good.
+ */
+int overlay_join(struct worklist_overlay *beneath, struct worklist_overlay *above)
     __attribute__((warn_unused_result));
 
 #endif

@@ -5,6 +5,8 @@
 #include <errno.h>
 #include <string.h>
 
+#include "daemon/learner/part_marks.h"
+
 enum {
     PART_BUCKETS = WORKLIST_PART_VALUES,
     META_VALUES = 4,
@@ -26,8 +28,8 @@ static uint64_t bucket_of(const struct worklist_totals *totals, uint64_t scored)
 
 static void note_change(struct worklist_totals *totals, uint64_t bucket)
 {
-    totals->changed[0] = true;
-    totals->changed[1 + bucket / PART_BUCKETS] = true;
+    totals->changed[0] = 1;
+    totals->changed[1 + bucket / PART_BUCKETS] = 1;
 }
 
 static void double_width(struct worklist_totals *totals)
@@ -37,7 +39,7 @@ static void double_width(struct worklist_totals *totals)
     }
     memset(&totals->buckets[TOTALS_BUCKETS / 2], 0, TOTALS_BUCKETS / 2 * sizeof *totals->buckets);
     totals->shift++;
-    memset(totals->changed, true, sizeof totals->changed);
+    memset(totals->changed, 1, sizeof totals->changed);
 }
 
 void totals_add(struct worklist_totals *totals, uint64_t scored)
@@ -83,7 +85,7 @@ uint64_t totals_below(const struct worklist_totals *totals, uint64_t scored)
 void totals_set_turn(struct worklist_totals *totals, uint64_t number)
 {
     totals->turn = number;
-    totals->changed[0] = true;
+    totals->changed[0] = 1;
 }
 
 /* --- storing ------------------------------------------------------------------------------------
@@ -168,7 +170,18 @@ int totals_restored(struct worklist_totals *totals)
     return 0;
 }
 
+void totals_seal(struct worklist_totals *totals)
+{
+    part_marks_seal(totals->changed, totals->sealed, TOTALS_PARTS);
+}
+
+void totals_stored(struct worklist_totals *totals)
+{
+    memset(totals->sealed, 0, sizeof totals->sealed);
+}
+
 void totals_clean(struct worklist_totals *totals)
 {
+    totals_stored(totals);
     memset(totals->changed, 0, sizeof totals->changed);
 }

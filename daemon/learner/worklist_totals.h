@@ -28,7 +28,8 @@ struct worklist_totals {
     uint64_t turn;  /* the number of the stale entry that was handed out last */
     unsigned shift; /* a bucket is as wide as 2 to this power */
     uint64_t buckets[TOTALS_BUCKETS];
-    bool changed[TOTALS_PARTS];
+    uint8_t changed[TOTALS_PARTS];
+    uint8_t sealed[TOTALS_PARTS];
 };
 
 void totals_add(struct worklist_totals *totals, uint64_t scored);
@@ -53,6 +54,8 @@ size_t totals_part_get(const struct worklist_totals *totals, size_t part,
 int totals_part_restore(struct worklist_totals *totals, size_t part, const double *values,
                         size_t count) __attribute__((warn_unused_result));
 int totals_restored(struct worklist_totals *totals) __attribute__((warn_unused_result));
+void totals_seal(struct worklist_totals *totals);
+void totals_stored(struct worklist_totals *totals);
 void totals_clean(struct worklist_totals *totals);
 
 #endif

@@ -1,13 +1,14 @@
 /*
- * A word in memory is on one of three lists. It comes as *clean* from the base, or as *changed*
+ * A word in memory is on one of five lists. It comes as *clean* from the base, or as *changed*
  * when it is new; a clean word whose count is set becomes changed; a word that is removed becomes
- * *forgotten*. When all is stored, the changed become clean and the forgotten are let go. Only
- * clean words may be trimmed, since the base has them as they are.
+ * *forgotten*. Sealing makes the changed *sealed* and the forgotten *leaving*; a sealed word may be
+ * changed or forgotten once more. What is stored then becomes clean, or is let go. Only clean words
+ * may be trimmed, since the base has them as they are.
  *
  * The table by term has the latest word of each term, be it forgotten: that is how the dictionary
  * knows not to look for it in the base. When the term comes again its new word takes that place,
- * and the forgotten one is on its list only. The table by number has the words that are not
- * forgotten.
+ * and the forgotten one is on its list only (a leaving one likewise). The table by number has the
+ * words that are not forgotten.
  *
  * All that can fail in dictionary_intern comes before the first change.
  */
@@ -162,6 +163,11 @@ static int read_base(const struct dictionary *dictionary, const struct base *bas
     return 0;
 }
 
+static bool is_forgotten(const struct dictionary_entry *entry)
+{
+    return entry->state == DICTIONARY_FORGOTTEN || entry->state == DICTIONARY_LEAVING;
+}
+
 int dictionary_find(const struct dictionary *dictionary, const struct base *base, const char *term,
                     size_t bytes, struct base_word *ret_found)
 {
@@ -171,7 +177,7 @@ int dictionary_find(const struct dictionary *dictionary, const struct base *base
     if (!entry) {
         return read_base(dictionary, base, term, bytes, ret_found);
     }
-    if (entry->state == DICTIONARY_FORGOTTEN) {
+    if (is_forgotten(entry)) {
         return -ENOENT;
     }
     *ret_found = (struct base_word){.number = entry->number, .count = entry->count};
@@ -276,7 +282,7 @@ int dictionary_intern(struct dictionary *dictionary, const struct base *base, co
     uint32_t hash = dictionary_table_hash(&dictionary->key, term, bytes);
     struct dictionary_entry *entry =
         dictionary_table_find_term(&dictionary->by_term, hash, term, bytes);
-    if (entry && entry->state != DICTIONARY_FORGOTTEN) {
+    if (entry && !is_forgotten(entry)) {
         entry->is_recent = true;
         *ret_word = entry->number;
         return 0;
@@ -325,18 +331,42 @@ int dictionary_changes(const struct dictionary *dictionary,
                        int (*put)(void *user, const struct dictionary_word *word),
                        int (*gone)(void *user, const struct dictionary_word *word), void *user)
 {
-    int result = tell(&dictionary->lists[DICTIONARY_FORGOTTEN], gone, user);
-    return result != 0 ? result : tell(&dictionary->lists[DICTIONARY_CHANGED], put, user);
+    int result = tell(&dictionary->lists[DICTIONARY_LEAVING], gone, user);
+    if (result == 0) {
+        result = tell(&dictionary->lists[DICTIONARY_FORGOTTEN], gone, user);
+    }
+    if (result == 0) {
+        result = tell(&dictionary->lists[DICTIONARY_SEALED], put, user);
+    }
+    return result == 0 ? tell(&dictionary->lists[DICTIONARY_CHANGED], put, user) : result;
+}
+
+static void move_all(struct dictionary *dictionary, enum dictionary_state from,
+                     enum dictionary_state to)
+{
+    while (dictionary->lists[from].first) {
+        move(dictionary, dictionary->lists[from].first, to);
+    }
+}
+
+void dictionary_seal(struct dictionary *dictionary)
+{
+    move_all(dictionary, DICTIONARY_CHANGED, DICTIONARY_SEALED);
+    move_all(dictionary, DICTIONARY_FORGOTTEN, DICTIONARY_LEAVING);
+}
+
+void dictionary_stored(struct dictionary *dictionary)
+{
+    while (dictionary->lists[DICTIONARY_LEAVING].first) {
+        drop(dictionary, dictionary->lists[DICTIONARY_LEAVING].first);
+    }
+    move_all(dictionary, DICTIONARY_SEALED, DICTIONARY_CLEAN);
 }
 
 void dictionary_clean(struct dictionary *dictionary)
 {
-    while (dictionary->lists[DICTIONARY_FORGOTTEN].first) {
-        drop(dictionary, dictionary->lists[DICTIONARY_FORGOTTEN].first);
-    }
-    while (dictionary->lists[DICTIONARY_CHANGED].first) {
-        move(dictionary, dictionary->lists[DICTIONARY_CHANGED].first, DICTIONARY_CLEAN);
-    }
+    dictionary_seal(dictionary);
+    dictionary_stored(dictionary);
 }
 
 /* The clean words are a queue: the one in front goes, unless it was interned again since it came to
@@ -358,8 +388,11 @@ void dictionary_trim(struct dictionary *dictionary, uint64_t bytes)
 
 size_t dictionary_changed_count(const struct dictionary *dictionary)
 {
-    return dictionary->lists[DICTIONARY_CHANGED].count +
-           dictionary->lists[DICTIONARY_FORGOTTEN].count;
+    size_t all = 0;
+    for (size_t state = 0; state < DICTIONARY_STATES; state++) {
+        all += state == DICTIONARY_CLEAN ? 0 : dictionary->lists[state].count;
+    }
+    return all;
 }
 
 size_t dictionary_size(const struct dictionary *dictionary)

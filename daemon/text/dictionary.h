@@ -80,7 +80,7 @@ const char *dictionary_term(const struct dictionary *dictionary, uint32_t word, 
 void dictionary_remove(struct dictionary *dictionary, uint32_t word);
 
 /*
- * Tells what has changed since the dictionary was cleaned last: first `gone` for each forgotten
+ * Tells what has changed and is not stored, sealed words too: first `gone` for each forgotten
  * word (it may never have been stored), in the order in which they were forgotten, then `put` for
  * each changed one, in the order in which they changed first. So a term that was forgotten and came
  * again is gone under its old number before it is put under the new one. Anything but 0 from either
@@ -94,10 +94,18 @@ int dictionary_changes(const struct dictionary *dictionary,
 /* How many words that tells of. */
 size_t dictionary_changed_count(const struct dictionary *dictionary);
 
-/* All changes have been stored, and every base that is used from now on has them. */
+/*
+ * What has changed is on its way to the base, as it is now; what was sealed before and did not
+ * arrive goes with it. dictionary_stored: it has arrived, and every base that is used from now on
+ * has it.
+ */
+void dictionary_seal(struct dictionary *dictionary);
+void dictionary_stored(struct dictionary *dictionary);
+
+/* Both at once, for all changes. */
 void dictionary_clean(struct dictionary *dictionary);
 
-/* Lets words go that did not change since the dictionary was cleaned, those that were not interned
+/* Lets words go that are as they are stored, those that were not interned
  * lately first, until it holds at most `bytes` or no such word is left; or until it has looked at
  * DICTIONARY_TRIM words: the next call goes on, so that none takes long. */
 void dictionary_trim(struct dictionary *dictionary, uint64_t bytes);

@@ -20,6 +20,8 @@ enum dictionary_state {
     DICTIONARY_CLEAN, /* as the base has it */
     DICTIONARY_CHANGED,
     DICTIONARY_FORGOTTEN,
+    DICTIONARY_SEALED,  /* was changed, and is on its way to the base */
+    DICTIONARY_LEAVING, /* was forgotten, and is on its way out of the base */
     DICTIONARY_STATES
 };
 

@@ -33,7 +33,16 @@ struct previous {
     size_t term_bytes;
     char term[WORDS_TERM_BYTES];
     const char *surface;
-    const char *surface_end;
+    size_t end;
+};
+
+/* Where a word stands: as written, and in the text as a whole in NFKC, where canonically equal
+ * texts have it at the same place. */
+struct place {
+    const char *surface;
+    size_t surface_bytes;
+    size_t start;
+    size_t end;
 };
 
 struct scan {
@@ -42,6 +51,7 @@ struct scan {
     words_each each;
     void *user;
     struct previous previous;
+    size_t before; /* bytes of NFKC before the run at hand */
 };
 
 /* A run that is not ASCII, and where it is in its text. */
@@ -81,7 +91,7 @@ static int hand_over_pair(struct scan *scan, const char *term, size_t term_bytes
 
 /* Hands over a folded word of 1 to WORDS_TERM_BYTES bytes; `stemmer` NULL leaves it as it is. */
 static int hand_over(struct scan *scan, struct sb_stemmer *stemmer, const char *term, size_t bytes,
-                     const char *surface, size_t surface_bytes)
+                     const struct place *place)
 {
     if (stemmer) {
         const char *stem = NULL;
@@ -94,19 +104,20 @@ static int hand_over(struct scan *scan, struct sb_stemmer *stemmer, const char *
             bytes = stem_bytes;
         }
     }
-    struct word word = {term, (uint32_t)bytes, surface, (uint32_t)surface_bytes};
+    struct word word = {term, (uint32_t)bytes, place->surface, (uint32_t)place->surface_bytes};
     int result = scan->each(scan->user, &word);
     if (result != 0 || !scan->words->pairs) {
         return result;
     }
     struct previous *previous = &scan->previous;
-    if (previous->term_bytes > 0 && surface - previous->surface_end <= WORDS_GAP_BYTES) {
-        result = hand_over_pair(scan, term, bytes, surface + surface_bytes);
+    /* Characters that are counted in pairs overlap. */
+    if (previous->term_bytes > 0 && place->start <= previous->end + WORDS_GAP_BYTES) {
+        result = hand_over_pair(scan, term, bytes, place->surface + place->surface_bytes);
     }
     memcpy(previous->term, term, bytes);
     previous->term_bytes = bytes;
-    previous->surface = surface;
-    previous->surface_end = surface + surface_bytes;
+    previous->surface = place->surface;
+    previous->end = place->end;
     return result;
 }
 
@@ -140,13 +151,15 @@ static int scan_ascii_run(struct scan *scan, const char *run, size_t bytes)
         if (end - at > WORDS_TERM_BYTES) {
             scan->previous.term_bytes = 0;
         } else if (lower_ascii(run + at, end - at, lower)) {
-            int result = hand_over(scan, scan->stemmer, lower, end - at, run + at, end - at);
+            const struct place place = {run + at, end - at, scan->before + at, scan->before + end};
+            int result = hand_over(scan, scan->stemmer, lower, end - at, &place);
             if (result != 0) {
                 return result;
             }
         }
         at = end;
     }
+    scan->before += bytes;
     return 0;
 }
 
@@ -160,7 +173,7 @@ static int hand_over_piece(struct scan *scan, const struct run *run, struct sb_s
     struct words *words = scan->words;
     size_t from = run->is_changed ? fold_origin_start(&words->normal, start) : start;
     size_t to = run->is_changed ? fold_origin_end(&words->normal, end) : end;
-    if (end - start > WORDS_WRITTEN_BYTES || to - from > WORDS_WRITTEN_BYTES) {
+    if (end - start > WORDS_WRITTEN_BYTES) {
         scan->previous.term_bytes = 0;
         return 0;
     }
@@ -172,8 +185,9 @@ static int hand_over_piece(struct scan *scan, const struct run *run, struct sb_s
         scan->previous.term_bytes = 0;
         return 0;
     }
-    return hand_over(scan, stemmer, words->folded.text, words->folded.bytes, run->written + from,
-                     to - from);
+    const struct place place = {run->written + from, to - from, scan->before + start,
+                                scan->before + end};
+    return hand_over(scan, stemmer, words->folded.text, words->folded.bytes, &place);
 }
 
 static size_t next_point(const struct run *run, size_t at, int32_t *ret_point)
@@ -287,7 +301,9 @@ static int scan_run(struct scan *scan, const char *text, size_t bytes)
         result = scan_piece(scan, &run, &row, start, end);
         start = end;
     }
-    return result == 0 ? end_row(scan, &run, &row) : result;
+    result = result == 0 ? end_row(scan, &run, &row) : result;
+    scan->before += run.bytes;
+    return result;
 }
 
 /* --- the text ----------------------------------------------------------------------------------
@@ -323,6 +339,7 @@ int words_scan(struct words *words, const char *text, size_t bytes, const char *
             result = scan_ascii_run(&scan, text + start, at - start);
         }
         at++;
+        scan.before++; /* the white space */
     }
     return result;
 }

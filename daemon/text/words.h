@@ -30,8 +30,10 @@ struct words_settings {
 
 enum {
     WORDS_TERM_BYTES = 128,    /* a longer word is passed over; a pair is at most 2 * 128 + 1 */
-    WORDS_WRITTEN_BYTES = 512, /* a word that takes more as written is passed over too */
-    WORDS_GAP_BYTES = 64       /* words with more than this between them are not neighbours */
+    WORDS_WRITTEN_BYTES = 512, /* a word that takes more in NFKC, before it is folded, is passed
+                                * over too */
+    WORDS_GAP_BYTES = 64       /* words with more than this between them, in NFKC, are not
+                                * neighbours */
 };
 
 struct word {

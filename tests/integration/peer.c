@@ -7,12 +7,14 @@
 
 #include <cmocka.h>
 #include <errno.h>
+#include <grp.h>
 #include <poll.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 #include <sys/socket.h>
 #include <sys/un.h>
+#include <sys/wait.h>
 #include <unistd.h>
 
 #include "tests/integration/child.h"
@@ -23,18 +25,56 @@ enum {
 
 /* --- connecting ------------------------------------------------------------------------------ */
 
-void peer_open(struct peer *peer, const char *socket_path)
+static void init(struct peer *peer)
 {
-    struct sockaddr_un address = {.sun_family = AF_UNIX};
-    assert_true(strlen(socket_path) < sizeof address.sun_path);
-    memcpy(address.sun_path, socket_path, strlen(socket_path) + 1);
     *peer = (struct peer){.fd = socket(AF_UNIX, SOCK_STREAM | SOCK_CLOEXEC, 0)};
     assert_true(peer->fd >= 0);
-    assert_int_equal(connect(peer->fd, (const struct sockaddr *)&address, sizeof address), 0);
     peer->kept = json_array();
     peer->bytes = malloc(READ_BYTES);
     peer->capacity = READ_BYTES;
     assert_true(peer->kept && peer->bytes);
+}
+
+static int connect_to(const struct peer *peer, const char *socket_path)
+{
+    struct sockaddr_un address = {.sun_family = AF_UNIX};
+    if (strlen(socket_path) >= sizeof address.sun_path) {
+        return -1;
+    }
+    memcpy(address.sun_path, socket_path, strlen(socket_path) + 1);
+    return connect(peer->fd, (const struct sockaddr *)&address, sizeof address);
+}
+
+void peer_open(struct peer *peer, const char *socket_path)
+{
+    init(peer);
+    assert_int_equal(connect_to(peer, socket_path), 0);
+}
+
+/* Changes who this process is, for good; the groups first, while it still may. */
+static int become(struct person person)
+{
+    gid_t others[] = {person.other_gid};
+    if (setgroups(person.other_gid > 0, others) < 0 ||
+        setresgid(person.gid, person.gid, person.gid) < 0 ||
+        setresuid(person.uid, person.uid, person.uid) < 0) {
+        return -1;
+    }
+    return 0;
+}
+
+/* The kernel notes who connects, not who speaks (unix(7)): so a child connects for us. */
+void peer_open_as(struct peer *peer, const char *socket_path, struct person person)
+{
+    int status = -1;
+    init(peer);
+    pid_t child = fork();
+    assert_true(child >= 0);
+    if (child == 0) {
+        _exit(become(person) == 0 && connect_to(peer, socket_path) == 0 ? 0 : 1);
+    }
+    assert_int_equal(waitpid(child, &status, 0), child);
+    assert_int_equal(status, 0);
 }
 
 void peer_close(struct peer *peer)

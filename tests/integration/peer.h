@@ -26,6 +26,16 @@ struct peer {
 void peer_open(struct peer *peer, const char *socket_path);
 void peer_close(struct peer *peer);
 
+/* Somebody else: a user, his own group, and another one (0: none). */
+struct person {
+    unsigned uid;
+    unsigned gid;
+    unsigned other_gid;
+};
+
+/* Connects as somebody else, which only root can. */
+void peer_open_as(struct peer *peer, const char *socket_path, struct person person);
+
 /* The peer has nothing more to say, but listens on. */
 void peer_end_saying(struct peer *peer);
 

@@ -48,10 +48,10 @@ static inline void answer_nothing(struct call *call, const json_t *params)
     call_answer_take(call, NULL);
 }
 
-static const struct method METHODS[] = {{"read", METHOD_READ, keep},
-                                        {"change", METHOD_CHANGE, keep},
-                                        {"echo", METHOD_READ, answer_at_once},
-                                        {"nothing", METHOD_READ, answer_nothing}};
+static const struct method METHODS[] = {{"read", METHOD_READ, RIGHT_READ, keep},
+                                        {"change", METHOD_CHANGE, RIGHT_FILE, keep},
+                                        {"echo", METHOD_READ, RIGHT_READ, answer_at_once},
+                                        {"nothing", METHOD_READ, RIGHT_READ, answer_nothing}};
 
 /* --- the fixture --- */
 
@@ -68,7 +68,7 @@ static inline int calls_set_up(void **state)
     fixture->table = (struct method_table){
         .methods = METHODS, .count = sizeof METHODS / sizeof METHODS[0], .context = fixture};
     fixture->queue = (struct call_queue){
-        .table = &fixture->table, .user = fixture, .ended = on_ended, .uid = 1911};
+        .table = &fixture->table, .user = fixture, .ended = on_ended, .peer = {.uid = 1911}};
     *state = fixture;
     return 0;
 }

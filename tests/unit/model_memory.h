@@ -325,6 +325,23 @@ static inline void memory_store(struct memory *memory, struct model *model)
     model_clean(model);
 }
 
+/* What has changed is on its way: `arriving` becomes what the memory will be once it is there. */
+static inline void memory_seal(const struct memory *memory, struct memory *arriving,
+                               struct model *model)
+{
+    memcpy(arriving, memory, sizeof *arriving);
+    memory_take(arriving, model);
+    assert_int_equal(model_seal(model), 0);
+}
+
+/* It has arrived; the model is yet to be told. */
+static inline void memory_arrive(struct memory *memory, const struct memory *arriving)
+{
+    const struct base base = memory->base;
+    memcpy(memory, arriving, sizeof *memory);
+    memory->base = base;
+}
+
 /* --- back into a model --------------------------------------------------------------------------
  */
 

@@ -77,10 +77,10 @@ static inline void serve_big(struct call *call, const json_t *params)
     free(letters);
 }
 
-static const struct method SERVED[] = {{"echo", METHOD_READ, serve_echo},
-                                       {"hold", METHOD_READ, serve_hold},
-                                       {"change", METHOD_CHANGE, serve_hold},
-                                       {"big", METHOD_READ, serve_big}};
+static const struct method SERVED[] = {{"echo", METHOD_READ, RIGHT_READ, serve_echo},
+                                       {"hold", METHOD_READ, RIGHT_READ, serve_hold},
+                                       {"change", METHOD_CHANGE, RIGHT_FILE, serve_hold},
+                                       {"big", METHOD_READ, RIGHT_READ, serve_big}};
 
 /* --- the server --- */
 

@@ -325,6 +325,38 @@ static void the_trainer_waits_for_work(void **state)
     assert_int_equal(fixture->returned, 4);
 }
 
+/* --- for the watchdog --- */
+
+static enum heart look_twice(struct fixture *fixture)
+{
+    struct heartbeat_watch watch = {0};
+    (void)heartbeat_look(backlog_heartbeat(fixture->backlog), &watch);
+    return heartbeat_look(backlog_heartbeat(fixture->backlog), &watch);
+}
+
+static void whoever_waits_here_does_not_stand_still_until_there_is_work(void **state)
+{
+    struct fixture *fixture = *state;
+    waiter_start(&fixture->waiter, wait_for_work, fixture);
+    assert_waits(&fixture->waiter);
+    assert_int_equal(look_twice(fixture), HEART_COUNT);
+    backlog_nudge(fixture->backlog);
+    waiter_join(&fixture->waiter);
+    assert_int_equal(look_twice(fixture), HEART_TRAINER);
+}
+
+static void a_writer_that_waits_for_the_trainer_does_not_stand_still(void **state)
+{
+    struct fixture *fixture = *state;
+    backlog_committed(fixture->backlog, 2, ROOM, 0);
+    assert_int_equal(look_twice(fixture), HEART_WRITER);
+    waiter_start(&fixture->waiter, wait_for_room, fixture);
+    assert_waits(&fixture->waiter);
+    assert_int_equal(look_twice(fixture), HEART_COUNT);
+    backlog_stop(fixture->backlog);
+    waiter_join(&fixture->waiter);
+}
+
 /* --- the end of learning --- */
 
 static void a_failed_trainer_opens_the_gate(void **state)
@@ -453,6 +485,8 @@ int main(void)
         TEST(work_that_is_there_is_not_waited_for),
         TEST(time_that_is_over_ends_the_wait_for_work),
         TEST(the_trainer_waits_for_work),
+        TEST(whoever_waits_here_does_not_stand_still_until_there_is_work),
+        TEST(a_writer_that_waits_for_the_trainer_does_not_stand_still),
         TEST(a_failed_trainer_opens_the_gate),
         TEST(a_failed_trainer_is_not_asked_to_keep_the_promise),
         TEST(while_learning_waits_the_gate_is_open_and_no_longer),

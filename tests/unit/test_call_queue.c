@@ -238,6 +238,53 @@ static void a_call_knows_its_peer(void **state)
     end(fixture, 'a');
 }
 
+/* --- rights --- */
+
+/* Nobody may change anything. */
+static int allow_reads(void *context, const struct method *method, const struct rights_peer *peer,
+                       struct fault *fault)
+{
+    (void)context;
+    return method->right == RIGHT_READ ? 0
+                                       : fault_set(fault, FAULT_FORBIDDEN, NULL, "User %u: %s.",
+                                                   (unsigned)peer->uid, method->name);
+}
+
+static void a_call_that_the_peer_may_not_make_is_refused_in_its_place(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture->table.check = allow_reads;
+    ask(fixture, "read", 'a');
+    ask(fixture, "change", 'b');
+    ask(fixture, "read", 'c');
+    start(fixture);
+    assert_string_equal(fixture->started, "ac");
+    end(fixture, 'c');
+    end(fixture, 'a');
+    assert_out(fixture, "a\nb-32004\nc\n");
+}
+
+static void a_notification_that_the_peer_may_not_send_is_not_obeyed(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture->table.check = allow_reads;
+    notify(fixture, "change", 'a');
+    start(fixture);
+    assert_string_equal(fixture->started, "");
+    assert_out(fixture, "");
+}
+
+static void each_call_of_a_batch_is_checked(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture->table.check = allow_reads;
+    add(fixture, "[{'jsonrpc':'2.0','id':'a','method':'echo','params':{'name':'a'}},"
+                 "{'jsonrpc':'2.0','id':'b','method':'change','params':{'name':'b'}}]");
+    start(fixture);
+    assert_string_equal(fixture->started, "a");
+    assert_out(fixture, "[ab-32004]\n");
+}
+
 #define TEST(name) cmocka_unit_test_setup_teardown(name, calls_set_up, calls_tear_down)
 
 int main(void)
@@ -260,6 +307,9 @@ int main(void)
         TEST(a_method_may_fail),
         TEST(an_answer_without_memory_is_an_internal_error),
         TEST(a_call_knows_its_peer),
+        TEST(a_call_that_the_peer_may_not_make_is_refused_in_its_place),
+        TEST(a_notification_that_the_peer_may_not_send_is_not_obeyed),
+        TEST(each_call_of_a_batch_is_checked),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -234,6 +234,64 @@ static void a_word_forgotten_twice_is_told_under_both_numbers(void **state)
     assert_told(fixture, 1, true, "fog", 1, 0);
 }
 
+static void what_is_sealed_is_told_until_it_is_stored(void **state)
+{
+    struct fixture *fixture = *state;
+    (void)intern_counted(fixture, "fog", 3);
+    dictionary_remove(fixture->dictionary, intern(fixture, "bell"));
+    dictionary_seal(fixture->dictionary);
+    tell_list(fixture);
+    assert_int_equal(fixture->list->told_count, 2);
+    assert_int_equal(dictionary_changed_count(fixture->dictionary), 2);
+    dictionary_stored(fixture->dictionary);
+    tell_list(fixture);
+    assert_int_equal(fixture->list->told_count, 0);
+}
+
+static void a_word_that_changes_while_it_is_stored_is_still_to_be_stored(void **state)
+{
+    struct fixture *fixture = *state;
+    (void)intern_counted(fixture, "fog", 3);
+    uint32_t bell = intern_counted(fixture, "bell", 1);
+    dictionary_seal(fixture->dictionary);
+    (void)intern_counted(fixture, "fog", 4);
+    dictionary_remove(fixture->dictionary, bell);
+    dictionary_stored(fixture->dictionary);
+    tell_list(fixture);
+    assert_int_equal(fixture->list->told_count, 2);
+    assert_told(fixture, 0, true, "bell", bell, 0);
+    assert_told(fixture, 1, false, "fog", 0, 4);
+}
+
+static void a_word_on_its_way_out_of_the_base_is_not_found(void **state)
+{
+    struct fixture *fixture = *state;
+    uint32_t fog = intern_counted(fixture, "fog", 3);
+    store(fixture);
+    dictionary_remove(fixture->dictionary, fog);
+    dictionary_seal(fixture->dictionary);
+    assert_int_equal(find(fixture, "fog").number, DICTIONARY_NONE); /* the base has it */
+    assert_int_equal(intern(fixture, "fog"), 1);
+    dictionary_stored(fixture->dictionary);
+    assert_int_equal(find(fixture, "fog").number, 1);
+}
+
+static void a_word_on_its_way_to_the_base_is_not_let_go_of(void **state)
+{
+    struct fixture *fixture = *state;
+    (void)intern_counted(fixture, "fog", 3);
+    dictionary_seal(fixture->dictionary);
+    for (int i = 0; i < 2; i++) {
+        dictionary_trim(fixture->dictionary, 0);
+    }
+    assert_true(is_in_memory(fixture, "fog"));
+    dictionary_stored(fixture->dictionary);
+    for (int i = 0; i < 2; i++) {
+        dictionary_trim(fixture->dictionary, 0);
+    }
+    assert_false(is_in_memory(fixture, "fog"));
+}
+
 /* Counts the calls, and ends at the second. */
 static int end_at_second(void *user, const struct dictionary_word *word)
 {
@@ -402,6 +460,10 @@ int main(void)
         dictionary_test(a_clean_word_whose_count_is_set_is_told_even_if_it_is_the_same),
         dictionary_test(forgotten_words_are_told_before_changed_ones),
         dictionary_test(a_word_forgotten_twice_is_told_under_both_numbers),
+        dictionary_test(what_is_sealed_is_told_until_it_is_stored),
+        dictionary_test(a_word_that_changes_while_it_is_stored_is_still_to_be_stored),
+        dictionary_test(a_word_on_its_way_out_of_the_base_is_not_found),
+        dictionary_test(a_word_on_its_way_to_the_base_is_not_let_go_of),
         dictionary_test(what_ends_the_telling_of_changed_words_is_returned),
         dictionary_test(what_ends_the_telling_of_forgotten_words_ends_all),
         dictionary_test(whatever_comes_and_goes_the_rest_is_found),

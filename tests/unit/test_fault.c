@@ -108,6 +108,18 @@ static void a_text_that_just_fits_is_whole(void **state)
     assert_string_equal(fault.message, text);
 }
 
+/* A line end, an escape sequence of terminals, DEL; U+0085 and U+009F are C2 85 and C2 9F. What
+ * stands beside them (U+00A0, C2 A0) stays. */
+static void a_message_holds_no_control_characters(void **state)
+{
+    (void)state;
+    struct fault fault = {0};
+    (void)fault_set(&fault, FAULT_METHOD, "/a\nb", "There is no '%s'.",
+                    "a\n\x1b[2J\x7F\xC2\x85\xC2\x9F\xC2\xA0\xC3\x85");
+    assert_string_equal(fault.message, "There is no 'a??[2J?????\xC2\xA0\xC3\x85'.");
+    assert_string_equal(fault.field, "/a\nb"); /* where it points to */
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -118,6 +130,7 @@ int main(void)
         cmocka_unit_test(a_message_is_cut_at_a_characters_edge),
         cmocka_unit_test(a_field_is_cut_at_a_characters_edge),
         cmocka_unit_test(a_text_that_just_fits_is_whole),
+        cmocka_unit_test(a_message_holds_no_control_characters),
     };
     return cmocka_run_group_tests_name("fault", tests, NULL, NULL);
 }

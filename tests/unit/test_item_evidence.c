@@ -36,10 +36,14 @@ static void say_everything(struct fixture *fixture)
                                  .filed_at = text_of("1911-02-03T04:00:00Z"),
                                  .stored_at_ms = -5000,
                                  .uid = 1007};
-    struct item_saying ruling = {.id = text_of(ID), .who = text_of("e.ditor"), .at_ms = -4000};
-    struct item_saying check = {.id = text_of(ID), .who = text_of("c.lerk"), .at_ms = 3000};
-    struct item_saying second = {.id = text_of(ID), .who = text_of("o.reed"), .at_ms = 4000};
-    struct item_saying third = {.id = text_of(ID), .who = text_of("p.inner"), .at_ms = 5000};
+    struct item_saying ruling = {
+        .id = text_of(ID), .who = text_of("e.ditor"), .at_ms = -4000, .uid = 1008};
+    struct item_saying check = {
+        .id = text_of(ID), .who = text_of("c.lerk"), .at_ms = 3000, .uid = 1009};
+    struct item_saying second = {
+        .id = text_of(ID), .who = text_of("o.reed"), .at_ms = 4000, .uid = 1010};
+    struct item_saying third = {
+        .id = text_of(ID), .who = text_of("p.inner"), .at_ms = 5000, .uid = 1011};
     (void)fixture_file_as(fixture, (struct item_filing){.id = text_of("log/2")},
                           (struct names){.tags = {"fog", "gale", "wreck", "bell", "lamp"}});
     (void)fixture_file_as(fixture, filing, (struct names){{"fog", "gale"}, {"gale"}, {"wreck"}});
@@ -51,6 +55,7 @@ static void say_everything(struct fixture *fixture)
     (void)fixture_file_as(fixture, filing, (struct names){{"fog", "quay"}, {"quay"}, {"wreck"}});
     ruling.who = text_of("");
     ruling.at_ms = -1000;
+    ruling.uid = 1012;
     (void)fixture_rule(fixture, ruling, (struct rulings){.denied = {"quay"}});
     (void)fixture_tag_again(fixture, third, "", true, (struct names){.tags = {NULL}});
 }
@@ -111,6 +116,20 @@ static void assert_evidence(struct fixture *fixture)
     assert_int_equal(record.seconds[1].tags.count, 0);
 }
 
+/* Each of those who have said what stands, whoever came after. */
+static void assert_users(struct fixture *fixture)
+{
+    struct item_record record = fixture_item(fixture, ID);
+    assert_int_equal(record.uid, 1011); /* of the last change */
+    assert_int_equal(record.filed_uid, 1007);
+    assert_int_equal(record.check.uid, 1009);
+    assert_int_equal(record.rulings[0].uid, 1008);
+    assert_int_equal(record.rulings[1].uid, 1008);
+    assert_int_equal(record.rulings[2].uid, 1012);
+    assert_int_equal(record.seconds[0].uid, 1010);
+    assert_int_equal(record.seconds[1].uid, 1011);
+}
+
 static void assert_what_follows(struct fixture *fixture)
 {
     struct item_record record = fixture_item(fixture, ID);
@@ -128,6 +147,7 @@ static void a_record_with_everything_is_read_again(void **state)
     say_everything(fixture);
     assert_filing(fixture);
     assert_evidence(fixture);
+    assert_users(fixture);
     assert_what_follows(fixture);
 }
 
@@ -140,6 +160,7 @@ static void it_is_there_after_a_restart(void **state)
     fixture_open(fixture);
     assert_filing(fixture);
     assert_evidence(fixture);
+    assert_users(fixture);
     assert_what_follows(fixture);
     struct store_totals after = fixture_totals(fixture);
     assert_memory_equal(&before, &after, sizeof before);
@@ -206,7 +227,7 @@ struct counts {
 static const struct counts RIGHT = {1, {1, 1, 0, 1}, 1, 2};
 
 /* Evidence with a ruling on 3, a check that has 0 alone, and a second tagging with 0 and 1. */
-static void put_evidence(struct codec_writer *record, uint8_t change, const struct counts *counts)
+static void put_said(struct codec_writer *record, uint8_t change, const struct counts *counts)
 {
     static const uint32_t CHECK_TAGS[4] = {0, 0, 0, 1}; /* of each list's one number, if any */
     codec_put_u8(record, change);
@@ -236,6 +257,15 @@ static void put_evidence(struct codec_writer *record, uint8_t change, const stru
     codec_put_u32(record, counts->second_tags);
     codec_put_u32(record, 0);
     codec_put_u32(record, 1);
+}
+
+/* The same with its users: of the filing, the check, the ruling, the second tagging. */
+static void put_evidence(struct codec_writer *record, uint8_t change, const struct counts *counts)
+{
+    put_said(record, change, counts);
+    for (uint32_t uid = 1007; uid <= 1010; uid++) {
+        codec_put_u32(record, uid);
+    }
 }
 
 /* Reads all that a record points to, as a sanitizer would have it. */
@@ -319,6 +349,30 @@ static void look_at_right_record(const struct item_record *record)
     assert_int_equal(record->seconds[0].tags.count, 2);
     assert_int_equal(record->tags.count, 1);
     assert_int_equal(record->known_not.count, 2); /* 2 declined, 3 ruled out */
+    assert_int_equal(record->filed_uid, 1007);
+    assert_int_equal(record->check.uid, 1008);
+    assert_int_equal(record->rulings[0].uid, 1009);
+    assert_int_equal(record->seconds[0].uid, 1010);
+}
+
+static void look_at_record_without_users(const struct item_record *record)
+{
+    assert_int_equal(record->uid, 1007); /* of the last change */
+    assert_int_equal(record->filed_uid, ITEM_NO_UID);
+    assert_int_equal(record->check.uid, ITEM_NO_UID);
+    assert_int_equal(record->rulings[0].uid, ITEM_NO_UID);
+    assert_int_equal(record->seconds[0].uid, ITEM_NO_UID);
+    assert_int_equal(record->seconds[0].tags.count, 2); /* and all the rest is there */
+}
+
+static void a_record_of_format_2_does_not_say_who(void **state)
+{
+    struct codec_writer record = {0};
+    put_filing(&record);
+    put_said(&record, ITEM_CHECKED, &RIGHT);
+    assert_int_equal(read_bytes(*state, record.data, record.size, look_at_record_without_users),
+                     STORE_OK);
+    codec_deinit(&record);
 }
 
 static void a_record_has_the_form_that_is_written_down(void **state)
@@ -357,9 +411,10 @@ static void a_record_that_ends_too_early_is_damaged(void **state)
     put_filing(&record);
     size_t plain = record.size; /* a filing that nobody has looked at ends here */
     put_evidence(&record, ITEM_CHECKED, &RIGHT);
+    size_t before = record.size - 4 * sizeof(uint32_t); /* a record of format 2 ends here */
     for (size_t size = 1; size < record.size; size++) {
         int result = read_bytes(*state, record.data, size, NULL);
-        if (result != (size == plain ? STORE_OK : STORE_CORRUPT)) {
+        if (result != (size == plain || size == before ? STORE_OK : STORE_CORRUPT)) {
             fail_msg("%zu of %zu bytes: %d", size, record.size, result);
         }
     }
@@ -429,6 +484,7 @@ int main(void)
         TEST(it_is_there_after_a_restart),
         TEST(erasing_what_was_passed_keeps_the_current_record),
         TEST(a_record_has_the_form_that_is_written_down),
+        TEST(a_record_of_format_2_does_not_say_who),
         TEST(the_record_of_a_plain_filing_ends_with_its_content),
         TEST(a_record_that_ends_too_early_is_damaged),
         TEST(a_wild_count_is_damage),

@@ -109,6 +109,19 @@ static void what_is_stored_as_fields_and_is_none_is_refused(void **state)
 
 #define TEST(name) cmocka_unit_test_setup_teardown(name, set_up, tear_down)
 
+static void the_member_with_the_most_bytes_is_the_longest(void **state)
+{
+    (void)state;
+    const struct features_field fields[] = {{"desk", "harbour"}, {"desk", "lamp"}}; /* 19 bytes */
+    struct features_source source = {.title_bytes = 20, .text_bytes = 21, .fields = fields};
+    source.field_count = 2;
+    assert_string_equal(item_source_longest(&source), "/text");
+    source.text_bytes = 18;
+    assert_string_equal(item_source_longest(&source), "/title");
+    source.title_bytes = 18;
+    assert_string_equal(item_source_longest(&source), "/fields");
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -118,6 +131,7 @@ int main(void)
         TEST(fields_come_as_pairs),
         TEST(nothing_of_the_item_before_is_left),
         TEST(what_is_stored_as_fields_and_is_none_is_refused),
+        TEST(the_member_with_the_most_bytes_is_the_longest),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

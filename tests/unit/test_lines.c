@@ -209,6 +209,16 @@ static void a_long_last_line_is_told_whether_or_not_it_was_seen_to_be_long(void 
 
 /* --- memory --- */
 
+static void a_long_last_line_is_told_after_its_room_was_given_back(void **state)
+{
+    struct fixture *fixture = *state;
+    put(fixture, "more than ten");
+    assert_int_equal(next(fixture), LINES_NONE);
+    lines_shrink(&fixture->lines, 0);
+    assert_int_equal(last(fixture), LINES_LONG);
+    assert_int_equal(last(fixture), LINES_NONE);
+}
+
 static void the_room_of_lines_that_were_taken_is_used_again(void **state)
 {
     struct fixture *fixture = *state;
@@ -248,6 +258,7 @@ int main(void)
         TEST(two_long_lines_are_told_twice),
         TEST(a_line_over_the_limit_is_passed_over_without_being_held),
         TEST(a_long_last_line_is_told_whether_or_not_it_was_seen_to_be_long),
+        TEST(a_long_last_line_is_told_after_its_room_was_given_back),
         TEST(the_room_of_lines_that_were_taken_is_used_again),
         TEST(room_that_no_machine_has_is_not_given),
     };

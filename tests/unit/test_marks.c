@@ -80,6 +80,23 @@ static void many_numbers_are_each_there_once(void **state)
     assert_int_equal(marks->count, MANY);
 }
 
+static void two_sets_joined_have_each_number_once(void **state)
+{
+    struct marks *marks = *state;
+    struct marks other = {0};
+    assert_int_equal(marks_add(marks, 5), 0);
+    assert_int_equal(marks_add(marks, 6), 0);
+    assert_int_equal(marks_add(&other, 6), 0);
+    assert_int_equal(marks_add(&other, 7), 0);
+    assert_int_equal(marks_join(marks, &other), 0);
+    assert_int_equal(marks->count, 3);
+    assert_int_equal(marks->list[2], 7);
+    assert_true(marks_has(marks, 7));
+    assert_false(marks_has(&other, 5));
+    assert_false(marks_has(&other, UINT32_MAX));
+    marks_deinit(&other);
+}
+
 static void a_set_put_away_is_empty_and_may_be_used_again(void **state)
 {
     struct marks *marks = *state;
@@ -100,6 +117,7 @@ int main(void)
         marks_test(an_emptied_set_takes_the_same_numbers_anew),
         marks_test(an_emptied_set_keeps_its_memory),
         marks_test(many_numbers_are_each_there_once),
+        marks_test(two_sets_joined_have_each_number_once),
         marks_test(a_set_put_away_is_empty_and_may_be_used_again),
     };
     return cmocka_run_group_tests_name("marks", tests, NULL, NULL);

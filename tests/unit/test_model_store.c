@@ -397,7 +397,7 @@ static void a_model_of_a_newer_version_is_refused_with_a_sentence(void **state)
     write_entry(stored, "meta", "model", newer, sizeof newer);
     assert_int_equal(model_store_read_head(stored->store, &head, &stored->error), STORE_NEWER);
     assert_string_equal(stored->error.text, "the model was written by a newer version of undertag "
-                                            "(format 4, this version reads up to 3)");
+                                            "(format 5, this version reads up to 4)");
 }
 
 /* Nobody's: whoever asks whose it is finds neither his store nor his settings. */

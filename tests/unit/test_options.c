@@ -216,6 +216,39 @@ static void a_language_is_one_that_has_a_stemmer_or_none(void **state)
     assert_string_equal(configured->options.language, "");
 }
 
+static void a_right_is_a_list_of_users_and_groups(void **state)
+{
+    struct configured *configured = *state;
+    struct options_row row;
+    assert_int_equal(set(configured, "may_rule", "1911, @50 @socket"), 0);
+    options_describe(&configured->options, options_find("may_rule"), &row);
+    assert_string_equal(row.value, "1911 @50 @socket");
+    assert_int_equal(configured->options.may[RIGHT_RULE].count, 3);
+}
+
+static void a_right_for_who_is_not_there_is_refused_by_name(void **state)
+{
+    struct configured *configured = *state;
+    assert_int_equal(set(configured, "may_file", "@no-such-harbour"), -1);
+    assert_non_null(strstr(configured->error, "may_file"));
+    assert_non_null(strstr(configured->error, "no group 'no-such-harbour'"));
+    assert_int_equal(configured->options.may[RIGHT_FILE].count, 1); /* as it was */
+}
+
+/* The owner, who may do everything, is on no list. */
+static void by_default_the_sockets_group_may_read_file_and_rule(void **state)
+{
+    struct configured *configured = *state;
+    static const char *const expected[RIGHT_KINDS] = {"@socket", "@socket", "@socket", "", ""};
+    for (int right = 0; right < RIGHT_KINDS; right++) {
+        struct options_row row;
+        size_t place = options_find(rights_option((enum right)right));
+        options_describe(&configured->options, place, &row);
+        assert_string_equal(row.value, expected[right]);
+        assert_true(row.on_reload);
+    }
+}
+
 static void an_unknown_option_is_refused(void **state)
 {
     struct configured *configured = *state;
@@ -353,6 +386,9 @@ int main(void)
         TEST(a_switch_is_on_or_off),
         TEST(a_choice_is_one_of_its_words),
         TEST(a_language_is_one_that_has_a_stemmer_or_none),
+        TEST(a_right_is_a_list_of_users_and_groups),
+        TEST(a_right_for_who_is_not_there_is_refused_by_name),
+        TEST(by_default_the_sockets_group_may_read_file_and_rule),
         TEST(an_unknown_option_is_refused),
         TEST(an_endless_value_is_refused_with_a_sentence_that_fits),
         TEST(a_pair_sets_one_option),

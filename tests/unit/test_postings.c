@@ -5,6 +5,7 @@
 #include <stdlib.h>
 
 #include "tests/unit/near.h"
+#include "tests/unit/postings_look.h"
 
 enum {
     LANES = 1,
@@ -43,7 +44,7 @@ static void append(struct postings *postings, uint32_t count)
 
 static struct chunk *chunk_of(const struct postings *postings, uint32_t word, uint32_t number)
 {
-    return postings_at(postings, postings_place(postings, word, number));
+    return postings_at(postings, place_of(postings, word, number));
 }
 
 static void a_word_without_postings_has_no_chunk(void **state)
@@ -52,7 +53,7 @@ static void a_word_without_postings_has_no_chunk(void **state)
     struct postings_walk walk;
     const uint32_t *numbers = NULL;
     size_t count = 0;
-    assert_int_equal(postings_chunks(postings, WORD), 0);
+    assert_int_equal(chunks_of(postings, WORD), 0);
     assert_int_equal(postings_count(postings, WORD), 0);
     postings_walk_begin(postings, NULL, WORD, &walk);
     assert_int_equal(postings_walk_next(&walk, &numbers, &count), -ENOENT);
@@ -97,11 +98,11 @@ static void a_chunk_holds_one_hundred_and_sixty(void **state)
 {
     struct postings *postings = *state;
     append(postings, 1);
-    assert_int_equal(postings_chunks(postings, WORD), 1);
+    assert_int_equal(chunks_of(postings, WORD), 1);
     append(postings, 159);
-    assert_int_equal(postings_chunks(postings, WORD), 1);
+    assert_int_equal(chunks_of(postings, WORD), 1);
     append(postings, 1);
-    assert_int_equal(postings_chunks(postings, WORD), 2);
+    assert_int_equal(chunks_of(postings, WORD), 2);
     assert_int_equal(chunk_of(postings, WORD, 0)->count, 160);
     assert_int_equal(chunk_of(postings, WORD, 1)->count, 1);
 }
@@ -139,8 +140,8 @@ static void a_touch_marks_a_chunk_once(void **state)
     struct postings *postings = *state;
     append(postings, 2 * POSTINGS_CHUNK + 1);
     postings_clean(postings);
-    assert_int_equal(postings_touch(postings, postings_place(postings, WORD, 1)), 0);
-    assert_int_equal(postings_touch(postings, postings_place(postings, WORD, 1)), 0);
+    assert_int_equal(postings_touch(postings, place_of(postings, WORD, 1)), 0);
+    assert_int_equal(postings_touch(postings, place_of(postings, WORD, 1)), 0);
     assert_int_equal(postings_changed_count(postings), 1);
     assert_false(chunk_of(postings, WORD, 0)->is_changed);
     assert_true(chunk_of(postings, WORD, 1)->is_changed);
@@ -154,7 +155,7 @@ static void marks_outlive_a_larger_block(void **state)
     append(postings, POSTINGS_CHUNK + 1);
     postings_clean(postings);
     append(postings, POSTINGS_CHUNK - 1);
-    assert_int_equal(postings_chunks(postings, WORD), 2);
+    assert_int_equal(chunks_of(postings, WORD), 2);
     assert_false(chunk_of(postings, WORD, 0)->is_changed);
     assert_true(chunk_of(postings, WORD, 1)->is_changed);
     postings_clean(postings);
@@ -244,6 +245,17 @@ static void what_was_dropped_is_not_told(void **state)
 /* --- replacing ----------------------------------------------------------------------------------
  */
 
+static void a_word_without_postings_has_none_to_replace(void **state)
+{
+    struct postings *postings = *state;
+    size_t cuts = 77;
+    assert_int_equal(postings_admit(postings, NULL, WORD), 0);
+    assert_int_equal(postings_replace(postings, WORD, NULL, 0), 0);
+    (void)postings_cuts(postings, &cuts);
+    assert_int_equal(cuts, 0);
+    assert_int_equal(postings_count(postings, WORD), 0);
+}
+
 static void fewer_postings_take_fewer_chunks_and_the_rest_is_cut(void **state)
 {
     struct postings *postings = *state;
@@ -285,8 +297,103 @@ static void what_was_cut_is_told_until_it_is_stored(void **state)
     (void)postings_cuts(postings, &cut_count);
     assert_int_equal(cut_count, 0);
     append(postings, POSTINGS_CHUNK); /* it grows again from where it was cut */
-    assert_int_equal(postings_chunks(postings, WORD), 2);
+    assert_int_equal(chunks_of(postings, WORD), 2);
     assert_int_equal(postings_count(postings, WORD), POSTINGS_CHUNK + 1);
+}
+
+/* --- on the way to the store --------------------------------------------------------------------
+ */
+
+static void what_is_sealed_is_told_until_it_is_stored(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    append_to(postings, 40, 2);
+    const struct told both[] = {{20, 0, 1}, {40, 0, 2}};
+    assert_changed(postings, both, 2);
+    postings_stored(postings);
+    assert_changed(postings, both + 1, 1);
+}
+
+static void what_changes_while_it_is_stored_is_still_to_be_stored(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    append_to(postings, 40, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    append_to(postings, 20, 1);
+    postings_stored(postings);
+    const struct told expected[] = {{20, 0, 2}};
+    assert_changed(postings, expected, 1);
+}
+
+/* A place that was given back and taken again stands for another chunk. */
+static void what_is_dropped_while_it_is_stored_leaves_its_place_to_others(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    (void)postings_drop(postings, 20);
+    append_to(postings, 40, 3);
+    const struct told expected[] = {{40, 0, 3}};
+    assert_changed(postings, expected, 1);
+    postings_stored(postings);
+    assert_changed(postings, expected, 1);
+}
+
+static void what_did_not_arrive_is_sealed_once_more_with_what_came_since(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    append_to(postings, 20, 1);
+    append_to(postings, 40, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    const struct told both[] = {{20, 0, 2}, {40, 0, 1}};
+    assert_changed(postings, both, 2);
+    postings_stored(postings);
+    assert_changed(postings, NULL, 0);
+}
+
+static void what_is_sealed_is_not_let_go_of(void **state)
+{
+    struct postings *postings = *state;
+    append_to(postings, 20, 1);
+    assert_int_equal(postings_seal(postings), 0);
+    postings_trim(postings, 0);
+    assert_int_equal(postings_count(postings, 20), 1);
+    postings_stored(postings);
+    postings_trim(postings, 0);
+    assert_int_equal(postings_count(postings, 20), 0);
+}
+
+static size_t cut_count(const struct postings *postings)
+{
+    size_t count = 0;
+    (void)postings_cuts(postings, &count);
+    return count;
+}
+
+/* Its first cut is stored while the second, of all that is left, is not: what the store has of it
+ * still must not be looked for. */
+static void a_word_cut_again_while_it_is_stored_stays_known_to_be_empty(void **state)
+{
+    struct postings *postings = *state;
+    const uint32_t numbers[STRIDE] = {1, 1};
+    append(postings, POSTINGS_CHUNK + 1);
+    postings_clean(postings);
+    assert_int_equal(postings_replace(postings, WORD, numbers, 1), 0);
+    assert_int_equal(postings_seal(postings), 0);
+    assert_int_equal(postings_replace(postings, WORD, numbers, 0), 0);
+    postings_stored(postings);
+    struct postings_walk walk;
+    postings_walk_begin(postings, NULL, WORD, &walk);
+    assert_int_equal(walk.chunk_count, 0);
+    assert_int_equal(cut_count(postings), 2);
+    assert_int_equal(postings_seal(postings), 0);
+    postings_stored(postings);
+    assert_int_equal(cut_count(postings), 0);
 }
 
 /* --- size ---------------------------------------------------------------------------------------
@@ -311,7 +418,7 @@ static void dropped_postings_are_gone_and_the_word_may_be_used_again(void **stat
     uint64_t bytes = postings_bytes(postings);
     append(postings, 10);
     assert_int_equal(postings_drop(postings, WORD), 10);
-    assert_int_equal(postings_chunks(postings, WORD), 0);
+    assert_int_equal(chunks_of(postings, WORD), 0);
     assert_int_equal(postings_drop(postings, WORD), 0);
     assert_true(postings_bytes(postings) < bytes + 10 * STRIDE * sizeof(uint32_t));
     append(postings, 1);
@@ -335,8 +442,15 @@ int main(void)
         postings_test(what_has_changed_is_told_by_rising_word_and_number),
         postings_test(a_place_that_was_dropped_and_taken_again_is_told_once),
         postings_test(what_was_dropped_is_not_told),
+        postings_test(a_word_without_postings_has_none_to_replace),
         postings_test(fewer_postings_take_fewer_chunks_and_the_rest_is_cut),
         postings_test(what_was_cut_is_told_until_it_is_stored),
+        postings_test(what_is_sealed_is_told_until_it_is_stored),
+        postings_test(what_changes_while_it_is_stored_is_still_to_be_stored),
+        postings_test(what_is_dropped_while_it_is_stored_leaves_its_place_to_others),
+        postings_test(what_did_not_arrive_is_sealed_once_more_with_what_came_since),
+        postings_test(what_is_sealed_is_not_let_go_of),
+        postings_test(a_word_cut_again_while_it_is_stored_stays_known_to_be_empty),
         postings_test(the_blocks_have_room_for_all_that_is_in_them),
         postings_test(dropped_postings_are_gone_and_the_word_may_be_used_again),
     };

@@ -7,6 +7,7 @@
 
 #include "tests/unit/fake_base.h"
 #include "tests/unit/near.h"
+#include "tests/unit/postings_look.h"
 #include "tests/unit/repeatable.h"
 
 enum {
@@ -127,7 +128,7 @@ static void a_word_that_is_only_stored_is_walked_and_takes_no_memory(void **stat
     uint64_t bytes = postings_bytes(kept->postings);
     assert_int_equal(walk_through(kept, WORD), 400);
     assert_int_equal(postings_bytes(kept->postings), bytes);
-    assert_int_equal(postings_chunks(kept->postings, WORD), 0);
+    assert_int_equal(chunks_of(kept->postings, WORD), 0);
 }
 
 static void a_word_in_memory_is_walked_without_the_base(void **state)
@@ -149,7 +150,7 @@ static void a_word_partly_in_memory_is_walked_through_both(void **state)
     store(kept);
     append(kept, WORD, 1);
     postings_trim(kept->postings, 0);
-    assert_int_equal(postings_chunks(kept->postings, WORD), 4);
+    assert_int_equal(chunks_of(kept->postings, WORD), 4);
     size_t reads = kept->stored.reads;
     assert_int_equal(walk_through(kept, WORD), 3 * POSTINGS_CHUNK + 2);
     assert_int_equal(kept->stored.reads - reads, 3);
@@ -163,7 +164,7 @@ static void what_is_in_memory_is_newer_than_the_base(void **state)
     struct kept *kept = *state;
     append(kept, WORD, 1);
     store(kept);
-    uint32_t place = postings_place(kept->postings, WORD, 0);
+    uint32_t place = place_of(kept->postings, WORD, 0);
     assert_int_equal(postings_touch(kept->postings, place), 0);
     postings_at(kept->postings, place)->numbers[1] = 99;
     postings_trim(kept->postings, 0);
@@ -184,7 +185,7 @@ static void an_admitted_word_can_be_appended_to(void **state)
     append(kept, WORD, 2 * POSTINGS_CHUNK);
     assert_int_equal(walk_through(kept, WORD), 3 * POSTINGS_CHUNK + 3);
     assert_int_equal(postings_changed_count(kept->postings), 3); /* the first is as it was */
-    assert_false(postings_at(kept->postings, postings_place(kept->postings, WORD, 0))->is_changed);
+    assert_false(postings_at(kept->postings, place_of(kept->postings, WORD, 0))->is_changed);
 }
 
 /* --- letting go ---------------------------------------------------------------------------------
@@ -209,7 +210,7 @@ static void with_room_enough_nothing_is_let_go_of(void **state)
     uint64_t bytes = postings_bytes(kept->postings);
     postings_trim(kept->postings, bytes);
     assert_int_equal(postings_bytes(kept->postings), bytes);
-    assert_int_equal(postings_chunks(kept->postings, WORD), 3);
+    assert_int_equal(chunks_of(kept->postings, WORD), 3);
 }
 
 static void no_more_is_let_go_of_than_is_asked_for(void **state)
@@ -239,8 +240,8 @@ static void what_was_admitted_lately_stays_longest(void **state)
     admit(kept, 30);
     postings_trim(kept->postings,
                   postings_bytes(kept->postings) - 45 * POSTINGS_CHUNK * STRIDE * sizeof(uint32_t));
-    assert_int_equal(postings_chunks(kept->postings, 20), 1);
-    assert_int_equal(postings_chunks(kept->postings, 30), 1);
+    assert_int_equal(chunks_of(kept->postings, 20), 1);
+    assert_int_equal(chunks_of(kept->postings, 30), 1);
 }
 
 /* Eighty words, trimmed and stored at any moment, and forgotten: each word is what it should be,

@@ -158,8 +158,8 @@ static void never_started(struct call *call, const json_t *params)
     fail();
 }
 
-static const struct method METHODS[] = {{"item.show", METHOD_READ, never_started},
-                                        {"item.file", METHOD_CHANGE, never_started}};
+static const struct method METHODS[] = {{"item.show", METHOD_READ, RIGHT_READ, never_started},
+                                        {"item.file", METHOD_CHANGE, RIGHT_FILE, never_started}};
 static const struct method_table TABLE = {.methods = METHODS, .count = 2};
 
 struct reading {

@@ -48,9 +48,12 @@ static void get_data(struct call *call, const json_t *params)
 }
 
 static const struct method METHODS[] = {
-    {"subtract", METHOD_READ, subtract}, {"sum", METHOD_READ, sum},
-    {"update", METHOD_CHANGE, take},     {"notify_hello", METHOD_CHANGE, take},
-    {"notify_sum", METHOD_CHANGE, take}, {"get_data", METHOD_READ, get_data},
+    {"subtract", METHOD_READ, RIGHT_READ, subtract},
+    {"sum", METHOD_READ, RIGHT_READ, sum},
+    {"update", METHOD_CHANGE, RIGHT_FILE, take},
+    {"notify_hello", METHOD_CHANGE, RIGHT_FILE, take},
+    {"notify_sum", METHOD_CHANGE, RIGHT_FILE, take},
+    {"get_data", METHOD_READ, RIGHT_READ, get_data},
 };
 static const struct method_table TABLE = {.methods = METHODS,
                                           .count = sizeof METHODS / sizeof METHODS[0]};

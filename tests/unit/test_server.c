@@ -45,6 +45,64 @@ static void a_stale_socket_is_removed(void **state)
     assert_heard(serving, 0, "{'jsonrpc': '2.0', 'id': 1, 'result': {'bytes': 100000}}");
 }
 
+/* A socket that listens at the path, of somebody else's making. */
+static int passed_socket(const struct serving *serving)
+{
+    struct sockaddr_un address = {.sun_family = AF_UNIX};
+    int fd = socket(AF_UNIX, SOCK_STREAM | SOCK_CLOEXEC, 0);
+    assert_true(fd > 0);
+    memcpy(address.sun_path, serving->path, strlen(serving->path) + 1);
+    assert_int_equal(bind(fd, (struct sockaddr *)&address, sizeof address), 0);
+    assert_int_equal(listen(fd, 8), 0);
+    return fd;
+}
+
+static void a_socket_that_was_passed_in_is_served(void **state)
+{
+    struct serving *serving = *state;
+    serving->settings.passed_fd = passed_socket(serving);
+    serving->settings.socket_path = "elsewhere";
+    serve(serving);
+    join(serving, 0);
+    ask(serving, 0, 1, "echo");
+    assert_heard(serving, 0, "{'jsonrpc': '2.0', 'id': 1, 'result': {'bytes': 100000}}");
+    assert_string_equal(server_socket_path(serving->server), serving->path);
+}
+
+static void the_file_of_a_socket_that_was_passed_in_stays(void **state)
+{
+    struct serving *serving = *state;
+    struct stat status;
+    serving->settings.passed_fd = passed_socket(serving);
+    serve(serving);
+    drain(serving);
+    wait_until_drained(serving);
+    assert_int_equal(stat(serving->path, &status), 0);
+    assert_int_equal(unlink(serving->path), 0);
+}
+
+static void the_group_of_the_sockets_file_is_known(void **state)
+{
+    struct serving *serving = *state;
+    struct stat status;
+    assert_int_equal(stat(serving->path, &status), 0);
+    assert_int_equal(server_socket_group(serving->server), status.st_gid);
+}
+
+/* unix(7): an abstract socket has no file, and so no group. */
+static void an_abstract_socket_has_no_group(void **state)
+{
+    struct serving *serving = *state;
+    struct sockaddr_un address = {.sun_family = AF_UNIX};
+    int fd = socket(AF_UNIX, SOCK_STREAM | SOCK_CLOEXEC, 0);
+    /* With no name at all the system chooses one. */
+    assert_int_equal(bind(fd, (struct sockaddr *)&address, sizeof address.sun_family), 0);
+    assert_int_equal(listen(fd, 8), 0);
+    serving->settings.passed_fd = fd;
+    serve(serving);
+    assert_int_equal(server_socket_group(serving->server), RIGHTS_NO_ID);
+}
+
 /* The sentence holds `part`, and no server is handed out. */
 static void assert_refused(struct serving *serving, int code, const char *part)
 {
@@ -212,6 +270,10 @@ int main(void)
         SERVING_TEST(the_socket_is_open_to_owner_and_group),
         QUIET_TEST(the_mask_of_the_process_is_as_it_was),
         QUIET_TEST(a_stale_socket_is_removed),
+        QUIET_TEST(a_socket_that_was_passed_in_is_served),
+        QUIET_TEST(the_file_of_a_socket_that_was_passed_in_stays),
+        SERVING_TEST(the_group_of_the_sockets_file_is_known),
+        QUIET_TEST(an_abstract_socket_has_no_group),
         QUIET_TEST(what_is_no_socket_stays),
         SERVING_TEST(a_second_server_is_refused_and_the_first_goes_on),
         QUIET_TEST(a_path_of_107_bytes_is_taken_and_one_byte_more_is_not),

@@ -89,7 +89,7 @@ static void a_store_of_a_newer_version_is_refused_with_a_sentence(void **state)
     assert_int_equal(store_open(&fixture->settings, &fixture->store, &error), STORE_NEWER);
     assert_null(fixture->store);
     assert_string_equal(error.text, "the store was written by a newer version of undertag (format "
-                                    "3, this version reads up to 2)");
+                                    "4, this version reads up to 3)");
 }
 
 static void a_store_of_an_early_version_is_refused_with_a_sentence(void **state)
@@ -102,6 +102,51 @@ static void a_store_of_an_early_version_is_refused_with_a_sentence(void **state)
     assert_int_equal(store_open(&fixture->settings, &fixture->store, &error), STORE_DENIED);
     assert_string_equal(error.text, "the store has format 1, of an early version whose items "
                                     "cannot be taken over: file them again into a new home");
+}
+
+/* The format in the first record, which becomes another one unless that is 0. */
+static unsigned char exchange_format(struct fixture *fixture, unsigned char other)
+{
+    static const char *const tables[] = {"meta"};
+    char directory[FIXTURE_PATH_BYTES + 8];
+    (void)snprintf(directory, sizeof directory, "%s/store", fixture->home);
+    struct kv_settings settings = {
+        .directory = directory, .map_bytes = FIXTURE_MAP_BYTES, .tables = tables, .table_count = 1};
+    struct store_error error = {0};
+    struct kv *kv = NULL;
+    struct kv_txn *txn = NULL;
+    struct kv_bytes first = {0};
+    unsigned char record[512];
+    assert_int_equal(kv_open(&settings, &kv, &error), STORE_OK);
+    assert_int_equal(kv_begin(kv, false, &txn, &error), STORE_OK);
+    assert_int_equal(kv_get(txn, 0, kv_bytes_of("store", 5), &first, &error), STORE_OK);
+    size_t size = first.size;
+    assert_in_range(size, 1, sizeof record);
+    memcpy(record, first.data, size);
+    kv_abort(txn);
+    kv_close(kv);
+    unsigned char format = record[0];
+    record[0] = other;
+    if (other != 0) {
+        write_format(fixture, record, size);
+    }
+    return format;
+}
+
+/* Format 2 came before users were noted; all else is the same. */
+static void a_store_of_format_2_is_opened_and_becomes_one_of_today(void **state)
+{
+    struct fixture *fixture = *state;
+    const struct names fog = {.tags = {"fog"}};
+    (void)fixture_file_as(fixture, (struct item_filing){.id = text_of("log/1")}, fog);
+    fixture_close(fixture);
+    assert_int_equal(exchange_format(fixture, 2), STORE_FORMAT);
+    fixture_open(fixture);
+    assert_int_equal(fixture_item(fixture, "log/1").seq, 1);
+    (void)fixture_file_as(fixture, (struct item_filing){.id = text_of("log/2")}, fog);
+    fixture_close(fixture);
+    assert_int_equal(exchange_format(fixture, 0), STORE_FORMAT);
+    fixture_open(fixture);
 }
 
 static void a_first_record_that_is_cut_short_is_damage(void **state)
@@ -385,6 +430,7 @@ int main(void)
         TEST(each_store_has_a_random_uuid_of_its_own),
         TEST(a_store_of_a_newer_version_is_refused_with_a_sentence),
         TEST(a_store_of_an_early_version_is_refused_with_a_sentence),
+        TEST(a_store_of_format_2_is_opened_and_becomes_one_of_today),
         TEST(a_first_record_that_is_cut_short_is_damage),
         TEST(a_home_that_is_not_there_is_refused_with_a_sentence),
         TEST(a_file_where_the_store_should_be_is_refused),

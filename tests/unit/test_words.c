@@ -374,6 +374,19 @@ static void words_far_apart_are_no_neighbours(void **state)
     assert_paired_terms(text, "lamp", "bell");
 }
 
+/* U+1D15E, a note, has two canonical spellings: 4 bytes, and two characters of 4 bytes each, which
+ * is its NFC and NFKC. So there are 66 bytes between the words, however it is written. */
+static void words_are_as_far_apart_in_all_canonically_equal_texts(void **state)
+{
+    char text[128];
+    (void)snprintf(text, sizeof text, "lamp%.*s\U0001d15ebell", 58,
+                   "----------------------------------------------------------");
+    assert_paired_terms(text, "lamp", "bell");
+    (void)snprintf(text, sizeof text, "lamp%.*s\U0001d157\U0001d165bell", 58,
+                   "----------------------------------------------------------");
+    assert_paired_terms(text, "lamp", "bell");
+}
+
 /* --- limits --- */
 
 static void a_word_of_the_greatest_length_is_taken_and_a_longer_one_passed_over(void **state)
@@ -420,6 +433,27 @@ static void a_short_term_that_takes_much_room_as_written_is_passed_over(void **s
     text[sizeof text - 1] = 'b';
     scan_bytes(fixture, fixture->words, NULL, text, sizeof text);
     assert_int_equal(fixture->scanned.count, 0);
+}
+
+/* 25 letters and 215 soft hyphens: 75 + 430 bytes in NFKC, but 200 + 430 with each letter as an
+ * alpha and three marks. Folded, the letter is 5 bytes. */
+static void a_word_is_as_long_in_all_canonically_equal_texts(void **state)
+{
+    struct fixture *fixture = *state;
+    const char *const letters[] = {"\u1f82", "\u03b1\u0313\u0300\u0345"};
+    for (size_t i = 0; i < 2; i++) {
+        char text[25 * 8 + 215 * 2 + 1];
+        char *end = text;
+        for (int letter = 0; letter < 25; letter++) {
+            end = stpcpy(end, letters[i]);
+        }
+        for (int hyphen = 0; hyphen < 215; hyphen++) {
+            end = stpcpy(end, "\u00ad");
+        }
+        scan_bytes(fixture, fixture->words, NULL, text, (size_t)(end - text));
+        assert_int_equal(fixture->scanned.count, 1);
+        assert_int_equal(strlen(fixture->scanned.terms[0]), 25 * 5);
+    }
 }
 
 static void a_text_of_a_mebibyte_gives_all_its_words(void **state)
@@ -505,10 +539,12 @@ int main(void)
         words_test(neighbours_count_as_one_term_too),
         words_test(a_single_word_has_no_neighbour),
         words_test(words_far_apart_are_no_neighbours),
+        words_test(words_are_as_far_apart_in_all_canonically_equal_texts),
         words_test(a_word_of_the_greatest_length_is_taken_and_a_longer_one_passed_over),
         words_test(a_long_word_that_is_not_ascii_is_passed_over_too),
         words_test(a_word_passed_over_has_no_neighbours),
         words_test(a_short_term_that_takes_much_room_as_written_is_passed_over),
+        words_test(a_word_is_as_long_in_all_canonically_equal_texts),
         words_test(a_text_of_a_mebibyte_gives_all_its_words),
         words_test(the_scan_ends_when_the_caller_says_so),
     };

@@ -14,7 +14,7 @@
 #include <sched.h>
 #include <unistd.h>
 
-#include "tests/unit/store_fixture.h"
+#include "tests/unit/damage.h"
 
 enum {
     CHANGES = 16,
@@ -367,6 +367,24 @@ static void what_the_stored_model_has_passed_is_erased_from_the_file(void **stat
     assert_true(is_text(fixture_record(writing->store, 3).text, "a quiet night"));
 }
 
+static void damage_in_what_is_to_be_erased_is_told_and_keeps_no_change_back(void **state)
+{
+    struct writing *writing = *state;
+    char told[TROUBLE_BYTES];
+    unsigned char key[8];
+    (void)push(writing, change_of(writing, "log/1", "fog", NULL));
+    (void)push(writing, change_of(writing, "log/1", "no fog", NULL));
+    (void)wait_for(writing, 2);
+    codec_key_u64(key, 2);
+    damage_value(writing->store, TABLE_SUPERSEDED, kv_bytes_of(key, sizeof key), 0);
+    backlog_kept(writing->backlog, 2);
+    (void)push(writing, change_of(writing, "log/2", "a quiet night", NULL));
+    (void)wait_for(writing, 3);
+    assert_done(writing->done[2], ITEM_NEW, 3);
+    troubles_read(&writing->troubles, TROUBLE_ERASING, told);
+    assert_non_null(strstr(told, "what change 2 replaced is damaged"));
+}
+
 #define TEST(name) cmocka_unit_test_setup_teardown(name, set_up, tear_down)
 
 int main(void)
@@ -382,6 +400,7 @@ int main(void)
         TEST(a_change_without_room_does_not_take_its_group_with_it),
         TEST(what_is_queued_when_the_writer_ends_is_stored),
         TEST(what_the_stored_model_has_passed_is_erased_from_the_file),
+        TEST(damage_in_what_is_to_be_erased_is_told_and_keeps_no_change_back),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

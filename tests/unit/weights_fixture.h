@@ -217,6 +217,21 @@ static inline void fixture_store(struct fixture *fixture)
     weights_clean(fixture->weights);
 }
 
+static inline int fixture_note_tag(void *user, uint32_t tag)
+{
+    assert_int_equal(*(int64_t *)user, -1);
+    *(int64_t *)user = tag;
+    return 0;
+}
+
+/* The one tag that has changed. */
+static inline int64_t fixture_changed_tag(const struct fixture *fixture)
+{
+    int64_t changed = -1;
+    assert_int_equal(weights_changed_tags(fixture->weights, fixture_note_tag, &changed), 0);
+    return changed;
+}
+
 /* Forgets a word, stored or not. */
 static inline void fixture_forget(struct fixture *fixture, uint32_t word)
 {

@@ -126,11 +126,12 @@ static json_t *disk_json(const struct engine_size *size)
     return disk;
 }
 
-static json_t *rehearsal_json(const struct model_rehearsal *rehearsal)
+static json_t *rehearsal_json(const struct model_rehearsal *rehearsal, uint64_t due)
 {
     json_t *object = json_object();
     answer_add(&object, "passes", answer_count(rehearsal->rounds));
     answer_add(&object, "items", answer_count(rehearsal->items));
+    answer_add(&object, "due", answer_count(due));
     return object;
 }
 
@@ -218,7 +219,7 @@ static json_t *state_json(struct state_job *job, struct store_totals totals)
     answer_add(&state, "limits", options_json(&job->options, IN(OPTIONS_LIMIT)));
     answer_add(&state, "settings",
                options_json(&job->options, IN(OPTIONS_SETTING) | IN(OPTIONS_LEARNING)));
-    answer_add(&state, "rehearsal", rehearsal_json(&size.rehearsal));
+    answer_add(&state, "rehearsal", rehearsal_json(&size.rehearsal, size.rehearsals_due));
     answer_add(&state, "worklist", worklist_json(&size.model));
     answer_add(&state, "snapshot", json_null());
     answer_add(&state, "faults", faults_json(engine_troubles(engine)));

@@ -461,6 +461,7 @@ void engine_measure(struct engine *engine, struct engine_size *ret_size)
     shared_model_read(&engine->shared);
     model_measure(engine->shared.model, &ret_size->model);
     ret_size->rehearsal = model_rehearsal(engine->shared.model);
+    ret_size->rehearsals_due = model_rehearsals_due(engine->shared.model);
     ret_size->model_bytes = model_store_file_bytes(engine->shared.store);
     shared_model_unlock(&engine->shared);
     ret_size->store_bytes = store_file_bytes(engine->store);

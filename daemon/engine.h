@@ -92,6 +92,7 @@ struct engine_size {
     uint64_t store_bytes;
     uint64_t model_bytes; /* in its file */
     struct model_rehearsal rehearsal;
+    uint64_t rehearsals_due;
     uint64_t asking_bytes; /* held for those who ask */
     uint64_t budget_bytes; /* for memory */
 };

@@ -89,7 +89,7 @@ static struct model_totals totals_of(const struct model_store_head *head)
         .postings = head->postings,
         .pruned = {.unspecific = head->pruned_unspecific, .tiny = head->pruned_tiny},
         .rehearsal = {.at = head->rehearsed,
-                      .until = head->rehearse_until,
+                      .turns = head->rehearsal_turns,
                       .rounds = head->rehearsals,
                       .items = head->rehearsed_items},
         .examples = head->examples};
@@ -249,7 +249,7 @@ static int store_totals(void *user, const struct model_totals *totals)
                                     .pruned_unspecific = totals->pruned.unspecific,
                                     .pruned_tiny = totals->pruned.tiny,
                                     .rehearsed = totals->rehearsal.at,
-                                    .rehearse_until = totals->rehearsal.until,
+                                    .rehearsal_turns = totals->rehearsal.turns,
                                     .rehearsals = totals->rehearsal.rounds,
                                     .rehearsed_items = totals->rehearsal.items,
                                     .examples = totals->examples};

@@ -62,8 +62,8 @@ static const struct option OPTIONS[] = {
      "disk when it is wanted."},
     {"rehearsal_share", TYPE_NUMBER, AT(rehearsal_share), 0, 1, "0.25", NULL, OPTIONS_SETTING,
      false,
-     "Share of a core for learning each filed item once more while there is nothing else to do; 0 "
-     "for none."},
+     "Share of a core for learning filed items again while there is nothing else to do; 0 for "
+     "none."},
     {"stemming", TYPE_SWITCH, AT(stemming), 0, 0, "off", ON_OFF, OPTIONS_LEARNING, false,
      "Count the stems of words, where Snowball knows the item's language."},
     {"language", TYPE_LANGUAGE, AT(language), 0, 0, "", NULL, OPTIONS_LEARNING, false,

@@ -139,7 +139,7 @@ int model_store_put_head(struct model_store_writing *writing, const struct model
     codec_put_u64(record, head->pruned_unspecific);
     codec_put_u64(record, head->pruned_tiny);
     codec_put_u64(record, head->rehearsed);
-    codec_put_u64(record, head->rehearse_until);
+    codec_put_u64(record, head->rehearsal_turns);
     codec_put_u64(record, head->rehearsals);
     codec_put_u64(record, head->rehearsed_items);
     codec_put_u64(record, head->examples);

@@ -43,7 +43,7 @@ struct model_store_head {
     uint64_t pruned_unspecific;
     uint64_t pruned_tiny;
     uint64_t rehearsed;
-    uint64_t rehearse_until;
+    uint64_t rehearsal_turns;
     uint64_t rehearsals;
     uint64_t rehearsed_items;
     uint64_t examples;

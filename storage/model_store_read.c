@@ -36,7 +36,7 @@ static int decode_head(struct kv_bytes value, struct model_store_head *ret_head,
     head.pruned_unspecific = codec_get_u64(&reader);
     head.pruned_tiny = codec_get_u64(&reader);
     head.rehearsed = codec_get_u64(&reader);
-    head.rehearse_until = codec_get_u64(&reader);
+    head.rehearsal_turns = codec_get_u64(&reader);
     head.rehearsals = codec_get_u64(&reader);
     head.rehearsed_items = codec_get_u64(&reader);
     head.examples = codec_get_u64(&reader);

@@ -138,24 +138,27 @@ int model_ask(const struct model *model, const struct model_question *question,
               struct model_scratch *scratch, struct model_answer *ret_answer)
     __attribute__((warn_unused_result));
 
-/* --- rehearsal: learning filed items once more --------------------------------------------------
+/* --- rehearsal: learning filed items again ------------------------------------------------------
  */
 
 struct model_rehearsal {
-    uint64_t at;    /* the number of the item rehearsed last */
-    uint64_t until; /* the last one of this round; equal to `at` between rounds */
-    uint64_t rounds;
-    uint64_t items; /* rehearsed, over all rounds */
+    uint64_t at;     /* the number of the item whose turn was last; 0 at the start of a round */
+    uint64_t turns;  /* that items have had, those included that could not be read */
+    uint64_t rounds; /* how often it has come to the last item */
+    uint64_t items;  /* rehearsed, over all rounds */
 };
 
 struct model_rehearsal model_rehearsal(const struct model *model);
+
+/* Turns that are still due; 0: the model is rehearsed. */
+uint64_t model_rehearsals_due(const struct model *model);
 
 /* The number of the item whose turn it is. Returns 0, -ENOENT where there is none for now, -ENOMEM
  * or -EIO. */
 int model_next_rehearsal(struct model *model, const struct base *base, uint64_t *ret_number)
     __attribute__((warn_unused_result));
 
-/* Learns that item once more. Returns 0, -ENOMEM or -EIO; after either the model must not be used
+/* Learns that item again. Returns 0, -ENOMEM or -EIO; after either the model must not be used
  * any more. */
 int model_rehearse(struct model *model, const struct model_item *item,
                    struct model_scratch *scratch) __attribute__((warn_unused_result));

@@ -194,8 +194,12 @@ int model_learn_weights(struct model *model, const struct model_item *item, bool
 int model_score_lanes(struct model *model, struct model_scratch *scratch)
     __attribute__((warn_unused_result));
 
-/* η for the next example. */
+/* η for the next example, and for one that is rehearsed. */
 double model_step(const struct model *model);
+double model_rehearsal_step(const struct model *model);
+
+/* Whether there are so many tags that steps differ from those for a few hundred. */
+bool model_is_large(const struct model *model);
 
 /* --- model_mark: the item at hand --- */
 

@@ -160,6 +160,23 @@ int weights_admit(struct weights *weights, const struct base *base, const struct
 int weights_learn(struct weights *weights, const struct weights_example *example,
                   struct weights_scratch *scratch) __attribute__((warn_unused_result));
 
+/* By how much the weights of an item's words shrink; all borrowed. */
+struct weights_shrinkage {
+    uint64_t number;                 /* of the example that comes next; what chance rounds by */
+    const struct weights_feature *x; /* its words, admitted */
+    size_t count;
+    double step; /* η, as it will be learned with */
+    double cost; /* C, what a loss weighs beside ½‖w‖² */
+};
+
+/*
+ * Shrinks the weights of an item's words by the item's part of w → w / (1 + r/C), r the weight's
+ * rate η/√(.1 + G), in all lanes; after a pass over all items each weight has shrunk about once.
+ * Biases do not shrink. Returns 0 or -ENOMEM; after that the weights must not be used any more.
+ */
+int weights_shrink(struct weights *weights, const struct weights_shrinkage *shrinkage)
+    __attribute__((warn_unused_result));
+
 /* Forgets a word with all its postings, stored ones included. Returns 0, -ENOMEM or -EIO. */
 int weights_forget_word(struct weights *weights, const struct base *base, uint32_t word)
     __attribute__((warn_unused_result));

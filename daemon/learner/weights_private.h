@@ -1,6 +1,6 @@
 /*
  * weights_private: the weights' own insides, for the files that are the weights together: weights
- * (life, storing), weights_score, weights_learn and weights_compact.
+ * (life, storing), weights_score, weights_learn, weights_shrink and weights_compact.
  */
 #ifndef UNDERTAG_WEIGHTS_PRIVATE_H
 #define UNDERTAG_WEIGHTS_PRIVATE_H

@@ -25,7 +25,8 @@ struct examples {
     uint32_t *x_words;
     float *x_values;
     uint32_t *given;
-    double *factors; /* by tag */
+    double *factors;       /* by tag */
+    double *again_factors; /* likewise, of a pair that is rehearsed */
     /* counted here */
     bool is_counted;
     uint32_t *word_counts;
@@ -46,9 +47,11 @@ static inline void *examples_array(FILE *file, uint64_t count, size_t size)
 
 static inline void examples_deinit(struct examples *examples)
 {
-    void *const owned[] = {examples->x_starts,    examples->given_starts, examples->x_words,
-                           examples->x_values,    examples->given,        examples->factors,
-                           examples->word_counts, examples->tag_counts,   examples->x,
+    void *const owned[] = {examples->x_starts,      examples->given_starts,
+                           examples->x_words,       examples->x_values,
+                           examples->given,         examples->factors,
+                           examples->again_factors, examples->word_counts,
+                           examples->tag_counts,    examples->x,
                            examples->item_given};
     for (size_t i = 0; i < sizeof owned / sizeof owned[0]; i++) {
         free(owned[i]);
@@ -67,12 +70,14 @@ static inline bool examples_read_arrays(FILE *file, struct examples *examples)
     examples->x_values = examples_array(file, examples->x_starts[items], sizeof(float));
     examples->given = examples_array(file, examples->given_starts[items], sizeof(uint32_t));
     examples->factors = examples_array(file, examples->tags, sizeof(double));
+    examples->again_factors = examples_array(file, examples->tags, sizeof(double));
     examples->word_counts = calloc(examples->words, sizeof(uint32_t));
     examples->tag_counts = calloc(examples->tags, sizeof(uint32_t));
     examples->x = calloc(examples->words, sizeof *examples->x);
     examples->item_given = calloc(examples->tags, sizeof *examples->item_given);
     return examples->x_words && examples->x_values && examples->given && examples->factors &&
-           examples->word_counts && examples->tag_counts && examples->x && examples->item_given;
+           examples->again_factors && examples->word_counts && examples->tag_counts &&
+           examples->x && examples->item_given;
 }
 
 /* 0, or -1 with a sentence on standard error. */
@@ -126,10 +131,18 @@ static inline void examples_count(struct examples *examples, uint64_t item)
     }
 }
 
-/* Valid until the next item is taken. `pass` is from 0. */
-static inline struct example examples_take(struct examples *examples, uint64_t item, uint64_t pass,
-                                           double step)
+/* How a pass learns; a cost above 0 is one of rehearsal. */
+struct examples_way {
+    uint64_t pass; /* from 0 */
+    double step;
+    double cost;
+};
+
+/* Valid until the next item is taken. */
+static inline struct example examples_take(struct examples *examples, uint64_t item,
+                                           const struct examples_way *way)
 {
+    const double *factors = way->cost > 0.0 ? examples->again_factors : examples->factors;
     uint64_t start = examples->given_starts[item];
     size_t count = (size_t)(examples->given_starts[item + 1] - start);
     for (size_t i = 0; i < count; i++) {
@@ -137,26 +150,27 @@ static inline struct example examples_take(struct examples *examples, uint64_t i
         examples->item_given[i] =
             (struct weights_given){.tag = tag,
                                    .tag_count = examples->tag_counts[tag],
-                                   .factors = {[WEIGHTS_MAIN] = examples->factors[tag]}};
+                                   .factors = {[WEIGHTS_MAIN] = factors[tag]}};
     }
-    return (struct example){.number = pass * examples->items + item + 1,
+    return (struct example){.number = way->pass * examples->items + item + 1,
                             .x = examples->x,
                             .count = examples_x(examples, item),
                             .given = examples->item_given,
                             .given_count = count,
-                            .step = step};
+                            .step = way->step,
+                            .cost = way->cost};
 }
 
 /* One pass over the items to be learned; the first one counts words and tags, unless they have been
  * counted before. 0 or -ENOMEM. */
-static inline int examples_learn(struct examples *examples, uint64_t pass, double step,
+static inline int examples_learn(struct examples *examples, const struct examples_way *way,
                                  const struct learner *learner)
 {
     for (uint64_t item = 0; item < examples->learned; item++) {
         if (!examples->is_counted) {
             examples_count(examples, item);
         }
-        const struct example example = examples_take(examples, item, pass, step);
+        const struct example example = examples_take(examples, item, way);
         int result = learner->learn(learner->self, &example);
         if (result < 0) {
             return result;

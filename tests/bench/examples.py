@@ -19,6 +19,7 @@ DEFAULT_SPECIFICITY = -1  # the daemon's
 NO_TAG = 0xFFFFFFFF
 LARGE_VOCABULARY = 2000  # from here the daemon learns with the larger step
 SMALL_STEP, LARGE_STEP = 0.3, 0.5
+AGAIN_TIMES, AGAIN_POWER = 1.15, 1.15
 
 
 def step_of(tags):
@@ -28,7 +29,17 @@ def step_of(tags):
 
 def again_of(tags):
     """The part of the step with which the daemon rehearses, for a vocabulary of this size."""
-    return 1 / 5 if tags >= LARGE_VOCABULARY else 1 / 3
+    return 1 / 10 if tags >= LARGE_VOCABULARY else 1 / 3
+
+
+def cost_of(tags):
+    """What a loss weighs beside the ridge when the daemon rehearses, for a vocabulary of this size."""
+    return 1.0 if tags >= LARGE_VOCABULARY else 0.3
+
+
+def again_factors(factor):
+    """The factors of pairs that the daemon rehearses."""
+    return AGAIN_TIMES * factor ** AGAIN_POWER
 
 
 def factors(counts, items, even_out=True):
@@ -50,6 +61,7 @@ class Examples:
         self.counts, self.items = self.truth_train.getnnz(axis=0), self.truth_train.shape[0]
         self.step = step_of(self.truth_train.shape[1])
         self.again = self.step * again_of(self.truth_train.shape[1])
+        self.cost = cost_of(self.truth_train.shape[1])
         self._write()
 
     def _write(self):
@@ -64,12 +76,14 @@ class Examples:
             joined(x, "indices", "<u4").tofile(file)
             joined(x, "data", "<f4").tofile(file)
             joined(given, "indices", "<u4").tofile(file)
-            factors(self.counts, self.items).astype("<f8").tofile(file)
+            factor = factors(self.counts, self.items)
+            factor.astype("<f8").tofile(file)
+            again_factors(factor).astype("<f8").tofile(file)
 
     def learn(self, kind, passes=1, specificity=DEFAULT_SPECIFICITY):
         """What examples_bench says of a learner, and the best tags of each item asked about, pass by pass."""
         command = [os.path.join(self.build, "bench/examples_bench"), self.path, self.ranks, kind, str(passes),
-                   str(self.step), str(self.again), str(specificity)]
+                   str(self.step), str(self.again), str(self.cost), str(specificity)]
         said = json.loads(subprocess.run(command, check=True, capture_output=True, text=True).stdout)
         ranked = np.fromfile(self.ranks, dtype="<u4").astype(np.int64)
         ranked[ranked == NO_TAG] = -1

@@ -2,11 +2,11 @@
  * examples_bench: a learner alone, its features given: passes over the items to be learned in the
  * processor's time, and after each pass the best tags of every item to be asked about.
  *
- *   examples_bench EXAMPLES RANKS weights|plain PASSES STEP AGAIN SPECIFICITY
+ *   examples_bench EXAMPLES RANKS weights|plain PASSES STEP AGAIN COST SPECIFICITY
  *
- * The first pass takes the STEP, what comes after it the step AGAIN. RANKS gets u32 tag numbers,
- * DEPTH an item, pass after pass. A SPECIFICITY below 0 is the daemon's default; the plain learner
- * has none.
+ * The first pass takes the STEP; those after it rehearse, with the step AGAIN and shrinkage by
+ * COST. RANKS gets u32 tag numbers, DEPTH an item, pass after pass. A SPECIFICITY below 0 is the
+ * daemon's default; the plain learner has none.
  */
 #include <string.h>
 
@@ -30,13 +30,21 @@ static int rank_all(struct examples *examples, const struct learner *learner, FI
     return 0;
 }
 
+/* The first pass, and the others. */
+struct ways {
+    struct examples_way first;
+    struct examples_way again;
+};
+
 static int run(struct examples *examples, const struct learner *learner, FILE *ranks, long passes,
-               double step, double again)
+               const struct ways *ways)
 {
     printf("{\"seconds\": [");
     for (long pass = 0; pass < passes; pass++) {
         double begun = bench_cpu_s();
-        if (examples_learn(examples, (uint64_t)pass, pass == 0 ? step : again, learner) < 0) {
+        struct examples_way way = pass == 0 ? ways->first : ways->again;
+        way.pass = (uint64_t)pass;
+        if (examples_learn(examples, &way, learner) < 0) {
             return -1;
         }
         printf("%s%.6f", pass > 0 ? ", " : "", bench_cpu_s() - begun);
@@ -53,9 +61,9 @@ int main(int argc, char **argv)
 {
     struct examples examples;
     struct learner learner = {0};
-    if (argc != 8) {
+    if (argc != 9) {
         (void)fprintf(stderr,
-                      "usage: examples_bench EXAMPLES RANKS weights|plain PASSES STEP AGAIN "
+                      "usage: examples_bench EXAMPLES RANKS weights|plain PASSES STEP AGAIN COST "
                       "SPECIFICITY\n");
         return EXIT_FAILURE;
     }
@@ -70,10 +78,12 @@ int main(int argc, char **argv)
     }
     int code = strcmp(argv[3], "plain") == 0
                    ? plain_learner_new(examples.words, examples.tags, &learner)
-                   : weights_learner_new(examples.tags, strtod(argv[7], NULL), &learner);
+                   : weights_learner_new(examples.tags, strtod(argv[8], NULL), &learner);
     if (code == 0) {
-        code = run(&examples, &learner, ranks, strtol(argv[4], NULL, 10), strtod(argv[5], NULL),
-                   strtod(argv[6], NULL));
+        const struct ways ways = {
+            .first = {.step = strtod(argv[5], NULL)},
+            .again = {.step = strtod(argv[6], NULL), .cost = strtod(argv[7], NULL)}};
+        code = run(&examples, &learner, ranks, strtol(argv[4], NULL, 10), &ways);
         learner.free(learner.self);
     }
     examples_deinit(&examples);

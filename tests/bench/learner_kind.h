@@ -18,6 +18,7 @@ struct example {
     const struct weights_given *given; /* no tag twice */
     size_t given_count;
     double step; /* η */
+    double cost; /* C, of an example that is rehearsed: its weights shrink before; otherwise 0 */
 };
 
 struct learner {

@@ -91,7 +91,7 @@ static int measure(struct examples *examples, double specificity, double step, c
         return -1;
     }
     double seconds = -1.0;
-    if (examples_learn(examples, 0, step, &learner) == 0) {
+    if (examples_learn(examples, &(const struct examples_way){.step = step}, &learner) == 0) {
         seconds = scoring_time(examples, &learner);
         if (weights_learner_count(&learner, postings, examples->words) < 0) {
             seconds = -1.0;

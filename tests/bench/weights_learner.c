@@ -30,7 +30,13 @@ static int learn(void *self, const struct example *example)
                                            .given = example->given,
                                            .given_count = example->given_count,
                                            .step = example->step};
+    const struct weights_shrinkage shrinkage = {.number = example->number,
+                                                .x = example->x,
+                                                .count = example->count,
+                                                .step = example->step,
+                                                .cost = example->cost};
     if (weights_admit(learner->weights, NO_BASE, example->x, example->count) < 0 ||
+        (example->cost > 0.0 && weights_shrink(learner->weights, &shrinkage) < 0) ||
         weights_score(learner->weights, NO_BASE, example->x, example->count, LANES,
                       learner->scratch) < 0) {
         return -ENOMEM;

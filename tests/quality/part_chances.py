@@ -39,7 +39,7 @@ def judge(verdicts, name, bands):
                          f"true {targets.mean():.3f})", error, POOLED if band == "all" else BY_BAND)
 
 
-def run(connection, corpus, verdicts, options):
+def run(connection, corpus, verdicts, options, picture="reliability.png"):
     """Drafts of the last fifth against their complete tags; samples of filed items against what was hidden."""
     asked = trial.ask(connection, corpus.split.test, corpus.numbers)
     panels = {"drafts": by_band(*asked, corpus.truth_test, corpus.counts)}
@@ -48,6 +48,6 @@ def run(connection, corpus, verdicts, options):
         panels[name] = by_band(*asked, corpus.hidden_train[rows], corpus.counts)
     for name, bands in panels.items():
         judge(verdicts, name, bands)
-    path = os.path.join(options.kept, "reliability.png")
+    path = os.path.join(options.kept, picture)
     drawn = plots.reliability(path, panels)
     verdicts.say(f"drawn in {path}" if drawn else "no picture: matplotlib is not here (package python3-matplotlib)")

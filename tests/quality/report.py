@@ -70,8 +70,8 @@ def lines(name, result):
            f"asked in {result['asked_s']:.1f} s (this client's time included)")
     rehearsed = result["rehearsed"] or {"figures": None}
     if rehearsed["figures"]:
-        yield f"rehearsed once in {rehearsed['seconds']:.1f} s, after a restart"
-    again = {"rehearsed once": rehearsed["figures"]} if rehearsed["figures"] else {}
+        yield f"rehearsed in {rehearsed['seconds']:.1f} s, after a restart"
+    again = {"rehearsed": rehearsed["figures"]} if rehearsed["figures"] else {}
     uncorrected = {"uncorrected": result["uncorrected"]} if result["uncorrected"] else {}
     yield from figure_table({"undertag": result["undertag"], **again, **uncorrected,
                              **{BATCH_NAMES[kind]: kept["figures"] for kind, kept in result["batch"].items()}})

@@ -18,6 +18,7 @@ import part_chances
 import part_completeness
 import part_gaps
 import part_propensities
+import part_rehearsed
 import part_rulings
 import part_standing
 import split as splits
@@ -29,7 +30,7 @@ import wire
 PARTS = {"chances": part_chances.run, "gaps": part_gaps.run, "standing": part_standing.run,
          "completeness": part_completeness.run, "rulings": part_rulings.run}
 ON_ONE_DAEMON = (("chances", "gaps", "standing"), ("completeness",), ("rulings",))
-ALL_PARTS = (*PARTS, "propensities")
+ALL_PARTS = (*PARTS, "rehearsed", "propensities")
 METHOD_NOT_FOUND = "(-32601,"
 
 
@@ -65,6 +66,8 @@ def judged_parts(split, corpus, options, parts):
         wanted = [part for part in group if part in parts]
         if wanted:
             yield from on_one_daemon(wanted, corpus, options)
+    if "rehearsed" in parts:
+        yield carried_out("rehearsed", lambda judged: part_rehearsed.run(corpus, judged, options))
     if "propensities" in parts:
         yield carried_out("propensities", lambda judged: part_propensities.run(split, judged, options))
 

@@ -111,14 +111,13 @@ def settle(connection):
     wait_for(settled, SETTLE_CAP_S, "learning all that was filed")
 
 
-def rehearse(connection, items):
-    """Waits until so many items have been rehearsed in one round; False where the daemon does not rehearse."""
+def rehearse(connection):
+    """Waits until no item's turn is due any more; False where the daemon does not rehearse."""
     if "rehearsal" not in connection.call("daemon.state"):
         return False
 
     def rehearsed():
-        rehearsal = connection.call("daemon.state")["rehearsal"]
-        return rehearsal["passes"] >= 1 and rehearsal["items"] >= items
+        return connection.call("daemon.state")["rehearsal"]["due"] == 0
     wait_for(rehearsed, REHEARSAL_CAP_S, "rehearsing all that was filed")
     return True
 

@@ -4,6 +4,7 @@
  * Input: lines, each the name of a method, a blank and its params. Each is answered; what is
  * refused has a sentence and names a member, and changes nothing; what is filed can be read.
  */
+#include <unistd.h>
 #include <uv.h>
 
 #include "daemon/call_queue.h"
@@ -56,7 +57,7 @@ static void open_world(void)
     world.queue = (struct call_queue){.table = methods_table(world.methods),
                                       .user = &world,
                                       .ended = on_ended,
-                                      .peer = {.uid = 1911}};
+                                      .peer = {.uid = geteuid()}};
     world.inputs = 0;
 }
 

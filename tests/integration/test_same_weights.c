@@ -16,7 +16,7 @@
 #include "tests/integration/weights_checksum.h"
 
 enum {
-    CHANGES = 900,
+    CHANGES = 1600,
     WINDOW = 32, /* changes under way */
     WORDS = 60,  /* most of them in no other entry: more than 64 MiB have room for unstored */
     TEXT_BYTES = 12 * WORDS + 1

@@ -3,9 +3,15 @@
 #include <errno.h>
 #include <pthread.h>
 #include <stdlib.h>
+#include <sys/resource.h>
+#include <unistd.h>
 
 #include "daemon/clock.h"
 #include "daemon/sync.h"
+
+enum {
+    NICE = 5
+};
 
 struct storer {
     struct backlog *backlog;
@@ -50,6 +56,9 @@ static void *run(void *argument)
 {
     struct storer *storer = argument;
     struct model_store_writing *writing = NULL;
+    /* Of this thread alone: whoever asks goes first. It may always be nicer; where it cannot be, it
+     * goes on all the same. */
+    (void)setpriority(PRIO_PROCESS, (id_t)gettid(), NICE);
     while ((writing = wait_for_writing(storer))) {
         commit(storer, writing);
     }

@@ -66,6 +66,11 @@ static int seal(struct trainer *trainer, struct model_store_writing **ret_writin
     shared_model_write(shared);
     code = model_seal(shared->model);
     shared_model_unlock(shared);
+    for (bool more = code == 0; more;) {
+        shared_model_write(shared);
+        more = model_seal_words(shared->model);
+        shared_model_unlock(shared);
+    }
     if (code < 0) {
         model_store_abort(*ret_writing);
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
@@ -98,9 +103,11 @@ void trainer_store_if_due(struct trainer *trainer)
 static void note_stored(struct trainer *trainer)
 {
     struct shared_model *shared = trainer->settings.shared;
-    shared_model_write(shared);
-    model_stored(shared->model);
-    shared_model_unlock(shared);
+    for (bool more = true; more;) {
+        shared_model_write(shared);
+        more = model_stored(shared->model);
+        shared_model_unlock(shared);
+    }
     /* The pages that storing took lie in holes now; with a small budget they are a good part of it.
      */
     if (trainer->settings.memory_bytes <= SMALL_BUDGET) {

@@ -175,18 +175,23 @@ int model_seal(struct model *model)
     if (weights_seal(model->weights) < 0 || worklist_seal(model->worklist) < 0) {
         return -ENOMEM; /* a part may be sealed, and comes out again */
     }
-    dictionary_seal(model->dictionary);
     seal_figures(model);
     return 0;
 }
 
-void model_stored(struct model *model)
+bool model_seal_words(struct model *model)
+{
+    return dictionary_seal(model->dictionary);
+}
+
+/* The words last, and a step of them beside nothing else: all else is done with the first call. */
+bool model_stored(struct model *model)
 {
     weights_stored(model->weights);
     worklist_stored(model->worklist);
-    dictionary_stored(model->dictionary);
     standing_stored(model->standing);
     model->sealed = (struct figures_sealed){0};
+    return dictionary_stored(model->dictionary);
 }
 
 void model_clean(struct model *model)

@@ -13,6 +13,7 @@
 #ifndef UNDERTAG_MODEL_PARTS_H
 #define UNDERTAG_MODEL_PARTS_H
 
+#include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
 
@@ -83,9 +84,14 @@ struct model_sink {
 int model_changes(const struct model *model, const struct model_sink *sink)
     __attribute__((warn_unused_result));
 
-/* Returns 0, or -ENOMEM with everything still to be stored. */
+/* Returns 0, or -ENOMEM with everything still to be stored. Then the words are sealed, by steps of
+ * a bounded size, until model_seal_words says that there are no more; nothing may be learned in
+ * between, while whoever asks may come. */
 int model_seal(struct model *model) __attribute__((warn_unused_result));
-void model_stored(struct model *model);
+bool model_seal_words(struct model *model);
+
+/* Likewise by steps: says whether there are more to be taken. */
+bool model_stored(struct model *model);
 
 /* Everything is stored, sealed or not. */
 void model_clean(struct model *model);

@@ -341,32 +341,39 @@ int dictionary_changes(const struct dictionary *dictionary,
     return result == 0 ? tell(&dictionary->lists[DICTIONARY_CHANGED], put, user) : result;
 }
 
-static void move_all(struct dictionary *dictionary, enum dictionary_state from,
-                     enum dictionary_state to)
+/* Moves at most *left words, and counts them down. */
+static void move_some(struct dictionary *dictionary, enum dictionary_state from,
+                      enum dictionary_state to, size_t *left)
 {
-    while (dictionary->lists[from].first) {
+    for (; *left > 0 && dictionary->lists[from].first; (*left)--) {
         move(dictionary, dictionary->lists[from].first, to);
     }
 }
 
-void dictionary_seal(struct dictionary *dictionary)
+bool dictionary_seal(struct dictionary *dictionary)
 {
-    move_all(dictionary, DICTIONARY_CHANGED, DICTIONARY_SEALED);
-    move_all(dictionary, DICTIONARY_FORGOTTEN, DICTIONARY_LEAVING);
+    size_t left = DICTIONARY_STEP;
+    move_some(dictionary, DICTIONARY_CHANGED, DICTIONARY_SEALED, &left);
+    move_some(dictionary, DICTIONARY_FORGOTTEN, DICTIONARY_LEAVING, &left);
+    return left == 0;
 }
 
-void dictionary_stored(struct dictionary *dictionary)
+bool dictionary_stored(struct dictionary *dictionary)
 {
-    while (dictionary->lists[DICTIONARY_LEAVING].first) {
+    size_t left = DICTIONARY_STEP;
+    for (; left > 0 && dictionary->lists[DICTIONARY_LEAVING].first; left--) {
         drop(dictionary, dictionary->lists[DICTIONARY_LEAVING].first);
     }
-    move_all(dictionary, DICTIONARY_SEALED, DICTIONARY_CLEAN);
+    move_some(dictionary, DICTIONARY_SEALED, DICTIONARY_CLEAN, &left);
+    return left == 0;
 }
 
 void dictionary_clean(struct dictionary *dictionary)
 {
-    dictionary_seal(dictionary);
-    dictionary_stored(dictionary);
+    while (dictionary_seal(dictionary)) {
+    }
+    while (dictionary_stored(dictionary)) {
+    }
 }
 
 /* The clean words are a queue: the one in front goes, unless it was interned again since it came to

@@ -15,6 +15,7 @@
 #ifndef UNDERTAG_DICTIONARY_H
 #define UNDERTAG_DICTIONARY_H
 
+#include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
 
@@ -26,7 +27,8 @@ struct dictionary;
 #define DICTIONARY_NONE UINT32_MAX
 
 enum {
-    DICTIONARY_TRIM = 1024
+    DICTIONARY_TRIM = 1024,
+    DICTIONARY_STEP = 2048 /* words sealed, or stored, at a time */
 };
 
 /* To be stored beside the words, and put back at a start. */
@@ -97,10 +99,11 @@ size_t dictionary_changed_count(const struct dictionary *dictionary);
 /*
  * What has changed is on its way to the base, as it is now; what was sealed before and did not
  * arrive goes with it. dictionary_stored: it has arrived, and every base that is used from now on
- * has it.
+ * has it. Each does DICTIONARY_STEP words and says whether there are more: it is called until there
+ * are none, with no change in between; whoever looks words up may come in between.
  */
-void dictionary_seal(struct dictionary *dictionary);
-void dictionary_stored(struct dictionary *dictionary);
+bool dictionary_seal(struct dictionary *dictionary);
+bool dictionary_stored(struct dictionary *dictionary);
 
 /* Both at once, for all changes. */
 void dictionary_clean(struct dictionary *dictionary);

@@ -332,6 +332,8 @@ static inline void memory_seal(const struct memory *memory, struct memory *arriv
     memcpy(arriving, memory, sizeof *arriving);
     memory_take(arriving, model);
     assert_int_equal(model_seal(model), 0);
+    while (model_seal_words(model)) {
+    }
 }
 
 /* It has arrived; the model is yet to be told. */

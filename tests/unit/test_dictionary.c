@@ -239,11 +239,11 @@ static void what_is_sealed_is_told_until_it_is_stored(void **state)
     struct fixture *fixture = *state;
     (void)intern_counted(fixture, "fog", 3);
     dictionary_remove(fixture->dictionary, intern(fixture, "bell"));
-    dictionary_seal(fixture->dictionary);
+    assert_false(dictionary_seal(fixture->dictionary));
     tell_list(fixture);
     assert_int_equal(fixture->list->told_count, 2);
     assert_int_equal(dictionary_changed_count(fixture->dictionary), 2);
-    dictionary_stored(fixture->dictionary);
+    assert_false(dictionary_stored(fixture->dictionary));
     tell_list(fixture);
     assert_int_equal(fixture->list->told_count, 0);
 }
@@ -253,10 +253,10 @@ static void a_word_that_changes_while_it_is_stored_is_still_to_be_stored(void **
     struct fixture *fixture = *state;
     (void)intern_counted(fixture, "fog", 3);
     uint32_t bell = intern_counted(fixture, "bell", 1);
-    dictionary_seal(fixture->dictionary);
+    assert_false(dictionary_seal(fixture->dictionary));
     (void)intern_counted(fixture, "fog", 4);
     dictionary_remove(fixture->dictionary, bell);
-    dictionary_stored(fixture->dictionary);
+    assert_false(dictionary_stored(fixture->dictionary));
     tell_list(fixture);
     assert_int_equal(fixture->list->told_count, 2);
     assert_told(fixture, 0, true, "bell", bell, 0);
@@ -269,10 +269,10 @@ static void a_word_on_its_way_out_of_the_base_is_not_found(void **state)
     uint32_t fog = intern_counted(fixture, "fog", 3);
     store(fixture);
     dictionary_remove(fixture->dictionary, fog);
-    dictionary_seal(fixture->dictionary);
+    assert_false(dictionary_seal(fixture->dictionary));
     assert_int_equal(find(fixture, "fog").number, DICTIONARY_NONE); /* the base has it */
     assert_int_equal(intern(fixture, "fog"), 1);
-    dictionary_stored(fixture->dictionary);
+    assert_false(dictionary_stored(fixture->dictionary));
     assert_int_equal(find(fixture, "fog").number, 1);
 }
 
@@ -280,12 +280,12 @@ static void a_word_on_its_way_to_the_base_is_not_let_go_of(void **state)
 {
     struct fixture *fixture = *state;
     (void)intern_counted(fixture, "fog", 3);
-    dictionary_seal(fixture->dictionary);
+    assert_false(dictionary_seal(fixture->dictionary));
     for (int i = 0; i < 2; i++) {
         dictionary_trim(fixture->dictionary, 0);
     }
     assert_true(is_in_memory(fixture, "fog"));
-    dictionary_stored(fixture->dictionary);
+    assert_false(dictionary_stored(fixture->dictionary));
     for (int i = 0; i < 2; i++) {
         dictionary_trim(fixture->dictionary, 0);
     }
@@ -343,6 +343,25 @@ enum {
 static void name_of(uint32_t number, char term[TERM_ROOM])
 {
     (void)snprintf(term, TERM_ROOM, "berth%u", number);
+}
+
+/* A step more than two. */
+static void many_words_are_sealed_and_stored_by_steps(void **state)
+{
+    struct fixture *fixture = *state;
+    for (uint32_t i = 0; i <= 2 * DICTIONARY_STEP; i++) {
+        char term[TERM_ROOM];
+        name_of(i, term);
+        (void)intern(fixture, term);
+    }
+    assert_true(dictionary_seal(fixture->dictionary));
+    assert_true(dictionary_seal(fixture->dictionary));
+    assert_false(dictionary_seal(fixture->dictionary));
+    assert_true(dictionary_stored(fixture->dictionary));
+    assert_true(dictionary_stored(fixture->dictionary));
+    assert_int_equal(dictionary_changed_count(fixture->dictionary), 1);
+    assert_false(dictionary_stored(fixture->dictionary));
+    assert_int_equal(dictionary_changed_count(fixture->dictionary), 0);
 }
 
 static void assert_is_as_listed(const struct fixture *fixture, const uint32_t *listed)
@@ -462,6 +481,7 @@ int main(void)
         dictionary_test(a_word_forgotten_twice_is_told_under_both_numbers),
         dictionary_test(what_is_sealed_is_told_until_it_is_stored),
         dictionary_test(a_word_that_changes_while_it_is_stored_is_still_to_be_stored),
+        dictionary_test(many_words_are_sealed_and_stored_by_steps),
         dictionary_test(a_word_on_its_way_out_of_the_base_is_not_found),
         dictionary_test(a_word_on_its_way_to_the_base_is_not_let_go_of),
         dictionary_test(what_ends_the_telling_of_changed_words_is_returned),

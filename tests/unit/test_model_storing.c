@@ -131,7 +131,8 @@ struct passage {
 static void move_passage(struct passage *passage, struct pair *pair, uint32_t drawn)
 {
     if (passage->is_there) {
-        model_stored(pair->other.model);
+        while (model_stored(pair->other.model)) {
+        }
         passage->is_begun = false;
         passage->is_there = false;
     } else if (!passage->is_begun && drawn < 3) {

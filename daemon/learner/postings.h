@@ -81,7 +81,8 @@ int postings_walk_next(struct postings_walk *walk, const uint32_t **ret_numbers,
 int postings_admit(struct postings *postings, const struct base *base, uint32_t word)
     __attribute__((warn_unused_result));
 
-/* The chunks of an admitted word: how many there are, and by chunk 1 + its place. Valid until something is admitted, appended, dropped or trimmed. */
+/* The chunks of an admitted word: how many there are, and by chunk 1 + its place. Valid until
+ * something is admitted, appended, dropped or trimmed. */
 uint32_t postings_chunks(const struct postings *postings, uint32_t word,
                          const uint32_t **ret_places);
 

@@ -295,6 +295,24 @@ void wait_until_state(struct peer *peer, const char *member, json_int_t value)
     }
 }
 
+json_int_t ask_model_bytes(struct peer *peer)
+{
+    return whole(json_object_get(ask(peer, "daemon.state", "{}"), "disk"), "model");
+}
+
+void wait_until_model_takes(struct peer *peer, json_int_t bytes)
+{
+    enum {
+        ASK_EVERY_MS = 20
+    };
+    for (int waited_ms = 0; ask_model_bytes(peer) <= bytes; waited_ms += ASK_EVERY_MS) {
+        if (waited_ms > PATIENCE_MS) {
+            fail_msg("the model's file never had more than %lld bytes", (long long)bytes);
+        }
+        (void)poll(NULL, 0, ASK_EVERY_MS);
+    }
+}
+
 void wait_until_learned(struct peer *peer)
 {
     wait_until_state(peer, "learned", ask_seq(peer));

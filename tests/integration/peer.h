@@ -86,6 +86,12 @@ void wait_until_state(struct peer *peer, const char *member, json_int_t value);
 /* Asks until all that is acknowledged is learned. */
 void wait_until_learned(struct peer *peer);
 
+/* Bytes of the stored model's file. */
+json_int_t ask_model_bytes(struct peer *peer);
+
+/* Asks until it has more than so many: the model is stored while learning goes on. */
+void wait_until_model_takes(struct peer *peer, json_int_t bytes);
+
 /* --- looking into JSON --- */
 
 json_int_t whole(const json_t *object, const char *member);

@@ -184,28 +184,26 @@ static void stored_after_each_change_the_weights_are_the_same(void **state)
 
 /* --- memory ---------------------------------------------------------------------------------- */
 
-static json_int_t model_on_disk(struct peer *peer)
-{
-    return whole(json_object_get(ask(peer, "daemon.state", "{}"), "disk"), "model");
-}
-
 /* With nothing but memory to have the model stored: little of it has, much has not. */
 static void with_little_memory_the_weights_are_those_of_much(void **state)
 {
     static const char SELDOM[] = "flush_every_ms=3600000";
-    static const char *const BUDGETS[] = {"memory_budget=64MiB", "memory_budget=1GiB"};
+    static const char *const BUDGETS[] = {"memory_budget=1GiB", "memory_budget=64MiB"};
     (void)state;
-    json_int_t before_the_end[2];
+    json_int_t unstored = 0; /* bytes of a model of which nothing is */
     for (size_t i = 0; i < 2; i++) {
         void *made = service_new(BUDGETS[i], SELDOM, NULL);
         struct service *service = made;
         feed_up_to_the_end(service, 0);
         wait_until_learned(&service->peer);
-        before_the_end[i] = model_on_disk(&service->peer);
+        if (i == 0) {
+            unstored = ask_model_bytes(&service->peer);
+        } else {
+            wait_until_model_takes(&service->peer, 2 * unstored);
+        }
         assert_true(stop_and_sum(service) == undisturbed);
         assert_int_equal(service_tear_down(&made), 0);
     }
-    assert_true(before_the_end[0] > 2 * before_the_end[1]);
 }
 
 #define TEST_OF(name, set_up) cmocka_unit_test_setup_teardown(name, set_up, service_tear_down)

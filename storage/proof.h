@@ -9,8 +9,9 @@
 #include "storage/codec.h"
 #include "storage/kv.h"
 
+/* A mark and a checksum. Five bytes, so that no single bit of a value's length takes it off. */
 enum {
-    PROOF_BYTES = 4
+    PROOF_BYTES = 5
 };
 
 /* Ends the value of a key. */

@@ -85,11 +85,6 @@ int model_store_begin(struct model_store *store, struct model_store_writing **re
     return STORE_OK;
 }
 
-uint64_t model_store_writing_bytes(const struct model_store_writing *writing)
-{
-    return kv_batch_bytes(writing->batch) + writing->record.capacity;
-}
-
 int model_store_commit(struct model_store_writing *writing, struct store_error *error)
 {
     int result = kv_batch_commit(writing->batch, writing->kv, error);

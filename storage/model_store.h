@@ -139,8 +139,6 @@ int model_store_load(struct model_store *store, const struct model_store_sink *s
  */
 int model_store_begin(struct model_store *store, struct model_store_writing **ret_writing,
                       struct store_error *error) __attribute__((warn_unused_result));
-/* Bytes of memory that a writing takes. */
-uint64_t model_store_writing_bytes(const struct model_store_writing *writing);
 int model_store_commit(struct model_store_writing *writing, struct store_error *error)
     __attribute__((warn_unused_result));
 void model_store_abort(struct model_store_writing *writing);

@@ -6,6 +6,7 @@
 
 #include <errno.h>
 #include <inttypes.h>
+#include <signal.h>
 #include <stdlib.h>
 #include <string.h>
 #include <sys/wait.h>
@@ -48,16 +49,21 @@ static void say_fault(void *user, const char *sentence)
     SAY(verifying, "%s", shown);
 }
 
-static int fail(const struct verifying *verifying, const struct store_error *error)
-{
-    SAY(verifying, "%s", error->text[0] ? error->text : store_code_sentence(error->code));
-    return error->code == STORE_CORRUPT ? EX_DATAERR : EX_IOERR;
-}
-
 static int say_faults(const struct verifying *verifying, uint64_t faults)
 {
     SAY(verifying, "%" PRIu64 " %s", faults, faults == 1 ? "fault" : "faults");
     return EX_DATAERR;
+}
+
+/* LMDB goes on with nothing once a page could not be read: what it says then follows from a fault
+ * that was told. */
+static int fail(const struct verifying *verifying, const struct store_error *error, uint64_t faults)
+{
+    SAY(verifying, "%s", error->text[0] ? error->text : store_code_sentence(error->code));
+    if (faults > 0) {
+        return say_faults(verifying, faults);
+    }
+    return error->code == STORE_CORRUPT ? EX_DATAERR : EX_IOERR;
 }
 
 /* --- the store ----------------------------------------------------------------------------------
@@ -67,7 +73,7 @@ static int look_through_store(const struct verifying *verifying)
 {
     struct store *store = NULL;
     struct store_error error = {0};
-    struct verify_store_sums sums;
+    struct verify_store_sums sums = {0};
     const struct verify_sink sink = {.user = (void *)verifying, .fault = say_fault};
     int code = store_open(&verifying->settings, &store, &error);
     if (code == STORE_OK) {
@@ -75,7 +81,7 @@ static int look_through_store(const struct verifying *verifying)
     }
     store_close(store);
     if (code != STORE_OK) {
-        return fail(verifying, &error);
+        return fail(verifying, &error, sums.faults);
     }
     if (sums.faults > 0) {
         return say_faults(verifying, sums.faults);
@@ -119,7 +125,7 @@ static int look_through_model(const struct verifying *verifying)
     struct model_store *model = NULL;
     struct store_error error = {0};
     struct verify_origin origin;
-    struct verify_model_sums sums;
+    struct verify_model_sums sums = {0};
     char path[4096 + 16];
     const struct verify_sink sink = {.user = (void *)verifying, .fault = say_fault};
     (void)snprintf(path, sizeof path, "%s/model/data.mdb", verifying->settings.home); /* it fits */
@@ -139,7 +145,7 @@ static int look_through_model(const struct verifying *verifying)
         return say_no_model(verifying);
     }
     if (code != STORE_OK) {
-        return fail(verifying, &error);
+        return fail(verifying, &error, sums.faults);
     }
     if (sums.faults > 0) {
         return say_faults(verifying, sums.faults);
@@ -169,6 +175,19 @@ static int wait_for(const struct verifying *verifying, pid_t child)
     return WEXITSTATUS(status);
 }
 
+/*
+ * A damaged file may end the child, in LMDB or in ours: how it ended says it, in the parent's
+ * words. A sanitizer's own handlers would say it at length.
+ */
+static void end_quietly(void)
+{
+    static const int SIGNALS[] = {SIGSEGV, SIGBUS, SIGABRT, SIGFPE};
+    (void)freopen("/dev/null", "w", stderr); /* LMDB's assertions; without it they are only shown */
+    for (size_t i = 0; i < sizeof SIGNALS / sizeof SIGNALS[0]; i++) {
+        (void)signal(SIGNALS[i], SIG_DFL); /* fails only for numbers that are no signal */
+    }
+}
+
 static int look_through(struct verifying *verifying, const char *what,
                         int (*look)(const struct verifying *verifying))
 {
@@ -180,6 +199,7 @@ static int look_through(struct verifying *verifying, const char *what,
         return EX_OSERR;
     }
     if (child == 0) {
+        end_quietly();
         int code = look(verifying);
         _exit(fflush(verifying->out) == 0 ? code : EX_IOERR);
     }

@@ -173,6 +173,7 @@ static void turn_bits(struct service *service, const char *folder, const char *c
         turn_bit(path, at, bit);
         verify(service->daemon.home, NULL);
         told += run.exit_code == EX_DATAERR;
+        assert_true(run.exit_code == 0 || run.exit_code == EX_DATAERR);
         if (run.exit_code == 0) {
             assert_true(sum_of(directory, tables) == sound);
         }

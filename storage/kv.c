@@ -17,13 +17,6 @@ enum {
     MOST_READERS = 126
 };
 
-struct kv_txn {
-    struct kv *kv;
-    MDB_txn *txn;
-    bool write;
-    bool deletes; /* what it deleted is to be scrubbed once it is committed */
-};
-
 struct kv_cursor {
     MDB_cursor *cursor;
     struct kv_txn *txn;

@@ -1,5 +1,6 @@
 /*
- * kv: ordered tables of bytes in one LMDB environment. Only kv.c and kv_scrub.c know LMDB.
+ * kv: ordered tables of bytes in one LMDB environment. Only kv.c, kv_scrub.c and
+ * kv_pages.c know LMDB.
  *
  * One environment a directory and process. Any number of threads may read, each in a transaction of
  * its own; one thread writes at a time. Bytes handed out point into the map and are valid until the
@@ -130,6 +131,17 @@ int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
  * ms at most) until those that run have ended.
  */
 int kv_scrub(struct kv *kv, size_t most_pages, size_t *ret_left, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/*
+ * Looks through the pages of the file as of now, which LMDB trusts without a look: whether each
+ * table's are its own, hold entries that are whole and in order, as many as its head says, and
+ * whether any is in two tables' or in a table's and free. Each fault is told in a sentence;
+ * STORE_OK however many there are. Reads the file, not the map: no damage ends the process. May run
+ * beside a writer.
+ */
+typedef void (*kv_tell)(void *user, const char *sentence);
+int kv_check_pages(struct kv *kv, kv_tell tell, void *user, struct store_error *error)
     __attribute__((warn_unused_result));
 
 static inline struct kv_bytes kv_bytes_of(const void *data, size_t size)

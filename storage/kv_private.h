@@ -1,5 +1,6 @@
 /*
- * kv_private: the insides of an environment, for the two files that know LMDB: kv.c and kv_scrub.c.
+ * kv_private: the insides of an environment, for the files that know LMDB: kv.c, kv_scrub.c
+ * and kv_pages.c.
  */
 #ifndef UNDERTAG_KV_PRIVATE_H
 #define UNDERTAG_KV_PRIVATE_H
@@ -34,6 +35,13 @@ struct kv {
     MDB_env *env;         /* NULL only after it could not be opened again */
     size_t running;       /* transactions; the environment is closed only while there are none */
     bool is_shut;         /* new transactions wait */
+};
+
+struct kv_txn {
+    struct kv *kv;
+    MDB_txn *txn;
+    bool write;
+    bool deletes; /* what it deleted is to be scrubbed once it is committed */
 };
 
 /* Translates an LMDB code or an errno, once, here. `doing` goes into the sentence. */

@@ -13,8 +13,7 @@
  * page that is written behind the round's back comes from buffers that saw only what was there when
  * the round began. A power failure in the middle hurts nothing: no byte that is read is changed.
  *
- * The form of pages is that of LMDB's data version 1 (0.9). A page whose header does not look like
- * one is left alone.
+ * A page whose header does not look like one is left alone.
  */
 #include <errno.h>
 #include <stdint.h>
@@ -23,30 +22,12 @@
 #include <time.h>
 #include <unistd.h>
 
+#include "storage/kv_page.h"
 #include "storage/kv_private.h"
 
 enum {
     MOST_WAIT_NS = 20000000, /* for readers, before a round begins: 20 ms */
-    FREE_TABLE = 0,          /* LMDB's own list of free pages: transaction -> count, then pages */
-    FIRST_PAGE = 2,          /* behind the two that hold the roots */
-    LEAST_PAGES = 16,        /* to a call */
-    PAGE_BRANCH = 0x01,      /* flags of a page */
-    PAGE_LEAF = 0x02,        /* likewise */
-    PAGE_OVERFLOW = 0x04     /* the first of a run that holds one large value */
-};
-
-/* How every page begins. */
-struct page_header {
-    uint64_t number;
-    uint16_t padding;
-    uint16_t flags;
-    union {
-        struct {
-            uint16_t lower; /* the gap, in bytes from the page's start */
-            uint16_t upper;
-        } gap;
-        uint32_t run; /* pages of an overflow run */
-    } size;
+    LEAST_PAGES = 16         /* to a call */
 };
 
 enum page_kind {
@@ -96,7 +77,7 @@ static void mark_free(const struct stretch *stretch, const MDB_val *list)
 /* A long list stands in a run of pages of its own. */
 static void mark_run(const struct stretch *stretch, const MDB_val *list)
 {
-    struct page_header header;
+    struct kv_page_header header;
     memcpy(&header, (const unsigned char *)list->mv_data - sizeof header, sizeof header);
     size_t bytes = sizeof header + list->mv_size;
     for (uint32_t i = 0; i < header.size.run; i++) {
@@ -120,7 +101,7 @@ static int classify(MDB_env *env, const struct stretch *stretch)
     if (code != MDB_SUCCESS) {
         return code;
     }
-    code = mdb_cursor_open(txn, FREE_TABLE, &cursor);
+    code = mdb_cursor_open(txn, KV_FREE_TABLE, &cursor);
     if (code != MDB_SUCCESS) {
         mdb_txn_abort(txn);
         return code;
@@ -144,10 +125,10 @@ static void find_unread(const struct stretch *stretch, size_t index, size_t *ret
                         size_t *ret_to)
 {
     const struct page_state *state = &stretch->states[index];
-    struct page_header header;
+    struct kv_page_header header;
     memcpy(&header, stretch->bytes + index * stretch->page_bytes, sizeof header);
     bool is_table = header.number == stretch->first + index &&
-                    (header.flags == PAGE_BRANCH || header.flags == PAGE_LEAF) &&
+                    (header.flags == KV_PAGE_BRANCH || header.flags == KV_PAGE_LEAF) &&
                     header.size.gap.lower >= sizeof header &&
                     header.size.gap.lower <= header.size.gap.upper &&
                     header.size.gap.upper <= stretch->page_bytes;
@@ -320,7 +301,7 @@ static int begin_round(struct kv *kv, struct store_error *error)
             result =
                 kv_translate(kv, count_pages(kv, &kv->round.end, &page_bytes), "scrubbing", error);
         }
-        kv->round.next = FIRST_PAGE;
+        kv->round.next = KV_FIRST_PAGE;
         kv->round.due = false;
     }
     kv->is_shut = false;

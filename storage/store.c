@@ -17,11 +17,6 @@ static const char *const TABLE_NAMES[STORE_TABLES] = {
 
 static const char META_KEY[] = "store";
 
-struct store {
-    struct kv *kv;
-    unsigned char uuid[STORE_UUID_BYTES];
-};
-
 static struct kv_bytes meta_key(void)
 {
     return kv_bytes_of(META_KEY, sizeof META_KEY - 1);

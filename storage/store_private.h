@@ -19,6 +19,11 @@ enum store_table {
     STORE_TABLES
 };
 
+struct store {
+    struct kv *kv;
+    unsigned char uuid[STORE_UUID_BYTES];
+};
+
 struct store_view {
     struct store *store;
     struct kv_txn *txn;

@@ -1,9 +1,10 @@
 /*
- * verify: looks through everything that is stored, and changes nothing: checksums, and whether what
- * stands in different tables fits together. Counts are taken again from the items.
+ * verify: looks through everything that is stored, and changes nothing: the file's own pages, then
+ * checksums, and whether what stands in different tables fits together. Counts are taken again from
+ * the items.
  *
- * Open the store and the model with `read_only`. Damage to the file's own structure may end the
- * process that reads it: let it be one that nobody minds.
+ * Open the store and the model with `read_only`. Damage that is met on opening them may end the
+ * process: let it be one that nobody minds.
  */
 #ifndef UNDERTAG_VERIFY_H
 #define UNDERTAG_VERIFY_H

@@ -187,7 +187,11 @@ int verify_model(struct model_store *store, const struct verify_origin *origin,
     struct looking looking = {.origin = origin, .sink = sink, .sums = ret_sums};
     struct kv_txn *txn = NULL;
     *ret_sums = (struct verify_model_sums){0};
-    int code = kv_begin(store->kv, false, &txn, error);
+    int code = verify_pages(store->kv, sink, &ret_sums->faults, error);
+    if (code != STORE_OK || ret_sums->faults > 0) {
+        return code;
+    }
+    code = kv_begin(store->kv, false, &txn, error);
     if (code != STORE_OK) {
         return code;
     }

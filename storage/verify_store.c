@@ -226,7 +226,11 @@ int verify_store(struct store *store, const struct verify_sink *sink,
 {
     struct looking looking = {.sink = sink, .sums = ret_sums, .error = error};
     *ret_sums = (struct verify_store_sums){0};
-    int code = store_read(store, &looking.view, error);
+    int code = verify_pages(store->kv, sink, &ret_sums->faults, error);
+    if (code != STORE_OK || ret_sums->faults > 0) {
+        return code;
+    }
+    code = store_read(store, &looking.view, error);
     if (code != STORE_OK) {
         return code;
     }

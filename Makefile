@@ -5,6 +5,7 @@
 #   make test       unit, integration and reference tests
 #   make lint       format check, clang-tidy, cppcheck, a clang build, the units of systemd
 #   make sanitize   the tests under ASan+UBSan and TSan; make valgrind: the unit tests
+#   make coverage   the share of branches that the tests take
 #   make fuzz       each fuzz target for FUZZ_SECONDS, under ASan and UBSan
 #   make corpora    D and W from Debian's own packages; make quality, make bench: figures on them
 #   make install    DESTDIR, PREFIX and SYSCONFDIR as usual
@@ -63,8 +64,8 @@ FUZZERS := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzzers/%,$(FUZZ_SOURCES))
 TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FUZZ_PROGRAMS)
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
-.PHONY: all demo test lint check-units sanitize valgrind fuzz build-fuzzers corpora quality bench install uninstall clean \
-        build-tests run-tests FORCE
+.PHONY: all demo test lint check-units sanitize valgrind coverage fuzz build-fuzzers corpora quality bench \
+        install uninstall clean build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
 # Every rule below names its targets: searching among patterns takes make minutes.
@@ -223,6 +224,16 @@ sanitize: packages-build packages-test packages-lint
 valgrind: packages-build packages-test
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-valgrind CFLAGS='-O1 -g' run-tests \
 	    GROUPS=unit WRAPPER='valgrind -q --fair-sched=yes --error-exitcode=99 --leak-check=full'
+
+# What share of the branches the tests take: a table by file, then the sums. Daemons that a test kills
+# leave no counts, so what only they did does not show.
+coverage: packages-build packages-test packages-coverage
+	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-coverage run-tests \
+	    GROUPS='unit integration reference fuzz' \
+	    CFLAGS='-O1 -g --coverage -fprofile-update=atomic'
+	@gcovr --root . --object-directory build-coverage --filter client/ --filter daemon/ \
+	    --filter storage/ --exclude '.*/main\.c' --branches --sort-percentage --print-summary \
+	    build-coverage
 
 # FUZZ_TARGETS: which, as in `make fuzz FUZZ_TARGETS=text`; all of them otherwise.
 FUZZ_SECONDS ?= 600

@@ -7,7 +7,8 @@
 
 enum {
     RESCORED_A_ROUND = 16, /* items of the worklist, before it looks for changes again */
-    REHEARSAL_US = 1000    /* likewise */
+    REHEARSAL_US = 1000,   /* likewise */
+    SETTLED_US = 50000     /* without a change: rehearsal waits for the end of a feed */
 };
 
 /* --- the worklist -------------------------------------------------------------------------------
@@ -143,6 +144,7 @@ void trainer_work_idly(struct trainer *trainer, bool is_idle)
     if (trainer->failed || !is_idle) {
         trainer->rescore_due = !trainer->failed;
         trainer->rehearse_due = !trainer->failed && trainer->settings.rehearsal_share > 0.0;
+        trainer->rest_until_us = clock_steady_us() + SETTLED_US;
         return;
     }
     if (trainer_is_full(trainer)) {

@@ -32,6 +32,10 @@ struct connection {
     struct call_queue calls;
     struct call_text filling;
     struct call_text writing; /* size 0: no write under way */
+    size_t held_bytes;        /* as counted in the room */
+    uint64_t begun_ms;        /* the line that is not whole yet; 0: there is none */
+    uint64_t heard_ms;        /* when anything was last read */
+    uint64_t moved_ms;        /* when anything was last written, or began to be */
     bool reading;
     bool draining; /* reads no more, on our side's will or the peer's */
     bool pumping;
@@ -45,11 +49,20 @@ static void pump(struct connection *connection);
 /* --- the end ------------------------------------------------------------------------------------
  */
 
+static void hold(struct connection *connection, size_t bytes)
+{
+    struct connection_room *room = connection->settings.room;
+    room->held_bytes += bytes - connection->held_bytes;
+    connection->held_bytes = bytes;
+}
+
 static void free_when_over(struct connection *connection)
 {
     if (!connection->closed || connection->calls.running > 0 || connection->pumping) {
         return;
     }
+    hold(connection, 0);
+    connection->settings.room->connections--;
     call_queue_abandon(&connection->calls);
     lines_deinit(&connection->lines);
     free(connection->filling.bytes);
@@ -90,6 +103,7 @@ static void on_written(uv_write_t *write, int status)
 {
     struct connection *connection = write->data;
     connection->writing.size = 0;
+    connection->moved_ms = uv_now(connection->settings.loop);
     if (connection->closing) {
         return;
     }
@@ -121,6 +135,7 @@ static void write_more(struct connection *connection)
     connection->filling = connection->writing;
     connection->writing = text;
     connection->write.data = connection;
+    connection->moved_ms = uv_now(connection->settings.loop);
     const uv_buf_t buffer = {.base = text.bytes, .len = text.size};
     if (uv_write(&connection->write, (uv_stream_t *)&connection->handle, &buffer, 1, on_written) <
         0) {
@@ -141,6 +156,16 @@ static void refuse_long_line(struct connection *connection, size_t bytes)
     call_queue_add_fault(&connection->calls, &fault, bytes);
 }
 
+/* Of a line that has begun, the moment stays until it ends. */
+static void mark_beginning(struct connection *connection)
+{
+    if (!lines_is_within(&connection->lines)) {
+        connection->begun_ms = 0;
+    } else if (connection->begun_ms == 0) {
+        connection->begun_ms = connection->heard_ms;
+    }
+}
+
 /* Returns whether it stopped for want of room, with lines left perhaps. */
 static bool take_lines(struct connection *connection)
 {
@@ -150,8 +175,10 @@ static bool take_lines(struct connection *connection)
     while (call_queue_has_room(&connection->calls) && !connection->calls.broken) {
         enum lines_found found = lines_next(&connection->lines, &line, &length, &taken);
         if (found == LINES_NONE) {
+            mark_beginning(connection);
             return false;
         }
+        connection->begun_ms = 0;
         if (found == LINES_LONG) {
             refuse_long_line(connection, 1);
         } else if (length > 0) {
@@ -191,6 +218,7 @@ static void on_read(uv_stream_t *stream, ssize_t count, const uv_buf_t *buffer)
         connection_close(connection);
         return;
     } else {
+        connection->heard_ms = uv_now(connection->settings.loop);
         lines_added(&connection->lines, (size_t)count);
     }
     pump(connection);
@@ -201,6 +229,63 @@ static bool wants_to_read(const struct connection *connection)
     return !connection->draining && !connection->closing &&
            unread_bytes(connection) < connection->settings.unread_limit_bytes &&
            call_queue_has_room(&connection->calls);
+}
+
+/* --- what a peer may keep -----------------------------------------------------------------------
+ */
+
+static void refuse(struct connection *connection, const struct fault *fault)
+{
+    connection->draining = true;
+    call_queue_add_fault(&connection->calls, fault, 0);
+}
+
+/* A share is never less than what reading anything takes. */
+static void check_room(struct connection *connection)
+{
+    const struct connection_room *room = connection->settings.room;
+    hold(connection, lines_bytes(&connection->lines) + connection->filling.capacity +
+                         connection->writing.capacity + connection->calls.answer_bytes);
+    size_t share = room->limit_bytes / room->connections;
+    if (room->held_bytes <= room->limit_bytes || connection->held_bytes <= share ||
+        connection->held_bytes <= IDLE_BUFFER_BYTES || connection->draining) {
+        return;
+    }
+    struct fault fault = {0};
+    (void)fault_set(&fault, FAULT_LIMIT, NULL,
+                    "All connections together hold more than wire_limit (%zu bytes), and this one "
+                    "more than its share: send shorter lines, read answers sooner, and try again "
+                    "later.",
+                    room->limit_bytes);
+    refuse(connection, &fault);
+    connection->pump_again = true;
+}
+
+uint64_t connection_quiet_ms(const struct connection *connection)
+{
+    bool waits = connection->closing || connection->begun_ms > 0 || unread_bytes(connection) > 0 ||
+                 !call_queue_is_empty(&connection->calls);
+    return waits ? 0 : uv_now(connection->settings.loop) - connection->heard_ms;
+}
+
+void connection_check(struct connection *connection, const struct connection_patience *patience)
+{
+    uint64_t now_ms = uv_now(connection->settings.loop);
+    if (connection->closing) {
+        return;
+    }
+    if (connection->writing.size > 0 && now_ms - connection->moved_ms > patience->stalled_ms) {
+        connection_close(connection);
+    } else if (connection->begun_ms > 0 && !connection->draining &&
+               now_ms - connection->begun_ms > patience->stalled_ms) {
+        struct fault fault = {0};
+        (void)fault_set(&fault, FAULT_LIMIT, NULL,
+                        "A line was begun and did not end within stalled_ms (%llu).",
+                        (unsigned long long)patience->stalled_ms);
+        connection_refuse(connection, &fault);
+    } else if (patience->quiet_ms > 0 && connection_quiet_ms(connection) > patience->quiet_ms) {
+        connection_close(connection);
+    }
 }
 
 /* --- taking it all as far as it goes ------------------------------------------------------------
@@ -266,6 +351,9 @@ static void pump(struct connection *connection)
     while (connection->pump_again && !connection->closing) {
         connection->pump_again = false;
         pump_once(connection);
+        if (!connection->closing) {
+            check_room(connection);
+        }
     }
     if (!connection->closing) {
         settle(connection);
@@ -308,6 +396,8 @@ int connection_accept(const struct connection_settings *settings, uv_stream_t *l
         return code;
     }
     connection->handle.data = connection;
+    connection->heard_ms = uv_now(settings->loop);
+    settings->room->connections++;
     code = uv_accept(listener, (uv_stream_t *)&connection->handle);
     if (code < 0) {
         connection->settings.gone = NULL; /* the owner never knew it */
@@ -329,8 +419,7 @@ void connection_start(struct connection *connection)
 
 void connection_refuse(struct connection *connection, const struct fault *fault)
 {
-    connection->draining = true;
-    call_queue_add_fault(&connection->calls, fault, 0);
+    refuse(connection, fault);
     pump(connection);
 }
 

@@ -3,7 +3,8 @@
  * back to it.
  *
  * Reading stops while too much waits: answers that the peer has not read, or calls that have not
- * ended. Loop thread only.
+ * ended. A peer that holds more than its even share while all connections together hold too much is
+ * told and closed. Loop thread only.
  */
 #ifndef UNDERTAG_CONNECTION_H
 #define UNDERTAG_CONNECTION_H
@@ -15,11 +16,26 @@
 
 struct connection;
 
+/* What all connections of a server hold together, in lines that are not whole yet and in answers
+ * that are not read yet; the server's, each connection adds its own. */
+struct connection_room {
+    size_t limit_bytes;
+    size_t held_bytes;
+    size_t connections;
+};
+
+/* How long a peer may keep its connection without getting on, in milliseconds. */
+struct connection_patience {
+    uint64_t stalled_ms; /* in the middle of a line, or with answers that it does not read */
+    uint64_t quiet_ms;   /* with nothing said, nothing running and nothing to read; 0: for ever */
+};
+
 struct connection_settings {
     uv_loop_t *loop;
     const struct method_table *table; /* borrowed, as is the next, for the connection's life */
     size_t line_limit_bytes;
     size_t unread_limit_bytes;
+    struct connection_room *room; /* borrowed likewise */
     void *user;
     /* The handle is closed and every call has ended; called once, last. */
     void (*gone)(void *user, struct connection *connection);
@@ -41,6 +57,14 @@ void connection_start(struct connection *connection);
 /* Takes no more calls: those not started yet are refused with -32006; closes once what is running
  * has ended and been read. */
 void connection_drain(struct connection *connection);
+
+/* Looks whether the peer has kept still for too long: one in the middle of a line is told, and then
+ * closed as any other. To be called every now and then. */
+void connection_check(struct connection *connection, const struct connection_patience *patience);
+
+/* Milliseconds for which the peer has said nothing while it had nothing to wait for; 0 otherwise.
+ */
+uint64_t connection_quiet_ms(const struct connection *connection);
 
 /* Closes at once; calls still running end unheard. */
 void connection_close(struct connection *connection);

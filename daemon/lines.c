@@ -24,6 +24,16 @@ void lines_shrink(struct lines *lines, size_t most_bytes)
     }
 }
 
+size_t lines_bytes(const struct lines *lines)
+{
+    return lines->capacity;
+}
+
+bool lines_is_within(const struct lines *lines)
+{
+    return lines->end > lines->start || lines->skipping;
+}
+
 char *lines_room(struct lines *lines, size_t room)
 {
     if (lines->start > 0 && (lines->start == lines->end || lines->start > lines->capacity / 2)) {

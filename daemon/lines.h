@@ -21,6 +21,12 @@ struct lines {
     bool skipping; /* within the rest of a line that is too long */
 };
 
+/* Bytes of memory that it takes. */
+size_t lines_bytes(const struct lines *lines);
+
+/* Whether a line has begun and not ended, after lines_next said LINES_NONE. */
+bool lines_is_within(const struct lines *lines);
+
 enum lines_found {
     LINES_NONE, /* no whole line yet */
     LINES_LINE,

@@ -189,6 +189,9 @@ static int listen_at(struct program *program)
                                              .passed_fd = program->passed_fd,
                                              .line_limit_bytes = options->line_limit_bytes,
                                              .unread_limit_bytes = options->unread_limit_bytes,
+                                             .wire_limit_bytes = options->wire_limit_bytes,
+                                             .stalled_ms = (unsigned)options->stalled_ms,
+                                             .quiet_ms = options->quiet_ms,
                                              .connections_limit =
                                                  (unsigned)options->connections_limit,
                                              .drain_ms = (unsigned)options->drain_ms};

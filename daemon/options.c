@@ -17,7 +17,18 @@ static const struct option OPTIONS[] = {
     {"unread_limit", TYPE_BYTES, AT(unread_limit_bytes), MIB, GIB, "4MiB", NULL, OPTIONS_LIMIT,
      false, "Unread answers of one connection before reading from it stops."},
     {"connections", TYPE_WHOLE, AT(connections_limit), 1, 100000, "1024", NULL, OPTIONS_LIMIT,
-     false, "Connections open at the same time."},
+     false,
+     "Connections open at the same time; one more is refused, or takes the place of one that has "
+     "asked for nothing for stalled_ms."},
+    {"wire_limit", TYPE_BYTES, AT(wire_limit_bytes), 8 * MIB, 64 * GIB, "256MiB", NULL,
+     OPTIONS_LIMIT, false,
+     "What all connections hold together in unfinished lines and unread answers; beyond it, those "
+     "that hold more than their share are closed."},
+    {"stalled_ms", TYPE_WHOLE, AT(stalled_ms), 100, 3600000, "60000", NULL, OPTIONS_LIMIT, false,
+     "Milliseconds that a line may take from its beginning to its end, or answers may wait to be "
+     "read on; then the connection is closed."},
+    {"quiet_ms", TYPE_WHOLE, AT(quiet_ms), 0, 604800000, "0", NULL, OPTIONS_LIMIT, false,
+     "Milliseconds after which a connection that asks for nothing is closed; 0 for never."},
     {"text_limit", TYPE_BYTES, AT(text_limit_bytes), KIB, 64 * MIB, "1MiB", NULL, OPTIONS_LIMIT,
      true, "The longest text of an item."},
     {"tags_limit", TYPE_WHOLE, AT(tags_limit), 1, 100000, "1000", NULL, OPTIONS_LIMIT, true,

@@ -27,6 +27,9 @@ struct options {
     uint64_t line_limit_bytes;
     uint64_t unread_limit_bytes;
     uint64_t connections_limit;
+    uint64_t wire_limit_bytes;
+    uint64_t stalled_ms;
+    uint64_t quiet_ms;
     uint64_t text_limit_bytes;
     uint64_t tags_limit;
     uint64_t words_limit;

@@ -25,6 +25,7 @@
 enum {
     BACKLOG = 128,
     ACCEPT_AGAIN_MS = 100,
+    MOST_CHECK_MS = 1000,   /* between looks for peers that stand still */
     SOCKET_MODE_MASK = 0117 /* leaves 0660 */
 };
 
@@ -32,12 +33,14 @@ struct server {
     struct server_settings settings;
     char socket_path[sizeof((struct sockaddr_un *)0)->sun_path];
     struct connection_settings connections;
+    struct connection_room room;
     struct connection *first;
     unsigned open;
     uv_pipe_t listener;
     uv_timer_t drain_timer;
     uv_timer_t accept_timer;
-    unsigned handles; /* of the three above, not closed yet */
+    uv_timer_t check_timer;
+    unsigned handles; /* of the four above, not closed yet */
     int lock_fd;
     uint32_t socket_group;
     bool draining;
@@ -80,6 +83,7 @@ static void free_when_over(struct server *server)
     if (!uv_is_closing((uv_handle_t *)&server->drain_timer)) {
         uv_close((uv_handle_t *)&server->drain_timer, on_handle_closed);
         uv_close((uv_handle_t *)&server->accept_timer, on_handle_closed);
+        uv_close((uv_handle_t *)&server->check_timer, on_handle_closed);
     }
 }
 
@@ -128,6 +132,23 @@ static void look_again_later(struct server *server, int code)
     }
 }
 
+/* Whoever has asked for nothing for longest, and for long enough, makes room for another. */
+static bool close_quietest(struct server *server)
+{
+    struct connection *quietest = NULL;
+    uint64_t most_ms = server->settings.stalled_ms;
+    for (struct connection *c = server->first; c; c = connection_links(c)->next) {
+        if (connection_quiet_ms(c) > most_ms) {
+            most_ms = connection_quiet_ms(c);
+            quietest = c;
+        }
+    }
+    if (quietest) {
+        connection_close(quietest);
+    }
+    return quietest;
+}
+
 static void on_connection(uv_stream_t *listener, int status)
 {
     struct server *server = listener->data;
@@ -141,7 +162,7 @@ static void on_connection(uv_stream_t *listener, int status)
         return;
     }
     add_connection(server, connection);
-    if (server->open > server->settings.connections_limit) {
+    if (server->open > server->settings.connections_limit && !close_quietest(server)) {
         struct fault fault = {0};
         (void)fault_set(&fault, FAULT_LIMIT, NULL,
                         "There are %u connections open already, which is the limit; try again "
@@ -151,6 +172,25 @@ static void on_connection(uv_stream_t *listener, int status)
     } else {
         connection_start(connection);
     }
+}
+
+/* Closing takes a connection out of the list, but later. */
+static void on_check(uv_timer_t *timer)
+{
+    struct server *server = timer->data;
+    const struct connection_patience patience = {.stalled_ms = server->settings.stalled_ms,
+                                                 .quiet_ms = server->settings.quiet_ms};
+    for (struct connection *c = server->first; c; c = connection_links(c)->next) {
+        connection_check(c, &patience);
+    }
+}
+
+static void start_checking(struct server *server)
+{
+    uint64_t every_ms = server->settings.stalled_ms / 4 + 1;
+    every_ms = every_ms < MOST_CHECK_MS ? every_ms : MOST_CHECK_MS;
+    int code = uv_timer_start(&server->check_timer, on_check, every_ms, every_ms);
+    assert(code == 0); /* fails only without a callback */
 }
 
 /* --- listening ----------------------------------------------------------------------------------
@@ -254,10 +294,13 @@ static int init_handles(uv_loop_t *loop, struct server *server)
     assert(code == 0); /* libuv documents no failure */
     code = uv_timer_init(loop, &server->accept_timer);
     assert(code == 0);
+    code = uv_timer_init(loop, &server->check_timer);
+    assert(code == 0);
     server->listener.data = server;
     server->drain_timer.data = server;
     server->accept_timer.data = server;
-    server->handles = 3;
+    server->check_timer.data = server;
+    server->handles = 4;
     return 0;
 }
 
@@ -291,11 +334,13 @@ int server_new(uv_loop_t *loop, const struct server_settings *settings,
     }
     server->settings = *settings;
     server->lock_fd = -1;
+    server->room.limit_bytes = settings->wire_limit_bytes;
     server->connections =
         (struct connection_settings){.loop = loop,
                                      .table = table,
                                      .line_limit_bytes = settings->line_limit_bytes,
                                      .unread_limit_bytes = settings->unread_limit_bytes,
+                                     .room = &server->room,
                                      .user = server,
                                      .gone = on_gone};
     int code = begin(loop, server, error);
@@ -309,8 +354,10 @@ int server_new(uv_loop_t *loop, const struct server_settings *settings,
         uv_close((uv_handle_t *)&server->listener, on_handle_closed);
         uv_close((uv_handle_t *)&server->drain_timer, on_handle_closed);
         uv_close((uv_handle_t *)&server->accept_timer, on_handle_closed);
+        uv_close((uv_handle_t *)&server->check_timer, on_handle_closed);
         return code;
     }
+    start_checking(server);
     server->socket_group = group_of(server->socket_path);
     *ret_server = server;
     return 0;

@@ -20,11 +20,15 @@
 struct server;
 
 struct server_settings {
-    const char *socket_path;    /* copied; at most 107 bytes, longer is refused with a sentence */
-    int passed_fd;              /* instead: one that was passed in, taken in any case; 0: none */
-    size_t line_limit_bytes;    /* a longer line gets -32003 and is skipped without being held */
-    size_t unread_limit_bytes;  /* unread answers a connection before reading from it stops */
-    unsigned connections_limit; /* one more gets a -32003 line and is closed */
+    const char *socket_path;   /* copied; at most 107 bytes, longer is refused with a sentence */
+    int passed_fd;             /* instead: one that was passed in, taken in any case; 0: none */
+    size_t line_limit_bytes;   /* a longer line gets -32003 and is skipped without being held */
+    size_t unread_limit_bytes; /* unread answers a connection before reading from it stops */
+    size_t wire_limit_bytes;   /* what all connections hold together, see connection.h */
+    unsigned stalled_ms;       /* the longest that a line or a reading of answers may stand still */
+    uint64_t quiet_ms;         /* the longest that a connection is kept for nothing; 0: for ever */
+    unsigned connections_limit; /* one more gets a -32003 line and is closed, unless a
+                                   peer that was quiet for stalled_ms can make room */
     unsigned drain_ms;          /* the longest time server_drain waits for slow readers */
 };
 

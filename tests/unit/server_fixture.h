@@ -112,6 +112,8 @@ static inline int serving_set_up_quietly(void **state)
     serving->settings = (struct server_settings){.socket_path = serving->path,
                                                  .line_limit_bytes = 8 * 1024 * 1024,
                                                  .unread_limit_bytes = 1024 * 1024,
+                                                 .wire_limit_bytes = 256 * 1024 * 1024,
+                                                 .stalled_ms = GUARD_MS,
                                                  .connections_limit = 8,
                                                  .drain_ms = GUARD_MS};
     for (int i = 0; i < CLIENTS; i++) {

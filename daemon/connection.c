@@ -271,20 +271,19 @@ uint64_t connection_quiet_ms(const struct connection *connection)
 void connection_check(struct connection *connection, const struct connection_patience *patience)
 {
     uint64_t now_ms = uv_now(connection->settings.loop);
-    if (connection->closing) {
-        return;
-    }
-    if (connection->writing.size > 0 && now_ms - connection->moved_ms > patience->stalled_ms) {
+    bool reads_nothing =
+        connection->writing.size > 0 && now_ms - connection->moved_ms > patience->stalled_ms;
+    bool asks_nothing =
+        patience->quiet_ms > 0 && connection_quiet_ms(connection) > patience->quiet_ms;
+    if (reads_nothing || asks_nothing) {
         connection_close(connection);
-    } else if (connection->begun_ms > 0 && !connection->draining &&
+    } else if (connection->begun_ms > 0 && !connection->draining && !connection->closing &&
                now_ms - connection->begun_ms > patience->stalled_ms) {
         struct fault fault = {0};
         (void)fault_set(&fault, FAULT_LIMIT, NULL,
                         "A line was begun and did not end within stalled_ms (%llu).",
                         (unsigned long long)patience->stalled_ms);
         connection_refuse(connection, &fault);
-    } else if (patience->quiet_ms > 0 && connection_quiet_ms(connection) > patience->quiet_ms) {
-        connection_close(connection);
     }
 }
 

@@ -120,6 +120,11 @@ bool moments_is_flushing(const char *home, pid_t storer)
     return (read_lock(home, "model").word & FUTEX_TID_MASK) == (uint32_t)storer;
 }
 
+bool moments_is_committing(const char *home)
+{
+    return (read_lock(home, "store").word & FUTEX_TID_MASK) != 0;
+}
+
 bool moments_is_storing_build(const char *home)
 {
     return (read_lock(home, "model.next").word & FUTEX_TID_MASK) != 0;

@@ -22,6 +22,7 @@ pid_t moments_find_storer(pid_t daemon);
 
 /* Of a daemon that runs: what is it doing? */
 bool moments_is_flushing(const char *home, pid_t storer);
+bool moments_is_committing(const char *home);
 bool moments_is_building(const char *home);
 bool moments_is_storing_build(const char *home);
 

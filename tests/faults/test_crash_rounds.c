@@ -123,6 +123,11 @@ static bool is_storing_build(const struct trial *trial)
     return moments_is_storing_build(trial->daemon.home);
 }
 
+static bool is_committing_a_tag(const struct trial *trial)
+{
+    return trial_is_opening(trial) && moments_is_committing(trial->daemon.home);
+}
+
 /* --- what is aimed at ------------------------------------------------------------------------ */
 
 static void shoot_anywhere(struct shooting *at)
@@ -141,6 +146,17 @@ static void shoot_at_flush(struct shooting *at)
     pump_until(at, is_flushing);
     spin_for(at, &at->flush);
     learn_from(&at->flush, trial_kill(&at->trial).in_flush);
+}
+
+static void shoot_at_vocabulary(struct shooting *at)
+{
+    enum {
+        MORE_CHANGES = 1000 /* until one of them opens a tag at the right moment */
+    };
+    pump_for(at, MOST_FED_US);
+    at->budget += MORE_CHANGES;
+    pump_until(at, is_committing_a_tag);
+    (void)trial_kill(&at->trial);
 }
 
 static void shoot_at_build(struct shooting *at)
@@ -189,6 +205,7 @@ static const struct aim {
      shoot_at_flush,
      false,
      {"visible_within_ms=60000", "flush_every_ms=10"}},
+    {"a new tag", shoot_at_vocabulary, false, {NULL, NULL}},
     {"storing of a build", shoot_at_storing_build, false, {"flush_every_ms=10", "flush_changes=1"}},
     {"a flush", shoot_at_flush, false, {"flush_every_ms=20", "memory_budget=64MiB"}},
     {"anywhere, with nothing stored", shoot_anywhere, false, {"flush_every_ms=3600000", NULL}},
@@ -264,6 +281,7 @@ static void kills_fell_inside_flushes_builds_and_commits(void **state)
     assert_true(counts->in_flush > 0);
     assert_true(counts->in_build > 0);
     assert_true(counts->in_storing_build > 0);
+    assert_true(counts->in_commit > 0);
     assert_true(counts->opening > 0);
 }
 

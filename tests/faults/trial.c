@@ -110,9 +110,9 @@ void trial_rebuild(struct trial *trial)
     assert_int_equal(whole(result, "seq"), rebuild->moment);
 }
 
-static bool is_opening(const struct ledger *ledger)
+bool trial_is_opening(const struct trial *trial)
 {
-    return ledger->sent.tags > ledger->acknowledged.tags;
+    return trial->ledger.sent.tags > trial->ledger.acknowledged.tags;
 }
 
 static void count(struct trial_counts *counts, const struct moment *moment)
@@ -130,11 +130,10 @@ static void count(struct trial_counts *counts, const struct moment *moment)
 
 struct moment trial_kill(struct trial *trial)
 {
-    const struct ledger *ledger = &trial->ledger;
     undertagd_kill(&trial->daemon);
     struct moment moment = moments_of_kill(trial->daemon.home, trial->storer);
     feeder_close_after_kill(&trial->feeder);
-    trial->counts.opening += is_opening(ledger) ? 1 : 0;
+    trial->counts.opening += trial_is_opening(trial) ? 1 : 0;
     count(&trial->counts, &moment);
     return moment;
 }

@@ -55,6 +55,9 @@ void trial_settle(struct trial *trial);
 /* Asks for a rebuild, unless one is under way. All that was sent is acknowledged then. */
 void trial_rebuild(struct trial *trial);
 
+/* Whether a change is under way that opens a tag. */
+bool trial_is_opening(const struct trial *trial);
+
 /* kill -9. What had been acknowledged goes into the ledger; returns what the kill fell into. */
 struct moment trial_kill(struct trial *trial);
 

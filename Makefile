@@ -2,10 +2,11 @@
 #
 #   make            build/undertagd and build/undertag
 #   make demo       the main job on an invented stream
-#   make test       unit, integration and reference tests
+#   make test       unit, integration, reference and fault tests
 #   make lint       format check, clang-tidy, cppcheck, a clang build, the units of systemd
 #   make sanitize   the tests under ASan+UBSan and TSan; make valgrind: the unit tests
 #   make coverage   the share of branches that the tests take
+#   make soak       kill -9 at ROUNDS random moments, of which `make test` has 50
 #   make fuzz       each fuzz target for FUZZ_SECONDS, under ASan and UBSan
 #   make corpora    D and W from Debian's own packages; make quality, make bench: figures on them
 #   make install    DESTDIR, PREFIX and SYSCONFDIR as usual
@@ -42,6 +43,8 @@ CLIENT_SOURCES := $(filter-out client/main.c,$(wildcard client/*.c)) daemon/line
 UNIT_TESTS := $(patsubst tests/unit/%.c,%,$(wildcard tests/unit/test_*.c))
 INTEGRATION_TESTS := $(patsubst tests/integration/%.c,%,$(wildcard tests/integration/test_*.c))
 REFERENCE_TESTS := $(patsubst tests/reference/%.c,%,$(wildcard tests/reference/test_*.c))
+FAULT_TESTS := $(patsubst tests/faults/%.c,%,$(wildcard tests/faults/test_*.c))
+FAULT_HELPER_SOURCES := $(filter-out tests/faults/test_%.c,$(wildcard tests/faults/*.c))
 HELPER_SOURCES := $(filter-out tests/integration/test_%.c,$(wildcard tests/integration/*.c))
 BENCH_SOURCES := $(wildcard tests/bench/*_bench.c)
 BENCH_HELPER_SOURCES := $(filter-out $(BENCH_SOURCES),$(wildcard tests/bench/*.c))
@@ -52,20 +55,22 @@ CLIENT_OBJECTS := $(call object,$(CLIENT_SOURCES))
 LIBRARY := $(BUILD)/libundertag.a
 CLIENT_LIBRARY := $(BUILD)/libclient.a
 HELPERS := $(call object,$(HELPER_SOURCES))
+FAULT_HELPERS := $(call object,$(FAULT_HELPER_SOURCES))
 BENCH_HELPERS := $(call object,$(BENCH_HELPER_SOURCES))
 PROGRAMS := $(BUILD)/undertagd $(BUILD)/undertag
 UNIT_PROGRAMS := $(addprefix $(BUILD)/tests/,$(UNIT_TESTS))
 INTEGRATION_PROGRAMS := $(addprefix $(BUILD)/tests/,$(INTEGRATION_TESTS))
 REFERENCE_PROGRAMS := $(addprefix $(BUILD)/tests/,$(REFERENCE_TESTS))
+FAULT_PROGRAMS := $(addprefix $(BUILD)/tests/,$(FAULT_TESTS))
 FUZZ_SOURCES := $(wildcard tests/fuzz/fuzz_*.c)
 # One target, two programs: replaying files, and looking for more of them (see `make fuzz`).
 FUZZ_PROGRAMS := $(patsubst tests/fuzz/%.c,$(BUILD)/tests/%,$(FUZZ_SOURCES))
 FUZZERS := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzzers/%,$(FUZZ_SOURCES))
-TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FUZZ_PROGRAMS)
+TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FAULT_PROGRAMS) $(FUZZ_PROGRAMS)
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
-.PHONY: all demo test lint check-units sanitize valgrind coverage fuzz build-fuzzers corpora quality bench \
-        install uninstall clean build-tests run-tests FORCE
+.PHONY: all demo test lint check-units sanitize valgrind coverage soak fuzz build-fuzzers corpora quality \
+        bench install uninstall clean build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
 # Every rule below names its targets: searching among patterns takes make minutes.
@@ -123,6 +128,11 @@ $(INTEGRATION_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/integration/%.o $(HELP
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
 
+$(FAULT_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/faults/%.o $(FAULT_HELPERS) $(HELPERS) $(LIBRARY)
+	@mkdir -p $(@D)
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
+
 $(REFERENCE_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
@@ -163,8 +173,8 @@ test: packages-build packages-test
 
 build-tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BENCH_PROGRAMS)
 
-# GROUPS: of unit, integration, reference, fuzz and python; WRAPPER: what to run the programs under.
-GROUPS ?= unit integration reference fuzz python
+# GROUPS: of unit, integration, reference, faults, fuzz and python; WRAPPER: what to run the programs under.
+GROUPS ?= unit integration reference faults fuzz python
 run-tests: build-tests
 	@BUILD=$(BUILD) PYTHON=$(PYTHON) WRAPPER='$(WRAPPER)' sh tests/run $(GROUPS)
 
@@ -215,7 +225,7 @@ check-units: packages-build packages-lint
 # Benchmarks and Python have nothing to say under a sanitizer.
 sanitize: packages-build packages-test packages-lint
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-asan CC=clang run-tests \
-	    GROUPS='unit integration reference fuzz' \
+	    GROUPS='unit integration reference faults fuzz' \
 	    CFLAGS='-O1 -g -fno-omit-frame-pointer -fsanitize=address,undefined -fno-sanitize-recover=all'
 	@TSAN_OPTIONS=suppressions=$(CURDIR)/tests/tsan.supp \
 	$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-tsan CC=clang run-tests \
@@ -234,6 +244,13 @@ coverage: packages-build packages-test packages-coverage
 	@gcovr --root . --object-directory build-coverage --filter client/ --filter daemon/ \
 	    --filter storage/ --exclude '.*/main\.c' --branches --sort-percentage --print-summary \
 	    build-coverage
+
+# A seed repeats the changes and the delays, as far as the machine does.
+ROUNDS ?= 1000
+SEED ?= 1
+soak: packages-build packages-test
+	@$(MAKE) --no-print-directory -j $(JOBS) all $(FAULT_PROGRAMS)
+	@BUILD=$(BUILD) $(BUILD)/tests/test_crash_rounds $(ROUNDS) $(SEED)
 
 # FUZZ_TARGETS: which, as in `make fuzz FUZZ_TARGETS=text`; all of them otherwise.
 FUZZ_SECONDS ?= 600

@@ -300,13 +300,16 @@ static void *run(void *argument)
 /* --- the trainer --------------------------------------------------------------------------------
  */
 
-/* Not before the trainer has come to the moment: what comes up to there is not learned as it learns
- * (see build.h). Behind it the trainer is never behind the build. */
+/*
+ * Not before the trainer has come to the moment: what comes up to there is not learned as it learns
+ * (see build.h). Nor before it has come to the build, which a crash may have left far behind it,
+ * where the build was stored later than the model: it would learn the changes between once more.
+ */
 static bool begin_taking(struct rebuild *rebuild, uint64_t learned)
 {
     sync_lock(&rebuild->mutex);
-    bool is_ready =
-        rebuild->phase == READY && !rebuild->stopping && learned >= rebuild->notes.next.seq;
+    bool is_ready = rebuild->phase == READY && !rebuild->stopping &&
+                    learned >= rebuild->notes.next.seq && learned >= rebuild->learned;
     if (is_ready) {
         rebuild->phase = TAKING;
     }

@@ -274,6 +274,63 @@ static void exchanged_but_not_noted_it_is_in_use(void **state)
     assert_false(has_next(rebuilt));
 }
 
+static void move_in_home(const struct rebuilt *rebuilt, const char *from, const char *to)
+{
+    char from_path[FIXTURE_PATH_BYTES + 32];
+    char to_path[FIXTURE_PATH_BYTES + 32];
+    (void)snprintf(from_path, sizeof from_path, "%s/%s", rebuilt->opened->home, from);
+    (void)snprintf(to_path, sizeof to_path, "%s/%s", rebuilt->opened->home, to);
+    assert_int_equal(rename(from_path, to_path), 0);
+}
+
+/* Items that take long to learn: none of their words is in another. */
+static void file_long_items(struct opened *opened, int count)
+{
+    enum {
+        WORDS = 4000,
+        WORD_BYTES = 12
+    };
+    static char text[WORDS * WORD_BYTES];
+    static const char *const TAGS[] = {"tag 1", "tag 2", NULL};
+    for (int item = 0; item < count; item++) {
+        char id[32];
+        size_t used = 0;
+        for (int word = 0; word < WORDS; word++) {
+            used += (size_t)snprintf(text + used, sizeof text - used, "i%dw%d ", item, word);
+        }
+        (void)snprintf(id, sizeof id, "log/long %d", item);
+        (void)file_item(opened, id, text, TAGS);
+    }
+}
+
+/* The model in use was stored last long before the build was, which had passed the moment. A build
+ * that took its place too early would have the changes between learned once more. */
+static void stored_behind_the_build_the_model_comes_to_it_before_it_is_replaced(void **state)
+{
+    enum {
+        MORE = 40 /* the build is there before the trainer is through with them */
+    };
+    struct rebuilt *rebuilt = *state;
+    struct opened *opened = rebuilt->opened;
+    struct asked expected;
+    close_home(opened);
+    move_in_home(rebuilt, "model", "model.old"); /* learned up to the moment */
+    open_home(opened);
+    (void)begin_rebuild(opened, SURROGATE_HINGE);
+    wait_until_built(opened);
+    file_long_items(opened, MORE);
+    wait_until_learned(opened, ITEMS + MORE);
+    ask_draft(opened, DRAFT, &expected);
+    close_home(opened);
+    edit_notes(rebuilt, take_note_back);
+    move_in_home(rebuilt, "model", "model.next");
+    move_in_home(rebuilt, "model.old", "model");
+    open_home(opened);
+    wait_until_built(opened);
+    wait_until_learned(opened, ITEMS + MORE);
+    assert_answers(rebuilt, &expected);
+}
+
 static void a_folder_that_nobody_builds_in_is_removed(void **state)
 {
     struct rebuilt *rebuilt = *state;
@@ -349,6 +406,7 @@ int main(void)
         TEST(noted_but_not_begun_it_is_built_at_the_next_start),
         TEST(noted_with_an_empty_folder_it_is_built_at_the_next_start),
         TEST(exchanged_but_not_noted_it_is_in_use),
+        TEST(stored_behind_the_build_the_model_comes_to_it_before_it_is_replaced),
         TEST(a_folder_that_nobody_builds_in_is_removed),
         TEST(a_model_that_is_lost_is_learned_again_with_the_settings_of_the_rebuild),
         TEST(a_damaged_record_ends_it_and_the_old_model_stays),

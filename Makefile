@@ -6,6 +6,7 @@
 #   make lint       format check, clang-tidy, cppcheck, a clang build, the units of systemd
 #   make sanitize   the tests under ASan+UBSan and TSan; make valgrind: the unit tests
 #   make fuzz       each fuzz target for FUZZ_SECONDS, under ASan and UBSan
+#   make faults     what happens when any one call of the system fails
 #   make corpora    D and W from Debian's own packages; make quality, make bench: figures on them
 #   make install    DESTDIR, PREFIX and SYSCONFDIR as usual
 
@@ -60,10 +61,15 @@ FUZZ_SOURCES := $(wildcard tests/fuzz/fuzz_*.c)
 # One target, two programs: replaying files, and looking for more of them (see `make fuzz`).
 FUZZ_PROGRAMS := $(patsubst tests/fuzz/%.c,$(BUILD)/tests/%,$(FUZZ_SOURCES))
 FUZZERS := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzzers/%,$(FUZZ_SOURCES))
-TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FUZZ_PROGRAMS)
+FAULT_PROGRAMS := $(patsubst tests/faults/%.c,$(BUILD)/tests/%,$(wildcard tests/faults/test_*.c))
+FAULT_HELPERS := $(call object,$(filter-out tests/faults/test_%.c tests/faults/fail_nth.c,$(wildcard tests/faults/*.c)))
+# What they preload into the daemon.
+FAULT_SHIM := $(BUILD)/tests/fail_nth.so
+TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FUZZ_PROGRAMS) \
+                 $(FAULT_PROGRAMS)
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
-.PHONY: all demo test lint check-units sanitize valgrind fuzz build-fuzzers corpora quality bench install uninstall clean \
+.PHONY: all demo test lint check-units sanitize valgrind fuzz build-fuzzers faults corpora quality bench install uninstall clean \
         build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
@@ -122,6 +128,17 @@ $(INTEGRATION_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/integration/%.o $(HELP
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
 
+$(FAULT_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/faults/%.o $(FAULT_HELPERS) $(HELPERS) $(LIBRARY) | $(FAULT_SHIM)
+	@mkdir -p $(@D)
+	$(call say,link,$@)
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $(filter-out %.so,$^) $(DAEMON_LIBS) $(TEST_LIBS) -o $@
+
+# Without a sanitizer's flags, and it must not become a call of itself (-fno-builtin).
+$(FAULT_SHIM): tests/faults/fail_nth.c tests/faults/fail_control.h $(BUILD)/flags
+	@mkdir -p $(@D)
+	$(call say,link,$@)
+	$(Q)$(CC) $(BASE_CFLAGS) -O2 -g -fPIC -fno-builtin -shared $< -ldl -o $@
+
 $(REFERENCE_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
@@ -162,8 +179,8 @@ test: packages-build packages-test
 
 build-tests: $(PROGRAMS) $(TEST_PROGRAMS) $(BENCH_PROGRAMS)
 
-# GROUPS: of unit, integration, reference, fuzz and python; WRAPPER: what to run the programs under.
-GROUPS ?= unit integration reference fuzz python
+# GROUPS: of unit, integration, reference, fuzz, faults and python; WRAPPER: what to run the programs under.
+GROUPS ?= unit integration reference fuzz faults python
 run-tests: build-tests
 	@BUILD=$(BUILD) PYTHON=$(PYTHON) WRAPPER='$(WRAPPER)' sh tests/run $(GROUPS)
 
@@ -234,6 +251,10 @@ fuzz: packages-build packages-lint
 	@BUILD=build-fuzz sh tests/fuzz/run $(FUZZ_SECONDS) $(FUZZ_TARGETS)
 
 build-fuzzers: $(FUZZERS)
+
+# Every n of every scene, where `make test` takes some.
+faults: packages-build packages-test
+	@UNDERTAG_FAULTS=all $(MAKE) --no-print-directory -j $(JOBS) run-tests GROUPS=faults
 
 # --- installing ---------------------------------------------------------------------------------
 

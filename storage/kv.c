@@ -200,6 +200,11 @@ void kv_close(struct kv *kv)
     free(kv);
 }
 
+bool kv_is_broken(const struct kv *kv)
+{
+    return kv && atomic_load(&kv->broken);
+}
+
 uint64_t kv_file_bytes(const struct kv *kv)
 {
     char path[PATH_MAX];
@@ -295,6 +300,9 @@ int kv_begin(struct kv *kv, bool write, struct kv_txn **ret_txn, struct store_er
     if (code != MDB_SUCCESS) {
         leave(kv);
         free(made);
+        if (code == MDB_PANIC) { /* the last commit failed at its last page */
+            atomic_store(&kv->broken, true);
+        }
         return kv_translate(kv, code, "beginning a transaction", error);
     }
     *ret_txn = made;

@@ -111,6 +111,8 @@ static void a_filing_with_a_failing_call_is_made_or_refused(void **state)
 {
     struct scene scene;
     scene_begin(&scene, *state, "filing");
+    scene_be_up(&scene);
+    file_for_sure(&scene, "vocabulary", "shoal", OTHER_TEXT);
     scene_play(&scene, change_items);
     scene_end(&scene);
 }

@@ -43,4 +43,8 @@ int kv_translate(const struct kv *kv, int code, const char *doing, struct store_
 int kv_open_environment(struct kv *kv, struct store_error *error)
     __attribute__((warn_unused_result));
 
+/* Closes the environment and opens it again; false where a transaction was in the way for a moment,
+ * or where it could not be opened. Outside a transaction and the gate. */
+bool kv_open_anew(struct kv *kv) __attribute__((warn_unused_result));
+
 #endif

@@ -370,11 +370,8 @@ int kv_scrub(struct kv *kv, size_t most_pages, size_t *ret_left, struct store_er
     }
     int result = is_under_way(kv) ? STORE_OK : begin_round(kv, error);
     if (result == STORE_OK && is_under_way(kv)) {
-        int code = go_on(kv, most_pages < LEAST_PAGES ? LEAST_PAGES : most_pages);
-        if (code == EIO) {
-            atomic_store(&kv->broken, true); /* what else has not reached the disk? */
-        }
-        result = kv_translate(kv, code, "scrubbing", error);
+        result = kv_translate(kv, go_on(kv, most_pages < LEAST_PAGES ? LEAST_PAGES : most_pages),
+                              "scrubbing", error);
     }
     if (result != STORE_OK) {
         kv->round = (struct kv_round){.due = true}; /* no byte that is read was changed */

@@ -21,7 +21,7 @@
 #include "daemon/clock.h"
 
 enum {
-    STRIDE = 29,
+    STRIDE = 61,
     N_MOST = 100000,
     WRONG_MOST = 20,  /* then a scene is given up: one fault shows often */
     LOOK_EVERY = 25,  /* rounds with one daemon */

@@ -8,6 +8,7 @@
 #   make coverage   the share of branches that the tests take
 #   make soak       kill -9 at ROUNDS random moments, of which `make test` has 50
 #   make fuzz       each fuzz target for FUZZ_SECONDS, under ASan and UBSan
+#   make faults     what happens when any one call of the system fails
 #   make corpora    D and W from Debian's own packages; make quality, make bench: figures on them
 #   make install    DESTDIR, PREFIX and SYSCONFDIR as usual
 
@@ -44,7 +45,9 @@ UNIT_TESTS := $(patsubst tests/unit/%.c,%,$(wildcard tests/unit/test_*.c))
 INTEGRATION_TESTS := $(patsubst tests/integration/%.c,%,$(wildcard tests/integration/test_*.c))
 REFERENCE_TESTS := $(patsubst tests/reference/%.c,%,$(wildcard tests/reference/test_*.c))
 FAULT_TESTS := $(patsubst tests/faults/%.c,%,$(wildcard tests/faults/test_*.c))
-FAULT_HELPER_SOURCES := $(filter-out tests/faults/test_%.c,$(wildcard tests/faults/*.c))
+FAULT_HELPER_SOURCES := $(filter-out tests/faults/test_%.c tests/faults/fail_nth.c,$(wildcard tests/faults/*.c))
+# What is preloaded into the daemon.
+FAULT_SHIM := $(BUILD)/tests/fail_nth.so
 HELPER_SOURCES := $(filter-out tests/integration/test_%.c,$(wildcard tests/integration/*.c))
 BENCH_SOURCES := $(wildcard tests/bench/*_bench.c)
 BENCH_HELPER_SOURCES := $(filter-out $(BENCH_SOURCES),$(wildcard tests/bench/*.c))
@@ -69,8 +72,8 @@ FUZZERS := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzzers/%,$(FUZZ_SOURCES))
 TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FAULT_PROGRAMS) $(FUZZ_PROGRAMS)
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
-.PHONY: all demo test lint check-units sanitize valgrind coverage soak fuzz build-fuzzers corpora quality \
-        bench install uninstall clean build-tests run-tests FORCE
+.PHONY: all demo test lint check-units sanitize valgrind coverage faults soak fuzz build-fuzzers corpora \
+        quality bench install uninstall clean build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
 # Every rule below names its targets: searching among patterns takes make minutes.
@@ -128,10 +131,16 @@ $(INTEGRATION_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/integration/%.o $(HELP
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
 
-$(FAULT_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/faults/%.o $(FAULT_HELPERS) $(HELPERS) $(LIBRARY)
+$(FAULT_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/faults/%.o $(FAULT_HELPERS) $(HELPERS) $(LIBRARY) | $(FAULT_SHIM)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
-	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $(filter-out %.so,$^) $(DAEMON_LIBS) $(TEST_LIBS) -o $@
+
+# Without a sanitizer's flags, and it must not become a call of itself (-fno-builtin).
+$(FAULT_SHIM): tests/faults/fail_nth.c tests/faults/fail_control.h $(BUILD)/flags
+	@mkdir -p $(@D)
+	$(call say,link,$@)
+	$(Q)$(CC) $(BASE_CFLAGS) -O2 -g -fPIC -fno-builtin -shared $< -ldl -o $@
 
 $(REFERENCE_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
 	@mkdir -p $(@D)
@@ -262,6 +271,10 @@ fuzz: packages-build packages-lint
 	@BUILD=build-fuzz sh tests/fuzz/run $(FUZZ_SECONDS) $(FUZZ_TARGETS)
 
 build-fuzzers: $(FUZZERS)
+
+# Every n of every scene, where `make test` takes some.
+faults: packages-build packages-test
+	@UNDERTAG_FAULTS=all $(MAKE) --no-print-directory -j $(JOBS) run-tests GROUPS=faults
 
 # --- installing ---------------------------------------------------------------------------------
 

@@ -167,8 +167,11 @@ static void end_change(struct change_job *job)
     free_job(job);
     if (code < 0) {
         call_fail(call, &fault);
-    } else {
+    } else if (answer) {
         call_answer_take(call, answer);
+    } else {
+        /* It is made, and an error would say that it is not: no answer, and the connection ends. */
+        call_answer_text_take(call, NULL);
     }
 }
 

@@ -374,11 +374,11 @@ static void on_call_ended(void *user)
 /* --- life ---------------------------------------------------------------------------------------
  */
 
-static void read_peer(uv_pipe_t *handle, struct rights_peer *peer)
+static int read_peer(uv_pipe_t *handle, struct rights_peer *peer)
 {
     uv_os_fd_t fd = -1; /* which nobody is behind */
     (void)uv_fileno((uv_handle_t *)handle, &fd);
-    peer_identity_read(fd, peer);
+    return peer_identity_read(fd, peer);
 }
 
 int connection_accept(const struct connection_settings *settings, uv_stream_t *listener,
@@ -406,7 +406,11 @@ int connection_accept(const struct connection_settings *settings, uv_stream_t *l
     lines_init(&connection->lines, settings->line_limit_bytes);
     connection->calls =
         (struct call_queue){.table = settings->table, .user = connection, .ended = on_call_ended};
-    read_peer(&connection->handle, &connection->calls.peer);
+    if (read_peer(&connection->handle, &connection->calls.peer) < 0) {
+        connection->settings.gone = NULL;
+        connection_close(connection);
+        return UV_ENOMEM;
+    }
     *ret_connection = connection;
     return 0;
 }

@@ -340,10 +340,10 @@ fail_home:
     return exit_code;
 }
 
-void engine_close(struct engine *engine)
+int engine_close(struct engine *engine)
 {
     if (!engine) {
-        return;
+        return 0;
     }
     backlog_stop(engine->backlog);
     rebuild_stop(engine->rebuild);
@@ -353,11 +353,13 @@ void engine_close(struct engine *engine)
     workspaces_deinit(&engine->workspaces);
     troubles_deinit(&engine->troubles);
     backlog_free(engine->backlog);
+    bool is_broken = store_is_broken(engine->store) || model_store_is_broken(engine->shared.store);
     model_store_close(engine->shared.store); /* not always that of the start */
     shared_model_deinit(&engine->shared);
     store_close(engine->store);
     (void)close(engine->lock_fd); /* ends the lock; nothing is written there */
     free(engine);
+    return is_broken ? EX_IOERR : 0;
 }
 
 /* --- what the methods stand on ------------------------------------------------------------------

@@ -35,8 +35,9 @@ enum {
 int engine_open(const struct engine_settings *settings, struct engine **ret_engine, char *error)
     __attribute__((warn_unused_result));
 
-/* Ends both threads, stores the model and closes the home. */
-void engine_close(struct engine *engine);
+/* Ends both threads, stores the model and closes the home. Returns the exit code for main: not 0
+ * where a write had failed so that none was taken any more. */
+int engine_close(struct engine *engine);
 
 /* --- changes: loop thread --- */
 

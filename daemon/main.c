@@ -20,6 +20,7 @@
 
 #include "daemon/command_line.h"
 #include "daemon/engine.h"
+#include "daemon/json_memory.h"
 #include "daemon/log.h"
 #include "daemon/manager.h"
 #include "daemon/methods.h"
@@ -44,6 +45,7 @@ struct program {
     int passed_fd; /* a socket that was passed in; 0: none, or given to the server */
     struct watchdog watchdog;
     bool is_watched; /* the watchdog is open */
+    int exit_code;   /* of what closing found */
 };
 
 /* --- stopping -----------------------------------------------------------------------------------
@@ -58,7 +60,7 @@ static void close_all(struct program *program)
         program->is_watched = false;
     }
     if (program->engine) {
-        engine_close(program->engine);
+        program->exit_code = engine_close(program->engine);
         program->engine = NULL;
     }
     if (program->methods) {
@@ -283,10 +285,16 @@ static int serve(struct program *program)
     (void)uv_run(&program->loop, UV_RUN_DEFAULT); /* returns when every handle is closed */
     code = uv_loop_close(&program->loop);
     assert(code == 0);
-    if (exit_code == 0) {
-        log_line(LOG_NOTE, "stopped");
+    if (exit_code != 0) {
+        return exit_code;
     }
-    return exit_code;
+    if (program->exit_code != 0) {
+        return fail(program->exit_code, "stopped; a write had failed: look after the disk, then "
+                                        "start it again, and it goes on from the last change that "
+                                        "was acknowledged");
+    }
+    log_line(LOG_NOTE, "stopped");
+    return 0;
 }
 
 int main(int argc, char **argv)
@@ -296,6 +304,7 @@ int main(int argc, char **argv)
     /* The threads share two heaps: one each would hold holes that nobody else can use. It may only
      * fail for an argument that is none. */
     (void)mallopt(M_ARENA_MAX, 2);
+    json_memory_watch();
     /* At random, and before there are threads: nobody can choose names that collide. */
     json_object_seed(0);
     int exit_code = command_line_read(argc, argv, &program.line, error);

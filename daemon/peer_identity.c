@@ -32,20 +32,23 @@ static uint32_t *groups_of(int fd, uint32_t own, size_t *ret_count)
     return gids;
 }
 
-void peer_identity_read(int fd, struct rights_peer *ret_peer)
+int peer_identity_read(int fd, struct rights_peer *ret_peer)
 {
     struct ucred credentials;
     socklen_t size = sizeof credentials;
     *ret_peer = (struct rights_peer){.uid = RIGHTS_NO_ID};
     if (getsockopt(fd, SOL_SOCKET, SO_PEERCRED, &credentials, &size) < 0) {
-        return;
+        return 0;
     }
     size_t count = 0;
+    errno = 0;
     uint32_t *gids = groups_of(fd, credentials.gid, &count);
     if (gids) {
         rights_sort(gids, count);
         *ret_peer = (struct rights_peer){.uid = credentials.uid, .gids = gids, .gid_count = count};
+        return 0;
     }
+    return errno == ENOMEM ? -ENOMEM : 0;
 }
 
 void peer_identity_deinit(struct rights_peer *peer)

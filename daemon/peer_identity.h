@@ -10,10 +10,10 @@
 
 /*
  * Fills the peer; his groups are on the heap, for peer_identity_deinit. Where the kernel does not
- * say who he is, or there is no memory for it, he is RIGHTS_NO_ID without groups; where it does not
- * know of other groups (before Linux 4.13) he has his own alone.
+ * say who he is he is RIGHTS_NO_ID without groups; where it does not know of other groups (before
+ * Linux 4.13) he has his own alone. -ENOMEM: he is RIGHTS_NO_ID, too, but nobody may be told so.
  */
-void peer_identity_read(int fd, struct rights_peer *ret_peer);
+int peer_identity_read(int fd, struct rights_peer *ret_peer);
 
 void peer_identity_deinit(struct rights_peer *peer);
 

@@ -1,6 +1,9 @@
 #include "daemon/rpc.h"
 
+#include <stdlib.h>
 #include <string.h>
+
+#include "daemon/json_memory.h"
 
 /* Whether the text nests deeper than RPC_DEPTH. Looks at brackets outside strings only, so that the
  * parser behind it never sees a text that would take it too deep. */
@@ -36,7 +39,12 @@ int rpc_parse(const char *line, size_t length, json_t **ret_text, struct fault *
                          "The line cannot be parsed: it nests deeper than %d levels.", RPC_DEPTH);
     }
     json_error_t error;
+    (void)json_memory_was_refused(); /* before this line: somebody else's affair */
     json_t *text = json_loadb(line, length, JSON_REJECT_DUPLICATES | JSON_DECODE_ANY, &error);
+    if (json_memory_was_refused()) {
+        json_decref(text);
+        return fault_set(fault, FAULT_INTERNAL, NULL, "There is no memory for the line.");
+    }
     if (!text && json_error_code(&error) == json_error_null_character) {
         return fault_set(fault, FAULT_PARSE, NULL,
                          "The line cannot be parsed at byte %d: \\u0000 is not allowed.",
@@ -131,12 +139,17 @@ void rpc_request_deinit(struct rpc_request *request)
 static char *envelope_take(json_t *id, const char *name, json_t *value)
 {
     char *text = NULL;
+    (void)json_memory_was_refused(); /* a value that was not to be had is NULL */
     json_t *answer = json_object();
     int code = json_object_set_new(answer, "jsonrpc", json_string("2.0"));
     code |= id ? json_object_set(answer, "id", id) : json_object_set_new(answer, "id", json_null());
     code |= json_object_set_new(answer, name, value);
     if (code == 0) {
         text = json_dumps(answer, JSON_COMPACT);
+    }
+    if (json_memory_was_refused()) {
+        free(text); /* it may lack a part */
+        text = NULL;
     }
     json_decref(answer);
     return text;

@@ -193,6 +193,11 @@ void kv_close(struct kv *kv)
     free(kv);
 }
 
+bool kv_is_broken(const struct kv *kv)
+{
+    return kv && atomic_load(&kv->broken);
+}
+
 uint64_t kv_file_bytes(const struct kv *kv)
 {
     char path[PATH_MAX];
@@ -271,24 +276,46 @@ static void leave(struct kv *kv)
     (void)pthread_mutex_unlock(&kv->gate);
 }
 
+static int begin_in(struct kv *kv, bool write, struct kv_txn *made, struct store_error *error)
+{
+    int result = enter(kv, write, error);
+    if (result != STORE_OK) {
+        return result;
+    }
+    int code = mdb_txn_begin(kv->env, NULL, write ? 0 : MDB_RDONLY, &made->txn);
+    if (code == MDB_SUCCESS) {
+        return STORE_OK;
+    }
+    leave(kv);
+    made->is_panic = code == MDB_PANIC;
+    return kv_translate(kv, code, "beginning a transaction", error);
+}
+
+/*
+ * Where the last page of a commit, by which it comes to count, could not be written, LMDB lets
+ * nobody in any more, not even to read (MDB_PANIC), until it is opened anew. What was committed
+ * before is whole and can be read; writing waits for a restart, as after any failed write.
+ */
 int kv_begin(struct kv *kv, bool write, struct kv_txn **ret_txn, struct store_error *error)
 {
+    struct store_error reason = {0};
     struct kv_txn *made = calloc(1, sizeof *made);
     if (!made) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
     made->kv = kv;
     made->write = write;
-    int result = enter(kv, write, error);
+    int result = begin_in(kv, write, made, &reason);
+    if (result != STORE_OK && made->is_panic) {
+        atomic_store(&kv->broken, true);
+        if (!write && kv_open_anew(kv)) {
+            reason = (struct store_error){0};
+            result = begin_in(kv, write, made, &reason);
+        }
+    }
     if (result != STORE_OK) {
         free(made);
-        return result;
-    }
-    int code = mdb_txn_begin(kv->env, NULL, write ? 0 : MDB_RDONLY, &made->txn);
-    if (code != MDB_SUCCESS) {
-        leave(kv);
-        free(made);
-        return kv_translate(kv, code, "beginning a transaction", error);
+        return store_fail(error, reason.code, "%s", reason.text);
     }
     *ret_txn = made;
     return STORE_OK;

@@ -50,6 +50,9 @@ int kv_open(const struct kv_settings *settings, struct kv **ret_kv, struct store
     __attribute__((warn_unused_result));
 void kv_close(struct kv *kv);
 
+/* Whether a write has failed so that none is taken any more. Any thread. */
+bool kv_is_broken(const struct kv *kv);
+
 /* Bytes of the file. */
 uint64_t kv_file_bytes(const struct kv *kv);
 

@@ -41,7 +41,8 @@ struct kv_txn {
     struct kv *kv;
     MDB_txn *txn;
     bool write;
-    bool deletes; /* what it deleted is to be scrubbed once it is committed */
+    bool is_panic; /* it could not begin, since LMDB lets nobody in */
+    bool deletes;  /* what it deleted is to be scrubbed once it is committed */
 };
 
 /* Translates an LMDB code or an errno, once, here. `doing` goes into the sentence. */
@@ -50,5 +51,9 @@ int kv_translate(const struct kv *kv, int code, const char *doing, struct store_
 /* Opens the environment and its tables; on failure there is none. The gate is the caller's. */
 int kv_open_environment(struct kv *kv, struct store_error *error)
     __attribute__((warn_unused_result));
+
+/* Closes the environment and opens it again; false where a transaction was in the way for a moment,
+ * or where it could not be opened. Outside a transaction and the gate. */
+bool kv_open_anew(struct kv *kv) __attribute__((warn_unused_result));
 
 #endif

@@ -285,18 +285,44 @@ static bool shut(struct kv *kv)
     return kv->running == 0;
 }
 
+static void open_gate(struct kv *kv)
+{
+    kv->is_shut = false;
+    (void)pthread_cond_broadcast(&kv->moved); /* never fails for an initialised one */
+}
+
+/* The gate is the caller's, who opens it again. False where a transaction is in the way. */
+static bool open_anew(struct kv *kv, int *ret_result, struct store_error *error)
+{
+    if (!shut(kv)) {
+        return false;
+    }
+    if (kv->env) {
+        mdb_env_close(kv->env);
+    }
+    kv->env = NULL;
+    *ret_result = kv_open_environment(kv, error);
+    return true;
+}
+
+bool kv_open_anew(struct kv *kv)
+{
+    int result = STORE_OK;
+    struct store_error reason = {0}; /* whoever begins a transaction finds it out again */
+    (void)pthread_mutex_lock(&kv->gate);
+    bool is_open = open_anew(kv, &result, &reason) && result == STORE_OK;
+    open_gate(kv);
+    (void)pthread_mutex_unlock(&kv->gate);
+    return is_open;
+}
+
 /* Opens the environment anew and begins a round, unless a transaction is in the way. */
 static int begin_round(struct kv *kv, struct store_error *error)
 {
     int result = STORE_OK;
     size_t page_bytes = 0;
     (void)pthread_mutex_lock(&kv->gate); /* fails only for mutexes of other kinds */
-    if (shut(kv)) {
-        if (kv->env) {
-            mdb_env_close(kv->env);
-        }
-        kv->env = NULL;
-        result = kv_open_environment(kv, error);
+    if (open_anew(kv, &result, error)) {
         if (result == STORE_OK) {
             result =
                 kv_translate(kv, count_pages(kv, &kv->round.end, &page_bytes), "scrubbing", error);
@@ -304,8 +330,7 @@ static int begin_round(struct kv *kv, struct store_error *error)
         kv->round.next = KV_FIRST_PAGE;
         kv->round.due = false;
     }
-    kv->is_shut = false;
-    (void)pthread_cond_broadcast(&kv->moved); /* never fails for an initialised one */
+    open_gate(kv);
     (void)pthread_mutex_unlock(&kv->gate);
     return result;
 }

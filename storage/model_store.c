@@ -60,6 +60,11 @@ void model_store_close(struct model_store *store)
     }
 }
 
+bool model_store_is_broken(const struct model_store *store)
+{
+    return kv_is_broken(store->kv);
+}
+
 uint64_t model_store_file_bytes(const struct model_store *store)
 {
     return kv_file_bytes(store->kv);

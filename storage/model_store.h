@@ -114,6 +114,7 @@ enum {
 int model_store_open(const struct store_settings *settings, struct model_store **ret_store,
                      struct store_error *error) __attribute__((warn_unused_result));
 void model_store_close(struct model_store *store);
+bool model_store_is_broken(const struct model_store *store); /* as store_is_broken */
 uint64_t model_store_file_bytes(const struct model_store *store);
 
 /* STORE_NOT_FOUND where no model has been stored yet. */

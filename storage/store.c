@@ -189,6 +189,11 @@ const unsigned char *store_uuid(const struct store *store)
     return store->uuid;
 }
 
+bool store_is_broken(const struct store *store)
+{
+    return kv_is_broken(store->kv);
+}
+
 uint64_t store_file_bytes(const struct store *store)
 {
     return kv_file_bytes(store->kv);

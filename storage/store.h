@@ -53,6 +53,9 @@ void store_close(struct store *store);
 /* What names this store, so that a model can tell whose it is. STORE_UUID_BYTES. */
 const unsigned char *store_uuid(const struct store *store);
 
+/* Whether a write has failed so that none is taken any more. Any thread. */
+bool store_is_broken(const struct store *store);
+
 uint64_t store_file_bytes(const struct store *store);
 
 /* Begins a view of everything committed so far. */

@@ -17,11 +17,6 @@ enum {
     MOST_READERS = 126
 };
 
-struct kv_cursor {
-    MDB_cursor *cursor;
-    struct kv_txn *txn;
-};
-
 int kv_translate(const struct kv *kv, int code, const char *doing, struct store_error *error)
 {
     switch (code) {
@@ -57,18 +52,6 @@ int kv_translate(const struct kv *kv, int code, const char *doing, struct store_
         return store_fail(error, STORE_BROKEN, "%s: %s while %s", kv->directory, mdb_strerror(code),
                           doing);
     }
-}
-
-static MDB_val to_val(struct kv_bytes bytes)
-{
-    MDB_val val = {.mv_size = bytes.size};
-    memcpy(&val.mv_data, &bytes.data, sizeof val.mv_data); /* it takes no const, but only reads */
-    return val;
-}
-
-static struct kv_bytes from_val(MDB_val value)
-{
-    return kv_bytes_of(value.mv_data, value.mv_size);
 }
 
 /* --- the environment ---------------------------------------------------------------------------
@@ -360,11 +343,11 @@ void kv_abort(struct kv_txn *txn)
 int kv_get(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv_bytes *ret_value,
            struct store_error *error)
 {
-    MDB_val wanted = to_val(key);
+    MDB_val wanted = kv_to_val(key);
     MDB_val found;
     int code = mdb_get(txn->txn, txn->kv->tables[table], &wanted, &found);
     if (code == MDB_SUCCESS) {
-        *ret_value = from_val(found);
+        *ret_value = kv_from_val(found);
     }
     return kv_translate(txn->kv, code, "reading", error);
 }
@@ -372,8 +355,8 @@ int kv_get(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv_by
 static int put(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv_bytes value,
                unsigned flags, struct store_error *error)
 {
-    MDB_val at = to_val(key);
-    MDB_val what = to_val(value);
+    MDB_val at = kv_to_val(key);
+    MDB_val what = kv_to_val(value);
     if (key.size + value.size > KV_ENTRY_BYTES) {
         return store_fail(error, STORE_BROKEN, "an entry of %zu bytes is too large",
                           key.size + value.size);
@@ -396,7 +379,7 @@ int kv_append(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv
 
 int kv_delete(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct store_error *error)
 {
-    MDB_val at = to_val(key);
+    MDB_val at = kv_to_val(key);
     txn->deletes = true;
     return kv_translate(txn->kv, mdb_del(txn->txn, txn->kv->tables[table], &at, NULL), "deleting",
                         error);
@@ -417,110 +400,4 @@ int kv_count(struct kv_txn *txn, unsigned table, uint64_t *ret_count, struct sto
         *ret_count = status.ms_entries;
     }
     return kv_translate(txn->kv, code, "counting", error);
-}
-
-int kv_walk(struct kv_txn *txn, unsigned table, struct kv_bytes from, kv_each each, void *user,
-            struct store_error *error)
-{
-    struct kv_cursor at = {.txn = txn};
-    int code = mdb_cursor_open(txn->txn, txn->kv->tables[table], &at.cursor);
-    if (code != MDB_SUCCESS) {
-        return kv_translate(txn->kv, code, "walking", error);
-    }
-    MDB_val key = to_val(from);
-    MDB_val value;
-    uint64_t left = 0; /* damage can lead round in a circle */
-    int result = kv_count(txn, table, &left, error);
-    code = mdb_cursor_get(at.cursor, &key, &value, from.size ? MDB_SET_RANGE : MDB_FIRST);
-    while (code == MDB_SUCCESS && result == STORE_OK) {
-        if (left-- == 0) {
-            code = MDB_CORRUPTED;
-            break;
-        }
-        result = each(user, &at, from_val(key), from_val(value));
-        if (result == STORE_OK) {
-            code = mdb_cursor_get(at.cursor, &key, &value, MDB_NEXT);
-        }
-    }
-    mdb_cursor_close(at.cursor);
-    if (code != MDB_SUCCESS && code != MDB_NOTFOUND) {
-        return kv_translate(txn->kv, code, "walking", error);
-    }
-    return result;
-}
-
-int kv_walk_delete(struct kv_cursor *at, struct store_error *error)
-{
-    at->txn->deletes = true;
-    return kv_translate(at->txn->kv, mdb_cursor_del(at->cursor, 0), "deleting", error);
-}
-
-int kv_cursor_open(struct kv_txn *txn, unsigned table, struct kv_cursor **ret_cursor,
-                   struct store_error *error)
-{
-    struct kv_cursor *made = calloc(1, sizeof *made);
-    if (!made) {
-        return store_fail(error, STORE_NO_MEMORY, "out of memory");
-    }
-    made->txn = txn;
-    int code = mdb_cursor_open(txn->txn, txn->kv->tables[table], &made->cursor);
-    if (code != MDB_SUCCESS) {
-        free(made);
-        return kv_translate(txn->kv, code, "opening a cursor", error);
-    }
-    *ret_cursor = made;
-    return STORE_OK;
-}
-
-void kv_cursor_close(struct kv_cursor *cursor)
-{
-    if (cursor) {
-        mdb_cursor_close(cursor->cursor);
-        free(cursor);
-    }
-}
-
-static int move(struct kv_cursor *cursor, MDB_val *key, MDB_cursor_op how, struct kv_bytes *ret_key,
-                struct kv_bytes *ret_value, struct store_error *error)
-{
-    MDB_val value;
-    int code = mdb_cursor_get(cursor->cursor, key, &value, how);
-    if (code == MDB_SUCCESS) {
-        *ret_key = from_val(*key);
-        *ret_value = from_val(value);
-    }
-    return kv_translate(cursor->txn->kv, code, "reading", error);
-}
-
-int kv_seek(struct kv_cursor *cursor, struct kv_bytes from, struct kv_bytes *ret_key,
-            struct kv_bytes *ret_value, struct store_error *error)
-{
-    MDB_val key = to_val(from);
-    return move(cursor, &key, MDB_SET_RANGE, ret_key, ret_value, error);
-}
-
-int kv_next(struct kv_cursor *cursor, struct kv_bytes *ret_key, struct kv_bytes *ret_value,
-            struct store_error *error)
-{
-    MDB_val key = {0};
-    return move(cursor, &key, MDB_NEXT, ret_key, ret_value, error);
-}
-
-int kv_last(struct kv_txn *txn, unsigned table, struct kv_bytes *ret_key,
-            struct kv_bytes *ret_value, struct store_error *error)
-{
-    MDB_cursor *cursor = NULL;
-    int code = mdb_cursor_open(txn->txn, txn->kv->tables[table], &cursor);
-    if (code != MDB_SUCCESS) {
-        return kv_translate(txn->kv, code, "looking for the last entry", error);
-    }
-    MDB_val key;
-    MDB_val value;
-    code = mdb_cursor_get(cursor, &key, &value, MDB_LAST);
-    mdb_cursor_close(cursor);
-    if (code == MDB_SUCCESS) {
-        *ret_key = from_val(key);
-        *ret_value = from_val(value);
-    }
-    return kv_translate(txn->kv, code, "looking for the last entry", error);
 }

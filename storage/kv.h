@@ -1,6 +1,6 @@
 /*
- * kv: ordered tables of bytes in one LMDB environment. Only kv.c, kv_scrub.c and
- * kv_pages.c know LMDB.
+ * kv: ordered tables of bytes in one LMDB environment. Only kv.c, kv_cursor.c,
+ * kv_pages.c and kv_scrub.c know LMDB.
  *
  * One environment a directory and process. Any number of threads may read, each in a transaction of
  * its own; one thread writes at a time. Bytes handed out point into the map and are valid until the

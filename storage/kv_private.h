@@ -1,6 +1,6 @@
 /*
- * kv_private: the insides of an environment, for the files that know LMDB: kv.c, kv_scrub.c
- * and kv_pages.c.
+ * kv_private: the insides of an environment, for the files that know LMDB: kv.c,
+ * kv_cursor.c, kv_pages.c and kv_scrub.c.
  */
 #ifndef UNDERTAG_KV_PRIVATE_H
 #define UNDERTAG_KV_PRIVATE_H
@@ -9,6 +9,7 @@
 #include <pthread.h>
 #include <stdatomic.h>
 #include <stdbool.h>
+#include <string.h>
 
 #include "storage/kv.h"
 
@@ -44,6 +45,18 @@ struct kv_txn {
     bool is_panic; /* it could not begin, since LMDB lets nobody in */
     bool deletes;  /* what it deleted is to be scrubbed once it is committed */
 };
+
+static inline MDB_val kv_to_val(struct kv_bytes bytes)
+{
+    MDB_val val = {.mv_size = bytes.size};
+    memcpy(&val.mv_data, &bytes.data, sizeof val.mv_data); /* it takes no const, but only reads */
+    return val;
+}
+
+static inline struct kv_bytes kv_from_val(MDB_val value)
+{
+    return kv_bytes_of(value.mv_data, value.mv_size);
+}
 
 /* Translates an LMDB code or an errno, once, here. `doing` goes into the sentence. */
 int kv_translate(const struct kv *kv, int code, const char *doing, struct store_error *error);

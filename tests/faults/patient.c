@@ -30,18 +30,10 @@ static const int ERRORS[] = {
 
 bool patient_is_possible(void)
 {
-    bool is_sanitized = false;
-#if defined(__SANITIZE_ADDRESS__) || defined(__SANITIZE_THREAD__)
-    is_sanitized = true;
-#elif defined(__has_feature)
-#if __has_feature(address_sanitizer) || __has_feature(thread_sanitizer)
-    is_sanitized = true;
-#endif
-#endif
-    if (is_sanitized) {
+    if (undertagd_is_sanitized()) {
         (void)puts("skipped: a sanitizer's program takes nothing preloaded");
     }
-    return !is_sanitized;
+    return !undertagd_is_sanitized();
 }
 
 void patient_make(struct patient *patient)

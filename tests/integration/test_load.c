@@ -159,8 +159,10 @@ static void a_thousand_nuisances_hold_nobody_up(void **state)
     size_t bytes = anonymous_bytes(crowd);
     print_message("with %d peers: %zu MiB more, %zu files more\n", PEERS,
                   (bytes - bytes_before) / MIB, open_files(crowd) - files_before);
-    /* Each has a buffer of 64 KiB to read into; what they hold beyond is bounded twice. */
-    assert_true(bytes < bytes_before + 2 * WIRE_MIB * (size_t)MIB + PEERS * (size_t)(64 * 1024));
+    /* Each has a buffer of 64 KiB to read into; what they hold beyond is bounded twice. A sanitizer
+     * holds back what was given back. */
+    assert_true(undertagd_is_sanitized() ||
+                bytes < bytes_before + 2 * WIRE_MIB * (size_t)MIB + PEERS * (size_t)(64 * 1024));
     crowd_leaves(crowd);
     wait_until_state(&crowd->service->peer, "connections", 1);
     assert_int_equal(open_files(crowd), files_before);

@@ -38,6 +38,17 @@ void undertagd_write(const struct undertagd *daemon, const char *name, const cha
     assert_int_equal(fclose(file), 0);
 }
 
+bool undertagd_is_sanitized(void)
+{
+#if defined(__SANITIZE_ADDRESS__) || defined(__SANITIZE_THREAD__)
+    return true;
+#elif defined(__has_feature)
+    return __has_feature(address_sanitizer) || __has_feature(thread_sanitizer);
+#else
+    return false;
+#endif
+}
+
 void undertagd_make(struct undertagd *daemon)
 {
     static const char NAME[] = "/undertag-XXXXXX";

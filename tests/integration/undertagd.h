@@ -26,6 +26,10 @@ struct undertagd {
     struct child child;
 };
 
+/* Whether it is built with a sanitizer, as this is: then it takes more memory, and must not have
+ * anything preloaded. */
+bool undertagd_is_sanitized(void);
+
 /* Makes the folder; nothing runs yet. */
 void undertagd_make(struct undertagd *daemon);
 

@@ -14,7 +14,8 @@
 #include "storage/kv_private.h"
 
 enum {
-    MOST_READERS = 126
+    MOST_READERS = 126,
+    FULL_BYTES = 1 << 20 /* a disk with less left is full */
 };
 
 int kv_translate(const struct kv *kv, int code, const char *doing, struct store_error *error)
@@ -208,21 +209,37 @@ int kv_exchange(struct kv *one, struct kv *other, struct store_error *error)
 /* --- transactions ------------------------------------------------------------------------------
  */
 
-/* A full disk can show as EIO from a commit, which leaves the file in doubt: so look first. */
-static int check_room(const struct kv *kv, struct store_error *error)
+static int ask_room(const struct kv *kv, uint64_t *ret_bytes, struct store_error *error)
 {
     struct statvfs status;
     if (statvfs(kv->directory, &status) < 0) {
         return kv_translate(kv, errno, "asking for free space", error);
     }
-    uint64_t left = (uint64_t)status.f_bavail * status.f_frsize;
-    if (left < kv->reserve_bytes) {
+    *ret_bytes = (uint64_t)status.f_bavail * status.f_frsize;
+    return STORE_OK;
+}
+
+/* A full disk can show as EIO from a commit, which leaves the file in doubt: so look first. */
+static int check_room(const struct kv *kv, struct store_error *error)
+{
+    uint64_t left = 0;
+    int result = ask_room(kv, &left, error);
+    if (result == STORE_OK && left < kv->reserve_bytes) {
         return store_fail(error, STORE_FULL,
                           "the disk of %s has %llu MiB left, the reserve (option disk_reserve) is "
                           "%zu MiB",
                           kv->directory, (unsigned long long)(left >> 20), kv->reserve_bytes >> 20);
     }
-    return STORE_OK;
+    return result;
+}
+
+/* Whatever the reserve: a write is cut short only where next to nothing is left behind it. */
+static bool is_disk_full(const struct kv *kv)
+{
+    uint64_t left = 0;
+    struct store_error unknown = {0};
+    uint64_t least = kv->reserve_bytes > FULL_BYTES ? kv->reserve_bytes : FULL_BYTES;
+    return ask_room(kv, &left, &unknown) == STORE_OK && left < least;
 }
 
 static int enter(struct kv *kv, bool write, struct store_error *error)
@@ -312,8 +329,7 @@ int kv_commit(struct kv_txn *txn, struct store_error *error)
         return error->code;
     }
     int code = mdb_txn_commit(txn->txn);
-    struct store_error full = {0};
-    if (code == EIO && txn->write && check_room(kv, &full) != STORE_OK) {
+    if (code == EIO && txn->write && is_disk_full(kv)) {
         code = ENOSPC; /* a write cut short by a full disk; the environment is as it was */
     }
     int result = kv_translate(kv, code, "committing", error);

@@ -12,14 +12,13 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "tests/integration/filling.h"
 #include "tests/integration/logbook.h"
 #include "tests/integration/program.h"
 #include "tests/integration/service.h"
 
 enum {
-    STORE = -32005,
-    FILINGS_MOST = 100, /* of 200 KiB: far more than fits into 16 MiB */
-    TEXT_BYTES = 200 * 1024
+    STORE = -32005
 };
 
 static int set_up_small_map(void **state)
@@ -28,52 +27,12 @@ static int set_up_small_map(void **state)
     return 0;
 }
 
-/* A text of that many bytes, of a few long words, so that it is the store that fills up and not the
- * model. */
-static char *long_text(size_t bytes)
-{
-    static const char WORDS[] = "fogfogfogfogfogfogfogfogfogfogfogfogfogfogfogfogfogfogfogfogfog "
-                                "bellbellbellbellbellbellbellbellbellbellbellbellbellbellbellbell ";
-    char *text = malloc(bytes + 1);
-    assert_non_null(text);
-    for (size_t used = 0; used < bytes; used += sizeof WORDS - 1) {
-        size_t left = bytes - used;
-        memcpy(text + used, WORDS, left < sizeof WORDS - 1 ? left : sizeof WORDS - 1);
-    }
-    text[bytes] = '\0';
-    return text;
-}
-
-/* Files "entry N" from 0 on until the store is full; returns the first that was refused. */
-static unsigned fill(struct peer *peer)
-{
-    char *text = long_text(TEXT_BYTES);
-    unsigned number = 0;
-    bool is_full = false;
-    while (!is_full) {
-        assert_true(number < FILINGS_MOST);
-        unsigned id = peer_request(
-            peer, "item.file", "{'id': 'entry %u', 'text': '%s', 'tags': ['fog']}", number, text);
-        const json_t *answer = peer_answer(peer);
-        const json_t *error = json_object_get(answer, "error");
-        assert_int_equal(whole(answer, "id"), id);
-        if (error) {
-            assert_error(error, STORE, "");
-            is_full = true;
-        } else {
-            number++;
-        }
-    }
-    free(text);
-    return number;
-}
-
 /* --- a map that is full ---------------------------------------------------------------------- */
 
 static void a_filing_that_does_not_fit_changes_nothing(void **state)
 {
     struct service *service = *state;
-    unsigned refused = fill(&service->peer);
+    unsigned refused = filling_fill(&service->peer);
     assert_true(refused > 10);
     assert_int_equal(ask_seq(&service->peer), refused);
     assert_error(ask_refused(&service->peer, "item.show", "{'id': 'entry %u'}", refused), -32001,
@@ -85,7 +44,7 @@ static void a_full_store_still_answers(void **state)
 {
     struct service *service = *state;
     struct peer *peer = &service->peer;
-    unsigned refused = fill(peer);
+    unsigned refused = filling_fill(peer);
     assert_int_equal(whole(ask(peer, "item.show", "{'id': 'entry %u'}", refused - 1), "seq"),
                      refused);
     assert_int_equal(json_array_size(json_object_get(ask(peer, "item.list", "{}"), "items")),
@@ -108,7 +67,7 @@ static void what_does_not_fit_does_not_take_others_with_it(void **state)
 {
     struct service *service = *state;
     struct peer *peer = &service->peer;
-    char *text = long_text((size_t)17 * 1024 * 1024);
+    char *text = filling_text((size_t)17 * 1024 * 1024);
     unsigned before = peer_request(peer, "item.file", "{'id': 'before', 'tags': ['fog']}");
     (void)peer_request(peer, "item.file", "{'id': 'large', 'text': '%s', 'tags': ['bell']}", text);
     (void)peer_request(peer, "item.file", "{'id': 'after', 'tags': ['fog']}");
@@ -124,7 +83,7 @@ static void what_was_withdrawn_makes_room(void **state)
 {
     struct service *service = *state;
     struct peer *peer = &service->peer;
-    char *text = long_text(TEXT_BYTES);
+    char *text = filling_text(FILLING_BYTES);
     for (unsigned round = 0; round < 3; round++) {
         for (unsigned i = 0; i < 30; i++) {
             (void)ask(peer, "item.file", "{'id': '%u', 'text': '%s', 'tags': ['fog']}", i, text);
@@ -142,14 +101,14 @@ static void what_was_withdrawn_makes_room(void **state)
 static void a_full_store_opens_again(void **state)
 {
     struct service *service = *state;
-    unsigned refused = fill(&service->peer);
+    unsigned refused = filling_fill(&service->peer);
     wait_until_learned(&service->peer);
     service_stop_and_start(service);
     assert_int_equal(ask_seq(&service->peer), refused);
     assert_int_equal(ask_learned(&service->peer), refused);
     service->daemon.settings[0] = "map_size=32MiB"; /* what the sentence advises */
     service_stop_and_start(service);
-    char *text = long_text(TEXT_BYTES);
+    char *text = filling_text(FILLING_BYTES);
     for (unsigned i = 0; i < 20; i++) {
         (void)ask(&service->peer, "item.file", "{'id': 'new %u', 'text': '%s', 'tags': []}", i,
                   text);

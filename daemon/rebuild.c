@@ -165,6 +165,7 @@ static int launch(struct rebuild *rebuild, const struct options *wanted,
 {
     sync_lock(&rebuild->mutex);
     rebuild->notes = *notes;
+    rebuild->seq = notes->next.seq;
     options_take_learning(&rebuild->next, wanted);
     rebuild->learned = 0;
     rebuild->has_ended = false;
@@ -213,7 +214,7 @@ void rebuild_read(struct rebuild *rebuild, struct rebuild_state *ret_state)
 {
     sync_lock(&rebuild->mutex);
     *ret_state = (struct rebuild_state){.is_running = rebuild->phase != REBUILD_IDLE,
-                                        .seq = rebuild->notes.next.seq,
+                                        .seq = rebuild->seq,
                                         .learned = rebuild->learned,
                                         .options = rebuild->next,
                                         .has_ended = rebuild->has_ended,
@@ -274,7 +275,8 @@ int rebuild_resume(struct rebuild *rebuild)
     sync_lock(&rebuild->mutex);
     bool is_due = rebuild->notes.next.number > 0;
     rebuild->phase = is_due ? REBUILD_BUILDING : REBUILD_IDLE;
-    rebuild->ended_seq = rebuild->notes.next.seq;
+    rebuild->seq = rebuild->notes.next.seq;
+    rebuild->ended_seq = rebuild->seq;
     int code = is_due ? start_thread(rebuild) : 0;
     rebuild->phase = code == 0 ? rebuild->phase : REBUILD_IDLE;
     sync_unlock(&rebuild->mutex);

@@ -29,6 +29,7 @@ struct rebuild {
     struct options used;
     struct options next;
     struct learning_notes notes;
+    uint64_t seq;     /* at which the build began; unlike the notes' it stays to the very end */
     uint64_t learned; /* by the build */
     bool has_ended;
     uint64_t ended_seq;

@@ -298,7 +298,8 @@ static void a_model_of_an_older_format_is_learned_again(void **state)
                          kv_bytes_of(format_2, sizeof format_2));
 }
 
-/* Words are not loaded at a start: the damage of one is met when it is wanted, here by log/3. */
+/* Words are not loaded at a start: the damage of one is met when it is wanted, by who asks, by
+ * log/3 and, sooner or later, by the trainer, which scores log/1 again. */
 static void meet_a_damaged_word(struct opened *opened)
 {
     (void)FILE_ITEM(opened, "log/1", "schoonerwreckage", "casualties");
@@ -307,7 +308,6 @@ static void meet_a_damaged_word(struct opened *opened)
     close_home(opened);
     write_model(opened, "words", kv_bytes_of("schoonerwreckage", 16), kv_bytes_of("fog", 3));
     open_home(opened);
-    assert_int_equal(try_ask_draft(opened, "fog"), 0); /* what is whole is answered */
     assert_int_equal(try_ask_draft(opened, "schoonerwreckage"), -EIO);
     (void)FILE_ITEM(opened, "log/3", "schoonerwreckage", "casualties");
 }

@@ -61,14 +61,14 @@ static void free_when_over(struct connection *connection)
     if (!connection->closed || connection->calls.running > 0 || connection->pumping) {
         return;
     }
-    hold(connection, 0);
-    connection->settings.room->connections--;
     call_queue_abandon(&connection->calls);
     lines_deinit(&connection->lines);
     free(connection->filling.bytes);
     free(connection->writing.bytes);
     peer_identity_deinit(&connection->calls.peer);
     if (connection->settings.gone) {
+        hold(connection, 0);
+        connection->settings.room->connections--;
         connection->settings.gone(connection->settings.user, connection);
     }
     free(connection);
@@ -396,7 +396,6 @@ int connection_accept(const struct connection_settings *settings, uv_stream_t *l
     }
     connection->handle.data = connection;
     connection->heard_ms = uv_now(settings->loop);
-    settings->room->connections++;
     code = uv_accept(listener, (uv_stream_t *)&connection->handle);
     if (code < 0) {
         connection->settings.gone = NULL; /* the owner never knew it */
@@ -411,6 +410,7 @@ int connection_accept(const struct connection_settings *settings, uv_stream_t *l
         connection_close(connection);
         return UV_ENOMEM;
     }
+    settings->room->connections++;
     *ret_connection = connection;
     return 0;
 }

@@ -95,13 +95,14 @@ static struct model_totals totals_of(const struct model_store_head *head)
         .examples = head->examples};
 }
 
-int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
+int model_keeper_load_view(struct model_view *view, struct model *model, uint64_t *ret_learned,
+                           struct store_error *error)
 {
     const struct model_store_sink sink = {.user = model, .tag = load_tag, .figures = load_figures};
     struct model_store_head head;
-    int code = model_store_read_head(store, &head, error);
+    int code = model_view_head(view, &head, error);
     if (code == STORE_OK) {
-        code = model_store_load(store, &sink, error);
+        code = model_view_load(view, &sink, error);
     }
     if (code != STORE_OK) {
         return error->code != STORE_OK ? (int)error->code : fail_to_load(error, code);
@@ -113,7 +114,21 @@ int model_keeper_load(struct model_store *store, struct model *model, struct sto
     if (code == 0) {
         code = model_restored(model);
     }
+    *ret_learned = head.learned;
     return code == 0 ? STORE_OK : fail_to_load(error, code);
+}
+
+int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
+{
+    struct model_view *view = NULL;
+    uint64_t learned = 0;
+    int code = model_view_open(store, &view, error);
+    if (code != STORE_OK) {
+        return code;
+    }
+    code = model_keeper_load_view(view, model, &learned, error);
+    model_view_close(view);
+    return code;
 }
 
 /* --- from the model into the store --------------------------------------------------------------

@@ -9,7 +9,7 @@
 #include <stdint.h>
 
 #include "daemon/learner/model.h"
-#include "storage/model_store.h"
+#include "storage/model_view.h"
 
 /* What a stored model must have been made from to be taken for ours. */
 struct model_origin {
@@ -35,6 +35,10 @@ int model_keeper_look(struct model_store *store, const struct model_origin *orig
 /* Restores into a new model what is to be in memory; the rest it reads through a model_base. */
 int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
     __attribute__((warn_unused_result));
+
+/* The same as of a view; *ret_learned is the seq that it has learned up to. */
+int model_keeper_load_view(struct model_view *view, struct model *model, uint64_t *ret_learned,
+                           struct store_error *error) __attribute__((warn_unused_result));
 
 /* Forgets what is stored. */
 int model_keeper_reset(struct model_store *store, struct store_error *error)

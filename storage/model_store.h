@@ -121,17 +121,13 @@ uint64_t model_store_file_bytes(const struct model_store *store);
 int model_store_read_head(struct model_store *store, struct model_store_head *ret_head,
                           struct store_error *error) __attribute__((warn_unused_result));
 
-/* Takes what is held in memory, part by part; anything but 0 ends the reading and is returned. */
+/* Takes what is held in memory, part by part (model_view_load); anything but 0 ends the reading and
+ * is returned. */
 struct model_store_sink {
     void *user;
     int (*tag)(void *user, const struct model_store_tag *tag);
     int (*figures)(void *user, const struct model_store_figures *figures);
 };
-
-/* Gives what is held in memory: the tags by their numbers, then the figures. Words, chunks and
- * entries are read when they are wanted (model_view.h). */
-int model_store_load(struct model_store *store, const struct model_store_sink *sink,
-                     struct store_error *error) __attribute__((warn_unused_result));
 
 /*
  * Writing: what is to change is collected, by a thread that may be any, and then committed, by

@@ -1,7 +1,7 @@
 /*
  * model_store_private: the model store's own insides, for the files that are it together:
- * model_store (life, writing), model_store_read (what is held in memory) and model_view (what is
- * not).
+ * model_store (life, writing), model_store_read (what is held in memory), model_view (what is not)
+ * and model_walk (all of it).
  */
 #ifndef UNDERTAG_MODEL_STORE_PRIVATE_H
 #define UNDERTAG_MODEL_STORE_PRIVATE_H
@@ -38,6 +38,16 @@ static inline struct kv_bytes model_store_head_key(void)
 /* The head, in a transaction. STORE_NOT_FOUND where no model has been stored yet. */
 int model_store_get_head(struct kv_txn *txn, struct model_store_head *ret_head,
                          struct store_error *error) __attribute__((warn_unused_result));
+
+struct model_view;
+
+/* The transaction of a view. */
+struct kv_txn *model_view_txn(struct model_view *view);
+
+/* Reads a word's record. */
+int model_store_read_word(struct kv_bytes key, struct kv_bytes value,
+                          struct model_store_word *ret_word, struct store_error *error)
+    __attribute__((warn_unused_result));
 
 /* The body of a checked record: what follows the checksum, which is that of key and body. */
 int model_store_open_record(struct kv_bytes key, struct kv_bytes value, const char *what,

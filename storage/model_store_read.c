@@ -1,6 +1,7 @@
 #include <string.h>
 
 #include "storage/model_store_private.h"
+#include "storage/model_view.h"
 
 static int decode_head(struct kv_bytes value, struct model_store_head *ret_head,
                        struct store_error *error)
@@ -138,22 +139,18 @@ static int load_figures(void *user, struct kv_cursor *at, struct kv_bytes key,
     return loading->sink->figures(loading->sink->user, &figures);
 }
 
-int model_store_load(struct model_store *store, const struct model_store_sink *sink,
-                     struct store_error *error)
+int model_view_load(struct model_view *view, const struct model_store_sink *sink,
+                    struct store_error *error)
 {
     static const struct {
         enum model_table table;
         kv_each each;
     } walks[] = {{MODEL_TAGS, load_tag}, {MODEL_FIGURES, load_figures}};
     struct loading loading = {.sink = sink, .error = error};
-    struct kv_txn *txn = NULL;
-    int result = kv_begin(store->kv, false, &txn, error);
-    if (result != STORE_OK) {
-        return result;
-    }
+    int result = STORE_OK;
     for (size_t i = 0; i < sizeof walks / sizeof walks[0] && result == STORE_OK; i++) {
-        result = kv_walk(txn, walks[i].table, kv_bytes_of(NULL, 0), walks[i].each, &loading, error);
+        result = kv_walk(model_view_txn(view), walks[i].table, kv_bytes_of(NULL, 0), walks[i].each,
+                         &loading, error);
     }
-    kv_abort(txn);
     return result;
 }

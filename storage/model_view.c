@@ -67,6 +67,11 @@ void model_view_close(struct model_view *view)
     }
 }
 
+struct kv_txn *model_view_txn(struct model_view *view)
+{
+    return view->txn;
+}
+
 static int need_cursor(const struct model_view *view, enum model_table table,
                        struct kv_cursor **cursor, struct store_error *error)
 {
@@ -118,24 +123,28 @@ int model_view_chunk(struct model_view *view, uint32_t word, uint32_t number,
 /* --- words --------------------------------------------------------------------------------------
  */
 
-int model_view_word(struct model_view *view, const char *term, size_t term_bytes,
-                    struct model_store_word *ret_word, struct store_error *error)
+int model_store_read_word(struct kv_bytes key, struct kv_bytes value,
+                          struct model_store_word *ret_word, struct store_error *error)
 {
-    struct kv_bytes value = {0};
     struct codec_reader reader;
-    struct kv_bytes key = kv_bytes_of(term, term_bytes);
-    int result = kv_get(view->txn, MODEL_WORDS, key, &value, error);
-    if (result == STORE_OK) {
-        result = model_store_open_record(key, value, "word", &reader, error);
-    }
+    int result = model_store_open_record(key, value, "word", &reader, error);
     if (result != STORE_OK) {
         return result;
     }
-    *ret_word = (struct model_store_word){.term = term, .term_bytes = term_bytes};
+    *ret_word = (struct model_store_word){.term = key.data, .term_bytes = key.size};
     ret_word->number = codec_get_u32(&reader);
     ret_word->count = codec_get_u32(&reader);
     return reader.failed ? store_fail(error, STORE_CORRUPT, "a stored word of the model is damaged")
                          : STORE_OK;
+}
+
+int model_view_word(struct model_view *view, const char *term, size_t term_bytes,
+                    struct model_store_word *ret_word, struct store_error *error)
+{
+    struct kv_bytes value = {0};
+    struct kv_bytes key = kv_bytes_of(term, term_bytes);
+    int result = kv_get(view->txn, MODEL_WORDS, key, &value, error);
+    return result == STORE_OK ? model_store_read_word(key, value, ret_word, error) : result;
 }
 
 /* --- entries ------------------------------------------------------------------------------------

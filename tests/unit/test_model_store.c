@@ -127,7 +127,11 @@ static int see_figures(void *user, const struct model_store_figures *figures)
 static int load(struct stored *stored)
 {
     struct model_store_sink sink = {.user = stored, .tag = see_tag, .figures = see_figures};
-    return model_store_load(stored->store, &sink, &stored->error);
+    struct model_view *view = NULL;
+    assert_int_equal(model_view_open(stored->store, &view, &stored->error), STORE_OK);
+    int result = model_view_load(view, &sink, &stored->error);
+    model_view_close(view);
+    return result;
 }
 
 static void see_words(struct stored *stored, struct model_view *view)

@@ -2,20 +2,32 @@
 
 static const double SECOND_WEIGHT = 0.5;
 
-static void read_fit(void *user, const struct model *model, const struct base *base,
-                     uint64_t learned)
+void outlook_of_model(const struct model *model, uint64_t items, uint64_t learned,
+                      struct outlook *ret_outlook)
+{
+    *ret_outlook = (struct outlook){.fit = *model_fit(model),
+                                    .documents = (double)items,
+                                    .growth = propensity_growth((double)items),
+                                    .learned = learned};
+}
+
+struct reading {
+    uint64_t items;
+    struct outlook *outlook;
+};
+
+static void read_outlook(void *user, const struct model *model, const struct base *base,
+                         uint64_t learned)
 {
     (void)base;
-    struct outlook *outlook = user;
-    outlook->fit = *model_fit(model);
-    outlook->learned = learned;
+    const struct reading *reading = user;
+    outlook_of_model(model, reading->items, learned, reading->outlook);
 }
 
 int outlook_begin(struct engine *engine, uint64_t items, struct outlook *ret_outlook)
 {
-    ret_outlook->documents = (double)items;
-    ret_outlook->growth = propensity_growth((double)items);
-    return engine_read_model(engine, read_fit, ret_outlook);
+    struct reading reading = {.items = items, .outlook = ret_outlook};
+    return engine_read_model(engine, read_outlook, &reading);
 }
 
 struct completeness_tag outlook_of_tag(const struct vocabulary_counts *counts)

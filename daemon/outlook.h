@@ -21,6 +21,10 @@ struct outlook {
 int outlook_begin(struct engine *engine, uint64_t items, struct outlook *ret_outlook)
     __attribute__((warn_unused_result));
 
+/* The same by a model that has learned up to `learned`. */
+void outlook_of_model(const struct model *model, uint64_t items, uint64_t learned,
+                      struct outlook *ret_outlook);
+
 /* What completeness.h takes of a tag. A second tagging counts as half a trial. */
 struct completeness_tag outlook_of_tag(const struct vocabulary_counts *counts);
 

@@ -7,19 +7,13 @@
 
 #include "daemon/answer.h"
 #include "daemon/grow.h"
-#include "daemon/outlook.h"
 #include "daemon/params.h"
 #include "daemon/read_job.h"
-#include "storage/vocabulary.h"
+#include "daemon/tag_json.h"
 
 enum {
     LIST_MOST = 10000
 };
-
-static const char *state_name(enum vocabulary_state state)
-{
-    return state == VOCABULARY_RETIRED ? "retired" : "open";
-}
 
 /* The tag of a name that a member of params holds. */
 static int find_tag(struct read_job *job, struct store_view *view, const char *pointer,
@@ -42,30 +36,6 @@ struct show_job {
     struct store_text tag;
 };
 
-static json_t *show_json(const struct outlook *outlook, const struct vocabulary_tag *tag)
-{
-    struct propensity_of_tag propensity = outlook_propensity(outlook, &tag->counts);
-    double missing = outlook_missing(outlook, &tag->counts);
-    json_t *result = json_object();
-    answer_add(&result, "tag", json_string(tag->name));
-    answer_add(&result, "count", answer_count(tag->counts.count));
-    answer_add(&result, "unprompted", answer_count(tag->counts.unprompted));
-    answer_add(&result, "propensity",
-               json_pack("{s:f, s:f, s:f, s:s}", "p", propensity.p, "low", propensity.low, "high",
-                         propensity.high, "from", outlook_from(propensity.from)));
-    answer_add(&result, "expected_true", answer_number((double)tag->counts.count + missing));
-    answer_add(&result, "missing", answer_number(missing));
-    answer_add(&result, "opened_seq", answer_count(tag->opened_seq));
-    answer_add(&result, "state", json_string(state_name(tag->state)));
-    answer_add(&result, "label", json_null());
-    answer_add(&result, "broader", json_null());
-    answer_add(&result, "aliases", json_array());
-    answer_add(&result, "rulings",
-               json_pack("{s:o, s:o}", "belongs", answer_count(tag->counts.ruled_belongs), "not",
-                         answer_count(tag->counts.ruled_not)));
-    return result;
-}
-
 static void run_show(struct read_job *base)
 {
     struct show_job *job = (struct show_job *)base;
@@ -77,7 +47,7 @@ static void run_show(struct read_job *base)
     }
     if (find_tag(base, view, "/tag", job->tag, &tag) == 0 &&
         outlook_begin(base->methods->engine, store_view_totals(view).items, &outlook) == 0) {
-        base->result = show_json(&outlook, &tag);
+        base->result = tag_json(&outlook, &tag);
     }
     store_end(view);
 }
@@ -149,7 +119,7 @@ static int add_tag(struct list_job *job, const struct vocabulary_tag *tag)
                                            answer_count(tag->counts.count), "p",
                                            outlook_propensity_mean(&job->outlook, &tag->counts),
                                            "missing", outlook_missing(&job->outlook, &tag->counts),
-                                           "state", state_name(tag->state)));
+                                           "state", tag_state_name(tag->state)));
 }
 
 static int add_by_name(void *user, const struct vocabulary_tag *tag)

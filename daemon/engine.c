@@ -36,6 +36,7 @@ struct engine {
     struct troubles troubles;
     struct workspaces workspaces;
     struct rebuild *rebuild;
+    struct moments *moments;
     struct trainer *trainer;
     struct writer *writer;
     atomic_uint_fast64_t questions;
@@ -248,6 +249,8 @@ static int start_threads(struct engine *engine, const struct engine_settings *se
                                              .features = &engine->features,
                                              .origin = origin_of(engine, 0),
                                              .rebuild = engine->rebuild,
+                                             .moments = engine->moments,
+                                             .configured = engine->options,
                                              .flush_every_ms = engine->options.flush_every_ms,
                                              .flush_changes = engine->options.flush_changes,
                                              .rehearsal_share = engine->options.rehearsal_share,
@@ -314,6 +317,11 @@ int engine_open(const struct engine_settings *settings, struct engine **ret_engi
         exit_code = fail_errno(error, "the daemon cannot start", code);
         goto fail_rebuild;
     }
+    code = moments_new(&engine->moments);
+    if (code < 0) {
+        exit_code = fail_errno(error, "the daemon cannot start", code);
+        goto fail_moments;
+    }
     code = start_threads(engine, settings);
     if (code < 0) {
         exit_code = fail_errno(error, "a thread cannot be started", code);
@@ -322,6 +330,8 @@ int engine_open(const struct engine_settings *settings, struct engine **ret_engi
     *ret_engine = engine;
     return 0;
 fail_threads:
+    moments_free(engine->moments);
+fail_moments:
     rebuild_free(engine->rebuild);
 fail_rebuild:
     workspaces_deinit(&engine->workspaces);
@@ -345,11 +355,13 @@ int engine_close(struct engine *engine)
     if (!engine) {
         return 0;
     }
+    moments_stop(engine->moments);
     backlog_stop(engine->backlog);
     rebuild_stop(engine->rebuild);
     trainer_free(engine->trainer); /* it wakes the writer, so the writer goes after it, */
     rebuild_free(engine->rebuild); /* as this does */
     writer_free(engine->writer);
+    moments_free(engine->moments);
     workspaces_deinit(&engine->workspaces);
     troubles_deinit(&engine->troubles);
     backlog_free(engine->backlog);
@@ -373,6 +385,23 @@ void engine_push(struct engine *engine, struct change *change)
 struct change *engine_take_done(struct engine *engine)
 {
     return writer_take_done(engine->writer);
+}
+
+int engine_take_moment(struct engine *engine, struct moment *ret_moment, struct store_error *error)
+{
+    moments_want(engine->moments);
+    backlog_nudge(engine->backlog);
+    return moments_take(engine->moments, ret_moment, error);
+}
+
+void engine_give_back(struct engine *engine, struct moment *moment)
+{
+    moments_give_back(engine->moments, moment);
+}
+
+void engine_stop_moments(struct engine *engine)
+{
+    moments_stop(engine->moments);
 }
 
 int engine_rebuild(struct engine *engine, const struct options *wanted, uint64_t *ret_seq,

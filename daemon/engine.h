@@ -8,6 +8,7 @@
 #include <stdint.h>
 
 #include "daemon/backlog.h"
+#include "daemon/moment.h"
 #include "daemon/options.h"
 #include "daemon/rebuild.h"
 #include "daemon/troubles.h"
@@ -53,6 +54,16 @@ void engine_read_rebuild(struct engine *engine, struct rebuild_state *ret_state)
 
 /* Lays the learning options that are in force over those that are configured. */
 void engine_lay_over(struct engine *engine, struct options *options);
+
+/* --- copying: a thread that may wait, one at a time --- */
+
+/* See moment.h. It must be given back before the engine is closed. */
+int engine_take_moment(struct engine *engine, struct moment *ret_moment, struct store_error *error)
+    __attribute__((warn_unused_result));
+void engine_give_back(struct engine *engine, struct moment *moment);
+
+/* Who waits for a moment is told that the daemon stops. Any thread. */
+void engine_stop_moments(struct engine *engine);
 
 /* --- reading: any thread --- */
 

@@ -203,7 +203,8 @@ static void take_over(struct trainer *trainer)
     struct trainer_settings *settings = &trainer->settings;
     const struct rebuild_trainer offered = {
         .learned = trainer->learned, .reader = &trainer->reader, .text = trainer->text};
-    if (!settings->rebuild || trainer->failed || trainer->is_storing ||
+    if (!settings->rebuild || trainer->failed || trainer->is_storing || trainer->moment.store ||
+        moments_are_held(settings->moments) ||
         !rebuild_take_over(settings->rebuild, settings->shared, &offered)) {
         return;
     }
@@ -273,7 +274,8 @@ static void *run(void *argument)
     while (!backlog_is_stopping(backlog)) {
         struct store_error error = {0};
         uint64_t behind = trainer->failed ? UINT64_MAX : trainer->learned;
-        uint64_t last = backlog_wait_for_work(backlog, behind, idle_ms(trainer));
+        uint64_t last =
+            trainer_bound(trainer, backlog_wait_for_work(backlog, behind, idle_ms(trainer)));
         bool is_idle = last <= behind;
         trainer_end_storing(trainer, false);
         if (must_wait(trainer)) {
@@ -282,12 +284,14 @@ static void *run(void *argument)
             trainer_fail(trainer, &error);
         }
         trainer_work_idly(trainer, is_idle);
+        trainer_make_moment(trainer);
         take_over(trainer);
         trainer_store_if_due(trainer);
         if (is_idle && trainer->scrub_due && !trainer->is_storing) {
             scrub(trainer);
         }
     }
+    trainer_drop_moment(trainer);
     trainer_store_last(trainer);
     finish_scrubbing(trainer);
     return NULL;

@@ -9,6 +9,7 @@
 
 #include "daemon/backlog.h"
 #include "daemon/model_keeper.h"
+#include "daemon/moment.h"
 #include "daemon/rebuild.h"
 #include "daemon/shared_model.h"
 #include "daemon/troubles.h"
@@ -27,6 +28,8 @@ struct trainer_settings {
     const struct features_settings *features;
     struct model_origin origin;
     struct rebuild *rebuild; /* a model that may take the place of this one; NULL: never */
+    struct moments *moments; /* for those who copy store and model */
+    struct options configured;
     uint64_t flush_every_ms;
     uint64_t flush_changes;
     double rehearsal_share;        /* of a core, for items learned again; 0: none */

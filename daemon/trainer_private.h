@@ -1,7 +1,7 @@
 /*
  * trainer_private: the trainer's own insides, for the files that are it together: trainer (changes,
- * the thread), trainer_storing (the model into its store) and trainer_idle (what is done while
- * there is nothing to learn).
+ * the thread), trainer_storing (the model into its store), trainer_moment (both stores as of one
+ * change) and trainer_idle (what is done while there is nothing to learn).
  */
 #ifndef UNDERTAG_TRAINER_PRIVATE_H
 #define UNDERTAG_TRAINER_PRIVATE_H
@@ -37,6 +37,8 @@ struct trainer {
     bool scrub_due;
     uint64_t scrub_wait_ms; /* before it is gone on with */
     size_t scrub_left;      /* pages, when it was last looked at */
+    struct moment moment;   /* being made, where its store is there */
+    bool moment_is_sealed;
     bool failed;
     bool store_failed; /* when the model was to be stored last */
     bool waits;        /* until it can be stored */
@@ -51,6 +53,9 @@ void trainer_end_round(struct trainer *trainer, struct store_view *view);
 /* Begins to store the model where that is due; it is stored while this thread goes on. */
 void trainer_store_if_due(struct trainer *trainer);
 
+/* The same, due or not, while nothing is being stored. Where that fails it is told. */
+void trainer_begin_storing(struct trainer *trainer);
+
 /* Takes note of what has been stored; waits for what is being stored if `waits`. No round may be
  * open. */
 void trainer_end_storing(struct trainer *trainer, bool waits);
@@ -60,6 +65,16 @@ void trainer_store_last(struct trainer *trainer);
 
 /* Whether the model must be stored before more is learned. */
 bool trainer_is_full(const struct trainer *trainer);
+
+/* Makes a moment where one is wanted, a step at a time; between two rounds. */
+void trainer_make_moment(struct trainer *trainer);
+
+/* Gives up the one that is being made. */
+void trainer_drop_moment(struct trainer *trainer);
+
+/* Whether one is being made and not all of it learned yet; and what to learn up to then. */
+bool trainer_nears_moment(const struct trainer *trainer);
+uint64_t trainer_bound(const struct trainer *trainer, uint64_t last);
 
 /* The error that the learner's code is, at a change or an item; notes damage. */
 int trainer_fail_to_learn(struct trainer *trainer, int code, uint64_t seq,

@@ -78,7 +78,7 @@ static int seal(struct trainer *trainer, struct model_store_writing **ret_writin
     return STORE_OK;
 }
 
-static void begin_storing(struct trainer *trainer)
+void trainer_begin_storing(struct trainer *trainer)
 {
     struct store_error error = {0};
     struct model_store_writing *writing = NULL;
@@ -95,8 +95,9 @@ static void begin_storing(struct trainer *trainer)
 
 void trainer_store_if_due(struct trainer *trainer)
 {
-    if (is_due(trainer)) {
-        begin_storing(trainer);
+    /* A moment has it stored soon. */
+    if (is_due(trainer) && (!trainer_nears_moment(trainer) || trainer_is_full(trainer))) {
+        trainer_begin_storing(trainer);
     }
 }
 
@@ -141,7 +142,7 @@ void trainer_store_last(struct trainer *trainer)
 {
     trainer_end_storing(trainer, true);
     if ((trainer->learned > trainer->kept || trainer->idly_changed) && !trainer->failed) {
-        begin_storing(trainer);
+        trainer_begin_storing(trainer);
         trainer_end_storing(trainer, true);
     }
 }

@@ -318,3 +318,14 @@ void model_measure(const struct model *model, struct model_size *ret_size)
         .listed = worklist_size(model->worklist),
         .stale = worklist_count_stale(model->worklist, model_stale_below(model))};
 }
+
+double model_bias(const struct model *model, uint32_t tag)
+{
+    return (double)weights_bias(model->weights, WEIGHTS_MAIN, tag).value;
+}
+
+int model_read_chunk(const struct model *model, struct base_bytes chunk,
+                     struct weights_pair ret_pairs[WEIGHTS_CHUNK_PAIRS])
+{
+    return weights_read_chunk(model->weights, chunk, ret_pairs);
+}

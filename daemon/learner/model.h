@@ -254,4 +254,14 @@ struct model_size {
 
 void model_measure(const struct model *model, struct model_size *ret_size);
 
+/* --- for those who copy it ----------------------------------------------------------------------
+ */
+
+/* b of a tag that the model knows: s = -1 + b + w·x. */
+double model_bias(const struct model *model, uint32_t tag);
+
+/* See weights_read_chunk. */
+int model_read_chunk(const struct model *model, struct base_bytes chunk,
+                     struct weights_pair ret_pairs[WEIGHTS_CHUNK_PAIRS]);
+
 #endif

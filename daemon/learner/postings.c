@@ -138,8 +138,7 @@ size_t postings_count(const struct postings *postings, uint32_t word)
 /* --- from the base ------------------------------------------------------------------------------
  */
 
-/* Whether bytes of the base are postings. */
-static bool are_postings(const struct postings *postings, struct base_bytes bytes)
+bool postings_are(const struct postings *postings, struct base_bytes bytes)
 {
     size_t posting_bytes = postings->stride * sizeof(uint32_t);
     bool fit = bytes.size > 0 && bytes.size % posting_bytes == 0 &&
@@ -159,7 +158,7 @@ static int read_base(const struct postings *postings, const struct base *base, u
         return -ENOENT;
     }
     int result = base->chunk(base->user, word, number, ret_bytes);
-    return result == 0 && !are_postings(postings, *ret_bytes) ? -EIO : result;
+    return result == 0 && !postings_are(postings, *ret_bytes) ? -EIO : result;
 }
 
 /* --- reading ------------------------------------------------------------------------------------

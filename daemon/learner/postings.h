@@ -75,6 +75,9 @@ void postings_walk_begin(const struct postings *postings, const struct base *bas
  * what is stored cannot be read or does not fit, or -ENOMEM. */
 int postings_walk_next(struct postings_walk *walk, const uint32_t **ret_numbers, size_t *ret_count);
 
+/* Whether these bytes can be a stored chunk of these postings. */
+bool postings_are(const struct postings *postings, struct base_bytes bytes);
+
 /* --- changing --- */
 
 /* Brings all of a word's chunks into memory. Returns 0, -EIO or -ENOMEM. */

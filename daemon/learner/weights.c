@@ -2,8 +2,10 @@
 
 #include <errno.h>
 #include <stdlib.h>
+#include <string.h>
 
 #include "daemon/grow.h"
+#include "daemon/learner/cell.h"
 #include "daemon/learner/weights_private.h"
 
 int weights_new(const struct weights_settings *settings, struct weights **ret_weights)
@@ -256,4 +258,29 @@ void weights_restore_postings(struct weights *weights, uint64_t postings,
 {
     weights->posting_count = postings;
     weights->pruned = pruned;
+}
+
+/* --- for those who copy them --------------------------------------------------------------------
+ */
+
+_Static_assert((int)WEIGHTS_CHUNK_PAIRS == (int)POSTINGS_CHUNK, "a chunk's postings have room");
+
+int weights_read_chunk(const struct weights *weights, struct base_bytes chunk,
+                       struct weights_pair ret_pairs[WEIGHTS_CHUNK_PAIRS])
+{
+    uint32_t numbers[POSTINGS_MOST_NUMBERS];
+    size_t stride = postings_stride(weights->postings);
+    if (!postings_are(weights->postings, chunk)) {
+        return -EINVAL;
+    }
+    memcpy(numbers, chunk.data, chunk.size); /* aligned */
+    int count = 0;
+    for (size_t at = 0; at < chunk.size / sizeof numbers[0]; at += stride) {
+        int16_t steps = cell_weight(numbers[at + 1]);
+        if (steps != 0) {
+            ret_pairs[count++] =
+                (struct weights_pair){.tag = numbers[at], .weight = (float)steps * CELL_STEP};
+        }
+    }
+    return count;
 }

@@ -252,4 +252,19 @@ int weights_restore_count(struct weights *weights, uint32_t tag, uint32_t count)
 void weights_restore_postings(struct weights *weights, uint64_t postings,
                               struct weights_pruned pruned);
 
+/* A tag's weight for some word, in the main lane. */
+struct weights_pair {
+    uint32_t tag;
+    float weight;
+};
+
+enum {
+    WEIGHTS_CHUNK_PAIRS = 160 /* at most, in a chunk */
+};
+
+/* What a stored chunk's postings weigh, those that weigh nothing left out; tags are below
+ * `tag_count`. Returns how many there are, or -EINVAL for what is no chunk of these weights. */
+int weights_read_chunk(const struct weights *weights, struct base_bytes chunk,
+                       struct weights_pair ret_pairs[WEIGHTS_CHUNK_PAIRS]);
+
 #endif

@@ -27,6 +27,7 @@ struct training {
     struct troubles troubles;
     struct features_settings features;
     struct workspaces workspaces;
+    struct moments *moments;
     struct trainer_settings settings;
     struct trainer *trainer;
     struct store_error error;
@@ -108,6 +109,7 @@ static inline void open_parts(struct training *training)
     assert_int_equal(pthread_cond_init(&training->kept, NULL), 0);
     training->features = (struct features_settings){.title_weight = 1.5, .key = TRAINING_KEY};
     assert_int_equal(workspaces_init(&training->workspaces, &training->features), 0);
+    assert_int_equal(moments_new(&training->moments), 0);
     training->model_settings = training->store->settings;
 }
 
@@ -128,6 +130,7 @@ static inline int training_set_up(void **state)
         .flush_changes = 1000 * 1000,
         .memory_bytes = LARGE_BUDGET_BYTES,
         .workspaces = &training->workspaces,
+        .moments = training->moments,
         .user = training,
         .kept = on_kept};
     open_model(training);
@@ -154,6 +157,7 @@ static inline int training_tear_down(void **state)
         stop(training);
         close_model(training);
     }
+    moments_free(training->moments);
     workspaces_deinit(&training->workspaces);
     troubles_deinit(&training->troubles);
     (void)pthread_cond_destroy(&training->kept);

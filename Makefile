@@ -29,7 +29,7 @@ WARNINGS += -Werror
 endif
 BASE_CFLAGS := -std=c17 -D_GNU_SOURCE -I. -fno-strict-aliasing -pthread $(WARNINGS) \
                -DUNDERTAG_VERSION='"$(VERSION)"'
-DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih zlib libsystemd
+DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih zlib libzip libsystemd
 CLIENT_PACKAGES := jansson libutf8proc
 # Asked only where something is compiled, so that `make packages` runs on a bare machine.
 PACKAGE_CFLAGS = $(shell pkg-config --cflags $(DAEMON_PACKAGES))
@@ -37,7 +37,7 @@ DAEMON_LIBS = $(shell pkg-config --libs $(DAEMON_PACKAGES)) -lunistring -lstemme
 CLIENT_LIBS = $(shell pkg-config --libs $(CLIENT_PACKAGES)) -lm
 TEST_LIBS = $(shell pkg-config --libs cmocka)
 
-DAEMON_SOURCES := $(filter-out daemon/main.c,$(wildcard daemon/*.c daemon/learner/*.c daemon/text/*.c))
+DAEMON_SOURCES := $(filter-out daemon/main.c,$(wildcard daemon/*.c daemon/*/*.c))
 STORAGE_SOURCES := $(wildcard storage/*.c)
 # What both programs use is in daemon/: the framing of the wire and the places of its files.
 CLIENT_SOURCES := $(filter-out client/main.c,$(wildcard client/*.c)) daemon/lines.c

@@ -1,0 +1,78 @@
+#include "daemon/snapshot/snapshot_file.h"
+
+#include <errno.h>
+#include <fcntl.h>
+#include <stdlib.h>
+#include <string.h>
+#include <unistd.h>
+
+/* As many digits as tell two floats apart. */
+#define DUMP_FLAGS (JSON_COMPACT | JSON_REAL_PRECISION(9))
+
+int snapshot_fail(struct store_error *error, const char *name, int errnum)
+{
+    bool is_full = errnum == ENOSPC || errnum == EDQUOT;
+    return store_fail(error, is_full ? STORE_FULL : STORE_DENIED, "%s cannot be written: %s", name,
+                      strerror(errnum));
+}
+
+int snapshot_file_create(int folder_fd, const char *name, struct pace *pace,
+                         struct store_error *error, struct snapshot_file *ret_file)
+{
+    int fd = openat(folder_fd, name, O_WRONLY | O_CREAT | O_EXCL | O_NOFOLLOW | O_CLOEXEC, 0640);
+    if (fd < 0) {
+        return snapshot_fail(error, name, errno);
+    }
+    FILE *stream = fdopen(fd, "w");
+    if (!stream) {
+        int errnum = errno;
+        (void)close(fd); /* nothing is in it */
+        return snapshot_fail(error, name, errnum);
+    }
+    *ret_file =
+        (struct snapshot_file){.stream = stream, .name = name, .pace = pace, .error = error};
+    return STORE_OK;
+}
+
+int snapshot_file_add(struct snapshot_file *file, json_t *line)
+{
+    char *text = line ? json_dumps(line, DUMP_FLAGS) : NULL;
+    json_decref(line);
+    if (!text) {
+        return store_fail(file->error, STORE_NO_MEMORY, "there is no memory for %s", file->name);
+    }
+    size_t bytes = strlen(text);
+    text[bytes++] = '\n'; /* in the place of the NUL */
+    size_t written = fwrite(text, 1, bytes, file->stream);
+    int errnum = errno;
+    free(text);
+    return written == bytes ? pace_add(file->pace, bytes, file->error)
+                            : snapshot_fail(file->error, file->name, errnum);
+}
+
+int snapshot_file_close(struct snapshot_file *file, int code)
+{
+    int errnum = 0;
+    if (code == STORE_OK && (fflush(file->stream) != 0 || fsync(fileno(file->stream)) < 0)) {
+        errnum = errno;
+    }
+    if (fclose(file->stream) != 0 && errnum == 0) {
+        errnum = errno;
+    }
+    if (code != STORE_OK || errnum == 0) {
+        return code;
+    }
+    return snapshot_fail(file->error, file->name, errnum);
+}
+
+int snapshot_file_write(int folder_fd, const char *name, json_t *document, struct pace *pace,
+                        struct store_error *error)
+{
+    struct snapshot_file file;
+    int code = snapshot_file_create(folder_fd, name, pace, error, &file);
+    if (code != STORE_OK) {
+        json_decref(document);
+        return code;
+    }
+    return snapshot_file_close(&file, snapshot_file_add(&file, document));
+}

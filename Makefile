@@ -29,7 +29,7 @@ WARNINGS += -Werror
 endif
 BASE_CFLAGS := -std=c17 -D_GNU_SOURCE -I. -fno-strict-aliasing -pthread $(WARNINGS) \
                -DUNDERTAG_VERSION='"$(VERSION)"'
-DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih zlib libzip libsystemd
+DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih zlib libzip libsystemd nettle
 CLIENT_PACKAGES := jansson libutf8proc
 # Asked only where something is compiled, so that `make packages` runs on a bare machine.
 PACKAGE_CFLAGS = $(shell pkg-config --cflags $(DAEMON_PACKAGES))

@@ -8,6 +8,7 @@
 #include <assert.h>
 #include <errno.h>
 #include <jansson.h>
+#include <limits.h>
 #include <malloc.h>
 #include <signal.h>
 #include <stdio.h>
@@ -20,6 +21,7 @@
 
 #include "daemon/command_line.h"
 #include "daemon/engine.h"
+#include "daemon/export_folder.h"
 #include "daemon/json_memory.h"
 #include "daemon/log.h"
 #include "daemon/manager.h"
@@ -213,6 +215,31 @@ static int listen_at(struct program *program)
     return 0;
 }
 
+/* Nobody else writes there: the home's lock is held. What is wrong with the folder is an error only
+ * for who writes into it. */
+static void sweep_exports(const struct program *program)
+{
+    char path[PATH_MAX];
+    char error[EXPORT_ERROR_BYTES];
+    struct export_folder *folder = NULL;
+    size_t count = 0;
+    int code = export_folder_place(program->line.home, program->options.export_dir, path,
+                                   sizeof path, error);
+    if (code == 0) {
+        code = export_folder_open_there(path, &folder, error);
+    }
+    if (code == 0) {
+        code = export_folder_sweep(folder, &count, error);
+        export_folder_close(folder);
+    }
+    if (code < 0 && code != -ENOENT) {
+        log_line(LOG_CAUTION, "exports: %s", error);
+    }
+    if (count > 0) {
+        log_line(LOG_NOTE, "exports: %zu that had not become whole removed from %s", count, path);
+    }
+}
+
 static int start(struct program *program)
 {
     char error[ENGINE_ERROR_BYTES];
@@ -231,6 +258,7 @@ static int start(struct program *program)
     if (exit_code != 0) {
         return fail(exit_code, error);
     }
+    sweep_exports(program);
     methods_use(program->methods, program->engine);
     watchdog_start(&program->watchdog, &program->loop, engine_heartbeat(program->engine));
     program->is_watched = true;

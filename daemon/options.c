@@ -60,6 +60,8 @@ static const struct option OPTIONS[] = {
      "once."},
     {"disk_reserve", TYPE_BYTES, AT(disk_reserve_bytes), 0, 1024 * GIB, "64MiB", NULL,
      OPTIONS_SETTING, false, "Free disk space below which nothing more is written."},
+    {"export_dir", TYPE_PATH, AT(export_dir), 0, 0, "exports", NULL, OPTIONS_SETTING, false,
+     "The folder that backups are written into; it is in the home where it does not begin with /."},
     {"flush_every_ms", TYPE_WHOLE, AT(flush_every_ms), 10, 3600000, "2000", NULL, OPTIONS_SETTING,
      false, "Milliseconds after which what was learned is stored."},
     {"flush_changes", TYPE_WHOLE, AT(flush_changes), 1, 10000000, "20000", NULL, OPTIONS_SETTING,

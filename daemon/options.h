@@ -18,6 +18,7 @@
 
 enum {
     OPTIONS_LANGUAGE_BYTES = 16,
+    OPTIONS_PATH_BYTES = 256,
     OPTIONS_ERROR_BYTES = 512,
     OPTIONS_VALUE_BYTES = ACCOUNTS_TEXT_BYTES /* the longest value as text */
 };
@@ -41,6 +42,7 @@ struct options {
     /* the store */
     uint64_t map_size_bytes;
     uint64_t disk_reserve_bytes;
+    char export_dir[OPTIONS_PATH_BYTES];
     uint64_t flush_every_ms;
     uint64_t flush_changes;
     uint64_t memory_budget_bytes;

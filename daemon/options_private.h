@@ -18,7 +18,8 @@ enum option_type {
     TYPE_SWITCH,
     TYPE_CHOICE,
     TYPE_LANGUAGE,
-    TYPE_PEERS
+    TYPE_PEERS,
+    TYPE_PATH
 };
 
 struct option {

@@ -8,6 +8,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
+#include <unistr.h>
 
 #include "daemon/text/words.h"
 
@@ -63,6 +64,11 @@ static int refuse(char *error, const struct option *option, const char *value)
                         option->minimum, option->maximum, value);
     case TYPE_PEERS:
         return refuse_peers(error, option, value);
+    case TYPE_PATH:
+        return snprintf(error, OPTIONS_ERROR_BYTES,
+                        "option %s is a path of 1 to %d bytes of UTF-8, without control "
+                        "characters, not '%s'",
+                        option->name, OPTIONS_PATH_BYTES - 1, value);
     case TYPE_NUMBER:
         break;
     }
@@ -160,6 +166,23 @@ static bool set_language(char *member, const char *value)
     return true;
 }
 
+/* A path goes into sentences and answers, so it is text. */
+static bool set_path(char *member, const char *value)
+{
+    size_t bytes = strlen(value);
+    if (bytes == 0 || bytes >= OPTIONS_PATH_BYTES || u8_check((const uint8_t *)value, bytes)) {
+        return false;
+    }
+    for (size_t i = 0; i < bytes; i++) {
+        if ((unsigned char)value[i] < 0x20 || value[i] == 0x7F) {
+            return false;
+        }
+    }
+    memset(member, 0, OPTIONS_PATH_BYTES);
+    memcpy(member, value, bytes);
+    return true;
+}
+
 static bool set_peers(struct rights_list *member, const char *value)
 {
     char reason[ACCOUNTS_REASON_BYTES];
@@ -176,6 +199,8 @@ bool option_read(const struct option *option, void *member, const char *value)
         return set_language(member, value);
     case TYPE_PEERS:
         return set_peers(member, value);
+    case TYPE_PATH:
+        return set_path(member, value);
     case TYPE_WHOLE:
     case TYPE_BYTES:
     case TYPE_NUMBER:
@@ -208,6 +233,7 @@ void option_write(const struct option *option, const void *member, char *text, s
         (void)snprintf(text, size, "%.17g", number);
         return;
     case TYPE_LANGUAGE:
+    case TYPE_PATH:
         (void)snprintf(text, size, "%s", (const char *)member);
         return;
     case TYPE_PEERS:
@@ -237,6 +263,8 @@ size_t option_bytes(const struct option *option)
         return OPTIONS_LANGUAGE_BYTES;
     case TYPE_PEERS:
         return sizeof(struct rights_list);
+    case TYPE_PATH:
+        return OPTIONS_PATH_BYTES;
     case TYPE_WHOLE:
     case TYPE_BYTES:
     case TYPE_NUMBER:

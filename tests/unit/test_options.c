@@ -235,6 +235,34 @@ static void a_right_for_who_is_not_there_is_refused_by_name(void **state)
     assert_int_equal(configured->options.may[RIGHT_FILE].count, 1); /* as it was */
 }
 
+static void a_path_is_text_that_is_not_too_long(void **state)
+{
+    struct configured *configured = *state;
+    char longest[OPTIONS_PATH_BYTES + 1];
+    memset(longest, 'a', sizeof longest);
+    longest[OPTIONS_PATH_BYTES] = '\0'; /* one byte more than fits */
+    assert_string_equal(configured->options.export_dir, "exports");
+    assert_int_equal(set(configured, "export_dir", "/srv/logbooks/out"), 0);
+    assert_int_equal(set(configured, "export_dir", ""), -1);
+    assert_int_equal(set(configured, "export_dir", "out\nin"), -1);
+    assert_int_equal(set(configured, "export_dir", "\xFF"), -1);
+    assert_int_equal(set(configured, "export_dir", longest), -1);
+    assert_non_null(strstr(configured->error, "export_dir is a path of 1 to 255 bytes"));
+    assert_string_equal(configured->options.export_dir, "/srv/logbooks/out");
+    assert_int_equal(set(configured, "export_dir", longest + 1), 0);
+}
+
+static void a_reload_does_not_move_the_exports(void **state)
+{
+    struct configured *configured = *state;
+    struct options wanted = configured->options;
+    const char *first = NULL;
+    assert_int_equal(options_set(&wanted, "export_dir", "elsewhere", configured->error), 0);
+    assert_int_equal(options_reload(&configured->options, &wanted, &first), 1);
+    assert_string_equal(first, "export_dir");
+    assert_string_equal(configured->options.export_dir, "exports");
+}
+
 /* The owner, who may do everything, is on no list. */
 static void by_default_the_sockets_group_may_read_file_and_rule(void **state)
 {
@@ -388,6 +416,8 @@ int main(void)
         TEST(a_language_is_one_that_has_a_stemmer_or_none),
         TEST(a_right_is_a_list_of_users_and_groups),
         TEST(a_right_for_who_is_not_there_is_refused_by_name),
+        TEST(a_path_is_text_that_is_not_too_long),
+        TEST(a_reload_does_not_move_the_exports),
         TEST(by_default_the_sockets_group_may_read_file_and_rule),
         TEST(an_unknown_option_is_refused),
         TEST(an_endless_value_is_refused_with_a_sentence_that_fits),

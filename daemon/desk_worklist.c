@@ -5,6 +5,7 @@
 #include <stdlib.h>
 
 #include "daemon/answer.h"
+#include "daemon/item_json.h"
 #include "daemon/params.h"
 #include "daemon/read_job.h"
 #include "storage/vocabulary.h"
@@ -155,11 +156,6 @@ static int is_present(struct worklist_job *job, struct store_view *view, uint64_
     return code == STORE_OK || code == STORE_NOT_FOUND ? 0 : read_job_fail(&job->job, &error);
 }
 
-static json_t *text_json(struct store_text text)
-{
-    return json_stringn(text.size > 0 ? text.data : "", text.size);
-}
-
 /* Adds the item to the page, if it is still there. */
 static int add_item(struct worklist_job *job, struct store_view *view, struct listed *listed,
                     json_t **items)
@@ -177,8 +173,8 @@ static int add_item(struct worklist_job *job, struct store_view *view, struct li
     }
     job->running += expected;
     json_t *item = json_object();
-    answer_add(&item, "id", text_json(job->workspace->record.id));
-    answer_add(&item, "title", text_json(job->workspace->record.title));
+    answer_add(&item, "id", item_text_json(job->workspace->record.id));
+    answer_add(&item, "title", item_text_json(job->workspace->record.title));
     answer_add(&item, "gaps", gaps);
     answer_add(&item, "expected", answer_number(expected));
     answer_add(&item, "running", answer_number(job->running));

@@ -331,7 +331,7 @@ int export_part_add_file(struct export_part *part, const char *path, int *ret_fd
     if (!is_part_path(path)) {
         return fail_in(error, -EINVAL, part, path);
     }
-    int fd = openat(part->fd, path, O_WRONLY | O_CREAT | O_EXCL | O_NOFOLLOW | O_CLOEXEC, 0640);
+    int fd = openat(part->fd, path, O_RDWR | O_CREAT | O_EXCL | O_NOFOLLOW | O_CLOEXEC, 0640);
     if (fd < 0) {
         return fail_in(error, -errno, part, path);
     }

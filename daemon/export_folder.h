@@ -72,7 +72,8 @@ int export_part_fd(const struct export_part *part);
 int export_part_add_folder(struct export_part *part, const char *path, char *error)
     __attribute__((warn_unused_result));
 
-/* Makes a file (mode 0640) in the part and opens it for writing; the descriptor is the caller's. */
+/* Makes a file (mode 0640) in the part and opens it for reading and writing; the descriptor is the
+ * caller's. */
 int export_part_add_file(struct export_part *part, const char *path, int *ret_fd, char *error)
     __attribute__((warn_unused_result));
 

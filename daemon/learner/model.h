@@ -200,6 +200,10 @@ int model_delist(struct model *model, const struct base *base, uint64_t number)
 int model_find_entry(const struct model *model, const struct base *base, uint64_t number,
                      struct worklist_entry *ret_entry) __attribute__((warn_unused_result));
 
+/* The same of the item with the next greater number. */
+int model_entry_after(const struct model *model, const struct base *base, uint64_t number,
+                      struct worklist_entry *ret_entry) __attribute__((warn_unused_result));
+
 /* P(missing | not given) of a gap of an entry of the worklist, as of now. */
 double model_gap_chance(const struct model *model, const struct worklist_entry *entry,
                         const struct worklist_gap *gap);

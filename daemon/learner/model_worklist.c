@@ -37,18 +37,33 @@ static bool knows_tags(const struct model *model, const struct worklist_entry *e
     return true;
 }
 
+/* Gives an entry that was read with `result`, if it can be one of this model. */
+static int give_entry(const struct model *model, int result, const struct worklist_entry *entry,
+                      struct worklist_entry *ret_entry)
+{
+    if (result == 0 && !knows_tags(model, entry)) {
+        return -EIO;
+    }
+    if (result == 0) {
+        *ret_entry = *entry;
+    }
+    return result;
+}
+
 int model_find_entry(const struct model *model, const struct base *base, uint64_t number,
                      struct worklist_entry *ret_entry)
 {
     struct worklist_entry entry;
     int result = worklist_find(model->worklist, base, number, &entry);
-    if (result == 0 && !knows_tags(model, &entry)) {
-        return -EIO;
-    }
-    if (result == 0) {
-        *ret_entry = entry;
-    }
-    return result;
+    return give_entry(model, result, &entry, ret_entry);
+}
+
+int model_entry_after(const struct model *model, const struct base *base, uint64_t number,
+                      struct worklist_entry *ret_entry)
+{
+    struct worklist_entry entry;
+    int result = worklist_after(model->worklist, base, number, &entry);
+    return give_entry(model, result, &entry, ret_entry);
 }
 
 /* --- own shares ---------------------------------------------------------------------------------

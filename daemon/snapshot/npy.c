@@ -48,23 +48,23 @@ void npy_header(unsigned char header[NPY_HEADER_BYTES], enum npy_type type, uint
     npy_header_of(header, TYPES[type].code, shape);
 }
 
-int npy_create(int folder_fd, const char *name, enum npy_type type, uint64_t count,
+int npy_create(struct export_part *part, const char *name, enum npy_type type, uint64_t count,
                struct npy *ret_npy, struct store_error *error)
 {
     struct npy npy = {.count = count, .fd = -1};
     npy.file_bytes = NPY_HEADER_BYTES + count * TYPES[type].bytes;
-    npy.fd = openat(folder_fd, name, O_RDWR | O_CREAT | O_EXCL | O_NOFOLLOW | O_CLOEXEC, 0640);
-    if (npy.fd < 0) {
-        return snapshot_fail(error, name, errno);
+    int code = snapshot_file_open(part, name, &npy.fd, error);
+    if (code != STORE_OK) {
+        return code;
     }
-    int code = posix_fallocate(npy.fd, 0, (off_t)npy.file_bytes);
-    if (code == 0) {
+    int errnum = posix_fallocate(npy.fd, 0, (off_t)npy.file_bytes);
+    if (errnum == 0) {
         npy.map = mmap(NULL, npy.file_bytes, PROT_READ | PROT_WRITE, MAP_SHARED, npy.fd, 0);
-        code = npy.map == MAP_FAILED ? errno : 0;
+        errnum = npy.map == MAP_FAILED ? errno : 0;
     }
-    if (code != 0) {
+    if (errnum != 0) {
         (void)close(npy.fd); /* nothing is in it yet */
-        return snapshot_fail(error, name, code);
+        return snapshot_fail(error, name, errnum);
     }
     npy_header(npy.map, type, count);
     npy.data = (unsigned char *)npy.map + NPY_HEADER_BYTES;
@@ -72,22 +72,11 @@ int npy_create(int folder_fd, const char *name, enum npy_type type, uint64_t cou
     return STORE_OK;
 }
 
-int npy_finish(struct npy *npy, struct store_error *error)
-{
-    int code = msync(npy->map, npy->file_bytes, MS_SYNC) < 0 ? errno : 0;
-    if (code == 0 && fsync(npy->fd) < 0) {
-        code = errno;
-    }
-    npy_abandon(npy);
-    return code == 0 ? STORE_OK : snapshot_fail(error, "an array", code);
-}
-
-void npy_abandon(struct npy *npy)
+void npy_close(struct npy *npy)
 {
     if (npy->map) {
         (void)munmap(npy->map, npy->file_bytes); /* it was mapped so */
-        (void)close(npy->fd);                    /* synced, or of no use */
-        npy->map = NULL;
-        npy->data = NULL;
+        (void)close(npy->fd);                    /* the part brings it to the disk */
+        *npy = (struct npy){0};
     }
 }

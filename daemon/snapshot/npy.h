@@ -10,6 +10,7 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "daemon/export_folder.h"
 #include "storage/store_error.h"
 
 enum npy_type {
@@ -40,16 +41,13 @@ void npy_header(unsigned char header[NPY_HEADER_BYTES], enum npy_type type, uint
 void npy_header_of(unsigned char header[NPY_HEADER_BYTES], const char *type, const char *shape);
 
 /*
- * Makes the file, which must not be there, in the folder that is open as `folder_fd`, with room on
- * the disk for all of it (STORE_FULL where there is none), so that no write into the map can fail.
+ * Makes the file in the part, with room on the disk for all of it (STORE_FULL where there is none),
+ * so that no write into the map can fail.
  */
-int npy_create(int folder_fd, const char *name, enum npy_type type, uint64_t count,
+int npy_create(struct export_part *part, const char *name, enum npy_type type, uint64_t count,
                struct npy *ret_npy, struct store_error *error) __attribute__((warn_unused_result));
 
-/* Brings what was written to the disk, and closes the file. */
-int npy_finish(struct npy *npy, struct store_error *error) __attribute__((warn_unused_result));
-
-/* Closes what is open of it, whatever was written; after npy_finish it does nothing. */
-void npy_abandon(struct npy *npy);
+/* Closes it, whatever was written; a zeroed one is passed over. */
+void npy_close(struct npy *npy);
 
 #endif

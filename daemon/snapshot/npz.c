@@ -7,7 +7,6 @@
 #include <stdio.h>
 #include <string.h>
 #include <sys/stat.h>
-#include <unistd.h>
 #include <zip.h>
 
 #include "daemon/snapshot/npy.h"
@@ -121,21 +120,11 @@ static int close_archive(zip_t *archive, struct packing *packing)
     return code;
 }
 
-static int sync_file(int folder_fd, const char *name, struct store_error *error)
-{
-    int fd = openat(folder_fd, name, O_RDONLY | O_NOFOLLOW | O_CLOEXEC);
-    if (fd < 0) {
-        return snapshot_fail(error, name, errno);
-    }
-    int errnum = fsync(fd) < 0 || fchmod(fd, 0640) < 0 ? errno : 0;
-    (void)close(fd); /* it was only read */
-    return errnum == 0 ? STORE_OK : snapshot_fail(error, name, errnum);
-}
-
-int npz_write(int folder_fd, const char *name, const struct npz_member *members, size_t count,
-              struct pace *pace, struct store_error *error)
+int npz_write(struct export_part *part, const char *name, const struct npz_member *members,
+              size_t count, struct pace *pace, struct store_error *error)
 {
     char path[PATH_BYTES];
+    int folder_fd = export_part_fd(part);
     int failure = 0;
     struct packing packing = {.pace = pace, .error = error};
     name_path(path, folder_fd, name);
@@ -155,5 +144,8 @@ int npz_write(int folder_fd, const char *name, const struct npz_member *members,
         }
     }
     int code = close_archive(archive, &packing);
-    return code == STORE_OK ? sync_file(folder_fd, name, error) : code;
+    /* As all other files are. */
+    return code == STORE_OK && fchmodat(folder_fd, name, 0640, 0) < 0
+               ? snapshot_fail(error, name, errno)
+               : code;
 }

@@ -8,6 +8,7 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "daemon/export_folder.h"
 #include "daemon/pace.h"
 
 enum {
@@ -27,12 +28,13 @@ void npz_shape(struct npz_text *ret_text, uint64_t rows, uint64_t columns);
 /* One of the two is there. */
 struct npz_member {
     const char *name;
-    const char *file; /* in the same folder */
+    const char *file; /* in the same part */
     const struct npz_text *text;
 };
 
-/* Makes the archive in the folder that is open as `folder_fd`, and brings it to the disk. */
-int npz_write(int folder_fd, const char *name, const struct npz_member *members, size_t count,
-              struct pace *pace, struct store_error *error) __attribute__((warn_unused_result));
+/* Makes the archive in the part. */
+int npz_write(struct export_part *part, const char *name, const struct npz_member *members,
+              size_t count, struct pace *pace, struct store_error *error)
+    __attribute__((warn_unused_result));
 
 #endif

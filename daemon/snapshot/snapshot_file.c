@@ -1,7 +1,6 @@
 #include "daemon/snapshot/snapshot_file.h"
 
 #include <errno.h>
-#include <fcntl.h>
 #include <stdlib.h>
 #include <string.h>
 #include <unistd.h>
@@ -16,12 +15,27 @@ int snapshot_fail(struct store_error *error, const char *name, int errnum)
                       strerror(errnum));
 }
 
-int snapshot_file_create(int folder_fd, const char *name, struct pace *pace,
+int snapshot_fail_export(struct store_error *error, int code, const char *sentence)
+{
+    bool is_full = code == -ENOSPC || code == -EDQUOT;
+    return store_fail(error, is_full ? STORE_FULL : STORE_DENIED, "%s", sentence);
+}
+
+int snapshot_file_open(struct export_part *part, const char *name, int *ret_fd,
+                       struct store_error *error)
+{
+    char sentence[EXPORT_ERROR_BYTES];
+    int code = export_part_add_file(part, name, ret_fd, sentence);
+    return code == 0 ? STORE_OK : snapshot_fail_export(error, code, sentence);
+}
+
+int snapshot_file_create(struct export_part *part, const char *name, struct pace *pace,
                          struct store_error *error, struct snapshot_file *ret_file)
 {
-    int fd = openat(folder_fd, name, O_WRONLY | O_CREAT | O_EXCL | O_NOFOLLOW | O_CLOEXEC, 0640);
-    if (fd < 0) {
-        return snapshot_fail(error, name, errno);
+    int fd = -1;
+    int code = snapshot_file_open(part, name, &fd, error);
+    if (code != STORE_OK) {
+        return code;
     }
     FILE *stream = fdopen(fd, "w");
     if (!stream) {
@@ -52,24 +66,16 @@ int snapshot_file_add(struct snapshot_file *file, json_t *line)
 
 int snapshot_file_close(struct snapshot_file *file, int code)
 {
-    int errnum = 0;
-    if (code == STORE_OK && (fflush(file->stream) != 0 || fsync(fileno(file->stream)) < 0)) {
-        errnum = errno;
-    }
-    if (fclose(file->stream) != 0 && errnum == 0) {
-        errnum = errno;
-    }
-    if (code != STORE_OK || errnum == 0) {
-        return code;
-    }
-    return snapshot_fail(file->error, file->name, errnum);
+    int failed = fclose(file->stream);
+    int errnum = errno;
+    return code == STORE_OK && failed != 0 ? snapshot_fail(file->error, file->name, errnum) : code;
 }
 
-int snapshot_file_write(int folder_fd, const char *name, json_t *document, struct pace *pace,
-                        struct store_error *error)
+int snapshot_file_write(struct export_part *part, const char *name, json_t *document,
+                        struct pace *pace, struct store_error *error)
 {
     struct snapshot_file file;
-    int code = snapshot_file_create(folder_fd, name, pace, error, &file);
+    int code = snapshot_file_create(part, name, pace, error, &file);
     if (code != STORE_OK) {
         json_decref(document);
         return code;

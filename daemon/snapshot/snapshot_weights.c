@@ -65,13 +65,14 @@ static int copy_chunk(void *user, const struct model_store_chunk *chunk)
 static int open_copy(struct snapshot_weights *weights)
 {
     static const char NAME[] = "weights";
-    int folder_fd = weights->settings.folder_fd;
+    struct export_part *part = weights->settings.part;
     struct store_error *error = weights->settings.error;
-    weights->fd = openat(folder_fd, NAME, O_RDWR | O_CREAT | O_EXCL | O_NOFOLLOW | O_CLOEXEC, 0600);
-    if (weights->fd >= 0 && unlinkat(folder_fd, NAME, 0) < 0) {
-        return snapshot_fail(error, "a copy of the weights", errno);
+    int code = snapshot_file_open(part, NAME, &weights->fd, error);
+    if (code != STORE_OK) {
+        return code;
     }
-    int stream_fd = weights->fd >= 0 ? fcntl(weights->fd, F_DUPFD_CLOEXEC, 0) : -1;
+    int stream_fd =
+        unlinkat(export_part_fd(part), NAME, 0) == 0 ? fcntl(weights->fd, F_DUPFD_CLOEXEC, 0) : -1;
     weights->copy = stream_fd >= 0 ? fdopen(stream_fd, "w") : NULL;
     if (weights->copy) {
         return STORE_OK;
@@ -185,15 +186,14 @@ static void put_index(enum npy_type type, void *indices, uint64_t at, uint64_t v
 static int create_arrays(const struct snapshot_weights *weights, struct arrays *arrays)
 {
     enum npy_type type = index_type(weights);
-    int folder_fd = weights->settings.folder_fd;
+    struct export_part *part = weights->settings.part;
     struct store_error *error = weights->settings.error;
-    int code = npy_create(folder_fd, DATA_NAME, NPY_F4, weights->count, &arrays->data, error);
+    int code = npy_create(part, DATA_NAME, NPY_F4, weights->count, &arrays->data, error);
     if (code == STORE_OK) {
-        code = npy_create(folder_fd, INDICES_NAME, type, weights->count, &arrays->indices, error);
+        code = npy_create(part, INDICES_NAME, type, weights->count, &arrays->indices, error);
     }
     if (code == STORE_OK) {
-        code = npy_create(folder_fd, INDPTR_NAME, type, weights->tag_count + 1, &arrays->indptr,
-                          error);
+        code = npy_create(part, INDPTR_NAME, type, weights->tag_count + 1, &arrays->indptr, error);
     }
     arrays->next = calloc(weights->tag_count + 1, sizeof *arrays->next);
     return code != STORE_OK || arrays->next
@@ -258,15 +258,6 @@ static int turn(const struct snapshot_weights *weights, struct arrays *arrays,
     return code;
 }
 
-static int finish_arrays(struct arrays *arrays, struct store_error *error)
-{
-    int code = npy_finish(&arrays->data, error);
-    if (code == STORE_OK) {
-        code = npy_finish(&arrays->indices, error);
-    }
-    return code == STORE_OK ? npy_finish(&arrays->indptr, error) : code;
-}
-
 int snapshot_weights_write(struct snapshot_weights *weights, const uint32_t *words,
                            size_t word_count)
 {
@@ -276,12 +267,9 @@ int snapshot_weights_write(struct snapshot_weights *weights, const uint32_t *wor
         begin_rows(weights, &arrays);
         code = turn(weights, &arrays, words, word_count);
     }
-    if (code == STORE_OK) {
-        code = finish_arrays(&arrays, weights->settings.error);
-    }
-    npy_abandon(&arrays.data);
-    npy_abandon(&arrays.indices);
-    npy_abandon(&arrays.indptr);
+    npy_close(&arrays.data);
+    npy_close(&arrays.indices);
+    npy_close(&arrays.indptr);
     free(arrays.next);
     return code;
 }
@@ -301,7 +289,7 @@ int snapshot_weights_pack(const struct snapshot_weights *weights, size_t word_co
                                          {.name = "format.npy", .text = &format},
                                          {.name = "shape.npy", .text = &shape},
                                          {.name = "data.npy", .file = DATA_NAME}};
-    return npz_write(weights->settings.folder_fd, "weights.npz", members,
+    return npz_write(weights->settings.part, "weights.npz", members,
                      sizeof members / sizeof members[0], weights->settings.pace,
                      weights->settings.error);
 }

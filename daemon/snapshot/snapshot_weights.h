@@ -9,6 +9,7 @@
 #ifndef UNDERTAG_SNAPSHOT_WEIGHTS_H
 #define UNDERTAG_SNAPSHOT_WEIGHTS_H
 
+#include "daemon/export_folder.h"
 #include "daemon/learner/model.h"
 #include "daemon/pace.h"
 #include "storage/model_view.h"
@@ -17,7 +18,7 @@ struct snapshot_weights;
 
 /* What the two steps are about; borrowed. */
 struct snapshot_weights_settings {
-    int folder_fd; /* of the snapshot */
+    struct export_part *part; /* the snapshot */
     struct pace *pace;
     struct store_error *error;
 };

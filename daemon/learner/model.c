@@ -164,6 +164,11 @@ double model_allowed_propensity(const struct model *model, uint32_t tag, double 
                 model->least[calibrators_class(model->tags[tag].unprompted, model->documents)]);
 }
 
+double model_tag_allowed_propensity(const struct model *model, uint32_t tag)
+{
+    return model_allowed_propensity(model, tag, model_propensity(model, tag));
+}
+
 double model_missing_of_belongs(const struct model *model, uint32_t tag, double propensity,
                                 double belongs, double promise)
 {

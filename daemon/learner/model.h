@@ -236,6 +236,15 @@ uint64_t model_changed_bytes(const struct model *model);
  */
 
 const struct propensity_fit *model_fit(const struct model *model);
+
+/*
+ * The propensity of a tag as of now, tag < the number of tags: the curve's, and what was found of
+ * the tag itself; and the same, or the least that the evidence allows for tags as common as this,
+ * where that is more. P(belongs) is worked out with the former, P(missing) with the latter.
+ */
+double model_propensity(const struct model *model, uint32_t tag);
+double model_tag_allowed_propensity(const struct model *model, uint32_t tag);
+
 const struct standing *model_standing(const struct model *model);
 
 struct model_size {

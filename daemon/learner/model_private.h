@@ -124,9 +124,6 @@ int model_reserve_tags(struct model *model, size_t count) __attribute__((warn_un
 /* Moves a tag's counts, and the tag's place in the census with them. */
 void model_set_tag_counts(struct model *model, uint32_t tag, struct tag_counts counts);
 
-/* The propensity of a tag as of now: the curve's, and what was found of the tag itself. */
-double model_propensity(const struct model *model, uint32_t tag);
-
 /* P(belongs) of a tag with this score, and P(missing | not given) of one on an item that
  * promises so much (model_promise). */
 double model_belongs_chance(const struct model *model, uint32_t tag, double score);

@@ -37,7 +37,7 @@ DAEMON_LIBS = $(shell pkg-config --libs $(DAEMON_PACKAGES)) -lunistring -lstemme
 CLIENT_LIBS = $(shell pkg-config --libs $(CLIENT_PACKAGES)) -lm
 TEST_LIBS = $(shell pkg-config --libs cmocka)
 
-DAEMON_SOURCES := $(filter-out daemon/main.c,$(wildcard daemon/*.c daemon/learner/*.c daemon/text/*.c))
+DAEMON_SOURCES := $(filter-out daemon/main.c,$(wildcard daemon/*.c daemon/learner/*.c daemon/snapshot/*.c daemon/text/*.c))
 STORAGE_SOURCES := $(wildcard storage/*.c)
 # What both programs use is in daemon/: the framing of the wire and the places of its files.
 CLIENT_SOURCES := $(filter-out client/main.c,$(wildcard client/*.c)) daemon/lines.c

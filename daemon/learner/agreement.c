@@ -25,10 +25,18 @@ static double place_of(double chance)
     return fmin(fmax(place, 0.0), last);
 }
 
-static double middle_of(size_t cell)
+double agreement_cell_middle(size_t cell)
 {
     const double last = AGREEMENT_CHANCES - 1;
     return 1.0 / (1.0 + exp(-((double)cell - last / 2.0) * CELL_WIDTH));
+}
+
+static const double MIDDLES[AGREEMENT_PROMISES] = {0.0, 0.2,  0.45, 0.8, 1.25,
+                                                   2.0, 3.25, 5.0,  7.0, 10.0};
+
+double agreement_row_middle(size_t row)
+{
+    return MIDDLES[row];
 }
 
 /* Where a promise lies between the rows: `below` and the next one, with weights 1 - share, share.
@@ -40,8 +48,6 @@ struct row_place {
 
 static struct row_place row_place_of(double promise)
 {
-    static const double MIDDLES[AGREEMENT_PROMISES] = {0.0, 0.2,  0.45, 0.8, 1.25,
-                                                       2.0, 3.25, 5.0,  7.0, 10.0};
     size_t below = 0;
     while (below < AGREEMENT_PROMISES - 2 && promise >= MIDDLES[below + 1]) {
         below++;
@@ -98,7 +104,7 @@ void agreement_fit(struct agreement *agreement)
         for (size_t c = 0; c < AGREEMENT_CHANCES; c++) {
             weights[c] = row->cells[c].not_given / agreement->gain + LEAN_PAIRS;
             double hidden = row->cells[c].hidden / agreement->gain;
-            row->chance[c] = (hidden + LEAN_PAIRS * middle_of(c)) / weights[c];
+            row->chance[c] = (hidden + LEAN_PAIRS * agreement_cell_middle(c)) / weights[c];
         }
         isotonic_fit(row->chance, weights, pools, AGREEMENT_CHANCES);
         for (size_t c = 0; c < AGREEMENT_CHANCES; c++) {
@@ -111,8 +117,8 @@ static double chance_in_row(const struct agreement_row *row, double chance)
 {
     double place = place_of(chance);
     size_t below = (size_t)place;
-    if (below == 0 && chance < middle_of(0)) {
-        return row->chance[0] * chance / middle_of(0);
+    if (below == 0 && chance < agreement_cell_middle(0)) {
+        return row->chance[0] * chance / agreement_cell_middle(0);
     }
     if (below >= AGREEMENT_CHANCES - 1) {
         return row->chance[AGREEMENT_CHANCES - 1];

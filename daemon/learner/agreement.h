@@ -59,7 +59,14 @@ void agreement_add_given(struct agreement *agreement, double promise, double cha
 /* Works the rows' chances out anew. */
 void agreement_fit(struct agreement *agreement);
 
-/* The chance in view of what the others promise. */
+/* Where a row and a cell have their middles: a promise, row < AGREEMENT_PROMISES, and a chance,
+ * cell < AGREEMENT_CHANCES. Cells' middles are equally far apart in the logit. */
+double agreement_row_middle(size_t row);
+double agreement_cell_middle(size_t cell);
+
+/* The chance in view of what the others promise: between rows by straight lines in the promise,
+ * between cells by straight lines in the logit of the chance, below the first cell in proportion to
+ * the chance; as the outermost row or cell has it beyond that. */
 double agreement_chance(const struct agreement *agreement, double promise, double chance);
 
 #endif

@@ -96,7 +96,7 @@ static size_t bin_of_score(double score)
     return above >= CALIBRATORS_BINS - 1 ? CALIBRATORS_BINS - 1 : 1 + (size_t)above;
 }
 
-static double middle_of_bin(size_t bin)
+double calibrators_middle(size_t bin)
 {
     return CALIBRATORS_FLOOR_SCORE + ((double)bin - 0.5) * BIN_WIDTH;
 }
@@ -318,7 +318,7 @@ static void fit_pooled(struct estimate estimates[CALIBRATORS_GROUPS][CALIBRATORS
             pooled[b].pairs += estimates[g][b].pairs;
             pooled[b].seen += estimates[g][b].seen;
         }
-        chance[b] = prior_chance(middle_of_bin(b));
+        chance[b] = prior_chance(calibrators_middle(b));
     }
     fit_curve(pooled, PRIOR_PAIRS, chance);
 }
@@ -342,6 +342,11 @@ void calibrators_fit(const struct calibrators *calibrators,
     }
 }
 
+double calibrators_cut(size_t group)
+{
+    return CUTS[group];
+}
+
 bool calibrators_early(const struct calibrators_curves *curves)
 {
     double given = 0.0;
@@ -357,7 +362,7 @@ static double chance_on_curve(const struct calibrators_curve *curve, double scor
     if (bin == 0) {
         return curve->chance[0];
     }
-    double off_middle = (score - middle_of_bin(bin)) * BINS_PER_SCORE;
+    double off_middle = (score - calibrators_middle(bin)) * BINS_PER_SCORE;
     size_t other = off_middle < 0.0 ? bin - 1 : bin + 1;
     if (other >= CALIBRATORS_BINS || other == 0) {
         return curve->chance[bin];

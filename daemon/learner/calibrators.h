@@ -140,8 +140,10 @@ struct calibrators_curves {
 void calibrators_least(const struct calibrators *calibrators,
                        double ret_least[CALIBRATORS_CLASSES]);
 
-/* The group of a propensity: 0 below .3, … 4 from .85. */
+/* The group of a propensity: 0 below .3, … 4 from .85; and the propensity from which the group
+ * after `group` begins, group < CALIBRATORS_GROUPS - 1. */
 size_t calibrators_group(double propensity);
+double calibrators_cut(size_t group);
 
 /*
  * The chances as of now. `believed` are the classes' propensities, above 0 and at most 1, which
@@ -156,6 +158,9 @@ void calibrators_fit(const struct calibrators *calibrators,
 /* Whether there is too little evidence, and the chances lean on the prior: fewer than 200 given
  * pairs above the floor in all. */
 bool calibrators_early(const struct calibrators_curves *curves);
+
+/* The score in the middle of a bin, 0 < bin < CALIBRATORS_BINS. */
+double calibrators_middle(size_t bin);
 
 /* q(s) for a tag of this propensity: between the bins' middles by straight lines; flat below the
  * floor and above the last. */

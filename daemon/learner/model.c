@@ -6,18 +6,9 @@
 #include <stdlib.h>
 
 #include "daemon/grow.h"
+#include "daemon/learner/model_chances.h"
 #include "daemon/learner/model_private.h"
 #include "daemon/text/tfidf.h"
-
-/*
- * A word that no other item holds cannot speak for a tag yet: it takes part only in the length of
- * x, where it counts for this much. Measured on two corpora, one pass: against 1, tail recall@10
- * rises by .01 to .015 and PSP@5 by .002 to .007.
- */
-static const double UNSHARED_WORD_SHARE = 0.5;
-
-/* Below this chance a gap is not looked at twice: there are thousands of them. */
-static const double AGREEMENT_LEAST_CHANCE = 0.02;
 
 /* What the store takes for a record, its share of half-filled pages included; a posting in it is
  * counted apart. */
@@ -174,13 +165,13 @@ double model_missing_of_belongs(const struct model *model, uint32_t tag, double 
 {
     double allowed = model_allowed_propensity(model, tag, propensity);
     double missing = propensity_missing_chance(allowed, belongs);
-    if (missing < AGREEMENT_LEAST_CHANCE) {
+    if (missing < MODEL_AGREED_FROM) {
         return missing;
     }
     double of_others = promise - (belongs >= AGREEMENT_LEAST ? missing : 0.0);
     double agreed = agreement_chance(&model->agreement, of_others, missing);
     /* By and by, so that the order of two gaps does not turn round at the border. */
-    double share = fmin((missing - AGREEMENT_LEAST_CHANCE) / AGREEMENT_LEAST_CHANCE, 1.0);
+    double share = fmin((missing - MODEL_AGREED_FROM) / MODEL_AGREED_FROM, 1.0);
     return (1.0 - share) * missing + share * agreed;
 }
 
@@ -214,6 +205,21 @@ const struct propensity_fit *model_fit(const struct model *model)
     return &model->fit;
 }
 
+const struct calibrators_curves *model_curves(const struct model *model)
+{
+    return &model->curves;
+}
+
+const struct agreement *model_agreement(const struct model *model)
+{
+    return &model->agreement;
+}
+
+double model_least_of_class(const struct model *model, size_t tag_class)
+{
+    return model->least[tag_class];
+}
+
 const struct standing *model_standing(const struct model *model)
 {
     return model->standing;
@@ -230,7 +236,7 @@ int model_weigh_features(const struct model *model, const struct feature *featur
     }
     for (size_t i = 0; i < count; i++) {
         double holding = fmax((double)scratch->words[i].count + itself, 1.0);
-        double share = holding > 1.0 ? 1.0 : UNSHARED_WORD_SHARE;
+        double share = holding > 1.0 ? 1.0 : MODEL_UNSHARED_WORD_SHARE;
         scratch->values[i] = (float)(share * tfidf_frequency_weight((double)features[i].frequency) *
                                      tfidf_idf((double)model->documents + itself, holding));
     }

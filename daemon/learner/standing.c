@@ -40,12 +40,16 @@ const char *standing_band_name(enum standing_band band)
 
 enum standing_band standing_band_of(double tag_count)
 {
-    static const double head_from = 1000.0;
-    static const double torso_from = 30.0;
-    if (tag_count >= head_from) {
+    if (tag_count >= standing_band_from(STANDING_HEAD)) {
         return STANDING_HEAD;
     }
-    return tag_count >= torso_from ? STANDING_TORSO : STANDING_TAIL;
+    return tag_count >= standing_band_from(STANDING_TORSO) ? STANDING_TORSO : STANDING_TAIL;
+}
+
+double standing_band_from(enum standing_band band)
+{
+    static const double FROM[STANDING_BANDS] = {[STANDING_HEAD] = 1000.0, [STANDING_TORSO] = 30.0};
+    return FROM[band];
 }
 
 /* --- where things are ---------------------------------------------------------------------------

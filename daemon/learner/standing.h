@@ -47,8 +47,9 @@ uint64_t standing_bytes(const struct standing *standing);
 /* "all", "head", "torso", "tail". */
 const char *standing_band_name(enum standing_band band);
 
-/* Head, torso or tail. */
+/* Head, torso or tail; and the least count of each of the three. */
 enum standing_band standing_band_of(double tag_count);
+double standing_band_from(enum standing_band band);
 
 /*
  * Adds an item. For each band, by enum standing_band: the given tags of the band, and the learner's

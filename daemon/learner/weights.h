@@ -70,6 +70,9 @@ struct weights_rival {
 struct weights;
 struct weights_scratch;
 
+/* The score of a tag that shares nothing with the item and has no bias. */
+#define WEIGHTS_BASE_SCORE (-1.0F)
+
 /* Above this score a tag is a rival of the item's own: it is scored, learned and proposed. */
 #define WEIGHTS_FLOOR_SCORE (-0.98F)
 

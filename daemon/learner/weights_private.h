@@ -12,8 +12,6 @@
 #include "daemon/learner/postings.h"
 #include "daemon/learner/weights.h"
 
-#define WEIGHTS_BASE_SCORE (-1.0F)
-
 struct tag_entry {
     struct weights_bias biases[WEIGHTS_LANES];
     uint32_t count;     /* items that had the tag when it was given last */

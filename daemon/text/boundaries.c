@@ -1,6 +1,7 @@
 #include "daemon/text/boundaries.h"
 
-#include <stdbool.h>
+#include <unictype.h>
+#include <unistring/version.h>
 #include <uniwbrk.h>
 
 /* The Word_Break property of the ASCII characters (WordBreakProperty.txt). */
@@ -83,4 +84,42 @@ size_t boundaries_ascii_end(const char *text, size_t bytes, size_t start)
         at += 2;
     }
     return at;
+}
+
+const char *boundaries_property(int32_t point)
+{
+    static const char *const NAMES[] = {
+        [WBP_OTHER] = "Other",
+        [WBP_CR] = "CR",
+        [WBP_LF] = "LF",
+        [WBP_NEWLINE] = "Newline",
+        [WBP_EXTEND] = "Extend",
+        [WBP_FORMAT] = "Format",
+        [WBP_KATAKANA] = "Katakana",
+        [WBP_ALETTER] = "ALetter",
+        [WBP_MIDNUMLET] = "MidNumLet",
+        [WBP_MIDLETTER] = "MidLetter",
+        [WBP_MIDNUM] = "MidNum",
+        [WBP_NUMERIC] = "Numeric",
+        [WBP_EXTENDNUMLET] = "ExtendNumLet",
+        [WBP_RI] = "Regional_Indicator",
+        [WBP_DQ] = "Double_Quote",
+        [WBP_SQ] = "Single_Quote",
+        [WBP_HL] = "Hebrew_Letter",
+        [WBP_ZWJ] = "ZWJ",
+        [WBP_WSS] = "WSegSpace",
+    };
+    int property = uc_wordbreak_property((ucs4_t)point);
+    bool is_named = property >= 0 && (size_t)property < sizeof NAMES / sizeof NAMES[0];
+    return is_named && NAMES[property] ? NAMES[property] : "Other";
+}
+
+bool boundaries_is_pictographic(int32_t point)
+{
+    return uc_is_property_extended_pictographic((ucs4_t)point);
+}
+
+int boundaries_version(void)
+{
+    return _libunistring_version;
 }

@@ -23,7 +23,6 @@ enum {
     SHORT_ROW = 32, /* up to here insertion is the faster sort */
     CLASSES = 256,
     REPLACEMENT = 0xfffd,
-    APOSTROPHE_TYPED = 0x2019,
     HANGUL_MEDIAL_FIRST = 0x1160,
     HANGUL_FINAL_LAST = 0x11ff
 };
@@ -150,7 +149,7 @@ static int take_point(struct fold *fold, enum fold_form form, int32_t point, siz
     int options = UTF8PROC_COMPAT | UTF8PROC_COMPOSE | UTF8PROC_STABLE;
     if (form == FOLD_CASE) {
         options |= UTF8PROC_CASEFOLD | UTF8PROC_IGNORE;
-        point = point == APOSTROPHE_TYPED ? '\'' : point;
+        point = point == FOLD_APOSTROPHE ? '\'' : point;
     }
     if (GROW(&fold->points, &fold->point_capacity, fold->point_count + DECOMPOSITION_POINTS) < 0) {
         return -ENOMEM;
@@ -238,4 +237,14 @@ size_t fold_origin_end(const struct fold *fold, size_t at)
     }
     size_t next = stretches_up_to(fold, at - 1);
     return next < fold->stretch_count ? fold->stretches[next].origin : fold->source_bytes;
+}
+
+bool fold_ignores(int32_t point)
+{
+    return utf8proc_get_property(point)->ignorable;
+}
+
+const char *fold_unicode_version(void)
+{
+    return utf8proc_unicode_version();
 }

@@ -14,6 +14,7 @@
 #ifndef UNDERTAG_FOLD_H
 #define UNDERTAG_FOLD_H
 
+#include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
 
@@ -23,7 +24,8 @@ enum fold_form {
 };
 
 enum {
-    FOLD_TEXT_BYTES = 1 << 28 /* a longer text is refused, so that offsets fit 32 bits */
+    FOLD_TEXT_BYTES = 1 << 28, /* a longer text is refused, so that offsets fit 32 bits */
+    FOLD_APOSTROPHE = 0x2019   /* FOLD_CASE takes it for ' */
 };
 
 /* One stretch: where it starts in the result and where in the text it was made from. */
@@ -65,5 +67,11 @@ size_t fold_origin_start(const struct fold *fold, size_t at);
 
 /* The offset in the source behind everything that went into the result before byte `at`. */
 size_t fold_origin_end(const struct fold *fold, size_t at);
+
+/* Whether FOLD_CASE leaves a code point out. */
+bool fold_ignores(int32_t point);
+
+/* The version of Unicode by which texts are folded, such as "15.0.0". */
+const char *fold_unicode_version(void);
 
 #endif

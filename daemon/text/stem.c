@@ -97,6 +97,20 @@ bool stem_knows(const char *language)
     return row >= 0 && is_installed(languages[row].algorithm);
 }
 
+int stem_each_code(int (*each)(void *user, const char *code, const char *algorithm), void *user)
+{
+    int result = 0;
+    for (size_t row = 0; row < STEM_LANGUAGES; row++) {
+        const struct stem_language *language = &languages[row];
+        for (size_t i = 0; i < 3 && is_installed(language->algorithm) && result == 0; i++) {
+            if (language->codes[i][0] != '\0') {
+                result = each(user, language->codes[i], language->algorithm);
+            }
+        }
+    }
+    return result;
+}
+
 int stem_for(struct stem_set *set, const char *language, struct sb_stemmer **ret_stemmer)
 {
     int row = find_language(language);

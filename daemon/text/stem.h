@@ -31,6 +31,13 @@ void stem_deinit(struct stem_set *set);
 bool stem_knows(const char *language);
 
 /*
+ * Calls `each` for every code that has a stemmer, with Snowball's name of it; anything but 0 ends
+ * that and is returned; else 0.
+ */
+int stem_each_code(int (*each)(void *user, const char *code, const char *algorithm), void *user)
+    __attribute__((warn_unused_result));
+
+/*
  * The stemmer of the language, opened at need; it belongs to the set. *ret_stemmer is NULL where
  * stem_knows is false. Returns 0 or -ENOMEM.
  */

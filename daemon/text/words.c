@@ -309,7 +309,7 @@ static int scan_run(struct scan *scan, const char *text, size_t bytes)
 /* --- the text ----------------------------------------------------------------------------------
  */
 
-static bool is_white_space(char character)
+bool words_is_white_space(char character)
 {
     return character == ' ' || (character >= '\t' && character <= '\r');
 }
@@ -330,7 +330,7 @@ int words_scan(struct words *words, const char *text, size_t bytes, const char *
     while (at < bytes && result == 0) {
         size_t start = at;
         unsigned char all = 0;
-        while (at < bytes && !is_white_space(text[at])) {
+        while (at < bytes && !words_is_white_space(text[at])) {
             all |= (unsigned char)text[at++];
         }
         if (all >= 0x80) {

@@ -52,6 +52,9 @@ int words_new(const struct words_settings *settings, struct words **ret_words)
 
 void words_free(struct words *words);
 
+/* Whether a text is cut at this character before anything else: ASCII white space. */
+bool words_is_white_space(char character);
+
 /* Whether Snowball knows the language: a code such as "en" or "de-CH" (the first part counts). */
 bool words_stems_language(const char *language);
 

@@ -139,6 +139,7 @@ static json_t *found_json(const struct snapshots *snapshots, const struct snapsh
     answer_add(&object, "at", json_string(time));
     answer_add(&object, "bytes", answer_count(found->bytes));
     answer_add(&object, "named", json_boolean(found->is_named));
+    answer_add(&object, "latest", json_boolean(found->is_latest));
     return object;
 }
 

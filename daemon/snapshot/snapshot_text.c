@@ -22,7 +22,8 @@ static const char *const STEPS[] = {
     "row spans two runs.",
     "A run is put into Unicode's normal form NFKC and cut into pieces at the word boundaries of "
     "UAX #29, with the properties in words.word_break (a code point not listed is Other) and "
-    "words.extended_pictographic.",
+    "words.extended_pictographic. What rule WB3c joins is not what WB6, WB7b or WB12 look ahead "
+    "for.",
     "A piece with a code point of words.in_word that is not of words.in_pairs is a word. Any other "
     "piece with a code point of words.in_pairs goes into the row: each of those is a character of "
     "the row, with the code points behind it in the piece that are none; what stands in front of "

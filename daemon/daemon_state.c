@@ -8,8 +8,10 @@
 
 #include "daemon/answer.h"
 #include "daemon/clock.h"
+#include "daemon/options_json.h"
 #include "daemon/params.h"
 #include "daemon/read_job.h"
+#include "daemon/times.h"
 
 struct state_job {
     struct read_job job;    /* first */
@@ -20,36 +22,6 @@ struct state_job {
 static void release(struct read_job *base)
 {
     json_decref(((struct state_job *)base)->of_loop);
-}
-
-/* --- options ------------------------------------------------------------------------------------
- */
-
-static json_t *option_json(const struct options_row *row)
-{
-    if (!row->is_number) {
-        return json_string(row->value);
-    }
-    double number = strtod(row->value, NULL); /* our own text, in the "C" locale */
-    return strpbrk(row->value, ".e") ? json_real(number) : json_integer((json_int_t)number);
-}
-
-#define IN(group) (1U << (group))
-
-/* The options of these groups. */
-static json_t *options_json(const struct options *options, unsigned groups)
-{
-    json_t *object = json_object();
-    for (size_t i = 0; i < options_count(); i++) {
-        struct options_row row;
-        options_describe(options, i, &row);
-        if ((groups & IN(row.group)) != 0 &&
-            json_object_set_new(object, row.name, option_json(&row)) < 0) {
-            json_decref(object);
-            return NULL;
-        }
-    }
-    return object;
 }
 
 /* --- on the loop thread -------------------------------------------------------------------------
@@ -171,7 +143,7 @@ static json_t *running_json(const struct rebuild_state *rebuild, uint64_t commit
     return rebuild->is_running
                ? json_pack("{s:I, s:I, s:I, s:o}", "seq", (json_int_t)rebuild->seq, "learned",
                            (json_int_t)rebuild->learned, "of", (json_int_t)committed, "settings",
-                           options_json(&rebuild->options, IN(OPTIONS_LEARNING)))
+                           options_json(&rebuild->options, OPTIONS_IN(OPTIONS_LEARNING)))
                : json_null();
 }
 
@@ -189,6 +161,29 @@ static void add_rebuild(json_t **state, struct engine *engine, uint64_t committe
     engine_read_rebuild(engine, &rebuild);
     answer_add(state, "rebuild", running_json(&rebuild, committed));
     answer_add(state, "rebuilt", ended_json(&rebuild));
+}
+
+/* The snapshot that is being written, or the last one since the start; null where there is none. */
+static json_t *snapshot_json(struct snapshots *snapshots)
+{
+    struct snapshots_state snapshot;
+    char since[TIMES_BYTES];
+    snapshots_read(snapshots, &snapshot);
+    if (snapshot.since_ms == 0) {
+        return json_null();
+    }
+    times_format(snapshot.since_ms, since);
+    bool is_whole = snapshot.name[0] != '\0';
+    json_t *object = json_object();
+    answer_add(&object, "running", json_boolean(snapshot.is_running));
+    answer_add(&object, "since", json_string(since));
+    answer_add(&object, "bytes", answer_count(snapshot.bytes));
+    answer_add(&object, "of", answer_count(snapshot.of));
+    answer_add(&object, "name", is_whole ? json_string(snapshot.name) : json_null());
+    answer_add(&object, "seq", is_whole ? answer_count(snapshot.seq) : json_null());
+    answer_add(&object, "failure",
+               snapshot.failure[0] != '\0' ? json_string(snapshot.failure) : json_null());
+    return object;
 }
 
 static void add_progress(json_t **state, const struct backlog_numbers *progress)
@@ -216,12 +211,13 @@ static json_t *state_json(struct state_job *job, struct store_totals totals)
     add_progress(&state, &progress);
     answer_add(&state, "memory", memory_json(&size));
     answer_add(&state, "disk", disk_json(&size));
-    answer_add(&state, "limits", options_json(&job->options, IN(OPTIONS_LIMIT)));
-    answer_add(&state, "settings",
-               options_json(&job->options, IN(OPTIONS_SETTING) | IN(OPTIONS_LEARNING)));
+    answer_add(&state, "limits", options_json(&job->options, OPTIONS_IN(OPTIONS_LIMIT)));
+    answer_add(
+        &state, "settings",
+        options_json(&job->options, OPTIONS_IN(OPTIONS_SETTING) | OPTIONS_IN(OPTIONS_LEARNING)));
     answer_add(&state, "rehearsal", rehearsal_json(&size.rehearsal, size.rehearsals_due));
     answer_add(&state, "worklist", worklist_json(&size.model));
-    answer_add(&state, "snapshot", json_null());
+    answer_add(&state, "snapshot", snapshot_json(job->job.methods->snapshots));
     answer_add(&state, "faults", faults_json(engine_troubles(engine)));
     add_rebuild(&state, engine, progress.committed);
     if (state && json_object_update(state, job->of_loop) < 0) {

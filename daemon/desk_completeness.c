@@ -10,6 +10,7 @@
 #include "daemon/outlook.h"
 #include "daemon/params.h"
 #include "daemon/read_job.h"
+#include "daemon/tag_json.h"
 
 enum {
     MOST = 1000
@@ -96,7 +97,7 @@ static json_t *sum_json(const struct completeness_job *job, enum standing_band b
     return object;
 }
 
-static json_t *tag_json(const struct completeness_job *job, const struct vocabulary_tag *tag)
+static json_t *tag_share_json(const struct completeness_job *job, const struct vocabulary_tag *tag)
 {
     struct completeness_tag counts = outlook_of_tag(&tag->counts);
     struct completeness of =
@@ -115,7 +116,7 @@ static int add_losers(struct completeness_job *job, struct store_view *view, jso
         if (vocabulary_get(view, job->losers[i].number, &tag, &error) != STORE_OK) {
             return read_job_fail(&job->job, &error);
         }
-        answer_append(tags, tag_json(job, &tag));
+        answer_append(tags, tag_share_json(job, &tag));
     }
     return 0;
 }
@@ -136,7 +137,7 @@ static int add_tags(struct completeness_job *job, struct store_view *view, json_
     if (code != STORE_OK) {
         return read_job_fail(&job->job, &error);
     }
-    answer_append(tags, tag_json(job, &tag));
+    answer_append(tags, tag_share_json(job, &tag));
     return 0;
 }
 
@@ -178,12 +179,6 @@ static json_t *second_json(const struct store_evidence *evidence)
     return second;
 }
 
-static json_t *curve_json(const struct propensity_fit *fit)
-{
-    return json_pack("{s:f, s:f, s:b, s:f}", "a", fit->a, "b", fit->b, "fitted",
-                     fit->trials > 0.0 ? 1 : 0, "trials", fit->trials);
-}
-
 static json_t *result_json(struct completeness_job *job, struct store_view *view)
 {
     const struct store_evidence evidence = store_view_totals(view).evidence;
@@ -205,7 +200,7 @@ static json_t *result_json(struct completeness_job *job, struct store_view *view
                          answer_count(evidence.checks_picked)));
     answer_add(&result, "wrong", wrong_json(&evidence));
     answer_add(&result, "second", second_json(&evidence));
-    answer_add(&result, "curve", curve_json(&job->outlook.fit));
+    answer_add(&result, "curve", tag_curve_json(&job->outlook.fit));
     answer_add(&result, "learned", answer_count(job->outlook.learned));
     return result;
 }

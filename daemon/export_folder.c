@@ -230,6 +230,11 @@ void export_folder_close(struct export_folder *folder)
     free(folder);
 }
 
+int export_folder_fd(const struct export_folder *folder)
+{
+    return folder->fd;
+}
+
 const char *export_folder_path(const struct export_folder *folder)
 {
     return folder->path;

@@ -50,6 +50,9 @@ void export_folder_close(struct export_folder *folder);
 /* The path it was opened by, without slashes at its end. */
 const char *export_folder_path(const struct export_folder *folder);
 
+/* The folder itself, for openat and its like, to read what is there; the folder's. */
+int export_folder_fd(const struct export_folder *folder);
+
 /* 1 to 64 letters, digits, `-`, `_` and `.` of ASCII, of which a letter, a digit or `_` comes first
  * (a dash would be taken for an option); not EXPORT_LATEST. */
 bool export_name_is_valid(const char *name);

@@ -31,7 +31,7 @@
 #include "daemon/watchdog.h"
 
 enum {
-    SIGNALS = 3,
+    SIGNALS = 4,
     SPARE_DESCRIPTORS = 64
 };
 
@@ -43,6 +43,8 @@ struct program {
     size_t signal_count; /* that are open */
     struct methods *methods;
     struct engine *engine;
+    char exports[PATH_MAX]; /* the folder of snapshots and backups */
+    struct snapshots *snapshots;
     struct server *server;
     int passed_fd; /* a socket that was passed in; 0: none, or given to the server */
     struct watchdog watchdog;
@@ -61,12 +63,17 @@ static void close_all(struct program *program)
         watchdog_close(&program->watchdog);
         program->is_watched = false;
     }
+    if (program->snapshots) {
+        snapshots_stop(program->snapshots);
+        methods_use(program->methods, NULL, NULL);
+        snapshots_free(program->snapshots);
+        program->snapshots = NULL;
+    }
     if (program->engine) {
         program->exit_code = engine_close(program->engine);
         program->engine = NULL;
     }
     if (program->methods) {
-        methods_use(program->methods, NULL);
         methods_close(program->methods, NULL, NULL);
         program->methods = NULL;
     }
@@ -91,6 +98,7 @@ static void stop(struct program *program)
     log_line(LOG_NOTE, "stopping: answering what is under way");
     manager_stopping();
     methods_watch(program->methods, NULL);
+    snapshots_stop(program->snapshots); /* nobody waits for one any more */
     server_drain(server, on_drained, program);
 }
 
@@ -115,6 +123,18 @@ static void reload(struct program *program)
     }
 }
 
+/* SIGUSR1: one as the options have it; nobody waits for it. */
+static void write_snapshot(struct program *program)
+{
+    struct store_error error = {0};
+    bool is_busy = false;
+    const struct snapshot_wanted wanted = snapshots_wanted(&program->options);
+    if (snapshots_write(program->snapshots, &wanted, (size_t)program->options.snapshot_keep, false,
+                        NULL, &is_busy, &error) != STORE_OK) {
+        log_line(LOG_CAUTION, "snapshot: %s", error.text);
+    }
+}
+
 static void on_signal(uv_signal_t *handle, int number)
 {
     struct program *program = handle->data;
@@ -122,7 +142,9 @@ static void on_signal(uv_signal_t *handle, int number)
         manager_reloading();
         reload(program);
         manager_ready();
-    } else if (number != SIGHUP) {
+    } else if (number == SIGUSR1 && program->server) {
+        write_snapshot(program);
+    } else if (number == SIGTERM || number == SIGINT) {
         stop(program);
     }
 }
@@ -138,7 +160,7 @@ static int fail(int exit_code, const char *error)
 
 static int watch_signals(struct program *program)
 {
-    static const int NUMBERS[SIGNALS] = {SIGTERM, SIGINT, SIGHUP};
+    static const int NUMBERS[SIGNALS] = {SIGTERM, SIGINT, SIGHUP, SIGUSR1};
     for (size_t i = 0; i < SIGNALS; i++) {
         int code = uv_signal_init(&program->loop, &program->signals[i]);
         if (code < 0) {
@@ -219,15 +241,10 @@ static int listen_at(struct program *program)
  * for who writes into it. */
 static void sweep_exports(const struct program *program)
 {
-    char path[PATH_MAX];
     char error[EXPORT_ERROR_BYTES];
     struct export_folder *folder = NULL;
     size_t count = 0;
-    int code = export_folder_place(program->line.home, program->options.export_dir, path,
-                                   sizeof path, error);
-    if (code == 0) {
-        code = export_folder_open_there(path, &folder, error);
-    }
+    int code = export_folder_open_there(program->exports, &folder, error);
     if (code == 0) {
         code = export_folder_sweep(folder, &count, error);
         export_folder_close(folder);
@@ -236,8 +253,23 @@ static void sweep_exports(const struct program *program)
         log_line(LOG_CAUTION, "exports: %s", error);
     }
     if (count > 0) {
-        log_line(LOG_NOTE, "exports: %zu that had not become whole removed from %s", count, path);
+        log_line(LOG_NOTE, "exports: %zu that had not become whole removed from %s", count,
+                 program->exports);
     }
+}
+
+static int open_exports(struct program *program)
+{
+    char error[EXPORT_ERROR_BYTES];
+    if (export_folder_place(program->line.home, program->options.export_dir, program->exports,
+                            sizeof program->exports, error) < 0) {
+        return fail(EX_CONFIG, error);
+    }
+    sweep_exports(program);
+    const struct snapshots_settings settings = {.engine = program->engine,
+                                                .folder = program->exports};
+    int code = snapshots_new(&settings, &program->snapshots);
+    return code == 0 ? 0 : fail(EX_OSERR, strerror(-code));
 }
 
 static int start(struct program *program)
@@ -258,8 +290,11 @@ static int start(struct program *program)
     if (exit_code != 0) {
         return fail(exit_code, error);
     }
-    sweep_exports(program);
-    methods_use(program->methods, program->engine);
+    exit_code = open_exports(program);
+    if (exit_code != 0) {
+        return exit_code;
+    }
+    methods_use(program->methods, program->engine, program->snapshots);
     watchdog_start(&program->watchdog, &program->loop, engine_heartbeat(program->engine));
     program->is_watched = true;
     return listen_at(program);
@@ -293,6 +328,7 @@ static void allow_descriptors(const struct options *options)
 static int serve(struct program *program)
 {
     allow_descriptors(&program->options);
+    /* SIGUSR1 is heard once there is a loop, and ends nothing before. */
     if (signal(SIGPIPE, SIG_IGN) == SIG_ERR || signal(SIGUSR1, SIG_IGN) == SIG_ERR) {
         return fail(EX_OSERR, strerror(errno));
     }

@@ -28,6 +28,8 @@ static const struct method METHODS[] = {
     {"daemon.state", METHOD_READ, RIGHT_READ, daemon_state},
     /* a read, so that it comes after all that was filed before it */
     {"daemon.rebuild", METHOD_READ, RIGHT_OPERATE, daemon_rebuild},
+    {"snapshot.write", METHOD_READ, RIGHT_OPERATE, snapshot_write_call},
+    {"snapshot.list", METHOD_READ, RIGHT_OPERATE, snapshot_list_call},
 };
 
 static int check_right(void *context, const struct method *method, const struct rights_peer *peer,
@@ -57,6 +59,7 @@ static void on_sample(uv_timer_t *timer)
     meter_sample(&methods->filed, counts.progress.committed, now_ms);
     meter_sample(&methods->learned, counts.progress.learned, now_ms);
     meter_sample(&methods->scored, counts.questions, now_ms);
+    snapshots_tick(methods->snapshots, methods->options, counts.progress.committed);
 }
 
 static void on_handle_closed(uv_handle_t *handle)
@@ -119,9 +122,10 @@ void methods_wake(void *user)
     assert(code == 0); /* libuv documents no failure for an open handle */
 }
 
-void methods_use(struct methods *methods, struct engine *engine)
+void methods_use(struct methods *methods, struct engine *engine, struct snapshots *snapshots)
 {
     methods->engine = engine;
+    methods->snapshots = snapshots;
     on_sample(&methods->sampling); /* rates count from here */
 }
 

@@ -10,6 +10,7 @@
 #include "daemon/engine.h"
 #include "daemon/options.h"
 #include "daemon/server.h"
+#include "daemon/snapshot/snapshots.h"
 
 struct methods;
 
@@ -21,8 +22,8 @@ int methods_new(uv_loop_t *loop, const struct options *options, struct methods *
 /* What engine_settings.changes_done is to call, with the methods as its user; any thread. */
 void methods_wake(void *user);
 
-/* Serve from this engine; borrowed. Before the first request; NULL after the last. */
-void methods_use(struct methods *methods, struct engine *engine);
+/* Serve from these; borrowed. Before the first request; both NULL after the last. */
+void methods_use(struct methods *methods, struct engine *engine, struct snapshots *snapshots);
 
 /* For the number of connections and the group of the socket; NULL: no server (any more). */
 void methods_watch(struct methods *methods, const struct server *server);

@@ -15,6 +15,7 @@ struct methods {
     uv_loop_t *loop;
     const struct options *options;
     struct engine *engine;
+    struct snapshots *snapshots;
     const struct server *server;
     struct gate gate;
     struct method_table table;
@@ -63,5 +64,9 @@ void daemon_state(struct call *call, const json_t *params);
 
 /* daemon_rebuild.c */
 void daemon_rebuild(struct call *call, const json_t *params);
+
+/* snapshot_calls.c */
+void snapshot_write_call(struct call *call, const json_t *params);
+void snapshot_list_call(struct call *call, const json_t *params);
 
 #endif

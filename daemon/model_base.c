@@ -113,3 +113,9 @@ void model_base_leave(struct model_base *base)
     model_view_close(base->view);
     base->view = NULL;
 }
+
+void model_base_borrow(struct model_base *base, struct model_view *view)
+{
+    model_base_enter(base, NULL);
+    base->view = view;
+}

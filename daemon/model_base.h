@@ -24,4 +24,7 @@ struct model_base {
 void model_base_enter(struct model_base *base, struct model_store *store);
 void model_base_leave(struct model_base *base);
 
+/* The same over a view that is open, which stays the caller's: there is nothing to leave. */
+void model_base_borrow(struct model_base *base, struct model_view *view);
+
 #endif

@@ -101,6 +101,9 @@ int model_keeper_load_view(struct model_view *view, struct model *model, uint64_
     const struct model_store_sink sink = {.user = model, .tag = load_tag, .figures = load_figures};
     struct model_store_head head;
     int code = model_view_head(view, &head, error);
+    if (code == STORE_NOT_FOUND) {
+        return code;
+    }
     if (code == STORE_OK) {
         code = model_view_load(view, &sink, error);
     }

@@ -36,7 +36,8 @@ int model_keeper_look(struct model_store *store, const struct model_origin *orig
 int model_keeper_load(struct model_store *store, struct model *model, struct store_error *error)
     __attribute__((warn_unused_result));
 
-/* The same as of a view; *ret_learned is the seq that it has learned up to. */
+/* The same as of a view; *ret_learned is the seq that it has learned up to. STORE_NOT_FOUND where
+ * nothing is stored yet. */
 int model_keeper_load_view(struct model_view *view, struct model *model, uint64_t *ret_learned,
                            struct store_error *error) __attribute__((warn_unused_result));
 

@@ -43,6 +43,13 @@ struct options {
     uint64_t map_size_bytes;
     uint64_t disk_reserve_bytes;
     char export_dir[OPTIONS_PATH_BYTES];
+    uint64_t snapshot_every_minutes;
+    uint64_t snapshot_changes;
+    uint64_t snapshot_keep;
+    uint64_t snapshot_rate_bytes;
+    bool snapshot_items;
+    bool snapshot_proposals;
+    double snapshot_floor;
     uint64_t flush_every_ms;
     uint64_t flush_changes;
     uint64_t memory_budget_bytes;

@@ -30,3 +30,9 @@ json_t *tag_json(const struct outlook *outlook, const struct vocabulary_tag *tag
                          answer_count(tag->counts.ruled_not)));
     return result;
 }
+
+json_t *tag_curve_json(const struct propensity_fit *fit)
+{
+    return json_pack("{s:f, s:f, s:b, s:f}", "a", fit->a, "b", fit->b, "fitted",
+                     fit->trials > 0.0 ? 1 : 0, "trials", fit->trials);
+}

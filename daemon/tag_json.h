@@ -15,4 +15,7 @@ const char *tag_state_name(enum vocabulary_state state);
 /* The result of tag.show; NULL: no memory. */
 json_t *tag_json(const struct outlook *outlook, const struct vocabulary_tag *tag);
 
+/* The curve that propensities are read from; likewise. */
+json_t *tag_curve_json(const struct propensity_fit *fit);
+
 #endif

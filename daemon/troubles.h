@@ -14,6 +14,7 @@ enum trouble {
     TROUBLE_LEARNING,   /* learning has stopped */
     TROUBLE_KEEPING,    /* what was learned cannot be written */
     TROUBLE_REBUILDING, /* the last rebuild has failed */
+    TROUBLE_EXPORTING,  /* the last snapshot has failed */
     TROUBLE_KINDS
 };
 

@@ -18,7 +18,12 @@ int snapshot_fail(struct store_error *error, const char *name, int errnum)
 int snapshot_fail_export(struct store_error *error, int code, const char *sentence)
 {
     bool is_full = code == -ENOSPC || code == -EDQUOT;
-    return store_fail(error, is_full ? STORE_FULL : STORE_DENIED, "%s", sentence);
+    bool is_of_name = code == -EEXIST || code == -EINVAL;
+    return store_fail(error,
+                      is_full      ? STORE_FULL
+                      : is_of_name ? STORE_REFUSED
+                                   : STORE_DENIED,
+                      "%s", sentence);
 }
 
 int snapshot_file_open(struct export_part *part, const char *name, int *ret_fd,

@@ -22,7 +22,7 @@ struct snapshot_file {
  * STORE_DENIED. */
 int snapshot_fail(struct store_error *error, const char *name, int errnum);
 
-/* The same of what export_folder.h gave. */
+/* The same of what export_folder.h gave; STORE_REFUSED for what is wrong with a name. */
 int snapshot_fail_export(struct store_error *error, int code, const char *sentence);
 
 /* Makes a file in the part, for reading, too; the descriptor is the caller's. */

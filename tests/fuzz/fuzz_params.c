@@ -23,6 +23,8 @@ struct world {
     uv_loop_t loop;
     struct methods *methods;
     struct engine *engine;
+    char exports[HOME_BYTES + sizeof "/exports"];
+    struct snapshots *snapshots;
     struct call_queue queue;
     struct call_text text;
     unsigned inputs;
@@ -53,7 +55,10 @@ static void open_world(void)
                                              .user = world.methods,
                                              .changes_done = methods_wake};
     FUZZ_NEED(engine_open(&settings, &world.engine, error) == 0, error);
-    methods_use(world.methods, world.engine);
+    (void)snprintf(world.exports, sizeof world.exports, "%s/exports", world.home);
+    const struct snapshots_settings exports = {.engine = world.engine, .folder = world.exports};
+    FUZZ_NEED(snapshots_new(&exports, &world.snapshots) == 0, "no snapshots");
+    methods_use(world.methods, world.engine, world.snapshots);
     world.queue = (struct call_queue){.table = methods_table(world.methods),
                                       .user = &world,
                                       .ended = on_ended,
@@ -66,9 +71,11 @@ static void close_world(void)
     if (!world.engine) {
         return;
     }
+    methods_use(world.methods, NULL, NULL);
+    snapshots_stop(world.snapshots);
+    snapshots_free(world.snapshots);
     engine_close(world.engine);
     world.engine = NULL;
-    methods_use(world.methods, NULL);
     methods_close(world.methods, NULL, NULL);
     (void)uv_run(&world.loop, UV_RUN_DEFAULT);
     FUZZ_CHECK(uv_loop_close(&world.loop) == 0);

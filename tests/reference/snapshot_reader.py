@@ -79,9 +79,10 @@ class Snapshot:
         columns, x = self.features(item)
         scores = self.scores_of(columns, x)
         words_speak = self.weights[:, columns].nnz > 0
-        belongs = self.belongs(scores) if words_speak else self.prevalence()
+        chances = self.belongs(scores) if words_speak else self.prevalence()
         given = np.isin(np.arange(len(self.tags)), [self.rows[tag] for tag in tags if tag in self.rows])
-        chances = self.missing(scores, belongs, given) if tags else belongs
+        if tags:
+            chances = self.missing(chances, self.promise(scores, given))
         return np.where(given | (self.count == 0), np.nan, chances)
 
     def belongs(self, scores):
@@ -98,15 +99,19 @@ class Snapshot:
         """P(belongs) where the words say nothing: how often the tag belongs at all."""
         return np.minimum(self.unprompted / max(self.calibration["documents"], 1) / self.p, 1)
 
-    def missing(self, scores, belongs, given):
+    def missing(self, belongs, promise):
         """P(missing | not given), in view of what the other tags promise."""
         agreement = self.calibration["agreement"]
         missing = not_given(self.p_allowed, belongs)
-        is_likely = belongs >= agreement["belongs_from"]
-        promise = missing[self.candidates(scores) & is_likely & ~given].sum()
-        agreed = self.agreed(promise - np.where(is_likely, missing, 0), missing)
+        agreed = self.agreed(promise - np.where(belongs >= agreement["belongs_from"], missing, 0), missing)
         share = np.clip(missing / agreement["from"] - 1, 0, 1)
         return (1 - share) * missing + share * agreed
+
+    def promise(self, scores, given):
+        """How many tags that a draft lacks are expected to be missing, by the likely ones."""
+        belongs = self.belongs(scores)  # by the curves, whatever its words say
+        is_likely = self.candidates(scores) & (belongs >= self.calibration["agreement"]["belongs_from"])
+        return not_given(self.p_allowed, belongs)[is_likely & ~given].sum()
 
     def candidates(self, scores):
         """Which tags may take part in the promise: the best of each band above the floor."""

@@ -45,6 +45,7 @@ extern const struct command command_tags_list;
 extern const struct command command_tags_show;
 extern const struct command command_state;
 extern const struct command command_rebuild;
+extern const struct command command_backup;
 extern const struct command command_rule;
 extern const struct command command_check;
 extern const struct command command_sample;

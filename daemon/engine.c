@@ -36,6 +36,7 @@ struct engine {
     struct troubles troubles;
     struct workspaces workspaces;
     struct rebuild *rebuild;
+    struct backup *backup;
     struct trainer *trainer;
     struct writer *writer;
     atomic_uint_fast64_t questions;
@@ -232,6 +233,22 @@ static int make_rebuild(struct engine *engine)
     return rebuild_new(&settings, &engine->rebuild);
 }
 
+/* Its thread starts when one is asked for. */
+static int make_backup(struct engine *engine, const struct engine_settings *settings)
+{
+    const struct backup_settings backup = {.home = settings->home,
+                                           .options = &engine->options,
+                                           .store = engine->store,
+                                           .shared = &engine->shared,
+                                           .backlog = engine->backlog,
+                                           .rebuild = engine->rebuild,
+                                           .user = settings->user,
+                                           .writer_user = engine,
+                                           .let_go = on_kept,
+                                           .done = settings->changes_done};
+    return backup_new(&backup, &engine->backup);
+}
+
 static int start_threads(struct engine *engine, const struct engine_settings *settings)
 {
     const struct writer_settings writer = {.store = engine->store,
@@ -255,7 +272,10 @@ static int start_threads(struct engine *engine, const struct engine_settings *se
                                              .workspaces = &engine->workspaces,
                                              .user = engine,
                                              .kept = on_kept};
-    int code = writer_new(&writer, &engine->writer);
+    int code = make_backup(engine, settings);
+    if (code == 0) {
+        code = writer_new(&writer, &engine->writer);
+    }
     if (code < 0) {
         return code;
     }
@@ -322,6 +342,7 @@ int engine_open(const struct engine_settings *settings, struct engine **ret_engi
     *ret_engine = engine;
     return 0;
 fail_threads:
+    backup_free(engine->backup);
     rebuild_free(engine->rebuild);
 fail_rebuild:
     workspaces_deinit(&engine->workspaces);
@@ -347,6 +368,8 @@ int engine_close(struct engine *engine)
     }
     backlog_stop(engine->backlog);
     rebuild_stop(engine->rebuild);
+    backup_stop(engine->backup);
+    backup_free(engine->backup);   /* it wakes the writer and bars rebuilds */
     trainer_free(engine->trainer); /* it wakes the writer, so the writer goes after it, */
     rebuild_free(engine->rebuild); /* as this does */
     writer_free(engine->writer);
@@ -384,6 +407,11 @@ int engine_rebuild(struct engine *engine, const struct options *wanted, uint64_t
 void engine_read_rebuild(struct engine *engine, struct rebuild_state *ret_state)
 {
     rebuild_read(engine->rebuild, ret_state);
+}
+
+struct backup *engine_backup(struct engine *engine)
+{
+    return engine->backup;
 }
 
 void engine_lay_over(struct engine *engine, struct options *options)

@@ -8,6 +8,7 @@
 #include <stdint.h>
 
 #include "daemon/backlog.h"
+#include "daemon/backup.h"
 #include "daemon/options.h"
 #include "daemon/rebuild.h"
 #include "daemon/troubles.h"
@@ -21,7 +22,8 @@ struct engine_settings {
     const char *home;              /* borrowed for the engine's life */
     const struct options *options; /* as configured; copied */
     void *user;
-    void (*changes_done)(void *user); /* engine_take_done has something; any thread */
+    void (*changes_done)(void *user); /* engine_take_done or backup_take_done has something; any
+                                         thread */
 };
 
 enum {
@@ -53,6 +55,10 @@ void engine_read_rebuild(struct engine *engine, struct rebuild_state *ret_state)
 
 /* Lays the learning options that are in force over those that are configured. */
 void engine_lay_over(struct engine *engine, struct options *options);
+
+/* --- backups --- */
+
+struct backup *engine_backup(struct engine *engine);
 
 /* --- reading: any thread --- */
 

@@ -91,6 +91,7 @@ static void stop(struct program *program)
     log_line(LOG_NOTE, "stopping: answering what is under way");
     manager_stopping();
     methods_watch(program->methods, NULL);
+    backup_stop(engine_backup(program->engine)); /* its caller gets an answer, too */
     server_drain(server, on_drained, program);
 }
 

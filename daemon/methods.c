@@ -28,6 +28,7 @@ static const struct method METHODS[] = {
     {"daemon.state", METHOD_READ, RIGHT_READ, daemon_state},
     /* a read, so that it comes after all that was filed before it */
     {"daemon.rebuild", METHOD_READ, RIGHT_OPERATE, daemon_rebuild},
+    {"backup.write", METHOD_READ, RIGHT_OPERATE, daemon_backup},
 };
 
 static int check_right(void *context, const struct method *method, const struct rights_peer *peer,
@@ -42,6 +43,7 @@ static void on_changes_done(uv_async_t *async)
     struct methods *methods = async->data;
     if (methods->engine) {
         item_changes_done(engine_take_done(methods->engine));
+        daemon_backup_done(methods);
     }
 }
 

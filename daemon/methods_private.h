@@ -16,6 +16,7 @@ struct methods {
     const struct options *options;
     struct engine *engine;
     const struct server *server;
+    struct call *backup_call; /* of the backup that is being written; NULL: none is */
     struct gate gate;
     struct method_table table;
     uint64_t started_ms;
@@ -63,5 +64,10 @@ void daemon_state(struct call *call, const json_t *params);
 
 /* daemon_rebuild.c */
 void daemon_rebuild(struct call *call, const json_t *params);
+
+/* daemon_backup.c */
+void daemon_backup(struct call *call, const json_t *params);
+/* Ends the call of the backup that has ended, if one has. */
+void daemon_backup_done(struct methods *methods);
 
 #endif

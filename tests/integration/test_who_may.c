@@ -56,6 +56,7 @@ static const struct {
     {"desk.standing", "{}", "may_read", 0},
     {"daemon.state", "{}", "may_read", 0},
     {"daemon.rebuild", "{'settings': {'lamp': 1}}", "may_operate", -32602},
+    {"backup.write", "{'rate': 1}", "may_operate", -32602},
 };
 
 enum {

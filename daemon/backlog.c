@@ -263,6 +263,14 @@ void backlog_hold_kept(struct backlog *backlog, enum backlog_holder holder)
     sync_unlock(&backlog->mutex);
 }
 
+bool backlog_is_held(struct backlog *backlog, enum backlog_holder holder)
+{
+    sync_lock(&backlog->mutex);
+    bool is_held = backlog->held[holder] != UINT64_MAX;
+    sync_unlock(&backlog->mutex);
+    return is_held;
+}
+
 void backlog_nudge(struct backlog *backlog)
 {
     sync_lock(&backlog->mutex);

@@ -78,6 +78,7 @@ enum backlog_holder {
 void backlog_hold(struct backlog *backlog, enum backlog_holder holder, uint64_t seq);
 uint64_t backlog_hold_committed(struct backlog *backlog, enum backlog_holder holder);
 void backlog_hold_kept(struct backlog *backlog, enum backlog_holder holder);
+bool backlog_is_held(struct backlog *backlog, enum backlog_holder holder);
 
 /* Has backlog_wait_for_work return once, whether there is something to learn or not. */
 void backlog_nudge(struct backlog *backlog);

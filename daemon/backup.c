@@ -10,7 +10,7 @@
 #include "daemon/sync.h"
 
 enum {
-    NICE = 19 /* whatever else wants the processor comes first */
+    NICE = 5 /* not more: as long as it takes, the files grow */
 };
 
 /* --- what all may know --------------------------------------------------------------------------

@@ -233,7 +233,6 @@ static int make_rebuild(struct engine *engine)
     return rebuild_new(&settings, &engine->rebuild);
 }
 
-/* Its thread starts when one is asked for. */
 static int make_backup(struct engine *engine, const struct engine_settings *settings)
 {
     const struct backup_settings backup = {.home = settings->home,

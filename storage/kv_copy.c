@@ -79,6 +79,13 @@ static int copy(struct kv *kv, kv_take take, void *user, unsigned char *piece,
     return kv_translate(kv, writing.code, "copying it", error);
 }
 
+static void count_copies(struct kv *kv, bool begins)
+{
+    (void)pthread_mutex_lock(&kv->gate); /* fails only for mutexes of other kinds */
+    kv->copies = begins ? kv->copies + 1 : kv->copies - 1;
+    (void)pthread_mutex_unlock(&kv->gate);
+}
+
 int kv_copy(struct kv *kv, kv_take take, void *user, struct store_error *error)
 {
     unsigned char *piece = malloc(PIECE_BYTES);
@@ -88,7 +95,9 @@ int kv_copy(struct kv *kv, kv_take take, void *user, struct store_error *error)
     /* The environment stays open: nobody opens it anew while somebody is in it. */
     int result = kv_enter(kv, false, error);
     if (result == STORE_OK) {
+        count_copies(kv, true);
         result = copy(kv, take, user, piece, error);
+        count_copies(kv, false);
         kv_leave(kv);
     }
     free(piece);

@@ -33,11 +33,12 @@ struct kv {
     bool is_open;       /* kv_open has succeeded: a failure now is one of its use */
     atomic_bool broken; /* a write failed in a way that leaves the file in doubt */
     struct kv_round round;
-    pthread_mutex_t gate; /* over the three below */
+    pthread_mutex_t gate; /* over the four below */
     pthread_cond_t moved; /* one of the two last has changed */
     MDB_env *env;         /* NULL only after it could not be opened again */
     size_t running;       /* transactions; the environment is closed only while there are none */
     bool is_shut;         /* new transactions wait */
+    size_t copies;        /* being made: they take long, and nobody waits for their end */
 };
 
 struct kv_txn {

@@ -82,7 +82,7 @@ int snapshot_file_close(struct snapshot_file *file, int code)
 int snapshot_file_write(struct export_part *part, const char *name, json_t *document,
                         struct pace *pace, struct store_error *error)
 {
-    struct snapshot_file file;
+    struct snapshot_file file = {0};
     int code = snapshot_file_create(part, name, pace, error, &file);
     if (code != STORE_OK) {
         json_decref(document);

@@ -5,8 +5,10 @@
 #include <string.h>
 #include <unistd.h>
 
-/* As many digits as tell two floats apart. */
-#define DUMP_FLAGS (JSON_COMPACT | JSON_REAL_PRECISION(9))
+enum {
+    FLOAT_DIGITS = 9,  /* as many as tell two floats apart */
+    DOUBLE_DIGITS = 17 /* likewise two doubles */
+};
 
 int snapshot_fail(struct store_error *error, const char *name, int errnum)
 {
@@ -55,7 +57,8 @@ int snapshot_file_create(struct export_part *part, const char *name, struct pace
 
 int snapshot_file_add(struct snapshot_file *file, json_t *line)
 {
-    char *text = line ? json_dumps(line, DUMP_FLAGS) : NULL;
+    size_t digits = file->is_exact ? DOUBLE_DIGITS : FLOAT_DIGITS;
+    char *text = line ? json_dumps(line, JSON_COMPACT | JSON_REAL_PRECISION(digits)) : NULL;
     json_decref(line);
     if (!text) {
         return store_fail(file->error, STORE_NO_MEMORY, "there is no memory for %s", file->name);
@@ -79,7 +82,7 @@ int snapshot_file_close(struct snapshot_file *file, int code)
 int snapshot_file_write(struct export_part *part, const char *name, json_t *document,
                         struct pace *pace, struct store_error *error)
 {
-    struct snapshot_file file;
+    struct snapshot_file file = {0};
     int code = snapshot_file_create(part, name, pace, error, &file);
     if (code != STORE_OK) {
         json_decref(document);

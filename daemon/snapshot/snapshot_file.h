@@ -6,6 +6,7 @@
 #define UNDERTAG_SNAPSHOT_FILE_H
 
 #include <jansson.h>
+#include <stdbool.h>
 #include <stdio.h>
 
 #include "daemon/export_folder.h"
@@ -16,6 +17,7 @@ struct snapshot_file {
     const char *name;
     struct pace *pace;
     struct store_error *error;
+    bool is_exact; /* numbers are not ours: all of their digits count */
 };
 
 /* The error that an errno is at a file: STORE_FULL where there is no room, otherwise

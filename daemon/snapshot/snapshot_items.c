@@ -40,6 +40,7 @@ int snapshot_items_write(struct export_part *part, struct store_view *view, stru
     if (code != STORE_OK) {
         return code;
     }
+    items.file.is_exact = true; /* what is filed again is to be the same */
     code = snapshot_opened_init(&items.opened, view) == 0
                ? items_changed(view, 0, SIZE_MAX, add_item, &items, &items.buffer, &next, error)
                : (int)store_fail(error, STORE_NO_MEMORY, "there is no memory for a snapshot");

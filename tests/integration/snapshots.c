@@ -19,7 +19,7 @@
 enum {
     NAMES_BYTES = 2048,
     ASK_EVERY_MS = 5,
-    ENTRIES = 1500, /* with some 30 words each that no other has */
+    ENTRIES = 1000, /* with some 30 words each that no other has */
     WORDS = 60
 };
 

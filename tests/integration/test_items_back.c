@@ -69,14 +69,15 @@ static void say_filing(struct peer *peer, struct repeatable *random, unsigned it
     unsigned tags = draw(random, 0.35);
     unsigned prompted = repeatable_below(random, 3) == 0 ? draw(random, 0.3) & tags : 0;
     unsigned declined = repeatable_below(random, 3) == 0 ? draw(random, 0.1) & ~tags : 0;
-    (void)peer_request(peer, "item.file",
-                       "{'id': 'log/%u', 'title': 'Entry %u', 'text': 'watch %u of the %u', "
-                       "'fields': {'desk': 'harbour', 'year': %u}, 'language': 'en', "
-                       "'tagger': '%s', 'filed_at': '1911-02-03T04:05:06Z', "
-                       "'tags': [%s], 'prompted': [%s], 'declined': [%s]}",
-                       item, item, repeatable_below(random, 5), item % 17, 1900 + item % 30,
-                       TAGGERS[repeatable_below(random, 3)], list_of(tags, lists[0]),
-                       list_of(prompted, lists[1]), list_of(declined, lists[2]));
+    (void)peer_request(
+        peer, "item.file",
+        "{'id': 'log/%u', 'title': 'Entry %u', 'text': 'watch %u of the %u', "
+        "'fields': {'desk': 'harbour', 'year': %u, 'depth': 1.2345678901234567}, 'language': 'en', "
+        "'tagger': '%s', 'filed_at': '1911-02-03T04:05:06Z', "
+        "'tags': [%s], 'prompted': [%s], 'declined': [%s]}",
+        item, item, repeatable_below(random, 5), item % 17, 1900 + item % 30,
+        TAGGERS[repeatable_below(random, 3)], list_of(tags, lists[0]), list_of(prompted, lists[1]),
+        list_of(declined, lists[2]));
 }
 
 static void say_ruling(struct peer *peer, struct repeatable *random, unsigned item)

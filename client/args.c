@@ -160,6 +160,35 @@ static int read_number(const struct args_option *option, const char *text, struc
     return 0;
 }
 
+/* As the options of the daemon are written. */
+static int read_size(const struct args_option *option, const char *text, struct args_value *value,
+                     struct failure *failure)
+{
+    static const struct {
+        const char *suffix;
+        double bytes;
+    } UNITS[] = {{"", 1}, {"KiB", 0x1p10}, {"MiB", 0x1p20}, {"GiB", 0x1p30}};
+    char *end = NULL;
+    double number = strtod(text, &end);
+    size_t plain = strspn(text, "0123456789.");
+    double bytes = NAN;
+    for (size_t i = 0; i < sizeof UNITS / sizeof UNITS[0]; i++) {
+        if (end == text + plain && strcmp(end, UNITS[i].suffix) == 0) {
+            bytes = number * UNITS[i].bytes;
+        }
+    }
+    if (plain == 0 || !(bytes >= option->least && bytes <= option->most) || bytes != floor(bytes)) {
+        char least[FORMAT_BYTES];
+        char most[FORMAT_BYTES];
+        return failure_set(failure, FAILURE_USAGE,
+                           "--%s takes a size from %s to %s bytes, such as 64MiB, not '%.*s'",
+                           option->name, format_count((int64_t)option->least, least),
+                           format_count((int64_t)option->most, most), VALUE_BYTES, text);
+    }
+    value->whole = (int64_t)bytes;
+    return 0;
+}
+
 static int read_choice(const struct args_option *option, const char *text, struct failure *failure)
 {
     size_t length = strlen(text);
@@ -190,6 +219,8 @@ static int read_value(const struct args_option *option, const char *text, struct
         return read_whole(option, text, value, failure);
     case ARGS_NUMBER:
         return read_number(option, text, value, failure);
+    case ARGS_SIZE:
+        return read_size(option, text, value, failure);
     case ARGS_CHOICE:
         return read_choice(option, text, failure);
     case ARGS_FLAG:

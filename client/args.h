@@ -22,6 +22,7 @@ enum args_kind {
     ARGS_PATH,
     ARGS_WHOLE,  /* a whole number from least to most */
     ARGS_NUMBER, /* a number from least to most */
+    ARGS_SIZE,   /* whole bytes from least to most, such as 64MiB: KiB, MiB, GiB or none */
     ARGS_CHOICE  /* one of the words that `value` lists, separated by "|" */
 };
 

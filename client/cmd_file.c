@@ -444,6 +444,11 @@ const struct command command_file = {
         "acknowledged is durable. To run the same command again after a break is safe: what was "
         "filed already counts as 'same'.\n"
         "\n"
+        "Takes back a snapshot's items.jsonl, too. Its lines may hold then, a list of calls that "
+        "are made of the item behind its filing, in that order: item.file, item.rule and "
+        "item.check, each as {\"method\": ..., \"params\": {...}} without the id. Such a line "
+        "counts once, as refused where any of its calls is.\n"
+        "\n"
         "With --id, files one item by its options, its text from standard input.",
     .options = OPTIONS,
     .option_count = sizeof OPTIONS / sizeof OPTIONS[0],

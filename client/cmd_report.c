@@ -188,7 +188,7 @@ static int run(struct client *client, const struct args *args, struct failure *f
 const struct command command_report = {
     .name = "report",
     .synopsis = "FILE",
-    .summary = "a page on how complete the tagging is, for a browser or for print",
+    .summary = "how complete the tagging is, as a page for a browser or print",
     .about = "Writes one HTML page that needs nothing else: completeness by how often tags are "
              "given, the tags that lose most, common tags and rare ones, how good the proposals "
              "are, whether their chances are right, and the head of the worklist. A FILE of that "

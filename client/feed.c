@@ -1,13 +1,15 @@
 /*
- * Happy path: read a piece of input, take lines from it while the window has room, check that each
- * is an object, put it into the ring and queue it; a turn of the wire moves bytes both ways; each
- * answer settles the oldest unanswered line, which leaves the ring.
+ * Happy path: read a piece of input, take lines from it while the window has room, make each into
+ * its requests (one, but for lines with `then`), put it into the ring and queue them; a turn of the
+ * wire moves bytes both ways; each answer is to the next request of the oldest unanswered line; the
+ * last of them settles it, and it leaves the ring.
  *
  *     ring:  [oldest ............ answered ............ newest)
  *            kept for a new try    on their way
  *
  * While nothing has failed, oldest == answered. A -32005 leaves its line, and all that are answered
- * after it, in the ring; once all are answered, `oldest` to `newest` is sent again as a whole.
+ * after it, in the ring; once all are answered, `oldest` to `newest` is sent again as a whole, but
+ * for those requests of the oldest that were answered before the one that failed.
  * When the daemon goes away, what is in the ring between answered and newest is unanswered.
  */
 #include "client/feed.h"
@@ -21,6 +23,7 @@
 #include <time.h>
 #include <unistd.h>
 
+#include "client/filed_line.h"
 #include "daemon/lines.h"
 
 enum {
@@ -29,14 +32,20 @@ enum {
     REASON_BYTES = 1024
 };
 
+#define NONE_FAILED SIZE_MAX /* of a line's requests */
+
 struct entry {
-    char *line; /* owned */
-    size_t length;
+    struct filed_line line; /* owned */
+    size_t length;          /* of the line as it came */
     const char *source;
-    uint64_t number; /* of the line, from 1 */
-    size_t taken;    /* bytes of input, the line end included */
-    int64_t id;      /* of the last request it was sent in */
-    bool counted;    /* its first answer has been told */
+    uint64_t number;          /* of the line, from 1 */
+    size_t taken;             /* bytes of input, the line end included */
+    int64_t id;               /* of the request that is answered next; the others follow it */
+    size_t answered;          /* requests, of those that were sent last time */
+    size_t failed;            /* the first of them that the store could not take; or NONE_FAILED */
+    struct wire_answer filed; /* the answer to its filing, once that has come */
+    char *refused;            /* why the first that was refused was, or NULL; owned */
+    bool counted;             /* what became of it has been told */
 };
 
 struct feed {
@@ -78,13 +87,29 @@ static struct entry *entry_at(const struct feed *feed, uint64_t index)
     return &feed->ring[index % feed->settings.window_lines];
 }
 
+/* What has been answered is forgotten. */
+static void forget_answers(struct entry *entry)
+{
+    wire_answer_deinit(&entry->filed);
+    entry->filed = (struct wire_answer){0};
+    free(entry->refused);
+    entry->refused = NULL;
+}
+
+static void entry_deinit(struct entry *entry)
+{
+    filed_line_deinit(&entry->line);
+    forget_answers(entry);
+    *entry = (struct entry){0};
+}
+
 void feed_free(struct feed *feed)
 {
     if (!feed) {
         return;
     }
     for (uint64_t i = feed->oldest; i < feed->newest; i++) {
-        free(entry_at(feed, i)->line);
+        entry_deinit(entry_at(feed, i));
     }
     free(feed->ring);
     free(feed);
@@ -115,8 +140,7 @@ static void drop_oldest(struct feed *feed)
     struct entry *entry = entry_at(feed, feed->oldest);
     feed->counts.bytes += entry->taken;
     feed->bytes -= entry->length;
-    free(entry->line);
-    *entry = (struct entry){0};
+    entry_deinit(entry);
     feed->oldest++;
 }
 
@@ -138,21 +162,33 @@ static int count_result(struct feed *feed, const struct wire_answer *answer,
     return 0;
 }
 
-/* Tells the answer to a line that is settled by it, unless an earlier answer was told. */
-static int tell(struct feed *feed, struct entry *entry, const struct wire_answer *answer,
-                struct failure *failure)
+/* Tells what became of a line all of whose requests are answered, unless that was told before. */
+static int tell(struct feed *feed, struct entry *entry, struct failure *failure)
 {
     if (entry->counted) {
         return 0;
     }
     entry->counted = true;
-    if (answer->code == 0) {
-        return count_result(feed, answer, failure);
+    if (!entry->refused) {
+        return count_result(feed, &entry->filed, failure);
     }
+    refuse(feed, entry->source, entry->number, entry->refused);
+    return 0;
+}
+
+/* Keeps why a request was refused, if it is the line's first. */
+static int keep_reason(struct entry *entry, size_t at, const struct wire_answer *answer,
+                       struct failure *failure)
+{
     char reason[REASON_BYTES];
     wire_reason(answer, reason, sizeof reason);
-    refuse(feed, entry->source, entry->number, reason);
-    return 0;
+    if (!entry->refused && at == 0) {
+        entry->refused = strdup(reason);
+    } else if (!entry->refused && asprintf(&entry->refused, "then[%zu] (%s): %s", at - 1,
+                                           entry->line.requests[at].method, reason) < 0) {
+        entry->refused = NULL;
+    }
+    return entry->refused ? 0 : failure_memory(failure);
 }
 
 /* True for what says nothing about the line: going on with the next would not help. */
@@ -162,7 +198,35 @@ static bool stops_all(const struct wire_answer *answer)
            answer->code == WIRE_METHOD || answer->code == WIRE_REQUEST;
 }
 
-static int take_answer(struct feed *feed, const struct wire_answer *answer, struct failure *failure)
+/* Takes the answer to one request; the line's filing is kept. */
+static int settle(struct feed *feed, struct entry *entry, struct wire_answer *answer,
+                  struct failure *failure)
+{
+    size_t at = entry->answered++;
+    entry->id++;
+    if (answer->code == WIRE_STORE) {
+        entry->failed = entry->failed < at ? entry->failed : at;
+        if (!feed->failed) {
+            feed->failed = true;
+            wire_reason(answer, feed->reason, sizeof feed->reason);
+        }
+        return 0;
+    }
+    if (entry->failed != NONE_FAILED) {
+        return 0; /* it is asked again: this answer may come of the one that is missing */
+    }
+    if (answer->code != 0) {
+        return keep_reason(entry, at, answer, failure);
+    }
+    if (at == 0) {
+        wire_answer_deinit(&entry->filed);
+        entry->filed = *answer;
+        *answer = (struct wire_answer){0};
+    }
+    return 0;
+}
+
+static int take_answer(struct feed *feed, struct wire_answer *answer, struct failure *failure)
 {
     struct entry *entry = entry_at(feed, feed->answered);
     if (feed->answered == feed->newest || (answer->id != 0 && answer->id != entry->id)) {
@@ -172,15 +236,12 @@ static int take_answer(struct feed *feed, const struct wire_answer *answer, stru
     if (stops_all(answer)) {
         return wire_fail(answer, failure);
     }
-    feed->answered++;
-    if (answer->code == WIRE_STORE) {
-        if (!feed->failed) {
-            feed->failed = true;
-            wire_reason(answer, feed->reason, sizeof feed->reason);
-        }
-        return 0;
+    int code = settle(feed, entry, answer, failure);
+    if (code || entry->answered < entry->line.count) {
+        return code;
     }
-    int code = tell(feed, entry, answer, failure);
+    feed->answered++;
+    code = entry->failed == NONE_FAILED ? tell(feed, entry, failure) : 0;
     if (!feed->failed) {
         feed->tries = 0;
         drop_oldest(feed);
@@ -206,9 +267,31 @@ static int take_answers(struct feed *feed, struct failure *failure)
 
 /* --- sending -------------------------------------------------------------------------------- */
 
-static int send_entry(struct feed *feed, struct entry *entry, struct failure *failure)
+/* Sends the line's requests from one of them on. */
+static int send_entry(struct feed *feed, struct entry *entry, size_t from, struct failure *failure)
 {
-    return wire_queue(feed->wire, "item.file", entry->line, entry->length, &entry->id, failure);
+    int code = 0;
+    entry->answered = from;
+    entry->failed = NONE_FAILED;
+    for (size_t i = from; i < entry->line.count && !code; i++) {
+        const struct filed_request *request = &entry->line.requests[i];
+        int64_t id = 0;
+        code =
+            wire_queue(feed->wire, request->method, request->params, request->length, &id, failure);
+        entry->id = i == from ? id : entry->id; /* the wire counts them up */
+    }
+    return code;
+}
+
+/* The oldest line failed, and is gone on with where it did; the others are made anew. */
+static int send_again(struct feed *feed, struct entry *entry, bool is_oldest,
+                      struct failure *failure)
+{
+    if (is_oldest) {
+        return send_entry(feed, entry, entry->failed, failure);
+    }
+    forget_answers(entry);
+    return send_entry(feed, entry, 0, failure);
 }
 
 /* One turn of the wire and the answers it brought; closed while lines are open is a failure. */
@@ -264,7 +347,7 @@ static int try_again(struct feed *feed, struct failure *failure)
     feed->hooks.waiting(feed->hooks.user, feed->reason, wait_ms);
     int code = wait_a_while(feed, wait_ms, failure);
     for (uint64_t i = feed->oldest; i < feed->newest && !code; i++) {
-        code = send_entry(feed, entry_at(feed, i), failure);
+        code = send_again(feed, entry_at(feed, i), i == feed->oldest, failure);
     }
     if (!code) {
         feed->failed = false;
@@ -280,44 +363,31 @@ static bool has_room(const struct feed *feed)
            (held == 0 || feed->bytes < feed->settings.window_bytes);
 }
 
-/* Why a line cannot be an item, in `reason` (REASON_BYTES); false where it may be one. */
-static bool is_no_item(const char *line, size_t length, char *reason)
-{
-    json_error_t error;
-    json_t *item = json_loadb(line, length, JSON_REJECT_DUPLICATES | JSON_DECODE_ANY, &error);
-    bool is_object = json_is_object(item);
-    if (!item) {
-        (void)snprintf(reason, REASON_BYTES, "this is not JSON: %s (byte %d)", error.text,
-                       error.position);
-    } else if (!is_object) {
-        (void)snprintf(reason, REASON_BYTES, "an item is a JSON object");
-    }
-    json_decref(item);
-    return !is_object;
-}
-
 static int send_line(struct feed *feed, const char *source, uint64_t number, const char *line,
                      size_t length, size_t taken, struct failure *failure)
 {
-    char reason[REASON_BYTES];
-    if (length == 0 || is_no_item(line, length, reason)) {
+    char reason[FILED_LINE_REASON_BYTES];
+    struct filed_line requests = {0};
+    if (length == 0) {
         feed->counts.bytes += taken;
-        if (length > 0) {
-            refuse(feed, source, number, reason);
-        }
         return 0;
     }
-    char *copy = malloc(length + 1);
-    if (!copy) {
+    switch (filed_line_read(line, length, &requests, reason)) {
+    case FILED_LINE_NO_MEMORY:
         return failure_memory(failure);
+    case FILED_LINE_BAD:
+        feed->counts.bytes += taken;
+        refuse(feed, source, number, reason);
+        return 0;
+    case FILED_LINE_GOOD:
+        break;
     }
-    memcpy(copy, line, length + 1);
     struct entry *entry = entry_at(feed, feed->newest);
     *entry = (struct entry){
-        .line = copy, .length = length, .source = source, .number = number, .taken = taken};
+        .line = requests, .length = length, .source = source, .number = number, .taken = taken};
     feed->newest++;
     feed->bytes += length;
-    return send_entry(feed, entry, failure);
+    return send_entry(feed, entry, 0, failure);
 }
 
 /* --- reading -------------------------------------------------------------------------------- */

@@ -4,12 +4,15 @@
  * Lines are sent as they stand, inside the envelope of a request, at most `window_lines` and
  * `window_bytes` unanswered at a time. What is not a JSON object is refused here, the rest by the
  * daemon; a refused line is told and the others go on. Answers come in the order of the lines, so
- * what is acknowledged is known to the line.
+ * what is acknowledged is known to the line. A line may stand for several requests about its item
+ * (filed_line.h): all are on their way at once, it is settled when the last is answered, and counts
+ * by what its filing was, or as refused where any of them is.
  *
  * Where the store cannot take a line now (-32005), nothing new is sent until everything on its way
  * is answered; then, after a wait that doubles each time, that line and all after it are sent again
- * in order: an older version of an item never lands on top of a newer one. A line that is sent
- * again after it was acknowledged is counted once. One thread.
+ * in order: an older version of an item never lands on top of a newer one. A line of several
+ * requests is gone on with where it failed. A line that is sent again after it was
+ * acknowledged is counted once. One thread.
  */
 #ifndef UNDERTAG_CLIENT_FEED_H
 #define UNDERTAG_CLIENT_FEED_H

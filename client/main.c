@@ -14,10 +14,11 @@
 #include "client/text.h"
 
 static const struct command *const COMMANDS[] = {
-    &command_file,      &command_gaps,         &command_show,     &command_withdraw,
-    &command_list,      &command_rule,         &command_check,    &command_sample,
-    &command_worklist,  &command_completeness, &command_standing, &command_report,
-    &command_tags_list, &command_tags_show,    &command_state,    &command_rebuild,
+    &command_file,           &command_gaps,          &command_show,     &command_withdraw,
+    &command_list,           &command_rule,          &command_check,    &command_sample,
+    &command_worklist,       &command_completeness,  &command_standing, &command_report,
+    &command_tags_list,      &command_tags_show,     &command_state,    &command_rebuild,
+    &command_snapshot_write, &command_snapshot_list, &command_backup,
 };
 
 enum {
@@ -71,7 +72,7 @@ static void print_help(void)
                  "Asks a running undertagd which tags items lack, and files items with it.\n\n"
                  "Commands ('undertag COMMAND --help' for each):\n");
     for (size_t i = 0; i < COMMAND_COUNT; i++) {
-        (void)printf("  %-12s %s\n", COMMANDS[i]->name, COMMANDS[i]->summary);
+        (void)printf("  %-14s %s\n", COMMANDS[i]->name, COMMANDS[i]->summary);
     }
     (void)printf("\nOptions, before or after the command:\n");
     args_help(GLOBALS, GLOBAL_COUNT, stdout);

@@ -61,12 +61,18 @@ void progress_format(const struct progress_view *view, size_t columns, bool unic
         }
         (void)add_part(line, &left, part); /* false: the next may still fit */
     }
-    (void)snprintf(part, sizeof part, "%s %s%s", format_count((int64_t)view->count, figure),
-                   view->noun ? view->noun : "item", view->count == 1 ? "" : "s");
+    if (view->is_size) {
+        (void)snprintf(part, sizeof part, "%s", format_size((double)view->count, figure));
+    } else {
+        (void)snprintf(part, sizeof part, "%s %s%s", format_count((int64_t)view->count, figure),
+                       view->noun ? view->noun : "item", view->count == 1 ? "" : "s");
+    }
     if (!add_part(line, &left, part) || view->rate < 0) {
         return;
     }
-    (void)snprintf(part, sizeof part, "%s a second", format_count(llround(view->rate), figure));
+    (void)snprintf(part, sizeof part, "%s a second",
+                   view->is_size ? format_size(view->rate, figure)
+                                 : format_count(llround(view->rate), figure));
     if (!add_part(line, &left, part) || view->seconds_left < 0) {
         return;
     }
@@ -116,6 +122,7 @@ void progress_update(struct progress *progress, uint64_t count, uint64_t done, i
     screen_measure(screen);
     struct progress_view view = {.count = count,
                                  .noun = progress->noun,
+                                 .is_size = progress->is_size,
                                  .done = done,
                                  .total = progress->total,
                                  .rate = progress->rate,

@@ -23,15 +23,17 @@ enum {
 struct progress_view {
     uint64_t count;   /* items */
     const char *noun; /* one of what is counted; NULL: "item" */
+    bool is_size;     /* bytes are counted */
     uint64_t done;    /* of `total`, in whatever unit the size is known in */
     uint64_t total;
     double rate;         /* items a second, below 0: not known yet */
     double seconds_left; /* below 0: not known yet */
 };
 
-/* All members but the first are private. */
+/* All members but the first two are private. */
 struct progress {
-    const char *noun;      /* see progress_view; set it behind progress_init */
+    const char *noun; /* see progress_view; set these two behind progress_init */
+    bool is_size;
     struct screen *screen; /* borrowed; measured anew before each writing */
     uint64_t total;
     int64_t started_ms;

@@ -54,7 +54,8 @@ int wire_open_take(int fd, const char *socket_path, struct wire **ret_wire, stru
     __attribute__((warn_unused_result));
 void wire_free(struct wire *wire); /* NULL is passed over */
 
-/* Queues a request; `params` is one JSON text of `length` bytes without a line end. */
+/* Queues a request; `params` is one JSON text of `length` bytes without a line end. Each id is the
+ * last one and 1. */
 int wire_queue(struct wire *wire, const char *method, const char *params, size_t length,
                int64_t *ret_id, struct failure *failure) __attribute__((warn_unused_result));
 

@@ -37,6 +37,7 @@ struct engine {
     struct workspaces workspaces;
     struct rebuild *rebuild;
     struct moments *moments;
+    struct backup *backup;
     struct trainer *trainer;
     struct writer *writer;
     atomic_uint_fast64_t questions;
@@ -233,6 +234,21 @@ static int make_rebuild(struct engine *engine)
     return rebuild_new(&settings, &engine->rebuild);
 }
 
+static int make_backup(struct engine *engine, const struct engine_settings *settings)
+{
+    const struct backup_settings backup = {.home = settings->home,
+                                           .options = &engine->options,
+                                           .store = engine->store,
+                                           .shared = &engine->shared,
+                                           .backlog = engine->backlog,
+                                           .rebuild = engine->rebuild,
+                                           .user = settings->user,
+                                           .writer_user = engine,
+                                           .let_go = on_kept,
+                                           .done = settings->changes_done};
+    return backup_new(&backup, &engine->backup);
+}
+
 static int start_threads(struct engine *engine, const struct engine_settings *settings)
 {
     const struct writer_settings writer = {.store = engine->store,
@@ -258,7 +274,10 @@ static int start_threads(struct engine *engine, const struct engine_settings *se
                                              .workspaces = &engine->workspaces,
                                              .user = engine,
                                              .kept = on_kept};
-    int code = writer_new(&writer, &engine->writer);
+    int code = make_backup(engine, settings);
+    if (code == 0) {
+        code = writer_new(&writer, &engine->writer);
+    }
     if (code < 0) {
         return code;
     }
@@ -330,6 +349,7 @@ int engine_open(const struct engine_settings *settings, struct engine **ret_engi
     *ret_engine = engine;
     return 0;
 fail_threads:
+    backup_free(engine->backup);
     moments_free(engine->moments);
 fail_moments:
     rebuild_free(engine->rebuild);
@@ -358,6 +378,8 @@ int engine_close(struct engine *engine)
     moments_stop(engine->moments);
     backlog_stop(engine->backlog);
     rebuild_stop(engine->rebuild);
+    backup_stop(engine->backup);
+    backup_free(engine->backup);   /* it wakes the writer and bars rebuilds */
     trainer_free(engine->trainer); /* it wakes the writer, so the writer goes after it, */
     rebuild_free(engine->rebuild); /* as this does */
     writer_free(engine->writer);
@@ -413,6 +435,11 @@ int engine_rebuild(struct engine *engine, const struct options *wanted, uint64_t
 void engine_read_rebuild(struct engine *engine, struct rebuild_state *ret_state)
 {
     rebuild_read(engine->rebuild, ret_state);
+}
+
+struct backup *engine_backup(struct engine *engine)
+{
+    return engine->backup;
 }
 
 void engine_lay_over(struct engine *engine, struct options *options)

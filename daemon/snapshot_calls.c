@@ -47,9 +47,7 @@ static int fail(struct read_job *job, bool is_busy, const struct store_error *er
                                    "The snapshot cannot be called so: %s.", reason);
     default:
         return fault_set(&job->fault, FAULT_STORE, NULL,
-                         "The snapshot cannot be written: %s. Nothing of it is left; the one "
-                         "before stays.",
-                         reason);
+                         "The snapshot cannot be written: %s. The one before stays.", reason);
     }
 }
 
@@ -141,6 +139,7 @@ static json_t *found_json(const struct snapshots *snapshots, const struct snapsh
     answer_add(&object, "at", json_string(time));
     answer_add(&object, "bytes", answer_count(found->bytes));
     answer_add(&object, "named", json_boolean(found->is_named));
+    answer_add(&object, "latest", json_boolean(found->is_latest));
     return object;
 }
 

@@ -14,6 +14,7 @@
 struct items {
     struct snapshot_file file;
     struct store_view *view;
+    struct snapshot_opened opened;
     struct item_buffer buffer; /* of the walk */
 };
 
@@ -23,7 +24,7 @@ static int add_item(void *user, const struct item_record *record)
     if (item_is_withdrawn(record)) {
         return STORE_OK;
     }
-    json_t *line = snapshot_said(items->view, record, items->file.error);
+    json_t *line = snapshot_said(&items->opened, items->view, record, items->file.error);
     if (!line && items->file.error->code != STORE_OK) {
         return items->file.error->code;
     }
@@ -39,7 +40,10 @@ int snapshot_items_write(struct export_part *part, struct store_view *view, stru
     if (code != STORE_OK) {
         return code;
     }
-    code = items_changed(view, 0, SIZE_MAX, add_item, &items, &items.buffer, &next, error);
+    code = snapshot_opened_init(&items.opened, view) == 0
+               ? items_changed(view, 0, SIZE_MAX, add_item, &items, &items.buffer, &next, error)
+               : (int)store_fail(error, STORE_NO_MEMORY, "there is no memory for a snapshot");
+    snapshot_opened_deinit(&items.opened);
     item_buffer_deinit(&items.buffer);
     return snapshot_file_close(&items.file, code);
 }

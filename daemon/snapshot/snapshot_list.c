@@ -56,16 +56,29 @@ static int compare_found(const void *left, const void *right)
     return strcmp(a->name, b->name);
 }
 
+/* Where EXPORT_LATEST leads to; "" where there is no such link. */
+static void read_latest(struct export_folder *folder, char name[EXPORT_NAME_BYTES])
+{
+    char target[EXPORT_NAME_BYTES + 1]; /* too long a one fills it */
+    ssize_t length = readlinkat(export_folder_fd(folder), EXPORT_LATEST, target, sizeof target);
+    bool fits = length > 0 && length < EXPORT_NAME_BYTES;
+    memcpy(name, target, fits ? (size_t)length : 0);
+    name[fits ? length : 0] = '\0';
+}
+
 int snapshot_list(struct export_folder *folder, struct snapshot_found **ret_list, size_t *ret_count,
                   char *error)
 {
     struct dirent **names = NULL;
+    char latest[EXPORT_NAME_BYTES];
     size_t found = 0;
+    read_latest(folder, latest);
     int count = scandirat(export_folder_fd(folder), ".", &names, is_name, alphasort);
     int errnum = errno;
     struct snapshot_found *list = count >= 0 ? calloc((size_t)count + 1, sizeof *list) : NULL;
     for (int i = 0; i < count; i++) {
         if (list && read_one(folder, names[i]->d_name, &list[found])) {
+            list[found].is_latest = strcmp(list[found].name, latest) == 0;
             found++;
         }
         free(names[i]);
@@ -115,7 +128,7 @@ int snapshot_thin(struct export_folder *folder, size_t keep, size_t *ret_removed
             continue;
         }
         unnamed--;
-        if (is_free(folder, list[i].name)) {
+        if (!list[i].is_latest && is_free(folder, list[i].name)) {
             code = export_folder_remove(folder, list[i].name, error);
             *ret_removed += code == 0;
         }

@@ -16,8 +16,9 @@ int snapshot_list(struct export_folder *folder, struct snapshot_found **ret_list
 
 /*
  * Removes the oldest of those that nobody gave a name, until there are `keep` of them. One whose
- * manifest somebody holds locked (flock, shared) is being read, and stays this time. *ret_removed
- * says how many went.
+ * manifest somebody holds locked (flock, shared) is being read, and stays this time; the latest
+ * always does, even where the clock was set back and others look newer. *ret_removed says how many
+ * went.
  */
 int snapshot_thin(struct export_folder *folder, size_t keep, size_t *ret_removed, char *error)
     __attribute__((warn_unused_result));

@@ -44,6 +44,7 @@ int snapshot_manifest_write(struct export_part *part, const struct snapshot_mani
 struct snapshot_found {
     char name[EXPORT_NAME_BYTES];
     bool is_named;
+    bool is_latest; /* EXPORT_LATEST leads to it; not of the manifest but of snapshot_list */
     uint64_t seq;
     uint64_t bytes;
     int64_t at_ms;

@@ -34,7 +34,8 @@ static const struct person GUEST = {.uid = 61912, .gid = ELSEWHERE, .other_gid =
 static const struct person STRANGER = {.uid = 61913, .gid = ELSEWHERE, .other_gid = HARBOUR};
 
 /* Each method that there is, with params for a store that has an item 'a' with a tag 'fog', and the
- * option that grants it. A rebuild must not begin: another would be refused meanwhile. */
+ * option that grants it. No rebuild and no snapshot must begin: another would be refused
+ * meanwhile. */
 static const struct {
     const char *method;
     const char *params;
@@ -56,6 +57,9 @@ static const struct {
     {"desk.standing", "{}", "may_read", 0},
     {"daemon.state", "{}", "may_read", 0},
     {"daemon.rebuild", "{'settings': {'lamp': 1}}", "may_operate", -32602},
+    {"snapshot.write", "{'name': 'latest'}", "may_operate", -32602},
+    {"snapshot.list", "{}", "may_operate", 0},
+    {"backup.write", "{'rate': 1}", "may_operate", -32602},
 };
 
 enum {

@@ -18,7 +18,8 @@ enum {
     TAG,
     ORDER,
     TITLE,
-    SOCKET
+    SOCKET,
+    RATE
 };
 
 static const struct args_option GLOBALS[] = {
@@ -32,6 +33,7 @@ static const struct args_option OWN[] = {
     [ORDER] = {"order", ARGS_CHOICE, "name|count", 0, 0, "the order"},
     [TITLE] = {"title", ARGS_TEXT, "T", 0, 0, "a title"},
     [SOCKET] = {"socket", ARGS_PATH, "PATH", 0, 0, "a socket"},
+    [RATE] = {"rate", ARGS_SIZE, "BYTES", 1024, 0x1p40, "bytes a second"},
 };
 
 struct fixture {
@@ -46,7 +48,10 @@ static int set_up(void **state)
     static struct fixture fixture;
     fixture = (struct fixture){0};
     *state = &fixture;
-    return args_init(&fixture.globals, GLOBALS, 1) || args_init(&fixture.own, OWN, 6) ? -1 : 0;
+    return args_init(&fixture.globals, GLOBALS, 1) ||
+                   args_init(&fixture.own, OWN, sizeof OWN / sizeof OWN[0])
+               ? -1
+               : 0;
 }
 
 static int tear_down(void **state)
@@ -175,6 +180,39 @@ static void a_number_out_of_range_is_refused(void **state)
     }
 }
 
+static void a_size_is_in_bytes_or_in_larger_units(void **state)
+{
+    /* 1.5 GiB = 1.5 · 1,024³ bytes = 1,610,612,736 */
+    static const struct {
+        const char *text;
+        int64_t bytes;
+    } SIZES[] = {{"4096", 4096}, {"1KiB", 1024}, {"64MiB", 67108864}, {"1.5GiB", 1610612736}};
+    for (size_t i = 0; i < sizeof SIZES / sizeof SIZES[0]; i++) {
+        struct fixture *fixture = *state;
+        assert_int_equal(parse(fixture, (const char *[]){"--rate", SIZES[i].text, NULL}), 0);
+        assert_int_equal(fixture->own.values[RATE].whole, SIZES[i].bytes);
+        assert_int_equal(tear_down(state), 0);
+        assert_int_equal(set_up(state), 0);
+    }
+}
+
+static void a_size_of_another_unit_or_out_of_range_is_refused(void **state)
+{
+    static const char *const BAD[] = {"1023",  "0.5KiB", "64MB", "64 MiB", "1.0001KiB", "MiB",   "",
+                                      "-4MiB", "nan",    "1e6",  "0x800",  "2000GiB",   "64MiBs"};
+    for (size_t i = 0; i < sizeof BAD / sizeof BAD[0]; i++) {
+        struct fixture *fixture = *state;
+        char argument[32];
+        (void)snprintf(argument, sizeof argument, "--rate=%s", BAD[i]);
+        assert_int_equal(parse(fixture, (const char *[]){argument, NULL}), FAILURE_USAGE);
+        assert_non_null(strstr(fixture->failure.message,
+                               "--rate takes a size from 1,024 to 1,099,511,627,776 bytes, such as "
+                               "64MiB, not '"));
+        assert_int_equal(tear_down(state), 0);
+        assert_int_equal(set_up(state), 0);
+    }
+}
+
 static void a_choice_is_one_of_its_words_and_no_part_of_them(void **state)
 {
     struct fixture *fixture = *state;
@@ -238,6 +276,9 @@ int main(void)
                                         set_up, tear_down),
         cmocka_unit_test_setup_teardown(a_whole_number_out_of_range_is_refused, set_up, tear_down),
         cmocka_unit_test_setup_teardown(a_number_out_of_range_is_refused, set_up, tear_down),
+        cmocka_unit_test_setup_teardown(a_size_is_in_bytes_or_in_larger_units, set_up, tear_down),
+        cmocka_unit_test_setup_teardown(a_size_of_another_unit_or_out_of_range_is_refused, set_up,
+                                        tear_down),
         cmocka_unit_test_setup_teardown(a_choice_is_one_of_its_words_and_no_part_of_them, set_up,
                                         tear_down),
         cmocka_unit_test_setup_teardown(an_option_given_twice_is_refused, set_up, tear_down),

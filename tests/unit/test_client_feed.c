@@ -27,12 +27,21 @@ struct fixture {
     size_t closes_at;    /* the request that finds it gone */
     size_t closes_after; /* the same, once that request is answered */
     size_t forbids_at;
+    size_t refuses_at; /* the request that it does not like */
+    char asked[256];   /* the methods that came, separated by spaces */
     /* what the feed told */
     char refused[1024];
     size_t acknowledged;
     size_t waits;
     unsigned waited_ms;
 };
+
+static void note_method(struct fixture *fixture, const char *method)
+{
+    size_t used = strlen(fixture->asked);
+    (void)snprintf(fixture->asked + used, sizeof fixture->asked - used, "%s%s", used ? " " : "",
+                   method); /* of a long stream, the first */
+}
 
 /* Keeps the item; an id that is no text is refused. */
 static bool keep(struct fake_daemon *fake, json_t *request, FILE *out)
@@ -42,6 +51,12 @@ static bool keep(struct fake_daemon *fake, json_t *request, FILE *out)
     const char *id = json_string_value(json_object_get(params, "id"));
     if (fixture->closes_at == fake->requests) {
         return false;
+    }
+    note_method(fixture, json_string_value(json_object_get(request, "method")));
+    if (fixture->refuses_at == fake->requests) {
+        fake_daemon_answer(request, out,
+                           "\"error\":{\"code\":-32002,\"message\":\"No such tag.\"}");
+        return true;
     }
     if (fixture->forbids_at == fake->requests) {
         fake_daemon_answer(request, out, "\"error\":{\"code\":-32004,\"message\":\"Not you.\"}");
@@ -309,6 +324,83 @@ static void what_is_not_allowed_stops_the_stream(void **state)
     assert_int_equal(feed_acknowledged(&counts), 10);
 }
 
+/* --- lines of several requests --- */
+
+#define RULED_AND_CHECKED                                                                          \
+    "{\"id\":\"a\",\"then\":["                                                                     \
+    "{\"method\":\"item.rule\",\"params\":{\"not\":[\"fog\"]}},"                                   \
+    "{\"method\":\"item.check\",\"params\":{\"tags\":[\"ice\"]}}]}\n"
+
+static void a_line_with_calls_counts_once_as_its_filing_does(void **state)
+{
+    struct fixture *fixture = *state;
+    assert_int_equal(file_text(fixture, RULED_AND_CHECKED "{\"id\":\"b\"}\n"), 0);
+    struct feed_counts counts = finish(fixture);
+    assert_int_equal(counts.fresh, 2);
+    assert_int_equal(counts.revised + counts.same + counts.refused, 0);
+    assert_int_equal(counts.bytes, sizeof RULED_AND_CHECKED - 1 + 11);
+    assert_int_equal(fixture->acknowledged, 2);
+    assert_string_equal(fixture->asked, "item.file item.rule item.check item.file");
+}
+
+static void many_lines_with_calls_arrive_whole(void **state)
+{
+    struct fixture *fixture = *state;
+    char text[40 * sizeof RULED_AND_CHECKED] = "";
+    for (int i = 0; i < 40; i++) {
+        (void)strcat(text, RULED_AND_CHECKED);
+    }
+    assert_int_equal(file_text(fixture, text), 0);
+    struct feed_counts counts = finish(fixture);
+    assert_int_equal(feed_acknowledged(&counts), 40);
+    assert_int_equal(fixture->fake.requests, 3 * 40);
+}
+
+static void a_line_is_refused_where_one_of_its_calls_is(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture->refuses_at = 3;
+    assert_int_equal(file_text(fixture, "{\"id\":\"b\"}\n" RULED_AND_CHECKED), 0);
+    struct feed_counts counts = finish(fixture);
+    assert_int_equal(counts.fresh, 1);
+    assert_int_equal(counts.refused, 1);
+    assert_string_equal(fixture->refused, "log.jsonl:2: then[0] (item.rule): No such tag\n");
+}
+
+static void a_line_whose_calls_cannot_be_made_is_refused_before_any_is(void **state)
+{
+    struct fixture *fixture = *state;
+    assert_int_equal(file_text(fixture, "{\"id\":\"a\",\"then\":{}}\n"), 0);
+    assert_int_equal(finish(fixture).refused, 1);
+    assert_string_equal(fixture->refused, "log.jsonl:1: then is not a list\n");
+    assert_int_equal(fixture->fake.requests, 0);
+}
+
+static void a_line_is_gone_on_with_at_the_call_that_the_store_could_not_take(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture->full_at[0] = 2;
+    assert_int_equal(file_text(fixture, RULED_AND_CHECKED "{\"id\":\"b\"}\n"), 0);
+    struct feed_counts counts = finish(fixture);
+    assert_int_equal(counts.fresh, 2);
+    assert_int_equal(fixture->waits, 1);
+    assert_string_equal(fixture->asked, "item.file item.rule item.check item.file "
+                                        "item.rule item.check item.file");
+}
+
+/* Without its filing nothing can be ruled on the item. */
+static void what_is_refused_behind_a_call_that_was_not_taken_is_asked_again(void **state)
+{
+    struct fixture *fixture = *state;
+    fixture->full_at[0] = 1;
+    fixture->refuses_at = 2;
+    assert_int_equal(file_text(fixture, RULED_AND_CHECKED), 0);
+    struct feed_counts counts = finish(fixture);
+    assert_int_equal(counts.refused, 0);
+    assert_int_equal(feed_acknowledged(&counts), 1);
+    assert_string_equal(fixture->refused, "");
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -332,6 +424,17 @@ int main(void)
         cmocka_unit_test_setup_teardown(a_daemon_that_goes_away_after_the_last_answer_does_no_harm,
                                         set_up, tear_down),
         cmocka_unit_test_setup_teardown(what_is_not_allowed_stops_the_stream, set_up, tear_down),
+        cmocka_unit_test_setup_teardown(a_line_with_calls_counts_once_as_its_filing_does, set_up,
+                                        tear_down),
+        cmocka_unit_test_setup_teardown(many_lines_with_calls_arrive_whole, set_up, tear_down),
+        cmocka_unit_test_setup_teardown(a_line_is_refused_where_one_of_its_calls_is, set_up,
+                                        tear_down),
+        cmocka_unit_test_setup_teardown(a_line_whose_calls_cannot_be_made_is_refused_before_any_is,
+                                        set_up, tear_down),
+        cmocka_unit_test_setup_teardown(
+            a_line_is_gone_on_with_at_the_call_that_the_store_could_not_take, set_up, tear_down),
+        cmocka_unit_test_setup_teardown(
+            what_is_refused_behind_a_call_that_was_not_taken_is_asked_again, set_up, tear_down),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

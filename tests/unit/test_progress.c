@@ -51,6 +51,18 @@ static void what_is_counted_may_be_something_else(void **state)
     assert_line(&two, 79, "2 changes");
 }
 
+static void bytes_are_counted_as_sizes(void **state)
+{
+    (void)state;
+    const struct progress_view view = {.count = 12345678,
+                                       .is_size = true,
+                                       .done = 1,
+                                       .total = 4,
+                                       .rate = 4.2e6,
+                                       .seconds_left = 8};
+    assert_line(&view, 79, "██████                    25 %   12.3 MB   4.2 MB a second   8 s left");
+}
+
 static void what_does_not_fit_a_narrow_terminal_is_left_out(void **state)
 {
     (void)state;
@@ -153,6 +165,7 @@ int main(void)
         cmocka_unit_test(without_a_known_size_there_is_no_share_and_no_time_left),
         cmocka_unit_test(before_the_rate_is_known_the_count_stands_alone),
         cmocka_unit_test(what_is_counted_may_be_something_else),
+        cmocka_unit_test(bytes_are_counted_as_sizes),
         cmocka_unit_test(what_does_not_fit_a_narrow_terminal_is_left_out),
         cmocka_unit_test_setup_teardown(the_line_renews_itself_at_most_ten_times_a_second, set_up,
                                         tear_down),

@@ -206,7 +206,7 @@ bench: packages-build packages-quality
 	@$(PYTHON) -B tests/bench/bench.py $(BUILD) --corpora $(BUILD)/corpora $(BENCH)
 
 quality: packages-build packages-quality
-	@$(MAKE) --no-print-directory all
+	@$(MAKE) --no-print-directory all $(BUILD)/tests/test_snapshot_files
 	-@$(MAKE) --no-print-directory --keep-going corpora
 	@$(PYTHON) -B tests/quality/quality.py $(BUILD)/undertagd --corpora $(BUILD)/corpora \
 	    --kept $(BUILD)/quality --json $(BUILD)/quality.json

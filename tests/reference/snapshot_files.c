@@ -50,7 +50,7 @@ static void map_array(const char *folder, const char *name, const char *type,
 {
     char path[PATH_BYTES];
     char header[HEADER_BYTES] = "";
-    struct stat status;
+    struct stat status = {0};
     make_path(folder, name, path);
     int fd = open(path, O_RDONLY | O_CLOEXEC);
     assert_true(fd >= 0 && fstat(fd, &status) == 0);

@@ -12,8 +12,6 @@ import functools
 import re
 import unicodedata
 
-import snowballstemmer
-
 # Values of Word_Break that the rules of UAX #29 name together.
 LETTERS = {"ALetter", "Hebrew_Letter"}
 WORDLIKE = LETTERS | {"Numeric"}
@@ -181,6 +179,7 @@ class Stems:
         if algorithm is None:
             return lambda word: word
         if algorithm not in self.stemmers:
+            import snowballstemmer  # needed where words are stemmed, and nowhere else
             stem = snowballstemmer.stemmer(algorithm).stemWord
             self.stemmers[algorithm] = functools.lru_cache(maxsize=1 << 20)(lambda word: self._kept(word, stem(word)))
         return self.stemmers[algorithm]

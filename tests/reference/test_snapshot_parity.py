@@ -2,6 +2,7 @@
 """A snapshot's files give the daemon's own scores and chances, read by snapshot_reader.py and by C."""
 import os
 import sys
+import threading
 import unittest
 
 import python_tests
@@ -13,11 +14,13 @@ import logbooks  # noqa: E402
 import many_scripts  # noqa: E402
 import parity    # noqa: E402
 import trial     # noqa: E402
+import wire      # noqa: E402
 
 BUILD = os.environ.get("BUILD", "build")
 DAEMON = os.path.join(BUILD, "undertagd")
 READER_IN_C = os.path.join(BUILD, "tests", "test_snapshot_files")
 SETTINGS = ["memory_budget=64MiB"]  # and rehearsal_share=0, as every trial has it
+LEARNED_BEFORE = 400  # entries, before a snapshot is written
 SAYS_NOTHING = {"title": "Quxly", "text": "zzyzx", "tags": []}  # no word that anybody has filed
 
 
@@ -99,6 +102,36 @@ class TheDemo(Desk, unittest.TestCase):
     def test_the_curve_was_fitted_to_what_the_checks_found(self):
         said = {tag["propensity"]["from"] for tag in self.snapshot.tags}
         self.assertLessEqual({"both"}, said)
+
+
+class WrittenWhileFiling(Desk, unittest.TestCase):
+    """A snapshot from the middle of a feed, beside a daemon that was told no more than what it is of."""
+
+    @classmethod
+    def setUpClass(cls):
+        entries = logbooks.make(1868, 3000)[0]
+        feeding = cls.enterClassContext(trial.daemon(DAEMON, SETTINGS))
+        written = cls.write_while(feeding, lambda other: trial.file_items(other, entries))
+        cls.seq, cls.folder = written["seq"], written["path"]
+        cls.snapshot = parity.snapshot_reader.Snapshot(cls.folder)
+        cls.filed, cls.asked = entries[:cls.seq], entries[-300:]
+        cls.connection = cls.enterClassContext(trial.daemon(DAEMON, SETTINGS))
+        trial.file_items(cls.connection, cls.filed)
+
+    @classmethod
+    def write_while(cls, connection, work):
+        """Writes a snapshot once some of the work is done."""
+        with wire.Wire(connection.socket.getpeername()) as other:
+            thread = threading.Thread(target=work, args=(other,))
+            thread.start()
+            trial.wait_for(lambda: connection.call("daemon.state")["learned"] > LEARNED_BEFORE, 60, "learning", 0.01)
+            written = connection.call("snapshot.write", {"name": "between"})
+            thread.join()
+        return written
+
+    def test_it_was_written_before_all_was_filed(self):
+        self.assertGreater(self.seq, LEARNED_BEFORE)
+        self.assertLess(self.seq, 3000)
 
 
 class ManyScripts(Desk, unittest.TestCase):

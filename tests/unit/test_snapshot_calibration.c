@@ -109,8 +109,10 @@ static void a_chance_to_belong_is_on_the_line_of_its_group(void **state)
 {
     const struct scene *scene = *state;
     const struct calibrators_curves *curves = model_curves(scene->learner.model);
-    for (double propensity = 0.05; propensity <= 1.0; propensity += 0.05) {
-        for (double score = -1.25; score < 2.0; score += 0.0173) {
+    for (int i = 1; i <= 20; i++) {
+        for (int j = 0; j < 190; j++) {
+            double propensity = 0.05 * i;
+            double score = -1.25 + 0.0173 * j;
             assert_near(belongs(scene->calibration, propensity, score),
                         calibrators_chance(curves, propensity, score), 1e-12);
         }
@@ -174,8 +176,10 @@ static void an_agreed_chance_is_on_the_lines_of_promise_and_chance(void **state)
 {
     const struct scene *scene = *state;
     const struct agreement *agreement = model_agreement(scene->learner.model);
-    for (double promise = 0.0; promise < 12.0; promise += 0.37) {
-        for (double missing = 0.001; missing < 1.0; missing += 0.0111) {
+    for (int i = 0; i < 33; i++) {
+        for (int j = 0; j < 90; j++) {
+            double promise = 0.37 * i;
+            double missing = 0.001 + 0.0111 * j;
             assert_near(agreed(scene->calibration, promise, missing),
                         agreement_chance(agreement, promise, missing), 1e-9);
         }

@@ -212,6 +212,11 @@ static bool on_wrote(void *user, size_t bytes)
     return backup_count(writing->backup, bytes, writing->due_us);
 }
 
+static int fail_stopped(struct writing *writing)
+{
+    return fail(writing, -ECANCELED, "the daemon is stopping");
+}
+
 static int copy_environment(struct writing *writing, int at, struct backup_file *file,
                             struct store_error *error)
 {
@@ -236,7 +241,7 @@ static int copy_to(struct writing *writing, int at, int fd)
     noted->bytes = file.bytes;
     writing->outcome->bytes += file.bytes;
     if (result == STORE_STOPPED) {
-        return file.code == -ECANCELED ? fail(writing, -ECANCELED, "the daemon is stopping")
+        return file.code == -ECANCELED ? fail_stopped(writing)
                                        : fail_file(writing, file.code, BACKUP_PATHS[at]);
     }
     return result == STORE_OK ? 0 : fail_store(writing, &error);
@@ -269,6 +274,9 @@ static int look(struct writing *writing)
     char path[PATH_MAX];
     struct store_error error = {0};
     struct backup_found found = {0};
+    if (!backup_count(writing->backup, 0, 0)) { /* looking takes a while, too */
+        return fail_stopped(writing);
+    }
     if (export_part_path(writing->part, path, sizeof path) < 0) {
         return fail(writing, -ENAMETOOLONG, "the path of the backup is too long");
     }

@@ -290,6 +290,19 @@ static void only_one_is_written_at_a_time_and_the_state_tells_of_it(void **state
     wait_until_rebuilt(peer);
 }
 
+/* So many changes take longer to learn than a request takes to come. */
+static void while_a_rebuild_is_under_way_none_is_written(void **state)
+{
+    struct desk *desk = *state;
+    struct peer *peer = &desk->service->peer;
+    feed(peer, BEFORE);
+    (void)ask(peer, "daemon.rebuild", "{'settings': {'loss': 'hinge'}}");
+    assert_error(ask_refused(peer, "backup.write", "{'name': 'monday'}"), STORE, "");
+    assert_false(is_there(desk, "monday"));
+    wait_until_rebuilt(peer);
+    (void)ask(peer, "backup.write", "{'name': 'monday'}");
+}
+
 static void a_name_that_is_none_or_is_taken_is_refused(void **state)
 {
     struct desk *desk = *state;
@@ -450,6 +463,7 @@ int main(void)
         TEST(an_empty_daemon_can_be_restored_too),
         TEST(what_is_written_says_what_it_is),
         TEST(only_one_is_written_at_a_time_and_the_state_tells_of_it),
+        TEST(while_a_rebuild_is_under_way_none_is_written),
         TEST(a_name_that_is_none_or_is_taken_is_refused),
         TEST(stopping_the_daemon_ends_it_and_leaves_nothing),
         TEST(one_that_a_kill_has_ended_is_swept_by_the_next_start),

@@ -65,7 +65,7 @@ int backup_begin(struct backup *backup, const struct backup_wanted *wanted)
     __attribute__((warn_unused_result));
 
 struct backup_outcome {
-    int code;           /* 0, or a negative errno; -ECANCELED: stopped */
+    int code;           /* 0, or a negative errno; -ECANCELED: stopped, -EBADMSG: damage */
     bool is_name_wrong; /* it is the name that is to blame */
     char error[EXPORT_ERROR_BYTES];
     char name[EXPORT_NAME_BYTES];

@@ -5,18 +5,10 @@
 #include "storage/model_store.h"
 #include "storage/store.h"
 
-/* The first fault of pages ends the look: it is all that anybody reads. */
-static void tell(void *user, const char *sentence)
-{
-    struct store_error *error = user;
-    (void)store_fail(error, STORE_CORRUPT, "%s", sentence); /* the first one stays */
-}
-
 static int look_at_store(struct store *store, struct backup_found *found, struct store_error *error)
 {
     struct store_view *view = NULL;
-    if (store_check_pages(store, tell, error, error) != STORE_OK || error->code != STORE_OK ||
-        store_read(store, &view, error) != STORE_OK) {
+    if (store_read(store, &view, error) != STORE_OK) {
         return error->code;
     }
     struct store_totals totals = store_view_totals(view);
@@ -37,9 +29,6 @@ static int look_at_model(struct model_store *model, const struct store *store,
                          struct backup_found *found, struct store_error *error)
 {
     struct model_store_head head = {0};
-    if (model_store_check_pages(model, tell, error, error) != STORE_OK || error->code != STORE_OK) {
-        return error->code;
-    }
     int code = model_store_read_head(model, &head, error);
     if (code == STORE_NOT_FOUND) {
         return STORE_OK; /* none has been stored yet */

@@ -1,10 +1,10 @@
 /*
- * backup_look: whether what is in a folder can be a home: both environments open, their pages are
- * whole, and the model is one of that store. Nothing is changed there, and no lock file made.
+ * backup_look: whether what is in a folder can be a home: both environments open, are of formats
+ * that this version reads, and the model is one of that store. Nothing is changed there, and no
+ * lock file made.
  *
- * The pages are looked at since a copy may be of what was damaged already, and LMDB trusts them
- * without a look. The checksums of what stands in them are left to `undertagd --verify`, which
- * takes a process of its own for that, and many times as long.
+ * It trusts the files' pages, which are those of an environment that was looked through before it
+ * was copied. What stands in them has checksums of its own: `undertagd --verify` is for these.
  */
 #ifndef UNDERTAG_BACKUP_LOOK_H
 #define UNDERTAG_BACKUP_LOOK_H

@@ -1,7 +1,8 @@
 /*
- * Happy path: bar rebuilds and hold back erasing; begin a part in the exports; copy the model, then
- * the store, in pieces at the rate that was asked for; look at what was written as at a home; write
- * the note; have it reach the disk and take its name.
+ * Happy path: bar rebuilds and hold back erasing; begin a part in the exports; look through the
+ * pages of both environments; copy the model, then the store, in pieces at the rate that was asked
+ * for; look at what was written as at a home; write the note; have it reach the disk and take its
+ * name.
  *
  * Failure paths: whatever fails, or is stopped, removes the part, and lets go of what was held. A
  * crash leaves the part for the next start to sweep.
@@ -57,6 +58,7 @@ static int fail_store(struct writing *writing, const struct store_error *error)
 {
     int code = error->code == STORE_NO_MEMORY ? -ENOMEM
                : error->code == STORE_FULL    ? -ENOSPC
+               : error->code == STORE_CORRUPT ? -EBADMSG
                                               : -EIO;
     return fail(writing, code, error->text[0] ? error->text : store_code_sentence(error->code));
 }
@@ -179,6 +181,31 @@ static int begin_part(struct writing *writing)
     return 0;
 }
 
+/* An environment that is looked through. The first fault is all that anybody reads. */
+struct looking {
+    const char *what;
+    struct store_error error;
+};
+
+static void tell(void *user, const char *sentence)
+{
+    struct looking *looking = user;
+    (void)store_fail(&looking->error, STORE_CORRUPT,
+                     "%s is damaged (%s): undertagd --verify tells more", looking->what, sentence);
+}
+
+/* LMDB follows pages without a look: a damaged one would end the daemon. */
+static int check_pages(struct writing *writing, int at)
+{
+    struct store *store = writing->backup->settings.store;
+    struct looking looking = {.what = at == 0 ? "the model" : "the store"};
+    int result = at == 0 ? model_store_check_pages(writing->model, tell, &looking, &looking.error)
+                         : store_check_pages(store, tell, &looking, &looking.error);
+    return result == STORE_OK && looking.error.code == STORE_OK
+               ? 0
+               : fail_store(writing, &looking.error);
+}
+
 /* There shall be room for all of it before anything is written. */
 static int expect(struct writing *writing)
 {
@@ -212,6 +239,11 @@ static bool on_wrote(void *user, size_t bytes)
     return backup_count(writing->backup, bytes, writing->due_us);
 }
 
+static int fail_stopped(struct writing *writing)
+{
+    return fail(writing, -ECANCELED, "the daemon is stopping");
+}
+
 static int copy_environment(struct writing *writing, int at, struct backup_file *file,
                             struct store_error *error)
 {
@@ -236,7 +268,7 @@ static int copy_to(struct writing *writing, int at, int fd)
     noted->bytes = file.bytes;
     writing->outcome->bytes += file.bytes;
     if (result == STORE_STOPPED) {
-        return file.code == -ECANCELED ? fail(writing, -ECANCELED, "the daemon is stopping")
+        return file.code == -ECANCELED ? fail_stopped(writing)
                                        : fail_file(writing, file.code, BACKUP_PATHS[at]);
     }
     return result == STORE_OK ? 0 : fail_store(writing, &error);
@@ -315,6 +347,9 @@ static int write_note(struct writing *writing)
 static int write_part(struct writing *writing)
 {
     int code = begin_part(writing);
+    for (int at = 0; at < BACKUP_FILES && code == 0; at++) {
+        code = check_pages(writing, at);
+    }
     if (code == 0) {
         code = expect(writing);
     }

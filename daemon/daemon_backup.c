@@ -81,8 +81,9 @@ static int fail_outcome(struct fault *fault, const struct backup_outcome *outcom
         return fault_set(fault, FAULT_STOPPING, NULL,
                          "The daemon is stopping: ask for the backup again once it is back.");
     }
-    return fail(fault, outcome->code == -ENOMEM ? FAULT_INTERNAL : FAULT_STORE, NULL,
-                outcome->error);
+    /* What is damaged, trying again does not mend. */
+    bool is_internal = outcome->code == -ENOMEM || outcome->code == -EBADMSG;
+    return fail(fault, is_internal ? FAULT_INTERNAL : FAULT_STORE, NULL, outcome->error);
 }
 
 void daemon_backup_done(struct methods *methods)

@@ -276,11 +276,8 @@ int weights_read_chunk(const struct weights *weights, struct base_bytes chunk,
     memcpy(numbers, chunk.data, chunk.size); /* aligned */
     int count = 0;
     for (size_t at = 0; at < chunk.size / sizeof numbers[0]; at += stride) {
-        int16_t steps = cell_weight(numbers[at + 1]);
-        if (steps != 0) {
-            ret_pairs[count++] =
-                (struct weights_pair){.tag = numbers[at], .weight = (float)steps * CELL_STEP};
-        }
+        ret_pairs[count++] = (struct weights_pair){
+            .tag = numbers[at], .weight = (float)cell_weight(numbers[at + 1]) * CELL_STEP};
     }
     return count;
 }

@@ -265,8 +265,9 @@ enum {
     WEIGHTS_CHUNK_PAIRS = 160 /* at most, in a chunk */
 };
 
-/* What a stored chunk's postings weigh, those that weigh nothing left out; tags are below
- * `tag_count`. Returns how many there are, or -EINVAL for what is no chunk of these weights. */
+/* What a stored chunk's postings weigh, which may be 0: their word speaks for the tag all the same
+ * (weights_speak). Tags are below `tag_count`. Returns how many there are, or -EINVAL for what is
+ * no chunk of these weights. */
 int weights_read_chunk(const struct weights *weights, struct base_bytes chunk,
                        struct weights_pair ret_pairs[WEIGHTS_CHUNK_PAIRS]);
 

@@ -16,8 +16,8 @@ static const char *const STEPS[] = {
     "belongs: the curve of the tag's group, the first one with its propensity p below "
     "propensity_below: at_floor at a score of floor_score or less; above it a straight line "
     "between the points (scores[i], chances[i]), level before the first and behind the last.",
-    "Where none of the item's known terms has a weight for any tag, belongs = min(unprompted / "
-    "documents / p, 1) whatever the score; 0 without documents.",
+    "Where none of the item's known terms has a weight for any tag (a stored one of 0 is one), "
+    "belongs = min(unprompted / documents / p, 1) whatever the score; 0 without documents.",
     "Of a draft without tags, a tag's chance is belongs.",
     "Of a draft with tags and of a filed item it is the chance to be missing, P(missing | not "
     "given), of the tags that it has not. p' = p_allowed (tags.jsonl): p, or where that is more "

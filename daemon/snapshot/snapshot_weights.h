@@ -36,7 +36,7 @@ void snapshot_weights_free(struct snapshot_weights *weights); /* NULL is passed 
 int snapshot_weights_write(struct snapshot_weights *weights, const uint32_t *words,
                            size_t word_count) __attribute__((warn_unused_result));
 
-/* Weights that are not 0. */
+/* Weights; a few of them are 0. */
 uint64_t snapshot_weights_count(const struct snapshot_weights *weights);
 
 /* Makes weights.npz of these files, as scipy.sparse.save_npz lays out a matrix of this shape. */

@@ -5,6 +5,7 @@ service. Then a thousand items are asked about as drafts with none and with some
 filed. Floors are the differences that parity.py allows; chances of filed items rest on more than is in a snapshot.
 """
 
+import hashlib
 import os
 import time
 
@@ -33,9 +34,9 @@ def judge(judged, name, score, chance):
     judged.at_most(f"{name}: largest difference of chances", chance, parity.CHANCES)
 
 
-def compare_drafts(connection, folder, snapshot, items, judged, program):
-    """Drafts of either kind, by the reader in Python and by that in C."""
-    for kind, draft_of in KINDS.items():
+def compare_drafts(connection, folder, snapshot, items, judged, program, kinds):
+    """Drafts of these kinds, by the reader in Python and by that in C."""
+    for kind, draft_of in kinds.items():
         drafts = [draft_of(item) for item in items]
         answers = parity.asked(connection, drafts)
         apart = parity.compare(snapshot, drafts, answers)
@@ -45,6 +46,20 @@ def compare_drafts(connection, folder, snapshot, items, judged, program):
             by_c = parity.compare_by_c(program, folder, drafts, answers)
             judged.value(f"{kind}, by C", by_c)
             judge(judged, f"{kind}, by C, {by_c['gaps']:,} gaps", by_c["score"], by_c["chance"])
+
+
+def compare_words(connection, folder, snapshot, judged, program):
+    """Drafts of one word: first those whose weights are all 0, which speak for a tag all the same; then any."""
+    weighs = abs(snapshot.weights).sum(axis=0).A1 > 0
+    words = sorted(snapshot.columns, key=lambda word: (weighs[snapshot.columns[word]], hash_of(word)))
+    items = [{"text": word, "tags": []} for word in words if " " not in word and "=" not in word]
+    judged.value("words of weight 0", int((~weighs).sum()))
+    compare_drafts(connection, folder, snapshot, items[:ASKED], judged, program, {"single words": parity.draft_of})
+
+
+def hash_of(word):
+    """A place in an order that means nothing and stays."""
+    return hashlib.sha256(word.encode()).digest()
 
 
 def compare_filed(connection, snapshot, items, judged):
@@ -64,7 +79,8 @@ def run_corpus(name, split, options):
         folder, snapshot = parity.write_snapshot(connection, "parity", rate=FASTEST)
         seconds = time.monotonic() - start
         judged.value("seconds", seconds, f"{snapshot.weights.nnz:,} weights written and read in {seconds:.1f} s")
-        compare_drafts(connection, folder, snapshot, split.test[:ASKED], judged, reader_in_c(options))
+        compare_drafts(connection, folder, snapshot, split.test[:ASKED], judged, reader_in_c(options), KINDS)
+        compare_words(connection, folder, snapshot, judged, reader_in_c(options))
         compare_filed(connection, snapshot, split.train[::len(split.train) // ASKED], judged)
     return judged
 

@@ -249,6 +249,21 @@ static void a_chunk_of_a_tag_that_is_not_known_is_refused(void **state)
     assert_near(fixture_score_of(fixture, 3, FIXTURE_TAGS), -0.5, 0.0);
 }
 
+/* Whoever copies weights must see that the word has one (weights_speak). */
+static void a_weight_of_nothing_is_read_like_any_other(void **state)
+{
+    const struct fixture *fixture = *state;
+    const uint32_t numbers[] = {0, cell_of(0, 7), 2, cell_of(-1024, 7)};
+    const struct base_bytes chunk = {.data = (const unsigned char *)numbers,
+                                     .size = sizeof numbers};
+    struct weights_pair pairs[WEIGHTS_CHUNK_PAIRS];
+    assert_int_equal(weights_read_chunk(fixture->weights, chunk, pairs), 2);
+    assert_int_equal(pairs[0].tag, 0);
+    assert_near(pairs[0].weight, 0.0, 0.0);
+    assert_int_equal(pairs[1].tag, 2);
+    assert_near(pairs[1].weight, -0.5, 0.0); /* -1024 of 2048 steps */
+}
+
 static void an_error_of_the_base_is_handed_on(void **state)
 {
     struct fixture *fixture = *state;
@@ -281,6 +296,7 @@ int main(void)
         weights_test(nothing_put_back_is_marked_as_changed),
         weights_test(a_chunk_over_the_size_is_refused),
         weights_test(a_chunk_of_a_tag_that_is_not_known_is_refused),
+        weights_test(a_weight_of_nothing_is_read_like_any_other),
         weights_test(an_error_of_the_base_is_handed_on),
     };
     return cmocka_run_group_tests_name("storing weights", tests, NULL, NULL);

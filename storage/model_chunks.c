@@ -49,33 +49,43 @@ bool model_chunks_open(struct kv_bytes key, struct kv_bytes record, struct kv_by
 /* --- writing ------------------------------------------------------------------------------------
  */
 
-static int put_whole(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes record,
-                     struct store_error *error)
+static int put_whole(struct kv_txn *txn, struct kv_bytes key, uint32_t checksum,
+                     struct kv_bytes body, struct store_error *error)
 {
-    int code = kv_put(txn, MODEL_CHUNKS, key, record, error);
+    unsigned char record[KV_VALUE_BYTES];
+    if (body.size > sizeof record - CHECKSUM_BYTES) {
+        return store_fail(error, STORE_BROKEN, "a chunk of %zu bytes is too large", body.size);
+    }
+    struct codec_writer writer = {.data = record, .capacity = sizeof record};
+    codec_put_u32(&writer, checksum);
+    codec_put_raw(&writer, body.data, body.size);
+    int code = kv_put(txn, MODEL_CHUNKS, key, kv_bytes_of(record, writer.size), error);
     if (code == STORE_OK) {
         code = kv_take_out(txn, MODEL_NEWS, key, error);
     }
     return code == STORE_NOT_FOUND ? STORE_OK : code;
 }
 
-int model_chunks_put(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes record,
+int model_chunks_put(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body,
                      struct store_error *error)
 {
     unsigned char news[KV_VALUE_BYTES];
     struct kv_bytes before = {0};
     size_t size = 0;
+    uint32_t checksum = codec_checksum_of_two(key.data, key.size, body.data, body.size);
+    size_t most =
+        body.size < sizeof news - CHECKSUM_BYTES ? body.size : sizeof news - CHECKSUM_BYTES;
     int code = kv_get(txn, MODEL_CHUNKS, key, &before, error);
     if (code != STORE_OK && code != STORE_NOT_FOUND) {
         return code;
     }
-    /* News that take as much as the chunk only wait for what is not spared. */
+    /* News that take as much as the chunk only put off what is not spared. */
     if (code == STORE_NOT_FOUND || before.size < CHECKSUM_BYTES ||
-        !difference_make(body_of(before), body_of(record), news + CHECKSUM_BYTES,
-                         body_of(record).size, &size)) {
-        return put_whole(txn, key, record, error);
+        !difference_make(body_of(before), body, news + CHECKSUM_BYTES, most, &size)) {
+        return put_whole(txn, key, checksum, body, error);
     }
-    memcpy(news, record.data, CHECKSUM_BYTES);
+    struct codec_writer writer = {.data = news, .capacity = CHECKSUM_BYTES};
+    codec_put_u32(&writer, checksum);
     return kv_put(txn, MODEL_NEWS, key, kv_bytes_of(news, CHECKSUM_BYTES + size), error);
 }
 
@@ -103,7 +113,6 @@ static int add_key(void *user, struct kv_cursor *at, struct kv_bytes key, struct
 
 static int settle_one(struct kv_txn *txn, struct kv_bytes key, struct store_error *error)
 {
-    unsigned char record[KV_VALUE_BYTES];
     unsigned char room[KV_VALUE_BYTES];
     struct kv_bytes before = {0};
     struct kv_bytes news = {0};
@@ -115,13 +124,11 @@ static int settle_one(struct kv_txn *txn, struct kv_bytes key, struct store_erro
     if (code != STORE_OK && code != STORE_NOT_FOUND) {
         return code;
     }
-    if (code == STORE_NOT_FOUND || !model_chunks_open(key, before, news, room, &body) ||
-        CHECKSUM_BYTES + body.size > sizeof record) {
+    if (code == STORE_NOT_FOUND || !model_chunks_open(key, before, news, room, &body)) {
         return fail_damaged(error);
     }
-    memcpy(record, news.data, CHECKSUM_BYTES);
-    memcpy(record + CHECKSUM_BYTES, body.data, body.size);
-    return put_whole(txn, key, kv_bytes_of(record, CHECKSUM_BYTES + body.size), error);
+    struct codec_reader reader = {.data = news.data, .size = news.size};
+    return put_whole(txn, key, codec_get_u32(&reader), body, error);
 }
 
 /* Settles the next few, and begins anew behind the last. */

@@ -22,8 +22,8 @@ enum {
     MODEL_CHUNKS_LEAST_NEWS = 64 /* or so many pages, that are never settled */
 };
 
-/* Puts a chunk's record, which has its checksum in front. */
-int model_chunks_put(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes record,
+/* Puts what a chunk is from now on. */
+int model_chunks_put(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body,
                      struct store_error *error) __attribute__((warn_unused_result));
 
 /* Where settling goes on. Zero-initialised: with the first word. */

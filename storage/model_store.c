@@ -101,11 +101,13 @@ int model_store_begin(struct model_store *store, struct model_store_writing **re
     return STORE_OK;
 }
 
-static int put_chunk(void *user, struct kv_txn *txn, struct kv_bytes key, struct kv_bytes record,
+/* A chunk is collected without a checksum: there are many of them, and the thread that commits has
+ * the time. */
+static int put_chunk(void *user, struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body,
                      struct store_error *error)
 {
     (void)user;
-    return model_chunks_put(txn, key, record, error);
+    return model_chunks_put(txn, key, body, error);
 }
 
 /* What comes behind the batch's own changes. */
@@ -262,12 +264,11 @@ int model_store_forget_word(struct model_store_writing *writing,
 int model_store_put_chunk(struct model_store_writing *writing,
                           const struct model_store_chunk *chunk, struct store_error *error)
 {
-    struct codec_writer *record = begin_record(writing);
-    codec_put_raw(record, chunk->bytes.data, chunk->bytes.size);
     unsigned char key[8];
     codec_key_u32(key, chunk->word);
     codec_key_u32(key + 4, chunk->number);
-    return put_record(writing, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
+    return kv_batch_put(writing->batch, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), chunk->bytes,
+                        error);
 }
 
 int model_store_put_tag(struct model_store_writing *writing, const struct model_store_tag *tag,

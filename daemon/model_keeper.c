@@ -159,6 +159,9 @@ static int store_forgotten(void *user, const struct dictionary_word *word)
 static int store_word(void *user, const struct dictionary_word *word)
 {
     struct storing *storing = user;
+    if (!word->is_new) {
+        return model_store_put_count(storing->writing, word->number, word->count, storing->error);
+    }
     return model_store_put_word(storing->writing,
                                 &(const struct model_store_word){.term = word->term,
                                                                  .term_bytes = word->term_bytes,

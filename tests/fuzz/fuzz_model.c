@@ -84,6 +84,9 @@ static int put_one(struct model_store_writing *writing, uint32_t number, struct 
     const struct model_store_figures figures = {
         .kind = 2, .number = number, .count = VALUES, .values = values};
     int code = model_store_put_word(writing, &word, error);
+    bytes[0] ^= 1U; /* what it is differs from what it was: there are news */
+    code |= model_store_put_chunk(writing, &chunk, error);
+    bytes[0] ^= 1U;
     code |= model_store_put_chunk(writing, &chunk, error);
     code |= model_store_put_tag(writing, &tag, error);
     code |= model_store_put_figures(writing, &figures, error);

@@ -66,27 +66,45 @@ static int put_whole(struct kv_txn *txn, struct kv_bytes key, uint32_t checksum,
     return code == STORE_NOT_FOUND ? STORE_OK : code;
 }
 
-int model_chunks_put(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body,
-                     struct store_error *error)
+int model_chunks_are_many(struct kv_txn *txn, uint64_t count, bool *ret_many,
+                          struct store_error *error)
+{
+    uint64_t all = 0;
+    int code = kv_count(txn, MODEL_CHUNKS, &all, error);
+    if (code == STORE_OK) {
+        *ret_many = count > all / MODEL_CHUNKS_MANY_PART;
+    }
+    return code;
+}
+
+/* Puts the news of a chunk that has been stored; *ret_put says whether there is one, and its news
+ * take less than the whole: others only put off what is not spared. */
+static int put_news(struct kv_txn *txn, struct kv_bytes key, uint32_t checksum,
+                    struct kv_bytes body, bool *ret_put, struct store_error *error)
 {
     unsigned char news[KV_VALUE_BYTES];
     struct kv_bytes before = {0};
     size_t size = 0;
-    uint32_t checksum = codec_checksum_of_two(key.data, key.size, body.data, body.size);
-    size_t most =
-        body.size < sizeof news - CHECKSUM_BYTES ? body.size : sizeof news - CHECKSUM_BYTES;
+    size_t room = sizeof news - CHECKSUM_BYTES;
     int code = kv_get(txn, MODEL_CHUNKS, key, &before, error);
-    if (code != STORE_OK && code != STORE_NOT_FOUND) {
-        return code;
-    }
-    /* News that take as much as the chunk only put off what is not spared. */
-    if (code == STORE_NOT_FOUND || before.size < CHECKSUM_BYTES ||
-        !difference_make(body_of(before), body, news + CHECKSUM_BYTES, most, &size)) {
-        return put_whole(txn, key, checksum, body, error);
+    *ret_put = code == STORE_OK && before.size >= CHECKSUM_BYTES &&
+               difference_make(body_of(before), body, news + CHECKSUM_BYTES,
+                               body.size < room ? body.size : room, &size);
+    if (!*ret_put) {
+        return code == STORE_NOT_FOUND ? STORE_OK : code;
     }
     struct codec_writer writer = {.data = news, .capacity = CHECKSUM_BYTES};
     codec_put_u32(&writer, checksum);
     return kv_put(txn, MODEL_NEWS, key, kv_bytes_of(news, CHECKSUM_BYTES + size), error);
+}
+
+int model_chunks_put(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body, bool is_whole,
+                     struct store_error *error)
+{
+    uint32_t checksum = codec_checksum_of_two(key.data, key.size, body.data, body.size);
+    bool is_put = false;
+    int code = is_whole ? STORE_OK : put_news(txn, key, checksum, body, &is_put, error);
+    return code != STORE_OK || is_put ? code : put_whole(txn, key, checksum, body, error);
 }
 
 /* --- settling -----------------------------------------------------------------------------------

@@ -4,7 +4,8 @@
  * a few postings of many chunks, which lie far apart: so a writing goes to the pages of a small
  * table, and not to a page for each chunk. When the news have grown beyond their share, a writing
  * also settles some of them: the chunks of a stretch of neighbouring words are written as they are
- * by then, and their news go.
+ * by then, and their news go. A writing of so many chunks that next to all pages change anyway
+ * makes no news of them.
  *
  * The checksum of an entry of `news` is that of the chunk as it is with it: it proves both.
  */
@@ -17,13 +18,18 @@
 #include "storage/kv.h"
 
 enum {
-    MODEL_CHUNKS_KEY = 8,        /* bytes: word and number */
-    MODEL_CHUNKS_NEWS_PART = 24, /* the news' share of the chunks' pages */
-    MODEL_CHUNKS_LEAST_NEWS = 64 /* or so many pages, that are never settled */
+    MODEL_CHUNKS_KEY = 8,         /* bytes: word and number */
+    MODEL_CHUNKS_NEWS_PART = 24,  /* the news' share of the chunks' pages */
+    MODEL_CHUNKS_LEAST_NEWS = 64, /* or so many pages, that are never settled */
+    MODEL_CHUNKS_MANY_PART = 8    /* of all chunks, and more, are many */
 };
 
-/* Puts what a chunk is from now on. */
-int model_chunks_put(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body,
+/* Whether a writing that puts so many chunks puts them whole. */
+int model_chunks_are_many(struct kv_txn *txn, uint64_t count, bool *ret_many,
+                          struct store_error *error) __attribute__((warn_unused_result));
+
+/* Puts what a chunk is from now on: as news, or whole. */
+int model_chunks_put(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body, bool is_whole,
                      struct store_error *error) __attribute__((warn_unused_result));
 
 /* Where settling goes on. Zero-initialised: with the first word. */

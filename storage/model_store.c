@@ -23,6 +23,9 @@ const struct model_cells MODEL_CELLS_TAGS = {
 struct model_store_writing {
     struct model_store *store;
     struct kv_batch *batch;
+    uint64_t chunks; /* put */
+    bool is_wide;    /* they are many; once it is looked at */
+    bool is_looked_at;
     struct model_cells_changes counts;
     struct model_cells_changes tags;
     struct codec_writer record;
@@ -124,8 +127,15 @@ int model_store_begin(struct model_store *store, struct model_store_writing **re
 static int put_chunk(void *user, struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body,
                      struct store_error *error)
 {
-    (void)user;
-    return model_chunks_put(txn, key, body, error);
+    struct model_store_writing *writing = user;
+    if (!writing->is_looked_at) {
+        int code = model_chunks_are_many(txn, writing->chunks, &writing->is_wide, error);
+        if (code != STORE_OK) {
+            return code;
+        }
+        writing->is_looked_at = true;
+    }
+    return model_chunks_put(txn, key, body, writing->is_wide, error);
 }
 
 /* What comes behind the batch's own changes. */
@@ -285,6 +295,7 @@ int model_store_put_chunk(struct model_store_writing *writing,
     unsigned char key[8];
     codec_key_u32(key, chunk->word);
     codec_key_u32(key + 4, chunk->number);
+    writing->chunks++;
     return kv_batch_put(writing->batch, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), chunk->bytes,
                         error);
 }

@@ -69,9 +69,10 @@ static int set_up(void **state)
         .directory = taking->directory, .map_bytes = 4 << 20, .tables = names, .table_count = 1};
     assert_int_equal(kv_open(&settings, &taking->kv, &taking->error), STORE_OK);
     begin(taking);
-    for (unsigned char i = 0; i < ENTRIES; i++) {
+    for (unsigned i = 0; i < ENTRIES; i++) {
+        const unsigned char number = (unsigned char)i;
         assert_int_equal(
-            kv_put(taking->txn, 0, key_of(&i), kv_bytes_of(lamp, sizeof lamp), &taking->error),
+            kv_put(taking->txn, 0, key_of(&number), kv_bytes_of(lamp, sizeof lamp), &taking->error),
             STORE_OK);
     }
     commit(taking);
@@ -127,8 +128,9 @@ static void the_pages_of_a_table_are_counted(void **state)
     uint64_t after = 0;
     begin(taking);
     assert_int_equal(kv_count_pages(taking->txn, 0, &before, &taking->error), STORE_OK);
-    for (unsigned char i = 0; i < ENTRIES / 2; i++) {
-        assert_int_equal(kv_take_out(taking->txn, 0, key_of(&i), &taking->error), STORE_OK);
+    for (unsigned i = 0; i < ENTRIES / 2; i++) {
+        const unsigned char number = (unsigned char)i;
+        assert_int_equal(kv_take_out(taking->txn, 0, key_of(&number), &taking->error), STORE_OK);
     }
     assert_int_equal(kv_count_pages(taking->txn, 0, &after, &taking->error), STORE_OK);
     assert_in_range(before, 25, 50);

@@ -44,6 +44,7 @@ CLIENT_SOURCES := $(filter-out client/main.c,$(wildcard client/*.c)) daemon/line
 UNIT_TESTS := $(patsubst tests/unit/%.c,%,$(wildcard tests/unit/test_*.c))
 INTEGRATION_TESTS := $(patsubst tests/integration/%.c,%,$(wildcard tests/integration/test_*.c))
 REFERENCE_TESTS := $(patsubst tests/reference/%.c,%,$(wildcard tests/reference/test_*.c))
+REFERENCE_HELPER_SOURCES := $(filter-out tests/reference/test_%.c,$(wildcard tests/reference/*.c))
 FAULT_TESTS := $(patsubst tests/faults/%.c,%,$(wildcard tests/faults/test_*.c))
 FAULT_HELPER_SOURCES := $(filter-out tests/faults/test_%.c tests/faults/fail_nth.c,$(wildcard tests/faults/*.c))
 # What is preloaded into the daemon.
@@ -58,6 +59,7 @@ CLIENT_OBJECTS := $(call object,$(CLIENT_SOURCES))
 LIBRARY := $(BUILD)/libundertag.a
 CLIENT_LIBRARY := $(BUILD)/libclient.a
 HELPERS := $(call object,$(HELPER_SOURCES))
+REFERENCE_HELPERS := $(call object,$(REFERENCE_HELPER_SOURCES))
 FAULT_HELPERS := $(call object,$(FAULT_HELPER_SOURCES))
 BENCH_HELPERS := $(call object,$(BENCH_HELPER_SOURCES))
 PROGRAMS := $(BUILD)/undertagd $(BUILD)/undertag
@@ -142,7 +144,7 @@ $(FAULT_SHIM): tests/faults/fail_nth.c tests/faults/fail_control.h $(BUILD)/flag
 	$(call say,link,$@)
 	$(Q)$(CC) $(BASE_CFLAGS) -O2 -g -fPIC -fno-builtin -shared $< -ldl -o $@
 
-$(REFERENCE_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(LIBRARY)
+$(REFERENCE_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/reference/%.o $(REFERENCE_HELPERS) $(HELPERS) $(LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -llinear -o $@
@@ -204,7 +206,7 @@ bench: packages-build packages-quality
 	@$(PYTHON) -B tests/bench/bench.py $(BUILD) --corpora $(BUILD)/corpora $(BENCH)
 
 quality: packages-build packages-quality
-	@$(MAKE) --no-print-directory all
+	@$(MAKE) --no-print-directory all $(BUILD)/tests/test_snapshot_files
 	-@$(MAKE) --no-print-directory --keep-going corpora
 	@$(PYTHON) -B tests/quality/quality.py $(BUILD)/undertagd --corpora $(BUILD)/corpora \
 	    --kept $(BUILD)/quality --json $(BUILD)/quality.json

@@ -150,6 +150,21 @@ static int print_rebuild(const struct client *client, const json_t *state)
                         list);
 }
 
+/* Nothing while none is written. */
+static int print_backup(const struct client *client, const json_t *state)
+{
+    char bytes[FORMAT_BYTES];
+    char of[FORMAT_BYTES];
+    const json_t *backup = json_object_get(state, "backup");
+    if (!json_is_object(backup)) {
+        return 0;
+    }
+    return facts_printf(&client->out, NAME_COLUMNS, "backup", "%s, %s of %s written",
+                        command_text(backup, "name"),
+                        format_size(command_number(backup, "bytes"), bytes),
+                        format_size(command_number(backup, "of"), of));
+}
+
 static int print_faults(const struct client *client, const json_t *faults)
 {
     size_t i;
@@ -171,7 +186,7 @@ static int print_state(const struct client *client, const json_t *state)
                      format_duration(command_number(state, "uptime_s"), up),
                      (long long)command_whole(state, "format")) ||
         print_counts(client, state) || print_rebuild(client, state) ||
-        print_faults(client, json_object_get(state, "faults")) ||
+        print_backup(client, state) || print_faults(client, json_object_get(state, "faults")) ||
         print_section(client, state, "rates", "Rates", UNIT_PER_SECOND) ||
         print_section(client, state, "memory", "Memory", UNIT_BYTES) ||
         print_section(client, state, "disk", "Disk", UNIT_BYTES) ||

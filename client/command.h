@@ -47,6 +47,7 @@ extern const struct command command_state;
 extern const struct command command_rebuild;
 extern const struct command command_snapshot_write;
 extern const struct command command_snapshot_list;
+extern const struct command command_backup;
 extern const struct command command_rule;
 extern const struct command command_check;
 extern const struct command command_sample;

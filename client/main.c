@@ -18,7 +18,7 @@ static const struct command *const COMMANDS[] = {
     &command_list,           &command_rule,          &command_check,    &command_sample,
     &command_worklist,       &command_completeness,  &command_standing, &command_report,
     &command_tags_list,      &command_tags_show,     &command_state,    &command_rebuild,
-    &command_snapshot_write, &command_snapshot_list,
+    &command_snapshot_write, &command_snapshot_list, &command_backup,
 };
 
 enum {

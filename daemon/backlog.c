@@ -44,7 +44,7 @@ struct backlog {
     struct mark marks[MARKS]; /* a ring, rising in both members: what is not learned yet */
     size_t first_mark;
     size_t mark_count;
-    uint64_t held; /* what another model has passed; UINT64_MAX: there is none */
+    uint64_t held[BACKLOG_HOLDERS]; /* what each has passed; UINT64_MAX: it holds nothing */
     bool nudged;
     bool trainer_failed;
     bool trainer_waits;
@@ -64,7 +64,9 @@ int backlog_new(const struct backlog_start *start, struct backlog **ret_backlog)
     backlog->visible_within_ms = start->visible_within_ms;
     backlog->rate = RATE_FIRST;
     backlog->catch_up_room = ROOM_LEAST;
-    backlog->held = UINT64_MAX;
+    for (int i = 0; i < BACKLOG_HOLDERS; i++) {
+        backlog->held[i] = UINT64_MAX;
+    }
     int code = -pthread_mutex_init(&backlog->mutex, NULL);
     if (code < 0) {
         goto fail_mutex;
@@ -238,20 +240,35 @@ void backlog_kept(struct backlog *backlog, uint64_t seq)
     sync_unlock(&backlog->mutex);
 }
 
-void backlog_hold(struct backlog *backlog, uint64_t seq)
+void backlog_hold(struct backlog *backlog, enum backlog_holder holder, uint64_t seq)
 {
     sync_lock(&backlog->mutex);
-    backlog->held = seq;
+    backlog->held[holder] = seq;
     sync_unlock(&backlog->mutex);
 }
 
-uint64_t backlog_hold_committed(struct backlog *backlog)
+uint64_t backlog_hold_committed(struct backlog *backlog, enum backlog_holder holder)
 {
     sync_lock(&backlog->mutex);
     uint64_t committed = backlog->numbers.committed;
-    backlog->held = committed;
+    backlog->held[holder] = committed;
     sync_unlock(&backlog->mutex);
     return committed;
+}
+
+void backlog_hold_kept(struct backlog *backlog, enum backlog_holder holder)
+{
+    sync_lock(&backlog->mutex);
+    backlog->held[holder] = backlog->numbers.kept;
+    sync_unlock(&backlog->mutex);
+}
+
+bool backlog_is_held(struct backlog *backlog, enum backlog_holder holder)
+{
+    sync_lock(&backlog->mutex);
+    bool is_held = backlog->held[holder] != UINT64_MAX;
+    sync_unlock(&backlog->mutex);
+    return is_held;
 }
 
 void backlog_nudge(struct backlog *backlog)
@@ -309,7 +326,9 @@ struct backlog_numbers backlog_read(struct backlog *backlog)
 {
     sync_lock(&backlog->mutex);
     struct backlog_numbers numbers = backlog->numbers;
-    numbers.kept = numbers.kept < backlog->held ? numbers.kept : backlog->held;
+    for (int i = 0; i < BACKLOG_HOLDERS; i++) {
+        numbers.kept = numbers.kept < backlog->held[i] ? numbers.kept : backlog->held[i];
+    }
     sync_unlock(&backlog->mutex);
     return numbers;
 }

@@ -63,12 +63,22 @@ void backlog_learned(struct backlog *backlog, uint64_t seq, uint64_t cost, uint6
 void backlog_kept(struct backlog *backlog, uint64_t seq);
 
 /*
- * A model that is learned beside the one in use needs what was superseded behind some seq, too:
- * `kept` stays at `seq` at most, until it is let go (UINT64_MAX). backlog_hold_committed holds what
- * is superseded from now on, and returns the last committed seq.
+ * Others than the stored model need what was superseded behind some seq, too: a model that is
+ * learned beside the one in use, and a backup, whose model is older than its store. `kept` stays at
+ * `seq` at most, until its holder lets go (UINT64_MAX). backlog_hold_committed holds what is
+ * superseded from now on, and returns the last committed seq; backlog_hold_kept what may not be
+ * erased yet.
  */
-void backlog_hold(struct backlog *backlog, uint64_t seq);
-uint64_t backlog_hold_committed(struct backlog *backlog);
+enum backlog_holder {
+    BACKLOG_REBUILD,
+    BACKLOG_BACKUP,
+    BACKLOG_HOLDERS
+};
+
+void backlog_hold(struct backlog *backlog, enum backlog_holder holder, uint64_t seq);
+uint64_t backlog_hold_committed(struct backlog *backlog, enum backlog_holder holder);
+void backlog_hold_kept(struct backlog *backlog, enum backlog_holder holder);
+bool backlog_is_held(struct backlog *backlog, enum backlog_holder holder);
 
 /* Has backlog_wait_for_work return once, whether there is something to learn or not. */
 void backlog_nudge(struct backlog *backlog);

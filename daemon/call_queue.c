@@ -8,15 +8,21 @@
 #include "daemon/grow.h"
 
 enum {
-    BATCH_CALLS_AHEAD = 2048,
+    CALLS_MOST =
+        2048, /* lines behind these wait in the connection's buffer, as do calls of a batch */
     LINE_BYTES_MOST = 1024 * 1024 /* lines behind this wait in the connection's buffer */
 };
 
 /*
  * Calls of one connection under way at a time, by kind. Changes are committed together, so many are
  * good; reads queue for a few threads, where a crowd of one connection would keep others waiting.
+ * So connections that read share out what is under way together.
  */
 static const size_t RUNNING_MOST[] = {[METHOD_READ] = 32, [METHOD_CHANGE] = 1024};
+
+enum {
+    READS_TOGETHER = 64
+};
 
 /* --- adding -------------------------------------------------------------------------------------
  */
@@ -186,6 +192,28 @@ static bool has_answer_room(const struct call_queue *queue, const struct call *c
     return queue->answer_bytes < limit || (call == queue->first && limit > 0);
 }
 
+static bool has_place(const struct call_queue *queue, enum method_kind kind)
+{
+    size_t most = RUNNING_MOST[kind];
+    if (queue->running == 0) {
+        return true;
+    }
+    if (kind == METHOD_READ && queue->crowd && queue->crowd->reading > 0) {
+        size_t share = READS_TOGETHER / queue->crowd->reading;
+        most = share < most ? share : most;
+    }
+    return queue->running_kind == kind && queue->running < most;
+}
+
+static void begin_running(struct call_queue *queue, enum method_kind kind)
+{
+    if (queue->crowd && queue->running == 0 && kind == METHOD_READ) {
+        queue->crowd->reading++;
+    }
+    queue->running_kind = kind;
+    queue->running++;
+}
+
 void call_queue_start(struct call_queue *queue, size_t answer_bytes_limit)
 {
     if (queue->answer_bytes < answer_bytes_limit) {
@@ -201,8 +229,7 @@ void call_queue_start(struct call_queue *queue, size_t answer_bytes_limit)
             continue;
         }
         enum method_kind kind = call->request.method->kind;
-        if (queue->running >= RUNNING_MOST[kind] ||
-            (queue->running > 0 && queue->running_kind != kind)) {
+        if (!has_place(queue, kind)) {
             return;
         }
         queue->to_start = call->next;
@@ -211,8 +238,7 @@ void call_queue_start(struct call_queue *queue, size_t answer_bytes_limit)
             continue;
         }
         call->state = CALL_RUNNING;
-        queue->running_kind = kind;
-        queue->running++;
+        begin_running(queue, kind);
         call->request.method->start(call, call->request.params);
     }
 }
@@ -250,6 +276,9 @@ static void end_running(struct call *call, char *answer, bool wanted)
     struct call_queue *queue = call->queue;
     assert(call->state == CALL_RUNNING);
     queue->running--;
+    if (queue->crowd && queue->running == 0 && queue->running_kind == METHOD_READ) {
+        queue->crowd->reading--;
+    }
     end_with(call, answer, wanted);
     queue->ended(queue->user);
 }
@@ -347,12 +376,12 @@ int call_queue_collect(struct call_queue *queue, struct call_text *text)
 
 bool call_queue_has_room(const struct call_queue *queue)
 {
-    return queue->line_bytes < LINE_BYTES_MOST && !queue->batch;
+    return queue->line_bytes < LINE_BYTES_MOST && queue->count < CALLS_MOST && !queue->batch;
 }
 
 bool call_queue_has_batch_left(const struct call_queue *queue)
 {
-    return queue->batch && queue->count < BATCH_CALLS_AHEAD;
+    return queue->batch && queue->count < CALLS_MOST;
 }
 
 bool call_queue_is_empty(const struct call_queue *queue)

@@ -32,12 +32,22 @@ struct call {
     size_t line_bytes; /* of the line that ends with this call; 0 for the others of a batch */
 };
 
-/* Set the first three members, leave the rest zero. Private but for what the comments say. */
+/* What the queues of one server share. Zero-initialised is empty. */
+struct call_crowd {
+    size_t reading; /* queues with reads under way */
+};
+
+enum {
+    CALL_QUEUE_CALL_BYTES = 1024 /* about what a call takes until it has an answer */
+};
+
+/* Set the first four members, leave the rest zero. Private but for what the comments say. */
 struct call_queue {
     const struct method_table *table;
     void *user;
     void (*ended)(void *user); /* a call has ended, perhaps while call_queue_start runs */
-    struct rights_peer peer;   /* borrowed for the queue's life */
+    struct call_crowd *crowd;  /* borrowed for the queue's life; NULL: there is nobody else */
+    struct rights_peer peer;   /* likewise */
     bool stopping;             /* refuse what has not started with -32006 */
     bool broken; /* out of memory: the order of answers cannot be kept; close the connection */
 

@@ -21,6 +21,8 @@ const char COMMAND_LINE_HELP[] =
     "  --set NAME=VALUE   one option, over what the file says; may be repeated\n"
     "  --check-config     say whether the options are right, and end\n"
     "  --verify           look through the home for damage, change nothing, and end\n"
+    "  --restore FOLDER   make a home of a backup, and end; the home must be empty or\n"
+    "                     not there\n"
     "  --version          print the version, and end\n"
     "  --help             print this, and end\n"
     "\n"
@@ -34,6 +36,7 @@ enum {
     OPTION_SET,
     OPTION_CHECK,
     OPTION_VERIFY,
+    OPTION_RESTORE,
     OPTION_VERSION,
     OPTION_HELP
 };
@@ -45,6 +48,7 @@ static const struct option LONG_OPTIONS[] = {
     {"set", required_argument, NULL, OPTION_SET},
     {"check-config", no_argument, NULL, OPTION_CHECK},
     {"verify", no_argument, NULL, OPTION_VERIFY},
+    {"restore", required_argument, NULL, OPTION_RESTORE},
     {"version", no_argument, NULL, OPTION_VERSION},
     {"help", no_argument, NULL, OPTION_HELP},
     {NULL, 0, NULL, 0},
@@ -90,6 +94,9 @@ static int take_option(struct command_line *line, int option, char **argv, char 
     case OPTION_VERIFY:
         line->verify = true;
         return 0;
+    case OPTION_RESTORE:
+        line->restore = optarg;
+        return *optarg ? 0 : fail(error, "--restore", "takes a path");
     case OPTION_VERSION:
         line->version = true;
         return 0;

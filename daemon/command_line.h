@@ -24,6 +24,7 @@ struct command_line {
     size_t setting_count;
     bool check_config;
     bool verify;
+    const char *restore; /* the backup to make a home of; NULL: none */
     bool version;
     bool help;
 };

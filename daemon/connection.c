@@ -240,15 +240,17 @@ static void refuse(struct connection *connection, const struct fault *fault)
     call_queue_add_fault(&connection->calls, fault, 0);
 }
 
-/* A share is never less than what reading anything takes. */
+/* A share is never less than what reading anything takes. Calls are counted, but it is what a peer
+ * does not send to its end, or does not read, that it is blamed for: calls end by themselves. */
 static void check_room(struct connection *connection)
 {
     const struct connection_room *room = connection->settings.room;
-    hold(connection, lines_bytes(&connection->lines) + connection->filling.capacity +
-                         connection->writing.capacity + connection->calls.answer_bytes);
+    size_t kept = lines_bytes(&connection->lines) + connection->filling.capacity +
+                  connection->writing.capacity + connection->calls.answer_bytes;
+    hold(connection, kept + connection->calls.count * CALL_QUEUE_CALL_BYTES);
     size_t share = room->limit_bytes / room->connections;
-    if (room->held_bytes <= room->limit_bytes || connection->held_bytes <= share ||
-        connection->held_bytes <= IDLE_BUFFER_BYTES || connection->draining) {
+    if (room->held_bytes <= room->limit_bytes || kept <= share || kept <= IDLE_BUFFER_BYTES ||
+        connection->draining) {
         return;
     }
     struct fault fault = {0};
@@ -403,8 +405,10 @@ int connection_accept(const struct connection_settings *settings, uv_stream_t *l
         return code;
     }
     lines_init(&connection->lines, settings->line_limit_bytes);
-    connection->calls =
-        (struct call_queue){.table = settings->table, .user = connection, .ended = on_call_ended};
+    connection->calls = (struct call_queue){.table = settings->table,
+                                            .user = connection,
+                                            .ended = on_call_ended,
+                                            .crowd = &settings->room->crowd};
     if (read_peer(&connection->handle, &connection->calls.peer) < 0) {
         connection->settings.gone = NULL;
         connection_close(connection);

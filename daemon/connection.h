@@ -12,13 +12,14 @@
 #include <stddef.h>
 #include <uv.h>
 
-#include "daemon/call.h"
+#include "daemon/call_queue.h"
 
 struct connection;
 
-/* What all connections of a server hold together, in lines that are not whole yet and in answers
- * that are not read yet; the server's, each connection adds its own. */
+/* What all connections of a server hold together, in lines that are not whole yet, in calls and in
+ * answers that are not read yet; the server's, each connection adds its own. */
 struct connection_room {
+    struct call_crowd crowd;
     size_t limit_bytes;
     size_t held_bytes;
     size_t connections;

@@ -104,6 +104,10 @@ static void run(struct read_job *base)
         (void)fault_set(&base->fault, FAULT_STORE, NULL,
                         "A rebuild is under way already (see daemon.state): try again once it has "
                         "ended.");
+    } else if (code == -EAGAIN) {
+        (void)fault_set(&base->fault, FAULT_STORE, NULL,
+                        "A backup is being written (see daemon.state): try again once it has "
+                        "ended.");
     } else if (code < 0) {
         (void)read_job_fail(base, &error);
     } else {

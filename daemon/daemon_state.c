@@ -186,6 +186,20 @@ static json_t *snapshot_json(struct snapshots *snapshots)
     return object;
 }
 
+/* The backup that is being written; null where there is none. */
+static json_t *backup_json(struct engine *engine)
+{
+    struct backup_state backup;
+    char since[TIMES_BYTES];
+    backup_read(engine_backup(engine), &backup);
+    if (!backup.is_running) {
+        return json_null();
+    }
+    times_format(backup.since_ms, since);
+    return json_pack("{s:s, s:I, s:I, s:s}", "name", backup.name, "bytes", (json_int_t)backup.bytes,
+                     "of", (json_int_t)backup.of, "since", since);
+}
+
 static void add_progress(json_t **state, const struct backlog_numbers *progress)
 {
     answer_add(state, "seq", answer_count(progress->committed));
@@ -220,6 +234,7 @@ static json_t *state_json(struct state_job *job, struct store_totals totals)
     answer_add(&state, "snapshot", snapshot_json(job->job.methods->snapshots));
     answer_add(&state, "faults", faults_json(engine_troubles(engine)));
     add_rebuild(&state, engine, progress.committed);
+    answer_add(&state, "backup", backup_json(engine));
     if (state && json_object_update(state, job->of_loop) < 0) {
         json_decref(state);
         return NULL;

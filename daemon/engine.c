@@ -5,10 +5,9 @@
  *
  * Failure paths: every step that fails closes what the steps before it have opened, in reverse.
  */
-#include "daemon/engine.h"
+#include "daemon/engine_private.h"
 
 #include <errno.h>
-#include <stdatomic.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -16,31 +15,8 @@
 #include <sysexits.h>
 #include <unistd.h>
 
-#include "daemon/clock.h"
 #include "daemon/home.h"
 #include "daemon/log.h"
-#include "daemon/model_base.h"
-#include "daemon/shared_model.h"
-#include "daemon/trainer.h"
-
-struct engine {
-    struct options options;
-    struct store_settings places;
-    struct learning_start learning;    /* as it was found at the start */
-    struct features_settings features; /* of the model, at the start */
-    int lock_fd;
-    struct store *store;
-    struct model_store *model_store;
-    struct shared_model shared;
-    struct backlog *backlog;
-    struct troubles troubles;
-    struct workspaces workspaces;
-    struct rebuild *rebuild;
-    struct moments *moments;
-    struct trainer *trainer;
-    struct writer *writer;
-    atomic_uint_fast64_t questions;
-};
 
 /* --- errors into exit codes ---------------------------------------------------------------------
  */
@@ -233,6 +209,21 @@ static int make_rebuild(struct engine *engine)
     return rebuild_new(&settings, &engine->rebuild);
 }
 
+static int make_backup(struct engine *engine, const struct engine_settings *settings)
+{
+    const struct backup_settings backup = {.home = settings->home,
+                                           .options = &engine->options,
+                                           .store = engine->store,
+                                           .shared = &engine->shared,
+                                           .backlog = engine->backlog,
+                                           .rebuild = engine->rebuild,
+                                           .user = settings->user,
+                                           .writer_user = engine,
+                                           .let_go = on_kept,
+                                           .done = settings->changes_done};
+    return backup_new(&backup, &engine->backup);
+}
+
 static int start_threads(struct engine *engine, const struct engine_settings *settings)
 {
     const struct writer_settings writer = {.store = engine->store,
@@ -258,7 +249,10 @@ static int start_threads(struct engine *engine, const struct engine_settings *se
                                              .workspaces = &engine->workspaces,
                                              .user = engine,
                                              .kept = on_kept};
-    int code = writer_new(&writer, &engine->writer);
+    int code = make_backup(engine, settings);
+    if (code == 0) {
+        code = writer_new(&writer, &engine->writer);
+    }
     if (code < 0) {
         return code;
     }
@@ -330,6 +324,7 @@ int engine_open(const struct engine_settings *settings, struct engine **ret_engi
     *ret_engine = engine;
     return 0;
 fail_threads:
+    backup_free(engine->backup);
     moments_free(engine->moments);
 fail_moments:
     rebuild_free(engine->rebuild);
@@ -358,6 +353,8 @@ int engine_close(struct engine *engine)
     moments_stop(engine->moments);
     backlog_stop(engine->backlog);
     rebuild_stop(engine->rebuild);
+    backup_stop(engine->backup);
+    backup_free(engine->backup);   /* it wakes the writer and bars rebuilds */
     trainer_free(engine->trainer); /* it wakes the writer, so the writer goes after it, */
     rebuild_free(engine->rebuild); /* as this does */
     writer_free(engine->writer);
@@ -372,130 +369,4 @@ int engine_close(struct engine *engine)
     (void)close(engine->lock_fd); /* ends the lock; nothing is written there */
     free(engine);
     return is_broken ? EX_IOERR : 0;
-}
-
-/* --- what the methods stand on ------------------------------------------------------------------
- */
-
-void engine_push(struct engine *engine, struct change *change)
-{
-    writer_push(engine->writer, change);
-}
-
-struct change *engine_take_done(struct engine *engine)
-{
-    return writer_take_done(engine->writer);
-}
-
-int engine_take_moment(struct engine *engine, struct moment *ret_moment, struct store_error *error)
-{
-    moments_want(engine->moments);
-    backlog_nudge(engine->backlog);
-    return moments_take(engine->moments, ret_moment, error);
-}
-
-void engine_give_back(struct engine *engine, struct moment *moment)
-{
-    moments_give_back(engine->moments, moment);
-}
-
-void engine_stop_moments(struct engine *engine)
-{
-    moments_stop(engine->moments);
-}
-
-int engine_rebuild(struct engine *engine, const struct options *wanted, uint64_t *ret_seq,
-                   struct store_error *error)
-{
-    return rebuild_begin(engine->rebuild, wanted, ret_seq, error);
-}
-
-void engine_read_rebuild(struct engine *engine, struct rebuild_state *ret_state)
-{
-    rebuild_read(engine->rebuild, ret_state);
-}
-
-void engine_lay_over(struct engine *engine, struct options *options)
-{
-    rebuild_lay_over(engine->rebuild, options);
-}
-
-struct store *engine_store(struct engine *engine)
-{
-    return engine->store;
-}
-
-struct workspaces *engine_workspaces(struct engine *engine)
-{
-    return &engine->workspaces;
-}
-
-struct heartbeat *engine_heartbeat(struct engine *engine)
-{
-    return backlog_heartbeat(engine->backlog);
-}
-
-struct troubles *engine_troubles(struct engine *engine)
-{
-    return &engine->troubles;
-}
-
-int engine_ask(struct engine *engine, const struct model_question *question,
-               struct workspace *workspace, struct model_answer *ret_answer, uint64_t *ret_learned)
-{
-    backlog_wait_for_promise(engine->backlog, clock_steady_ms());
-    shared_model_read(&engine->shared);
-    struct model_base base;
-    model_base_enter(&base, engine->shared.store);
-    model_scratch_read(workspace->scratch, &base.base);
-    int code = -ESTALE;
-    if (workspace->version == engine->shared.version) {
-        code = engine->shared.broken
-                   ? engine->shared.broken
-                   : model_ask(engine->shared.model, question, workspace->scratch, ret_answer);
-    }
-    *ret_learned = engine->shared.learned;
-    model_scratch_read(workspace->scratch, NULL);
-    model_base_leave(&base);
-    shared_model_unlock(&engine->shared);
-    atomic_fetch_add_explicit(&engine->questions, 1, memory_order_relaxed);
-    return code;
-}
-
-int engine_read_model(struct engine *engine,
-                      void (*read)(void *user, const struct model *model, const struct base *base,
-                                   uint64_t learned),
-                      void *user)
-{
-    backlog_wait_for_promise(engine->backlog, clock_steady_ms());
-    shared_model_read(&engine->shared);
-    int code = engine->shared.broken;
-    struct model_base base;
-    model_base_enter(&base, engine->shared.store);
-    if (code == 0) {
-        read(user, engine->shared.model, &base.base, engine->shared.learned);
-    }
-    model_base_leave(&base);
-    shared_model_unlock(&engine->shared);
-    return code;
-}
-
-struct engine_counts engine_count(struct engine *engine)
-{
-    return (struct engine_counts){
-        .progress = backlog_read(engine->backlog),
-        .questions = atomic_load_explicit(&engine->questions, memory_order_relaxed)};
-}
-
-void engine_measure(struct engine *engine, struct engine_size *ret_size)
-{
-    shared_model_read(&engine->shared);
-    model_measure(engine->shared.model, &ret_size->model);
-    ret_size->rehearsal = model_rehearsal(engine->shared.model);
-    ret_size->rehearsals_due = model_rehearsals_due(engine->shared.model);
-    ret_size->model_bytes = model_store_file_bytes(engine->shared.store);
-    shared_model_unlock(&engine->shared);
-    ret_size->store_bytes = store_file_bytes(engine->store);
-    ret_size->asking_bytes = workspaces_bytes(&engine->workspaces);
-    ret_size->budget_bytes = engine->options.memory_budget_bytes;
 }

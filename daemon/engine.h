@@ -9,6 +9,8 @@
 
 #include "daemon/backlog.h"
 #include "daemon/moment.h"
+
+#include "daemon/backup.h"
 #include "daemon/options.h"
 #include "daemon/rebuild.h"
 #include "daemon/troubles.h"
@@ -22,7 +24,8 @@ struct engine_settings {
     const char *home;              /* borrowed for the engine's life */
     const struct options *options; /* as configured; copied */
     void *user;
-    void (*changes_done)(void *user); /* engine_take_done has something; any thread */
+    void (*changes_done)(void *user); /* engine_take_done or backup_take_done has something; any
+                                         thread */
 };
 
 enum {
@@ -64,6 +67,10 @@ void engine_give_back(struct engine *engine, struct moment *moment);
 
 /* Who waits for a moment is told that the daemon stops. Any thread. */
 void engine_stop_moments(struct engine *engine);
+
+/* --- backups --- */
+
+struct backup *engine_backup(struct engine *engine);
 
 /* --- reading: any thread --- */
 

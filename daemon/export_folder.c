@@ -240,6 +240,14 @@ const char *export_folder_path(const struct export_folder *folder)
     return folder->path;
 }
 
+bool export_folder_is(const struct export_folder *folder, const char *path)
+{
+    struct stat own;
+    struct stat other;
+    return fstat(folder->fd, &own) == 0 && stat(path, &other) == 0 && own.st_dev == other.st_dev &&
+           own.st_ino == other.st_ino;
+}
+
 /* --- writing one --------------------------------------------------------------------------------
  */
 
@@ -309,6 +317,12 @@ int export_folder_begin(struct export_folder *folder, const char *name,
     }
     *ret_part = part;
     return 0;
+}
+
+int export_part_path(const struct export_part *part, char *path, size_t size)
+{
+    int length = snprintf(path, size, "%s/.%s%s", part->folder->path, part->name, PART_END);
+    return length < 0 || (size_t)length >= size ? -ENAMETOOLONG : 0;
 }
 
 int export_part_fd(const struct export_part *part)

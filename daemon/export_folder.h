@@ -53,6 +53,9 @@ const char *export_folder_path(const struct export_folder *folder);
 /* The folder itself, for openat and its like, to read what is there; the folder's. */
 int export_folder_fd(const struct export_folder *folder);
 
+/* Whether the path, links followed, is this folder. */
+bool export_folder_is(const struct export_folder *folder, const char *path);
+
 /* 1 to 64 letters, digits, `-`, `_` and `.` of ASCII, of which a letter, a digit or `_` comes first
  * (a dash would be taken for an option); not EXPORT_LATEST. */
 bool export_name_is_valid(const char *name);
@@ -65,6 +68,10 @@ bool export_name_is_valid(const char *name);
  */
 int export_folder_begin(struct export_folder *folder, const char *name,
                         struct export_part **ret_part, char *error)
+    __attribute__((warn_unused_result));
+
+/* Where the part is until it has its name, as `.NAME.part`: -ENAMETOOLONG where it does not fit. */
+int export_part_path(const struct export_part *part, char *path, size_t size)
     __attribute__((warn_unused_result));
 
 /* The part's folder, for openat and its like, without O_CREAT; the part's. */

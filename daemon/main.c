@@ -26,6 +26,7 @@
 #include "daemon/log.h"
 #include "daemon/manager.h"
 #include "daemon/methods.h"
+#include "daemon/restore.h"
 #include "daemon/server.h"
 #include "daemon/verify_home.h"
 #include "daemon/watchdog.h"
@@ -98,7 +99,8 @@ static void stop(struct program *program)
     log_line(LOG_NOTE, "stopping: answering what is under way");
     manager_stopping();
     methods_watch(program->methods, NULL);
-    snapshots_stop(program->snapshots); /* nobody waits for one any more */
+    snapshots_stop(program->snapshots);          /* nobody waits for one any more */
+    backup_stop(engine_backup(program->engine)); /* its caller gets an answer, too */
     server_drain(server, on_drained, program);
 }
 
@@ -274,7 +276,8 @@ static int open_exports(struct program *program)
 
 static int start(struct program *program)
 {
-    char error[ENGINE_ERROR_BYTES];
+    char error[RESTORE_ERROR_BYTES];
+    _Static_assert((int)RESTORE_ERROR_BYTES >= (int)ENGINE_ERROR_BYTES, "it has room for both");
     int code = methods_new(&program->loop, &program->options, &program->methods);
     if (code == 0) {
         code = watch_signals(program);
@@ -286,7 +289,10 @@ static int start(struct program *program)
                                              .options = &program->options,
                                              .user = program->methods,
                                              .changes_done = methods_wake};
-    int exit_code = engine_open(&settings, &program->engine, error);
+    int exit_code = restore_check(program->line.home, error);
+    if (exit_code == 0) {
+        exit_code = engine_open(&settings, &program->engine, error);
+    }
     if (exit_code != 0) {
         return fail(exit_code, error);
     }
@@ -361,6 +367,14 @@ static int serve(struct program *program)
     return 0;
 }
 
+static int restore(const struct program *program)
+{
+    char error[RESTORE_ERROR_BYTES];
+    int exit_code =
+        restore_home(program->line.home, program->line.restore, &program->options, stdout, error);
+    return exit_code == 0 ? 0 : fail(exit_code, error);
+}
+
 int main(int argc, char **argv)
 {
     struct program program = {0};
@@ -387,6 +401,8 @@ int main(int argc, char **argv)
             exit_code = puts("the options are right") < 0 ? EX_IOERR : 0;
         } else if (program.line.verify) {
             exit_code = verify_home(program.line.home, &program.options, stdout);
+        } else if (program.line.restore) {
+            exit_code = restore(&program);
         } else {
             exit_code = serve(&program);
         }

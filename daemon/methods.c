@@ -30,6 +30,7 @@ static const struct method METHODS[] = {
     {"daemon.rebuild", METHOD_READ, RIGHT_OPERATE, daemon_rebuild},
     {"snapshot.write", METHOD_READ, RIGHT_OPERATE, snapshot_write_call},
     {"snapshot.list", METHOD_READ, RIGHT_OPERATE, snapshot_list_call},
+    {"backup.write", METHOD_READ, RIGHT_OPERATE, daemon_backup},
 };
 
 static int check_right(void *context, const struct method *method, const struct rights_peer *peer,
@@ -44,6 +45,7 @@ static void on_changes_done(uv_async_t *async)
     struct methods *methods = async->data;
     if (methods->engine) {
         item_changes_done(engine_take_done(methods->engine));
+        daemon_backup_done(methods);
     }
 }
 

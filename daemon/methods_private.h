@@ -17,6 +17,7 @@ struct methods {
     struct engine *engine;
     struct snapshots *snapshots;
     const struct server *server;
+    struct call *backup_call; /* of the backup that is being written; NULL: none is */
     struct gate gate;
     struct method_table table;
     uint64_t started_ms;
@@ -68,5 +69,9 @@ void daemon_rebuild(struct call *call, const json_t *params);
 /* snapshot_calls.c */
 void snapshot_write_call(struct call *call, const json_t *params);
 void snapshot_list_call(struct call *call, const json_t *params);
+/* daemon_backup.c */
+void daemon_backup(struct call *call, const json_t *params);
+/* Ends the call of the backup that has ended, if one has. */
+void daemon_backup_done(struct methods *methods);
 
 #endif

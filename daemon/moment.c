@@ -13,6 +13,7 @@ struct moments {
     bool is_handed; /* and not taken yet */
     bool is_held;   /* or about to be */
     bool stopping;
+    uint64_t bytes;
     struct moment moment;
     struct store_error error; /* why there is none, or STORE_OK */
 };
@@ -79,6 +80,7 @@ int moments_take(struct moments *moments, struct moment *ret_moment, struct stor
     int code = STORE_STOPPED;
     if (moments->is_handed) {
         *ret_moment = moments->moment;
+        ret_moment->moments = moments;
         code = moments->error.code;
         if (code != STORE_OK) {
             *error = moments->error;
@@ -99,6 +101,7 @@ void moments_give_back(struct moments *moments, struct moment *moment)
     moment_leave_store(moment);
     sync_lock(&moments->mutex);
     moments->is_held = false;
+    moments->bytes = 0;
     sync_unlock(&moments->mutex);
 }
 
@@ -136,4 +139,19 @@ bool moments_are_held(struct moments *moments)
     bool is_held = moments->is_held;
     sync_unlock(&moments->mutex);
     return is_held;
+}
+
+void moment_hold_memory(const struct moment *moment, uint64_t bytes)
+{
+    sync_lock(&moment->moments->mutex);
+    moment->moments->bytes = bytes;
+    sync_unlock(&moment->moments->mutex);
+}
+
+uint64_t moments_bytes(struct moments *moments)
+{
+    sync_lock(&moments->mutex);
+    uint64_t bytes = moments->bytes;
+    sync_unlock(&moments->mutex);
+    return bytes;
 }

@@ -16,14 +16,15 @@
 #include "storage/store.h"
 
 /* One thread at a time. */
+struct moments;
+
 struct moment {
-    uint64_t seq; /* the last change in both */
+    struct moments *moments; /* that it is of */
+    uint64_t seq;            /* the last change in both */
     struct store_view *store;
     struct model_view *model;
     struct options learning; /* the learning options are those that the model was learned with */
 };
-
-struct moments;
 
 /* Returns 0 or a negative errno. */
 int moments_new(struct moments **ret_moments) __attribute__((warn_unused_result));
@@ -44,6 +45,10 @@ int moments_take(struct moments *moments, struct moment *ret_moment, struct stor
 void moment_leave_model(struct moment *moment);
 void moment_leave_store(struct moment *moment);
 
+/* Says how much memory is held for the sake of a moment, until it is given back: the trainer makes
+ * room for it within memory_budget. */
+void moment_hold_memory(const struct moment *moment, uint64_t bytes);
+
 /* Closes what is open of it. */
 void moments_give_back(struct moments *moments, struct moment *moment);
 
@@ -59,7 +64,8 @@ bool moments_are_wanted(struct moments *moments);
 void moments_hand(struct moments *moments, const struct moment *moment,
                   const struct store_error *error);
 
-/* Whether anybody holds one. */
+/* Whether anybody holds one, and how much memory for it. */
 bool moments_are_held(struct moments *moments);
+uint64_t moments_bytes(struct moments *moments);
 
 #endif

@@ -22,7 +22,7 @@ static const struct option OPTIONS[] = {
      "asked for nothing for stalled_ms."},
     {"wire_limit", TYPE_BYTES, AT(wire_limit_bytes), 8 * MIB, 64 * GIB, "256MiB", NULL,
      OPTIONS_LIMIT, false,
-     "What all connections hold together in unfinished lines and unread answers; beyond it, those "
+     "What all connections hold together in lines, calls and unread answers; beyond it, those "
      "that hold more than their share are closed."},
     {"stalled_ms", TYPE_WHOLE, AT(stalled_ms), 100, 3600000, "60000", NULL, OPTIONS_LIMIT, false,
      "Milliseconds that a line may take from its beginning to its end, or answers may wait to be "

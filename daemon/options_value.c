@@ -179,7 +179,7 @@ static bool set_path(char *member, const char *value)
         }
     }
     memset(member, 0, OPTIONS_PATH_BYTES);
-    memcpy(member, value, bytes);
+    (void)snprintf(member, OPTIONS_PATH_BYTES, "%s", value); /* it fits */
     return true;
 }
 

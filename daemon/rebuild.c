@@ -119,7 +119,7 @@ bool rebuild_take_over(struct rebuild *rebuild, struct shared_model *shared,
                  error.text);
     }
     if (code == STORE_OK) {
-        backlog_hold(rebuild->settings.backlog, UINT64_MAX);
+        backlog_hold(rebuild->settings.backlog, BACKLOG_REBUILD, UINT64_MAX);
     }
     rebuild_set_phase(rebuild, code == STORE_OK ? REBUILD_TAKEN : REBUILD_FAILED);
     return code == STORE_OK;
@@ -140,21 +140,39 @@ static int start_thread(struct rebuild *rebuild)
     return code;
 }
 
-static bool claim(struct rebuild *rebuild)
+static int claim(struct rebuild *rebuild)
 {
     sync_lock(&rebuild->mutex);
-    bool is_free = rebuild->phase == REBUILD_IDLE && !rebuild->stopping;
-    if (is_free) {
+    int code = rebuild->phase != REBUILD_IDLE || rebuild->stopping ? -EBUSY
+               : rebuild->is_barred                                ? -EAGAIN
+                                                                   : 0;
+    if (code == 0) {
         rebuild->phase = REBUILD_STARTING;
     }
     sync_unlock(&rebuild->mutex);
+    return code;
+}
+
+bool rebuild_bar(struct rebuild *rebuild)
+{
+    sync_lock(&rebuild->mutex);
+    bool is_free = rebuild->phase == REBUILD_IDLE;
+    rebuild->is_barred = is_free;
+    sync_unlock(&rebuild->mutex);
     return is_free;
+}
+
+void rebuild_unbar(struct rebuild *rebuild)
+{
+    sync_lock(&rebuild->mutex);
+    rebuild->is_barred = false;
+    sync_unlock(&rebuild->mutex);
 }
 
 /* What was claimed is free again; what is superseded need not be held. */
 static void give_back(struct rebuild *rebuild)
 {
-    backlog_hold(rebuild->settings.backlog, UINT64_MAX);
+    backlog_hold(rebuild->settings.backlog, BACKLOG_REBUILD, UINT64_MAX);
     rebuild->settings.let_go(rebuild->settings.user);
     rebuild_set_phase(rebuild, REBUILD_IDLE);
 }
@@ -180,13 +198,14 @@ static int launch(struct rebuild *rebuild, const struct options *wanted,
 int rebuild_begin(struct rebuild *rebuild, const struct options *wanted, uint64_t *ret_seq,
                   struct store_error *error)
 {
-    if (!claim(rebuild)) {
-        return -EBUSY;
+    int code = claim(rebuild);
+    if (code < 0) {
+        return code;
     }
     struct learning_notes notes = rebuild->notes; /* whoever has claimed it alone changes them */
     uint64_t number = (uint64_t)clock_wall_ms();  /* no failed one has had it */
     number = number > notes.used.number ? number : notes.used.number + 1;
-    uint64_t seq = backlog_hold_committed(rebuild->settings.backlog);
+    uint64_t seq = backlog_hold_committed(rebuild->settings.backlog, BACKLOG_REBUILD);
     learning_choose(&rebuild->settings.configured, wanted, number, seq, &notes.next);
     if (learning_notes_write(rebuild->settings.store, &notes, error) != STORE_OK) {
         give_back(rebuild);
@@ -255,7 +274,7 @@ int rebuild_new(const struct rebuild_settings *settings, struct rebuild **ret_re
     rebuild->next = settings->start.next;
     rebuild->notes = settings->start.notes;
     if (rebuild->notes.next.number > 0) {
-        backlog_hold(settings->backlog, rebuild->notes.next.seq);
+        backlog_hold(settings->backlog, BACKLOG_REBUILD, rebuild->notes.next.seq);
     }
     *ret_rebuild = rebuild;
     return 0;

@@ -54,12 +54,17 @@ void rebuild_free(struct rebuild *rebuild);
 /*
  * Begins to build a model with the learning options of `wanted`. *ret_seq is the last change that
  * it finds; what is changed from now on is in it, too. Returns 0, -EBUSY while one is being built
- * already, or -EIO with *error filled.
+ * already, -EAGAIN while it is barred, or -EIO with *error filled.
  */
 int rebuild_begin(struct rebuild *rebuild, const struct options *wanted, uint64_t *ret_seq,
                   struct store_error *error) __attribute__((warn_unused_result));
 
 bool rebuild_is_running(struct rebuild *rebuild);
+
+/* No rebuild begins until rebuild_unbar, so that the model in use keeps its store. False, and
+ * nothing is barred, while one is under way. */
+bool rebuild_bar(struct rebuild *rebuild) __attribute__((warn_unused_result));
+void rebuild_unbar(struct rebuild *rebuild);
 
 struct rebuild_state {
     bool is_running;

@@ -34,7 +34,8 @@ static void hold(struct rebuild *rebuild)
 {
     const struct build *build = &rebuild->build;
     uint64_t moment = build->settings.moment;
-    backlog_hold(rebuild->settings.backlog, build->kept > moment ? build->kept : moment);
+    backlog_hold(rebuild->settings.backlog, BACKLOG_REBUILD,
+                 build->kept > moment ? build->kept : moment);
     rebuild->settings.let_go(rebuild->settings.user);
 }
 
@@ -175,7 +176,7 @@ static void end_failed(struct rebuild *rebuild)
     uint64_t learned = rebuild->build.learned;
     remove_next(rebuild);
     rebuild_note(rebuild, false);
-    backlog_hold(rebuild->settings.backlog, UINT64_MAX);
+    backlog_hold(rebuild->settings.backlog, BACKLOG_REBUILD, UINT64_MAX);
     rebuild->settings.let_go(rebuild->settings.user);
     troubles_begin(rebuild->settings.troubles, TROUBLE_REBUILDING,
                    "the rebuild has ended behind change %llu (%s); the model stays as it was",

@@ -25,6 +25,7 @@ struct rebuild {
     pthread_cond_t moved;     /* `phase` or `stopping` has changed */
     enum rebuild_phase phase; /* from here on: under the mutex */
     bool stopping;
+    bool is_barred;
     bool is_begun; /* the thread is to be joined */
     struct options used;
     struct options next;

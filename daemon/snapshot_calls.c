@@ -47,9 +47,7 @@ static int fail(struct read_job *job, bool is_busy, const struct store_error *er
                                    "The snapshot cannot be called so: %s.", reason);
     default:
         return fault_set(&job->fault, FAULT_STORE, NULL,
-                         "The snapshot cannot be written: %s. Nothing of it is left; the one "
-                         "before stays.",
-                         reason);
+                         "The snapshot cannot be written: %s. The one before stays.", reason);
     }
 }
 

@@ -87,7 +87,7 @@ static void share_memory(struct trainer *trainer)
     struct model_size size;
     model_measure(settings->shared->model, &size);
     uint64_t taken = size.counts_bytes + model_scratch_bytes(trainer->scratch) +
-                     workspaces_bytes(settings->workspaces);
+                     workspaces_bytes(settings->workspaces) + moments_bytes(settings->moments);
     if (settings->rebuild && rebuild_is_running(settings->rebuild)) {
         taken += settings->memory_bytes / REBUILD_MEMORY_PART;
     }

@@ -15,6 +15,7 @@
 enum {
     TRY_AGAIN_US = 1000000, /* where there is no room to learn more meanwhile */
     FLUSH_SHARE = 10,       /* storing takes a tenth of the time at most */
+    COPIED_FLUSHES = 10,    /* while it is copied, it is stored this many times more seldom */
     SMALL_BUDGET = 256 << 20
 };
 
@@ -26,6 +27,13 @@ static uint64_t changed_bytes(const struct trainer *trainer)
 bool trainer_is_full(const struct trainer *trainer)
 {
     return changed_bytes(trainer) > trainer->shares.changed;
+}
+
+/* What is stored while a backup copies the model can take no page that the copy needs, so the file
+ * grows by all of it. */
+static uint64_t patience(const struct trainer *trainer)
+{
+    return backlog_is_held(trainer->settings.backlog, BACKLOG_BACKUP) ? COPIED_FLUSHES : 1;
 }
 
 static bool is_due(const struct trainer *trainer)
@@ -40,8 +48,8 @@ static bool is_due(const struct trainer *trainer)
         return !trainer->store_failed || waited_us >= TRY_AGAIN_US;
     }
     return changes > 0 && waited_us >= FLUSH_SHARE * trainer->storing_us &&
-           (waited_us >= trainer->settings.flush_every_ms * 1000 ||
-            changes >= trainer->settings.flush_changes);
+           (waited_us >= patience(trainer) * trainer->settings.flush_every_ms * 1000 ||
+            changes >= patience(trainer) * trainer->settings.flush_changes);
 }
 
 static void tell_failure(struct trainer *trainer, const struct store_error *error)

@@ -90,7 +90,8 @@ int kv_open_environment(struct kv *kv, struct store_error *error)
     }
     if (code == MDB_SUCCESS) {
         /* Readers come from a pool of threads: a slot is the transaction's, not the thread's. */
-        unsigned flags = MDB_NOTLS | MDB_NORDAHEAD | (kv->read_only ? MDB_RDONLY : 0);
+        unsigned flags = MDB_NOTLS | MDB_NORDAHEAD | (kv->read_only ? MDB_RDONLY : 0) |
+                         (kv->is_alone ? MDB_NOLOCK : 0);
         code = mdb_env_open(kv->env, kv->directory, flags, 0600);
     }
     int result = kv_translate(kv, code, "opening it", error);
@@ -114,6 +115,7 @@ static int prepare(struct kv *made, const struct kv_settings *settings, struct s
     made->names = settings->tables;
     made->table_count = settings->table_count;
     made->read_only = settings->read_only;
+    made->is_alone = settings->read_only && settings->is_alone;
     made->round.due = true; /* an earlier life may have ended between erasing and scrubbing */
     made->directory = strdup(settings->directory);
     if (!made->directory) {
@@ -242,7 +244,7 @@ static bool is_disk_full(const struct kv *kv)
     return ask_room(kv, &left, &unknown) == STORE_OK && left < least;
 }
 
-static int enter(struct kv *kv, bool write, struct store_error *error)
+int kv_enter(struct kv *kv, bool write, struct store_error *error)
 {
     (void)pthread_mutex_lock(&kv->gate); /* fails only for mutexes of other kinds */
     while (kv->is_shut) {
@@ -266,7 +268,7 @@ static int enter(struct kv *kv, bool write, struct store_error *error)
                       kv->directory);
 }
 
-static void leave(struct kv *kv)
+void kv_leave(struct kv *kv)
 {
     (void)pthread_mutex_lock(&kv->gate);
     kv->running--;
@@ -278,7 +280,7 @@ static void leave(struct kv *kv)
 
 static int begin_in(struct kv *kv, bool write, struct kv_txn *made, struct store_error *error)
 {
-    int result = enter(kv, write, error);
+    int result = kv_enter(kv, write, error);
     if (result != STORE_OK) {
         return result;
     }
@@ -286,7 +288,7 @@ static int begin_in(struct kv *kv, bool write, struct kv_txn *made, struct store
     if (code == MDB_SUCCESS) {
         return STORE_OK;
     }
-    leave(kv);
+    kv_leave(kv);
     made->is_panic = code == MDB_PANIC;
     return kv_translate(kv, code, "beginning a transaction", error);
 }
@@ -339,7 +341,7 @@ int kv_commit(struct kv_txn *txn, struct store_error *error)
     if (result == STORE_OK && txn->deletes) {
         kv->round.due = true;
     }
-    leave(kv);
+    kv_leave(kv);
     free(txn);
     return result;
 }
@@ -348,7 +350,7 @@ void kv_abort(struct kv_txn *txn)
 {
     if (txn) {
         mdb_txn_abort(txn->txn);
-        leave(txn->kv);
+        kv_leave(txn->kv);
         free(txn);
     }
 }

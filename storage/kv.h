@@ -1,6 +1,6 @@
 /*
- * kv: ordered tables of bytes in one LMDB environment. Only kv.c, kv_cursor.c,
- * kv_pages.c and kv_scrub.c know LMDB.
+ * kv: ordered tables of bytes in one LMDB environment. Only kv.c, kv_copy.c,
+ * kv_cursor.c, kv_pages.c and kv_scrub.c know LMDB.
  *
  * One environment a directory and process. Any number of threads may read, each in a transaction of
  * its own; one thread writes at a time. Bytes handed out point into the map and are valid until the
@@ -42,7 +42,8 @@ struct kv_settings {
     const char *const *tables; /* names; a table is then named by its place in the list; borrowed
                                   until kv_close */
     unsigned table_count;
-    bool read_only; /* nothing is made or changed, not even on opening */
+    bool read_only; /* nothing is made or changed, not even on opening, but for LMDB's lock file; */
+    bool is_alone;  /* nor that: nobody else opens it. With read_only */
 };
 
 /* Opens or makes the environment with its tables. */

@@ -1,6 +1,7 @@
 /*
  * kv_private: the insides of an environment, for the files that know LMDB: kv.c,
- * kv_cursor.c, kv_pages.c and kv_scrub.c.
+ * kv_copy.c, kv_cursor.c, kv_pages.c and
+ * kv_scrub.c.
  */
 #ifndef UNDERTAG_KV_PRIVATE_H
 #define UNDERTAG_KV_PRIVATE_H
@@ -27,15 +28,17 @@ struct kv {
     const char *const *names;
     unsigned table_count;
     bool read_only;
+    bool is_alone;
     MDB_dbi tables[KV_TABLES];
     bool is_open;       /* kv_open has succeeded: a failure now is one of its use */
     atomic_bool broken; /* a write failed in a way that leaves the file in doubt */
     struct kv_round round;
-    pthread_mutex_t gate; /* over the three below */
+    pthread_mutex_t gate; /* over the four below */
     pthread_cond_t moved; /* one of the two last has changed */
     MDB_env *env;         /* NULL only after it could not be opened again */
     size_t running;       /* transactions; the environment is closed only while there are none */
     bool is_shut;         /* new transactions wait */
+    size_t copies;        /* being made: they take long, and nobody waits for their end */
 };
 
 struct kv_txn {
@@ -60,6 +63,11 @@ static inline struct kv_bytes kv_from_val(MDB_val value)
 
 /* Translates an LMDB code or an errno, once, here. `doing` goes into the sentence. */
 int kv_translate(const struct kv *kv, int code, const char *doing, struct store_error *error);
+
+/* Somebody is in the environment, which stays open until he leaves. Waits while it is shut. */
+int kv_enter(struct kv *kv, bool write, struct store_error *error)
+    __attribute__((warn_unused_result));
+void kv_leave(struct kv *kv);
 
 /* Opens the environment and its tables; on failure there is none. The gate is the caller's. */
 int kv_open_environment(struct kv *kv, struct store_error *error)

@@ -42,7 +42,8 @@ int model_store_open_in(const struct store_settings *settings, const char *folde
                                       .reserve_bytes = settings->reserve_bytes,
                                       .tables = TABLE_NAMES,
                                       .table_count = MODEL_TABLES,
-                                      .read_only = settings->read_only};
+                                      .read_only = settings->read_only,
+                                      .is_alone = settings->is_alone};
     int result = kv_open(&kv_settings, &made->kv, error);
     if (result != STORE_OK) {
         free(made);
@@ -68,6 +69,23 @@ bool model_store_is_broken(const struct model_store *store)
 uint64_t model_store_file_bytes(const struct model_store *store)
 {
     return kv_file_bytes(store->kv);
+}
+
+int model_store_copy(struct model_store *store, kv_take take, void *user, struct store_error *error)
+{
+    return kv_copy(store->kv, take, user, error);
+}
+
+int model_store_copy_bytes(struct model_store *store, uint64_t *ret_bytes,
+                           struct store_error *error)
+{
+    return kv_copy_bytes(store->kv, ret_bytes, error);
+}
+
+int model_store_check_pages(struct model_store *store, kv_tell tell, void *user,
+                            struct store_error *error)
+{
+    return kv_check_pages(store->kv, tell, user, error);
 }
 
 /* --- writing -----------------------------------------------------------------------------------

@@ -117,6 +117,14 @@ void model_store_close(struct model_store *store);
 bool model_store_is_broken(const struct model_store *store); /* as store_is_broken */
 uint64_t model_store_file_bytes(const struct model_store *store);
 
+/* As store_copy, store_copy_bytes and store_check_pages. */
+int model_store_copy(struct model_store *store, kv_take take, void *user, struct store_error *error)
+    __attribute__((warn_unused_result));
+int model_store_copy_bytes(struct model_store *store, uint64_t *ret_bytes,
+                           struct store_error *error) __attribute__((warn_unused_result));
+int model_store_check_pages(struct model_store *store, kv_tell tell, void *user,
+                            struct store_error *error) __attribute__((warn_unused_result));
+
 /* STORE_NOT_FOUND where no model has been stored yet. */
 int model_store_read_head(struct model_store *store, struct model_store_head *ret_head,
                           struct store_error *error) __attribute__((warn_unused_result));

@@ -163,7 +163,8 @@ int store_open(const struct store_settings *settings, struct store **ret_store,
                                       .reserve_bytes = settings->reserve_bytes,
                                       .tables = TABLE_NAMES,
                                       .table_count = STORE_TABLES,
-                                      .read_only = settings->read_only};
+                                      .read_only = settings->read_only,
+                                      .is_alone = settings->is_alone};
     int result = kv_open(&kv_settings, &made->kv, error);
     if (result == STORE_OK) {
         result = begin_life(made, settings->read_only, error);
@@ -197,6 +198,21 @@ bool store_is_broken(const struct store *store)
 uint64_t store_file_bytes(const struct store *store)
 {
     return kv_file_bytes(store->kv);
+}
+
+int store_copy(struct store *store, kv_take take, void *user, struct store_error *error)
+{
+    return kv_copy(store->kv, take, user, error);
+}
+
+int store_copy_bytes(struct store *store, uint64_t *ret_bytes, struct store_error *error)
+{
+    return kv_copy_bytes(store->kv, ret_bytes, error);
+}
+
+int store_check_pages(struct store *store, kv_tell tell, void *user, struct store_error *error)
+{
+    return kv_check_pages(store->kv, tell, user, error);
 }
 
 /* --- views -------------------------------------------------------------------------------------

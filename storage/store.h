@@ -27,6 +27,7 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "storage/kv_copy.h"
 #include "storage/store_error.h"
 
 enum {
@@ -43,6 +44,7 @@ struct store_settings {
     size_t map_bytes;
     size_t reserve_bytes;
     bool read_only; /* it must be there, and stays as it is */
+    bool is_alone;  /* nobody else opens it: no lock file is made beside it. With read_only */
 };
 
 /* Opens or makes the store of a home. STORE_NEWER where a later version wrote it. */
@@ -57,6 +59,16 @@ const unsigned char *store_uuid(const struct store *store);
 bool store_is_broken(const struct store *store);
 
 uint64_t store_file_bytes(const struct store *store);
+
+/* All that is committed as the bytes of a file, and how many they will be; see kv_copy. */
+int store_copy(struct store *store, kv_take take, void *user, struct store_error *error)
+    __attribute__((warn_unused_result));
+int store_copy_bytes(struct store *store, uint64_t *ret_bytes, struct store_error *error)
+    __attribute__((warn_unused_result));
+
+/* Looks through the pages of the file; see kv_check_pages. */
+int store_check_pages(struct store *store, kv_tell tell, void *user, struct store_error *error)
+    __attribute__((warn_unused_result));
 
 /* Begins a view of everything committed so far. */
 int store_read(struct store *store, struct store_view **ret_view, struct store_error *error)

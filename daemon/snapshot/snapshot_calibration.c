@@ -15,37 +15,32 @@ static const char *const STEPS[] = {
     "A tag with count 0 (tags.jsonl) is on no item: it has no chance. N is documents.",
     "belongs: the curve of the tag's group, the first one with its propensity p below "
     "propensity_below: at_floor at a score of floor_score or less; above it a straight line "
-    "between "
-    "the points (scores[i], chances[i]), level before the first and behind the last.",
-    "Where none of the item's known terms has a weight for any tag, belongs = "
-    "min(unprompted / documents / p, 1) whatever the score; 0 without documents.",
+    "between the points (scores[i], chances[i]), level before the first and behind the last.",
+    "Where none of the item's known terms has a weight for any tag, belongs = min(unprompted / "
+    "documents / p, 1) whatever the score; 0 without documents.",
     "Of a draft without tags, a tag's chance is belongs.",
     "Of a draft with tags and of a filed item it is the chance to be missing, P(missing | not "
-    "given), "
-    "of the tags that it has not. p' = p_allowed (tags.jsonl): p, or where that is more "
-    "least_propensities.least[c], c = floor(log2(N / unprompted)) within 0 and the last one, which "
-    "is that of unprompted = 0, too.",
+    "given), of the tags that it has not. p' = p_allowed (tags.jsonl): p, or where that is more "
+    "least_propensities.least[c], c = floor(log2(N / unprompted)) within 0 and the last one, "
+    "which is that of unprompted = 0, too.",
     "missing = (1 - p') * belongs / (1 - p' * belongs); 0 where p' * belongs is 1.",
     "promise: the candidates are the item's tags with a score above floor_score, those it has "
     "included, by bands of their count: of each band the candidates_a_band with the best scores, "
-    "of "
-    "equal ones the earlier row. It is the sum of missing over the candidates that the item has "
-    "not, whose belongs is at least agreement.belongs_from; neither those that somebody has said "
-    "do "
-    "not belong, nor, once the item was checked in full, those that were there at the check.",
+    "of equal ones the earlier row. It is the sum of missing over those of them that the item has "
+    "not and whose belongs is at least agreement.belongs_from, belongs being that of the curve "
+    "even where no term has a weight. Left out are those that somebody has said do not belong "
+    "and, once the item was checked in full, those that were there at the check.",
     "others = promise, less the tag's own missing where its belongs is at least "
     "agreement.belongs_from.",
     "agreed: in each row of agreement.rows missing is looked up: a straight line in ln(m / (1 - "
-    "m)) "
-    "between the points (agreement.missing[i], chances[i]); below the first point in proportion to "
-    "missing, level behind the last. Between rows a straight line in others, by the rows' promise, "
-    "level outside.",
+    "m)) between the points (agreement.missing[i], chances[i]); below the first point in "
+    "proportion to missing, level behind the last. Between rows a straight line in others, by the "
+    "rows' promise, level outside.",
     "The chance is missing below agreement.from, agreed from 2 * agreement.from on, and between "
-    "the "
-    "two (1 - t) * missing + t * agreed with t = missing / agreement.from - 1.",
-    "A filed item is one of those that were learned from: what learning it has added to the scores "
-    "of its gaps is taken out of them first. That is not in a snapshot; proposals.jsonl has the "
-    "chances that come of it.",
+    "the two (1 - t) * missing + t * agreed with t = missing / agreement.from - 1.",
+    "A filed item is one of those that were learned from: what learning it has added to the "
+    "scores of its gaps is taken out of them first. That is not in a snapshot; proposals.jsonl "
+    "has the chances that come of it.",
 };
 
 static json_t *steps_json(void)

@@ -22,42 +22,40 @@ static const char *const STEPS[] = {
     "row spans two runs.",
     "A run is put into Unicode's normal form NFKC and cut into pieces at the word boundaries of "
     "UAX #29, with the properties in words.word_break (a code point not listed is Other) and "
-    "words.extended_pictographic.",
-    "A piece with a code point of words.in_word that is not of words.in_pairs is a word. Any other "
-    "piece with a code point of words.in_pairs goes into the row: each of those is a character of "
-    "the row, with the code points behind it in the piece that are none; what stands in front of "
-    "the piece's first one is a character, too. Any other piece is passed over.",
+    "words.extended_pictographic. What rule WB3c joins is not what WB6, WB7b or WB12 look ahead "
+    "for.",
+    "A piece with a code point of words.in_word that is not of words.in_pairs is a word. Any "
+    "other piece with a code point of words.in_pairs goes into the row: each of those is a "
+    "character of the row, with the code points behind it in the piece that are none; what stands "
+    "in front of the piece's first one is a character, too. Any other piece is passed over.",
     "Pieces of a row that follow each other make one row; a word, a piece passed over or the end "
     "of the run ends it. Each two neighbouring characters of a row are a word; a row of one "
     "character is that word.",
     "A word is folded: code points of words.fold.ignored are left out, in words.fold.replaced [a, "
-    "b] "
-    "says that b takes the place of a, the rest is case-folded in full (CaseFolding.txt, C and F) "
-    "and put into NFKC again. "
-    "A word of more than words.most_bytes.written bytes of UTF-8 before that, or of none or more "
-    "than words.most_bytes.term after it, is passed over.",
+    "b] says that b takes the place of a, the rest is case-folded in full (CaseFolding.txt, C and "
+    "F) and put into NFKC again. A word of more than words.most_bytes.written bytes of UTF-8 "
+    "before that, or of none or more than words.most_bytes.term after it, is passed over.",
     "With words.stemming.on a word, but none of a row, gives way to its stem by the Snowball "
-    "algorithm of the item's language, or of words.stemming.language where it names none: the part "
-    "of the code before the first - or _ in lower case, looked up in words.stemming.algorithms; "
-    "where it is not there, or the stem is empty or above words.most_bytes.term, the word stays.",
+    "algorithm of the item's language, or of words.stemming.language where it names none: the "
+    "part of the code before the first - or _ in lower case, looked up in "
+    "words.stemming.algorithms; where it is not there, or the stem is empty or above "
+    "words.most_bytes.term, the word stays.",
     "With words.pairs.on each two neighbouring words are a term besides: both as counted, with a "
     "space between. They are neighbours where at most words.pairs.gap_bytes bytes of UTF-8 lie "
     "between them, the runs being in NFKC and each character of white space one byte, and no word "
     "that was passed over stands between.",
     "A field is a term \"name=value\", as given: a string as it is, true or false, a whole number "
-    "in decimal, any other number as C's %.17g; of an array each value is a term. One of more than "
-    "fields.most_bytes bytes is passed over.",
+    "in decimal, any other number as C's %.17g; of an array each value is a term. One of more "
+    "than fields.most_bytes bytes is passed over.",
     "A term's frequency tf is its count in the text + title_weight * its count in the title; a "
     "field's is 1.",
     "n is the number of filed items that hold the term (documents in words.jsonl, 0 where it is "
-    "not "
-    "there). A draft counts as one item more, with all its terms: N = documents + 1 and n + 1. A "
-    "filed item is counted in: N = documents and n, at least 1.",
+    "not there). A draft counts as one item more, with all its terms: N = documents + 1 and n + "
+    "1. A filed item is counted in: N = documents and n, at least 1.",
     "x = share * w(tf) * idf, with w(tf) = 1 + ln tf from tf = 1 and tf below, idf = ln(1 + N/n), "
     "and share = unshared_share where n (the item itself included) is 1, else 1.",
     "x is divided by its Euclidean norm over all terms of the item, those that words.jsonl does "
-    "not "
-    "have included; these are then left out.",
+    "not have included; these are then left out.",
 };
 
 static json_t *steps_json(void)

@@ -10,6 +10,7 @@
 #include "daemon/snapshot/npy.h"
 #include "daemon/snapshot/npz.h"
 #include "daemon/snapshot/snapshot_file.h"
+#include "daemon/snapshot/snapshot_room.h"
 
 #define DATA_NAME "weights_data.npy"
 #define INDICES_NAME "weights_indices.npy"
@@ -20,10 +21,12 @@ struct snapshot_weights {
     const struct model *model; /* while they are copied */
     int fd;                    /* of the copy by words: pairs, one after the other */
     uint64_t count;            /* of pairs */
-    uint64_t *starts;          /* by word's number: where its pairs begin; and where the last end */
-    size_t next_word;          /* words below it have their start */
-    size_t word_limit;         /* numbers are below it */
-    uint32_t *row_counts;      /* by tag */
+    struct snapshot_room starts_room;
+    struct snapshot_room counts_room;
+    uint64_t *starts;     /* by word's number: where its pairs begin; and where the last end */
+    size_t next_word;     /* words below it have their start */
+    size_t word_limit;    /* numbers are below it */
+    uint32_t *row_counts; /* by tag */
     size_t tag_count;
     FILE *copy; /* the same file, while it is written */
 };
@@ -61,18 +64,14 @@ static int copy_chunk(void *user, const struct model_store_chunk *chunk)
     return pace_add(weights->settings.pace, (uint64_t)count * sizeof pairs[0], error);
 }
 
-/* A file without a name: it is gone with its descriptor. */
 static int open_copy(struct snapshot_weights *weights)
 {
-    static const char NAME[] = "weights";
-    struct export_part *part = weights->settings.part;
     struct store_error *error = weights->settings.error;
-    int code = snapshot_file_open(part, NAME, &weights->fd, error);
+    int code = snapshot_room_open(weights->settings.part, &weights->fd, error);
     if (code != STORE_OK) {
         return code;
     }
-    int stream_fd =
-        unlinkat(export_part_fd(part), NAME, 0) == 0 ? fcntl(weights->fd, F_DUPFD_CLOEXEC, 0) : -1;
+    int stream_fd = fcntl(weights->fd, F_DUPFD_CLOEXEC, 0);
     weights->copy = stream_fd >= 0 ? fdopen(stream_fd, "w") : NULL;
     if (weights->copy) {
         return STORE_OK;
@@ -105,6 +104,22 @@ static int copy_chunks(struct snapshot_weights *weights, struct model_view *view
     return close_copy(weights, code);
 }
 
+static int make_room(struct snapshot_weights *weights)
+{
+    const struct snapshot_weights_settings *settings = &weights->settings;
+    int code =
+        snapshot_room_make(settings->part, (weights->word_limit + 1) * sizeof *weights->starts,
+                           &weights->starts_room, settings->error);
+    if (code == STORE_OK) {
+        code = snapshot_room_make(settings->part,
+                                  (weights->tag_count + 1) * sizeof *weights->row_counts,
+                                  &weights->counts_room, settings->error);
+    }
+    weights->starts = weights->starts_room.data;
+    weights->row_counts = weights->counts_room.data;
+    return code;
+}
+
 int snapshot_weights_copy(const struct snapshot_weights_settings *settings, struct model_view *view,
                           const struct model *model, struct snapshot_weights **ret_weights)
 {
@@ -116,20 +131,18 @@ int snapshot_weights_copy(const struct snapshot_weights_settings *settings, stru
     }
     model_measure(model, &size);
     struct snapshot_weights *weights = calloc(1, sizeof *weights);
-    if (weights) {
-        *weights = (struct snapshot_weights){.settings = *settings,
-                                             .model = model,
-                                             .fd = -1,
-                                             .word_limit = (size_t)head.next_word,
-                                             .tag_count = (size_t)size.tags};
-        weights->starts = calloc(weights->word_limit + 1, sizeof *weights->starts);
-        weights->row_counts = calloc(weights->tag_count + 1, sizeof *weights->row_counts);
-    }
-    if (!weights || !weights->starts || !weights->row_counts) {
-        snapshot_weights_free(weights);
+    if (!weights) {
         return store_fail(settings->error, STORE_NO_MEMORY, "there is no memory for a snapshot");
     }
-    code = copy_chunks(weights, view);
+    *weights = (struct snapshot_weights){.settings = *settings,
+                                         .model = model,
+                                         .fd = -1,
+                                         .word_limit = (size_t)head.next_word,
+                                         .tag_count = (size_t)size.tags};
+    code = make_room(weights);
+    if (code == STORE_OK) {
+        code = copy_chunks(weights, view);
+    }
     weights->model = NULL;
     if (code != STORE_OK) {
         snapshot_weights_free(weights);
@@ -147,8 +160,8 @@ void snapshot_weights_free(struct snapshot_weights *weights)
     if (weights->fd >= 0) {
         (void)close(weights->fd); /* it has no name: all of it is gone */
     }
-    free(weights->starts);
-    free(weights->row_counts);
+    snapshot_room_free(&weights->starts_room);
+    snapshot_room_free(&weights->counts_room);
     free(weights);
 }
 
@@ -165,6 +178,7 @@ struct arrays {
     struct npy data;
     struct npy indices;
     struct npy indptr;
+    struct snapshot_room room;
     uint64_t *next; /* by tag: where the row's next weight goes */
 };
 
@@ -195,10 +209,12 @@ static int create_arrays(const struct snapshot_weights *weights, struct arrays *
     if (code == STORE_OK) {
         code = npy_create(part, INDPTR_NAME, type, weights->tag_count + 1, &arrays->indptr, error);
     }
-    arrays->next = calloc(weights->tag_count + 1, sizeof *arrays->next);
-    return code != STORE_OK || arrays->next
-               ? code
-               : (int)store_fail(error, STORE_NO_MEMORY, "there is no memory for a snapshot");
+    if (code == STORE_OK) {
+        code = snapshot_room_make(part, (weights->tag_count + 1) * sizeof *arrays->next,
+                                  &arrays->room, error);
+    }
+    arrays->next = arrays->room.data;
+    return code;
 }
 
 static void begin_rows(const struct snapshot_weights *weights, struct arrays *arrays)
@@ -270,7 +286,7 @@ int snapshot_weights_write(struct snapshot_weights *weights, const uint32_t *wor
     npy_close(&arrays.data);
     npy_close(&arrays.indices);
     npy_close(&arrays.indptr);
-    free(arrays.next);
+    snapshot_room_free(&arrays.room);
     return code;
 }
 

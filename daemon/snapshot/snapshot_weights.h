@@ -3,8 +3,8 @@
  *
  * They are stored by word. So they are copied as they lie into a file that has no name, which is
  * all that needs the stored model; then that file is gone through word by word, and each weight put
- * into its tag's row, in files that are mapped. So neither copy is ever in memory of our own, and
- * what is: 8 bytes a word and 12 a tag.
+ * into its tag's row, in files that are mapped. So neither copy is ever in memory of our own, nor
+ * are the places of words and rows.
  */
 #ifndef UNDERTAG_SNAPSHOT_WEIGHTS_H
 #define UNDERTAG_SNAPSHOT_WEIGHTS_H

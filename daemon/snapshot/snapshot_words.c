@@ -1,20 +1,16 @@
 #include "daemon/snapshot/snapshot_words.h"
 
-#include <stdlib.h>
-
-#include "daemon/grow.h"
 #include "daemon/text/tfidf.h"
 
 struct writing {
     struct snapshot_file file;
     struct snapshot_columns *columns;
     double documents;
-    uint64_t next_word; /* numbers are below it */
 };
 
 void snapshot_columns_deinit(struct snapshot_columns *columns)
 {
-    free(columns->words);
+    snapshot_room_free(&columns->room);
     *columns = (struct snapshot_columns){0};
 }
 
@@ -22,13 +18,9 @@ static int add_word(void *user, const struct model_store_word *word)
 {
     struct writing *writing = user;
     struct snapshot_columns *columns = writing->columns;
-    if (word->number >= writing->next_word) {
+    if (word->number >= columns->most || columns->count >= columns->most) {
         return store_fail(writing->file.error, STORE_CORRUPT,
                           "a stored word of the model is damaged");
-    }
-    if (GROW(&columns->words, &columns->capacity, columns->count + 1) < 0) {
-        return store_fail(writing->file.error, STORE_NO_MEMORY,
-                          "there is no memory for a snapshot");
     }
     columns->words[columns->count++] = word->number;
     return snapshot_file_add(&writing->file,
@@ -46,7 +38,12 @@ int snapshot_words_write(struct export_part *part, struct model_view *view, uint
     struct model_store_head head;
     int code = model_view_head(view, &head, error);
     if (code == STORE_OK) {
-        writing.next_word = head.next_word;
+        columns->most = (size_t)head.next_word; /* numbers are below it */
+        code = snapshot_room_make(part, (columns->most + 1) * sizeof *columns->words,
+                                  &columns->room, error);
+        columns->words = columns->room.data;
+    }
+    if (code == STORE_OK) {
         code = snapshot_file_create(part, "words.jsonl", pace, error, &writing.file);
     }
     if (code != STORE_OK) {

@@ -6,13 +6,15 @@
 #define UNDERTAG_SNAPSHOT_WORDS_H
 
 #include "daemon/snapshot/snapshot_file.h"
+#include "daemon/snapshot/snapshot_room.h"
 #include "storage/model_view.h"
 
 /* The words' numbers, by column. Zero-initialised is empty. */
 struct snapshot_columns {
+    struct snapshot_room room;
     uint32_t *words;
     size_t count;
-    size_t capacity;
+    size_t most;
 };
 
 void snapshot_columns_deinit(struct snapshot_columns *columns);

@@ -57,6 +57,7 @@ static int load_model(struct writing *writing)
     }
     if (code == STORE_OK) {
         model_measure(writing->model, &size);
+        moment_hold_memory(moment, size.counts_bytes + size.weights_bytes + size.worklist_bytes);
         writing->documents = size.documents;
         writing->counts.items = size.documents;
         writing->counts.tags = size.tags;
@@ -164,6 +165,7 @@ static int write_rest(struct writing *writing)
     int code = write_documents(writing);
     model_free(writing->model);
     writing->model = NULL;
+    moment_hold_memory(writing->task->moment, 0);
     if (code == STORE_OK) {
         code = write_weights(writing);
     }

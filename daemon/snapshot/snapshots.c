@@ -48,11 +48,13 @@ struct snapshots {
 /* --- one snapshot: its thread -------------------------------------------------------------------
  */
 
-static int point_latest(struct export_folder *folder, const char *name, struct store_error *error)
+/* The snapshot is there and whole all the same. */
+static void point_latest(struct export_folder *folder, const char *name)
 {
     char sentence[EXPORT_ERROR_BYTES];
-    int code = export_folder_point(folder, name, sentence);
-    return code == 0 ? STORE_OK : snapshot_fail_export(error, code, sentence);
+    if (export_folder_point(folder, name, sentence) < 0) {
+        log_line(LOG_CAUTION, "snapshot: the link to the latest leads to one before: %s", sentence);
+    }
 }
 
 static void thin(struct export_folder *folder, size_t keep)
@@ -106,7 +108,7 @@ static int write_one(struct snapshots *snapshots, struct snapshot_written *ret_w
     }
     int code = write_into(snapshots, folder, ret_written, error);
     if (code == STORE_OK) {
-        code = point_latest(folder, ret_written->name, error);
+        point_latest(folder, ret_written->name);
         thin(folder, snapshots->keep);
     }
     export_folder_close(folder);

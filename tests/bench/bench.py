@@ -24,7 +24,8 @@ import wire  # noqa: E402
 from lines import Lines  # noqa: E402
 
 EX_UNAVAILABLE, EX_SOFTWARE = 69, 70  # sysexits.h
-PARTS = ("daemon", "plain", "batch", "onevsrest", "reading", "latency", "clients", "large", "growth", "restart", "soak")
+PARTS = ("daemon", "plain", "batch", "onevsrest", "reading", "latency", "clients", "large", "growth", "restart", "snapshot",
+         "soak")
 
 
 class Bench:

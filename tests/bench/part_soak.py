@@ -1,8 +1,9 @@
 """A daemon with the least memory_budget under constant use: does its memory stay where it was told to?
 
 One client files invented items as fast as they are taken, until all of 500,000 tags are in use and beyond; one asks
-for gaps of filed items and of drafts; one rules, files anew and withdraws a few times a second (soak_bench). Memory
-and descriptors are read from /proc meanwhile. `--minutes` says how long.
+for gaps of filed items and of drafts; one rules, files anew and withdraws a few times a second (soak_bench). Beside
+them hundreds of peers are a nuisance, and an operator has snapshots and backups written and models learned anew
+(soak_others). Memory and descriptors are read from /proc meanwhile. `--minutes` says how long.
 """
 
 import json
@@ -10,12 +11,14 @@ import os
 import subprocess
 
 import house
+import soak_others
 
 NEEDS = ()
 LONG = True
 WORDS, TAGS = 1_000_000, 500_000
-BUDGET_MIB, MOST_OVER = 64, 1.2
-SETTINGS = (f"memory_budget={BUDGET_MIB}MiB", "rehearsal_share=0.25")
+BUDGET_MIB, WIRE_MIB, MOST_OVER = 64, 16, 1.2
+SETTINGS = (f"memory_budget={BUDGET_MIB}MiB", "rehearsal_share=0.25", f"wire_limit={WIRE_MIB}MiB", "stalled_ms=10000",
+            "snapshot_keep=2")
 LOOK_EVERY_S = 2
 DONE = {"filed": "items filed", "asked": "item.gaps", "changed": "rulings, revisions, withdrawals"}
 
@@ -44,13 +47,16 @@ def use(bench, connection):
                str(bench.minutes * 60), str(WORDS), str(TAGS)]
     with subprocess.Popen(command, stdout=subprocess.PIPE, text=True) as process:
         try:
-            seen = looks(connection, process)
-            said = process.stdout.read()
+            with soak_others.at_work(connection.socket.getpeername()) as others:
+                seen = looks(connection, process)
+                said = process.stdout.read()
         finally:
             process.kill()
     if process.returncode != 0:
         raise subprocess.CalledProcessError(process.returncode, command[0])
-    return json.loads(said), seen
+    if others[1].failure:
+        raise ValueError(others[1].failure)
+    return json.loads(said), seen, others
 
 
 def show_rates(lines, said):
@@ -80,6 +86,14 @@ def show_state(lines, connection, state):
         lines.say(f"faults: {' '.join(state['faults'])}")
 
 
+def show_others(lines, others):
+    """What went on beside the feed."""
+    nuisances, operator = others
+    lines.say(f"nuisances: {nuisances.opened:,} opened, {nuisances.closed:,} closed by the daemon; operator: "
+              + ", ".join(f"{count} {method}" for method, count in sorted(operator.done.items()))
+              + f", {operator.refused} refused while another was under way")
+
+
 def show_seen(lines, connection, seen):
     """Descriptors and readers."""
     counts = [one["descriptors"] for one in seen]
@@ -92,12 +106,14 @@ def show_seen(lines, connection, seen):
 def run(bench, lines):
     """One daemon, for so many minutes."""
     with bench.daemon(SETTINGS) as connection:
-        said, seen = use(bench, connection)
+        said, seen, others = use(bench, connection)
         state = connection.call("daemon.state")
         show_rates(lines, said)
         show_state(lines, connection, state)
         show_memory(lines, seen, state["memory"])
         show_seen(lines, connection, seen)
+        show_others(lines, others)
     lines.keep(said=said, seen=seen, state=state)
-    lines.at_most(f"largest RssAnon in {bench.minutes:g} minutes / budget of {BUDGET_MIB} MiB",
-                  max(one["anonymous"] for one in seen) / (BUDGET_MIB << 20), MOST_OVER)
+    lines.at_most(f"largest RssAnon in {bench.minutes:g} minutes / budget of {BUDGET_MIB} MiB and wire_limit of "
+                  f"{WIRE_MIB} MiB",
+                  max(one["anonymous"] for one in seen) / ((BUDGET_MIB + WIRE_MIB) << 20), MOST_OVER)

@@ -13,6 +13,7 @@
 #include <pthread.h>
 #include <stdio.h>
 #include <stdlib.h>
+#include <string.h>
 #include <sys/resource.h>
 #include <unistd.h>
 
@@ -138,6 +139,32 @@ bool moments_is_building(const char *home)
     return access(path, F_OK) == 0;
 }
 
+static bool is_part(const char *name)
+{
+    static const char END[] = ".part";
+    size_t bytes = strlen(name);
+    return name[0] == '.' && bytes > sizeof END &&
+           strcmp(name + bytes - (sizeof END - 1), END) == 0;
+}
+
+bool moments_is_writing_snapshot(const char *home)
+{
+    char path[PATH_BYTES];
+    bool is_writing = false;
+    int length = snprintf(path, sizeof path, "%s/exports", home);
+    assert_in_range(length, 1, sizeof path - 1);
+    DIR *exports = opendir(path);
+    if (!exports) {
+        return false;
+    }
+    const struct dirent *entry = NULL;
+    while ((entry = readdir(exports))) { /* NOLINT(concurrency-mt-unsafe): no other thread */
+        is_writing = is_writing || is_part(entry->d_name);
+    }
+    (void)closedir(exports); /* it was only read */
+    return is_writing;
+}
+
 struct moment moments_of_kill(const char *home, pid_t storer)
 {
     struct lock model = read_lock(home, "model");
@@ -146,5 +173,6 @@ struct moment moments_of_kill(const char *home, pid_t storer)
                            .in_overwriting = was_left(model) && !is_storers,
                            .in_build = moments_is_building(home),
                            .in_storing_build = moments_was_left_open(home, "model.next"),
-                           .in_commit = moments_was_left_open(home, "store")};
+                           .in_commit = moments_was_left_open(home, "store"),
+                           .in_snapshot = moments_is_writing_snapshot(home)};
 }

@@ -25,6 +25,7 @@ bool moments_is_flushing(const char *home, pid_t storer);
 bool moments_is_committing(const char *home);
 bool moments_is_building(const char *home);
 bool moments_is_storing_build(const char *home);
+bool moments_is_writing_snapshot(const char *home);
 
 /* What a daemon was doing when it was killed. */
 struct moment {
@@ -33,6 +34,7 @@ struct moment {
     bool in_storing_build; /* a part of the latter */
     bool in_commit;        /* of changes */
     bool in_overwriting;   /* of what was deleted from the model */
+    bool in_snapshot;      /* from its first file on, until it has its name */
 };
 
 /* Of a home whose daemon was killed, before another one opens it. */

@@ -80,12 +80,13 @@ static void play_kind(struct scene *scene, scene_round play)
 {
     const char *text = getenv("UNDERTAG_FAULTS");
     bool all = (text && strcmp(text, "all") == 0) || scene->kind != FAIL_MALLOC;
-    unsigned first = all ? 0 : seed() % STRIDE;
-    if (!all) {
-        (void)printf("%s, malloc: every %dth from %u on\n", scene->name, STRIDE, first);
+    unsigned sparse = scene->sparse > 0 && scene->kind == FAIL_MALLOC ? scene->sparse : 1;
+    unsigned stride = (all ? 1 : STRIDE) * sparse;
+    unsigned first = stride > 1 ? seed() % stride : 0;
+    if (stride > 1) {
+        (void)printf("%s, malloc: each %uth from %u on\n", scene->name, stride, first);
     }
-    for (scene->n = first; scene->n < N_MOST && scene->wrong < WRONG_MOST;
-         scene->n += all ? 1 : STRIDE) {
+    for (scene->n = first; scene->n < N_MOST && scene->wrong < WRONG_MOST; scene->n += stride) {
         if (!play(scene)) {
             return;
         }

@@ -19,9 +19,10 @@ struct scene {
     struct sites *sites;
     enum fail_kind kind;
     unsigned n;
-    unsigned stamp;      /* for ids that were not there before */
-    bool is_up;          /* a daemon with the shim runs */
-    bool needs_restart;  /* it says that it does */
+    unsigned stamp;     /* for ids that were not there before */
+    bool is_up;         /* a daemon with the shim runs */
+    bool needs_restart; /* it says that it does */
+    unsigned sparse; /* of many calls only each so many-th of those that would be taken; 0: all */
     unsigned since_look; /* rounds since all was looked at */
     unsigned wrong;      /* what did not hold */
     void *own;

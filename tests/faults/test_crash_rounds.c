@@ -51,6 +51,7 @@ struct shooting {
     struct spread flush;
     struct spread build;
     struct spread storing_build;
+    struct spread snapshot;
     bool is_done; /* all rounds */
     bool has_failed;
 };
@@ -123,6 +124,11 @@ static bool is_storing_build(const struct trial *trial)
     return moments_is_storing_build(trial->daemon.home);
 }
 
+static bool is_writing_snapshot(const struct trial *trial)
+{
+    return moments_is_writing_snapshot(trial->daemon.home);
+}
+
 static bool is_committing_a_tag(const struct trial *trial)
 {
     return trial_is_opening(trial) && moments_is_committing(trial->daemon.home);
@@ -177,6 +183,15 @@ static void shoot_at_storing_build(struct shooting *at)
     learn_from(&at->storing_build, trial_kill(&at->trial).in_storing_build);
 }
 
+static void shoot_at_snapshot(struct shooting *at)
+{
+    pump_for(at, MOST_FED_US);
+    trial_snapshot(&at->trial);
+    pump_until(at, is_writing_snapshot);
+    pump_for(at, at->snapshot.most_us);
+    learn_from(&at->snapshot, trial_kill(&at->trial).in_snapshot);
+}
+
 /* While it goes on from where it was killed: before anything is asked or fed. */
 static void shoot_at_start(struct shooting *at)
 {
@@ -187,8 +202,8 @@ static void shoot_at_start(struct shooting *at)
 
 /*
  * Round after round, what is aimed at and the options that the daemon is started with. Whoever adds
- * something that writes (a snapshot, say) adds here where to shoot at it, in moments.h how a kill
- * that hit it is known, and below a figure that may not be none.
+ * something that writes adds here where to shoot at it, in moments.h how a kill that hit it is
+ * known, and below a figure that may not be none.
  */
 static const struct aim {
     const char *name;
@@ -207,8 +222,10 @@ static const struct aim {
      {"visible_within_ms=60000", "flush_every_ms=10"}},
     {"a new tag", shoot_at_vocabulary, false, {NULL, NULL}},
     {"storing of a build", shoot_at_storing_build, false, {"flush_every_ms=10", "flush_changes=1"}},
+    {"a snapshot", shoot_at_snapshot, false, {"snapshot_rate=1MiB", "snapshot_keep=2"}},
     {"a flush", shoot_at_flush, false, {"flush_every_ms=20", "memory_budget=64MiB"}},
     {"anywhere, with nothing stored", shoot_anywhere, false, {"flush_every_ms=3600000", NULL}},
+    {"a snapshot, all at once", shoot_at_snapshot, false, {"snapshot_keep=1", "snapshot_items=on"}},
     {"a build, with nothing stored", shoot_at_build, false, {"flush_every_ms=3600000", NULL}},
     {"a start, with nothing stored", shoot_at_start, true, {"flush_every_ms=3600000", NULL}},
 };
@@ -272,7 +289,7 @@ static void the_weights_are_those_of_an_undisturbed_run(void **state)
     compare_weights(at);
 }
 
-static void kills_fell_inside_flushes_builds_and_commits(void **state)
+static void kills_fell_inside_flushes_builds_snapshots_and_commits(void **state)
 {
     const struct shooting *at = *state;
     const struct trial_counts *counts = &at->trial.counts;
@@ -282,6 +299,7 @@ static void kills_fell_inside_flushes_builds_and_commits(void **state)
     assert_true(counts->in_build > 0);
     assert_true(counts->in_storing_build > 0);
     assert_true(counts->in_commit > 0);
+    assert_true(counts->in_snapshot > 0);
     assert_true(counts->opening > 0);
 }
 
@@ -342,14 +360,14 @@ static void report(const struct shooting *at)
                   counts->found_in + counts->lost, counts->found_in, counts->lost);
     print_message(
         "kills: %u inside a flush, %u inside a build (%u while it was stored), %u inside "
-        "a commit of changes, %u while overwriting, %u elsewhere; %u with a new tag under "
-        "way\n",
+        "a commit of changes, %u while overwriting, %u inside a snapshot, %u elsewhere; %u with a "
+        "new tag under way\n",
         counts->in_flush, counts->in_build, counts->in_storing_build, counts->in_commit,
-        counts->in_overwriting, counts->elsewhere, counts->opening);
+        counts->in_overwriting, counts->in_snapshot, counts->elsewhere, counts->opening);
     print_message("all items and tags read back %u times, found whole %u times, weights compared "
-                  "%u times; %u rebuilds, %u tags\n",
+                  "%u times; %u rebuilds, %u tags; whole snapshots found %u times\n",
                   counts->read_back, counts->verified, counts->weights_compared,
-                  at->trial.rebuild.number, ledger->acknowledged.tags);
+                  at->trial.rebuild.number, ledger->acknowledged.tags, counts->snapshots);
 }
 
 /* After each test; the homes of one that failed are kept. */
@@ -370,7 +388,8 @@ static int set_up(void **state)
     shooting = (struct shooting){.rounds = rounds,
                                  .flush = {.most_us = 500},
                                  .build = {.most_us = 10000},
-                                 .storing_build = {.most_us = 500}};
+                                 .storing_build = {.most_us = 500},
+                                 .snapshot = {.most_us = 200000}};
     trial_init(&shooting.trial, seed);
     *state = &shooting;
     return 0;
@@ -408,7 +427,7 @@ int main(int argc, char **argv)
         TEST(a_kill_inside_a_transaction_shows_in_the_lock_file),
         TEST(every_acknowledged_change_is_there_once_after_each_kill),
         TEST(the_weights_are_those_of_an_undisturbed_run),
-        TEST(kills_fell_inside_flushes_builds_and_commits),
+        TEST(kills_fell_inside_flushes_builds_snapshots_and_commits),
     };
     return cmocka_run_group_tests_name("crash rounds", tests, set_up, tear_down);
 }

@@ -2,8 +2,6 @@
  * Any one call of the system fails, in any place: malloc and its family, write and its family, the
  * syncs, open, mmap. scene.h says what must hold then. What was failed is printed, each call site
  * once, and stands in BUILD/faults.txt.
- *
- * Snapshots: a scene of their own goes behind the restart.
  */
 #include <setjmp.h>
 #include <stdarg.h>
@@ -15,6 +13,8 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "tests/faults/exports.h"
+#include "tests/faults/moments.h"
 #include "tests/faults/scene.h"
 
 #define TEXT "fog on the lower light the bell was rung for three hours and the boat came in late"
@@ -252,6 +252,65 @@ static void a_restart_with_a_failing_call_loses_nothing(void **state)
     scene_end(&scene);
 }
 
+/* --- a snapshot ------------------------------------------------------------------------------ */
+
+enum {
+    SNAPSHOTS_KEPT = 2
+};
+
+/* What is left of one that failed, or of an old one that could not be removed, goes at the next
+ * start. */
+static void look_for_parts(struct scene *scene, bool is_new_start)
+{
+    if (!moments_is_writing_snapshot(scene->patient.daemon.home)) {
+        return;
+    }
+    if (is_new_start) {
+        scene_wrong(scene, "what was left of a snapshot is still there after a restart");
+    }
+    scene->needs_restart = true;
+}
+
+/* It is whole or not there, and those before are as they were. */
+static bool write_a_snapshot(struct scene *scene)
+{
+    unsigned *whole = scene->own;
+    scene_be_up(scene);
+    look_for_parts(scene, true);
+    scene->stamp++;
+    file_new(scene, "filed");
+    scene_wait_until_learned(scene);
+    scene_arm(scene);
+    enum outcome outcome = scene_ask(scene, "snapshot.write", "{'items': true}");
+    bool is_hit = scene_disarm(scene);
+    scene_look(scene);
+    unsigned found = exports_assert_whole(scene->patient.daemon.home);
+    if (outcome == ACKNOWLEDGED && found == 0) {
+        scene_wrong(scene, "a snapshot that was acknowledged is not there");
+    }
+    if (found < *whole && found < SNAPSHOTS_KEPT) {
+        scene_wrong(scene, "an older snapshot is gone");
+    }
+    *whole = found;
+    look_for_parts(scene, false);
+    return is_hit;
+}
+
+static void a_snapshot_with_a_failing_call_is_whole_or_not_there(void **state)
+{
+    struct scene scene;
+    unsigned whole = 0;
+    scene_begin(&scene, *state, "snapshot");
+    scene.patient.daemon.settings[1] = "snapshot_keep=2";
+    scene.sparse = 29; /* the tables of text.json alone take thousands */
+    scene_be_up(&scene);
+    file_some(&scene, 12);
+    scene.own = &whole;
+    scene_play(&scene, write_a_snapshot);
+    assert_int_equal(whole, SNAPSHOTS_KEPT);
+    scene_end(&scene);
+}
+
 /* --- the report ------------------------------------------------------------------------------ */
 
 /* Several pages in a row go by one call; by which, LMDB chose when it was built. */
@@ -292,6 +351,7 @@ int main(void)
         cmocka_unit_test(a_scoring_with_a_failing_call_is_right_or_refused),
         cmocka_unit_test(a_flush_with_a_failing_call_loses_nothing),
         cmocka_unit_test(a_restart_with_a_failing_call_loses_nothing),
+        cmocka_unit_test(a_snapshot_with_a_failing_call_is_whole_or_not_there),
         cmocka_unit_test(lmdb_s_own_writes_were_among_them),
     };
     return !patient_is_possible() ? 0 : cmocka_run_group_tests(tests, set_up, tear_down);

@@ -10,6 +10,7 @@
 #include <stdio.h>
 #include <string.h>
 
+#include "tests/faults/exports.h"
 #include "tests/faults/readback.h"
 #include "tests/integration/answers.h"
 #include "tests/integration/program.h"
@@ -83,6 +84,8 @@ void trial_settle(struct trial *trial)
     trial->counts.lost += sent - seq;
     readback_assert(ledger, &trial->feeder.peer);
     assert_rebuild(trial);
+    assert_false(moments_is_writing_snapshot(trial->daemon.home)); /* what was left is gone */
+    trial->counts.snapshots += exports_assert_whole(trial->daemon.home);
     trial->counts.read_back++;
 }
 
@@ -110,6 +113,11 @@ void trial_rebuild(struct trial *trial)
     assert_int_equal(whole(result, "seq"), rebuild->moment);
 }
 
+void trial_snapshot(const struct trial *trial)
+{
+    assert_int_equal(kill(trial->daemon.child.pid, SIGUSR1), 0);
+}
+
 bool trial_is_opening(const struct trial *trial)
 {
     return trial->ledger.sent.tags > trial->ledger.acknowledged.tags;
@@ -123,8 +131,9 @@ static void count(struct trial_counts *counts, const struct moment *moment)
     counts->in_storing_build += moment->in_storing_build ? 1 : 0;
     counts->in_commit += moment->in_commit ? 1 : 0;
     counts->in_overwriting += moment->in_overwriting ? 1 : 0;
-    bool is_somewhere =
-        moment->in_flush || moment->in_build || moment->in_commit || moment->in_overwriting;
+    counts->in_snapshot += moment->in_snapshot ? 1 : 0;
+    bool is_somewhere = moment->in_flush || moment->in_build || moment->in_commit ||
+                        moment->in_overwriting || moment->in_snapshot;
     counts->elsewhere += is_somewhere ? 0 : 1;
 }
 

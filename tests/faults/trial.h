@@ -23,6 +23,7 @@ struct trial_counts {
     unsigned in_storing_build;
     unsigned in_commit;
     unsigned in_overwriting;
+    unsigned in_snapshot;
     unsigned elsewhere;
     unsigned opening;   /* kills with a change under way that opens a tag */
     unsigned found_in;  /* changes in doubt that were in, */
@@ -30,6 +31,7 @@ struct trial_counts {
     unsigned read_back; /* times that all of it was */
     unsigned verified;
     unsigned weights_compared;
+    unsigned snapshots; /* that were whole, each time that one was looked at */
 };
 
 struct trial {
@@ -54,6 +56,9 @@ void trial_settle(struct trial *trial);
 
 /* Asks for a rebuild, unless one is under way. All that was sent is acknowledged then. */
 void trial_rebuild(struct trial *trial);
+
+/* Has a snapshot begun; nobody waits for it. */
+void trial_snapshot(const struct trial *trial);
 
 /* Whether a change is under way that opens a tag. */
 bool trial_is_opening(const struct trial *trial);

@@ -9,12 +9,14 @@
 #include <stdint.h>
 
 #include <cmocka.h>
+#include <errno.h>
 #include <sched.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 #include <sys/mount.h>
 #include <sys/stat.h>
+#include <unistd.h>
 
 #include "tests/integration/filling.h"
 #include "tests/integration/program.h"
@@ -110,12 +112,51 @@ static void a_restart_on_a_full_disk_reads_what_is_there(void **state)
     assert_whole(service);
 }
 
+/* An emptied part would show, too: nothing at all is in the folder. */
+static void a_backup_that_does_not_fit_leaves_nothing(void **state)
+{
+    struct service *service = *state;
+    char exports[2 * UNDERTAGD_PATH_BYTES];
+    (void)filling_fill(&service->peer);
+    assert_error(ask_refused(&service->peer, "backup.write", "{'name': 'monday'}"), -32005, "");
+    (void)snprintf(exports, sizeof exports, "%s/exports", service->daemon.home);
+    assert_true(rmdir(exports) == 0 || errno == ENOENT);
+    make_room(service);
+    (void)ask(&service->peer, "backup.write", "{'name': 'monday'}");
+}
+
+/* The home is on a disk that has room for a part of the backup. */
+static void a_restore_that_does_not_fit_leaves_no_home(void **state)
+{
+    struct service *service = *state;
+    char small[UNDERTAGD_PATH_BYTES];
+    char backup[2 * UNDERTAGD_PATH_BYTES];
+    (void)filling_fill(&service->peer); /* more than half of 12 MiB */
+    make_room(service);
+    (void)ask(&service->peer, "backup.write", "{'name': 'monday'}");
+    (void)snprintf(backup, sizeof backup, "%s/exports/monday", service->daemon.home);
+    undertagd_path(&service->daemon, "small", small);
+    assert_int_equal(mkdir(small, 0700), 0);
+    assert_int_equal(mount("small", small, "tmpfs", 0, "size=5m"), 0);
+    program_run("undertagd",
+                (const char *const[]){"--home", small, "--restore", backup, "--set",
+                                      "disk_reserve=0", NULL},
+                "", &run);
+    assert_int_equal(run.exit_code, 75);
+    assert_non_null(strstr(run.error, "nothing was restored"));
+    assert_int_equal(umount2(small, MNT_DETACH), 0);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test_setup_teardown(
             what_does_not_fit_on_the_disk_is_refused_and_the_rest_is_there, set_up, tear_down),
         cmocka_unit_test_setup_teardown(all_goes_on_once_there_is_room, set_up, tear_down),
+        cmocka_unit_test_setup_teardown(a_backup_that_does_not_fit_leaves_nothing, set_up,
+                                        tear_down),
+        cmocka_unit_test_setup_teardown(a_restore_that_does_not_fit_leaves_no_home, set_up,
+                                        tear_down),
         cmocka_unit_test_setup_teardown(a_restart_on_a_full_disk_reads_what_is_there, set_up,
                                         tear_down),
     };

@@ -59,6 +59,7 @@ static const struct {
     {"daemon.rebuild", "{'settings': {'lamp': 1}}", "may_operate", -32602},
     {"snapshot.write", "{'name': 'latest'}", "may_operate", -32602},
     {"snapshot.list", "{}", "may_operate", 0},
+    {"backup.write", "{'rate': 1}", "may_operate", -32602},
 };
 
 enum {

@@ -3,7 +3,8 @@
 
 Files the first 80 % of a corpus, asks for the gaps of the last 20 % without their tags, and prints the figures
 beside those of the daemon once it has rehearsed, of a daemon that does not correct for missing tags, and of the batch
-solver on the same split. The figures are defined in figures.py. T is W with tags hidden on purpose: see thinned.py.
+solver on the same split. The figures are defined in figures.py. T is W with tags hidden on purpose: see thinned.py. S
+holds snapshots of D and W against the daemons that have written them: see snapshots.py.
 
 Ends with 0 when every floor is kept, 1 when one is missed, 69 when a corpus was skipped because it is not there (and
 no floor is missed), 70 when the daemon failed.
@@ -18,6 +19,7 @@ import figures
 import outcome
 import reference
 import report
+import snapshots
 import split as splits
 import thinned
 import trial
@@ -38,7 +40,8 @@ REHEARSED_FLOORS = {
           ("tail", "found@10"): .375},
 }
 NOISE = .002
-CORPORA = (*FLOORS, "T")
+OF_THEIR_OWN = {"T": thinned.run, "S": snapshots.run}
+CORPORA = (*FLOORS, *OF_THEIR_OWN)
 UNCORRECTED = "correction=off"
 REHEARSING = "rehearsal_share=1"
 
@@ -172,7 +175,7 @@ def options_of(arguments):
 def trials(options):
     """The results of the corpora that are there, by name; each is printed as soon as it is known."""
     names = options.corpus or (FLOORS if options.reference else CORPORA)
-    results = {name: thinned.run(options) if name == "T" else trial_of(name, options) for name in names}
+    results = {name: OF_THEIR_OWN[name](options) if name in OF_THEIR_OWN else trial_of(name, options) for name in names}
     return {name: result for name, result in results.items() if result is not None}, len(names)
 
 

@@ -93,32 +93,6 @@ static void each_number_moves_on_its_own(void **state)
     assert_int_equal(numbers.kept, 2);
 }
 
-/* --- what another model needs --- */
-
-static void what_another_model_has_not_passed_is_not_kept_yet(void **state)
-{
-    struct fixture *fixture = *state;
-    backlog_kept(fixture->backlog, 9);
-    backlog_hold(fixture->backlog, 4);
-    assert_int_equal(backlog_read(fixture->backlog).kept, 4);
-    backlog_kept(fixture->backlog, 12);
-    assert_int_equal(backlog_read(fixture->backlog).kept, 4);
-    backlog_hold(fixture->backlog, 20); /* the other is ahead */
-    assert_int_equal(backlog_read(fixture->backlog).kept, 12);
-    backlog_hold(fixture->backlog, UINT64_MAX);
-    assert_int_equal(backlog_read(fixture->backlog).kept, 12);
-}
-
-static void what_is_superseded_from_now_on_is_held(void **state)
-{
-    struct fixture *fixture = *state;
-    backlog_committed(fixture->backlog, 5, 100, 0);
-    assert_int_equal(backlog_hold_committed(fixture->backlog), 5);
-    backlog_committed(fixture->backlog, 8, 100, 0);
-    backlog_kept(fixture->backlog, 8);
-    assert_int_equal(backlog_read(fixture->backlog).kept, 5);
-}
-
 static void a_nudge_ends_one_wait_for_work(void **state)
 {
     struct fixture *fixture = *state;
@@ -464,8 +438,6 @@ int main(void)
     const struct CMUnitTest tests[] = {
         TEST(what_was_found_at_the_start_is_told),
         TEST(each_number_moves_on_its_own),
-        TEST(what_another_model_has_not_passed_is_not_kept_yet),
-        TEST(what_is_superseded_from_now_on_is_held),
         TEST(a_nudge_ends_one_wait_for_work),
         TEST(a_nudge_before_the_wait_is_not_lost),
         TEST(more_text_and_more_tags_cost_more),

@@ -140,6 +140,39 @@ static void at_most_32_reads_run_at_a_time(void **state)
     assert_at_most(*state, "read", 32);
 }
 
+/* What is counted in a buffer of the connection stays there: small lines are many calls. */
+static void there_is_room_until_2048_calls_wait(void **state)
+{
+    struct fixture *fixture = *state;
+    enum {
+        MOST = 2048
+    };
+    for (int i = 0; i < MOST; i++) {
+        assert_true(call_queue_has_room(&fixture->queue));
+        ask(fixture, "echo", 'a');
+    }
+    assert_false(call_queue_has_room(&fixture->queue));
+}
+
+/* 64 together: with three others that read, 16 each. */
+static void queues_that_read_share_out_what_runs_together(void **state)
+{
+    struct fixture *fixture = *state;
+    struct call_crowd crowd = {.reading = 3};
+    fixture->queue.crowd = &crowd;
+    assert_at_most(fixture, "read", 16);
+    assert_int_equal(crowd.reading, 3); /* it has left */
+}
+
+/* However many others there are. */
+static void a_queue_may_always_read_something(void **state)
+{
+    struct fixture *fixture = *state;
+    struct call_crowd crowd = {.reading = 1000};
+    fixture->queue.crowd = &crowd;
+    assert_at_most(fixture, "read", 1);
+}
+
 #define TEST(name) cmocka_unit_test_setup_teardown(name, calls_set_up, calls_tear_down)
 
 int main(void)
@@ -152,6 +185,9 @@ int main(void)
         TEST(the_answer_limit_stops_starting),
         TEST(at_most_1024_changes_run_at_a_time),
         TEST(at_most_32_reads_run_at_a_time),
+        TEST(there_is_room_until_2048_calls_wait),
+        TEST(queues_that_read_share_out_what_runs_together),
+        TEST(a_queue_may_always_read_something),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -59,6 +59,17 @@ static int read_arguments(struct started *fixture, const char *const *arguments)
 
 /* --- options --- */
 
+static void a_backup_to_restore_is_a_path(void **state)
+{
+    struct started *fixture = *state;
+    assert_int_equal(READ(fixture, "--home", "/srv/logbooks"), 0);
+    assert_null(fixture->line.restore);
+    assert_int_equal(READ(fixture, "--restore", "/srv/out/monday"), 0);
+    assert_string_equal(fixture->line.restore, "/srv/out/monday");
+    assert_int_equal(READ(fixture, "--restore="), EX_USAGE);
+    assert_int_equal(READ(fixture, "--restore"), EX_USAGE);
+}
+
 static void every_option_is_taken(void **state)
 {
     struct started *fixture = *state;
@@ -226,6 +237,7 @@ int main(void)
 {
     const struct CMUnitTest tests[] = {
         TEST(every_option_is_taken),
+        TEST(a_backup_to_restore_is_a_path),
         TEST(version_and_help_may_be_asked_for),
         TEST(nothing_is_asked_for_by_default),
         TEST(places_come_from_the_environment),

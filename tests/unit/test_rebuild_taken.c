@@ -124,6 +124,27 @@ static bool take_over(struct taking *taking, uint64_t learned)
     return rebuild_take_over(taking->rebuild, &taking->shared, &trainer);
 }
 
+static void while_it_is_barred_none_begins(void **state)
+{
+    struct taking *taking = *state;
+    uint64_t seq = 0;
+    assert_true(rebuild_bar(taking->rebuild));
+    assert_int_equal(begin(taking, &seq), -EAGAIN);
+    assert_false(rebuild_is_running(taking->rebuild));
+    rebuild_unbar(taking->rebuild);
+    assert_int_equal(begin(taking, &seq), 0);
+}
+
+/* It ends when the trainer takes it, which nobody does here. */
+static void one_that_is_under_way_cannot_be_barred(void **state)
+{
+    struct taking *taking = *state;
+    uint64_t seq = 0;
+    assert_int_equal(begin(taking, &seq), 0);
+    assert_false(rebuild_bar(taking->rebuild));
+    assert_int_equal(begin(taking, &seq), -EBUSY); /* it is not barred either */
+}
+
 static void where_none_is_built_there_is_none_to_take(void **state)
 {
     assert_false(take_over(*state, ITEMS));
@@ -197,6 +218,8 @@ static void none_is_taken_once_it_is_to_stop(void **state)
 int main(void)
 {
     const struct CMUnitTest tests[] = {
+        TEST(while_it_is_barred_none_begins),
+        TEST(one_that_is_under_way_cannot_be_barred),
         TEST(where_none_is_built_there_is_none_to_take),
         TEST(it_is_not_taken_before_the_trainer_has_come_to_where_it_began),
         TEST(taken_it_stands_in_the_place_of_the_old_one_with_all_that_belongs_to_it),

@@ -131,6 +131,10 @@ int model_keeper_load(struct model_store *store, struct model *model, struct sto
     }
     code = model_keeper_load_view(view, model, &learned, error);
     model_view_close(view);
+    if (code == STORE_NOT_FOUND) { /* whoever loads a model has looked whether there is one */
+        *error = (struct store_error){0};
+        code = fail_to_load(error, -EINVAL);
+    }
     return code;
 }
 

@@ -1,6 +1,6 @@
 """A snapshot in Python: what the daemon would say of an item, from the snapshot's files alone.
 
-    desk = Snapshot("export/latest")
+    desk = Snapshot("exports/latest")
     desk.best({"title": "Fog at the Head", "text": "Bell rung till dawn."})     # the likeliest tags
     desk.best(entry, tags=["fog signals"])                                      # what an entry with that tag lacks
 

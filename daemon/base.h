@@ -15,7 +15,7 @@
 
 struct worklist_entry;
 
-/* Bytes of the base's own; valid until its owner moves it on. */
+/* Bytes of the base's own; valid until the next are read, or its owner moves it on. */
 struct base_bytes {
     const unsigned char *data;
     size_t size;

@@ -131,6 +131,10 @@ int model_keeper_load(struct model_store *store, struct model *model, struct sto
     }
     code = model_keeper_load_view(view, model, &learned, error);
     model_view_close(view);
+    if (code == STORE_NOT_FOUND) { /* whoever loads a model has looked whether there is one */
+        *error = (struct store_error){0};
+        code = fail_to_load(error, -EINVAL);
+    }
     return code;
 }
 
@@ -159,6 +163,9 @@ static int store_forgotten(void *user, const struct dictionary_word *word)
 static int store_word(void *user, const struct dictionary_word *word)
 {
     struct storing *storing = user;
+    if (!word->is_new) {
+        return model_store_put_count(storing->writing, word->number, word->count, storing->error);
+    }
     return model_store_put_word(storing->writing,
                                 &(const struct model_store_word){.term = word->term,
                                                                  .term_bytes = word->term_bytes,

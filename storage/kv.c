@@ -397,8 +397,13 @@ int kv_append(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv
 
 int kv_delete(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct store_error *error)
 {
-    MDB_val at = kv_to_val(key);
     txn->deletes = true;
+    return kv_take_out(txn, table, key, error);
+}
+
+int kv_take_out(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct store_error *error)
+{
+    MDB_val at = kv_to_val(key);
     return kv_translate(txn->kv, mdb_del(txn->txn, txn->kv->tables[table], &at, NULL), "deleting",
                         error);
 }
@@ -416,6 +421,17 @@ int kv_count(struct kv_txn *txn, unsigned table, uint64_t *ret_count, struct sto
     int code = mdb_stat(txn->txn, txn->kv->tables[table], &status);
     if (code == MDB_SUCCESS) {
         *ret_count = status.ms_entries;
+    }
+    return kv_translate(txn->kv, code, "counting", error);
+}
+
+int kv_count_pages(struct kv_txn *txn, unsigned table, uint64_t *ret_count,
+                   struct store_error *error)
+{
+    MDB_stat status;
+    int code = mdb_stat(txn->txn, txn->kv->tables[table], &status);
+    if (code == MDB_SUCCESS) {
+        *ret_count = status.ms_leaf_pages;
     }
     return kv_translate(txn->kv, code, "counting", error);
 }

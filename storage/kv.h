@@ -87,12 +87,21 @@ int kv_append(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct kv
 int kv_delete(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct store_error *error)
     __attribute__((warn_unused_result));
 
+/* The same for an entry whose contents stay, in another one: nothing is to be overwritten for it.
+ */
+int kv_take_out(struct kv_txn *txn, unsigned table, struct kv_bytes key, struct store_error *error)
+    __attribute__((warn_unused_result));
+
 /* Empties a table. */
 int kv_clear(struct kv_txn *txn, unsigned table, struct store_error *error)
     __attribute__((warn_unused_result));
 
 int kv_count(struct kv_txn *txn, unsigned table, uint64_t *ret_count, struct store_error *error)
     __attribute__((warn_unused_result));
+
+/* How many pages hold a table's entries; those above them are not counted. */
+int kv_count_pages(struct kv_txn *txn, unsigned table, uint64_t *ret_count,
+                   struct store_error *error) __attribute__((warn_unused_result));
 
 /*
  * Calls `each` for the entries from `from` on (the first at or behind it; an empty key: the very

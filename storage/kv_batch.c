@@ -172,13 +172,16 @@ static int delete_all(struct kv_txn *txn, unsigned table, struct kv_bytes beginn
     return deleting.is_done ? STORE_OK : code;
 }
 
-static int make(struct kv_txn *txn, const struct change_head *head, const unsigned char *bytes,
+static int make(struct kv_txn *txn, const struct kv_batch_steps *steps,
+                const struct change_head *head, const unsigned char *bytes,
                 struct store_error *error)
 {
     struct kv_bytes key = kv_bytes_of(bytes, head->key_bytes);
     if (head->kind == CHANGE_PUT) {
         struct kv_bytes value = kv_bytes_of(bytes + head->key_bytes, head->value_bytes);
-        return kv_put(txn, head->table, key, value, error);
+        return steps->put && steps->put_in == head->table
+                   ? steps->put(steps->user, txn, key, value, error)
+                   : kv_put(txn, head->table, key, value, error);
     }
     if (head->kind == CHANGE_DELETE) {
         int code = kv_delete(txn, head->table, key, error);
@@ -187,28 +190,33 @@ static int make(struct kv_txn *txn, const struct change_head *head, const unsign
     return delete_all(txn, head->table, key, error);
 }
 
-static int make_block(struct kv_txn *txn, const struct batch_block *block,
-                      struct store_error *error)
+static int make_block(struct kv_txn *txn, const struct kv_batch_steps *steps,
+                      const struct batch_block *block, struct store_error *error)
 {
     int code = STORE_OK;
     for (size_t at = 0; at < block->used && code == STORE_OK;) {
         struct change_head head;
         memcpy(&head, block->bytes + at, sizeof head);
-        code = make(txn, &head, block->bytes + at + sizeof head, error);
+        code = make(txn, steps, &head, block->bytes + at + sizeof head, error);
         at += sizeof head + head.key_bytes + head.value_bytes;
     }
     return code;
 }
 
-int kv_batch_commit(struct kv_batch *batch, struct kv *kv, struct store_error *error)
+int kv_batch_commit(struct kv_batch *batch, struct kv *kv, const struct kv_batch_steps *steps,
+                    struct store_error *error)
 {
+    static const struct kv_batch_steps none = {0};
     struct kv_txn *txn = NULL;
     int code = kv_begin(kv, true, &txn, error);
     while (code == STORE_OK && batch->first) {
-        code = make_block(txn, batch->first, error);
+        code = make_block(txn, steps ? steps : &none, batch->first, error);
         drop_first(batch);
     }
     empty(batch);
+    if (code == STORE_OK && steps && steps->last) {
+        code = steps->last(steps->user, txn, error);
+    }
     if (code == STORE_OK) {
         return kv_commit(txn, error);
     }

@@ -32,9 +32,21 @@ int kv_batch_delete(struct kv_batch *batch, unsigned table, struct kv_bytes key,
 int kv_batch_delete_all(struct kv_batch *batch, unsigned table, struct kv_bytes beginning,
                         struct store_error *error) __attribute__((warn_unused_result));
 
+/* What else is to be done on the way. Each may be NULL, and returns STORE_OK or what ends it. */
+struct kv_batch_steps {
+    void *user;
+    /* Instead of a put of the table `put_in`. */
+    unsigned put_in;
+    int (*put)(void *user, struct kv_txn *txn, struct kv_bytes key, struct kv_bytes value,
+               struct store_error *error);
+    /* Once all changes have been made, before they are committed. */
+    int (*last)(void *user, struct kv_txn *txn, struct store_error *error);
+};
+
 /* Makes the changes in a transaction of its own, and gives their memory back on the way: whatever
- * comes of it, the batch is empty then. On failure nothing is changed. */
-int kv_batch_commit(struct kv_batch *batch, struct kv *kv, struct store_error *error)
-    __attribute__((warn_unused_result));
+ * comes of it, the batch is empty then. On failure nothing is changed. `steps` may
+ * be NULL. */
+int kv_batch_commit(struct kv_batch *batch, struct kv *kv, const struct kv_batch_steps *steps,
+                    struct store_error *error) __attribute__((warn_unused_result));
 
 #endif

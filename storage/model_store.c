@@ -9,13 +9,25 @@
 #include "storage/model_store_private.h"
 
 static const char *const TABLE_NAMES[MODEL_TABLES] = {
-    [MODEL_META] = "meta", [MODEL_WORDS] = "words",     [MODEL_CHUNKS] = "chunks",
-    [MODEL_TAGS] = "tags", [MODEL_FIGURES] = "figures", [MODEL_ENTRIES] = "worklist",
+    [MODEL_META] = "meta",     [MODEL_WORDS] = "words",     [MODEL_CHUNKS] = "chunks",
+    [MODEL_TAGS] = "tags",     [MODEL_FIGURES] = "figures", [MODEL_ENTRIES] = "worklist",
+    [MODEL_COUNTS] = "counts", [MODEL_NEWS] = "news",
 };
 
+const struct model_cells MODEL_CELLS_COUNTS = {
+    .table = MODEL_COUNTS, .cell_bytes = 4, .to_a_record = 64, .what = "list of counts"};
+
+const struct model_cells MODEL_CELLS_TAGS = {
+    .table = MODEL_TAGS, .cell_bytes = 36, .to_a_record = 16, .what = "list of tags"};
+
 struct model_store_writing {
-    struct kv *kv;
+    struct model_store *store;
     struct kv_batch *batch;
+    uint64_t chunks; /* put */
+    bool is_wide;    /* they are many; once it is looked at */
+    bool is_looked_at;
+    struct model_cells_changes counts;
+    struct model_cells_changes tags;
     struct codec_writer record;
 };
 
@@ -98,7 +110,9 @@ int model_store_begin(struct model_store *store, struct model_store_writing **re
     if (!made) {
         return store_fail(error, STORE_NO_MEMORY, "out of memory");
     }
-    made->kv = store->kv;
+    made->store = store;
+    made->counts.cells = &MODEL_CELLS_COUNTS;
+    made->tags.cells = &MODEL_CELLS_TAGS;
     int result = kv_batch_new(&made->batch, error);
     if (result != STORE_OK) {
         free(made);
@@ -108,9 +122,38 @@ int model_store_begin(struct model_store *store, struct model_store_writing **re
     return STORE_OK;
 }
 
+/* A chunk is collected without a checksum: there are many of them, and the thread that commits has
+ * the time. */
+static int put_chunk(void *user, struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body,
+                     struct store_error *error)
+{
+    struct model_store_writing *writing = user;
+    if (!writing->is_looked_at) {
+        int code = model_chunks_are_many(txn, writing->chunks, &writing->is_wide, error);
+        if (code != STORE_OK) {
+            return code;
+        }
+        writing->is_looked_at = true;
+    }
+    return model_chunks_put(txn, key, body, writing->is_wide, error);
+}
+
+/* What comes behind the batch's own changes. */
+static int make_rest(void *user, struct kv_txn *txn, struct store_error *error)
+{
+    struct model_store_writing *writing = user;
+    int result = model_cells_make(&writing->counts, txn, error);
+    if (result == STORE_OK) {
+        result = model_cells_make(&writing->tags, txn, error);
+    }
+    return result == STORE_OK ? model_chunks_settle(txn, &writing->store->settled, error) : result;
+}
+
 int model_store_commit(struct model_store_writing *writing, struct store_error *error)
 {
-    int result = kv_batch_commit(writing->batch, writing->kv, error);
+    const struct kv_batch_steps steps = {
+        .user = writing, .put_in = MODEL_CHUNKS, .put = put_chunk, .last = make_rest};
+    int result = kv_batch_commit(writing->batch, writing->store->kv, &steps, error);
     model_store_abort(writing);
     return result;
 }
@@ -119,6 +162,8 @@ void model_store_abort(struct model_store_writing *writing)
 {
     if (writing) {
         kv_batch_free(writing->batch);
+        model_cells_deinit(&writing->counts);
+        model_cells_deinit(&writing->tags);
         codec_deinit(&writing->record);
         free(writing);
     }
@@ -200,8 +245,18 @@ int model_store_put_word(struct model_store_writing *writing, const struct model
 {
     struct codec_writer *record = begin_record(writing);
     codec_put_u32(record, word->number);
-    codec_put_u32(record, word->count);
-    return put_record(writing, MODEL_WORDS, kv_bytes_of(word->term, word->term_bytes), error);
+    int result = put_record(writing, MODEL_WORDS, kv_bytes_of(word->term, word->term_bytes), error);
+    return result == STORE_OK ? model_store_put_count(writing, word->number, word->count, error)
+                              : result;
+}
+
+int model_store_put_count(struct model_store_writing *writing, uint32_t number, uint32_t count,
+                          struct store_error *error)
+{
+    unsigned char bytes[4];
+    struct codec_writer cell = {.data = bytes, .capacity = sizeof bytes};
+    codec_put_u32(&cell, count);
+    return model_cells_note(&writing->counts, number, bytes, error);
 }
 
 int model_store_remove_chunk(struct model_store_writing *writing, uint32_t word, uint32_t number,
@@ -210,7 +265,10 @@ int model_store_remove_chunk(struct model_store_writing *writing, uint32_t word,
     unsigned char key[8];
     codec_key_u32(key, word);
     codec_key_u32(key + 4, number);
-    return kv_batch_delete(writing->batch, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
+    int result = kv_batch_delete(writing->batch, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
+    return result == STORE_OK
+               ? kv_batch_delete(writing->batch, MODEL_NEWS, kv_bytes_of(key, sizeof key), error)
+               : result;
 }
 
 int model_store_forget_word(struct model_store_writing *writing,
@@ -220,38 +278,43 @@ int model_store_forget_word(struct model_store_writing *writing,
     codec_key_u32(beginning, word->number);
     int result = kv_batch_delete(writing->batch, MODEL_WORDS,
                                  kv_bytes_of(word->term, word->term_bytes), error);
-    return result == STORE_OK ? kv_batch_delete_all(writing->batch, MODEL_CHUNKS,
-                                                    kv_bytes_of(beginning, sizeof beginning), error)
-                              : result;
+    if (result == STORE_OK) {
+        result = model_cells_note(&writing->counts, word->number, NULL, error);
+    }
+    const enum model_table tables[] = {MODEL_CHUNKS, MODEL_NEWS};
+    for (size_t i = 0; i < sizeof tables / sizeof tables[0] && result == STORE_OK; i++) {
+        result = kv_batch_delete_all(writing->batch, tables[i],
+                                     kv_bytes_of(beginning, sizeof beginning), error);
+    }
+    return result;
 }
 
 int model_store_put_chunk(struct model_store_writing *writing,
                           const struct model_store_chunk *chunk, struct store_error *error)
 {
-    struct codec_writer *record = begin_record(writing);
-    codec_put_raw(record, chunk->bytes.data, chunk->bytes.size);
     unsigned char key[8];
     codec_key_u32(key, chunk->word);
     codec_key_u32(key + 4, chunk->number);
-    return put_record(writing, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), error);
+    writing->chunks++;
+    return kv_batch_put(writing->batch, MODEL_CHUNKS, kv_bytes_of(key, sizeof key), chunk->bytes,
+                        error);
 }
 
 int model_store_put_tag(struct model_store_writing *writing, const struct model_store_tag *tag,
                         struct store_error *error)
 {
-    struct codec_writer *record = begin_record(writing);
-    codec_put_u32(record, tag->count);
-    codec_put_u32(record, tag->unprompted);
-    codec_put_u32(record, tag->trial_halves);
-    codec_put_u32(record, tag->given_halves);
-    codec_put_f32(record, tag->bias);
-    codec_put_f32(record, tag->bias_accumulator);
-    codec_put_f32(record, tag->shadow_bias);
-    codec_put_f32(record, tag->shadow_bias_accumulator);
-    codec_put_u32(record, tag->last_count);
-    unsigned char key[4];
-    codec_key_u32(key, tag->number);
-    return put_record(writing, MODEL_TAGS, kv_bytes_of(key, sizeof key), error);
+    unsigned char bytes[MODEL_CELLS_MOST_BYTES];
+    struct codec_writer cell = {.data = bytes, .capacity = sizeof bytes};
+    codec_put_u32(&cell, tag->count);
+    codec_put_u32(&cell, tag->unprompted);
+    codec_put_u32(&cell, tag->trial_halves);
+    codec_put_u32(&cell, tag->given_halves);
+    codec_put_f32(&cell, tag->bias);
+    codec_put_f32(&cell, tag->bias_accumulator);
+    codec_put_f32(&cell, tag->shadow_bias);
+    codec_put_f32(&cell, tag->shadow_bias_accumulator);
+    codec_put_u32(&cell, tag->last_count);
+    return model_cells_note(&writing->tags, tag->number, bytes, error);
 }
 
 int model_store_put_figures(struct model_store_writing *writing,

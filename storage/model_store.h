@@ -16,7 +16,7 @@
 #include "storage/store.h"
 
 enum {
-    MODEL_STORE_FORMAT = 4,
+    MODEL_STORE_FORMAT = 5,
     MODEL_STORE_SETTINGS_BYTES = 1024
 };
 
@@ -156,7 +156,10 @@ int model_store_put_head(struct model_store_writing *writing, const struct model
                          struct store_error *error) __attribute__((warn_unused_result));
 int model_store_put_word(struct model_store_writing *writing, const struct model_store_word *word,
                          struct store_error *error) __attribute__((warn_unused_result));
-/* The word and its chunks are gone. */
+/* Of a word whose number is in the store, or has been put: cheaper than to put it once more. */
+int model_store_put_count(struct model_store_writing *writing, uint32_t number, uint32_t count,
+                          struct store_error *error) __attribute__((warn_unused_result));
+/* The word, its count and its chunks are gone. */
 int model_store_forget_word(struct model_store_writing *writing,
                             const struct model_store_word *word, struct store_error *error)
     __attribute__((warn_unused_result));

@@ -8,6 +8,8 @@
 
 #include "storage/codec.h"
 #include "storage/kv.h"
+#include "storage/model_cells.h"
+#include "storage/model_chunks.h"
 #include "storage/model_store.h"
 
 enum model_table {
@@ -17,17 +19,24 @@ enum model_table {
     MODEL_TAGS,
     MODEL_FIGURES,
     MODEL_ENTRIES,
+    MODEL_COUNTS,
+    MODEL_NEWS,
     MODEL_TABLES
 };
 
 struct model_store {
     struct kv *kv;
+    struct model_chunks_settled settled; /* whoever commits has it */
 };
 
 /* As model_store_open, in another folder of the home. */
 int model_store_open_in(const struct store_settings *settings, const char *folder,
                         struct model_store **ret_store, struct store_error *error)
     __attribute__((warn_unused_result));
+
+/* What changes with every item: the counts of words and what is known of tags, by their numbers. */
+extern const struct model_cells MODEL_CELLS_COUNTS;
+extern const struct model_cells MODEL_CELLS_TAGS;
 
 /* The key of the one record in MODEL_META. */
 static inline struct kv_bytes model_store_head_key(void)
@@ -44,8 +53,8 @@ struct model_view;
 /* The transaction of a view. */
 struct kv_txn *model_view_txn(struct model_view *view);
 
-/* Reads a word's record. */
-int model_store_read_word(struct kv_bytes key, struct kv_bytes value,
+/* Reads a word's record, and its count. */
+int model_store_read_word(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes value,
                           struct model_store_word *ret_word, struct store_error *error)
     __attribute__((warn_unused_result));
 

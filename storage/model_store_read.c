@@ -92,16 +92,11 @@ int model_store_open_record(struct kv_bytes key, struct kv_bytes value, const ch
     return STORE_OK;
 }
 
-static int load_tag(void *user, struct kv_cursor *at, struct kv_bytes key, struct kv_bytes value)
+static int load_tag(void *user, uint32_t number, const unsigned char *cell)
 {
-    (void)at;
     const struct loading *loading = user;
-    struct codec_reader reader;
-    int result = model_store_open_record(key, value, "tag", &reader, loading->error);
-    if (result != STORE_OK) {
-        return result;
-    }
-    struct model_store_tag tag = {.number = codec_u32_of_key(key.data)};
+    struct codec_reader reader = {.data = cell, .size = MODEL_CELLS_TAGS.cell_bytes};
+    struct model_store_tag tag = {.number = number};
     tag.count = codec_get_u32(&reader);
     tag.unprompted = codec_get_u32(&reader);
     tag.trial_halves = codec_get_u32(&reader);
@@ -112,6 +107,13 @@ static int load_tag(void *user, struct kv_cursor *at, struct kv_bytes key, struc
     tag.shadow_bias_accumulator = codec_get_f32(&reader);
     tag.last_count = codec_get_u32(&reader);
     return loading->sink->tag(loading->sink->user, &tag);
+}
+
+static int load_tags(void *user, struct kv_cursor *at, struct kv_bytes key, struct kv_bytes value)
+{
+    (void)at;
+    const struct loading *loading = user;
+    return model_cells_of_record(&MODEL_CELLS_TAGS, key, value, load_tag, user, loading->error);
 }
 
 static int load_figures(void *user, struct kv_cursor *at, struct kv_bytes key,
@@ -145,7 +147,7 @@ int model_view_load(struct model_view *view, const struct model_store_sink *sink
     static const struct {
         enum model_table table;
         kv_each each;
-    } walks[] = {{MODEL_TAGS, load_tag}, {MODEL_FIGURES, load_figures}};
+    } walks[] = {{MODEL_TAGS, load_tags}, {MODEL_FIGURES, load_figures}};
     struct loading loading = {.sink = sink, .error = error};
     int result = STORE_OK;
     for (size_t i = 0; i < sizeof walks / sizeof walks[0] && result == STORE_OK; i++) {

@@ -30,11 +30,8 @@ static struct model_store_tagged get_tagged(struct codec_reader *reader, uint32_
 
 struct model_view {
     struct kv_txn *txn;
-    struct kv_cursor *chunks;  /* NULL until it is needed */
-    struct kv_cursor *entries; /* likewise */
-    bool is_at_chunk;
-    uint32_t word; /* where the cursor over the chunks is */
-    uint32_t number;
+    struct model_chunks_reader chunks;
+    struct kv_cursor *entries; /* NULL until it is needed */
     bool is_at_entry;
     uint64_t entry;
     struct tagged_room gaps;
@@ -60,7 +57,7 @@ int model_view_open(struct model_store *store, struct model_view **ret_view,
 void model_view_close(struct model_view *view)
 {
     if (view) {
-        kv_cursor_close(view->chunks);
+        model_chunks_deinit(&view->chunks);
         kv_cursor_close(view->entries);
         kv_abort(view->txn);
         free(view);
@@ -81,49 +78,28 @@ static int need_cursor(const struct model_view *view, enum model_table table,
 /* --- chunks -------------------------------------------------------------------------------------
  */
 
-static int find_chunk(struct model_view *view, struct kv_bytes wanted, bool is_next,
-                      struct kv_bytes *ret_value, struct store_error *error)
-{
-    struct kv_bytes key = {0};
-    int result = need_cursor(view, MODEL_CHUNKS, &view->chunks, error);
-    if (result == STORE_OK) {
-        result = is_next ? kv_next(view->chunks, &key, ret_value, error)
-                         : kv_seek(view->chunks, wanted, &key, ret_value, error);
-    }
-    if (result == STORE_OK &&
-        (key.size != wanted.size || memcmp(key.data, wanted.data, key.size) != 0)) {
-        return STORE_NOT_FOUND;
-    }
-    return result;
-}
-
 int model_view_chunk(struct model_view *view, uint32_t word, uint32_t number,
                      struct kv_bytes *ret_bytes, struct store_error *error)
 {
-    unsigned char key[8];
-    codec_key_u32(key, word);
-    codec_key_u32(key + 4, number);
-    bool is_next = view->is_at_chunk && view->word == word && view->number + 1 == number;
-    struct kv_bytes value = {0};
-    int result = find_chunk(view, kv_bytes_of(key, sizeof key), is_next, &value, error);
-    view->is_at_chunk = result == STORE_OK;
-    view->word = word;
-    view->number = number;
-    struct codec_reader reader;
-    if (result == STORE_OK) {
-        result =
-            model_store_open_record(kv_bytes_of(key, sizeof key), value, "chunk", &reader, error);
-    }
-    if (result == STORE_OK) {
-        *ret_bytes = kv_bytes_of(reader.data + reader.at, reader.size - reader.at);
-    }
-    return result;
+    return model_chunks_read(&view->chunks, view->txn, word, number, ret_bytes, error);
 }
 
 /* --- words --------------------------------------------------------------------------------------
  */
 
-int model_store_read_word(struct kv_bytes key, struct kv_bytes value,
+static int read_count(struct kv_txn *txn, uint32_t number, uint32_t *ret_count,
+                      struct store_error *error)
+{
+    const unsigned char *cell = NULL;
+    int result = model_cells_get(&MODEL_CELLS_COUNTS, txn, number, &cell, error);
+    if (result == STORE_OK) {
+        struct codec_reader reader = {.data = cell, .size = MODEL_CELLS_COUNTS.cell_bytes};
+        *ret_count = codec_get_u32(&reader);
+    }
+    return result;
+}
+
+int model_store_read_word(struct kv_txn *txn, struct kv_bytes key, struct kv_bytes value,
                           struct model_store_word *ret_word, struct store_error *error)
 {
     struct codec_reader reader;
@@ -131,11 +107,16 @@ int model_store_read_word(struct kv_bytes key, struct kv_bytes value,
     if (result != STORE_OK) {
         return result;
     }
-    *ret_word = (struct model_store_word){.term = key.data, .term_bytes = key.size};
-    ret_word->number = codec_get_u32(&reader);
-    ret_word->count = codec_get_u32(&reader);
-    return reader.failed ? store_fail(error, STORE_CORRUPT, "a stored word of the model is damaged")
-                         : STORE_OK;
+    struct model_store_word word = {.term = key.data, .term_bytes = key.size};
+    word.number = codec_get_u32(&reader);
+    result = reader.failed ? STORE_NOT_FOUND : read_count(txn, word.number, &word.count, error);
+    if (result == STORE_NOT_FOUND) {
+        return store_fail(error, STORE_CORRUPT, "a stored word of the model is damaged");
+    }
+    if (result == STORE_OK) {
+        *ret_word = word;
+    }
+    return result;
 }
 
 int model_view_word(struct model_view *view, const char *term, size_t term_bytes,
@@ -144,7 +125,8 @@ int model_view_word(struct model_view *view, const char *term, size_t term_bytes
     struct kv_bytes value = {0};
     struct kv_bytes key = kv_bytes_of(term, term_bytes);
     int result = kv_get(view->txn, MODEL_WORDS, key, &value, error);
-    return result == STORE_OK ? model_store_read_word(key, value, ret_word, error) : result;
+    return result == STORE_OK ? model_store_read_word(view->txn, key, value, ret_word, error)
+                              : result;
 }
 
 /* --- entries ------------------------------------------------------------------------------------

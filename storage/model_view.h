@@ -14,10 +14,10 @@ int model_view_open(struct model_store *store, struct model_view **ret_view,
                     struct store_error *error) __attribute__((warn_unused_result));
 void model_view_close(struct model_view *view);
 
-/* All of these: STORE_NOT_FOUND, without a sentence, where there is no such thing. Bytes are valid
- * until the view is closed. */
+/* All of these: STORE_NOT_FOUND, without a sentence, where there is no such thing. */
 
-/* A chunk's bytes; fastest for a word's chunks in their order. */
+/* A chunk's bytes, valid until the next chunk is read; fastest for a word's chunks in their order.
+ */
 int model_view_chunk(struct model_view *view, uint32_t word, uint32_t number,
                      struct kv_bytes *ret_bytes, struct store_error *error)
     __attribute__((warn_unused_result));

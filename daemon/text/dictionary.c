@@ -35,6 +35,7 @@ struct dictionary {
     struct entry_list
         lists[DICTIONARY_STATES]; /* by state, in the order in which words came to it */
     uint64_t entry_bytes;
+    size_t new_count; /* words that are not forgotten and whose numbers are not stored */
 };
 
 /* What the allocator adds to a block, about. */
@@ -235,6 +236,7 @@ static int place(struct dictionary *dictionary, const char *term, size_t bytes,
     }
     entry->number = word->number;
     entry->count = word->count;
+    entry->is_stored = state == DICTIONARY_CLEAN;
     const struct dictionary_entry *forgotten =
         dictionary_table_find_term(&dictionary->by_term, entry->hash, term, bytes);
     if (forgotten) {
@@ -255,6 +257,7 @@ static int add_new(struct dictionary *dictionary, const char *term, size_t bytes
         place(dictionary, term, bytes, &word, DICTIONARY_CHANGED) < 0) {
         return -ENOMEM;
     }
+    dictionary->new_count++;
     dictionary->totals.next_number++;
     dictionary->totals.size++;
     *ret_word = word.number;
@@ -306,6 +309,7 @@ void dictionary_remove(struct dictionary *dictionary, uint32_t word)
     dictionary_table_take_out(&dictionary->by_number, entry);
     move(dictionary, entry, DICTIONARY_FORGOTTEN);
     entry->count = 0;
+    dictionary->new_count -= entry->is_stored ? 0 : 1;
     dictionary->totals.size--;
 }
 
@@ -321,7 +325,8 @@ static int tell(const struct entry_list *list,
         const struct dictionary_word word = {.term = entry->term,
                                              .term_bytes = entry->bytes,
                                              .number = entry->number,
-                                             .count = entry->count};
+                                             .count = entry->count,
+                                             .is_new = !entry->is_stored};
         result = told(user, &word);
     }
     return result;
@@ -364,7 +369,12 @@ bool dictionary_stored(struct dictionary *dictionary)
     for (; left > 0 && dictionary->lists[DICTIONARY_LEAVING].first; left--) {
         drop(dictionary, dictionary->lists[DICTIONARY_LEAVING].first);
     }
-    move_some(dictionary, DICTIONARY_SEALED, DICTIONARY_CLEAN, &left);
+    for (; left > 0 && dictionary->lists[DICTIONARY_SEALED].first; left--) {
+        struct dictionary_entry *entry = dictionary->lists[DICTIONARY_SEALED].first;
+        dictionary->new_count -= entry->is_stored ? 0 : 1;
+        entry->is_stored = true;
+        move(dictionary, entry, DICTIONARY_CLEAN);
+    }
     return left == 0;
 }
 
@@ -400,6 +410,12 @@ size_t dictionary_changed_count(const struct dictionary *dictionary)
         all += state == DICTIONARY_CLEAN ? 0 : dictionary->lists[state].count;
     }
     return all;
+}
+
+size_t dictionary_changed_terms(const struct dictionary *dictionary)
+{
+    return dictionary->new_count + dictionary->lists[DICTIONARY_FORGOTTEN].count +
+           dictionary->lists[DICTIONARY_LEAVING].count;
 }
 
 size_t dictionary_size(const struct dictionary *dictionary)

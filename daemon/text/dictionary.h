@@ -43,6 +43,7 @@ struct dictionary_word {
     size_t term_bytes;
     uint32_t number;
     uint32_t count; /* 0 of a forgotten one */
+    bool is_new;    /* its number has not been stored, or it is not known yet whether it has */
 };
 
 /* `key` is a secret, so that nobody can choose terms that collide. Returns 0 or -ENOMEM. */
@@ -93,8 +94,9 @@ int dictionary_changes(const struct dictionary *dictionary,
                        int (*gone)(void *user, const struct dictionary_word *word), void *user)
     __attribute__((warn_unused_result));
 
-/* How many words that tells of. */
+/* How many words that tells of, and how many of them are forgotten or new. */
 size_t dictionary_changed_count(const struct dictionary *dictionary);
+size_t dictionary_changed_terms(const struct dictionary *dictionary);
 
 /*
  * What has changed is on its way to the base, as it is now; what was sealed before and did not

@@ -33,6 +33,7 @@ struct dictionary_entry {
     uint32_t number;
     uint32_t count;
     unsigned char state;
+    bool is_stored; /* the base has its number */
     bool is_recent; /* interned again since it came or since trimming passed over it */
     char term[];
 };

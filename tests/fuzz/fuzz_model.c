@@ -84,11 +84,31 @@ static int put_one(struct model_store_writing *writing, uint32_t number, struct 
     const struct model_store_figures figures = {
         .kind = 2, .number = number, .count = VALUES, .values = values};
     int code = model_store_put_word(writing, &word, error);
+    bytes[0] ^= 1U; /* what it was: see put_news */
     code |= model_store_put_chunk(writing, &chunk, error);
     code |= model_store_put_tag(writing, &tag, error);
     code |= model_store_put_figures(writing, &figures, error);
     code |= model_store_put_entry(writing, &entry, error);
     return code;
+}
+
+/* What the chunks are, as news of them. */
+static void put_news(void)
+{
+    struct store_error error = {0};
+    struct kv_txn *txn = NULL;
+    unsigned char bytes[CHUNK_BYTES];
+    unsigned char key[MODEL_CHUNKS_KEY];
+    FUZZ_NEED(kv_begin(world.store->kv, true, &txn, &error) == STORE_OK, error.text);
+    for (uint32_t number = 0; number < EACH; number++) {
+        fill_chunk(number, bytes);
+        codec_key_u32(key, number / 2);
+        codec_key_u32(key + 4, number % 2);
+        int code = model_chunks_put(txn, kv_bytes_of(key, sizeof key),
+                                    kv_bytes_of(bytes, sizeof bytes), false, &error);
+        FUZZ_NEED(code == STORE_OK, error.text);
+    }
+    FUZZ_NEED(kv_commit(txn, &error) == STORE_OK, error.text);
 }
 
 static void put_all(void)
@@ -105,6 +125,7 @@ static void put_all(void)
     }
     FUZZ_NEED(code == STORE_OK, error.text);
     FUZZ_NEED(model_store_commit(writing, &error) == STORE_OK, error.text);
+    put_news();
 }
 
 static void open_world(void)

@@ -80,6 +80,12 @@ static int set_up_model_3(void **state)
     return 0;
 }
 
+static int set_up_model_4(void **state)
+{
+    *state = home_as_left("store-3-model-4");
+    return 0;
+}
+
 static void start(struct service *service)
 {
     undertagd_start(&service->daemon);
@@ -155,6 +161,10 @@ int main(void)
         cmocka_unit_test_setup_teardown(what_was_stored_is_there, set_up_model_3,
                                         service_tear_down),
         cmocka_unit_test_setup_teardown(it_goes_on_in_todays_format, set_up_model_3,
+                                        service_tear_down),
+        cmocka_unit_test_setup_teardown(what_was_stored_is_there, set_up_model_4,
+                                        service_tear_down),
+        cmocka_unit_test_setup_teardown(it_goes_on_in_todays_format, set_up_model_4,
                                         service_tear_down),
     };
     return cmocka_run_group_tests_name("earlier formats", tests, NULL, NULL);

@@ -118,6 +118,31 @@ static void after_a_restart_it_is_counted_from_the_last_one(void **state)
     assert_true(whole(json_array_get(list, 1), "seq") >= first + 50);
 }
 
+/* --- by time ------------------------------------------------------------------------------------
+ */
+
+/* Has its manifest say that it was made some years ago. */
+static void make_old(struct service *service, const char *manifest)
+{
+    json_t *object = snapshots_read(service, manifest);
+    assert_int_equal(json_object_set_new(object, "at", json_string("2020-01-02T03:04:05Z")), 0);
+    assert_int_equal(json_dump_file(object, snapshots_path(service, manifest), 0), 0);
+}
+
+static void one_is_written_once_the_last_is_old_enough(void **state)
+{
+    struct service *service = *state;
+    file(service, 10);
+    (void)ask(&service->peer, "snapshot.write", "{'name': 'spring'}");
+    make_old(service, "spring/manifest.json");
+    service->daemon.settings[0] = "snapshot_every=1440"; /* minutes: a day */
+    service_stop_and_start(service);
+    file(service, 1);
+    const json_t *list = wait_until_listed(service, 2);
+    assert_string_equal(string(json_array_get(list, 0), "name"), "spring");
+    assert_int_equal(whole(json_array_get(list, 1), "seq"), 11);
+}
+
 /* --- at SIGUSR1 --------------------------------------------------------------------------------
  */
 
@@ -232,6 +257,7 @@ int main(void)
         TEST(one_is_written_after_so_many_changes, set_up_every_50),
         TEST(the_next_comes_as_many_changes_later, set_up_every_50),
         TEST(after_a_restart_it_is_counted_from_the_last_one, set_up_every_50),
+        TEST(one_is_written_once_the_last_is_old_enough, set_up),
         TEST(a_signal_has_one_written, set_up),
         TEST(it_is_written_as_the_options_say, set_up_with_options),
         TEST(a_signal_with_nothing_filed_is_told_and_does_no_harm, set_up),

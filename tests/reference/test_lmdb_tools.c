@@ -198,13 +198,15 @@ static void the_tools_count_the_entries_of_the_model(void **state)
     if (!statistics) {
         skip();
     }
-    assert_int_equal(entries(statistics, "Main DB"), 6); /* tables */
+    assert_int_equal(entries(statistics, "Main DB"), 8); /* tables */
     assert_int_equal(entries(statistics, "meta"), 1);
     assert_int_equal(entries(statistics, "words"), 2);
     assert_int_equal(entries(statistics, "chunks"), 1);
     assert_int_equal(entries(statistics, "tags"), 0);
     assert_int_equal(entries(statistics, "figures"), 0);
     assert_int_equal(entries(statistics, "worklist"), 1);
+    assert_int_equal(entries(statistics, "counts"), 1); /* of both words */
+    assert_int_equal(entries(statistics, "news"), 0);
 }
 
 #define TEST(name) cmocka_unit_test_setup_teardown(name, fixture_setup, fixture_teardown)

@@ -41,7 +41,7 @@ static void put(struct batching *batching, unsigned table, const char *key, cons
 
 static int commit(struct batching *batching)
 {
-    return kv_batch_commit(batching->batch, batching->kv, &batching->error);
+    return kv_batch_commit(batching->batch, batching->kv, NULL, &batching->error);
 }
 
 static int set_up(void **state)
@@ -220,6 +220,60 @@ static void nothing_collected_is_nothing_to_change(void **state)
     kv_batch_free(NULL);
 }
 
+/* --- what else is done on the way --- */
+
+static int put_twice(void *user, struct kv_txn *txn, struct kv_bytes key, struct kv_bytes value,
+                     struct store_error *error)
+{
+    (void)user;
+    int code = kv_put(txn, LAMPS, key, value, error);
+    return code == STORE_OK ? kv_put(txn, SHIPS, key, value, error) : code;
+}
+
+static void puts_of_one_table_may_be_made_otherwise(void **state)
+{
+    struct batching *batching = *state;
+    const struct kv_batch_steps steps = {.put_in = LAMPS, .put = put_twice};
+    put(batching, LAMPS, "c", "red");
+    put(batching, SHIPS, "d", "ketch");
+    assert_int_equal(kv_batch_commit(batching->batch, batching->kv, &steps, &batching->error),
+                     STORE_OK);
+    assert_holds(batching, LAMPS, "b white; c red; ");
+    assert_holds(batching, SHIPS, "c red; d ketch; ");
+}
+
+/* Sees what was put, and fails if it is told to. */
+static int look_last(void *user, struct kv_txn *txn, struct store_error *error)
+{
+    const bool *fails = user;
+    struct kv_bytes value = {0};
+    assert_int_equal(kv_get(txn, LAMPS, bytes_of("c"), &value, error), STORE_OK);
+    return *fails ? store_fail(error, STORE_CORRUPT, "the last step fails")
+                  : kv_put(txn, SHIPS, bytes_of("last"), value, error);
+}
+
+static void the_last_step_sees_all_changes(void **state)
+{
+    struct batching *batching = *state;
+    bool fails = false;
+    const struct kv_batch_steps steps = {.user = &fails, .last = look_last};
+    put(batching, LAMPS, "c", "red");
+    assert_int_equal(kv_batch_commit(batching->batch, batching->kv, &steps, &batching->error),
+                     STORE_OK);
+    assert_holds(batching, SHIPS, "last red; ");
+}
+
+static void nothing_is_changed_where_the_last_step_fails(void **state)
+{
+    struct batching *batching = *state;
+    bool fails = true;
+    const struct kv_batch_steps steps = {.user = &fails, .last = look_last};
+    put(batching, LAMPS, "c", "red");
+    assert_int_equal(kv_batch_commit(batching->batch, batching->kv, &steps, &batching->error),
+                     STORE_CORRUPT);
+    assert_holds(batching, LAMPS, "b white; ");
+}
+
 int main(void)
 {
 #define batch_test(name) cmocka_unit_test_setup_teardown(name, set_up, tear_down)
@@ -234,6 +288,9 @@ int main(void)
         batch_test(a_batch_is_empty_once_it_was_committed),
         batch_test(where_there_is_no_room_nothing_is_changed),
         batch_test(nothing_collected_is_nothing_to_change),
+        batch_test(puts_of_one_table_may_be_made_otherwise),
+        batch_test(the_last_step_sees_all_changes),
+        batch_test(nothing_is_changed_where_the_last_step_fails),
     };
     return cmocka_run_group_tests_name("collected changes", tests, NULL, NULL);
 }

@@ -401,7 +401,7 @@ static void a_model_of_a_newer_version_is_refused_with_a_sentence(void **state)
     write_entry(stored, "meta", "model", newer, sizeof newer);
     assert_int_equal(model_store_read_head(stored->store, &head, &stored->error), STORE_NEWER);
     assert_string_equal(stored->error.text, "the model was written by a newer version of undertag "
-                                            "(format 5, this version reads up to 4)");
+                                            "(format 6, this version reads up to 5)");
 }
 
 /* Nobody's: whoever asks whose it is finds neither his store nor his settings. */
@@ -438,7 +438,7 @@ static void a_part_whose_checksum_is_wrong_is_damage(void **state)
     stored->error = (struct store_error){0};
     write_entry(stored, "tags", "gale", wrong, sizeof wrong);
     assert_int_equal(load(stored), STORE_CORRUPT);
-    assert_string_equal(stored->error.text, "a stored tag of the model is damaged");
+    assert_string_equal(stored->error.text, "a stored list of tags of the model is damaged");
     assert_string_equal(stored->seen, "");
 }
 

@@ -261,8 +261,34 @@ static void assert_same_entries(const struct pair *pair, uint64_t most)
     model_view_close(views[1]);
 }
 
-/* As model_store.c names them; without the worklist, whose scores may differ in age. */
-static const char *const tables[] = {"words", "chunks", "tags", "figures"};
+/* Chunk by chunk, as they are with their news. */
+static void assert_same_chunks(const struct pair *pair)
+{
+    struct model_view *views[2] = {look(pair->small), look(pair->large)};
+    struct store_error *error = &pair->small->error;
+    struct model_store_head head;
+    struct kv_bytes found[2] = {{0}, {0}};
+    uint64_t count = 0;
+    assert_int_equal(model_store_read_head(pair->large->model_store, &head, error), STORE_OK);
+    for (uint32_t word = 0; word < head.next_word; word++) {
+        uint32_t number = 0;
+        while (model_view_chunk(views[1], word, number, &found[1], error) == STORE_OK) {
+            assert_int_equal(model_view_chunk(views[0], word, number++, &found[0], error),
+                             STORE_OK);
+            assert_int_equal(found[0].size, found[1].size);
+            assert_memory_equal(found[0].data, found[1].data, found[1].size);
+            count++;
+        }
+        assert_int_equal(model_view_chunk(views[0], word, number, &found[0], error),
+                         STORE_NOT_FOUND);
+    }
+    assert_true(count > head.words / 2);
+    model_view_close(views[0]);
+    model_view_close(views[1]);
+}
+
+/* As model_store.c names them; without the worklist, whose scores may differ in age, and chunks. */
+static const char *const tables[] = {"words", "counts", "tags", "figures"};
 
 enum {
     TABLES = 4,
@@ -349,6 +375,7 @@ static void assert_same_in_the_end(const struct pair *pair, uint64_t count)
     stop(pair->large);
     assert_int_equal(pair->large->kept_count, 1);
     assert_same_entries(pair, count);
+    assert_same_chunks(pair);
     close_model(pair->small);
     close_model(pair->large);
     struct kv *small = open_tables(pair->small);

@@ -258,6 +258,10 @@ static bool must_wait(struct trainer *trainer)
     if (trainer_is_full(trainer)) {
         trainer_end_storing(trainer, true); /* that may make room */
     }
+    if (trainer_is_full(trainer)) { /* by what was learned meanwhile */
+        trainer_store_if_due(trainer);
+        trainer_end_storing(trainer, true);
+    }
     bool waits = trainer_is_full(trainer);
     if (waits != trainer->waits) {
         trainer->waits = waits;

@@ -58,23 +58,6 @@ int kv_translate(const struct kv *kv, int code, const char *doing, struct store_
 /* --- the environment ---------------------------------------------------------------------------
  */
 
-static int open_tables(struct kv *kv, struct store_error *error)
-{
-    MDB_txn *txn = NULL;
-    int code = mdb_txn_begin(kv->env, NULL, kv->read_only ? MDB_RDONLY : 0, &txn);
-    for (unsigned i = 0; i < kv->table_count && code == MDB_SUCCESS; i++) {
-        code = mdb_dbi_open(txn, kv->names[i], kv->read_only ? 0 : MDB_CREATE, &kv->tables[i]);
-    }
-    if (code == MDB_SUCCESS) {
-        code = mdb_txn_commit(txn);
-        txn = NULL;
-    }
-    if (txn) {
-        mdb_txn_abort(txn);
-    }
-    return kv_translate(kv, code, "opening its tables", error);
-}
-
 int kv_open_environment(struct kv *kv, struct store_error *error)
 {
     int dead = 0;
@@ -99,7 +82,7 @@ int kv_open_environment(struct kv *kv, struct store_error *error)
         (void)mdb_reader_check(kv->env, &dead); /* only tidies up: a failure changes nothing */
     }
     if (result == STORE_OK) {
-        result = open_tables(kv, error);
+        result = kv_open_tables(kv, error);
     }
     if (result != STORE_OK && kv->env) {
         mdb_env_close(kv->env);
@@ -114,6 +97,8 @@ static int prepare(struct kv *made, const struct kv_settings *settings, struct s
     made->reserve_bytes = settings->reserve_bytes;
     made->names = settings->tables;
     made->table_count = settings->table_count;
+    made->earlier_names = settings->earlier_tables;
+    made->earlier_count = settings->earlier_count;
     made->read_only = settings->read_only;
     made->is_alone = settings->read_only && settings->is_alone;
     made->round.due = true; /* an earlier life may have ended between erasing and scrubbing */

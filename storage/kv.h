@@ -42,11 +42,15 @@ struct kv_settings {
     const char *const *tables; /* names; a table is then named by its place in the list; borrowed
                                   until kv_close */
     unsigned table_count;
+    const char *const
+        *earlier_tables; /* names that earlier versions gave to tables; borrowed too */
+    unsigned earlier_count;
     bool read_only; /* nothing is made or changed, not even on opening, but for LMDB's lock file; */
     bool is_alone;  /* nor that: nobody else opens it. With read_only */
 };
 
-/* Opens or makes the environment with its tables. */
+/* Opens or makes the environment with its tables. STORE_CORRUPT where one is missing beside one
+ * that nobody knows; STORE_NOT_FOUND where one is missing otherwise, read-only. */
 int kv_open(const struct kv_settings *settings, struct kv **ret_kv, struct store_error *error)
     __attribute__((warn_unused_result));
 void kv_close(struct kv *kv);

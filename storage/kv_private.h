@@ -1,7 +1,6 @@
 /*
- * kv_private: the insides of an environment, for the files that know LMDB: kv.c,
- * kv_copy.c, kv_cursor.c, kv_pages.c and
- * kv_scrub.c.
+ * kv_private: the insides of an environment, for the files that know LMDB: kv.c, kv_copy.c,
+ * kv_cursor.c, kv_pages.c, kv_scrub.c and kv_tables.c.
  */
 #ifndef UNDERTAG_KV_PRIVATE_H
 #define UNDERTAG_KV_PRIVATE_H
@@ -27,6 +26,8 @@ struct kv {
     size_t reserve_bytes;
     const char *const *names;
     unsigned table_count;
+    const char *const *earlier_names;
+    unsigned earlier_count;
     bool read_only;
     bool is_alone;
     MDB_dbi tables[KV_TABLES];
@@ -72,6 +73,10 @@ void kv_leave(struct kv *kv);
 /* Opens the environment and its tables; on failure there is none. The gate is the caller's. */
 int kv_open_environment(struct kv *kv, struct store_error *error)
     __attribute__((warn_unused_result));
+
+/* Opens the tables of an open environment, or makes them. STORE_CORRUPT: the list of their names is
+ * damaged; STORE_NOT_FOUND: read-only, and one was never made. */
+int kv_open_tables(struct kv *kv, struct store_error *error) __attribute__((warn_unused_result));
 
 /* Closes the environment and opens it again; false where a transaction was in the way for a moment,
  * or where it could not be opened. Outside a transaction and the gate. */

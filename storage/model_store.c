@@ -14,6 +14,9 @@ static const char *const TABLE_NAMES[MODEL_TABLES] = {
     [MODEL_COUNTS] = "counts", [MODEL_NEWS] = "news",
 };
 
+/* Of the formats 1 and 2. */
+static const char *const EARLIER_NAMES[] = {"bins", "shadow_chunks"};
+
 const struct model_cells MODEL_CELLS_COUNTS = {
     .table = MODEL_COUNTS, .cell_bytes = 4, .to_a_record = 64, .what = "list of counts"};
 
@@ -54,6 +57,9 @@ int model_store_open_in(const struct store_settings *settings, const char *folde
                                       .reserve_bytes = settings->reserve_bytes,
                                       .tables = TABLE_NAMES,
                                       .table_count = MODEL_TABLES,
+                                      .earlier_tables = EARLIER_NAMES,
+                                      .earlier_count =
+                                          sizeof EARLIER_NAMES / sizeof EARLIER_NAMES[0],
                                       .read_only = settings->read_only,
                                       .is_alone = settings->is_alone};
     int result = kv_open(&kv_settings, &made->kv, error);

@@ -4,6 +4,7 @@
  */
 #include <setjmp.h>
 #include <stdarg.h>
+#include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
 
@@ -156,6 +157,12 @@ static uint64_t sum_of(const char *directory, const char *const *tables, unsigne
     return sum;
 }
 
+/* One of the bits is in the number of the format. */
+static bool is_another_version(const char *output)
+{
+    return strstr(output, "written by a newer version") || strstr(output, "of an early version");
+}
+
 /* Not in the two first pages, of which LMDB uses the one that was written last. */
 static void turn_bits(struct service *service, const char *folder, const char *const *tables,
                       unsigned count)
@@ -174,8 +181,9 @@ static void turn_bits(struct service *service, const char *folder, const char *c
         int bit = (int)repeatable_below(&random, 8);
         turn_bit(path, at, bit);
         verify(service->daemon.home, NULL);
-        told += run.exit_code == EX_DATAERR;
-        assert_true(run.exit_code == 0 || run.exit_code == EX_DATAERR);
+        told += run.exit_code != 0;
+        assert_true(run.exit_code == 0 || run.exit_code == EX_DATAERR ||
+                    is_another_version(run.output));
         if (run.exit_code == 0) {
             assert_true(sum_of(directory, tables, count) == sound);
         }

@@ -103,7 +103,8 @@ struct backlog_numbers {
 
 struct backlog_numbers backlog_read(struct backlog *backlog);
 
-/* Of the writer and the trainer. What they do here moves it; the writer also waits elsewhere. */
+/* Of the writer, the trainer and the storer. What the first two do here moves it; the writer also
+ * waits elsewhere. */
 struct heartbeat *backlog_heartbeat(struct backlog *backlog);
 
 /* Everybody who waits returns, now and from now on. */

@@ -33,7 +33,8 @@ enum heart heartbeat_look(const struct heartbeat *heartbeat, struct heartbeat_wa
 
 const char *heartbeat_name(enum heart heart)
 {
-    static const char *const NAMES[HEART_COUNT] = {
-        [HEART_WRITER] = "the writer", [HEART_TRAINER] = "the trainer"};
+    static const char *const NAMES[HEART_COUNT] = {[HEART_WRITER] = "the writer",
+                                                   [HEART_TRAINER] = "the trainer",
+                                                   [HEART_STORER] = "the storer of the model"};
     return heart < HEART_COUNT ? NAMES[heart] : "nobody";
 }

@@ -14,6 +14,7 @@
 enum heart {
     HEART_WRITER,
     HEART_TRAINER,
+    HEART_STORER,
     HEART_COUNT
 };
 

@@ -67,7 +67,7 @@ static int refuse(char *error, const struct option *option, const char *value)
     case TYPE_PATH:
         return snprintf(error, OPTIONS_ERROR_BYTES,
                         "option %s is a path of 1 to %d bytes of UTF-8, without control "
-                        "characters, not '%s'",
+                        "characters, blanks at its ends or a remark (' ;'), not '%s'",
                         option->name, OPTIONS_PATH_BYTES - 1, value);
     case TYPE_NUMBER:
         break;
@@ -166,11 +166,19 @@ static bool set_language(char *member, const char *value)
     return true;
 }
 
+/* A file of options could not say it: blanks at its ends, and what may be a remark there. */
+static bool is_for_a_file(const char *value)
+{
+    size_t bytes = strlen(value);
+    return value[0] != ' ' && value[0] != ';' && value[bytes - 1] != ' ' && !strstr(value, " ;");
+}
+
 /* A path goes into sentences and answers, so it is text. */
 static bool set_path(char *member, const char *value)
 {
     size_t bytes = strlen(value);
-    if (bytes == 0 || bytes >= OPTIONS_PATH_BYTES || u8_check((const uint8_t *)value, bytes)) {
+    if (bytes == 0 || bytes >= OPTIONS_PATH_BYTES || u8_check((const uint8_t *)value, bytes) ||
+        !is_for_a_file(value)) {
         return false;
     }
     for (size_t i = 0; i < bytes; i++) {

@@ -25,12 +25,21 @@ struct storer {
     struct storer_result result;
 };
 
+static void beat(void *user)
+{
+    struct storer *storer = user;
+    heartbeat_work(backlog_heartbeat(storer->backlog), HEART_STORER);
+}
+
 static void commit(struct storer *storer, struct model_store_writing *writing)
 {
     struct storer_result result = {0};
     uint64_t begun_us = clock_steady_us();
+    beat(storer);
+    model_store_watch(writing, beat, storer);
     result.code = model_store_commit(writing, &result.error);
     result.took_us = clock_steady_us() - begun_us;
+    heartbeat_rest(backlog_heartbeat(storer->backlog), HEART_STORER);
     sync_lock(&storer->mutex);
     storer->result = result;
     storer->is_done = true;

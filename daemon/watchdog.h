@@ -1,8 +1,8 @@
 /*
  * watchdog: tells the system's manager that the daemon is alive, where the manager wants to know,
- * at twice the rate that it asks for: from the loop, and only while the writer and the trainer have
- * moved since the last time or wait for work. So when one of the three hangs the daemon is started
- * again. Loop thread only.
+ * at twice the rate that it asks for: from the loop, and only while the writer, the trainer and the
+ * storer have moved since the last time or wait for work. So when one of the four hangs the daemon
+ * is started again. Loop thread only.
  */
 #ifndef UNDERTAG_WATCHDOG_H
 #define UNDERTAG_WATCHDOG_H

@@ -212,6 +212,9 @@ int kv_batch_commit(struct kv_batch *batch, struct kv *kv, const struct kv_batch
     while (code == STORE_OK && batch->first) {
         code = make_block(txn, steps ? steps : &none, batch->first, error);
         drop_first(batch);
+        if (steps && steps->moved) {
+            steps->moved(steps->user);
+        }
     }
     empty(batch);
     if (code == STORE_OK && steps && steps->last) {

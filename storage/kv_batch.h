@@ -39,6 +39,8 @@ struct kv_batch_steps {
     unsigned put_in;
     int (*put)(void *user, struct kv_txn *txn, struct kv_bytes key, struct kv_bytes value,
                struct store_error *error);
+    /* Now and then, some entries further: for whoever watches that it goes on. */
+    void (*moved)(void *user);
     /* Once all changes have been made, before they are committed. */
     int (*last)(void *user, struct kv_txn *txn, struct store_error *error);
 };

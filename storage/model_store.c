@@ -29,6 +29,8 @@ struct model_store_writing {
     uint64_t chunks; /* put */
     bool is_wide;    /* they are many; once it is looked at */
     bool is_looked_at;
+    void (*moved)(void *user); /* may be NULL */
+    void *moved_user;
     struct model_cells_changes counts;
     struct model_cells_changes tags;
     struct codec_writer record;
@@ -144,24 +146,43 @@ static int put_chunk(void *user, struct kv_txn *txn, struct kv_bytes key, struct
     return model_chunks_put(txn, key, body, writing->is_wide, error);
 }
 
+static void tell_moved(void *user)
+{
+    struct model_store_writing *writing = user;
+    if (writing->moved) {
+        writing->moved(writing->moved_user);
+    }
+}
+
 /* What comes behind the batch's own changes. */
 static int make_rest(void *user, struct kv_txn *txn, struct store_error *error)
 {
     struct model_store_writing *writing = user;
     int result = model_cells_make(&writing->counts, txn, error);
+    tell_moved(writing);
     if (result == STORE_OK) {
         result = model_cells_make(&writing->tags, txn, error);
+        tell_moved(writing);
     }
     return result == STORE_OK ? model_chunks_settle(txn, &writing->store->settled, error) : result;
 }
 
 int model_store_commit(struct model_store_writing *writing, struct store_error *error)
 {
-    const struct kv_batch_steps steps = {
-        .user = writing, .put_in = MODEL_CHUNKS, .put = put_chunk, .last = make_rest};
+    const struct kv_batch_steps steps = {.user = writing,
+                                         .put_in = MODEL_CHUNKS,
+                                         .put = put_chunk,
+                                         .moved = tell_moved,
+                                         .last = make_rest};
     int result = kv_batch_commit(writing->batch, writing->store->kv, &steps, error);
     model_store_abort(writing);
     return result;
+}
+
+void model_store_watch(struct model_store_writing *writing, void (*moved)(void *user), void *user)
+{
+    writing->moved = moved;
+    writing->moved_user = user;
 }
 
 void model_store_abort(struct model_store_writing *writing)

@@ -148,6 +148,9 @@ int model_store_commit(struct model_store_writing *writing, struct store_error *
     __attribute__((warn_unused_result));
 void model_store_abort(struct model_store_writing *writing);
 
+/* Whom a commit tells now and then that it goes on: by the thread that commits. */
+void model_store_watch(struct model_store_writing *writing, void (*moved)(void *user), void *user);
+
 /* Forgets everything. */
 int model_store_clear(struct model_store_writing *writing, struct store_error *error)
     __attribute__((warn_unused_result));

@@ -274,6 +274,28 @@ static void nothing_is_changed_where_the_last_step_fails(void **state)
     assert_holds(batching, LAMPS, "b white; ");
 }
 
+static void count_moves(void *user)
+{
+    ++*(unsigned *)user;
+}
+
+static void whoever_watches_is_told_on_the_way(void **state)
+{
+    struct batching *batching = *state;
+    unsigned moves = 0;
+    const struct kv_batch_steps steps = {.user = &moves, .moved = count_moves};
+    char key[16];
+    char value[1024] = "";
+    memset(value, 'w', sizeof value - 1);
+    for (int i = 0; i < 300; i++) {
+        (void)snprintf(key, sizeof key, "lamp %03d", i);
+        put(batching, LAMPS, key, value);
+    }
+    assert_int_equal(kv_batch_commit(batching->batch, batching->kv, &steps, &batching->error),
+                     STORE_OK);
+    assert_in_range(moves, 2, 299); /* more than at its end, less than at every entry */
+}
+
 int main(void)
 {
 #define batch_test(name) cmocka_unit_test_setup_teardown(name, set_up, tear_down)
@@ -290,6 +312,7 @@ int main(void)
         batch_test(nothing_collected_is_nothing_to_change),
         batch_test(puts_of_one_table_may_be_made_otherwise),
         batch_test(the_last_step_sees_all_changes),
+        batch_test(whoever_watches_is_told_on_the_way),
         batch_test(nothing_is_changed_where_the_last_step_fails),
     };
     return cmocka_run_group_tests_name("collected changes", tests, NULL, NULL);

@@ -315,6 +315,21 @@ static void a_pair_sets_one_option(void **state)
     assert_int_equal(options->connections_limit, 7);
 }
 
+/* Or what daemon.state tells of it could not be written into one. */
+static void a_path_that_a_file_could_not_say_is_refused(void **state)
+{
+    struct configured *configured = *state;
+    static const char *const PAIRS[] = {"export_dir= lamps", "export_dir=lamps ", "export_dir=;x",
+                                        "export_dir=lamps ;ships"};
+    for (size_t i = 0; i < sizeof PAIRS / sizeof PAIRS[0]; i++) {
+        assert_int_equal(options_set_pair(&configured->options, PAIRS[i], configured->error), -1);
+        assert_non_null(strstr(configured->error, "option export_dir is a path of"));
+    }
+    assert_string_equal(configured->options.export_dir, "exports");
+    assert_int_equal(
+        options_set_pair(&configured->options, "export_dir=old lamps;2", configured->error), 0);
+}
+
 /* --- reloading --- */
 
 static void a_reload_takes_only_what_it_may(void **state)
@@ -422,6 +437,7 @@ int main(void)
         TEST(an_unknown_option_is_refused),
         TEST(an_endless_value_is_refused_with_a_sentence_that_fits),
         TEST(a_pair_sets_one_option),
+        TEST(a_path_that_a_file_could_not_say_is_refused),
         TEST(a_reload_takes_only_what_it_may),
         TEST(a_reload_of_the_same_holds_nothing_back),
         TEST(the_learning_text_changes_with_an_option_of_learning_and_only_then),

@@ -47,8 +47,11 @@ static void append_named(json_t **by_name, const char *name, int32_t first, int3
     if (!json_object_get(*by_name, name)) {
         answer_add(by_name, name, json_array());
     }
+    if (!*by_name) {
+        return;
+    }
     json_t *range = json_pack("[i, i]", (int)first, (int)last);
-    if (*by_name && json_array_append_new(json_object_get(*by_name, name), range) < 0) {
+    if (json_array_append_new(json_object_get(*by_name, name), range) < 0) {
         json_decref(*by_name);
         *by_name = NULL;
     }

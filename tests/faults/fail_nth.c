@@ -31,9 +31,11 @@ void *__libc_malloc(size_t size);
 void *__libc_calloc(size_t count, size_t size);
 void *__libc_realloc(void *memory, size_t size);
 void *__libc_memalign(size_t alignment, size_t size);
+void __libc_free(void *memory);
 /* NOLINTEND(bugprone-reserved-identifier) */
 
 static struct fail_control *control;
+static atomic_long blocks; /* of memory that somebody has */
 
 __attribute__((constructor)) static void map_control(void)
 {
@@ -49,6 +51,14 @@ __attribute__((constructor)) static void map_control(void)
                                    MAP_SHARED, fd, 0L);
     (void)syscall(SYS_close, fd);
     control = mapped == MAP_FAILED ? NULL : mapped;
+}
+
+/* Behind all that the program does itself, when it ends by exit or from main. */
+__attribute__((destructor)) static void tell_what_is_left(void)
+{
+    if (control) {
+        atomic_store(&control->blocks_left, atomic_load(&blocks));
+    }
 }
 
 static void copy_name(char *to, size_t size, const char *from)
@@ -101,24 +111,52 @@ static bool fails(enum fail_kind kind, const char *call, const void *site)
 
 /* --- memory ---------------------------------------------------------------------------------- */
 
+static void *count_block(void *memory)
+{
+    if (memory) {
+        (void)atomic_fetch_add(&blocks, 1);
+    }
+    return memory;
+}
+
 void *malloc(size_t size)
 {
-    return FAILS(FAIL_MALLOC, "malloc") ? NULL : __libc_malloc(size);
+    return FAILS(FAIL_MALLOC, "malloc") ? NULL : count_block(__libc_malloc(size));
 }
 
 void *calloc(size_t count, size_t size)
 {
-    return FAILS(FAIL_MALLOC, "calloc") ? NULL : __libc_calloc(count, size);
+    return FAILS(FAIL_MALLOC, "calloc") ? NULL : count_block(__libc_calloc(count, size));
 }
 
+/* One that becomes a block, or is one no more, counts; glibc gives back what is made as small as 0.
+ */
 void *realloc(void *memory, size_t size)
 {
-    return FAILS(FAIL_MALLOC, "realloc") ? NULL : __libc_realloc(memory, size);
+    if (FAILS(FAIL_MALLOC, "realloc")) {
+        return NULL;
+    }
+    void *moved = __libc_realloc(memory, size);
+    if (!memory) {
+        (void)count_block(moved);
+    } else if (size == 0) {
+        (void)atomic_fetch_sub(&blocks, 1);
+    }
+    return moved;
+}
+
+void free(void *memory)
+{
+    if (memory) {
+        (void)atomic_fetch_sub(&blocks, 1);
+    }
+    __libc_free(memory);
 }
 
 void *aligned_alloc(size_t alignment, size_t size)
 {
-    return FAILS(FAIL_MALLOC, "aligned_alloc") ? NULL : __libc_memalign(alignment, size);
+    return FAILS(FAIL_MALLOC, "aligned_alloc") ? NULL
+                                               : count_block(__libc_memalign(alignment, size));
 }
 
 int posix_memalign(void **ret_memory, size_t alignment, size_t size)
@@ -127,7 +165,7 @@ int posix_memalign(void **ret_memory, size_t alignment, size_t size)
     if (!memory) {
         return ENOMEM;
     }
-    *ret_memory = memory;
+    *ret_memory = count_block(memory);
     return 0;
 }
 

@@ -134,6 +134,7 @@ bool patient_start(struct patient *patient, bool with_shim)
         argv[count++] = "--set";
         argv[count++] = daemon->settings[i];
     }
+    atomic_store(&patient->control->blocks_left, -1);
     run(&daemon->child, patient, argv, with_shim);
     uint64_t last_ms = clock_steady_ms() + DEADLINE_MS;
     while (clock_steady_ms() < last_ms && !patient_has_ended(patient)) {

@@ -96,11 +96,45 @@ static void play_kind(struct scene *scene, scene_round play)
     }
 }
 
+/* What a daemon leaves for which nothing fails: what libraries never give back. */
+static long blocks_of_undisturbed(struct scene *scene, scene_round play)
+{
+    scene->kind = FAIL_MALLOC;
+    scene->n = N_MOST;
+    if (scene->is_up) {
+        scene_stop(scene);
+        scene_restart_clean(scene, 0);
+    }
+    if (play(scene)) {
+        scene_wrong(scene, "there is no end of calls to fail");
+    }
+    if (scene->is_up) {
+        scene_stop(scene);
+        scene_restart_clean(scene, 0);
+    }
+    return scene->blocks_left;
+}
+
+static void look_for_leaks(struct scene *scene, scene_round play)
+{
+    long most = scene->blocks_most;
+    long undisturbed = blocks_of_undisturbed(scene, play);
+    (void)printf("%s: %ld blocks of memory left at most, %ld where nothing fails\n", scene->name,
+                 most, undisturbed);
+    if (undisturbed < 0 || most > undisturbed) {
+        scene_wrong(scene, "%ld blocks of memory are left behind %s, n = %u; %ld otherwise", most,
+                    fail_kind_title(scene->most_kind), scene->most_n, undisturbed);
+    }
+}
+
 void scene_play(struct scene *scene, scene_round play)
 {
     for (int kind = 0; kind < FAIL_KINDS; kind++) {
         scene->kind = (enum fail_kind)kind;
         play_kind(scene, play);
+    }
+    if (scene->wrong == 0) {
+        look_for_leaks(scene, play);
     }
 }
 
@@ -148,11 +182,22 @@ static void check_end(struct scene *scene, int exit_code, bool may_be_0)
     }
 }
 
+static void note_blocks(struct scene *scene)
+{
+    scene->blocks_left = atomic_load(&scene->patient.control->blocks_left);
+    if (scene->blocks_left > scene->blocks_most) {
+        scene->blocks_most = scene->blocks_left;
+        scene->most_kind = scene->kind;
+        scene->most_n = scene->n;
+    }
+}
+
 void scene_stop(struct scene *scene)
 {
     if (scene->patient.daemon.child.pid > 0) {
         bool had_ended = patient_has_ended(&scene->patient);
         check_end(scene, patient_end(&scene->patient), !had_ended);
+        note_blocks(scene);
     }
     scene->is_up = false;
     scene->needs_restart = false;

@@ -3,7 +3,8 @@
  * left to fail. What must hold after each: it is up and answers, or has ended with a sentence and a
  * code of sysexits.h; nothing hangs; each request was answered with a result or with an error that
  * does not blame it, or its connection was closed; and after a clean restart without the shim what
- * was acknowledged is there, what was refused is not, and the home is whole.
+ * was acknowledged is there, what was refused is not, and the home is whole. And no memory leaks: a
+ * daemon that ends has no more blocks than one for which nothing failed.
  */
 #ifndef UNDERTAG_TESTS_SCENE_H
 #define UNDERTAG_TESTS_SCENE_H
@@ -25,6 +26,10 @@ struct scene {
     unsigned sparse; /* of many calls only each so many-th of those that would be taken; 0: all */
     unsigned since_look; /* rounds since all was looked at */
     unsigned wrong;      /* what did not hold */
+    long blocks_left;    /* by the last life with the shim; -1: it did not end by itself */
+    long blocks_most;    /* of all lives in which something failed, and by which round: */
+    enum fail_kind most_kind;
+    unsigned most_n;
     void *own;
 };
 

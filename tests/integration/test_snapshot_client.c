@@ -130,7 +130,7 @@ static void at_a_terminal_a_bar_grows_and_goes_before_the_answer(void **state)
     char *end = strstr(output, "\r\033[K");
     assert_non_null(strstr(output, "\u2588")); /* of the bar */
     assert_non_null(strstr(output, " %   "));
-    assert_non_null(strstr(output, " MB a second"));
+    assert_non_null(strstr(output, "B a second")); /* MB, or kB on a busy machine */
     assert_non_null(end);
     char *answer = strstr(output, "snapshot");
     assert_non_null(answer);

@@ -247,8 +247,14 @@ static void write_model(struct opened *opened, const char *table, struct kv_byte
     struct kv *kv = NULL;
     struct kv_txn *txn = NULL;
     (void)snprintf(directory, sizeof directory, "%s/model", opened->home);
-    const struct kv_settings settings = {
-        .directory = directory, .map_bytes = FIXTURE_MAP_BYTES, .tables = &table, .table_count = 1};
+    static const char *const OTHERS[] = {"chunks", "counts", "figures", "meta",
+                                         "news",   "tags",   "words",   "worklist"};
+    const struct kv_settings settings = {.directory = directory,
+                                         .map_bytes = FIXTURE_MAP_BYTES,
+                                         .tables = &table,
+                                         .table_count = 1,
+                                         .earlier_tables = OTHERS,
+                                         .earlier_count = sizeof OTHERS / sizeof OTHERS[0]};
     assert_int_equal(kv_open(&settings, &kv, &error), STORE_OK);
     assert_int_equal(kv_begin(kv, true, &txn, &error), STORE_OK);
     assert_int_equal(kv_put(txn, 0, key, value, &error), STORE_OK);

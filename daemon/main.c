@@ -49,8 +49,9 @@ struct program {
     struct server *server;
     int passed_fd; /* a socket that was passed in; 0: none, or given to the server */
     struct watchdog watchdog;
-    bool is_watched; /* the watchdog is open */
-    int exit_code;   /* of what closing found */
+    bool is_watched;      /* the watchdog is open */
+    uv_work_t first_work; /* see start_pool */
+    int exit_code;        /* of what closing found */
 };
 
 /* --- stopping -----------------------------------------------------------------------------------
@@ -306,6 +307,25 @@ static int start(struct program *program)
     return listen_at(program);
 }
 
+static void do_nothing(uv_work_t *work)
+{
+    (void)work;
+}
+
+static void note_nothing(uv_work_t *work, int status)
+{
+    (void)work;
+    (void)status;
+}
+
+/* libuv makes its threads when the first work is queued, and aborts where it cannot: rather now
+ * than when the first question comes. */
+static void start_pool(struct program *program)
+{
+    int code = uv_queue_work(&program->loop, &program->first_work, do_nothing, note_nothing);
+    assert(code == 0); /* fails only without a callback */
+}
+
 static void tell_ready(struct program *program)
 {
     struct backlog_numbers numbers = engine_count(program->engine).progress;
@@ -348,6 +368,7 @@ static int serve(struct program *program)
     }
     int exit_code = start(program);
     if (exit_code == 0) {
+        start_pool(program);
         tell_ready(program);
     } else {
         close_all(program);

@@ -151,6 +151,11 @@ static int open_environments(struct engine *engine, const char *home, char *erro
     }
     if (model_store_open(&engine->places, &engine->model_store, &reason) != STORE_OK) {
         store_close(engine->store);
+        if (reason.code == STORE_CORRUPT) {
+            size_t used = strlen(reason.text);
+            (void)snprintf(reason.text + used, sizeof reason.text - used,
+                           "; remove the folder model and start again: it is learned anew");
+        }
         return fail_store(error, &reason);
     }
     return 0;

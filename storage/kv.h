@@ -42,8 +42,7 @@ struct kv_settings {
     const char *const *tables; /* names; a table is then named by its place in the list; borrowed
                                   until kv_close */
     unsigned table_count;
-    const char *const
-        *earlier_tables; /* names that earlier versions gave to tables; borrowed too */
+    const char *const *earlier_tables; /* names that only earlier versions gave; borrowed, too */
     unsigned earlier_count;
     bool read_only; /* nothing is made or changed, not even on opening, but for LMDB's lock file; */
     bool is_alone;  /* nor that: nobody else opens it. With read_only */

@@ -46,8 +46,7 @@ struct fail_control {
     char symbol[FAIL_NAME_BYTES]; /* the exported one before the call site; "" */
     uint64_t offset;              /* of the call site in the module */
 
-    atomic_long
-        blocks_left; /* of memory at the end of the last run; -1 where it did not come so far */
+    atomic_long blocks_left; /* of memory at a run's end; -1: it did not come so far */
 };
 
 #endif

@@ -11,6 +11,7 @@ enum {
     COST_OF_A_CHANGE = 400, /* counts move and a few tags are learned whatever the text */
     COST_OF_A_TAG = 60,
     ROOM_LEAST = 100 * 1000,     /* cost that may always wait, some 100 short items */
+    ROOM_PART = 8,               /* of the room must be there before more is committed */
     RATE_FIRST = 2 * 1000 * 1000 /* cost a second, until measured: less than any machine does */
 };
 
@@ -116,14 +117,27 @@ static bool is_catching_up(const struct backlog *backlog)
     return backlog->numbers.learned < backlog->found;
 }
 
+/* Of what is promised: all of the room that there may be. */
+static uint64_t room_at_most(const struct backlog *backlog)
+{
+    double most = backlog->rate * (double)backlog->visible_within_ms / 1000.0 * BEHIND_SHARE;
+    return most > ROOM_LEAST ? (uint64_t)most : ROOM_LEAST;
+}
+
 static uint64_t room(const struct backlog *backlog)
 {
     if (is_catching_up(backlog)) {
         return backlog->catch_up_room;
     }
-    double most = backlog->rate * (double)backlog->visible_within_ms / 1000.0 * BEHIND_SHARE;
-    uint64_t limit = most > ROOM_LEAST ? (uint64_t)most : ROOM_LEAST;
+    uint64_t limit = room_at_most(backlog);
     return backlog->cost_behind < limit ? limit - backlog->cost_behind : 0;
+}
+
+/* Whether there is enough of it: a commit costs as much for a few changes as for many. */
+static bool has_room(const struct backlog *backlog)
+{
+    return is_catching_up(backlog) ? backlog->catch_up_room > 0
+                                   : room(backlog) >= room_at_most(backlog) / ROOM_PART;
 }
 
 /* Then nobody waits for what will not come, or not soon. */
@@ -136,7 +150,7 @@ uint64_t backlog_wait_for_room(struct backlog *backlog)
 {
     heartbeat_rest(&backlog->heartbeat, HEART_WRITER);
     sync_lock(&backlog->mutex);
-    while (room(backlog) == 0 && !backlog->stopping && !is_nobody_learning(backlog)) {
+    while (!has_room(backlog) && !backlog->stopping && !is_nobody_learning(backlog)) {
         (void)pthread_cond_wait(&backlog->learned_more, &backlog->mutex);
     }
     uint64_t cost = is_nobody_learning(backlog) ? UINT64_MAX : room(backlog);

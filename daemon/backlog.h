@@ -37,8 +37,8 @@ uint64_t backlog_cost(size_t text_bytes, size_t tags);
 /* --- writer --- */
 
 /*
- * Waits until the trainer is near enough for more to be committed (or stops, or has failed);
- * returns how much cost may be committed now, 1 at least.
+ * Waits until the trainer is near enough for more to be committed (or stops, or has failed), by so
+ * much that it is worth a commit; returns how much cost may be committed now, 1 at least.
  */
 uint64_t backlog_wait_for_room(struct backlog *backlog);
 

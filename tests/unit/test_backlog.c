@@ -179,9 +179,21 @@ static void the_writer_waits_until_the_trainer_is_nearer(void **state)
     assert_waits(&fixture->waiter);
     backlog_kept(fixture->backlog, 1); /* not what it waits for */
     assert_waits(&fixture->waiter);
-    backlog_learned(fixture->backlog, 1, 50 * 1000, 0);
+    backlog_learned(fixture->backlog, 1, 150 * 1000, 0);
     waiter_join(&fixture->waiter);
-    assert_int_equal(fixture->returned, 50 * 1000);
+    assert_int_equal(fixture->returned, 150 * 1000);
+}
+
+static void the_writer_waits_for_an_eighth_of_the_room(void **state)
+{
+    struct fixture *fixture = *state;
+    backlog_committed(fixture->backlog, 3, ROOM, 0);
+    waiter_start(&fixture->waiter, wait_for_room, fixture);
+    backlog_learned(fixture->backlog, 1, ROOM / 8 - 1, 0);
+    assert_waits(&fixture->waiter);
+    backlog_learned(fixture->backlog, 2, 1, 0);
+    waiter_join(&fixture->waiter);
+    assert_int_equal(fixture->returned, ROOM / 8);
 }
 
 /* --- the backlog of a start --- */
@@ -447,6 +459,7 @@ int main(void)
         TEST(a_short_promise_leaves_room_for_some_short_items),
         TEST(the_room_follows_the_rate_that_is_measured),
         TEST(the_writer_waits_until_the_trainer_is_nearer),
+        TEST(the_writer_waits_for_an_eighth_of_the_room),
         TEST(while_it_catches_up_half_of_what_is_learned_may_come),
         TEST(what_comes_while_it_catches_up_is_not_promised),
         TEST(once_it_has_caught_up_what_comes_is_promised),

@@ -6,9 +6,8 @@ static void end(struct read_job *job)
 {
     struct call *call = job->call;
     char *text = job->text;
-    bool has_result = job->result != NULL;
+    bool has_result = job->has_result;
     struct fault fault = job->fault;
-    json_decref(job->result);
     if (job->release) {
         job->release(job);
     }
@@ -43,7 +42,11 @@ static void on_work(uv_work_t *work)
     struct read_job *job = work->data;
     job->run(job);
     if (job->result) {
+        job->has_result = true;
         job->text = call_result_text(job->call, job->result); /* a large one takes a while */
+        /* Where it was made: memory that comes back to this thread is at hand for its next job. */
+        json_decref(job->result);
+        job->result = NULL;
     }
 }
 

@@ -9,6 +9,7 @@
 #define UNDERTAG_READ_JOB_H
 
 #include <jansson.h>
+#include <stdbool.h>
 #include <uv.h>
 
 #include "daemon/call.h"
@@ -23,6 +24,7 @@ struct read_job {
     void (*run)(struct read_job *job);
     void (*release)(struct read_job *job); /* frees what the method has added; may be NULL */
     json_t *result;                        /* NULL without a fault: no memory */
+    bool has_result;                       /* private */
     char *text;                            /* private */
     struct fault fault;
 };

@@ -172,13 +172,18 @@ static json_t *words_json(const struct model_question *question, const struct mo
     return words;
 }
 
+/* Made for every gap of every answer: what is known to be right is not checked again. */
 static json_t *gap_json(const char *name, const struct model_question *question,
                         const struct model_gap *gap)
 {
-    json_t *entry =
-        json_pack("{s:s, s:f, s:f}", "tag", name, "chance", gap->chance, "score", gap->score);
-    if (entry && question->why &&
-        json_object_set_new(entry, "words", words_json(question, gap)) < 0) {
+    json_t *entry = json_object();
+    int code = json_object_set_new_nocheck(entry, "tag", json_string_nocheck(name));
+    code |= json_object_set_new_nocheck(entry, "chance", json_real(gap->chance));
+    code |= json_object_set_new_nocheck(entry, "score", json_real(gap->score));
+    if (question->why) {
+        code |= json_object_set_new_nocheck(entry, "words", words_json(question, gap));
+    }
+    if (code < 0) {
         json_decref(entry);
         return NULL;
     }

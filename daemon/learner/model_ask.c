@@ -130,20 +130,68 @@ static void unbar_tags(const struct asker *asker, const uint32_t *tags, size_t c
 }
 
 /* --- candidates ---------------------------------------------------------------------------------
+ * The best so far, `most` of them at most, however many tags there are: a heap with the worst of
+ * them on top.
  */
+
+/* By falling chance, then score; the tag's number makes the order the same every time. */
+static int compare_gaps(const void *left, const void *right)
+{
+    const struct model_gap *a = left;
+    const struct model_gap *b = right;
+    if (a->chance != b->chance) {
+        return a->chance > b->chance ? -1 : 1;
+    }
+    if (a->score != b->score) {
+        return a->score > b->score ? -1 : 1;
+    }
+    return a->tag < b->tag ? -1 : a->tag > b->tag;
+}
+
+static void exchange(struct model_gap *one, struct model_gap *other)
+{
+    struct model_gap held = *one;
+    *one = *other;
+    *other = held;
+}
+
+static void rise(struct model_gap *heap, size_t at)
+{
+    while (at > 0 && compare_gaps(&heap[at], &heap[(at - 1) / 2]) > 0) {
+        exchange(&heap[at], &heap[(at - 1) / 2]);
+        at = (at - 1) / 2;
+    }
+}
+
+static void sink(struct model_gap *heap, size_t count)
+{
+    for (size_t at = 0, worst = 1; worst < count; worst = 2 * at + 1) {
+        if (worst + 1 < count && compare_gaps(&heap[worst + 1], &heap[worst]) > 0) {
+            worst++;
+        }
+        if (compare_gaps(&heap[worst], &heap[at]) <= 0) {
+            return;
+        }
+        exchange(&heap[worst], &heap[at]);
+        at = worst;
+    }
+}
 
 static int add_candidate(const struct asker *asker, uint32_t tag, double score, double chance,
                          size_t *count)
 {
     struct model_scratch *scratch = asker->scratch;
-    if (GROW(&scratch->gaps, &scratch->gap_capacity, *count + 1) < 0) {
-        return -ENOMEM;
+    const struct model_gap gap = {.tag = tag, .chance = chance, .score = score};
+    if (*count < asker->question->most) {
+        if (GROW(&scratch->gaps, &scratch->gap_capacity, *count + 1) < 0) {
+            return -ENOMEM;
+        }
+        scratch->gaps[*count] = gap;
+        rise(scratch->gaps, (*count)++);
+    } else if (*count > 0 && compare_gaps(&gap, &scratch->gaps[0]) < 0) {
+        scratch->gaps[0] = gap;
+        sink(scratch->gaps, *count);
     }
-    struct model_gap *gap = &scratch->gaps[(*count)++];
-    gap->tag = tag;
-    gap->chance = chance;
-    gap->score = score;
-    gap->word_count = 0;
     return 0;
 }
 
@@ -220,20 +268,6 @@ static int gather(const struct asker *asker, chance_sum barred_rest, size_t *ret
         result = gather_every(asker, false, ret_count, &counted_already);
     }
     return result;
-}
-
-/* By falling chance, then score; the tag's number makes the order the same every time. */
-static int compare_gaps(const void *left, const void *right)
-{
-    const struct model_gap *a = left;
-    const struct model_gap *b = right;
-    if (a->chance != b->chance) {
-        return a->chance > b->chance ? -1 : 1;
-    }
-    if (a->score != b->score) {
-        return a->score > b->score ? -1 : 1;
-    }
-    return a->tag < b->tag ? -1 : a->tag > b->tag;
 }
 
 /* --- the words that speak for a tag -------------------------------------------------------------
@@ -356,15 +390,14 @@ int model_ask(const struct model *model, const struct model_question *question,
     if (count > 1) { /* with none there may be no array, which qsort does not allow */
         qsort(scratch->gaps, count, sizeof *scratch->gaps, compare_gaps);
     }
-    size_t shown = count < question->most ? count : question->most;
-    if (question->why && shown > 0) {
-        result = explain(&asker, shown);
+    if (question->why && count > 0) {
+        result = explain(&asker, count);
     }
     if (result < 0) {
         return result;
     }
     *ret_answer = (struct model_answer){.gaps = scratch->gaps,
-                                        .gap_count = shown,
+                                        .gap_count = count,
                                         .expected = (double)expected / CHANCE_UNIT,
                                         .early = calibrators_early(&model->curves)};
     return 0;

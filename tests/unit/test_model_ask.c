@@ -119,6 +119,23 @@ static void no_more_than_are_asked_for_are_listed(void **state)
     assert_int_equal(learner_answer(*state, &question).gap_count, 0);
 }
 
+static void the_first_of_all_are_listed_however_few_are_asked_for(void **state)
+{
+    struct entry entry;
+    struct model_gap all[STREAM_TAGS];
+    struct model_question question = draft_question(&entry);
+    struct model_answer answer = learner_answer(*state, &question);
+    assert_int_equal(answer.gap_count, STREAM_TAGS);
+    memcpy(all, answer.gaps, sizeof all);
+    for (question.most = 1; question.most < STREAM_TAGS; question.most++) {
+        answer = learner_answer(*state, &question);
+        assert_int_equal(answer.gap_count, question.most);
+        for (size_t i = 0; i < answer.gap_count; i++) {
+            assert_int_equal(answer.gaps[i].tag, all[i].tag);
+        }
+    }
+}
+
 static void nothing_below_the_floor_is_listed(void **state)
 {
     struct entry entry;
@@ -390,6 +407,7 @@ int main(void)
         stream_test(what_one_question_excludes_the_next_may_propose),
         stream_test(a_given_tag_that_nobody_knows_is_passed_over),
         stream_test(no_more_than_are_asked_for_are_listed),
+        stream_test(the_first_of_all_are_listed_however_few_are_asked_for),
         stream_test(nothing_below_the_floor_is_listed),
         stream_test(asking_changes_nothing),
         stream_test(an_answer_follows_what_was_learned_since),

@@ -1,5 +1,6 @@
 /*
- * grow: an array that grows by half when it is full; what is new is zero.
+ * grow: an array that grows by half when it is full, by an eighth once it is large; what is new is
+ * zero.
  */
 #ifndef UNDERTAG_GROW_H
 #define UNDERTAG_GROW_H

@@ -33,7 +33,8 @@
 
 enum {
     SIGNALS = 4,
-    SPARE_DESCRIPTORS = 64
+    SPARE_DESCRIPTORS = 64,
+    LARGE_BYTES = 1 << 20 /* an array's, to be mapped for itself */
 };
 
 struct program {
@@ -403,6 +404,9 @@ int main(int argc, char **argv)
     /* The threads share two heaps: one each would hold holes that nobody else can use. It may only
      * fail for an argument that is none. */
     (void)mallopt(M_ARENA_MAX, 2);
+    /* Large arrays stay out of the heaps, whatever was freed before: they grow without being
+     * copied, and what is freed is gone. */
+    (void)mallopt(M_MMAP_THRESHOLD, LARGE_BYTES);
     json_memory_watch();
     /* At random, and before there are threads: nobody can choose names that collide. */
     json_object_seed(0);

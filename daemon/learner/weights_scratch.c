@@ -50,13 +50,17 @@ uint64_t weights_scratch_bytes(const struct weights_scratch *scratch)
     return bytes;
 }
 
+enum {
+    ROOM_PART = 8 /* in reserve, for tags to come */
+};
+
 int scratch_reserve_tags(struct weights_scratch *scratch, size_t count, size_t lanes)
 {
     scratch->lanes = lanes;
     if (count <= scratch->tag_capacity && lanes <= scratch->lanes_room) {
         return 0;
     }
-    size_t wanted = count <= scratch->tag_capacity ? count : count + count / 4;
+    size_t wanted = count <= scratch->tag_capacity ? count : count + count / ROOM_PART;
     size_t room = lanes > scratch->lanes_room ? lanes : scratch->lanes_room;
     float *sums = malloc((wanted * room + 1) * sizeof *sums);
     uint32_t *touched = malloc((wanted + 1) * sizeof *touched);

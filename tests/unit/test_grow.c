@@ -1,4 +1,4 @@
-/* An array that grows by half when it is full. */
+/* An array that grows by half when it is full, or by an eighth. */
 #include "daemon/grow.h"
 
 #include <errno.h>
@@ -35,6 +35,22 @@ static void what_is_new_is_zero_and_what_was_there_stays(void **state)
     for (uint32_t i = 0; i < 12; i++) {
         assert_int_equal(array[i], i < 8 ? i + 1 : 0);
     }
+    free(array);
+}
+
+static void from_a_mebibyte_on_it_grows_by_an_eighth(void **state)
+{
+    (void)state;
+    uint32_t *array = NULL;
+    size_t capacity = 0;
+    size_t mebibyte = (1U << 20U) / sizeof *array;
+    assert_int_equal(GROW(&array, &capacity, mebibyte - 8), 0);
+    assert_int_equal(GROW(&array, &capacity, mebibyte), 0);
+    assert_int_equal(capacity, mebibyte - 8 + (mebibyte - 8) / 2);
+    size_t before = capacity;
+    assert_int_equal(GROW(&array, &capacity, before + 1), 0);
+    assert_int_equal(capacity, before + before / 8);
+    assert_int_equal(array[capacity - 1], 0);
     free(array);
 }
 
@@ -81,6 +97,7 @@ int main(void)
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(an_empty_array_gets_room_for_eight),
         cmocka_unit_test(what_is_new_is_zero_and_what_was_there_stays),
+        cmocka_unit_test(from_a_mebibyte_on_it_grows_by_an_eighth),
         cmocka_unit_test(a_great_need_is_met_at_once),
         cmocka_unit_test(where_there_is_room_nothing_happens),
         cmocka_unit_test(more_than_can_be_addressed_is_refused_with_nothing_changed),

@@ -99,6 +99,16 @@ static int take_up(struct build *build, const struct options *options, bool *ret
     return code;
 }
 
+/* What grows with the tags is not to be had for what can be let go of. */
+static void share_memory(struct build *build)
+{
+    struct model_size size;
+    model_measure(build->model, &size);
+    uint64_t taken = size.counts_bytes + model_scratch_bytes(build->scratch);
+    build->shares = memory_shares_of(build->settings.memory_bytes, taken);
+    build->bytes = taken + size.dictionary_bytes + size.weights_bytes + build->shares.changed;
+}
+
 int build_open(const struct build_settings *settings, struct build *ret_build,
                struct store_error *error)
 {
@@ -116,7 +126,7 @@ int build_open(const struct build_settings *settings, struct build *ret_build,
         build_close(&build);
         return code;
     }
-    build.shares = memory_shares_of(settings->memory_bytes, 0);
+    share_memory(&build);
     build.kept = build.learned;
     build.kept_at_us = clock_steady_us();
     *ret_build = build;
@@ -169,6 +179,7 @@ int build_learn(struct build *build, uint64_t last, struct store_error *error)
         return code;
     }
     uint64_t begun_us = clock_steady_us();
+    share_memory(build);
     model_base_enter(&build->base, build->model_store);
     model_scratch_read(build->scratch, &build->base.base);
     for (size_t i = 0; i < CHANGES_A_VIEW && build->learned < last && code == STORE_OK; i++) {

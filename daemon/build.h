@@ -35,6 +35,7 @@ struct build {
     struct model_scratch *scratch;
     struct model_base base; /* entered while it learns */
     struct memory_shares shares;
+    uint64_t bytes; /* that it takes, or soon will; as of the last few changes */
     char text[MODEL_STORE_SETTINGS_BYTES]; /* what the model is known by */
     uint64_t learned;
     uint64_t kept;       /* the seq of what is stored */

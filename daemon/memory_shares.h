@@ -16,4 +16,7 @@ struct memory_shares {
  * However much that is, each share stays large enough to go on with. */
 struct memory_shares memory_shares_of(uint64_t budget, uint64_t taken);
 
+/* The least budget that memory does not outgrow, where so many bytes are not to be had. */
+uint64_t memory_shares_least_budget(uint64_t taken);
+
 #endif

@@ -35,6 +35,7 @@ void rebuild_publish(struct rebuild *rebuild)
 {
     sync_lock(&rebuild->mutex);
     rebuild->learned = rebuild->build.learned;
+    rebuild->bytes = rebuild->build.bytes;
     sync_unlock(&rebuild->mutex);
 }
 
@@ -227,6 +228,16 @@ int rebuild_begin(struct rebuild *rebuild, const struct options *wanted, uint64_
 bool rebuild_is_running(struct rebuild *rebuild)
 {
     return rebuild_phase_now(rebuild) != REBUILD_IDLE;
+}
+
+uint64_t rebuild_memory_bytes(struct rebuild *rebuild)
+{
+    uint64_t part = rebuild->settings.configured.memory_budget_bytes / REBUILD_MEMORY_PART;
+    sync_lock(&rebuild->mutex);
+    uint64_t taken = rebuild->bytes > part ? rebuild->bytes : part;
+    uint64_t bytes = rebuild->phase == REBUILD_IDLE ? 0 : taken;
+    sync_unlock(&rebuild->mutex);
+    return bytes;
 }
 
 void rebuild_read(struct rebuild *rebuild, struct rebuild_state *ret_state)

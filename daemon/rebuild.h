@@ -61,6 +61,10 @@ int rebuild_begin(struct rebuild *rebuild, const struct options *wanted, uint64_
 
 bool rebuild_is_running(struct rebuild *rebuild);
 
+/* What the rest is to leave to the one that runs: its part of the budget, or more where it takes
+ * more; 0 while none runs. */
+uint64_t rebuild_memory_bytes(struct rebuild *rebuild);
+
 /* No rebuild begins until rebuild_unbar, so that the model in use keeps its store. False, and
  * nothing is barred, while one is under way. */
 bool rebuild_bar(struct rebuild *rebuild) __attribute__((warn_unused_result));

@@ -32,6 +32,7 @@ struct rebuild {
     struct learning_notes notes;
     uint64_t seq;     /* at which the build began; unlike the notes' it stays to the very end */
     uint64_t learned; /* by the build */
+    uint64_t bytes;   /* that the build takes */
     bool has_ended;
     uint64_t ended_seq;
     char failure[TROUBLE_BYTES];

@@ -81,16 +81,34 @@ static void wait_for_store(struct trainer *trainer, const struct store_error *er
 /* --- a round ------------------------------------------------------------------------------------
  */
 
+/* What is kept of each tag lies in memory whatever the budget: then more is wanted of it. */
+static void look_at_budget(struct trainer *trainer, const struct model_size *size, uint64_t taken)
+{
+    const struct trainer_settings *settings = &trainer->settings;
+    uint64_t least = memory_shares_least_budget(taken + size->weights_tag_bytes);
+    if (settings->memory_bytes >= least) {
+        troubles_end(settings->troubles, TROUBLE_MEMORY);
+        return;
+    }
+    troubles_begin(
+        settings->troubles, TROUBLE_MEMORY,
+        "memory_budget is too small for %llu tags: %llu MiB are kept of them, and memory "
+        "grows beyond the budget; set it to %llu MiB or more",
+        (unsigned long long)size->tags,
+        (unsigned long long)(taken + size->weights_tag_bytes) >> 20U,
+        (unsigned long long)(least >> 20U) + 1);
+}
+
 static void share_memory(struct trainer *trainer)
 {
     const struct trainer_settings *settings = &trainer->settings;
     struct model_size size;
     model_measure(settings->shared->model, &size);
     uint64_t taken = size.counts_bytes + model_scratch_bytes(trainer->scratch) +
-                     workspaces_bytes(settings->workspaces) + moments_bytes(settings->moments);
-    if (settings->rebuild && rebuild_is_running(settings->rebuild)) {
-        taken += settings->memory_bytes / REBUILD_MEMORY_PART;
-    }
+                     workspaces_bytes(settings->workspaces);
+    look_at_budget(trainer, &size, taken);
+    taken += moments_bytes(settings->moments);
+    taken += settings->rebuild ? rebuild_memory_bytes(settings->rebuild) : 0;
     trainer->shares = memory_shares_of(settings->memory_bytes, taken);
 }
 

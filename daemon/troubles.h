@@ -15,6 +15,7 @@ enum trouble {
     TROUBLE_KEEPING,    /* what was learned cannot be written */
     TROUBLE_REBUILDING, /* the last rebuild has failed */
     TROUBLE_EXPORTING,  /* the last snapshot has failed */
+    TROUBLE_MEMORY,     /* the budget is too small for the vocabulary */
     TROUBLE_KINDS
 };
 

@@ -346,6 +346,7 @@ void model_measure(const struct model *model, struct model_size *ret_size)
         .pruned = weights_pruned(model->weights),
         .dictionary_bytes = dictionary_bytes(model->dictionary),
         .weights_bytes = weights_bytes(model->weights),
+        .weights_tag_bytes = weights_tag_bytes(model->weights),
         .counts_bytes = sizeof *model + model->tag_capacity * sizeof *model->tags +
                         standing_bytes(model->standing),
         .worklist_bytes = worklist_bytes(model->worklist),

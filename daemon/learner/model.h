@@ -266,6 +266,7 @@ struct model_size {
     struct weights_pruned pruned;
     uint64_t dictionary_bytes;
     uint64_t weights_bytes;
+    uint64_t weights_tag_bytes; /* of those, what is kept of the tags */
     uint64_t counts_bytes;
     uint64_t worklist_bytes;
     uint64_t listed; /* items of the worklist */

@@ -66,13 +66,17 @@ struct weights_pruned weights_pruned(const struct weights *weights)
     return weights->pruned;
 }
 
-uint64_t weights_bytes(const struct weights *weights)
+uint64_t weights_tag_bytes(const struct weights *weights)
 {
-    return sizeof *weights + postings_bytes(weights->postings) +
-           weights->tag_capacity * sizeof *weights->tags +
+    return weights->tag_capacity * sizeof *weights->tags +
            weights->raised_capacity * sizeof *weights->raised +
            weights->lift_capacity * sizeof *weights->lifts + marks_bytes(&weights->changed_tags) +
            marks_bytes(&weights->sealed_tags);
+}
+
+uint64_t weights_bytes(const struct weights *weights)
+{
+    return sizeof *weights + postings_bytes(weights->postings) + weights_tag_bytes(weights);
 }
 
 void weights_refresh_raised(struct weights *weights, uint32_t tag)

@@ -95,8 +95,9 @@ struct weights_pruned {
 
 struct weights_pruned weights_pruned(const struct weights *weights);
 
-/* Bytes held in memory. */
+/* Bytes held in memory; and those of them that are kept of the tags, which cannot be let go of. */
 uint64_t weights_bytes(const struct weights *weights);
+uint64_t weights_tag_bytes(const struct weights *weights);
 
 int weights_scratch_new(struct weights_scratch **ret_scratch) __attribute__((warn_unused_result));
 void weights_scratch_free(struct weights_scratch *scratch);

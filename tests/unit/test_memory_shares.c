@@ -53,6 +53,20 @@ static void the_shares_never_come_to_more_than_the_budget(void **state)
     }
 }
 
+/* 20 MiB are the program's, and three eighths of the budget are for storing and the caches. */
+static void the_least_budget_has_room_for_what_is_taken(void **state)
+{
+    (void)state;
+    assert_int_equal(memory_shares_least_budget(80 * MIB), 160 * MIB);
+    for (uint64_t taken = 1; taken < 4096; taken += 31) {
+        uint64_t least = memory_shares_least_budget(taken * MIB);
+        struct memory_shares shares = memory_shares_of(least, taken * MIB);
+        assert_true(shares.changed + shares.dictionary + shares.weights + (20 + taken) * MIB <=
+                    least + 64);
+        assert_true(shares.dictionary + shares.weights >= least / 8);
+    }
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -60,6 +74,7 @@ int main(void)
         cmocka_unit_test(what_others_take_is_not_shared_out),
         cmocka_unit_test(the_caches_keep_an_eighth_of_the_budget),
         cmocka_unit_test(the_shares_never_come_to_more_than_the_budget),
+        cmocka_unit_test(the_least_budget_has_room_for_what_is_taken),
     };
     return cmocka_run_group_tests_name("memory shares", tests, NULL, NULL);
 }

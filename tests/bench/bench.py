@@ -34,6 +34,7 @@ class Bench:
     def __init__(self, options, folder):
         self.build, self.corpora, self.folder = options.build, options.corpora, folder
         self.rounds, self.quick, self.minutes = options.rounds, options.quick, options.minutes
+        self.budget = options.budget
         self._splits, self._examples = {}, {}
 
     def corpus(self, name):
@@ -105,6 +106,7 @@ def read_options():
     parser.add_argument("--quick", action="store_true", help="a smaller top for the long parts")
     parser.add_argument("--rounds", type=int, default=3, help="how often a ratio is taken; the median is shown")
     parser.add_argument("--minutes", type=float, default=20, help="how long the part soak goes on")
+    parser.add_argument("--budget", type=int, default=64, metavar="MIB", help="memory_budget of the part soak")
     parser.add_argument("--json", metavar="FILE", help="where the figures go, too")
     return parser.parse_args()
 

@@ -5,13 +5,15 @@
  *
  *   soak_bench SOCKET SECONDS WORDS TAGS
  *
- * What each of them did is counted by equal parts of the time. Every WITHDRAWN-th item may be
- * withdrawn and is left alone otherwise, so that an error is never expected.
+ * What each of them did is counted by equal parts of the time, and how long questions waited. Every
+ * WITHDRAWN-th item may be withdrawn and is left alone otherwise, so that an error is never
+ * expected.
  */
 #include <pthread.h>
 #include <stdatomic.h>
 #include <string.h>
 
+#include "daemon/grow.h"
 #include "tests/bench/synthetic_phase.h"
 
 enum {
@@ -46,7 +48,9 @@ struct hand {
     struct wire *wire;
     struct failure failure;
     uint64_t done[PARTS];
-    double longest_s; /* of a question */
+    double *waits_s; /* of questions */
+    size_t wait_count;
+    size_t wait_capacity;
 };
 
 static void count_done(struct hand *hand, uint64_t count)
@@ -131,8 +135,10 @@ static int ask(struct hand *hand)
     }
     double begun = bench_now_s();
     int code = do_take(hand, "item.gaps", question);
-    double took = bench_now_s() - begun;
-    hand->longest_s = took > hand->longest_s ? took : hand->longest_s;
+    if (GROW(&hand->waits_s, &hand->wait_capacity, hand->wait_count + 1) < 0) {
+        return failure_memory(&hand->failure);
+    }
+    hand->waits_s[hand->wait_count++] = bench_now_s() - begun;
     count_done(hand, code == 0);
     return code;
 }
@@ -209,7 +215,27 @@ static void *work(void *user)
     return NULL;
 }
 
-static void print_done(const struct hand *hands, size_t count, const struct soak *soak)
+static int compare_waits(const void *left, const void *right)
+{
+    double a = *(const double *)left;
+    double b = *(const double *)right;
+    return (a > b) - (a < b);
+}
+
+/* Sorts them. */
+static void print_waits(struct hand *hand)
+{
+    if (hand->wait_count == 0) {
+        return;
+    }
+    qsort(hand->waits_s, hand->wait_count, sizeof *hand->waits_s, compare_waits);
+    printf(", \"%s_p50_s\": %.6f, \"%s_p99_s\": %.6f, \"%s_longest_s\": %.6f", hand->name,
+           hand->waits_s[hand->wait_count / 2], hand->name,
+           hand->waits_s[hand->wait_count * 99 / 100], hand->name,
+           hand->waits_s[hand->wait_count - 1]);
+}
+
+static void print_done(struct hand *hands, size_t count, const struct soak *soak)
 {
     printf("{\"part_s\": %.3f", soak->seconds / PARTS);
     for (size_t i = 0; i < count; i++) {
@@ -217,7 +243,8 @@ static void print_done(const struct hand *hands, size_t count, const struct soak
         for (size_t part = 0; part < PARTS; part++) {
             printf("%s%llu", part ? ", " : "", (unsigned long long)hands[i].done[part]);
         }
-        printf("], \"%s_longest_s\": %.6f", hands[i].name, hands[i].longest_s);
+        printf("]");
+        print_waits(&hands[i]);
     }
     printf("}\n");
 }
@@ -255,5 +282,8 @@ int main(int argc, char **argv)
         }
     }
     print_done(hands, count, &soak);
+    for (size_t i = 0; i < count; i++) {
+        free(hands[i].waits_s);
+    }
     return atomic_load(&soak.failed) ? EXIT_FAILURE : EXIT_SUCCESS;
 }

@@ -210,7 +210,10 @@ static int run_write(struct client *client, const struct args *args, struct fail
     }
     char *text = json_dumps(params, JSON_COMPACT);
     json_decref(params);
-    code = text ? wire_open(client->socket_path, &wire, failure) : failure_memory(failure);
+    if (!text) {
+        return failure_memory(failure);
+    }
+    code = wire_open(client->socket_path, &wire, failure);
     if (!code) {
         code = write_one(client, wire, text, &answer, failure);
     }

@@ -24,6 +24,6 @@ struct memory_shares memory_shares_of(uint64_t budget, uint64_t taken)
 uint64_t memory_shares_least_budget(uint64_t taken)
 {
     /* What is left of it, once its parts for storing and for the caches are gone. */
-    const uint64_t parts = CHANGED_PART * LEAST_PART;
+    const uint64_t parts = (uint64_t)CHANGED_PART * LEAST_PART;
     return (PROGRAM_BYTES + taken) / (parts - CHANGED_PART - LEAST_PART) * parts;
 }

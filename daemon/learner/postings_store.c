@@ -1,4 +1,5 @@
 /* What of the postings has changed, to be stored, and how memory lets go of what is stored. */
+#include <assert.h>
 #include <errno.h>
 #include <stdlib.h>
 #include <string.h>
@@ -142,6 +143,7 @@ static void let_go(struct postings *postings, uint32_t place)
 {
     uint32_t word = postings->chunks[place].word;
     struct index_word *entry = index_find(&postings->index, word);
+    assert(entry); /* of every chunk that is there */
     index_set_place(entry, postings->chunks[place].number, 0);
     if (entry->held == 0) {
         index_remove(&postings->index, word);

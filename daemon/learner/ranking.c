@@ -44,7 +44,7 @@ static size_t rarest(const struct ranking_truth *truth, double least[DISCOUNTED_
 void ranking_bases(const struct ranking_truth *truth, struct ranking_amounts *ret_bases)
 {
     assert(truth->count > 0);
-    double least[DISCOUNTED_PLACES];
+    double least[DISCOUNTED_PLACES] = {0.0};
     size_t count = rarest(truth, least);
     double best[DISCOUNTED_PLACES + 1] = {0.0}; /* Σ 1/p of the j rarest, by j */
     double discounted = 0.0;

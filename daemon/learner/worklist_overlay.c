@@ -5,6 +5,7 @@
  */
 #include "daemon/learner/worklist_overlay.h"
 
+#include <assert.h>
 #include <errno.h>
 #include <stdlib.h>
 #include <string.h>
@@ -230,7 +231,9 @@ static void empty_place(struct worklist_overlay *overlay, uint32_t place)
     overlay->entry_count--;
     if (place < overlay->entry_count) {
         const struct worklist_entry *last = &overlay->entries[overlay->entry_count];
-        find_change(overlay, last->number)->place = place;
+        struct worklist_change *change = find_change(overlay, last->number);
+        assert(change); /* of every entry that is there */
+        change->place = place;
         overlay->entries[place] = *last;
     }
 }

@@ -5,6 +5,8 @@
 #include <stdarg.h>
 #include <stddef.h>
 #include <stdint.h>
+#include <stdlib.h>
+#include <string.h>
 
 #include <cmocka.h>
 
@@ -176,6 +178,39 @@ static void a_damaged_change_stops_learning_for_good_and_nothing_else(void **sta
     assert_int_equal(stored(training), 0);
 }
 
+/* --- memory ---
+ * The program itself and the caches want some 32 MiB, without a single tag. */
+
+/* The least budget that it asks for, in MiB, having learned something; 0 where there is enough. */
+static unsigned long wanted_with(struct training *training, uint64_t memory_mib)
+{
+    static const char ASKS[] = "set it to ";
+    char sentence[TROUBLE_BYTES];
+    training->settings.memory_bytes = memory_mib << 20U;
+    file(training, "log/1", "fog bell");
+    commit(training);
+    start(training);
+    assert_int_equal(learned(training), 1);
+    troubles_read(&training->troubles, TROUBLE_MEMORY, sentence);
+    const char *asks = strstr(sentence, ASKS);
+    assert_true(asks || sentence[0] == '\0');
+    return asks ? strtoul(asks + strlen(ASKS), NULL, 10) : 0;
+}
+
+static void a_budget_that_memory_outgrows_is_told_with_one_that_would_do(void **state)
+{
+    unsigned long wanted = wanted_with(*state, 16);
+    assert_true(wanted > 32);
+    assert_int_equal(training_tear_down(state), 0);
+    assert_int_equal(training_set_up(state), 0);
+    assert_int_equal(wanted_with(*state, wanted), 0);
+}
+
+static void the_smallest_budget_is_enough_for_a_few_tags(void **state)
+{
+    assert_int_equal(wanted_with(*state, 64), 0);
+}
+
 #define TEST(name) cmocka_unit_test_setup_teardown(name, training_set_up, training_tear_down)
 
 int main(void)
@@ -190,6 +225,8 @@ int main(void)
         TEST(the_model_is_stored_when_the_trainer_stops),
         TEST(nothing_learned_is_nothing_to_store),
         TEST(a_damaged_change_stops_learning_for_good_and_nothing_else),
+        TEST(a_budget_that_memory_outgrows_is_told_with_one_that_would_do),
+        TEST(the_smallest_budget_is_enough_for_a_few_tags),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

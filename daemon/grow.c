@@ -5,10 +5,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-/* A large array is moved without being copied (mremap), so that it need not hold much in reserve.
- */
 enum {
-    LARGE_BYTES = 1 << 20,
     PART = 2,
     LARGE_PART = 8
 };
@@ -18,7 +15,8 @@ int grow_array(void **array, size_t *capacity, size_t needed, size_t size)
     if (needed <= *capacity) {
         return 0;
     }
-    size_t wanted = *capacity + *capacity / (*capacity >= LARGE_BYTES / size ? LARGE_PART : PART);
+    size_t wanted =
+        *capacity + *capacity / (*capacity >= GROW_LARGE_BYTES / size ? LARGE_PART : PART);
     if (wanted < needed) {
         wanted = needed;
     }

@@ -7,6 +7,12 @@
 
 #include <stddef.h>
 
+/* From here on an array is large: mapped for itself (see main.c), it is moved without being copied,
+ * and need not hold much in reserve. */
+enum {
+    GROW_LARGE_BYTES = 1 << 20
+};
+
 /*
  * Makes room for at least `needed` elements of `size` bytes behind *array, of which *capacity there
  * is now. The array may move. Returns 0 or -ENOMEM, with nothing changed.

@@ -22,6 +22,7 @@
 #include "daemon/command_line.h"
 #include "daemon/engine.h"
 #include "daemon/export_folder.h"
+#include "daemon/grow.h"
 #include "daemon/json_memory.h"
 #include "daemon/log.h"
 #include "daemon/manager.h"
@@ -33,8 +34,7 @@
 
 enum {
     SIGNALS = 4,
-    SPARE_DESCRIPTORS = 64,
-    LARGE_BYTES = 1 << 20 /* an array's, to be mapped for itself */
+    SPARE_DESCRIPTORS = 64
 };
 
 struct program {
@@ -406,7 +406,7 @@ int main(int argc, char **argv)
     (void)mallopt(M_ARENA_MAX, 2);
     /* Large arrays stay out of the heaps, whatever was freed before: they grow without being
      * copied, and what is freed is gone. */
-    (void)mallopt(M_MMAP_THRESHOLD, LARGE_BYTES);
+    (void)mallopt(M_MMAP_THRESHOLD, GROW_LARGE_BYTES);
     json_memory_watch();
     /* At random, and before there are threads: nobody can choose names that collide. */
     json_object_seed(0);

@@ -88,8 +88,8 @@ static const struct option OPTIONS[] = {
     {"memory_budget", TYPE_BYTES, AT(memory_budget_bytes), 64 * MIB, 1024 * GIB, "1GiB", NULL,
      OPTIONS_SETTING, false,
      "Memory for words, weights and what waits to be stored; what does not fit is read from the "
-     "disk when it is wanted. What is known of each tag, some 150 bytes, is not among that: for "
-     "500,000 tags give it 256 MiB or more."},
+     "disk when it is wanted. What is known of each tag, some 150 bytes, always stays: for 500,000 "
+     "tags give it 256 MiB or more."},
     {"rehearsal_share", TYPE_NUMBER, AT(rehearsal_share), 0, 1, "0.25", NULL, OPTIONS_SETTING,
      false,
      "Share of a core for learning filed items again while there is nothing else to do; 0 for "

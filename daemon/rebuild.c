@@ -225,11 +225,6 @@ int rebuild_begin(struct rebuild *rebuild, const struct options *wanted, uint64_
     return 0;
 }
 
-bool rebuild_is_running(struct rebuild *rebuild)
-{
-    return rebuild_phase_now(rebuild) != REBUILD_IDLE;
-}
-
 uint64_t rebuild_memory_bytes(struct rebuild *rebuild)
 {
     uint64_t part = rebuild->settings.configured.memory_budget_bytes / REBUILD_MEMORY_PART;

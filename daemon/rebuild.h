@@ -59,8 +59,6 @@ void rebuild_free(struct rebuild *rebuild);
 int rebuild_begin(struct rebuild *rebuild, const struct options *wanted, uint64_t *ret_seq,
                   struct store_error *error) __attribute__((warn_unused_result));
 
-bool rebuild_is_running(struct rebuild *rebuild);
-
 /* What the rest is to leave to the one that runs: its part of the budget, or more where it takes
  * more; 0 while none runs. */
 uint64_t rebuild_memory_bytes(struct rebuild *rebuild);

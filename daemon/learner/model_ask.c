@@ -1,8 +1,8 @@
 #include <errno.h>
 #include <math.h>
-#include <stdlib.h>
 
 #include "daemon/grow.h"
+#include "daemon/learner/best_gaps.h"
 #include "daemon/learner/model.h"
 #include "daemon/learner/model_private.h"
 
@@ -130,68 +130,19 @@ static void unbar_tags(const struct asker *asker, const uint32_t *tags, size_t c
 }
 
 /* --- candidates ---------------------------------------------------------------------------------
- * The best so far, `most` of them at most, however many tags there are: a heap with the worst of
- * them on top.
  */
 
-/* By falling chance, then score; the tag's number makes the order the same every time. */
-static int compare_gaps(const void *left, const void *right)
-{
-    const struct model_gap *a = left;
-    const struct model_gap *b = right;
-    if (a->chance != b->chance) {
-        return a->chance > b->chance ? -1 : 1;
-    }
-    if (a->score != b->score) {
-        return a->score > b->score ? -1 : 1;
-    }
-    return a->tag < b->tag ? -1 : a->tag > b->tag;
-}
-
-static void exchange(struct model_gap *one, struct model_gap *other)
-{
-    struct model_gap held = *one;
-    *one = *other;
-    *other = held;
-}
-
-static void rise(struct model_gap *heap, size_t at)
-{
-    while (at > 0 && compare_gaps(&heap[at], &heap[(at - 1) / 2]) > 0) {
-        exchange(&heap[at], &heap[(at - 1) / 2]);
-        at = (at - 1) / 2;
-    }
-}
-
-static void sink(struct model_gap *heap, size_t count)
-{
-    for (size_t at = 0, worst = 1; worst < count; worst = 2 * at + 1) {
-        if (worst + 1 < count && compare_gaps(&heap[worst + 1], &heap[worst]) > 0) {
-            worst++;
-        }
-        if (compare_gaps(&heap[worst], &heap[at]) <= 0) {
-            return;
-        }
-        exchange(&heap[worst], &heap[at]);
-        at = worst;
-    }
-}
-
+/* However many tags may be proposed, only as many are kept as are asked for. */
 static int add_candidate(const struct asker *asker, uint32_t tag, double score, double chance,
                          size_t *count)
 {
     struct model_scratch *scratch = asker->scratch;
+    size_t most = asker->question->most;
     const struct model_gap gap = {.tag = tag, .chance = chance, .score = score};
-    if (*count < asker->question->most) {
-        if (GROW(&scratch->gaps, &scratch->gap_capacity, *count + 1) < 0) {
-            return -ENOMEM;
-        }
-        scratch->gaps[*count] = gap;
-        rise(scratch->gaps, (*count)++);
-    } else if (*count > 0 && compare_gaps(&gap, &scratch->gaps[0]) < 0) {
-        scratch->gaps[0] = gap;
-        sink(scratch->gaps, *count);
+    if (*count < most && GROW(&scratch->gaps, &scratch->gap_capacity, *count + 1) < 0) {
+        return -ENOMEM;
     }
+    best_gaps_put(scratch->gaps, count, most, &gap);
     return 0;
 }
 
@@ -387,9 +338,7 @@ int model_ask(const struct model *model, const struct model_question *question,
     if (result < 0) {
         return result;
     }
-    if (count > 1) { /* with none there may be no array, which qsort does not allow */
-        qsort(scratch->gaps, count, sizeof *scratch->gaps, compare_gaps);
-    }
+    best_gaps_sort(scratch->gaps, count);
     if (question->why && count > 0) {
         result = explain(&asker, count);
     }

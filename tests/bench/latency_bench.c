@@ -13,16 +13,12 @@
 
 #include "tests/bench/corpus.h"
 #include "tests/bench/phase.h"
+#include "tests/bench/waits.h"
 
 enum {
     IDLE_CALLS = 4000,
     WARM_CALLS = 200,
     MOST_CALLS = 200000
-};
-
-struct times {
-    double *seconds;
-    size_t count;
 };
 
 /* The second client. */
@@ -34,21 +30,12 @@ struct feeder {
     atomic_bool done;
 };
 
-static int compare_times(const void *left, const void *right)
+/* There is at least one. */
+static void print_waits(const char *name, struct waits *waits)
 {
-    double a = *(const double *)left;
-    double b = *(const double *)right;
-    return (a > b) - (a < b);
-}
-
-/* Sorts them; there is at least one. */
-static void print_times(const char *name, struct times *times)
-{
-    assert(times->count > 0);
-    qsort(times->seconds, times->count, sizeof *times->seconds, compare_times);
-    printf("\"%s\": {\"calls\": %zu, \"p50_s\": %.9f, \"p99_s\": %.9f, \"most_s\": %.9f}, ", name,
-           times->count, times->seconds[times->count / 2], times->seconds[times->count * 99 / 100],
-           times->seconds[times->count - 1]);
+    printf("\"%s\": {", name);
+    waits_print(waits);
+    printf("}, ");
 }
 
 /* How long until the answer is there; reading it is the client's affair. */
@@ -75,19 +62,21 @@ static int call_once(struct wire *wire, const char *method, const char *params, 
 
 /* Asks about one draft after the other: `most` times, or until the feeder is done, but once. */
 static int ask(struct wire *wire, const struct phase *drafts, size_t most,
-               const struct feeder *feeder, struct times *times, struct failure *failure)
+               const struct feeder *feeder, struct waits *waits, struct failure *failure)
 {
-    times->count = 0;
+    waits->count = 0;
     size_t at = 0;
     assert(drafts->count > 0);
     do {
-        if (call_once(wire, drafts->method, drafts->params[at], &times->seconds[times->count],
-                      failure) < 0) {
+        double seconds = 0.0;
+        if (call_once(wire, drafts->method, drafts->params[at], &seconds, failure) < 0) {
             return failure->code;
         }
-        times->count++;
+        if (waits_add(waits, seconds) < 0) {
+            return failure_memory(failure);
+        }
         at = at + 1 < drafts->count ? at + 1 : 0;
-    } while (times->count < most && !(feeder && atomic_load(&feeder->done)));
+    } while (waits->count < most && !(feeder && atomic_load(&feeder->done)));
     return 0;
 }
 
@@ -105,38 +94,38 @@ static void *feed(void *user)
     return NULL;
 }
 
-static int measure_idle(struct wire *wire, const struct phase *drafts, struct times *times,
+static int measure_idle(struct wire *wire, const struct phase *drafts, struct waits *waits,
                         struct failure *failure)
 {
     char params[] = "{\"since\":1000000000,\"most\":1}"; /* beyond the last change */
     char *all[] = {params};
     const struct phase nothings = {.method = "item.list", .params = all, .count = 1};
-    if (ask(wire, drafts, WARM_CALLS, NULL, times, failure) < 0 ||
-        ask(wire, drafts, IDLE_CALLS, NULL, times, failure) < 0) {
+    if (ask(wire, drafts, WARM_CALLS, NULL, waits, failure) < 0 ||
+        ask(wire, drafts, IDLE_CALLS, NULL, waits, failure) < 0) {
         return failure->code;
     }
-    print_times("idle", times);
-    if (ask(wire, &nothings, IDLE_CALLS, NULL, times, failure) < 0) {
+    print_waits("idle", waits);
+    if (ask(wire, &nothings, IDLE_CALLS, NULL, waits, failure) < 0) {
         return failure->code;
     }
-    print_times("nothing", times);
+    print_waits("nothing", waits);
     return 0;
 }
 
 static int measure_feeding(struct wire *wire, const struct phase *drafts, struct feeder *feeder,
-                           struct times *times, struct failure *failure)
+                           struct waits *waits, struct failure *failure)
 {
     pthread_t thread;
     if (pthread_create(&thread, NULL, feed, feeder) != 0) {
         return failure_memory(failure);
     }
-    int code = ask(wire, drafts, MOST_CALLS, feeder, times, failure);
+    int code = ask(wire, drafts, MOST_CALLS, feeder, waits, failure);
     (void)pthread_join(thread, NULL); /* fails only for a wrong thread */
     if (code == 0 && feeder->failure.code != 0) {
         *failure = feeder->failure;
     }
     if (failure->code == 0) {
-        print_times("feeding", times);
+        print_waits("feeding", waits);
         printf("\"fed_per_s\": %.0f", (double)feeder->phase->count / feeder->seconds);
     }
     return failure->code;
@@ -159,9 +148,9 @@ static int measure(struct wire *wire, const char *path, const struct corpus *cor
     struct phase first = {0};
     struct phase second = {0};
     struct phase drafts = {0};
-    struct times times = {.seconds = calloc(MOST_CALLS, sizeof *times.seconds)};
+    struct waits waits = {0};
     size_t half = corpus->learned / 2;
-    if (!times.seconds || phase_of_items(corpus, 0, half, false, &first) < 0 ||
+    if (phase_of_items(corpus, 0, half, false, &first) < 0 ||
         phase_of_items(corpus, half, corpus->learned, false, &second) < 0 ||
         phase_of_items(corpus, corpus->learned, corpus->count, true, &drafts) < 0) {
         (void)failure_memory(failure);
@@ -169,15 +158,15 @@ static int measure(struct wire *wire, const char *path, const struct corpus *cor
     }
     struct feeder feeder = {.socket_path = path, .phase = &second};
     printf("{");
-    if (prepare(wire, &first, failure) == 0 && measure_idle(wire, &drafts, &times, failure) == 0) {
-        (void)measure_feeding(wire, &drafts, &feeder, &times, failure); /* the failure tells */
+    if (prepare(wire, &first, failure) == 0 && measure_idle(wire, &drafts, &waits, failure) == 0) {
+        (void)measure_feeding(wire, &drafts, &feeder, &waits, failure); /* the failure tells */
     }
     printf("}\n");
 out:
     phase_deinit(&first);
     phase_deinit(&second);
     phase_deinit(&drafts);
-    free(times.seconds);
+    waits_deinit(&waits);
     return failure->code;
 }
 

@@ -66,8 +66,9 @@ def show_rates(lines, said):
     for key, name in DONE.items():
         first, last = (said[key][part] / said["part_s"] for part in (0, -1))
         lines.say(f"{name:<36}{first:>14,.1f}{last:>14,.1f}{sum(said[key]):>14,}")
-    lines.say("item.gaps waited, ms: " + ", ".join(f"{name} {said[f'asked_{key}_s'] * 1e3:,.1f}" for key, name in
-                                                    (("p50", "p50"), ("p99", "p99"), ("longest", "at most"))))
+    waits = said["asked_waits"]
+    lines.say(f"item.gaps waited p50 {waits['p50_s'] * 1e3:,.1f} ms, p99 {waits['p99_s'] * 1e3:,.1f} ms, at most "
+              f"{waits['most_s'] * 1e3:,.1f} ms")
 
 
 def show_memory(lines, seen, last):

@@ -13,8 +13,8 @@
 #include <stdatomic.h>
 #include <string.h>
 
-#include "daemon/grow.h"
 #include "tests/bench/synthetic_phase.h"
+#include "tests/bench/waits.h"
 
 enum {
     SEED = 1911,
@@ -48,9 +48,7 @@ struct hand {
     struct wire *wire;
     struct failure failure;
     uint64_t done[PARTS];
-    double *waits_s; /* of questions */
-    size_t wait_count;
-    size_t wait_capacity;
+    struct waits waits; /* of questions */
 };
 
 static void count_done(struct hand *hand, uint64_t count)
@@ -135,10 +133,9 @@ static int ask(struct hand *hand)
     }
     double begun = bench_now_s();
     int code = do_take(hand, "item.gaps", question);
-    if (GROW(&hand->waits_s, &hand->wait_capacity, hand->wait_count + 1) < 0) {
+    if (waits_add(&hand->waits, bench_now_s() - begun) < 0) {
         return failure_memory(&hand->failure);
     }
-    hand->waits_s[hand->wait_count++] = bench_now_s() - begun;
     count_done(hand, code == 0);
     return code;
 }
@@ -215,26 +212,6 @@ static void *work(void *user)
     return NULL;
 }
 
-static int compare_waits(const void *left, const void *right)
-{
-    double a = *(const double *)left;
-    double b = *(const double *)right;
-    return (a > b) - (a < b);
-}
-
-/* Sorts them. */
-static void print_waits(struct hand *hand)
-{
-    if (hand->wait_count == 0) {
-        return;
-    }
-    qsort(hand->waits_s, hand->wait_count, sizeof *hand->waits_s, compare_waits);
-    printf(", \"%s_p50_s\": %.6f, \"%s_p99_s\": %.6f, \"%s_longest_s\": %.6f", hand->name,
-           hand->waits_s[hand->wait_count / 2], hand->name,
-           hand->waits_s[hand->wait_count * 99 / 100], hand->name,
-           hand->waits_s[hand->wait_count - 1]);
-}
-
 static void print_done(struct hand *hands, size_t count, const struct soak *soak)
 {
     printf("{\"part_s\": %.3f", soak->seconds / PARTS);
@@ -244,7 +221,11 @@ static void print_done(struct hand *hands, size_t count, const struct soak *soak
             printf("%s%llu", part ? ", " : "", (unsigned long long)hands[i].done[part]);
         }
         printf("]");
-        print_waits(&hands[i]);
+        if (hands[i].waits.count > 0) {
+            printf(", \"%s_waits\": {", hands[i].name);
+            waits_print(&hands[i].waits);
+            printf("}");
+        }
     }
     printf("}\n");
 }
@@ -283,7 +264,7 @@ int main(int argc, char **argv)
     }
     print_done(hands, count, &soak);
     for (size_t i = 0; i < count; i++) {
-        free(hands[i].waits_s);
+        waits_deinit(&hands[i].waits);
     }
     return atomic_load(&soak.failed) ? EXIT_FAILURE : EXIT_SUCCESS;
 }

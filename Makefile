@@ -29,13 +29,13 @@ WARNINGS += -Werror
 endif
 BASE_CFLAGS := -std=c17 -D_GNU_SOURCE -I. -fno-strict-aliasing -pthread $(WARNINGS) \
                -DUNDERTAG_VERSION='"$(VERSION)"'
-DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih zlib libzip libsystemd nettle
+DAEMON_PACKAGES := libuv jansson lmdb libutf8proc inih libdeflate libzip libsystemd nettle
 CLIENT_PACKAGES := jansson libutf8proc
 # Asked only where something is compiled, so that `make packages` runs on a bare machine.
 PACKAGE_CFLAGS = $(shell pkg-config --cflags $(DAEMON_PACKAGES))
 DAEMON_LIBS = $(shell pkg-config --libs $(DAEMON_PACKAGES)) -lunistring -lstemmer -lm -pthread
 CLIENT_LIBS = $(shell pkg-config --libs $(CLIENT_PACKAGES)) -lm
-TEST_LIBS = $(shell pkg-config --libs cmocka)
+TEST_LIBS = $(shell pkg-config --libs cmocka zlib)
 
 DAEMON_SOURCES := $(filter-out daemon/main.c,$(wildcard daemon/*.c daemon/*/*.c))
 STORAGE_SOURCES := $(wildcard storage/*.c)

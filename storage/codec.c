@@ -1,9 +1,9 @@
 #include "storage/codec.h"
 
 #include <endian.h>
+#include <libdeflate.h>
 #include <stdlib.h>
 #include <string.h>
-#include <zlib.h>
 
 void codec_reset(struct codec_writer *writer)
 {
@@ -163,11 +163,11 @@ uint64_t codec_u64_of_key(const void *key)
 
 uint32_t codec_checksum(const void *data, size_t size)
 {
-    return (uint32_t)crc32_z(crc32_z(0, NULL, 0), data, size);
+    return libdeflate_crc32(0, data, size);
 }
 
 uint32_t codec_checksum_of_two(const void *first, size_t first_size, const void *second,
                                size_t second_size)
 {
-    return (uint32_t)crc32_z(codec_checksum(first, first_size), second, second_size);
+    return libdeflate_crc32(codec_checksum(first, first_size), second, second_size);
 }

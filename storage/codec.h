@@ -53,7 +53,7 @@ void codec_key_u64(unsigned char key[8], uint64_t value);
 uint32_t codec_u32_of_key(const void *key);
 uint64_t codec_u64_of_key(const void *key);
 
-/* CRC-32 (ISO 3309, as zlib has it). */
+/* CRC-32 (ISO 3309). */
 uint32_t codec_checksum(const void *data, size_t size);
 
 /* The same of two pieces, one behind the other. */

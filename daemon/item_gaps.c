@@ -139,9 +139,10 @@ static int take_out_words(struct gaps_job *job, const struct features_source *so
 
 static int prepare(struct gaps_job *job, struct model_question *question)
 {
-    struct store_view *view = NULL;
+    struct store_view *view = NULL; /* a draft without tags needs none */
     struct features_source source = {0};
-    if (read_job_view(&job->job, &view) < 0) {
+    bool is_stored = job->id.size > 0 || job->tags.count > 0;
+    if (is_stored && read_job_view(&job->job, &view) < 0) {
         return job->job.fault.code;
     }
     int code = job->id.size > 0 ? prepare_item(job, view, &source, question)

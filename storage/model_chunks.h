@@ -19,7 +19,7 @@
 
 enum {
     MODEL_CHUNKS_KEY = 8,         /* bytes: word and number */
-    MODEL_CHUNKS_NEWS_PART = 24,  /* the news' share of the chunks' pages */
+    MODEL_CHUNKS_NEWS_PART = 12,  /* the news' share of the chunks' pages */
     MODEL_CHUNKS_LEAST_NEWS = 64, /* or so many pages, that are never settled */
     MODEL_CHUNKS_MANY_PART = 8    /* of all chunks, and more, are many */
 };

@@ -251,10 +251,12 @@ valgrind: packages-build packages-test
 	    GROUPS=unit WRAPPER='valgrind -q --fair-sched=yes --error-exitcode=99 --leak-check=full'
 
 # What share of the branches the tests take: a table by file, then the sums. Daemons that a test kills
-# leave no counts, so what only they did does not show.
+# leave no counts, so what only they did does not show. COVERAGE_FAULTS: of the allocations, which to
+# fail (see tests/faults/scene.c): all, or a number to begin with.
+COVERAGE_FAULTS ?= all
 coverage: packages-build packages-test packages-coverage
-	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-coverage run-tests \
-	    GROUPS='unit integration reference fuzz' \
+	@UNDERTAG_FAULTS=$(COVERAGE_FAULTS) $(MAKE) --no-print-directory -j $(JOBS) BUILD=build-coverage run-tests \
+	    GROUPS='unit integration reference faults fuzz' \
 	    CFLAGS='-O1 -g --coverage -fprofile-update=atomic'
 	@gcovr --root . --object-directory build-coverage --filter client/ --filter daemon/ \
 	    --filter storage/ --exclude '.*/main\.c' --branches --sort-percentage --print-summary \

@@ -5,6 +5,9 @@
  * glibc exports for allocators that stand before its own), so nothing has to be looked up first.
  * Nothing here allocates.
  *
+ * What runs once main has returned is not the program's own any more (a build that counts its
+ * branches writes the counts then), and is left alone.
+ *
  * Only what can fail is failed: writing to a regular file (no room, an I/O error) and to a socket
  * (the peer is gone), not to an eventfd or a pipe that a program keeps for itself; standard output
  * and standard error are left alone.
@@ -34,8 +37,14 @@ void *__libc_memalign(size_t alignment, size_t size);
 void __libc_free(void *memory);
 /* NOLINTEND(bugprone-reserved-identifier) */
 
+typedef int main_function(int argc, char **argv, char **environment);
+typedef int start_function(main_function *of_program, int argc, char **argv, void (*init)(void),
+                           void (*fini)(void), void (*rtld_fini)(void), void *stack_end);
+
 static struct fail_control *control;
-static atomic_long blocks; /* of memory that somebody has */
+static main_function *main_of_program;
+static atomic_bool has_returned; /* main has */
+static atomic_long blocks;       /* of memory that somebody has */
 
 __attribute__((constructor)) static void map_control(void)
 {
@@ -52,6 +61,26 @@ __attribute__((constructor)) static void map_control(void)
     (void)syscall(SYS_close, fd);
     control = mapped == MAP_FAILED ? NULL : mapped;
 }
+
+static int run_main(int argc, char **argv, char **environment)
+{
+    int exit_code = main_of_program(argc, argv, environment);
+    atomic_store(&has_returned, true);
+    return exit_code;
+}
+
+/* What a program's first instructions call, in the C library's place. */
+/* NOLINTBEGIN(bugprone-reserved-identifier): glibc's name */
+int __libc_start_main(main_function *of_program, int argc, char **argv, void (*init)(void),
+                      void (*fini)(void), void (*rtld_fini)(void), void *stack_end)
+{
+    start_function *start = NULL;
+    /* A pointer to a function, which C does not make of one to an object. */
+    *(void **)&start = dlsym(RTLD_NEXT, "__libc_start_main");
+    main_of_program = of_program;
+    return start(run_main, argc, argv, init, fini, rtld_fini, stack_end);
+}
+/* NOLINTEND(bugprone-reserved-identifier) */
 
 /* Behind all that the program does itself, when it ends by exit or from main. */
 __attribute__((destructor)) static void tell_what_is_left(void)
@@ -98,8 +127,8 @@ static bool is_meant(int fd, const void *site)
 /* Whether this call is the one to fail; errno is set then. */
 static bool fails(enum fail_kind kind, const char *call, const void *site)
 {
-    if (!control || !atomic_load(&control->is_armed) || atomic_load(&control->kind) != kind ||
-        atomic_fetch_sub(&control->left, 1) != 0) {
+    if (!control || !atomic_load(&control->is_armed) || atomic_load(&has_returned) ||
+        atomic_load(&control->kind) != kind || atomic_fetch_sub(&control->left, 1) != 0) {
         return false;
     }
     note_site(call, site);

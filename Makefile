@@ -53,6 +53,7 @@ HELPER_SOURCES := $(filter-out tests/integration/test_%.c,$(wildcard tests/integ
 BENCH_SOURCES := $(wildcard tests/bench/*_bench.c)
 BENCH_HELPER_SOURCES := $(filter-out $(BENCH_SOURCES),$(wildcard tests/bench/*.c))
 
+comma := ,
 object = $(patsubst %.c,$(BUILD)/%.o,$(1))
 LIBRARY_OBJECTS := $(call object,$(DAEMON_SOURCES) $(STORAGE_SOURCES))
 CLIENT_OBJECTS := $(call object,$(CLIENT_SOURCES))
@@ -123,10 +124,23 @@ $(BUILD)/undertag: $(BUILD)/client/main.o $(CLIENT_LIBRARY)
 	$(call say,link,$@)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(CLIENT_LIBS) -o $@
 
+# What programs test_failing_* may fail; see tests/unit/failing_calls.h, which has the same names.
+FAILING_CALLS := calloc close fdatasync fdopen fdopendir fflush fork free fstat fstatat fsync ftruncate \
+    getrandom lstat malloc mdb_cursor_del mdb_cursor_get mdb_cursor_open mdb_dbi_open \
+    mdb_del mdb_drop mdb_env_copyfd2 mdb_env_create mdb_env_get_fd mdb_env_info mdb_env_open \
+    mdb_env_set_mapsize mdb_env_set_maxdbs mdb_env_set_maxreaders mdb_env_stat mdb_get \
+    mdb_put mdb_reader_check mdb_stat mdb_txn_begin mdb_txn_commit mkdir mkdirat open openat \
+    opendir pipe2 pread pthread_cond_init pthread_condattr_init \
+    pthread_condattr_setclock pthread_create pthread_mutex_init pthread_rwlock_init pwrite \
+    read readlinkat realloc renameat renameat2 stat statvfs strdup symlinkat unlink unlinkat \
+    waitpid write
+FAILING_PROGRAMS := $(filter $(BUILD)/tests/test_failing_%,$(UNIT_PROGRAMS))
+$(FAILING_PROGRAMS): WRAPPED := $(addprefix -Wl$(comma)--wrap=,$(FAILING_CALLS))
+
 $(UNIT_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/unit/%.o $(LIBRARY) $(CLIENT_LIBRARY)
 	@mkdir -p $(@D)
 	$(call say,link,$@)
-	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
+	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $(WRAPPED) $^ $(DAEMON_LIBS) $(TEST_LIBS) -o $@
 
 $(INTEGRATION_PROGRAMS): $(BUILD)/tests/%: $(BUILD)/tests/integration/%.o $(HELPERS) $(LIBRARY)
 	@mkdir -p $(@D)

@@ -125,8 +125,7 @@ static int move_trials(struct model *model, const struct model_item *item,
         (replaced && count_trials(model, replaced, -1) < 0)) {
         return -ENOMEM;
     }
-    model_refit_propensities(model);
-    return 0;
+    return model_refit_propensities(model);
 }
 
 /* What is new comes in before what is old leaves, so that a word of both is not forgotten. */

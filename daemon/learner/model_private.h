@@ -245,7 +245,7 @@ void model_gather_evidence(struct model *model, const struct model_item *item,
 
 /* Fits curves and propensities again where enough has come in, or `now`. */
 void model_refit_curves(struct model *model, bool now);
-void model_refit_propensities(struct model *model);
+int model_refit_propensities(struct model *model) __attribute__((warn_unused_result));
 
 /* --- model_worklist --- */
 

@@ -1,6 +1,7 @@
 /*
  * Fitting what follows from evidence, every now and then.
  */
+#include <errno.h>
 #include <math.h>
 #include <stdlib.h>
 
@@ -37,7 +38,7 @@ void model_refit_curves(struct model *model, bool now)
     model->curves_changed = true;
 }
 
-void model_refit_propensities(struct model *model)
+int model_refit_propensities(struct model *model)
 {
     uint64_t halves = model->trial_halves;
     uint64_t moved =
@@ -45,11 +46,11 @@ void model_refit_propensities(struct model *model)
     bool has_grown = halves > 0 && (double)model->documents > REFIT_GROWTH * model->fit.documents;
     bool has_moved = moved > 0 && moved >= model->fit_halves / REFIT_TRIALS_SHARE;
     if (!has_grown && !has_moved) {
-        return;
+        return 0;
     }
     struct propensity_evidence *evidence = calloc(model->tag_count + 1, sizeof *evidence);
     if (!evidence) {
-        return; /* the fit as it was will do; the next trial tries again */
+        return -ENOMEM; /* not the fit as it was: when it is fitted must not depend on memory */
     }
     size_t count = 0;
     for (size_t tag = 0; tag < model->tag_count; tag++) {
@@ -67,4 +68,5 @@ void model_refit_propensities(struct model *model)
     model->fit_halves = halves;
     model->fit_changed = true;
     model_refit_curves(model, true);
+    return 0;
 }

@@ -156,20 +156,23 @@ bool scene_disarm(struct scene *scene)
 
 /*
  * libuv has no way to say that it has no memory to watch another descriptor or for its pool, nor
- * the C library for what a thread has of its own: both call abort. Nothing that was acknowledged
- * may be lost by it, and that is looked at all the same.
+ * the C library for what a thread has of its own: both call abort. libcrypto, which libzip asks for
+ * a random name, uses a lock that it had no memory to make when it was first called. Nothing that
+ * was acknowledged may be lost by it, and that is looked at all the same.
  */
-static bool is_abort_of_others(const struct scene *scene)
+static bool is_end_by_others(const struct scene *scene)
 {
     const struct fail_control *control = scene->patient.control;
     return scene->kind == FAIL_MALLOC && atomic_load(&control->is_injected) &&
            (strncmp(control->module, "libuv", 5) == 0 ||
-            strncmp(control->module, "ld-linux", 8) == 0);
+            strncmp(control->module, "ld-linux", 8) == 0 ||
+            strncmp(control->module, "libcrypto", 9) == 0);
 }
 
 static void check_end(struct scene *scene, int exit_code, bool may_be_0)
 {
-    if (exit_code == 128 + SIGABRT && is_abort_of_others(scene)) {
+    bool is_by_signal = exit_code == 128 + SIGABRT || exit_code == 128 + SIGSEGV;
+    if (is_by_signal && is_end_by_others(scene)) {
         return;
     }
     bool is_sysexit = exit_code >= EX__BASE && exit_code <= EX__MAX;
@@ -255,7 +258,7 @@ void scene_look(struct scene *scene)
     bool hangs = false;
     json_t *answer = state_of(scene, &hangs);
     const json_t *state = json_object_get(answer, "result");
-    if (!state && !is_abort_of_others(scene)) { /* then it is about to end */
+    if (!state && !is_end_by_others(scene)) { /* then it is about to end */
         scene_wrong(scene, "the daemon is up and does not answer");
     }
     bool is_well = state && json_array_size(json_object_get(state, "faults")) == 0;

@@ -37,8 +37,8 @@ static void read_all(int fd, char text[PROGRAM_TEXT_BYTES])
     assert_int_equal(close(fd), 0);
 }
 
-void program_run(const char *name, const char *const *arguments, const char *input,
-                 struct program_run *ret_run)
+void program_run_by(const struct program_way *way, const char *name, const char *const *arguments,
+                    const char *input, struct program_run *ret_run)
 {
     char path[CHILD_PATH_BYTES];
     const char *argv[ARGUMENTS_MOST + 2] = {path};
@@ -49,10 +49,17 @@ void program_run(const char *name, const char *const *arguments, const char *inp
         argv[i + 1] = arguments[i];
     }
     int streams[] = {memory_file(input), memory_file(""), memory_file("")};
-    child_start(&child, argv, NULL, streams[0], streams[1], streams[2]);
+    child_start(&child, argv, way->environment, streams[0], way->output ? way->output : streams[1],
+                streams[2]);
     ret_run->exit_code = child_wait(&child);
     assert_int_equal(close(streams[0]), 0);
     read_all(streams[1], ret_run->output);
     read_all(streams[2], ret_run->error);
     assert_null(strstr(ret_run->error, "Sanitizer"));
+}
+
+void program_run(const char *name, const char *const *arguments, const char *input,
+                 struct program_run *ret_run)
+{
+    program_run_by(&(struct program_way){0}, name, arguments, input, ret_run);
 }

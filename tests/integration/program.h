@@ -23,4 +23,14 @@ struct program_run {
 void program_run(const char *name, const char *const *arguments, const char *input,
                  struct program_run *ret_run);
 
+/* What else may differ. */
+struct program_way {
+    const char *const *environment; /* entries NAME=VALUE ended by NULL; NULL: none */
+    int output;                     /* in the place of standard output, borrowed; 0: it is kept */
+};
+
+/* Likewise, but that a program may also end by a signal: then exit_code is 128 and its number. */
+void program_run_by(const struct program_way *way, const char *name, const char *const *arguments,
+                    const char *input, struct program_run *ret_run);
+
 #endif

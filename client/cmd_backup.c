@@ -130,7 +130,7 @@ static void watcher_look(struct watcher *watcher)
     wire_answer_deinit(&answer);
 }
 
-static int wait_for_answer(const struct client *client, struct wire *wire,
+static int wait_for_answer(const struct client *client, struct wire *wire, int64_t id,
                            struct wire_answer *ret_answer, struct failure *failure)
 {
     struct watcher watcher;
@@ -152,7 +152,7 @@ static int wait_for_answer(const struct client *client, struct wire *wire,
     if (came < 0) {
         return came;
     }
-    return ret_answer->code ? wire_fail(ret_answer, failure) : 0;
+    return wire_check(wire, ret_answer, id, failure);
 }
 
 /* --- the command ------------------------------------------------------------------------------ */
@@ -182,7 +182,7 @@ static int ask(struct client *client, struct wire *wire, const char *params,
     struct wire_answer answer = {0};
     int code = wire_queue(wire, "backup.write", params, strlen(params), &id, failure);
     if (!code) {
-        code = wait_for_answer(client, wire, &answer, failure);
+        code = wait_for_answer(client, wire, id, &answer, failure);
     }
     if (!code && client->json) {
         command_print_json(client, &answer);

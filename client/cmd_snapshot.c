@@ -174,8 +174,8 @@ static int write_one(const struct client *client, struct wire *wire, const char 
     watch_begin(&watch, client);
     code = wait_for_answer(wire, &watch, ret_answer, failure);
     watch_end(&watch);
-    if (!code && ret_answer->code != 0) {
-        code = wire_fail(ret_answer, failure);
+    if (!code) {
+        code = wire_check(wire, ret_answer, id, failure);
     }
     if (!code) {
         code = reply_check(ret_answer->result, WRITTEN, failure);

@@ -466,6 +466,15 @@ int wire_fail(const struct wire_answer *answer, struct failure *failure)
     return failure_set(failure, code, "%s", reason);
 }
 
+int wire_check(const struct wire *wire, const struct wire_answer *answer, int64_t id,
+               struct failure *failure)
+{
+    if (answer->code != 0) {
+        return wire_fail(answer, failure);
+    }
+    return answer->id == id ? 0 : fail_protocol(wire, "an answer that was not asked for", failure);
+}
+
 int wire_call_take(struct wire *wire, const char *method, json_t *params,
                    struct wire_answer *ret_answer, struct failure *failure)
 {
@@ -489,15 +498,12 @@ int wire_call_take(struct wire *wire, const char *method, json_t *params,
     }
     if (answer.code == WIRE_LIMIT && answer.id == 0 && length > SURELY_SHORT_BYTES) {
         answer.id = id; /* not the connections are at their limit but this line */
-        code = wire_fail(&answer, failure);
-    } else if (answer.code != 0) {
-        code = wire_fail(&answer, failure);
-    } else if (answer.id != id) {
-        code = fail_protocol(wire, "an answer that was not asked for", failure);
-    } else {
-        *ret_answer = answer;
-        return 0;
     }
-    wire_answer_deinit(&answer);
-    return code;
+    code = wire_check(wire, &answer, id, failure);
+    if (code) {
+        wire_answer_deinit(&answer);
+        return code;
+    }
+    *ret_answer = answer;
+    return 0;
 }

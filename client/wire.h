@@ -91,6 +91,11 @@ void wire_reason(const struct wire_answer *answer, char *ret_reason, size_t size
 /* The failure that an error answer stands for. */
 int wire_fail(const struct wire_answer *answer, struct failure *failure);
 
+/* 0 where the answer holds the result that the request `id` asked for. Nothing else may be under
+ * way. */
+int wire_check(const struct wire *wire, const struct wire_answer *answer, int64_t id,
+               struct failure *failure) __attribute__((warn_unused_result));
+
 /* The failure for a connection that is gone. */
 int wire_fail_closed(const struct wire *wire, struct failure *failure);
 

@@ -51,6 +51,19 @@ static void an_answer_that_is_neither_result_nor_error_is_told(void **state)
                      "a line is no answer of JSON-RPC 2.0");
 }
 
+static void an_answer_to_something_else_is_told(void **state)
+{
+    static const char LINE[] = "{\"jsonrpc\":\"2.0\",\"id\":#00,\"result\":{\"seq\":1}}\n";
+    struct every_command *all = *state;
+    for (size_t i = 0; i < all->count; i++) {
+        struct played *played = &all->played[i];
+        stand_in_spoil(&all->stand_in, &played->rehearsal, 0, LINE, false);
+        every_command_run(all, played, NULL, &run);
+        assert_ended_with_a_sentence(played, &run);
+        assert_int_equal(run.exit_code, EX_PROTOCOL);
+    }
+}
+
 static void a_daemon_that_goes_without_an_answer_is_told(void **state)
 {
     assert_each_ends(*state, "", true, EX_UNAVAILABLE, "closed the connection");
@@ -247,6 +260,7 @@ int main(void)
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(a_line_that_is_no_json_is_told),
         cmocka_unit_test(an_answer_that_is_neither_result_nor_error_is_told),
+        cmocka_unit_test(an_answer_to_something_else_is_told),
         cmocka_unit_test(a_daemon_that_goes_without_an_answer_is_told),
         cmocka_unit_test(a_daemon_that_goes_in_the_middle_of_an_answer_is_told),
         cmocka_unit_test(a_daemon_that_stops_is_told_with_its_own_words),

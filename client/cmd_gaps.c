@@ -9,6 +9,7 @@
 #include "client/command.h"
 #include "client/facts.h"
 #include "client/format.h"
+#include "client/json_memory.h"
 #include "client/table.h"
 
 enum {
@@ -56,7 +57,10 @@ static int draft_from_json(const char *text, size_t length, json_t **ret_params,
                            struct failure *failure)
 {
     json_error_t error;
-    json_t *params = json_loadb(text, length, JSON_REJECT_DUPLICATES, &error);
+    json_t *params = json_memory_read(text, length, JSON_REJECT_DUPLICATES, &error);
+    if (!params && json_memory_is_short()) {
+        return failure_memory(failure);
+    }
     if (!params) {
         return failure_set(failure, FAILURE_DATA,
                            "the draft begins as JSON and is not: %s (line %d, column %d)",

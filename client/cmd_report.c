@@ -132,13 +132,14 @@ static int write_page(const struct client *client, const struct report *report, 
     char *page = NULL;
     size_t length = 0;
     char size[FORMAT_BYTES];
-    if (report_write(report, &page, &length)) {
+    char *name = text_clean(path, TEXT_ONE_LINE); /* while nothing is written yet */
+    if (!name || report_write(report, &page, &length)) {
+        free(name);
         return failure_memory(failure);
     }
     int code = save_file(path, page, length, failure);
     free(page);
-    char *name = code ? NULL : text_clean(path, TEXT_ONE_LINE);
-    if (name && !client->json) {
+    if (!code && !client->json) {
         (void)fprintf(client->out.stream, "%s: written, %s\n", name,
                       format_size((double)length, size)); /* errors are seen at the end */
     }

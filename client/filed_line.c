@@ -6,6 +6,8 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "client/json_memory.h"
+
 void filed_line_deinit(struct filed_line *line)
 {
     for (size_t i = 0; i < line->count; i++) {
@@ -140,7 +142,7 @@ enum filed_line_found filed_line_read(const char *text, size_t length, struct fi
     json_error_t error;
     struct filed_line line = {0};
     enum filed_line_found found = FILED_LINE_BAD;
-    json_t *item = json_loadb(text, length, JSON_REJECT_DUPLICATES | JSON_DECODE_ANY, &error);
+    json_t *item = json_memory_read(text, length, JSON_REJECT_DUPLICATES | JSON_DECODE_ANY, &error);
     if (!item) {
         found = refuse(reason, "this is not JSON: %s (byte %d)", error.text, error.position);
     } else if (!json_is_object(item)) {
@@ -149,6 +151,9 @@ enum filed_line_found filed_line_read(const char *text, size_t length, struct fi
         found = read_item(item, text, length, &line, reason);
     }
     json_decref(item);
+    if (json_memory_is_short()) {
+        found = FILED_LINE_NO_MEMORY; /* the line is not to blame, and a request may lack a part */
+    }
     if (found != FILED_LINE_GOOD) {
         filed_line_deinit(&line);
     }

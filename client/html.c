@@ -17,7 +17,7 @@ int html_close(struct html *html, char **ret_page, size_t *ret_length)
     bool failed = html->failed || ferror(html->stream);
     failed = fclose(html->stream) || failed;
     html->stream = NULL;
-    if (failed) {
+    if (failed || !html->page) { /* fclose does not tell when its last realloc finds no memory */
         free(html->page);
         html->page = NULL;
         return -1;

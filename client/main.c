@@ -11,6 +11,7 @@
 #include "client/args.h"
 #include "client/command.h"
 #include "client/failure.h"
+#include "client/json_memory.h"
 #include "client/text.h"
 
 static const struct command *const COMMANDS[] = {
@@ -285,6 +286,7 @@ int main(int argc, char **argv)
     struct client client = {0};
     struct request request = {0};
     struct failure failure = {0};
+    json_memory_begin();
     json_object_seed(0); /* at random: nobody can choose names that collide */
     screen_init(&client.out, stdout);
     screen_init(&client.err, stderr);
@@ -297,6 +299,9 @@ int main(int argc, char **argv)
     }
     if (!code) {
         code = run_request(&request, &client, &failure);
+    }
+    if (!code && json_memory_is_short()) {
+        code = failure_memory(&failure); /* what was printed may lack a part */
     }
     struct failure output = {0};
     if (command_flush(&output) && (!code || code == FAILURE_DATA)) {

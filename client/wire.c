@@ -18,6 +18,7 @@
 #include <sys/un.h>
 #include <unistd.h>
 
+#include "client/json_memory.h"
 #include "daemon/lines.h"
 
 enum {
@@ -379,7 +380,11 @@ static int read_answer(const struct wire *wire, const char *line, size_t length,
     struct wire_answer answer = {0};
     json_error_t error;
     int code = 0;
-    answer.root = json_loadb(line, length, JSON_REJECT_DUPLICATES, &error);
+    answer.root = json_memory_read(line, length, JSON_REJECT_DUPLICATES, &error);
+    if (json_memory_is_short()) {
+        code = failure_memory(failure); /* the answer is not to blame */
+        goto fail;
+    }
     if (!json_is_object(answer.root)) {
         code = fail_protocol(wire, answer.root ? "an answer is no object" : error.text, failure);
         goto fail;
@@ -483,8 +488,9 @@ int wire_call_take(struct wire *wire, const char *method, json_t *params,
     int64_t id = 0;
     struct wire_answer answer = {0};
     json_decref(params);
-    int code =
-        text ? wire_queue(wire, method, text, length, &id, failure) : failure_memory(failure);
+    int code = text && !json_memory_is_short()
+                   ? wire_queue(wire, method, text, length, &id, failure)
+                   : failure_memory(failure);
     free(text);
     while (!code) {
         code = wire_next(wire, &answer, failure);

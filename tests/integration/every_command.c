@@ -166,6 +166,7 @@ static void play(struct every_command *all, struct played *played, struct peer *
     struct program_run run;
     stand_in_pass_on(&all->stand_in, all->daemon.socket, &played->rehearsal);
     every_command_run(all, played, NULL, &run);
+    stand_in_rest(&all->stand_in);
     if (run.exit_code != 0 || *run.error) {
         fail_msg("%s: ended with %d: %s", played_name(played), run.exit_code, run.error);
     }

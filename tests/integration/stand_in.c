@@ -264,17 +264,22 @@ void stand_in_stop(struct stand_in *stand_in)
     assert_int_equal(pthread_join(stand_in->thread, NULL), 0);
     assert_int_equal(close(stand_in->listener), 0);
     assert_int_equal(unlink(stand_in->path), 0);
+    free(stand_in->instead);
     assert_int_equal(pthread_mutex_destroy(&stand_in->mutex), 0);
 }
 
-/* Takes the members that a test sets, and begins to count anew. */
-static void become(struct stand_in *stand_in, const struct stand_in *wanted)
+/* Takes the members that a test sets, and begins to count anew. The text is a copy: the client may
+ * be at its end before the thread has seen that there is nothing more to send. */
+static void become(struct stand_in *stand_in, const struct stand_in *wanted, const char *instead)
 {
+    char *copy = instead ? strdup(instead) : NULL;
+    assert_true(copy || !instead);
     assert_int_equal(pthread_mutex_lock(&stand_in->mutex), 0);
     stand_in->daemon = wanted->daemon;
     stand_in->rehearsal = wanted->rehearsal;
     stand_in->spoiled = wanted->spoiled;
-    stand_in->instead = wanted->instead;
+    free(stand_in->instead);
+    stand_in->instead = copy;
     stand_in->closes = wanted->closes;
     stand_in->asked = 0;
     assert_int_equal(pthread_mutex_unlock(&stand_in->mutex), 0);
@@ -282,22 +287,26 @@ static void become(struct stand_in *stand_in, const struct stand_in *wanted)
 
 void stand_in_pass_on(struct stand_in *stand_in, const char *daemon, struct rehearsal *rehearsal)
 {
-    become(stand_in, &(struct stand_in){.daemon = daemon, .rehearsal = rehearsal});
+    become(stand_in, &(struct stand_in){.daemon = daemon, .rehearsal = rehearsal}, NULL);
+}
+
+void stand_in_rest(struct stand_in *stand_in)
+{
+    become(stand_in, &(struct stand_in){0}, NULL);
 }
 
 void stand_in_repeat(struct stand_in *stand_in, struct rehearsal *rehearsal)
 {
     assert_true(rehearsal->count > 0);
-    become(stand_in, &(struct stand_in){.rehearsal = rehearsal});
+    become(stand_in, &(struct stand_in){.rehearsal = rehearsal}, NULL);
 }
 
 void stand_in_spoil(struct stand_in *stand_in, struct rehearsal *rehearsal, size_t at,
                     const char *instead, bool closes)
 {
     assert_true(at < rehearsal->count);
-    become(stand_in,
-           &(struct stand_in){
-               .rehearsal = rehearsal, .spoiled = at, .instead = instead, .closes = closes});
+    become(stand_in, &(struct stand_in){.rehearsal = rehearsal, .spoiled = at, .closes = closes},
+           instead);
 }
 
 size_t stand_in_asked(struct stand_in *stand_in)

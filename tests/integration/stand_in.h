@@ -33,10 +33,10 @@ struct stand_in {
     pthread_mutex_t mutex; /* for all that follows */
     const char *daemon;    /* the socket to pass on to; NULL: it answers by itself */
     struct rehearsal *rehearsal;
-    size_t asked;        /* requests since the last stand_in_pass_on or stand_in_repeat */
-    size_t spoiled;      /* the answer that is another one */
-    const char *instead; /* what is sent for it, # being the id; NULL: all are given as they were */
-    bool closes;         /* the connection, behind it */
+    size_t asked;   /* requests since the last stand_in_pass_on or stand_in_repeat */
+    size_t spoiled; /* the answer that is another one */
+    char *instead;  /* what is sent for it, # being the id; NULL: all are given as they were */
+    bool closes;    /* the connection, behind it */
 };
 
 void stand_in_start(struct stand_in *stand_in, const char *path);
@@ -45,10 +45,13 @@ void stand_in_stop(struct stand_in *stand_in);
 /* From now on requests go to the daemon at this socket, and the rehearsal keeps its answers. */
 void stand_in_pass_on(struct stand_in *stand_in, const char *daemon, struct rehearsal *rehearsal);
 
+/* The rehearsal is over, and the caller's alone. Nothing may be asked until the next one. */
+void stand_in_rest(struct stand_in *stand_in);
+
 /* From now on it answers as was rehearsed. */
 void stand_in_repeat(struct stand_in *stand_in, struct rehearsal *rehearsal);
 
-/* Likewise, but for one answer: `instead` is sent (borrowed, with its line end, # being the id). */
+/* Likewise, but for one answer: `instead` is sent (copied, with its line end, # being the id). */
 void stand_in_spoil(struct stand_in *stand_in, struct rehearsal *rehearsal, size_t at,
                     const char *instead, bool closes);
 

@@ -125,7 +125,7 @@ $(BUILD)/undertag: $(BUILD)/client/main.o $(CLIENT_LIBRARY)
 	$(Q)$(CC) $(CFLAGS) $(LDFLAGS) $^ $(CLIENT_LIBS) -o $@
 
 # What programs test_failing_* may fail; see tests/unit/failing_calls.h, which has the same names.
-FAILING_CALLS := calloc close fdatasync fdopen fdopendir fflush fork free fstat fstatat fsync ftruncate \
+FAILING_CALLS := _exit calloc close fdatasync fdopen fdopendir fflush fork free fstat fstatat fsync ftruncate \
     getrandom lstat malloc mdb_cursor_del mdb_cursor_get mdb_cursor_open mdb_dbi_open \
     mdb_del mdb_drop mdb_env_copyfd2 mdb_env_create mdb_env_get_fd mdb_env_info mdb_env_open \
     mdb_env_set_mapsize mdb_env_set_maxdbs mdb_env_set_maxreaders mdb_env_stat mdb_get \

@@ -32,17 +32,29 @@ enum failing {
     FAILING_NEW    /* what begins a thread, a process, a lock or randomness */
 };
 
-static struct {
+struct failing_state {
     atomic_bool is_armed;
     enum failing kind;
     atomic_long left; /* calls to let pass; below 0: one has failed */
     atomic_long blocks;
-} failing;
+};
+
+static struct failing_state *failing; /* shared with processes that are forked */
+
+__attribute__((constructor)) static void failing_share(void)
+{
+    void *shared =
+        mmap(NULL, sizeof *failing, PROT_READ | PROT_WRITE, MAP_SHARED | MAP_ANONYMOUS, -1, 0);
+    if (shared == MAP_FAILED) {
+        abort();
+    }
+    failing = shared;
+}
 
 static inline bool failing_now(enum failing kind, int error)
 {
-    if (!atomic_load(&failing.is_armed) || failing.kind != kind ||
-        atomic_fetch_sub(&failing.left, 1) != 0) {
+    if (!atomic_load(&failing->is_armed) || failing->kind != kind ||
+        atomic_fetch_sub(&failing->left, 1) != 0) {
         return false;
     }
     errno = error;
@@ -51,22 +63,22 @@ static inline bool failing_now(enum failing kind, int error)
 
 static inline void failing_arm(enum failing kind, long n)
 {
-    failing.kind = kind;
-    atomic_store(&failing.left, n);
-    atomic_store(&failing.is_armed, true);
+    failing->kind = kind;
+    atomic_store(&failing->left, n);
+    atomic_store(&failing->is_armed, true);
 }
 
 /* Returns whether one has failed. */
 static inline bool failing_disarm(void)
 {
-    atomic_store(&failing.is_armed, false);
-    return atomic_load(&failing.left) < 0;
+    atomic_store(&failing->is_armed, false);
+    return atomic_load(&failing->left) < 0;
 }
 
 /* Blocks of memory that our own code has asked for and not given back. */
 static inline long failing_blocks(void)
 {
-    return atomic_load(&failing.blocks);
+    return atomic_load(&failing->blocks);
 }
 
 /*
@@ -120,7 +132,7 @@ void __wrap_free(void *memory);
 
 static inline void *failing_count(void *memory)
 {
-    atomic_fetch_add(&failing.blocks, memory ? 1 : 0);
+    atomic_fetch_add(&failing->blocks, memory ? 1 : 0);
     return memory;
 }
 
@@ -150,7 +162,7 @@ char *__wrap_strdup(const char *text)
 
 void __wrap_free(void *memory)
 {
-    atomic_fetch_sub(&failing.blocks, memory ? 1 : 0);
+    atomic_fetch_sub(&failing->blocks, memory ? 1 : 0);
     __real_free(memory);
 }
 
@@ -295,6 +307,14 @@ FAILING_BEGIN(int, pthread_condattr_init, (pthread_condattr_t * attributes), (at
               ENOMEM)
 FAILING_BEGIN(int, pthread_condattr_setclock, (pthread_condattr_t * attributes, clockid_t clock),
               (attributes, clock), EINVAL, EINVAL)
+void __wrap__exit(int code) __attribute__((noreturn));
+
+/* With what exit does besides: a sanitizer looks for leaks of the forked process then. */
+void __wrap__exit(int code)
+{
+    exit(code); /* NOLINT(concurrency-mt-unsafe): it has one thread */
+}
+
 FAILING_BEGIN(pid_t, fork, (void), (), EAGAIN, -1)
 FAILING_BEGIN(pid_t, waitpid, (pid_t pid, int *ret_status, int options), (pid, ret_status, options),
               ECHILD, -1)

@@ -144,11 +144,20 @@ static void drop(struct dictionary *dictionary, struct dictionary_entry *entry)
 /* --- looking up ---------------------------------------------------------------------------------
  */
 
+/* Whether there are words in the base that are not in memory. */
+static bool has_let_go(const struct dictionary *dictionary)
+{
+    const struct entry_list *lists = dictionary->lists;
+    return dictionary->totals.size > lists[DICTIONARY_CLEAN].count +
+                                         lists[DICTIONARY_CHANGED].count +
+                                         lists[DICTIONARY_SEALED].count;
+}
+
 static int read_base(const struct dictionary *dictionary, const struct base *base, const char *term,
                      size_t bytes, struct base_word *ret_found)
 {
     struct base_word found = {0};
-    if (!base) {
+    if (!base || !has_let_go(dictionary)) {
         return -ENOENT;
     }
     int result = base->word(base->user, term, bytes, &found);

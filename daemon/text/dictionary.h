@@ -59,8 +59,9 @@ void dictionary_totals(const struct dictionary *dictionary, struct dictionary_to
 int dictionary_restore_totals(struct dictionary *dictionary, const struct dictionary_totals *totals)
     __attribute__((warn_unused_result));
 
-/* Looks a term up in memory and then in the base; admits nothing. Returns 0, -ENOENT, -EIO where
- * the base cannot be read or contradicts the dictionary, or -ENOMEM. */
+/* Looks a term up in memory and then, unless all words are there, in the base; admits nothing.
+ * Returns 0, -ENOENT, -EIO where the base cannot be read or contradicts the dictionary, or -ENOMEM.
+ */
 int dictionary_find(const struct dictionary *dictionary, const struct base *base, const char *term,
                     size_t bytes, struct base_word *ret_found) __attribute__((warn_unused_result));
 

@@ -79,6 +79,21 @@ static void the_base_is_not_asked_for_what_is_in_memory(void **state)
     assert_int_equal(fixture->list->lookups, lookups + 1);
 }
 
+static void the_base_is_not_asked_for_an_unknown_word_while_all_are_in_memory(void **state)
+{
+    struct fixture *fixture = *state;
+    (void)intern(fixture, "bell");
+    (void)intern(fixture, "fog");
+    size_t lookups = fixture->list->lookups;
+    assert_int_equal(find(fixture, "lamp").number, DICTIONARY_NONE);
+    assert_int_equal(intern(fixture, "lamp"), 2);
+    assert_int_equal(fixture->list->lookups, lookups);
+    empty(fixture);
+    assert_int_equal(find(fixture, "gale").number, DICTIONARY_NONE);
+    assert_int_equal(find(fixture, "bell").number, 1);
+    assert_int_equal(fixture->list->lookups, lookups + 2);
+}
+
 static void what_changed_in_memory_counts_and_not_what_the_base_has(void **state)
 {
     struct fixture *fixture = *state;
@@ -428,6 +443,7 @@ int main(void)
         base_test(to_find_a_word_takes_nothing_into_memory),
         base_test(an_interned_word_has_the_number_and_count_of_the_base),
         base_test(the_base_is_not_asked_for_what_is_in_memory),
+        base_test(the_base_is_not_asked_for_an_unknown_word_while_all_are_in_memory),
         base_test(what_changed_in_memory_counts_and_not_what_the_base_has),
         base_test(a_forgotten_word_is_not_found_though_the_base_has_it),
         base_test(a_word_forgotten_since_it_was_stored_gets_a_new_number),

@@ -3,6 +3,7 @@
  * trainer once it is near, and tidies up whatever came of it.
  */
 #include <errno.h>
+#include <malloc.h>
 #include <stdlib.h>
 #include <string.h>
 #include <sys/resource.h>
@@ -128,6 +129,8 @@ static void remove_next(struct rebuild *rebuild)
 {
     struct store_error error = {0};
     build_close(&rebuild->build);
+    /* A whole model was let go of, the old one or the new: nobody else can use all of its holes. */
+    (void)malloc_trim(0); /* says only whether there was something */
     if (model_store_remove_next(&rebuild->settings.places, &error) != STORE_OK) {
         log_line(LOG_CAUTION, "what is left of a rebuild stays until a restart (%s)", error.text);
     }

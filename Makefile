@@ -132,7 +132,7 @@ FAILING_CALLS := _exit calloc close fdatasync fdopen fdopendir fflush fork free 
     mdb_put mdb_reader_check mdb_stat mdb_txn_begin mdb_txn_commit mkdir mkdirat open openat \
     opendir pipe2 pread pthread_cond_init pthread_condattr_init \
     pthread_condattr_setclock pthread_create pthread_mutex_init pthread_rwlock_init pwrite \
-    read readlinkat realloc renameat renameat2 stat statvfs strdup symlinkat unlink unlinkat \
+    read readlinkat realloc renameat renameat2 stat statvfs strdup strndup symlinkat unlink unlinkat \
     waitpid write
 FAILING_PROGRAMS := $(filter $(BUILD)/tests/test_failing_%,$(UNIT_PROGRAMS))
 $(FAILING_PROGRAMS): WRAPPED := $(addprefix -Wl$(comma)--wrap=,$(FAILING_CALLS))

@@ -123,11 +123,13 @@ void *__real_malloc(size_t size);
 void *__real_calloc(size_t count, size_t size);
 void *__real_realloc(void *memory, size_t size);
 char *__real_strdup(const char *text);
+char *__real_strndup(const char *text, size_t most);
 void __real_free(void *memory);
 void *__wrap_malloc(size_t size);
 void *__wrap_calloc(size_t count, size_t size);
 void *__wrap_realloc(void *memory, size_t size);
 char *__wrap_strdup(const char *text);
+char *__wrap_strndup(const char *text, size_t most);
 void __wrap_free(void *memory);
 
 static inline void *failing_count(void *memory)
@@ -158,6 +160,11 @@ void *__wrap_realloc(void *memory, size_t size)
 char *__wrap_strdup(const char *text)
 {
     return failing_now(FAILING_MEMORY, ENOMEM) ? NULL : failing_count(__real_strdup(text));
+}
+
+char *__wrap_strndup(const char *text, size_t most)
+{
+    return failing_count(failing_now(FAILING_MEMORY, ENOMEM) ? NULL : __real_strndup(text, most));
 }
 
 void __wrap_free(void *memory)

@@ -12,6 +12,7 @@
 #include "client/command.h"
 #include "client/facts.h"
 #include "client/format.h"
+#include "client/json_memory.h"
 #include "client/progress.h"
 #include "client/request.h"
 
@@ -70,7 +71,7 @@ static int make_params(const struct args *args, char **ret_params, struct failur
         code = request_whole(params, "rate", &args->values[RATE], failure);
     }
     if (!code) {
-        *ret_params = json_dumps(params, JSON_COMPACT);
+        *ret_params = json_memory_text(params);
         code = *ret_params ? 0 : failure_memory(failure);
     }
     json_decref(params);

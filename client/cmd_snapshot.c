@@ -13,6 +13,7 @@
 #include "client/command.h"
 #include "client/facts.h"
 #include "client/format.h"
+#include "client/json_memory.h"
 #include "client/progress.h"
 #include "client/request.h"
 #include "client/table.h"
@@ -208,7 +209,7 @@ static int run_write(struct client *client, const struct args *args, struct fail
     if (code) {
         return code;
     }
-    char *text = json_dumps(params, JSON_COMPACT);
+    char *text = json_memory_text(params);
     json_decref(params);
     if (!text) {
         return failure_memory(failure);

@@ -85,7 +85,7 @@ static enum filed_line_found add_call(struct filed_line *line, const json_t *cal
         json_decref(params);
         return FILED_LINE_NO_MEMORY;
     }
-    char *text = json_dumps(params, JSON_COMPACT);
+    char *text = json_memory_text(params);
     json_decref(params);
     return add_take(line, method, text);
 }
@@ -113,7 +113,7 @@ static char *own_params(json_t *item, const char *text, size_t length)
         return strndup(text, length);
     }
     (void)json_object_del(item, "then"); /* it is there */
-    return json_dumps(item, JSON_COMPACT);
+    return json_memory_text(item);
 }
 
 static enum filed_line_found read_item(json_t *item, const char *text, size_t length,

@@ -42,6 +42,16 @@ json_t *json_memory_read(const char *text, size_t length, size_t flags, json_err
     return NULL;
 }
 
+char *json_memory_text(const json_t *value)
+{
+    char *text = json_dumps(value, JSON_COMPACT);
+    if (memory.is_short) {
+        free(text);
+        text = NULL;
+    }
+    return text;
+}
+
 bool json_memory_is_short(void)
 {
     return memory.is_short;

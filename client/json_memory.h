@@ -1,5 +1,5 @@
 /*
- * json_memory: reading JSON where there may be no memory for it.
+ * json_memory: reading and writing JSON where there may be no memory for it.
  *
  * jansson's reader does not look at every allocation of its own (2.14): when one of its buffers
  * cannot grow, it goes on without what was to be put there, and may leave the buffer. So it is left
@@ -22,6 +22,10 @@ void json_memory_begin(void);
  */
 json_t *json_memory_read(const char *text, size_t length, size_t flags, json_error_t *ret_error)
     __attribute__((warn_unused_result));
+
+/* A value as text on one line, which the caller frees; NULL where there was no memory for it, or,
+ * since json_memory_begin, for a part of anything: what would be sent might be another request. */
+char *json_memory_text(const json_t *value) __attribute__((warn_unused_result));
 
 /* Whether jansson has been refused memory since json_memory_begin. */
 bool json_memory_is_short(void);

@@ -483,14 +483,13 @@ int wire_check(const struct wire *wire, const struct wire_answer *answer, int64_
 int wire_call_take(struct wire *wire, const char *method, json_t *params,
                    struct wire_answer *ret_answer, struct failure *failure)
 {
-    char *text = params ? json_dumps(params, JSON_COMPACT) : NULL;
+    char *text = params ? json_memory_text(params) : NULL;
     size_t length = text ? strlen(text) : 0;
     int64_t id = 0;
     struct wire_answer answer = {0};
     json_decref(params);
-    int code = text && !json_memory_is_short()
-                   ? wire_queue(wire, method, text, length, &id, failure)
-                   : failure_memory(failure);
+    int code =
+        text ? wire_queue(wire, method, text, length, &id, failure) : failure_memory(failure);
     free(text);
     while (!code) {
         code = wire_next(wire, &answer, failure);

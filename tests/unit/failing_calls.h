@@ -51,9 +51,11 @@ __attribute__((constructor)) static void failing_share(void)
     failing = shared;
 }
 
+static bool failing_is_over; /* this process is at its end: what follows is not ours */
+
 static inline bool failing_now(enum failing kind, int error)
 {
-    if (!atomic_load(&failing->is_armed) || failing->kind != kind ||
+    if (failing_is_over || !atomic_load(&failing->is_armed) || failing->kind != kind ||
         atomic_fetch_sub(&failing->left, 1) != 0) {
         return false;
     }
@@ -316,9 +318,11 @@ FAILING_BEGIN(int, pthread_condattr_setclock, (pthread_condattr_t * attributes, 
               (attributes, clock), EINVAL, EINVAL)
 void __wrap__exit(int code) __attribute__((noreturn));
 
-/* With what exit does besides: a sanitizer looks for leaks of the forked process then. */
+/* With what exit does besides: a sanitizer looks for leaks of the forked process then, and what was
+ * counted for coverage is written. */
 void __wrap__exit(int code)
 {
+    failing_is_over = true;
     exit(code); /* NOLINT(concurrency-mt-unsafe): it has one thread */
 }
 

@@ -89,16 +89,25 @@ int scratch_reserve_slots(struct weights_scratch *scratch)
     return has_room ? 0 : -ENOMEM;
 }
 
-void scratch_clear(struct weights_scratch *scratch)
+/* The number of lanes is a constant where this is called, so that there is no loop over them. */
+static inline __attribute__((always_inline)) void clear_sums(struct weights_scratch *scratch,
+                                                             size_t lanes)
 {
-    size_t lanes = scratch->lanes;
     for (size_t i = 0; i < scratch->touched_count; i++) {
-        uint32_t tag = scratch->touched[i];
         for (size_t lane = 0; lane < lanes; lane++) {
-            scratch->sums[tag * lanes + lane] = SCRATCH_UNTOUCHED;
+            scratch->sums[scratch->touched[i] * lanes + lane] = SCRATCH_UNTOUCHED;
         }
     }
     scratch->touched_count = 0;
+}
+
+void scratch_clear(struct weights_scratch *scratch)
+{
+    if (scratch->lanes == WEIGHTS_LANES) {
+        clear_sums(scratch, WEIGHTS_LANES);
+    } else {
+        clear_sums(scratch, 1);
+    }
 }
 
 void scratch_end_learning(struct weights_scratch *scratch, const struct weights_given *given,

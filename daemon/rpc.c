@@ -5,10 +5,6 @@
 
 #include "daemon/json_memory.h"
 
-enum {
-    ANSWER_DIGITS = 12 /* what was learned has 7; all 17 would show .05 as .050000000000000003 */
-};
-
 /* Whether the text nests deeper than RPC_DEPTH. Looks at brackets outside strings only, so that the
  * parser behind it never sees a text that would take it too deep. */
 static bool is_too_deep(const char *line, size_t length)
@@ -149,7 +145,7 @@ static char *envelope_take(json_t *id, const char *name, json_t *value)
     code |= id ? json_object_set(answer, "id", id) : json_object_set_new(answer, "id", json_null());
     code |= json_object_set_new(answer, name, value);
     if (code == 0) {
-        text = json_dumps(answer, JSON_COMPACT | JSON_REAL_PRECISION(ANSWER_DIGITS));
+        text = json_dumps(answer, JSON_COMPACT);
     }
     if (json_memory_was_refused()) {
         free(text); /* it may lack a part */

@@ -166,7 +166,7 @@ static void the_client_ends_with_try_again(void **state)
 /* --- a model that cannot be stored ----------------------------------------------------------- */
 
 enum {
-    ENTRIES = 1200,
+    ENTRIES = 2000,
     WORDS = 60 /* most of them in no other entry: more than 64 MiB have room for unstored */
 };
 

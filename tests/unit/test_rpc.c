@@ -349,17 +349,6 @@ static void line_ends_within_strings_are_escaped(void **state)
     json_decref(result);
 }
 
-static void numbers_have_as_many_digits_as_mean_something(void **state)
-{
-    (void)state;
-    json_t *result = json_pack("[f, f, I]", 0.05, 1.0 / 3.0, (json_int_t)1234567890123456);
-    char *text = rpc_result_text(NULL, result);
-    assert_non_null(text);
-    assert_non_null(strstr(text, "[0.05,0.333333333333,1234567890123456]"));
-    free(text);
-    json_decref(result);
-}
-
 /* Section 5.1: code, message, and data where there is more to say. */
 static void a_fault_tells_code_sentence_and_member(void **state)
 {
@@ -404,7 +393,6 @@ int main(void)
         cmocka_unit_test(params_are_named_and_not_in_order),
         cmocka_unit_test(a_result_goes_out_with_the_id),
         cmocka_unit_test(line_ends_within_strings_are_escaped),
-        cmocka_unit_test(numbers_have_as_many_digits_as_mean_something),
         cmocka_unit_test(a_fault_tells_code_sentence_and_member),
         cmocka_unit_test(a_fault_that_blames_no_member_has_no_data),
     };

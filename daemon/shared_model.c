@@ -32,7 +32,6 @@ int shared_model_init_take(struct shared_model *shared, struct model *model,
     shared->version = 0;
     shared->learned = learned;
     shared->broken = 0;
-    atomic_init(&shared->reads, 0);
     return 0;
 }
 
@@ -57,7 +56,6 @@ void shared_model_exchange(struct shared_model *shared, struct model **model,
 /* Errors of these are errors of ours alone. */
 void shared_model_read(struct shared_model *shared)
 {
-    atomic_fetch_add_explicit(&shared->reads, 1, memory_order_relaxed);
     if (pthread_rwlock_rdlock(&shared->lock) != 0) {
         abort();
     }
@@ -75,9 +73,4 @@ void shared_model_unlock(struct shared_model *shared)
     if (pthread_rwlock_unlock(&shared->lock) != 0) {
         abort();
     }
-}
-
-uint64_t shared_model_reads(struct shared_model *shared)
-{
-    return atomic_load_explicit(&shared->reads, memory_order_relaxed);
 }

@@ -5,7 +5,6 @@
 #define UNDERTAG_SHARED_MODEL_H
 
 #include <pthread.h>
-#include <stdatomic.h>
 #include <stdbool.h>
 #include <stdint.h>
 
@@ -21,7 +20,6 @@ struct shared_model {
     uint64_t learned; /* the seq that the model has learned up to */
     int broken;       /* 0, or why it must not be asked any more: half a change, or damage */
     pthread_rwlock_t lock;
-    atomic_uint_fast64_t reads; /* how often it was asked; without the lock */
 };
 
 /* Takes the model, also on failure; the store stays the caller's. */
@@ -38,8 +36,5 @@ void shared_model_exchange(struct shared_model *shared, struct model **model,
 void shared_model_read(struct shared_model *shared);
 void shared_model_write(struct shared_model *shared);
 void shared_model_unlock(struct shared_model *shared);
-
-/* Rises with each shared_model_read: whether somebody asks. */
-uint64_t shared_model_reads(struct shared_model *shared);
 
 #endif

@@ -239,20 +239,15 @@ static void take_over(struct trainer *trainer)
     settings->kept(settings->user);
 }
 
-static uint64_t ms_until(uint64_t moment_us)
-{
-    uint64_t now_us = clock_steady_us();
-    return now_us < moment_us ? (moment_us - now_us) / 1000 + 1 : 0;
-}
-
 /* How long to wait for work: until the model is to be stored, if anything is to be stored. */
 static uint64_t idle_ms(const struct trainer *trainer)
 {
     if (trainer->rescore_due) {
-        return ms_until(trainer->rescore_from_us);
+        return 0;
     }
     if (trainer->rehearse_due) {
-        return ms_until(trainer->rest_until_us);
+        uint64_t now_us = clock_steady_us();
+        return now_us < trainer->rest_until_us ? (trainer->rest_until_us - now_us) / 1000 + 1 : 0;
     }
     if (trainer->is_storing) {
         return IDLE_MS; /* its end is a nudge */

@@ -7,7 +7,6 @@
 
 enum {
     RESCORED_A_ROUND = 16, /* items of the worklist, before it looks for changes again */
-    ASKED_SHARE = 10,      /* scoring again takes a tenth of the time while somebody asks */
     REHEARSAL_US = 1000,   /* likewise */
     SETTLED_US = 50000     /* without a change: rehearsal waits for the end of a feed */
 };
@@ -38,34 +37,27 @@ static int rescore_item(struct trainer *trainer, struct store_view *view, uint64
     return result == 0 ? STORE_OK : trainer_fail_to_learn(trainer, result, number, error);
 }
 
-/* Scores again, while there is time and nobody asks, what the model has outgrown; says whether
- * there is more. What cannot be scored now is left until something has been learned. */
+/* Scores again, while there is time, what the model has outgrown; says whether there is more. What
+ * cannot be scored now is left until something has been learned. */
 static bool rescore_some(struct trainer *trainer, struct store_error *error)
 {
-    struct shared_model *shared = trainer->settings.shared;
     struct store_view *view = NULL;
-    uint64_t begun_us = clock_steady_us();
-    uint64_t reads = shared_model_reads(shared);
     if (trainer_begin_round(trainer, &view, error) != STORE_OK) {
         return false; /* learning will tell, if it lasts */
     }
     uint64_t number = 0;
     int next = 0;
     int code = STORE_OK;
-    bool is_asked = false;
-    for (size_t i = 0; i < RESCORED_A_ROUND && code == STORE_OK && next == 0 && !is_asked; i++) {
-        next = model_next_stale(shared->model, &trainer->base.base, &number);
+    for (size_t i = 0; i < RESCORED_A_ROUND && code == STORE_OK && next == 0; i++) {
+        next = model_next_stale(trainer->settings.shared->model, &trainer->base.base, &number);
         if (next == 0) {
             code = rescore_item(trainer, view, number, error);
             trainer->idly_changed = true;
         } else if (next != -ENOENT) {
             code = trainer_fail_to_learn(trainer, next, trainer->learned, error);
         }
-        is_asked = shared_model_reads(shared) != reads;
     }
     trainer_end_round(trainer, view);
-    uint64_t now_us = clock_steady_us();
-    trainer->rescore_from_us = is_asked ? now_us + (ASKED_SHARE - 1) * (now_us - begun_us) : now_us;
     return code == STORE_OK && next == 0;
 }
 
@@ -159,9 +151,7 @@ void trainer_work_idly(struct trainer *trainer, bool is_idle)
         return;
     }
     if (trainer->rescore_due) {
-        if (clock_steady_us() >= trainer->rescore_from_us) {
-            trainer->rescore_due = rescore_some(trainer, &error);
-        }
+        trainer->rescore_due = rescore_some(trainer, &error);
         if (trainer->is_damaged) {
             trainer_fail(trainer, &error);
         }

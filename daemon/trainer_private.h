@@ -27,12 +27,11 @@ struct trainer {
     uint64_t kept;    /* the seq of the stored model */
     uint64_t sealed;  /* of what is being stored, if anything is */
     bool is_storing;
-    bool forgot;              /* words, with what is being stored */
-    uint64_t sealed_at_us;    /* when storing was begun, or tried, last */
-    uint64_t storing_us;      /* how long that took last */
-    bool rescore_due;         /* the model has changed since there was nothing to score again */
-    uint64_t rescore_from_us; /* somebody asks: he has the processor until then */
-    bool idly_changed;        /* by scoring again or rehearsal, since the model was stored */
+    bool forgot;           /* words, with what is being stored */
+    uint64_t sealed_at_us; /* when storing was begun, or tried, last */
+    uint64_t storing_us;   /* how long that took last */
+    bool rescore_due;      /* the model has changed since there was nothing to score again */
+    bool idly_changed;     /* by scoring again or rehearsal, since the model was stored */
     bool rehearse_due;
     uint64_t rest_until_us; /* rehearsal takes no more than its share */
     bool scrub_due;

@@ -74,7 +74,7 @@ static void with_little_memory_all_stale_entries_are_scored_again_in_the_end(voi
     file_entries(training);
     start(training);
     assert_int_equal(learned(training), ENTRIES);
-    while (size_of(training).stale > 0) { /* to ask without a pause does not keep it from it */
+    while (size_of(training).stale > 0) {
         (void)sched_yield();
     }
     stop(training);

@@ -58,6 +58,9 @@ void call_answer_take(struct call *call, json_t *result);
  * wants an answer. The result is borrowed. */
 char *call_result_text(const struct call *call, json_t *result);
 
+/* The same of a result that is written already. */
+char *call_written_text(const struct call *call, const char *result);
+
 /* Ends the call with such a text, which it takes; NULL as call_result_text gave it. */
 void call_answer_text_take(struct call *call, char *text);
 

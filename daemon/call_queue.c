@@ -312,6 +312,11 @@ char *call_result_text(const struct call *call, json_t *result)
     return call->request.id ? rpc_result_text(call->request.id, result) : NULL;
 }
 
+char *call_written_text(const struct call *call, const char *result)
+{
+    return call->request.id ? rpc_written_text(call->request.id, result) : NULL;
+}
+
 void call_answer_text_take(struct call *call, char *text)
 {
     end_running(call, text, call->request.id != NULL);

@@ -7,6 +7,7 @@
 #include <string.h>
 
 #include "daemon/item_read.h"
+#include "daemon/json_text.h"
 #include "daemon/params.h"
 #include "daemon/read_job.h"
 #include "storage/vocabulary.h"
@@ -154,46 +155,40 @@ static int prepare(struct gaps_job *job, struct model_question *question)
 /* --- the answer ---------------------------------------------------------------------------------
  */
 
-static json_t *words_json(const struct model_question *question, const struct model_gap *gap)
-{
-    json_t *words = json_array();
-    assert(gap->word_count == 0 || question->features); /* words are features of the question */
-    for (size_t i = 0; words && i < gap->word_count; i++) {
-        const struct feature *feature = &question->features[gap->words[i].feature];
-        json_t *word = json_array();
-        int code =
-            json_array_append_new(word, json_stringn(feature->surface, feature->surface_bytes));
-        code |= json_array_append_new(word, json_real(gap->words[i].share));
-        code |= json_array_append_new(words, word);
-        if (code < 0) {
-            json_decref(words);
-            return NULL;
-        }
-    }
-    return words;
-}
-
-/* Made for every gap of every answer: what is known to be right is not checked again. */
-static json_t *gap_json(const char *name, const struct model_question *question,
+static void write_words(struct json_text *text, const struct model_question *question,
                         const struct model_gap *gap)
 {
-    json_t *entry = json_object();
-    int code = json_object_set_new_nocheck(entry, "tag", json_string_nocheck(name));
-    code |= json_object_set_new_nocheck(entry, "chance", json_real(gap->chance));
-    code |= json_object_set_new_nocheck(entry, "score", json_real(gap->score));
+    assert(gap->word_count == 0 || question->features); /* words are features of the question */
+    json_text_plain(text, ",\"words\":[");
+    for (size_t i = 0; i < gap->word_count; i++) {
+        const struct feature *feature = &question->features[gap->words[i].feature];
+        json_text_plain(text, i > 0 ? ",[" : "[");
+        json_text_string(text, feature->surface, feature->surface_bytes);
+        json_text_plain(text, ",");
+        json_text_real(text, gap->words[i].share);
+        json_text_plain(text, "]");
+    }
+    json_text_plain(text, "]");
+}
+
+static void write_gap(struct json_text *text, const char *name,
+                      const struct model_question *question, const struct model_gap *gap)
+{
+    json_text_plain(text, "{\"tag\":");
+    json_text_string(text, name, strlen(name));
+    json_text_plain(text, ",\"chance\":");
+    json_text_real(text, gap->chance);
+    json_text_plain(text, ",\"score\":");
+    json_text_real(text, gap->score);
     if (question->why) {
-        code |= json_object_set_new_nocheck(entry, "words", words_json(question, gap));
+        write_words(text, question, gap);
     }
-    if (code < 0) {
-        json_decref(entry);
-        return NULL;
-    }
-    return entry;
+    json_text_plain(text, "}");
 }
 
 /* The model may know tags that were opened after the question's view: names need a new one. */
-static int gaps_json(struct gaps_job *job, const struct model_question *question,
-                     const struct model_answer *answer, json_t *gaps)
+static int write_gaps(struct gaps_job *job, const struct model_question *question,
+                      const struct model_answer *answer, struct json_text *text)
 {
     struct store_view *view = NULL;
     struct store_error error = {0};
@@ -205,13 +200,32 @@ static int gaps_json(struct gaps_job *job, const struct model_question *question
     for (size_t i = 0; i < answer->gap_count && code == 0; i++) {
         if (vocabulary_get(view, answer->gaps[i].tag, &tag, &error) != STORE_OK) {
             code = read_job_fail(&job->job, &error);
-        } else if (json_array_append_new(gaps, gap_json(tag.name, question, &answer->gaps[i])) <
-                   0) {
-            code = no_memory(&job->job.fault);
+        } else {
+            json_text_plain(text, i > 0 ? "," : "");
+            write_gap(text, tag.name, question, &answer->gaps[i]);
         }
     }
     store_end(view);
     return code;
+}
+
+static void write_answer(struct gaps_job *job, const struct model_question *question,
+                         const struct model_answer *answer, uint64_t learned)
+{
+    struct json_text text = {0};
+    json_text_plain(&text, "{\"gaps\":[");
+    int code = write_gaps(job, question, answer, &text);
+    json_text_plain(&text, "],\"expected\":");
+    json_text_real(&text, answer->expected);
+    json_text_plain(&text, ",\"learned\":");
+    json_text_whole(&text, learned);
+    json_text_plain(&text, answer->early ? ",\"early\":true}" : ",\"early\":false}");
+    char *written = json_text_take(&text);
+    if (code < 0) {
+        free(written);
+    } else {
+        job->job.written = written; /* NULL: no memory */
+    }
 }
 
 /* Gives back what an earlier try has used. */
@@ -259,13 +273,7 @@ static void run(struct read_job *base)
     if (!ask_model(job, &question, &answer, &learned)) {
         return;
     }
-    json_t *gaps = json_array();
-    if (gaps_json(job, &question, &answer, gaps) < 0) {
-        json_decref(gaps);
-        return;
-    }
-    base->result = json_pack("{s:o, s:f, s:I, s:b}", "gaps", gaps, "expected", answer.expected,
-                             "learned", (json_int_t)learned, "early", (int)answer.early);
+    write_answer(job, &question, &answer, learned);
 }
 
 /* --- the request --------------------------------------------------------------------------------

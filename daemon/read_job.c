@@ -47,6 +47,11 @@ static void on_work(uv_work_t *work)
         /* Where it was made: memory that comes back to this thread is at hand for its next job. */
         json_decref(job->result);
         job->result = NULL;
+    } else if (job->written) {
+        job->has_result = true;
+        job->text = call_written_text(job->call, job->written);
+        free(job->written);
+        job->written = NULL;
     }
 }
 

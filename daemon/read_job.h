@@ -24,6 +24,7 @@ struct read_job {
     void (*run)(struct read_job *job);
     void (*release)(struct read_job *job); /* frees what the method has added; may be NULL */
     json_t *result;                        /* NULL without a fault: no memory */
+    char *written;                         /* or the result as JSON; for free() */
     bool has_result;                       /* private */
     char *text;                            /* private */
     struct fault fault;

@@ -4,6 +4,7 @@
 #include <string.h>
 
 #include "daemon/json_memory.h"
+#include "daemon/json_text.h"
 
 /* Whether the text nests deeper than RPC_DEPTH. Looks at brackets outside strings only, so that the
  * parser behind it never sees a text that would take it too deep. */
@@ -158,6 +159,24 @@ static char *envelope_take(json_t *id, const char *name, json_t *value)
 char *rpc_result_text(json_t *id, json_t *result)
 {
     return envelope_take(id, "result", json_incref(result));
+}
+
+char *rpc_written_text(json_t *id, const char *result)
+{
+    struct json_text answer = {0};
+    (void)json_memory_was_refused(); /* an id that was not to be had is NULL */
+    char *id_text = id ? json_dumps(id, JSON_COMPACT | JSON_ENCODE_ANY) : strdup("null");
+    if (!id_text || json_memory_was_refused()) {
+        free(id_text);
+        return NULL;
+    }
+    json_text_plain(&answer, "{\"jsonrpc\":\"2.0\",\"id\":");
+    json_text_plain(&answer, id_text);
+    json_text_plain(&answer, ",\"result\":");
+    json_text_plain(&answer, result);
+    json_text_plain(&answer, "}");
+    free(id_text);
+    return json_text_take(&answer);
 }
 
 char *rpc_fault_text(json_t *id, const struct fault *fault)

@@ -41,6 +41,10 @@ void rpc_request_deinit(struct rpc_request *request);
 
 /* The text of an answer, without a line end, for free(); NULL: no memory. `id` NULL is null. */
 char *rpc_result_text(json_t *id, json_t *result);
+
+/* The same of a result that is written already. */
+char *rpc_written_text(json_t *id, const char *result);
+
 char *rpc_fault_text(json_t *id, const struct fault *fault);
 
 #endif

@@ -272,8 +272,6 @@ coverage: packages-build packages-test packages-coverage
 	@UNDERTAG_FAULTS=$(COVERAGE_FAULTS) $(MAKE) --no-print-directory -j $(JOBS) BUILD=build-coverage run-tests \
 	    GROUPS='unit integration reference faults fuzz' \
 	    CFLAGS='-O1 -g --coverage -fprofile-update=atomic'
-	@# The client under faults, too: what it does then shows nowhere else.
-	@BUILD=build-coverage build-coverage/tests/test_client_faults
 	@gcovr --root . --object-directory build-coverage --filter client/ --filter daemon/ \
 	    --filter storage/ --exclude '.*/main\.c' --branches --sort-percentage --print-summary \
 	    build-coverage

@@ -222,7 +222,7 @@ static void write_answer(struct gaps_job *job, const struct model_question *ques
     json_text_plain(&text, answer->early ? ",\"early\":true}" : ",\"early\":false}");
     char *written = json_text_take(&text);
     if (code < 0) {
-        free(written);
+        free(written); /* half an answer; the job holds the fault */
     } else {
         job->job.written = written; /* NULL: no memory */
     }

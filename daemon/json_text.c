@@ -1,7 +1,6 @@
 #include "daemon/json_text.h"
 
 #include <assert.h>
-#include <inttypes.h>
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>

@@ -164,14 +164,14 @@ char *rpc_result_text(json_t *id, json_t *result)
 char *rpc_written_text(json_t *id, const char *result)
 {
     struct json_text answer = {0};
-    (void)json_memory_was_refused(); /* an id that was not to be had is NULL */
-    char *id_text = id ? json_dumps(id, JSON_COMPACT | JSON_ENCODE_ANY) : strdup("null");
-    if (!id_text || json_memory_was_refused()) {
-        free(id_text);
+    (void)json_memory_was_refused(); /* what was not to be had before is not this text */
+    char *id_text = id ? json_dumps(id, JSON_COMPACT | JSON_ENCODE_ANY) : NULL;
+    if (json_memory_was_refused()) {
+        free(id_text); /* it may lack a part */
         return NULL;
     }
     json_text_plain(&answer, "{\"jsonrpc\":\"2.0\",\"id\":");
-    json_text_plain(&answer, id_text);
+    json_text_plain(&answer, id_text ? id_text : "null");
     json_text_plain(&answer, ",\"result\":");
     json_text_plain(&answer, result);
     json_text_plain(&answer, "}");

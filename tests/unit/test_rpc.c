@@ -340,6 +340,23 @@ static void a_result_goes_out_with_the_id(void **state)
     json_decref(result);
 }
 
+static void a_result_that_is_written_already_goes_out_as_any_other(void **state)
+{
+    (void)state;
+    json_t *ids[] = {json_integer(-7), json_string("the \"Tern\""), json_null(), NULL};
+    json_t *result = json_pack("{s: i}", "learned", 12);
+    for (size_t i = 0; i < sizeof ids / sizeof ids[0]; i++) {
+        char *written = rpc_written_text(ids[i], "{\"learned\":12}");
+        char *other = rpc_result_text(ids[i], result);
+        assert_non_null(written);
+        assert_string_equal(written, other);
+        free(written);
+        free(other);
+        json_decref(ids[i]);
+    }
+    json_decref(result);
+}
+
 static void line_ends_within_strings_are_escaped(void **state)
 {
     (void)state;
@@ -392,6 +409,7 @@ int main(void)
         cmocka_unit_test(a_method_that_is_not_there_is_named),
         cmocka_unit_test(params_are_named_and_not_in_order),
         cmocka_unit_test(a_result_goes_out_with_the_id),
+        cmocka_unit_test(a_result_that_is_written_already_goes_out_as_any_other),
         cmocka_unit_test(line_ends_within_strings_are_escaped),
         cmocka_unit_test(a_fault_tells_code_sentence_and_member),
         cmocka_unit_test(a_fault_that_blames_no_member_has_no_data),

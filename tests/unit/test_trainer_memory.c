@@ -164,6 +164,12 @@ static uint64_t learned_so_far(struct training *training)
 /* What one entry may add before it is looked at again: a chunk for each word and what lists it. */
 static const uint64_t ONE_ENTRY_BYTES = (uint64_t)ENTRY_WORDS * 2 * 8192;
 
+/* What may wait to be stored of a little budget. */
+static uint64_t little_room(void)
+{
+    return memory_shares_of(LITTLE_BUDGET_BYTES, 0).changed;
+}
+
 /* The most that waited to be stored, of what was seen until all is learned. */
 static uint64_t most_changed(struct training *training, uint64_t last)
 {
@@ -397,7 +403,7 @@ static void with_a_little_budget_the_model_is_stored_in_between_and_the_same(voi
     small->settings.memory_bytes = LITTLE_BUDGET_BYTES;
     file_many(small, MANY);
     start(small);
-    assert_true(most_changed(small, MANY) <= LITTLE_BUDGET_BYTES / 4 + ONE_ENTRY_BYTES);
+    assert_true(most_changed(small, MANY) <= little_room() + ONE_ENTRY_BYTES);
     assert_true(backlog_read(small->backlog).kept > 0);
     assert_same_in_the_end(pair, MANY);
     assert_true(small->kept_count >= 3); /* one of them at the end */
@@ -465,12 +471,12 @@ static void with_little_memory_learning_waits_for_what_is_being_stored(void **st
     file_many(small, MANY);
     atomic_store(&disk_is_stuck, true);
     start(small);
-    while (changed_bytes(small) <= LITTLE_BUDGET_BYTES / 4) {
+    while (changed_bytes(small) <= little_room()) {
         (void)sched_yield();
     }
     assert_true(learned_so_far(small) < MANY);
     atomic_store(&disk_is_stuck, false);
-    assert_true(most_changed(small, MANY) <= LITTLE_BUDGET_BYTES / 4 + ONE_ENTRY_BYTES);
+    assert_true(most_changed(small, MANY) <= little_room() + ONE_ENTRY_BYTES);
     assert_same_in_the_end(pair, MANY);
 }
 
@@ -492,11 +498,11 @@ static void assert_held_up(struct training *training, const char *reason)
     wait_for_trouble(training, sentence);
     assert_non_null(strstr(sentence, "what was learned cannot be stored ("));
     assert_non_null(strstr(sentence, reason));
-    while (changed_bytes(training) <= LITTLE_BUDGET_BYTES / 4) {
+    while (changed_bytes(training) <= little_room()) {
         (void)sched_yield();
     }
     assert_true(learned_so_far(training) < MANY);
-    assert_true(changed_bytes(training) <= LITTLE_BUDGET_BYTES / 4 + ONE_ENTRY_BYTES);
+    assert_true(changed_bytes(training) <= little_room() + ONE_ENTRY_BYTES);
 }
 
 /* Has the small one learn until it must store the model and cannot. */

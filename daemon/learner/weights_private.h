@@ -40,6 +40,19 @@ struct weights {
     struct marks sealed_tags;
 };
 
+/* By tag, what is known lies anywhere: a walk over tags has the processor fetch it for the one so
+ * many places ahead. Measured with half a million tags: a sixth of learning's time. */
+enum {
+    WEIGHTS_AHEAD = 16
+};
+
+/* The place that is so far ahead; the last one where there is none. */
+static inline size_t weights_ahead(size_t at, size_t count)
+{
+    size_t ahead = at + WEIGHTS_AHEAD;
+    return ahead < count ? ahead : count - 1;
+}
+
 /* After a bias has changed: the tag's lifts, and whether it is on the list of raised ones. */
 void weights_refresh_raised(struct weights *weights, uint32_t tag);
 

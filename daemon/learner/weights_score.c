@@ -22,6 +22,7 @@ static inline __attribute__((always_inline)) void add_postings(const uint32_t *n
         const uint32_t *posting = numbers + j * stride;
         uint32_t tag = posting[0];
         float *sum = sums + tag * lanes;
+        __builtin_prefetch(sums + numbers[weights_ahead(j, count) * stride] * lanes, 1);
         /* Without a branch: written always, kept when it is the first visit. */
         touched[touched_count] = tag;
         touched_count += scratch_is_untouched(*sum);
@@ -88,33 +89,53 @@ static int note_word(const struct weights *weights, const struct base *base,
     return result == -ENOENT ? 0 : result;
 }
 
-/* The touched tags that are above the floor. */
-static int list_rivals(const struct weights *weights, struct weights_scratch *scratch,
-                       enum weights_lane lane)
+/* Lists the touched tags that are above the floor, in one walk for all lanes: what is known of a
+ * tag lies together. The numbers are constants where this is called. */
+static inline __attribute__((always_inline)) void list_rivals(const struct weights *weights,
+                                                              struct weights_scratch *scratch,
+                                                              size_t lanes, size_t lifts_a_tag)
 {
-    size_t lanes = scratch->lanes;
-    size_t lifts_a_tag = weights->lanes;
-    size_t touched_count = scratch->touched_count;
-    struct scratch_rivals *rivals = &scratch->rivals[lane];
-    rivals->count = 0;
-    if (touched_count == 0) {
-        return 0; /* there may be no tags, and no arrays */
-    }
-    if (GROW(&rivals->list, &rivals->capacity, touched_count + 1) < 0) {
-        return -ENOMEM;
-    }
     const uint32_t *touched = scratch->touched;
-    const float *sums = scratch->sums + lane;
-    const float *lifts = weights->lifts + lane;
-    struct weights_rival *list = rivals->list;
-    size_t count = 0;
+    size_t touched_count = scratch->touched_count;
+    const float *sums = scratch->sums;
+    const float *lifts = weights->lifts;
+    struct weights_rival *lists[WEIGHTS_LANES];
+    size_t counts[WEIGHTS_LANES] = {0};
+    for (size_t lane = 0; lane < lanes; lane++) {
+        lists[lane] = scratch->rivals[lane].list;
+    }
     for (size_t i = 0; i < touched_count; i++) {
         uint32_t tag = touched[i];
-        float score = lifts[tag * lifts_a_tag] + sums[tag * lanes];
-        list[count] = (struct weights_rival){tag, score};
-        count += score > WEIGHTS_FLOOR_SCORE;
+        uint32_t tag_ahead = touched[weights_ahead(i, touched_count)];
+        __builtin_prefetch(sums + tag_ahead * lanes);
+        __builtin_prefetch(lifts + tag_ahead * lifts_a_tag);
+        for (size_t lane = 0; lane < lanes; lane++) {
+            float score = lifts[tag * lifts_a_tag + lane] + sums[tag * lanes + lane];
+            /* Without a branch, as above. */
+            lists[lane][counts[lane]] = (struct weights_rival){tag, score};
+            counts[lane] += score > WEIGHTS_FLOOR_SCORE;
+        }
     }
-    rivals->count = count;
+    for (size_t lane = 0; lane < lanes; lane++) {
+        scratch->rivals[lane].count = counts[lane];
+    }
+}
+
+static int find_rivals(const struct weights *weights, struct weights_scratch *scratch, size_t lanes)
+{
+    for (size_t lane = 0; lane < lanes; lane++) {
+        struct scratch_rivals *rivals = &scratch->rivals[lane];
+        if (GROW(&rivals->list, &rivals->capacity, scratch->touched_count + 1) < 0) {
+            return -ENOMEM;
+        }
+    }
+    if (lanes == WEIGHTS_LANES) {
+        list_rivals(weights, scratch, WEIGHTS_LANES, WEIGHTS_LANES);
+    } else if (weights->lanes == 1) {
+        list_rivals(weights, scratch, 1, 1);
+    } else {
+        list_rivals(weights, scratch, 1, WEIGHTS_LANES);
+    }
     return 0;
 }
 
@@ -138,11 +159,7 @@ int weights_score(const struct weights *weights, const struct base *base,
     for (size_t i = 0; i < weights->raised_count; i++) {
         scratch_touch(scratch, weights->raised[i]);
     }
-    int result = 0;
-    for (size_t lane = 0; lane < lanes && result == 0; lane++) {
-        result = list_rivals(weights, scratch, (enum weights_lane)lane);
-    }
-    return result;
+    return find_rivals(weights, scratch, lanes);
 }
 
 const struct weights_rival *weights_rivals(const struct weights_scratch *scratch,
@@ -166,8 +183,9 @@ bool weights_speak(const struct weights_scratch *scratch)
 float weights_tag_score(const struct weights *weights, const struct weights_scratch *scratch,
                         enum weights_lane lane, uint32_t tag)
 {
-    return WEIGHTS_BASE_SCORE + weights_bias(weights, lane, tag).value +
-           scratch_sum(scratch, lane, tag);
+    float lift =
+        tag < weights->tag_count ? weights->lifts[tag * weights->lanes + lane] : WEIGHTS_BASE_SCORE;
+    return lift + scratch_sum(scratch, lane, tag);
 }
 
 /* --- explaining ---------------------------------------------------------------------------------

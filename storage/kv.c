@@ -15,7 +15,8 @@
 
 enum {
     MOST_READERS = 126,
-    FULL_BYTES = 1 << 20 /* a disk with less left is full */
+    FULL_BYTES = 1 << 20, /* a disk with less left is full */
+    RUN_BYTES = 256 << 10 /* seldom free in one piece by chance */
 };
 
 int kv_translate(const struct kv *kv, int code, const char *doing, struct store_error *error)
@@ -419,4 +420,16 @@ int kv_count_pages(struct kv_txn *txn, unsigned table, uint64_t *ret_count,
         *ret_count = status.ms_leaf_pages;
     }
     return kv_translate(txn->kv, code, "counting", error);
+}
+
+int kv_gather_free_pages(struct kv_txn *txn, unsigned table, struct kv_bytes key,
+                         struct store_error *error)
+{
+    MDB_val at = kv_to_val(key);
+    MDB_val run = {.mv_size = RUN_BYTES};
+    int code = mdb_put(txn->txn, txn->kv->tables[table], &at, &run, MDB_RESERVE);
+    if (code == MDB_SUCCESS) {
+        memset(run.mv_data, 0, run.mv_size);
+    }
+    return kv_translate(txn->kv, code, "writing", error);
 }

@@ -209,6 +209,9 @@ int kv_batch_commit(struct kv_batch *batch, struct kv *kv, const struct kv_batch
     static const struct kv_batch_steps none = {0};
     struct kv_txn *txn = NULL;
     int code = kv_begin(kv, true, &txn, error);
+    if (code == STORE_OK && steps && steps->first) {
+        code = steps->first(steps->user, txn, error);
+    }
     while (code == STORE_OK && batch->first) {
         code = make_block(txn, steps ? steps : &none, batch->first, error);
         drop_first(batch);

@@ -35,6 +35,8 @@ int kv_batch_delete_all(struct kv_batch *batch, unsigned table, struct kv_bytes 
 /* What else is to be done on the way. Each may be NULL, and returns STORE_OK or what ends it. */
 struct kv_batch_steps {
     void *user;
+    /* Before any change is made. */
+    int (*first)(void *user, struct kv_txn *txn, struct store_error *error);
     /* Instead of a put of the table `put_in`. */
     unsigned put_in;
     int (*put)(void *user, struct kv_txn *txn, struct kv_bytes key, struct kv_bytes value,

@@ -8,6 +8,10 @@
 #include "storage/kv_batch.h"
 #include "storage/model_store_private.h"
 
+enum {
+    LARGE_CHUNKS = 4096 /* a writing of as many changes thousands of pages */
+};
+
 static const char *const TABLE_NAMES[MODEL_TABLES] = {
     [MODEL_META] = "meta",     [MODEL_WORDS] = "words",     [MODEL_CHUNKS] = "chunks",
     [MODEL_TAGS] = "tags",     [MODEL_FIGURES] = "figures", [MODEL_ENTRIES] = "worklist",
@@ -130,6 +134,19 @@ int model_store_begin(struct model_store *store, struct model_store_writing **re
     return STORE_OK;
 }
 
+/* What is only there to have free pages gathered. */
+static struct kv_bytes run_key(void)
+{
+    return kv_bytes_of("run", 3);
+}
+
+static int gather_free_pages(void *user, struct kv_txn *txn, struct store_error *error)
+{
+    const struct model_store_writing *writing = user;
+    return writing->chunks < LARGE_CHUNKS ? STORE_OK
+                                          : kv_gather_free_pages(txn, MODEL_META, run_key(), error);
+}
+
 /* A chunk is collected without a checksum: there are many of them, and the thread that commits has
  * the time. */
 static int put_chunk(void *user, struct kv_txn *txn, struct kv_bytes key, struct kv_bytes body,
@@ -170,6 +187,7 @@ static int make_rest(void *user, struct kv_txn *txn, struct store_error *error)
 int model_store_commit(struct model_store_writing *writing, struct store_error *error)
 {
     const struct kv_batch_steps steps = {.user = writing,
+                                         .first = gather_free_pages,
                                          .put_in = MODEL_CHUNKS,
                                          .put = put_chunk,
                                          .moved = tell_moved,

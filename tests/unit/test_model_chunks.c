@@ -419,6 +419,20 @@ static void damage_of_what_the_news_are_of_is_told(void **state)
 
 #define TEST(function) cmocka_unit_test_setup_teardown(function, set_up, tear_down)
 
+/* Nothing else of these tests stands in that table. */
+static void a_large_writing_gathers_free_pages_and_a_small_one_does_not(void **state)
+{
+    struct chunked *chunked = *state;
+    PUT(chunked, 1, 0, 7);
+    commit(chunked);
+    assert_int_equal(count_of(chunked, MODEL_META), 0);
+    for (uint32_t word = 0; word < 5000; word++) {
+        PUT(chunked, word, 0, word);
+    }
+    commit(chunked);
+    assert_int_equal(count_of(chunked, MODEL_META), 1);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -433,6 +447,7 @@ int main(void)
         TEST(a_words_chunks_are_read_in_any_order_with_news_and_without),
         TEST(a_chunk_that_is_removed_leaves_no_news),
         TEST(a_word_that_is_forgotten_leaves_no_news),
+        TEST(a_large_writing_gathers_free_pages_and_a_small_one_does_not),
         TEST(news_keep_to_their_share_and_nothing_is_lost),
         TEST(few_news_are_never_settled),
         TEST(damaged_news_are_told),

@@ -4,7 +4,8 @@
 #   make demo       the main job on an invented stream
 #   make test       unit, integration, reference and fault tests
 #   make lint       format check, clang-tidy, cppcheck, a clang build, the units of systemd
-#   make sanitize   the tests under ASan+UBSan and TSan; make valgrind: the unit tests
+#   make sanitize   the tests under ASan+UBSan and TSan; make valgrind: the unit tests, make
+#                   valgrind-daemons: what the integration tests start
 #   make coverage   the share of branches that the tests take
 #   make soak       kill -9 at ROUNDS random moments, of which `make test` has 50
 #   make fuzz       each fuzz target for FUZZ_SECONDS, under ASan and UBSan
@@ -75,7 +76,7 @@ FUZZERS := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzzers/%,$(FUZZ_SOURCES))
 TEST_PROGRAMS := $(UNIT_PROGRAMS) $(INTEGRATION_PROGRAMS) $(REFERENCE_PROGRAMS) $(FAULT_PROGRAMS) $(FUZZ_PROGRAMS)
 BENCH_PROGRAMS := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(BENCH_SOURCES))
 
-.PHONY: all demo test lint check-units sanitize valgrind coverage faults soak fuzz build-fuzzers corpora \
+.PHONY: all demo test lint check-units sanitize valgrind valgrind-daemons coverage faults soak fuzz build-fuzzers corpora \
         quality bench install uninstall clean build-tests run-tests FORCE
 .DELETE_ON_ERROR:
 .SECONDARY:
@@ -260,9 +261,16 @@ sanitize: packages-build packages-test packages-lint
 	$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-tsan CC=clang run-tests \
 	    GROUPS='unit integration' CFLAGS='-O1 -g -fsanitize=thread'
 
+VALGRIND := valgrind -q --fair-sched=yes --error-exitcode=99 --leak-check=full
 valgrind: packages-build packages-test
 	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-valgrind CFLAGS='-O1 -g' run-tests \
-	    GROUPS=unit WRAPPER='valgrind -q --fair-sched=yes --error-exitcode=99 --leak-check=full'
+	    GROUPS=unit WRAPPER='$(VALGRIND)'
+
+# 40 minutes: the integration tests, with each daemon and each client that they start under valgrind.
+valgrind-daemons: packages-build packages-test
+	@$(MAKE) --no-print-directory -j $(JOBS) BUILD=build-valgrind CFLAGS='-O1 -g' build-tests
+	@sh tests/integration/wrap build-valgrind $(VALGRIND)
+	@UNDERTAG_VALGRIND=1 BUILD=build-valgrind/wrapped sh tests/run integration
 
 # What share of the branches the tests take: a table by file, then the sums. Daemons that a test kills
 # leave no counts, so what only they did does not show. COVERAGE_FAULTS: of the allocations, which to

@@ -346,7 +346,9 @@ static void what_was_acknowledged_is_learned_within_the_promised_time(void **sta
         assert_true(learned >= due);
         behind += learned < seq;
     }
-    assert_true(behind > 0); /* the trainer was behind now and then: there was something to keep */
+    /* The trainer was behind now and then: there was something to keep. Slowed down, who asks is as
+     * slow, and it may always be done. */
+    assert_true(behind > 0 || undertagd_is_slowed());
     peer_close(&feed);
 }
 

@@ -19,6 +19,9 @@
 
 #include "tests/integration/peer.h"
 
+/* How valgrind begins to say where an error is. */
+#define VALGRIND_PLACE "==    at 0x"
+
 /* --- the folder ------------------------------------------------------------------------------ */
 
 void undertagd_path(const struct undertagd *daemon, const char *name,
@@ -47,6 +50,11 @@ bool undertagd_is_sanitized(void)
 #else
     return false;
 #endif
+}
+
+bool undertagd_is_slowed(void)
+{
+    return getenv("UNDERTAG_VALGRIND") != NULL;
 }
 
 void undertagd_make(struct undertagd *daemon)
@@ -216,7 +224,7 @@ int undertagd_remove(struct undertagd *daemon)
         }
     }
     if (result < 0 || undertagd_said(daemon, "Sanitizer") ||
-        undertagd_said(daemon, "runtime error")) {
+        undertagd_said(daemon, "runtime error") || undertagd_said(daemon, VALGRIND_PLACE)) {
         char *text = read_log(daemon);
         print_error("%s", text);
         free(text);

@@ -30,6 +30,9 @@ struct undertagd {
  * anything preloaded. */
 bool undertagd_is_sanitized(void);
 
+/* Whether it runs under valgrind, some thirty times slower (see `wrap`). */
+bool undertagd_is_slowed(void);
+
 /* Makes the folder; nothing runs yet. */
 void undertagd_make(struct undertagd *daemon);
 
@@ -50,7 +53,7 @@ void undertagd_wait_for(const struct undertagd *daemon, const char *part);
 
 /*
  * Stops the daemon, if it runs, and removes the folder. -1, with what it logged, where it had ended
- * by itself, ended badly, or where a sanitizer had something to say.
+ * by itself, ended badly, or where a sanitizer or valgrind had something to say.
  */
 int undertagd_remove(struct undertagd *daemon);
 

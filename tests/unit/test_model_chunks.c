@@ -368,6 +368,20 @@ static void few_news_are_never_settled(void **state)
     }
 }
 
+/* Nothing else of these tests stands in that table. */
+static void a_large_writing_gathers_free_pages_and_a_small_one_does_not(void **state)
+{
+    struct chunked *chunked = *state;
+    PUT(chunked, 1, 0, 7);
+    commit(chunked);
+    assert_int_equal(count_of(chunked, MODEL_META), 0);
+    for (uint32_t word = 0; word < 5000; word++) {
+        PUT(chunked, word, 0, word);
+    }
+    commit(chunked);
+    assert_int_equal(count_of(chunked, MODEL_META), 1);
+}
+
 /* --- damage --- */
 
 static void damage(struct chunked *chunked, enum model_table table)
@@ -418,20 +432,6 @@ static void damage_of_what_the_news_are_of_is_told(void **state)
 }
 
 #define TEST(function) cmocka_unit_test_setup_teardown(function, set_up, tear_down)
-
-/* Nothing else of these tests stands in that table. */
-static void a_large_writing_gathers_free_pages_and_a_small_one_does_not(void **state)
-{
-    struct chunked *chunked = *state;
-    PUT(chunked, 1, 0, 7);
-    commit(chunked);
-    assert_int_equal(count_of(chunked, MODEL_META), 0);
-    for (uint32_t word = 0; word < 5000; word++) {
-        PUT(chunked, word, 0, word);
-    }
-    commit(chunked);
-    assert_int_equal(count_of(chunked, MODEL_META), 1);
-}
 
 int main(void)
 {

@@ -164,6 +164,24 @@ static int read_base(const struct postings *postings, const struct base *base, u
 /* --- reading ------------------------------------------------------------------------------------
  */
 
+void postings_expect_word(const struct postings *postings, uint32_t word)
+{
+    index_expect(&postings->index, word);
+}
+
+void postings_expect_chunks(const struct postings *postings, uint32_t word)
+{
+    const struct index_word *entry = index_find(&postings->index, word);
+    if (!entry) {
+        return;
+    }
+    if (entry->capacity > 0) {
+        __builtin_prefetch(entry->places.many);
+    } else if (entry->places.one != 0) {
+        __builtin_prefetch(&postings->chunks[entry->places.one - 1]);
+    }
+}
+
 void postings_walk_begin(const struct postings *postings, const struct base *base, uint32_t word,
                          struct postings_walk *ret_walk)
 {

@@ -57,6 +57,11 @@ uint64_t postings_chunk_bytes(const struct postings *postings);
 
 /* --- reading --- */
 
+/* Has the processor fetch where a word is looked up; then, a while later, where its chunks are.
+ * They change nothing. */
+void postings_expect_word(const struct postings *postings, uint32_t word);
+void postings_expect_chunks(const struct postings *postings, uint32_t word);
+
 /* Walks a word's chunks, whether they are in memory or not. */
 struct postings_walk {
     const struct postings *postings;

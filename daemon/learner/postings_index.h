@@ -60,6 +60,14 @@ static inline struct index_word *index_find(const struct postings_index *index, 
     return found->key != 0 ? found : NULL;
 }
 
+/* Has the processor fetch where a word is looked for first. */
+static inline void index_expect(const struct postings_index *index, uint32_t word)
+{
+    if (index->slot_count > 0) {
+        __builtin_prefetch(&index->slots[index_home(index, word + 1)]);
+    }
+}
+
 /* The word's entry, new where there is none. Returns 0 or -ENOMEM. */
 int index_add(struct postings_index *index, uint32_t word, struct index_word **ret_entry)
     __attribute__((warn_unused_result));

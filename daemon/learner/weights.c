@@ -99,9 +99,20 @@ void weights_refresh_raised(struct weights *weights, uint32_t tag)
     }
 }
 
+void weights_expect(const struct weights *weights, const struct weights_feature *x, size_t count)
+{
+    for (size_t i = 0; i < count; i++) {
+        postings_expect_word(weights->postings, x[i].word);
+    }
+    for (size_t i = 0; i < count; i++) {
+        postings_expect_chunks(weights->postings, x[i].word);
+    }
+}
+
 int weights_admit(struct weights *weights, const struct base *base, const struct weights_feature *x,
                   size_t count)
 {
+    weights_expect(weights, x, count);
     int result = 0;
     for (size_t i = 0; i < count && result == 0; i++) {
         result = postings_admit(weights->postings, base, x[i].word);

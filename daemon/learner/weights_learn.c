@@ -232,9 +232,12 @@ static int collect_chunk(const struct learning *learning, const struct weights_f
     const uint32_t *numbers = chunk->numbers;
     const uint8_t *marks = scratch->marks;
     size_t count = chunk->count;
+    size_t fetching = weights_fetching(count);
     for (size_t j = 0; j < count; j++) {
         uint32_t tag = numbers[j * stride];
-        __builtin_prefetch(marks + numbers[weights_ahead(j, count) * stride]);
+        if (j < fetching) {
+            __builtin_prefetch(marks + numbers[(j + WEIGHTS_AHEAD) * stride]);
+        }
         if ((marks[tag] & SCRATCH_ACTIVE) != 0 &&
             collect_posting(learning, feature, place, (uint32_t)(j * stride), tag) < 0) {
             return -ENOMEM;

@@ -46,12 +46,15 @@ enum {
     WEIGHTS_AHEAD = 16
 };
 
-/* The place that is so far ahead; the last one where there is none. */
-static inline size_t weights_ahead(size_t at, size_t count)
+/* How many of so many have one that far ahead. */
+static inline size_t weights_fetching(size_t count)
 {
-    size_t ahead = at + WEIGHTS_AHEAD;
-    return ahead < count ? ahead : count - 1;
+    return count > WEIGHTS_AHEAD ? count - WEIGHTS_AHEAD : 0;
 }
+
+/* Has the processor fetch what leads to the words' chunks: for all of them one step, then the next,
+ * so that no word waits for another's. */
+void weights_expect(const struct weights *weights, const struct weights_feature *x, size_t count);
 
 /* After a bias has changed: the tag's lifts, and whether it is on the list of raised ones. */
 void weights_refresh_raised(struct weights *weights, uint32_t tag);

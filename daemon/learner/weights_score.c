@@ -8,6 +8,25 @@
 #include "daemon/learner/weights_private.h"
 #include "daemon/learner/weights_scratch.h"
 
+enum {
+    NUMBERS_A_LINE = 64 / sizeof(uint32_t) /* of the processor's cache; common practice */
+};
+
+/* Adds a posting's part of the scores; `listed` is where the next touched tag is written, and so is
+ * what it returns. */
+static inline __attribute__((always_inline)) uint32_t *
+add_posting(const uint32_t *posting, size_t lanes, float x, float *sums, uint32_t *listed)
+{
+    float *sum = sums + posting[0] * lanes;
+    /* Without a branch: written always, kept when it is the first visit. */
+    *listed = posting[0];
+    listed += scratch_is_untouched(*sum);
+    for (size_t lane = 0; lane < lanes; lane++) {
+        sum[lane] += (float)cell_weight(posting[1 + lane]) * x;
+    }
+    return listed;
+}
+
 /* Adds a chunk's part of the scores. The numbers of lanes are constants where this is called, so
  * that there is no loop over them; `x` is the feature's value by the step of a cell. */
 static inline __attribute__((always_inline)) void add_postings(const uint32_t *numbers,
@@ -16,21 +35,16 @@ static inline __attribute__((always_inline)) void add_postings(const uint32_t *n
                                                                struct weights_scratch *scratch)
 {
     float *sums = scratch->sums;
-    uint32_t *touched = scratch->touched;
-    size_t touched_count = scratch->touched_count;
-    for (size_t j = 0; j < count; j++) {
-        const uint32_t *posting = numbers + j * stride;
-        uint32_t tag = posting[0];
-        float *sum = sums + tag * lanes;
-        __builtin_prefetch(sums + numbers[weights_ahead(j, count) * stride] * lanes, 1);
-        /* Without a branch: written always, kept when it is the first visit. */
-        touched[touched_count] = tag;
-        touched_count += scratch_is_untouched(*sum);
-        for (size_t lane = 0; lane < lanes; lane++) {
-            sum[lane] += (float)cell_weight(posting[1 + lane]) * x;
-        }
+    uint32_t *listed = scratch->touched + scratch->touched_count;
+    size_t fetching = weights_fetching(count);
+    for (size_t j = 0; j < fetching; j++) {
+        __builtin_prefetch(sums + numbers[(j + WEIGHTS_AHEAD) * stride] * lanes, 1);
+        listed = add_posting(numbers + j * stride, lanes, x, sums, listed);
     }
-    scratch->touched_count = touched_count;
+    for (size_t j = fetching; j < count; j++) {
+        listed = add_posting(numbers + j * stride, lanes, x, sums, listed);
+    }
+    scratch->touched_count = (size_t)(listed - scratch->touched);
 }
 
 static void add_chunk(const uint32_t *numbers, size_t count, size_t stride, float x,
@@ -55,13 +69,16 @@ static void add_runs(struct weights_scratch *scratch, size_t stride)
     scratch->run_count = 0;
 }
 
-/* Notes a chunk that is in memory, and has the processor fetch its beginning. */
-static int note_run(struct weights_scratch *scratch, const uint32_t *numbers, size_t count, float x)
+/* Notes a chunk that is in memory, and has the processor fetch it while others are noted. */
+static int note_run(struct weights_scratch *scratch, const uint32_t *numbers, size_t count,
+                    size_t stride, float x)
 {
     if (GROW(&scratch->runs, &scratch->run_capacity, scratch->run_count + 1) < 0) {
         return -ENOMEM;
     }
-    __builtin_prefetch(numbers);
+    for (size_t i = 0; i < count * stride; i += NUMBERS_A_LINE) {
+        __builtin_prefetch(numbers + i);
+    }
     scratch->runs[scratch->run_count++] =
         (struct scratch_run){.numbers = numbers, .count = (uint32_t)count, .x = x};
     return 0;
@@ -82,11 +99,24 @@ static int note_word(const struct weights *weights, const struct base *base,
         if (numbers == walk->buffer) {
             add_runs(scratch, stride); /* words are added in their order */
             add_chunk(numbers, count, stride, x, scratch);
-        } else if (note_run(scratch, numbers, count, x) < 0) {
+        } else if (note_run(scratch, numbers, count, stride, x) < 0) {
             return -ENOMEM;
         }
     }
     return result == -ENOENT ? 0 : result;
+}
+
+/* Lists a tag in the lanes in which it is above the floor; `ends` are where each list goes on. */
+static inline __attribute__((always_inline)) void list_rival(uint32_t tag, const float *lifts,
+                                                             const float *sums, size_t lanes,
+                                                             struct weights_rival **ends)
+{
+    for (size_t lane = 0; lane < lanes; lane++) {
+        float score = lifts[lane] + sums[lane];
+        /* Without a branch, as above. */
+        *ends[lane] = (struct weights_rival){tag, score};
+        ends[lane] += score > WEIGHTS_FLOOR_SCORE;
+    }
 }
 
 /* Lists the touched tags that are above the floor, in one walk for all lanes: what is known of a
@@ -96,28 +126,26 @@ static inline __attribute__((always_inline)) void list_rivals(const struct weigh
                                                               size_t lanes, size_t lifts_a_tag)
 {
     const uint32_t *touched = scratch->touched;
-    size_t touched_count = scratch->touched_count;
     const float *sums = scratch->sums;
     const float *lifts = weights->lifts;
-    struct weights_rival *lists[WEIGHTS_LANES];
-    size_t counts[WEIGHTS_LANES] = {0};
+    struct weights_rival *ends[WEIGHTS_LANES];
     for (size_t lane = 0; lane < lanes; lane++) {
-        lists[lane] = scratch->rivals[lane].list;
+        ends[lane] = scratch->rivals[lane].list;
     }
-    for (size_t i = 0; i < touched_count; i++) {
+    size_t fetching = weights_fetching(scratch->touched_count);
+    for (size_t i = 0; i < fetching; i++) {
         uint32_t tag = touched[i];
-        uint32_t tag_ahead = touched[weights_ahead(i, touched_count)];
-        __builtin_prefetch(sums + tag_ahead * lanes);
-        __builtin_prefetch(lifts + tag_ahead * lifts_a_tag);
-        for (size_t lane = 0; lane < lanes; lane++) {
-            float score = lifts[tag * lifts_a_tag + lane] + sums[tag * lanes + lane];
-            /* Without a branch, as above. */
-            lists[lane][counts[lane]] = (struct weights_rival){tag, score};
-            counts[lane] += score > WEIGHTS_FLOOR_SCORE;
-        }
+        uint32_t ahead = touched[i + WEIGHTS_AHEAD];
+        __builtin_prefetch(sums + ahead * lanes);
+        __builtin_prefetch(lifts + ahead * lifts_a_tag);
+        list_rival(tag, lifts + tag * lifts_a_tag, sums + tag * lanes, lanes, ends);
+    }
+    for (size_t i = fetching; i < scratch->touched_count; i++) {
+        uint32_t tag = touched[i];
+        list_rival(tag, lifts + tag * lifts_a_tag, sums + tag * lanes, lanes, ends);
     }
     for (size_t lane = 0; lane < lanes; lane++) {
-        scratch->rivals[lane].count = counts[lane];
+        scratch->rivals[lane].count = (size_t)(ends[lane] - scratch->rivals[lane].list);
     }
 }
 
@@ -148,6 +176,7 @@ int weights_score(const struct weights *weights, const struct base *base,
         return -ENOMEM;
     }
     scratch->run_count = 0;
+    weights_expect(weights, x, count);
     for (size_t i = 0; i < count; i++) {
         int result = note_word(weights, base, &x[i], scratch);
         if (result < 0) {

@@ -81,8 +81,16 @@ static double postings_of_items(const struct examples *examples, const uint32_t 
     return sum / (double)(examples->items - examples->learned);
 }
 
-/* Learns with one setting, and prints what scoring costs then. */
-static int measure(struct examples *examples, double specificity, double step, const char *name)
+/* Learns, then scores: seconds an item, below 0 without memory. */
+static double learn_and_score(struct examples *examples, const struct learner *learner, double step)
+{
+    int result = examples_learn(examples, &(const struct examples_way){.step = step}, learner);
+    return result == 0 ? scoring_time(examples, learner) : -1.0;
+}
+
+/* With one setting of ours: what scoring costs, and how many postings there are. */
+static int measure_weights(struct examples *examples, double specificity, double step,
+                           const char *name)
 {
     struct learner learner = {0};
     uint32_t *postings = calloc(examples->words + 1, sizeof *postings);
@@ -90,17 +98,27 @@ static int measure(struct examples *examples, double specificity, double step, c
         free(postings);
         return -1;
     }
-    double seconds = -1.0;
-    if (examples_learn(examples, &(const struct examples_way){.step = step}, &learner) == 0) {
-        seconds = scoring_time(examples, &learner);
-        if (weights_learner_count(&learner, postings, examples->words) < 0) {
-            seconds = -1.0;
-        }
-        printf("\"%s\": {\"score_s\": %.9f, \"postings\": %.1f}, ", name, seconds,
-               postings_of_items(examples, postings));
+    double seconds = learn_and_score(examples, &learner, step);
+    if (weights_learner_count(&learner, postings, examples->words) < 0) {
+        seconds = -1.0;
     }
+    printf("\"%s\": {\"score_s\": %.9f, \"postings\": %.1f}, ", name, seconds,
+           postings_of_items(examples, postings));
     learner.free(learner.self);
     free(postings);
+    return seconds < 0.0 ? -1 : 0;
+}
+
+/* In the plain layout, with the full index: what scoring costs. */
+static int measure_plain(struct examples *examples, double step)
+{
+    struct learner learner = {0};
+    if (plain_learner_new(examples->words, examples->tags, &learner) < 0) {
+        return -1;
+    }
+    double seconds = learn_and_score(examples, &learner, step);
+    printf("\"plain\": {\"score_s\": %.9f}, ", seconds);
+    learner.free(learner.self);
     return seconds < 0.0 ? -1 : 0;
 }
 
@@ -116,8 +134,9 @@ int main(int argc, char **argv)
     }
     double step = strtod(argv[2], NULL);
     printf("{");
-    int code = measure(&examples, DEFAULT_SPECIFICITY, step, "kept") < 0 ||
-               measure(&examples, 0.0, step, "full") < 0;
+    int code = measure_weights(&examples, DEFAULT_SPECIFICITY, step, "kept") < 0 ||
+               measure_weights(&examples, 0.0, step, "full") < 0 ||
+               measure_plain(&examples, step) < 0;
     printf("\"read_bytes_per_s\": %.0f}\n", reading_rate());
     examples_deinit(&examples);
     return code ? EXIT_FAILURE : EXIT_SUCCESS;
